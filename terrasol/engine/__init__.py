@@ -1,0 +1,1 @@
+"""All raster work as a plan of blocks, run by threads."""

@@ -1,0 +1,1 @@
+"""The only rooms that take a file name."""

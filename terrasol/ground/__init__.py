@@ -1,0 +1,1 @@
+"""An elevation model as a piece of the Earth."""

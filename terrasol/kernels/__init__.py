@@ -1,0 +1,1 @@
+"""Numba only: arrays and plain floats in, preallocated arrays out."""

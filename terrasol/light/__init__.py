@@ -1,0 +1,1 @@
+"""Ground under sky."""

@@ -1,0 +1,1 @@
+"""What lets a person look rather than read."""

@@ -1,0 +1,1 @@
+"""The sun and the air over one place; knows no raster."""
