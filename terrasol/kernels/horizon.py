@@ -1,0 +1,239 @@
+"""The terrain horizon: the near field straight, the far field by a convex hull.
+
+All horizons here are tangents of the angle above the level, not below 0.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numba import njit
+
+FAST = {"contract", "reassoc", "nsz", "arcp"}
+"""Fast-math flags that still know NaN (void) and infinity."""
+
+
+@njit(cache=True, nogil=True, error_model="numpy", fastmath=FAST)
+def near_field(heights, pad, first_row, shift, weight, out):
+    """Horizon from the first steps along each ray, exact from the cell's own centre.
+
+    For one azimuth the shift and the two weights of a step are the same for every cell, so
+    the inner loop is two loads, three multiplications and a maximum.
+
+    heights : (rows + 2 pad, columns + 2 pad) float32, NaN void; a void hides nothing
+    shift : (azimuths, steps, 4) int64, row and column shifts of the two cells a step mixes
+    weight : (azimuths, steps, 4) float32: of the one cell, of the other, 1 / distance,
+        and the drop of the Earth over the distance; the number of steps is a multiple of 4
+    out : (azimuths, rows, columns) float32, the tangent, for the rows from `first_row`
+    """
+    azimuths, rows, columns = out.shape
+    steps = shift.shape[1]
+    for a in range(azimuths):
+        for r in range(rows):
+            i = first_row + r + pad
+            own = heights[i, pad : pad + columns]
+            best = out[a, r]
+            for c in range(columns):
+                best[c] = 0.0
+            for k in range(0, steps, 4):
+                s = shift[a, k : k + 4]
+                w = weight[a, k : k + 4]
+                p0 = heights[i + s[0, 0], pad + s[0, 1] : pad + s[0, 1] + columns]
+                q0 = heights[i + s[0, 2], pad + s[0, 3] : pad + s[0, 3] + columns]
+                p1 = heights[i + s[1, 0], pad + s[1, 1] : pad + s[1, 1] + columns]
+                q1 = heights[i + s[1, 2], pad + s[1, 3] : pad + s[1, 3] + columns]
+                p2 = heights[i + s[2, 0], pad + s[2, 1] : pad + s[2, 1] + columns]
+                q2 = heights[i + s[2, 2], pad + s[2, 3] : pad + s[2, 3] + columns]
+                p3 = heights[i + s[3, 0], pad + s[3, 1] : pad + s[3, 1] + columns]
+                q3 = heights[i + s[3, 2], pad + s[3, 3] : pad + s[3, 3] + columns]
+                w00, w01, w02, w03 = w[0, 0], w[0, 1], w[0, 2], w[0, 3]
+                w10, w11, w12, w13 = w[1, 0], w[1, 1], w[1, 2], w[1, 3]
+                w20, w21, w22, w23 = w[2, 0], w[2, 1], w[2, 2], w[2, 3]
+                w30, w31, w32, w33 = w[3, 0], w[3, 1], w[3, 2], w[3, 3]
+                for c in range(columns):
+                    z = own[c]
+                    m = best[c]
+                    t = w00 * p0[c] + w01 * q0[c] - w02 * z - w03
+                    m = t if t > m else m
+                    t = w10 * p1[c] + w11 * q1[c] - w12 * z - w13
+                    m = t if t > m else m
+                    t = w20 * p2[c] + w21 * q2[c] - w22 * z - w23
+                    m = t if t > m else m
+                    t = w30 * p3[c] + w31 * q3[c] - w32 * z - w33
+                    m = t if t > m else m
+                    best[c] = m
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _line_heights(heights, far_end, along, across, breadth, start, drift, count, line):
+    """Heights where a straight line crosses each row (or column), infinite off the raster."""
+    for i in range(count):
+        y = start + drift * i
+        line[i] = np.inf
+        if y >= 0.0 and y <= breadth - 1:
+            j = int(y)
+            f = y - j
+            at = far_end + i * along + j * across
+            if f < 1e-9:
+                line[i] = heights[at]
+            elif j + 1 < breadth:
+                line[i] = (1.0 - f) * heights[at] + f * heights[at + across]
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _tangent(place, bulge, top, hint, eye, own):
+    """Index of the hull point that bounds the view from `eye` at bulged height `own`."""
+    k = min(hint, top)
+    best = (bulge[k] - own) / (eye - place[k])
+    moved = False
+    while k > 0:
+        other = (bulge[k - 1] - own) / (eye - place[k - 1])
+        if other < best:
+            break
+        best = other
+        k -= 1
+        moved = True
+    while not moved and k < top:
+        other = (bulge[k + 1] - own) / (eye - place[k + 1])
+        if other <= best:
+            break
+        best = other
+        k += 1
+    return k
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _push(place, bulge, top, x, g):
+    """Put a point on the upper hull's stack; return the stack's new top."""
+    while top > 0 and (bulge[top] - bulge[top - 1]) * (x - place[top]) <= (g - bulge[top]) * (
+        place[top] - place[top - 1]
+    ):
+        top -= 1
+    top += 1
+    place[top] = x
+    bulge[top] = g
+    return top
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _walk_line(line, count, queries, every, skip, step, half_curve, datum, eyes, place, bulge):
+    """Walk one line from its far end; at each query leave (A, B, void seen).
+
+    The horizon of an eye at height z near the query is A - B z: the height and distance of
+    the point that bounds the view, re-seen from there.
+    """
+    top = -1
+    hint = 0
+    own = np.nan
+    void = -1.0
+    query = 0
+    while query < eyes.shape[0] and queries + query * every < 0:
+        query += 1
+    for i in range(queries + (eyes.shape[0] - 1) * every + 1):
+        if i >= skip and i - skip < count:
+            z = line[i - skip]
+            x = (i - skip) * step
+            if z < np.inf:
+                top = _push(place, bulge, top, x, z - x * x * half_curve)
+                hint = min(hint, top)
+        if 0 <= i < count:
+            if line[i] < np.inf:
+                own = line[i]
+            elif line[i] != line[i]:
+                void = i * step
+        if query < eyes.shape[0] and i == queries + query * every:
+            eye = i * step
+            eyes[query, 2] = 1.0 if void >= 0.0 else 0.0
+            if top >= 0 and own == own:
+                hint = _tangent(place, bulge, top, hint, eye, own - eye * eye * half_curve)
+                away = eye - place[hint]
+                height = bulge[hint] + place[hint] * place[hint] * half_curve
+                eyes[query, 0] = (height - datum) / away - away * half_curve
+                eyes[query, 1] = 1.0 / away
+                eyes[query, 2] = 1.0 if void > place[hint] else 0.0
+            query += 1
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def far_field(
+    heights, far_end, along, across, length, breadth, drift, step, half_curve,
+    skip, gap, first_query, first_node, every, datum, rise, fall, across_void,
+):  # fmt: skip
+    """Horizon beyond the near field along every line of one azimuth.
+
+    Each line is walked once from its far end. The upper convex hull of
+    g(x) = z(x) - x^2 / (2 R') is kept on a stack; the tangent from the eye to it is the
+    horizon (after Dozier, Bruno and Downey 1981), curvature and refraction included.
+    Lines stand `gap` cells apart; between them, and between queries, the reader interpolates.
+
+    heights : (cells,) float32, the whole raster; NaN void
+    far_end : int, index of the cell at the far end of the line with across = 0
+    along, across : int, index steps towards the eye and to the side
+    length, breadth : int, cells along and across
+    drift : float, sideways cells a step towards the eye
+    step : float, metres a step; half_curve : 1 / (2 R')
+    skip : int, a point counts once it is that many steps away
+    first_query : int, steps from the far end; may be negative
+    first_node : int, side position of the first node, cells
+    every : int, spacing of queries and nodes
+    rise, fall : (queries, nodes) float32, out: A and B of the horizon A - B z
+    across_void : (queries, nodes) uint8, set to 1 where a void lies between the eye and the
+        point that bounds its view; else left alone
+    """
+    count, nodes = rise.shape
+    last_query = first_query + (count - 1) * every
+    lowest = min(-drift * first_query, -drift * last_query)
+    highest = max(-drift * first_query, -drift * last_query) + (nodes - 1) * every
+    lines = int((highest - lowest) / gap) + 3
+    origin = first_node + lowest
+    line = np.empty(length, np.float64)
+    place = np.empty(length + 1, np.float64)
+    bulge = np.empty(length + 1, np.float64)
+    seen = np.zeros((lines, count, 3), np.float32)
+    for k in range(lines):
+        start = origin + k * gap
+        _line_heights(heights, far_end, along, across, breadth, start, drift, length, line)
+        _walk_line(
+            line, length, first_query, every, skip, step, half_curve, datum, seen[k], place, bulge
+        )
+    for q in range(count):
+        for n in range(nodes):
+            y = (first_node + n * every - drift * (first_query + q * every) - origin) / gap
+            k = min(max(int(y), 0), lines - 2)
+            f = y - k
+            rise[q, n] = (1.0 - f) * seen[k, q, 0] + f * seen[k + 1, q, 0]
+            fall[q, n] = (1.0 - f) * seen[k, q, 1] + f * seen[k + 1, q, 1]
+            if seen[k, q, 2] > 0.0 or seen[k + 1, q, 2] > 0.0:
+                across_void[q, n] = 1
+
+
+@njit(cache=True, nogil=True, error_model="numpy", fastmath=FAST)
+def merge_far(heights, pad, first_row, every, rise, fall, datum, out):
+    """Raise the near horizon to the far one, seen from each cell's own height.
+
+    rise, fall : (azimuths, node rows, node columns) float32, this block's nodes; the first
+        node lies on the block's first cell
+    datum : height that was taken off `heights` less the one taken off in `rise`
+    out : (azimuths, rows, columns) float32, near horizon in, horizon out
+    """
+    azimuths, rows, columns = out.shape
+    upper = np.empty((2, columns + every), np.float32)
+    for a in range(azimuths):
+        for r in range(rows):
+            n = (first_row + r) // every
+            v = np.float32((first_row + r - n * every) / every)
+            for m in range((columns + every - 1) // every):
+                a0 = (1 - v) * rise[a, n, m] + v * rise[a, n + 1, m]
+                a1 = (1 - v) * rise[a, n, m + 1] + v * rise[a, n + 1, m + 1]
+                b0 = (1 - v) * fall[a, n, m] + v * fall[a, n + 1, m]
+                b1 = (1 - v) * fall[a, n, m + 1] + v * fall[a, n + 1, m + 1]
+                for s in range(every):
+                    u = np.float32(s / every)
+                    upper[0, m * every + s] = a0 + u * (a1 - a0)
+                    upper[1, m * every + s] = b0 + u * (b1 - b0)
+            own = heights[first_row + r + pad, pad : pad + columns]
+            best = out[a, r]
+            far = upper[0]
+            drop = upper[1]
+            for c in range(columns):
+                t = far[c] - drop[c] * (own[c] + datum)
+                best[c] = t if t > best[c] else best[c]
