@@ -22,3 +22,8 @@ than the noise of any elevation model in use (judgement, no source)."""
 
 VOID: Final = -9999.0
 """No-data value of every float raster that terrasol writes."""
+
+SURROUNDINGS_SCALE: Final = 1000.0
+"""Standard deviation, m, of the Gaussian mean that says what the terrain around a cell
+receives. The slopes that a valley cell looks at lie some hundred metres to a few
+kilometres away (judgement, no source)."""

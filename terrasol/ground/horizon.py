@@ -111,8 +111,8 @@ class FarHorizon:
     ----------
     rise, fall : ndarray of float32, shape (azimuths, node rows, node columns)
         Node (i, j) lies on cell (i NODE_STEP, j NODE_STEP).
-    across_void : ndarray of uint8, shape (node rows, node columns)
-        1 where some line of sight crosses a void before it ends.
+    across_void : ndarray of uint8, shape (azimuths, node rows, node columns)
+        1 where the line of sight crosses a void before it ends.
     datum : float
         Height [m].
     """
@@ -129,7 +129,7 @@ class FarHorizon:
         return cls(
             np.zeros((azimuths, *nodes), np.float32),
             np.zeros((azimuths, *nodes), np.float32),
-            np.zeros(nodes, np.uint8),
+            np.zeros((azimuths, *nodes), np.uint8),
             float(np.nanmean(elevation.heights)),
         )
 
@@ -206,7 +206,7 @@ def sweep(
             ray = frame.index_direction((top + bottom) / 2, (left + right) / 2, azimuth)
             jacobian = frame.jacobian_at((top + bottom) / 2, (left + right) / 2)
             spans = far.block(top, left, (bottom - top, right - left))
-            layers = (far.rise[azimuth_index], far.fall[azimuth_index], far.across_void)
+            layers = [part[azimuth_index] for part in (far.rise, far.fall, far.across_void)]
             _sweep_zone(elevation.heights, ray, jacobian, refraction, far.datum, spans, layers)
 
 
@@ -245,11 +245,10 @@ def _turned(layer, major, ray):
 
 def horizon_strip(
     padded: NDArray[np.float32],
-    datum: float,
-    strip: tuple[int, int],
+    first_row: int,
     steps: tuple[NDArray[np.int64], NDArray[np.float32]],
-    far: FarHorizon,
-    nodes: tuple[slice, slice],
+    far: tuple[NDArray[np.float32], NDArray[np.float32]],
+    lift: float,
     out: NDArray[np.float32],
 ) -> None:
     """Tangent of the horizon, not below 0, for some rows of a block.
@@ -257,21 +256,17 @@ def horizon_strip(
     Parameters
     ----------
     padded : ndarray of float32
-        The block's heights less `datum`, with PAD cells around [m].
-    datum : float
-        Height taken off [m].
-    strip : tuple of int
-        First row in the block, a multiple of NODE_STEP, and number of rows.
+        The block's heights, with PAD cells around [m].
+    first_row : int
+        First row in the block.
     steps : tuple of ndarray
         From `near_steps`.
-    far : FarHorizon
-        Swept.
-    nodes : tuple of slice
-        From `FarHorizon.block`.
+    far : tuple of ndarray of float32
+        Rise and fall on the block's nodes.
+    lift : float
+        What to add to `padded` to get heights above the datum of `far` [m].
     out : ndarray of float32, shape (azimuths, rows, columns)
         Filled.
     """
-    near_field(padded, PAD, strip[0], *steps, out)
-    rise = np.ascontiguousarray(far.rise[:, nodes[0], nodes[1]])
-    fall = np.ascontiguousarray(far.fall[:, nodes[0], nodes[1]])
-    merge_far(padded, PAD, strip[0], NODE_STEP, rise, fall, datum - far.datum, out)
+    near_field(padded, PAD, first_row, *steps, out)
+    merge_far(padded, PAD, first_row, NODE_STEP, *far, lift, out)

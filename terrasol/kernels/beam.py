@@ -39,9 +39,7 @@ def _add_rows(typingctx, out, row, table, lower, upper, weights):
         for place, own in ((args[3], parts[:4]), (args[4], parts[4:])):
             start = at(2, place, 2 * LANES)
             for i, part in enumerate(own):
-                value = builder.load(
-                    builder.gep(start, [ir.Constant(ir.IntType(64), i)]), align=4
-                )
+                value = builder.load(builder.gep(start, [ir.Constant(ir.IntType(64), i)]), align=4)
                 one = builder.insert_element(undefined, part, ir.Constant(ir.IntType(32), 0))
                 spread = builder.shuffle_vector(one, undefined, first)
                 product = builder.fmul(spread, value, flags=("contract",))

@@ -176,8 +176,8 @@ def far_field(
     first_node : int, side position of the first node, cells
     every : int, spacing of queries and nodes
     rise, fall : (queries, nodes) float32, out: A and B of the horizon A - B z
-    across_void : (queries, nodes) uint8, set to 1 where a void lies between the eye and the
-        point that bounds its view; else left alone
+    across_void : (queries, nodes) uint8, out: 1 where a void lies between the eye and the
+        point that bounds its view
     """
     count, nodes = rise.shape
     last_query = first_query + (count - 1) * every
@@ -202,8 +202,7 @@ def far_field(
             f = y - k
             rise[q, n] = (1.0 - f) * seen[k, q, 0] + f * seen[k + 1, q, 0]
             fall[q, n] = (1.0 - f) * seen[k, q, 1] + f * seen[k + 1, q, 1]
-            if seen[k, q, 2] > 0.0 or seen[k + 1, q, 2] > 0.0:
-                across_void[q, n] = 1
+            across_void[q, n] = seen[k, q, 2] > 0.0 or seen[k + 1, q, 2] > 0.0
 
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=FAST)

@@ -1,0 +1,84 @@
+"""terrasol: how much sun a piece of ground gets.
+
+The names below are the public face; they are loaded on first use, so that importing the
+package costs nothing.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from importlib.metadata import PackageNotFoundError, version
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from terrasol.engine.datasets import irradiation, terrain
+    from terrasol.errors import (
+        InputError,
+        OutputError,
+        SettingError,
+        TerrasolError,
+        UnfinishedError,
+    )
+    from terrasol.files.rasters import read_elevation
+    from terrasol.ground.elevation import Elevation
+    from terrasol.sky.clear import Air, clear_sky, linke_climatology
+    from terrasol.sky.diffuse import split_diffuse
+    from terrasol.sky.period import Period, parse_period
+    from terrasol.sky.sun import sun_path, sun_series
+
+_HOMES = {
+    "Air": "terrasol.sky.clear",
+    "Elevation": "terrasol.ground.elevation",
+    "InputError": "terrasol.errors",
+    "OutputError": "terrasol.errors",
+    "Period": "terrasol.sky.period",
+    "SettingError": "terrasol.errors",
+    "TerrasolError": "terrasol.errors",
+    "UnfinishedError": "terrasol.errors",
+    "clear_sky": "terrasol.sky.clear",
+    "irradiation": "terrasol.engine.datasets",
+    "linke_climatology": "terrasol.sky.clear",
+    "parse_period": "terrasol.sky.period",
+    "read_elevation": "terrasol.files.rasters",
+    "split_diffuse": "terrasol.sky.diffuse",
+    "sun_path": "terrasol.sky.sun",
+    "sun_series": "terrasol.sky.sun",
+    "terrain": "terrasol.engine.datasets",
+}
+
+try:
+    __version__ = version("terrasol")
+except PackageNotFoundError:  # a bare checkout
+    __version__ = "0+unknown"
+
+__all__ = [
+    "Air",
+    "Elevation",
+    "InputError",
+    "OutputError",
+    "Period",
+    "SettingError",
+    "TerrasolError",
+    "UnfinishedError",
+    "clear_sky",
+    "irradiation",
+    "linke_climatology",
+    "parse_period",
+    "read_elevation",
+    "split_diffuse",
+    "sun_path",
+    "sun_series",
+    "terrain",
+]
+
+
+def __getattr__(name: str) -> Any:
+    """Load a public name from its home."""
+    if name in _HOMES:
+        return getattr(import_module(_HOMES[name]), name)
+    raise AttributeError(f"module 'terrasol' has no attribute '{name}'")
+
+
+def __dir__() -> list[str]:
+    """Public names."""
+    return __all__

@@ -1,0 +1,210 @@
+"""The jobs from Python: elevation in, labelled arrays out."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import Any
+
+import numpy as np
+import xarray as xr
+from numpy.typing import NDArray
+
+from terrasol.constants import REFRACTION_COEFFICIENT
+from terrasol.engine.job import Plan, plan_irradiation, plan_terrain
+from terrasol.engine.outputs import month_labels
+from terrasol.files.layers import Layer
+from terrasol.ground.elevation import Elevation
+from terrasol.ground.frame import make_frame
+from terrasol.light.irradiation import LightSettings, twelve
+from terrasol.sky.clear import Air, linke_climatology
+from terrasol.sky.period import Period, parse_period
+
+
+class ArraySink:
+    """A sink that keeps whole arrays."""
+
+    def __init__(self, shape: tuple[int, int]) -> None:
+        self.shape = shape
+        self.layers: dict[str, Layer] = {}
+        self.arrays: dict[str, NDArray[Any]] = {}
+
+    def open(self, layer: Layer) -> None:
+        """Make room."""
+        self.layers[layer.name] = layer
+        self.arrays[layer.name] = np.zeros((len(layer.bands), *self.shape), layer.dtype)
+
+    def write(self, name: str, row: int, column: int, values: NDArray[Any]) -> None:
+        """Put a block in its place."""
+        rows, columns = values.shape[1:]
+        self.arrays[name][:, row : row + rows, column : column + columns] = values
+
+
+def terrain(
+    elevation: Elevation,
+    azimuths: int = 64,
+    *,
+    horizon: bool = False,
+    refraction: float = REFRACTION_COEFFICIENT,
+    threads: int | None = None,
+) -> xr.Dataset:
+    """Slope, aspect, sky view and, if asked, the horizon.
+
+    Parameters
+    ----------
+    elevation : Elevation
+        The ground.
+    azimuths : int
+        Number of horizon azimuths, a multiple of 4 from 8 to 720.
+    horizon : bool
+        Keep the horizon.
+    refraction : float
+        Coefficient k of terrestrial refraction.
+    threads : int, optional
+        Default: all cores that may be used.
+
+    Returns
+    -------
+    xarray.Dataset
+        ``slope``, ``aspect`` [degree], ``sky_view`` [1], each (y, x); ``horizon`` [degree]
+        (azimuth, y, x). NaN where void; aspect also where flat.
+
+    Raises
+    ------
+    SettingError
+        A value out of its range.
+    InputError
+        A raster that cannot be placed on the Earth.
+
+    References
+    ----------
+    Horn (1981), doi:10.1109/PROC.1981.11918. Dozier and Frew (1990),
+    doi:10.1109/36.58986. Dozier, Bruno and Downey (1981),
+    doi:10.1016/0098-3004(81)90026-2.
+
+    Examples
+    --------
+    >>> import numpy as np
+    >>> ramp = np.outer(np.arange(40.0) * -30.0, np.ones(40))
+    >>> hill = Elevation.from_array(ramp, (30, 0, 5e5, 0, -30, 5.2e6), "EPSG:32632")
+    >>> result = terrain(hill, azimuths=16)
+    >>> round(float(result.slope[20, 20]), 1), round(float(result.aspect[20, 20]), 1)
+    (45.0, 180.0)
+    """
+    plan = plan_terrain(elevation, azimuths, horizon=horizon, refraction=refraction)
+    return _dataset(plan, threads)
+
+
+def irradiation(
+    elevation: Elevation,
+    period: str | Period | None = None,
+    air: Air | None = None,
+    *,
+    albedo: float | Sequence[float] = 0.2,
+    diffuse: str = "perez",
+    azimuths: int = 64,
+    step_seconds: float = 60.0,
+    unit: str = "MJ m-2",
+    basis: str = "slope",
+    monthly_parts: bool = False,
+    refraction: float = REFRACTION_COEFFICIENT,
+    threads: int | None = None,
+) -> xr.Dataset:
+    """Potential (clear-sky) irradiation of every cell, with terrain shade and reflection.
+
+    Parameters
+    ----------
+    elevation : Elevation
+        The ground.
+    period : str or Period, optional
+        See `parse_period`; a typical year by default.
+    air : Air, optional
+        The clear air; by default that of Ineichen and Perez with the turbidity climatology
+        at the raster's centre.
+    albedo : float or 12 floats
+        Of the ground.
+    diffuse : {'perez', 'hay-davies', 'isotropic'}
+        Model that parts the diffuse light.
+    azimuths : int
+        Number of horizon azimuths, a multiple of 4 from 8 to 720.
+    step_seconds : float
+        Time step of the sun.
+    unit : {'MJ m-2', 'kW h m-2'}
+        Unit of irradiation.
+    basis : {'slope', 'map'}
+        Per area of slope, or per area of map.
+    monthly_parts : bool
+        Also beam, diffuse and reflected of each month.
+    refraction : float
+        Coefficient k of terrestrial refraction.
+    threads : int, optional
+        Default: all cores that may be used.
+
+    Returns
+    -------
+    xarray.Dataset
+        What `terrain` gives, and ``irradiation_year`` (or ``irradiation_period``)
+        (part, y, x), ``irradiation_months`` (month, y, x), with `monthly_parts` also
+        ``beam_months``, ``diffuse_months`` and ``reflected_months``.
+
+    Raises
+    ------
+    SettingError
+        A value out of its range.
+    InputError
+        A raster that cannot be placed on the Earth.
+
+    References
+    ----------
+    Ineichen and Perez (2002), doi:10.1016/S0038-092X(02)00045-2. Perez et al. (1990),
+    doi:10.1016/0038-092X(90)90055-H. docs/method.md has every formula.
+    """
+    if not isinstance(period, Period):
+        period = parse_period(period)
+    if air is None:
+        frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
+        air = Air.ineichen(linke_climatology(*frame.centre))
+    settings = LightSettings(
+        period,
+        air,
+        twelve(albedo, "albedo"),
+        diffuse,
+        azimuths,
+        step_seconds,
+        unit,
+        basis,
+        monthly_parts,
+        refraction,
+    )
+    return _dataset(plan_irradiation(elevation, settings), threads)
+
+
+def _dataset(plan: Plan, threads: int | None) -> xr.Dataset:
+    """Run a plan into memory and label what comes out."""
+    sink = ArraySink(plan.elevation.shape)
+    summary = plan.run(sink, threads)
+    data = xr.Dataset(attrs={"warnings": summary.warnings, "crs_wkt": plan.elevation.crs.to_wkt()})
+    for name, layer in sink.layers.items():
+        data[name] = _labelled(plan, layer, sink.arrays[name])
+    a, b, c, d, e, f = plan.elevation.transform
+    if b == 0.0 and d == 0.0:
+        rows, columns = plan.elevation.shape
+        data = data.assign_coords(
+            x=c + a * (np.arange(columns) + 0.5), y=f + e * (np.arange(rows) + 0.5)
+        )
+    return data
+
+
+def _labelled(plan: Plan, layer: Layer, values: NDArray[Any]) -> xr.DataArray:
+    """One layer as a DataArray with names, unit and coordinates."""
+    attrs = {"units": layer.unit, "long_name": layer.long_name}
+    if layer.standard_name:
+        attrs["standard_name"] = layer.standard_name
+    if layer.name == "horizon":
+        azimuth = 360.0 * np.arange(len(layer.bands)) / len(layer.bands)
+        return xr.DataArray(values, {"azimuth": azimuth}, ("azimuth", "y", "x"), attrs=attrs)
+    if layer.name.endswith("_months") and plan.settings is not None:
+        months = list(month_labels(plan.settings))
+        return xr.DataArray(values, {"month": months}, ("month", "y", "x"), attrs=attrs)
+    if layer.name.startswith("irradiation"):
+        return xr.DataArray(values, {"part": list(layer.bands)}, ("part", "y", "x"), attrs=attrs)
+    return xr.DataArray(values[0], dims=("y", "x"), attrs=attrs)

@@ -1,0 +1,123 @@
+"""One block of ground: its heights, normals and horizons."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from terrasol.engine.plan import Block
+from terrasol.ground.elevation import Elevation
+from terrasol.ground.frame import Frame
+from terrasol.ground.horizon import PAD, FarHorizon, horizon_strip, near_steps
+from terrasol.ground.surface import block_normals
+from terrasol.light.irradiation import Strip
+
+STRIP_ROWS = 16
+"""Rows worked on at once: the horizons of 64 azimuths then take 1 MB, within a core's cache."""
+
+
+@dataclass(frozen=True)
+class Ground:
+    """A whole elevation model with its frame and the far horizon swept.
+
+    Parameters
+    ----------
+    elevation : Elevation
+        Heights.
+    frame : Frame
+        Where they lie.
+    far : FarHorizon
+        Swept for every azimuth.
+    refraction : float
+        Coefficient k.
+    """
+
+    elevation: Elevation
+    frame: Frame
+    far: FarHorizon
+    refraction: float
+
+    @property
+    def azimuths(self) -> int:
+        """Number of azimuths."""
+        return int(self.far.rise.shape[0])
+
+
+class BlockGround:
+    """The ground of one block, ready to be taken strip by strip."""
+
+    def __init__(self, ground: Ground, block: Block) -> None:
+        self.ground = ground
+        self.block = block
+        heights = _padded(ground.elevation.heights, block)
+        core = heights[PAD:-PAD, PAD:-PAD]
+        self.empty = bool(np.isnan(core).all())
+        self.datum = 0.0 if self.empty else float(np.nanmean(core, dtype=np.float64))
+        self.padded = (heights - np.float32(self.datum)).astype(np.float32)
+        self.datum = float(np.float32(self.datum))
+        self.normal = block_normals(self.padded, PAD, ground.frame, block.row, block.column)
+
+    @property
+    def middle(self) -> tuple[float, float]:
+        """Row and column of the block's middle in the raster."""
+        b = self.block
+        return b.row + (b.rows - 1) / 2, b.column + (b.columns - 1) / 2
+
+    def latitude(self, row: int) -> tuple[float, float, float]:
+        """Latitude of the first cell of a row of the block, and its change a row, a column."""
+        b, frame = self.block, self.ground.frame
+        first = frame.latitude_at(b.row, b.column)
+        by_row = (frame.latitude_at(b.row + b.rows, b.column) - first) / b.rows
+        by_column = (frame.latitude_at(b.row, b.column + b.columns) - first) / b.columns
+        return first + row * by_row, by_row, by_column
+
+    def strips(self, wanted: NDArray[np.int64] | None = None) -> Iterator[tuple[int, Strip]]:
+        """Each strip's first row in the block, and the strip.
+
+        With `wanted`, only those rows, one a strip.
+        """
+        ground, block = self.ground, self.block
+        steps = near_steps(ground.frame, *self.middle, ground.azimuths, ground.refraction)
+        nodes = ground.far.block(block.row, block.column, (block.rows, block.columns))
+        far = (
+            np.ascontiguousarray(ground.far.rise[:, nodes[0], nodes[1]]),
+            np.ascontiguousarray(ground.far.fall[:, nodes[0], nodes[1]]),
+        )
+        lift = self.datum - ground.far.datum
+        if wanted is None:
+            firsts = np.arange(0, block.rows, STRIP_ROWS)
+            sizes = np.minimum(STRIP_ROWS, block.rows - firsts)
+        else:
+            firsts, sizes = wanted, np.ones_like(wanted)
+        buffer = np.empty((ground.azimuths, STRIP_ROWS, block.columns), np.float32)
+        for first, rows in zip(firsts.tolist(), sizes.tolist(), strict=True):
+            horizon = buffer
+            if rows != STRIP_ROWS:
+                horizon = np.empty((ground.azimuths, rows, block.columns), np.float32)
+            horizon_strip(self.padded, first, steps, far, lift, horizon)
+            heights = self.padded[PAD + first : PAD + first + rows, PAD:-PAD]
+            yield (
+                first,
+                Strip(
+                    horizon,
+                    np.ascontiguousarray(self.normal[:, first : first + rows]),
+                    np.ascontiguousarray(heights),
+                    self.datum,
+                    self.latitude(first),
+                ),
+            )
+
+
+def _padded(heights: NDArray[np.float32], block: Block) -> NDArray[np.float32]:
+    """A block's heights with PAD cells around, NaN beyond the raster."""
+    out = np.full((block.rows + 2 * PAD, block.columns + 2 * PAD), np.nan, np.float32)
+    top, left = block.row - PAD, block.column - PAD
+    rows = slice(max(top, 0), min(block.row + block.rows + PAD, heights.shape[0]))
+    columns = slice(max(left, 0), min(block.column + block.columns + PAD, heights.shape[1]))
+    out[rows.start - top : rows.stop - top, columns.start - left : columns.stop - left] = heights[
+        rows, columns
+    ]
+    return out

@@ -1,0 +1,499 @@
+"""The two whole-raster jobs, terrain and irradiation, as a plan that can be run."""
+
+from __future__ import annotations
+
+import time
+import warnings
+from collections.abc import Callable
+from dataclasses import dataclass, field
+from functools import partial
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.ndimage import gaussian_filter
+
+from terrasol.constants import REFRACTION_COEFFICIENT, SURROUNDINGS_SCALE
+from terrasol.engine import outputs
+from terrasol.engine.ground_work import BlockGround, Ground
+from terrasol.engine.plan import (
+    Block,
+    Progress,
+    blocks_of,
+    carry_out,
+    check_threads,
+    default_threads,
+)
+from terrasol.files.layers import Layer, Sink
+from terrasol.ground.elevation import Elevation
+from terrasol.ground.frame import Frame, make_frame
+from terrasol.ground.horizon import NODE_STEP, FarHorizon, sweep
+from terrasol.ground.surface import slope_and_aspect
+from terrasol.light.irradiation import (
+    LightSettings,
+    SkyTables,
+    Strip,
+    Surroundings,
+    check_azimuths,
+    check_refraction,
+    strip_light,
+)
+
+SECONDS_A_CELL_AND_AZIMUTH = 25e-9
+"""What a core needs, for the estimate only; measured in docs/performance.md."""
+
+Arrays = dict[str, NDArray[Any]]
+
+
+@dataclass
+class Summary:
+    """What came out, in numbers.
+
+    Parameters
+    ----------
+    numbers : dict
+        Means, counts and ranges, with the unit in the name's end or beside it.
+    warnings : list of str
+        What a careful reader should know.
+    seconds : dict
+        Wall-clock time by stage.
+    """
+
+    numbers: dict[str, Any] = field(default_factory=dict)
+    warnings: list[str] = field(default_factory=list)
+    seconds: dict[str, float] = field(default_factory=dict)
+
+
+@dataclass
+class Plan:
+    """A job on one raster: what it will write, what it will cost, and how to run it.
+
+    Parameters
+    ----------
+    elevation : Elevation
+        The ground.
+    frame : Frame
+        Its place on the Earth.
+    azimuths : int
+        Horizon azimuths.
+    refraction : float
+        Coefficient k.
+    settings : LightSettings, optional
+        The light; None for terrain alone.
+    layers : tuple of Layer
+        What is written.
+    """
+
+    elevation: Elevation
+    frame: Frame
+    azimuths: int
+    refraction: float
+    settings: LightSettings | None
+    layers: tuple[Layer, ...]
+
+    @property
+    def cells(self) -> int:
+        """Cells of the raster."""
+        return int(self.elevation.heights.size)
+
+    @property
+    def memory_bytes(self) -> int:
+        """Peak memory to expect, the interpreter included."""
+        nodes = self.cells / NODE_STEP**2
+        far = 9.0 * nodes * self.azimuths
+        table = 3e6 * self.azimuths if self.settings else 0.0
+        block = 4.0 * 65536 * (12 + sum(len(layer.bands) for layer in self.layers))
+        return int(350e6 + 5.0 * self.cells + far + table + 8 * block)
+
+    @property
+    def disk_bytes(self) -> int:
+        """Disk to expect while running: working copies and finished files together."""
+        size = sum(len(layer.bands) * np.dtype(layer.dtype).itemsize for layer in self.layers)
+        return int(2.0 * size * self.cells)
+
+    def seconds(self, threads: int) -> float:
+        """Time to expect."""
+        work = self.cells * self.azimuths * SECONDS_A_CELL_AND_AZIMUTH / max(threads, 1)
+        return 3.0 + work + 15e-9 * self.cells * sum(len(layer.bands) for layer in self.layers)
+
+    def run(
+        self, sink: Sink, threads: int | None = None, progress: Progress | None = None
+    ) -> Summary:
+        """Do the work.
+
+        Parameters
+        ----------
+        sink : Sink
+            Takes finished blocks; called from this thread only.
+        threads : int, optional
+            Default: as many as there are cores to use.
+        progress : callable, optional
+            Told the share done and the stage.
+
+        Returns
+        -------
+        Summary
+
+        Raises
+        ------
+        SettingError
+            Fewer than one thread.
+        OutputError
+            From the sink.
+        """
+        threads = default_threads() if threads is None else threads
+        check_threads(threads)
+        return _Run(self, threads, progress or (lambda share, stage: None)).do(sink)
+
+
+def plan_terrain(
+    elevation: Elevation,
+    azimuths: int = 64,
+    *,
+    horizon: bool = False,
+    refraction: float = REFRACTION_COEFFICIENT,
+) -> Plan:
+    """Plan slope, aspect and sky view, and the horizon if asked.
+
+    Parameters
+    ----------
+    elevation : Elevation
+        The ground.
+    azimuths : int
+        Number of azimuths, a multiple of 4 from 8 to 720.
+    horizon : bool
+        Keep the horizon of every azimuth.
+    refraction : float
+        Coefficient k of terrestrial refraction.
+
+    Returns
+    -------
+    Plan
+
+    Raises
+    ------
+    SettingError
+        A value out of its range.
+    InputError
+        A raster that cannot be placed on the Earth.
+    """
+    check_azimuths(azimuths)
+    check_refraction(refraction)
+    layers = [*_terrain_layers(elevation)]
+    if horizon:
+        layers.append(outputs.horizon_layer(azimuths))
+    frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
+    return Plan(elevation, frame, azimuths, refraction, None, tuple(layers))
+
+
+def plan_irradiation(elevation: Elevation, settings: LightSettings) -> Plan:
+    """Plan slope, aspect, sky view and irradiation.
+
+    Parameters
+    ----------
+    elevation : Elevation
+        The ground.
+    settings : LightSettings
+        The light.
+
+    Returns
+    -------
+    Plan
+
+    Raises
+    ------
+    InputError
+        A raster that cannot be placed on the Earth.
+    """
+    layers = (*_terrain_layers(elevation), *outputs.light_layers(settings))
+    frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
+    return Plan(elevation, frame, settings.azimuths, settings.refraction, settings, layers)
+
+
+def _terrain_layers(elevation: Elevation) -> tuple[Layer, ...]:
+    status = () if elevation.filled is None else (outputs.STATUS,)
+    return (outputs.SLOPE, outputs.ASPECT, outputs.SKY_VIEW, *status)
+
+
+class _Run:
+    """One run of a plan: its stages in order."""
+
+    def __init__(self, plan: Plan, threads: int, progress: Progress) -> None:
+        self.plan = plan
+        self.threads = threads
+        self.progress = progress
+        self.summary = Summary(warnings=list(plan.elevation.warnings))
+        self.done = 0.0
+
+    def do(self, sink: Sink) -> Summary:
+        """All stages."""
+        plan = self.plan
+        for layer in plan.layers:
+            sink.open(layer)
+        tables = self._tables() if plan.settings else None
+        ground = self._ground()
+        surroundings = self._surroundings(ground, tables) if tables else None
+        names = [layer.name for layer in plan.layers]
+        work = partial(_block_arrays, ground, names, tables, surroundings)
+        totals = Totals()
+        blocks = blocks_of(plan.elevation.shape)
+        tasks = [partial(_with_block, work, block) for block in blocks]
+        for block, arrays in self._stage("blocks", tasks, 0.65):
+            totals.add(arrays)
+            for name, values in arrays.items():
+                sink.write(name, block.row, block.column, values)
+        self._conclude(ground, totals, tables)
+        return self.summary
+
+    def _stage(self, name: str, tasks: list[Callable[[], Any]], share: float):
+        """Carry out tasks, telling progress and keeping the time."""
+        start = time.perf_counter()
+        begin = self.done
+        for count, result in enumerate(carry_out(tasks, self.threads), 1):
+            self.done = begin + share * count / len(tasks)
+            self.progress(self.done, name)
+            yield result
+        self.summary.seconds[name] = round(time.perf_counter() - start, 3)
+
+    def _tables(self) -> SkyTables:
+        """Sun tables at the knots that the raster needs."""
+        plan = self.plan
+        assert plan.settings is not None
+        heights = plan.elevation.heights
+        tables = SkyTables.over(
+            plan.settings,
+            plan.frame.centre[1],
+            (float(plan.frame.latitude.min()), float(plan.frame.latitude.max())),
+            (float(np.nanmin(heights)), float(np.nanmax(heights))),
+        )
+        tasks = [partial(tables.fill, i) for i in range(tables.latitudes.size)]
+        for _ in self._stage("sun tables", tasks, 0.08):
+            pass
+        return tables
+
+    def _ground(self) -> Ground:
+        """The far horizon, swept azimuth by azimuth."""
+        plan = self.plan
+        far = FarHorizon.empty(plan.elevation, plan.azimuths)
+        tasks = [
+            partial(sweep, plan.elevation, plan.frame, a, plan.refraction, far)
+            for a in range(plan.azimuths)
+        ]
+        for _ in self._stage("far horizon", tasks, 0.2):
+            pass
+        return Ground(plan.elevation, plan.frame, far, plan.refraction)
+
+    def _surroundings(self, ground: Ground, tables: SkyTables) -> Surroundings:
+        """Mean of what the terrain around each place receives."""
+        months = len(tables.settings.period.months)
+        if not any(tables.settings.month_albedo):
+            return Surroundings.none(months)
+        cell = max(ground.frame.cell_size)
+        stride = int(np.clip(SURROUNDINGS_SCALE / (2.0 * cell), 1, 8))
+        shape = tuple(-(-size // stride) for size in ground.elevation.shape)
+        samples = np.full((months + 1, *shape), np.nan, np.float32)
+        tasks = [
+            partial(_sample_block, ground, tables, stride, block, samples)
+            for block in blocks_of(ground.elevation.shape)
+        ]
+        for _ in self._stage("light of the terrain around", tasks, 0.07):
+            pass
+        sigma = [SURROUNDINGS_SCALE / (stride * size) for size in ground.frame.cell_size[::-1]]
+        return Surroundings(_spread(samples, sigma, tables.settings.month_albedo), stride)
+
+    def _conclude(self, ground: Ground, totals: Totals, tables: SkyTables | None) -> None:
+        """Put numbers and warnings into the summary."""
+        summary, heights = self.summary, ground.elevation.heights
+        known = np.isfinite(heights)
+        summary.numbers = {
+            "cells": int(heights.size),
+            "void_cells": int(heights.size - known.sum()),
+            "cells_looking_across_void": _across_void(ground, known),
+            **totals.means(self.plan),
+        }
+        if tables is not None:
+            summary.numbers["level_ground"] = _level_ground(ground, tables)
+        across = summary.numbers["cells_looking_across_void"]
+        if across:
+            summary.warnings.append(
+                f"the horizon of up to {across} cells looks across a void, where unknown ground"
+                " could hide the sun: fill small voids with --fill-voids, or give a complete model"
+            )
+
+
+def _with_block(work: Callable[[Block], Arrays], block: Block) -> tuple[Block, Arrays]:
+    return block, work(block)
+
+
+def _block_arrays(
+    ground: Ground,
+    names: list[str],
+    tables: SkyTables | None,
+    surroundings: Surroundings | None,
+    block: Block,
+) -> Arrays:
+    """Everything that is written of one block, by layer name."""
+    piece = BlockGround(ground, block)
+    slope, aspect = slope_and_aspect(piece.normal)
+    arrays: Arrays = {"slope": slope[None], "aspect": aspect[None]}
+    gathered: dict[str, list[NDArray[np.float32]]] = {
+        name: [] for name in names if name not in ("slope", "aspect", "status")
+    }
+    middle = ground.frame.latitude_at(*piece.middle)
+    for first, strip in piece.strips():
+        sky = strip.sky()
+        gathered["sky_view"].append(sky[0][None])
+        if "horizon" in gathered:
+            degrees = np.degrees(np.arctan(strip.horizon))
+            gathered["horizon"].append(np.where(np.isnan(strip.normal[2]), np.nan, degrees))
+        if tables is not None and surroundings is not None:
+            place = block.row + first, block.column
+            light = strip_light(strip, sky, tables, middle, surroundings, place)
+            whole = next(n for n in names if n in ("irradiation_year", "irradiation_period"))
+            gathered[whole].append(light.year)
+            gathered["irradiation_months"].append(light.months)
+            for part, values in zip(
+                ("beam", "diffuse", "reflected"), light.month_parts, strict=True
+            ):
+                if f"{part}_months" in gathered:
+                    gathered[f"{part}_months"].append(values)
+    for name, rows in gathered.items():
+        arrays[name] = np.concatenate(rows, axis=1)
+    if "status" in names:
+        arrays["status"] = _status(ground.elevation, block)[None]
+    return arrays
+
+
+def _status(elevation: Elevation, block: Block) -> NDArray[np.uint8]:
+    window = np.s_[block.row : block.row + block.rows, block.column : block.column + block.columns]
+    assert elevation.filled is not None
+    status = elevation.filled[window].astype(np.uint8)
+    status[np.isnan(elevation.heights[window])] = 2
+    return status
+
+
+def _sample_block(
+    ground: Ground,
+    tables: SkyTables,
+    stride: int,
+    block: Block,
+    samples: NDArray[np.float32],
+) -> None:
+    """What every `stride`-th cell of every `stride`-th row receives from the sky itself."""
+    piece = BlockGround(ground, block)
+    middle = ground.frame.latitude_at(*piece.middle)
+    offset = stride // 2
+    rows = np.arange((offset - block.row) % stride, block.rows, stride)
+    columns = slice((offset - block.column) % stride, None, stride)
+    months = len(tables.settings.period.months)
+    for first, strip in piece.strips(rows):
+        thin = Strip(
+            np.ascontiguousarray(strip.horizon[:, :, columns]),
+            np.ascontiguousarray(strip.normal[:, :, columns]),
+            np.ascontiguousarray(strip.heights[:, columns]),
+            strip.datum,
+            (
+                strip.latitude[0] + columns.start * strip.latitude[2],
+                strip.latitude[1],
+                strip.latitude[2] * stride,
+            ),
+        )
+        if thin.heights.size == 0:
+            continue
+        view, band = thin.sky()
+        table, sums = thin.direct(tables, middle)
+        height = thin.heights[0] + thin.datum
+        row = (block.row + first) // stride
+        left = (block.column + columns.start) // stride
+        target = samples[:, row, left : left + view.shape[1]]
+        for m in range(months):
+            direct = sums[m // sums.shape[2], :, m % sums.shape[2]]
+            even = np.interp(height, table.heights, table.isotropic[:, m]) * view[0]
+            even += np.interp(height, table.heights, table.band[:, m]) * band[0]
+            target[m] = direct + even
+        target[months] = 1.0 - view[0]
+        target[:, np.isnan(view[0])] = np.nan
+
+
+def _spread(
+    samples: NDArray[np.float32], sigma: list[float], albedo: NDArray[np.float64]
+) -> NDArray[np.float32]:
+    """Gaussian mean of samples around each node, and the series of bounces between slopes.
+
+    The terrain around sends back albedo times all that it gets, part of which is again
+    reflected light: received = from the sky / (1 - albedo x mean terrain view).
+    """
+    known = np.isfinite(samples[-1])
+    weight = gaussian_filter(known.astype(np.float64), sigma, mode="constant")
+    weight = np.where(weight > 1e-12, weight, np.inf)
+    mean = np.empty_like(samples)
+    for i, layer in enumerate(samples):
+        filled = np.where(known, layer, 0.0).astype(np.float64)
+        mean[i] = gaussian_filter(filled, sigma, mode="constant") / weight
+    received = mean[:-1] / (1.0 - albedo[:, None, None] * mean[-1])
+    return np.ascontiguousarray(received, np.float32)
+
+
+def _across_void(ground: Ground, known: NDArray[np.bool_]) -> int:
+    """Cells with a line of sight that crosses a void, counted by the nearest node."""
+    nodes = ground.far.across_void.any(axis=0)
+    if not nodes.any():
+        return 0
+    rows = np.arange(known.shape[0]) // NODE_STEP
+    columns = np.arange(known.shape[1]) // NODE_STEP
+    return int(sum((nodes[row][columns] & known[i]).sum() for i, row in enumerate(rows)))
+
+
+def _level_ground(ground: Ground, tables: SkyTables) -> float:
+    """Irradiation of open level ground at the raster's middle and mean height."""
+    from terrasol.light.irradiation import UNITS
+
+    table, _, _ = tables.at(ground.frame.centre[0])
+    value = np.interp(ground.far.datum, table.heights, table.level.sum(axis=1))
+    return round(float(value) * UNITS[tables.settings.unit], 2)
+
+
+class Totals:
+    """Running count, sum and range of each band."""
+
+    def __init__(self) -> None:
+        self.bands: dict[tuple[str, int], list[float]] = {}
+
+    def add(self, arrays: Arrays) -> None:
+        """Take in a block."""
+        for name, values in arrays.items():
+            if name in ("aspect", "horizon", "status"):
+                continue
+            for band, plane in enumerate(values):
+                with warnings.catch_warnings():
+                    warnings.simplefilter("ignore", RuntimeWarning)  # an all-void block
+                    low, high = float(np.nanmin(plane)), float(np.nanmax(plane))
+                if np.isnan(low):
+                    continue
+                known = np.isfinite(plane)
+                count, total = float(known.sum()), float(np.nansum(plane, dtype=np.float64))
+                old = self.bands.setdefault((name, band), [0.0, 0.0, np.inf, -np.inf])
+                self.bands[name, band] = [
+                    old[0] + count,
+                    old[1] + total,
+                    min(old[2], low),
+                    max(old[3], high),
+                ]
+
+    def means(self, plan: Plan) -> dict[str, Any]:
+        """Mean, least and greatest of every band, by layer."""
+        found: dict[str, Any] = {}
+        for layer in plan.layers:
+            rows = {
+                label: {
+                    "mean": round(total / count, 4),
+                    "least": round(low, 4),
+                    "greatest": round(high, 4),
+                }
+                for band, label in enumerate(layer.bands)
+                if (layer.name, band) in self.bands
+                for count, total, low, high in [self.bands[layer.name, band]]
+            }
+            if rows:
+                found[layer.name] = {"unit": layer.unit, **rows}
+        return found

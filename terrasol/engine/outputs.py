@@ -1,0 +1,101 @@
+"""What each job leaves behind: layers with their names and units."""
+
+from __future__ import annotations
+
+from terrasol.files.layers import Layer
+from terrasol.light.irradiation import LightSettings
+
+MONTH_NAMES = (
+    "January", "February", "March", "April", "May", "June", "July", "August", "September",
+    "October", "November", "December",
+)  # fmt: skip
+
+SLOPE = Layer(
+    "slope", ("slope",), "degree", "slope of the ground from the level", "ground_slope_angle"
+)
+ASPECT = Layer(
+    "aspect",
+    ("aspect",),
+    "degree",
+    "direction the slope faces, downslope, clockwise from true north; void on flat ground",
+    "ground_slope_direction",
+    resolution=2.0**-7,
+)
+SKY_VIEW = Layer(
+    "sky_view",
+    ("sky-view factor",),
+    "1",
+    "share of an even sky's light that reaches the slope, terrain shade and own slope counted",
+    resolution=2.0**-14,
+)
+STATUS = Layer(
+    "status",
+    ("status",),
+    "1",
+    "0 height as read, 1 height filled by interpolation, 2 void",
+    dtype="uint8",
+)
+
+
+def horizon_layer(azimuths: int) -> Layer:
+    """The horizon, one band an azimuth."""
+    bands = tuple(f"horizon towards {360.0 * a / azimuths:g} degrees" for a in range(azimuths))
+    return Layer(
+        "horizon",
+        bands,
+        "degree",
+        "height of the terrain horizon above the level, not below 0, by azimuth from true north",
+        resolution=2.0**-8,
+    )
+
+
+def month_labels(settings: LightSettings) -> tuple[str, ...]:
+    """One label a month: its name in a typical year, else year and month."""
+    if settings.period.typical:
+        return tuple(MONTH_NAMES[month - 1] for _, month in settings.period.months)
+    return tuple(f"{year}-{month:02d}" for year, month in settings.period.months)
+
+
+def basis_words(settings: LightSettings) -> str:
+    """The area that the energy is stated for."""
+    return "per area of slope" if settings.basis == "slope" else "per area of map"
+
+
+def light_layers(settings: LightSettings) -> tuple[Layer, ...]:
+    """Layers of irradiation: the whole period by part, the months, and the months' parts."""
+    words = (
+        f"potential (clear-sky) {{}} irradiation in the plane of the slope, {basis_words(settings)}"
+    )
+    months = month_labels(settings)
+    whole = "year" if settings.period.whole_year else "period"
+    tags = {"period": settings.period.label, "basis": basis_words(settings), "sky": "clear"}
+    layers = [
+        Layer(
+            f"irradiation_{whole}",
+            ("global", "beam", "diffuse", "reflected"),
+            settings.unit,
+            words.format("global, beam, diffuse and reflected"),
+            resolution=2.0**-4,
+            tags=tags,
+        ),
+        Layer(
+            "irradiation_months",
+            months,
+            settings.unit,
+            words.format("global"),
+            resolution=2.0**-6,
+            tags=tags,
+        ),
+    ]
+    for part in ("beam", "diffuse", "reflected") if settings.monthly_parts else ():
+        layers.append(
+            Layer(
+                f"{part}_months",
+                months,
+                settings.unit,
+                words.format(part),
+                resolution=2.0**-6,
+                tags=tags,
+            )
+        )
+    return tuple(layers)

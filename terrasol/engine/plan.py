@@ -1,0 +1,75 @@
+"""The plan of blocks, and threads that carry it out.
+
+Kernels release the interpreter's lock, so threads over blocks are all the parallelism
+there is. Every task is a plain call that depends on nothing but its arguments; later, the
+same plan can be dealt to processes or machines.
+"""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Callable, Iterable, Iterator
+from concurrent.futures import FIRST_COMPLETED, Future, ThreadPoolExecutor, wait
+from dataclasses import dataclass
+from typing import Any
+
+from terrasol.errors import SettingError
+from terrasol.ground.horizon import BLOCK
+
+Progress = Callable[[float, str], None]
+"""Told how much of the whole is done (0 to 1) and what is going on."""
+
+
+@dataclass(frozen=True)
+class Block:
+    """A rectangle of cells: its first row and column, and its size."""
+
+    row: int
+    column: int
+    rows: int
+    columns: int
+
+
+def blocks_of(shape: tuple[int, int]) -> list[Block]:
+    """All blocks of a raster, row by row."""
+    return [
+        Block(row, column, min(BLOCK, shape[0] - row), min(BLOCK, shape[1] - column))
+        for row in range(0, shape[0], BLOCK)
+        for column in range(0, shape[1], BLOCK)
+    ]
+
+
+def default_threads() -> int:
+    """Cores that this process may use."""
+    if hasattr(os, "sched_getaffinity"):
+        return len(os.sched_getaffinity(0))
+    return os.cpu_count() or 1
+
+
+def check_threads(threads: int) -> None:
+    """Raise SettingError unless there is at least one thread."""
+    if threads < 1:
+        raise SettingError(f"the number of threads must be at least 1; got {threads}")
+
+
+def carry_out(tasks: Iterable[Callable[[], Any]], threads: int, ahead: int = 2) -> Iterator[Any]:
+    """Run tasks on threads and yield what they return, as they finish.
+
+    Never more than `ahead` tasks a thread are under way or waiting to be taken, so that
+    results do not pile up. The first failure stops the rest and is raised here.
+    """
+    waiting: set[Future[Any]] = set()
+    pool = ThreadPoolExecutor(threads, thread_name_prefix="terrasol")
+    try:
+        for task in tasks:
+            waiting.add(pool.submit(task))
+            while len(waiting) >= threads * ahead:
+                done, waiting = wait(waiting, return_when=FIRST_COMPLETED)
+                for future in done:
+                    yield future.result()
+        while waiting:
+            done, waiting = wait(waiting, return_when=FIRST_COMPLETED)
+            for future in done:
+                yield future.result()
+    finally:
+        pool.shutdown(wait=True, cancel_futures=True)

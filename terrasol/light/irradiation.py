@@ -1,0 +1,358 @@
+"""Irradiation of real ground: sun tables met with horizons and normals."""
+
+from __future__ import annotations
+
+import threading
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+from typing import Final
+
+import numpy as np
+from numpy.typing import NDArray
+
+from terrasol.constants import REFRACTION_COEFFICIENT
+from terrasol.errors import SettingError
+from terrasol.ground.horizon import azimuth_directions
+from terrasol.kernels.beam import LANES, look_up
+from terrasol.kernels.energy import parts_of_light
+from terrasol.kernels.skyview import sky_view
+from terrasol.sky.clear import Air
+from terrasol.sky.period import Period
+from terrasol.sky.sun import SunPath, sun_path
+from terrasol.sky.suntable import LATITUDE_STEP, SunTable, height_knots, sun_table
+
+UNITS: Final = {"MJ m-2": 1.0, "kW h m-2": 1.0 / 3.6}
+"""Units of irradiation, and what one MJ m-2 is in each."""
+
+BASES: Final = ("slope", "map")
+DIFFUSE_MODELS: Final = ("perez", "hay-davies", "isotropic")
+
+BAND_TOP: Final = float(np.tan(np.radians(6.5)))
+"""Tangent of the height at which the horizon band counts as wholly hidden: 6.5 degrees, the
+width of the band in Perez et al. (1987), doi:10.1016/S0038-092X(87)80031-2."""
+
+LATITUDE_GRAIN: Final = 0.05
+"""Sun tables are mixed for latitudes rounded to this [degrees]; the rest is a tilt."""
+
+
+@dataclass(frozen=True)
+class LightSettings:
+    """What light to compute, and how to state it.
+
+    Parameters
+    ----------
+    period : Period
+        What is summed.
+    air : Air
+        The clear air.
+    albedo : tuple of 12 floats
+        Of the ground, January to December.
+    diffuse : {'perez', 'hay-davies', 'isotropic'}
+        Model that parts the diffuse light.
+    azimuths : int
+        Number of horizon azimuths: a multiple of 4 from 8 to 720.
+    step_seconds : float
+        Time step of the sun; divides a day.
+    unit : {'MJ m-2', 'kW h m-2'}
+        Unit of irradiation.
+    basis : {'slope', 'map'}
+        Per area of the slope's own surface, or per area of the map.
+    monthly_parts : bool
+        Keep beam, diffuse and reflected of each month, not only of the whole period.
+    refraction : float
+        Terrestrial refraction coefficient k of lines of sight.
+
+    Raises
+    ------
+    SettingError
+        A value out of its range.
+    """
+
+    period: Period
+    air: Air
+    albedo: tuple[float, ...] = (0.2,) * 12
+    diffuse: str = "perez"
+    azimuths: int = 64
+    step_seconds: float = 60.0
+    unit: str = "MJ m-2"
+    basis: str = "slope"
+    monthly_parts: bool = False
+    refraction: float = REFRACTION_COEFFICIENT
+
+    def __post_init__(self) -> None:
+        """Refuse what makes no sense."""
+        if len(self.albedo) != 12 or not all(0.0 <= a <= 1.0 for a in self.albedo):
+            raise SettingError(
+                f"albedo must be one number or twelve, each from 0 to 1; got {self.albedo}"
+            )
+        for name, value, known in (
+            ("diffuse model", self.diffuse, DIFFUSE_MODELS),
+            ("unit", self.unit, tuple(UNITS)),
+            ("basis", self.basis, BASES),
+        ):
+            if value not in known:
+                raise SettingError(f"{name} '{value}' is not one of: {', '.join(known)}")
+        check_azimuths(self.azimuths)
+        check_refraction(self.refraction)
+
+    @property
+    def month_albedo(self) -> NDArray[np.float64]:
+        """Albedo of each month of the period."""
+        return np.array([self.albedo[month - 1] for _, month in self.period.months])
+
+
+def check_azimuths(azimuths: int) -> None:
+    """Raise SettingError unless the number of azimuths is a multiple of 4 from 8 to 720."""
+    if azimuths % 4 or not 8 <= azimuths <= 720:
+        raise SettingError(
+            f"the number of azimuths must be a multiple of 4 from 8 to 720; got {azimuths}"
+        )
+
+
+def check_refraction(refraction: float) -> None:
+    """Raise SettingError unless the coefficient is from 0 to below 1."""
+    if not 0.0 <= refraction < 1.0:
+        raise SettingError(f"the refraction coefficient must be in 0 to 1; got {refraction}")
+
+
+def twelve(values: float | Sequence[float], name: str) -> tuple[float, ...]:
+    """One number for all months, or twelve.
+
+    Raises
+    ------
+    SettingError
+        Another count.
+
+    Examples
+    --------
+    >>> twelve(0.2, "albedo")[:2]
+    (0.2, 0.2)
+    """
+    numbers = tuple(float(v) for v in np.atleast_1d(np.asarray(values, dtype=float)))
+    if len(numbers) == 1:
+        return numbers * 12
+    if len(numbers) != 12:
+        raise SettingError(f"{name} must be one number or twelve; got {len(numbers)}")
+    return numbers
+
+
+@dataclass
+class SkyTables:
+    """Sun tables at the latitude and height knots that a raster needs.
+
+    Parameters
+    ----------
+    settings : LightSettings
+        What light.
+    path : SunPath
+        The period's sun.
+    latitudes : ndarray
+        Knots fixed to the globe [degrees].
+    heights : ndarray
+        Knots fixed above the sea [m].
+    tables : list of SunTable
+        One a latitude; filled by `fill`.
+    """
+
+    settings: LightSettings
+    path: SunPath
+    latitudes: NDArray[np.float64]
+    heights: NDArray[np.float64]
+    tables: list[SunTable | None]
+    _mixed: dict[float, tuple[SunTable, NDArray[np.int64]]] = field(default_factory=dict)
+    _lock: threading.Lock = field(default_factory=threading.Lock)
+
+    @classmethod
+    def over(
+        cls,
+        settings: LightSettings,
+        longitude: float,
+        latitudes: tuple[float, float],
+        heights: tuple[float, float],
+    ) -> SkyTables:
+        """Choose the knots for a range of latitudes [degrees] and heights [m]."""
+        first = np.floor(latitudes[0] / LATITUDE_STEP)
+        last = np.ceil(latitudes[1] / LATITUDE_STEP)
+        knots = LATITUDE_STEP * np.arange(first, max(last, first + 1) + 1)
+        knots = np.clip(knots, -90.0, 90.0)
+        path = sun_path(settings.period, longitude, settings.step_seconds)
+        return cls(settings, path, knots, height_knots(*heights), [None] * knots.size)
+
+    def fill(self, index: int) -> None:
+        """Compute the table of one latitude knot."""
+        s = self.settings
+        self.tables[index] = sun_table(
+            self.path,
+            float(self.latitudes[index]),
+            self.heights,
+            s.air,
+            s.diffuse,
+            s.azimuths,
+            s.monthly_parts,
+        )
+
+    def at(self, latitude: float) -> tuple[SunTable, NDArray[np.int64], float]:
+        """Table mixed for the latitude rounded to LATITUDE_GRAIN, its dark knots, the latitude."""
+        rounded = round(latitude / LATITUDE_GRAIN) * LATITUDE_GRAIN
+        with self._lock:
+            if rounded not in self._mixed:
+                while len(self._mixed) >= 4:
+                    self._mixed.pop(next(iter(self._mixed)))
+                place = np.clip(
+                    np.searchsorted(self.latitudes, rounded) - 1, 0, self.latitudes.size - 2
+                )
+                low, high = self.tables[place], self.tables[place + 1]
+                assert low is not None and high is not None
+                gap = self.latitudes[place + 1] - self.latitudes[place]
+                table = low.mixed(high, float((rounded - self.latitudes[place]) / gap))
+                self._mixed[rounded] = table, table.dark()
+            return *self._mixed[rounded], rounded
+
+
+@dataclass(frozen=True)
+class Surroundings:
+    """What the terrain around receives, on a coarse lattice, for the light it throws back.
+
+    Parameters
+    ----------
+    received : ndarray of float32, shape (months, node rows, node columns)
+        Mean irradiation of the terrain around, bounces included [MJ m-2].
+    stride : int
+        Cells between nodes; the first node lies at cell `stride // 2`.
+    """
+
+    received: NDArray[np.float32]
+    stride: int
+
+    @classmethod
+    def none(cls, months: int) -> Surroundings:
+        """No light from the terrain."""
+        return cls(np.zeros((months, 1, 1), np.float32), 1)
+
+    def node(self, row: int, column: int) -> NDArray[np.float64]:
+        """Where a cell lies, in node units."""
+        offset = self.stride // 2
+        return np.array([(row - offset) / self.stride, (column - offset) / self.stride])
+
+
+@dataclass(frozen=True)
+class Strip:
+    """Some rows of ground as light sees them.
+
+    Parameters
+    ----------
+    horizon : ndarray of float32, shape (azimuths, rows, columns)
+        Tangent of the terrain's horizon, not below 0.
+    normal : ndarray of float32, shape (3, rows, columns)
+        Towards true east, north and up.
+    heights : ndarray of float32, shape (rows, columns)
+        Less `datum` [m].
+    datum : float
+        Metres above the sea.
+    latitude : tuple of float
+        At the first cell, and its change a row and a column [degrees].
+    """
+
+    horizon: NDArray[np.float32]
+    normal: NDArray[np.float32]
+    heights: NDArray[np.float32]
+    datum: float
+    latitude: tuple[float, float, float]
+
+    def sky(self) -> tuple[NDArray[np.float32], NDArray[np.float32]]:
+        """Sky-view factor and the open part of the horizon band, shape (rows, columns)."""
+        view = np.empty(self.horizon.shape[1:], np.float32)
+        band = np.empty_like(view)
+        directions = azimuth_directions(self.horizon.shape[0])
+        sky_view(self.horizon, self.normal, 0, directions, BAND_TOP, view, band)
+        return view, band
+
+    def direct(self, tables: SkyTables, middle: float) -> tuple[SunTable, NDArray[np.float32]]:
+        """Sums of direct light, shape (groups, rows * columns, lanes), by the table used."""
+        table, dark, latitude = tables.at(middle)
+        tilt = np.radians(np.array(self.latitude) - (latitude, 0.0, 0.0))
+        sums = np.empty((table.direct.shape[0], self.heights.size, LANES), np.float32)
+        directions = azimuth_directions(self.horizon.shape[0])
+        for group, direct in enumerate(table.direct):
+            look_up(
+                self.horizon,
+                self.normal,
+                self.heights,
+                self.datum,
+                directions,
+                tilt,
+                table.heights,
+                direct.reshape(-1, 2 * LANES),
+                dark,
+                sums[group],
+            )
+        return table, sums
+
+
+@dataclass(frozen=True)
+class Light:
+    """Irradiation of some rows of cells.
+
+    Parameters
+    ----------
+    year : ndarray of float32, shape (4, rows, columns)
+        Global, beam, diffuse and reflected, over the whole period.
+    months : ndarray of float32, shape (months, rows, columns)
+        Global.
+    month_parts : ndarray of float32, shape (3, months or 0, rows, columns)
+        Beam, diffuse and reflected.
+    """
+
+    year: NDArray[np.float32]
+    months: NDArray[np.float32]
+    month_parts: NDArray[np.float32]
+
+
+def strip_light(
+    strip: Strip,
+    sky: tuple[NDArray[np.float32], NDArray[np.float32]],
+    tables: SkyTables,
+    middle: float,
+    surroundings: Surroundings,
+    place: tuple[int, int],
+) -> Light:
+    """Irradiation of a strip of ground.
+
+    Parameters
+    ----------
+    strip : Strip
+        The ground.
+    sky : tuple of ndarray
+        From `Strip.sky`.
+    tables : SkyTables
+        Filled.
+    middle : float
+        Latitude of the middle of the block that the strip belongs to [degrees].
+    surroundings : Surroundings
+        For the reflected light.
+    place : tuple of int
+        The strip's first row and column in the raster.
+
+    Returns
+    -------
+    Light
+        In the settings' unit and on their basis; NaN where void.
+    """
+    settings = tables.settings
+    table, sums = strip.direct(tables, middle)
+    count = len(settings.period.months)
+    shape = strip.heights.shape
+    light = Light(
+        np.empty((4, *shape), np.float32),
+        np.empty((count, *shape), np.float32),
+        np.empty((3, count if settings.monthly_parts else 0, *shape), np.float32),
+    )
+    factor = np.full(shape, UNITS[settings.unit], np.float32)
+    if settings.basis == "map":
+        factor /= strip.normal[2]
+    parts_of_light(
+        sums, count, strip.heights, strip.datum, table.heights, table.isotropic, table.band,
+        *sky, surroundings.received, surroundings.node(*place), surroundings.stride,
+        settings.month_albedo, factor, light.year, light.months, light.month_parts,
+    )  # fmt: skip
+    return light

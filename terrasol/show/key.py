@@ -1,0 +1,238 @@
+"""What explains a map: colour bar, months, scale bar, true north, the words."""
+
+from __future__ import annotations
+
+import math
+import re
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import matplotlib
+import numpy as np
+from numpy.typing import NDArray
+
+from terrasol.show.contours import LINE, nice_step
+from terrasol.show.page import INK, PAPER, SOFT, Page, text_width, wrap
+from terrasol.show.relief import hatch
+
+COLOUR_MAP, DARKEST, LIGHTEST, WASH = "magma", 0.14, 0.97, 0.12
+"""Perceptually uniform, and its lightness alone tells it, so that it is read by colour-blind
+eyes and in grey; from dusk to daylight, as the quantity. The blackest part is left out and all
+is washed a little towards white, for the relief to have room on both sides."""
+
+TEXT, SMALL = 18.0, 16.0
+"""Sizes of letters [pixels]."""
+
+LEADING = 27.0
+"""From one line of text to the next [pixels]."""
+
+BAR_WIDTH, BAR_HEIGHT, HISTOGRAM_WIDTH = 26, 300, 120
+MONTHS_HEIGHT = 110
+SCALE_LONGEST = 240
+ARROW = 27
+"""Sizes of the parts [pixels]; ARROW is half the arrow's length."""
+
+BINS = 50
+
+NOTE_LEADING = 23.0
+
+BAR_COLOUR, SCALE_DARK = "#c4633f", INK
+
+
+@dataclass(frozen=True)
+class Scale:
+    """From a value to its colour.
+
+    Parameters
+    ----------
+    low, high : float
+        Ends of the colours.
+    below, above : bool
+        Whether ground lies outside them.
+    """
+
+    low: float
+    high: float
+    below: bool = False
+    above: bool = False
+
+    def colours(self, values: NDArray[np.floating]) -> NDArray[np.float32]:
+        """Red, green and blue of values; NaN as `low`."""
+        table = matplotlib.colormaps[COLOUR_MAP](np.linspace(DARKEST, LIGHTEST, 256))
+        table = table + (1 - table) * WASH
+        share = (values - self.low) / (self.high - self.low)
+        index = np.clip(np.nan_to_num(share) * 255 + 0.5, 0, 255).astype(np.uint8)
+        return table[:, :3].astype(np.float32)[index]
+
+
+def make_scale(values: NDArray[np.floating], outside: float = 0.5) -> Scale:
+    """Colours for values: their range, but for `outside` per cent at either end."""
+    known = values[np.isfinite(values)].astype(np.float64)
+    if known.size == 0:
+        return Scale(0.0, 1.0)
+    least, most = float(known.min()), float(known.max())
+    low, high = (float(v) for v in np.percentile(known, [outside, 100 - outside]))
+    if high - low <= 1e-6 * max(abs(low), abs(high), 1e-30):
+        low, high = least, most
+    if high - low <= 1e-6 * max(abs(low), abs(high), 1e-30):
+        margin = 0.05 * abs(low) or 1.0
+        return Scale(low - margin, high + margin)
+    return Scale(low, high, least < low, most > high)
+
+
+def number(value: float, step: float) -> str:
+    """A number with the decimals that its step has, and thin spaces by thousands."""
+    decimals = max(0, -math.floor(math.log10(step) + 1e-9))
+    return f"{value + 0.0:,.{decimals}f}".replace(",", "\N{THIN SPACE}").replace("-", "−")
+
+
+def significant(value: float, digits: int) -> str:
+    """A number with so many significant digits, no whole digit lost, no nought behind."""
+    power = math.floor(math.log10(abs(value))) if value else 0
+    text = number(value, 10.0 ** min(power - digits + 1, 0))
+    return text.rstrip("0").rstrip(".") if "." in text else text
+
+
+def printed_unit(unit: str) -> str:
+    """A unit with its exponents raised: ``MJ m-2`` as MJ m⁻²."""
+    raised = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
+    return re.sub(r"(?<=[A-Za-z])-?\d+", lambda found: found[0].translate(raised), unit)
+
+
+def heading(page: Page, x: float, y: float, text: str, unit: str, width: float) -> float:
+    """Write what a diagram shows and its unit; return the y below."""
+    for line in wrap(text, TEXT, width, bold=True):
+        page.text(x, y + TEXT, line, TEXT, bold=True)
+        y += LEADING
+    page.text(x, y + SMALL, unit, SMALL, colour=SOFT)
+    return y + LEADING
+
+
+def draw_colour_bar(
+    page: Page,
+    x: float,
+    y: float,
+    scale: Scale,
+    values: NDArray[np.floating],
+    mean: float | None = None,
+) -> None:
+    """Draw the colour bar, with the share of ground at each colour beside it."""
+    known = values[np.isfinite(values)]
+    step = nice_step(scale.high - scale.low, 6)
+    ticks = np.arange(math.ceil(scale.low / step), math.floor(scale.high / step) + 1) * step
+    labels = [number(tick, step) for tick in ticks]
+    left = x + max((text_width(label, TEXT) for label in labels), default=0.0) + 14
+    right, bottom = left + BAR_WIDTH, y + BAR_HEIGHT
+
+    def height_of(value):
+        return bottom - (value - scale.low) / (scale.high - scale.low) * BAR_HEIGHT
+
+    ramp = scale.colours(np.linspace(scale.high, scale.low, BAR_HEIGHT))
+    page.image(left, y, np.repeat(ramp[:, None], BAR_WIDTH, axis=1))
+    for there, edge, tip, value in (
+        (scale.above, y, y - 16, scale.high),
+        (scale.below, bottom, bottom + 16, scale.low),
+    ):
+        if there:
+            corners = [(left, edge), (right, edge), ((left + right) / 2, tip)]
+            page.shape(corners, fill=scale.colours(np.array([value]))[0])
+    for tick, label in zip(ticks, labels, strict=True):
+        level = height_of(tick)
+        page.lines([[(left - 7, level), (left, level)]], line=1.2)
+        page.text(left - 12, level, label, TEXT, across="right", down="center_baseline")
+    if known.size == 0:
+        return
+    page.text(right + 6, y - 9, "share of ground", SMALL, colour=SOFT)
+    counts, edges = np.histogram(known, BINS, (scale.low, scale.high))
+    centres = (edges[1:] + edges[:-1]) / 2
+    longest = HISTOGRAM_WIDTH / max(counts.max(), 1)
+    for count, low, high, colour in zip(
+        counts, edges[:-1], edges[1:], scale.colours(centres), strict=True
+    ):
+        top, base = height_of(high), height_of(low)
+        page.box(right + 6, top, count * longest, base - top, fill=colour)
+    if mean is None:
+        mean = float(known.mean(dtype=np.float64))
+    level = height_of(min(max(mean, scale.low), scale.high))
+    page.lines([[(right + 6, level), (right + 6 + HISTOGRAM_WIDTH, level)]], line=1.0)
+    text = "mean " + significant(mean, 4)
+    page.text(right + 6 + HISTOGRAM_WIDTH + 6, level, text, SMALL, down="center_baseline")
+
+
+def draw_months(page: Page, x: float, y: float, width: float, means: Sequence[float]) -> None:
+    """Draw twelve bars, the least and the greatest with their values."""
+    heights = np.asarray(means, float)
+    bottom, slot = y + MONTHS_HEIGHT, width / 12
+    page.lines([[(x, bottom), (x + width, bottom)]], line=1.2)
+    known = np.isfinite(heights)
+    top = float(heights[known].max()) if known.any() else 0.0
+    for month, (letter, value) in enumerate(zip("JFMAMJJASOND", heights, strict=True)):
+        middle = x + (month + 0.5) * slot
+        page.text(middle, bottom + 20, letter, SMALL, colour=SOFT, across="center")
+        if not known[month] or top <= 0:
+            continue
+        tall = max(value, 0.0) / top * (MONTHS_HEIGHT - 22)
+        page.box(middle - 0.36 * slot, bottom - tall, 0.72 * slot, tall, fill=BAR_COLOUR)
+        if month in (int(np.nanargmin(heights)), int(np.nanargmax(heights))):
+            label = significant(value, 3)
+            page.text(middle, bottom - tall - 6, label, SMALL, across="center")
+
+
+def draw_notes(page: Page, x: float, y: float, lines: Sequence[str]) -> None:
+    """Write lines already broken."""
+    for k, line in enumerate(lines):
+        page.text(x, y + SMALL + k * NOTE_LEADING, line, SMALL, colour=SOFT)
+
+
+def scale_bar(metres_per_pixel: float) -> tuple[float, float]:
+    """Length of a scale bar [m], a round one, and how long it is drawn [pixels]."""
+    room = SCALE_LONGEST * metres_per_pixel
+    power = 10.0 ** math.floor(math.log10(room))
+    length = next(factor * power for factor in (5.0, 2.0, 1.0) if factor * power <= room)
+    return length, length / metres_per_pixel
+
+
+def draw_scale_bar(page: Page, x: float, y: float, metres_per_pixel: float) -> float:
+    """Draw a scale bar around the height y; return the x behind it."""
+    length, pixels = scale_bar(metres_per_pixel)
+    parts = 4 if f"{length:e}".startswith("2") else 5
+    for k in range(0, parts, 2):
+        page.box(x + k * pixels / parts, y - 5, pixels / parts, 10, fill=SCALE_DARK)
+    page.box(x, y - 5, pixels, 10, edge=SCALE_DARK, line=1.4)
+    unit, metres = ("km", 1000.0) if length >= 1000 else ("m", 1.0)
+    end = f"{length / metres:.6g} {unit}"
+    page.text(x, y - 12, "0", SMALL, across="center")
+    page.text(x + pixels, y - 12, end, SMALL, across="center")
+    return x + pixels + text_width(end, SMALL) / 2
+
+
+def draw_north(page: Page, x: float, y: float, azimuth: float) -> float:
+    """Draw an arrow to true north about (x, y); return the x behind it.
+
+    Parameters
+    ----------
+    azimuth : float
+        Direction of true north on the paper, clockwise from up [degrees].
+    """
+    turn = math.radians(azimuth)
+    ahead = np.array([math.sin(turn), -math.cos(turn)])
+    aside = np.array([math.cos(turn), math.sin(turn)])
+    centre = np.array([x, y])
+    tip, tail = centre + ARROW * ahead, centre - 0.55 * ARROW * ahead
+    left, right = (centre - ARROW * ahead + s * 0.55 * ARROW * aside for s in (-1, 1))
+    page.shape([tip, left, tail], fill=INK, edge=INK, line=1.2)
+    page.shape([tip, tail, right], fill=PAPER, edge=INK, line=1.2)
+    letter = centre + (ARROW + 11) * ahead
+    page.text(*letter, "N", SMALL, bold=True, across="center", down="center", turn=-azimuth)
+    return x + ARROW
+
+
+def draw_swatch(page: Page, x: float, y: float, text: str, *, void: bool) -> float:
+    """Draw a legend entry, of the contour lines or of the voids; return the x behind it."""
+    if void:
+        page.image(x, y - 9, hatch((18, 34)))
+        page.box(x, y - 9, 34, 18, edge=SOFT, line=0.8)
+    else:
+        page.lines([[(x, y), (x + 34, y)]], colour=LINE, line=1.4, strength=0.7)
+    page.text(x + 44, y, text, SMALL, down="center_baseline")
+    return x + 44 + text_width(text, SMALL)

@@ -1,0 +1,191 @@
+"""The overview map: a year of sun on shaded relief, on one sheet that a person can read."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from importlib.metadata import version
+
+import numpy as np
+from matplotlib.colors import to_rgb
+from numpy.typing import NDArray
+
+from terrasol.errors import SettingError
+from terrasol.ground.elevation import Elevation
+from terrasol.ground.frame import Frame, make_frame
+from terrasol.show import key
+from terrasol.show.contours import contour_step, draw_contours
+from terrasol.show.graticule import draw_graticule
+from terrasol.show.page import INK, PAPER, SOFT, Page, clip, wrap
+from terrasol.show.picture import Picture, make_picture
+from terrasol.show.relief import paint, shade
+
+MAP_BOX = (1120, 980)
+"""Largest width and height of the map [pixels]."""
+
+WIDE = 1.45
+"""A map wider than this many heights has its key below it, not beside it."""
+
+MARGIN, COLUMN, ASIDE, BETWEEN = 48, 352, 64, 32
+HEADER, STRIP, FOOTER = 136, 96, 62
+LATITUDES, LONGITUDES = 104, 44
+"""Measures of the sheet [pixels]; the last two are the room for the labels of the rim."""
+
+TITLE, SUBTITLE = 38.0, 21.0
+"""Sizes of letters [pixels]."""
+
+
+def overview_png(
+    elevation: Elevation,
+    energy: NDArray[np.float32],
+    *,
+    title: str,
+    subtitle: str = "",
+    quantity: str = "Potential global irradiation, year",
+    unit: str = "MJ m-2",
+    notes: Sequence[str] = (),
+    mean: float | None = None,
+    monthly_means: Sequence[float] | None = None,
+    frame: Frame | None = None,
+) -> bytes:
+    """Draw the overview map of a run.
+
+    The map is true in metres and lies along the raster's edges; the arrow shows true north at
+    its centre, the scale bar true length there. Colours end at the half per cent of ground with
+    the least and with the most sun, and the colour bar shows by its points that there is more.
+
+    Parameters
+    ----------
+    elevation : Elevation
+        The ground.
+    energy : ndarray of float32, shape (rows, columns)
+        What to colour the ground by [unit]; void NaN.
+    title, subtitle : str
+        Head of the sheet.
+    quantity : str
+        What the colours are.
+    unit : str
+        Unit of `energy` and `monthly_means`, as UDUNITS reads it.
+    notes : sequence of str
+        Short statements of what the map is and is not: period, sky, basis of the area.
+    mean : float, optional
+        Mean over the ground [unit]; taken from the map's pixels if not given.
+    monthly_means : sequence of twelve floats, optional
+        Mean of each month over the ground, January first; NaN for a month outside the period.
+    frame : Frame, optional
+        The frame of `elevation`, if it is at hand.
+
+    Returns
+    -------
+    bytes
+        A PNG file: the same bytes for the same content and the same matplotlib.
+
+    Raises
+    ------
+    SettingError
+        `energy` has another shape than the elevation model, or there are not twelve months.
+    """
+    if energy.shape != elevation.shape:
+        raise SettingError(
+            f"the map's values have the shape {energy.shape}, the ground {elevation.shape}:"
+            " give both on one grid"
+        )
+    if monthly_means is not None and len(monthly_means) != 12:
+        raise SettingError(f"a year has 12 monthly means, got {len(monthly_means)}")
+    frame = frame or make_frame(elevation.shape, elevation.transform, elevation.crs)
+    picture = make_picture(elevation, frame, MAP_BOX)
+    values = picture.cells(picture.average(energy))
+    scale = key.make_scale(values)
+    written = [line for note in notes for line in wrap(note, key.SMALL, COLUMN)]
+    blocks = _blocks(values, scale, quantity, unit, mean, monthly_means, written)
+    page, places = _lay_out(picture, blocks)
+    _write_head_and_foot(page, title, subtitle, elevation, frame)
+    corner = (MARGIN + LATITUDES, HEADER)
+    _draw_map(page, corner, picture, elevation, values, scale)
+    for (draw, _), (x, y) in zip(blocks, places, strict=True):
+        draw(page, x, y)
+    return page.png(Title=title, Software=f"terrasol {version('terrasol')}")
+
+
+def _blocks(values, scale, quantity, unit, mean, months, lines):
+    """The parts of the key: functions that draw at a place, each with its height."""
+    unit = key.printed_unit(unit)
+
+    def colours(page, x, y):
+        y = key.heading(page, x, y, quantity, unit, COLUMN)
+        key.draw_colour_bar(page, x, y + 30, scale, values, mean)
+
+    def year(page, x, y):
+        y = key.heading(page, x, y, "Mean by month", unit, COLUMN)
+        key.draw_months(page, x, y + 12, COLUMN, months)
+
+    def words(page, x, y):
+        key.draw_notes(page, x, y, lines)
+
+    head = key.LEADING * (1 + len(wrap(quantity, key.TEXT, COLUMN, bold=True)))
+    blocks = [(colours, head + 30 + key.BAR_HEIGHT + 30)]
+    if months is not None:
+        blocks.append((year, 2 * key.LEADING + 12 + key.MONTHS_HEIGHT + 30))
+    if lines:
+        blocks.append((words, len(lines) * key.NOTE_LEADING))
+    return blocks
+
+
+def _lay_out(picture: Picture, blocks) -> tuple[Page, list[tuple[float, float]]]:
+    """A sheet of the right size, and where the parts of the key go."""
+    height, width = picture.shape
+    left = MARGIN + LATITUDES
+    between = 44
+    if width > WIDE * height:
+        top = HEADER + height + LONGITUDES + STRIP + 24
+        places = [(left + k * (COLUMN + BETWEEN), top) for k in range(len(blocks))]
+        bottom = top + max(tall for _, tall in blocks)
+        right = max(left + width, places[-1][0] + COLUMN)
+    else:
+        x, y = left + width + ASIDE, float(HEADER)
+        places = []
+        for _, tall in blocks:
+            places.append((x, y))
+            y += tall + between
+        bottom = max(y - between, HEADER + height + LONGITUDES + STRIP)
+        right = x + COLUMN
+    right = max(right, left + 800)
+    return Page(round(right + MARGIN), round(bottom + FOOTER)), places
+
+
+def _write_head_and_foot(page, title, subtitle, elevation, frame) -> None:
+    """Title, subtitle, and the line that says what made the sheet and on which grid."""
+    room = page.width - 2 * MARGIN - LATITUDES
+    left = MARGIN + LATITUDES
+    page.text(left, 70, clip(title, TITLE, room, bold=True), TITLE, bold=True)
+    page.text(left, 106, clip(subtitle, SUBTITLE, room), SUBTITLE, colour=SOFT)
+    rows, columns = elevation.shape
+    across, down = frame.cell_size
+    foot = (
+        f"terrasol {version('terrasol')}  ·  {columns} × {rows} cells of"
+        f" {key.significant(across, 3)} × {key.significant(down, 3)} m  ·  {elevation.crs.name}"
+    )
+    page.text(left, page.height - 26, clip(foot, key.SMALL, room), key.SMALL, colour=SOFT)
+
+
+def _draw_map(page, corner, picture, elevation, values, scale) -> None:
+    """The map, its rim, and the strip below it."""
+    left, top = corner
+    height, width = picture.shape
+    averaged = picture.average(elevation.heights)
+    heights = picture.smooth(averaged)
+    void = picture.ground & ~np.isfinite(values)
+    brightness = picture.smooth(shade(averaged, picture.jacobian))
+    page.image(left, top, paint(picture, scale.colours(values), brightness, void, to_rgb(PAPER)))
+    step = contour_step(heights)
+    if step is not None:
+        draw_contours(page, heights, step, corner)
+    draw_graticule(page, picture, corner)
+    page.box(left, top, width, height, edge=INK, line=1.6)
+    y = top + height + LONGITUDES + 50
+    x = key.draw_scale_bar(page, left + 6, y, picture.metres_per_pixel)
+    x = key.draw_north(page, x + 56, y - 2, -picture.up)
+    x += 36
+    if step is not None:
+        x = key.draw_swatch(page, x, y, f"contours every {step:.6g} m", void=False) + 36
+    if void.any():
+        key.draw_swatch(page, x, y, "no data", void=True)

@@ -1,0 +1,190 @@
+"""A sheet to draw on in pixels, from its upper left corner, by matplotlib's Agg canvas.
+
+No pyplot and no font search: the sheet takes its letters from the files that come with
+matplotlib, so that the same content gives the same bytes anywhere with that version.
+"""
+
+from __future__ import annotations
+
+import io
+from functools import cache
+from pathlib import Path
+from typing import Any
+
+import matplotlib
+import numpy as np
+from matplotlib.backends.backend_agg import FigureCanvasAgg
+from matplotlib.collections import LineCollection
+from matplotlib.figure import Figure
+from matplotlib.font_manager import FontProperties, get_font
+from matplotlib.patches import Polygon, Rectangle
+from matplotlib.patheffects import withStroke
+from matplotlib.text import Text
+from numpy.typing import NDArray
+
+PAPER = "#fcfbf8"
+INK = "#24262b"
+SOFT = "#6c7077"
+"""Colours of the sheet, of what is read first, and of what is read after."""
+
+DPI = 100
+POINTS_PER_PIXEL = 72 / DPI
+
+
+@cache
+def _font_file(bold: bool) -> str:
+    name = "DejaVuSans-Bold.ttf" if bold else "DejaVuSans.ttf"
+    return str(Path(matplotlib.get_data_path()) / "fonts" / "ttf" / name)
+
+
+@cache
+def _known_letters(bold: bool) -> frozenset[int]:
+    return frozenset(get_font(_font_file(bold)).get_charmap())
+
+
+def printable(text: str, bold: bool = False) -> str:
+    """Replace what the font has no letter for, so that it is seen to be missing."""
+    known = _known_letters(bold)
+    return "".join(letter if ord(letter) in known else "\N{WHITE SQUARE}" for letter in text)
+
+
+class Page:
+    """One sheet, `width` by `height` pixels; x runs right and y runs down."""
+
+    def __init__(self, width: int, height: int):
+        self.width, self.height = width, height
+        self.figure = Figure(figsize=(width / DPI, height / DPI), dpi=DPI, facecolor=PAPER)
+        self.canvas = FigureCanvasAgg(self.figure)
+        self.axes = self.figure.add_axes((0.0, 0.0, 1.0, 1.0), frameon=False)
+        self.axes.set_axis_off()
+        self.axes.set_autoscale_on(False)
+        self.axes.set_xlim(0, width)
+        self.axes.set_ylim(height, 0)
+
+    def text(
+        self,
+        x: float,
+        y: float,
+        text: str,
+        size: float,
+        *,
+        colour: str = INK,
+        bold: bool = False,
+        across: str = "left",
+        down: str = "baseline",
+        turn: float = 0.0,
+        halo: str | None = None,
+    ) -> None:
+        """Write at a place; `size` in pixels, `turn` counter-clockwise in degrees."""
+        effects = [withStroke(linewidth=2.4, foreground=halo, alpha=0.75)] if halo else None
+        self.axes.add_artist(
+            Text(
+                x,
+                y,
+                printable(text, bold),
+                color=colour,
+                fontproperties=_font(size, bold),
+                horizontalalignment=across,
+                verticalalignment=down,
+                rotation=turn,
+                rotation_mode="anchor",
+                parse_math=False,
+                path_effects=effects,
+            )
+        )
+
+    def measure(self, text: str, size: float, bold: bool = False) -> float:
+        """Width of a line of text [pixels]."""
+        return text_width(text, size, bold)
+
+    def image(self, x: float, y: float, pixels: NDArray[Any]) -> None:
+        """Lay an array of shape (height, width, 3) down, pixel on pixel."""
+        height, width = pixels.shape[:2]
+        self.axes.imshow(
+            (np.asarray(pixels) * 255 + 0.5).astype(np.uint8),
+            extent=(x, x + width, y + height, y),
+            interpolation="nearest",
+            aspect="auto",
+            origin="upper",
+        )
+
+    def box(self, x, y, width, height, *, fill="none", edge="none", line=1.0) -> None:
+        """Draw a rectangle from its upper left corner."""
+        self.axes.add_patch(
+            Rectangle(
+                (x, y),
+                width,
+                height,
+                facecolor=fill,
+                edgecolor=edge,
+                linewidth=line * POINTS_PER_PIXEL if edge != "none" else 0.0,
+                joinstyle="miter",
+            )
+        )
+
+    def shape(self, corners, *, fill="none", edge="none", line=1.0) -> None:
+        """Draw a polygon."""
+        self.axes.add_patch(
+            Polygon(
+                np.asarray(corners, float),
+                closed=True,
+                facecolor=fill,
+                edgecolor=edge,
+                linewidth=line * POINTS_PER_PIXEL if edge != "none" else 0.0,
+                joinstyle="miter",
+            )
+        )
+
+    def lines(self, paths, *, colour=INK, line=1.0, strength=1.0) -> None:
+        """Draw open lines, each an array of shape (n, 2)."""
+        self.axes.add_collection(
+            LineCollection(
+                [np.asarray(path, float) for path in paths],
+                colors=colour,
+                linewidths=line * POINTS_PER_PIXEL,
+                alpha=strength,
+                linestyles="solid",
+                antialiaseds=True,
+            ),
+            autolim=False,
+        )
+
+    def png(self, **metadata: str) -> bytes:
+        """The sheet as a PNG file with these text entries."""
+        out = io.BytesIO()
+        self.canvas.print_png(out, metadata=metadata, pil_kwargs={"compress_level": 4})
+        return out.getvalue()
+
+
+def _font(size: float, bold: bool) -> FontProperties:
+    return FontProperties(fname=_font_file(bold), size=size * POINTS_PER_PIXEL)
+
+
+def text_width(text: str, size: float, bold: bool = False) -> float:
+    """Width of a line of text [pixels]; `size` in pixels."""
+    font = get_font(_font_file(bold))
+    font.set_size(size * POINTS_PER_PIXEL, DPI)
+    font.set_text(printable(text, bold), 0.0)
+    return font.get_width_height()[0] / 64.0
+
+
+def wrap(text: str, size: float, width: float, bold: bool = False) -> list[str]:
+    """Break text into lines no wider than `width` pixels; a longer word is cut."""
+    lines: list[str] = []
+    for word in text.split():
+        longer = f"{lines[-1]} {word}" if lines else word
+        if lines and text_width(longer, size, bold) <= width:
+            lines[-1] = longer
+        else:
+            lines.append(clip(word, size, width, bold))
+    return lines
+
+
+def clip(text: str, size: float, width: float, bold: bool = False) -> str:
+    """Shorten text to a width [pixels], with an ellipsis for what is lost."""
+    text = " ".join(text.split())
+    if text_width(text, size, bold) <= width:
+        return text
+    while text and text_width(text + "…", size, bold) > width:
+        text = text[:-1]
+    return text.rstrip() + "…"
