@@ -196,9 +196,14 @@ def far_field(
             line, length, first_query, every, skip, step, half_curve, datum, seen[k], place, bulge
         )
     for q in range(count):
+        ahead = drift * (first_query + q * every) + origin
+        first_line = max(int(np.ceil(-ahead / gap - 1e-9)), 0)
+        last_line = min(int(np.floor((breadth - 1 - ahead) / gap + 1e-9)), lines - 1)
         for n in range(nodes):
-            y = (first_node + n * every - drift * (first_query + q * every) - origin) / gap
-            k = min(max(int(y), 0), lines - 2)
+            # Only lines that lie on the raster here can be mixed.
+            y = (first_node + n * every - ahead) / gap
+            y = min(max(y, float(first_line)), float(last_line))
+            k = min(int(y), lines - 2)
             f = y - k
             rise[q, n] = (1.0 - f) * seen[k, q, 0] + f * seen[k + 1, q, 0]
             fall[q, n] = (1.0 - f) * seen[k, q, 1] + f * seen[k + 1, q, 1]

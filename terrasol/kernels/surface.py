@@ -21,19 +21,18 @@ def _difference(before, here, behind):
 
 @njit(cache=True, nogil=True, error_model="numpy", inline="always")
 def _weighted(first, middle, last):
-    """Horn's 1-2-1 mean of three differences, over those that exist."""
-    total = 0.0
-    weight = 0.0
-    if first == first:
-        total += first
-        weight += 1.0
+    """Horn's 1-2-1 mean of three differences; off centre none is trusted alone if need not be.
+
+    With one outer difference missing, the middle one stands alone: that is what the full
+    window gives when the missing row is continued in a straight line.
+    """
     if middle == middle:
-        total += 2.0 * middle
-        weight += 2.0
-    if last == last:
-        total += last
-        weight += 1.0
-    return total / weight
+        if first == first and last == last:
+            return 0.25 * (first + 2.0 * middle + last)
+        return middle
+    if first == first and last == last:
+        return 0.5 * (first + last)
+    return first if first == first else last
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
@@ -41,7 +40,7 @@ def normals(heights, pad, corners, normal):
     """Unit normals of the ground, east, north and up.
 
     The window is Horn's (1981); where a neighbour is void or outside, the difference of
-    that row or column is one-sided, and where even that fails it is left out of the mean.
+    that row or column is one-sided, as if the ground went straight on.
 
     heights : (rows + 2 pad, columns + 2 pad) float32, NaN void
     corners : (2, 2, 2, 2) float64, the Jacobian at the block's four corners

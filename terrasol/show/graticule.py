@@ -65,7 +65,7 @@ def _step(field: NDArray[np.float64], pixels: int) -> float:
 
 
 def _multiples(low: float, high: float, step: float) -> NDArray[np.float64]:
-    return np.arange(math.ceil(low / step), math.floor(high / step) + 1) * step
+    return np.arange(math.ceil(low / step), math.floor(high / step) + 1) * np.float64(step)
 
 
 def _crossings(rim, places, step):

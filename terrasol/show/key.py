@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 import re
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import matplotlib
@@ -33,6 +33,9 @@ ARROW = 27
 """Sizes of the parts [pixels]; ARROW is half the arrow's length."""
 
 BINS = 50
+
+SMALLEST_SPAN = 1e-5
+"""Values nearer to each other than this share of themselves are one value."""
 
 NOTE_LEADING = 23.0
 
@@ -72,9 +75,9 @@ def make_scale(values: NDArray[np.floating], outside: float = 0.5) -> Scale:
         return Scale(0.0, 1.0)
     least, most = float(known.min()), float(known.max())
     low, high = (float(v) for v in np.percentile(known, [outside, 100 - outside]))
-    if high - low <= 1e-6 * max(abs(low), abs(high), 1e-30):
+    if high - low <= SMALLEST_SPAN * max(abs(low), abs(high), 1e-30):
         low, high = least, most
-    if high - low <= 1e-6 * max(abs(low), abs(high), 1e-30):
+    if high - low <= SMALLEST_SPAN * max(abs(low), abs(high), 1e-30):
         margin = 0.05 * abs(low) or 1.0
         return Scale(low - margin, high + margin)
     return Scale(low, high, least < low, most > high)
@@ -159,23 +162,30 @@ def draw_colour_bar(
     page.text(right + 6 + HISTOGRAM_WIDTH + 6, level, text, SMALL, down="center_baseline")
 
 
-def draw_months(page: Page, x: float, y: float, width: float, means: Sequence[float]) -> None:
-    """Draw twelve bars, the least and the greatest with their values."""
-    heights = np.asarray(means, float)
-    bottom, slot = y + MONTHS_HEIGHT, width / 12
-    page.lines([[(x, bottom), (x + width, bottom)]], line=1.2)
-    known = np.isfinite(heights)
-    top = float(heights[known].max()) if known.any() else 0.0
-    for month, (letter, value) in enumerate(zip("JFMAMJJASOND", heights, strict=True)):
-        middle = x + (month + 0.5) * slot
-        page.text(middle, bottom + 20, letter, SMALL, colour=SOFT, across="center")
-        if not known[month] or top <= 0:
-            continue
+def draw_months(
+    page: Page, x: float, y: float, width: float, means: Mapping[tuple[int, int], float]
+) -> None:
+    """Draw a bar for each (year, month), the least and the greatest with their values."""
+    values = np.nan_to_num(np.array(list(means.values()), float))
+    bottom, slot = y + MONTHS_HEIGHT, width / max(12, len(means))
+    page.lines([[(x, bottom), (x + slot * len(means), bottom)]], line=1.2)
+    top = max(float(values.max(initial=0.0)), 1e-30)
+    years: set[int] = set()
+    several = len({year for year, _ in means}) > 1
+    for k, ((year, month), value) in enumerate(zip(means, values, strict=True)):
+        middle = x + (k + 0.5) * slot
+        if slot > SMALL:
+            letter = "JFMAMJJASOND"[month - 1]
+            page.text(middle, bottom + 20, letter, SMALL, colour=SOFT, across="center")
+        if several and year not in years:
+            page.text(middle - slot / 2 + 5, bottom + 44, str(year), SMALL, colour=SOFT)
+            page.lines([[(middle - slot / 2, bottom), (middle - slot / 2, bottom + 46)]], line=0.8)
+            years.add(year)
         tall = max(value, 0.0) / top * (MONTHS_HEIGHT - 22)
         page.box(middle - 0.36 * slot, bottom - tall, 0.72 * slot, tall, fill=BAR_COLOUR)
-        if month in (int(np.nanargmin(heights)), int(np.nanargmax(heights))):
-            label = significant(value, 3)
-            page.text(middle, bottom - tall - 6, label, SMALL, across="center")
+        if k in (int(values.argmin()), int(values.argmax())):
+            text = significant(value, 3)
+            page.text(middle, bottom - tall - 6, text, SMALL, across="center")
 
 
 def draw_notes(page: Page, x: float, y: float, lines: Sequence[str]) -> None:
@@ -222,8 +232,8 @@ def draw_north(page: Page, x: float, y: float, azimuth: float) -> float:
     left, right = (centre - ARROW * ahead + s * 0.55 * ARROW * aside for s in (-1, 1))
     page.shape([tip, left, tail], fill=INK, edge=INK, line=1.2)
     page.shape([tip, tail, right], fill=PAPER, edge=INK, line=1.2)
-    letter = centre + (ARROW + 11) * ahead
-    page.text(*letter, "N", SMALL, bold=True, across="center", down="center", turn=-azimuth)
+    across, down = centre + (ARROW + 11) * ahead
+    page.text(across, down, "N", SMALL, bold=True, across="center", down="center", turn=-azimuth)
     return x + ARROW
 
 

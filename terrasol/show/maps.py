@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
-from importlib.metadata import version
+from collections.abc import Callable, Mapping, Sequence
 
 import numpy as np
 from matplotlib.colors import to_rgb
 from numpy.typing import NDArray
 
+from terrasol import __version__
 from terrasol.errors import SettingError
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame, make_frame
@@ -25,10 +25,13 @@ MAP_BOX = (1120, 980)
 WIDE = 1.45
 """A map wider than this many heights has its key below it, not beside it."""
 
-MARGIN, COLUMN, ASIDE, BETWEEN = 48, 352, 64, 32
+MARGIN, COLUMN, ASIDE, BETWEEN, BELOW = 48, 352, 64, 32, 44
 HEADER, STRIP, FOOTER = 136, 96, 62
 LATITUDES, LONGITUDES = 104, 44
 """Measures of the sheet [pixels]; the last two are the room for the labels of the rim."""
+
+_Block = tuple[Callable[[Page, float, float], None], float]
+"""What draws a part of the key at a place, and its height [pixels]."""
 
 TITLE, SUBTITLE = 38.0, 21.0
 """Sizes of letters [pixels]."""
@@ -44,14 +47,14 @@ def overview_png(
     unit: str = "MJ m-2",
     notes: Sequence[str] = (),
     mean: float | None = None,
-    monthly_means: Sequence[float] | None = None,
+    monthly_means: Mapping[tuple[int, int], float] | None = None,
     frame: Frame | None = None,
 ) -> bytes:
     """Draw the overview map of a run.
 
-    The map is true in metres and lies along the raster's edges; the arrow shows true north at
-    its centre, the scale bar true length there. Colours end at the half per cent of ground with
-    the least and with the most sun, and the colour bar shows by its points that there is more.
+    The map is true in metres and lies along the raster's edges; arrow and scale bar are true
+    at its centre. Beyond the colour bar's points lies the half per cent of ground with the least
+    and with the most sun.
 
     Parameters
     ----------
@@ -69,8 +72,8 @@ def overview_png(
         Short statements of what the map is and is not: period, sky, basis of the area.
     mean : float, optional
         Mean over the ground [unit]; taken from the map's pixels if not given.
-    monthly_means : sequence of twelve floats, optional
-        Mean of each month over the ground, January first; NaN for a month outside the period.
+    monthly_means : mapping of (year, month) to float, optional
+        Mean of each month over the ground [unit].
     frame : Frame, optional
         The frame of `elevation`, if it is at hand.
 
@@ -82,33 +85,30 @@ def overview_png(
     Raises
     ------
     SettingError
-        `energy` has another shape than the elevation model, or there are not twelve months.
+        `energy` has another shape than the elevation model.
     """
     if energy.shape != elevation.shape:
         raise SettingError(
             f"the map's values have the shape {energy.shape}, the ground {elevation.shape}:"
             " give both on one grid"
         )
-    if monthly_means is not None and len(monthly_means) != 12:
-        raise SettingError(f"a year has 12 monthly means, got {len(monthly_means)}")
     frame = frame or make_frame(elevation.shape, elevation.transform, elevation.crs)
     picture = make_picture(elevation, frame, MAP_BOX)
     values = picture.cells(picture.average(energy))
     scale = key.make_scale(values)
-    written = [line for note in notes for line in wrap(note, key.SMALL, COLUMN)]
-    blocks = _blocks(values, scale, quantity, unit, mean, monthly_means, written)
+    blocks = _blocks(values, scale, quantity, unit, mean, monthly_means, notes)
     page, places = _lay_out(picture, blocks)
     _write_head_and_foot(page, title, subtitle, elevation, frame)
-    corner = (MARGIN + LATITUDES, HEADER)
-    _draw_map(page, corner, picture, elevation, values, scale)
+    _draw_map(page, picture, elevation, values, scale)
     for (draw, _), (x, y) in zip(blocks, places, strict=True):
         draw(page, x, y)
-    return page.png(Title=title, Software=f"terrasol {version('terrasol')}")
+    return page.png(Title=title, Software=f"terrasol {__version__}")
 
 
-def _blocks(values, scale, quantity, unit, mean, months, lines):
+def _blocks(values, scale, quantity, unit, mean, months, notes) -> list[_Block]:
     """The parts of the key: functions that draw at a place, each with its height."""
     unit = key.printed_unit(unit)
+    lines = [line for note in notes for line in wrap(note, key.SMALL, COLUMN)]
 
     def colours(page, x, y):
         y = key.heading(page, x, y, quantity, unit, COLUMN)
@@ -122,9 +122,9 @@ def _blocks(values, scale, quantity, unit, mean, months, lines):
         key.draw_notes(page, x, y, lines)
 
     head = key.LEADING * (1 + len(wrap(quantity, key.TEXT, COLUMN, bold=True)))
-    blocks = [(colours, head + 30 + key.BAR_HEIGHT + 30)]
-    if months is not None:
-        blocks.append((year, 2 * key.LEADING + 12 + key.MONTHS_HEIGHT + 30))
+    blocks: list[_Block] = [(colours, head + 30 + key.BAR_HEIGHT + 30)]
+    if months:
+        blocks.append((year, 2 * key.LEADING + 12 + key.MONTHS_HEIGHT + 50))
     if lines:
         blocks.append((words, len(lines) * key.NOTE_LEADING))
     return blocks
@@ -133,20 +133,19 @@ def _blocks(values, scale, quantity, unit, mean, months, lines):
 def _lay_out(picture: Picture, blocks) -> tuple[Page, list[tuple[float, float]]]:
     """A sheet of the right size, and where the parts of the key go."""
     height, width = picture.shape
-    left = MARGIN + LATITUDES
-    between = 44
+    left = float(MARGIN + LATITUDES)
+    places: list[tuple[float, float]] = []
     if width > WIDE * height:
         top = HEADER + height + LONGITUDES + STRIP + 24
-        places = [(left + k * (COLUMN + BETWEEN), top) for k in range(len(blocks))]
+        places += [(left + k * (COLUMN + BETWEEN), top) for k in range(len(blocks))]
         bottom = top + max(tall for _, tall in blocks)
         right = max(left + width, places[-1][0] + COLUMN)
     else:
         x, y = left + width + ASIDE, float(HEADER)
-        places = []
         for _, tall in blocks:
             places.append((x, y))
-            y += tall + between
-        bottom = max(y - between, HEADER + height + LONGITUDES + STRIP)
+            y += tall + BELOW
+        bottom = max(y - BELOW, HEADER + height + LONGITUDES + STRIP)
         right = x + COLUMN
     right = max(right, left + 800)
     return Page(round(right + MARGIN), round(bottom + FOOTER)), places
@@ -161,15 +160,15 @@ def _write_head_and_foot(page, title, subtitle, elevation, frame) -> None:
     rows, columns = elevation.shape
     across, down = frame.cell_size
     foot = (
-        f"terrasol {version('terrasol')}  ·  {columns} × {rows} cells of"
+        f"terrasol {__version__}  ·  {columns} × {rows} cells of"
         f" {key.significant(across, 3)} × {key.significant(down, 3)} m  ·  {elevation.crs.name}"
     )
     page.text(left, page.height - 26, clip(foot, key.SMALL, room), key.SMALL, colour=SOFT)
 
 
-def _draw_map(page, corner, picture, elevation, values, scale) -> None:
+def _draw_map(page, picture, elevation, values, scale) -> None:
     """The map, its rim, and the strip below it."""
-    left, top = corner
+    left, top = corner = (MARGIN + LATITUDES, HEADER)
     height, width = picture.shape
     averaged = picture.average(elevation.heights)
     heights = picture.smooth(averaged)

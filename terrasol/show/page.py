@@ -7,9 +7,10 @@ matplotlib, so that the same content gives the same bytes anywhere with that ver
 from __future__ import annotations
 
 import io
+from bisect import bisect_right
 from functools import cache
 from pathlib import Path
-from typing import Any
+from typing import Any, Literal
 
 import matplotlib
 import numpy as np
@@ -70,8 +71,8 @@ class Page:
         *,
         colour: str = INK,
         bold: bool = False,
-        across: str = "left",
-        down: str = "baseline",
+        across: Literal["left", "center", "right"] = "left",
+        down: Literal["baseline", "center", "center_baseline"] = "baseline",
         turn: float = 0.0,
         halo: str | None = None,
     ) -> None:
@@ -92,10 +93,6 @@ class Page:
                 path_effects=effects,
             )
         )
-
-    def measure(self, text: str, size: float, bold: bool = False) -> float:
-        """Width of a line of text [pixels]."""
-        return text_width(text, size, bold)
 
     def image(self, x: float, y: float, pixels: NDArray[Any]) -> None:
         """Lay an array of shape (height, width, 3) down, pixel on pixel."""
@@ -185,6 +182,7 @@ def clip(text: str, size: float, width: float, bold: bool = False) -> str:
     text = " ".join(text.split())
     if text_width(text, size, bold) <= width:
         return text
-    while text and text_width(text + "…", size, bold) > width:
-        text = text[:-1]
-    return text.rstrip() + "…"
+    kept = bisect_right(
+        range(len(text)), width, key=lambda count: text_width(text[:count] + "…", size, bold)
+    )
+    return text[: max(kept - 1, 0)].rstrip() + "…"

@@ -81,12 +81,14 @@ class Picture:
         starts = np.arange(0, values.shape[0], down), np.arange(0, values.shape[1], across)
 
         def total(cells):
-            rows = np.add.reduceat(cells, starts[0], axis=0)
+            rows = np.add.reduceat(cells, starts[0], axis=0, dtype=np.float32)
             return np.add.reduceat(rows, starts[1], axis=1)
 
-        count = total(valid.astype(np.float32))
+        count = total(valid)
         mean = total(np.where(valid, values, np.float32(0.0))) / np.maximum(count, 1.0)
-        size = total(np.ones(values.shape, np.float32))
+        size = np.multiply.outer(
+            *(np.diff([*start, end]) for start, end in zip(starts, values.shape, strict=True))
+        )
         return np.where(2.0 * count > size, mean, np.nan).astype(np.float32)
 
     def smooth(self, averaged: NDArray[np.float32]) -> NDArray[np.float32]:
@@ -119,10 +121,8 @@ class Picture:
 
     def _places(self) -> tuple[NDArray[np.float32], NDArray[np.float32]]:
         """Row and column of the pixels in the averaged raster; 0 off the raster."""
-        return tuple(
-            np.nan_to_num(place) / np.float32(size)
-            for place, size in zip((self.rows, self.columns), self.coarsening, strict=True)
-        )
+        down, across = (np.asarray(size, np.float32) for size in self.coarsening)
+        return np.nan_to_num(self.rows) / down, np.nan_to_num(self.columns) / across
 
 
 def _nearest(averaged, row, column):
@@ -213,12 +213,11 @@ class _Plane:
 
     def outline(self) -> tuple[float, float, float, float]:
         """Left, right, bottom and top of the raster [m]."""
+        # The inside counts too: of a continent it may reach farther out than the rim.
         t = np.linspace(0.0, 1.0, 65)
-        nil, one = np.zeros_like(t), np.ones_like(t)
-        columns = np.concatenate([t, t, nil, one]) * self.shape[1]
-        rows = np.concatenate([nil, one, t, t]) * self.shape[0]
-        corner = np.array([[self.x0], [self.y0]])
-        x, y = self.affine @ np.stack([columns, rows]) + corner
+        columns, rows = np.meshgrid(t * self.shape[1], t * self.shape[0])
+        cells = np.stack([columns.ravel(), rows.ravel()])
+        x, y = self.affine @ cells + np.array([[self.x0], [self.y0]])
         longitude, latitude = self.inverse.transform(x, y)
         good = np.isfinite(longitude) & np.isfinite(latitude)
         longitude, latitude = longitude[good], latitude[good]

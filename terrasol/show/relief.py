@@ -63,7 +63,7 @@ def shade(heights: NDArray[np.float32], jacobian: NDArray[np.float64]) -> NDArra
     for azimuth, share in LIGHTS:
         x, y = math.sin(math.radians(azimuth)), math.cos(math.radians(azimuth))
         bright += np.float32(share) * np.maximum(1 - (x * right + y * up) / rise, 0) / length
-    return np.clip(0.5 + 0.55 * (bright - 1), 0, 1)
+    return np.asarray(np.clip(0.5 + 0.55 * (bright - 1), 0, 1), np.float32)
 
 
 def _difference(heights: NDArray[np.float32], axis: int) -> NDArray[np.float32]:
@@ -107,7 +107,7 @@ def paint(
     light = np.where(np.isfinite(brightness), brightness, np.float32(0.5))[..., None]
     image = np.where(
         light <= 0.5,
-        colours * (1 - (1 - 2 * light) * np.float32(SHADOW)),
+        colours * (1 - (1 - 2 * light) * np.asarray(SHADOW, np.float32)),
         colours + (1 - colours) * (light - 0.5) * GLEAM,
     )
     image[void] = hatch(picture.shape)[void]

@@ -17,6 +17,10 @@ ANGSTROM_EXPONENT: Final = 1.3
 """How aerosol depth falls with wavelength, depth ~ wavelength^-1.3: Angstrom's mean for
 natural aerosol (Iqbal 1983, section 6.6)."""
 
+RAYLEIGH_AIRMASS: Final = 14.0
+"""Pressure-corrected air mass at which Bird and Hulstrom's Rayleigh transmittance is least
+(0.595). Beyond it their formula turns upward, and passes 1 at an air mass of 29.5."""
+
 _RANGES: Final = {
     "aerosol_500nm": (0.0, 5.0, "aerosol depth at 500 nm"),
     "aerosol_380nm": (0.0, 8.0, "aerosol depth at 380 nm"),
@@ -174,9 +178,11 @@ def clear_sky(sun: SunSeries, air: Air, height: float) -> ClearSky:
 
     Ineichen and Perez (2002), Solar Energy 73, 151-157, or Bird and Hulstrom (1981),
     SERI/TR-642-761; both as pvlib computes them, from the apparent elevation, with the
-    air mass of Kasten and Young (1989) and the standard pressure at the height. No
-    model sends more to the ground than arrives above the air, nor less than nothing
-    from the sky: results beyond are cut there.
+    air mass of Kasten and Young (1989) and the standard pressure at the height. Two
+    departures keep the published formulas within reason outside what they were made
+    for: no more reaches the ground than arrives above the air (Ineichen and Perez pass
+    that above some 4,200 m), and Bird's Rayleigh transmittance is held at its least for
+    a sun lower than about 3 degrees, where his formula turns upward.
 
     Parameters
     ----------
@@ -192,35 +198,69 @@ def clear_sky(sun: SunSeries, air: Air, height: float) -> ClearSky:
     """
     extraterrestrial = air.solar_constant / sun.distance**2
     zenith = 90.0 - np.maximum(sun.elevation, 0.0)
+    if air.model == "ineichen":
+        beam, diffuse = _ineichen(sun, air, height, zenith, extraterrestrial)
+    else:
+        beam, diffuse = _bird(sun, air, height, zenith, extraterrestrial)
+    up = sun.elevation > 0.0
+    beam = np.minimum(beam, extraterrestrial)
+    most = (extraterrestrial - beam) * np.cos(np.radians(zenith))
+    return ClearSky(beam * up, np.clip(diffuse, 0.0, most) * up, extraterrestrial)
+
+
+def _ineichen(
+    sun: SunSeries,
+    air: Air,
+    height: float,
+    zenith: NDArray[np.float64],
+    extraterrestrial: NDArray[np.float64],
+) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    mass = atmosphere.get_absolute_airmass(
+        relative_airmass(sun.elevation), atmosphere.alt2pres(height)
+    )
+    irradiance = clearsky.ineichen(
+        zenith,
+        mass,
+        _daily_linke(air, sun.time),
+        altitude=height,
+        dni_extra=extraterrestrial,
+        perez_enhancement=False,
+    )
+    return irradiance["dni"], irradiance["dhi"]
+
+
+def _bird(
+    sun: SunSeries,
+    air: Air,
+    height: float,
+    zenith: NDArray[np.float64],
+    extraterrestrial: NDArray[np.float64],
+) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
     relative = relative_airmass(sun.elevation)
     pressure = atmosphere.alt2pres(height)
-    if air.model == "ineichen":
-        irradiance = clearsky.ineichen(
-            zenith,
-            atmosphere.get_absolute_airmass(relative, pressure),
-            _daily_linke(air, sun.time),
-            altitude=height,
-            dni_extra=extraterrestrial,
-            perez_enhancement=False,
-        )
-    else:
-        irradiance = clearsky.bird(
-            zenith,
-            relative,
-            air.aerosol_380nm,
-            air.aerosol_500nm,
-            air.water_cm,
-            ozone=air.ozone_atm_cm,
-            pressure=pressure,
-            dni_extra=extraterrestrial,
-            asymmetry=air.asymmetry,
-            albedo=air.ground_albedo,
-        )
-    up = sun.elevation > 0.0
-    beam = np.minimum(irradiance["dni"], extraterrestrial)
-    most = (extraterrestrial - beam) * np.cos(np.radians(zenith))
-    diffuse = np.clip(irradiance["dhi"], 0.0, most)
-    return ClearSky(beam * up, diffuse * up, extraterrestrial)
+    irradiance = clearsky.bird(
+        zenith,
+        relative,
+        air.aerosol_380nm,
+        air.aerosol_500nm,
+        air.water_cm,
+        ozone=air.ozone_atm_cm,
+        pressure=pressure,
+        dni_extra=extraterrestrial,
+        asymmetry=air.asymmetry,
+        albedo=air.ground_albedo,
+    )
+    beam = irradiance["dni"]
+    mass = atmosphere.get_absolute_airmass(relative, pressure)
+    low = mass > RAYLEIGH_AIRMASS
+    beam[low] *= _bird_rayleigh(RAYLEIGH_AIRMASS) / _bird_rayleigh(mass[low])
+    return beam, irradiance["dhi"]
+
+
+def _bird_rayleigh(mass: ArrayLike) -> NDArray[np.float64]:
+    """Rayleigh transmittance of Bird and Hulstrom (1981), for the air mass at pressure."""
+    mass = np.asarray(mass, dtype=np.float64)
+    return np.exp(-0.0903 * mass**0.84 * (1.0 + mass - mass**1.01))
 
 
 def relative_airmass(elevation: ArrayLike) -> NDArray[np.float64]:
