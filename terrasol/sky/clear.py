@@ -181,7 +181,7 @@ def clear_sky(sun: SunSeries, air: Air, height: float) -> ClearSky:
     air mass of Kasten and Young (1989) and the standard pressure at the height. Two
     departures keep the published formulas within reason outside what they were made
     for: no more reaches the ground than arrives above the air (Ineichen and Perez pass
-    that above some 4,200 m), and Bird's Rayleigh transmittance is held at its least for
+    that above some 4,100 m), and Bird's Rayleigh transmittance is held at its least for
     a sun lower than about 3 degrees, where his formula turns upward.
 
     Parameters
