@@ -61,11 +61,13 @@ class Scale:
 
     def colours(self, values: NDArray[np.floating]) -> NDArray[np.float32]:
         """Red, green and blue of values; NaN as `low`."""
-        table = matplotlib.colormaps[COLOUR_MAP](np.linspace(DARKEST, LIGHTEST, 256))
-        table = table + (1 - table) * WASH
+        listed = matplotlib.colormaps[COLOUR_MAP](np.arange(256))[:, :3]
+        places = np.linspace(DARKEST * 255, LIGHTEST * 255, 256)
+        table = np.stack([np.interp(places, np.arange(256), part) for part in listed.T], axis=-1)
+        table = (table + (1 - table) * WASH).astype(np.float32)
         share = (values - self.low) / (self.high - self.low)
         index = np.clip(np.nan_to_num(share) * 255 + 0.5, 0, 255).astype(np.uint8)
-        return table[:, :3].astype(np.float32)[index]
+        return table[index]
 
 
 def make_scale(values: NDArray[np.floating], outside: float = 0.5) -> Scale:
@@ -172,13 +174,20 @@ def draw_months(
     top = max(float(values.max(initial=0.0)), 1e-30)
     years: set[int] = set()
     several = len({year for year, _ in means}) > 1
+    brief = slot * 12 < 50
     for k, ((year, month), value) in enumerate(zip(means, values, strict=True)):
         middle = x + (k + 0.5) * slot
         if slot > SMALL:
             letter = "JFMAMJJASOND"[month - 1]
             page.text(middle, bottom + 20, letter, SMALL, colour=SOFT, across="center")
         if several and year not in years:
-            page.text(middle - slot / 2 + 5, bottom + 44, str(year), SMALL, colour=SOFT)
+            page.text(
+                middle - slot / 2 + 5,
+                bottom + 44,
+                f"’{year % 100:02d}" if brief else str(year),
+                SMALL,
+                colour=SOFT,
+            )
             page.lines([[(middle - slot / 2, bottom), (middle - slot / 2, bottom + 46)]], line=0.8)
             years.add(year)
         tall = max(value, 0.0) / top * (MONTHS_HEIGHT - 22)
@@ -208,7 +217,7 @@ def draw_scale_bar(page: Page, x: float, y: float, metres_per_pixel: float) -> f
     parts = 4 if f"{length:e}".startswith("2") else 5
     for k in range(0, parts, 2):
         page.box(x + k * pixels / parts, y - 5, pixels / parts, 10, fill=SCALE_DARK)
-    page.box(x, y - 5, pixels, 10, edge=SCALE_DARK, line=1.4)
+    page.box(x + 0.7, y - 4.3, pixels - 1.4, 8.6, edge=SCALE_DARK, line=1.4)
     unit, metres = ("km", 1000.0) if length >= 1000 else ("m", 1.0)
     end = f"{length / metres:.6g} {unit}"
     page.text(x, y - 12, "0", SMALL, across="center")

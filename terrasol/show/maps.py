@@ -59,15 +59,12 @@ def overview_png(
     Parameters
     ----------
     elevation : Elevation
-        The ground.
     energy : ndarray of float32, shape (rows, columns)
         What to colour the ground by [unit]; void NaN.
     title, subtitle : str
         Head of the sheet.
-    quantity : str
-        What the colours are.
-    unit : str
-        Unit of `energy` and `monthly_means`, as UDUNITS reads it.
+    quantity, unit : str
+        What the colours and the monthly bars are, and their unit as UDUNITS reads it.
     notes : sequence of str
         Short statements of what the map is and is not: period, sky, basis of the area.
     mean : float, optional
@@ -75,7 +72,7 @@ def overview_png(
     monthly_means : mapping of (year, month) to float, optional
         Mean of each month over the ground [unit].
     frame : Frame, optional
-        The frame of `elevation`, if it is at hand.
+        That of `elevation`, if it is at hand.
 
     Returns
     -------
@@ -87,11 +84,7 @@ def overview_png(
     SettingError
         `energy` has another shape than the elevation model.
     """
-    if energy.shape != elevation.shape:
-        raise SettingError(
-            f"the map's values have the shape {energy.shape}, the ground {elevation.shape}:"
-            " give both on one grid"
-        )
+    _demand_one_grid(elevation, energy)
     frame = frame or make_frame(elevation.shape, elevation.transform, elevation.crs)
     picture = make_picture(elevation, frame, MAP_BOX)
     values = picture.cells(picture.average(energy))
@@ -103,6 +96,14 @@ def overview_png(
     for (draw, _), (x, y) in zip(blocks, places, strict=True):
         draw(page, x, y)
     return page.png(Title=title, Software=f"terrasol {__version__}")
+
+
+def _demand_one_grid(elevation, energy) -> None:
+    if energy.shape != elevation.shape:
+        raise SettingError(
+            f"the map's values have the shape {energy.shape}, the ground {elevation.shape}:"
+            " give both on one grid"
+        )
 
 
 def _blocks(values, scale, quantity, unit, mean, months, notes) -> list[_Block]:

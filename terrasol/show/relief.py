@@ -16,6 +16,9 @@ From the upper left, as most readers see hills and not hollows, softened from bo
 LIGHT_HEIGHT = 45.0
 """Height of those lights [degrees]."""
 
+CONTRAST = 0.55
+"""Change of the picture's brightness by that of the lit ground."""
+
 STEEP = 0.55
 """Tangent that the steeper tenth of the ground is drawn with: low hills are drawn higher and
 high mountains lower, so that either has form."""
@@ -53,7 +56,8 @@ def shade(heights: NDArray[np.float32], jacobian: NDArray[np.float64]) -> NDArra
     """
     by_cell = np.stack([_difference(heights, 1), _difference(heights, 0)])
     right, up = np.tensordot(np.linalg.inv(jacobian).T.astype(np.float32), by_cell, axes=1)
-    steepness = np.hypot(right, up)[::4, ::4]
+    few = tuple(slice(None, None, max(1, size // 400)) for size in heights.shape)
+    steepness = np.hypot(right[few], up[few])
     steep = float(np.percentile(steepness[steepness > 0], 90)) if steepness.any() else STEEP
     stretch = np.float32(np.clip(STEEP / steep, *EXAGGERATION))
     right, up = right * stretch, up * stretch
@@ -63,7 +67,7 @@ def shade(heights: NDArray[np.float32], jacobian: NDArray[np.float64]) -> NDArra
     for azimuth, share in LIGHTS:
         x, y = math.sin(math.radians(azimuth)), math.cos(math.radians(azimuth))
         bright += np.float32(share) * np.maximum(1 - (x * right + y * up) / rise, 0) / length
-    return np.asarray(np.clip(0.5 + 0.55 * (bright - 1), 0, 1), np.float32)
+    return np.clip(0.5 + CONTRAST * (bright - 1), 0, 1)
 
 
 def _difference(heights: NDArray[np.float32], axis: int) -> NDArray[np.float32]:
@@ -76,7 +80,7 @@ def _difference(heights: NDArray[np.float32], axis: int) -> NDArray[np.float32]:
     none = nil.astype(bool)
     sides = np.concatenate((none, known), axis=axis).astype(np.float32)
     sides += np.concatenate((known, none), axis=axis)
-    return (behind + ahead) / np.maximum(sides, 1)
+    return np.asarray((behind + ahead) / np.maximum(sides, 1), np.float32)
 
 
 def paint(
