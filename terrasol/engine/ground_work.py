@@ -43,7 +43,7 @@ class Ground:
     @property
     def azimuths(self) -> int:
         """Number of azimuths."""
-        return int(self.far.rise.shape[0])
+        return int(self.far.height.shape[0])
 
 
 class BlockGround:
@@ -83,8 +83,8 @@ class BlockGround:
         steps = near_steps(ground.frame, *self.middle, ground.azimuths, ground.refraction)
         nodes = ground.far.block(block.row, block.column, (block.rows, block.columns))
         far = (
-            np.ascontiguousarray(ground.far.rise[:, nodes[0], nodes[1]]),
-            np.ascontiguousarray(ground.far.fall[:, nodes[0], nodes[1]]),
+            np.ascontiguousarray(ground.far.height[:, nodes[0], nodes[1]]),
+            np.ascontiguousarray(ground.far.away[:, nodes[0], nodes[1]]),
         )
         lift = self.datum - ground.far.datum
         if wanted is None:
@@ -97,7 +97,7 @@ class BlockGround:
             horizon = buffer
             if rows != STRIP_ROWS:
                 horizon = np.empty((ground.azimuths, rows, block.columns), np.float32)
-            horizon_strip(self.padded, first, steps, far, lift, horizon)
+            horizon_strip(self.padded, first, steps, far, lift, ground.refraction, horizon)
             heights = self.padded[PAD + first : PAD + first + rows, PAD:-PAD]
             yield (
                 first,

@@ -8,6 +8,7 @@ they find is re-seen from each cell's own height.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from itertools import pairwise
 from typing import Final
 
 import numpy as np
@@ -105,11 +106,10 @@ def near_steps(
 class FarHorizon:
     """What bounds the view beyond the near field, on a lattice of nodes.
 
-    The tangent of the horizon of an eye at height z is ``rise - fall * (z - datum)``.
-
     Parameters
     ----------
-    rise, fall : ndarray of float32, shape (azimuths, node rows, node columns)
+    height, away : ndarray of float32, shape (azimuths, node rows, node columns)
+        Height above `datum` and distance of the point that bounds the view [m].
         Node (i, j) lies on cell (i NODE_STEP, j NODE_STEP).
     across_void : ndarray of uint8, shape (azimuths, node rows, node columns)
         1 where the line of sight crosses a void before it ends.
@@ -117,8 +117,8 @@ class FarHorizon:
         Height [m].
     """
 
-    rise: NDArray[np.float32]
-    fall: NDArray[np.float32]
+    height: NDArray[np.float32]
+    away: NDArray[np.float32]
     across_void: NDArray[np.uint8]
     datum: float
 
@@ -165,8 +165,8 @@ def _edges(size: int, parts: int) -> list[int]:
 
 def _zones_hold(frame: Frame, rows: list[int], columns: list[int]) -> bool:
     """Whether the Jacobian stays within tolerance of each zone's middle."""
-    for top, bottom in zip(rows, rows[1:], strict=False):
-        for left, right in zip(columns, columns[1:], strict=False):
+    for top, bottom in pairwise(rows):
+        for left, right in pairwise(columns):
             middle = frame.jacobian_at((top + bottom) / 2, (left + right) / 2)
             for row in (top, bottom):
                 for column in (left, right):
@@ -199,14 +199,14 @@ def sweep(
     After Dozier, Bruno and Downey (1981), doi:10.1016/0098-3004(81)90026-2; the terms of
     curvature and the lattice are terrasol's own (docs/method.md).
     """
-    azimuth = 360.0 * azimuth_index / far.rise.shape[0]
+    azimuth = 360.0 * azimuth_index / far.height.shape[0]
     rows, columns = zone_edges(frame)
-    for top, bottom in zip(rows, rows[1:], strict=False):
-        for left, right in zip(columns, columns[1:], strict=False):
+    for top, bottom in pairwise(rows):
+        for left, right in pairwise(columns):
             ray = frame.index_direction((top + bottom) / 2, (left + right) / 2, azimuth)
             jacobian = frame.jacobian_at((top + bottom) / 2, (left + right) / 2)
             spans = far.block(top, left, (bottom - top, right - left))
-            layers = [part[azimuth_index] for part in (far.rise, far.fall, far.across_void)]
+            layers = [part[azimuth_index] for part in (far.height, far.away, far.across_void)]
             _sweep_zone(elevation.heights, ray, jacobian, refraction, far.datum, spans, layers)
 
 
@@ -249,6 +249,7 @@ def horizon_strip(
     steps: tuple[NDArray[np.int64], NDArray[np.float32]],
     far: tuple[NDArray[np.float32], NDArray[np.float32]],
     lift: float,
+    refraction: float,
     out: NDArray[np.float32],
 ) -> None:
     """Tangent of the horizon, not below 0, for some rows of a block.
@@ -262,11 +263,13 @@ def horizon_strip(
     steps : tuple of ndarray
         From `near_steps`.
     far : tuple of ndarray of float32
-        Rise and fall on the block's nodes.
+        Height and distance on the block's nodes.
     lift : float
         What to add to `padded` to get heights above the datum of `far` [m].
+    refraction : float
+        Coefficient k.
     out : ndarray of float32, shape (azimuths, rows, columns)
         Filled.
     """
     near_field(padded, PAD, first_row, *steps, out)
-    merge_far(padded, PAD, first_row, NODE_STEP, *far, lift, out)
+    merge_far(padded, PAD, first_row, NODE_STEP, *far, lift, half_curve(refraction), out)

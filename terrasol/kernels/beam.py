@@ -65,7 +65,7 @@ def fill_table(elevation, azimuth, lane, weight, knot_angle, disc, table):
     table : (azimuths, knots, 2, lanes, heights) float64, added to: horizontal and vertical
         sums over all suns above the horizon
     """
-    azimuths, knots, _, lanes, heights = table.shape
+    azimuths, knots, _, _, heights = table.shape
     sector = 2.0 * np.pi / azimuths
     whole = np.zeros_like(table)
     for i in range(elevation.size):

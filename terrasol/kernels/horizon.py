@@ -11,6 +11,10 @@ from numba import njit
 FAST = {"contract", "reassoc", "nsz", "arcp"}
 """Fast-math flags that still know NaN (void) and infinity."""
 
+NOTHING = 0.25
+"""Tangent below the eye at which a line with nothing in view ends; cells between it and a
+line with a view get something between."""
+
 GROUP = 16
 """Lines of the far field that are read side by side."""
 
@@ -70,7 +74,8 @@ def near_field(heights, pad, first_row, shift, weight, out):
 def _line_heights(heights, far_end, along, across, breadth, start, gap, drift, lines):
     """Heights where straight lines cross each row (or column), -infinite off the raster.
 
-    Lines are taken side by side, row after row, so that neighbours share what a cache and
+    A line beside the raster, less than a gap away, has the heights of the rim, so that cells
+    near the rim lie between two lines like all others. Lines are taken side by side, row after row, so that neighbours share what a cache and
     a page of memory hold.
     """
     group, length = lines.shape
@@ -78,7 +83,8 @@ def _line_heights(heights, far_end, along, across, breadth, start, gap, drift, l
         for g in range(group):
             y = start + g * gap + drift * i
             lines[g, i] = -np.inf
-            if y >= 0.0 and y <= breadth - 1:
+            if y > -gap and y < breadth - 1 + gap:
+                y = min(max(y, 0.0), breadth - 1.0)
                 j = int(y)
                 f = np.float32(y - j)
                 at = far_end + i * along + j * across
@@ -159,10 +165,10 @@ def _push(place, bulge, top, x, g):
 def _walk_line(
     line, points, voids, first_query, every, skip, step, half_curve, datum, k, seen, place, bulge
 ):
-    """Walk line k from its far end; at each query leave (A, B, void seen).
+    """Walk line k from its far end; at each query leave what bounds the view.
 
-    The horizon of an eye at height z near the query is A - B z: the height and distance of
-    the point that bounds the view, re-seen from there.
+    That is a point's height and distance, and whether a void lies before it. Where nothing
+    lies beyond the near field, it is a point where that ends, well below the eye.
     """
     top = -1
     hint = 0
@@ -182,24 +188,24 @@ def _walk_line(
         if i >= 0 and line[min(i, line.size - 1)] > -np.inf:
             own = np.float64(line[min(i, line.size - 1)])
         void = voids[hole - 1] * step if hole > 0 else -1.0
+        seen[query, k, 0] = (own - datum if own == own else 0.0) - NOTHING * skip * step
+        seen[query, k, 1] = skip * step
+        seen[query, k, 2] = 1.0 if hole > 0 else 0.0
         if top >= 0 and own == own:
             hint = max(hint, 0)
             eye = i * step
             sight = own - eye * eye * half_curve
             hint = _tangent(place, bulge, top, hint, eye, sight)
-            away = eye - place[hint]
             height = bulge[hint] + place[hint] * place[hint] * half_curve
-            seen[query, k, 0] = (height - datum) / away - away * half_curve
-            seen[query, k, 1] = 1.0 / away
+            seen[query, k, 0] = height - datum
+            seen[query, k, 1] = eye - place[hint]
             seen[query, k, 2] = 1.0 if void > place[hint] else 0.0
-        elif hole > 0:
-            seen[query, k, 2] = 1.0
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
 def far_field(
     heights, far_end, along, across, length, breadth, drift, step, half_curve,
-    skip, gap, first_query, first_node, every, datum, rise, fall, across_void,
+    skip, gap, first_query, first_node, every, datum, height, away, across_void,
 ):  # fmt: skip
     """Horizon beyond the near field along every line of one azimuth.
 
@@ -218,11 +224,12 @@ def far_field(
     first_query : int, steps from the far end; may be negative
     first_node : int, side position of the first node, cells
     every : int, spacing of queries and nodes
-    rise, fall : (queries, nodes) float32, out: A and B of the horizon A - B z
+    height, away : (queries, nodes) float32, out: height less `datum` and distance of the
+        point that bounds the view
     across_void : (queries, nodes) uint8, out: 1 where a void lies between the eye and the
         point that bounds its view
     """
-    count, nodes = rise.shape
+    count, nodes = height.shape
     last_query = first_query + (count - 1) * every
     lowest = min(-drift * first_query, -drift * last_query)
     highest = max(-drift * first_query, -drift * last_query) + (nodes - 1) * every
@@ -248,47 +255,53 @@ def far_field(
         )  # fmt: skip
     for q in range(count):
         ahead = drift * (first_query + q * every) + origin
-        first_line = max(int(np.ceil(-ahead / gap - 1e-9)), 0)
-        last_line = min(int(np.floor((breadth - 1 - ahead) / gap + 1e-9)), lines - 1)
+        first_line = max(int(np.floor(-ahead / gap)), 0)
+        last_line = min(int(np.ceil((breadth - 1 - ahead) / gap)), lines - 1)
         for n in range(nodes):
-            # Only lines that lie on the raster here can be mixed.
+            # Only lines on the raster, or just beside it, can be mixed.
             y = (first_node + n * every - ahead) / gap
             y = min(max(y, float(first_line)), float(last_line))
             k = min(int(y), lines - 2)
             f = y - k
-            rise[q, n] = (1.0 - f) * seen[q, k, 0] + f * seen[q, k + 1, 0]
-            fall[q, n] = (1.0 - f) * seen[q, k, 1] + f * seen[q, k + 1, 1]
+            height[q, n] = (1.0 - f) * seen[q, k, 0] + f * seen[q, k + 1, 0]
+            away[q, n] = (1.0 - f) * seen[q, k, 1] + f * seen[q, k + 1, 1]
             across_void[q, n] = seen[q, k, 2] > 0.0 or seen[q, k + 1, 2] > 0.0
 
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=FAST)
-def merge_far(heights, pad, first_row, every, rise, fall, datum, out):
+def merge_far(heights, pad, first_row, every, height, away, lift, half_curve, out):
     """Raise the near horizon to the far one, seen from each cell's own height.
 
-    rise, fall : (azimuths, node rows, node columns) float32, this block's nodes; the first
-        node lies on the block's first cell
-    datum : height that was taken off `heights` less the one taken off in `rise`
+    Height and distance of the bounding point are linear between nodes: for one and the same
+    point that is exact, wherever the cell lies between them.
+
+    height, away : (azimuths, node rows, node columns) float32, this block's nodes; the
+        first node lies on the block's first cell
+    lift : what to add to `heights` to have them above the datum of `height`
+    half_curve : 1 / (2 R')
     out : (azimuths, rows, columns) float32, near horizon in, horizon out
     """
     azimuths, rows, columns = out.shape
-    upper = np.empty((2, columns + every), np.float32)
+    curve = np.float32(half_curve)
+    raised = np.float32(lift)
+    spread = columns + every
+    top = np.empty(spread, np.float32)
+    distance = np.empty(spread, np.float32)
     for a in range(azimuths):
         for r in range(rows):
             n = (first_row + r) // every
             v = np.float32((first_row + r - n * every) / every)
             for m in range((columns + every - 1) // every):
-                a0 = (1 - v) * rise[a, n, m] + v * rise[a, n + 1, m]
-                a1 = (1 - v) * rise[a, n, m + 1] + v * rise[a, n + 1, m + 1]
-                b0 = (1 - v) * fall[a, n, m] + v * fall[a, n + 1, m]
-                b1 = (1 - v) * fall[a, n, m + 1] + v * fall[a, n + 1, m + 1]
+                a0 = height[a, n, m] + v * (height[a, n + 1, m] - height[a, n, m])
+                a1 = height[a, n, m + 1] + v * (height[a, n + 1, m + 1] - height[a, n, m + 1])
+                b0 = away[a, n, m] + v * (away[a, n + 1, m] - away[a, n, m])
+                b1 = away[a, n, m + 1] + v * (away[a, n + 1, m + 1] - away[a, n, m + 1])
                 for s in range(every):
                     u = np.float32(s / every)
-                    upper[0, m * every + s] = a0 + u * (a1 - a0)
-                    upper[1, m * every + s] = b0 + u * (b1 - b0)
+                    top[m * every + s] = a0 + u * (a1 - a0)
+                    distance[m * every + s] = b0 + u * (b1 - b0)
             own = heights[first_row + r + pad, pad : pad + columns]
             best = out[a, r]
-            far = upper[0]
-            drop = upper[1]
             for c in range(columns):
-                t = far[c] - drop[c] * (own[c] + datum)
+                t = (top[c] - raised - own[c]) / distance[c] - distance[c] * curve
                 best[c] = t if t > best[c] else best[c]

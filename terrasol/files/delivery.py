@@ -1,0 +1,180 @@
+"""An output folder that gets all of its files, or none."""
+
+from __future__ import annotations
+
+import json
+import os
+import shutil
+import tempfile
+from collections.abc import Iterable
+from os import PathLike
+from pathlib import Path
+from typing import Any, Final, Self
+
+from terrasol.errors import OutputError
+
+LEFTOVERS: Final = (".aux.xml", ".ovr")
+"""Endings of what other software may have put beside a file that is replaced: it describes
+the old one."""
+
+NEARLY_FULL: Final = 5_000_000
+"""Free bytes under which a disk is called full, whatever the failure says."""
+
+
+class Delivery:
+    """Collect files in a hidden folder beside their final place, and move them there at once.
+
+    Use it as a context: files are written to `staged` paths and appear under their own
+    names with `commit`. Whatever ends the context earlier leaves the disk as it was.
+
+    Parameters
+    ----------
+    folder : path
+        Where the files shall appear; made if missing.
+    names : iterable of str
+        Names of all files to come.
+    overwrite : bool
+        Whether files of those names may be replaced.
+    need : int
+        Bytes that the work will take at most; refused at once if they are not free.
+
+    Raises
+    ------
+    OutputError
+        The folder cannot be made or written to, a file is in the way, or the disk is too full.
+    """
+
+    def __init__(
+        self,
+        folder: str | PathLike[str],
+        names: Iterable[str],
+        *,
+        overwrite: bool = False,
+        need: int = 0,
+    ) -> None:
+        self.folder = Path(folder)
+        self.names = tuple(names)
+        self.overwrite = overwrite
+        self.need = need
+        self._made: list[Path] = []
+        self._hidden: Path | None = None
+
+    def __enter__(self) -> Self:
+        """Check all that can be checked before the work, and make the hidden folder."""
+        check_free(self.folder, self.names, self.overwrite)
+        try:
+            self._make_folder()
+            check_space(self.folder, self.need)
+            self._hidden = Path(tempfile.mkdtemp(prefix=".terrasol-", dir=self.folder))
+        except OSError as error:
+            self._clear()
+            raise OutputError(_not_written(self.folder, self.folder, error)) from error
+        except BaseException:
+            self._clear()
+            raise
+        return self
+
+    def __exit__(self, *_: object) -> None:
+        """Remove what was not committed."""
+        self._clear()
+
+    def staged(self, name: str) -> Path:
+        """Where to write a file for now."""
+        assert self._hidden is not None
+        return self._hidden / name
+
+    def write_bytes(self, name: str, data: bytes) -> None:
+        """Stage a file from memory."""
+        try:
+            self.staged(name).write_bytes(data)
+        except OSError as error:
+            raise self.refusal(name, error) from error
+
+    def write_json(self, name: str, record: dict[str, Any]) -> None:
+        """Stage a record as a JSON file."""
+        text = json.dumps(record, indent=2, ensure_ascii=False, allow_nan=False)
+        self.write_bytes(name, (text + "\n").encode())
+
+    def refusal(self, name: str, error: Exception) -> OutputError:
+        """Word the failure to write a file."""
+        return OutputError(_not_written(self.folder / name, self.folder, error))
+
+    def commit(self) -> list[Path]:
+        """Move every file to its place, in the order of the names; return where they are."""
+        check_free(self.folder, self.names, self.overwrite)
+        places = [self.folder / name for name in self.names]
+        try:
+            for name, place in zip(self.names, places, strict=True):
+                os.replace(self.staged(name), place)
+                for leftover in LEFTOVERS:
+                    Path(f"{place}{leftover}").unlink(missing_ok=True)
+        except OSError as error:
+            raise self.refusal(name, error) from error
+        self._made.clear()
+        return places
+
+    def _make_folder(self) -> None:
+        """Make the folder and its parents, and remember which."""
+        missing = [p for p in (self.folder, *self.folder.parents) if not p.exists()]
+        for path in reversed(missing):
+            path.mkdir()
+            self._made.append(path)
+
+    def _clear(self) -> None:
+        """Remove the hidden folder, and folders made for nothing."""
+        if self._hidden is not None:
+            shutil.rmtree(self._hidden, ignore_errors=True)
+            self._hidden = None
+        while self._made:
+            path = self._made.pop()
+            try:
+                path.rmdir()
+            except OSError:  # someone else put something in it meanwhile
+                self._made.clear()
+
+
+def check_free(folder: str | PathLike[str], names: Iterable[str], overwrite: bool = False) -> None:
+    """Refuse a folder in which any of the files is already there.
+
+    Raises
+    ------
+    OutputError
+        A file is there and may not be replaced, or the folder is no folder.
+    """
+    folder = Path(folder)
+    if folder.exists() and not folder.is_dir():
+        raise OutputError(f"{folder} is not a folder: name another output folder")
+    taken = [name for name in names if (folder / name).exists()]
+    for name in taken:
+        if not overwrite:
+            more = f" (and {len(taken) - 1} more)" if len(taken) > 1 else ""
+            raise OutputError(
+                f"{folder / name} exists{more}: pass --overwrite to replace it, or name another"
+                " output folder"
+            )
+        if (folder / name).is_dir():
+            raise OutputError(f"{folder / name} is a folder and in the way: remove it")
+
+
+def check_space(folder: Path, need: int) -> None:
+    """Refuse work that will not fit on the folder's disk.
+
+    Raises
+    ------
+    OutputError
+        Fewer than `need` bytes are free.
+    """
+    free = shutil.disk_usage(folder).free
+    if need > free:
+        raise OutputError(
+            f"{folder}: the work may need {need / 1e6:,.0f} MB of disk and {free / 1e6:,.0f} MB are"
+            " free: make room or name another output folder"
+        )
+
+
+def _not_written(path: Path, folder: Path, error: Exception) -> str:
+    """Say why a file could not be written."""
+    if folder.is_dir() and shutil.disk_usage(folder).free < NEARLY_FULL:
+        return f"{path} could not be written: the disk is full, make room"
+    text = " ".join((getattr(error, "strerror", None) or str(error)).split()).rstrip(".")
+    return f"{path} could not be written ({text}): check the folder and the disk"
