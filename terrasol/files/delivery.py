@@ -61,8 +61,8 @@ class Delivery:
 
     def __enter__(self) -> Self:
         """Check all that can be checked before the work, and make the hidden folder."""
-        check_free(self.folder, self.names, self.overwrite)
         try:
+            check_free(self.folder, self.names, self.overwrite)
             self._make_folder()
             check_space(self.folder, self.need)
             self._hidden = Path(tempfile.mkdtemp(prefix=".terrasol-", dir=self.folder))
@@ -115,7 +115,7 @@ class Delivery:
 
     def _make_folder(self) -> None:
         """Make the folder and its parents, and remember which."""
-        missing = [p for p in (self.folder, *self.folder.parents) if not p.exists()]
+        missing = [p for p in (self.folder, *self.folder.parents) if not os.path.exists(p)]
         for path in reversed(missing):
             path.mkdir()
             self._made.append(path)
@@ -142,9 +142,9 @@ def check_free(folder: str | PathLike[str], names: Iterable[str], overwrite: boo
         A file is there and may not be replaced, or the folder is no folder.
     """
     folder = Path(folder)
-    if folder.exists() and not folder.is_dir():
+    if os.path.exists(folder) and not os.path.isdir(folder):
         raise OutputError(f"{folder} is not a folder: name another output folder")
-    taken = [name for name in names if (folder / name).exists()]
+    taken = [name for name in names if os.path.lexists(folder / name)]
     for name in taken:
         if not overwrite:
             more = f" (and {len(taken) - 1} more)" if len(taken) > 1 else ""
@@ -152,7 +152,7 @@ def check_free(folder: str | PathLike[str], names: Iterable[str], overwrite: boo
                 f"{folder / name} exists{more}: pass --overwrite to replace it, or name another"
                 " output folder"
             )
-        if (folder / name).is_dir():
+        if os.path.isdir(folder / name):
             raise OutputError(f"{folder / name} is a folder and in the way: remove it")
 
 

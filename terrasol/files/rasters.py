@@ -2,11 +2,11 @@
 
 from __future__ import annotations
 
+import os
 import warnings
 from collections.abc import Iterator
 from contextlib import contextmanager
 from os import PathLike
-from pathlib import Path
 from typing import Any, Final
 
 import numpy as np
@@ -70,10 +70,16 @@ def read_elevation(
     InputError
         The file is missing, damaged, or no elevation model; the message says what to do.
     """
+    return read_with_unit(path, vertical_unit, fill_voids)[0]
+
+
+def read_with_unit(
+    path: str | PathLike[str], vertical_unit: str | None = None, fill_voids: int = 0
+) -> tuple[Elevation, str]:
+    """Do what `read_elevation` does, and return also the unit that the heights were in."""
     if fill_voids < 0:
         raise SettingError(f"the largest void to fill must be 0 cells or more; got {fill_voids}")
-    path = Path(path)
-    with _naming(path), _opened(path) as source:
+    with naming(path), _opened(path) as source:
         _check_kind(source)
         reference = _reference(source)
         transform = _transform(source)
@@ -82,11 +88,11 @@ def read_elevation(
         stepped = _cell_size(transform, source.shape, reference) < STEPPED_BELOW
         notes += _clean(heights, unit, stepped)
         filled = _fill(heights, fill_voids) if fill_voids else None
-        return Elevation(heights, transform, reference.horizontal, filled, notes)
+        return Elevation(heights, transform, reference.horizontal, filled, notes), unit
 
 
 @contextmanager
-def _naming(path: Path) -> Iterator[None]:
+def naming(path: str | PathLike[str]) -> Iterator[None]:
     """Put the file's name before what is wrong with it."""
     try:
         yield
@@ -95,23 +101,27 @@ def _naming(path: Path) -> Iterator[None]:
 
 
 @contextmanager
-def _opened(path: Path) -> Iterator[Any]:
+def _opened(path: str | PathLike[str]) -> Iterator[Any]:
     """Open a raster for reading, with every failure of GDAL as an InputError."""
-    if not path.exists():
-        raise InputError("there is no such file: check its name")
-    if path.is_file() and path.stat().st_size == 0:
-        raise InputError("the file is empty: fetch it again")
     with warnings.catch_warnings():
         warnings.simplefilter("ignore", NotGeoreferencedWarning)  # _transform says it as an error
         try:
             source = rasterio.open(path)
         except (RasterioError, OSError) as error:
-            kind = "is a folder, not a" if path.is_dir() else "cannot be opened as a"
-            raise InputError(
-                f"{kind} raster: give a GeoTIFF or another format of GDAL's"
-            ) from error
+            raise InputError(_why_not_opened(path)) from error
     with source:
         yield source
+
+
+def _why_not_opened(path: str | PathLike[str]) -> str:
+    """Say what a name that GDAL cannot open stands for."""
+    if os.path.isdir(path):
+        return "is a folder: give a GeoTIFF or another raster file"
+    if not os.path.exists(path):
+        return "there is no such file: check its name"
+    if os.path.getsize(path) == 0:
+        return "the file is empty: fetch it again"
+    return "the file cannot be opened as a raster: give a GeoTIFF or another format of GDAL's"
 
 
 def _check_kind(source: Any) -> None:

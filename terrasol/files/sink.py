@@ -4,9 +4,10 @@ from __future__ import annotations
 
 import errno
 import os
-from collections.abc import Iterator, Mapping
-from concurrent.futures import ThreadPoolExecutor
+from collections.abc import Callable, Iterator, Mapping
+from concurrent.futures import ThreadPoolExecutor, as_completed
 from contextlib import contextmanager, suppress
+from functools import reduce
 from pathlib import Path
 from typing import Any, Final, Self
 
@@ -134,13 +135,23 @@ class RasterSink:
         with self._refusals(f"{name}.tif"):
             self._copies[name].write(row, column, values)
 
-    def finish(self) -> None:
-        """Pack every layer into its final file, and check that it says what it should."""
+    def finish(self, progress: Callable[[float], None] = lambda share: None) -> None:
+        """Pack every layer into its final file, and check that it says what it should.
+
+        Parameters
+        ----------
+        progress : callable, optional
+            Told the share done.
+        """
         copies = sorted(self._copies.values(), key=lambda copy: -len(copy.layer.bands))
+        whole = sum(len(copy.layer.bands) for copy in copies)
+        done = 0
         with ThreadPoolExecutor(self.threads) as pool:
-            tasks = [pool.submit(self._pack, copy) for copy in copies]
-            for task in tasks:
+            tasks = {pool.submit(self._pack, copy): copy for copy in copies}
+            for task in as_completed(tasks):
                 task.result()
+                done += len(tasks[task].layer.bands)
+                progress(done / whole)
         self._copies.clear()
 
     def _pack(self, copy: _WorkingCopy) -> None:
@@ -184,7 +195,6 @@ class _WorkingCopy:
         self._coarse: Any = None
         if max(shape) > TILE:
             coarse_shape = -(-shape[0] // FIRST_OVERVIEW), -(-shape[1] // FIRST_OVERVIEW)
-            grid["transform"] = transform * rasterio.Affine.scale(FIRST_OVERVIEW)
             self._coarse = self._create(self.coarse_path, coarse_shape, grid)
 
     def _create(self, path: Path, shape: tuple[int, int], grid: dict[str, Any]) -> Any:
@@ -296,8 +306,8 @@ def _coarser(values: NDArray[Any], layer: Layer) -> NDArray[Any]:
     if _overview_method(layer) is Resampling.nearest:
         return values[:, step // 2 :: step, step // 2 :: step]
     # Sums of slices take a quarter of the time of sums over reshaped axes.
-    lines = sum(values[:, k::step] for k in range(step))
-    mean = sum(lines[:, :, k::step] for k in range(step)) / step**2
+    lines = reduce(np.add, (values[:, k::step] for k in range(step)))
+    mean = reduce(np.add, (lines[:, :, k::step] for k in range(step))) / step**2
     void = np.isnan(mean)
     if void.any():
         squares = values.reshape(bands, rows // step, step, columns // step, step)

@@ -22,7 +22,7 @@ from terrasol.kernels.horizon import far_field, merge_far, near_field
 NODE_STEP: Final = 4
 """Cells between the lines and queries of the far field. Figures in docs/performance.md."""
 
-FAR_FROM: Final = 24
+FAR_FROM: Final = 20
 """Steps after which a point belongs to the far field."""
 
 NEAR_STEPS: Final = FAR_FROM + NODE_STEP
@@ -31,9 +31,9 @@ NEAR_STEPS: Final = FAR_FROM + NODE_STEP
 PAD: Final = NEAR_STEPS + 2
 """Cells that a block needs around it."""
 
-ZONE_TOLERANCE: Final = 0.01
-"""Largest departure of the grid from its own middle within a zone of the far field: 0.57
-degrees of turn or 1 % of scale, a tenth of a sector at 64 azimuths."""
+ZONE_TOLERANCE: Final = 0.0125
+"""Largest departure of the grid from its own middle within a zone of the far field: 0.7
+degrees of turn or 1.25 % of scale, an eighth of a sector at 64 azimuths."""
 
 BLOCK: Final = 256
 """Cells along the side of a block. Blocks are counted from the raster's first cell, and all
@@ -74,32 +74,27 @@ def near_steps(
     weight : ndarray of float32, shape (azimuths, steps, 4)
         Weight of each cell [1/m], 1 / distance [1/m], drop by curvature over distance.
     """
-    shift = np.zeros((azimuths, NEAR_STEPS, 4), np.int64)
-    weight = np.zeros((azimuths, NEAR_STEPS, 4), np.float32)
+    angle = 2.0 * np.pi * np.arange(azimuths) / azimuths
+    rays = np.linalg.solve(
+        frame.jacobian_at(row, column), np.stack([np.sin(angle), np.cos(angle)])
+    ).T  # columns and rows a metre
+    by_rows = np.abs(rays[:, 1]) >= np.abs(rays[:, 0])
+    major = np.where(by_rows, rays[:, 1], rays[:, 0])
+    minor = np.where(by_rows, rays[:, 0], rays[:, 1])
     count = np.arange(1, NEAR_STEPS + 1)
-    for a in range(azimuths):
-        ray = frame.index_direction(row, column, 360.0 * a / azimuths)
-        major = 0 if abs(ray[0]) > abs(ray[1]) else 1
-        along = np.round(count * np.sign(ray[major])).astype(np.int64)
-        side = count * ray[1 - major] / abs(ray[major])
-        first = np.floor(side + 1e-9).astype(np.int64)
-        part = np.maximum(side - first, 0.0)
-        part[part < 1e-9] = 0.0
-        second = np.where(part > 0.0, first + 1, first)
-        # (row, column) when the ray crosses rows, (column, row) when it crosses columns
-        pair = np.stack([along, first, along, second], axis=1)
-        shift[a] = pair if major == 1 else pair[:, [1, 0, 3, 2]]
-        distance = count / abs(ray[major])
-        weight[a] = np.stack(
-            [
-                (1.0 - part) / distance,
-                part / distance,
-                1.0 / distance,
-                distance * half_curve(refraction),
-            ],
-            axis=1,
-        )
-    return shift, weight
+    along = np.sign(major)[:, None].astype(np.int64) * count
+    side = (minor / np.abs(major))[:, None] * count
+    first = np.floor(side + 1e-9).astype(np.int64)
+    part = np.maximum(side - first, 0.0)
+    part[part < 1e-9] = 0.0
+    second = np.where(part > 0.0, first + 1, first)
+    # (row, column) where the ray crosses rows, (column, row) where it crosses columns
+    pair = np.stack([along, first, along, second], axis=-1)
+    shift = np.where(by_rows[:, None, None], pair, pair[..., [1, 0, 3, 2]])
+    distance = count / np.abs(major)[:, None]
+    drop = distance * half_curve(refraction)
+    weight = np.stack([(1.0 - part) / distance, part / distance, 1.0 / distance, drop], axis=-1)
+    return np.ascontiguousarray(shift), weight.astype(np.float32)
 
 
 @dataclass(frozen=True)

@@ -13,6 +13,10 @@ FAST = {"contract", "reassoc", "nsz", "arcp"}
 LANES = 16
 """Sums that ride in one pass; fixed so that the inner loop is a few vector registers."""
 
+RUN = 128
+"""Cells worked on together, so that their sums and one azimuth's table stay in the
+innermost cache."""
+
 
 @intrinsic
 def _add_rows(typingctx, out, row, table, lower, upper, weights):
@@ -111,6 +115,41 @@ def _add_from_above(whole, table):
 
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=FAST)
+def _horizon_knots(rim, east, north, up, shift, sine, cosine, scale, toward, at):
+    """Where the horizon of each cell of a row lies among the knots, and n . azimuth."""
+    one = np.float32(1.0)
+    zero = np.float32(0.0)
+    for c in range(rim.size):
+        toward[c] = east[c] * sine + north[c] * cosine
+        plane = -toward[c] / up[c]
+        t = rim[c] - shift[c] * cosine * (one + rim[c] * rim[c])
+        t = t if t > plane else plane
+        t = t if t > zero else zero
+        at[c] = t / np.sqrt(one + t * t) * scale
+
+
+@njit(cache=True, nogil=True, error_model="numpy", fastmath=FAST)
+def _add_azimuth(at, toward, up, layer, mix, first, stride, dark, table, out, first_out):
+    """Add one azimuth's light to a run of cells."""
+    one = np.float32(1.0)
+    for c in range(at.size):
+        k = min(int(at[c]), dark)
+        if k >= dark or not up[c] > 0:
+            continue
+        w = at[c] - np.float32(k)
+        m = mix[c]
+        w3 = w * m
+        w2 = m - w3
+        w1 = w - w3
+        w0 = one - m - w1
+        h = toward[c]
+        v = up[c]
+        parts = (h * w0, v * w0, h * w1, v * w1, h * w2, v * w2, h * w3, v * w3)
+        lower = layer[c] + first + k
+        _add_rows(out, first_out + c, table, lower, lower + stride, parts)
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
 def look_up(horizon, normal, heights, datum, directions, tilt, knot_height, table, dark, out):
     """Direct light on each cell: n . T(horizon), summed over the azimuths.
 
@@ -126,22 +165,20 @@ def look_up(horizon, normal, heights, datum, directions, tilt, knot_height, tabl
     tilt : (3,) float64, latitude offset [radians] = tilt[0] + tilt[1] row + tilt[2] column
     knot_height : (k,) float64, rising
     table : (k * azimuths * knots, 2 * LANES) float32
-    dark : (azimuths,) int64, the first horizon knot with nothing above it
+    dark : (azimuths,) int64, the first horizon knot with nothing above it, < knots
     out : (rows * columns, LANES) float32; 0 where void
     """
     azimuths, rows, columns = horizon.shape
     knots = table.shape[0] // (knot_height.size * azimuths)
     stride = azimuths * knots
-    one = np.float32(1.0)
-    zero = np.float32(0.0)
-    scale = np.float32(knots - 1)
-    toward = np.empty(columns, np.float32)
     up = np.empty(columns, np.float32)
     north = np.empty(columns, np.float32)
     shift = np.empty(columns, np.float32)
+    toward = np.empty(columns, np.float32)
     at = np.empty(columns, np.float32)
     layer = np.empty(columns, np.int64)
     mix = np.empty(columns, np.float32)
+    out[:] = 0.0
     for r in range(rows):
         for c in range(columns):
             z = heights[r, c] + datum
@@ -155,34 +192,16 @@ def look_up(horizon, normal, heights, datum, directions, tilt, knot_height, tabl
             shift[c] = turn
             north[c] = normal[1, r, c] + turn * normal[2, r, c]
             up[c] = normal[2, r, c] - turn * normal[1, r, c]
-            for p in range(LANES):
-                out[r * columns + c, p] = zero
-        east = normal[0, r]
-        for a in range(azimuths):
-            if dark[a] == 0:
-                continue
-            sine = directions[a, 0]
-            cosine = directions[a, 1]
-            rim = horizon[a, r]
-            for c in range(columns):
-                toward[c] = east[c] * sine + north[c] * cosine
-                plane = -toward[c] / up[c]
-                t = rim[c] - shift[c] * cosine * (one + rim[c] * rim[c])
-                t = t if t > plane else plane
-                t = t if t > zero else zero
-                at[c] = t / np.sqrt(one + t * t) * scale
-            for c in range(columns):
-                k = min(int(at[c]), knots - 2)
-                if k >= dark[a] or not up[c] > zero:
+        for left in range(0, columns, RUN):
+            run = slice(left, min(left + RUN, columns))
+            for a in range(azimuths):
+                if dark[a] == 0:
                     continue
-                w = at[c] - np.float32(k)
-                lower = layer[c] + a * knots + k
-                m = mix[c]
-                w3 = w * m
-                w2 = m - w3
-                w1 = w - w3
-                w0 = one - m - w1
-                h = toward[c]
-                v = up[c]
-                parts = (h * w0, v * w0, h * w1, v * w1, h * w2, v * w2, h * w3, v * w3)
-                _add_rows(out, r * columns + c, table, lower, lower + stride, parts)
+                _horizon_knots(
+                    horizon[a, r, run], normal[0, r, run], north[run], up[run], shift[run],
+                    directions[a, 0], directions[a, 1], np.float32(knots - 1), toward[run], at[run],
+                )  # fmt: skip
+                _add_azimuth(
+                    at[run], toward[run], up[run], layer[run], mix[run], a * knots, stride,
+                    dark[a], table, out, r * columns + left,
+                )  # fmt: skip

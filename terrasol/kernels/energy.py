@@ -7,6 +7,36 @@ from numba import njit
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
+def _mix(value, last, lower, part):
+    """Whole and broken part of places between nodes, kept inside them."""
+    for c in range(value.size):
+        x = min(max(value[c], 0.0), float(last))
+        lower[c] = min(int(x), max(last - 1, 0))
+        part[c] = x - lower[c]
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _row_of_nodes(around, v, out):
+    """One row between two rows of nodes."""
+    last = around.shape[0] - 1
+    i = min(int(v), max(last - 1, 0))
+    below = min(i + 1, last)
+    for j in range(out.size):
+        out[j] = around[i, j] + np.float32(v - i) * (around[below, j] - around[i, j])
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _height_places(heights, datum, knot_height, place):
+    """Place of each height among the knots."""
+    for c in range(heights.size):
+        z = heights[c] + datum
+        k = 0
+        while k + 2 < knot_height.size and z >= knot_height[k + 1]:
+            k += 1
+        place[c] = k + (z - knot_height[k]) / (knot_height[k + 1] - knot_height[k])
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
 def parts_of_light(
     sums, months, heights, datum, knot_height, isotropic, band_sum, view, band,
     around, node, node_step, albedo, factor, year, month_total, month_parts,
@@ -15,68 +45,64 @@ def parts_of_light(
 
     sums : (groups, rows * columns, lanes) float32, look-ups: the months' beam and
         circumsolar, then circumsolar alone (one sum, or one a month)
-    isotropic, band_sum : (knot heights, months) float64
+    isotropic, band_sum : (months, knot heights) float32
     view, band : (rows, columns) float32, sky-view factor and open part of the band
     around : (months, node rows, node columns) float32, what the terrain around receives
     node : (2,) float64, the strip's first cell on the nodes, in node units
     node_step : cells a node
-    albedo : (months,) float64
-    factor : (rows, columns) float32, unit and basis
+    albedo : (months,) float32
+    factor : (rows, columns) float32, unit and basis; NaN where void
     year : (4, rows, columns) float32, out: global, beam, diffuse, reflected
     month_total : (months, rows, columns) float32, out, global
     month_parts : (3, months or 0, rows, columns) float32, out: beam, diffuse, reflected
     """
     rows, columns = view.shape
     lanes = sums.shape[2]
-    split_months = month_parts.shape[1] > 0
-    last_row = around.shape[1] - 1
-    last_column = around.shape[2] - 1
+    split = month_parts.shape[1] > 0
+    level = np.empty(columns, np.int64)
+    w = np.empty(columns, np.float32)
+    j = np.empty(columns, np.int64)
+    u = np.empty(columns, np.float32)
+    place = np.empty(columns, np.float64)
+    terrain = np.empty(around.shape[2], np.float32)
+    last = around.shape[2] - 1
+    year[:] = 0.0
     for r in range(rows):
-        v = min(max(node[0] + r / node_step, 0.0), float(last_row))
-        i = min(int(v), max(last_row - 1, 0))
-        v -= i
-        i1 = min(i + 1, last_row)
+        _height_places(heights[r], datum, knot_height, place)
+        _mix(place, knot_height.size - 1, level, w)
         for c in range(columns):
-            u = min(max(node[1] + c / node_step, 0.0), float(last_column))
-            j = min(int(u), max(last_column - 1, 0))
-            u -= j
-            j1 = min(j + 1, last_column)
-            cell = r * columns + c
-            z = heights[r, c] + datum
-            k = 0
-            while k + 2 < knot_height.size and z >= knot_height[k + 1]:
-                k += 1
-            w = (z - knot_height[k]) / (knot_height[k + 1] - knot_height[k])
-            w = min(max(w, 0.0), 1.0)
-            scale = factor[r, c]
-            if not view[r, c] >= 0.0:
-                scale = np.nan
-            direct_total = 0.0
-            even_total = 0.0
-            back_total = 0.0
-            glow_total = 0.0
-            for m in range(months):
-                direct = sums[m // lanes, cell, m % lanes]
-                even = view[r, c] * ((1 - w) * isotropic[k, m] + w * isotropic[k + 1, m])
-                even += band[r, c] * ((1 - w) * band_sum[k, m] + w * band_sum[k + 1, m])
-                terrain = (1 - v) * ((1 - u) * around[m, i, j] + u * around[m, i, j1]) + v * (
-                    (1 - u) * around[m, i1, j] + u * around[m, i1, j1]
-                )
-                back = albedo[m] * (1.0 - view[r, c]) * terrain
-                month_total[m, r, c] = scale * (direct + even + back)
-                direct_total += direct
-                even_total += even
-                back_total += back
-                if split_months:
+            place[c] = node[1] + c / node_step
+        _mix(place, last, j, u)
+        v = min(max(node[0] + r / node_step, 0.0), around.shape[1] - 1.0)
+        for m in range(months):
+            _row_of_nodes(around[m], v, terrain)
+            even_sky = isotropic[m]
+            even_band = band_sum[m]
+            for c in range(columns):
+                cell = r * columns + c
+                scale = factor[r, c]
+                k = level[c]
+                dome = even_sky[k] + w[c] * (even_sky[k + 1] - even_sky[k])
+                low = even_band[k] + w[c] * (even_band[k + 1] - even_band[k])
+                even = scale * (view[r, c] * dome + band[r, c] * low)
+                lit = terrain[j[c]] + u[c] * (terrain[min(j[c] + 1, last)] - terrain[j[c]])
+                back = scale * albedo[m] * (np.float32(1.0) - view[r, c]) * lit
+                direct = scale * sums[m // lanes, cell, m % lanes]
+                month_total[m, r, c] = direct + even + back
+                year[0, r, c] += direct + even + back
+                year[1, r, c] += direct
+                year[2, r, c] += even
+                year[3, r, c] += back
+                if split:
                     p = months + m
-                    glow = sums[p // lanes, cell, p % lanes]
-                    glow_total += glow
-                    month_parts[0, m, r, c] = scale * (direct - glow)
-                    month_parts[1, m, r, c] = scale * (even + glow)
-                    month_parts[2, m, r, c] = scale * back
-            if not split_months:
-                glow_total = sums[months // lanes, cell, months % lanes]
-            year[0, r, c] = scale * (direct_total + even_total + back_total)
-            year[1, r, c] = scale * (direct_total - glow_total)
-            year[2, r, c] = scale * (even_total + glow_total)
-            year[3, r, c] = scale * back_total
+                    glow = scale * sums[p // lanes, cell, p % lanes]
+                    month_parts[0, m, r, c] = direct - glow
+                    month_parts[1, m, r, c] = even + glow
+                    month_parts[2, m, r, c] = back
+                    year[1, r, c] -= glow
+                    year[2, r, c] += glow
+        if not split:
+            for c in range(columns):
+                glow = factor[r, c] * sums[months // lanes, r * columns + c, months % lanes]
+                year[1, r, c] -= glow
+                year[2, r, c] += glow

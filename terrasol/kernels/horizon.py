@@ -75,8 +75,8 @@ def _line_heights(heights, far_end, along, across, breadth, start, gap, drift, l
     """Heights where straight lines cross each row (or column), -infinite off the raster.
 
     A line beside the raster, less than a gap away, has the heights of the rim, so that cells
-    near the rim lie between two lines like all others. Lines are taken side by side, row after row, so that neighbours share what a cache and
-    a page of memory hold.
+    near the rim lie between two lines like all others. Lines are taken side by side, row
+    after row, so that neighbours share what a cache and a page of memory hold.
     """
     group, length = lines.shape
     for i in range(length):

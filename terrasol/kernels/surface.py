@@ -5,6 +5,8 @@ from __future__ import annotations
 import numpy as np
 from numba import njit
 
+DEGREE = np.float32(180.0 / np.pi)
+
 
 @njit(cache=True, nogil=True, error_model="numpy", inline="always")
 def _difference(before, here, behind):
@@ -113,10 +115,12 @@ def slope_aspect(normal, flat, slope, aspect):
         for c in range(columns):
             east = normal[0, r, c]
             north = normal[1, r, c]
-            steep = np.degrees(np.arctan2(np.hypot(east, north), normal[2, r, c]))
+            flat_part = np.sqrt(east * east + north * north)
+            steep = DEGREE * np.arctan2(flat_part, normal[2, r, c])
             slope[r, c] = steep
             if steep >= flat:
-                turn = np.float32(np.degrees(np.arctan2(east, north)) % 360.0)
-                aspect[r, c] = turn if turn < 360.0 else 0.0
+                turn = DEGREE * np.arctan2(east, north)
+                turn = turn if turn >= np.float32(0.0) else turn + np.float32(360.0)
+                aspect[r, c] = turn if turn < np.float32(360.0) else np.float32(0.0)
             else:
                 aspect[r, c] = np.nan

@@ -347,12 +347,14 @@ def strip_light(
         np.empty((count, *shape), np.float32),
         np.empty((3, count if settings.monthly_parts else 0, *shape), np.float32),
     )
-    factor = np.full(shape, UNITS[settings.unit], np.float32)
+    factor = np.where(np.isnan(sky[0]), np.nan, UNITS[settings.unit]).astype(np.float32)
     if settings.basis == "map":
         factor /= strip.normal[2]
     parts_of_light(
-        sums, count, strip.heights, strip.datum, table.heights, table.isotropic, table.band,
+        sums, count, strip.heights, strip.datum, table.heights,
+        np.ascontiguousarray(table.isotropic.T, np.float32),
+        np.ascontiguousarray(table.band.T, np.float32),
         *sky, surroundings.received, surroundings.node(*place), surroundings.stride,
-        settings.month_albedo, factor, light.year, light.months, light.month_parts,
+        settings.month_albedo.astype(np.float32), factor, light.year, light.months, light.month_parts,
     )  # fmt: skip
     return light

@@ -1,0 +1,148 @@
+"""Options that several commands share. Nothing here is slow to import."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass, fields
+from functools import wraps
+from typing import Any
+
+import click
+
+from terrasol.constants import REFRACTION_COEFFICIENT
+
+UNITS = {"MJ": "MJ m-2", "kWh": "kW h m-2"}
+"""Units of irradiation as typed, and as written in files."""
+
+
+@dataclass(frozen=True)
+class Common:
+    """What every command is told.
+
+    Parameters
+    ----------
+    dem, out_dir : str
+        The elevation raster and the output folder.
+    vertical_unit, fill_voids
+        See `terrasol.read_elevation`.
+    azimuths : int
+        Number of horizon azimuths.
+    refraction : float
+        Coefficient of terrestrial refraction.
+    threads : int or None
+        None for all cores.
+    compression : str
+        How files are packed.
+    overwrite, quiet, dry_run, as_json : bool
+        Replace files; say nothing; write nothing; one JSON object on stdout.
+    """
+
+    dem: str
+    out_dir: str
+    vertical_unit: str | None
+    fill_voids: int
+    azimuths: int
+    refraction: float
+    threads: int | None
+    compression: str
+    overwrite: bool
+    quiet: bool
+    dry_run: bool
+    as_json: bool
+
+
+class Numbers(click.ParamType):
+    """One number, or twelve joined by commas, January first; a word may be allowed too."""
+
+    name = "numbers"
+
+    def __init__(self, word: str | None = None) -> None:
+        self.word = word
+
+    def get_metavar(self, param: click.Parameter, ctx: click.Context) -> str:
+        """Name in the help."""
+        return f"{self.word.upper()}|NUMBER|12 NUMBERS" if self.word else "NUMBER|12 NUMBERS"
+
+    def convert(self, value: Any, param: Any, ctx: Any) -> Any:
+        """Read the text."""
+        if not isinstance(value, str) or value == self.word:
+            return value
+        try:
+            numbers = tuple(float(part) for part in value.split(","))
+        except ValueError:
+            numbers = ()
+        if len(numbers) not in (1, 12):
+            either = f"'{self.word}', " if self.word else ""
+            self.fail(f"'{value}' is not {either}one number or twelve joined by commas", param, ctx)
+        return numbers
+
+
+_ARGUMENTS = (
+    click.argument("dem"),
+    click.argument("out_dir"),
+)
+_OPTIONS = (
+    click.option(
+        "--vertical-unit",
+        type=click.Choice(["metre", "foot", "us-foot"]),
+        help="Unit of the heights. [default: as the file says, else metre]",
+    ),
+    click.option(
+        "--fill-voids",
+        metavar="CELLS",
+        type=click.IntRange(min=0),
+        default=0,
+        show_default=True,
+        help="Interpolate voids of up to this many connected cells.",
+    ),
+    click.option(
+        "--azimuths",
+        metavar="N",
+        type=int,
+        default=64,
+        show_default=True,
+        help="Number of horizon azimuths: a multiple of 4 from 8 to 720.",
+    ),
+    click.option(
+        "--refraction",
+        metavar="K",
+        type=float,
+        default=REFRACTION_COEFFICIENT,
+        show_default=True,
+        help="Coefficient of terrestrial refraction of lines of sight.",
+    ),
+    click.option(
+        "--threads",
+        metavar="N",
+        type=click.IntRange(min=1),
+        help="Cores to use. [default: all]",
+    ),
+    click.option(
+        "--compression",
+        type=click.Choice(["zstd", "deflate"]),
+        default="zstd",
+        show_default=True,
+        help="How the GeoTIFFs are packed; deflate is slower and read by more software.",
+    ),
+    click.option("--overwrite", is_flag=True, help="Replace files that are there."),
+    click.option("--quiet", is_flag=True, help="Say nothing but errors."),
+    click.option(
+        "--dry-run",
+        is_flag=True,
+        help="Check the input, print what would be done and what it costs, write nothing.",
+    ),
+    click.option("--json", "as_json", is_flag=True, help="Print one JSON object on stdout."),
+)
+
+
+def common_options(command: Callable[..., None]) -> Callable[..., None]:
+    """Give a command the shared arguments and options, as one `Common` before its own."""
+
+    @wraps(command)
+    def gathered(**given: Any) -> None:
+        common = Common(**{field.name: given.pop(field.name) for field in fields(Common)})
+        command(common, **given)
+
+    for decorate in reversed((*_ARGUMENTS, *_OPTIONS)):
+        gathered = decorate(gathered)
+    return gathered
