@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import os
 import shutil
 import time
 from collections.abc import Callable
@@ -22,7 +23,7 @@ from terrasol.engine.plan import default_threads
 from terrasol.errors import OutputError
 from terrasol.files.delivery import Delivery, check_free
 from terrasol.files.layers import Layer
-from terrasol.files.provenance import run_record, sha256
+from terrasol.files.provenance import run_record
 from terrasol.files.rasters import naming, read_with_unit
 from terrasol.files.sink import RasterSink
 from terrasol.ground.elevation import Elevation
@@ -106,8 +107,7 @@ class Job:
             "fill_voids": self.common.fill_voids,
             "compression": self.common.compression,
         }
-        digest = sha256(self.common.dem)
-        return run_record(self.command, self.common.dem, self.settings | own, digest)
+        return run_record(self.command, self.common.dem, self.settings | own)
 
 
 def run(job: Job) -> None:
@@ -130,7 +130,7 @@ def _spare_input(common: Common, names: list[str]) -> None:
     """Refuse to replace the raster that is read."""
     for name in names:
         place = Path(common.out_dir) / name
-        if place.exists() and place.samefile(common.dem):
+        if place.exists() and os.path.isfile(common.dem) and place.samefile(common.dem):
             raise OutputError(f"{place} is the input itself: name another output folder")
 
 
@@ -227,8 +227,9 @@ def _tags(record: Record, elevation: Elevation) -> dict[str, str]:
         "TERRASOL_COMMAND": record["command"],
         "TERRASOL_SETTINGS": json.dumps(record["settings"], ensure_ascii=False),
         "TERRASOL_INPUT": Path(record["input"]["file"]).name,
-        "TERRASOL_INPUT_SHA256": record["input"]["sha256"],
     }
+    if record["input"]["sha256"]:
+        tags["TERRASOL_INPUT_SHA256"] = record["input"]["sha256"]
     if elevation.warnings:
         tags["TERRASOL_WARNINGS"] = "; ".join(elevation.warnings)
     return tags

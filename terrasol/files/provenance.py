@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 import hashlib
+import os
 import platform
 from collections.abc import Mapping
 from datetime import UTC, datetime
 from importlib.metadata import version
 from os import PathLike
-from pathlib import Path
 from typing import Any
 
 import rasterio
@@ -46,7 +46,7 @@ def versions() -> dict[str, str]:
 
 
 def run_record(
-    command: str, source: str | PathLike[str], settings: Mapping[str, Any], digest: str
+    command: str, source: str | PathLike[str], settings: Mapping[str, Any]
 ) -> dict[str, Any]:
     """Begin the record of a run: what was asked, of which file, by which software.
 
@@ -55,21 +55,24 @@ def run_record(
     command : str
         Name of the job.
     source : path
-        The elevation raster.
+        The elevation raster. What is no file of its own (part of an archive, a subdataset) has
+        no hash.
     settings : mapping
         All settings as resolved, ready for JSON.
-    digest : str
-        The raster's SHA-256.
 
     Returns
     -------
     dict
         With the time in UTC.
     """
+    whole = os.path.isfile(source)
     return {
         "command": command,
         "started": datetime.now(UTC).isoformat(timespec="seconds"),
-        "input": {"file": str(Path(source).absolute()), "sha256": digest},
+        "input": {
+            "file": os.path.abspath(source) if whole else str(source),
+            "sha256": sha256(source) if whole else None,
+        },
         "settings": dict(settings),
         "versions": versions(),
     }

@@ -36,6 +36,9 @@ SMALLEST_CELL: Final = 0.001
 STRIP_CELLS: Final = 4_000_000
 """Cells read at a time."""
 
+TIFF_BEGINS: Final = (b"II*\0", b"MM\0*", b"II+\0", b"MM\0+")
+"""First bytes of a TIFF and a BigTIFF, in either byte order."""
+
 METRES_PER_DEGREE: Final = 111_195.0
 """Along a meridian of the mean sphere; serves the two checks of cell size only."""
 
@@ -121,6 +124,11 @@ def _why_not_opened(path: str | PathLike[str]) -> str:
         return "there is no such file: check its name"
     if os.path.getsize(path) == 0:
         return "the file is empty: fetch it again"
+    if not os.access(path, os.R_OK):
+        return "the file may not be read: ask its owner for permission"
+    with open(path, "rb") as file:
+        if file.read(4) in TIFF_BEGINS:
+            return "the file begins as a TIFF but is damaged or cut short: fetch it again"
     return "the file cannot be opened as a raster: give a GeoTIFF or another format of GDAL's"
 
 

@@ -22,6 +22,7 @@ from rasterio.errors import RasterioError
 from rasterio.windows import Window
 
 from terrasol.constants import VOID
+from terrasol.errors import OutputError
 from terrasol.files.delivery import Delivery
 from terrasol.files.layers import Layer
 from terrasol.ground.elevation import Affine6
@@ -98,8 +99,7 @@ class RasterSink:
         self.compression = compression
         self.threads = threads
         self._copies: dict[str, _WorkingCopy] = {}
-        with self._refusals("the GeoTIFFs"):
-            _check_codec(compression)
+        _check_codec(compression)
 
     def __enter__(self) -> Self:
         """Enter a context that closes what is open at its end."""
@@ -332,12 +332,16 @@ def _further_factors(shape: tuple[int, int]) -> list[int]:
 
 
 def _check_codec(compression: str) -> None:
-    """Raise RasterioError if this build of GDAL lacks a compression."""
-    profile = {"driver": "GTiff", "width": 1, "height": 1, "count": 1, "dtype": "uint8"}
+    """Raise OutputError if this build of GDAL lacks a compression, which it would drop silently."""
     codec = COMPRESSIONS[compression]["COMPRESS"]
     grid = rasterio.Affine.translation(1, 1)
-    with rasterio.MemoryFile() as memory, memory.open(**profile, transform=grid, compress=codec):
-        pass
+    profile = {"driver": "GTiff", "width": 1, "height": 1, "count": 1, "dtype": "uint8"}
+    with rasterio.MemoryFile() as memory:
+        with memory.open(**profile, transform=grid, compress=codec):
+            pass
+        with memory.open() as source:
+            if source.profile.get("compress", "").upper() != codec:
+                raise OutputError(f"this GDAL cannot write {codec}: choose another --compression")
 
 
 def _check_labels(final: Path, layer: Layer) -> None:

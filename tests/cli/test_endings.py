@@ -1,0 +1,69 @@
+"""Runs that end early, or by a defect."""
+
+import os
+import signal
+import time
+
+import pytest
+from files.made import write_raster
+
+from terrasol.cli.main import main
+from terrasol.errors import UnfinishedError
+
+
+@pytest.fixture
+def broken_engine(tmp_path, monkeypatch, capfd):
+    """Run `terrain` with an engine that does as told; return exit code and stderr."""
+    dem = write_raster(tmp_path / "dem.tif", unit="m")
+    monkeypatch.setattr("terrasol.cli.run._announce_compilation", lambda quiet: None)
+
+    def run(sweep):
+        monkeypatch.setattr("terrasol.engine.job.sweep", sweep)
+        code = main(["terrain", str(dem), str(tmp_path / "a" / "out"), "--azimuths", "8"])
+        assert [path.name for path in tmp_path.iterdir()] == ["dem.tif"]
+        return code, capfd.readouterr().err
+
+    return run
+
+
+def raising(error):
+    def sweep(*_):
+        raise error
+
+    return sweep
+
+
+@pytest.mark.parametrize(
+    ("error", "code", "words"),
+    [
+        (KeyboardInterrupt(), 130, "interrupted"),
+        (UnfinishedError("2 of 9 blocks were lost: run again"), 5, "2 of 9 blocks"),
+        (MemoryError(), 5, "not enough memory"),
+        (ZeroDivisionError("division by zero"), 70, "please report it (ZeroDivisionError"),
+    ],
+)
+def test_early_end(broken_engine, error, code, words):
+    found, err = broken_engine(raising(error))
+    assert found == code
+    assert err.strip().startswith("terrasol: ")
+    assert words in err
+    assert "\n" not in err.strip()
+
+
+def test_request_to_end(broken_engine):
+    def sweep(*_):
+        os.kill(os.getpid(), signal.SIGTERM)
+        time.sleep(0.2)
+
+    before = signal.getsignal(signal.SIGTERM)
+    code, err = broken_engine(sweep)
+    assert code == 130
+    assert err.strip() == "terrasol: interrupted, nothing was written"
+    assert signal.getsignal(signal.SIGTERM) is before
+
+
+def test_traceback_on_demand(broken_engine, monkeypatch):
+    monkeypatch.setenv("TERRASOL_DEBUG", "1")
+    code, err = broken_engine(raising(ZeroDivisionError("division by zero")))
+    assert code == 70
+    assert "Traceback" in err

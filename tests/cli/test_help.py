@@ -1,0 +1,76 @@
+"""Help: at once, and without any heavy library."""
+
+import json
+import os
+import subprocess
+import sys
+import time
+from pathlib import Path
+
+import pytest
+
+import terrasol
+from terrasol.cli.irradiation import irradiation
+from terrasol.cli.main import EXIT_CODES, main
+from terrasol.cli.options import UNITS
+
+ENVIRONMENT = os.environ | {"PYTHONPATH": str(Path(terrasol.__file__).parents[1])}
+HEAVY = ("numba", "numpy", "scipy", "pandas", "rasterio", "pyproj", "pvlib", "matplotlib", "xarray")
+PROBE = f"""
+import json, sys
+from terrasol.cli.main import main
+code = main(sys.argv[1:])
+print(json.dumps([code, [name for name in {HEAVY!r} if name in sys.modules]]))
+"""
+
+
+@pytest.mark.parametrize(
+    "arguments",
+    [["--help"], ["--version"], ["irradiation", "--help"], ["terrain", "--help"], ["terrain"], []],
+)
+def test_nothing_heavy_is_loaded(arguments):
+    run = subprocess.run(
+        [sys.executable, "-c", PROBE, *arguments],
+        env=ENVIRONMENT, capture_output=True, text=True, check=True,
+    )  # fmt: skip
+    code, loaded = json.loads(run.stdout.splitlines()[-1])
+    assert loaded == []
+    assert code == (0 if arguments and arguments[-1].startswith("--") else 2)
+
+
+def test_help_takes_less_than_half_a_second():
+    command = [sys.executable, "-m", "terrasol.cli.main", "--help"]
+
+    def seconds():
+        start = time.perf_counter()
+        subprocess.run(command, env=ENVIRONMENT, capture_output=True, check=True)
+        return time.perf_counter() - start
+
+    assert min(seconds() for _ in range(3)) < 0.5
+
+
+def test_help_documents_exit_codes(capsys):
+    assert main(["--help"]) == 0
+    text = " ".join(capsys.readouterr().out.split())
+    for code, words in EXIT_CODES.items():
+        assert f"{code} {words}" in text
+    assert set(EXIT_CODES) >= {0, 2, 3, 4, 5, 130}
+
+
+def test_version(capsys):
+    assert main(["--version"]) == 0
+    assert capsys.readouterr().out == f"terrasol {terrasol.__version__}\n"
+
+
+def test_choices_are_those_of_the_library():
+    """The command line spells them out, for it must not load the library to tell them."""
+    from terrasol.files.sink import COMPRESSIONS
+    from terrasol.files.vertical import OPTION_NAMES
+    from terrasol.light import irradiation as light
+
+    choices = {p.name: tuple(getattr(p.type, "choices", ())) for p in irradiation.params}
+    assert set(UNITS.values()) == set(light.UNITS)
+    assert choices["basis"] == light.BASES
+    assert choices["diffuse"] == light.DIFFUSE_MODELS
+    assert choices["compression"] == tuple(COMPRESSIONS)
+    assert choices["vertical_unit"] == OPTION_NAMES
