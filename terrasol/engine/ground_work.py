@@ -59,6 +59,7 @@ class BlockGround:
         self.padded = (heights - np.float32(self.datum)).astype(np.float32)
         self.datum = float(np.float32(self.datum))
         self.normal = block_normals(self.padded, PAD, ground.frame, block.row, block.column)
+        _continue_rim(self.padded, block, ground.elevation.shape)
 
     @property
     def middle(self) -> tuple[float, float]:
@@ -109,6 +110,22 @@ class BlockGround:
                     self.latitude(first),
                 ),
             )
+
+
+def _continue_rim(padded: NDArray[np.float32], block: Block, shape: tuple[int, int]) -> None:
+    """Continue the raster one cell outward, straight on but nowhere rising.
+
+    Rays that run along the rim would else be lost to rounding. Since the new cells never
+    stand above the rim, they hide nothing that the rim does not.
+    """
+    for lines, first, last in (
+        (padded, block.row == 0, block.row + block.rows == shape[0]),
+        (padded.T, block.column == 0, block.column + block.columns == shape[1]),
+    ):
+        if first:
+            lines[PAD - 1] = np.minimum(2.0 * lines[PAD] - lines[PAD + 1], lines[PAD])
+        if last:
+            lines[-PAD] = np.minimum(2.0 * lines[-PAD - 1] - lines[-PAD - 2], lines[-PAD - 1])
 
 
 def _padded(heights: NDArray[np.float32], block: Block) -> NDArray[np.float32]:

@@ -37,6 +37,41 @@ def _height_places(heights, datum, knot_height, place):
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
+def _spread(nodes, lower, part, out):
+    """Interpolate a row of nodes to cells."""
+    last = nodes.size - 1
+    for c in range(out.size):
+        k = lower[c]
+        out[c] = nodes[k] + part[c] * (nodes[min(k + 1, last)] - nodes[k])
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _sum_up(rows_of, sums, view, band, albedo, factor, total, year):
+    """Add one month of a row: dome, band and terrain by cell are in `rows_of`."""
+    dome, low, lit, direct = rows_of[0], rows_of[1], rows_of[2], rows_of[3]
+    zero = np.float32(0.0)
+    for c in range(total.size):
+        direct[c] = factor[c] * max(sums[c], zero)
+    for c in range(total.size):
+        even = factor[c] * (view[c] * dome[c] + band[c] * low[c])
+        back = factor[c] * albedo * (np.float32(1.0) - view[c]) * lit[c]
+        total[c] = direct[c] + even + back
+        year[0, c] += direct[c] + even + back
+        year[1, c] += direct[c]
+        year[2, c] += even
+        year[3, c] += back
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _move_glow(glow, factor, year):
+    """Count the circumsolar light as diffuse."""
+    for c in range(glow.size):
+        moved = min(factor[c] * glow[c], year[1, c])
+        year[1, c] -= moved
+        year[2, c] += moved
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
 def parts_of_light(
     sums, months, heights, datum, knot_height, isotropic, band_sum, view, band,
     around, node, node_step, albedo, factor, year, month_total, month_parts,
@@ -64,6 +99,7 @@ def parts_of_light(
     j = np.empty(columns, np.int64)
     u = np.empty(columns, np.float32)
     place = np.empty(columns, np.float64)
+    rows_of = np.empty((4, columns), np.float32)
     terrain = np.empty(around.shape[2], np.float32)
     last = around.shape[2] - 1
     year[:] = 0.0
@@ -74,35 +110,28 @@ def parts_of_light(
             place[c] = node[1] + c / node_step
         _mix(place, last, j, u)
         v = min(max(node[0] + r / node_step, 0.0), around.shape[1] - 1.0)
+        cells = sums[:, r * columns : (r + 1) * columns]
         for m in range(months):
             _row_of_nodes(around[m], v, terrain)
-            even_sky = isotropic[m]
-            even_band = band_sum[m]
-            for c in range(columns):
-                cell = r * columns + c
-                scale = factor[r, c]
-                k = level[c]
-                dome = even_sky[k] + w[c] * (even_sky[k + 1] - even_sky[k])
-                low = even_band[k] + w[c] * (even_band[k + 1] - even_band[k])
-                even = scale * (view[r, c] * dome + band[r, c] * low)
-                lit = terrain[j[c]] + u[c] * (terrain[min(j[c] + 1, last)] - terrain[j[c]])
-                back = scale * albedo[m] * (np.float32(1.0) - view[r, c]) * lit
-                direct = scale * sums[m // lanes, cell, m % lanes]
-                month_total[m, r, c] = direct + even + back
-                year[0, r, c] += direct + even + back
-                year[1, r, c] += direct
-                year[2, r, c] += even
-                year[3, r, c] += back
-                if split:
-                    p = months + m
-                    glow = scale * sums[p // lanes, cell, p % lanes]
-                    month_parts[0, m, r, c] = direct - glow
-                    month_parts[1, m, r, c] = even + glow
+            _spread(isotropic[m], level, w, rows_of[0])
+            _spread(band_sum[m], level, w, rows_of[1])
+            _spread(terrain, j, u, rows_of[2])
+            _sum_up(
+                rows_of, cells[m // lanes, :, m % lanes], view[r], band[r], albedo[m],
+                factor[r], month_total[m, r], year[:, r],
+            )  # fmt: skip
+            if split:
+                p = months + m
+                glow = cells[p // lanes, :, p % lanes]
+                _move_glow(glow, factor[r], year[:, r])
+                for c in range(columns):
+                    direct = factor[r, c] * max(cells[m // lanes, c, m % lanes], np.float32(0.0))
+                    back = factor[r, c] * albedo[m] * (1 - view[r, c]) * rows_of[2, c]
+                    beam = direct - factor[r, c] * glow[c]
+                    if beam < 0:
+                        beam = np.float32(0.0)
+                    month_parts[0, m, r, c] = beam
+                    month_parts[1, m, r, c] = month_total[m, r, c] - beam - back
                     month_parts[2, m, r, c] = back
-                    year[1, r, c] -= glow
-                    year[2, r, c] += glow
         if not split:
-            for c in range(columns):
-                glow = factor[r, c] * sums[months // lanes, r * columns + c, months % lanes]
-                year[1, r, c] -= glow
-                year[2, r, c] += glow
+            _move_glow(cells[months // lanes, :, months % lanes], factor[r], year[:, r])

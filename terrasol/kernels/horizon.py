@@ -74,8 +74,7 @@ def near_field(heights, pad, first_row, shift, weight, out):
 def _line_heights(heights, far_end, along, across, breadth, start, gap, drift, lines):
     """Heights where straight lines cross each row (or column), -infinite off the raster.
 
-    A line beside the raster, less than a gap away, has the heights of the rim, so that cells
-    near the rim lie between two lines like all others. Lines are taken side by side, row
+    The raster reaches half a cell beyond the outer centres. Lines are taken side by side, row
     after row, so that neighbours share what a cache and a page of memory hold.
     """
     group, length = lines.shape
@@ -83,7 +82,7 @@ def _line_heights(heights, far_end, along, across, breadth, start, gap, drift, l
         for g in range(group):
             y = start + g * gap + drift * i
             lines[g, i] = -np.inf
-            if y > -gap and y < breadth - 1 + gap:
+            if y > -0.5 and y < breadth - 0.5:
                 y = min(max(y, 0.0), breadth - 1.0)
                 j = int(y)
                 f = np.float32(y - j)
@@ -254,18 +253,44 @@ def far_field(
             datum, k, seen, place, bulge,
         )  # fmt: skip
     for q in range(count):
-        ahead = drift * (first_query + q * every) + origin
-        first_line = max(int(np.floor(-ahead / gap)), 0)
-        last_line = min(int(np.ceil((breadth - 1 - ahead) / gap)), lines - 1)
+        i = first_query + q * every
+        row = far_end + min(max(i, 0), length - 1) * along
+        ahead = drift * i + origin
+        first_line = min(max(int(np.ceil((-0.49 - ahead) / gap)), 0), lines - 1)
+        last_line = min(max(int(np.floor((breadth - 0.51 - ahead) / gap)), 0), lines - 1)
         for n in range(nodes):
-            # Only lines on the raster, or just beside it, can be mixed.
             y = (first_node + n * every - ahead) / gap
-            y = min(max(y, float(first_line)), float(last_line))
-            k = min(int(y), lines - 2)
-            f = y - k
-            height[q, n] = (1.0 - f) * seen[q, k, 0] + f * seen[q, k + 1, 0]
-            away[q, n] = (1.0 - f) * seen[q, k, 1] + f * seen[q, k + 1, 1]
-            across_void[q, n] = seen[q, k, 2] > 0.0 or seen[q, k + 1, 2] > 0.0
+            k = min(int(max(y, float(first_line))), max(last_line - 1, first_line))
+            f = min(max(y - k, 0.0), 1.0 if last_line > first_line else 0.0)
+            k1 = min(k + 1, lines - 1)
+            height[q, n] = (1.0 - f) * seen[q, k, 0] + f * seen[q, k1, 0]
+            away[q, n] = (1.0 - f) * seen[q, k, 1] + f * seen[q, k1, 1]
+            across_void[q, n] = seen[q, k, 2] > 0.0 or seen[q, k1, 2] > 0.0
+            if y < first_line or y > last_line:
+                # No line on the outer side: the next one's angle, seen from the node.
+                near = ahead + gap * (first_line if y < first_line else last_line)
+                lift = _rim_height(
+                    heights, row, across, breadth, float(first_node + n * every)
+                ) - _rim_height(heights, row, across, breadth, near)
+                if lift == lift:
+                    height[q, n] += lift
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _rim_height(heights, row, across, breadth, y):
+    """Height across a line of cells, straight on beyond the rim; NaN at a void."""
+    last = breadth - 1.0
+    inside = min(max(y, 0.0), last)
+    mirrored = min(max(2.0 * inside - y, 0.0), last)
+    total = 0.0
+    for side in range(2):
+        at = mirrored if side == 1 else inside
+        j = min(int(at), max(breadth - 2, 0))
+        z = heights[row + j * across]
+        if breadth > 1:
+            z += (at - j) * (heights[row + (j + 1) * across] - z)
+        total += -z if side == 1 else 2.0 * z
+    return total
 
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=FAST)
