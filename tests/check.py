@@ -1,4 +1,7 @@
-"""Every check in one command: ``python -m tests.check [--heavy]`` from the checkout."""
+"""Every check in one command, from the checkout: ``python -m tests.check``.
+
+With ``--heavy``, the heavy tests on real data in place of the quick ones.
+"""
 
 import subprocess
 import sys

@@ -7,6 +7,7 @@ import os
 import shutil
 import time
 from collections.abc import Callable
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -140,18 +141,14 @@ def _carry_out(job: Job, record: Record) -> Record:
     common, plan = job.common, job.plan
     delivery = Delivery(common.out_dir, job.names, overwrite=common.overwrite, need=plan.disk_bytes)
     with delivery, progress_bar(common.quiet) as move:
-        summary, energy, packing = _compute(job, delivery, _tags(record, plan.elevation), move)
-        computed = time.perf_counter()
-        if job.draw:
-            picture = job.draw(plan, energy, summary, Path(common.dem).stem)
+        summary, picture, packing = _compute(job, delivery, _tags(record, plan.elevation), move)
+        if picture:
             delivery.write_bytes("overview.png", picture)
-        now = time.perf_counter()
         seconds = {
             "reading": job.ground.seconds,
             **summary.seconds,
-            "packing": packing,
-            "drawing": now - computed,
-            "whole run": job.ground.seconds + now - start,
+            "packing and drawing": packing,
+            "whole run": job.ground.seconds + time.perf_counter() - start,
         }
         record = {
             **record,
@@ -168,8 +165,8 @@ def _carry_out(job: Job, record: Record) -> Record:
 
 def _compute(
     job: Job, delivery: Delivery, tags: dict[str, str], move: Callable[[float, str], None]
-) -> tuple[Summary, NDArray[np.float32], float]:
-    """Run the plan into packed files; return its summary, the energy, the seconds of packing."""
+) -> tuple[Summary, bytes, float]:
+    """Run the plan into packed files; return its summary, the picture, the seconds of packing."""
     common, elevation = job.common, job.plan.elevation
     sink = RasterSink(
         delivery,
@@ -185,8 +182,18 @@ def _compute(
         _announce_compilation(common.quiet)
         summary = job.plan.run(kept, job.threads, lambda share, stage: move(WORK * share, stage))
         computed = time.perf_counter()
-        sink.finish(lambda share: move(WORK + (1.0 - WORK) * share, "packing files"))
-    return summary, kept.values, time.perf_counter() - computed
+        with ThreadPoolExecutor(1) as beside:  # the picture is drawn while files are packed
+            drawn = beside.submit(_picture, job, kept.values, summary)
+            sink.finish(lambda share: move(WORK + (1.0 - WORK) * share, "packing files"))
+            picture = drawn.result()
+    return summary, picture, time.perf_counter() - computed
+
+
+def _picture(job: Job, energy: NDArray[np.float32], summary: Summary) -> bytes:
+    """The job's overview map, or nothing."""
+    if job.draw is None:
+        return b""
+    return job.draw(job.plan, energy, summary, Path(job.common.dem).stem)
 
 
 class _KeptBand:
@@ -324,7 +331,10 @@ def _summary_text(record: Record) -> str:
                 f" from {band['least']:g} to {band['greatest']:g}"
             )
     if "level_ground" in results:
-        lines.append(f"open level ground at the centre: {results['level_ground']:g}")
+        lines.append(
+            f"open level ground at the centre: {results['level_ground']:g} {results['unit']}"
+        )
+        lines.append(f"energy is potential (clear-sky), {results['basis']}")
     if results.get("void_cells"):
         lines.append(f"void: {results['void_cells']} of {results['cells']} cells")
     lines += [f"warning: {text}" for text in record["warnings"]]

@@ -60,6 +60,13 @@ class BlockGround:
         self.datum = float(np.float32(self.datum))
         self.normal = block_normals(self.padded, PAD, ground.frame, block.row, block.column)
         _continue_rim(self.padded, block, ground.elevation.shape)
+        self._steps = near_steps(ground.frame, *self.middle, ground.azimuths, ground.refraction)
+        nodes = ground.far.block(block.row, block.column, (block.rows, block.columns))
+        self._far = (
+            np.ascontiguousarray(ground.far.height[:, nodes[0], nodes[1]]),
+            np.ascontiguousarray(ground.far.away[:, nodes[0], nodes[1]]),
+        )
+        self._horizon = np.empty((ground.azimuths, 0, block.columns), np.float32)
 
     @property
     def middle(self) -> tuple[float, float]:
@@ -67,49 +74,38 @@ class BlockGround:
         b = self.block
         return b.row + (b.rows - 1) / 2, b.column + (b.columns - 1) / 2
 
-    def latitude(self, row: int) -> tuple[float, float, float]:
-        """Latitude of the first cell of a row of the block, and its change a row, a column."""
+    def latitude(self, rows: range) -> tuple[float, float, float]:
+        """Latitude of the first cell of some rows, and its change a row of them, a column."""
         b, frame = self.block, self.ground.frame
         first = frame.latitude_at(b.row, b.column)
         by_row = (frame.latitude_at(b.row + b.rows, b.column) - first) / b.rows
         by_column = (frame.latitude_at(b.row, b.column + b.columns) - first) / b.columns
-        return first + row * by_row, by_row, by_column
+        return first + rows.start * by_row, rows.step * by_row, by_column
 
-    def strips(self, wanted: NDArray[np.int64] | None = None) -> Iterator[tuple[int, Strip]]:
-        """Each strip's first row in the block, and the strip.
+    def strips(self) -> Iterator[tuple[int, Strip]]:
+        """Each strip's first row in the block, and the strip."""
+        for first in range(0, self.block.rows, STRIP_ROWS):
+            yield first, self.strip(range(first, min(first + STRIP_ROWS, self.block.rows)))
 
-        With `wanted`, only those rows, one a strip.
-        """
-        ground, block = self.ground, self.block
-        steps = near_steps(ground.frame, *self.middle, ground.azimuths, ground.refraction)
-        nodes = ground.far.block(block.row, block.column, (block.rows, block.columns))
-        far = (
-            np.ascontiguousarray(ground.far.height[:, nodes[0], nodes[1]]),
-            np.ascontiguousarray(ground.far.away[:, nodes[0], nodes[1]]),
-        )
+    def strip(self, rows: range) -> Strip:
+        """Rows of the block with their horizons; good until the next strip is taken."""
+        ground, count = self.ground, len(rows)
+        if count > self._horizon.shape[1]:
+            self._horizon = np.empty((ground.azimuths, count, self.block.columns), np.float32)
+        horizon = self._horizon
+        if count < horizon.shape[1]:
+            horizon = np.empty((ground.azimuths, count, self.block.columns), np.float32)
         lift = self.datum - ground.far.datum
-        if wanted is None:
-            firsts = np.arange(0, block.rows, STRIP_ROWS)
-            sizes = np.minimum(STRIP_ROWS, block.rows - firsts)
-        else:
-            firsts, sizes = wanted, np.ones_like(wanted)
-        buffer = np.empty((ground.azimuths, STRIP_ROWS, block.columns), np.float32)
-        for first, rows in zip(firsts.tolist(), sizes.tolist(), strict=True):
-            horizon = buffer
-            if rows != STRIP_ROWS:
-                horizon = np.empty((ground.azimuths, rows, block.columns), np.float32)
-            horizon_strip(self.padded, first, steps, far, lift, ground.refraction, horizon)
-            heights = self.padded[PAD + first : PAD + first + rows, PAD:-PAD]
-            yield (
-                first,
-                Strip(
-                    horizon,
-                    np.ascontiguousarray(self.normal[:, first : first + rows]),
-                    np.ascontiguousarray(heights),
-                    self.datum,
-                    self.latitude(first),
-                ),
-            )
+        horizon_strip(self.padded, rows, self._steps, self._far, lift, ground.refraction, horizon)
+        within = slice(rows.start, rows.stop, rows.step)
+        heights = self.padded[PAD:-PAD, PAD:-PAD][within]
+        return Strip(
+            horizon,
+            np.ascontiguousarray(self.normal[:, within]),
+            np.ascontiguousarray(heights),
+            self.datum,
+            self.latitude(rows),
+        )
 
 
 def _continue_rim(padded: NDArray[np.float32], block: Block, shape: tuple[int, int]) -> None:

@@ -4,14 +4,13 @@ from __future__ import annotations
 
 import time
 import warnings
-from collections.abc import Callable
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass, field
 from functools import partial
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.ndimage import gaussian_filter
 
 from terrasol.constants import REFRACTION_COEFFICIENT, SURROUNDINGS_SCALE
 from terrasol.engine import outputs
@@ -30,6 +29,7 @@ from terrasol.ground.frame import Frame, make_frame
 from terrasol.ground.horizon import NODE_STEP, FarHorizon, sweep
 from terrasol.ground.surface import slope_and_aspect
 from terrasol.light.irradiation import (
+    UNITS,
     LightSettings,
     SkyTables,
     Strip,
@@ -245,7 +245,7 @@ class _Run:
         self._conclude(ground, totals, tables)
         return self.summary
 
-    def _stage(self, name: str, tasks: list[Callable[[], Any]], share: float):
+    def _stage(self, name: str, tasks: Sequence[Callable[[], Any]], share: float) -> Iterator[Any]:
         """Carry out tasks, telling progress and keeping the time."""
         start = time.perf_counter()
         begin = self.done
@@ -298,8 +298,8 @@ class _Run:
         ]
         for _ in self._stage("light of the terrain around", tasks, 0.07):
             pass
-        sigma = [SURROUNDINGS_SCALE / (stride * size) for size in ground.frame.cell_size[::-1]]
-        return Surroundings(_spread(samples, sigma, tables.settings.month_albedo), stride)
+        albedo = tables.settings.month_albedo
+        return Surroundings.of(samples, stride, ground.frame.cell_size, albedo)
 
     def _conclude(self, ground: Ground, totals: Totals, tables: SkyTables | None) -> None:
         """Put numbers and warnings into the summary."""
@@ -313,6 +313,8 @@ class _Run:
         }
         if tables is not None:
             summary.numbers["level_ground"] = _level_ground(ground, tables)
+            summary.numbers["unit"] = tables.settings.unit
+            summary.numbers["basis"] = outputs.basis_words(tables.settings)
         across = summary.numbers["cells_looking_across_void"]
         if across:
             summary.warnings.append(
@@ -381,62 +383,37 @@ def _sample_block(
 ) -> None:
     """What every `stride`-th cell of every `stride`-th row receives from the sky itself."""
     piece = BlockGround(ground, block)
-    middle = ground.frame.latitude_at(*piece.middle)
     offset = stride // 2
-    rows = np.arange((offset - block.row) % stride, block.rows, stride)
-    columns = slice((offset - block.column) % stride, None, stride)
-    months = len(tables.settings.period.months)
-    for first, strip in piece.strips(rows):
-        thin = Strip(
-            np.ascontiguousarray(strip.horizon[:, :, columns]),
-            np.ascontiguousarray(strip.normal[:, :, columns]),
-            np.ascontiguousarray(strip.heights[:, columns]),
-            strip.datum,
-            (
-                strip.latitude[0] + columns.start * strip.latitude[2],
-                strip.latitude[1],
-                strip.latitude[2] * stride,
-            ),
-        )
-        if thin.heights.size == 0:
-            continue
-        view, band = thin.sky()
-        table, sums = thin.direct(tables, middle)
-        height = thin.heights[0] + thin.datum
-        row = (block.row + first) // stride
-        left = (block.column + columns.start) // stride
-        target = samples[:, row, left : left + view.shape[1]]
-        for m in range(months):
-            direct = sums[m // sums.shape[2], :, m % sums.shape[2]]
-            even = np.interp(height, table.heights, table.isotropic[:, m]) * view[0]
-            even += np.interp(height, table.heights, table.band[:, m]) * band[0]
-            target[m] = direct + even
-        target[months] = 1.0 - view[0]
-        target[:, np.isnan(view[0])] = np.nan
-
-
-def _spread(
-    samples: NDArray[np.float32], sigma: list[float], albedo: NDArray[np.float64]
-) -> NDArray[np.float32]:
-    """Gaussian mean of samples around each node, and the series of bounces between slopes.
-
-    The terrain around sends back albedo times all that it gets, part of which is again
-    reflected light: received = from the sky / (1 - albedo x mean terrain view).
-    """
-    known = np.isfinite(samples[-1])
-    weight = gaussian_filter(known.astype(np.float64), sigma, mode="constant")
-    weight = np.where(weight > 1e-12, weight, np.inf)
-    mean = np.empty_like(samples)
-    for i, layer in enumerate(samples):
-        filled = np.where(known, layer, 0.0).astype(np.float64)
-        mean[i] = gaussian_filter(filled, sigma, mode="constant") / weight
-    received = mean[:-1] / (1.0 - albedo[:, None, None] * mean[-1])
-    return np.ascontiguousarray(received, np.float32)
+    rows = range((offset - block.row) % stride, block.rows, stride)
+    first_column = (offset - block.column) % stride
+    columns = slice(first_column, None, stride)
+    if not rows or first_column >= block.columns:
+        return
+    strip = piece.strip(rows)
+    latitude, by_row, by_column = strip.latitude
+    thin = Strip(
+        np.ascontiguousarray(strip.horizon[:, :, columns]),
+        np.ascontiguousarray(strip.normal[:, :, columns]),
+        np.ascontiguousarray(strip.heights[:, columns]),
+        strip.datum,
+        (latitude + first_column * by_column, by_row, by_column * stride),
+    )
+    view, band = thin.sky()
+    table, sums = thin.direct(tables, ground.frame.latitude_at(*piece.middle))
+    height = thin.heights + thin.datum
+    top, left = (block.row + rows.start) // stride, (block.column + first_column) // stride
+    target = samples[:, top : top + view.shape[0], left : left + view.shape[1]]
+    for m in range(len(target) - 1):
+        direct = sums[m // sums.shape[2], :, m % sums.shape[2]].reshape(view.shape)
+        even = np.interp(height, table.heights, table.isotropic[:, m]) * view
+        even += np.interp(height, table.heights, table.band[:, m]) * band
+        target[m] = np.maximum(direct, 0.0) + even
+    target[-1] = 1.0 - view
 
 
 def _across_void(ground: Ground, known: NDArray[np.bool_]) -> int:
     """Cells with a line of sight that crosses a void, counted by the nearest node."""
-    nodes = ground.far.across_void.any(axis=0)
+    nodes = np.asarray(ground.far.across_void.any(axis=0))
     if not nodes.any():
         return 0
     rows = np.arange(known.shape[0]) // NODE_STEP
@@ -446,9 +423,7 @@ def _across_void(ground: Ground, known: NDArray[np.bool_]) -> int:
 
 def _level_ground(ground: Ground, tables: SkyTables) -> float:
     """Irradiation of open level ground at the raster's middle and mean height."""
-    from terrasol.light.irradiation import UNITS
-
-    table, _, _ = tables.at(ground.frame.centre[0])
+    table = tables.at(ground.frame.centre[0]).table
     value = np.interp(ground.far.datum, table.heights, table.level.sum(axis=1))
     return round(float(value) * UNITS[tables.settings.unit], 2)
 

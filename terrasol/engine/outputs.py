@@ -2,13 +2,18 @@
 
 from __future__ import annotations
 
+import numpy as np
+
 from terrasol.files.layers import Layer
-from terrasol.light.irradiation import LightSettings
+from terrasol.light.irradiation import UNITS, LightSettings
 
 MONTH_NAMES = (
     "January", "February", "March", "April", "May", "June", "July", "August", "September",
     "October", "November", "December",
 )  # fmt: skip
+
+SUNNY_DAY = 20.0
+"""Order of a clear day's energy, MJ m-2; only for the rounding of stored values."""
 
 SLOPE = Layer(
     "slope", ("slope",), "degree", "slope of the ground from the level", "ground_slope_angle"
@@ -61,12 +66,20 @@ def basis_words(settings: LightSettings) -> str:
     return "per area of slope" if settings.basis == "slope" else "per area of map"
 
 
+def _fineness(days: float, unit: str) -> float:
+    """A power of two near 1 / 65,000 of what so many sunny days bring."""
+    return float(2.0 ** np.floor(np.log2(days * SUNNY_DAY * UNITS[unit] / 2.0**16)))
+
+
 def light_layers(settings: LightSettings) -> tuple[Layer, ...]:
     """Layers of irradiation: the whole period by part, the months, and the months' parts."""
     words = (
         f"potential (clear-sky) {{}} irradiation in the plane of the slope, {basis_words(settings)}"
     )
     months = month_labels(settings)
+    period = settings.period
+    fine = _fineness(period.days, settings.unit)
+    month_fine = _fineness(max(period.days / len(period.months), 1.0), settings.unit)
     whole = "year" if settings.period.whole_year else "period"
     tags = {"period": settings.period.label, "basis": basis_words(settings), "sky": "clear"}
     layers = [
@@ -75,7 +88,7 @@ def light_layers(settings: LightSettings) -> tuple[Layer, ...]:
             ("global", "beam", "diffuse", "reflected"),
             settings.unit,
             words.format("global, beam, diffuse and reflected"),
-            resolution=2.0**-4,
+            resolution=fine,
             tags=tags,
         ),
         Layer(
@@ -83,7 +96,7 @@ def light_layers(settings: LightSettings) -> tuple[Layer, ...]:
             months,
             settings.unit,
             words.format("global"),
-            resolution=2.0**-6,
+            resolution=month_fine,
             tags=tags,
         ),
     ]
@@ -94,7 +107,7 @@ def light_layers(settings: LightSettings) -> tuple[Layer, ...]:
                 months,
                 settings.unit,
                 words.format(part),
-                resolution=2.0**-6,
+                resolution=month_fine,
                 tags=tags,
             )
         )

@@ -13,7 +13,7 @@ from concurrent.futures import FIRST_COMPLETED, Future, ThreadPoolExecutor, wait
 from dataclasses import dataclass
 from typing import Any
 
-from terrasol.errors import SettingError
+from terrasol.errors import SettingError, UnfinishedError
 from terrasol.ground.horizon import BLOCK
 
 Progress = Callable[[float, str], None]
@@ -56,7 +56,8 @@ def carry_out(tasks: Iterable[Callable[[], Any]], threads: int, ahead: int = 2) 
     """Run tasks on threads and yield what they return, as they finish.
 
     Never more than `ahead` tasks a thread are under way or waiting to be taken, so that
-    results do not pile up. The first failure stops the rest and is raised here.
+    results do not pile up. The first failure stops the rest and is raised here; want of
+    memory as UnfinishedError.
     """
     waiting: set[Future[Any]] = set()
     pool = ThreadPoolExecutor(threads, thread_name_prefix="terrasol")
@@ -71,5 +72,9 @@ def carry_out(tasks: Iterable[Callable[[], Any]], threads: int, ahead: int = 2) 
             done, waiting = wait(waiting, return_when=FIRST_COMPLETED)
             for future in done:
                 yield future.result()
+    except MemoryError as error:
+        raise UnfinishedError(
+            "out of memory before everything was finished: use fewer --threads, or a smaller raster"
+        ) from error
     finally:
         pool.shutdown(wait=True, cancel_futures=True)

@@ -18,12 +18,13 @@ from terrasol.errors import InputError
 from terrasol.ground.elevation import Affine6
 
 LATTICE_CELLS = 64
-"""Largest spacing of the lattice, cells. Between its nodes the Jacobian is linear; over 64
-cells of 90 m its departure from linear is below 1e-6 at any latitude under 80 degrees."""
+"""Spacing of the lattice, cells, on rasters up to 4096 cells a side. Between its nodes the
+Jacobian is linear; over 64 cells of 90 m its departure from linear is below 1e-6 at any
+latitude under 80 degrees."""
 
 LATTICE_NODES = 65
-"""Fewest nodes along the longer side of a large raster are capped here: more than 64 steps
-across a raster of 4000 cells add nothing."""
+"""Most nodes along a side: larger rasters get a wider lattice, which is still far denser than
+the Jacobian needs."""
 
 
 @dataclass(frozen=True)

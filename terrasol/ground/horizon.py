@@ -240,7 +240,7 @@ def _turned(layer, major, ray):
 
 def horizon_strip(
     padded: NDArray[np.float32],
-    first_row: int,
+    rows: range,
     steps: tuple[NDArray[np.int64], NDArray[np.float32]],
     far: tuple[NDArray[np.float32], NDArray[np.float32]],
     lift: float,
@@ -253,8 +253,8 @@ def horizon_strip(
     ----------
     padded : ndarray of float32
         The block's heights, with PAD cells around [m].
-    first_row : int
-        First row in the block.
+    rows : range
+        Rows of the block.
     steps : tuple of ndarray
         From `near_steps`.
     far : tuple of ndarray of float32
@@ -266,5 +266,6 @@ def horizon_strip(
     out : ndarray of float32, shape (azimuths, rows, columns)
         Filled.
     """
-    near_field(padded, PAD, first_row, *steps, out)
-    merge_far(padded, PAD, first_row, NODE_STEP, *far, lift, half_curve(refraction), out)
+    near_field(padded, PAD, rows.start, rows.step, *steps, out)
+    bend = half_curve(refraction)
+    merge_far(padded, PAD, rows.start, rows.step, NODE_STEP, *far, lift, bend, out)

@@ -86,7 +86,7 @@ def fill_table(elevation, azimuth, lane, weight, knot_angle, disc, table):
             j = below - 1
             while j < knots and (j < below or knot_angle[j] < elevation[i] + disc):
                 if j >= below:
-                    d = (elevation[i] - knot_angle[j]) / disc
+                    d = min(max((elevation[i] - knot_angle[j]) / disc, -1.0), 1.0)
                     part = 0.5 + (d * np.sqrt(1.0 - d * d) + np.arcsin(d)) / np.pi
                     target = table[a, j, :, lane[i]]
                 else:
@@ -146,7 +146,7 @@ def _add_azimuth(at, toward, up, layer, mix, first, stride, dark, table, out, fi
         v = up[c]
         parts = (h * w0, v * w0, h * w1, v * w1, h * w2, v * w2, h * w3, v * w3)
         lower = layer[c] + first + k
-        _add_rows(out, first_out + c, table, lower, lower + stride, parts)
+        _add_rows(out, first_out + c, table, lower, lower + stride, parts)  # type: ignore[call-arg]
 
 
 @njit(cache=True, nogil=True, error_model="numpy")

@@ -20,7 +20,7 @@ GROUP = 16
 
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=FAST)
-def near_field(heights, pad, first_row, shift, weight, out):
+def near_field(heights, pad, first_row, row_step, shift, weight, out):
     """Horizon from the first steps along each ray, exact from the cell's own centre.
 
     For one azimuth the shift and the two weights of a step are the same for every cell, so
@@ -30,13 +30,14 @@ def near_field(heights, pad, first_row, shift, weight, out):
     shift : (azimuths, steps, 4) int64, row and column shifts of the two cells a step mixes
     weight : (azimuths, steps, 4) float32: of the one cell, of the other, 1 / distance,
         and the drop of the Earth over the distance; the number of steps is a multiple of 4
-    out : (azimuths, rows, columns) float32, the tangent, for the rows from `first_row`
+    out : (azimuths, rows, columns) float32, the tangent, for every `row_step`-th row
+        from `first_row`
     """
     azimuths, rows, columns = out.shape
     steps = shift.shape[1]
     for a in range(azimuths):
         for r in range(rows):
-            i = first_row + r + pad
+            i = first_row + r * row_step + pad
             own = heights[i, pad : pad + columns]
             best = out[a, r]
             for c in range(columns):
@@ -94,12 +95,13 @@ def _line_heights(heights, far_end, along, across, breadth, start, gap, drift, l
 
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=FAST)
-def _hull_candidates(line, reach, low, points, voids):
+def _hull_candidates(line, reach, bend, low, points, voids):
     """Points of a line that may lie on its upper hull, and its voids; return both counts.
 
     A point below the middle of the two points k steps on either side of it bounds no view
     from beyond them. That is exact for every k short of the near field, and it drops most
-    points before the hull's unpredictable stack sees them.
+    points before the hull's unpredictable stack sees them. `bend` is the drop of the Earth
+    over one step: the heights compared are those of the hull, curvature included.
     """
     length = line.size
     low[:] = 0
@@ -109,8 +111,9 @@ def _hull_candidates(line, reach, low, points, voids):
         behind = line[2 * k :]
         middle = line[k : length - k]
         flag = low[k : length - k]
+        sink = np.float32(2.0 * bend * k * k)
         for i in range(length - 2 * k):
-            under = middle[i] + middle[i] < before[i] + behind[i]
+            under = middle[i] + middle[i] + sink < before[i] + behind[i]
             flag[i] |= np.uint8(under)
         k *= 2
     count = 0
@@ -247,7 +250,7 @@ def far_field(
             start = origin + k * gap
             _line_heights(heights, far_end, along, across, breadth, start, gap, drift, together)
         line = together[k % GROUP]
-        kept, holes = _hull_candidates(line, skip - 1, low, points, voids)
+        kept, holes = _hull_candidates(line, skip - 1, step * step * half_curve, low, points, voids)
         _walk_line(
             line, points[:kept], voids[:holes], first_query, every, skip, step, half_curve,
             datum, k, seen, place, bulge,
@@ -294,7 +297,7 @@ def _rim_height(heights, row, across, breadth, y):
 
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=FAST)
-def merge_far(heights, pad, first_row, every, height, away, lift, half_curve, out):
+def merge_far(heights, pad, first_row, row_step, every, height, away, lift, half_curve, out):
     """Raise the near horizon to the far one, seen from each cell's own height.
 
     Height and distance of the bounding point are linear between nodes: for one and the same
@@ -314,8 +317,9 @@ def merge_far(heights, pad, first_row, every, height, away, lift, half_curve, ou
     distance = np.empty(spread, np.float32)
     for a in range(azimuths):
         for r in range(rows):
-            n = (first_row + r) // every
-            v = np.float32((first_row + r - n * every) / every)
+            row = first_row + r * row_step
+            n = row // every
+            v = np.float32((row - n * every) / every)
             for m in range((columns + every - 1) // every):
                 a0 = height[a, n, m] + v * (height[a, n + 1, m] - height[a, n, m])
                 a1 = height[a, n, m + 1] + v * (height[a, n + 1, m + 1] - height[a, n, m + 1])
@@ -325,7 +329,7 @@ def merge_far(heights, pad, first_row, every, height, away, lift, half_curve, ou
                     u = np.float32(s / every)
                     top[m * every + s] = a0 + u * (a1 - a0)
                     distance[m * every + s] = b0 + u * (b1 - b0)
-            own = heights[first_row + r + pad, pad : pad + columns]
+            own = heights[row + pad, pad : pad + columns]
             best = out[a, r]
             for c in range(columns):
                 t = (top[c] - raised - own[c]) / distance[c] - distance[c] * curve

@@ -9,23 +9,24 @@ from typing import Final
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.ndimage import gaussian_filter
 
-from terrasol.constants import REFRACTION_COEFFICIENT
+from terrasol.constants import REFRACTION_COEFFICIENT, SURROUNDINGS_SCALE
 from terrasol.errors import SettingError
 from terrasol.ground.horizon import azimuth_directions
 from terrasol.kernels.beam import LANES, look_up
 from terrasol.kernels.energy import parts_of_light
 from terrasol.kernels.skyview import sky_view
 from terrasol.sky.clear import Air
+from terrasol.sky.diffuse import MODELS
 from terrasol.sky.period import Period
-from terrasol.sky.sun import SunPath, sun_path
+from terrasol.sky.sun import SunPath, steps_per_day, sun_path
 from terrasol.sky.suntable import LATITUDE_STEP, SunTable, height_knots, sun_table
 
 UNITS: Final = {"MJ m-2": 1.0, "kW h m-2": 1.0 / 3.6}
 """Units of irradiation, and what one MJ m-2 is in each."""
 
 BASES: Final = ("slope", "map")
-DIFFUSE_MODELS: Final = ("perez", "hay-davies", "isotropic")
 
 BAND_TOP: Final = float(np.tan(np.radians(6.5)))
 """Tangent of the height at which the horizon band counts as wholly hidden: 6.5 degrees, the
@@ -86,7 +87,7 @@ class LightSettings:
                 f"albedo must be one number or twelve, each from 0 to 1; got {self.albedo}"
             )
         for name, value, known in (
-            ("diffuse model", self.diffuse, DIFFUSE_MODELS),
+            ("diffuse model", self.diffuse, MODELS),
             ("unit", self.unit, tuple(UNITS)),
             ("basis", self.basis, BASES),
         ):
@@ -94,6 +95,7 @@ class LightSettings:
                 raise SettingError(f"{name} '{value}' is not one of: {', '.join(known)}")
         check_azimuths(self.azimuths)
         check_refraction(self.refraction)
+        steps_per_day(self.step_seconds)
 
     @property
     def month_albedo(self) -> NDArray[np.float64]:
@@ -136,6 +138,28 @@ def twelve(values: float | Sequence[float], name: str) -> tuple[float, ...]:
     return numbers
 
 
+@dataclass(frozen=True)
+class Mixed:
+    """A sun table for one latitude.
+
+    Parameters
+    ----------
+    table : SunTable
+        Mixed between two latitude knots.
+    dark : ndarray of int64, shape (azimuths,)
+        See `SunTable.dark`.
+    latitude : float
+        Whose table it is [degrees].
+    northward : ndarray, shape (groups, lanes)
+        See `SunTable.northward`.
+    """
+
+    table: SunTable
+    dark: NDArray[np.int64]
+    latitude: float
+    northward: NDArray[np.float64]
+
+
 @dataclass
 class SkyTables:
     """Sun tables at the latitude and height knots that a raster needs.
@@ -159,7 +183,7 @@ class SkyTables:
     latitudes: NDArray[np.float64]
     heights: NDArray[np.float64]
     tables: list[SunTable | None]
-    _mixed: dict[float, tuple[SunTable, NDArray[np.int64]]] = field(default_factory=dict)
+    _mixed: dict[float, Mixed] = field(default_factory=dict)
     _lock: threading.Lock = field(default_factory=threading.Lock)
 
     @classmethod
@@ -191,8 +215,8 @@ class SkyTables:
             s.monthly_parts,
         )
 
-    def at(self, latitude: float) -> tuple[SunTable, NDArray[np.int64], float]:
-        """Table mixed for the latitude rounded to LATITUDE_GRAIN, its dark knots, the latitude."""
+    def at(self, latitude: float) -> Mixed:
+        """The table for a latitude rounded to LATITUDE_GRAIN."""
         rounded = round(latitude / LATITUDE_GRAIN) * LATITUDE_GRAIN
         with self._lock:
             if rounded not in self._mixed:
@@ -202,11 +226,14 @@ class SkyTables:
                     np.searchsorted(self.latitudes, rounded) - 1, 0, self.latitudes.size - 2
                 )
                 low, high = self.tables[place], self.tables[place + 1]
-                assert low is not None and high is not None
-                gap = self.latitudes[place + 1] - self.latitudes[place]
-                table = low.mixed(high, float((rounded - self.latitudes[place]) / gap))
-                self._mixed[rounded] = table, table.dark()
-            return *self._mixed[rounded], rounded
+                assert low is not None
+                assert high is not None
+                gap = float(self.latitudes[place + 1] - self.latitudes[place])
+                table = low.mixed(high, float(rounded - self.latitudes[place]) / gap)
+                self._mixed[rounded] = Mixed(
+                    table, table.dark(), rounded, table.northward(low, high, gap)
+                )
+            return self._mixed[rounded]
 
 
 @dataclass(frozen=True)
@@ -223,6 +250,42 @@ class Surroundings:
 
     received: NDArray[np.float32]
     stride: int
+
+    @classmethod
+    def of(
+        cls,
+        samples: NDArray[np.float32],
+        stride: int,
+        cell_size: tuple[float, float],
+        albedo: NDArray[np.float64],
+    ) -> Surroundings:
+        """Spread samples over the surroundings, and count the bounces between slopes.
+
+        The terrain around sends back albedo times all that it gets, part of which is again
+        reflected light: received = from the sky / (1 - albedo x mean terrain view).
+
+        Parameters
+        ----------
+        samples : ndarray of float32, shape (months + 1, node rows, node columns)
+            What single cells receive from the sky itself, month by month [MJ m-2], and last
+            their terrain view; NaN where void.
+        stride : int
+            Cells between samples.
+        cell_size : tuple of float
+            Of a column step and a row step [m].
+        albedo : ndarray, shape (months,)
+            Of the ground.
+        """
+        sigma = [SURROUNDINGS_SCALE / (stride * size) for size in cell_size[::-1]]
+        known = np.isfinite(samples[-1])
+        weight = gaussian_filter(known.astype(np.float64), sigma, mode="constant")
+        weight = np.where(weight > 1e-12, weight, np.inf)
+        mean = np.empty_like(samples)
+        for i, layer in enumerate(samples):
+            filled = np.where(known, layer, 0.0).astype(np.float64)
+            mean[i] = gaussian_filter(filled, sigma, mode="constant") / weight
+        received = mean[:-1] / (1.0 - albedo[:, None, None] * mean[-1])
+        return cls(np.ascontiguousarray(received, np.float32), stride)
 
     @classmethod
     def none(cls, months: int) -> Surroundings:
@@ -269,8 +332,11 @@ class Strip:
 
     def direct(self, tables: SkyTables, middle: float) -> tuple[SunTable, NDArray[np.float32]]:
         """Sums of direct light, shape (groups, rows * columns, lanes), by the table used."""
-        table, dark, latitude = tables.at(middle)
-        tilt = np.radians(np.array(self.latitude) - (latitude, 0.0, 0.0))
+        mixed = tables.at(middle)
+        table = mixed.table
+        tilt = np.radians(np.array(self.latitude) - (mixed.latitude, 0.0, 0.0))
+        rows, columns = np.indices(self.heights.shape)
+        moved = (tilt[0] + tilt[1] * rows + tilt[2] * columns).astype(np.float32).reshape(-1, 1)
         sums = np.empty((table.direct.shape[0], self.heights.size, LANES), np.float32)
         directions = azimuth_directions(self.horizon.shape[0])
         for group, direct in enumerate(table.direct):
@@ -283,9 +349,10 @@ class Strip:
                 tilt,
                 table.heights,
                 direct.reshape(-1, 2 * LANES),
-                dark,
+                mixed.dark,
                 sums[group],
             )
+            sums[group] *= 1.0 + moved * mixed.northward[group].astype(np.float32)
         return table, sums
 
 
@@ -355,6 +422,7 @@ def strip_light(
         np.ascontiguousarray(table.isotropic.T, np.float32),
         np.ascontiguousarray(table.band.T, np.float32),
         *sky, surroundings.received, surroundings.node(*place), surroundings.stride,
-        settings.month_albedo.astype(np.float32), factor, light.year, light.months, light.month_parts,
+        settings.month_albedo.astype(np.float32), factor,
+        light.year, light.months, light.month_parts,
     )  # fmt: skip
     return light

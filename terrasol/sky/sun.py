@@ -125,7 +125,7 @@ def sun_path(period: Period, longitude: float, step_seconds: float = 60.0) -> Su
     """
     if not -180.0 <= longitude <= 180.0:
         raise SettingError(f"longitude {longitude:g} is outside -180 to 180 degrees")
-    steps = _steps_per_day(step_seconds)
+    steps = steps_per_day(step_seconds)
     fraction = (np.arange(steps) + 0.5) / steps
     within_day = np.round((fraction * _DAY_SECONDS - longitude * _SECONDS_PER_DEGREE) * 1e9)
     midnight = np.arange(period.start, period.end, np.timedelta64(1, "D"))
@@ -298,7 +298,8 @@ def unit_vector(
     return level * np.sin(azimuth), level * np.cos(azimuth), np.sin(elevation)
 
 
-def _steps_per_day(step_seconds: float) -> int:
+def steps_per_day(step_seconds: float) -> int:
+    """Number of steps in a day; SettingError unless they are whole, of 1 s to 1 h."""
     if not 1.0 <= step_seconds <= 3600.0:
         raise SettingError(f"step of {step_seconds:g} s is outside 1 to 3600 s")
     steps = round(_DAY_SECONDS / step_seconds)
