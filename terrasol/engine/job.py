@@ -42,6 +42,9 @@ from terrasol.light.irradiation import (
 SECONDS_A_CELL_AND_AZIMUTH = 25e-9
 """What a core needs, for the estimate only; measured in docs/performance.md."""
 
+SAMPLE_STRIDE = 8
+"""Most cells between samples of what the terrain around receives."""
+
 Arrays = dict[str, NDArray[Any]]
 
 
@@ -238,7 +241,7 @@ class _Run:
         totals = Totals()
         blocks = blocks_of(plan.elevation.shape)
         tasks = [partial(_with_block, work, block) for block in blocks]
-        for block, arrays in self._stage("blocks", tasks, 0.65):
+        for block, arrays in self._stage("blocks", tasks, 1.0 - self.done):
             totals.add(arrays)
             for name, values in arrays.items():
                 sink.write(name, block.row, block.column, values)
@@ -289,7 +292,8 @@ class _Run:
         if not any(tables.settings.month_albedo):
             return Surroundings.none(months)
         cell = max(ground.frame.cell_size)
-        stride = int(np.clip(SURROUNDINGS_SCALE / (2.0 * cell), 1, 8))
+        most = max(min(ground.elevation.shape) // 4, 1)
+        stride = int(np.clip(SURROUNDINGS_SCALE / (2.0 * cell), 1, min(most, SAMPLE_STRIDE)))
         shape = tuple(-(-size // stride) for size in ground.elevation.shape)
         samples = np.full((months + 1, *shape), np.nan, np.float32)
         tasks = [

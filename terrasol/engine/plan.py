@@ -74,7 +74,7 @@ def carry_out(tasks: Iterable[Callable[[], Any]], threads: int, ahead: int = 2) 
                 yield future.result()
     except MemoryError as error:
         raise UnfinishedError(
-            "out of memory before everything was finished: use fewer --threads, or a smaller raster"
+            "not enough memory to finish everything: use fewer --threads, or a smaller raster"
         ) from error
     finally:
         pool.shutdown(wait=True, cancel_futures=True)

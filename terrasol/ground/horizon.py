@@ -154,7 +154,7 @@ def zone_edges(frame: Frame) -> tuple[list[int], list[int]]:
 
 def _edges(size: int, parts: int) -> list[int]:
     blocks = -(-size // BLOCK)
-    inner = {round(blocks * k / parts) * BLOCK for k in range(parts)}
+    inner = {blocks * k // parts * BLOCK for k in range(parts)}
     return [*sorted(inner), size]
 
 

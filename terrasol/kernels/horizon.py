@@ -15,6 +15,9 @@ NOTHING = 0.25
 """Tangent below the eye at which a line with nothing in view ends; cells between it and a
 line with a view get something between."""
 
+UNSEEN = -1e5
+"""Height of what a node sees that has no ground near it, m: nothing."""
+
 GROUP = 16
 """Lines of the far field that are read side by side."""
 
@@ -176,7 +179,6 @@ def _walk_line(
     hint = 0
     point = 0
     hole = 0
-    own = np.nan
     for query in range(seen.shape[0]):
         i = first_query + query * every
         while point < points.size and points[point] <= i - skip:
@@ -186,22 +188,32 @@ def _walk_line(
             point += 1
         while hole < voids.size and voids[hole] < i:
             hole += 1
-        hint = min(hint, top)
-        if i >= 0 and line[min(i, line.size - 1)] > -np.inf:
-            own = np.float64(line[min(i, line.size - 1)])
-        void = voids[hole - 1] * step if hole > 0 else -1.0
-        seen[query, k, 0] = (own - datum if own == own else 0.0) - NOTHING * skip * step
+        own = _height_near(line, i, every)
+        seen[query, k, 0] = own - datum - NOTHING * skip * step
         seen[query, k, 1] = skip * step
         seen[query, k, 2] = 1.0 if hole > 0 else 0.0
         if top >= 0 and own == own:
-            hint = max(hint, 0)
+            hint = max(min(hint, top), 0)
             eye = i * step
             sight = own - eye * eye * half_curve
             hint = _tangent(place, bulge, top, hint, eye, sight)
             height = bulge[hint] + place[hint] * place[hint] * half_curve
             seen[query, k, 0] = height - datum
             seen[query, k, 1] = eye - place[hint]
-            seen[query, k, 2] = 1.0 if void > place[hint] else 0.0
+            before = hole > 0 and voids[hole - 1] * step > place[hint]
+            seen[query, k, 2] = 1.0 if before else 0.0
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _height_near(line, i, reach):
+    """Height of a line at a step, or the nearest within reach, towards the eye first."""
+    last = line.size - 1
+    for k in range(reach + 1):
+        for side in range(2):
+            at = i + k if side == 0 else i - k
+            if 0 <= at <= last and -np.inf < line[at] < np.inf:
+                return np.float64(line[at])
+    return np.nan
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
@@ -266,9 +278,19 @@ def far_field(
             k = min(int(max(y, float(first_line))), max(last_line - 1, first_line))
             f = min(max(y - k, 0.0), 1.0 if last_line > first_line else 0.0)
             k1 = min(k + 1, lines - 1)
-            height[q, n] = (1.0 - f) * seen[q, k, 0] + f * seen[q, k1, 0]
-            away[q, n] = (1.0 - f) * seen[q, k, 1] + f * seen[q, k1, 1]
+            # A line in a void knows nothing of what is seen from here; the other one must do.
+            if seen[q, k, 0] != seen[q, k, 0]:
+                f = 1.0
+            elif seen[q, k1, 0] != seen[q, k1, 0]:
+                f = 0.0
+            one = k1 if f == 1.0 else k
+            other = k if f == 0.0 else k1
+            height[q, n] = (1.0 - f) * seen[q, one, 0] + f * seen[q, other, 0]
+            away[q, n] = (1.0 - f) * seen[q, one, 1] + f * seen[q, other, 1]
             across_void[q, n] = seen[q, k, 2] > 0.0 or seen[q, k1, 2] > 0.0
+            if height[q, n] != height[q, n]:
+                height[q, n] = UNSEEN
+                away[q, n] = 1.0
             if y < first_line or y > last_line:
                 # No line on the outer side: the next one's angle, seen from the node.
                 near = ahead + gap * (first_line if y < first_line else last_line)

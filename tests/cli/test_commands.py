@@ -85,7 +85,7 @@ def test_record_of_a_run(year, dem):
         "model": "ineichen", "solar_constant": 1361.0, "linke": list(linke),
     }  # fmt: skip
     assert record["versions"]["terrasol"] == terrasol.__version__
-    assert {"reading", "packing", "drawing", "whole run"} <= set(record["seconds"])
+    assert {"reading", "packing and drawing", "whole run"} <= set(record["seconds"])
     assert sorted(path.rpartition("/")[2] for path in record["files"]) == names(year)
     assert record["results"]["void_cells"] == 1
 

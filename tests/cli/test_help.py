@@ -67,10 +67,11 @@ def test_choices_are_those_of_the_library():
     from terrasol.files.sink import COMPRESSIONS
     from terrasol.files.vertical import OPTION_NAMES
     from terrasol.light import irradiation as light
+    from terrasol.sky.diffuse import MODELS
 
     choices = {p.name: tuple(getattr(p.type, "choices", ())) for p in irradiation.params}
     assert set(UNITS.values()) == set(light.UNITS)
     assert choices["basis"] == light.BASES
-    assert choices["diffuse"] == light.DIFFUSE_MODELS
+    assert choices["diffuse"] == MODELS
     assert choices["compression"] == tuple(COMPRESSIONS)
     assert choices["vertical_unit"] == OPTION_NAMES
