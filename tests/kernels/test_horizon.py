@@ -117,11 +117,11 @@ def test_voids_hide_nothing_and_are_told():
         assert void[i] == between
 
 
-def candidates(line, reach):
+def candidates(line, reach, bend=0.0):
     """Indices of the points that are left after sifting over `reach` steps, and of voids."""
     low = np.empty(line.size, np.uint8)
     points, voids = np.empty(line.size, np.int64), np.empty(line.size, np.int64)
-    kept, holes = _hull_candidates(line, reach, low, points, voids)
+    kept, holes = _hull_candidates(line, reach, bend, low, points, voids)
     return points[:kept], voids[:holes]
 
 
@@ -133,7 +133,7 @@ def test_sifting_drops_points_but_no_horizon(half_curve):
         got, _, _ = sweep_line(line, 30.0, half_curve)
         want = np.maximum(near.max(axis=1), far.max(axis=1))[SKIP:]
         np.testing.assert_allclose(np.maximum(got, near.max(axis=1))[SKIP:], want, atol=1e-6)
-        assert candidates(line, SKIP - 1)[0].size < line.size / 2
+        assert candidates(line, SKIP - 1, 900.0 * half_curve)[0].size < line.size / 2
         assert candidates(line, 0)[0].size == line.size
 
 
@@ -223,16 +223,16 @@ def test_diagonal_sweep_is_exact_on_the_cells_it_meets():
 def test_near_field_is_the_highest_of_its_steps(voids):
     dice = np.random.default_rng(9)
     pad, rows, columns, azimuths, steps = 5, 6, 11, 3, 8
-    heights = dice.normal(0.0, 10.0, (rows + 2 * pad + 2, columns + 2 * pad)).astype(np.float32)
+    heights = dice.normal(0.0, 10.0, (2 * rows + 2 * pad + 1, columns + 2 * pad)).astype(np.float32)
     heights.flat[dice.permutation(heights.size)[:voids]] = np.nan
     shift = dice.integers(-pad, pad + 1, (azimuths, steps, 4))
     weight = dice.uniform(0.0, 0.1, (azimuths, steps, 4)).astype(np.float32)
     out = np.empty((azimuths, rows, columns), np.float32)
-    first = 2
-    near_field(heights, pad, first, shift, weight, out)
+    first, row_step = 2, 2
+    near_field(heights, pad, first, row_step, shift, weight, out)
     z = heights.astype(np.float64)
     for a, r, c in np.ndindex(out.shape):
-        i, j = first + r + pad, c + pad
+        i, j = first + r * row_step + pad, c + pad
         best = 0.0
         for (row1, column1, row2, column2), (w1, w2, w3, drop) in zip(
             shift[a], weight[a].astype(np.float64), strict=True
@@ -244,26 +244,27 @@ def test_near_field_is_the_highest_of_its_steps(voids):
     assert (out > 0.0).any()
 
 
-def test_merger_sees_the_far_point_from_the_cells_own_height():
+@pytest.mark.parametrize("row_step", [1, 3])
+def test_merger_sees_the_far_point_from_the_cells_own_height(row_step):
     dice = np.random.default_rng(10)
     pad, rows, columns, every, first, lift = 3, 5, 14, 4, 6, -70.0
     heights = dice.normal(0.0, 20.0, (20 + 2 * pad, columns + 2 * pad)).astype(np.float32)
-    heights[first + pad + 2, pad + 4] = np.nan
+    heights[first + pad + 3, pad + 4] = np.nan
     height = dice.uniform(0.0, 200.0, (2, 7, 6)).astype(np.float32)
     away = dice.uniform(500.0, 50_000.0, (2, 7, 6)).astype(np.float32)
     near = dice.uniform(0.0, 0.02, (2, rows, columns)).astype(np.float32)
     out = near.copy()
-    merge_far(heights, pad, first, every, height, away, lift, HALF_CURVE, out)
+    merge_far(heights, pad, first, row_step, every, height, away, lift, HALF_CURVE, out)
     for a, r, c in np.ndindex(out.shape):
-        n, v = divmod(first + r, every)
-        m, u = divmod(c, every)
+        row = first + r * row_step
+        (n, v), (m, u) = divmod(row, every), divmod(c, every)
         v, u = v / every, u / every
         top, distance = (
             (1 - v) * ((1 - u) * f[a, n, m] + u * f[a, n, m + 1])
             + v * ((1 - u) * f[a, n + 1, m] + u * f[a, n + 1, m + 1])
             for f in (height.astype(np.float64), away.astype(np.float64))
         )
-        own = float(heights[first + r + pad, c + pad])
+        own = float(heights[row + pad, c + pad])
         far = (top - lift - own) / distance - distance * HALF_CURVE
         want = near[a, r, c] if np.isnan(far) else max(near[a, r, c], far)
         assert out[a, r, c] == pytest.approx(want, abs=2e-6)

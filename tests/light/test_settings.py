@@ -6,6 +6,7 @@ import pytest
 from terrasol.constants import REFRACTION_COEFFICIENT
 from terrasol.errors import SettingError, TerrasolError
 from terrasol.light.irradiation import (
+    LATITUDE_GRAIN,
     LightSettings,
     SkyTables,
     Surroundings,
@@ -15,6 +16,7 @@ from terrasol.light.irradiation import (
 )
 from terrasol.sky.clear import Air
 from terrasol.sky.period import parse_period
+from terrasol.sky.suntable import LATITUDE_STEP
 
 AIR = Air.ineichen(3.0)
 
@@ -92,21 +94,19 @@ def test_one_number_or_twelve():
 
 
 @pytest.mark.parametrize(
-    ("latitudes", "want"),
-    [
-        ((46.2, 46.7), (46.0, 47.0)),
-        ((46.0, 46.0), (46.0, 47.0)),
-        ((45.9, 46.1), (45.0, 46.0, 47.0)),
-        ((-0.1, 0.1), (-1.0, 0.0, 1.0)),
-        ((-33.5, -33.2), (-34.0, -33.0)),
-        ((89.2, 89.8), (89.0, 90.0)),
-        ((-89.8, -89.2), (-90.0, -89.0)),
-    ],
-)
-def test_latitude_knots_are_fixed_to_the_globe(latitudes, want):
-    tables = SkyTables.over(settings("2025-06-21"), 9.0, latitudes, (100.0, 120.0))
-    assert tuple(tables.latitudes) == want
-    assert len(tables.tables) == len(want)
+    ("south", "north"),
+    [(46.2, 46.7), (46.0, 46.0), (45.9, 46.1), (-0.1, 0.1), (-33.5, -33.2), (-2.0, 3.0),
+     (89.2, 89.8), (-89.8, -89.2)],
+)  # fmt: skip
+def test_latitude_knots_are_fixed_to_the_globe(south, north):
+    tables = SkyTables.over(settings("2025-06-21"), 9.0, (south, north), (100.0, 120.0))
+    knots = tables.latitudes
+    assert len(tables.tables) == knots.size >= 2
+    np.testing.assert_allclose(np.diff(knots), LATITUDE_STEP)
+    np.testing.assert_allclose(knots / LATITUDE_STEP, np.round(knots / LATITUDE_STEP))
+    assert south - LATITUDE_STEP < knots[0] <= south
+    assert north <= knots[-1] <= max(north, south) + LATITUDE_STEP
+    assert np.abs(knots).max() <= 90.0
 
 
 def filled(latitudes):
@@ -118,23 +118,29 @@ def filled(latitudes):
     return tables
 
 
-def test_tables_are_mixed_for_the_nearest_twentieth_of_a_degree():
+def test_tables_are_mixed_for_the_nearest_grain_of_latitude():
     tables = filled((45.5, 46.5))
-    table, dark, latitude = tables.at(46.262)
-    assert latitude == pytest.approx(46.25)
-    want = 0.75 * tables.tables[1].level + 0.25 * tables.tables[2].level
-    np.testing.assert_allclose(table.level, want, rtol=1e-12)
-    np.testing.assert_array_equal(dark, table.dark())
-    assert tables.at(46.238)[0] is table  # kept, not mixed again
-    at_knot, _, latitude = tables.at(46.01)
-    assert latitude == pytest.approx(46.0)
-    np.testing.assert_allclose(at_knot.level, tables.tables[1].level, rtol=1e-12)
+    grain = LATITUDE_GRAIN
+    asked = 46.0 + 4.3 * grain
+    mixed = tables.at(asked)
+    assert mixed.latitude == pytest.approx(46.0 + 4.0 * grain)
+    low = int(np.searchsorted(tables.latitudes, mixed.latitude)) - 1
+    share = (mixed.latitude - tables.latitudes[low]) / LATITUDE_STEP
+    south, north = tables.tables[low : low + 2]
+    want = (1.0 - share) * south.level + share * north.level
+    np.testing.assert_allclose(mixed.table.level, want, rtol=1e-9)
+    np.testing.assert_array_equal(mixed.dark, mixed.table.dark())
+    assert tables.at(asked - 0.6 * grain).table is mixed.table  # kept, not mixed again
+    at_knot = tables.at(46.0 + 0.2 * grain)
+    assert at_knot.latitude == pytest.approx(46.0)
+    knot = int(np.flatnonzero(tables.latitudes == 46.0)[0])
+    np.testing.assert_allclose(at_knot.table.level, tables.tables[knot].level, rtol=1e-9)
     # many other latitudes push it out; asked again, the answer is the same
-    for latitude in np.arange(45.0, 46.2, 0.05):
+    for latitude in np.arange(45.5, 45.9, grain):
         tables.at(latitude)
-    again = tables.at(46.25)[0]
-    assert again is not table
-    np.testing.assert_array_equal(again.direct, table.direct)
+    again = tables.at(asked).table
+    assert again is not mixed.table
+    np.testing.assert_array_equal(again.direct, mixed.table.direct)
 
 
 @pytest.mark.parametrize("step", [0.5, 7200.0, 7.0, float("nan")])
@@ -150,3 +156,43 @@ def test_place_among_the_nodes_of_the_surroundings():
     none = Surroundings.none(3)
     assert none.received.shape == (3, 1, 1)
     assert (none.received == 0.0).all()
+
+
+def samples_of(received, view, shape=(40, 50)):
+    """Uniform samples: one month's light, and the share of the view that is terrain."""
+    samples = np.empty((2, *shape), np.float32)
+    samples[0], samples[1] = received, view
+    return samples
+
+
+def test_surroundings_add_every_bounce_once():
+    # all slopes get 100 and see 0.3 of each other: 100 (1 + a v + (a v)^2 + ...)
+    around = Surroundings.of(samples_of(100.0, 0.3), 8, (20.0, 20.0), np.array([0.8]))
+    assert around.received.shape == (1, 40, 50)
+    want = 100.0 * sum(0.24**n for n in range(40))
+    np.testing.assert_allclose(around.received, want, rtol=1e-5)
+
+
+def test_surroundings_are_a_mean_of_what_is_known():
+    samples = samples_of(100.0, 0.0)
+    samples[0, :, 25:] = 200.0
+    samples[:, 10:20, 10:40] = np.nan
+    got = Surroundings.of(samples, 5, (100.0, 100.0), np.array([0.5])).received[0]
+    assert np.isfinite(got).all()
+    assert got.min() >= 100.0 - 1e-3
+    assert got.max() <= 200.0 + 1e-3
+    # the mean's standard deviation is 1 km, two nodes here
+    np.testing.assert_allclose(got[:, :15], 100.0, rtol=1e-4)
+    np.testing.assert_allclose(got[:, 35:], 200.0, rtol=1e-4)
+    np.testing.assert_allclose(got[35, 24:26].mean(), 150.0, rtol=1e-5)
+    # half a node beyond the border of light, a quarter of a deviation: 100 + 100 F(0.25)
+    assert got[35, 25] == pytest.approx(100.0 + 100.0 * 0.5987, abs=1.0)
+
+
+def test_surroundings_reach_as_far_along_rows_as_along_columns():
+    # cells twice as wide as high: the mean takes in half as many columns as rows
+    samples = samples_of(0.0, 0.0, (41, 41))
+    samples[0, 20, 20] = 1.0
+    got = Surroundings.of(samples, 5, (100.0, 50.0), np.array([0.0])).received[0]
+    assert got[24, 20] == pytest.approx(got[20, 22], rel=0.05)
+    assert got[24, 20] == pytest.approx(got[20, 20] * np.exp(-0.5), rel=0.05)

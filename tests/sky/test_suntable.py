@@ -155,7 +155,7 @@ def test_mixed_is_linear_and_latitudes_a_degree_apart_suffice():
     )
     np.testing.assert_array_equal(south.mixed(north, 0.0).direct, south.direct)
     np.testing.assert_array_equal(half.heights, HEIGHTS)
-    # linear over one degree errs by (0.0175 rad)^2 / 8 = 3.8e-5 of a sine: Taylor
+    # a sine, linear over one degree, errs by (0.0175 rad)^2 / 8 = 3.8e-5: Taylor
     np.testing.assert_allclose(half.level, middle.level, rtol=5e-5)
 
 
@@ -168,20 +168,31 @@ def test_horizon_knots_are_equal_steps_of_the_sine():
 
 
 @pytest.mark.parametrize(
-    ("lowest", "highest", "want"),
+    ("lowest", "highest"),
     [
-        (120.0, 130.0, (0.0, 150.0)),
-        (0.0, 0.0, (0.0, 150.0)),
-        (150.0, 150.0, (150.0, 300.0)),
-        (-430.0, 20.0, (-500.0, -350.0, -200.0, -100.0, 0.0, 150.0)),
-        (-900.0, -800.0, (-500.0, -350.0)),
-        (8000.0, 8848.0, (7500.0, 9000.0)),
-        (9000.0, 9000.0, (7500.0, 9000.0)),
-        (9500.0, 9900.0, (7500.0, 9000.0)),
+        (120.0, 130.0),
+        (0.0, 0.0),
+        (HEIGHT_KNOTS[3], HEIGHT_KNOTS[3]),
+        (HEIGHT_KNOTS[2], HEIGHT_KNOTS[5]),
+        (-430.0, 20.0),
+        (HEIGHT_KNOTS[0] - 400.0, HEIGHT_KNOTS[0] - 300.0),
+        (8000.0, 8848.0),
+        (HEIGHT_KNOTS[-1], HEIGHT_KNOTS[-1]),
+        (HEIGHT_KNOTS[-1] + 10.0, HEIGHT_KNOTS[-1] + 20.0),
+        (-1000.0, 10_000.0),
     ],
 )
-def test_height_knots_bracket_the_ground(lowest, highest, want):
-    assert tuple(height_knots(lowest, highest)) == want
+def test_height_knots_bracket_the_ground_and_no_more(lowest, highest):
+    knots = list(height_knots(lowest, highest))
+    first = HEIGHT_KNOTS.index(knots[0])
+    assert knots == list(HEIGHT_KNOTS[first : first + len(knots)])
+    assert len(knots) >= 2
+    inside = np.clip([lowest, highest], HEIGHT_KNOTS[0], HEIGHT_KNOTS[-1])
+    assert knots[0] <= inside[0]
+    assert knots[-1] >= inside[1]
+    assert len(knots) == 2 or (knots[1] > inside[0] and knots[-2] < inside[1])
+    if len(knots) == 2 and lowest == highest:
+        assert knots[0] <= inside[0] <= knots[1]
 
 
 def test_height_knots_rise_and_the_whole_range_takes_all():
