@@ -129,3 +129,51 @@ class Elevation:
         metres[~np.isfinite(metres)] = np.nan
         a, b, c, d, e, f = (float(v) for v in tuple(transform)[:6])
         return cls(np.ascontiguousarray(metres, np.float32), (a, b, c, d, e, f), known_crs)
+
+    @classmethod
+    def from_xarray(cls, data: Any, crs: Any, *, vertical_unit: str = "metre") -> Elevation:
+        """Build an elevation model from a labelled array with coordinates.
+
+        Parameters
+        ----------
+        data : xarray.DataArray, two dimensions, rows first
+            Heights; its two dimensions carry evenly spaced coordinates of cell centres: the
+            CRS's y along the first, its x along the second, rising or falling.
+        crs : anything that ``pyproj.CRS.from_user_input`` takes
+            The CRS of the coordinates.
+        vertical_unit : {'metre', 'foot', 'US survey foot'}
+            Unit of the heights given.
+
+        Returns
+        -------
+        Elevation
+
+        Raises
+        ------
+        InputError
+            Not two dimensions, or coordinates missing or not evenly spaced; else as
+            `from_array`.
+        SettingError
+            An unknown vertical unit.
+
+        Examples
+        --------
+        >>> import numpy as np, xarray as xr
+        >>> axes = {"y": 5.2e6 - 30.0 * np.arange(3), "x": 5e5 + 30.0 * np.arange(4)}
+        >>> heights = xr.DataArray(np.zeros((3, 4)), axes, ("y", "x"))
+        >>> Elevation.from_xarray(heights, "EPSG:32632").transform
+        (30.0, 0.0, 499985.0, 0.0, -30.0, 5200015.0)
+        """
+        if len(data.dims) != 2:
+            raise InputError(f"an elevation model has two dimensions, not {len(data.dims)}")
+        spacing = []
+        for name in data.dims:
+            places = np.asarray(data.coords[name].values if name in data.coords else [], float)
+            steps = np.diff(places)
+            if steps.size == 0 or not np.ptp(steps) < 1e-3 * abs(steps[0]):
+                raise InputError(f"dimension '{name}' has no evenly spaced coordinates")
+            step = (places[-1] - places[0]) / steps.size
+            spacing.append((float(step), float(places[0] - step / 2.0)))
+        (down, top), (across, left) = spacing
+        transform = (across, 0.0, left, 0.0, down, top)
+        return cls.from_array(data.values, transform, crs, vertical_unit=vertical_unit)

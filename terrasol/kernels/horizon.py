@@ -267,6 +267,20 @@ def far_field(
             line, points[:kept], voids[:holes], first_query, every, skip, step, half_curve,
             datum, k, seen, place, bulge,
         )  # fmt: skip
+    _to_nodes(
+        seen, heights, far_end, along, across, length, breadth, drift, gap, origin,
+        first_query, first_node, every, height, away, across_void,
+    )  # fmt: skip
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _to_nodes(
+    seen, heights, far_end, along, across, length, breadth, drift, gap, origin,
+    first_query, first_node, every, height, away, across_void,
+):  # fmt: skip
+    """From lines, which slant across the raster, to the nodes between them."""
+    lines = seen.shape[1]
+    count, nodes = height.shape
     for q in range(count):
         i = first_query + q * every
         row = far_end + min(max(i, 0), length - 1) * along
