@@ -214,7 +214,7 @@ def _sweep_zone(heights, ray, jacobian, refraction, datum, spans, layers) -> Non
     nodes, side = spans if major == 1 else spans[::-1]
     step = 1.0 / abs(ray[major])
     side_length = float(np.hypot(*jacobian[:, 1 - major]))
-    gap = float(np.clip(NODE_STEP * step / side_length, 1.0, NODE_STEP))
+    gap = int(np.clip(NODE_STEP * step / side_length + 1e-3, 1, NODE_STEP))
     # The line starts at its far end, where the ray points, and comes towards the eye.
     if ray[major] > 0:
         far_end, along = (length - 1) * stride, -stride

@@ -150,7 +150,9 @@ def _add_azimuth(at, toward, up, layer, mix, first, stride, dark, table, out, fi
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def look_up(horizon, normal, heights, datum, directions, tilt, knot_height, table, dark, out):
+def look_up(
+    horizon, normal, heights, datum, directions, tilt, knot_height, table, dark, northward, out
+):
     """Direct light on each cell: n . T(horizon), summed over the azimuths.
 
     The horizon used is the highest of the terrain, the slope's own plane and the level.
@@ -166,6 +168,7 @@ def look_up(horizon, normal, heights, datum, directions, tilt, knot_height, tabl
     knot_height : (k,) float64, rising
     table : (k * azimuths * knots, 2 * LANES) float32
     dark : (azimuths,) int64, the first horizon knot with nothing above it, < knots
+    northward : (LANES,) float32, relative change of each sum a radian north, by the air alone
     out : (rows * columns, LANES) float32; 0 where void
     """
     azimuths, rows, columns = horizon.shape
@@ -205,3 +208,7 @@ def look_up(horizon, normal, heights, datum, directions, tilt, knot_height, tabl
                     at[run], toward[run], up[run], layer[run], mix[run], a * knots, stride,
                     dark[a], table, out, r * columns + left,
                 )  # fmt: skip
+        for c in range(columns):
+            sums = out[r * columns + c]
+            for p in range(LANES):
+                sums[p] += sums[p] * shift[c] * northward[p]

@@ -75,26 +75,30 @@ def near_field(heights, pad, first_row, row_step, shift, weight, out):
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def _line_heights(heights, far_end, along, across, breadth, start, gap, drift, lines):
+def _line_heights(heights, far_end, along, across, breadth, start, gap, drift, first, lines):
     """Heights where straight lines cross each row (or column), -infinite off the raster.
 
     The raster reaches half a cell beyond the outer centres. Lines are taken side by side, row
-    after row, so that neighbours share what a cache and a page of memory hold.
+    after row, so that neighbours share what a cache and a page of memory hold, and the
+    weights of a row.
     """
     group, length = lines.shape
     for i in range(length):
+        y = start + drift * (first + i)
+        left = int(np.floor(y))
+        f = np.float32(y - left)
+        row = far_end + (first + i) * along
         for g in range(group):
-            y = start + g * gap + drift * i
-            lines[g, i] = -np.inf
-            if y > -0.5 and y < breadth - 0.5:
-                y = min(max(y, 0.0), breadth - 1.0)
-                j = int(y)
-                f = np.float32(y - j)
-                at = far_end + i * along + j * across
-                if f < np.float32(1e-6):
-                    lines[g, i] = heights[at]
-                elif j + 1 < breadth:
-                    lines[g, i] = heights[at] + f * (heights[at + across] - heights[at])
+            j = left + g * gap
+            if 0 <= j < breadth - 1:
+                z = heights[row + j * across]
+                if f > np.float32(1e-6):
+                    z += f * (heights[row + (j + 1) * across] - z)
+                lines[g, i] = z
+            elif (j == -1 and f > np.float32(0.5)) or (j == breadth - 1 and f < np.float32(0.5)):
+                lines[g, i] = heights[row + max(j, 0) * across]
+            else:
+                lines[g, i] = -np.inf
 
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=FAST)
@@ -179,7 +183,9 @@ def _walk_line(
     hint = 0
     point = 0
     hole = 0
-    for query in range(seen.shape[0]):
+    first = max(-((first_query + every) // every), 0)
+    beyond = min((line.size + every - first_query) // every + 1, seen.shape[0])
+    for query in range(first, beyond):
         i = first_query + query * every
         while point < points.size and points[point] <= i - skip:
             x = points[point] * step
@@ -226,7 +232,7 @@ def far_field(
     Each line is walked once from its far end. The upper convex hull of
     g(x) = z(x) - x^2 / (2 R') is kept on a stack; the tangent from the eye to it is the
     horizon (after Dozier, Bruno and Downey 1981), curvature and refraction included.
-    Lines stand `gap` cells apart; between them, and between queries, the reader interpolates.
+    Lines stand `gap` whole cells apart; between them, and between queries, the reader interpolates.
 
     heights : (cells,) float32, the whole raster; NaN void
     far_end : int, index of the cell at the far end of the line with across = 0
@@ -257,20 +263,35 @@ def far_field(
     place = np.empty(used + 1, np.float64)
     bulge = np.empty(used + 1, np.float64)
     seen = np.zeros((count, lines, 3), np.float32)
-    for k in range(lines):
-        if k % GROUP == 0:
-            start = origin + k * gap
-            _line_heights(heights, far_end, along, across, breadth, start, gap, drift, together)
-        line = together[k % GROUP]
-        kept, holes = _hull_candidates(line, skip - 1, step * step * half_curve, low, points, voids)
-        _walk_line(
-            line, points[:kept], voids[:holes], first_query, every, skip, step, half_curve,
-            datum, k, seen, place, bulge,
-        )  # fmt: skip
+    for k in range(0, lines, GROUP):
+        start = origin + k * gap
+        first, last = _on_raster(start, start + (GROUP - 1) * gap, drift, breadth, used)
+        if last <= first:
+            continue
+        group = together[:, : last - first]
+        _line_heights(heights, far_end, along, across, breadth, start, gap, drift, first, group)
+        for g in range(min(GROUP, lines - k)):
+            kept, holes = _hull_candidates(
+                group[g], skip - 1, step * step * half_curve, low[: last - first], points, voids
+            )
+            _walk_line(
+                group[g], points[:kept], voids[:holes], first_query - first, every, skip, step,
+                half_curve, datum, k + g, seen, place, bulge,
+            )  # fmt: skip
     _to_nodes(
         seen, heights, far_end, along, across, length, breadth, drift, gap, origin,
         first_query, first_node, every, height, away, across_void,
     )  # fmt: skip
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _on_raster(left, right, drift, breadth, length):
+    """First and last step at which some line between two sides may be on the raster."""
+    if abs(drift) < 1e-9:
+        return (0, length) if right > -1.0 and left < breadth else (0, 0)
+    enter = (-1.0 - right) / drift if drift > 0 else (breadth - left) / drift
+    leave = (breadth - left) / drift if drift > 0 else (-1.0 - right) / drift
+    return max(int(np.floor(enter)), 0), min(int(np.ceil(leave)) + 1, length)
 
 
 @njit(cache=True, nogil=True, error_model="numpy")

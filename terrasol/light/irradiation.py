@@ -335,8 +335,6 @@ class Strip:
         mixed = tables.at(middle)
         table = mixed.table
         tilt = np.radians(np.array(self.latitude) - (mixed.latitude, 0.0, 0.0))
-        rows, columns = np.indices(self.heights.shape)
-        moved = (tilt[0] + tilt[1] * rows + tilt[2] * columns).astype(np.float32).reshape(-1, 1)
         sums = np.empty((table.direct.shape[0], self.heights.size, LANES), np.float32)
         directions = azimuth_directions(self.horizon.shape[0])
         for group, direct in enumerate(table.direct):
@@ -350,9 +348,9 @@ class Strip:
                 table.heights,
                 direct.reshape(-1, 2 * LANES),
                 mixed.dark,
+                mixed.northward[group].astype(np.float32),
                 sums[group],
             )
-            sums[group] *= 1.0 + moved * mixed.northward[group].astype(np.float32)
         return table, sums
 
 

@@ -249,6 +249,40 @@ def test_a_void_sea_hides_no_sun(metric_ground, coast, seaward):
     assert found["horizon"].values[away][:, beach].max() < 0.01
 
 
+@pytest.mark.parametrize("shore", [60, 61, 62, 63])
+@pytest.mark.parametrize("turns", [0, 1, 2, 3])
+def test_a_ridge_across_a_void_is_seen_from_its_very_shore(metric_ground, shore, turns):
+    z = np.full((130, 130), 5.0)
+    z[:20] = 300.0
+    z[30:shore] = np.nan
+    found = terrasol.terrain(
+        metric_ground(np.rot90(z, turns), 20.0, latitude=0.0), azimuths=16, horizon=True
+    )
+    towards = found["horizon"].sel(azimuth=(-90.0 * turns) % 360.0).values
+    seen = np.rot90(towards, -turns)[shore : shore + 20]
+    distance = 20.0 * (np.arange(shore, shore + 20) - 19.0)
+    want = np.broadcast_to((295.0 / distance - distance * half_curve(0.13))[:, None], seen.shape)
+    np.testing.assert_allclose(np.tan(np.radians(seen)), want, rtol=2e-3)
+
+
+@pytest.mark.parametrize("coast", [100, 101, 102, 103])
+@pytest.mark.parametrize("turns", [0, 1, 2, 3])
+def test_a_void_beside_takes_no_ridge_away(metric_ground, coast, turns):
+    # level land with a ridge across its end, and a void along its side: right beside the void
+    # the ridge is seen as anywhere else
+    z = np.full((130, 130), 5.0)
+    z[:20] = 300.0
+    z[:, coast:] = np.nan
+    found = terrasol.terrain(
+        metric_ground(np.rot90(z, turns), 20.0, latitude=0.0), azimuths=16, horizon=True
+    )
+    towards = found["horizon"].sel(azimuth=(-90.0 * turns) % 360.0).values
+    seen = np.rot90(towards, -turns)[60:100, :coast]
+    distance = 20.0 * (np.arange(60, 100) - 19.0)
+    want = np.broadcast_to((295.0 / distance - distance * half_curve(0.13))[:, None], seen.shape)
+    np.testing.assert_allclose(np.tan(np.radians(seen)), want, rtol=2e-3)
+
+
 @pytest.mark.parametrize("refraction", [0.0, 0.13, 0.9])
 def test_refraction_lifts_a_far_ridge(metric_ground, refraction):
     z = np.zeros((6, 402))

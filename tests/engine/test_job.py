@@ -12,7 +12,7 @@ from terrasol.engine.datasets import ArraySink
 from terrasol.engine.job import Plan, Totals, plan_irradiation, plan_terrain
 from terrasol.errors import SettingError
 from terrasol.files.layers import Layer
-from terrasol.light.irradiation import LightSettings
+from terrasol.light.irradiation import LightSettings, Surroundings
 from terrasol.sky.period import parse_period
 
 AIR = terrasol.Air.ineichen(3.0)
@@ -286,6 +286,28 @@ def test_level_open_ground_is_what_the_summary_says(metric_ground):
     assert 6000.0 < level < 9000.0
     _, kilowatt_hours = run(plan_irradiation(flat, settings("2025", unit="kW h m-2")))
     assert kilowatt_hours.numbers["level_ground"] == pytest.approx(level / 3.6, abs=0.01)
+
+
+def test_surroundings_are_sampled_from_what_cells_get(wide, monkeypatch):
+    # each sample is what that very cell gets over black ground, and the rest of its sky view
+    kept = {}
+    spread = Surroundings.of.__func__
+
+    def of(cls, samples, stride, *more):
+        kept.update(samples=samples.copy(), stride=stride)
+        return spread(cls, samples, stride, *more)
+
+    monkeypatch.setattr(Surroundings, "of", classmethod(of))
+    run(plan_irradiation(wide, settings("2025-04/2025-05")))
+    black, _ = run(plan_irradiation(wide, settings("2025-04/2025-05", albedo=(0.0,) * 12)))
+    samples, stride = kept["samples"], kept["stride"]
+    assert stride > 2
+    every = slice(stride // 2, None, stride)
+    want = np.concatenate([black["irradiation_months"], 1.0 - black["sky_view"]])[:, every, every]
+    got = samples[:, : want.shape[1], : want.shape[2]]
+    np.testing.assert_allclose(got, want, rtol=2e-6, atol=1e-7)
+    assert np.isnan(samples[:, want.shape[1] :]).all()
+    assert np.isnan(samples[:, :, want.shape[2] :]).all()
 
 
 @pytest.mark.parametrize("shape", [(2, 40), (4, 4), (40, 3), (5, 40), (9, 9)])

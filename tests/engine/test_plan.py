@@ -7,7 +7,7 @@ import numpy as np
 import pytest
 
 from terrasol.engine.plan import BLOCK, blocks_of, carry_out, check_threads, default_threads
-from terrasol.errors import SettingError
+from terrasol.errors import SettingError, UnfinishedError
 from terrasol.ground.horizon import NODE_STEP
 
 
@@ -60,25 +60,34 @@ class DeliberateError(Exception):
     """Raised by a task on purpose."""
 
 
-def test_first_failure_is_raised_and_stops_the_rest():
+@pytest.mark.parametrize("ahead", [2, 50])
+def test_first_failure_is_raised_and_stops_the_rest(ahead):
     started = []
 
     def task(i):
         started.append(i)
         if i == 3:
             raise DeliberateError("third")
-        time.sleep(0.002)
+        time.sleep(0.005)
         return i
 
     results = []
-    stream = carry_out([lambda i=i: task(i) for i in range(200)], 2)
+    stream = carry_out([lambda i=i: task(i) for i in range(200)], 2, ahead)
     with pytest.raises(DeliberateError, match="third"):
         results.extend(stream)
     assert 3 not in results
-    assert len(started) < 20
+    assert len(started) < 50  # though a hundred may already have been handed over
     count = len(started)
     time.sleep(0.02)
     assert len(started) == count  # nothing runs on behind the caller's back
+
+
+def test_want_of_memory_is_told_as_unfinished_work():
+    def greedy():
+        raise MemoryError
+
+    with pytest.raises(UnfinishedError, match="memory"):
+        list(carry_out([greedy], 1))
 
 
 def test_a_consumer_that_leaves_stops_the_rest():

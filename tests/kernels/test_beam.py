@@ -134,18 +134,18 @@ def made_up(columns, seed=3, voids=0, steep=0.6):
     return *ground, 700.0, unit(azimuths).astype(np.float32), knot_height, table, dark
 
 
-def looked_up(horizon, normal, heights, datum, directions, knot_height, table, dark, tilt):
+def looked_up(horizon, normal, heights, datum, directions, knot_height, table, dark, tilt, air=0):
     """Call the kernel."""
     out = np.full((heights.size, LANES), -1.0, np.float32)
     flat = np.ascontiguousarray(table.reshape(-1, 2 * LANES), np.float32)
-    tilt = np.array(tilt, float)
     look_up(
-        horizon, normal, heights, datum, directions, tilt, knot_height, flat, dark, out
+        horizon, normal, heights, datum, directions, np.array(tilt, float), knot_height, flat,
+        dark, np.full(LANES, air, np.float32), out,
     )  # fmt: skip
     return out.reshape(*heights.shape, LANES)
 
 
-def plainly(horizon, normal, heights, datum, directions, knot_height, table, dark, tilt):
+def plainly(horizon, normal, heights, datum, directions, knot_height, table, dark, tilt, air=0):
     """The same in float64, cell by cell and azimuth by azimuth."""
     rows, columns = heights.shape
     out = np.zeros((rows, columns, LANES))
@@ -175,6 +175,7 @@ def plainly(horizon, normal, heights, datum, directions, knot_height, table, dar
             rows_of_knot = (1.0 - m) * table[low, a] + m * table[low + 1, a]
             level, upright = (1.0 - w) * rows_of_knot[k] + w * rows_of_knot[k + 1]
             out[r, c] += toward * level + up * upright
+        out[r, c] *= 1.0 + turn * air
     return out
 
 
@@ -182,7 +183,7 @@ def plainly(horizon, normal, heights, datum, directions, knot_height, table, dar
 @pytest.mark.parametrize("columns", [5, RUN, RUN + 13])
 def test_look_up_is_linear_between_knots(columns, tilt):
     case = made_up(columns, seed=columns)
-    got, want = looked_up(*case, tilt), plainly(*case, tilt)
+    got, want = looked_up(*case, tilt, 30.0), plainly(*case, tilt, 30.0)
     # float32 at the edge of a knot decides which side of `dark` a cell falls on; the seeds
     # keep clear of it
     np.testing.assert_allclose(got, want, rtol=2e-5, atol=2e-5)

@@ -9,7 +9,6 @@ import pytest
 
 from terrasol.kernels.horizon import (
     _hull_candidates,
-    _line_heights,
     far_field,
     merge_far,
     near_field,
@@ -51,7 +50,7 @@ def sweep_line(line, step, half_curve, skip=SKIP, datum=0.0):
     void = np.zeros(height.shape, np.uint8)
     far_field(
         raster.reshape(-1), 0, 1, line.size, line.size, 3, 0.0, step, half_curve,
-        skip, 1.0, 0, 0, 1, datum, height, away, void,
+        skip, 1, 0, 0, 1, datum, height, away, void,
     )  # fmt: skip
     own = line.astype(np.float64) - datum
     tangent = (height[:, 1].astype(np.float64) - own) / away[:, 1] - away[:, 1] * half_curve
@@ -157,26 +156,34 @@ def test_voids_never_sift_their_neighbours():
 
 
 def test_slanting_lines_mix_the_two_cells_they_pass():
+    # a ridge of many heights across the lines, which cross it half-way between two cells
     dice = np.random.default_rng(7)
-    z = dice.normal(0.0, 10.0, (9, 12)).astype(np.float32)
-    z[3, 5] = np.nan
-    lines = np.empty((16, 9), np.float32)
-    # towards higher rows, side by side over the columns; some start beside the raster
-    _line_heights(z.reshape(-1), 0, 12, 1, 12, -3.25, 1.5, 0.4, lines)
+    z = np.zeros((80, 60), np.float32)
+    z[11] = dice.uniform(100.0, 200.0, 60)
+    z[11, 40] = np.nan
+    height = np.zeros((20, 15), np.float32)
+    away, void = np.zeros_like(height), np.zeros(height.shape, np.uint8)
+    far_field(
+        z.reshape(-1), 0, 60, 1, 80, 60, 0.5, 10.0, 0.0, SKIP, 1, 0, 0, 4, 0.0,
+        height, away, void,
+    )  # fmt: skip
     met = 0
-    for g, i in np.ndindex(lines.shape):
-        y = -3.25 + 1.5 * g + 0.4 * i
-        if y < -1.5 or y > 11 + 1.5:  # more than a gap beside the raster
-            assert lines[g, i] == -np.inf
-        elif 0.0 <= y <= 11.0:
-            j, part = int(y), y - int(y)
-            want = (1 - part) * z[i, j] + (part * z[i, j + 1] if part > 1e-6 else 0.0)
-            np.testing.assert_allclose(lines[g, i], want, rtol=1e-5, atol=1e-5)
-            met += 1
-    assert met > 60
+    for q, n in np.ndindex(20, 15):
+        place = 4 * n - 0.5 * (4 * q - 11)
+        if 4 * q < 11 + SKIP or not 1.0 < place < 58.0:
+            continue
+        want = z[11, int(place) : int(place) + 2].mean()
+        if np.isnan(want):
+            assert height[q, n] == 0.0  # level ground; a void hides nothing
+            assert void[q, n] == 1
+        else:
+            assert height[q, n] == pytest.approx(want, rel=1e-6)
+            assert void[q, n] == 0
+        met += 1
+    assert met > 80
 
 
-@pytest.mark.parametrize("gap", [1.0, 2.5])
+@pytest.mark.parametrize("gap", [1, 3])
 def test_slanting_sweep_sees_along_its_own_direction(gap):
     # lines that drift by 0.6 cells a step towards the eye, and a ridge across them
     step, rows, columns = 12.0, 120, 90
@@ -207,7 +214,7 @@ def test_diagonal_sweep_is_exact_on_the_cells_it_meets():
     height = np.zeros((70, 70), np.float32)
     away, void = np.zeros_like(height), np.zeros(height.shape, np.uint8)
     far_field(
-        z.reshape(-1), 0, 70, 1, 70, 70, 1.0, step, HALF_CURVE, SKIP, 1.0, 0, 0, 1, 0.0,
+        z.reshape(-1), 0, 70, 1, 70, 70, 1.0, step, HALF_CURVE, SKIP, 1, 0, 0, 1, 0.0,
         height, away, void,
     )  # fmt: skip
     for row, column in [(69, 69), (60, 45), (50, 50), (69, 40), (45, 69)]:

@@ -23,9 +23,9 @@ HEIGHTS = np.array([0.0, 1000.0])
 MODELS = ("perez", "hay-davies", "isotropic")
 
 
-def spring(latitude=46.0, diffuse="perez", period="2025-03/2025-05", **more):
+def spring(latitude=46.0, diffuse="perez", period="2025-03/2025-05", step=600.0, **more):
     """A table of three months in ten-minute steps, 16 azimuths, and the path it comes from."""
-    path = sun_path(parse_period(period), 9.0, 600.0)
+    path = sun_path(parse_period(period), 9.0, step)
     return sun_table(path, latitude, HEIGHTS, AIR, diffuse, 16, **more), path
 
 
@@ -157,6 +157,28 @@ def test_mixed_is_linear_and_latitudes_a_degree_apart_suffice():
     np.testing.assert_array_equal(half.heights, HEIGHTS)
     # a sine, linear over one degree, errs by (0.0175 rad)^2 / 8 = 3.8e-5: Taylor
     np.testing.assert_allclose(half.level, middle.level, rtol=5e-5)
+
+
+def test_northward_is_the_air_that_a_tilt_cannot_give():
+    # Level ground a twentieth of a degree further north, from the tables a degree apart: its
+    # tilt, and what `northward` adds; against the table made for that very latitude.
+    tables = [spring(latitude, step=60.0)[0] for latitude in (46.0, 46.5, 46.55, 47.0)]
+    south, middle, moved, north = tables
+    shift = np.radians(0.05)
+    air = middle.northward(south, north, 1.0)
+    assert air.shape == (1, LANES)
+    assert (air[0, 4:] == 0.0).all()  # lanes without light
+    level, want = (t.direct[0, 0, :, 0, 1].sum(axis=0)[:3] for t in (middle, moved))
+    cosine = np.cos(2.0 * np.pi * np.arange(16) / 16)
+    tilt = (middle.direct[0, 0, :, 0, 0] * cosine[:, None]).sum(axis=0)[:3]
+    tilted = level + shift * tilt
+    np.testing.assert_allclose(tilted + shift * air[0, :3] * level, want, rtol=1e-5)
+    assert (np.abs(tilted / want - 1.0) > 2e-5).all()
+
+
+def test_northward_of_the_polar_night_is_nothing():
+    tables = [spring(latitude, period="2025-12")[0] for latitude in (79.0, 79.5, 80.0)]
+    assert (tables[1].northward(tables[0], tables[2], 1.0) == 0.0).all()
 
 
 def test_horizon_knots_are_equal_steps_of_the_sine():
