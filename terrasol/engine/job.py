@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import time
-import warnings
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass, field
 from functools import partial
@@ -28,6 +27,7 @@ from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame, make_frame
 from terrasol.ground.horizon import NODE_STEP, FarHorizon, sweep
 from terrasol.ground.surface import slope_and_aspect
+from terrasol.kernels.rounding import tally
 from terrasol.light.irradiation import (
     UNITS,
     LightSettings,
@@ -444,20 +444,17 @@ class Totals:
             if name in ("aspect", "horizon", "status"):
                 continue
             for band, plane in enumerate(values):
-                with warnings.catch_warnings():
-                    warnings.simplefilter("ignore", RuntimeWarning)  # an all-void block
-                    low, high = float(np.nanmin(plane)), float(np.nanmax(plane))
-                if np.isnan(low):
-                    continue
-                known = np.isfinite(plane)
-                count, total = float(known.sum()), float(np.nansum(plane, dtype=np.float64))
-                old = self.bands.setdefault((name, band), [0.0, 0.0, np.inf, -np.inf])
-                self.bands[name, band] = [
-                    old[0] + count,
-                    old[1] + total,
-                    min(old[2], low),
-                    max(old[3], high),
-                ]
+                found = np.empty(4)
+                tally(np.ascontiguousarray(plane, np.float32).reshape(-1), found)
+                count, total, low, high = found.tolist()
+                if count:
+                    old = self.bands.setdefault((name, band), [0.0, 0.0, np.inf, -np.inf])
+                    self.bands[name, band] = [
+                        old[0] + count,
+                        old[1] + total,
+                        min(old[2], low),
+                        max(old[3], high),
+                    ]
 
     def means(self, plan: Plan) -> dict[str, Any]:
         """Mean, least and greatest of every band, by layer."""

@@ -26,6 +26,7 @@ from terrasol.errors import OutputError
 from terrasol.files.delivery import Delivery
 from terrasol.files.layers import Layer
 from terrasol.ground.elevation import Affine6
+from terrasol.kernels.rounding import round_off
 
 TILE: Final = 256
 """Cells along the side of a file's tile: as large as a block, so none is written twice."""
@@ -282,10 +283,9 @@ def _rounded(values: NDArray[Any], layer: Layer) -> NDArray[Any]:
     """Values at the layer's resolution, void as the no-data value."""
     if not layer.dtype.startswith("float"):
         return np.asarray(values, layer.dtype)
-    out = np.multiply(values, 1.0 / layer.resolution, dtype=np.float32)
-    np.rint(out, out=out)
-    out *= np.float32(layer.resolution)
-    np.copyto(out, np.float32(VOID), where=np.isnan(out))
+    plain = np.ascontiguousarray(values, np.float32)
+    out = np.empty_like(plain)
+    round_off(plain.reshape(-1), layer.resolution, VOID, out.reshape(-1))
     return out
 
 

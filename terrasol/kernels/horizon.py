@@ -135,29 +135,37 @@ def _hull_candidates(line, reach, bend, low, points, voids):
     return count, holes
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@njit(cache=True, nogil=True, error_model="numpy", inline="always")
 def _tangent(place, bulge, top, hint, eye, own):
-    """Index of the hull point that bounds the view from `eye` at bulged height `own`."""
+    """Index of the hull point that bounds the view from `eye` at bulged height `own`.
+
+    Slopes are compared crosswise, which spares the divisions.
+    """
     k = min(hint, top)
-    best = (bulge[k] - own) / (eye - place[k])
+    rise = bulge[k] - own
+    away = eye - place[k]
     moved = False
     while k > 0:
-        other = (bulge[k - 1] - own) / (eye - place[k - 1])
-        if other < best:
+        other = bulge[k - 1] - own
+        further = eye - place[k - 1]
+        if other * away < rise * further:
             break
-        best = other
+        rise = other
+        away = further
         k -= 1
         moved = True
     while not moved and k < top:
-        other = (bulge[k + 1] - own) / (eye - place[k + 1])
-        if other <= best:
+        other = bulge[k + 1] - own
+        nearer = eye - place[k + 1]
+        if other * away <= rise * nearer:
             break
-        best = other
+        rise = other
+        away = nearer
         k += 1
     return k
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@njit(cache=True, nogil=True, error_model="numpy", inline="always")
 def _push(place, bulge, top, x, g):
     """Put a point on the upper hull's stack; return the stack's new top."""
     while top > 0 and (bulge[top] - bulge[top - 1]) * (x - place[top]) <= (g - bulge[top]) * (
@@ -172,9 +180,9 @@ def _push(place, bulge, top, x, g):
 
 @njit(cache=True, nogil=True, error_model="numpy")
 def _walk_line(
-    line, points, voids, first_query, every, skip, step, half_curve, datum, k, seen, place, bulge
+    line, points, voids, first_query, every, skip, step, half_curve, datum, seen, place, bulge
 ):
-    """Walk line k from its far end; at each query leave what bounds the view.
+    """Walk a line from its far end; at each query leave what bounds the view.
 
     That is a point's height and distance, and whether a void lies before it. Where nothing
     lies beyond the near field, it is a point where that ends, well below the eye.
@@ -194,20 +202,24 @@ def _walk_line(
             point += 1
         while hole < voids.size and voids[hole] < i:
             hole += 1
-        own = _height_near(line, i, every)
-        seen[query, k, 0] = own - datum - NOTHING * skip * step
-        seen[query, k, 1] = skip * step
-        seen[query, k, 2] = 1.0 if hole > 0 else 0.0
+        own = np.nan
+        if 0 <= i < line.size and line[i] > -np.inf:
+            own = np.float64(line[i])
+        else:
+            own = _height_near(line, i, every)
+        seen[query, 0] = own - datum - NOTHING * skip * step
+        seen[query, 1] = skip * step
+        seen[query, 2] = 1.0 if hole > 0 else 0.0
         if top >= 0 and own == own:
             hint = max(min(hint, top), 0)
             eye = i * step
             sight = own - eye * eye * half_curve
             hint = _tangent(place, bulge, top, hint, eye, sight)
             height = bulge[hint] + place[hint] * place[hint] * half_curve
-            seen[query, k, 0] = height - datum
-            seen[query, k, 1] = eye - place[hint]
+            seen[query, 0] = height - datum
+            seen[query, 1] = eye - place[hint]
             before = hole > 0 and voids[hole - 1] * step > place[hint]
-            seen[query, k, 2] = 1.0 if before else 0.0
+            seen[query, 2] = 1.0 if before else 0.0
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
@@ -263,6 +275,7 @@ def far_field(
     place = np.empty(used + 1, np.float64)
     bulge = np.empty(used + 1, np.float64)
     seen = np.zeros((count, lines, 3), np.float32)
+    eyes = np.zeros((GROUP, count, 3), np.float32)
     for k in range(0, lines, GROUP):
         start = origin + k * gap
         first, last = _on_raster(start, start + (GROUP - 1) * gap, drift, breadth, used)
@@ -276,8 +289,11 @@ def far_field(
             )
             _walk_line(
                 group[g], points[:kept], voids[:holes], first_query - first, every, skip, step,
-                half_curve, datum, k + g, seen, place, bulge,
+                half_curve, datum, eyes[g], place, bulge,
             )  # fmt: skip
+        for q in range(count):
+            for g in range(min(GROUP, lines - k)):
+                seen[q, k + g] = eyes[g, q]
     _to_nodes(
         seen, heights, far_end, along, across, length, breadth, drift, gap, origin,
         first_query, first_node, every, height, away, across_void,
