@@ -13,7 +13,7 @@ FAST = {"contract", "reassoc", "nsz", "arcp"}
 LANES = 16
 """Sums that ride in one pass; fixed so that the inner loop is a few vector registers."""
 
-RUN = 128
+RUN = 256
 """Cells worked on together, so that their sums and one azimuth's table stay in the
 innermost cache."""
 
@@ -114,7 +114,7 @@ def _add_from_above(whole, table):
                         table[a, j, s, p, k] += total
 
 
-@njit(cache=True, nogil=True, error_model="numpy", fastmath=FAST)
+@njit(cache=True, nogil=True, error_model="numpy", fastmath=FAST, inline="always")
 def _horizon_knots(rim, east, north, up, shift, sine, cosine, scale, toward, at):
     """Where the horizon of each cell of a row lies among the knots, and n . azimuth."""
     one = np.float32(1.0)
@@ -128,7 +128,7 @@ def _horizon_knots(rim, east, north, up, shift, sine, cosine, scale, toward, at)
         at[c] = t / np.sqrt(one + t * t) * scale
 
 
-@njit(cache=True, nogil=True, error_model="numpy", fastmath=FAST)
+@njit(cache=True, nogil=True, error_model="numpy", fastmath=FAST, inline="always")
 def _add_azimuth(at, toward, up, layer, mix, first, stride, dark, table, out, first_out):
     """Add one azimuth's light to a run of cells."""
     one = np.float32(1.0)

@@ -385,23 +385,26 @@ def merge_far(heights, pad, first_row, row_step, every, height, away, lift, half
     azimuths, rows, columns = out.shape
     curve = np.float32(half_curve)
     raised = np.float32(lift)
-    spread = columns + every
-    top = np.empty(spread, np.float32)
-    distance = np.empty(spread, np.float32)
+    nodes = height.shape[2]
+    node_top = np.empty(nodes, np.float32)
+    node_distance = np.empty(nodes, np.float32)
+    top = np.empty(nodes * every, np.float32)
+    distance = np.empty(nodes * every, np.float32)
+    part = np.arange(every).astype(np.float32) / np.float32(every)
     for a in range(azimuths):
         for r in range(rows):
             row = first_row + r * row_step
             n = row // every
             v = np.float32((row - n * every) / every)
-            for m in range((columns + every - 1) // every):
-                a0 = height[a, n, m] + v * (height[a, n + 1, m] - height[a, n, m])
-                a1 = height[a, n, m + 1] + v * (height[a, n + 1, m + 1] - height[a, n, m + 1])
-                b0 = away[a, n, m] + v * (away[a, n + 1, m] - away[a, n, m])
-                b1 = away[a, n, m + 1] + v * (away[a, n + 1, m + 1] - away[a, n, m + 1])
+            for m in range(nodes):
+                node_top[m] = height[a, n, m] + v * (height[a, n + 1, m] - height[a, n, m])
+                node_distance[m] = away[a, n, m] + v * (away[a, n + 1, m] - away[a, n, m])
+            for m in range(nodes - 1):
+                rise = node_top[m + 1] - node_top[m]
+                grow = node_distance[m + 1] - node_distance[m]
                 for s in range(every):
-                    u = np.float32(s / every)
-                    top[m * every + s] = a0 + u * (a1 - a0)
-                    distance[m * every + s] = b0 + u * (b1 - b0)
+                    top[m * every + s] = node_top[m] + part[s] * rise
+                    distance[m * every + s] = node_distance[m] + part[s] * grow
             own = heights[row + pad, pad : pad + columns]
             best = out[a, r]
             for c in range(columns):
