@@ -275,6 +275,7 @@ def far_field(
     place = np.empty(used + 1, np.float64)
     bulge = np.empty(used + 1, np.float64)
     seen = np.zeros((count, lines, 3), np.float32)
+    seen[:, :, 0] = np.nan
     eyes = np.zeros((GROUP, count, 3), np.float32)
     for k in range(0, lines, GROUP):
         start = origin + k * gap
@@ -350,6 +351,20 @@ def _to_nodes(
                 ) - _rim_height(heights, row, across, breadth, near)
                 if lift == lift:
                     height[q, n] += lift
+        _fill_unseen(height[q], away[q])
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _fill_unseen(height, away):
+    """Let a node in a void see what the node beside it sees, for the cells between them."""
+    for n in range(height.size):
+        if height[n] == UNSEEN:
+            if n + 1 < height.size and height[n + 1] > UNSEEN:
+                height[n] = height[n + 1]
+                away[n] = away[n + 1]
+            elif n > 0 and height[n - 1] > UNSEEN:
+                height[n] = height[n - 1]
+                away[n] = away[n - 1]
 
 
 @njit(cache=True, nogil=True, error_model="numpy")

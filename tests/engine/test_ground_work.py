@@ -231,6 +231,34 @@ def test_no_horizon_looking_down_and_out_of_the_raster(metric_ground, size, faci
     np.testing.assert_allclose(found["sky_view"].values, (1.0 + 0.75**0.5) / 2.0, atol=1e-4)
 
 
+@pytest.mark.parametrize("turns", [0, 1, 2, 3])
+@pytest.mark.parametrize("east", [500.0, -900.0])
+def test_a_ray_along_the_rim_sees_what_stands_on_it(turns, east):
+    # Beside the meridian of its projection, true north is turned by some thousandths of a
+    # degree: rays along the rim pass the outer cells' centres by some 10,000ths of a cell.
+    z = np.zeros((41, 41))
+    z[:, 40] = 100.0
+    crs = "+proj=tmerc +lat_0=46 +lon_0=9 +k=1 +datum=WGS84 +units=m"
+    ground = terrasol.Elevation.from_array(np.rot90(z, turns), (10, 0, east, 0, -10, 200.0), crs)
+    found = terrasol.terrain(ground, azimuths=8, horizon=True)
+    towards = found["horizon"].sel(azimuth=(90.0 - 90.0 * turns) % 360.0).values
+    seen = np.tan(np.radians(np.rot90(towards, -turns)))
+    want = 100.0 / (10.0 * (40.0 - np.arange(40)))
+    np.testing.assert_allclose(seen[:, :40], np.broadcast_to(want, (41, 40)), rtol=3e-3)
+
+
+@pytest.mark.parametrize("shape", [(67, 125), (79, 113), (113, 79), (125, 67), (83, 97)])
+@pytest.mark.parametrize("facing", [45.0, 135.0, 178.0, 225.0, 315.0])
+def test_no_horizon_looking_down_and_out_of_a_corner(metric_ground, shape, facing):
+    # diagonal lines leave the raster at its corners, the last of them alone in their group
+    north, east = np.mgrid[shape[0] - 1 : -1 : -1, : shape[1]] * 10.0
+    down = east * np.sin(np.radians(facing)) + north * np.cos(np.radians(facing))
+    z = 3000.0 - np.tan(np.radians(30.0)) * down
+    found = terrasol.terrain(metric_ground(z, 10.0, latitude=0.0), azimuths=8, horizon=True)
+    away = np.cos(np.radians(found["azimuth"].values - facing)) > 0.02
+    assert found["horizon"].values[away].max() < 0.01
+
+
 @pytest.mark.parametrize("coast", [100, 101, 102, 103])
 @pytest.mark.parametrize("seaward", [90.0, 180.0, 270.0])
 def test_a_void_sea_hides_no_sun(metric_ground, coast, seaward):
