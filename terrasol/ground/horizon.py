@@ -22,7 +22,7 @@ from terrasol.kernels.horizon import far_field, merge_far, near_field
 NODE_STEP: Final = 4
 """Cells between the lines and queries of the far field. Figures in docs/performance.md."""
 
-FAR_FROM: Final = 24
+FAR_FROM: Final = 20
 """Steps after which a point belongs to the far field."""
 
 NEAR_STEPS: Final = FAR_FROM + NODE_STEP

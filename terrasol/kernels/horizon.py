@@ -21,6 +21,10 @@ UNSEEN = -1e5
 GROUP = 16
 """Lines of the far field that are read side by side."""
 
+SPARE = 40
+"""Numbers left free between two lines, so that they do not fall on the same places of a
+cache."""
+
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=FAST)
 def near_field(heights, pad, first_row, row_step, shift, weight, out):
@@ -75,30 +79,34 @@ def near_field(heights, pad, first_row, row_step, shift, weight, out):
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def _line_heights(heights, far_end, along, across, breadth, start, gap, drift, first, lines):
+def _line_heights(
+    heights, far_end, along, across, breadth, start, gap, drift, first, length, apart, lines
+):
     """Heights where straight lines cross each row (or column), -infinite off the raster.
 
     The raster reaches half a cell beyond the outer centres. Lines are taken side by side, row
     after row, so that neighbours share what a cache and a page of memory hold, and the
-    weights of a row.
+    weights of a row. Line g begins at `apart` * g of `lines`.
     """
-    group, length = lines.shape
+    tiny = np.float32(1e-6)
     for i in range(length):
         y = start + drift * (first + i)
         left = int(np.floor(y))
         f = np.float32(y - left)
         row = far_end + (first + i) * along
-        for g in range(group):
+        inside = left >= 0 and left + (GROUP - 1) * gap < breadth - 1
+        for g in range(GROUP):
             j = left + g * gap
-            if 0 <= j < breadth - 1:
-                z = heights[row + j * across]
-                if f > np.float32(1e-6):
-                    z += f * (heights[row + (j + 1) * across] - z)
-                lines[g, i] = z
+            at = row + j * across
+            if inside or 0 <= j < breadth - 1:
+                z = heights[at]
+                if f > tiny:
+                    z += f * (heights[at + across] - z)
+                lines[g * apart + i] = z
             elif (j == -1 and f > np.float32(0.5)) or (j == breadth - 1 and f < np.float32(0.5)):
-                lines[g, i] = heights[row + max(j, 0) * across]
+                lines[g * apart + i] = heights[row + max(j, 0) * across]
             else:
-                lines[g, i] = -np.inf
+                lines[g * apart + i] = -np.inf
 
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=FAST)
@@ -268,7 +276,8 @@ def far_field(
     lines = int((highest - lowest) / gap) + 3
     origin = first_node + lowest
     used = min(length, last_query + 1)
-    together = np.empty((GROUP, used), np.float32)
+    apart = used + SPARE
+    together = np.empty(GROUP * apart, np.float32)
     low = np.empty(used, np.uint8)
     points = np.empty(used, np.int64)
     voids = np.empty(used, np.int64)
@@ -282,14 +291,17 @@ def far_field(
         first, last = _on_raster(start, start + (GROUP - 1) * gap, drift, breadth, used)
         if last <= first:
             continue
-        group = together[:, : last - first]
-        _line_heights(heights, far_end, along, across, breadth, start, gap, drift, first, group)
+        _line_heights(
+            heights, far_end, along, across, breadth, start, gap, drift, first, last - first,
+            apart, together,
+        )  # fmt: skip
         for g in range(min(GROUP, lines - k)):
+            line = together[g * apart : g * apart + last - first]
             kept, holes = _hull_candidates(
-                group[g], skip - 1, step * step * half_curve, low[: last - first], points, voids
+                line, skip - 1, step * step * half_curve, low[: last - first], points, voids
             )
             _walk_line(
-                group[g], points[:kept], voids[:holes], first_query - first, every, skip, step,
+                line, points[:kept], voids[:holes], first_query - first, every, skip, step,
                 half_curve, datum, eyes[g], place, bulge,
             )  # fmt: skip
         for q in range(count):

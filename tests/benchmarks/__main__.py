@@ -62,8 +62,8 @@ def terrasol(*words, cache=None):
     return seconds, peak, json.loads(done.stdout) if done.stdout.startswith("{") else {}
 
 
-def sweep_nanoseconds(heights):
-    """One core's time for all horizons [ns a cell and azimuth], far field and near field."""
+def sweep_nanoseconds(heights, repeats=3):
+    """One core's best time for all horizons [ns a cell and azimuth], far field and near field."""
     from terrasol import Elevation
     from terrasol.constants import REFRACTION_COEFFICIENT
     from terrasol.engine.ground_work import BlockGround, Ground
@@ -71,21 +71,25 @@ def sweep_nanoseconds(heights):
     from terrasol.ground.frame import make_frame
     from terrasol.ground.horizon import FarHorizon, sweep
 
-    elevation = Elevation.from_array(
-        heights, (CELL, 0, 440_000.0, 0, -CELL, 5_200_000.0), "EPSG:32632"
-    )
-    frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
-    far = FarHorizon.empty(elevation, AZIMUTHS)
-    start = time.perf_counter()
-    for azimuth in range(AZIMUTHS):
-        sweep(elevation, frame, azimuth, REFRACTION_COEFFICIENT, far)
-    swept = time.perf_counter()
-    ground = Ground(elevation, frame, far, REFRACTION_COEFFICIENT)
-    for block in blocks_of(elevation.shape):
-        for _ in BlockGround(ground, block).strips():
-            pass
-    work = heights.size * AZIMUTHS
-    return (swept - start) / work * 1e9, (time.perf_counter() - swept) / work * 1e9
+    def once(heights):
+        elevation = Elevation.from_array(
+            heights, (CELL, 0, 440_000.0, 0, -CELL, 5_200_000.0), "EPSG:32632"
+        )
+        frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
+        far = FarHorizon.empty(elevation, AZIMUTHS)
+        start = time.perf_counter()
+        for azimuth in range(AZIMUTHS):
+            sweep(elevation, frame, azimuth, REFRACTION_COEFFICIENT, far)
+        swept = time.perf_counter()
+        ground = Ground(elevation, frame, far, REFRACTION_COEFFICIENT)
+        for block in blocks_of(elevation.shape):
+            for _ in BlockGround(ground, block).strips():
+                pass
+        work = heights.size * AZIMUTHS * 1e-9
+        return (swept - start) / work, (time.perf_counter() - swept) / work
+
+    once(heights[:64, :64])  # compiled kernels are loaded here
+    return min((once(heights) for _ in range(repeats)), key=sum)
 
 
 def plain_seconds(heights, cells):
@@ -132,8 +136,8 @@ def main():
         rows.append(("cells a second", f"{rate / 1e6:.2f} million"))
         rows.append(("peak memory", f"{peak:.2f} GiB"))
         rows += [(f"  of which {name}", f"{s:.1f} s") for name, s in record["seconds"].items()]
-        far, near = sweep_nanoseconds(heights[: min(side, 2048), : min(side, 2048)])
-        rows.append(("horizon, one core, a cell and azimuth", f"{far + near:.1f} ns"))
+        far, near = sweep_nanoseconds(heights[: min(side, 2000), : min(side, 2000)])
+        rows.append(("horizon, one core, a cell and azimuth, best of 3", f"{far + near:.1f} ns"))
         rows.append(("  far field", f"{far:.1f} ns"))
         rows.append(("  near field and merging", f"{near:.1f} ns"))
         spread = np.linspace(40, side - 41, 50).astype(int)
