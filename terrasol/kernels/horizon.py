@@ -413,27 +413,33 @@ def merge_far(heights, pad, first_row, row_step, every, height, away, lift, half
     curve = np.float32(half_curve)
     raised = np.float32(lift)
     nodes = height.shape[2]
-    node_top = np.empty(nodes, np.float32)
-    node_distance = np.empty(nodes, np.float32)
-    top = np.empty(nodes * every, np.float32)
-    distance = np.empty(nodes * every, np.float32)
-    part = np.arange(every).astype(np.float32) / np.float32(every)
+    top = np.empty((2, nodes * every), np.float32)
+    distance = np.empty((2, nodes * every), np.float32)
     for a in range(azimuths):
+        spread = -1
         for r in range(rows):
             row = first_row + r * row_step
             n = row // every
+            if n != spread:
+                for side in range(2):
+                    _expand(height[a, n + side], every, top[side])
+                    _expand(away[a, n + side], every, distance[side])
+                spread = n
             v = np.float32((row - n * every) / every)
-            for m in range(nodes):
-                node_top[m] = height[a, n, m] + v * (height[a, n + 1, m] - height[a, n, m])
-                node_distance[m] = away[a, n, m] + v * (away[a, n + 1, m] - away[a, n, m])
-            for m in range(nodes - 1):
-                rise = node_top[m + 1] - node_top[m]
-                grow = node_distance[m + 1] - node_distance[m]
-                for s in range(every):
-                    top[m * every + s] = node_top[m] + part[s] * rise
-                    distance[m * every + s] = node_distance[m] + part[s] * grow
             own = heights[row + pad, pad : pad + columns]
             best = out[a, r]
+            z0, z1, d0, d1 = top[0], top[1], distance[0], distance[1]
             for c in range(columns):
-                t = (top[c] - raised - own[c]) / distance[c] - distance[c] * curve
+                d = d0[c] + v * (d1[c] - d0[c])
+                z = z0[c] + v * (z1[c] - z0[c])
+                t = (z - raised - own[c]) / d - d * curve
                 best[c] = t if t > best[c] else best[c]
+
+
+@njit(cache=True, nogil=True, error_model="numpy", fastmath=FAST, inline="always")
+def _expand(nodes, every, out):
+    """A row of nodes, linear between, to cells."""
+    for m in range(nodes.size - 1):
+        step = (nodes[m + 1] - nodes[m]) / np.float32(every)
+        for s in range(every):
+            out[m * every + s] = nodes[m] + np.float32(s) * step
