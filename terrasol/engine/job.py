@@ -39,7 +39,7 @@ from terrasol.light.irradiation import (
     strip_light,
 )
 
-SECONDS_A_CELL_AND_AZIMUTH = 25e-9
+SECONDS_A_CELL_AND_AZIMUTH = 40e-9
 """What a core needs, for the estimate only; measured in docs/performance.md."""
 
 SAMPLE_STRIDE = 8
@@ -106,7 +106,7 @@ class Plan:
         far = 9.0 * nodes * self.azimuths
         table = 3e6 * self.azimuths if self.settings else 0.0
         block = 4.0 * 65536 * (12 + sum(len(layer.bands) for layer in self.layers))
-        return int(350e6 + 5.0 * self.cells + far + table + 8 * block)
+        return int(450e6 + 5.0 * self.cells + far + table + 8 * block)
 
     @property
     def disk_bytes(self) -> int:
