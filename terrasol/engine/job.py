@@ -22,10 +22,11 @@ from terrasol.engine.plan import (
     check_threads,
     default_threads,
 )
+from terrasol.errors import InputError
 from terrasol.files.layers import Layer, Sink
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame, make_frame
-from terrasol.ground.horizon import NODE_STEP, FarHorizon, sweep
+from terrasol.ground.horizon import BLOCK, NODE_STEP, FarHorizon, sweep
 from terrasol.ground.surface import slope_and_aspect
 from terrasol.kernels.rounding import tally
 from terrasol.light.irradiation import (
@@ -44,6 +45,13 @@ SECONDS_A_CELL_AND_AZIMUTH = 40e-9
 
 SAMPLE_STRIDE = 8
 """Most cells between samples of what the terrain around receives."""
+
+BLOCK_LATITUDES = 4.0
+"""Most degrees of latitude in a block. Away from its middle the ground is tilted instead of
+moved; 1.3 degrees away that errs by 0.14 % of a year, 2 degrees by 0.26 %."""
+
+METRES_A_DEGREE = 111_195.0
+"""Of latitude, on the mean sphere."""
 
 Arrays = dict[str, NDArray[Any]]
 
@@ -206,11 +214,23 @@ def plan_irradiation(elevation: Elevation, settings: LightSettings) -> Plan:
     Raises
     ------
     InputError
-        A raster that cannot be placed on the Earth.
+        A raster that cannot be placed on the Earth, or with cells too coarse for its blocks.
     """
     layers = (*_terrain_layers(elevation), *outputs.light_layers(settings))
     frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
+    _check_blocks(frame)
     return Plan(elevation, frame, settings.azimuths, settings.refraction, settings, layers)
+
+
+def _check_blocks(frame: Frame) -> None:
+    """Raise InputError where a block reaches too far north for one sun table."""
+    cell = max(frame.cell_size)
+    tallest = min(float(np.ptp(frame.latitude)), BLOCK * cell / METRES_A_DEGREE)
+    if tallest > BLOCK_LATITUDES:
+        raise InputError(
+            f"the cells are about {cell / 1000.0:.1f} km, too coarse for shade and sun of terrain:"
+            " give a model with cells under 1.7 km, or cut it into smaller pieces"
+        )
 
 
 def _terrain_layers(elevation: Elevation) -> tuple[Layer, ...]:
