@@ -30,6 +30,7 @@ from terrasol.ground.horizon import BLOCK, NODE_STEP, FarHorizon, sweep
 from terrasol.ground.surface import slope_and_aspect
 from terrasol.kernels.rounding import tally
 from terrasol.light.irradiation import (
+    LATITUDE_GRAIN,
     UNITS,
     LightSettings,
     SkyTables,
@@ -365,8 +366,11 @@ def _block_arrays(
     gathered: dict[str, list[NDArray[np.float32]]] = {
         name: [] for name in names if name not in ("slope", "aspect", "status")
     }
-    middle = ground.frame.latitude_at(*piece.middle)
     for first, strip in piece.strips():
+        row = piece.middle[0]
+        if abs(strip.latitude[1]) * block.rows > 2.0 * LATITUDE_GRAIN:  # tall: strip by strip
+            row = block.row + first + (strip.heights.shape[0] - 1) / 2
+        middle = ground.frame.latitude_at(row, piece.middle[1])
         sky = strip.sky()
         gathered["sky_view"].append(sky[0][None])
         if "horizon" in gathered:

@@ -121,6 +121,6 @@ def slope_aspect(normal, flat, slope, aspect):
             if steep >= flat:
                 turn = DEGREE * np.arctan2(east, north)
                 turn = turn if turn >= np.float32(0.0) else turn + np.float32(360.0)
-                aspect[r, c] = turn if turn < np.float32(360.0) else np.float32(0.0)
+                aspect[r, c] = turn if turn < np.float32(359.996) else np.float32(0.0)
             else:
                 aspect[r, c] = np.nan
