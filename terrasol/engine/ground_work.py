@@ -82,13 +82,14 @@ class BlockGround:
         by_column = (frame.latitude_at(b.row, b.column + b.columns) - first) / b.columns
         return first + rows.start * by_row, rows.step * by_row, by_column
 
-    def strips(self) -> Iterator[tuple[int, Strip]]:
-        """Each strip's first row in the block, and the strip."""
+    def pieces(self) -> Iterator[range]:
+        """Rows of the block that are worked on together."""
         for first in range(0, self.block.rows, STRIP_ROWS):
-            yield first, self.strip(range(first, min(first + STRIP_ROWS, self.block.rows)))
+            yield range(first, min(first + STRIP_ROWS, self.block.rows))
 
-    def strip(self, rows: range) -> Strip:
-        """Rows of the block with their horizons; good until the next strip is taken."""
+    def strip(self, piece: range, start: int = 0, stride: int = 1) -> Strip:
+        """A piece, or every `stride`-th row of it; good until the next strip is taken."""
+        rows = piece[start::stride]
         ground, count = self.ground, len(rows)
         if count > self._horizon.shape[1]:
             self._horizon = np.empty((ground.azimuths, count, self.block.columns), np.float32)
@@ -105,6 +106,7 @@ class BlockGround:
             np.ascontiguousarray(heights),
             self.datum,
             self.latitude(rows),
+            ground.frame.latitude_at(self.block.row + (piece[0] + piece[-1]) / 2, self.middle[1]),
         )
 
 

@@ -46,6 +46,17 @@ def _spread(nodes, lower, part, out):
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
+def _spread_north(nodes, change, lower, part, north, out):
+    """The same with each node's change a radian north, for cells `north` radians north."""
+    last = nodes.size - 1
+    for c in range(out.size):
+        k = lower[c]
+        above = min(k + 1, last)
+        here = nodes[k] + north[c] * change[k]
+        out[c] = here + part[c] * (nodes[above] + north[c] * change[above] - here)
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
 def _sum_up(rows_of, sums, view, band, albedo, factor, total, year):
     """Add one month of a row: dome, band and terrain by cell are in `rows_of`."""
     dome, low, lit, direct = rows_of[0], rows_of[1], rows_of[2], rows_of[3]
@@ -53,7 +64,7 @@ def _sum_up(rows_of, sums, view, band, albedo, factor, total, year):
     for c in range(total.size):
         direct[c] = factor[c] * max(sums[c], zero)
     for c in range(total.size):
-        even = factor[c] * (view[c] * dome[c] + band[c] * low[c])
+        even = factor[c] * max(view[c] * dome[c] + band[c] * low[c], zero)
         back = factor[c] * albedo * (np.float32(1.0) - view[c]) * lit[c]
         total[c] = direct[c] + even + back
         year[0, c] += direct[c] + even + back
@@ -73,14 +84,16 @@ def _move_glow(glow, factor, year):
 
 @njit(cache=True, nogil=True, error_model="numpy")
 def parts_of_light(
-    sums, months, heights, datum, knot_height, isotropic, band_sum, view, band,
+    sums, months, heights, datum, knot_height, even, even_change, tilt, view, band,
     around, node, node_step, albedo, factor, year, month_total, month_parts,
 ):  # fmt: skip
     """Beam, diffuse and reflected light of each cell.
 
     sums : (groups, rows * columns, lanes) float32, look-ups: the months' beam and
         circumsolar, then circumsolar alone (one sum, or one a month)
-    isotropic, band_sum : (months, knot heights) float32
+    even : (2, months, knot heights) float32, isotropic light and horizon band
+    even_change : the same, their change a radian north
+    tilt : (3,) float64, latitude offset [radians] = tilt[0] + tilt[1] row + tilt[2] column
     view, band : (rows, columns) float32, sky-view factor and open part of the band
     around : (months, node rows, node columns) float32, what the terrain around receives
     node : (2,) float64, the strip's first cell on the nodes, in node units
@@ -96,6 +109,7 @@ def parts_of_light(
     split = month_parts.shape[1] > 0
     level = np.empty(columns, np.int64)
     w = np.empty(columns, np.float32)
+    north = np.empty(columns, np.float32)
     j = np.empty(columns, np.int64)
     u = np.empty(columns, np.float32)
     place = np.empty(columns, np.float64)
@@ -108,13 +122,14 @@ def parts_of_light(
         _mix(place, knot_height.size - 1, level, w)
         for c in range(columns):
             place[c] = node[1] + c / node_step
+            north[c] = tilt[0] + tilt[1] * r + tilt[2] * c
         _mix(place, last, j, u)
         v = min(max(node[0] + r / node_step, 0.0), around.shape[1] - 1.0)
         cells = sums[:, r * columns : (r + 1) * columns]
         for m in range(months):
             _row_of_nodes(around[m], v, terrain)
-            _spread(isotropic[m], level, w, rows_of[0])
-            _spread(band_sum[m], level, w, rows_of[1])
+            for i in range(2):
+                _spread_north(even[i, m], even_change[i, m], level, w, north, rows_of[i])
             _spread(terrain, j, u, rows_of[2])
             _sum_up(
                 rows_of, cells[m // lanes, :, m % lanes], view[r], band[r], albedo[m],

@@ -5,6 +5,7 @@ from __future__ import annotations
 import threading
 from collections.abc import Sequence
 from dataclasses import dataclass, field
+from numbers import Integral, Real
 from typing import Final
 
 import numpy as np
@@ -21,7 +22,13 @@ from terrasol.sky.clear import Air
 from terrasol.sky.diffuse import MODELS
 from terrasol.sky.period import Period
 from terrasol.sky.sun import SunPath, steps_per_day, sun_path
-from terrasol.sky.suntable import LATITUDE_STEP, SunTable, height_knots, sun_table
+from terrasol.sky.suntable import (
+    HORIZON_KNOTS,
+    SunTable,
+    height_knots,
+    latitude_knots,
+    sun_table,
+)
 
 UNITS: Final = {"MJ m-2": 1.0, "kW h m-2": 1.0 / 3.6}
 """Units of irradiation, and what one MJ m-2 is in each."""
@@ -32,8 +39,11 @@ BAND_TOP: Final = float(np.tan(np.radians(6.5)))
 """Tangent of the height at which the horizon band counts as wholly hidden: 6.5 degrees, the
 width of the band in Perez et al. (1987), doi:10.1016/S0038-092X(87)80031-2."""
 
-LATITUDE_GRAIN: Final = 0.05
+LATITUDE_GRAIN: Final = 0.01
 """Sun tables are mixed for latitudes rounded to this [degrees]; the rest is a tilt."""
+
+MIXED_BYTES: Final = 256e6
+"""Memory for mixed tables: those of the strips of one row of blocks are kept."""
 
 
 @dataclass(frozen=True)
@@ -82,10 +92,11 @@ class LightSettings:
 
     def __post_init__(self) -> None:
         """Refuse what makes no sense."""
-        if len(self.albedo) != 12 or not all(0.0 <= a <= 1.0 for a in self.albedo):
-            raise SettingError(
-                f"albedo must be one number or twelve, each from 0 to 1; got {self.albedo}"
-            )
+        if len(self.albedo) != 12:
+            raise SettingError(f"albedo must be twelve numbers; got {len(self.albedo)}")
+        for value in self.albedo:
+            if not 0.0 <= value <= 1.0:
+                raise SettingError(f"albedo must be from 0 to 1; got {value}")
         for name, value, known in (
             ("diffuse model", self.diffuse, MODELS),
             ("unit", self.unit, tuple(UNITS)),
@@ -105,16 +116,18 @@ class LightSettings:
 
 def check_azimuths(azimuths: int) -> None:
     """Raise SettingError unless the number of azimuths is a multiple of 4 from 8 to 720."""
-    if azimuths % 4 or not 8 <= azimuths <= 720:
+    if not isinstance(azimuths, Integral) or azimuths % 4 or not 8 <= azimuths <= 720:
         raise SettingError(
-            f"the number of azimuths must be a multiple of 4 from 8 to 720; got {azimuths}"
+            f"the number of azimuths must be a multiple of 4 from 8 to 720; got {azimuths!r}"
         )
 
 
 def check_refraction(refraction: float) -> None:
     """Raise SettingError unless the coefficient is from 0 to below 1."""
-    if not 0.0 <= refraction < 1.0:
-        raise SettingError(f"the refraction coefficient must be in 0 to 1; got {refraction}")
+    if not isinstance(refraction, Real) or not 0.0 <= refraction < 1.0:
+        raise SettingError(
+            f"the refraction coefficient must be 0 or more and less than 1; got {refraction!r}"
+        )
 
 
 def twelve(values: float | Sequence[float], name: str) -> tuple[float, ...]:
@@ -123,19 +136,29 @@ def twelve(values: float | Sequence[float], name: str) -> tuple[float, ...]:
     Raises
     ------
     SettingError
-        Another count.
+        Another count, or no numbers.
 
     Examples
     --------
     >>> twelve(0.2, "albedo")[:2]
     (0.2, 0.2)
     """
-    numbers = tuple(float(v) for v in np.atleast_1d(np.asarray(values, dtype=float)))
+    try:
+        numbers = tuple(float(v) for v in np.atleast_1d(np.asarray(values, dtype=float)))
+    except (TypeError, ValueError):
+        raise SettingError(f"{name} must be one number or twelve; got {values!r}") from None
     if len(numbers) == 1:
         return numbers * 12
     if len(numbers) != 12:
         raise SettingError(f"{name} must be one number or twelve; got {len(numbers)}")
     return numbers
+
+
+def table_bytes(settings: LightSettings, heights: int) -> float:
+    """Size of the sun table of one latitude with that many height knots [bytes]."""
+    months = len(settings.period.months)
+    groups = -(-(2 * months if settings.monthly_parts else months + 1) // LANES)
+    return 4.0 * groups * heights * settings.azimuths * HORIZON_KNOTS * 2 * LANES
 
 
 @dataclass(frozen=True)
@@ -150,14 +173,36 @@ class Mixed:
         See `SunTable.dark`.
     latitude : float
         Whose table it is [degrees].
-    northward : ndarray, shape (groups, lanes)
+    northward : ndarray of float32, shape (groups, lanes)
         See `SunTable.northward`.
+    even_change : ndarray of float32, shape (2, months, heights)
+        Change of `SunTable.even` a radian north.
     """
 
     table: SunTable
     dark: NDArray[np.int64]
     latitude: float
-    northward: NDArray[np.float64]
+    northward: NDArray[np.float32]
+    even_change: NDArray[np.float32]
+
+    @classmethod
+    def between(
+        cls,
+        latitude: float,
+        knots: tuple[float, float],
+        tables: tuple[SunTable, SunTable],
+        dark: tuple[NDArray[np.int64], NDArray[np.int64]],
+    ) -> Mixed:
+        """Mix the tables of the two knots around a latitude [degrees]."""
+        gap = knots[1] - knots[0]
+        table = tables[0].mixed(tables[1], (latitude - knots[0]) / gap)
+        return cls(
+            table,
+            np.maximum(*dark),
+            latitude,
+            table.northward(*tables, gap).astype(np.float32),
+            (tables[1].even - tables[0].even) / np.float32(np.radians(gap)),
+        )
 
 
 @dataclass
@@ -174,16 +219,17 @@ class SkyTables:
         Knots fixed to the globe [degrees].
     heights : ndarray
         Knots fixed above the sea [m].
-    tables : list of SunTable
-        One a latitude; filled by `fill`.
+    tables : dict of SunTable
+        By index of the latitude; filled by `fill`.
     """
 
     settings: LightSettings
     path: SunPath
     latitudes: NDArray[np.float64]
     heights: NDArray[np.float64]
-    tables: list[SunTable | None]
-    _mixed: dict[float, Mixed] = field(default_factory=dict)
+    tables: dict[int, SunTable] = field(default_factory=dict)
+    _dark: dict[int, NDArray[np.int64]] = field(default_factory=dict)
+    _mixed: dict[int, Mixed] = field(default_factory=dict)
     _lock: threading.Lock = field(default_factory=threading.Lock)
 
     @classmethod
@@ -195,17 +241,13 @@ class SkyTables:
         heights: tuple[float, float],
     ) -> SkyTables:
         """Choose the knots for a range of latitudes [degrees] and heights [m]."""
-        first = np.floor(latitudes[0] / LATITUDE_STEP)
-        last = np.ceil(latitudes[1] / LATITUDE_STEP)
-        knots = LATITUDE_STEP * np.arange(first, max(last, first + 1) + 1)
-        knots = np.clip(knots, -90.0, 90.0)
         path = sun_path(settings.period, longitude, settings.step_seconds)
-        return cls(settings, path, knots, height_knots(*heights), [None] * knots.size)
+        return cls(settings, path, latitude_knots(*latitudes), height_knots(*heights))
 
     def fill(self, index: int) -> None:
         """Compute the table of one latitude knot."""
         s = self.settings
-        self.tables[index] = sun_table(
+        table = sun_table(
             self.path,
             float(self.latitudes[index]),
             self.heights,
@@ -214,26 +256,31 @@ class SkyTables:
             s.azimuths,
             s.monthly_parts,
         )
+        self.tables[index], self._dark[index] = table, table.dark()
 
     def at(self, latitude: float) -> Mixed:
         """The table for a latitude rounded to LATITUDE_GRAIN."""
-        rounded = round(latitude / LATITUDE_GRAIN) * LATITUDE_GRAIN
+        grain = round(latitude / LATITUDE_GRAIN)
         with self._lock:
-            if rounded not in self._mixed:
-                while len(self._mixed) >= 4:
+            found = self._mixed.pop(grain, None)
+            if found is None:
+                found = self.exactly(grain * LATITUDE_GRAIN)
+                while len(self._mixed) > MIXED_BYTES / found.table.direct.nbytes:
                     self._mixed.pop(next(iter(self._mixed)))
-                place = np.clip(
-                    np.searchsorted(self.latitudes, rounded) - 1, 0, self.latitudes.size - 2
-                )
-                low, high = self.tables[place], self.tables[place + 1]
-                assert low is not None
-                assert high is not None
-                gap = float(self.latitudes[place + 1] - self.latitudes[place])
-                table = low.mixed(high, float(rounded - self.latitudes[place]) / gap)
-                self._mixed[rounded] = Mixed(
-                    table, table.dark(), rounded, table.northward(low, high, gap)
-                )
-            return self._mixed[rounded]
+            self._mixed[grain] = found  # last, so that the one unused longest goes first
+            return found
+
+    def exactly(self, latitude: float) -> Mixed:
+        """The table for a latitude [degrees]."""
+        south = int(np.searchsorted(self.latitudes, latitude)) - 1
+        south = min(max(south, 0), self.latitudes.size - 2)
+        pair = south, south + 1
+        return Mixed.between(
+            latitude,
+            (float(self.latitudes[south]), float(self.latitudes[south + 1])),
+            (self.tables[pair[0]], self.tables[pair[1]]),
+            (self._dark[pair[0]], self._dark[pair[1]]),
+        )
 
 
 @dataclass(frozen=True)
@@ -314,6 +361,8 @@ class Strip:
         Metres above the sea.
     latitude : tuple of float
         At the first cell, and its change a row and a column [degrees].
+    middle : float
+        Latitude whose sun table serves [degrees].
     """
 
     horizon: NDArray[np.float32]
@@ -321,6 +370,24 @@ class Strip:
     heights: NDArray[np.float32]
     datum: float
     latitude: tuple[float, float, float]
+    middle: float
+
+    def tilt(self, mixed: Mixed) -> NDArray[np.float64]:
+        """Latitude less that of a table, at the first cell and a row and a column [radians]."""
+        return np.radians(np.array(self.latitude) - (mixed.latitude, 0.0, 0.0))
+
+    def thin(self, first: int, stride: int) -> Strip:
+        """Every `stride`-th column, from the first wanted on."""
+        columns = np.s_[..., first::stride]
+        latitude, by_row, by_column = self.latitude
+        return Strip(
+            np.ascontiguousarray(self.horizon[columns]),
+            np.ascontiguousarray(self.normal[columns]),
+            np.ascontiguousarray(self.heights[columns]),
+            self.datum,
+            (latitude + first * by_column, by_row, stride * by_column),
+            self.middle,
+        )
 
     def sky(self) -> tuple[NDArray[np.float32], NDArray[np.float32]]:
         """Sky-view factor and the open part of the horizon band, shape (rows, columns)."""
@@ -330,11 +397,9 @@ class Strip:
         sky_view(self.horizon, self.normal, 0, directions, BAND_TOP, view, band)
         return view, band
 
-    def direct(self, tables: SkyTables, middle: float) -> tuple[SunTable, NDArray[np.float32]]:
-        """Sums of direct light, shape (groups, rows * columns, lanes), by the table used."""
-        mixed = tables.at(middle)
+    def direct(self, mixed: Mixed) -> NDArray[np.float32]:
+        """Sums of direct light, shape (groups, rows * columns, lanes)."""
         table = mixed.table
-        tilt = np.radians(np.array(self.latitude) - (mixed.latitude, 0.0, 0.0))
         sums = np.empty((table.direct.shape[0], self.heights.size, LANES), np.float32)
         directions = azimuth_directions(self.horizon.shape[0])
         for group, direct in enumerate(table.direct):
@@ -344,14 +409,14 @@ class Strip:
                 self.heights,
                 self.datum,
                 directions,
-                tilt,
+                self.tilt(mixed),
                 table.heights,
                 direct.reshape(-1, 2 * LANES),
                 mixed.dark,
-                mixed.northward[group].astype(np.float32),
+                mixed.northward[group],
                 sums[group],
             )
-        return table, sums
+        return sums
 
 
 @dataclass(frozen=True)
@@ -377,7 +442,6 @@ def strip_light(
     strip: Strip,
     sky: tuple[NDArray[np.float32], NDArray[np.float32]],
     tables: SkyTables,
-    middle: float,
     surroundings: Surroundings,
     place: tuple[int, int],
 ) -> Light:
@@ -391,8 +455,6 @@ def strip_light(
         From `Strip.sky`.
     tables : SkyTables
         Filled.
-    middle : float
-        Latitude of the middle of the block that the strip belongs to [degrees].
     surroundings : Surroundings
         For the reflected light.
     place : tuple of int
@@ -404,7 +466,45 @@ def strip_light(
         In the settings' unit and on their basis; NaN where void.
     """
     settings = tables.settings
-    table, sums = strip.direct(tables, middle)
+    factor = np.where(np.isnan(sky[0]), np.nan, UNITS[settings.unit]).astype(np.float32)
+    if settings.basis == "map":
+        factor /= strip.normal[2]
+    return _light(strip, sky, tables, surroundings, place, factor)
+
+
+def sky_light(strip: Strip, tables: SkyTables) -> NDArray[np.float32]:
+    """What a strip receives from the sky itself, for `Surroundings.of`.
+
+    Parameters
+    ----------
+    strip : Strip
+        The ground.
+    tables : SkyTables
+        Filled.
+
+    Returns
+    -------
+    ndarray of float32, shape (months + 1, rows, columns)
+        Irradiation of each month [MJ m-2], and last the terrain view; NaN where void.
+    """
+    view, band = strip.sky()
+    factor = np.where(np.isnan(view), np.nan, 1.0).astype(np.float32)
+    dark = Surroundings.none(len(tables.settings.period.months))
+    light = _light(strip, (view, band), tables, dark, (0, 0), factor)
+    return np.concatenate([light.months, 1.0 - view[None]])
+
+
+def _light(
+    strip: Strip,
+    sky: tuple[NDArray[np.float32], NDArray[np.float32]],
+    tables: SkyTables,
+    surroundings: Surroundings,
+    place: tuple[int, int],
+    factor: NDArray[np.float32],
+) -> Light:
+    """Irradiation of a strip, times a factor."""
+    settings = tables.settings
+    mixed = tables.at(strip.middle)
     count = len(settings.period.months)
     shape = strip.heights.shape
     light = Light(
@@ -412,14 +512,10 @@ def strip_light(
         np.empty((count, *shape), np.float32),
         np.empty((3, count if settings.monthly_parts else 0, *shape), np.float32),
     )
-    factor = np.where(np.isnan(sky[0]), np.nan, UNITS[settings.unit]).astype(np.float32)
-    if settings.basis == "map":
-        factor /= strip.normal[2]
     parts_of_light(
-        sums, count, strip.heights, strip.datum, table.heights,
-        np.ascontiguousarray(table.isotropic.T, np.float32),
-        np.ascontiguousarray(table.band.T, np.float32),
-        *sky, surroundings.received, surroundings.node(*place), surroundings.stride,
+        strip.direct(mixed), count, strip.heights, strip.datum, mixed.table.heights,
+        mixed.table.even, mixed.even_change, strip.tilt(mixed), *sky,
+        surroundings.received, surroundings.node(*place), surroundings.stride,
         settings.month_albedo.astype(np.float32), factor,
         light.year, light.months, light.month_parts,
     )  # fmt: skip

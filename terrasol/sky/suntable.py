@@ -33,9 +33,13 @@ HEIGHT_KNOTS: Final = (
 (2002) bends most near the sea (its turbidity term falls with a scale of 1250 m); these steps
 keep the error of linear interpolation of the beam near 0.03 % up to 4000 m."""
 
-LATITUDE_STEP: Final = 1.0
-"""Spacing of the latitude knots, fixed to the globe [degrees]. Linear interpolation over one
-degree errs by (0.0175 rad)^2 / 8, four parts in 100,000."""
+LATITUDE_KNOTS: Final = tuple(
+    float(k)
+    for k in (*np.arange(-90.0, -50.0, 0.25), *np.arange(-50.0, 50.0), *np.arange(50.0, 90.1, 0.25))
+)
+"""Latitudes tabulated, fixed to the globe, linear between [degrees]. Whole degrees suffice where
+the sun stands high; beyond 50 degrees a winter month would be wrong by percents, so quarter
+degrees are taken there (docs/validation.md)."""
 
 
 @dataclass(frozen=True)
@@ -85,15 +89,36 @@ class SunTable:
         lit = level > 1e-4 * level.max()
         return np.where(lit, change / np.where(lit, level, 1.0), 0.0)
 
+    @property
+    def even(self) -> NDArray[np.float32]:
+        """Isotropic and horizon band, shape (2, months, heights)."""
+        return np.array([self.isotropic.T, self.band.T], np.float32)
+
     def mixed(self, other: SunTable, share: float) -> SunTable:
         """Linear mix with the table of another latitude: `share` of the other."""
+        direct = other.direct - self.direct
+        direct *= np.float32(share)
+        direct += self.direct
         return SunTable(
             self.heights,
-            ((1.0 - share) * self.direct + share * other.direct).astype(np.float32),
-            (1.0 - share) * self.isotropic + share * other.isotropic,
-            (1.0 - share) * self.band + share * other.band,
-            (1.0 - share) * self.level + share * other.level,
+            direct,
+            *(
+                (1.0 - share) * own + share * others
+                for own, others in (
+                    (self.isotropic, other.isotropic),
+                    (self.band, other.band),
+                    (self.level, other.level),
+                )
+            ),
         )
+
+
+def latitude_knots(south: float, north: float) -> NDArray[np.float64]:
+    """The latitude knots that a range of latitudes needs, two at least [degrees]."""
+    knots = np.array(LATITUDE_KNOTS)
+    first = min(max(int(np.searchsorted(knots, south, side="right")) - 1, 0), knots.size - 2)
+    last = max(int(np.searchsorted(knots, north, side="left")), first + 1)
+    return knots[first : last + 1]
 
 
 def horizon_knots(count: int = HORIZON_KNOTS) -> NDArray[np.float64]:

@@ -104,17 +104,24 @@ def test_latitude_of_a_block_is_that_of_its_cells(ground):
 def test_strips_cover_a_block_and_single_rows_are_the_same(ground):
     piece = BlockGround(ground, Block(BLOCK, 0, 44, BLOCK))
     horizon, rows = [], []
-    for first, strip in piece.strips():
-        rows += list(range(first, first + strip.heights.shape[0]))
+    for piece_rows in piece.pieces():
+        strip = piece.strip(piece_rows)
+        rows += list(piece_rows)
         horizon.append(strip.horizon.copy())
-        place = np.s_[first : first + strip.heights.shape[0]]
+        place = np.s_[piece_rows[0] : piece_rows[-1] + 1]
         np.testing.assert_array_equal(strip.normal, piece.normal[:, place])
         np.testing.assert_array_equal(strip.heights, piece.padded[PAD:-PAD, PAD:-PAD][place])
     assert rows == list(range(44))
     whole = np.concatenate(horizon, axis=1)
     assert whole.max() > 0.1
-    for some in (range(3, 44, 8), range(0, 44, 5), range(17, 18)):
-        strip = piece.strip(some)
+    for part, start, stride in (
+        (range(0, 44), 3, 8),
+        (range(16, 32), 0, 5),
+        (range(16, 32), 1, 99),
+    ):
+        some = part[start::stride]
+        strip = piece.strip(part, start, stride)
+        assert strip.middle == piece.strip(part).middle  # all rows share one sun table
         np.testing.assert_array_equal(strip.horizon, whole[:, some])
         np.testing.assert_array_equal(strip.normal, piece.normal[:, some])
         assert strip.latitude == piece.latitude(some)

@@ -18,8 +18,9 @@ def made_up(months, split, seed=1, shape=(5, 23), nodes=(4, 6)):
         "heights": dice.uniform(-900.0, 900.0, shape).astype(f),
         "datum": 700.0,
         "knot_height": np.array([300.0, 450.0, 800.0, 1000.0]),
-        "isotropic": dice.uniform(1.0, 2.0, (months, 4)).astype(f),
-        "band_sum": dice.uniform(-0.2, 0.5, (months, 4)).astype(f),
+        "even": dice.uniform([[[1.0]], [[-0.2]]], [[[2.0]], [[0.5]]], (2, months, 4)).astype(f),
+        "even_change": dice.uniform(-9.0, 9.0, (2, months, 4)).astype(f),
+        "tilt": np.array([-0.01, 0.004, -0.0003]),
         "view": dice.uniform(0.0, 1.0, shape).astype(f),
         "band": dice.uniform(0.0, 1.0, shape).astype(f),
         "around": dice.uniform(1.0, 3.0, (months, *nodes)).astype(f),
@@ -67,10 +68,15 @@ def plainly(case):
     scale, view = case["factor"].astype(np.float64), case["view"].astype(np.float64)
     z = case["heights"].astype(np.float64) + case["datum"]
     even = np.empty((months, *shape))
+    rows, columns = np.indices(shape)
+    north = case["tilt"] @ np.array([np.ones(z.size), rows.ravel(), columns.ravel()])
     for m in range(months):
-        dome = np.interp(z, case["knot_height"], case["isotropic"][m])
-        low = np.interp(z, case["knot_height"], case["band_sum"][m])
-        even[m] = scale * (view * dome + case["band"] * low)
+        dome, low = (
+            np.interp(z, case["knot_height"], case["even"][i, m])
+            + north.reshape(shape) * np.interp(z, case["knot_height"], case["even_change"][i, m])
+            for i in range(2)
+        )
+        even[m] = scale * np.maximum(view * dome + case["band"] * low, 0.0)
     lit = node_values(case["around"], case["node"], case["node_step"], shape)
     back = scale * case["albedo"][:, None, None] * (1.0 - view) * lit
     return scale * lanes[:months], scale * lanes[months:], even, back
@@ -119,7 +125,7 @@ def test_parts_add_up_even_where_a_look_up_errs(split):
     case = made_up(5, split)
     for p in range(5):
         case["sums"][p // LANES, :, p % LANES] -= np.float32(1.4)
-    case["band_sum"][:] = 0.1
+    case["even"][1], case["even_change"][:] = 0.1, 0.0
     year, total, parts = worked_out(case, split)
     known = np.isfinite(case["view"])
     for layer in (year, total, parts):

@@ -15,6 +15,7 @@ from terrasol.sky.suntable import (
     HORIZON_KNOTS,
     height_knots,
     horizon_knots,
+    latitude_knots,
     sun_table,
 )
 
@@ -225,3 +226,22 @@ def test_height_knots_rise_and_the_whole_range_takes_all():
 def test_unknown_diffuse_model_is_refused():
     with pytest.raises(SettingError, match="brightest"):
         spring(diffuse="brightest")
+
+
+@pytest.mark.parametrize("south", [-46.0, 30.0, 50.0, 58.0, 61.75, 67.0, 81.0])
+def test_months_are_straight_enough_between_latitude_knots(south):
+    """Level ground and walls halfway between knots, within 0.15 % or 0.04 MJ m-2 of a month."""
+    knots = latitude_knots(south, south + 1e-6)
+    assert knots[0] == south
+    path = sun_path(parse_period("2025"), 10.0, 300.0)
+    heights = np.array([400.0, 600.0])
+
+    def sums(latitude):
+        table = sun_table(path, latitude, heights, Air.ineichen(3.0), "isotropic", 8)
+        level = table.direct[0, 0, :, 0, 1, :12].sum(axis=0)
+        wall = table.direct[0, 0, 2:7, 0, 0, :12].sum(axis=0)
+        return np.array([level, wall, table.isotropic[0]], np.float64)
+
+    between = (sums(knots[0]) + sums(knots[1])) / 2.0
+    want = sums(float(knots.mean()))
+    assert (np.abs(between - want) < np.maximum(1.5e-3 * want, 0.04)).all()
