@@ -11,6 +11,7 @@ from pvlib import atmosphere, clearsky
 
 from terrasol.constants import SOLAR_CONSTANT
 from terrasol.errors import SettingError
+from terrasol.sky.irradiance import Irradiance
 from terrasol.sky.sun import SunSeries
 
 ANGSTROM_EXPONENT: Final = 1.3
@@ -78,6 +79,10 @@ class Air:
                 value = getattr(self, name)
                 raise SettingError(f"{words}: {value:g} is outside {low:g} to {high:g}")
 
+    def over(self, sun: SunSeries, height: float) -> Irradiance:
+        """Light of the cloudless sky at a height [m]; see `clear_sky`."""
+        return clear_sky(sun, self, height)
+
     @classmethod
     def ineichen(
         cls, linke: float | Sequence[float], solar_constant: float = SOLAR_CONSTANT
@@ -135,25 +140,6 @@ class Air:
         )
 
 
-@dataclass(frozen=True, eq=False)
-class ClearSky:
-    """Cloudless irradiance for every entry of a `SunSeries`, each (n,) float64 [W/m2].
-
-    Attributes
-    ----------
-    beam_normal
-        Direct irradiance on a plane that faces the sun.
-    diffuse_horizontal
-        From the whole sky on level ground.
-    extraterrestrial_normal
-        Above the air, facing the sun.
-    """
-
-    beam_normal: NDArray[np.float64]
-    diffuse_horizontal: NDArray[np.float64]
-    extraterrestrial_normal: NDArray[np.float64]
-
-
 def linke_climatology(latitude: float, longitude: float) -> tuple[float, ...]:
     """Look up the mean Linke turbidity of each month, January to December.
 
@@ -173,7 +159,7 @@ def linke_climatology(latitude: float, longitude: float) -> tuple[float, ...]:
     return tuple(float(v) for v in values)
 
 
-def clear_sky(sun: SunSeries, air: Air, height: float) -> ClearSky:
+def clear_sky(sun: SunSeries, air: Air, height: float) -> Irradiance:
     """Compute beam and diffuse irradiance under a cloudless sky.
 
     Ineichen and Perez (2002), Solar Energy 73, 151-157, or Bird and Hulstrom (1981),
@@ -193,7 +179,7 @@ def clear_sky(sun: SunSeries, air: Air, height: float) -> ClearSky:
 
     Returns
     -------
-    ClearSky
+    Irradiance
         Zero, not void, while the sun's centre is below the horizon.
     """
     extraterrestrial = air.solar_constant / sun.distance**2
@@ -205,7 +191,7 @@ def clear_sky(sun: SunSeries, air: Air, height: float) -> ClearSky:
     up = sun.elevation > 0.0
     beam = np.minimum(beam, extraterrestrial)
     most = (extraterrestrial - beam) * np.cos(np.radians(zenith))
-    return ClearSky(beam * up, np.clip(diffuse, 0.0, most) * up, extraterrestrial)
+    return Irradiance(beam * up, np.clip(diffuse, 0.0, most) * up, extraterrestrial)
 
 
 def _ineichen(

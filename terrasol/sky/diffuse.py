@@ -7,7 +7,8 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from terrasol.errors import SettingError
-from terrasol.sky.clear import ClearSky, relative_airmass
+from terrasol.sky.clear import relative_airmass
+from terrasol.sky.irradiance import Irradiance
 from terrasol.sky.sun import SunSeries
 
 MODELS: Final = ("perez", "hay-davies", "isotropic")
@@ -59,7 +60,7 @@ class DiffuseSplit:
     horizon_band: NDArray[np.float64]
 
 
-def split_diffuse(model: str, sun: SunSeries, sky: ClearSky) -> DiffuseSplit:
+def split_diffuse(model: str, sun: SunSeries, sky: Irradiance) -> DiffuseSplit:
     """Split diffuse horizontal irradiance into dome, circumsolar ring and horizon band.
 
     Circumsolar light is put into the beam's direction as
@@ -78,7 +79,7 @@ def split_diffuse(model: str, sun: SunSeries, sky: ClearSky) -> DiffuseSplit:
     ----------
     model : "perez", "hay-davies" or "isotropic"
     sun : SunSeries
-    sky : ClearSky
+    sky : Irradiance
 
     Returns
     -------

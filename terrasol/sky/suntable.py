@@ -16,8 +16,8 @@ from numpy.typing import NDArray
 
 from terrasol.constants import SOLAR_RADIUS_DEG
 from terrasol.kernels.beam import LANES, fill_table
-from terrasol.sky.clear import Air, clear_sky
 from terrasol.sky.diffuse import split_diffuse
+from terrasol.sky.irradiance import Sky
 from terrasol.sky.sun import SunPath, sun_series
 
 HORIZON_KNOTS: Final = 129
@@ -139,12 +139,12 @@ def sun_table(
     path: SunPath,
     latitude: float,
     heights: NDArray[np.float64],
-    air: Air,
+    sky: Sky,
     diffuse: str,
     azimuths: int,
     monthly_parts: bool = False,
 ) -> SunTable:
-    """Tabulate the clear sky of a period over one latitude.
+    """Tabulate the sky of a period over one latitude.
 
     Parameters
     ----------
@@ -154,8 +154,8 @@ def sun_table(
         Degrees north.
     heights : ndarray, shape (heights,)
         See `height_knots` [m].
-    air : Air
-        The clear air.
+    sky : Sky
+        The clear air, or a measured sky.
     diffuse : {'perez', 'hay-davies', 'isotropic'}
         Model that parts the diffuse light.
     azimuths : int
@@ -192,11 +192,11 @@ def sun_table(
     lane = sun.month.astype(np.int64)
     mega = sun.step_seconds * 1e-6
     for k, height in enumerate(heights):
-        sky = clear_sky(sun, air, float(height))
-        split = split_diffuse(diffuse, sun, sky)
+        light = sky.over(sun, float(height))
+        split = split_diffuse(diffuse, sun, light)
         glow[:, k] = mega * split.circumsolar_normal
-        both[:, k] = mega * sky.beam_normal + glow[:, k]
-        on_level = sky.beam_normal * upright + sky.diffuse_horizontal
+        both[:, k] = mega * light.beam_normal + glow[:, k]
+        on_level = light.beam_normal * upright + light.diffuse_horizontal
         for i, flux in enumerate((split.isotropic, split.horizon_band, on_level)):
             sums[i, k] = np.bincount(lane, weights=mega * flux, minlength=months)
     disc = np.radians(SOLAR_RADIUS_DEG)

@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 from pvlib import irradiance
 
-from terrasol.sky.clear import ClearSky
+from terrasol.sky.irradiance import Irradiance
 from terrasol.sky.diffuse import (
     PEREZ_CLEARNESS_EDGES,
     PEREZ_COEFFICIENTS,
@@ -56,7 +56,7 @@ class Example2151:
 
     @classmethod
     def sky(cls):
-        return ClearSky(
+        return Irradiance(
             beam_normal=np.atleast_1d(cls.beam / cls.sine) * MJ_PER_HOUR,
             diffuse_horizontal=np.array([cls.diffuse]) * MJ_PER_HOUR,
             extraterrestrial_normal=1367.0 / cls.sun().distance ** 2,

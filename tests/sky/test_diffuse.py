@@ -3,7 +3,8 @@ import pvlib
 import pytest
 
 from terrasol.errors import SettingError
-from terrasol.sky.clear import Air, ClearSky, clear_sky, relative_airmass
+from terrasol.sky.clear import Air, clear_sky, relative_airmass
+from terrasol.sky.irradiance import Irradiance
 from terrasol.sky.diffuse import (
     MODELS,
     perez_brightening,
@@ -36,7 +37,7 @@ def any_weather(count=5000):
         distance=np.ones(count),
     )
     beam = random.uniform(0.0, 900.0, count) * (random.random(count) > 0.3)
-    return sun, ClearSky(beam, random.uniform(1.0, 450.0, count), np.full(count, 1361.0))
+    return sun, Irradiance(beam, random.uniform(1.0, 450.0, count), np.full(count, 1361.0))
 
 
 @pytest.mark.parametrize("model", MODELS)
@@ -57,7 +58,7 @@ def test_level_ground_gets_exactly_the_diffuse(model, latitude):
 def test_no_light_no_split(model):
     """A black sky splits into nothing, without a warning."""
     sun, sky = year()
-    dark = ClearSky(sky.beam_normal, np.zeros_like(sky.beam_normal), sky.extraterrestrial_normal)
+    dark = Irradiance(sky.beam_normal, np.zeros_like(sky.beam_normal), sky.extraterrestrial_normal)
     split = split_diffuse(model, sun, dark)
     assert not split.isotropic.any()
     assert not split.circumsolar_normal.any()
@@ -161,7 +162,7 @@ def test_clear_sky_is_brighter_around_the_sun():
 
 def test_overcast_sky_has_no_ring():
     sun, sky = any_weather()
-    no_beam = ClearSky(
+    no_beam = Irradiance(
         np.zeros_like(sky.beam_normal), sky.diffuse_horizontal, sky.extraterrestrial_normal
     )
     ring = split_diffuse("hay-davies", sun, no_beam).circumsolar_normal
