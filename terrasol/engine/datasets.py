@@ -17,6 +17,7 @@ from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import make_frame
 from terrasol.light.irradiation import LightSettings, twelve
 from terrasol.sky.clear import Air, linke_climatology
+from terrasol.sky.irradiance import Sky
 from terrasol.sky.period import Period, parse_period
 
 
@@ -107,9 +108,10 @@ def irradiation(
     basis: str = "slope",
     monthly_parts: bool = False,
     refraction: float = REFRACTION_COEFFICIENT,
+    sky: Sky | None = None,
     threads: int | None = None,
 ) -> xr.Dataset:
-    """Potential (clear-sky) irradiation of every cell, with terrain shade and reflection.
+    """Irradiation of every cell, with terrain shade and reflection: potential (clear-sky) or not.
 
     Parameters
     ----------
@@ -136,6 +138,9 @@ def irradiation(
         Also beam, diffuse and reflected of each month.
     refraction : float
         Coefficient k of terrestrial refraction.
+    sky : Sky, optional
+        A measured sky (`clouded_sky`) or one of monthly indices (`MonthlySky`), in place of
+        the clear one.
     threads : int, optional
         Default: all cores that may be used.
 
@@ -174,6 +179,7 @@ def irradiation(
         basis,
         monthly_parts,
         refraction,
+        sky,
     )
     return _dataset(plan_irradiation(elevation, settings), threads)
 

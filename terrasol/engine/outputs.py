@@ -6,6 +6,7 @@ import numpy as np
 
 from terrasol.files.layers import Layer
 from terrasol.light.irradiation import UNITS, LightSettings
+from terrasol.sky.cloud import MonthlySky
 
 MONTH_NAMES = (
     "January", "February", "March", "April", "May", "June", "July", "August", "September",
@@ -66,6 +67,22 @@ def basis_words(settings: LightSettings) -> str:
     return "per area of slope" if settings.basis == "slope" else "per area of map"
 
 
+def sky_kind(settings: LightSettings) -> str:
+    """What sky the light comes from: clear, measured or monthly index."""
+    if settings.sky is None:
+        return "clear"
+    return "monthly index" if isinstance(settings.sky, MonthlySky) else "measured"
+
+
+def sky_words(settings: LightSettings) -> str:
+    """How irradiation is called under that sky, with a place for the part's name."""
+    return {
+        "clear": "potential (clear-sky) {} irradiation",
+        "measured": "{} irradiation under the measured sky",
+        "monthly index": "{} irradiation under a sky of monthly clear-sky indices",
+    }[sky_kind(settings)]
+
+
 def _fineness(days: float, unit: str) -> float:
     """A power of two near 1 / 65,000 of what so many sunny days bring."""
     return float(2.0 ** np.floor(np.log2(days * SUNNY_DAY * UNITS[unit] / 2.0**16)))
@@ -73,15 +90,13 @@ def _fineness(days: float, unit: str) -> float:
 
 def light_layers(settings: LightSettings) -> tuple[Layer, ...]:
     """Layers of irradiation: the whole period by part, the months, and the months' parts."""
-    words = (
-        f"potential (clear-sky) {{}} irradiation in the plane of the slope, {basis_words(settings)}"
-    )
+    words = f"{sky_words(settings)} in the plane of the slope, {basis_words(settings)}"
     months = month_labels(settings)
     period = settings.period
     fine = _fineness(period.days, settings.unit)
     month_fine = _fineness(max(period.days / len(period.months), 1.0), settings.unit)
     whole = "year" if settings.period.whole_year else "period"
-    tags = {"period": settings.period.label, "basis": basis_words(settings), "sky": "clear"}
+    tags = {"period": settings.period.label, "basis": basis_words(settings), "sky": sky_kind(settings)}
     layers = [
         Layer(
             f"irradiation_{whole}",

@@ -20,6 +20,7 @@ from terrasol.kernels.energy import parts_of_light
 from terrasol.kernels.skyview import sky_view
 from terrasol.sky.clear import Air
 from terrasol.sky.diffuse import MODELS
+from terrasol.sky.irradiance import Sky
 from terrasol.sky.period import Period
 from terrasol.sky.sun import SunPath, steps_per_day, sun_path
 from terrasol.sky.suntable import (
@@ -72,6 +73,8 @@ class LightSettings:
         Keep beam, diffuse and reflected of each month, not only of the whole period.
     refraction : float
         Terrestrial refraction coefficient k of lines of sight.
+    sky : Sky, optional
+        What shines: a measured sky, say; by default the clear air's.
 
     Raises
     ------
@@ -89,6 +92,7 @@ class LightSettings:
     basis: str = "slope"
     monthly_parts: bool = False
     refraction: float = REFRACTION_COEFFICIENT
+    sky: Sky | None = None
 
     def __post_init__(self) -> None:
         """Refuse what makes no sense."""
@@ -251,7 +255,7 @@ class SkyTables:
             self.path,
             float(self.latitudes[index]),
             self.heights,
-            s.air,
+            s.sky or s.air,
             s.diffuse,
             s.azimuths,
             s.monthly_parts,

@@ -264,7 +264,8 @@ class _Clear:
         share = step_seconds / station.seconds
 
         def means(flux: NDArray[np.float64]) -> NDArray[np.float64]:
-            return share * np.bincount(place[fits], weights=flux[fits], minlength=start.size)
+            sums = np.bincount(place[fits], weights=flux[fits], minlength=start.size)
+            return np.asarray(share * sums, np.float64)
 
         direct = means(light.beam_normal * upright)
         lit = means((sun.elevation > 0.0).astype(np.float64)) * station.seconds

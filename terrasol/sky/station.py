@@ -74,4 +74,5 @@ class Station:
     @property
     def middle(self) -> NDArray[np.datetime64]:
         """Middle of each interval, UTC."""
-        return self.start.astype("M8[ns]") + np.timedelta64(self.seconds * 500_000_000, "ns")
+        half = np.timedelta64(self.seconds * 500_000_000, "ns")
+        return np.asarray(self.start.astype("M8[ns]") + half, "M8[ns]")
