@@ -407,8 +407,8 @@ def _block_arrays(
             ):
                 if f"{part}_months" in gathered:
                     gathered[f"{part}_months"].append(values)
-    for name, rows in gathered.items():
-        arrays[name] = np.concatenate(rows, axis=1)
+    for name, parts in gathered.items():
+        arrays[name] = np.concatenate(parts, axis=1)
     if "status" in names:
         arrays["status"] = _status(ground.elevation, block)[None]
     return arrays
