@@ -87,9 +87,13 @@ class BlockGround:
         for first in range(0, self.block.rows, STRIP_ROWS):
             yield range(first, min(first + STRIP_ROWS, self.block.rows))
 
-    def strip(self, piece: range, start: int = 0, stride: int = 1) -> Strip:
-        """A piece, or every `stride`-th row of it; good until the next strip is taken."""
-        rows = piece[start::stride]
+    def table_latitude(self, rows: range) -> float:
+        """Latitude whose sun table serves some rows [degrees]: that of their middle."""
+        row = self.block.row + (rows[0] + rows[-1]) / 2
+        return self.ground.frame.latitude_at(row, self.middle[1])
+
+    def strip(self, rows: range) -> Strip:
+        """Rows of the block with their horizons; good until the next strip is taken."""
         ground, count = self.ground, len(rows)
         if count > self._horizon.shape[1]:
             self._horizon = np.empty((ground.azimuths, count, self.block.columns), np.float32)
@@ -106,7 +110,7 @@ class BlockGround:
             np.ascontiguousarray(heights),
             self.datum,
             self.latitude(rows),
-            ground.frame.latitude_at(self.block.row + (piece[0] + piece[-1]) / 2, self.middle[1]),
+            self.table_latitude(rows),
         )
 
 

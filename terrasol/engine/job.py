@@ -407,8 +407,8 @@ def _block_arrays(
             ):
                 if f"{part}_months" in gathered:
                     gathered[f"{part}_months"].append(values)
-    for name, rows in gathered.items():
-        arrays[name] = np.concatenate(rows, axis=1)
+    for name, parts in gathered.items():
+        arrays[name] = np.concatenate(parts, axis=1)
     if "status" in names:
         arrays["status"] = _status(ground.elevation, block)[None]
     return arrays
@@ -432,17 +432,21 @@ def _sample_block(
     """What every `stride`-th cell of every `stride`-th row receives from the sky itself."""
     piece = BlockGround(ground, block)
     offset = stride // 2
+    rows = range((offset - block.row) % stride, block.rows, stride)
     first_column = (offset - block.column) % stride
-    for rows in piece.pieces():
-        start = (offset - block.row - rows[0]) % stride
-        if start >= len(rows) or first_column >= block.columns:
-            continue
-        strip = piece.strip(rows, start, stride).thin(first_column, stride)
-        row = (block.row + rows[start]) // stride
-        column = (block.column + first_column) // stride
-        received = sky_light(strip, tables)
-        height, width = received.shape[1:]
-        samples[:, row : row + height, column : column + width] = received
+    if not rows or first_column >= block.columns:
+        return
+    strip = piece.strip(rows).thin(first_column, stride)
+    received = np.empty((samples.shape[0], *strip.heights.shape), np.float32)
+    for served in piece.pieces():  # by the sun tables that the cells themselves get
+        inside = [i for i, row in enumerate(rows) if row in served]
+        if inside:
+            part = slice(inside[0], inside[-1] + 1)
+            alone = strip.part(part, piece.table_latitude(served))
+            received[:, part] = sky_light(alone, tables)
+    row, column = (block.row + rows[0]) // stride, (block.column + first_column) // stride
+    height, width = received.shape[1:]
+    samples[:, row : row + height, column : column + width] = received
 
 
 def _across_void(ground: Ground, known: NDArray[np.bool_]) -> int:

@@ -98,9 +98,9 @@ class LightSettings:
         """Refuse what makes no sense."""
         if len(self.albedo) != 12:
             raise SettingError(f"albedo must be twelve numbers; got {len(self.albedo)}")
-        for value in self.albedo:
-            if not 0.0 <= value <= 1.0:
-                raise SettingError(f"albedo must be from 0 to 1; got {value}")
+        for share in self.albedo:
+            if not 0.0 <= share <= 1.0:
+                raise SettingError(f"albedo must be from 0 to 1; got {share}")
         for name, value, known in (
             ("diffuse model", self.diffuse, MODELS),
             ("unit", self.unit, tuple(UNITS)),
@@ -391,6 +391,18 @@ class Strip:
             self.datum,
             (latitude + first * by_column, by_row, stride * by_column),
             self.middle,
+        )
+
+    def part(self, rows: slice, middle: float) -> Strip:
+        """Some of the rows, with the sun table of another latitude."""
+        latitude, by_row, by_column = self.latitude
+        return Strip(
+            np.ascontiguousarray(self.horizon[:, rows]),
+            np.ascontiguousarray(self.normal[:, rows]),
+            self.heights[rows],
+            self.datum,
+            (latitude + rows.start * by_row, by_row, by_column),
+            middle,
         )
 
     def sky(self) -> tuple[NDArray[np.float32], NDArray[np.float32]]:

@@ -114,14 +114,8 @@ def test_strips_cover_a_block_and_single_rows_are_the_same(ground):
     assert rows == list(range(44))
     whole = np.concatenate(horizon, axis=1)
     assert whole.max() > 0.1
-    for part, start, stride in (
-        (range(0, 44), 3, 8),
-        (range(16, 32), 0, 5),
-        (range(16, 32), 1, 99),
-    ):
-        some = part[start::stride]
-        strip = piece.strip(part, start, stride)
-        assert strip.middle == piece.strip(part).middle  # all rows share one sun table
+    for some in (range(3, 44, 8), range(0, 44, 5), range(17, 18)):
+        strip = piece.strip(some)
         np.testing.assert_array_equal(strip.horizon, whole[:, some])
         np.testing.assert_array_equal(strip.normal, piece.normal[:, some])
         assert strip.latitude == piece.latitude(some)
