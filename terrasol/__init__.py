@@ -7,10 +7,10 @@ package costs nothing.
 from __future__ import annotations
 
 from importlib import import_module
-from importlib.metadata import PackageNotFoundError, version
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
+    __version__: str
     from terrasol.engine.datasets import irradiation, terrain
     from terrasol.errors import (
         InputError,
@@ -46,11 +46,6 @@ _HOMES = {
     "terrain": "terrasol.engine.datasets",
 }
 
-try:
-    __version__ = version("terrasol")
-except PackageNotFoundError:  # a bare checkout
-    __version__ = "0+unknown"
-
 __all__ = [
     "Air",
     "Elevation",
@@ -72,8 +67,20 @@ __all__ = [
 ]
 
 
+def _version() -> str:
+    """Version of the package as installed."""
+    from importlib.metadata import PackageNotFoundError, version
+
+    try:
+        return version("terrasol")
+    except PackageNotFoundError:  # a bare checkout
+        return "0+unknown"
+
+
 def __getattr__(name: str) -> Any:
     """Load a public name from its home."""
+    if name == "__version__":
+        return globals().setdefault(name, _version())
     if name in _HOMES:
         return getattr(import_module(_HOMES[name]), name)
     raise AttributeError(f"module 'terrasol' has no attribute '{name}'")

@@ -27,3 +27,6 @@ SURROUNDINGS_SCALE: Final = 1000.0
 """Standard deviation, m, of the Gaussian mean that says what the terrain around a cell
 receives. The slopes that a valley cell looks at lie some hundred metres to a few
 kilometres away (judgement, no source)."""
+
+ENERGY_UNITS: Final = {"MJ": "MJ m-2", "kWh": "kW h m-2"}
+"""Units of irradiation as typed in a command, and as written in files (UDUNITS)."""

@@ -23,3 +23,14 @@ class OutputError(TerrasolError):
 
 class UnfinishedError(TerrasolError):
     """Part of the work was not done, and what is on disk is not complete."""
+
+
+def counted(number: int, noun: str) -> str:
+    """Word a number of things.
+
+    Examples
+    --------
+    >>> counted(1, "row"), counted(2, "row")
+    ('1 row', '2 rows')
+    """
+    return f"{number} {noun}" if number == 1 else f"{number} {noun}s"

@@ -7,8 +7,8 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
-from terrasol.cli.options import UNITS, Common, Numbers, common_options
-from terrasol.constants import SOLAR_CONSTANT
+from terrasol.cli.options import Common, Numbers, common_options
+from terrasol.constants import ENERGY_UNITS, SOLAR_CONSTANT
 
 if TYPE_CHECKING:
     import numpy as np
@@ -84,7 +84,8 @@ raster says where it lies."""
 )
 @click.option(
     "--unit",
-    type=click.Choice(list(UNITS)),
+    metavar=f"[{'|'.join(ENERGY_UNITS)}]",
+    type=click.Choice([*ENERGY_UNITS, *ENERGY_UNITS.values()]),
     default="MJ",
     show_default=True,
     help="Unit of energy, per square metre.",
@@ -141,7 +142,7 @@ def _settings(common: Common, given: dict[str, Any]) -> LightSettings:
         diffuse=given["diffuse"],
         azimuths=common.azimuths,
         step_seconds=given["step_seconds"],
-        unit=UNITS[given["unit"]],
+        unit=ENERGY_UNITS.get(given["unit"], given["unit"]),
         basis=given["basis"],
         monthly_parts=given["parts"],
         refraction=common.refraction,
@@ -188,7 +189,10 @@ def _record(settings: LightSettings) -> dict[str, Any]:
     record = asdict(settings)
     period, air = settings.period, settings.air
     of_model = ("linke",) if air.model == "ineichen" else BIRD_FIELDS
+    record["albedo"] = _shortest(settings.albedo)
     record["air"] = {name: getattr(air, name) for name in ("model", "solar_constant", *of_model)}
+    if air.linke is not None:
+        record["air"]["linke"] = _shortest(air.linke)
     record["period"] = {
         "label": period.label,
         "start": str(period.start),
@@ -198,13 +202,24 @@ def _record(settings: LightSettings) -> dict[str, Any]:
     return record
 
 
+def _shortest(months: tuple[float, ...]) -> float | tuple[float, ...]:
+    """One number for twelve months that do not differ."""
+    return months[0] if len(set(months)) == 1 else months
+
+
 def _draw(plan: Plan, energy: NDArray[np.float32], summary: Summary, title: str) -> bytes:
     """The overview map of a finished run."""
     from terrasol.engine.outputs import basis_words, month_labels
     from terrasol.show.maps import overview_png
+    from terrasol.show.page import printable
 
     settings = plan.settings
     assert settings is not None
+    if "\N{WHITE SQUARE}" in printable(title, bold=True):
+        summary.warnings.append(
+            f"the title of overview.png shows boxes, since no font here has all letters of"
+            f" '{title}': install one that has them, or rename the raster"
+        )
     whole = next(layer for layer in plan.layers if layer.name.startswith("irradiation_"))
     means = summary.numbers.get("irradiation_months", {})
     months = zip(settings.period.months, month_labels(settings), strict=True)

@@ -1,67 +1,25 @@
-"""The command `terrasol`: its subcommands, and what it says and returns when one fails."""
+"""The program `terrasol`: it runs a command line, and ends well however that ends.
+
+All that takes time to import is imported once interrupts are taken care of.
+"""
 
 from __future__ import annotations
 
-import logging
 import os
 import signal
 import sys
 import threading
-import traceback
-import warnings
-from collections.abc import Iterator, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from contextlib import contextmanager
-from typing import Final
 
-import click
+from terrasol.cli.endings import DONE, verdict
+from terrasol.cli.streams import give_up, hold_closed_streams, say
+from terrasol.errors import TerrasolError
 
-from terrasol import __version__
-from terrasol.cli.irradiation import irradiation
-from terrasol.cli.terrain import terrain
-from terrasol.errors import InputError, OutputError, SettingError, UnfinishedError
-
-DONE: Final = 0
-USAGE: Final = 2
-UNUSABLE_INPUT: Final = 3
-NOT_WRITTEN: Final = 4
-UNFINISHED: Final = 5
-DEFECT: Final = 70
-INTERRUPTED: Final = 130
-
-EXIT_CODES = {
-    DONE: "done",
-    USAGE: "wrong usage or setting",
-    UNUSABLE_INPUT: "unusable input",
-    NOT_WRITTEN: "could not write",
-    UNFINISHED: "not everything finished",
-    DEFECT: "defect in terrasol",
-    INTERRUPTED: "interrupted",
-}
-
-CODE_OF: Final = {
-    SettingError: USAGE,
-    InputError: UNUSABLE_INPUT,
-    OutputError: NOT_WRITTEN,
-    UnfinishedError: UNFINISHED,
-}
-
-EPILOG = "Exit codes: " + ", ".join(f"{code} {words}" for code, words in EXIT_CODES.items()) + "."
-
-
-@click.group(
-    epilog=EPILOG, invoke_without_command=True, context_settings={"max_content_width": 100}
+REQUESTS_TO_END = tuple(
+    getattr(signal, name) for name in ("SIGINT", "SIGTERM", "SIGHUP") if hasattr(signal, name)
 )
-@click.version_option(__version__, prog_name="terrasol", message="%(prog)s %(version)s")
-@click.pass_context
-def terrasol(context: click.Context) -> None:
-    """How much sun a piece of ground gets, from an elevation raster."""
-    if context.invoked_subcommand is None:
-        click.echo(context.get_help(), err=True)
-        context.exit(USAGE)
-
-
-terrasol.add_command(irradiation)
-terrasol.add_command(terrain)
+"""Ctrl-C, a polite request, and a terminal that is gone."""
 
 
 def main(arguments: Sequence[str] | None = None) -> int:
@@ -70,58 +28,74 @@ def main(arguments: Sequence[str] | None = None) -> int:
     With TERRASOL_DEBUG=1 in the environment, the traceback comes with it.
     """
     debug = os.environ.get("TERRASOL_DEBUG") == "1"
+    with _endable() as asked_to_end:
+        try:
+            hold_closed_streams()
+            return _run(arguments, debug)
+        except BaseException as error:
+            if debug:
+                import traceback
+
+                traceback.print_exc()
+            if asked_to_end() and not isinstance(error, TerrasolError):
+                error = KeyboardInterrupt()  # libraries may put errors of their own in its place
+            code, sentence = verdict(error)
+            say(f"terrasol: {sentence}")
+            return code
+
+
+def _run(arguments: Sequence[str] | None, debug: bool) -> int:
+    """Carry out the command that was asked for."""
+    import logging
+    import warnings
+
+    from terrasol.cli.commands import terrasol
+
     logging.getLogger("rasterio").addHandler(logging.NullHandler())
-    try:
-        with warnings.catch_warnings(), _terminable():
-            if not debug:
-                warnings.simplefilter("ignore")
+    with warnings.catch_warnings():
+        if not debug:
+            warnings.simplefilter("ignore")
+        try:
             code = terrasol.main(arguments, prog_name="terrasol", standalone_mode=False)
-            return code if isinstance(code, int) else DONE
-    except BaseException as error:
-        if debug:
-            traceback.print_exc()
-        code, sentence = _verdict(error)
-        click.echo(f"terrasol: {sentence}", err=True)
-        return code
-
-
-def _verdict(error: BaseException) -> tuple[int, str]:
-    """Exit code and sentence for what ended a run."""
-    for kind, code in CODE_OF.items():
-        if isinstance(error, kind):
-            return code, str(error)
-    if isinstance(error, click.ClickException):
-        return USAGE, _usage(error)
-    if isinstance(error, KeyboardInterrupt | click.Abort):
-        return INTERRUPTED, "interrupted, nothing was written"
-    if isinstance(error, MemoryError):
-        return UNFINISHED, "there is not enough memory: cut the raster, or use a larger machine"
-    what = " ".join(f"{type(error).__name__}: {error}".split())
-    return DEFECT, f"a defect in terrasol stopped the run, please report it ({what})"
-
-
-def _usage(error: click.ClickException) -> str:
-    """Word a mistake on the command line, and where to read on."""
-    sentence = " ".join(error.format_message().split()).rstrip(".")
-    context = getattr(error, "ctx", None)
-    return f"{sentence} ({context.command_path} --help)" if context else sentence
+        except SystemExit:  # so click ends when the reader of its help has gone
+            code = DONE
+        except OSError as error:  # all but streams raise errors of our own, or name their file
+            if error.filename is None:
+                give_up(error)
+            raise
+    return code if isinstance(code, int) else DONE
 
 
 @contextmanager
-def _terminable() -> Iterator[None]:
-    """Let a polite request to end (SIGTERM) clean up as Ctrl-C does."""
+def _endable() -> Iterator[Callable[[], bool]]:
+    """Let every request to end clean up, once: a second one would disturb the cleaning.
+
+    A request that the caller chose to ignore (nohup) stays ignored. Yields whether there was
+    a request.
+    """
+    requests: list[bool] = []
 
     def stop(*_: object) -> None:
+        requests.append(True)
+        for request in before:
+            signal.signal(request, signal.SIG_IGN)
         raise KeyboardInterrupt
 
     if threading.current_thread() is not threading.main_thread():
-        yield
+        yield lambda: False
         return
-    before = signal.signal(signal.SIGTERM, stop)
+    before = {
+        request: handler
+        for request in REQUESTS_TO_END
+        if (handler := signal.getsignal(request)) not in (signal.SIG_IGN, None)
+    }
+    for request in before:
+        signal.signal(request, stop)
     try:
-        yield
+        yield lambda: bool(requests)
     finally:
-        signal.signal(signal.SIGTERM, before)
+        for request, handler in before.items():
+            signal.signal(request, handler)
 
 
 if __name__ == "__main__":

@@ -11,8 +11,8 @@ import click
 
 from terrasol.constants import REFRACTION_COEFFICIENT
 
-UNITS = {"MJ": "MJ m-2", "kWh": "kW h m-2"}
-"""Units of irradiation as typed, and as written in files."""
+MOST_THREADS = 1024
+"""More would cost memory and no machine of today has as many cores (judgement, no source)."""
 
 
 @dataclass(frozen=True)
@@ -77,9 +77,19 @@ class Numbers(click.ParamType):
         return numbers
 
 
+class Name(click.ParamType):
+    """A name of a file or folder, which may not be empty: that would mean the current folder."""
+
+    name = "name"
+
+    def convert(self, value: Any, param: Any, ctx: Any) -> Any:
+        """Refuse nothing."""
+        return value or self.fail("the name is empty (an unset variable, perhaps)", param, ctx)
+
+
 _ARGUMENTS = (
-    click.argument("dem"),
-    click.argument("out_dir"),
+    click.argument("dem", type=Name()),
+    click.argument("out_dir", type=Name()),
 )
 _OPTIONS = (
     click.option(
@@ -114,7 +124,7 @@ _OPTIONS = (
     click.option(
         "--threads",
         metavar="N",
-        type=click.IntRange(min=1),
+        type=click.IntRange(1, MOST_THREADS),
         help="Cores to use. [default: all]",
     ),
     click.option(
@@ -124,14 +134,26 @@ _OPTIONS = (
         show_default=True,
         help="How the GeoTIFFs are packed; deflate is slower and read by more software.",
     ),
-    click.option("--overwrite", is_flag=True, help="Replace files that are there."),
-    click.option("--quiet", is_flag=True, help="Say nothing but errors."),
+    click.option(
+        "--overwrite",
+        is_flag=True,
+        help="Replace files that are there, and remove those of an earlier run in OUT_DIR that this"
+        " one does not write.",
+    ),
+    click.option(
+        "--quiet", is_flag=True, help="Say nothing but errors and what --json or --dry-run ask for."
+    ),
     click.option(
         "--dry-run",
         is_flag=True,
         help="Check the input, print what would be done and what it costs, write nothing.",
     ),
-    click.option("--json", "as_json", is_flag=True, help="Print one JSON object on stdout."),
+    click.option(
+        "--json",
+        "as_json",
+        is_flag=True,
+        help="Print one JSON object on stdout in place of the summary on stderr.",
+    ),
 )
 
 

@@ -12,17 +12,17 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
-import click
 import numpy as np
 from numpy.typing import NDArray
 
 from terrasol import __version__
 from terrasol.cli.options import Common
 from terrasol.cli.progress import progress_bar
+from terrasol.cli.streams import give, say
 from terrasol.engine.job import Plan, Summary
 from terrasol.engine.plan import default_threads
-from terrasol.errors import OutputError
-from terrasol.files.delivery import Delivery, check_free
+from terrasol.errors import OutputError, counted
+from terrasol.files.delivery import RECORD, Delivery, check_free, superseded_files
 from terrasol.files.layers import Layer
 from terrasol.files.provenance import run_record
 from terrasol.files.rasters import naming, read_with_unit
@@ -32,6 +32,8 @@ from terrasol.kernels import horizon
 
 WORK = 0.85
 """Part of the progress bar that the computation fills; packing the files fills the rest."""
+
+OVERVIEW = "overview.png"
 
 Record = dict[str, Any]
 Draw = Callable[[Plan, NDArray[np.float32], Summary, str], bytes]
@@ -96,10 +98,21 @@ class Job:
         return self.common.threads or default_threads()
 
     @property
+    def files(self) -> dict[str, str | None]:
+        """All files to write, by name, and the unit of those that have one; the record last."""
+        rasters = {f"{layer.name}.tif": layer.unit for layer in self.plan.layers}
+        return {**rasters, **({OVERVIEW: None} if self.draw else {}), RECORD: None}
+
+    @property
     def names(self) -> list[str]:
         """Names of all files to write."""
-        rasters = [f"{layer.name}.tif" for layer in self.plan.layers]
-        return [*rasters, *(["overview.png"] if self.draw else []), "run.json"]
+        return list(self.files)
+
+    def superseded(self) -> tuple[list[str], list[str]]:
+        """Files of an earlier run to remove, and warnings."""
+        if not self.common.overwrite:
+            return [], []
+        return superseded_files(self.common.out_dir, self.names)
 
     def record(self) -> Record:
         """What was asked, of which file, by which software."""
@@ -115,23 +128,23 @@ def run(job: Job) -> None:
     """Carry out a job, or only tell of it, as its options say."""
     common = job.common
     check_free(common.out_dir, job.names, common.overwrite)
-    _spare_input(common, job.names)
+    _spare_input(common, [*job.names, *job.superseded()[0]])
     if common.dry_run:
         forecast = _forecast(job)
-        click.echo(json.dumps(forecast, indent=2) if common.as_json else _in_lines(forecast))
+        give(json.dumps(forecast, indent=2) if common.as_json else _in_lines(forecast))
         return
     record = _carry_out(job, job.record())
-    if not common.quiet:
-        click.echo(_summary_text(record), err=True)
     if common.as_json:
-        click.echo(json.dumps(record, indent=2, ensure_ascii=False))
+        give(json.dumps(record, indent=2))
+    elif not common.quiet:
+        say(_summary_text(record))
 
 
 def _spare_input(common: Common, names: list[str]) -> None:
-    """Refuse to replace the raster that is read."""
+    """Refuse to replace or remove the raster that is read."""
     for name in names:
         place = Path(common.out_dir) / name
-        if place.exists() and os.path.isfile(common.dem) and place.samefile(common.dem):
+        if os.path.exists(place) and os.path.isfile(common.dem) and place.samefile(common.dem):
             raise OutputError(f"{place} is the input itself: name another output folder")
 
 
@@ -143,23 +156,24 @@ def _carry_out(job: Job, record: Record) -> Record:
     with delivery, progress_bar(common.quiet) as move:
         summary, picture, packing = _compute(job, delivery, _tags(record, plan.elevation), move)
         if picture:
-            delivery.write_bytes("overview.png", picture)
+            delivery.write_bytes(OVERVIEW, picture)
         seconds = {
             "reading": job.ground.seconds,
             **summary.seconds,
             "packing and drawing": packing,
             "whole run": job.ground.seconds + time.perf_counter() - start,
         }
+        superseded, notes = job.superseded()
         record = {
             **record,
             "threads": job.threads,
             "results": summary.numbers,
-            "warnings": summary.warnings,
+            "warnings": [*summary.warnings, *notes],
             "seconds": {name: round(value, 2) for name, value in seconds.items()},
-            "files": [str(delivery.folder / name) for name in job.names],
+            "files": [os.path.abspath(delivery.folder / name) for name in job.names],
         }
-        delivery.write_json("run.json", record)
-        delivery.commit()
+        delivery.write_json(RECORD, record)
+        delivery.commit(superseded)
     return record
 
 
@@ -224,7 +238,7 @@ def _announce_compilation(quiet: bool) -> None:
     """Say so when the kernels must be compiled first."""
     cache = Path(horizon.near_field.stats.cache_path or "")
     if not quiet and not any(cache.glob("*.nbi")):
-        click.echo("first run: compiling, once, for up to half a minute", err=True)
+        say("first run: compiling, once, for up to half a minute")
 
 
 def _tags(record: Record, elevation: Elevation) -> dict[str, str]:
@@ -249,9 +263,10 @@ def _forecast(job: Job) -> Record:
     turn = frame.convergence
     across, down = frame.cell_size
     folder = Path(common.out_dir).absolute()
-    while not folder.exists():
+    while not os.path.exists(folder):
         folder = folder.parent
     heights = elevation.heights
+    superseded, notes = job.superseded()
     return {
         "input": common.dem,
         "crs": elevation.crs.name,
@@ -267,13 +282,14 @@ def _forecast(job: Job) -> Record:
             "least": _rounded(turn.min()),
             "greatest": _rounded(turn.max()),
         },
-        "files": {f"{layer.name}.tif": layer.unit for layer in plan.layers},
+        "files": job.files,
+        "removed": superseded,
         "memory_mb": round(plan.memory_bytes / 1e6),
         "disk_mb": round(plan.disk_bytes / 1e6),
         "disk_free_mb": round(shutil.disk_usage(folder).free / 1e6),
         "threads": job.threads,
         "seconds": round(plan.seconds(threads)),
-        "warnings": list(elevation.warnings),
+        "warnings": [*elevation.warnings, *notes],
     }
 
 
@@ -292,21 +308,31 @@ def _in_lines(forecast: Record) -> str:
     rows = [
         ("input", f["input"]),
         ("CRS", f["crs"]),
-        ("grid", f"{f['rows']} rows, {f['columns']} columns, {f['void_cells']} cells void"),
+        (
+            "grid",
+            f"{counted(f['rows'], 'row')}, {counted(f['columns'], 'column')},"
+            f" {counted(f['void_cells'], 'void cell')}",
+        ),
         ("cell", f"{across:.6g} m x {down:.6g} m on the ground, at the centre"),
         ("heights", f"{low:g} to {high:g} m, read as {f['heights_read_as']}"),
         (
             "true north",
-            f"the grid's up direction is turned {turn['centre']:+g} degrees clockwise from it"
-            f" ({turn['least']:+g} to {turn['greatest']:+g}); corrected",
+            f"the grid's up direction is turned from it by {_turn(turn['centre'])}"
+            f" ({_turn(turn['least'])} to {_turn(turn['greatest'])}); corrected",
         ),
-        ("files", ", ".join(f"{name} ({unit})" for name, unit in f["files"].items())),
+        ("files", ", ".join(f"{n} ({unit})" if unit else n for n, unit in f["files"].items())),
+        *([("removed", ", ".join(f["removed"]))] if f["removed"] else []),
         ("memory", f"{f['memory_mb']:,} MB"),
         ("disk", f"{f['disk_mb']:,} MB at most, {f['disk_free_mb']:,} MB free"),
-        ("time", f"about {_duration(f['seconds'])} on {f['threads']} threads"),
+        ("time", f"about {_duration(f['seconds'])} on {counted(f['threads'], 'thread')}"),
         *(("warning", text) for text in f["warnings"]),
     ]
     return "\n".join(f"{name:<11} {text}" for name, text in rows)
+
+
+def _turn(degrees: float) -> str:
+    """An angle with its sense in words."""
+    return f"{abs(degrees):g} degrees {'counter-clockwise' if degrees < 0 else 'clockwise'}"
 
 
 def _duration(seconds: float) -> str:
@@ -340,5 +366,5 @@ def _summary_text(record: Record) -> str:
     lines += [f"warning: {text}" for text in record["warnings"]]
     files = record["files"]
     took = _duration(record["seconds"]["whole run"])
-    lines.append(f"{len(files)} files in {Path(files[0]).parent} after {took}")
+    lines.append(f"{counted(len(files), 'file')} in {Path(files[0]).parent} after {took}")
     return "\n".join(lines)

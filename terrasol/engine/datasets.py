@@ -3,15 +3,17 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from numbers import Integral, Real
 from typing import Any
 
 import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
 
-from terrasol.constants import REFRACTION_COEFFICIENT
+from terrasol.constants import ENERGY_UNITS, REFRACTION_COEFFICIENT
 from terrasol.engine.job import Plan, plan_irradiation, plan_terrain
 from terrasol.engine.outputs import month_labels
+from terrasol.errors import InputError, SettingError
 from terrasol.files.layers import Layer
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import make_frame
@@ -91,13 +93,14 @@ def terrain(
     >>> round(float(result.slope[20, 20]), 1), round(float(result.aspect[20, 20]), 1)
     (45.0, 180.0)
     """
+    _check_ground(elevation)
     plan = plan_terrain(elevation, azimuths, horizon=horizon, refraction=refraction)
     return _dataset(plan, threads)
 
 
 def irradiation(
     elevation: Elevation,
-    period: str | Period | None = None,
+    period: str | int | Period | None = None,
     air: Air | None = None,
     *,
     albedo: float | Sequence[float] = 0.2,
@@ -117,7 +120,7 @@ def irradiation(
     ----------
     elevation : Elevation
         The ground.
-    period : str or Period, optional
+    period : str, int or Period, optional
         See `parse_period`; a typical year by default.
     air : Air, optional
         The clear air; by default that of Ineichen and Perez with the turbidity climatology
@@ -130,8 +133,8 @@ def irradiation(
         Number of horizon azimuths, a multiple of 4 from 8 to 720.
     step_seconds : float
         Time step of the sun.
-    unit : {'MJ m-2', 'kW h m-2'}
-        Unit of irradiation.
+    unit : {'MJ m-2', 'kW h m-2', 'MJ', 'kWh'}
+        Unit of irradiation, as in files or as on the command line.
     basis : {'slope', 'map'}
         Per area of slope, or per area of map.
     monthly_parts : bool
@@ -163,8 +166,15 @@ def irradiation(
     Ineichen and Perez (2002), doi:10.1016/S0038-092X(02)00045-2. Perez et al. (1990),
     doi:10.1016/0038-092X(90)90055-H. docs/method.md has every formula.
     """
+    _check_ground(elevation)
     if not isinstance(period, Period):
         period = parse_period(period)
+    if not isinstance(air, Air | None):
+        raise SettingError(
+            f"the air must be an Air, not {air!r}: make it with Air.ineichen or Air.bird"
+        )
+    if not isinstance(step_seconds, Real):
+        raise SettingError(f"the time step must be a number of seconds; got {step_seconds!r}")
     if air is None:
         frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
         air = Air.ineichen(linke_climatology(*frame.centre))
@@ -175,7 +185,7 @@ def irradiation(
         diffuse,
         azimuths,
         step_seconds,
-        unit,
+        ENERGY_UNITS.get(unit, unit),
         basis,
         monthly_parts,
         refraction,
@@ -184,8 +194,19 @@ def irradiation(
     return _dataset(plan_irradiation(elevation, settings), threads)
 
 
+def _check_ground(elevation: Elevation) -> None:
+    """Raise InputError for what is no elevation model, such as a file's name."""
+    if not isinstance(elevation, Elevation):
+        raise InputError(
+            f"the ground must be an Elevation, not {type(elevation).__name__}: read a file with"
+            " read_elevation, or take an array with Elevation.from_array"
+        )
+
+
 def _dataset(plan: Plan, threads: int | None) -> xr.Dataset:
     """Run a plan into memory and label what comes out."""
+    if not isinstance(threads, Integral | None):
+        raise SettingError(f"the number of threads must be a whole number; got {threads!r}")
     sink = ArraySink(plan.elevation.shape)
     summary = plan.run(sink, threads)
     data = xr.Dataset(attrs={"warnings": summary.warnings, "crs_wkt": plan.elevation.crs.to_wkt()})

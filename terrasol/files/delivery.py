@@ -5,13 +5,16 @@ from __future__ import annotations
 import json
 import os
 import shutil
-import tempfile
 from collections.abc import Iterable
 from os import PathLike
 from pathlib import Path
 from typing import Any, Final, Self
 
 from terrasol.errors import OutputError
+from terrasol.files.hidden import HiddenFolder, clear_dead
+
+RECORD: Final = "run.json"
+"""The record of a run, which lists its files."""
 
 LEFTOVERS: Final = (".aux.xml", ".ovr")
 """Endings of what other software may have put beside a file that is replaced: it describes
@@ -57,7 +60,7 @@ class Delivery:
         self.overwrite = overwrite
         self.need = need
         self._made: list[Path] = []
-        self._hidden: Path | None = None
+        self._hidden: HiddenFolder | None = None
 
     def __enter__(self) -> Self:
         """Check all that can be checked before the work, and make the hidden folder."""
@@ -65,7 +68,8 @@ class Delivery:
             check_free(self.folder, self.names, self.overwrite)
             self._make_folder()
             check_space(self.folder, self.need)
-            self._hidden = Path(tempfile.mkdtemp(prefix=".terrasol-", dir=self.folder))
+            clear_dead(self.folder)
+            self._hidden = HiddenFolder(self.folder)
         except OSError as error:
             self._clear()
             raise OutputError(_not_written(self.folder, self.folder, error)) from error
@@ -81,7 +85,7 @@ class Delivery:
     def staged(self, name: str) -> Path:
         """Where to write a file for now."""
         assert self._hidden is not None
-        return self._hidden / name
+        return self._hidden.path / name
 
     def write_bytes(self, name: str, data: bytes) -> None:
         """Stage a file from memory."""
@@ -93,25 +97,48 @@ class Delivery:
     def write_json(self, name: str, record: dict[str, Any]) -> None:
         """Stage a record as a JSON file."""
         text = json.dumps(record, indent=2, ensure_ascii=False, allow_nan=False)
-        self.write_bytes(name, (text + "\n").encode())
+        # A file name that is not UTF-8 becomes an escape that JSON readers know.
+        self.write_bytes(name, (text + "\n").encode("utf-8", "backslashreplace"))
 
     def refusal(self, name: str, error: Exception) -> OutputError:
         """Word the failure to write a file."""
         return OutputError(_not_written(self.folder / name, self.folder, error))
 
-    def commit(self) -> list[Path]:
-        """Move every file to its place, in the order of the names; return where they are."""
+    def commit(self, superseded: Iterable[str] = ()) -> list[Path]:
+        """Move every file to its place, and return where they are.
+
+        What they replace is set aside first, and put back if a move fails.
+
+        Parameters
+        ----------
+        superseded : iterable of str
+            Names of further files to remove; see `superseded_files`.
+        """
         check_free(self.folder, self.names, self.overwrite)
-        places = [self.folder / name for name in self.names]
+        moves: list[tuple[Path, Path]] = []
+
+        def move(source: Path, target: Path) -> None:
+            os.replace(source, target)
+            moves.append((source, target))
+
+        place = self.folder
         try:
-            for name, place in zip(self.names, places, strict=True):
-                os.replace(self.staged(name), place)
-                for leftover in LEFTOVERS:
-                    Path(f"{place}{leftover}").unlink(missing_ok=True)
-        except OSError as error:
-            raise self.refusal(name, error) from error
+            # A record is last among the names: until then the old one tells what is there.
+            for name in (*superseded, *self.names):
+                place = self.folder / name
+                for ending in ("", *LEFTOVERS):
+                    if _is_file(old := Path(f"{place}{ending}")):
+                        move(old, self.staged(f"old-{old.name}"))
+                if name in self.names:
+                    move(self.staged(name), place)
+        except BaseException as error:
+            for source, target in reversed(moves):
+                os.replace(target, source)
+            if isinstance(error, OSError):
+                raise self.refusal(place.name, error) from error
+            raise
         self._made.clear()
-        return places
+        return [self.folder / name for name in self.names]
 
     def _make_folder(self) -> None:
         """Make the folder and its parents, and remember which."""
@@ -123,7 +150,7 @@ class Delivery:
     def _clear(self) -> None:
         """Remove the hidden folder, and folders made for nothing."""
         if self._hidden is not None:
-            shutil.rmtree(self._hidden, ignore_errors=True)
+            self._hidden.remove()
             self._hidden = None
         while self._made:
             path = self._made.pop()
@@ -131,6 +158,47 @@ class Delivery:
                 path.rmdir()
             except OSError:  # someone else put something in it meanwhile
                 self._made.clear()
+
+
+def superseded_files(
+    folder: str | PathLike[str], names: Iterable[str]
+) -> tuple[list[str], list[str]]:
+    """Find what an earlier run wrote into a folder and a new one will not replace.
+
+    Parameters
+    ----------
+    folder : path
+        The output folder.
+    names : iterable of str
+        Names of the files that the new run writes.
+
+    Returns
+    -------
+    names : list of str
+        Of files that the folder's own record lists, and that are there.
+    warnings : list of str
+        Says so if there is a record that cannot be understood; then nothing is listed.
+    """
+    record = Path(folder) / RECORD
+    if not os.path.lexists(record):
+        return [], []
+    try:
+        content = json.loads(record.read_bytes())
+        if "terrasol" not in content["versions"]:
+            raise KeyError("terrasol")
+        listed = {os.path.basename(file) for file in content["files"]}
+    except (OSError, ValueError, KeyError, TypeError):
+        return [], [
+            f"{record} was no readable record of an earlier run, so files that such a run may have"
+            " left in the folder are still there"
+        ]
+    gone = sorted(listed.difference(names))
+    return [name for name in gone if _is_file(Path(folder, name))], []
+
+
+def _is_file(path: Path) -> bool:
+    """Whether there is a file, or a link that is not one to a folder."""
+    return os.path.lexists(path) and not os.path.isdir(path)
 
 
 def check_free(folder: str | PathLike[str], names: Iterable[str], overwrite: bool = False) -> None:
@@ -142,6 +210,16 @@ def check_free(folder: str | PathLike[str], names: Iterable[str], overwrite: boo
         A file is there and may not be replaced, or the folder is no folder.
     """
     folder = Path(folder)
+    try:
+        os.stat(folder)
+    except FileNotFoundError:
+        if os.path.islink(folder):
+            raise OutputError(
+                f"{folder} is a link to a place that is not there: make that folder, or name"
+                " another output folder"
+            ) from None
+    except OSError as error:
+        raise OutputError(_not_written(folder, folder, error)) from error
     if os.path.exists(folder) and not os.path.isdir(folder):
         raise OutputError(f"{folder} is not a folder: name another output folder")
     taken = [name for name in names if os.path.lexists(folder / name)]
@@ -174,7 +252,7 @@ def check_space(folder: Path, need: int) -> None:
 
 def _not_written(path: Path, folder: Path, error: Exception) -> str:
     """Say why a file could not be written."""
-    if folder.is_dir() and shutil.disk_usage(folder).free < NEARLY_FULL:
+    if os.path.isdir(folder) and shutil.disk_usage(folder).free < NEARLY_FULL:
         return f"{path} could not be written: the disk is full, make room"
     text = " ".join((getattr(error, "strerror", None) or str(error)).split()).rstrip(".")
     return f"{path} could not be written ({text}): check the folder and the disk"

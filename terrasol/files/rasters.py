@@ -6,6 +6,7 @@ import os
 import warnings
 from collections.abc import Iterator
 from contextlib import contextmanager
+from numbers import Integral
 from os import PathLike
 from typing import Any, Final
 
@@ -18,7 +19,7 @@ from rasterio.windows import Window
 from scipy import ndimage, sparse
 from scipy.sparse.linalg import spsolve
 
-from terrasol.errors import InputError, SettingError
+from terrasol.errors import InputError, SettingError, counted
 from terrasol.files.vertical import Reference, resolve_vertical_unit
 from terrasol.ground.elevation import METRES_PER_UNIT, Affine6, Elevation
 
@@ -32,6 +33,9 @@ STEPPED_BELOW: Final = 30.0
 
 SMALLEST_CELL: Final = 0.001
 """Cell size, m, under which coordinates must be in another unit than their CRS says."""
+
+LARGEST_VOID: Final = 2**31 - 1
+"""Most cells of a void that may be filled: more than any raster in memory has."""
 
 STRIP_CELLS: Final = 4_000_000
 """Cells read at a time."""
@@ -80,8 +84,11 @@ def read_with_unit(
     path: str | PathLike[str], vertical_unit: str | None = None, fill_voids: int = 0
 ) -> tuple[Elevation, str]:
     """Do what `read_elevation` does, and return also the unit that the heights were in."""
-    if fill_voids < 0:
-        raise SettingError(f"the largest void to fill must be 0 cells or more; got {fill_voids}")
+    if not isinstance(fill_voids, Integral) or not 0 <= fill_voids <= LARGEST_VOID:
+        raise SettingError(
+            f"the largest void to fill must be a whole number of cells from 0 to {LARGEST_VOID};"
+            f" got {fill_voids}"
+        )
     with naming(path), _opened(path) as source:
         _check_kind(source)
         reference = _reference(source)
@@ -112,6 +119,8 @@ def _opened(path: str | PathLike[str]) -> Iterator[Any]:
             source = rasterio.open(path)
         except (RasterioError, OSError) as error:
             raise InputError(_why_not_opened(path)) from error
+        except UnicodeError as error:
+            raise InputError("the file's name is not valid Unicode: rename it") from error
     with source:
         yield source
 
@@ -119,7 +128,9 @@ def _opened(path: str | PathLike[str]) -> Iterator[Any]:
 def _why_not_opened(path: str | PathLike[str]) -> str:
     """Say what a name that GDAL cannot open stands for."""
     if os.path.isdir(path):
-        return "is a folder: give a GeoTIFF or another raster file"
+        return "this is a folder, not a raster file: name a GeoTIFF or another raster"
+    if os.path.islink(path) and not os.path.exists(path):
+        return "this is a link to a file that is not there: mend the link or name the file itself"
     if not os.path.exists(path):
         return "there is no such file: check its name"
     if os.path.getsize(path) == 0:
@@ -146,8 +157,8 @@ def _check_kind(source: Any) -> None:
         raise InputError("the raster holds complex numbers: give one with heights")
     if min(source.shape) < 2:
         raise InputError(
-            f"the raster has {source.height} rows and {source.width} columns: slope needs at"
-            " least 2 of each"
+            f"the raster has {counted(source.height, 'row')} and"
+            f" {counted(source.width, 'column')}: slope needs at least 2 of each"
         )
 
 
@@ -216,7 +227,7 @@ def _clean(heights: NDArray[np.float32], unit: str, stepped: bool) -> tuple[str,
     infinite = int(np.isinf(heights).sum())
     if infinite:
         heights[np.isinf(heights)] = np.nan
-        notes.append(f"{infinite} cells hold an infinite height and are taken as void")
+        notes.append(f"{counted(infinite, 'cell')} with an infinite height, taken as void")
     lowest, highest = float(np.fmin.reduce(heights, None)), float(np.fmax.reduce(heights, None))
     if np.isnan(lowest):
         cause = "is infinite or void" if infinite else "is void"

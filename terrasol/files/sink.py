@@ -48,8 +48,9 @@ COMPRESSIONS: Final = {
 """Zstandard writes twice as fast as DEFLATE at the same size (docs/performance.md); DEFLATE is
 for software that does not know Zstandard. Higher levels take longer and win a few per cent."""
 
-REFUSALS: Final = (RasterioError, CPLE_BaseError, OSError)
-"""What a failure to write may come as; rasterio lets some of GDAL's own errors through."""
+REFUSALS: Final = (RasterioError, CPLE_BaseError, OSError, UnicodeError)
+"""What a failure to write may come as; rasterio lets some of GDAL's own errors through, and
+takes no name that is not valid Unicode."""
 
 
 class RasterSink:
@@ -286,6 +287,7 @@ def _rounded(values: NDArray[Any], layer: Layer) -> NDArray[Any]:
     plain = np.ascontiguousarray(values, np.float32)
     out = np.empty_like(plain)
     round_off(plain.reshape(-1), layer.resolution, VOID, out.reshape(-1))
+    out += np.float32(0.0)  # no minus before a zero
     return out
 
 

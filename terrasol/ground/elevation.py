@@ -60,6 +60,14 @@ class Elevation:
             raise InputError(
                 f"an elevation model needs at least 2 rows and 2 columns, got {self.heights.shape}"
             )
+        if len(self.transform) != 6:
+            raise InputError(
+                f"the transform must be six numbers (a, b, c, d, e, f); got {self.transform!r}"
+            )
+        if not isinstance(self.crs, CRS):
+            raise InputError(
+                f"the CRS must be a pyproj.CRS, not {self.crs!r}: Elevation.from_array takes others"
+            )
         a, b, c, d, e, f = self.transform
         if not np.all(np.isfinite([a, b, c, d, e, f])) or a * e - b * d == 0.0:
             raise InputError("the raster's transform is degenerate: its cells have no area")
@@ -124,10 +132,18 @@ class Elevation:
             known_crs = CRS.from_user_input(crs)
         except CRSError as error:
             raise InputError(f"the CRS cannot be understood: {error}") from error
-        metres = np.ma.filled(np.ma.asarray(heights, dtype=np.float64), np.nan)
+        try:
+            metres = np.ma.filled(np.ma.asarray(heights, dtype=np.float64), np.nan)
+        except (TypeError, ValueError) as error:
+            raise InputError(f"the heights are not an array of numbers ({error})") from None
         metres = metres * METRES_PER_UNIT[vertical_unit]
         metres[~np.isfinite(metres)] = np.nan
-        a, b, c, d, e, f = (float(v) for v in tuple(transform)[:6])
+        try:
+            a, b, c, d, e, f = (float(v) for v in tuple(transform)[:6])
+        except (TypeError, ValueError):
+            raise InputError(
+                f"the transform must be six numbers (a, b, c, d, e, f); got {transform!r}"
+            ) from None
         return cls(np.ascontiguousarray(metres, np.float32), (a, b, c, d, e, f), known_crs)
 
     @classmethod

@@ -22,6 +22,14 @@ LATTICE_CELLS = 64
 Jacobian is linear; over 64 cells of 90 m its departure from linear is below 1e-6 at any
 latitude under 80 degrees."""
 
+POLE_MARGIN = 0.1
+"""Degrees of latitude from a pole within which a raster may not reach: there true north turns
+by whole degrees over a few cells, and what lies between it and the pole does not matter to
+people (judgement, no source)."""
+
+EARTH_RADII = (6.3e6, 6.45e6)
+"""Semi-major axes of ellipsoids of the Earth, m: those in use lie between 6370 and 6379 km."""
+
 LATTICE_NODES = 65
 """Most nodes along a side: larger rasters get a wider lattice, which is still far denser than
 the Jacobian needs."""
@@ -133,7 +141,7 @@ def make_frame(shape: tuple[int, int], transform: Affine6, crs: CRS) -> Frame:
     Raises
     ------
     InputError
-        The raster reaches outside the CRS's domain, or over a pole.
+        The CRS is not of the Earth, or the raster reaches outside its domain or to a pole.
 
     Notes
     -----
@@ -153,7 +161,11 @@ def make_frame(shape: tuple[int, int], transform: Affine6, crs: CRS) -> Frame:
     geodetic = crs.geodetic_crs
     if geodetic is None:
         raise InputError(f"the CRS '{crs.name}' has no datum: assign the raster's real CRS")
-    to_degrees = Transformer.from_crs(crs, _plain_geographic(geodetic), always_xy=True)
+    if geodetic.is_derived and geodetic.source_crs:  # a rotated pole is not the Earth's
+        geodetic = geodetic.source_crs
+    _demand_earth(crs, geodetic)
+    to_degrees = _to_degrees(crs, geodetic)
+    _refuse_pole(shape, transform, crs, to_degrees)
     geod = geodetic.get_geod() or Geod(ellps="WGS84")
 
     def position(column, row):
@@ -169,18 +181,68 @@ def make_frame(shape: tuple[int, int], transform: Affine6, crs: CRS) -> Frame:
         return place
 
     longitude, latitude = position(column_grid, row_grid)
-    if np.any(np.abs(latitude) > 89.9):
-        raise InputError("the raster reaches a pole, where north has no direction: cut it off")
     jacobian = np.empty((*latitude.shape, 2, 2))
     for axis, (dc, dr) in enumerate([(0.5, 0.0), (0.0, 0.5)]):
         before, behind = (
             position(column_grid - dc, row_grid - dr),
             position(column_grid + dc, row_grid + dr),
         )
+        if max(np.abs(before[1]).max(), np.abs(behind[1]).max()) > 90.0 - POLE_MARGIN:
+            raise InputError(POLE)
         jacobian[..., axis] = _true_step(geod, before, behind)
     if np.any(np.abs(np.linalg.det(jacobian)) < 1e-9):
         raise InputError("the raster's cells have no area on the ground: check its transform")
     return Frame(rows, columns, jacobian, latitude, longitude, shape)
+
+
+POLE = "the raster reaches a pole, where north has no direction: cut it off"
+
+
+def _demand_earth(crs: CRS, geodetic: CRS) -> None:
+    """Raise InputError for a CRS of another planet or of the moon."""
+    ellipsoid = geodetic.ellipsoid
+    radius = ellipsoid.semi_major_metre if ellipsoid else EARTH_RADII[0]
+    if not EARTH_RADII[0] <= radius <= EARTH_RADII[1]:
+        raise InputError(
+            f"the CRS '{crs.name}' is of a body with a radius of {radius / 1000.0:.0f} km, which is"
+            " not the Earth: assign the raster's real CRS"
+        )
+
+
+def _to_degrees(crs: CRS, geodetic: CRS) -> Transformer:
+    """From the CRS to longitude and latitude on its own datum."""
+    try:
+        return Transformer.from_crs(crs, _plain_geographic(geodetic), always_xy=True)
+    except ProjError as error:
+        raise InputError(
+            f"the CRS '{crs.name}' cannot be turned into latitude and longitude: assign the"
+            " raster's real CRS"
+        ) from error
+
+
+def _refuse_pole(
+    shape: tuple[int, int], transform: Affine6, crs: CRS, to_degrees: Transformer
+) -> None:
+    """Raise InputError if a pole lies on the raster, whose lattice might step over it.
+
+    In a geographic CRS that is a whole edge, which a raster may pass by half a cell when
+    its first cells are centred on the pole.
+    """
+    a, b, c, d, e, f = transform
+    if crs.is_geographic and not crs.is_derived:
+        degrees = np.degrees(crs.axis_info[0].unit_conversion_factor)
+        corners = f + np.add.outer([0.0, e * shape[0]], [0.0, d * shape[1]])
+        farthest = degrees * np.abs(corners).max()
+        on_it = 90.0 - POLE_MARGIN < farthest <= 90.0 + degrees * max(abs(d), abs(e))
+    else:
+        x, y = to_degrees.transform([0.0, 0.0], [90.0, -90.0], direction="INVERSE")
+        x, y = np.subtract(x, c), np.subtract(y, f)
+        with np.errstate(invalid="ignore"):
+            column, row = (e * x - b * y) / (a * e - b * d), (a * y - d * x) / (a * e - b * d)
+        inside = (column >= 0) & (column <= shape[1]) & (row >= 0) & (row <= shape[0])
+        on_it = bool(inside.any())
+    if on_it:
+        raise InputError(POLE)
 
 
 def _outside(crs: CRS) -> str:

@@ -65,3 +65,5 @@ def sky_view(horizon, normal, first_row, directions, band_tangent, view, band):
                 part = one - rim[c] * inverse_band
                 part = part if part > zero else zero
                 low[c] += ring * (towards if towards > zero else zero) * part
+        for c in range(columns):  # rounding and the arc cosine must not open more than a dome
+            total[c] = one if total[c] > one else total[c]

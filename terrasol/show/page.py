@@ -1,14 +1,17 @@
 """A sheet to draw on in pixels, from its upper left corner, by matplotlib's Agg canvas.
 
-No pyplot and no font search: the sheet takes its letters from the files that come with
-matplotlib, so that the same content gives the same bytes anywhere with that version.
+No pyplot: the sheet takes its letters from the font that comes with matplotlib, so that the
+same content gives the same bytes anywhere with that version. Only a line with letters which
+that font lacks is set in a font of the machine, if one has them.
 """
 
 from __future__ import annotations
 
 import io
+import unicodedata
 from bisect import bisect_right
-from functools import cache
+from contextlib import suppress
+from functools import cache, lru_cache
 from pathlib import Path
 from typing import Any, Literal
 
@@ -17,7 +20,7 @@ import numpy as np
 from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.collections import LineCollection
 from matplotlib.figure import Figure
-from matplotlib.font_manager import FontProperties, get_font
+from matplotlib.font_manager import FontProperties, fontManager, get_font
 from matplotlib.patches import Polygon, Rectangle
 from matplotlib.patheffects import withStroke
 from matplotlib.text import Text
@@ -31,22 +34,55 @@ SOFT = "#6c7077"
 DPI = 100
 POINTS_PER_PIXEL = 72 / DPI
 
+LAST_RESORT = "Last Resort"
+"""A font of the Unicode Consortium that has a box for every letter, and no letter."""
+
 
 @cache
-def _font_file(bold: bool) -> str:
+def _own_font(bold: bool) -> str:
     name = "DejaVuSans-Bold.ttf" if bold else "DejaVuSans.ttf"
     return str(Path(matplotlib.get_data_path()) / "fonts" / "ttf" / name)
 
 
+@lru_cache(maxsize=8)
+def _letters_of(file: str) -> frozenset[int]:
+    """All letters of a font; none if it has no outlines or cannot be read."""
+    with suppress(OSError, RuntimeError):
+        font = get_font(file)
+        if font.scalable:
+            return frozenset(font.get_charmap())
+    return frozenset()
+
+
+def _font_file(text: str, bold: bool) -> str:
+    """The font for a text: our own, or one of the machine for letters that ours lacks."""
+    letters = frozenset(map(ord, text))
+    return _own_font(bold) if letters <= _letters_of(_own_font(bold)) else _other(letters, bold)
+
+
 @cache
-def _known_letters(bold: bool) -> frozenset[int]:
-    return frozenset(get_font(_font_file(bold)).get_charmap())
+def _other(letters: frozenset[int], bold: bool) -> str:
+    """The machine's upright font of the nearest weight that has all letters, or our own."""
+    fonts = sorted(
+        (font.style != "normal", abs(int(font.weight) - (700 if bold else 400)), font.fname)
+        for font in fontManager.ttflist
+        if isinstance(font.weight, int) and not font.name.startswith(LAST_RESORT)
+    )
+    files = (file for _, _, file in fonts if letters <= _letters_of(file))
+    return next(files, _own_font(bold))
 
 
 def printable(text: str, bold: bool = False) -> str:
-    """Replace what the font has no letter for, so that it is seen to be missing."""
-    known = _known_letters(bold)
-    return "".join(letter if ord(letter) in known else "\N{WHITE SQUARE}" for letter in text)
+    """Replace letters that no font has: by plain ones, else by a box that shows the lack."""
+    known = _letters_of(_font_file(text, bold))
+
+    def shown(letter: str) -> str:
+        if ord(letter) in known:
+            return letter
+        plain = unicodedata.normalize("NFKD", letter)
+        return plain if known.issuperset(map(ord, plain)) else "\N{WHITE SQUARE}"
+
+    return "".join(map(shown, text))
 
 
 class Page:
@@ -77,14 +113,15 @@ class Page:
         halo: str | None = None,
     ) -> None:
         """Write at a place; `size` in pixels, `turn` counter-clockwise in degrees."""
+        text = printable(text, bold)
         effects = [withStroke(linewidth=2.4, foreground=halo, alpha=0.75)] if halo else None
         self.axes.add_artist(
             Text(
                 x,
                 y,
-                printable(text, bold),
+                text,
                 color=colour,
-                fontproperties=_font(size, bold),
+                fontproperties=_font(text, size, bold),
                 horizontalalignment=across,
                 verticalalignment=down,
                 rotation=turn,
@@ -153,15 +190,16 @@ class Page:
         return out.getvalue()
 
 
-def _font(size: float, bold: bool) -> FontProperties:
-    return FontProperties(fname=_font_file(bold), size=size * POINTS_PER_PIXEL)
+def _font(text: str, size: float, bold: bool) -> FontProperties:
+    return FontProperties(fname=_font_file(text, bold), size=size * POINTS_PER_PIXEL)
 
 
 def text_width(text: str, size: float, bold: bool = False) -> float:
     """Width of a line of text [pixels]; `size` in pixels."""
-    font = get_font(_font_file(bold))
+    text = printable(text, bold)
+    font = get_font(_font_file(text, bold))
     font.set_size(size * POINTS_PER_PIXEL, DPI)
-    font.set_text(printable(text, bold), 0.0)
+    font.set_text(text, 0.0)
     return font.get_width_height()[0] / 64.0
 
 
@@ -179,7 +217,7 @@ def wrap(text: str, size: float, width: float, bold: bool = False) -> list[str]:
 
 def clip(text: str, size: float, width: float, bold: bool = False) -> str:
     """Shorten text to a width [pixels], with an ellipsis for what is lost."""
-    text = " ".join(text.split())
+    text = printable(" ".join(text.split()), bold)
     if text_width(text, size, bold) <= width:
         return text
     kept = bisect_right(

@@ -75,8 +75,10 @@ class Air:
         if self.model == "ineichen":
             _check_linke(self.linke)
         for name, (low, high, words) in _RANGES.items():
-            if not low <= getattr(self, name) <= high:
-                value = getattr(self, name)
+            value = getattr(self, name)
+            if not isinstance(value, int | float | np.number):
+                raise SettingError(f"{words}: {value!r} is no number")
+            if not low <= value <= high:
                 raise SettingError(f"{words}: {value:g} is outside {low:g} to {high:g}")
 
     def over(self, sun: SunSeries, height: float) -> Irradiance:
@@ -99,7 +101,10 @@ class Air:
         >>> Air.ineichen(3.0).linke[:2]
         (3.0, 3.0)
         """
-        values = tuple(float(v) for v in np.atleast_1d(linke))
+        try:
+            values = tuple(float(v) for v in np.atleast_1d(linke))
+        except (TypeError, ValueError):
+            raise SettingError(f"Linke turbidity {linke!r} is no number, nor twelve") from None
         return cls(
             "ineichen",
             linke=values * 12 if len(values) == 1 else values,
@@ -126,6 +131,8 @@ class Air:
         SettingError
             If a value is outside what air can hold.
         """
+        if not isinstance(aerosol_500nm, int | float | np.number):
+            raise SettingError(f"aerosol depth at 500 nm: {aerosol_500nm!r} is no number")
         if aerosol_380nm is None:
             aerosol_380nm = aerosol_500nm * (500.0 / 380.0) ** ANGSTROM_EXPONENT
         return cls(
@@ -264,6 +271,10 @@ def relative_airmass(elevation: ArrayLike) -> NDArray[np.float64]:
 
 
 def _check_linke(linke: tuple[float, ...] | None) -> None:
+    if linke is not None and np.ndim(linke) != 1:
+        raise SettingError(
+            f"Linke turbidity {linke!r} is no row of 12 numbers; Air.ineichen takes one number"
+        )
     if linke is None or len(linke) != 12:
         count = 0 if linke is None else len(linke)
         raise SettingError(f"Linke turbidity needs 1 number or 12 (January first), not {count}")

@@ -3,6 +3,7 @@
 import re
 from dataclasses import dataclass
 from datetime import date, timedelta
+from numbers import Integral
 from typing import Final
 
 import numpy as np
@@ -56,13 +57,13 @@ class Period:
         return int((self.end - self.start) // np.timedelta64(1, "D"))
 
 
-def parse_period(text: str | None) -> Period:
+def parse_period(text: str | int | None) -> Period:
     """Read a period as a person writes it.
 
     Parameters
     ----------
-    text : str or None
-        None or "typical" for a typical year; "2025", "2025-04", "2025-04-01"; or a first
+    text : str, int or None
+        None or "typical" for a typical year; "2025" or 2025, "2025-04", "2025-04-01"; or a first
         and a last one of these, both included: "2025-04-01/2025-10-31".
 
     Returns
@@ -84,6 +85,10 @@ def parse_period(text: str | None) -> Period:
     >>> parse_period(None).label
     'typical year'
     """
+    if isinstance(text, Integral) and not isinstance(text, bool):
+        text = str(text)
+    if not isinstance(text, str | None):
+        raise SettingError(f"period {text!r} is no text; write {_FORMS}")
     if text is None or text.strip().lower() == "typical":
         first, after = _parse_one(str(TYPICAL_SUN_YEAR), "typical")
         return _period("typical year", first, after, typical=True)

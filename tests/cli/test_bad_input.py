@@ -1,6 +1,7 @@
 """Every bad input: the right exit code, one sentence that names the thing, nothing left behind."""
 
 import errno
+import json
 import os
 import shutil
 import warnings
@@ -55,7 +56,9 @@ OVER_THE_POLE = Affine(0.1, 0, 8.0, 0, -0.1, 90.0)
 
 BAD_RASTERS = {
     "missing file": (lambda path: None, "no such file"),
-    "folder": (lambda path: path.mkdir(), "is a folder"),
+    "folder": (lambda path: path.mkdir(), "dem.tif: this is a folder, not a raster"),
+    "link to nowhere": (lambda path: path.symlink_to("gone.tif"), "link to a file that is not"),
+    "the moon": (raster(crs="ESRI:103881"), "not the Earth"),
     "empty file": (lambda path: path.touch(), "is empty"),
     "text named .tif": (text, "cannot be opened as a raster"),
     "truncated before its directory": (cut_short(compress="deflate"), "cut short"),
@@ -82,9 +85,9 @@ BAD_RASTERS = {
     "two bands": (raster(np.stack([hills(), hills()])), "2 bands"),
     "complex": (raster(hills().astype(np.complex64)), "complex"),
     "colour table": (raster(np.ones((9, 9), np.uint8), after=coloured), "colour table"),
-    "single row": (raster(hills()[:1]), "1 rows"),
-    "single column": (raster(hills()[:, :1]), "1 columns"),
-    "single cell": (raster(hills()[:1, :1]), "1 rows and 1 columns"),
+    "single row": (raster(hills()[:1]), "1 row and 48 columns"),
+    "single column": (raster(hills()[:, :1]), "40 rows and 1 column:"),
+    "single cell": (raster(hills()[:1, :1]), "1 row and 1 column:"),
 }
 
 BAD_SETTINGS = {
@@ -93,7 +96,7 @@ BAD_SETTINGS = {
     "period of three": ("--period 2025/2026/2027", "two ends"),
     "no such day": ("--period 2025-02-30", "no calendar"),
     "before the sun's theory": ("--period 1066", "1900"),
-    "albedo 1.2": ("--albedo 1.2", "albedo"),
+    "albedo 1.2": ("--albedo 1.2", "albedo must be from 0 to 1; got 1.2\n"),
     "albedo below zero": ("--albedo -0.1", "albedo"),
     "albedo of 11 months": ("--albedo " + ",".join(["0.2"] * 11), "twelve"),
     "albedo in words": ("--albedo snow", "'snow'"),
@@ -113,14 +116,16 @@ BAD_SETTINGS = {
     "azimuths in words": ("--azimuths many", "'many'"),
     "step that divides no day": ("--step-seconds 7", "does not divide a day"),
     "step of nothing": ("--step-seconds 0", "step"),
-    "refraction 1": ("--refraction 1", "refraction"),
+    "refraction 1": ("--refraction 1", "0 or more and less than 1; got 1.0"),
     "refraction not a number": ("--refraction nan", "refraction"),
     "unknown unit": ("--unit cal", "'cal'"),
     "unknown basis": ("--basis roof", "'roof'"),
     "unknown diffuse model": ("--diffuse even", "'even'"),
     "unknown height unit": ("--vertical-unit yard", "'yard'"),
     "voids of -1": ("--fill-voids -1", "--fill-voids"),
+    "voids beyond all bounds": ("--fill-voids 99999999999999999999", "largest void"),
     "threads 0": ("--threads 0", "--threads"),
+    "threads beyond all bounds": ("--threads 99999999999999999999", "--threads"),
     "unknown option": ("--fast", "--fast"),
     "word too many": ("there", "there"),
 }
@@ -131,7 +136,7 @@ def refused(tmp_path, capfd):
     """Run a command that must fail; check what every failure has in common."""
 
     def run(code, words, *arguments):
-        before = {path: path.stat().st_mtime_ns for path in tmp_path.rglob("*")}
+        before = {path: path.lstat().st_mtime_ns for path in tmp_path.rglob("*")}
         assert main([str(argument) for argument in arguments]) == code
         out, err = capfd.readouterr()
         assert out == ""
@@ -139,7 +144,7 @@ def refused(tmp_path, capfd):
         assert err.count("\n") == 1
         assert "Traceback" not in err
         assert words in err
-        assert {path: path.stat().st_mtime_ns for path in tmp_path.rglob("*")} == before
+        assert {path: path.lstat().st_mtime_ns for path in tmp_path.rglob("*")} == before
         return err
 
     return run
@@ -168,6 +173,8 @@ def test_bad_setting(tmp_path, refused, name):
         (["terrain", "dem.tif"], "'OUT_DIR'"),
         (["horizon"], "'horizon'"),
         (["--loud"], "--loud"),
+        (["terrain", "dem.tif", ""], "'OUT_DIR': the name is empty"),
+        (["terrain", "", "out"], "'DEM': the name is empty"),
         (["terrain", "dem.tif", "out", "--period", "2025"], "--period"),
     ],
 )
@@ -204,6 +211,24 @@ def test_results_are_there_already(tmp_path, dem, refused, more):
     assert (tmp_path / "out" / "slope.tif").read_text() == "precious"
 
 
+@pytest.mark.parametrize("more", [[], ["--dry-run"]])
+def test_out_has_too_long_a_name(tmp_path, dem, refused, more):
+    words = "could not be written (File name too long)"
+    refused(OUTPUT, words, "terrain", dem, tmp_path / ("a" * 300), *more)
+
+
+def test_out_is_a_link_to_nowhere(tmp_path, dem, refused):
+    (tmp_path / "out").symlink_to("gone")
+    refused(OUTPUT, "out is a link to a place", "terrain", dem, tmp_path / "out")
+
+
+def test_names_that_are_not_unicode(tmp_path, dem, refused):
+    odd = os.fsdecode(bytes(tmp_path) + b"/\xff")
+    refused(OUTPUT, "could not be written", "terrain", dem, odd, "--azimuths", 8, "--quiet")
+    os.link(dem, odd)
+    refused(INPUT, "not valid Unicode", "terrain", odd, tmp_path / "out")
+
+
 def test_folder_in_the_way(tmp_path, dem, refused):
     (tmp_path / "out" / "slope.tif").mkdir(parents=True)
     refused(OUTPUT, "in the way", "terrain", dem, tmp_path / "out", "--overwrite")
@@ -212,6 +237,13 @@ def test_folder_in_the_way(tmp_path, dem, refused):
 def test_output_over_the_input(tmp_path, refused):
     dem = write_raster(tmp_path / "slope.tif", unit="m")
     refused(OUTPUT, "the input itself", "terrain", dem, tmp_path, "--overwrite")
+
+
+def test_input_among_the_files_to_be_removed(tmp_path, refused):
+    dem = write_raster(tmp_path / "horizon.tif", unit="m")
+    record = {"versions": {"terrasol": "0"}, "files": ["horizon.tif"]}
+    (tmp_path / "run.json").write_text(json.dumps(record))
+    refused(OUTPUT, "horizon.tif is the input itself", "terrain", dem, tmp_path, "--overwrite")
 
 
 def test_disk_too_small(tmp_path, dem, refused, monkeypatch):

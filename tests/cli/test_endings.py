@@ -50,16 +50,23 @@ def test_early_end(broken_engine, error, code, words):
     assert "\n" not in err.strip()
 
 
-def test_request_to_end(broken_engine):
-    def sweep(*_):
-        os.kill(os.getpid(), signal.SIGTERM)
-        time.sleep(0.2)
+@pytest.mark.parametrize("name", ["SIGINT", "SIGTERM", "SIGHUP"])
+def test_request_to_end(broken_engine, name):
+    """Even if it comes twice, as from an impatient hand."""
+    request = getattr(signal, name)
+    times = [request, request]
 
-    before = signal.getsignal(signal.SIGTERM)
+    def sweep(*_):
+        time.sleep(0.1)
+        if times:
+            os.kill(os.getpid(), times.pop())
+            time.sleep(0.1)
+
+    before = signal.getsignal(request)
     code, err = broken_engine(sweep)
     assert code == 130
     assert err.strip() == "terrasol: interrupted, nothing was written"
-    assert signal.getsignal(signal.SIGTERM) is before
+    assert signal.getsignal(request) is before
 
 
 def test_traceback_on_demand(broken_engine, monkeypatch):

@@ -10,9 +10,10 @@ from pathlib import Path
 import pytest
 
 import terrasol
+from terrasol.cli.endings import EXIT_CODES
 from terrasol.cli.irradiation import irradiation
-from terrasol.cli.main import EXIT_CODES, main
-from terrasol.cli.options import UNITS
+from terrasol.cli.main import main
+from terrasol.constants import ENERGY_UNITS
 
 ENVIRONMENT = os.environ | {"PYTHONPATH": str(Path(terrasol.__file__).parents[1])}
 HEAVY = ("numba", "numpy", "scipy", "pandas", "rasterio", "pyproj", "pvlib", "matplotlib", "xarray")
@@ -70,7 +71,7 @@ def test_choices_are_those_of_the_library():
     from terrasol.sky.diffuse import MODELS
 
     choices = {p.name: tuple(getattr(p.type, "choices", ())) for p in irradiation.params}
-    assert set(UNITS.values()) == set(light.UNITS)
+    assert set(ENERGY_UNITS.values()) == set(light.UNITS)
     assert choices["basis"] == light.BASES
     assert choices["diffuse"] == MODELS
     assert choices["compression"] == tuple(COMPRESSIONS)

@@ -9,7 +9,7 @@ from collections import namedtuple
 import pytest
 
 from terrasol.errors import OutputError
-from terrasol.files.delivery import Delivery, check_free
+from terrasol.files.delivery import Delivery, check_free, superseded_files
 
 
 def listing(folder):
@@ -61,6 +61,72 @@ def test_old_file_stays_whole_when_the_new_one_fails(tmp_path):
     with Delivery(tmp_path, ["one"], overwrite=True) as delivery:
         delivery.write_bytes("one", b"new")
     assert (tmp_path / "one").read_text() == "old"
+
+
+def test_move_that_fails_puts_everything_back(tmp_path, monkeypatch):
+    for name in ("gone.tif", "one", "one.ovr", "two"):
+        (tmp_path / name).write_text(f"old {name}")
+    before = {path.name: path.read_text() for path in tmp_path.iterdir()}
+    replace = os.replace
+
+    def fails_in_the_end(source, target):
+        if target == tmp_path / "two" and source.read_bytes() == b"new":
+            raise PermissionError(errno.EPERM, os.strerror(errno.EPERM))
+        replace(source, target)
+
+    monkeypatch.setattr(os, "replace", fails_in_the_end)
+
+    def deliver():
+        with Delivery(tmp_path, ["one", "two"], overwrite=True) as delivery:
+            for name in delivery.names:
+                delivery.write_bytes(name, b"new")
+            delivery.commit(["gone.tif"])
+
+    with pytest.raises(OutputError, match="two could not be written"):
+        deliver()
+    assert {path.name: path.read_text() for path in tmp_path.iterdir()} == before
+
+
+def record_of(folder, files, **more):
+    text = json.dumps({"versions": {"terrasol": "0"}, "files": files} | more)
+    (folder / "run.json").write_text(text)
+
+
+def test_superseded_files_are_those_that_the_record_lists(tmp_path):
+    assert superseded_files(tmp_path, ["one.tif"]) == ([], [])
+    for name in ("one.tif", "old.tif", "moved.tif", "mine.tif"):
+        (tmp_path / name).touch()
+    (tmp_path / "folder").mkdir()
+    outside = tmp_path.parent / "outside.tif"
+    listed = ["out/one.tif", "/elsewhere/old.tif", "moved.tif", "lost.tif", "folder", "..", ""]
+    record_of(tmp_path, [*listed, str(outside), "run.json"])
+    found = superseded_files(tmp_path, ["one.tif", "run.json"])
+    assert found == (["moved.tif", "old.tif"], [])
+
+
+@pytest.mark.parametrize(
+    "text",
+    ["", "{", "[]", "{}", "1", '{"files": ["old.tif"]}', '{"versions": {}, "files": ["old.tif"]}',
+     '{"versions": {"terrasol": "0"}, "files": [1]}', '{"versions": {"terrasol": "0"}}'],
+)  # fmt: skip
+def test_record_of_something_else_supersedes_nothing(tmp_path, text):
+    (tmp_path / "old.tif").touch()
+    (tmp_path / "run.json").write_text(text)
+    names, (warning,) = superseded_files(tmp_path, ["one.tif"])
+    assert names == []
+    assert "run.json was no readable record" in warning
+
+
+def test_superseded_files_go_with_the_delivery_only(tmp_path):
+    for name in ("old.tif", "old.tif.aux.xml"):
+        (tmp_path / name).touch()
+    with Delivery(tmp_path, ["one"], overwrite=True) as delivery:
+        delivery.write_bytes("one", b"1")
+    assert listing(tmp_path) == ["old.tif", "old.tif.aux.xml"]
+    with Delivery(tmp_path, ["one"], overwrite=True) as delivery:
+        delivery.write_bytes("one", b"1")
+        delivery.commit(["old.tif"])
+    assert listing(tmp_path) == ["one"]
 
 
 def test_file_in_the_way(tmp_path):

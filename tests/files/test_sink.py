@@ -53,6 +53,21 @@ def write(folder, layers, shape, *, transform=NORTH_UP, crs=UTM, change=lambda d
         delivery.commit()
 
 
+def test_no_zero_has_a_minus(tmp_path):
+    with (
+        Delivery(tmp_path, ["energy.tif"]) as delivery,
+        RasterSink(delivery, NORTH_UP, UTM, (2, 2)) as sink,
+    ):
+        sink.open(ENERGY)
+        sink.write("energy", 0, 0, np.array([[[-0.0, -1e-6], [1e-6, np.nan]]] * 2, np.float32))
+        sink.finish()
+        delivery.commit()
+    with rasterio.open(tmp_path / "energy.tif") as source:
+        found = source.read(1)
+    assert found.tolist() == [[0.0, 0.0], [0.0, VOID]]
+    assert not np.signbit(found[found != VOID]).any()
+
+
 def test_values_come_back_to_half_their_resolution(tmp_path):
     write(tmp_path, [ENERGY], (300, 520))
     with rasterio.open(tmp_path / "energy.tif") as source:

@@ -8,13 +8,14 @@ import warnings
 import matplotlib
 import numpy as np
 import pytest
+from matplotlib.font_manager import FontEntry
 from matplotlib.image import imread
 from pyproj import Geod, Proj, Transformer
 
 from terrasol.errors import SettingError
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import make_frame
-from terrasol.show import key, maps
+from terrasol.show import key, maps, page
 from terrasol.show.contours import contour_step, nice_step
 from terrasol.show.graticule import degrees_text
 from terrasol.show.maps import HEADER, LATITUDES, MARGIN, overview_png
@@ -463,6 +464,38 @@ def test_text_fits_its_room():
     assert max(text_width(line, 16) for line in lines) <= 150
     assert clip("w" * 200, 16, 150).endswith("…")
     assert clip("short", 16, 150) == "short"
+
+
+@pytest.fixture
+def fonts(monkeypatch):
+    """Let the machine have the fonts whose names and letters are told, and no others."""
+
+    def have(**letters):
+        entries = [FontEntry(fname=name, name=name, style="normal", weight=400) for name in letters]
+        own = page._letters_of
+        monkeypatch.setattr(page.fontManager, "ttflist", entries)
+        monkeypatch.setattr(page, "_letters_of", lambda file: letters.get(file) or own(file))
+        page._other.cache_clear()
+
+    yield have
+    page._other.cache_clear()
+
+
+def test_letters_that_no_font_has_are_seen_to_be_missing(fonts):
+    fonts()
+    assert printable("a山b") == "a□b"
+    assert printable("Ａ山") == "A□"  # a wide letter has a plain one
+
+
+def test_a_font_of_the_machine_serves_letters_that_ours_lacks(fonts):
+    fonts(some=frozenset(map(ord, "山 ab")), more=frozenset(map(ord, "山高 abc")))
+    assert page._font_file("高山 abc", bold=True) == "more"
+    assert printable("高山 abc", bold=True) == "高山 abc"
+    assert page._font_file("Größe", bold=False).endswith("DejaVuSans.ttf")
+
+
+def test_a_font_of_boxes_is_no_font_for_letters(fonts):
+    fonts(**{"Last Resort": frozenset(range(0x30000))})
     assert printable("a山b") == "a□b"
 
 
