@@ -50,6 +50,8 @@ class CloudedSky:
         Even light of the dome besides, while the sun is up [W/m2].
     left_out : float
         Energy measured in intervals without sun, in no table [MJ m-2].
+    strict : bool
+        Refuse moments that the series does not cover; else their light is NaN.
     """
 
     air: Air
@@ -59,6 +61,7 @@ class CloudedSky:
     beam_index: NDArray[np.float64]
     rest: NDArray[np.float64]
     left_out: float
+    strict: bool = True
 
     def over(self, sun: SunSeries, height: float) -> Irradiance:
         """Light at a height [m]: both indices times the clear sky's light there.
@@ -75,7 +78,7 @@ class CloudedSky:
         place = np.clip(place, 0, self.start.size - 1)
         index = np.where(outside, np.nan, self.global_index[place])
         unknown = lit & np.isnan(index)
-        if unknown.any():
+        if self.strict and unknown.any():
             raise InputError(_no_light(sun.time[unknown], sun.step_seconds))
         return _thinned(sun, clear, index, self.beam_index[place], self.rest[place])
 
