@@ -42,6 +42,8 @@ class Station:
         By name in QUANTITIES; NaN where missing.
     flags : dict of ndarray of uint16, shape (n,)
         Bits that the quality check set, by quantity (see `terrasol.sky.quality`).
+    notes : tuple of str
+        What was taken for granted or found on reading, for people.
 
     Raises
     ------
@@ -57,6 +59,7 @@ class Station:
     seconds: int
     values: dict[str, NDArray[np.float64]]
     flags: dict[str, NDArray[np.uint16]] = field(default_factory=dict)
+    notes: tuple[str, ...] = ()
 
     def __post_init__(self) -> None:
         """Refuse series that are no even grid."""

@@ -1,0 +1,167 @@
+"""From a station's raw series to a sky that can be summed, and what was found on the way."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any, Final
+
+import numpy as np
+from numpy.typing import NDArray
+
+from terrasol.errors import InputError
+from terrasol.sky.clear import Air
+from terrasol.sky.cloud import CloudedSky, clouded_sky
+from terrasol.sky.gaps import LONGEST_HOURS, Gap, fill_gaps
+from terrasol.sky.period import Period, parse_period
+from terrasol.sky.quality import check_quality, usable
+from terrasol.sky.station import Station
+from terrasol.sky.sun import sun_path, sun_series
+from terrasol.sky.timing import check_times
+
+TRUSTED: Final = ("consistent", "unknown")
+"""Verdicts on the clock that call for no warning."""
+
+NAMED: Final = 3
+"""Gaps named in a message."""
+
+
+@dataclass(frozen=True, eq=False)
+class MeasuredSky:
+    """The sky of a station, ready to be summed.
+
+    Attributes
+    ----------
+    sky : CloudedSky
+    station : Station
+        Without what cannot be true, short gaps filled.
+    period : Period
+        What was asked for, or all whole days of the series.
+    report : dict
+        Quality, gaps and clock, as plain numbers and text.
+    warnings : tuple of str
+        What a careful reader should know.
+    """
+
+    sky: CloudedSky
+    station: Station
+    period: Period
+    report: dict[str, Any]
+    warnings: tuple[str, ...]
+
+
+def measured_sky(
+    station: Station,
+    air: Air,
+    period: Period | None = None,
+    *,
+    decomposition: str = "dirint",
+    fill_hours: float = LONGEST_HOURS,
+    step_seconds: float = 60.0,
+    horizon: NDArray[np.float64] | None = None,
+) -> MeasuredSky:
+    """Check a station's series, fill its short gaps, and read the sky from it.
+
+    Parameters
+    ----------
+    station : Station
+        As read.
+    air : Air
+        The clear air behind the clouds.
+    period : Period, optional
+        What will be summed; by default all days whose sun the series covers.
+    decomposition : {'erbs', 'disc', 'dirint'}
+        See `clouded_sky`.
+    fill_hours : float
+        Hours of sun that a gap may have and be filled.
+    step_seconds : float
+        Time step of the sun.
+    horizon : ndarray, shape (azimuths,), optional
+        Terrain around the station, for the check of its clock only [degree].
+
+    Returns
+    -------
+    MeasuredSky
+
+    Raises
+    ------
+    SettingError
+        A setting out of its range.
+    InputError
+        A period that the series does not cover, named gap by gap.
+    """
+    quality = check_quality(station)
+    sound, changed = usable(station, quality)
+    filled = fill_gaps(sound, air, fill_hours)
+    period = period or covered_days(filled.station, step_seconds)
+    _refuse_gaps(filled.station, filled.gaps, period)
+    sky = clouded_sky(filled.station, air, period, decomposition, step_seconds)
+    timing = check_times(station, air, horizon)
+    warnings = list(station.notes)
+    impossible = sum(counts["impossible"] for counts in changed.values())
+    if impossible:
+        warnings.append(f"{station.name}: {impossible} values that cannot be true count as missing")
+    if any(filled.count.values()):
+        told = ", ".join(f"{count} of {name}" for name, count in filled.count.items() if count)
+        warnings.append(f"{station.name}: filled by clear-sky index: {told}")
+    if timing.verdict not in TRUSTED:
+        warnings.append(f"{station.name}: {timing.words}; nothing was changed")
+    report = {
+        "name": station.name,
+        "latitude": station.latitude,
+        "longitude": station.longitude,
+        "height_m": station.height,
+        "interval_seconds": station.seconds,
+        "decomposition": None if len(_light(station)) > 1 else decomposition,
+        "quality": quality.summary(),
+        "filled": filled.count,
+        "gaps": [str(gap) for gap in filled.gaps],
+        "clock": {"verdict": timing.verdict, "words": timing.words},
+        "light_without_sun_mj_m2": round(sky.left_out, 3),
+    }
+    return MeasuredSky(sky, filled.station, period, report, tuple(warnings))
+
+
+def _light(station: Station) -> list[str]:
+    return [name for name in ("global", "beam", "diffuse") if name in station.values]
+
+
+def covered_days(station: Station, step_seconds: float = 60.0) -> Period:
+    """All days of local mean solar time whose sun a series covers, first to last.
+
+    Raises
+    ------
+    InputError
+        There is none.
+    """
+    shift = np.timedelta64(round(station.longitude * 240.0), "s")
+    end = station.start[-1] + np.timedelta64(station.seconds, "s")
+    days = [(moment + shift).astype("M8[D]") for moment in (station.start[0], end)]
+    one = np.timedelta64(1, "D")
+    for place, step in ((0, one), (1, -one)):
+        if days[0] <= days[1] and not _covered(station, days[place], end, step_seconds):
+            days[place] = days[place] + step
+    if days[0] > days[1]:
+        raise InputError(f"{station.name}: the series covers no whole day")
+    return parse_period(f"{days[0]}/{days[1]}")
+
+
+def _covered(station: Station, day: np.datetime64, end: np.datetime64, step_seconds: float) -> bool:
+    """Whether all of a day's sun lies within the series."""
+    path = sun_path(parse_period(str(day)), station.longitude, step_seconds)
+    sun = sun_series(path, station.latitude, station.height)
+    lit = sun.time[sun.elevation > 0.0]
+    return bool(((lit >= station.start[0]) & (lit < end)).all())
+
+
+def _refuse_gaps(station: Station, gaps: tuple[Gap, ...], period: Period) -> None:
+    """Raise InputError for gaps with sun within a period."""
+    shift = np.timedelta64(round(station.longitude * 240.0), "s")
+    first, last = period.start - shift, period.end - shift
+    missing = [g for g in gaps if g.sun_hours > 0.0 and g.end > first and g.start < last]
+    if missing:
+        named = "; ".join(str(gap) for gap in missing[:NAMED])
+        more = f"; and {len(missing) - NAMED} more" if len(missing) > NAMED else ""
+        raise InputError(
+            f"{station.name}: the series has gaps in the period {period.label}: {named}{more}."
+            " Choose a period without them, or fill longer ones"
+        )
