@@ -14,7 +14,7 @@ class SettingError(TerrasolError, ValueError):
 
 
 class InputError(TerrasolError):
-    """The input cannot be used as an elevation model."""
+    """An input, a raster or a series, cannot be used for what it was given for."""
 
 
 class OutputError(TerrasolError):

@@ -22,6 +22,10 @@ RAYLEIGH_AIRMASS: Final = 14.0
 """Pressure-corrected air mass at which Bird and Hulstrom's Rayleigh transmittance is least
 (0.595). Beyond it their formula turns upward, and passes 1 at an air mass of 29.5."""
 
+TURBIDITY_SPREAD: Final = 0.5
+"""Departure of Linke turbidity from the centre's beyond which a warning is due: at 46 N some 5 %
+of a clear midsummer noon's beam and 12 % of a midwinter one's (own)."""
+
 _RANGES: Final = {
     "aerosol_500nm": (0.0, 5.0, "aerosol depth at 500 nm"),
     "aerosol_380nm": (0.0, 8.0, "aerosol depth at 380 nm"),
@@ -164,6 +168,37 @@ def linke_climatology(latitude: float, longitude: float) -> tuple[float, ...]:
     months = pd.date_range("2025-01-15", periods=12, freq=pd.DateOffset(months=1), tz="UTC")
     values = clearsky.lookup_linke_turbidity(months, latitude, longitude, interp_turbidity=False)
     return tuple(float(v) for v in values)
+
+
+def turbidity_doubts(
+    centre: tuple[float, float], latitude: NDArray[np.float64], longitude: NDArray[np.float64]
+) -> tuple[str, ...]:
+    """Warn where the climatology differs much from that of the centre, which serves everywhere.
+
+    Parameters
+    ----------
+    centre : tuple of float
+        Latitude and longitude [degree].
+    latitude, longitude : ndarray
+        Places spread over the ground.
+
+    Returns
+    -------
+    tuple of str
+        Empty where no month differs by more than TURBIDITY_SPREAD.
+    """
+    here = np.array(linke_climatology(*centre))
+    east = (np.ravel(longitude) + 180.0) % 360.0 - 180.0
+    there = np.array(
+        [linke_climatology(*place) for place in zip(np.ravel(latitude), east, strict=True)]
+    )
+    most = float(np.abs(there - here).max())
+    if most <= TURBIDITY_SPREAD:
+        return ()
+    return (
+        f"the turbidity climatology differs by up to {most:.1f} over this ground in some month, and"
+        " that of its centre is used throughout: give --linke, or cut the raster into pieces",
+    )
 
 
 def clear_sky(sun: SunSeries, air: Air, height: float) -> Irradiance:

@@ -4,7 +4,13 @@ import pvlib
 import pytest
 
 from terrasol.errors import SettingError
-from terrasol.sky.clear import Air, clear_sky, linke_climatology, relative_airmass
+from terrasol.sky.clear import (
+    Air,
+    clear_sky,
+    linke_climatology,
+    relative_airmass,
+    turbidity_doubts,
+)
 from terrasol.sky.period import parse_period
 from terrasol.sky.sun import sun_path, sun_series
 
@@ -177,3 +183,15 @@ def test_impossible_air_is_refused(make, words):
 
 def test_depth_at_380_follows_from_500():
     assert Air.bird(0.1, 1.5).aerosol_380nm == pytest.approx(0.1 * (500 / 380) ** 1.3)
+
+
+def test_a_climatology_that_changes_over_the_ground_is_doubted():
+    def doubts(half):
+        latitude, longitude = np.meshgrid([62.0 - half, 62.0 + half], [15.0 - half, 15.0 + half])
+        return turbidity_doubts((62.0, 15.0), latitude, longitude)
+
+    assert doubts(0.01) == ()
+    assert "differs by up to" in doubts(2.5)[0]
+    assert "--linke" in doubts(2.5)[0]
+    # places beyond the date line are places all the same
+    assert turbidity_doubts((0.0, 179.9), np.array([0.0]), np.array([180.0])) == ()

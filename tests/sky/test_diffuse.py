@@ -4,7 +4,6 @@ import pytest
 
 from terrasol.errors import SettingError
 from terrasol.sky.clear import Air, clear_sky, relative_airmass
-from terrasol.sky.irradiance import Irradiance
 from terrasol.sky.diffuse import (
     MODELS,
     perez_brightening,
@@ -12,6 +11,7 @@ from terrasol.sky.diffuse import (
     plane_ground,
     split_diffuse,
 )
+from terrasol.sky.irradiance import Irradiance
 from terrasol.sky.period import parse_period
 from terrasol.sky.sun import SunSeries, incidence_cosine, sun_path, sun_series
 

@@ -1,0 +1,266 @@
+"""Options on what shines: the clear air, and what clouds leave. Nothing is slow to import."""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Callable
+from dataclasses import dataclass, field, fields
+from functools import wraps
+from typing import TYPE_CHECKING, Any
+
+import click
+
+from terrasol.cli.options import Numbers
+from terrasol.constants import SOLAR_CONSTANT
+
+if TYPE_CHECKING:
+    from terrasol.ground.frame import Frame
+    from terrasol.sky.clear import Air
+    from terrasol.sky.irradiance import Sky
+    from terrasol.sky.period import Period
+
+PAPERS = {"ineichen": "Ineichen and Perez 2002", "bird": "Bird and Hulstrom 1981"}
+"""Clear-sky models, by the name of the option's choice."""
+
+BIRD_FIELDS = (
+    "aerosol_500nm", "aerosol_380nm", "water_cm", "ozone_atm_cm", "asymmetry", "ground_albedo",
+)  # fmt: skip
+"""What of the air Bird and Hulstrom's model reads."""
+
+CLIMATOLOGY = "climatology"
+TURBIDITY_FOR_NOW = 3.0
+"""Stands for the climatology's turbidity while the other settings are checked, before the
+raster says where it lies."""
+
+
+@dataclass(frozen=True)
+class Settled:
+    """A sky as asked for, ready for a job.
+
+    Parameters
+    ----------
+    sky : Sky or None
+        None for the clear air's own.
+    period : Period
+        What is summed.
+    record : dict
+        Settings and findings, ready for JSON.
+    warnings : tuple of str
+        What a careful reader should know.
+    inputs : tuple of str
+        Files that were read.
+    """
+
+    sky: Sky | None
+    period: Period
+    record: dict[str, Any] = field(default_factory=dict)
+    warnings: tuple[str, ...] = ()
+    inputs: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True)
+class AskedSky:
+    """What a command is told of the sky."""
+
+    model: str
+    linke: Any
+    aerosol: float | None
+    aerosol_380: float | None
+    water: float | None
+    ozone: float | None
+    solar_constant: float
+    station: str | None
+    station_settings: str | None
+    decomposition: str | None
+    fill_hours: float | None
+    clear_sky_index: Any
+
+    def air(self, albedo: tuple[float, ...]) -> Air:
+        """The air that was asked for; see `placed` for the climatology's."""
+        from terrasol.sky.clear import Air
+
+        self._check()
+        if self.model == "ineichen":
+            linke = TURBIDITY_FOR_NOW if self.linke == CLIMATOLOGY else self.linke
+            return Air.ineichen(linke, self.solar_constant)
+        assert self.aerosol is not None
+        assert self.water is not None
+        ozone = {} if self.ozone is None else {"ozone_atm_cm": self.ozone}
+        return Air.bird(
+            self.aerosol,
+            self.water,
+            aerosol_380nm=self.aerosol_380,
+            ground_albedo=sum(albedo) / len(albedo),
+            solar_constant=self.solar_constant,
+            **ozone,
+        )
+
+    def placed(self, air: Air, frame: Frame) -> Air:
+        """The same, with the raster's own turbidity where the climatology is asked for."""
+        from terrasol.sky.clear import Air, linke_climatology
+
+        if self.model != "ineichen" or self.linke != CLIMATOLOGY:
+            return air
+        return Air.ineichen(linke_climatology(*frame.centre), self.solar_constant)
+
+    def doubts(self, frame: Frame) -> tuple[str, ...]:
+        """Warnings on the climatology, where that is used."""
+        import numpy as np
+
+        from terrasol.sky.clear import turbidity_doubts
+
+        if self.model != "ineichen" or self.linke != CLIMATOLOGY:
+            return ()
+        spread = np.linspace(0, 1, 3)
+        rows, columns = (
+            np.round(spread * (size - 1)).astype(int) for size in frame.latitude.shape
+        )
+        nodes = np.ix_(rows, columns)
+        return turbidity_doubts(frame.centre, frame.latitude[nodes], frame.longitude[nodes])
+
+    def settle(self, air: Air, period: str | None, step_seconds: float) -> Settled:
+        """Read the station, or take the indices; the sky is clear if neither was given."""
+        from terrasol.light.irradiation import twelve
+        from terrasol.sky.cloud import MonthlySky
+        from terrasol.sky.period import parse_period
+
+        if self.clear_sky_index is not None:
+            sky = MonthlySky(air, twelve(self.clear_sky_index, "the clear-sky index"))
+            return Settled(sky, parse_period(period), {"clear_sky_index": list(sky.index)})
+        if self.station is None:
+            return Settled(None, parse_period(period))
+        from terrasol.files.provenance import sha256
+        from terrasol.files.tables import read_station
+        from terrasol.sky.gaps import LONGEST_HOURS
+        from terrasol.sky.measured import measured_sky
+
+        found = measured_sky(
+            read_station(self.station, self.station_settings),
+            air,
+            None if period is None else parse_period(period),
+            decomposition=self.decomposition or "dirint",
+            fill_hours=LONGEST_HOURS if self.fill_hours is None else self.fill_hours,
+            step_seconds=step_seconds,
+        )
+        told = {"file": os.path.abspath(self.station), "sha256": sha256(self.station)}
+        inputs = [self.station, *([self.station_settings] if self.station_settings else [])]
+        record = {"station": told | found.report}
+        return Settled(found.sky, found.period, record, found.warnings, tuple(inputs))
+
+    def _check(self) -> None:
+        """Refuse options that do not go together."""
+        if self.model == "ineichen":
+            for name in ("aerosol", "aerosol_380", "water", "ozone"):
+                if getattr(self, name) is not None:
+                    option = name.replace("_", "-")
+                    raise click.UsageError(
+                        f"--{option} belongs to --air bird, which is not asked for"
+                    )
+        elif self.linke != CLIMATOLOGY:
+            raise click.UsageError("--linke belongs to --air ineichen, but --air bird is asked for")
+        else:
+            for name in ("aerosol", "water"):
+                if getattr(self, name) is None:
+                    raise click.UsageError(f"--air bird needs --{name}")
+        if self.station is not None and self.clear_sky_index is not None:
+            raise click.UsageError("--station and --clear-sky-index exclude each other")
+        if self.station is None:
+            for name in ("station_settings", "decomposition", "fill_hours"):
+                if getattr(self, name) is not None:
+                    option = name.replace("_", "-")
+                    raise click.UsageError(f"--{option} belongs to --station, which is not given")
+
+
+def air_record(air: Air) -> dict[str, Any]:
+    """An air as plain text and numbers."""
+    of_model = ("linke",) if air.model == "ineichen" else BIRD_FIELDS
+    record = {name: getattr(air, name) for name in ("model", "solar_constant", *of_model)}
+    if air.linke is not None:
+        record["linke"] = shortest(air.linke)
+    return record
+
+
+def shortest(months: tuple[float, ...]) -> float | tuple[float, ...]:
+    """One number for twelve months that do not differ."""
+    return months[0] if len(set(months)) == 1 else months
+
+
+_AIR = (
+    click.option(
+        "--air",
+        "model",
+        type=click.Choice(list(PAPERS)),
+        default="ineichen",
+        show_default=True,
+        help=f"Clear-sky model: {', or '.join(PAPERS.values())}.",
+    ),
+    click.option(
+        "--linke",
+        type=Numbers(CLIMATOLOGY),
+        default=CLIMATOLOGY,
+        show_default=True,
+        help="Linke turbidity (ineichen).",
+    ),
+    click.option("--aerosol", metavar="DEPTH", type=float, help="Aerosol depth at 500 nm (bird)."),
+    click.option(
+        "--aerosol-380",
+        metavar="DEPTH",
+        type=float,
+        help="Aerosol depth at 380 nm (bird). [default: from 500 nm after Angstrom]",
+    ),
+    click.option("--water", metavar="CM", type=float, help="Precipitable water, cm (bird)."),
+    click.option(
+        "--ozone", metavar="ATM-CM", type=float, help="Ozone, atm-cm (bird). [default: 0.3]"
+    ),
+    click.option(
+        "--solar-constant",
+        metavar="W/M2",
+        type=float,
+        default=SOLAR_CONSTANT,
+        show_default=True,
+        help="Total solar irradiance at one astronomical unit.",
+    ),
+)
+_CLOUDS = (
+    click.option(
+        "--station",
+        metavar="SERIES",
+        help="Measured light, CSV or NetCDF, with SERIES.toml beside it that says what the columns"
+        " are: the sky is then the measured one, for all days of the series unless --period says"
+        " otherwise.",
+    ),
+    click.option(
+        "--station-settings",
+        metavar="TOML",
+        help="What the columns of SERIES are. [default: SERIES.toml]",
+    ),
+    click.option(
+        "--decomposition",
+        type=click.Choice(["erbs", "disc", "dirint"]),
+        help="Model that parts the beam off where only global was measured. [default: dirint]",
+    ),
+    click.option(
+        "--fill-hours",
+        metavar="H",
+        type=float,
+        help="Longest gap of SERIES to fill, in hours of sun. [default: 3]",
+    ),
+    click.option(
+        "--clear-sky-index",
+        type=Numbers(),
+        help="Monthly mean of global light by that of a clear sky: clouds without a station.",
+    ),
+)
+
+
+def sky_options(command: Callable[..., None]) -> Callable[..., None]:
+    """Give a command these options, as one `AskedSky` by the name `asked`."""
+
+    @wraps(command)
+    def gathered(*arguments: Any, **given: Any) -> None:
+        asked = AskedSky(**{each.name: given.pop(each.name) for each in fields(AskedSky)})
+        command(*arguments, asked=asked, **given)
+
+    for decorate in reversed((*_AIR, *_CLOUDS)):
+        gathered = decorate(gathered)
+    return gathered
