@@ -6,7 +6,7 @@ import threading
 from collections.abc import Sequence
 from dataclasses import dataclass, field
 from numbers import Integral, Real
-from typing import Final
+from typing import Any, Final
 
 import numpy as np
 from numpy.typing import NDArray
@@ -75,6 +75,11 @@ class LightSettings:
         Terrestrial refraction coefficient k of lines of sight.
     sky : Sky, optional
         What shines: a measured sky, say; by default the clear air's.
+    albedo_map : ndarray of float32, shape (1 or 12, rows, columns), optional
+        Albedo of each cell, for the year or January to December; where it is NaN, `albedo`
+        counts.
+    photons_per_joule : float, optional
+        Photosynthetic photons in a joule of global light [umol J-1]; None for no such sums.
 
     Raises
     ------
@@ -93,6 +98,8 @@ class LightSettings:
     monthly_parts: bool = False
     refraction: float = REFRACTION_COEFFICIENT
     sky: Sky | None = None
+    albedo_map: NDArray[np.float32] | None = None
+    photons_per_joule: float | None = None
 
     def __post_init__(self) -> None:
         """Refuse what makes no sense."""
@@ -108,6 +115,11 @@ class LightSettings:
         ):
             if value not in known:
                 raise SettingError(f"{name} '{value}' is not one of: {', '.join(known)}")
+        if self.photons_per_joule is not None and not 0.5 <= self.photons_per_joule <= 5.0:
+            raise SettingError(
+                "photosynthetic photons must be 0.5 to 5 umol a joule of global light; got"
+                f" {self.photons_per_joule:g}"
+            )
         check_azimuths(self.azimuths)
         check_refraction(self.refraction)
         steps_per_day(self.step_seconds)
@@ -116,6 +128,25 @@ class LightSettings:
     def month_albedo(self) -> NDArray[np.float64]:
         """Albedo of each month of the period."""
         return np.array([self.albedo[month - 1] for _, month in self.period.months])
+
+    def ground_albedo(self, rows: slice, columns: slice) -> NDArray[np.float64]:
+        """Albedo of each month of the period, at some cells if it is mapped.
+
+        Shape (months,), or (months, rows, columns).
+        """
+        plain = self.month_albedo
+        if self.albedo_map is None:
+            return plain
+        layers = self.albedo_map[:, rows, columns].astype(np.float64)
+        which = [(month - 1) % layers.shape[0] for _, month in self.period.months]
+        return np.where(np.isnan(layers[which]), plain[:, None, None], layers[which])
+
+    @property
+    def photons(self) -> NDArray[np.float64] | None:
+        """What turns each month's global sum into mol m-2 d-1, shape (months,)."""
+        if self.photons_per_joule is None:
+            return None
+        return self.photons_per_joule / UNITS[self.unit] / np.array(self.period.month_days)
 
 
 def check_azimuths(azimuths: int) -> None:
@@ -294,13 +325,17 @@ class Surroundings:
     Parameters
     ----------
     received : ndarray of float32, shape (months, node rows, node columns)
-        Mean irradiation of the terrain around, bounces included [MJ m-2].
+        Mean irradiation of the terrain around, bounces included [MJ m-2]; where the albedo is
+        mapped, what it sends back.
     stride : int
         Cells between nodes; the first node lies at cell `stride // 2`.
+    albedo : ndarray of float32, shape (months,)
+        Share of `received` that is sent back: the albedo, or 1 where that is mapped.
     """
 
     received: NDArray[np.float32]
     stride: int
+    albedo: NDArray[np.float32]
 
     @classmethod
     def of(
@@ -313,7 +348,8 @@ class Surroundings:
         """Spread samples over the surroundings, and count the bounces between slopes.
 
         The terrain around sends back albedo times all that it gets, part of which is again
-        reflected light: received = from the sky / (1 - albedo x mean terrain view).
+        reflected light: received = from the sky / (1 - albedo x mean terrain view), or, with an
+        albedo a for each cell, sent back = <a x from the sky> / (1 - <a x terrain view>).
 
         Parameters
         ----------
@@ -324,24 +360,38 @@ class Surroundings:
             Cells between samples.
         cell_size : tuple of float
             Of a column step and a row step [m].
-        albedo : ndarray, shape (months,)
-            Of the ground.
+        albedo : ndarray, shape (months,) or (months, node rows, node columns)
+            Of the ground, where the samples are.
         """
         sigma = [SURROUNDINGS_SCALE / (stride * size) for size in cell_size[::-1]]
         known = np.isfinite(samples[-1])
         weight = gaussian_filter(known.astype(np.float64), sigma, mode="constant")
         weight = np.where(weight > 1e-12, weight, np.inf)
-        mean = np.empty_like(samples)
-        for i, layer in enumerate(samples):
+
+        def spread(layer: NDArray[Any]) -> NDArray[np.float64]:
             filled = np.where(known, layer, 0.0).astype(np.float64)
-            mean[i] = gaussian_filter(filled, sigma, mode="constant") / weight
-        received = mean[:-1] / (1.0 - albedo[:, None, None] * mean[-1])
-        return cls(np.ascontiguousarray(received, np.float32), stride)
+            return gaussian_filter(filled, sigma, mode="constant") / weight
+
+        if albedo.ndim == 1:
+            view = spread(samples[-1])
+            received = np.stack(
+                [spread(s) / (1.0 - a * view) for s, a in zip(samples[:-1], albedo, strict=True)]
+            )
+            shares = albedo
+        else:
+            received = np.stack(
+                [
+                    spread(a * s) / (1.0 - spread(a * samples[-1]))
+                    for s, a in zip(samples[:-1], albedo, strict=True)
+                ]
+            )
+            shares = np.ones(len(albedo))
+        return cls(np.ascontiguousarray(received, np.float32), stride, shares.astype(np.float32))
 
     @classmethod
     def none(cls, months: int) -> Surroundings:
         """No light from the terrain."""
-        return cls(np.zeros((months, 1, 1), np.float32), 1)
+        return cls(np.zeros((months, 1, 1), np.float32), 1, np.zeros(months, np.float32))
 
     def node(self, row: int, column: int) -> NDArray[np.float64]:
         """Where a cell lies, in node units."""
@@ -532,7 +582,7 @@ def _light(
         strip.direct(mixed), count, strip.heights, strip.datum, mixed.table.heights,
         mixed.table.even, mixed.even_change, strip.tilt(mixed), *sky,
         surroundings.received, surroundings.node(*place), surroundings.stride,
-        settings.month_albedo.astype(np.float32), factor,
+        surroundings.albedo, factor,
         light.year, light.months, light.month_parts,
     )  # fmt: skip
     return light

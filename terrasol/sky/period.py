@@ -56,6 +56,18 @@ class Period:
         """Number of days in the period."""
         return int((self.end - self.start) // np.timedelta64(1, "D"))
 
+    @property
+    def month_days(self) -> tuple[int, ...]:
+        """Days of each of its months that lie in the period.
+
+        Examples
+        --------
+        >>> parse_period("2024-01-30/2024-03-02").month_days
+        (2, 29, 2)
+        """
+        days = np.arange(self.start, self.end, np.timedelta64(1, "D")).astype("M8[M]")
+        return tuple(int(count) for count in np.unique(days, return_counts=True)[1])
+
 
 def parse_period(text: str | int | None) -> Period:
     """Read a period as a person writes it.

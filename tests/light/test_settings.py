@@ -152,7 +152,7 @@ def test_steps_that_do_not_tile_a_day_are_refused(step):
 
 
 def test_place_among_the_nodes_of_the_surroundings():
-    around = Surroundings(np.zeros((12, 5, 5), np.float32), 8)
+    around = Surroundings(np.zeros((12, 5, 5), np.float32), 8, np.full(12, 0.2, np.float32))
     np.testing.assert_allclose(around.node(4, 12), (0.0, 1.0))
     np.testing.assert_allclose(around.node(0, 256), (-0.5, 31.5))
     none = Surroundings.none(3)
@@ -198,3 +198,47 @@ def test_surroundings_reach_as_far_along_rows_as_along_columns():
     got = Surroundings.of(samples, 5, (100.0, 50.0), np.array([0.0])).received[0]
     assert got[24, 20] == pytest.approx(got[20, 22], rel=0.05)
     assert got[24, 20] == pytest.approx(got[20, 20] * np.exp(-0.5), rel=0.05)
+
+
+def test_surroundings_send_back_by_each_cells_own_albedo():
+    dice = np.random.default_rng(4)
+    samples = dice.uniform(100.0, 200.0, (3, 6, 7)).astype(np.float32)
+    samples[-1] = 0.2  # terrain view
+    even = Surroundings.of(samples, 4, (50.0, 50.0), np.array([0.3, 0.6]))
+    same = Surroundings.of(
+        samples, 4, (50.0, 50.0), np.array([0.3, 0.6])[:, None, None] * np.ones((2, 6, 7))
+    )
+    # one albedo everywhere: what is sent back does not depend on how it was said
+    np.testing.assert_allclose(
+        even.albedo[:, None, None] * even.received, same.albedo[:, None, None] * same.received,
+        rtol=1e-6,
+    )  # fmt: skip
+    snow = np.full((2, 6, 7), 0.2)
+    snow[:, :, 4:] = 0.8
+    patchy = Surroundings.of(samples, 4, (50.0, 50.0), snow)
+    sent = patchy.received[0]
+    assert sent[:, -1].min() > sent[:, 0].max()  # nearer to the snow is brighter
+
+
+def test_a_map_of_albedo_gives_way_to_the_plain_one_where_void():
+    albedo = np.full((1, 4, 5), 0.5, np.float32)
+    albedo[0, 0, 0] = np.nan
+    mapped = settings("2025-03/2025-04", albedo=(0.1,) * 12, albedo_map=albedo)
+    found = mapped.ground_albedo(slice(0, 2), slice(0, 3))
+    assert found.shape == (2, 2, 3)
+    assert found[0, 0, 0] == pytest.approx(0.1)
+    assert found[1, 1, 2] == pytest.approx(0.5)
+    monthly = np.arange(12, dtype=np.float32)[:, None, None] / 20 * np.ones((12, 4, 5), np.float32)
+    found = settings("2025-11/2026-01", albedo_map=monthly).ground_albedo(slice(0, 4), slice(0, 5))
+    np.testing.assert_allclose(found[:, 0, 0], [0.5, 0.55, 0.0])
+
+
+def test_photosynthetic_light_is_a_mean_day_of_each_month():
+    s = settings("2025-04/2025-05", photons_per_joule=2.3)
+    # 600 MJ m-2 in 30 days are 20 MJ m-2 a day; 2.3 umol a joule make 46 mol of them
+    assert 600.0 * s.photons[0] == pytest.approx(46.0)
+    in_kwh = settings("2025-04", photons_per_joule=2.3, unit="kW h m-2")
+    assert 600.0 / 3.6 * in_kwh.photons[0] == pytest.approx(46.0)
+    assert settings("2025-04").photons is None
+    with pytest.raises(SettingError, match="photons"):
+        settings("2025-04", photons_per_joule=23.0)
