@@ -26,6 +26,10 @@ HIGHEST_INDEX: Final = 1.6
 sun reach some 1.5 for minutes; common practice, no source). What was measured beyond, which
 happens where the clear sky is next to nothing, counts as even light of the dome."""
 
+LEAST_INDEX: Final = 0.05
+MOST_INDEX: Final = 1.2
+"""Monthly clear-sky indices that are taken; no climate leaves these (judgement)."""
+
 MONTHLY_KT_RANGE: Final = (0.3, 0.8)
 """Clearness for which Erbs et al. (1982) fitted their monthly diffuse fraction."""
 
@@ -112,9 +116,10 @@ class MonthlySky:
 
     def __post_init__(self) -> None:
         """Refuse what is no index."""
-        if len(self.index) != 12 or not all(0.05 <= k <= 1.2 for k in self.index):
+        if len(self.index) != 12 or not all(LEAST_INDEX <= k <= MOST_INDEX for k in self.index):
             raise SettingError(
-                "the clear-sky index must be twelve numbers from 0.05 to 1.2, January first"
+                f"the clear-sky index must be twelve numbers from {LEAST_INDEX:g} to"
+                f" {MOST_INDEX:g}, January first"
             )
 
     def over(self, sun: SunSeries, height: float) -> Irradiance:
