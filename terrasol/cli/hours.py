@@ -1,0 +1,167 @@
+"""`terrasol hours`: hours of sun for a period and its months, first and last sun of days."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from typing import TYPE_CHECKING, Any
+
+import click
+
+from terrasol.cli.ground_options import Around, ground_options
+from terrasol.cli.options import Common, common_options
+from terrasol.cli.sky_options import AskedSky, air_record, sky_options
+
+if TYPE_CHECKING:
+    import numpy as np
+    from numpy.typing import NDArray
+
+    from terrasol.engine.job import Plan, Summary
+    from terrasol.light.hours import HoursSettings
+    from terrasol.sky.clear import Air
+
+COLOURS = "cividis"
+"""Of the overview map: even to the eye and to colour-blind eyes, and not those of energy."""
+
+
+@click.command(short_help="Hours of direct sun, and the first and last sun of chosen days.")
+@click.option(
+    "--period",
+    metavar="TEXT",
+    help="A year (2025), month (2025-04), day (2025-04-01), or a first and a last one:"
+    " 2025-04-01/2025-10-31. [default: a typical year]",
+)
+@click.option(
+    "--days",
+    metavar="DATES|none",
+    help="Days whose first and last sun is written, joined by commas; a month or a range stands"
+    " for its days. [default: the 21st of each month]",
+)
+@click.option(
+    "--clock",
+    metavar="solar|+HH:MM|ZONE",
+    default="solar",
+    show_default=True,
+    help="Time of day of first and last sun: true solar time, an offset from UTC, or a time zone"
+    " such as Europe/Zurich.",
+)
+@click.option(
+    "--step-seconds",
+    metavar="S",
+    type=float,
+    default=60.0,
+    show_default=True,
+    help="Time step of the sun for the sums; divides a day.",
+)
+@sky_options
+@ground_options
+@common_options
+def hours(common: Common, around: Around, asked: AskedSky, **given: Any) -> None:
+    """Hours of direct sun on every cell of the elevation raster DEM, under a clear sky.
+
+    Shade of the terrain and of the cell's own slope counts. Writes sun_hours_year.tif and
+    bright_hours_year.tif (..._period.tif unless the period is one whole year),
+    sun_hours_months.tif, bright_hours_months.tif, for the chosen days first_sun.tif,
+    last_sun.tif, sun_hours_days.tif and sun_interruptions.tif, overview.png and run.json into
+    OUT_DIR. Sunshine is bright where the beam passes 120 W/m2 (WMO).
+    """
+    from terrasol.cli.run import Job, read, run
+    from terrasol.engine.hours import plan_hours
+    from terrasol.files.rasters import naming
+    from terrasol.ground.frame import make_frame
+    from terrasol.light.days import parse_days
+
+    settings = _settings(common, asked, given)
+    ground = read(common)
+    elevation = ground.elevation
+    with naming(common.dem):
+        frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
+    air = asked.placed(asked.air((0.2,)), frame)
+    settled = asked.settle(air, given["period"], settings.step_seconds)
+    days = parse_days(given["days"], settled.period)
+    settings = replace(settings, sky=settled.sky or air, period=settled.period, days=days)
+    scene = around.scene(elevation, frame)
+    with naming(common.dem):
+        plan = plan_hours(elevation, settings, scene)
+    record = _record(settings, air) | settled.record | around.record()
+    inputs = (*around.inputs, *settled.inputs)
+    run(Job("hours", common, ground, plan, record, _draw, inputs, settled.warnings))
+
+
+AZIMUTHS = next(parameter for parameter in hours.params if parameter.name == "azimuths")
+AZIMUTHS.default = 256  # as in the library, four times as many as for energy
+
+
+def _settings(common: Common, asked: AskedSky, given: dict[str, Any]) -> HoursSettings:
+    """Everything that can be settled before the raster is read."""
+    from terrasol.light.days import parse_clock, parse_days
+    from terrasol.light.hours import HoursSettings
+    from terrasol.sky.period import parse_period
+
+    period = parse_period(given["period"])
+    return HoursSettings(
+        period=period,
+        sky=asked.air((0.2,)),
+        days=parse_days(given["days"], period),
+        clock=parse_clock(given["clock"]),
+        azimuths=common.azimuths,
+        step_seconds=given["step_seconds"],
+        refraction=common.refraction,
+    )
+
+
+def _record(settings: HoursSettings, air: Air) -> dict[str, Any]:
+    """Settings as plain text and numbers."""
+    from terrasol.light.days import UPPER_LIMB
+    from terrasol.light.hours import BRIGHT_BEAM
+
+    period = settings.period
+    return {
+        "period": {
+            "label": period.label,
+            "start": str(period.start),
+            "end": str(period.end),
+            "clock": "local mean solar time",
+        },
+        "air": air_record(air),
+        "days": [str(day) for day in settings.days],
+        "clock": settings.clock.name,
+        "azimuths": settings.azimuths,
+        "step_seconds": settings.step_seconds,
+        "refraction": settings.refraction,
+        "sun_counts_above_centre_deg": UPPER_LIMB,
+        "bright_above_w_m2": BRIGHT_BEAM,
+    }
+
+
+def _draw(plan: Plan, hours: NDArray[np.float32], summary: Summary, title: str) -> bytes:
+    """The overview map of a finished run."""
+    from terrasol.engine.hours import HoursPlan
+    from terrasol.engine.outputs import month_labels
+    from terrasol.show.key import number
+    from terrasol.show.maps import overview_png
+
+    assert isinstance(plan, HoursPlan)
+    period = plan.hours.period
+    whole = next(layer for layer in plan.layers if layer.name.startswith("sun_hours_"))
+    means = summary.numbers.get("sun_hours_months", {})
+    months = zip(period.months, month_labels(plan.hours), strict=True)
+    level = summary.numbers["level_ground_sun_hours"]
+    return overview_png(
+        plan.elevation,
+        hours,
+        title=title,
+        subtitle=f"Hours of direct sun with terrain shade, {period.label}",
+        quantity="Hours of direct sun",
+        unit="h",
+        notes=(
+            "The sun counts while its upper limb is in view; no clouds, real skies give less.",
+            f"Open level ground here: {number(level, 1.0)} h.",
+            "Shade of all that stands in the raster, and of nothing beyond it."
+            if plan.scene.far is None
+            else "Shade of all that stands in the raster and in the far model around it.",
+        ),
+        mean=summary.numbers.get(whole.name, {}).get(whole.bands[0], {}).get("mean"),
+        monthly_means={month: means[label]["mean"] for month, label in months if label in means},
+        frame=plan.frame,
+        colour_map=COLOURS,
+    )

@@ -1,0 +1,344 @@
+"""`terrasol series`: the sun on every cell hour by hour, or day by day."""
+
+from __future__ import annotations
+
+import json
+import os
+import shutil
+import time
+from dataclasses import replace
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import click
+
+from terrasol.cli.ground_options import Around, ground_options
+from terrasol.cli.irradiation import irradiation
+from terrasol.cli.options import Common, Name, common_options
+from terrasol.cli.sky_options import AskedSky, sky_options
+from terrasol.cli.streams import give, say
+
+if TYPE_CHECKING:
+    from terrasol.cli.run import Ground
+    from terrasol.engine.series import SeriesPlan
+    from terrasol.light.series import SeriesSettings
+
+STEPS = ("1h", "1d")
+QUANTITIES = ("global", "beam", "diffuse", "reflected", "net")
+
+AS_IRRADIATION = ("albedo", "diffuse", "basis")
+"""Options that are those of `terrasol irradiation`."""
+
+NOT_HERE = ("horizon_gap", "highest", "clear_sky_index")
+"""Shared options that make no sense for a series: kept out of the help, and refused."""
+
+
+STATION_SECONDS = 60.0
+"""Time step of the sun by which a station's sky is told from its series."""
+
+
+class Words(click.ParamType):
+    """Some of a list of words, joined by commas."""
+
+    name = "words"
+
+    def __init__(self, known: tuple[str, ...]) -> None:
+        self.known = known
+
+    def get_metavar(self, param: click.Parameter, ctx: click.Context) -> str:
+        """Name in the help."""
+        return "WORDS"
+
+    def convert(self, value: Any, param: Any, ctx: Any) -> Any:
+        """Read the text."""
+        if not isinstance(value, str):
+            return value
+        words = tuple(word.strip() for word in value.split(","))
+        if len(set(words)) < len(words) or not set(words) <= set(self.known):
+            known = ", ".join(self.known)
+            self.fail(f"'{value}' is not some of these, joined by commas: {known}", param, ctx)
+        return words
+
+
+@click.command(short_help="The sun hour by hour or day by day, as a stack of maps.")
+@click.option(
+    "--period",
+    metavar="TEXT",
+    help="A year (2025), month (2025-04), day (2025-04-01), a first and a last one"
+    " (2025-04-01/2025-10-31), or 'typical'. [default: all days of --station, if given]",
+)
+@click.option(
+    "--step",
+    type=click.Choice(STEPS),
+    default="1h",
+    show_default=True,
+    help="Full hours of UTC (mean, W m-2), or days (sum, MJ m-2).",
+)
+@click.option(
+    "--quantities",
+    type=Words(QUANTITIES),
+    default="global",
+    show_default=True,
+    help=f"Some of {', '.join(QUANTITIES)}, joined by commas; net is what the ground absorbs.",
+)
+@click.option(
+    "--substep-seconds",
+    metavar="S",
+    type=float,
+    default=300.0,
+    show_default=True,
+    help="Spacing of the moments that make a step; divides an hour.",
+)
+@click.option(
+    "--horizon-store",
+    metavar="DIR",
+    type=Name(),
+    help="Folder in which horizons are kept, and found again for the same ground."
+    " [default: TERRASOL_HORIZON_STORE, else the user's cache folder]",
+)
+@click.option("--no-horizon-store", is_flag=True, help="Keep no horizons after the run.")
+@sky_options
+@ground_options
+@common_options
+def series(common: Common, around: Around, asked: AskedSky, **given: Any) -> None:
+    """Irradiance of every cell of the elevation raster DEM, step by step.
+
+    Terrain shade and reflection count. Writes one stack of maps, with dimensions time, y and
+    x: a Zarr store if OUT ends in .zarr, a NetCDF file if it ends in .nc.
+    """
+    from terrasol.cli.run import read
+    from terrasol.engine.series import plan_series
+    from terrasol.engine.series_stack import series_record
+    from terrasol.files.rasters import naming
+    from terrasol.ground.frame import make_frame
+
+    _check(common, around, asked, given)
+    settings = _settings(common, asked, given)
+    ground = read(common)
+    elevation = ground.elevation
+    with naming(common.dem):
+        frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
+    air = asked.placed(asked.air(given["albedo"]), frame)
+    settled = asked.settle(air, given["period"], STATION_SECONDS)
+    settings = replace(settings, sky=settled.sky or air, period=settled.period)
+    scene = around.scene(elevation, frame)
+    with naming(common.dem):
+        plan = plan_series(elevation, settings, scene)
+    record = series_record(settings) | settled.record | around.record()
+    _run(common, ground, plan, _store(given), record, settled.warnings)
+
+
+def _check(common: Common, around: Around, asked: AskedSky, given: dict[str, Any]) -> None:
+    """Refuse options that do not go together, and names that are taken."""
+    from terrasol.files.stacks import check_stack_free, kind_of
+
+    if around.horizon_gap or around.highest is not None:
+        raise click.UsageError("--horizon-gap belongs to terrasol irradiation: no series holds it")
+    if asked.clear_sky_index is not None:
+        raise click.UsageError("--clear-sky-index has no hours and no days: give a --station")
+    if given["period"] is None and asked.station is None:
+        raise click.UsageError("name a --period, or the --station whose days are wanted")
+    if given["horizon_store"] and given["no_horizon_store"]:
+        raise click.UsageError("--horizon-store and --no-horizon-store exclude each other")
+    compression = click.get_current_context().get_parameter_source("compression")
+    named = compression is click.core.ParameterSource.COMMANDLINE
+    if kind_of(common.out_dir) == "NetCDF" and named and common.compression != "deflate":
+        raise click.UsageError("a NetCDF stack is packed with deflate only")
+    for name in (common.dem, *around.inputs, asked.station):
+        both = name and os.path.exists(name) and os.path.exists(common.out_dir)
+        if both and os.path.samefile(common.out_dir, str(name)):
+            raise click.UsageError(f"{name} is an input itself: take another name for OUT")
+    check_stack_free(common.out_dir, common.overwrite)
+
+
+def _rearrange(command: click.Command) -> None:
+    """Add the options shared with `terrasol irradiation`, and say what is different here."""
+    shared = [option for option in irradiation.params if option.name in AS_IRRADIATION]
+    names = [option.name for option in command.params]
+    after = names.index("substep_seconds")
+    command.params[after:after] = shared
+    for option in command.params:
+        if isinstance(option, click.Argument) and option.name == "out_dir":
+            option.metavar = "OUT"
+        elif isinstance(option, click.Option) and option.name == "compression":
+            option.help = "How a Zarr stack is packed; NetCDF takes deflate."
+        elif isinstance(option, click.Option) and option.name == "overwrite":
+            option.help = "Replace a stack that is there."
+        elif isinstance(option, click.Option) and option.name in NOT_HERE:
+            option.hidden = True
+
+
+_rearrange(series)
+
+
+def _settings(common: Common, asked: AskedSky, given: dict[str, Any]) -> SeriesSettings:
+    """Everything that can be settled before the raster is read."""
+    from terrasol.light.irradiation import twelve
+    from terrasol.light.series import SeriesSettings
+    from terrasol.sky.period import parse_period
+
+    return SeriesSettings(
+        period=parse_period(given["period"]),
+        sky=asked.air(given["albedo"]),
+        step=given["step"],
+        quantities=given["quantities"],
+        albedo=twelve(given["albedo"], "albedo"),
+        diffuse=given["diffuse"],
+        azimuths=common.azimuths,
+        basis=given["basis"],
+        substep_seconds=given["substep_seconds"],
+        refraction=common.refraction,
+    )
+
+
+def _store(given: dict[str, Any]) -> Path | None:
+    """Where horizons are kept, if at all."""
+    from terrasol.files.horizons import default_folder
+
+    if given["no_horizon_store"]:
+        return None
+    return Path(given["horizon_store"]) if given["horizon_store"] else default_folder()
+
+
+def _run(
+    common: Common,
+    ground: Ground,
+    plan: SeriesPlan,
+    store: Path | None,
+    settings: dict[str, Any],
+    notes: tuple[str, ...],
+) -> None:
+    """Carry the plan out, or only tell of it."""
+    from terrasol.cli.progress import progress_bar
+    from terrasol.cli.run import _announce_compilation
+    from terrasol.engine.plan import default_threads
+    from terrasol.engine.series_stack import write_series
+    from terrasol.files.provenance import run_record
+    from terrasol.files.rasters import naming
+
+    threads = common.threads or default_threads()
+    if common.dry_run:
+        forecast = _forecast(common, ground, plan, store, threads)
+        forecast["warnings"] += notes
+        give(json.dumps(forecast, indent=2) if common.as_json else _in_lines(forecast))
+        return
+    own = {"vertical_unit": ground.unit, "fill_voids": common.fill_voids}
+    record = run_record("series", common.dem, settings | own)
+    start = time.perf_counter()
+    _announce_compilation(common.quiet)
+    with progress_bar(common.quiet) as move, naming(common.dem):
+        summary = write_series(
+            plan,
+            common.out_dir,
+            record,
+            store=store,
+            compression=common.compression,
+            overwrite=common.overwrite,
+            threads=threads,
+            progress=move,
+        )
+    seconds = {
+        "reading": ground.seconds,
+        **summary.seconds,
+        "whole run": ground.seconds + time.perf_counter() - start,
+    }
+    record |= {
+        "threads": threads,
+        "results": summary.numbers,
+        "warnings": [*summary.warnings, *notes],
+        "seconds": {name: round(value, 2) for name, value in seconds.items()},
+        "files": [str(common.out_dir)],
+        "horizon_store": None if store is None else str(store),
+    }
+    if common.as_json:
+        give(json.dumps(record, indent=2))
+    elif not common.quiet:
+        say(_summary_text(record))
+
+
+def _forecast(
+    common: Common, ground: Ground, plan: SeriesPlan, store: Path | None, threads: int
+) -> dict[str, Any]:
+    """What a run would work on, write and cost."""
+    import numpy as np
+
+    from terrasol.engine.series import stack_variables
+    from terrasol.files.horizons import find_horizons
+
+    elevation = plan.elevation
+    folder = Path(common.out_dir).absolute()
+    while not folder.exists():
+        folder = folder.parent
+    stored = store is not None and find_horizons(store, plan.key) is not None
+    heights = elevation.heights
+    return {
+        "input": common.dem,
+        "crs": elevation.crs.name,
+        "rows": elevation.shape[0],
+        "columns": elevation.shape[1],
+        "void_cells": int(np.isnan(heights).sum()),
+        "heights_m": [round(float(np.nanmin(heights)), 2), round(float(np.nanmax(heights)), 2)],
+        "heights_read_as": ground.unit,
+        "stack": str(common.out_dir),
+        "quantities": {v.name: v.unit for v in stack_variables(plan.settings)},
+        "steps": plan.steps,
+        "first_step_begins": f"{plan.edges[0]}Z",
+        "last_step_ends": f"{plan.edges[-1]}Z",
+        "horizon_store": None if store is None else str(store),
+        "horizon_key": plan.key,
+        "horizons_found": stored,
+        "horizons_mb": round(plan.horizon_bytes / 1e6, 1),
+        "memory_mb": round(plan.memory_bytes(threads) / 1e6),
+        "disk_mb": round(plan.stack_bytes / 1e6, 1),
+        "disk_free_mb": round(shutil.disk_usage(folder).free / 1e6),
+        "threads": threads,
+        "seconds": round(plan.seconds(threads, stored)),
+        "warnings": [*elevation.warnings, *plan.scene.warnings],
+    }
+
+
+def _in_lines(f: dict[str, Any]) -> str:
+    """The forecast for people."""
+    low, high = f["heights_m"]
+    quantities = ", ".join(f"{name} ({unit})" for name, unit in f["quantities"].items())
+    if f["horizons_found"]:
+        horizons = f"found in {f['horizon_store']}"
+    elif f["horizon_store"]:
+        horizons = f"{f['horizons_mb']:,} MB, to be kept in {f['horizon_store']}"
+    else:
+        horizons = f"{f['horizons_mb']:,} MB beside the stack, removed at the end"
+    rows = [
+        ("input", f["input"]),
+        ("CRS", f["crs"]),
+        ("grid", f"{f['rows']} rows, {f['columns']} columns, {f['void_cells']} cells void"),
+        ("heights", f"{low:g} to {high:g} m, read as {f['heights_read_as']}"),
+        ("stack", f"{f['stack']}: {quantities}"),
+        ("steps", f"{f['steps']}, from {f['first_step_begins']} to {f['last_step_ends']}"),
+        ("horizons", horizons),
+        ("memory", f"{f['memory_mb']:,} MB"),
+        ("disk", f"about {f['disk_mb']:,} MB, {f['disk_free_mb']:,} MB free"),
+        ("time", f"about {f['seconds']} s on {f['threads']} threads"),
+        *(("warning", text) for text in f["warnings"]),
+    ]
+    return "\n".join(f"{name:<11} {text}" for name, text in rows)
+
+
+def _summary_text(record: dict[str, Any]) -> str:
+    """What came out, for people."""
+    results = record["results"]
+    lines = [
+        f"{name}: mean {found['mean']:g} {found['unit']}, from {found['least']:g}"
+        f" to {found['greatest']:g}"
+        for name, found in results.items()
+        if isinstance(found, dict)
+    ]
+    lines.append(
+        f"{results['steps']} steps from {results['first_step_begins']} to"
+        f" {results['last_step_ends']}, {record['settings']['basis']} area, horizons"
+        f" {results['horizons']}"
+    )
+    if results["void_cells"]:
+        lines.append(f"void: {results['void_cells']} of {results['cells']} cells")
+    lines += [f"warning: {text}" for text in record["warnings"]]
+    lines.append(f"{record['files'][0]} after {record['seconds']['whole run']:.0f} s")
+    return "\n".join(lines)
