@@ -12,6 +12,8 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     __version__: str
     from terrasol.engine.datasets import irradiation, terrain
+    from terrasol.engine.hours import sun_hours
+    from terrasol.engine.series_stack import irradiation_series
     from terrasol.errors import (
         InputError,
         OutputError,
@@ -37,10 +39,12 @@ _HOMES = {
     "UnfinishedError": "terrasol.errors",
     "clear_sky": "terrasol.sky.clear",
     "irradiation": "terrasol.engine.datasets",
+    "irradiation_series": "terrasol.engine.series_stack",
     "linke_climatology": "terrasol.sky.clear",
     "parse_period": "terrasol.sky.period",
     "read_elevation": "terrasol.files.rasters",
     "split_diffuse": "terrasol.sky.diffuse",
+    "sun_hours": "terrasol.engine.hours",
     "sun_path": "terrasol.sky.sun",
     "sun_series": "terrasol.sky.sun",
     "terrain": "terrasol.engine.datasets",
@@ -57,10 +61,12 @@ __all__ = [
     "UnfinishedError",
     "clear_sky",
     "irradiation",
+    "irradiation_series",
     "linke_climatology",
     "parse_period",
     "read_elevation",
     "split_diffuse",
+    "sun_hours",
     "sun_path",
     "sun_series",
     "terrain",

@@ -5,8 +5,11 @@ from __future__ import annotations
 import click
 
 from terrasol import __version__
+from terrasol.cli.compare import compare
 from terrasol.cli.endings import EXIT_CODES, USAGE
+from terrasol.cli.hours import hours
 from terrasol.cli.irradiation import irradiation
+from terrasol.cli.series import series
 from terrasol.cli.streams import say
 from terrasol.cli.terrain import terrain
 
@@ -29,5 +32,8 @@ def terrasol(context: click.Context) -> None:
         context.exit(USAGE)
 
 
+terrasol.add_command(compare)
+terrasol.add_command(hours)
 terrasol.add_command(irradiation)
+terrasol.add_command(series)
 terrasol.add_command(terrain)

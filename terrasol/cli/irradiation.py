@@ -7,30 +7,17 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from terrasol.cli.ground_options import Around, ground_options
 from terrasol.cli.options import Common, Numbers, common_options
-from terrasol.constants import ENERGY_UNITS, SOLAR_CONSTANT
+from terrasol.cli.sky_options import PAPERS, AskedSky, air_record, shortest, sky_options
+from terrasol.constants import ENERGY_UNITS
 
 if TYPE_CHECKING:
     import numpy as np
     from numpy.typing import NDArray
 
     from terrasol.engine.job import Plan, Summary
-    from terrasol.ground.frame import Frame
     from terrasol.light.irradiation import LightSettings
-    from terrasol.sky.clear import Air
-
-PAPERS = {"ineichen": "Ineichen and Perez 2002", "bird": "Bird and Hulstrom 1981"}
-"""Clear-sky models, by the name of the option's choice."""
-
-BIRD_FIELDS = (
-    "aerosol_500nm", "aerosol_380nm", "water_cm", "ozone_atm_cm", "asymmetry", "ground_albedo",
-)  # fmt: skip
-"""What of the air Bird and Hulstrom's model reads."""
-
-CLIMATOLOGY = "climatology"
-TURBIDITY_FOR_NOW = 3.0
-"""Stands for the climatology's turbidity while the other settings are checked, before the
-raster says where it lies."""
 
 
 @click.command(short_help="The sun's energy for a year or any period, and its months.")
@@ -40,30 +27,6 @@ raster says where it lies."""
     help="A year (2025), month (2025-04), day (2025-04-01), or a first and a last one:"
     " 2025-04-01/2025-10-31. [default: a typical year]",
 )
-@click.option(
-    "--air",
-    "model",
-    type=click.Choice(list(PAPERS)),
-    default="ineichen",
-    show_default=True,
-    help=f"Clear-sky model: {', or '.join(PAPERS.values())}.",
-)
-@click.option(
-    "--linke",
-    type=Numbers(CLIMATOLOGY),
-    default=CLIMATOLOGY,
-    show_default=True,
-    help="Linke turbidity (ineichen).",
-)
-@click.option("--aerosol", metavar="DEPTH", type=float, help="Aerosol depth at 500 nm (bird).")
-@click.option(
-    "--aerosol-380",
-    metavar="DEPTH",
-    type=float,
-    help="Aerosol depth at 380 nm (bird). [default: from 500 nm after Angstrom]",
-)
-@click.option("--water", metavar="CM", type=float, help="Precipitable water, cm (bird).")
-@click.option("--ozone", metavar="ATM-CM", type=float, help="Ozone, atm-cm (bird). [default: 0.3]")
 @click.option(
     "--albedo", type=Numbers(), default="0.2", show_default=True, help="Albedo of the ground."
 )
@@ -98,17 +61,11 @@ raster says where it lies."""
     help="Energy per area of slope, or per area of map.",
 )
 @click.option("--parts", is_flag=True, help="Write also beam, diffuse and reflected by month.")
-@click.option(
-    "--solar-constant",
-    metavar="W/M2",
-    type=float,
-    default=SOLAR_CONSTANT,
-    show_default=True,
-    help="Total solar irradiance at one astronomical unit.",
-)
+@sky_options
+@ground_options
 @common_options
-def irradiation(common: Common, **given: Any) -> None:
-    """Potential (clear-sky) irradiation of every cell of the elevation raster DEM.
+def irradiation(common: Common, around: Around, asked: AskedSky, **given: Any) -> None:
+    """Irradiation of every cell of the elevation raster DEM, potential (clear-sky) or measured.
 
     Terrain shade and reflection count. Writes slope.tif, aspect.tif, sky_view.tif,
     irradiation_year.tif (irradiation_period.tif unless the period is one whole year),
@@ -119,25 +76,33 @@ def irradiation(common: Common, **given: Any) -> None:
     from terrasol.files.rasters import naming
     from terrasol.ground.frame import make_frame
 
-    settings = _settings(common, given)
+    settings = _settings(common, asked, given)
     ground = read(common)
     elevation = ground.elevation
     with naming(common.dem):
         frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
-        if given["model"] == "ineichen" and given["linke"] == CLIMATOLOGY:
-            settings = replace(settings, air=_climatology(frame, given["solar_constant"]))
-        plan = plan_irradiation(elevation, settings)
-    run(Job("irradiation", common, ground, plan, _record(settings), _draw))
+    settings = replace(settings, air=asked.placed(settings.air, frame))
+    settled = asked.settle(settings.air, given["period"], settings.step_seconds)
+    settings = replace(settings, period=settled.period, sky=settled.sky)
+    scene = around.scene(elevation, frame)
+    with naming(common.dem):
+        plan = plan_irradiation(elevation, settings, scene)
+    latitude, longitude = frame.centre
+    record = _record(settings) | settled.record | around.record()
+    record["centre"] = {"latitude": round(latitude, 5), "longitude": round(longitude, 5)}
+    inputs = (*around.inputs, *settled.inputs)
+    notes = (*asked.doubts(frame), *settled.warnings)
+    run(Job("irradiation", common, ground, plan, record, _draw, inputs, notes))
 
 
-def _settings(common: Common, given: dict[str, Any]) -> LightSettings:
+def _settings(common: Common, asked: AskedSky, given: dict[str, Any]) -> LightSettings:
     """Everything that can be settled before the raster is read."""
     from terrasol.light.irradiation import LightSettings, twelve
     from terrasol.sky.period import parse_period
 
     return LightSettings(
         period=parse_period(given["period"]),
-        air=_air(given),
+        air=asked.air(given["albedo"]),
         albedo=twelve(given["albedo"], "albedo"),
         diffuse=given["diffuse"],
         azimuths=common.azimuths,
@@ -149,50 +114,13 @@ def _settings(common: Common, given: dict[str, Any]) -> LightSettings:
     )
 
 
-def _air(given: dict[str, Any]) -> Air:
-    """The air that was asked for."""
-    from terrasol.sky.clear import Air
-
-    bird = ("aerosol", "aerosol_380", "water", "ozone")
-    if given["model"] == "ineichen":
-        for name in bird:
-            if given[name] is not None:
-                option = name.replace("_", "-")
-                raise click.UsageError(f"--{option} belongs to --air bird, which is not asked for")
-        linke = TURBIDITY_FOR_NOW if given["linke"] == CLIMATOLOGY else given["linke"]
-        return Air.ineichen(linke, given["solar_constant"])
-    if given["linke"] != CLIMATOLOGY:
-        raise click.UsageError("--linke belongs to --air ineichen, but --air bird is asked for")
-    for name in ("aerosol", "water"):
-        if given[name] is None:
-            raise click.UsageError(f"--air bird needs --{name}")
-    ozone = {} if given["ozone"] is None else {"ozone_atm_cm": given["ozone"]}
-    return Air.bird(
-        given["aerosol"],
-        given["water"],
-        aerosol_380nm=given["aerosol_380"],
-        ground_albedo=sum(given["albedo"]) / len(given["albedo"]),
-        solar_constant=given["solar_constant"],
-        **ozone,
-    )
-
-
-def _climatology(frame: Frame, solar_constant: float) -> Air:
-    """The air of the turbidity climatology at the raster's centre."""
-    from terrasol.sky.clear import Air, linke_climatology
-
-    return Air.ineichen(linke_climatology(*frame.centre), solar_constant)
-
-
 def _record(settings: LightSettings) -> dict[str, Any]:
     """Settings as plain text and numbers."""
-    record = asdict(settings)
-    period, air = settings.period, settings.air
-    of_model = ("linke",) if air.model == "ineichen" else BIRD_FIELDS
-    record["albedo"] = _shortest(settings.albedo)
-    record["air"] = {name: getattr(air, name) for name in ("model", "solar_constant", *of_model)}
-    if air.linke is not None:
-        record["air"]["linke"] = _shortest(air.linke)
+    record = asdict(replace(settings, sky=None))
+    period = settings.period
+    del record["sky"]
+    record["albedo"] = shortest(settings.albedo)
+    record["air"] = air_record(settings.air)
     record["period"] = {
         "label": period.label,
         "start": str(period.start),
@@ -202,14 +130,22 @@ def _record(settings: LightSettings) -> dict[str, Any]:
     return record
 
 
-def _shortest(months: tuple[float, ...]) -> float | tuple[float, ...]:
-    """One number for twelve months that do not differ."""
-    return months[0] if len(set(months)) == 1 else months
+_SKY_NOTES = {
+    "clear": "Sky without clouds after {}; real skies give less.",
+    "measured": "Sky as a station measured it, hour by hour; clear air after {}.",
+    "monthly index": "Clouds by one index a month; clear air after {}.",
+}
+
+
+def _titled(words: str, part: str) -> str:
+    """The sky's words as a title, for a part of the light or for irradiation as such."""
+    text = " ".join(words.format(part).split())
+    return text[0].upper() + text[1:]
 
 
 def _draw(plan: Plan, energy: NDArray[np.float32], summary: Summary, title: str) -> bytes:
     """The overview map of a finished run."""
-    from terrasol.engine.outputs import basis_words, month_labels
+    from terrasol.engine.outputs import basis_words, month_labels, sky_kind, sky_words
     from terrasol.show.maps import overview_png
     from terrasol.show.page import printable
 
@@ -227,13 +163,15 @@ def _draw(plan: Plan, energy: NDArray[np.float32], summary: Summary, title: str)
         plan.elevation,
         energy,
         title=title,
-        subtitle=f"Potential (clear-sky) irradiation with terrain shade, {settings.period.label}",
-        quantity=f"Potential global irradiation {basis_words(settings)}",
+        subtitle=f"{_titled(sky_words(settings), '')}, with terrain shade, {settings.period.label}",
+        quantity=f"{_titled(sky_words(settings), 'global')}, {basis_words(settings)}",
         unit=settings.unit,
         notes=(
-            f"Sky without clouds after {PAPERS[settings.air.model]}; real skies give less.",
+            _SKY_NOTES[sky_kind(settings)].format(PAPERS[settings.air.model]),
             f"Energy {basis_words(settings)}, with light from the ground around.",
-            "Shade of all that stands in the raster, and of nothing beyond it.",
+            "Shade of all that stands in the raster, and of nothing beyond it."
+            if plan.scene.far is None
+            else "Shade of all that stands in the raster and in the far model around it.",
         ),
         mean=summary.numbers.get(whole.name, {}).get("global", {}).get("mean"),
         monthly_means={month: means[label]["mean"] for month, label in months if label in means},

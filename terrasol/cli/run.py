@@ -33,7 +33,17 @@ from terrasol.kernels import horizon
 WORK = 0.85
 """Part of the progress bar that the computation fills; packing the files fills the rest."""
 
+MAPPED = ("irradiation_year", "irradiation_period", "sun_hours_year", "sun_hours_period")
+"""Layers whose first band the overview map shows."""
+
 OVERVIEW = "overview.png"
+
+SKIES = {
+    "clear": "potential (clear-sky)",
+    "measured": "under the measured sky",
+    "monthly index": "under a sky of monthly clear-sky indices",
+}
+"""How the summary calls energy under each kind of sky."""
 
 Record = dict[str, Any]
 Draw = Callable[[Plan, NDArray[np.float32], Summary, str], bytes]
@@ -83,6 +93,10 @@ class Job:
         The command's own settings, ready for JSON.
     draw : callable, optional
         Draws the overview map.
+    inputs : tuple of str
+        Further files that are read.
+    notes : tuple of str
+        Warnings from before the run.
     """
 
     command: str
@@ -91,6 +105,8 @@ class Job:
     plan: Plan
     settings: Record
     draw: Draw | None = None
+    inputs: tuple[str, ...] = ()
+    notes: tuple[str, ...] = ()
 
     @property
     def threads(self) -> int:
@@ -128,7 +144,8 @@ def run(job: Job) -> None:
     """Carry out a job, or only tell of it, as its options say."""
     common = job.common
     check_free(common.out_dir, job.names, common.overwrite)
-    _spare_input(common, [*job.names, *job.superseded()[0]])
+    for source in (common.dem, *job.inputs):
+        _spare_input(common, source, [*job.names, *job.superseded()[0]])
     if common.dry_run:
         forecast = _forecast(job)
         give(json.dumps(forecast, indent=2) if common.as_json else _in_lines(forecast))
@@ -140,11 +157,11 @@ def run(job: Job) -> None:
         say(_summary_text(record))
 
 
-def _spare_input(common: Common, names: list[str]) -> None:
-    """Refuse to replace or remove the raster that is read."""
+def _spare_input(common: Common, source: str, names: list[str]) -> None:
+    """Refuse to replace or remove a raster that is read."""
     for name in names:
         place = Path(common.out_dir) / name
-        if os.path.exists(place) and os.path.isfile(common.dem) and place.samefile(common.dem):
+        if os.path.exists(place) and os.path.isfile(source) and place.samefile(source):
             raise OutputError(f"{place} is the input itself: name another output folder")
 
 
@@ -168,7 +185,7 @@ def _carry_out(job: Job, record: Record) -> Record:
             **record,
             "threads": job.threads,
             "results": summary.numbers,
-            "warnings": [*summary.warnings, *notes],
+            "warnings": [*summary.warnings, *job.notes, *notes],
             "seconds": {name: round(value, 2) for name, value in seconds.items()},
             "files": [os.path.abspath(delivery.folder / name) for name in job.names],
         }
@@ -211,7 +228,7 @@ def _picture(job: Job, energy: NDArray[np.float32], summary: Summary) -> bytes:
 
 
 class _KeptBand:
-    """A sink that passes everything on, and keeps the whole period's global energy for the map."""
+    """A sink that passes everything on, and keeps the whole period's first band for the map."""
 
     def __init__(self, sink: RasterSink, shape: tuple[int, int]) -> None:
         self.sink = sink
@@ -221,7 +238,7 @@ class _KeptBand:
 
     def open(self, layer: Layer) -> None:
         """Make room for a layer."""
-        if layer.name in ("irradiation_year", "irradiation_period"):
+        if layer.name in MAPPED:
             self.name = layer.name
             self.values = np.full(self.shape, np.nan, np.float32)
         self.sink.open(layer)
@@ -289,7 +306,7 @@ def _forecast(job: Job) -> Record:
         "disk_free_mb": round(shutil.disk_usage(folder).free / 1e6),
         "threads": job.threads,
         "seconds": round(plan.seconds(threads)),
-        "warnings": [*elevation.warnings, *notes],
+        "warnings": [*elevation.warnings, *job.plan.scene.warnings, *job.notes, *notes],
     }
 
 
@@ -360,9 +377,10 @@ def _summary_text(record: Record) -> str:
         lines.append(
             f"open level ground at the centre: {results['level_ground']:g} {results['unit']}"
         )
-        lines.append(f"energy is potential (clear-sky), {results['basis']}")
+        lines.append(f"energy is {SKIES[results['sky']]}, {results['basis']}")
     if results.get("void_cells"):
         lines.append(f"void: {results['void_cells']} of {results['cells']} cells")
+    lines += results.get("remarks", [])
     lines += [f"warning: {text}" for text in record["warnings"]]
     files = record["files"]
     took = _duration(record["seconds"]["whole run"])

@@ -4,13 +4,15 @@ from __future__ import annotations
 
 import click
 
+from terrasol.cli.ground_options import Around, ground_options
 from terrasol.cli.options import Common, common_options
 
 
 @click.command(short_help="Slope, aspect, sky view and horizon.")
 @click.option("--horizon", is_flag=True, help="Write also horizon.tif, one band an azimuth.")
+@ground_options
 @common_options
-def terrain(common: Common, horizon: bool) -> None:
+def terrain(common: Common, around: Around, horizon: bool) -> None:
     """Slope, aspect and sky-view factor of every cell of the elevation raster DEM.
 
     Writes slope.tif, aspect.tif, sky_view.tif and run.json into OUT_DIR.
@@ -18,11 +20,21 @@ def terrain(common: Common, horizon: bool) -> None:
     from terrasol.cli.run import Job, read, run
     from terrasol.engine.job import plan_terrain
     from terrasol.files.rasters import naming
+    from terrasol.ground.frame import make_frame
 
     ground = read(common)
+    elevation = ground.elevation
+    with naming(common.dem):
+        frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
+    scene = around.scene(elevation, frame)
     with naming(common.dem):
         plan = plan_terrain(
-            ground.elevation, common.azimuths, horizon=horizon, refraction=common.refraction
+            elevation,
+            common.azimuths,
+            horizon=horizon,
+            refraction=common.refraction,
+            scene=scene,
         )
     settings = {"azimuths": common.azimuths, "refraction": common.refraction, "horizon": horizon}
-    run(Job("terrain", common, ground, plan, settings))
+    settings |= around.record()
+    run(Job("terrain", common, ground, plan, settings, inputs=around.inputs))

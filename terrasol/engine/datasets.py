@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from numbers import Integral, Real
 from typing import Any
 
@@ -15,6 +15,8 @@ from terrasol.engine.job import Plan, plan_irradiation, plan_terrain
 from terrasol.engine.outputs import month_labels
 from terrasol.errors import InputError, SettingError
 from terrasol.files.layers import Layer
+from terrasol.ground.above import surface_heights
+from terrasol.ground.beyond import Scene, far_ground, make_scene
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import make_frame
 from terrasol.light.irradiation import LightSettings, twelve
@@ -48,6 +50,10 @@ def terrain(
     *,
     horizon: bool = False,
     refraction: float = REFRACTION_COEFFICIENT,
+    far: Elevation | None = None,
+    surface: Elevation | None = None,
+    horizon_gap: bool = False,
+    highest: float | None = None,
     threads: int | None = None,
 ) -> xr.Dataset:
     """Slope, aspect, sky view and, if asked, the horizon.
@@ -62,6 +68,14 @@ def terrain(
         Keep the horizon.
     refraction : float
         Coefficient k of terrestrial refraction.
+    far : Elevation, optional
+        A larger, coarser model in any CRS: its ridges beyond the edge and in voids count too.
+    surface : Elevation, optional
+        A surface model: trees and buildings hide the sun, slope stays that of the ground.
+    horizon_gap : bool
+        Also bound what ground outside all data could hide.
+    highest : float, optional
+        How high such ground could be [m]; see `make_scene`.
     threads : int, optional
         Default: all cores that may be used.
 
@@ -94,7 +108,8 @@ def terrain(
     (45.0, 180.0)
     """
     _check_ground(elevation)
-    plan = plan_terrain(elevation, azimuths, horizon=horizon, refraction=refraction)
+    scene = _scene(elevation, far, surface, horizon_gap, highest)
+    plan = plan_terrain(elevation, azimuths, horizon=horizon, refraction=refraction, scene=scene)
     return _dataset(plan, threads)
 
 
@@ -112,6 +127,10 @@ def irradiation(
     monthly_parts: bool = False,
     refraction: float = REFRACTION_COEFFICIENT,
     sky: Sky | None = None,
+    far: Elevation | None = None,
+    surface: Elevation | None = None,
+    horizon_gap: bool = False,
+    highest: float | None = None,
     threads: int | None = None,
 ) -> xr.Dataset:
     """Irradiation of every cell, with terrain shade and reflection: potential (clear-sky) or not.
@@ -141,6 +160,14 @@ def irradiation(
         Also beam, diffuse and reflected of each month.
     refraction : float
         Coefficient k of terrestrial refraction.
+    far : Elevation, optional
+        A larger, coarser model in any CRS: its ridges beyond the edge and in voids count too.
+    surface : Elevation, optional
+        A surface model: trees and buildings hide the sun, slope stays that of the ground.
+    horizon_gap : bool
+        Also bound what ground outside all data could hide.
+    highest : float, optional
+        How high such ground could be [m]; see `make_scene`.
     sky : Sky, optional
         A measured sky (`clouded_sky`) or one of monthly indices (`MonthlySky`), in place of
         the clear one.
@@ -191,7 +218,30 @@ def irradiation(
         refraction,
         sky,
     )
-    return _dataset(plan_irradiation(elevation, settings), threads)
+    scene = _scene(elevation, far, surface, horizon_gap, highest)
+    return _dataset(plan_irradiation(elevation, settings, scene), threads)
+
+
+def _scene(
+    elevation: Elevation,
+    far: Elevation | None,
+    surface: Elevation | None,
+    horizon_gap: bool,
+    highest: float | None,
+) -> Scene:
+    """What stands beyond and above, put together."""
+    for model in (far, surface):
+        if model is not None:
+            _check_ground(model)
+    frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
+    return make_scene(
+        elevation,
+        frame,
+        far=None if far is None else far_ground(elevation, far),
+        surface=None if surface is None else surface_heights(elevation, surface),
+        horizon_gap=horizon_gap,
+        highest=highest,
+    )
 
 
 def _check_ground(elevation: Elevation) -> None:
@@ -203,7 +253,9 @@ def _check_ground(elevation: Elevation) -> None:
         )
 
 
-def _dataset(plan: Plan, threads: int | None) -> xr.Dataset:
+def _dataset(
+    plan: Plan, threads: int | None, label: Callable[..., xr.DataArray] | None = None
+) -> xr.Dataset:
     """Run a plan into memory and label what comes out."""
     if not isinstance(threads, Integral | None):
         raise SettingError(f"the number of threads must be a whole number; got {threads!r}")
@@ -211,7 +263,10 @@ def _dataset(plan: Plan, threads: int | None) -> xr.Dataset:
     summary = plan.run(sink, threads)
     data = xr.Dataset(attrs={"warnings": summary.warnings, "crs_wkt": plan.elevation.crs.to_wkt()})
     for name, layer in sink.layers.items():
-        data[name] = _labelled(plan, layer, sink.arrays[name])
+        if name == "horizon_gap":
+            data = data.assign(_gap_variables(layer, sink.arrays[name]))
+        else:
+            data[name] = (label or _labelled)(plan, layer, sink.arrays[name])
     a, b, c, d, e, f = plan.elevation.transform
     if b == 0.0 and d == 0.0:
         rows, columns = plan.elevation.shape
@@ -219,6 +274,17 @@ def _dataset(plan: Plan, threads: int | None) -> xr.Dataset:
             x=c + a * (np.arange(columns) + 0.5), y=f + e * (np.arange(rows) + 0.5)
         )
     return data
+
+
+def _gap_variables(layer: Layer, values: NDArray[Any]) -> dict[str, xr.DataArray]:
+    """One variable a unit."""
+    names = ("horizon_gap", "horizon_gap_light")
+    return {
+        name: xr.DataArray(
+            plane, dims=("y", "x"), attrs={"units": unit, "long_name": layer.long_name}
+        )
+        for name, unit, plane in zip(names, layer.units, values, strict=False)
+    }
 
 
 def _labelled(plan: Plan, layer: Layer, values: NDArray[Any]) -> xr.DataArray:

@@ -2,16 +2,26 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass
+from functools import partial
 
 import numpy as np
 from numpy.typing import NDArray
 
 from terrasol.engine.plan import Block
+from terrasol.ground.beyond import Beyond, DataEdge, Scene
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame
-from terrasol.ground.horizon import PAD, FarHorizon, horizon_strip, near_steps
+from terrasol.ground.horizon import (
+    PAD,
+    FarHorizon,
+    Obstacles,
+    horizon_strip,
+    near_steps,
+    raise_horizon,
+    sweep,
+)
 from terrasol.ground.surface import block_normals
 from terrasol.light.irradiation import Strip
 
@@ -33,17 +43,71 @@ class Ground:
         Swept for every azimuth.
     refraction : float
         Coefficient k.
+    obstacles : Obstacles, optional
+        What hides the sun where that is not the elevation model alone.
+    beyond : FarHorizon, optional
+        What bounds the view beyond the obstacles, from a larger model.
+    edge : DataEdge, optional
+        How far away the known ground ends.
     """
 
     elevation: Elevation
     frame: Frame
     far: FarHorizon
     refraction: float
+    obstacles: Obstacles | None = None
+    beyond: FarHorizon | None = None
+    edge: DataEdge | None = None
 
     @property
     def azimuths(self) -> int:
         """Number of azimuths."""
         return int(self.far.height.shape[0])
+
+
+def lay_out(
+    elevation: Elevation, frame: Frame, azimuths: int, refraction: float, scene: Scene
+) -> tuple[Ground, list[Callable[[], None]]]:
+    """Make room for a raster's ground, and the tasks that fill it, one an azimuth.
+
+    Parameters
+    ----------
+    elevation, frame
+        The raster and its place.
+    azimuths : int
+        Number of azimuths.
+    refraction : float
+        Coefficient k.
+    scene : Scene
+        What stands beyond and above; ``Scene()`` for nothing.
+
+    Returns
+    -------
+    ground : Ground
+        Complete once every task was carried out, in any order.
+    tasks : list of callable
+        To be called once each, on any threads.
+    """
+    far = FarHorizon.empty(elevation, azimuths)
+    beyond = None
+    if scene.far is not None or scene.highest is not None:
+        beyond = Beyond(elevation, frame, scene, far, refraction)
+    ground = Ground(
+        elevation,
+        frame,
+        far,
+        refraction,
+        scene.obstacles,
+        beyond.horizon if beyond else None,
+        beyond.edge if beyond else None,
+    )
+
+    def fill(azimuth_index: int) -> None:
+        sweep(elevation, frame, azimuth_index, refraction, far, scene.obstacles)
+        if beyond is not None:
+            beyond.sweep(azimuth_index)
+
+    return ground, [partial(fill, a) for a in range(azimuths)]
 
 
 class BlockGround:
@@ -60,13 +124,29 @@ class BlockGround:
         self.datum = float(np.float32(self.datum))
         self.normal = block_normals(self.padded, PAD, ground.frame, block.row, block.column)
         _continue_rim(self.padded, block, ground.elevation.shape)
+        self._hiding = self.padded if ground.obstacles is None else self._obstacles()
         self._steps = near_steps(ground.frame, *self.middle, ground.azimuths, ground.refraction)
-        nodes = ground.far.block(block.row, block.column, (block.rows, block.columns))
-        self._far = (
-            np.ascontiguousarray(ground.far.height[:, nodes[0], nodes[1]]),
-            np.ascontiguousarray(ground.far.away[:, nodes[0], nodes[1]]),
-        )
+        self._far = self._nodes(ground.far.height), self._nodes(ground.far.away)
+        self._beyond = None
+        if ground.beyond is not None:
+            self._beyond = self._nodes(ground.beyond.height), self._nodes(ground.beyond.away)
         self._horizon = np.empty((ground.azimuths, 0, block.columns), np.float32)
+
+    def _nodes(self, lattice: NDArray[np.float32]) -> NDArray[np.float32]:
+        """The part of a lattice of nodes that this block needs."""
+        b = self.block
+        rows, columns = self.ground.far.block(b.row, b.column, (b.rows, b.columns))
+        return np.ascontiguousarray(lattice[:, rows, columns])
+
+    def _obstacles(self) -> NDArray[np.float32]:
+        """What hides the sun in and around the block, less the datum."""
+        obstacles = self.ground.obstacles
+        assert obstacles is not None
+        heights = _padded(obstacles.heights, self.block, obstacles.margin)
+        heights -= np.float32(self.datum)
+        if obstacles.margin == 0:
+            _continue_rim(heights, self.block, self.ground.elevation.shape)
+        return heights
 
     @property
     def middle(self) -> tuple[float, float]:
@@ -101,7 +181,18 @@ class BlockGround:
         if count < horizon.shape[1]:
             horizon = np.empty((ground.azimuths, count, self.block.columns), np.float32)
         lift = self.datum - ground.far.datum
-        horizon_strip(self.padded, rows, self._steps, self._far, lift, ground.refraction, horizon)
+        horizon_strip(
+            self._hiding,
+            self.padded,
+            rows,
+            self._steps,
+            self._far,
+            lift,
+            ground.refraction,
+            horizon,
+        )
+        if self._beyond is not None:
+            raise_horizon(self.padded, rows, self._beyond, lift, ground.refraction, horizon)
         within = slice(rows.start, rows.stop, rows.step)
         heights = self.padded[PAD:-PAD, PAD:-PAD][within]
         return Strip(
@@ -112,6 +203,20 @@ class BlockGround:
             self.latitude(rows),
             self.table_latitude(rows),
         )
+
+    def possible(self, strip: Strip, piece: range) -> NDArray[np.float32]:
+        """Horizon of a strip if the highest plausible ground stood where knowledge ends.
+
+        Shape and unit as `Strip.horizon`, of a whole piece. Needs `Ground.edge`.
+        """
+        ground = self.ground
+        assert ground.edge is not None
+        away = self._nodes(ground.edge.away)
+        above = np.full_like(away, ground.edge.highest - ground.far.datum)
+        raised = strip.horizon.copy()
+        lift = self.datum - ground.far.datum
+        raise_horizon(self.padded, piece, (above, away), lift, ground.refraction, raised)
+        return raised
 
 
 def _continue_rim(padded: NDArray[np.float32], block: Block, shape: tuple[int, int]) -> None:
@@ -130,12 +235,15 @@ def _continue_rim(padded: NDArray[np.float32], block: Block, shape: tuple[int, i
             lines[-PAD] = np.minimum(2.0 * lines[-PAD - 1] - lines[-PAD - 2], lines[-PAD - 1])
 
 
-def _padded(heights: NDArray[np.float32], block: Block) -> NDArray[np.float32]:
-    """A block's heights with PAD cells around, NaN beyond the raster."""
+def _padded(heights: NDArray[np.float32], block: Block, margin: int = 0) -> NDArray[np.float32]:
+    """A block's heights with PAD cells around, NaN beyond what is given.
+
+    `heights` may reach `margin` cells beyond the raster on every side.
+    """
     out = np.full((block.rows + 2 * PAD, block.columns + 2 * PAD), np.nan, np.float32)
-    top, left = block.row - PAD, block.column - PAD
-    rows = slice(max(top, 0), min(block.row + block.rows + PAD, heights.shape[0]))
-    columns = slice(max(left, 0), min(block.column + block.columns + PAD, heights.shape[1]))
+    top, left = block.row + margin - PAD, block.column + margin - PAD
+    rows = slice(max(top, 0), min(top + out.shape[0], heights.shape[0]))
+    columns = slice(max(left, 0), min(left + out.shape[1], heights.shape[1]))
     out[rows.start - top : rows.stop - top, columns.start - left : columns.stop - left] = heights[
         rows, columns
     ]

@@ -13,7 +13,8 @@ from numpy.typing import NDArray
 
 from terrasol.constants import REFRACTION_COEFFICIENT, SURROUNDINGS_SCALE
 from terrasol.engine import outputs
-from terrasol.engine.ground_work import BlockGround, Ground
+from terrasol.engine.ground_work import BlockGround, Ground, lay_out
+from terrasol.engine.horizon_gap import GapTally, horizon_gap
 from terrasol.engine.plan import (
     Block,
     Progress,
@@ -24,9 +25,10 @@ from terrasol.engine.plan import (
 )
 from terrasol.errors import InputError
 from terrasol.files.layers import Layer, Sink
+from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame, make_frame
-from terrasol.ground.horizon import BLOCK, NODE_STEP, FarHorizon, sweep
+from terrasol.ground.horizon import BLOCK, NODE_STEP
 from terrasol.ground.surface import slope_and_aspect
 from terrasol.kernels.rounding import tally
 from terrasol.light.irradiation import (
@@ -58,6 +60,9 @@ middle; where cells are degrees of longitude, 1.25 degrees away they are off by 
 
 METRES_A_DEGREE = 111_195.0
 """Of latitude, on the mean sphere."""
+
+NO_SCENE = Scene()
+"""The raster's own ground and nothing else."""
 
 Arrays = dict[str, NDArray[Any]]
 
@@ -99,6 +104,8 @@ class Plan:
         The light; None for terrain alone.
     layers : tuple of Layer
         What is written.
+    scene : Scene
+        What stands beyond and above the raster's ground.
     """
 
     elevation: Elevation
@@ -107,6 +114,7 @@ class Plan:
     refraction: float
     settings: LightSettings | None
     layers: tuple[Layer, ...]
+    scene: Scene = NO_SCENE
 
     @property
     def cells(self) -> int:
@@ -132,7 +140,8 @@ class Plan:
     def memory_bytes(self) -> int:
         """Peak memory to expect, the interpreter included."""
         nodes = self.cells / NODE_STEP**2
-        far = 9.0 * nodes * self.azimuths
+        far = (9.0 + self._beyond_bytes) * nodes * self.azimuths
+        far += 12.0 * self.cells if self.scene.obstacles else 0.0
         light = 0.0
         if self.settings is not None:
             latitudes, heights = self._knots
@@ -140,6 +149,11 @@ class Plan:
             light = latitudes * table + max(MIXED_BYTES, 2.0 * table)
         block = 4.0 * 65536 * (12 + sum(len(layer.bands) for layer in self.layers))
         return int(450e6 + 5.0 * self.cells + far + light + 8 * block)
+
+    @property
+    def _beyond_bytes(self) -> float:
+        """Bytes a node and azimuth of what lies beyond the raster."""
+        return (9.0 if self.scene.far else 0.0) + (4.0 if self.scene.highest is not None else 0.0)
 
     @property
     def disk_bytes(self) -> int:
@@ -193,6 +207,7 @@ def plan_terrain(
     *,
     horizon: bool = False,
     refraction: float = REFRACTION_COEFFICIENT,
+    scene: Scene = NO_SCENE,
 ) -> Plan:
     """Plan slope, aspect and sky view, and the horizon if asked.
 
@@ -206,6 +221,8 @@ def plan_terrain(
         Keep the horizon of every azimuth.
     refraction : float
         Coefficient k of terrestrial refraction.
+    scene : Scene
+        What stands beyond and above the ground, from `make_scene`.
 
     Returns
     -------
@@ -223,11 +240,15 @@ def plan_terrain(
     layers = [*_terrain_layers(elevation)]
     if horizon:
         layers.append(outputs.horizon_layer(azimuths))
+    if scene.highest is not None:
+        layers.append(outputs.horizon_gap_layer(scene.highest, None))
     frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
-    return Plan(elevation, frame, azimuths, refraction, None, tuple(layers))
+    return Plan(elevation, frame, azimuths, refraction, None, tuple(layers), scene)
 
 
-def plan_irradiation(elevation: Elevation, settings: LightSettings) -> Plan:
+def plan_irradiation(
+    elevation: Elevation, settings: LightSettings, scene: Scene = NO_SCENE
+) -> Plan:
     """Plan slope, aspect, sky view and irradiation.
 
     Parameters
@@ -236,6 +257,8 @@ def plan_irradiation(elevation: Elevation, settings: LightSettings) -> Plan:
         The ground.
     settings : LightSettings
         The light.
+    scene : Scene
+        What stands beyond and above the ground, from `make_scene`.
 
     Returns
     -------
@@ -246,10 +269,13 @@ def plan_irradiation(elevation: Elevation, settings: LightSettings) -> Plan:
     InputError
         A raster that cannot be placed on the Earth, or with cells too coarse for its blocks.
     """
-    layers = (*_terrain_layers(elevation), *outputs.light_layers(settings))
+    layers = [*_terrain_layers(elevation), *outputs.light_layers(settings)]
+    if scene.highest is not None:
+        layers.append(outputs.horizon_gap_layer(scene.highest, settings))
     frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
     _check_blocks(frame)
-    return Plan(elevation, frame, settings.azimuths, settings.refraction, settings, layers)
+    azimuths, refraction = settings.azimuths, settings.refraction
+    return Plan(elevation, frame, azimuths, refraction, settings, tuple(layers), scene)
 
 
 def _check_blocks(frame: Frame) -> None:
@@ -275,7 +301,7 @@ class _Run:
         self.plan = plan
         self.threads = threads
         self.progress = progress
-        self.summary = Summary(warnings=list(plan.elevation.warnings))
+        self.summary = Summary(warnings=[*plan.elevation.warnings, *plan.scene.warnings])
         self.done = 0.0
 
     def do(self, sink: Sink) -> Summary:
@@ -288,14 +314,17 @@ class _Run:
         surroundings = self._surroundings(ground, tables) if tables else None
         names = [layer.name for layer in plan.layers]
         work = partial(_block_arrays, ground, names, tables, surroundings)
-        totals = Totals()
+        totals, gaps = Totals(), GapTally()
         blocks = blocks_of(plan.elevation.shape)
         tasks = [partial(_with_block, work, block) for block in blocks]
         for block, arrays in self._stage("blocks", tasks, 1.0 - self.done):
             totals.add(arrays)
+            if "horizon_gap" in arrays:
+                gaps.add(arrays)
             for name, values in arrays.items():
                 sink.write(name, block.row, block.column, values)
         self._conclude(ground, totals, tables)
+        self._tell_of_scene(gaps)
         return self.summary
 
     def _stage(self, name: str, tasks: Sequence[Callable[[], Any]], share: float) -> Iterator[Any]:
@@ -321,14 +350,12 @@ class _Run:
     def _ground(self) -> Ground:
         """The far horizon, swept azimuth by azimuth."""
         plan = self.plan
-        far = FarHorizon.empty(plan.elevation, plan.azimuths)
-        tasks = [
-            partial(sweep, plan.elevation, plan.frame, a, plan.refraction, far)
-            for a in range(plan.azimuths)
-        ]
+        ground, tasks = lay_out(
+            plan.elevation, plan.frame, plan.azimuths, plan.refraction, plan.scene
+        )
         for _ in self._stage("far horizon", tasks, 0.2):
             pass
-        return Ground(plan.elevation, plan.frame, far, plan.refraction)
+        return ground
 
     def _surroundings(self, ground: Ground, tables: SkyTables) -> Surroundings:
         """Mean of what the terrain around each place receives."""
@@ -363,12 +390,27 @@ class _Run:
             summary.numbers["level_ground"] = _level_ground(ground, tables)
             summary.numbers["unit"] = tables.settings.unit
             summary.numbers["basis"] = outputs.basis_words(tables.settings)
+            summary.numbers["sky"] = outputs.sky_kind(tables.settings)
         across = summary.numbers["cells_looking_across_void"]
         if across:
             summary.warnings.append(
                 f"the horizon of up to {across} cells looks across a void, where unknown ground"
                 " could hide the sun: fill small voids with --fill-voids, or give a complete model"
             )
+
+    def _tell_of_scene(self, gaps: GapTally) -> None:
+        """Put what stands beyond, or could, into the summary."""
+        scene, summary = self.plan.scene, self.summary
+        remarks = list(scene.remarks)
+        if scene.far is not None:
+            reach = [round(distance / 1000.0, 3) for distance in scene.far.reach]
+            summary.numbers["far_reach_km"] = reach
+        if scene.highest is not None:
+            numbers, said = gaps.told(scene.highest, self.plan.settings is not None)
+            summary.numbers |= numbers
+            (summary.warnings if gaps.over else remarks).append(said)
+        if remarks:
+            summary.numbers["remarks"] = remarks
 
 
 def _with_block(work: Callable[[Block], Arrays], block: Block) -> tuple[Block, Arrays]:
@@ -396,6 +438,8 @@ def _block_arrays(
         if "horizon" in gathered:
             degrees = np.degrees(np.arctan(strip.horizon))
             gathered["horizon"].append(np.where(np.isnan(strip.normal[2]), np.nan, degrees))
+        if "horizon_gap" in gathered:
+            gathered["horizon_gap"].append(horizon_gap(piece, strip, rows, tables))
         if tables is not None and surroundings is not None:
             place = block.row + rows[0], block.column
             light = strip_light(strip, sky, tables, surroundings, place)
@@ -506,4 +550,16 @@ class Totals:
             }
             if rows:
                 found[layer.name] = {"unit": layer.unit, **rows}
+            if rows and layer.band_units:
+                found |= _one_unit_each(layer, rows)
         return found
+
+
+def _one_unit_each(layer: Layer, rows: dict[str, Any]) -> dict[str, Any]:
+    """Figures of a layer whose bands have units of their own: one entry a band."""
+    names = [layer.name, *(f"{layer.name}: {band}" for band in layer.bands[1:])]
+    return {
+        name: {"unit": unit, band: rows[band]}
+        for name, unit, band in zip(names, layer.units, layer.bands, strict=True)
+        if band in rows
+    }

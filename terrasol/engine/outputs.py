@@ -2,11 +2,14 @@
 
 from __future__ import annotations
 
+from typing import Protocol
+
 import numpy as np
 
 from terrasol.files.layers import Layer
 from terrasol.light.irradiation import UNITS, LightSettings
 from terrasol.sky.cloud import MonthlySky
+from terrasol.sky.period import Period
 
 MONTH_NAMES = (
     "January", "February", "March", "April", "May", "June", "July", "August", "September",
@@ -55,7 +58,38 @@ def horizon_layer(azimuths: int) -> Layer:
     )
 
 
-def month_labels(settings: LightSettings) -> tuple[str, ...]:
+def horizon_gap_layer(highest: float, settings: LightSettings | None) -> Layer:
+    """What ground outside all data could hide: in degrees, and in light if there is any."""
+    tags = {"highest_ground": f"{highest:.1f} m"}
+    words = (
+        "upper bound of what ground outside all given data could hide: greatest rise of the"
+        " horizon in any azimuth"
+    )
+    if settings is None:
+        return Layer(
+            "horizon_gap", ("horizon gap",), "degree", words, resolution=2.0**-8, tags=tags
+        )
+    return Layer(
+        "horizon_gap",
+        ("horizon gap", "direct light within it"),
+        "degree",
+        f"{words}, and direct irradiation in the plane of the slope, {basis_words(settings)},"
+        " that it could take",
+        resolution=2.0**-8,
+        tags={**tags, "period": settings.period.label, "basis": basis_words(settings)},
+        band_units=("degree", settings.unit),
+    )
+
+
+class Summed(Protocol):
+    """Settings of anything that is summed over a period."""
+
+    @property
+    def period(self) -> Period:
+        """What is summed."""
+
+
+def month_labels(settings: Summed) -> tuple[str, ...]:
     """One label a month: its name in a typical year, else year and month."""
     if settings.period.typical:
         return tuple(MONTH_NAMES[month - 1] for _, month in settings.period.months)
@@ -96,7 +130,11 @@ def light_layers(settings: LightSettings) -> tuple[Layer, ...]:
     fine = _fineness(period.days, settings.unit)
     month_fine = _fineness(max(period.days / len(period.months), 1.0), settings.unit)
     whole = "year" if settings.period.whole_year else "period"
-    tags = {"period": settings.period.label, "basis": basis_words(settings), "sky": sky_kind(settings)}
+    tags = {
+        "period": settings.period.label,
+        "basis": basis_words(settings),
+        "sky": sky_kind(settings),
+    }
     layers = [
         Layer(
             f"irradiation_{whole}",

@@ -32,6 +32,8 @@ class Layer:
         accuracy of any model, so that files stay small.
     tags : dict
         Further tags of the file.
+    band_units : tuple of str
+        One unit a band, where they differ from `unit`.
     """
 
     name: str
@@ -42,6 +44,12 @@ class Layer:
     dtype: str = "float32"
     resolution: float = 2.0**-10
     tags: dict[str, str] = field(default_factory=dict)
+    band_units: tuple[str, ...] = ()
+
+    @property
+    def units(self) -> tuple[str, ...]:
+        """Unit of each band."""
+        return self.band_units or (self.unit,) * len(self.bands)
 
 
 class Sink(Protocol):

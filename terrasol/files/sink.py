@@ -225,7 +225,7 @@ class _WorkingCopy:
             names["standard_name"] = layer.standard_name
         target.update_tags(**tags, **layer.tags)
         target.descriptions = layer.bands
-        target.units = (layer.unit,) * len(layer.bands)
+        target.units = layer.units
         for band in range(1, len(layer.bands) + 1):
             target.update_tags(band, **names)
 
@@ -349,6 +349,6 @@ def _check_codec(compression: str) -> None:
 def _check_labels(final: Path, layer: Layer) -> None:
     """Raise OSError if the final file lost its band descriptions, unit or no-data value."""
     with rasterio.open(final) as source:
-        stated = source.descriptions, set(source.units), source.nodata
-    if stated != (layer.bands, {layer.unit}, _nodata(layer)):
+        stated = source.descriptions, source.units, source.nodata
+    if stated != (layer.bands, layer.units, _nodata(layer)):
         raise OSError(f"labels were lost: {stated}")

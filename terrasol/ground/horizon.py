@@ -171,8 +171,37 @@ def _zones_hold(frame: Frame, rows: list[int], columns: list[int]) -> bool:
     return True
 
 
+@dataclass(frozen=True)
+class Obstacles:
+    """What hides the sun where that is not, or not only, the ground of the raster itself.
+
+    Parameters
+    ----------
+    heights : ndarray of float32, shape (rows + 2 margin, columns + 2 margin)
+        Heights of what hides, on the raster's grid and some cells around it [m].
+    eyes : ndarray of float32, the same shape
+        Ground from which one looks [m]; the same array where there is no surface model.
+    margin : int
+        Cells around the raster: 0, or PAD at least.
+    """
+
+    heights: NDArray[np.float32]
+    eyes: NDArray[np.float32]
+    margin: int
+
+    @classmethod
+    def of(cls, elevation: Elevation) -> Obstacles:
+        """The raster's own ground alone."""
+        return cls(elevation.heights, elevation.heights, 0)
+
+
 def sweep(
-    elevation: Elevation, frame: Frame, azimuth_index: int, refraction: float, far: FarHorizon
+    elevation: Elevation,
+    frame: Frame,
+    azimuth_index: int,
+    refraction: float,
+    far: FarHorizon,
+    obstacles: Obstacles | None = None,
 ) -> None:
     """Fill one azimuth of the far horizon.
 
@@ -188,6 +217,8 @@ def sweep(
         Coefficient k; 0 for none.
     far : FarHorizon
         Changed in place.
+    obstacles : Obstacles, optional
+        What hides the sun; by default the ground itself.
 
     Notes
     -----
@@ -195,6 +226,7 @@ def sweep(
     curvature and the lattice are terrasol's own (docs/method.md).
     """
     azimuth = 360.0 * azimuth_index / far.height.shape[0]
+    obstacles = obstacles or Obstacles.of(elevation)
     rows, columns = zone_edges(frame)
     for top, bottom in pairwise(rows):
         for left, right in pairwise(columns):
@@ -202,11 +234,13 @@ def sweep(
             jacobian = frame.jacobian_at((top + bottom) / 2, (left + right) / 2)
             spans = far.block(top, left, (bottom - top, right - left))
             layers = [part[azimuth_index] for part in (far.height, far.away, far.across_void)]
-            _sweep_zone(elevation.heights, ray, jacobian, refraction, far.datum, spans, layers)
+            _sweep_zone(obstacles, ray, jacobian, refraction, far.datum, spans, layers)
 
 
-def _sweep_zone(heights, ray, jacobian, refraction, datum, spans, layers) -> None:
+def _sweep_zone(obstacles, ray, jacobian, refraction, datum, spans, layers) -> None:
     """Sweep one azimuth over one zone, its nodes given by `spans`."""
+    heights, margin = obstacles.heights, obstacles.margin
+    eyes = heights[:0] if obstacles.eyes is heights else obstacles.eyes
     width = heights.shape[1]
     major = 0 if abs(ray[0]) > abs(ray[1]) else 1
     length, breadth = heights.shape if major == 1 else heights.shape[::-1]
@@ -218,15 +252,15 @@ def _sweep_zone(heights, ray, jacobian, refraction, datum, spans, layers) -> Non
     # The line starts at its far end, where the ray points, and comes towards the eye.
     if ray[major] > 0:
         far_end, along = (length - 1) * stride, -stride
-        first_query = length - 1 - (nodes.stop - 1) * NODE_STEP
+        first_query = length - 1 - (nodes.stop - 1) * NODE_STEP - margin
     else:
         far_end, along = 0, stride
-        first_query = nodes.start * NODE_STEP
+        first_query = nodes.start * NODE_STEP + margin
     found = [np.ascontiguousarray(_turned(layer[spans], major, ray)) for layer in layers]
     far_field(
-        heights.reshape(-1), far_end, along, across, length, breadth,
+        heights.reshape(-1), eyes.reshape(-1), far_end, along, across, length, breadth,
         -ray[1 - major] * step, step, half_curve(refraction), FAR_FROM, gap, first_query,
-        side.start * NODE_STEP, NODE_STEP, datum, *found,
+        side.start * NODE_STEP + margin, NODE_STEP, datum, *found,
     )  # fmt: skip
     for layer, values in zip(layers, found, strict=True):
         _turned(layer[spans], major, ray)[...] = values
@@ -239,6 +273,7 @@ def _turned(layer, major, ray):
 
 
 def horizon_strip(
+    hiding: NDArray[np.float32],
     padded: NDArray[np.float32],
     rows: range,
     steps: tuple[NDArray[np.int64], NDArray[np.float32]],
@@ -251,8 +286,10 @@ def horizon_strip(
 
     Parameters
     ----------
+    hiding : ndarray of float32
+        Heights of what hides the sun in and around the block, with PAD cells around [m].
     padded : ndarray of float32
-        The block's heights, with PAD cells around [m].
+        The block's ground, from which one looks, with PAD cells around [m].
     rows : range
         Rows of the block.
     steps : tuple of ndarray
@@ -266,6 +303,21 @@ def horizon_strip(
     out : ndarray of float32, shape (azimuths, rows, columns)
         Filled.
     """
-    near_field(padded, PAD, rows.start, rows.step, *steps, out)
+    near_field(hiding, padded, PAD, rows.start, rows.step, *steps, out)
+    raise_horizon(padded, rows, far, lift, refraction, out)
+
+
+def raise_horizon(
+    padded: NDArray[np.float32],
+    rows: range,
+    far: tuple[NDArray[np.float32], NDArray[np.float32]],
+    lift: float,
+    refraction: float,
+    out: NDArray[np.float32],
+) -> None:
+    """Raise some rows' horizon to what stands at a lattice of nodes' bounding points.
+
+    Parameters as those of `horizon_strip`; `out` holds a horizon and is changed.
+    """
     bend = half_curve(refraction)
     merge_far(padded, PAD, rows.start, rows.step, NODE_STEP, *far, lift, bend, out)

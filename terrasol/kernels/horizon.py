@@ -27,13 +27,14 @@ cache."""
 
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=FAST)
-def near_field(heights, pad, first_row, row_step, shift, weight, out):
+def near_field(heights, eyes, pad, first_row, row_step, shift, weight, out):
     """Horizon from the first steps along each ray, exact from the cell's own centre.
 
     For one azimuth the shift and the two weights of a step are the same for every cell, so
     the inner loop is two loads, three multiplications and a maximum.
 
     heights : (rows + 2 pad, columns + 2 pad) float32, NaN void; a void hides nothing
+    eyes : the same shape, the ground from which one looks
     shift : (azimuths, steps, 4) int64, row and column shifts of the two cells a step mixes
     weight : (azimuths, steps, 4) float32: of the one cell, of the other, 1 / distance,
         and the drop of the Earth over the distance; the number of steps is a multiple of 4
@@ -45,7 +46,7 @@ def near_field(heights, pad, first_row, row_step, shift, weight, out):
     for a in range(azimuths):
         for r in range(rows):
             i = first_row + r * row_step + pad
-            own = heights[i, pad : pad + columns]
+            own = eyes[i, pad : pad + columns]
             best = out[a, r]
             for c in range(columns):
                 best[c] = 0.0
@@ -188,12 +189,14 @@ def _push(place, bulge, top, x, g):
 
 @njit(cache=True, nogil=True, error_model="numpy")
 def _walk_line(
-    line, points, voids, first_query, every, skip, step, half_curve, datum, seen, place, bulge
-):
+    line, eyes, points, voids, first_query, every, skip, step, half_curve, datum, seen, place,
+    bulge,
+):  # fmt: skip
     """Walk a line from its far end; at each query leave what bounds the view.
 
-    That is a point's height and distance, and whether a void lies before it. Where nothing
-    lies beyond the near field, it is a point where that ends, well below the eye.
+    `line` hides, from `eyes` one looks. What is left is a point's height and distance, and
+    whether a void lies before it. Where nothing lies beyond the near field, it is a point where
+    that ends, well below the eye.
     """
     top = -1
     hint = 0
@@ -211,10 +214,10 @@ def _walk_line(
         while hole < voids.size and voids[hole] < i:
             hole += 1
         own = np.nan
-        if 0 <= i < line.size and line[i] > -np.inf:
-            own = np.float64(line[i])
+        if 0 <= i < line.size and eyes[i] > -np.inf:
+            own = np.float64(eyes[i])
         else:
-            own = _height_near(line, i, every)
+            own = _height_near(eyes, i, every)
         seen[query, 0] = own - datum - NOTHING * skip * step
         seen[query, 1] = skip * step
         seen[query, 2] = 1.0 if hole > 0 else 0.0
@@ -244,7 +247,7 @@ def _height_near(line, i, reach):
 
 @njit(cache=True, nogil=True, error_model="numpy")
 def far_field(
-    heights, far_end, along, across, length, breadth, drift, step, half_curve,
+    heights, eyes, far_end, along, across, length, breadth, drift, step, half_curve,
     skip, gap, first_query, first_node, every, datum, height, away, across_void,
 ):  # fmt: skip
     """Horizon beyond the near field along every line of one azimuth.
@@ -255,6 +258,7 @@ def far_field(
     Lines stand `gap` whole cells apart; between them, and between queries, the reader interpolates.
 
     heights : (cells,) float32, the whole raster; NaN void
+    eyes : (cells,) float32, the ground from which one looks; of size 0 where that is `heights`
     far_end : int, index of the cell at the far end of the line with across = 0
     along, across : int, index steps towards the eye and to the side
     length, breadth : int, cells along and across
@@ -278,6 +282,9 @@ def far_field(
     used = min(length, last_query + 1)
     apart = used + SPARE
     together = np.empty(GROUP * apart, np.float32)
+    aloft = eyes.size > 0
+    below = np.empty(GROUP * apart if aloft else 0, np.float32)
+    ground = eyes if aloft else heights
     low = np.empty(used, np.uint8)
     points = np.empty(used, np.int64)
     voids = np.empty(used, np.int64)
@@ -285,7 +292,7 @@ def far_field(
     bulge = np.empty(used + 1, np.float64)
     seen = np.zeros((count, lines, 3), np.float32)
     seen[:, :, 0] = np.nan
-    eyes = np.zeros((GROUP, count, 3), np.float32)
+    found = np.zeros((GROUP, count, 3), np.float32)
     for k in range(0, lines, GROUP):
         start = origin + k * gap
         first, last = _on_raster(start, start + (GROUP - 1) * gap, drift, breadth, used)
@@ -295,20 +302,26 @@ def far_field(
             heights, far_end, along, across, breadth, start, gap, drift, first, last - first,
             apart, together,
         )  # fmt: skip
+        if aloft:
+            _line_heights(
+                eyes, far_end, along, across, breadth, start, gap, drift, first, last - first,
+                apart, below,
+            )  # fmt: skip
         for g in range(min(GROUP, lines - k)):
             line = together[g * apart : g * apart + last - first]
+            sights = below[g * apart : g * apart + last - first] if aloft else line
             kept, holes = _hull_candidates(
                 line, skip - 1, step * step * half_curve, low[: last - first], points, voids
             )
             _walk_line(
-                line, points[:kept], voids[:holes], first_query - first, every, skip, step,
-                half_curve, datum, eyes[g], place, bulge,
+                line, sights, points[:kept], voids[:holes], first_query - first, every, skip, step,
+                half_curve, datum, found[g], place, bulge,
             )  # fmt: skip
         for q in range(count):
             for g in range(min(GROUP, lines - k)):
-                seen[q, k + g] = eyes[g, q]
+                seen[q, k + g] = found[g, q]
     _to_nodes(
-        seen, heights, far_end, along, across, length, breadth, drift, gap, origin,
+        seen, ground, far_end, along, across, length, breadth, drift, gap, origin,
         first_query, first_node, every, height, away, across_void,
     )  # fmt: skip
 

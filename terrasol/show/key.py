@@ -52,16 +52,19 @@ class Scale:
         Ends of the colours.
     below, above : bool
         Whether ground lies outside them.
+    colour_map : str
+        Of matplotlib.
     """
 
     low: float
     high: float
     below: bool = False
     above: bool = False
+    colour_map: str = COLOUR_MAP
 
     def colours(self, values: NDArray[np.floating]) -> NDArray[np.float32]:
         """Red, green and blue of values; NaN as `low`."""
-        listed = matplotlib.colormaps[COLOUR_MAP](np.arange(256))[:, :3]
+        listed = matplotlib.colormaps[self.colour_map](np.arange(256))[:, :3]
         places = np.linspace(DARKEST * 255, LIGHTEST * 255, 256)
         table = np.stack([np.interp(places, np.arange(256), part) for part in listed.T], axis=-1)
         table = (table + (1 - table) * WASH).astype(np.float32)

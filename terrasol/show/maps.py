@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
+from dataclasses import replace
 
 import numpy as np
 from matplotlib.colors import to_rgb
@@ -49,6 +50,7 @@ def overview_png(
     mean: float | None = None,
     monthly_means: Mapping[tuple[int, int], float] | None = None,
     frame: Frame | None = None,
+    colour_map: str = key.COLOUR_MAP,
 ) -> bytes:
     """Draw the overview map of a run.
 
@@ -73,6 +75,8 @@ def overview_png(
         Mean of each month over the ground [unit].
     frame : Frame, optional
         That of `elevation`, if it is at hand.
+    colour_map : str
+        Of matplotlib; one whose lightness rises evenly.
 
     Returns
     -------
@@ -88,7 +92,7 @@ def overview_png(
     frame = frame or make_frame(elevation.shape, elevation.transform, elevation.crs)
     picture = make_picture(elevation, frame, MAP_BOX)
     values = picture.cells(picture.average(energy))
-    scale = key.make_scale(values)
+    scale = replace(key.make_scale(values), colour_map=colour_map)
     blocks = _blocks(values, scale, quantity, unit, mean, monthly_means, notes)
     page, places = _lay_out(picture, blocks)
     _write_head_and_foot(page, title, subtitle, elevation, frame)

@@ -18,7 +18,7 @@ def broken_engine(tmp_path, monkeypatch, capfd):
     monkeypatch.setattr("terrasol.cli.run._announce_compilation", lambda quiet: None)
 
     def run(sweep):
-        monkeypatch.setattr("terrasol.engine.job.sweep", sweep)
+        monkeypatch.setattr("terrasol.engine.ground_work.sweep", sweep)
         code = main(["terrain", str(dem), str(tmp_path / "a" / "out"), "--azimuths", "8"])
         assert [path.name for path in tmp_path.iterdir()] == ["dem.tif"]
         return code, capfd.readouterr().err

@@ -49,7 +49,7 @@ def sweep_line(line, step, half_curve, skip=SKIP, datum=0.0):
     away = np.zeros_like(height)
     void = np.zeros(height.shape, np.uint8)
     far_field(
-        raster.reshape(-1), 0, 1, line.size, line.size, 3, 0.0, step, half_curve,
+        raster.reshape(-1), raster[:0].reshape(-1), 0, 1, line.size, line.size, 3, 0.0, step, half_curve,
         skip, 1, 0, 0, 1, datum, height, away, void,
     )  # fmt: skip
     own = line.astype(np.float64) - datum
@@ -164,7 +164,7 @@ def test_slanting_lines_mix_the_two_cells_they_pass():
     height = np.zeros((20, 15), np.float32)
     away, void = np.zeros_like(height), np.zeros(height.shape, np.uint8)
     far_field(
-        z.reshape(-1), 0, 60, 1, 80, 60, 0.5, 10.0, 0.0, SKIP, 1, 0, 0, 4, 0.0,
+        z.reshape(-1), z[:0].reshape(-1), 0, 60, 1, 80, 60, 0.5, 10.0, 0.0, SKIP, 1, 0, 0, 4, 0.0,
         height, away, void,
     )  # fmt: skip
     met = 0
@@ -192,7 +192,7 @@ def test_slanting_sweep_sees_along_its_own_direction(gap):
     height = np.zeros((30, 23), np.float32)
     away, void = np.zeros_like(height), np.zeros(height.shape, np.uint8)
     far_field(
-        z.reshape(-1), 0, columns, 1, rows, columns, 0.6, step, 0.0, SKIP, gap, 0, 0, 4, 0.0,
+        z.reshape(-1), z[:0].reshape(-1), 0, columns, 1, rows, columns, 0.6, step, 0.0, SKIP, gap, 0, 0, 4, 0.0,
         height, away, void,
     )  # fmt: skip
     query, node = np.mgrid[8:30, 0:22]
@@ -214,7 +214,7 @@ def test_diagonal_sweep_is_exact_on_the_cells_it_meets():
     height = np.zeros((70, 70), np.float32)
     away, void = np.zeros_like(height), np.zeros(height.shape, np.uint8)
     far_field(
-        z.reshape(-1), 0, 70, 1, 70, 70, 1.0, step, HALF_CURVE, SKIP, 1, 0, 0, 1, 0.0,
+        z.reshape(-1), z[:0].reshape(-1), 0, 70, 1, 70, 70, 1.0, step, HALF_CURVE, SKIP, 1, 0, 0, 1, 0.0,
         height, away, void,
     )  # fmt: skip
     for row, column in [(69, 69), (60, 45), (50, 50), (69, 40), (45, 69)]:
@@ -236,7 +236,7 @@ def test_near_field_is_the_highest_of_its_steps(voids):
     weight = dice.uniform(0.0, 0.1, (azimuths, steps, 4)).astype(np.float32)
     out = np.empty((azimuths, rows, columns), np.float32)
     first, row_step = 2, 2
-    near_field(heights, pad, first, row_step, shift, weight, out)
+    near_field(heights, heights, pad, first, row_step, shift, weight, out)
     z = heights.astype(np.float64)
     for a, r, c in np.ndindex(out.shape):
         i, j = first + r * row_step + pad, c + pad
