@@ -85,7 +85,7 @@ raster says where it lies."""
 @click.option(
     "--unit",
     metavar=f"[{'|'.join(ENERGY_UNITS)}]",
-    type=click.Choice([*ENERGY_UNITS, *ENERGY_UNITS.values()]),
+    type=click.Choice([*ENERGY_UNITS, *ENERGY_UNITS.values()], case_sensitive=False),
     default="MJ",
     show_default=True,
     help="Unit of energy, per square metre.",

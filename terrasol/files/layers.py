@@ -32,6 +32,8 @@ class Layer:
         accuracy of any model, so that files stay small.
     tags : dict
         Further tags of the file.
+    band_names : tuple of str
+        What the numbers of each band are, where that differs; else `long_name` says it.
     """
 
     name: str
@@ -42,6 +44,7 @@ class Layer:
     dtype: str = "float32"
     resolution: float = 2.0**-10
     tags: dict[str, str] = field(default_factory=dict)
+    band_names: tuple[str, ...] = ()
 
 
 class Sink(Protocol):
