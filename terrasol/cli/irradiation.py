@@ -210,6 +210,7 @@ def _shortest(months: tuple[float, ...]) -> float | tuple[float, ...]:
 def _draw(plan: Plan, energy: NDArray[np.float32], summary: Summary, title: str) -> bytes:
     """The overview map of a finished run."""
     from terrasol.engine.outputs import basis_words, month_labels
+    from terrasol.show.key import range_text
     from terrasol.show.maps import overview_png
     from terrasol.show.page import printable
 
@@ -223,6 +224,10 @@ def _draw(plan: Plan, energy: NDArray[np.float32], summary: Summary, title: str)
     whole = next(layer for layer in plan.layers if layer.name.startswith("irradiation_"))
     means = summary.numbers.get("irradiation_months", {})
     months = zip(settings.period.months, month_labels(settings), strict=True)
+    assumed = f"albedo of the ground {range_text(settings.month_albedo)}."
+    if settings.air.linke is not None:
+        linke = [settings.air.linke[month - 1] for _, month in settings.period.months]
+        assumed = f"Linke turbidity by month {range_text(linke)}, {assumed}"
     return overview_png(
         plan.elevation,
         energy,
@@ -232,6 +237,7 @@ def _draw(plan: Plan, energy: NDArray[np.float32], summary: Summary, title: str)
         unit=settings.unit,
         notes=(
             f"Sky without clouds after {PAPERS[settings.air.model]}; real skies give less.",
+            assumed[0].upper() + assumed[1:],
             f"Energy {basis_words(settings)}, with light from the ground around.",
             "Shade of all that stands in the raster, and of nothing beyond it.",
         ),
