@@ -48,7 +48,7 @@ if TYPE_CHECKING:
 @click.option(
     "--unit",
     metavar=f"[{'|'.join(ENERGY_UNITS)}]",
-    type=click.Choice([*ENERGY_UNITS, *ENERGY_UNITS.values()]),
+    type=click.Choice([*ENERGY_UNITS, *ENERGY_UNITS.values()], case_sensitive=False),
     default="MJ",
     show_default=True,
     help="Unit of energy, per square metre.",
@@ -116,9 +116,9 @@ def _settings(common: Common, asked: AskedSky, given: dict[str, Any]) -> LightSe
 
 def _record(settings: LightSettings) -> dict[str, Any]:
     """Settings as plain text and numbers."""
-    record = asdict(replace(settings, sky=None))
+    record = asdict(replace(settings, sky=None, albedo_map=None))
     period = settings.period
-    del record["sky"]
+    del record["sky"], record["albedo_map"]
     record["albedo"] = shortest(settings.albedo)
     record["air"] = air_record(settings.air)
     record["period"] = {
@@ -146,6 +146,7 @@ def _titled(words: str, part: str) -> str:
 def _draw(plan: Plan, energy: NDArray[np.float32], summary: Summary, title: str) -> bytes:
     """The overview map of a finished run."""
     from terrasol.engine.outputs import basis_words, month_labels, sky_kind, sky_words
+    from terrasol.show.key import range_text
     from terrasol.show.maps import overview_png
     from terrasol.show.page import printable
 
@@ -159,6 +160,10 @@ def _draw(plan: Plan, energy: NDArray[np.float32], summary: Summary, title: str)
     whole = next(layer for layer in plan.layers if layer.name.startswith("irradiation_"))
     means = summary.numbers.get("irradiation_months", {})
     months = zip(settings.period.months, month_labels(settings), strict=True)
+    assumed = f"albedo of the ground {range_text(settings.month_albedo)}."
+    if settings.air.linke is not None:
+        linke = [settings.air.linke[month - 1] for _, month in settings.period.months]
+        assumed = f"Linke turbidity by month {range_text(linke)}, {assumed}"
     return overview_png(
         plan.elevation,
         energy,
@@ -168,6 +173,7 @@ def _draw(plan: Plan, energy: NDArray[np.float32], summary: Summary, title: str)
         unit=settings.unit,
         notes=(
             _SKY_NOTES[sky_kind(settings)].format(PAPERS[settings.air.model]),
+            assumed[0].upper() + assumed[1:],
             f"Energy {basis_words(settings)}, with light from the ground around.",
             "Shade of all that stands in the raster, and of nothing beyond it."
             if plan.scene.far is None

@@ -188,6 +188,7 @@ def _carry_out(job: Job, record: Record) -> Record:
             "warnings": [*summary.warnings, *job.notes, *notes],
             "seconds": {name: round(value, 2) for name, value in seconds.items()},
             "files": [os.path.abspath(delivery.folder / name) for name in job.names],
+            "removed": superseded,
         }
         delivery.write_json(RECORD, record)
         delivery.commit(superseded)
@@ -349,6 +350,8 @@ def _in_lines(forecast: Record) -> str:
 
 def _turn(degrees: float) -> str:
     """An angle with its sense in words."""
+    if degrees == 0.0:
+        return "0 degrees"
     return f"{abs(degrees):g} degrees {'counter-clockwise' if degrees < 0 else 'clockwise'}"
 
 
@@ -382,6 +385,8 @@ def _summary_text(record: Record) -> str:
         lines.append(f"void: {results['void_cells']} of {results['cells']} cells")
     lines += results.get("remarks", [])
     lines += [f"warning: {text}" for text in record["warnings"]]
+    if record["removed"]:
+        lines.append(f"removed, of an earlier run: {', '.join(record['removed'])}")
     files = record["files"]
     took = _duration(record["seconds"]["whole run"])
     lines.append(f"{counted(len(files), 'file')} in {Path(files[0]).parent} after {took}")

@@ -23,7 +23,7 @@ from terrasol.engine.plan import (
     check_threads,
     default_threads,
 )
-from terrasol.errors import InputError
+from terrasol.errors import InputError, counted
 from terrasol.files.layers import Layer, Sink
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
@@ -48,7 +48,7 @@ from terrasol.sky.suntable import height_knots, latitude_knots
 SECONDS_A_CELL_AND_AZIMUTH = 40e-9
 """What a core needs, for the estimate only; measured in docs/performance.md."""
 
-SECONDS_A_TABLE_AND_HEIGHT = 0.1
+SECONDS_A_TABLE_AND_HEIGHT = 0.15
 """What a core needs for the sun table of a year in steps of a minute, for the estimate only."""
 
 SAMPLE_STRIDE = 8
@@ -378,6 +378,11 @@ class _Run:
 
     def _conclude(self, ground: Ground, totals: Totals, tables: SkyTables | None) -> None:
         """Put numbers and warnings into the summary."""
+        if not totals.bands:
+            raise InputError(
+                "no cell has neighbours enough for a slope: fill voids with --fill-voids, or give"
+                " a model with connected ground"
+            )
         summary, heights = self.summary, ground.elevation.heights
         known = np.isfinite(heights)
         summary.numbers = {
@@ -394,8 +399,9 @@ class _Run:
         across = summary.numbers["cells_looking_across_void"]
         if across:
             summary.warnings.append(
-                f"the horizon of up to {across} cells looks across a void, where unknown ground"
-                " could hide the sun: fill small voids with --fill-voids, or give a complete model"
+                f"the horizon of up to {counted(across, 'cell')} looks across a void, where unknown"
+                " ground could hide the sun: fill small voids with --fill-voids, or give a complete"
+                " model"
             )
 
     def _tell_of_scene(self, gaps: GapTally) -> None:

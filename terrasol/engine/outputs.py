@@ -16,6 +16,8 @@ MONTH_NAMES = (
     "October", "November", "December",
 )  # fmt: skip
 
+PARTS = ("global", "beam", "diffuse", "reflected")
+
 SUNNY_DAY = 20.0
 """Order of a clear day's energy, MJ m-2; only for the rounding of stored values."""
 
@@ -138,9 +140,10 @@ def light_layers(settings: LightSettings) -> tuple[Layer, ...]:
     layers = [
         Layer(
             f"irradiation_{whole}",
-            ("global", "beam", "diffuse", "reflected"),
+            PARTS,
             settings.unit,
-            words.format("global, beam, diffuse and reflected"),
+            words.format("global"),
+            band_names=tuple(words.format(part) for part in PARTS),
             resolution=fine,
             tags=tags,
         ),

@@ -34,6 +34,8 @@ class Layer:
         Further tags of the file.
     band_units : tuple of str
         One unit a band, where they differ from `unit`.
+    band_names : tuple of str
+        What the numbers of each band are, where that differs; else `long_name` says it.
     """
 
     name: str
@@ -45,6 +47,7 @@ class Layer:
     resolution: float = 2.0**-10
     tags: dict[str, str] = field(default_factory=dict)
     band_units: tuple[str, ...] = ()
+    band_names: tuple[str, ...] = ()
 
     @property
     def units(self) -> tuple[str, ...]:

@@ -119,6 +119,8 @@ def _opened(path: str | PathLike[str]) -> Iterator[Any]:
             source = rasterio.open(path)
         except (RasterioError, OSError) as error:
             raise InputError(_why_not_opened(path)) from error
+        except TypeError as error:
+            raise InputError("this is no name of a file: give one as text or path") from error
         except UnicodeError as error:
             raise InputError("the file's name is not valid Unicode: rename it") from error
     with source:

@@ -220,14 +220,13 @@ class _WorkingCopy:
     def label(self, tags: Mapping[str, str]) -> None:
         """Write names, unit and tags."""
         layer, target = self.layer, self._fine
-        names = {"long_name": layer.long_name, "units": layer.unit}
-        if layer.standard_name:
-            names["standard_name"] = layer.standard_name
+        names = {"standard_name": layer.standard_name} if layer.standard_name else {}
         target.update_tags(**tags, **layer.tags)
         target.descriptions = layer.bands
         target.units = layer.units
-        for band in range(1, len(layer.bands) + 1):
-            target.update_tags(band, **names)
+        for i, unit in enumerate(layer.units):
+            words = layer.band_names[i] if layer.band_names else layer.long_name
+            target.update_tags(i + 1, long_name=words, units=unit, **names)
 
     def write(self, row: int, column: int, values: NDArray[Any]) -> None:
         """Write a block, and its part of the first overview."""

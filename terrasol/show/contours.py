@@ -93,12 +93,15 @@ def draw_contours(
 
 
 def _smooth(heights: NDArray[np.float32]) -> NDArray[np.float32]:
-    """Mean of blocks of pixels, then a 1-2-1 mean both ways; void where any part is."""
+    """Mean of blocks of pixels, then a 1-2-1 mean both ways; void where any part is.
+
+    Past the rim the ground is taken to run on straight, so that lines meet it without a bend.
+    """
     rows, columns = (size // SMOOTHING for size in heights.shape)
     blocks = heights[: rows * SMOOTHING, : columns * SMOOTHING]
     grid = blocks.reshape(rows, SMOOTHING, columns, SMOOTHING).mean(axis=(1, 3))
     for _ in range(2):
-        padded = np.pad(grid, ((1, 1), (0, 0)), mode="edge")
+        padded = np.pad(grid, ((1, 1), (0, 0)), mode="reflect", reflect_type="odd")
         grid = ((padded[:-2] + padded[2:]) / 4 + padded[1:-1] / 2).T
     return np.ascontiguousarray(grid)
 

@@ -51,11 +51,12 @@ def draw_graticule(page: Page, picture: Picture, corner: tuple[float, float]) ->
 
 
 def degrees_text(degrees: float, step: float, letters: str) -> str:
-    """Degrees with the decimals of their step and a letter for the side."""
+    """Degrees with the decimals of their step and a letter for the side, if they have one."""
     decimals = max(0, -math.floor(math.log10(step) + 1e-9))
     size = f"{abs(degrees):.{decimals}f}"
-    side = "" if float(size) == 0 else letters[0] if degrees > 0 else letters[1]
-    return f"{size}°{side}"
+    if float(size) in (0.0, 180.0):
+        return f"{float(size):.0f}°"
+    return f"{size}°{letters[0] if degrees > 0 else letters[1]}"
 
 
 def _step(field: NDArray[np.float64], pixels: int) -> float:

@@ -4,21 +4,27 @@ from __future__ import annotations
 
 import math
 import re
-from collections.abc import Mapping, Sequence
+from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass
 
 import matplotlib
 import numpy as np
 from numpy.typing import NDArray
 
+from terrasol.engine.outputs import MONTH_NAMES
 from terrasol.show.contours import LINE, nice_step
 from terrasol.show.page import INK, PAPER, SOFT, Page, text_width, wrap
-from terrasol.show.relief import hatch
+from terrasol.show.relief import RELIEF, hatch
 
-COLOUR_MAP, DARKEST, LIGHTEST, WASH = "magma", 0.14, 0.97, 0.12
+COLOUR_MAP, DARKEST, LIGHTEST = "magma", 0.14, 0.97
 """Perceptually uniform, and its lightness alone tells it, so that it is read by colour-blind
-eyes and in grey; from dusk to daylight, as the quantity. The blackest part is left out and all
-is washed a little towards white, for the relief to have room on both sides."""
+eyes and in grey; from dusk to daylight, as the quantity. The blackest part is left out."""
+
+LEAST, MOST = 0.10, 0.95
+"""What black and white become in red, green and blue: the relief has room on both sides."""
+
+OUTSIDE = 0.5
+"""Share of the ground beyond either end of the colours [%]: the colour bar's points."""
 
 TEXT, SMALL = 18.0, 16.0
 """Sizes of letters [pixels]."""
@@ -31,6 +37,12 @@ MONTHS_HEIGHT = 110
 SCALE_LONGEST = 240
 ARROW = 27
 """Sizes of the parts [pixels]; ARROW is half the arrow's length."""
+
+FEW_MONTHS = 8
+"""So many bars, or fewer, are named by three letters; more by one."""
+
+FAINT = 2.0
+"""Least height of the bar of a month with any sun [pixels]."""
 
 BINS = 50
 
@@ -67,19 +79,19 @@ class Scale:
         listed = matplotlib.colormaps[self.colour_map](np.arange(256))[:, :3]
         places = np.linspace(DARKEST * 255, LIGHTEST * 255, 256)
         table = np.stack([np.interp(places, np.arange(256), part) for part in listed.T], axis=-1)
-        table = (table + (1 - table) * WASH).astype(np.float32)
+        table = (LEAST + (MOST - LEAST) * table).astype(np.float32)
         share = (values - self.low) / (self.high - self.low)
         index = np.clip(np.nan_to_num(share) * 255 + 0.5, 0, 255).astype(np.uint8)
         return table[index]
 
 
-def make_scale(values: NDArray[np.floating], outside: float = 0.5) -> Scale:
-    """Colours for values: their range, but for `outside` per cent at either end."""
+def make_scale(values: NDArray[np.floating]) -> Scale:
+    """Colours for values: their range, but for `OUTSIDE` per cent at either end."""
     known = values[np.isfinite(values)].astype(np.float64)
     if known.size == 0:
         return Scale(0.0, 1.0)
     least, most = float(known.min()), float(known.max())
-    low, high = (float(v) for v in np.percentile(known, [outside, 100 - outside]))
+    low, high = (float(v) for v in np.percentile(known, [OUTSIDE, 100 - OUTSIDE]))
     if high - low <= SMALLEST_SPAN * max(abs(low), abs(high), 1e-30):
         low, high = least, most
     if high - low <= SMALLEST_SPAN * max(abs(low), abs(high), 1e-30):
@@ -99,6 +111,29 @@ def significant(value: float, digits: int) -> str:
     power = math.floor(math.log10(abs(value))) if value else 0
     text = number(value, 10.0 ** min(power - digits + 1, 0))
     return text.rstrip("0").rstrip(".") if "." in text else text
+
+
+def mean_text(mean: float, step: float) -> str:
+    """A mean to a tenth of its axis's step, and to four digits at least."""
+    power = math.floor(math.log10(abs(mean))) if mean else 0
+    return "mean " + number(mean, min(step / 10, 10.0 ** (power - 3)))
+
+
+def range_text(values: Collection[float]) -> str:
+    """The least and the greatest of values: ``2.1 to 3.4``, or ``0.2`` if they are one."""
+    ends = [f"{end:.3g}" for end in (min(values), max(values))]
+    return ends[0] if ends[0] == ends[1] else " to ".join(ends)
+
+
+def points_text(scale: Scale) -> str:
+    """What the points of the colour bar stand for; empty if it has none."""
+    share = f"{OUTSIDE:g} % of the ground"
+    if scale.below and scale.above:
+        return f"The points of the colour bar hold the lowest and the highest {share}."
+    if scale.below or scale.above:
+        which, end = ("lower", "lowest") if scale.below else ("upper", "highest")
+        return f"The {which} point of the colour bar holds the {end} {share}."
+    return ""
 
 
 def printed_unit(unit: str) -> str:
@@ -163,41 +198,42 @@ def draw_colour_bar(
         mean = float(known.mean(dtype=np.float64))
     level = height_of(min(max(mean, scale.low), scale.high))
     page.lines([[(right + 6, level), (right + 6 + HISTOGRAM_WIDTH, level)]], line=1.0)
-    text = "mean " + significant(mean, 4)
+    text = mean_text(mean, step)
     page.text(right + 6 + HISTOGRAM_WIDTH + 6, level, text, SMALL, down="center_baseline")
 
 
 def draw_months(
     page: Page, x: float, y: float, width: float, means: Mapping[tuple[int, int], float]
 ) -> None:
-    """Draw a bar for each (year, month), the least and the greatest with their values."""
+    """Draw a bar for each (year, month); the least, the greatest and noughts with their values."""
     values = np.nan_to_num(np.array(list(means.values()), float))
-    bottom, slot = y + MONTHS_HEIGHT, width / max(12, len(means))
+    bottom, few = y + MONTHS_HEIGHT, len(means) <= FEW_MONTHS
+    slot = width / (FEW_MONTHS if few else max(12, len(means)))
     page.lines([[(x, bottom), (x + slot * len(means), bottom)]], line=1.2)
     top = max(float(values.max(initial=0.0)), 1e-30)
-    years: set[int] = set()
-    several = len({year for year, _ in means}) > 1
-    brief = slot * 12 < 50
-    for k, ((year, month), value) in enumerate(zip(means, values, strict=True)):
+    ends = (int(values.argmin()), int(values.argmax()))
+    for k, ((_, month), value) in enumerate(means.items()):
         middle = x + (k + 0.5) * slot
         if slot > SMALL:
-            letter = "JFMAMJJASOND"[month - 1]
-            page.text(middle, bottom + 20, letter, SMALL, colour=SOFT, across="center")
-        if several and year not in years:
-            page.text(
-                middle - slot / 2 + 5,
-                bottom + 44,
-                f"’{year % 100:02d}" if brief else str(year),
-                SMALL,
-                colour=SOFT,
-            )
-            page.lines([[(middle - slot / 2, bottom), (middle - slot / 2, bottom + 46)]], line=0.8)
-            years.add(year)
-        tall = max(value, 0.0) / top * (MONTHS_HEIGHT - 22)
+            name = MONTH_NAMES[month - 1][: 3 if few else 1]
+            page.text(middle, bottom + 20, name, SMALL, colour=SOFT, across="center")
+        tall = max(values[k] / top * (MONTHS_HEIGHT - 22), FAINT) if value > 0 else 0.0
         page.box(middle - 0.36 * slot, bottom - tall, 0.72 * slot, tall, fill=BAR_COLOUR)
-        if k in (int(values.argmin()), int(values.argmax())):
-            text = significant(value, 3)
+        if k in ends or (value == 0 and slot > SMALL):
+            text = significant(float(values[k]), 3)
             page.text(middle, bottom - tall - 6, text, SMALL, across="center")
+    if len({year for year, _ in means}) > 1:
+        _name_years(page, x, bottom, slot, [year for year, _ in means])
+
+
+def _name_years(page, x, bottom, slot, years) -> None:
+    """Write each year below its first month."""
+    for k, year in enumerate(years):
+        if year not in years[:k]:
+            left = x + k * slot
+            text = f"’{year % 100:02d}" if slot * 12 < 50 else str(year)
+            page.text(left + 5, bottom + 44, text, SMALL, colour=SOFT)
+            page.lines([[(left, bottom), (left, bottom + 46)]], line=0.8)
 
 
 def draw_notes(page: Page, x: float, y: float, lines: Sequence[str]) -> None:
@@ -249,12 +285,40 @@ def draw_north(page: Page, x: float, y: float, azimuth: float) -> float:
     return x + ARROW
 
 
-def draw_swatch(page: Page, x: float, y: float, text: str, *, void: bool) -> float:
-    """Draw a legend entry, of the contour lines or of the voids; return the x behind it."""
+def draw_legend(
+    page: Page, x: float, y: float, *, relief: bool, step: float | None, void: bool
+) -> None:
+    """Name what the map shows beside colours, about the height y.
+
+    Parameters
+    ----------
+    relief, void : bool
+        Whether the map has any.
+    step : float or None
+        Distance between contour lines [m]; None without any.
+    """
+    entries = [(_relief_swatch, "relief lightly shaded")] if relief else []
+    if step is not None:
+        entries.append((_contour_swatch, f"contours every {step:.6g} m"))
     if void:
-        page.image(x, y - 9, hatch((18, 34)))
-        page.box(x, y - 9, 34, 18, edge=SOFT, line=0.8)
-    else:
-        page.lines([[(x, y), (x + 34, y)]], colour=LINE, line=1.4, strength=0.7)
-    page.text(x + 44, y, text, SMALL, down="center_baseline")
-    return x + 44 + text_width(text, SMALL)
+        entries.append((_void_swatch, "no data"))
+    for k in range(0, len(entries), 2):
+        column = entries[k : k + 2]
+        for (draw, text), level in zip(column, (y - 13, y + 13), strict=False):
+            draw(page, x, level)
+            page.text(x + 44, level, text, SMALL, down="center_baseline")
+        x += 44 + max(text_width(text, SMALL) for _, text in column) + 36
+
+
+def _relief_swatch(page, x, y) -> None:
+    light = np.repeat(np.linspace(RELIEF, -RELIEF, 34)[None, :, None], 18, axis=0)
+    page.image(x, y - 9, Scale(0.0, 1.0).colours(np.array([0.5])) + light)
+
+
+def _contour_swatch(page, x, y) -> None:
+    page.lines([[(x, y), (x + 34, y)]], colour=LINE, line=1.4, strength=0.7)
+
+
+def _void_swatch(page, x, y) -> None:
+    page.image(x, y - 9, hatch((18, 34)))
+    page.box(x, y - 9, 34, 18, edge=SOFT, line=0.8)

@@ -55,8 +55,8 @@ def overview_png(
     """Draw the overview map of a run.
 
     The map is true in metres and lies along the raster's edges; arrow and scale bar are true
-    at its centre. Beyond the colour bar's points lies the half per cent of ground with the least
-    and with the most sun.
+    at its centre. The colour bar's points hold the half per cent of ground with the least and with
+    the most sun, which the notes then say.
 
     Parameters
     ----------
@@ -113,6 +113,7 @@ def _demand_one_grid(elevation, energy) -> None:
 def _blocks(values, scale, quantity, unit, mean, months, notes) -> list[_Block]:
     """The parts of the key: functions that draw at a place, each with its height."""
     unit = key.printed_unit(unit)
+    notes = [*notes, key.points_text(scale)]
     lines = [line for note in notes for line in wrap(note, key.SMALL, COLUMN)]
 
     def colours(page, x, y):
@@ -176,7 +177,7 @@ def _draw_map(page, picture, elevation, values, scale) -> None:
     left, top = corner = (MARGIN + LATITUDES, HEADER)
     height, width = picture.shape
     averaged = picture.average(elevation.heights)
-    heights = picture.smooth(averaged)
+    heights = picture.surface(averaged)
     void = picture.ground & ~np.isfinite(values)
     brightness = picture.smooth(shade(averaged, picture.jacobian))
     page.image(left, top, paint(picture, scale.colours(values), brightness, void, to_rgb(PAPER)))
@@ -188,8 +189,5 @@ def _draw_map(page, picture, elevation, values, scale) -> None:
     y = top + height + LONGITUDES + 50
     x = key.draw_scale_bar(page, left + 6, y, picture.metres_per_pixel)
     x = key.draw_north(page, x + 56, y - 2, -picture.up)
-    x += 36
-    if step is not None:
-        x = key.draw_swatch(page, x, y, f"contours every {step:.6g} m", void=False) + 36
-    if void.any():
-        key.draw_swatch(page, x, y, "no data", void=True)
+    relief = bool(np.any(np.abs(brightness[picture.ground] - 0.5) > 0.01))
+    key.draw_legend(page, x + 36, y, relief=relief, step=step, void=bool(void.any()))

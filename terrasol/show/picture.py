@@ -94,23 +94,36 @@ class Picture:
     def smooth(self, averaged: NDArray[np.float32]) -> NDArray[np.float32]:
         """Values at the pixels, NaN off the raster: bilinear, beside voids the nearest cell."""
         row, column = self._places()
-        last = averaged.shape[0] - 1, averaged.shape[1] - 1
-        y, x = np.clip(row - 0.5, 0, last[0]), np.clip(column - 0.5, 0, last[1])
-        i, j = (
-            np.minimum(y.astype(np.intp), last[0] - 1),
-            np.minimum(x.astype(np.intp), last[1] - 1),
-        )
-        first = i * averaged.shape[1] + j
-        flat = np.ascontiguousarray(averaged).ravel()
-        u, v = y - i, x - j
-        upper = flat.take(first) * (1 - v) + flat.take(first + 1) * v
-        first += averaged.shape[1]
-        lower = flat.take(first) * (1 - v) + flat.take(first + 1) * v
-        values = upper * (1 - u) + lower * u
+        values = self._bilinear(averaged, 0.0)
         rest = ~np.isfinite(values)
         values[rest] = _nearest(averaged, row[rest], column[rest])
         values[~self.ground] = np.nan
-        return values.astype(np.float32)
+        return values
+
+    def surface(self, averaged: NDArray[np.float32]) -> NDArray[np.float32]:
+        """Values without a bend: bilinear, straight on to the rim; NaN beside voids."""
+        return np.where(self.ground, self._bilinear(averaged, 0.5), np.float32(np.nan))
+
+    def _bilinear(self, averaged: NDArray[np.float32], beyond: float) -> NDArray[np.float32]:
+        """Between four cells; `beyond` the centres of the outer ones, so many cells straight on."""
+        row, column = self._places()
+        last = averaged.shape[0] - 1, averaged.shape[1] - 1
+        y, x = (
+            np.clip(place - 0.5, -beyond, end + beyond)
+            for place, end in zip((row, column), last, strict=True)
+        )
+        i, j = (
+            np.clip(place.astype(np.intp), 0, max(end - 1, 0))
+            for place, end in zip((y, x), last, strict=True)
+        )
+        first = i * averaged.shape[1] + j
+        right, below = min(last[1], 1), averaged.shape[1] if last[0] else 0
+        flat = np.ascontiguousarray(averaged).ravel()
+        u, v = y - i, x - j
+        upper = flat.take(first) * (1 - v) + flat.take(first + right) * v
+        first += below
+        lower = flat.take(first) * (1 - v) + flat.take(first + right) * v
+        return (upper * (1 - u) + lower * u).astype(np.float32)
 
     def cells(self, averaged: NDArray[np.float32]) -> NDArray[np.float32]:
         """As `smooth`; but where a cell covers many pixels, each shows the cell it lies in."""

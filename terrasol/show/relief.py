@@ -16,8 +16,8 @@ From the upper left, as most readers see hills and not hollows, softened from bo
 LIGHT_HEIGHT = 45.0
 """Height of those lights [degrees]."""
 
-CONTRAST = 0.55
-"""Change of the picture's brightness by that of the lit ground."""
+CONTRAST = 2.0
+"""Change of the picture's brightness by that of the lit ground, before it levels off."""
 
 STEEP = 0.55
 """Tangent that the steeper tenth of the ground is drawn with: low hills are drawn higher and
@@ -26,12 +26,10 @@ high mountains lower, so that either has form."""
 EXAGGERATION = (0.3, 8.0)
 """Least and greatest stretch of the heights."""
 
-SHADOW = (0.40, 0.60, 0.46)
-"""What the deepest shade takes of red, green and blue: most of green, so that sunny ground
-in it turns tan, not olive."""
-
-GLEAM = 0.6
-"""How far the brightest slope goes towards white."""
+RELIEF = 0.03
+"""The most that the light adds to, or takes from, red, green and blue alike. A colour must still
+read off the colour bar: the brightest and the dullest slope of one value differ by less than a
+tenth of the bar's lightness."""
 
 VOID_GREY = (0.82, 0.82, 0.80)
 VOID_LINE = (0.64, 0.64, 0.62)
@@ -52,7 +50,7 @@ def shade(heights: NDArray[np.float32], jacobian: NDArray[np.float64]) -> NDArra
     Returns
     -------
     ndarray of float32, shape (rows, columns)
-        0 black, 0.5 flat or void, 1 white.
+        0 dullest, 0.5 flat or void, 1 brightest.
     """
     by_cell = np.stack([_difference(heights, 1), _difference(heights, 0)])
     right, up = np.tensordot(np.linalg.inv(jacobian).T.astype(np.float32), by_cell, axes=1)
@@ -67,7 +65,7 @@ def shade(heights: NDArray[np.float32], jacobian: NDArray[np.float64]) -> NDArra
     for azimuth, share in LIGHTS:
         x, y = math.sin(math.radians(azimuth)), math.cos(math.radians(azimuth))
         bright += np.float32(share) * np.maximum(1 - (x * right + y * up) / rise, 0) / length
-    return np.clip(0.5 + CONTRAST * (bright - 1), 0, 1)
+    return 0.5 + 0.5 * np.tanh(CONTRAST * (bright - 1))
 
 
 def _difference(heights: NDArray[np.float32], axis: int) -> NDArray[np.float32]:
@@ -90,7 +88,7 @@ def paint(
     void: NDArray[np.bool_],
     paper: tuple[float, float, float],
 ) -> NDArray[np.float32]:
-    """Blend colour and shade; hatch the voids; leave paper beside the raster.
+    """Shade the colours lightly; hatch the voids; leave paper beside the raster.
 
     Parameters
     ----------
@@ -109,11 +107,7 @@ def paint(
     ndarray of float32, shape (height, width, 3)
     """
     light = np.where(np.isfinite(brightness), brightness, np.float32(0.5))[..., None]
-    image = np.where(
-        light <= 0.5,
-        colours * (1 - (1 - 2 * light) * np.asarray(SHADOW, np.float32)),
-        colours + (1 - colours) * (light - 0.5) * GLEAM,
-    )
+    image = colours + (2 * light - 1) * np.float32(RELIEF)
     image[void] = hatch(picture.shape)[void]
     image[~picture.ground] = paper
     return np.clip(image, 0, 1)

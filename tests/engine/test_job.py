@@ -10,7 +10,7 @@ import terrasol
 from terrasol.engine import job, plan
 from terrasol.engine.datasets import ArraySink
 from terrasol.engine.job import Plan, Totals, plan_irradiation, plan_terrain
-from terrasol.errors import SettingError
+from terrasol.errors import InputError, SettingError
 from terrasol.files.layers import Layer
 from terrasol.light.irradiation import LightSettings, Surroundings
 from terrasol.sky.period import parse_period
@@ -318,3 +318,10 @@ def test_small_rasters_have_surroundings_too(metric_ground, shape):
     # an open slope sees (1 - cos S) / 2 of ground that gets about as much as it does
     slope = np.radians(light["slope"].values)
     np.testing.assert_allclose(reflected, 0.5 * (1.0 - np.cos(slope)) / 2.0, rtol=0.25)
+
+
+def test_ground_without_any_slope_is_refused():
+    z = np.full((40, 50), np.nan)
+    z[20, 20] = 300.0
+    with pytest.raises(InputError, match="no cell has neighbours enough"):
+        run(plan_terrain(utm(z)))

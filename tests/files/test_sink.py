@@ -273,3 +273,10 @@ def test_gdal_without_the_compression(tmp_path, monkeypatch):
     with pytest.raises(OutputError, match="--compression"):
         write(tmp_path / "out", [ENERGY], (40, 50))
     assert list(tmp_path.iterdir()) == []
+
+
+def test_bands_with_names_of_their_own_keep_them(tmp_path):
+    parts = Layer("parts", ("global", "beam"), "MJ m-2", "all", band_names=("all of it", "beam"))
+    write(tmp_path, [parts], (40, 50))
+    with rasterio.open(tmp_path / "parts.tif") as found:
+        assert [found.tags(i)["long_name"] for i in (1, 2)] == ["all of it", "beam"]

@@ -11,17 +11,23 @@ import pytest
 from matplotlib.font_manager import FontEntry
 from matplotlib.image import imread
 from pyproj import Geod, Proj, Transformer
+from scipy.ndimage import map_coordinates
 
+from terrasol.cli import irradiation
+from terrasol.engine.job import Summary, plan_irradiation
 from terrasol.errors import SettingError
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import make_frame
+from terrasol.light.irradiation import LightSettings
 from terrasol.show import key, maps, page
-from terrasol.show.contours import contour_step, nice_step
+from terrasol.show.contours import contour_step, draw_contours, nice_step
 from terrasol.show.graticule import degrees_text
 from terrasol.show.maps import HEADER, LATITUDES, MARGIN, overview_png
 from terrasol.show.page import Page, clip, printable, text_width, wrap
 from terrasol.show.picture import make_picture
 from terrasol.show.relief import hatch, shade
+from terrasol.sky.clear import Air
+from terrasol.sky.period import parse_period
 
 FULL_BOX = maps.MAP_BOX
 SMALL_BOX = 480, 420
@@ -401,13 +407,94 @@ def test_light_comes_from_the_upper_left():
 
 def test_colours_grow_lighter_without_a_turn():
     """What makes the map readable in grey and to colour-blind eyes: lightness alone orders it."""
-    red, green, blue = key.Scale(0.0, 1.0).colours(np.linspace(0, 1, 256)).T.astype(float)
-    linear = [np.where(c <= 0.04045, c / 12.92, ((c + 0.055) / 1.055) ** 2.4) for c in
-              (red, green, blue)]  # fmt: skip
-    # Relative luminance of sRGB, IEC 61966-2-1.
-    luminance = 0.2126 * linear[0] + 0.7152 * linear[1] + 0.0722 * linear[2]
-    assert np.all(np.diff(luminance) > 0)
-    assert luminance[-1] > 8 * luminance[0]
+    bright = luminance(key.Scale(0.0, 1.0).colours(np.linspace(0, 1, 256)))
+    assert np.all(np.diff(bright) > 0)
+    assert bright[-1] > 8 * bright[0]
+
+
+def luminance(colours):
+    """Relative luminance of sRGB, IEC 61966-2-1."""
+    c = np.asarray(colours, float)
+    linear = np.where(c <= 0.04045, c / 12.92, ((c + 0.055) / 1.055) ** 2.4)
+    return linear @ [0.2126, 0.7152, 0.0722]
+
+
+def lightness(colours):
+    """CIE 1976 lightness L* from 0 to 100, ISO/CIE 11664-4; for luminance above 0.0089."""
+    return 116 * np.cbrt(luminance(colours)) - 16
+
+
+@pytest.fixture
+def no_lines(monkeypatch):
+    """Maps without contours and graticule."""
+    monkeypatch.setattr(maps, "contour_step", lambda heights: None)
+    monkeypatch.setattr(maps, "draw_graticule", lambda *all: None)
+
+
+def at_cells(image, picture):
+    """Colours in the middle of each cell, shape (rows, columns, 3)."""
+    rows, columns = int(np.nanmax(picture.rows)) + 1, int(np.nanmax(picture.columns)) + 1
+    colours = np.zeros((rows, columns, 3))
+    for cell in np.ndindex(rows, columns):
+        away = np.hypot(picture.rows - cell[0] - 0.5, picture.columns - cell[1] - 0.5)
+        colours[cell] = image[np.unravel_index(np.nanargmin(away), away.shape)]
+    return colours
+
+
+@pytest.mark.usefixtures("no_lines")
+def test_colours_read_off_the_bar():
+    """Nearest on the bar to a drawn cell is its value, to 3 per cent of the bar's range."""
+    y, x = np.mgrid[0:18, 0:24]
+    elevation = ground(400 + 60 * np.sin(x * 1.3) * np.cos(y * 1.1))  # steep in all directions
+    energy = np.random.default_rng(4).uniform(2000, 9000, elevation.shape).astype(np.float32)
+    picture = window(elevation)
+    drawn = at_cells(map_of(draw(elevation, energy), picture), picture)
+    scale = key.make_scale(picture.cells(energy))
+    bar = scale.colours(np.linspace(scale.low, scale.high, 256)).astype(float)
+    read = np.argmin(((drawn[..., None, :] - bar) ** 2).sum(axis=-1), axis=-1) / 255
+    true = np.clip((energy - scale.low) / (scale.high - scale.low), 0, 1)
+    assert np.abs(read - true).max() < 0.03
+
+
+@pytest.mark.usefixtures("no_lines")
+def test_flanks_of_one_value_look_alike_yet_not_the_same():
+    """Opposite flanks of equal energy: less than a tenth of the bar's lightness apart."""
+    y, x = np.mgrid[-10:11, -10:11]
+    elevation = ground(1000 - 40 * np.hypot(x, y))
+    energy = np.full(elevation.shape, 6000, np.float32) + 3000 * np.sign(y) * (abs(y) > 8)
+    picture = window(elevation)
+    drawn = lightness(at_cells(map_of(draw(elevation, energy), picture), picture))
+    bar = lightness(key.Scale(0.0, 1.0).colours(np.array([0.0, 1.0])))
+    apart = drawn[2:-2, 2:10] - drawn[2:-2, 18:10:-1]
+    assert np.abs(apart).max() < 0.1 * (bar[1] - bar[0])
+    across = np.diagonal(drawn)[3:9] - np.diagonal(drawn)[17:11:-1]
+    assert across.min() > 0.03 * (bar[1] - bar[0])
+
+
+@pytest.mark.parametrize("shape", [(2, 3), (2, 40), (9, 12)])
+def test_contours_of_a_plane_are_straight_to_the_rim(shape):
+    y, x = np.mgrid[0 : shape[0], 0 : shape[1]]
+    elevation = ground(300 + 30.0 * y + 20.0 * x)
+    picture = window(elevation)
+    page = Page(*picture.shape[::-1])
+    heights = picture.surface(picture.average(elevation.heights))
+    draw_contours(page, heights, 10.0, (0.0, 0.0))
+    known = np.argwhere(picture.ground)
+    (top, left), (bottom, right) = known.min(axis=0), known.max(axis=0)
+    reached = []
+    for lines in page.axes.collections:
+        for level, path in zip(lines.levels, lines.get_paths(), strict=True):
+            across, down = path.vertices.T
+            row, column = (
+                map_coordinates(cells, [down - 0.5, across - 0.5], order=1, mode="nearest")
+                for cells in (picture.rows, picture.columns)
+            )
+            plane = 300 + 30 * (row - 0.5) + 20 * (column - 0.5)
+            pixel = 36 * np.nanmedian(np.abs(np.diff(picture.columns, axis=1)))
+            assert np.nanmax(np.abs(plane - level)) < 0.2 * pixel
+            reached += [down.min() - top, bottom - down.max(), across.min() - left]
+            reached += [right - across.max()]
+    assert min(reached) <= 4
 
 
 def test_scale_of_the_colours():
@@ -441,7 +528,91 @@ def test_units_and_numbers_in_print():
 def test_degrees_in_print():
     assert degrees_text(-120.04, 0.02, "EW") == "120.04°W"
     assert degrees_text(46.5, 0.5, "NS") == "46.5°N"
-    assert degrees_text(0.0, 5.0, "EW") == "0°"
+    assert degrees_text(0.0, 0.5, "EW") == "0°"
+    assert degrees_text(-180.0, 0.5, "EW") == degrees_text(180.0, 0.01, "EW") == "180°"
+    assert degrees_text(-179.5, 0.5, "EW") == "179.5°W"
+
+
+def test_mean_in_print_is_finer_than_the_axis():
+    assert key.mean_text(843.8321, 0.01) == "mean 843.832"
+    assert key.mean_text(4729.236, 0.5) == "mean 4 729.24"
+    assert key.mean_text(7709.3, 1000.0) == "mean 7 709"
+    assert key.mean_text(0.0, 0.2) == "mean 0.000"
+
+
+@pytest.fixture
+def written(monkeypatch):
+    """All texts that sheets get."""
+    texts = []
+    text = Page.text
+
+    def record(page, x, y, words, size, **more):
+        texts.append(words)
+        text(page, x, y, words, size, **more)
+
+    monkeypatch.setattr(Page, "text", record)
+    return texts
+
+
+@pytest.mark.parametrize("count", [1, 8])
+def test_few_months_have_their_names(written, count):
+    means = {(2025, month): 100.0 + month for month in range(5, 5 + count)}
+    key.draw_months(Page(400, 200), 20, 20, maps.COLUMN, means)
+    assert written[0] == "May"
+    assert sum(len(text) == 3 and text.isalpha() for text in written) == count
+    assert max(text_width(text, key.SMALL) for text in written) < maps.COLUMN / key.FEW_MONTHS
+
+
+def test_months_without_sun_say_so(written, monkeypatch):
+    boxes = []
+    monkeypatch.setattr(Page, "box", lambda page, x, y, w, h, **more: boxes.append(h))
+    polar = dict(zip(MONTHS, [0.0, 0.4, 90, 400, 700, 820, 760, 500, 200, 40, 0.0, 0.0],
+                     strict=True))  # fmt: skip
+    key.draw_months(Page(400, 200), 20, 20, maps.COLUMN, polar)
+    assert written.count("0") == 3
+    assert "820" in written
+    assert [tall == 0 for tall in boxes] == [value == 0 for value in polar.values()]
+    assert min(tall for tall in boxes if tall > 0) >= 2
+
+
+def test_points_of_the_colour_bar_are_explained(written):
+    elevation = ground()
+    draw(elevation)
+    assert "The points of the colour bar hold the lowest" in " ".join(written)
+    scale = key.make_scale(np.arange(100_001.0))
+    assert pytest.approx(100 * scale.low / 100_000) == key.OUTSIDE
+    assert f" {key.OUTSIDE:g} % " in key.points_text(scale)
+    assert "lower" in key.points_text(key.Scale(0, 1, below=True))
+    assert "upper" in key.points_text(key.Scale(0, 1, above=True))
+    assert key.points_text(key.Scale(0, 1)) == ""
+
+
+def test_legend_tells_of_relief_where_there_is_any(written):
+    draw(ground())
+    assert "relief lightly shaded" in written
+    written.clear()
+    draw(ground(np.full((40, 50), 300.0)))
+    assert "relief lightly shaded" not in written
+
+
+@pytest.mark.parametrize(
+    ("air", "note"),
+    [
+        (Air.ineichen([2.0, 2.2, 2.5, 2.8, *[3.1] * 8]),
+         "Linke turbidity by month 2.2 to 2.8, albedo of the ground 0.15 to 0.6."),
+        (Air.bird(0.1, 1.5), "Albedo of the ground 0.15 to 0.6."),
+    ],
+    ids=["ineichen", "bird"],
+)  # fmt: skip
+def test_notes_name_turbidity_and_albedo_of_the_period(air, note, monkeypatch):
+    told = {}
+    monkeypatch.setattr(maps, "overview_png", lambda *all, **words: told.update(words))
+    period = parse_period("2025-02-01/2025-04-30")
+    albedo = (0.7, 0.6, 0.4, 0.15, *[0.1] * 8)
+    elevation = ground()
+    plan = plan_irradiation(elevation, LightSettings(period=period, air=air, albedo=albedo))
+    irradiation._draw(plan, sun_on(elevation), Summary({}, []), "Hills")
+    assert note in told["notes"]
 
 
 @pytest.mark.parametrize("span", [0.003, 1.0, 4.9, 620.0, 4000.0])
