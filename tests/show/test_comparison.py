@@ -1,0 +1,84 @@
+"""The sheet of a comparison: whole, always the same, for any place and any outcome."""
+
+import io
+
+import matplotlib
+import numpy as np
+import pytest
+from matplotlib.image import imread
+from reference.made_valley import AIR, made_series, wall_spot
+
+from terrasol.engine.comparison import Spot, compare_station
+from terrasol.show.comparison import MODELLED, WIDTH, chosen_days, comparison_png
+
+
+@pytest.fixture(scope="module")
+def report():
+    spot = wall_spot()
+    return compare_station(made_series(spot, days=40, cloudy=(3, 4, 9)), AIR, spot)
+
+
+def pixels(png):
+    return imread(io.BytesIO(png), format="png")[..., :3]
+
+
+def has_colour(image, colour):
+    wanted = np.array(matplotlib.colors.to_rgb(colour))
+    return bool((np.abs(image - wanted).max(axis=-1) < 0.02).any())
+
+
+def test_a_png_of_the_right_width(report):
+    png = comparison_png(report, title="Valley", notes=["one", "two"])
+    assert png[:8] == b"\x89PNG\r\n\x1a\n"  # ISO/IEC 15948, 5.2
+    image = pixels(png)
+    assert image.shape[1] == WIDTH
+    assert has_colour(image, MODELLED)
+
+
+def test_same_content_same_bytes_whatever_the_user_s_style(report):
+    first = comparison_png(report, title="Valley")
+    with matplotlib.rc_context({"axes.facecolor": "black", "font.size": 30, "lines.linewidth": 9}):
+        assert comparison_png(report, title="Valley") == first
+
+
+def test_notes_make_the_sheet_longer(report):
+    short, long = (
+        pixels(comparison_png(report, title="Valley", notes=["some words " * n])).shape[0]
+        for n in (2, 100)
+    )
+    assert long > short + 100
+
+
+def test_four_clear_days_spread_over_the_series(report):
+    days = chosen_days(report)
+    assert len(days) == 4
+    assert np.isin(days, report.clear_days).all()
+    assert (np.diff(days) > np.timedelta64(5, "D")).all()
+
+
+def test_without_a_clear_day_the_brightest_are_shown():
+    spot = wall_spot()
+    report = compare_station(made_series(spot, days=8, cloudy=range(8)), AIR, spot)
+    assert report.comparison is None
+    days = chosen_days(report)
+    assert len(days) == 4
+    # in March each day of a run is brighter than the one before: the last of each run of two
+    np.testing.assert_array_equal(days, np.datetime64("2025-03-06") + 2 * np.arange(4))
+    assert comparison_png(report, title="Dull")[:4] == b"\x89PNG"
+
+
+@pytest.mark.parametrize("latitude", [-33.0, 0.0, 78.0, -89.0])
+def test_any_latitude(latitude):
+    spot = Spot.under([5.0] * 16)
+    station = made_series(spot, days=10, start="2025-03-20", place=(latitude, -179.9))
+    report = compare_station(station, AIR, spot)
+    assert comparison_png(report, title="Elsewhere")[:4] == b"\x89PNG"
+
+
+def test_polar_night():
+    spot = Spot.under([5.0] * 16)
+    station = made_series(spot, days=10, start="2025-12-10", place=(85.0, 10.0))
+    report = compare_station(station, AIR, spot)
+    assert report.comparison is None
+    assert chosen_days(report) == []
+    assert comparison_png(report, title="Night")[:4] == b"\x89PNG"
