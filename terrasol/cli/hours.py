@@ -76,7 +76,9 @@ def hours(common: Common, around: Around, asked: AskedSky, **given: Any) -> None
     with naming(common.dem):
         frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
     air = asked.placed(asked.air((0.2,)), frame)
-    settled = asked.settle(air, given["period"], settings.step_seconds)
+    settled = asked.settle(air, given["period"], settings.step_seconds, elevation)
+    if settled.index_map is not None:
+        raise click.UsageError("hours take --clear-sky-index as numbers, not as a raster")
     days = parse_days(given["days"], settled.period)
     settings = replace(settings, sky=settled.sky or air, period=settled.period, days=days)
     scene = around.scene(elevation, frame)

@@ -9,15 +9,28 @@ import click
 
 from terrasol.cli.ground_options import Around, ground_options
 from terrasol.cli.options import Common, Numbers, common_options
-from terrasol.cli.sky_options import PAPERS, AskedSky, air_record, shortest, sky_options
-from terrasol.constants import ENERGY_UNITS
+from terrasol.cli.sky_options import (
+    PAPERS,
+    AskedSky,
+    Settled,
+    air_record,
+    file_record,
+    shortest,
+    sky_options,
+)
+from terrasol.constants import ENERGY_UNITS, PHOTONS_PER_JOULE
 
 if TYPE_CHECKING:
     import numpy as np
     from numpy.typing import NDArray
 
     from terrasol.engine.job import Plan, Summary
+    from terrasol.ground.elevation import Elevation
     from terrasol.light.irradiation import LightSettings
+
+
+ALBEDO_FOR_NOW = (0.2,)
+"""Stands for an albedo that is read later; where a map of it is void, it is what counts."""
 
 
 @click.command(short_help="The sun's energy for a year or any period, and its months.")
@@ -28,7 +41,12 @@ if TYPE_CHECKING:
     " 2025-04-01/2025-10-31. [default: a typical year]",
 )
 @click.option(
-    "--albedo", type=Numbers(), default="0.2", show_default=True, help="Albedo of the ground."
+    "--albedo",
+    type=Numbers("station", raster=True),
+    default="0.2",
+    show_default=True,
+    help="Albedo of the ground: numbers, a RASTER of one band or of twelve, or 'station' for what"
+    " SERIES measured.",
 )
 @click.option(
     "--diffuse",
@@ -62,6 +80,17 @@ if TYPE_CHECKING:
 )
 @click.option("--parts", is_flag=True, help="Write also beam, diffuse and reflected by month.")
 @sky_options
+@click.option(
+    "--photosynthetic",
+    is_flag=True,
+    help="Write also photosynthetic_months.tif, mol m-2 d-1 of a mean day of each month.",
+)
+@click.option(
+    "--photons-per-joule",
+    metavar="UMOL",
+    type=float,
+    help=f"Photosynthetic photons in a joule of global light. [default: {PHOTONS_PER_JOULE:g}]",
+)
 @ground_options
 @common_options
 def irradiation(common: Common, around: Around, asked: AskedSky, **given: Any) -> None:
@@ -82,8 +111,14 @@ def irradiation(common: Common, around: Around, asked: AskedSky, **given: Any) -
     with naming(common.dem):
         frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
     settings = replace(settings, air=asked.placed(settings.air, frame))
-    settled = asked.settle(settings.air, given["period"], settings.step_seconds)
-    settings = replace(settings, period=settled.period, sky=settled.sky)
+    settled = asked.settle(settings.air, given["period"], settings.step_seconds, elevation)
+    settings = replace(
+        settings,
+        period=settled.period,
+        sky=settled.sky,
+        index_map=settled.index_map,
+        **_albedo(given["albedo"], settled, elevation),
+    )
     scene = around.scene(elevation, frame)
     with naming(common.dem):
         plan = plan_irradiation(elevation, settings, scene)
@@ -91,6 +126,9 @@ def irradiation(common: Common, around: Around, asked: AskedSky, **given: Any) -
     record = _record(settings) | settled.record | around.record()
     record["centre"] = {"latitude": round(latitude, 5), "longitude": round(longitude, 5)}
     inputs = (*around.inputs, *settled.inputs)
+    if settings.albedo_map is not None:
+        record["albedo"] = file_record(given["albedo"])
+        inputs = (*inputs, given["albedo"])
     notes = (*asked.doubts(frame), *settled.warnings)
     run(Job("irradiation", common, ground, plan, record, _draw, inputs, notes))
 
@@ -100,10 +138,14 @@ def _settings(common: Common, asked: AskedSky, given: dict[str, Any]) -> LightSe
     from terrasol.light.irradiation import LightSettings, twelve
     from terrasol.sky.period import parse_period
 
+    if given["photons_per_joule"] is not None and not given["photosynthetic"]:
+        raise click.UsageError("--photons-per-joule belongs to --photosynthetic")
+    photons = given["photons_per_joule"] or PHOTONS_PER_JOULE
+    albedo = ALBEDO_FOR_NOW if isinstance(given["albedo"], str) else given["albedo"]
     return LightSettings(
         period=parse_period(given["period"]),
-        air=asked.air(given["albedo"]),
-        albedo=twelve(given["albedo"], "albedo"),
+        air=asked.air(albedo),
+        albedo=twelve(albedo, "albedo"),
         diffuse=given["diffuse"],
         azimuths=common.azimuths,
         step_seconds=given["step_seconds"],
@@ -111,14 +153,26 @@ def _settings(common: Common, asked: AskedSky, given: dict[str, Any]) -> LightSe
         basis=given["basis"],
         monthly_parts=given["parts"],
         refraction=common.refraction,
+        photons_per_joule=photons if given["photosynthetic"] else None,
     )
+
+
+def _albedo(asked: Any, settled: Settled, elevation: Elevation) -> dict[str, Any]:
+    """The settings of an albedo that is not in numbers."""
+    from terrasol.files.maps import read_map
+
+    if asked == "station":
+        return {"albedo": settled.albedo()}
+    if isinstance(asked, str):
+        return {"albedo_map": read_map(asked, elevation, "albedo", 0.0, 1.0)}
+    return {}
 
 
 def _record(settings: LightSettings) -> dict[str, Any]:
     """Settings as plain text and numbers."""
-    record = asdict(replace(settings, sky=None, albedo_map=None))
+    record = asdict(replace(settings, sky=None, albedo_map=None, index_map=None))
     period = settings.period
-    del record["sky"], record["albedo_map"]
+    del record["sky"], record["albedo_map"], record["index_map"]
     record["albedo"] = shortest(settings.albedo)
     record["air"] = air_record(settings.air)
     record["period"] = {

@@ -56,12 +56,14 @@ class Numbers(click.ParamType):
 
     name = "numbers"
 
-    def __init__(self, word: str | None = None) -> None:
+    def __init__(self, word: str | None = None, *, raster: bool = False) -> None:
         self.word = word
+        self.raster = raster
 
     def get_metavar(self, param: click.Parameter, ctx: click.Context) -> str:
         """Name in the help."""
-        return f"{self.word.upper()}|NUMBER|12 NUMBERS" if self.word else "NUMBER|12 NUMBERS"
+        word = [self.word] if self.word else []
+        return "|".join([*word, "NUMBER", "12 NUMBERS", *(["RASTER"] if self.raster else [])])
 
     def convert(self, value: Any, param: Any, ctx: Any) -> Any:
         """Read the text."""
@@ -71,6 +73,8 @@ class Numbers(click.ParamType):
             numbers = tuple(float(part) for part in value.split(","))
         except ValueError:
             numbers = ()
+        if not numbers and self.raster and "." in value:
+            return value
         if len(numbers) not in (1, 12):
             either = f"'{self.word}', " if self.word else ""
             self.fail(f"'{value}' is not {either}one number or twelve joined by commas", param, ctx)

@@ -119,7 +119,7 @@ def series(common: Common, around: Around, asked: AskedSky, **given: Any) -> Non
     with naming(common.dem):
         frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
     air = asked.placed(asked.air(given["albedo"]), frame)
-    settled = asked.settle(air, given["period"], STATION_SECONDS)
+    settled = asked.settle(air, given["period"], STATION_SECONDS, elevation)
     settings = replace(settings, sky=settled.sky or air, period=settled.period)
     scene = around.scene(elevation, frame)
     with naming(common.dem):

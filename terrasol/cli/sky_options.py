@@ -14,10 +14,15 @@ from terrasol.cli.options import Numbers
 from terrasol.constants import SOLAR_CONSTANT
 
 if TYPE_CHECKING:
+    import numpy as np
+    from numpy.typing import NDArray
+
+    from terrasol.ground.elevation import Elevation
     from terrasol.ground.frame import Frame
     from terrasol.sky.clear import Air
     from terrasol.sky.irradiance import Sky
     from terrasol.sky.period import Period
+    from terrasol.sky.station import Station
 
 PAPERS = {"ineichen": "Ineichen and Perez 2002", "bird": "Bird and Hulstrom 1981"}
 """Clear-sky models, by the name of the option's choice."""
@@ -49,6 +54,10 @@ class Settled:
         What a careful reader should know.
     inputs : tuple of str
         Files that were read.
+    station : Station, optional
+        Whose sky it is.
+    index_map : ndarray, optional
+        Clear-sky index of each cell, in place of a sky.
     """
 
     sky: Sky | None
@@ -56,6 +65,16 @@ class Settled:
     record: dict[str, Any] = field(default_factory=dict)
     warnings: tuple[str, ...] = ()
     inputs: tuple[str, ...] = ()
+    station: Station | None = None
+    index_map: NDArray[np.float32] | None = None
+
+    def albedo(self) -> tuple[float, ...]:
+        """Measured albedo of each month, where --albedo asks for the station's."""
+        from terrasol.sky.measured import monthly_albedo
+
+        if self.station is None:
+            raise click.UsageError("--albedo station needs --station, which is not given")
+        return monthly_albedo(self.station, self.period)
 
 
 @dataclass(frozen=True)
@@ -112,24 +131,25 @@ class AskedSky:
         if self.model != "ineichen" or self.linke != CLIMATOLOGY:
             return ()
         spread = np.linspace(0, 1, 3)
-        rows, columns = (
-            np.round(spread * (size - 1)).astype(int) for size in frame.latitude.shape
-        )
+        rows, columns = (np.round(spread * (size - 1)).astype(int) for size in frame.latitude.shape)
         nodes = np.ix_(rows, columns)
         return turbidity_doubts(frame.centre, frame.latitude[nodes], frame.longitude[nodes])
 
-    def settle(self, air: Air, period: str | None, step_seconds: float) -> Settled:
+    def settle(
+        self, air: Air, period: str | None, step_seconds: float, elevation: Elevation
+    ) -> Settled:
         """Read the station, or take the indices; the sky is clear if neither was given."""
         from terrasol.light.irradiation import twelve
         from terrasol.sky.cloud import MonthlySky
         from terrasol.sky.period import parse_period
 
+        if isinstance(self.clear_sky_index, str):
+            return self._mapped(self.clear_sky_index, parse_period(period), elevation)
         if self.clear_sky_index is not None:
             sky = MonthlySky(air, twelve(self.clear_sky_index, "the clear-sky index"))
             return Settled(sky, parse_period(period), {"clear_sky_index": list(sky.index)})
         if self.station is None:
             return Settled(None, parse_period(period))
-        from terrasol.files.provenance import sha256
         from terrasol.files.tables import read_station
         from terrasol.sky.gaps import LONGEST_HOURS
         from terrasol.sky.measured import measured_sky
@@ -142,10 +162,21 @@ class AskedSky:
             fill_hours=LONGEST_HOURS if self.fill_hours is None else self.fill_hours,
             step_seconds=step_seconds,
         )
-        told = {"file": os.path.abspath(self.station), "sha256": sha256(self.station)}
+        told = file_record(self.station)
         inputs = [self.station, *([self.station_settings] if self.station_settings else [])]
         record = {"station": told | found.report}
-        return Settled(found.sky, found.period, record, found.warnings, tuple(inputs))
+        return Settled(
+            found.sky, found.period, record, found.warnings, tuple(inputs), found.station
+        )
+
+    def _mapped(self, path: str, period: Period, elevation: Elevation) -> Settled:
+        """Read a raster of clear-sky indices."""
+        from terrasol.files.maps import read_map
+        from terrasol.sky.cloud import LEAST_INDEX, MOST_INDEX
+
+        index = read_map(path, elevation, "clear-sky index", LEAST_INDEX, MOST_INDEX)
+        record = {"clear_sky_index": file_record(path)}
+        return Settled(None, period, record, inputs=(path,), index_map=index)
 
     def _check(self) -> None:
         """Refuse options that do not go together."""
@@ -169,6 +200,13 @@ class AskedSky:
                 if getattr(self, name) is not None:
                     option = name.replace("_", "-")
                     raise click.UsageError(f"--{option} belongs to --station, which is not given")
+
+
+def file_record(path: str) -> dict[str, str]:
+    """A file and its hash, ready for JSON."""
+    from terrasol.files.provenance import sha256
+
+    return {"file": os.path.abspath(path), "sha256": sha256(path)}
 
 
 def air_record(air: Air) -> dict[str, Any]:
@@ -247,8 +285,9 @@ _CLOUDS = (
     ),
     click.option(
         "--clear-sky-index",
-        type=Numbers(),
-        help="Monthly mean of global light by that of a clear sky: clouds without a station.",
+        type=Numbers(raster=True),
+        help="Monthly mean of global light by that of a clear sky: clouds without a station. A"
+        " RASTER of one band, or of twelve, gives each cell its own.",
     ),
 )
 

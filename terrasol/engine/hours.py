@@ -14,21 +14,19 @@ from scipy.interpolate import RegularGridInterpolator
 
 from terrasol.constants import REFRACTION_COEFFICIENT
 from terrasol.engine import outputs
+from terrasol.engine.blocks import Arrays, status_of, with_block
 from terrasol.engine.datasets import _check_ground, _dataset, _scene
 from terrasol.engine.ground_work import BlockGround, Ground
 from terrasol.engine.horizon_gap import GapTally, horizon_gap
 from terrasol.engine.job import (
     NO_SCENE,
-    Arrays,
     Plan,
+    Run,
     Summary,
-    Totals,
-    _check_blocks,
-    _Run,
-    _status,
-    _with_block,
+    check_blocks,
 )
 from terrasol.engine.plan import Block, Progress, blocks_of, check_threads, default_threads
+from terrasol.engine.totals import Totals
 from terrasol.files.layers import Layer, Sink
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
@@ -173,7 +171,7 @@ def plan_hours(elevation: Elevation, settings: HoursSettings, scene: Scene = NO_
         A raster that cannot be placed on the Earth, or with cells too coarse for its blocks.
     """
     frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
-    _check_blocks(frame)
+    check_blocks(frame)
     layers = [*hours_layers(settings)]
     if scene.highest is not None:
         layers.append(outputs.horizon_gap_layer(scene.highest, None))
@@ -185,7 +183,7 @@ def plan_hours(elevation: Elevation, settings: HoursSettings, scene: Scene = NO_
     )
 
 
-class _HoursRun(_Run):
+class _HoursRun(Run):
     """One run of a plan of hours: its stages in order."""
 
     plan: HoursPlan
@@ -203,7 +201,7 @@ class _HoursRun(_Run):
         days = self._days()
         work = partial(_block_hours, ground, [layer.name for layer in plan.layers], tables, days)
         totals, gaps = Totals(), GapTally()
-        blocks = [partial(_with_block, work, block) for block in blocks_of(plan.elevation.shape)]
+        blocks = [partial(with_block, work, block) for block in blocks_of(plan.elevation.shape)]
         for block, arrays in self._stage("blocks", blocks, 1.0 - self.done):
             totals.add(arrays)
             if "horizon_gap" in arrays:
@@ -253,7 +251,7 @@ def _block_hours(
     if gap:
         arrays["horizon_gap"] = np.concatenate(gap, axis=1)
     if "status" in names:
-        arrays["status"] = _status(ground.elevation, block)[None]
+        arrays["status"] = status_of(ground.elevation, block)[None]
     return arrays
 
 

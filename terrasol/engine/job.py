@@ -9,38 +9,41 @@ from functools import cached_property, partial
 from typing import Any
 
 import numpy as np
-from numpy.typing import NDArray
 
 from terrasol.constants import REFRACTION_COEFFICIENT, SURROUNDINGS_SCALE
 from terrasol.engine import outputs
-from terrasol.engine.ground_work import BlockGround, Ground, lay_out
-from terrasol.engine.horizon_gap import GapTally, horizon_gap
+from terrasol.engine.blocks import (
+    Tables,
+    across_void,
+    block_arrays,
+    level_ground,
+    sample_block,
+    with_block,
+)
+from terrasol.engine.ground_work import Ground, lay_out
+from terrasol.engine.horizon_gap import GapTally
 from terrasol.engine.plan import (
-    Block,
     Progress,
     blocks_of,
     carry_out,
     check_threads,
     default_threads,
 )
+from terrasol.engine.totals import Totals
 from terrasol.errors import InputError, counted
 from terrasol.files.layers import Layer, Sink
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame, make_frame
 from terrasol.ground.horizon import BLOCK, NODE_STEP
-from terrasol.ground.surface import slope_and_aspect
-from terrasol.kernels.rounding import tally
+from terrasol.light.indexed import MappedTables, even_indices
 from terrasol.light.irradiation import (
     MIXED_BYTES,
-    UNITS,
     LightSettings,
     SkyTables,
     Surroundings,
     check_azimuths,
     check_refraction,
-    sky_light,
-    strip_light,
     table_bytes,
 )
 from terrasol.sky.suntable import height_knots, latitude_knots
@@ -63,8 +66,6 @@ METRES_A_DEGREE = 111_195.0
 
 NO_SCENE = Scene()
 """The raster's own ground and nothing else."""
-
-Arrays = dict[str, NDArray[Any]]
 
 
 @dataclass
@@ -132,9 +133,12 @@ class Plan:
 
     @property
     def _knots(self) -> tuple[int, int]:
-        """How many knots of latitude and of height the sun tables have."""
+        """How many latitudes, over all skies, and heights the sun tables are made for."""
         latitudes, heights = self.ranges
-        return latitude_knots(*latitudes).size, height_knots(*heights).size
+        skies = 1
+        if self.settings is not None and self.settings.index_map is not None:
+            skies = even_indices(self.settings.index_map).size
+        return skies * latitude_knots(*latitudes).size, height_knots(*heights).size
 
     @property
     def memory_bytes(self) -> int:
@@ -198,7 +202,7 @@ class Plan:
         """
         threads = default_threads() if threads is None else threads
         check_threads(threads)
-        return _Run(self, threads, progress or (lambda share, stage: None)).do(sink)
+        return Run(self, threads, progress or (lambda share, stage: None)).do(sink)
 
 
 def plan_terrain(
@@ -273,12 +277,12 @@ def plan_irradiation(
     if scene.highest is not None:
         layers.append(outputs.horizon_gap_layer(scene.highest, settings))
     frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
-    _check_blocks(frame)
+    check_blocks(frame)
     azimuths, refraction = settings.azimuths, settings.refraction
     return Plan(elevation, frame, azimuths, refraction, settings, tuple(layers), scene)
 
 
-def _check_blocks(frame: Frame) -> None:
+def check_blocks(frame: Frame) -> None:
     """Raise InputError where a block reaches too far north for one sun table."""
     cell = max(frame.cell_size)
     tallest = min(float(np.ptp(frame.latitude)), BLOCK * cell / METRES_A_DEGREE)
@@ -294,7 +298,7 @@ def _terrain_layers(elevation: Elevation) -> tuple[Layer, ...]:
     return (outputs.SLOPE, outputs.ASPECT, outputs.SKY_VIEW, *status)
 
 
-class _Run:
+class Run:
     """One run of a plan: its stages in order."""
 
     def __init__(self, plan: Plan, threads: int, progress: Progress) -> None:
@@ -313,10 +317,10 @@ class _Run:
         ground = self._ground()
         surroundings = self._surroundings(ground, tables) if tables else None
         names = [layer.name for layer in plan.layers]
-        work = partial(_block_arrays, ground, names, tables, surroundings)
+        work = partial(block_arrays, ground, names, tables, surroundings)
         totals, gaps = Totals(), GapTally()
         blocks = blocks_of(plan.elevation.shape)
-        tasks = [partial(_with_block, work, block) for block in blocks]
+        tasks = [partial(with_block, work, block) for block in blocks]
         for block, arrays in self._stage("blocks", tasks, 1.0 - self.done):
             totals.add(arrays)
             if "horizon_gap" in arrays:
@@ -337,13 +341,18 @@ class _Run:
             yield result
         self.summary.seconds[name] = round(time.perf_counter() - start, 3)
 
-    def _tables(self) -> SkyTables:
+    def _tables(self) -> Tables:
         """Sun tables at the knots that the raster needs."""
         plan = self.plan
-        assert plan.settings is not None
-        tables = SkyTables.over(plan.settings, plan.frame.centre[1], *plan.ranges)
-        tasks = [partial(tables.fill, i) for i in range(tables.latitudes.size)]
-        for _ in self._stage("sun tables", tasks, 0.08):
+        settings = plan.settings
+        assert settings is not None
+        middle = plan.frame.centre[1]
+        tables: Tables
+        if settings.index_map is None:
+            tables = SkyTables.over(settings, middle, *plan.ranges)
+        else:
+            tables = MappedTables.over(settings, settings.index_map, middle, *plan.ranges)
+        for _ in self._stage("sun tables", tables.tasks, 0.08):
             pass
         return tables
 
@@ -357,26 +366,28 @@ class _Run:
             pass
         return ground
 
-    def _surroundings(self, ground: Ground, tables: SkyTables) -> Surroundings:
+    def _surroundings(self, ground: Ground, tables: Tables) -> Surroundings:
         """Mean of what the terrain around each place receives."""
         months = len(tables.settings.period.months)
-        if not any(tables.settings.month_albedo):
+        settings = tables.settings
+        if settings.albedo_map is None and not any(settings.month_albedo):
             return Surroundings.none(months)
         cell = max(ground.frame.cell_size)
         most = max(min(ground.elevation.shape) // 4, 1)
         stride = int(np.clip(SURROUNDINGS_SCALE / (2.0 * cell), 1, min(most, SAMPLE_STRIDE)))
-        shape = tuple(-(-size // stride) for size in ground.elevation.shape)
+        rows, columns = ground.elevation.shape
+        shape = -(-rows // stride), -(-columns // stride)
         samples = np.full((months + 1, *shape), np.nan, np.float32)
         tasks = [
-            partial(_sample_block, ground, tables, stride, block, samples)
+            partial(sample_block, ground, tables, stride, block, samples)
             for block in blocks_of(ground.elevation.shape)
         ]
         for _ in self._stage("light of the terrain around", tasks, 0.07):
             pass
-        albedo = tables.settings.month_albedo
+        albedo = settings.sampled_albedo(stride, shape)
         return Surroundings.of(samples, stride, ground.frame.cell_size, albedo)
 
-    def _conclude(self, ground: Ground, totals: Totals, tables: SkyTables | None) -> None:
+    def _conclude(self, ground: Ground, totals: Totals, tables: Tables | None) -> None:
         """Put numbers and warnings into the summary."""
         if not totals.bands:
             raise InputError(
@@ -388,11 +399,11 @@ class _Run:
         summary.numbers = {
             "cells": int(heights.size),
             "void_cells": int(heights.size - known.sum()),
-            "cells_looking_across_void": _across_void(ground, known),
+            "cells_looking_across_void": across_void(ground, known),
             **totals.means(self.plan),
         }
         if tables is not None:
-            summary.numbers["level_ground"] = _level_ground(ground, tables)
+            summary.numbers["level_ground"] = level_ground(ground, tables)
             summary.numbers["unit"] = tables.settings.unit
             summary.numbers["basis"] = outputs.basis_words(tables.settings)
             summary.numbers["sky"] = outputs.sky_kind(tables.settings)
@@ -417,155 +428,3 @@ class _Run:
             (summary.warnings if gaps.over else remarks).append(said)
         if remarks:
             summary.numbers["remarks"] = remarks
-
-
-def _with_block(work: Callable[[Block], Arrays], block: Block) -> tuple[Block, Arrays]:
-    return block, work(block)
-
-
-def _block_arrays(
-    ground: Ground,
-    names: list[str],
-    tables: SkyTables | None,
-    surroundings: Surroundings | None,
-    block: Block,
-) -> Arrays:
-    """Everything that is written of one block, by layer name."""
-    piece = BlockGround(ground, block)
-    slope, aspect = slope_and_aspect(piece.normal)
-    arrays: Arrays = {"slope": slope[None], "aspect": aspect[None]}
-    gathered: dict[str, list[NDArray[np.float32]]] = {
-        name: [] for name in names if name not in ("slope", "aspect", "status")
-    }
-    for rows in piece.pieces():
-        strip = piece.strip(rows)
-        sky = strip.sky()
-        gathered["sky_view"].append(sky[0][None])
-        if "horizon" in gathered:
-            degrees = np.degrees(np.arctan(strip.horizon))
-            gathered["horizon"].append(np.where(np.isnan(strip.normal[2]), np.nan, degrees))
-        if "horizon_gap" in gathered:
-            gathered["horizon_gap"].append(horizon_gap(piece, strip, rows, tables))
-        if tables is not None and surroundings is not None:
-            place = block.row + rows[0], block.column
-            light = strip_light(strip, sky, tables, surroundings, place)
-            whole = next(n for n in names if n in ("irradiation_year", "irradiation_period"))
-            gathered[whole].append(light.year)
-            gathered["irradiation_months"].append(light.months)
-            for part, values in zip(
-                ("beam", "diffuse", "reflected"), light.month_parts, strict=True
-            ):
-                if f"{part}_months" in gathered:
-                    gathered[f"{part}_months"].append(values)
-    for name, parts in gathered.items():
-        arrays[name] = np.concatenate(parts, axis=1)
-    if "status" in names:
-        arrays["status"] = _status(ground.elevation, block)[None]
-    return arrays
-
-
-def _status(elevation: Elevation, block: Block) -> NDArray[np.uint8]:
-    window = np.s_[block.row : block.row + block.rows, block.column : block.column + block.columns]
-    assert elevation.filled is not None
-    status = elevation.filled[window].astype(np.uint8)
-    status[np.isnan(elevation.heights[window])] = 2
-    return status
-
-
-def _sample_block(
-    ground: Ground,
-    tables: SkyTables,
-    stride: int,
-    block: Block,
-    samples: NDArray[np.float32],
-) -> None:
-    """What every `stride`-th cell of every `stride`-th row receives from the sky itself."""
-    piece = BlockGround(ground, block)
-    offset = stride // 2
-    rows = range((offset - block.row) % stride, block.rows, stride)
-    first_column = (offset - block.column) % stride
-    if not rows or first_column >= block.columns:
-        return
-    strip = piece.strip(rows).thin(first_column, stride)
-    received = np.empty((samples.shape[0], *strip.heights.shape), np.float32)
-    for served in piece.pieces():  # by the sun tables that the cells themselves get
-        inside = [i for i, row in enumerate(rows) if row in served]
-        if inside:
-            part = slice(inside[0], inside[-1] + 1)
-            alone = strip.part(part, piece.table_latitude(served))
-            received[:, part] = sky_light(alone, tables)
-    row, column = (block.row + rows[0]) // stride, (block.column + first_column) // stride
-    height, width = received.shape[1:]
-    samples[:, row : row + height, column : column + width] = received
-
-
-def _across_void(ground: Ground, known: NDArray[np.bool_]) -> int:
-    """Cells with a line of sight that crosses a void, counted by the nearest node."""
-    nodes = np.asarray(ground.far.across_void.any(axis=0))
-    if not nodes.any():
-        return 0
-    rows = np.arange(known.shape[0]) // NODE_STEP
-    columns = np.arange(known.shape[1]) // NODE_STEP
-    return int(sum((nodes[row][columns] & known[i]).sum() for i, row in enumerate(rows)))
-
-
-def _level_ground(ground: Ground, tables: SkyTables) -> float:
-    """Irradiation of open level ground at the raster's middle and mean height."""
-    level = tables.exactly(ground.frame.centre[0]).table.level
-    value = np.interp(ground.far.datum, tables.heights, level.sum(axis=1))
-    return round(float(value) * UNITS[tables.settings.unit], 2)
-
-
-class Totals:
-    """Running count, sum and range of each band."""
-
-    def __init__(self) -> None:
-        self.bands: dict[tuple[str, int], list[float]] = {}
-
-    def add(self, arrays: Arrays) -> None:
-        """Take in a block."""
-        for name, values in arrays.items():
-            if name in ("aspect", "horizon", "status"):
-                continue
-            for band, plane in enumerate(values):
-                found = np.empty(4)
-                tally(np.ascontiguousarray(plane, np.float32).reshape(-1), found)
-                count, total, low, high = found.tolist()
-                if count:
-                    old = self.bands.setdefault((name, band), [0.0, 0.0, np.inf, -np.inf])
-                    self.bands[name, band] = [
-                        old[0] + count,
-                        old[1] + total,
-                        min(old[2], low),
-                        max(old[3], high),
-                    ]
-
-    def means(self, plan: Plan) -> dict[str, Any]:
-        """Mean, least and greatest of every band, by layer."""
-        found: dict[str, Any] = {}
-        for layer in plan.layers:
-            rows = {
-                label: {
-                    "mean": round(total / count, 4),
-                    "least": round(low, 4),
-                    "greatest": round(high, 4),
-                }
-                for band, label in enumerate(layer.bands)
-                if (layer.name, band) in self.bands
-                for count, total, low, high in [self.bands[layer.name, band]]
-            }
-            if rows:
-                found[layer.name] = {"unit": layer.unit, **rows}
-            if rows and layer.band_units:
-                found |= _one_unit_each(layer, rows)
-        return found
-
-
-def _one_unit_each(layer: Layer, rows: dict[str, Any]) -> dict[str, Any]:
-    """Figures of a layer whose bands have units of their own: one entry a band."""
-    names = [layer.name, *(f"{layer.name}: {band}" for band in layer.bands[1:])]
-    return {
-        name: {"unit": unit, band: rows[band]}
-        for name, unit, band in zip(names, layer.units, layer.bands, strict=True)
-        if band in rows
-    }

@@ -105,6 +105,8 @@ def basis_words(settings: LightSettings) -> str:
 
 def sky_kind(settings: LightSettings) -> str:
     """What sky the light comes from: clear, measured or monthly index."""
+    if settings.index_map is not None:
+        return "monthly index"
     if settings.sky is None:
         return "clear"
     return "monthly index" if isinstance(settings.sky, MonthlySky) else "measured"
@@ -156,6 +158,8 @@ def light_layers(settings: LightSettings) -> tuple[Layer, ...]:
             tags=tags,
         ),
     ]
+    if settings.photons_per_joule is not None:
+        layers.append(_photosynthetic_layer(settings, tags))
     for part in ("beam", "diffuse", "reflected") if settings.monthly_parts else ():
         layers.append(
             Layer(
@@ -168,3 +172,16 @@ def light_layers(settings: LightSettings) -> tuple[Layer, ...]:
             )
         )
     return tuple(layers)
+
+
+def _photosynthetic_layer(settings: LightSettings, tags: dict[str, str]) -> Layer:
+    """Photosynthetic light of a mean day of each month."""
+    return Layer(
+        "photosynthetic_months",
+        month_labels(settings),
+        "mol m-2 d-1",
+        "photosynthetic photons of a mean day of the month in the plane of the slope,"
+        f" {basis_words(settings)}: {settings.photons_per_joule:g} umol a joule of global light",
+        resolution=2.0**-10,
+        tags=tags,
+    )

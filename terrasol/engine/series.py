@@ -14,13 +14,13 @@ from numpy.typing import NDArray
 
 import terrasol
 from terrasol.constants import SURROUNDINGS_SCALE
+from terrasol.engine.blocks import across_void
 from terrasol.engine.ground_work import BlockGround, Ground, lay_out
 from terrasol.engine.job import (
     SAMPLE_STRIDE,
     SECONDS_A_CELL_AND_AZIMUTH,
     Summary,
-    _across_void,
-    _check_blocks,
+    check_blocks,
 )
 from terrasol.engine.plan import (
     Block,
@@ -305,7 +305,7 @@ def plan_series(
         A raster that cannot be placed on the Earth, or with cells too coarse for its blocks.
     """
     frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
-    _check_blocks(frame)
+    check_blocks(frame)
     edges = step_edges(settings, frame.centre[1])
     return SeriesPlan(elevation, frame, settings, edges, scene or Scene())
 
@@ -377,7 +377,7 @@ class _Run:
         )
         for _ in self._each("far horizon", tasks, 0.0, 0.6 * HORIZON_SHARE):
             pass
-        across = _across_void(ground, np.isfinite(elevation.heights))
+        across = across_void(ground, np.isfinite(elevation.heights))
         with HorizonDraft(store, plan.key) as draft:
             keep = [partial(_keep_horizons, ground, draft, block) for block in self.blocks]
             for _ in self._each("horizons", keep, 0.6 * HORIZON_SHARE, 0.4 * HORIZON_SHARE):

@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from terrasol.sky.diffuse import split_diffuse
-from terrasol.sky.interval import behind_horizon, cosine, interval_means
+from terrasol.sky.interval import behind_horizon, cosine, interval_means, lit
 from terrasol.sky.irradiance import Sky
 from terrasol.sky.station import Station
 from terrasol.sky.sun import SunSeries
@@ -30,7 +30,8 @@ class Modelled:
     Attributes
     ----------
     shaded
-        With the terrain's horizon, sky view and reflection.
+        With the terrain's horizon, sky view and reflection; as all light, NaN where the sky is
+        not known throughout the interval.
     open
         As on an open plain.
     dull
@@ -85,7 +86,7 @@ def model_station(
             "open": whole,
             "dull": dull,
             "shaded": np.where(behind_horizon(sun, horizon), 0.0, direct) + dull,
-            "lit": (sun.elevation > 0.0).astype(np.float64),
+            "lit": lit(sun),
         }
 
     means = interval_means(station, fluxes)
@@ -149,7 +150,8 @@ class Shade:
     with_horizon, without_horizon : float
         Rms of modelled less measured in these [W/m2].
     explained : float
-        Share of the squared misfit that the horizon takes away; negative if it adds some.
+        Share of the squared misfit that the horizon takes away; negative if it adds some, and
+        minus infinity if there was none without it.
     first_minutes, last_minutes : float
         Median over the days of when the measured sun comes, and goes, less when the modelled
         one does [minutes]; as fine as the intervals are. NaN without a day.
@@ -249,12 +251,13 @@ def _shade(station: Station, modelled: Modelled, kept: NDArray[np.bool_]) -> Sha
         return Shade(count, unknown, unknown, unknown, unknown, unknown, words)
     with_it = Agreement.of(measured[matters], modelled.shaded[matters]).rms
     without = Agreement.of(measured[matters], modelled.open[matters]).rms
-    explained = 1.0 - (with_it / without) ** 2 if without > 0.0 else float("nan")
+    explained = 1.0 - (with_it / without) ** 2 if without > 0.0 else -np.inf
     first, last = _comings_and_goings(station, modelled, kept)
     verdict = "explains" if explained > 0.8 else "partly explains" if explained > 0.4 else "misses"
+    change = "falls" if with_it < without else "rises"
     words = (
         f"the modelled horizon {verdict} when the sun comes and goes: in {count} intervals it"
-        f" takes {SHADE_MATTERS:g} W/m2 or more, and with it the rms falls from {without:.0f} to"
+        f" takes {SHADE_MATTERS:g} W/m2 or more, and with it the rms {change} from {without:.0f} to"
         f" {with_it:.0f} W/m2"
     )
     return Shade(count, with_it, without, explained, first, last, words)

@@ -8,7 +8,6 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass, replace
-from functools import partial
 from typing import Final
 
 import numpy as np
@@ -33,6 +32,28 @@ Perez et al. (1990), which a sky of one index a month enters all at once."""
 
 MonthMap = NDArray[np.float32]
 """Clear-sky index, shape (1 or 12, rows, columns): for the year, or January to December."""
+
+
+def even_indices(index: MonthMap) -> NDArray[np.float64]:
+    """The even indices around all that a map holds, two at least.
+
+    Raises
+    ------
+    InputError
+        A map that is void throughout, or with values that are no index.
+    """
+    known = index[np.isfinite(index)]
+    if not known.size:
+        raise InputError("the map of the clear-sky index is void all over this ground")
+    low, high = float(known.min()), float(known.max())
+    if not (low >= LEAST_INDEX and high <= MOST_INDEX):
+        raise InputError(
+            f"the map of the clear-sky index holds values from {low:g} to {high:g}; an index is"
+            f" {LEAST_INDEX:g} to {MOST_INDEX:g}"
+        )
+    first = np.floor(low / INDEX_STEP + 1e-6)
+    last = max(np.ceil(high / INDEX_STEP - 1e-6), first + 1)
+    return np.clip(INDEX_STEP * np.arange(first, last + 1), LEAST_INDEX, MOST_INDEX)
 
 
 @dataclass
@@ -74,18 +95,15 @@ class MappedTables:
         InputError
             A map that is void throughout, or with values that are no index.
         """
-        low, high = float(np.nanmin(index)), float(np.nanmax(index))
-        if not (low >= LEAST_INDEX and high <= MOST_INDEX):
-            raise InputError(
-                f"the map of the clear-sky index holds values from {low:g} to {high:g}; an index is"
-                f" {LEAST_INDEX:g} to {MOST_INDEX:g}"
-            )
-        first = np.floor(low / INDEX_STEP + 1e-6)
-        last = max(np.ceil(high / INDEX_STEP - 1e-6), first + 1)
-        knots = np.clip(INDEX_STEP * np.arange(first, last + 1), LEAST_INDEX, MOST_INDEX)
+        knots = even_indices(index)
         each = [
             SkyTables.over(
-                replace(settings, sky=MonthlySky(settings.air, (k,) * 12), monthly_parts=True),
+                replace(
+                    settings,
+                    sky=MonthlySky(settings.air, (k,) * 12),
+                    monthly_parts=True,
+                    index_map=None,
+                ),
                 longitude,
                 latitudes,
                 heights,
@@ -95,9 +113,14 @@ class MappedTables:
         return cls(settings, index, knots, each)
 
     @property
+    def brightest(self) -> SkyTables:
+        """Those of the highest index: no cell gets more."""
+        return self.tables[-1]
+
+    @property
     def tasks(self) -> list[Callable[[], None]]:
         """Calls that fill all tables, in any order."""
-        return [partial(t.fill, i) for t in self.tables for i in range(t.latitudes.size)]
+        return [task for tables in self.tables for task in tables.tasks]
 
     def strip_light(
         self,

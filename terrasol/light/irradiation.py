@@ -3,8 +3,9 @@
 from __future__ import annotations
 
 import threading
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
+from functools import partial
 from numbers import Integral, Real
 from typing import Any, Final
 
@@ -78,6 +79,8 @@ class LightSettings:
     albedo_map : ndarray of float32, shape (1 or 12, rows, columns), optional
         Albedo of each cell, for the year or January to December; where it is NaN, `albedo`
         counts.
+    index_map : ndarray of float32, shape (1 or 12, rows, columns), optional
+        Clear-sky index of each cell, for the year or January to December, in place of `sky`.
     photons_per_joule : float, optional
         Photosynthetic photons in a joule of global light [umol J-1]; None for no such sums.
 
@@ -99,6 +102,7 @@ class LightSettings:
     refraction: float = REFRACTION_COEFFICIENT
     sky: Sky | None = None
     albedo_map: NDArray[np.float32] | None = None
+    index_map: NDArray[np.float32] | None = None
     photons_per_joule: float | None = None
 
     def __post_init__(self) -> None:
@@ -140,6 +144,15 @@ class LightSettings:
         layers = self.albedo_map[:, rows, columns].astype(np.float64)
         which = [(month - 1) % layers.shape[0] for _, month in self.period.months]
         return np.where(np.isnan(layers[which]), plain[:, None, None], layers[which])
+
+    def sampled_albedo(self, stride: int, shape: tuple[int, int]) -> NDArray[np.float64]:
+        """The same at every `stride`-th cell, for a lattice of samples of that shape."""
+        if self.albedo_map is None:
+            return self.month_albedo
+        every = slice(stride // 2, None, stride)
+        found = self.ground_albedo(every, every)
+        short = [(0, 0)] + [(0, n - m) for n, m in zip(shape, found.shape[1:], strict=True)]
+        return np.pad(found, short, constant_values=np.nan)
 
     @property
     def photons(self) -> NDArray[np.float64] | None:
@@ -292,6 +305,16 @@ class SkyTables:
             s.monthly_parts,
         )
         self.tables[index], self._dark[index] = table, table.dark()
+
+    @property
+    def tasks(self) -> list[Callable[[], None]]:
+        """Calls that fill all tables, in any order."""
+        return [partial(self.fill, i) for i in range(self.latitudes.size)]
+
+    def level(self, latitude: float, height: float) -> float:
+        """Global irradiation of open level ground [MJ m-2]."""
+        level = self.exactly(latitude).table.level
+        return float(np.interp(height, self.heights, level.sum(axis=1)))
 
     def at(self, latitude: float) -> Mixed:
         """The table for a latitude rounded to LATITUDE_GRAIN."""

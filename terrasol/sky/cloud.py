@@ -13,6 +13,7 @@ from pvlib import atmosphere, irradiance
 
 from terrasol.errors import InputError, SettingError
 from terrasol.sky.clear import Air
+from terrasol.sky.interval import cosine, lit, on_level
 from terrasol.sky.irradiance import Irradiance
 from terrasol.sky.period import Period
 from terrasol.sky.station import Station
@@ -77,11 +78,10 @@ class CloudedSky:
         """
         clear = self.air.over(sun, height)
         place = _interval(sun.time, self.start, self.seconds)
-        lit = sun.elevation > 0.0
         outside = (place < 0) | (place >= self.start.size)
         place = np.clip(place, 0, self.start.size - 1)
         index = np.where(outside, np.nan, self.global_index[place])
-        unknown = lit & np.isnan(index)
+        unknown = (sun.elevation > 0.0) & np.isnan(index)
         if self.strict and unknown.any():
             raise InputError(_no_light(sun.time[unknown], sun.step_seconds))
         return _thinned(sun, clear, index, self.beam_index[place], self.rest[place])
@@ -125,7 +125,7 @@ class MonthlySky:
     def over(self, sun: SunSeries, height: float) -> Irradiance:
         """Light at a height [m]."""
         clear = self.air.over(sun, height)
-        upright = np.maximum(np.sin(np.radians(sun.elevation)), 0.0)
+        upright = cosine(sun)
         count = int(sun.month.max(initial=-1)) + 1
         beam, diffuse, above, steps = (
             np.bincount(sun.month, weights=flux, minlength=count)
@@ -133,7 +133,7 @@ class MonthlySky:
                 clear.beam_normal * upright,
                 clear.diffuse_horizontal,
                 clear.extraterrestrial_normal * upright,
-                (sun.elevation > 0.0).astype(np.float64),
+                lit(sun),
             )
         )
         local = sun.time + np.timedelta64(round(sun.longitude * 240.0), "s")
@@ -268,7 +268,7 @@ class _Clear:
         place = _interval(sun.time, start, station.seconds)
         fits = (place >= 0) & (place < start.size)
         light = air.over(sun, station.height)
-        upright = np.maximum(np.sin(np.radians(sun.elevation)), 0.0)
+        upright = cosine(sun)
         share = step_seconds / station.seconds
 
         def means(flux: NDArray[np.float64]) -> NDArray[np.float64]:
@@ -276,14 +276,13 @@ class _Clear:
             return np.asarray(share * sums, np.float64)
 
         direct = means(light.beam_normal * upright)
-        lit = means((sun.elevation > 0.0).astype(np.float64)) * station.seconds
         return cls(
             window,
             direct + means(light.diffuse_horizontal),
             direct,
             means(light.beam_normal),
             means(upright),
-            lit,
+            means(lit(sun)) * station.seconds,
         )
 
 
@@ -347,10 +346,9 @@ def _thinned(
     rest: NDArray[np.float64],
 ) -> Irradiance:
     """The clear sky's light times indices; global is kept where the beam would exceed it."""
-    upright = np.maximum(np.sin(np.radians(sun.elevation)), 0.0)
-    lit = sun.elevation > 0.0
-    whole = index * (clear.beam_normal * upright + clear.diffuse_horizontal) + rest
-    whole = np.where(lit, whole, 0.0)
+    upright = cosine(sun)
+    whole = index * on_level(sun, clear) + rest
+    whole = np.where(sun.elevation > 0.0, whole, 0.0)
     beam = np.minimum(np.nan_to_num(beam_index) * clear.beam_normal, clear.extraterrestrial_normal)
     direct = np.minimum(beam * upright, whole)
     beam = np.where(upright > 0.0, direct / np.where(upright > 0.0, upright, 1.0), 0.0)

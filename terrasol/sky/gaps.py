@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from terrasol.errors import SettingError
-from terrasol.sky.interval import cosine, interval_means
+from terrasol.sky.interval import interval_means, lit, on_level
 from terrasol.sky.irradiance import Sky
 from terrasol.sky.quality import LIGHT, Flag
 from terrasol.sky.station import Station
@@ -119,12 +119,11 @@ def fill_gaps(station: Station, sky: Sky, longest_hours: float = LONGEST_HOURS) 
 
     def light(sun: SunSeries) -> dict[str, NDArray[np.float64]]:
         clear = sky.over(sun, station.height)
-        direct = clear.beam_normal * cosine(sun)
         return {
-            "global": direct + clear.diffuse_horizontal,
+            "global": on_level(sun, clear),
             "beam": clear.beam_normal,
             "diffuse": clear.diffuse_horizontal,
-            "lit": (sun.elevation > 0.0).astype(np.float64),
+            "lit": lit(sun),
         }
 
     clear = interval_means(station, light)

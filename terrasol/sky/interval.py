@@ -70,10 +70,10 @@ class SunMinutes:
         hour_angle = (path.hour_angle + 180.0) % 360.0 - 180.0
         return cls(start, sun, place, elevation, hour_angle)
 
-    def spread(self, lit: NDArray[Any]) -> NDArray[np.float64]:
+    def spread(self, flux: NDArray[Any]) -> NDArray[np.float64]:
         """Values of the entries of `sun` on the grid of all minutes, 0 in between."""
         every = np.zeros(self.elevation.size)
-        every[self.place] = lit
+        every[self.place] = flux
         return every
 
     def means(
@@ -83,16 +83,17 @@ class SunMinutes:
         seconds: int,
         shift_minutes: float = 0.0,
     ) -> NDArray[np.float64]:
-        """Mean of a quantity given for every minute over intervals, all moved by a shift."""
-        running = np.concatenate([[0.0], np.cumsum(every)])
+        """Mean of a quantity given for every minute over intervals, all moved by a shift.
+
+        NaN where any part of a minute of the interval is unknown.
+        """
         begin = (start.astype("M8[s]") - self.start).astype(np.float64) + 60.0 * shift_minutes
-
-        def total(moment: NDArray[np.float64]) -> NDArray[np.float64]:
-            at = np.clip(moment / STEP_SECONDS, 0.0, every.size)
-            whole = np.minimum(at.astype(np.int64), every.size - 1)
-            return running[whole] + (at - whole) * every[whole]
-
-        return (total(begin + seconds) - total(begin)) * (STEP_SECONDS / seconds)
+        edges = np.clip(np.stack([begin, begin + seconds]) / STEP_SECONDS, 0.0, every.size)
+        unknown = np.isnan(every)
+        mean = _between(np.where(unknown, 0.0, every), edges) * (STEP_SECONDS / seconds)
+        if not unknown.any():
+            return mean
+        return np.where(_between(unknown.astype(np.float64), edges) > 0.0, np.nan, mean)
 
 
 def interval_means(station: Station, fluxes: Fluxes) -> dict[str, NDArray[np.float64]]:
@@ -108,9 +109,9 @@ def interval_means(station: Station, fluxes: Fluxes) -> dict[str, NDArray[np.flo
     Returns
     -------
     dict of ndarray, shape (n,)
-        The means over the whole intervals, night included, in the unit of the values; and
-        ``day``, the share of each interval with the sun higher than 6 degrees below the
-        level.
+        The means over the whole intervals, night included, in the unit of the values, NaN
+        where a value within the interval is; and ``day``, the share of each interval with
+        the sun higher than 6 degrees below the level.
 
     Examples
     --------
@@ -133,13 +134,18 @@ def interval_means(station: Station, fluxes: Fluxes) -> dict[str, NDArray[np.flo
 
 
 def sun_height(sun: SunSeries) -> dict[str, NDArray[np.float64]]:
-    """Cosine of the zenith angle, and 1 where the sun's centre is up, for `interval_means`."""
-    return {"cosine": cosine(sun), "lit": (sun.elevation > 0.0).astype(np.float64)}
+    """`cosine` and `lit` of a series, for `interval_means`."""
+    return {"cosine": cosine(sun), "lit": lit(sun)}
 
 
 def cosine(sun: SunSeries) -> NDArray[np.float64]:
     """Cosine of the apparent zenith angle, 0 while the sun's centre is below the level."""
     return np.maximum(np.sin(np.radians(sun.elevation)), 0.0)
+
+
+def lit(sun: SunSeries) -> NDArray[np.float64]:
+    """1 while the sun's centre is above the level, else 0."""
+    return (sun.elevation > 0.0).astype(np.float64)
 
 
 def on_level(sun: SunSeries, light: Irradiance) -> NDArray[np.float64]:
@@ -170,6 +176,14 @@ def behind_horizon(sun: SunSeries, horizon: ArrayLike) -> NDArray[np.bool_]:
         )
     azimuths = np.arange(heights.size + 1) * (360.0 / heights.size)
     return sun.elevation < np.interp(sun.azimuth, azimuths, np.append(heights, heights[0]))
+
+
+def _between(every: NDArray[np.float64], edges: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Sum of finite values, one a minute, between two rows of edges, in minutes."""
+    running = np.concatenate([[0.0], np.cumsum(every)])
+    whole = np.minimum(edges.astype(np.int64), every.size - 1)
+    first, last = running[whole] + (edges - whole) * every[whole]
+    return np.asarray(last - first, np.float64)
 
 
 def _chunks(station: Station) -> Iterator[slice]:

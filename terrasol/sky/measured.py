@@ -121,6 +121,47 @@ def measured_sky(
     return MeasuredSky(sky, filled.station, period, report, tuple(warnings))
 
 
+def monthly_albedo(station: Station, period: Period) -> tuple[float, ...]:
+    """Measured albedo of each calendar month, weighted by measured global light.
+
+    Parameters
+    ----------
+    station : Station
+        With albedo and global.
+    period : Period
+        What will be summed.
+
+    Returns
+    -------
+    tuple of 12 floats
+        January to December; 0 for months outside the period.
+
+    Raises
+    ------
+    InputError
+        Albedo or global was not measured, in general or in a month of the period.
+    """
+    for name in ("albedo", "global"):
+        if name not in station.values:
+            raise InputError(f"{station.name}: no {name} was measured, so it has no albedo to give")
+    local = station.start + np.timedelta64(round(station.longitude * 240.0), "s")
+    inside = (local >= period.start) & (local < period.end)
+    albedo, weight = station.values["albedo"], station.values["global"]
+    inside &= np.isfinite(albedo) & (weight > 0.0)
+    month = local.astype("M8[M]").astype(np.int64) % 12
+    sums = np.bincount(month[inside], weights=weight[inside], minlength=12)
+    returned = np.bincount(month[inside], weights=(albedo * weight)[inside], minlength=12)
+    wanted = sorted({m for _, m in period.months})
+    empty = [m for m in wanted if sums[m - 1] == 0.0]
+    if empty:
+        raise InputError(
+            f"{station.name}: no albedo was measured under light in month"
+            f" {', '.join(map(str, empty))} of the period {period.label}: give --albedo as numbers"
+        )
+    found = np.where(sums > 0.0, returned / np.where(sums > 0.0, sums, 1.0), 0.0)
+    return tuple(float(min(max(value, 0.0), 1.0)) for value in found)
+
+
 def _light(station: Station) -> list[str]:
     return [name for name in ("global", "beam", "diffuse") if name in station.values]
 

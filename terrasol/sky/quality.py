@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 
 from terrasol.constants import SOLAR_CONSTANT
 from terrasol.errors import InputError
-from terrasol.sky.interval import cosine, interval_means
+from terrasol.sky.interval import cosine, interval_means, lit
 from terrasol.sky.station import Station
 from terrasol.sky.sun import SunSeries
 
@@ -267,11 +267,10 @@ def _limits(station: Station) -> dict[str, Values]:
 def _limits_by_day(sun: SunSeries) -> dict[str, Values]:
     """What the sun adds to the limits [W/m2]."""
     mu, above = cosine(sun), SOLAR_CONSTANT / sun.distance**2
-    lit = (sun.elevation > 0.0).astype(np.float64)
-    means = {"cosine": mu, "lit": lit}
+    means = {"cosine": mu, "lit": lit(sun)}
     for quantity, limits in UPPER_LIMITS.items():
         for words, (factor, power, _) in zip(("", "rare "), limits, strict=True):
-            means[words + quantity] = factor * above * mu**power * lit
+            means[words + quantity] = factor * above * mu**power * lit(sun)
     return means
 
 
@@ -315,8 +314,8 @@ def _compare(judged: _Judged, means: dict[str, Values]) -> None:
     if not {"global", "diffuse"} <= have.keys():
         return
     whole, diffuse = have["global"], have["diffuse"]
-    lit = means["lit"]
-    mu = np.where(lit > 0.0, means["cosine"] / np.where(lit > 0.0, lit, 1.0), 0.0)
+    share = means["lit"]
+    mu = np.where(share > 0.0, means["cosine"] / np.where(share > 0.0, share, 1.0), 0.0)
     low_sun = (mu < LOW_SUN).astype(np.int64)
     ratio = diffuse / np.where(whole > COMPARED_ABOVE, whole, np.inf)
     bad = ratio > np.array(DIFFUSE_RATIO)[low_sun]
@@ -426,5 +425,4 @@ def _believable(quantity: str) -> str:
 def _above(sun: SunSeries) -> dict[str, Values]:
     """Light above the air, facing the sun and on level ground [W/m2]."""
     mu, above = cosine(sun), SOLAR_CONSTANT / sun.distance**2
-    lit = (sun.elevation > 0.0).astype(np.float64)
-    return {"cosine": mu, "lit": lit, "global": above * mu, "beam": above * lit}
+    return {"cosine": mu, "lit": lit(sun), "global": above * mu, "beam": above * lit(sun)}

@@ -9,7 +9,8 @@ from pyproj import CRS
 import terrasol
 from terrasol.engine import job, plan
 from terrasol.engine.datasets import ArraySink
-from terrasol.engine.job import Plan, Totals, plan_irradiation, plan_terrain
+from terrasol.engine.job import Plan, plan_irradiation, plan_terrain
+from terrasol.engine.totals import Totals
 from terrasol.errors import InputError, SettingError
 from terrasol.files.layers import Layer
 from terrasol.light.irradiation import LightSettings, Surroundings
