@@ -52,6 +52,7 @@ from terrasol.light.series import (
     StepSky,
     patch_light,
     quantity,
+    step_albedo,
     step_edges,
     step_months,
     suns_at_greenwich,
@@ -186,7 +187,7 @@ class SeriesPlan:
     @property
     def reflecting(self) -> bool:
         """Whether the terrain sends light back."""
-        return any(self.settings.albedo)
+        return self.settings.albedo_station is not None or any(self.settings.albedo)
 
     @cached_property
     def stride(self) -> int:
@@ -399,7 +400,7 @@ class _Run:
             start,
             stop,
             suns_at_greenwich(edges, settings.substep_seconds),
-            np.array(settings.albedo, np.float32)[months],
+            step_albedo(settings, edges, months),
             samples[:-1],
         )
         work = BlockWork(plan.elevation, plan.frame, settings, plan.heights, horizons)

@@ -245,7 +245,7 @@ def series_record(settings: SeriesSettings) -> dict[str, Any]:
         "sky": _sky_record(settings.sky),
         "step": settings.step,
         "quantities": list(settings.quantities),
-        "albedo": list(settings.albedo),
+        "albedo": list(settings.albedo) if settings.albedo_station is None else "as measured",
         "diffuse": settings.diffuse,
         "azimuths": settings.azimuths,
         "basis": settings.basis,

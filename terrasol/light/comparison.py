@@ -236,8 +236,7 @@ def compare(
 
 def local_time(station: Station) -> NDArray[np.datetime64]:
     """Middle of each interval in local mean solar time."""
-    shift = np.timedelta64(round(station.longitude * 240.0), "s")
-    return np.asarray(station.middle + shift, "M8[ns]")
+    return np.asarray(station.middle + station.solar_offset, "M8[ns]")
 
 
 def _shade(station: Station, modelled: Modelled, kept: NDArray[np.bool_]) -> Shade:
@@ -254,13 +253,20 @@ def _shade(station: Station, modelled: Modelled, kept: NDArray[np.bool_]) -> Sha
     explained = 1.0 - (with_it / without) ** 2 if without > 0.0 else -np.inf
     first, last = _comings_and_goings(station, modelled, kept)
     verdict = "explains" if explained > 0.8 else "partly explains" if explained > 0.4 else "misses"
-    change = "falls" if with_it < without else "rises"
     words = (
         f"the modelled horizon {verdict} when the sun comes and goes: in {count} intervals it"
-        f" takes {SHADE_MATTERS:g} W/m2 or more, and with it the rms {change} from {without:.0f} to"
-        f" {with_it:.0f} W/m2"
+        f" takes {SHADE_MATTERS:g} W/m2 or more, and with it the rms {_change(without, with_it)}"
+        " W/m2"
     )
     return Shade(count, with_it, without, explained, first, last, words)
+
+
+def _change(before: float, after: float) -> str:
+    """How a number changes, in words."""
+    before, after = round(before), round(after)
+    if before == after:
+        return f"stays at {after}"
+    return f"{'falls' if after < before else 'rises'} from {before} to {after}"
 
 
 def _comings_and_goings(

@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from terrasol.constants import REFRACTION_COEFFICIENT, SOLAR_RADIUS_DEG
-from terrasol.errors import SettingError
+from terrasol.errors import InputError, SettingError
 from terrasol.kernels.moment import FULL, decode_horizon, direct_light, parts_of_steps
 from terrasol.light.irradiation import (
     BASES,
@@ -22,6 +22,7 @@ from terrasol.sky.cloud import CloudedSky, MonthlySky
 from terrasol.sky.diffuse import MODELS, DiffuseSplit, split_diffuse
 from terrasol.sky.irradiance import Sky
 from terrasol.sky.period import Period
+from terrasol.sky.station import Station
 from terrasol.sky.sun import SunPath, SunSeries, sun_path, sun_series, unit_vector
 
 STEPS: Final = {"1h": 3600, "1d": 86400}
@@ -78,6 +79,9 @@ class SeriesSettings:
         Spacing of the moments in a step; divides an hour.
     refraction : float
         Terrestrial refraction coefficient k of lines of sight.
+    albedo_station : Station, optional
+        Whose measured albedo counts, step by step, in place of `albedo`.
+
 
     Raises
     ------
@@ -95,9 +99,14 @@ class SeriesSettings:
     basis: str = "slope"
     substep_seconds: float = SUBSTEP_SECONDS
     refraction: float = REFRACTION_COEFFICIENT
+    albedo_station: Station | None = None
 
     def __post_init__(self) -> None:
         """Refuse what makes no sense."""
+        if self.albedo_station is not None and "albedo" not in self.albedo_station.values:
+            raise InputError(
+                f"{self.albedo_station.name}: no albedo was measured, so it has none to give"
+            )
         if len(self.albedo) != 12 or not all(0.0 <= value <= 1.0 for value in self.albedo):
             raise SettingError(f"albedo must be twelve numbers from 0 to 1; got {self.albedo}")
         if not self.quantities or len(set(self.quantities)) < len(self.quantities):
@@ -168,6 +177,26 @@ def step_months(settings: SeriesSettings, edges: NDArray[np.datetime64]) -> NDAr
     since = (edges[:-1] - edges[0]).astype("m8[s]")
     day = settings.period.start.astype("M8[s]") + since
     return day.astype("M8[M]").astype(np.int64) % 12
+
+
+def step_albedo(
+    settings: SeriesSettings, edges: NDArray[np.datetime64], months: NDArray[np.int64]
+) -> NDArray[np.float32]:
+    """Albedo of the ground in each step, shape (steps,).
+
+    A measured one is linear in time between the intervals that have it, and held before the
+    first and after the last.
+    """
+    station = settings.albedo_station
+    if station is None:
+        return np.array(settings.albedo, np.float32)[months]
+    known = np.isfinite(station.values["albedo"])
+    if not known.any():
+        raise InputError(f"{station.name}: all values of the albedo are missing")
+    seconds = edges.astype("M8[s]").astype(np.float64)
+    at = (seconds[:-1] + seconds[1:]) / 2.0
+    measured = station.middle[known].astype("M8[s]").astype(np.float64)
+    return np.interp(at, measured, station.values["albedo"][known]).astype(np.float32)
 
 
 def suns_at_greenwich(edges: NDArray[np.datetime64], substep_seconds: float) -> SunPath:

@@ -6,10 +6,11 @@ import pytest
 from reference.kept import series_of
 from reference.plain_sun import clear_beam, sun_place, unit_vectors
 
-from terrasol.errors import SettingError
+from terrasol.errors import InputError, SettingError
 from terrasol.light.series import (
     SeriesSettings,
     quantity,
+    step_albedo,
     step_edges,
     step_months,
     suns_at_greenwich,
@@ -17,6 +18,7 @@ from terrasol.light.series import (
 from terrasol.sky.clear import Air
 from terrasol.sky.cloud import CloudedSky, MonthlySky
 from terrasol.sky.period import parse_period
+from terrasol.sky.station import Station
 
 AIR = Air.ineichen(3.0)
 
@@ -156,3 +158,20 @@ def test_net_is_what_is_not_sent_back():
     net = quantity("net", light, np.array([0.2, 0.8], np.float32))
     np.testing.assert_allclose(net[:, 0, 0], [80.0, 40.0], rtol=1e-6)
     assert quantity("global", light, np.zeros(2, np.float32))[1, 0, 0] == 200.0
+
+
+def test_measured_albedo_is_linear_in_time_between_what_is_known():
+    start = np.datetime64("2025-03-01", "s") + np.arange(96) * np.timedelta64(3600, "s")
+    albedo = np.full(96, np.nan)
+    albedo[12], albedo[36] = 0.8, 0.6  # at 12:30 of two days
+    station = Station("snow", 46.0, 9.0, 600.0, start, 3600, {"albedo": albedo})
+    settings = SeriesSettings(
+        parse_period("2025-03-01/2025-03-04"), AIR, albedo_station=station, step="1h"
+    )
+    edges = step_edges(settings, 0.0)
+    found = step_albedo(settings, edges, step_months(settings, edges))
+    np.testing.assert_allclose(found[[12, 24, 36, 90]], [0.8, 0.7, 0.6, 0.6], atol=1e-6)
+    assert found[0] == pytest.approx(0.8)
+    without = Station("bare", 46.0, 9.0, 600.0, start, 3600, {})
+    with pytest.raises(InputError, match="no albedo was measured"):
+        SeriesSettings(parse_period("2025-03-01"), AIR, albedo_station=without)
