@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     __version__: str
+    from terrasol.engine.comparison import Spot, compare_station, spot_at
     from terrasol.engine.datasets import irradiation, terrain
     from terrasol.engine.hours import sun_hours
     from terrasol.engine.series_stack import irradiation_series
@@ -22,28 +23,40 @@ if TYPE_CHECKING:
         UnfinishedError,
     )
     from terrasol.files.rasters import read_elevation
+    from terrasol.files.tables import read_station
     from terrasol.ground.elevation import Elevation
     from terrasol.sky.clear import Air, clear_sky, linke_climatology
+    from terrasol.sky.cloud import MonthlySky, clouded_sky
     from terrasol.sky.diffuse import split_diffuse
+    from terrasol.sky.measured import measured_sky
     from terrasol.sky.period import Period, parse_period
+    from terrasol.sky.station import Station
     from terrasol.sky.sun import sun_path, sun_series
 
 _HOMES = {
     "Air": "terrasol.sky.clear",
     "Elevation": "terrasol.ground.elevation",
     "InputError": "terrasol.errors",
+    "MonthlySky": "terrasol.sky.cloud",
     "OutputError": "terrasol.errors",
     "Period": "terrasol.sky.period",
     "SettingError": "terrasol.errors",
+    "Spot": "terrasol.engine.comparison",
+    "Station": "terrasol.sky.station",
     "TerrasolError": "terrasol.errors",
     "UnfinishedError": "terrasol.errors",
     "clear_sky": "terrasol.sky.clear",
+    "clouded_sky": "terrasol.sky.cloud",
+    "compare_station": "terrasol.engine.comparison",
     "irradiation": "terrasol.engine.datasets",
     "irradiation_series": "terrasol.engine.series_stack",
     "linke_climatology": "terrasol.sky.clear",
+    "measured_sky": "terrasol.sky.measured",
     "parse_period": "terrasol.sky.period",
     "read_elevation": "terrasol.files.rasters",
+    "read_station": "terrasol.files.tables",
     "split_diffuse": "terrasol.sky.diffuse",
+    "spot_at": "terrasol.engine.comparison",
     "sun_hours": "terrasol.engine.hours",
     "sun_path": "terrasol.sky.sun",
     "sun_series": "terrasol.sky.sun",
@@ -54,18 +67,26 @@ __all__ = [
     "Air",
     "Elevation",
     "InputError",
+    "MonthlySky",
     "OutputError",
     "Period",
     "SettingError",
+    "Spot",
+    "Station",
     "TerrasolError",
     "UnfinishedError",
     "clear_sky",
+    "clouded_sky",
+    "compare_station",
     "irradiation",
     "irradiation_series",
     "linke_climatology",
+    "measured_sky",
     "parse_period",
     "read_elevation",
+    "read_station",
     "split_diffuse",
+    "spot_at",
     "sun_hours",
     "sun_path",
     "sun_series",

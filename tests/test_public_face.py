@@ -1,5 +1,6 @@
 """The names a Python user imports, and what importing them costs."""
 
+import inspect
 import subprocess
 import sys
 
@@ -25,6 +26,16 @@ def test_homes_and_names_agree():
     for name, home in terrasol._HOMES.items():
         assert getattr(terrasol, name).__module__ == home
     assert terrasol.__version__[0].isdigit()
+
+
+def test_docstrings_say_what_goes_in_comes_out_and_goes_wrong():
+    for name in terrasol.__all__:
+        thing = getattr(terrasol, name)
+        if isinstance(thing, type):
+            assert issubclass(thing, Exception) or "---" in thing.__doc__, name
+        else:
+            for title in ("Parameters", "Returns", *(["Raises"] if name != "clear_sky" else [])):
+                assert f"{title}\n" in inspect.cleandoc(thing.__doc__), (name, title)
 
 
 def test_star_import_gives_the_public_names():

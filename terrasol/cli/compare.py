@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import json
 import os
 import time
 from dataclasses import dataclass
@@ -11,14 +10,13 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from terrasol.cli.ground_options import Around, ground_options
-from terrasol.cli.options import Common, Name, Numbers, common_options
-from terrasol.cli.sky_options import AskedSky, air_record, sky_options
-from terrasol.cli.streams import give, say
+from terrasol.cli.options import Common, Name, Numbers, common_options, diffuse_option
+from terrasol.cli.sky_options import AskedSky, file_record, sky_options
+from terrasol.errors import counted
 
 if TYPE_CHECKING:
     from terrasol.cli.run import Ground
     from terrasol.engine.comparison import StationReport
-    from terrasol.ground.frame import Frame
     from terrasol.sky.clear import Air
     from terrasol.sky.station import Station
 
@@ -52,13 +50,7 @@ HELP = {
     type=Numbers(),
     help="Albedo of the ground around. [default: as MEASURED has it, else 0.2]",
 )
-@click.option(
-    "--diffuse",
-    type=click.Choice(["perez", "hay-davies", "isotropic"]),
-    default="perez",
-    show_default=True,
-    help="Model that parts the diffuse light.",
-)
+@diffuse_option
 @sky_options
 @ground_options
 @common_options
@@ -71,10 +63,8 @@ def compare(common: Common, around: Around, asked: AskedSky, **given: Any) -> No
     corrected. Writes comparison.csv, comparison.png and run.json into OUT_DIR.
     """
     from terrasol.cli.run import read
-    from terrasol.files.rasters import naming
     from terrasol.files.tables import read_station
-    from terrasol.ground.frame import make_frame
-    from terrasol.light.irradiation import check_azimuths, check_refraction
+    from terrasol.light.settings import check_azimuths, check_refraction
 
     _check(around, asked)
     check_azimuths(common.azimuths)
@@ -85,12 +75,8 @@ def compare(common: Common, around: Around, asked: AskedSky, **given: Any) -> No
     if asked.station is not None:
         other = read_station(asked.station, asked.station_settings)
     ground = read(common)
-    with naming(common.dem):
-        frame = make_frame(*_grid(ground))
-    job = _Job(
-        common, around, asked, given, ground, frame, asked.placed(air, frame), station, other
-    )
-    job.run()
+    air = asked.placed(air, ground.frame)
+    _Job(common, around, asked, given, ground, air, station, other).run()
 
 
 def _check(around: Around, asked: AskedSky) -> None:
@@ -99,11 +85,6 @@ def _check(around: Around, asked: AskedSky) -> None:
         raise click.UsageError("--horizon-gap belongs to terrasol irradiation: it is a map")
     if asked.clear_sky_index is not None:
         raise click.UsageError("--clear-sky-index has no hours and no days: give a --station")
-
-
-def _grid(ground: Ground) -> tuple[Any, ...]:
-    elevation = ground.elevation
-    return elevation.shape, elevation.transform, elevation.crs
 
 
 def _rearrange(command: click.Command) -> None:
@@ -132,7 +113,6 @@ class _Job:
     asked: AskedSky
     given: dict[str, Any]
     ground: Ground
-    frame: Frame
     air: Air
     station: Station
     other: Station | None
@@ -154,23 +134,13 @@ class _Job:
         )  # fmt: skip
         return [name for name in files if name]
 
-    def superseded(self) -> tuple[list[str], list[str]]:
-        """Files of an earlier run to remove, and warnings."""
-        from terrasol.files.delivery import superseded_files
-
-        return (
-            superseded_files(self.common.out_dir, self.names) if self.common.overwrite else ([], [])
-        )
-
     def settings(self) -> dict[str, Any]:
         """Settings as plain text and numbers."""
-        from terrasol.files.provenance import sha256
-
         given, asked, common = self.given, self.asked, self.common
-        record: dict[str, Any] = {"air": air_record(self.air)}
+        record: dict[str, Any] = {"air": self.air.record()}
         for name, path in (("measured", given["measured"]), ("second_station", asked.station)):
             if path:
-                record[name] = {"file": os.path.abspath(path), "sha256": sha256(path)}
+                record[name] = file_record(path)
         if asked.station:
             record["decomposition"] = asked.decomposition or "dirint"
             record["fill_hours"] = self._fill_hours
@@ -195,56 +165,47 @@ class _Job:
 
     def run(self) -> None:
         """Carry it out, or only tell of it."""
-        from terrasol.cli.run import _spare_input
-        from terrasol.files.delivery import check_free
+        from terrasol.cli.forecast import give_forecast
+        from terrasol.cli.run import check_places, tell
 
         common = self.common
-        check_free(common.out_dir, self.names, common.overwrite)
-        for source in self.inputs:
-            _spare_input(common, source, [*self.names, *self.superseded()[0]])
+        check_places(common, self.names, self.inputs)
         if common.dry_run:
-            forecast = self._forecast()
-            give(json.dumps(forecast, indent=2) if common.as_json else _in_lines(forecast))
+            give_forecast(common, self._forecast(), _in_lines)
             return
-        record, lines = self._carry_out()
-        if common.as_json:
-            give(json.dumps(record, indent=2))
-        elif not common.quiet:
-            lines += [f"warning: {text}" for text in record["warnings"]]
-            took = f"{record['seconds']['whole run']:.0f} s"
-            say("\n".join([*lines, f"3 files in {os.path.abspath(common.out_dir)} after {took}"]))
+        record, found = self._carry_out()
+        tell(common, record, lambda record: _summary_text(record, found))
 
     def _forecast(self) -> dict[str, Any]:
         """What would be compared, and where."""
+        from terrasol.cli.forecast import ground_forecast
+        from terrasol.cli.run import superseded
         from terrasol.engine.comparison import cell_of, station_record
         from terrasol.files.rasters import naming
 
-        with naming(self.common.dem):
-            row, column = cell_of(
-                self.ground.elevation, self.frame, self.station.latitude, self.station.longitude
-            )
-        superseded, notes = self.superseded()
-        return {
-            "input": self.common.dem,
-            "rows": self.ground.elevation.shape[0],
-            "columns": self.ground.elevation.shape[1],
-            "heights_read_as": self.ground.unit,
-            "station": station_record(self.station),
+        common, ground, station, other = self.common, self.ground, self.station, self.other
+        elevation = ground.elevation
+        with naming(common.dem):
+            row, column = cell_of(elevation, ground.frame, station.latitude, station.longitude)
+        removed, notes = superseded(common, self.names)
+        notes = [*station.notes, *(other.notes if other else ()), *notes]
+        return ground_forecast(common, ground) | {
+            "station": station_record(station),
             "cell": {
                 "row": row,
                 "column": column,
-                "height_m": round(float(self.ground.elevation.heights[row, column]), 2),
+                "height_m": round(float(elevation.heights[row, column]), 2),
             },
-            "second_station": None if self.other is None else station_record(self.other),
+            "second_station": None if other is None else station_record(other),
             "files": self.names,
-            "removed": superseded,
-            "warnings": [*self.ground.elevation.warnings, *self.station.notes, *notes],
+            "removed": removed,
+            "warnings": [*elevation.warnings, *notes],
         }
 
     def _carry_out(self) -> tuple[dict[str, Any], list[str]]:
         """Compute and write everything, or leave nothing behind: the record, and the summary."""
         from terrasol.cli.progress import progress_bar
-        from terrasol.cli.run import _announce_compilation
+        from terrasol.cli.run import announce_compilation, superseded
         from terrasol.engine.plan import default_threads
         from terrasol.files.delivery import RECORD, Delivery
         from terrasol.files.provenance import run_record
@@ -255,14 +216,14 @@ class _Job:
         threads = common.threads or default_threads()
         delivery = Delivery(common.out_dir, self.names, overwrite=common.overwrite)
         with delivery, progress_bar(common.quiet) as move:
-            _announce_compilation(common.quiet)
+            announce_compilation(common.quiet)
             report, notes = self._report(threads, lambda share, stage: move(0.6 * share, stage))
             lines = report.lines()
             delivery.write_bytes(TABLE, _table(report))
             move(0.9, "drawing")
             picture = comparison_png(report, title=report.station.name, notes=lines[1:])
             delivery.write_bytes(PICTURE, picture)
-            superseded, more = self.superseded()
+            removed, more = superseded(common, self.names)
             record |= {
                 "threads": threads,
                 "results": report.record(),
@@ -272,9 +233,10 @@ class _Job:
                     "whole run": round(self.ground.seconds + time.perf_counter() - start, 2),
                 },
                 "files": [os.path.abspath(delivery.folder / name) for name in self.names],
+                "removed": removed,
             }
             delivery.write_json(RECORD, record)
-            delivery.commit(superseded)
+            delivery.commit(removed)
             move(1.0, "done")
         return record, lines
 
@@ -284,10 +246,10 @@ class _Job:
         from terrasol.files.rasters import naming
 
         common, elevation, station = self.common, self.ground.elevation, self.station
-        scene = self.around.scene(elevation, self.frame)
+        scene = self.around.scene(elevation, self.ground.frame)
         with naming(common.dem):
             spot = spot_at(
-                elevation, self.frame, station.latitude, station.longitude, common.azimuths,
+                elevation, station.latitude, station.longitude, common.azimuths,
                 common.refraction, scene, threads, progress,
             )  # fmt: skip
         report = compare_station(
@@ -297,7 +259,7 @@ class _Job:
             decomposition=self.asked.decomposition or "dirint",
             fill_hours=self._fill_hours,
         )  # fmt: skip
-        notes = [*elevation.warnings, *scene.warnings, *self.asked.doubts(self.frame)]
+        notes = [*elevation.warnings, *scene.warnings, *self.asked.doubts(self.ground.frame)]
         return report, notes
 
 
@@ -318,15 +280,15 @@ def _table(report: StationReport) -> bytes:
 
 def _in_lines(forecast: dict[str, Any]) -> str:
     """The forecast for people."""
+    from terrasol.cli.forecast import grid_line, heights_line, lines
+
     f, station, cell, other = (
         forecast, forecast["station"], forecast["cell"], forecast["second_station"],
     )  # fmt: skip
     rows = [
         ("input", f["input"]),
-        (
-            "grid",
-            f"{f['rows']} rows, {f['columns']} columns, heights read as {f['heights_read_as']}",
-        ),
+        grid_line(f),
+        heights_line(f),
         ("measured", _span(station)),
         (
             "cell",
@@ -338,7 +300,17 @@ def _in_lines(forecast: dict[str, Any]) -> str:
         *([("removed", ", ".join(f["removed"]))] if f["removed"] else []),
         *(("warning", text) for text in f["warnings"]),
     ]
-    return "\n".join(f"{name:<11} {text}" for name, text in rows)
+    return lines(rows)
+
+
+def _summary_text(record: dict[str, Any], found: list[str]) -> str:
+    """What came out, for people."""
+    from terrasol.cli.forecast import duration
+
+    files = record["files"]
+    took = duration(record["seconds"]["whole run"])
+    end = f"{counted(len(files), 'file')} in {os.path.dirname(files[0])} after {took}"
+    return "\n".join([*found, *(f"warning: {text}" for text in record["warnings"]), end])
 
 
 def _span(station: dict[str, Any]) -> str:

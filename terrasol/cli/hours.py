@@ -8,8 +8,8 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from terrasol.cli.ground_options import Around, ground_options
-from terrasol.cli.options import Common, common_options
-from terrasol.cli.sky_options import AskedSky, air_record, sky_options
+from terrasol.cli.options import Common, Numbers, common_options, period_option
+from terrasol.cli.sky_options import AskedSky, sky_options
 
 if TYPE_CHECKING:
     import numpy as np
@@ -24,12 +24,7 @@ COLOURS = "cividis"
 
 
 @click.command(short_help="Hours of direct sun, and the first and last sun of chosen days.")
-@click.option(
-    "--period",
-    metavar="TEXT",
-    help="A year (2025), month (2025-04), day (2025-04-01), or a first and a last one:"
-    " 2025-04-01/2025-10-31. [default: a typical year]",
-)
+@period_option
 @click.option(
     "--days",
     metavar="DATES|none",
@@ -56,7 +51,7 @@ COLOURS = "cividis"
 @ground_options
 @common_options
 def hours(common: Common, around: Around, asked: AskedSky, **given: Any) -> None:
-    """Hours of direct sun on every cell of the elevation raster DEM, under a clear sky.
+    """Hours of direct sun on every cell of the elevation raster DEM.
 
     Shade of the terrain and of the cell's own slope counts. Writes sun_hours_year.tif and
     bright_hours_year.tif (..._period.tif unless the period is one whole year),
@@ -67,21 +62,16 @@ def hours(common: Common, around: Around, asked: AskedSky, **given: Any) -> None
     from terrasol.cli.run import Job, read, run
     from terrasol.engine.hours import plan_hours
     from terrasol.files.rasters import naming
-    from terrasol.ground.frame import make_frame
     from terrasol.light.days import parse_days
 
     settings = _settings(common, asked, given)
     ground = read(common)
     elevation = ground.elevation
-    with naming(common.dem):
-        frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
-    air = asked.placed(asked.air((0.2,)), frame)
+    air = asked.placed(asked.air((0.2,)), ground.frame)
     settled = asked.settle(air, given["period"], settings.step_seconds, elevation)
-    if settled.index_map is not None:
-        raise click.UsageError("hours take --clear-sky-index as numbers, not as a raster")
     days = parse_days(given["days"], settled.period)
     settings = replace(settings, sky=settled.sky or air, period=settled.period, days=days)
-    scene = around.scene(elevation, frame)
+    scene = around.scene(elevation, ground.frame)
     with naming(common.dem):
         plan = plan_hours(elevation, settings, scene)
     record = _record(settings, air) | settled.record | around.record()
@@ -89,8 +79,12 @@ def hours(common: Common, around: Around, asked: AskedSky, **given: Any) -> None
     run(Job("hours", common, ground, plan, record, _draw, inputs, settled.warnings))
 
 
-AZIMUTHS = next(parameter for parameter in hours.params if parameter.name == "azimuths")
-AZIMUTHS.default = 256  # as in the library, four times as many as for energy
+for _option in hours.params:
+    if _option.name == "azimuths":
+        _option.default = 256  # as in the library, four times as many as for energy
+    if _option.name == "clear_sky_index":
+        _option.type = Numbers()
+        _option.help = "Monthly mean of global light by that of a clear sky, for bright sunshine."
 
 
 def _settings(common: Common, asked: AskedSky, given: dict[str, Any]) -> HoursSettings:
@@ -116,15 +110,9 @@ def _record(settings: HoursSettings, air: Air) -> dict[str, Any]:
     from terrasol.light.days import UPPER_LIMB
     from terrasol.light.hours import BRIGHT_BEAM
 
-    period = settings.period
     return {
-        "period": {
-            "label": period.label,
-            "start": str(period.start),
-            "end": str(period.end),
-            "clock": "local mean solar time",
-        },
-        "air": air_record(air),
+        "period": settings.period.record(),
+        "air": air.record(),
         "days": [str(day) for day in settings.days],
         "clock": settings.clock.name,
         "azimuths": settings.azimuths,
@@ -156,7 +144,7 @@ def _draw(plan: Plan, hours: NDArray[np.float32], summary: Summary, title: str) 
         quantity="Hours of direct sun",
         unit="h",
         notes=(
-            "The sun counts while its upper limb is in view; no clouds, real skies give less.",
+            "The sun counts while its upper limb is in view, clouds or not.",
             f"Open level ground here: {number(level, 1.0)} h.",
             "Shade of all that stands in the raster, and of nothing beyond it."
             if plan.scene.far is None

@@ -8,12 +8,11 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from terrasol.cli.ground_options import Around, ground_options
-from terrasol.cli.options import Common, Numbers, common_options
+from terrasol.cli.options import Common, Numbers, common_options, diffuse_option, period_option
 from terrasol.cli.sky_options import (
     PAPERS,
     AskedSky,
     Settled,
-    air_record,
     file_record,
     shortest,
     sky_options,
@@ -26,7 +25,7 @@ if TYPE_CHECKING:
 
     from terrasol.engine.job import Plan, Summary
     from terrasol.ground.elevation import Elevation
-    from terrasol.light.irradiation import LightSettings
+    from terrasol.light.settings import LightSettings
 
 
 ALBEDO_FOR_NOW = (0.2,)
@@ -34,12 +33,7 @@ ALBEDO_FOR_NOW = (0.2,)
 
 
 @click.command(short_help="The sun's energy for a year or any period, and its months.")
-@click.option(
-    "--period",
-    metavar="TEXT",
-    help="A year (2025), month (2025-04), day (2025-04-01), or a first and a last one:"
-    " 2025-04-01/2025-10-31. [default: a typical year]",
-)
+@period_option
 @click.option(
     "--albedo",
     type=Numbers("station", raster=True),
@@ -48,13 +42,7 @@ ALBEDO_FOR_NOW = (0.2,)
     help="Albedo of the ground: numbers, a RASTER of one band or of twelve, or 'station' for what"
     " SERIES measured.",
 )
-@click.option(
-    "--diffuse",
-    type=click.Choice(["perez", "hay-davies", "isotropic"]),
-    default="perez",
-    show_default=True,
-    help="Model that parts the diffuse light.",
-)
+@diffuse_option
 @click.option(
     "--step-seconds",
     metavar="S",
@@ -98,18 +86,17 @@ def irradiation(common: Common, around: Around, asked: AskedSky, **given: Any) -
 
     Terrain shade and reflection count. Writes slope.tif, aspect.tif, sky_view.tif,
     irradiation_year.tif (irradiation_period.tif unless the period is one whole year),
-    irradiation_months.tif, overview.png and run.json into OUT_DIR.
+    irradiation_months.tif, overview.png and run.json into OUT_DIR; if asked, also months by part,
+    photosynthetic_months.tif and horizon_gap.tif.
     """
     from terrasol.cli.run import Job, read, run
     from terrasol.engine.job import plan_irradiation
     from terrasol.files.rasters import naming
-    from terrasol.ground.frame import make_frame
 
     settings = _settings(common, asked, given)
     ground = read(common)
     elevation = ground.elevation
-    with naming(common.dem):
-        frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
+    frame = ground.frame
     settings = replace(settings, air=asked.placed(settings.air, frame))
     settled = asked.settle(settings.air, given["period"], settings.step_seconds, elevation)
     settings = replace(
@@ -135,7 +122,7 @@ def irradiation(common: Common, around: Around, asked: AskedSky, **given: Any) -
 
 def _settings(common: Common, asked: AskedSky, given: dict[str, Any]) -> LightSettings:
     """Everything that can be settled before the raster is read."""
-    from terrasol.light.irradiation import LightSettings, twelve
+    from terrasol.light.settings import LightSettings, twelve
     from terrasol.sky.period import parse_period
 
     if given["photons_per_joule"] is not None and not given["photosynthetic"]:
@@ -171,22 +158,16 @@ def _albedo(asked: Any, settled: Settled, elevation: Elevation) -> dict[str, Any
 def _record(settings: LightSettings) -> dict[str, Any]:
     """Settings as plain text and numbers."""
     record = asdict(replace(settings, sky=None, albedo_map=None, index_map=None))
-    period = settings.period
     del record["sky"], record["albedo_map"], record["index_map"]
     record["albedo"] = shortest(settings.albedo)
-    record["air"] = air_record(settings.air)
-    record["period"] = {
-        "label": period.label,
-        "start": str(period.start),
-        "end": str(period.end),
-        "clock": "local mean solar time",
-    }
+    record["air"] = settings.air.record()
+    record["period"] = settings.period.record()
     return record
 
 
 _SKY_NOTES = {
     "clear": "Sky without clouds after {}; real skies give less.",
-    "measured": "Sky as a station measured it, hour by hour; clear air after {}.",
+    "measured": "Sky as a station measured it, interval by interval; clear air after {}.",
     "monthly index": "Clouds by one index a month; clear air after {}.",
 }
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 from collections.abc import Callable
 from dataclasses import dataclass, fields
 from functools import wraps
@@ -73,7 +74,7 @@ class Numbers(click.ParamType):
             numbers = tuple(float(part) for part in value.split(","))
         except ValueError:
             numbers = ()
-        if not numbers and self.raster and "." in value:
+        if not numbers and self.raster and ("." in value or os.path.exists(value)):
             return value
         if len(numbers) not in (1, 12):
             either = f"'{self.word}', " if self.word else ""
@@ -90,6 +91,23 @@ class Name(click.ParamType):
         """Refuse nothing."""
         return value or self.fail("the name is empty (an unset variable, perhaps)", param, ctx)
 
+
+period_option = click.option(
+    "--period",
+    metavar="TEXT",
+    help="A year (2025), month (2025-04), day (2025-04-01), or a first and a last one:"
+    " 2025-04-01/2025-10-31. [default: a typical year]",
+)
+"""What a sum is of."""
+
+diffuse_option = click.option(
+    "--diffuse",
+    type=click.Choice(["perez", "hay-davies", "isotropic"]),
+    default="perez",
+    show_default=True,
+    help="Model that parts the diffuse light.",
+)
+"""How the sky's diffuse light is spread over its dome."""
 
 _ARGUMENTS = (
     click.argument("dem", type=Name()),

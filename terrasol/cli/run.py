@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
+import itertools
 import json
 import os
-import shutil
 import time
-from collections.abc import Callable
+from collections.abc import Callable, Iterable
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
+from functools import cached_property
 from pathlib import Path
 from typing import Any
 
@@ -16,6 +17,16 @@ import numpy as np
 from numpy.typing import NDArray
 
 from terrasol import __version__
+from terrasol.cli.forecast import (
+    Record,
+    duration,
+    free_disk_mb,
+    give_forecast,
+    grid_line,
+    ground_forecast,
+    heights_line,
+    lines,
+)
 from terrasol.cli.options import Common
 from terrasol.cli.progress import progress_bar
 from terrasol.cli.streams import give, say
@@ -28,6 +39,7 @@ from terrasol.files.provenance import run_record
 from terrasol.files.rasters import naming, read_with_unit
 from terrasol.files.sink import RasterSink
 from terrasol.ground.elevation import Elevation
+from terrasol.ground.frame import Frame, make_frame
 from terrasol.kernels import horizon
 
 WORK = 0.85
@@ -45,7 +57,6 @@ SKIES = {
 }
 """How the summary calls energy under each kind of sky."""
 
-Record = dict[str, Any]
 Draw = Callable[[Plan, NDArray[np.float32], Summary, str], bytes]
 
 
@@ -55,6 +66,8 @@ class Ground:
 
     Parameters
     ----------
+    name : str
+        Its name as given.
     elevation : Elevation
         Heights in metres.
     unit : str
@@ -63,16 +76,30 @@ class Ground:
         Time it took.
     """
 
+    name: str
     elevation: Elevation
     unit: str
     seconds: float
+
+    @cached_property
+    def frame(self) -> Frame:
+        """Its place on the Earth.
+
+        Raises
+        ------
+        InputError
+            Naming the file, for a raster that cannot be placed.
+        """
+        elevation = self.elevation
+        with naming(self.name):
+            return make_frame(elevation.shape, elevation.transform, elevation.crs)
 
 
 def read(common: Common) -> Ground:
     """Read the elevation raster that a command was given."""
     start = time.perf_counter()
     elevation, unit = read_with_unit(common.dem, common.vertical_unit, common.fill_voids)
-    return Ground(elevation, unit, time.perf_counter() - start)
+    return Ground(common.dem, elevation, unit, time.perf_counter() - start)
 
 
 @dataclass(frozen=True)
@@ -126,9 +153,7 @@ class Job:
 
     def superseded(self) -> tuple[list[str], list[str]]:
         """Files of an earlier run to remove, and warnings."""
-        if not self.common.overwrite:
-            return [], []
-        return superseded_files(self.common.out_dir, self.names)
+        return superseded(self.common, self.names)
 
     def record(self) -> Record:
         """What was asked, of which file, by which software."""
@@ -143,26 +168,40 @@ class Job:
 def run(job: Job) -> None:
     """Carry out a job, or only tell of it, as its options say."""
     common = job.common
-    check_free(common.out_dir, job.names, common.overwrite)
-    for source in (common.dem, *job.inputs):
-        _spare_input(common, source, [*job.names, *job.superseded()[0]])
+    check_places(common, job.names, (common.dem, *job.inputs))
     if common.dry_run:
-        forecast = _forecast(job)
-        give(json.dumps(forecast, indent=2) if common.as_json else _in_lines(forecast))
+        give_forecast(common, _forecast(job), _in_lines)
         return
-    record = _carry_out(job, job.record())
-    if common.as_json:
-        give(json.dumps(record, indent=2))
-    elif not common.quiet:
-        say(_summary_text(record))
+    tell(common, _carry_out(job, job.record()), _summary_text)
 
 
-def _spare_input(common: Common, source: str, names: list[str]) -> None:
-    """Refuse to replace or remove a raster that is read."""
-    for name in names:
+def superseded(common: Common, names: list[str]) -> tuple[list[str], list[str]]:
+    """Files of an earlier run that a run of these names removes, and warnings."""
+    return superseded_files(common.out_dir, names) if common.overwrite else ([], [])
+
+
+def check_places(common: Common, names: list[str], sources: Iterable[str]) -> None:
+    """Refuse names that are taken, and to replace or remove a file that is read.
+
+    Raises
+    ------
+    OutputError
+        Naming the file.
+    """
+    check_free(common.out_dir, names, common.overwrite)
+    going = [*names, *superseded(common, names)[0]]
+    for source, name in itertools.product(sources, going):
         place = Path(common.out_dir) / name
         if os.path.exists(place) and os.path.isfile(source) and place.samefile(source):
             raise OutputError(f"{place} is the input itself: name another output folder")
+
+
+def tell(common: Common, record: Record, words: Callable[[Record], str]) -> None:
+    """Tell of a finished run: JSON on stdout, or words on stderr."""
+    if common.as_json:
+        give(json.dumps(record, indent=2))
+    elif not common.quiet:
+        say(words(record))
 
 
 def _carry_out(job: Job, record: Record) -> Record:
@@ -180,7 +219,7 @@ def _carry_out(job: Job, record: Record) -> Record:
             "packing and drawing": packing,
             "whole run": job.ground.seconds + time.perf_counter() - start,
         }
-        superseded, notes = job.superseded()
+        removed, notes = job.superseded()
         record = {
             **record,
             "threads": job.threads,
@@ -188,10 +227,10 @@ def _carry_out(job: Job, record: Record) -> Record:
             "warnings": [*summary.warnings, *job.notes, *notes],
             "seconds": {name: round(value, 2) for name, value in seconds.items()},
             "files": [os.path.abspath(delivery.folder / name) for name in job.names],
-            "removed": superseded,
+            "removed": removed,
         }
         delivery.write_json(RECORD, record)
-        delivery.commit(superseded)
+        delivery.commit(removed)
     return record
 
 
@@ -211,7 +250,7 @@ def _compute(
     )
     with sink, naming(common.dem):
         kept = _KeptBand(sink, elevation.shape)
-        _announce_compilation(common.quiet)
+        announce_compilation(common.quiet)
         summary = job.plan.run(kept, job.threads, lambda share, stage: move(WORK * share, stage))
         computed = time.perf_counter()
         with ThreadPoolExecutor(1) as beside:  # the picture is drawn while files are packed
@@ -252,7 +291,7 @@ class _KeptBand:
         self.sink.write(name, row, column, values)
 
 
-def _announce_compilation(quiet: bool) -> None:
+def announce_compilation(quiet: bool) -> None:
     """Say so when the kernels must be compiled first."""
     cache = Path(horizon.near_field.stats.cache_path or "")
     if not quiet and not any(cache.glob("*.nbi")):
@@ -276,24 +315,11 @@ def _tags(record: Record, elevation: Elevation) -> dict[str, str]:
 
 def _forecast(job: Job) -> Record:
     """What a run would work on, write and cost."""
-    common, ground, plan, threads = job.common, job.ground, job.plan, job.threads
-    elevation, frame = ground.elevation, plan.frame
-    turn = frame.convergence
-    across, down = frame.cell_size
-    folder = Path(common.out_dir).absolute()
-    while not os.path.exists(folder):
-        folder = folder.parent
-    heights = elevation.heights
-    superseded, notes = job.superseded()
-    return {
-        "input": common.dem,
-        "crs": elevation.crs.name,
-        "rows": elevation.shape[0],
-        "columns": elevation.shape[1],
-        "void_cells": int(np.isnan(heights).sum()),
-        "filled_cells": 0 if elevation.filled is None else int(elevation.filled.sum()),
-        "heights_m": [round(float(np.nanmin(heights)), 2), round(float(np.nanmax(heights)), 2)],
-        "heights_read_as": ground.unit,
+    plan, threads = job.plan, job.threads
+    turn = plan.frame.convergence
+    across, down = plan.frame.cell_size
+    removed, notes = job.superseded()
+    return ground_forecast(job.common, job.ground) | {
         "cell_m": [round(across, 4), round(down, 4)],
         "grid_up_from_true_north_deg": {
             "centre": _rounded(turn[turn.shape[0] // 2, turn.shape[1] // 2]),
@@ -301,13 +327,18 @@ def _forecast(job: Job) -> Record:
             "greatest": _rounded(turn.max()),
         },
         "files": job.files,
-        "removed": superseded,
+        "removed": removed,
         "memory_mb": round(plan.memory_bytes / 1e6),
         "disk_mb": round(plan.disk_bytes / 1e6),
-        "disk_free_mb": round(shutil.disk_usage(folder).free / 1e6),
+        "disk_free_mb": free_disk_mb(job.common.out_dir),
         "threads": job.threads,
         "seconds": round(plan.seconds(threads)),
-        "warnings": [*elevation.warnings, *job.plan.scene.warnings, *job.notes, *notes],
+        "warnings": [
+            *job.ground.elevation.warnings,
+            *plan.scene.warnings,
+            *job.notes,
+            *notes,
+        ],
     }
 
 
@@ -318,21 +349,13 @@ def _rounded(degrees: float) -> float:
 def _in_lines(forecast: Record) -> str:
     """The forecast for people."""
     f = forecast
-    turn, (low, high), (across, down) = (
-        f["grid_up_from_true_north_deg"],
-        f["heights_m"],
-        f["cell_m"],
-    )
+    turn, (across, down) = f["grid_up_from_true_north_deg"], f["cell_m"]
     rows = [
         ("input", f["input"]),
         ("CRS", f["crs"]),
-        (
-            "grid",
-            f"{counted(f['rows'], 'row')}, {counted(f['columns'], 'column')},"
-            f" {counted(f['void_cells'], 'void cell')}",
-        ),
+        grid_line(f),
         ("cell", f"{across:.6g} m x {down:.6g} m on the ground, at the centre"),
-        ("heights", f"{low:g} to {high:g} m, read as {f['heights_read_as']}"),
+        heights_line(f),
         (
             "true north",
             f"the grid's up direction is turned from it by {_turn(turn['centre'])}"
@@ -342,10 +365,10 @@ def _in_lines(forecast: Record) -> str:
         *([("removed", ", ".join(f["removed"]))] if f["removed"] else []),
         ("memory", f"{f['memory_mb']:,} MB"),
         ("disk", f"{f['disk_mb']:,} MB at most, {f['disk_free_mb']:,} MB free"),
-        ("time", f"about {_duration(f['seconds'])} on {counted(f['threads'], 'thread')}"),
+        ("time", f"about {duration(f['seconds'])} on {counted(f['threads'], 'thread')}"),
         *(("warning", text) for text in f["warnings"]),
     ]
-    return "\n".join(f"{name:<11} {text}" for name, text in rows)
+    return lines(rows)
 
 
 def _turn(degrees: float) -> str:
@@ -355,16 +378,9 @@ def _turn(degrees: float) -> str:
     return f"{abs(degrees):g} degrees {'counter-clockwise' if degrees < 0 else 'clockwise'}"
 
 
-def _duration(seconds: float) -> str:
-    """A time that a person reads at a glance."""
-    if seconds < 120:
-        return f"{seconds:.0f} s"
-    return f"{seconds / 60:.0f} min" if seconds < 7200 else f"{seconds / 3600:.1f} h"
-
-
 def _summary_text(record: Record) -> str:
     """What came out, for people."""
-    results, lines = record["results"], []
+    results, told = record["results"], []
     for name, found in results.items():
         if isinstance(found, dict):
             unit = "" if found["unit"] == "1" else f" {found['unit']}"
@@ -372,22 +388,22 @@ def _summary_text(record: Record) -> str:
             if name.endswith("_months"):
                 continue
             kind = "" if label.replace("-", " ") in name.replace("_", " ") else f" ({label})"
-            lines.append(
+            told.append(
                 f"{name}{kind}: mean {band['mean']:g}{unit},"
                 f" from {band['least']:g} to {band['greatest']:g}"
             )
     if "level_ground" in results:
-        lines.append(
+        told.append(
             f"open level ground at the centre: {results['level_ground']:g} {results['unit']}"
         )
-        lines.append(f"energy is {SKIES[results['sky']]}, {results['basis']}")
+        told.append(f"energy is {SKIES[results['sky']]}, {results['basis']}")
     if results.get("void_cells"):
-        lines.append(f"void: {results['void_cells']} of {results['cells']} cells")
-    lines += results.get("remarks", [])
-    lines += [f"warning: {text}" for text in record["warnings"]]
+        told.append(f"void: {results['void_cells']} of {results['cells']} cells")
+    told += results.get("remarks", [])
+    told += [f"warning: {text}" for text in record["warnings"]]
     if record["removed"]:
-        lines.append(f"removed, of an earlier run: {', '.join(record['removed'])}")
+        told.append(f"removed, of an earlier run: {', '.join(record['removed'])}")
     files = record["files"]
-    took = _duration(record["seconds"]["whole run"])
-    lines.append(f"{counted(len(files), 'file')} in {Path(files[0]).parent} after {took}")
-    return "\n".join(lines)
+    took = duration(record["seconds"]["whole run"])
+    told.append(f"{counted(len(files), 'file')} in {Path(files[0]).parent} after {took}")
+    return "\n".join(told)

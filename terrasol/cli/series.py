@@ -2,10 +2,9 @@
 
 from __future__ import annotations
 
-import json
 import os
-import shutil
 import time
+from copy import copy
 from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -13,10 +12,10 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from terrasol.cli.ground_options import Around, ground_options
-from terrasol.cli.irradiation import irradiation
-from terrasol.cli.options import Common, Name, common_options
+from terrasol.cli.irradiation import ALBEDO_FOR_NOW, irradiation
+from terrasol.cli.options import Common, Name, Numbers, common_options
 from terrasol.cli.sky_options import AskedSky, sky_options
-from terrasol.cli.streams import give, say
+from terrasol.errors import counted
 
 if TYPE_CHECKING:
     from terrasol.cli.run import Ground
@@ -110,18 +109,18 @@ def series(common: Common, around: Around, asked: AskedSky, **given: Any) -> Non
     from terrasol.engine.series import plan_series
     from terrasol.engine.series_stack import series_record
     from terrasol.files.rasters import naming
-    from terrasol.ground.frame import make_frame
 
     _check(common, around, asked, given)
     settings = _settings(common, asked, given)
     ground = read(common)
     elevation = ground.elevation
-    with naming(common.dem):
-        frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
-    air = asked.placed(asked.air(given["albedo"]), frame)
+    air = asked.placed(asked.air(_plain(given["albedo"])), ground.frame)
     settled = asked.settle(air, given["period"], STATION_SECONDS, elevation)
-    settings = replace(settings, sky=settled.sky or air, period=settled.period)
-    scene = around.scene(elevation, frame)
+    station = settled.station if given["albedo"] == "station" else None
+    settings = replace(
+        settings, sky=settled.sky or air, period=settled.period, albedo_station=station
+    )
+    scene = around.scene(elevation, ground.frame)
     with naming(common.dem):
         plan = plan_series(elevation, settings, scene)
     record = series_record(settings) | settled.record | around.record()
@@ -132,6 +131,8 @@ def _check(common: Common, around: Around, asked: AskedSky, given: dict[str, Any
     """Refuse options that do not go together, and names that are taken."""
     from terrasol.files.stacks import check_stack_free, kind_of
 
+    if given["albedo"] == "station" and not asked.station:
+        raise click.UsageError("--albedo station needs --station, which is not given")
     if around.horizon_gap or around.highest is not None:
         raise click.UsageError("--horizon-gap belongs to terrasol irradiation: no series holds it")
     if asked.clear_sky_index is not None:
@@ -153,7 +154,7 @@ def _check(common: Common, around: Around, asked: AskedSky, given: dict[str, Any
 
 def _rearrange(command: click.Command) -> None:
     """Add the options shared with `terrasol irradiation`, and say what is different here."""
-    shared = [option for option in irradiation.params if option.name in AS_IRRADIATION]
+    shared = [copy(option) for option in irradiation.params if option.name in AS_IRRADIATION]
     names = [option.name for option in command.params]
     after = names.index("substep_seconds")
     command.params[after:after] = shared
@@ -164,6 +165,9 @@ def _rearrange(command: click.Command) -> None:
             option.help = "How a Zarr stack is packed; NetCDF takes deflate."
         elif isinstance(option, click.Option) and option.name == "overwrite":
             option.help = "Replace a stack that is there."
+        elif isinstance(option, click.Option) and option.name == "albedo":
+            option.type = Numbers("station")
+            option.help = "Albedo of the ground: numbers, or 'station' for what SERIES measured."
         elif isinstance(option, click.Option) and option.name in NOT_HERE:
             option.hidden = True
 
@@ -173,22 +177,27 @@ _rearrange(series)
 
 def _settings(common: Common, asked: AskedSky, given: dict[str, Any]) -> SeriesSettings:
     """Everything that can be settled before the raster is read."""
-    from terrasol.light.irradiation import twelve
     from terrasol.light.series import SeriesSettings
+    from terrasol.light.settings import twelve
     from terrasol.sky.period import parse_period
 
     return SeriesSettings(
         period=parse_period(given["period"]),
-        sky=asked.air(given["albedo"]),
+        sky=asked.air(_plain(given["albedo"])),
         step=given["step"],
         quantities=given["quantities"],
-        albedo=twelve(given["albedo"], "albedo"),
+        albedo=twelve(_plain(given["albedo"]), "albedo"),
         diffuse=given["diffuse"],
         azimuths=common.azimuths,
         basis=given["basis"],
         substep_seconds=given["substep_seconds"],
         refraction=common.refraction,
     )
+
+
+def _plain(albedo: Any) -> tuple[float, ...]:
+    """Albedo in numbers, where it was given so; for now, where it will be as measured."""
+    return ALBEDO_FOR_NOW if isinstance(albedo, str) else albedo
 
 
 def _store(given: dict[str, Any]) -> Path | None:
@@ -209,8 +218,9 @@ def _run(
     notes: tuple[str, ...],
 ) -> None:
     """Carry the plan out, or only tell of it."""
+    from terrasol.cli.forecast import give_forecast
     from terrasol.cli.progress import progress_bar
-    from terrasol.cli.run import _announce_compilation
+    from terrasol.cli.run import announce_compilation, tell
     from terrasol.engine.plan import default_threads
     from terrasol.engine.series_stack import write_series
     from terrasol.files.provenance import run_record
@@ -220,12 +230,12 @@ def _run(
     if common.dry_run:
         forecast = _forecast(common, ground, plan, store, threads)
         forecast["warnings"] += notes
-        give(json.dumps(forecast, indent=2) if common.as_json else _in_lines(forecast))
+        give_forecast(common, forecast, _in_lines)
         return
     own = {"vertical_unit": ground.unit, "fill_voids": common.fill_voids}
     record = run_record("series", common.dem, settings | own)
     start = time.perf_counter()
-    _announce_compilation(common.quiet)
+    announce_compilation(common.quiet)
     with progress_bar(common.quiet) as move, naming(common.dem):
         summary = write_series(
             plan,
@@ -250,35 +260,19 @@ def _run(
         "files": [str(common.out_dir)],
         "horizon_store": None if store is None else str(store),
     }
-    if common.as_json:
-        give(json.dumps(record, indent=2))
-    elif not common.quiet:
-        say(_summary_text(record))
+    tell(common, record, _summary_text)
 
 
 def _forecast(
     common: Common, ground: Ground, plan: SeriesPlan, store: Path | None, threads: int
 ) -> dict[str, Any]:
     """What a run would work on, write and cost."""
-    import numpy as np
-
+    from terrasol.cli.forecast import free_disk_mb, ground_forecast
     from terrasol.engine.series import stack_variables
     from terrasol.files.horizons import find_horizons
 
-    elevation = plan.elevation
-    folder = Path(common.out_dir).absolute()
-    while not folder.exists():
-        folder = folder.parent
     stored = store is not None and find_horizons(store, plan.key) is not None
-    heights = elevation.heights
-    return {
-        "input": common.dem,
-        "crs": elevation.crs.name,
-        "rows": elevation.shape[0],
-        "columns": elevation.shape[1],
-        "void_cells": int(np.isnan(heights).sum()),
-        "heights_m": [round(float(np.nanmin(heights)), 2), round(float(np.nanmax(heights)), 2)],
-        "heights_read_as": ground.unit,
+    return ground_forecast(common, ground) | {
         "stack": str(common.out_dir),
         "quantities": {v.name: v.unit for v in stack_variables(plan.settings)},
         "steps": plan.steps,
@@ -290,16 +284,17 @@ def _forecast(
         "horizons_mb": round(plan.horizon_bytes / 1e6, 1),
         "memory_mb": round(plan.memory_bytes(threads) / 1e6),
         "disk_mb": round(plan.stack_bytes / 1e6, 1),
-        "disk_free_mb": round(shutil.disk_usage(folder).free / 1e6),
+        "disk_free_mb": free_disk_mb(common.out_dir),
         "threads": threads,
         "seconds": round(plan.seconds(threads, stored)),
-        "warnings": [*elevation.warnings, *plan.scene.warnings],
+        "warnings": [*plan.elevation.warnings, *plan.scene.warnings],
     }
 
 
 def _in_lines(f: dict[str, Any]) -> str:
     """The forecast for people."""
-    low, high = f["heights_m"]
+    from terrasol.cli.forecast import duration, grid_line, heights_line, lines
+
     quantities = ", ".join(f"{name} ({unit})" for name, unit in f["quantities"].items())
     if f["horizons_found"]:
         horizons = f"found in {f['horizon_store']}"
@@ -310,21 +305,23 @@ def _in_lines(f: dict[str, Any]) -> str:
     rows = [
         ("input", f["input"]),
         ("CRS", f["crs"]),
-        ("grid", f"{f['rows']} rows, {f['columns']} columns, {f['void_cells']} cells void"),
-        ("heights", f"{low:g} to {high:g} m, read as {f['heights_read_as']}"),
+        grid_line(f),
+        heights_line(f),
         ("stack", f"{f['stack']}: {quantities}"),
         ("steps", f"{f['steps']}, from {f['first_step_begins']} to {f['last_step_ends']}"),
         ("horizons", horizons),
         ("memory", f"{f['memory_mb']:,} MB"),
         ("disk", f"about {f['disk_mb']:,} MB, {f['disk_free_mb']:,} MB free"),
-        ("time", f"about {f['seconds']} s on {f['threads']} threads"),
+        ("time", f"about {duration(f['seconds'])} on {counted(f['threads'], 'thread')}"),
         *(("warning", text) for text in f["warnings"]),
     ]
-    return "\n".join(f"{name:<11} {text}" for name, text in rows)
+    return lines(rows)
 
 
 def _summary_text(record: dict[str, Any]) -> str:
     """What came out, for people."""
+    from terrasol.cli.forecast import duration
+
     results = record["results"]
     lines = [
         f"{name}: mean {found['mean']:g} {found['unit']}, from {found['least']:g}"
@@ -340,5 +337,5 @@ def _summary_text(record: dict[str, Any]) -> str:
     if results["void_cells"]:
         lines.append(f"void: {results['void_cells']} of {results['cells']} cells")
     lines += [f"warning: {text}" for text in record["warnings"]]
-    lines.append(f"{record['files'][0]} after {record['seconds']['whole run']:.0f} s")
+    lines.append(f"{record['files'][0]} after {duration(record['seconds']['whole run'])}")
     return "\n".join(lines)

@@ -27,11 +27,6 @@ if TYPE_CHECKING:
 PAPERS = {"ineichen": "Ineichen and Perez 2002", "bird": "Bird and Hulstrom 1981"}
 """Clear-sky models, by the name of the option's choice."""
 
-BIRD_FIELDS = (
-    "aerosol_500nm", "aerosol_380nm", "water_cm", "ozone_atm_cm", "asymmetry", "ground_albedo",
-)  # fmt: skip
-"""What of the air Bird and Hulstrom's model reads."""
-
 CLIMATOLOGY = "climatology"
 TURBIDITY_FOR_NOW = 3.0
 """Stands for the climatology's turbidity while the other settings are checked, before the
@@ -139,7 +134,7 @@ class AskedSky:
         self, air: Air, period: str | None, step_seconds: float, elevation: Elevation
     ) -> Settled:
         """Read the station, or take the indices; the sky is clear if neither was given."""
-        from terrasol.light.irradiation import twelve
+        from terrasol.light.settings import twelve
         from terrasol.sky.cloud import MonthlySky
         from terrasol.sky.period import parse_period
 
@@ -207,15 +202,6 @@ def file_record(path: str) -> dict[str, str]:
     from terrasol.files.provenance import sha256
 
     return {"file": os.path.abspath(path), "sha256": sha256(path)}
-
-
-def air_record(air: Air) -> dict[str, Any]:
-    """An air as plain text and numbers."""
-    of_model = ("linke",) if air.model == "ineichen" else BIRD_FIELDS
-    record = {name: getattr(air, name) for name in ("model", "solar_constant", *of_model)}
-    if air.linke is not None:
-        record["linke"] = shortest(air.linke)
-    return record
 
 
 def shortest(months: tuple[float, ...]) -> float | tuple[float, ...]:

@@ -20,16 +20,12 @@ def terrain(common: Common, around: Around, horizon: bool) -> None:
     from terrasol.cli.run import Job, read, run
     from terrasol.engine.job import plan_terrain
     from terrasol.files.rasters import naming
-    from terrasol.ground.frame import make_frame
 
     ground = read(common)
-    elevation = ground.elevation
-    with naming(common.dem):
-        frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
-    scene = around.scene(elevation, frame)
+    scene = around.scene(ground.elevation, ground.frame)
     with naming(common.dem):
         plan = plan_terrain(
-            elevation,
+            ground.elevation,
             common.azimuths,
             horizon=horizon,
             refraction=common.refraction,

@@ -15,15 +15,10 @@ from terrasol.ground.elevation import Elevation
 from terrasol.ground.horizon import NODE_STEP
 from terrasol.ground.surface import slope_and_aspect
 from terrasol.light.indexed import MappedTables
-from terrasol.light.irradiation import (
-    UNITS,
-    Light,
-    SkyTables,
-    Strip,
-    Surroundings,
-    sky_light,
-    strip_light,
-)
+from terrasol.light.irradiation import Light, Strip, sky_light, strip_light
+from terrasol.light.settings import UNITS
+from terrasol.light.surroundings import Surroundings
+from terrasol.light.tables import SkyTables
 
 Arrays = dict[str, NDArray[Any]]
 Tables = SkyTables | MappedTables

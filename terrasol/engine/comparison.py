@@ -21,7 +21,7 @@ from terrasol.engine.plan import Progress, blocks_of, carry_out, check_threads, 
 from terrasol.errors import InputError, SettingError, counted
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
-from terrasol.ground.frame import Frame
+from terrasol.ground.frame import Frame, make_frame
 from terrasol.ground.horizon import BLOCK
 from terrasol.ground.places import WGS84, Locator
 from terrasol.light.comparison import (
@@ -32,17 +32,15 @@ from terrasol.light.comparison import (
     local_time,
     model_station,
 )
-from terrasol.light.irradiation import check_azimuths, check_refraction, twelve
+from terrasol.light.settings import check_azimuths, check_refraction, twelve
 from terrasol.sky.clear import Air
 from terrasol.sky.cloud import CloudedSky, clouded_sky
 from terrasol.sky.gaps import LONGEST_HOURS, fill_gaps
-from terrasol.sky.interval import interval_means
-from terrasol.sky.irradiance import Irradiance, Sky
-from terrasol.sky.measured import TRUSTED
+from terrasol.sky.irradiance import Sky
+from terrasol.sky.measured import series_doubts
 from terrasol.sky.period import parse_period
 from terrasol.sky.quality import check_quality, usable
 from terrasol.sky.station import Station
-from terrasol.sky.sun import SunSeries
 from terrasol.sky.timing import CLEAR_SCALE, TRIMMED, Timing, check_times
 
 AZIMUTHS: Final = 256
@@ -115,7 +113,6 @@ class Spot:
 
 def spot_at(
     elevation: Elevation,
-    frame: Frame,
     latitude: float,
     longitude: float,
     azimuths: int = AZIMUTHS,
@@ -128,7 +125,7 @@ def spot_at(
 
     Parameters
     ----------
-    elevation, frame
+    elevation : Elevation
         The ground.
     latitude, longitude : float
         Degrees north, degrees east, WGS 84.
@@ -137,7 +134,7 @@ def spot_at(
     refraction : float
         Coefficient k of terrestrial refraction.
     scene : Scene, optional
-        What stands beyond and above, from `make_scene`.
+        What stands beyond and above, from `terrasol.ground.beyond.make_scene`.
     threads : int, optional
         Default: all cores that may be used.
     progress : callable, optional
@@ -153,12 +150,14 @@ def spot_at(
     SettingError
         A value out of its range.
     InputError
-        The place lies outside the elevation model, or on a void.
+        The place lies outside the elevation model, or on a void; a raster that cannot be placed
+        on the Earth.
     """
     check_azimuths(azimuths)
     check_refraction(refraction)
     threads = default_threads() if threads is None else threads
     check_threads(threads)
+    frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
     row, column = cell_of(elevation, frame, latitude, longitude)
     ground, tasks = lay_out(elevation, frame, azimuths, refraction, scene or Scene())
     for count, _ in enumerate(carry_out(tasks, threads), 1):
@@ -240,12 +239,15 @@ class OtherStation:
         What its clear days say of its clock.
     filled : dict of int
         Intervals filled, by quantity.
+    warnings : tuple of str
+        On its series.
     """
 
     station: Station
     kilometres: float
     timing: Timing
     filled: dict[str, int]
+    warnings: tuple[str, ...]
 
 
 @dataclass(frozen=True, eq=False)
@@ -330,7 +332,6 @@ class StationReport:
 
 def station_record(station: Station) -> dict[str, Any]:
     """Place and span of a station as plain numbers and text."""
-    last = station.start[-1] + np.timedelta64(station.seconds, "s")
     return {
         "name": station.name,
         "latitude": station.latitude,
@@ -338,7 +339,7 @@ def station_record(station: Station) -> dict[str, Any]:
         "height_m": station.height,
         "interval_seconds": station.seconds,
         "start": f"{station.start[0]}Z",
-        "end": f"{last}Z",
+        "end": f"{station.end}Z",
     }
 
 
@@ -359,8 +360,9 @@ def _rounded(value: Any) -> Any:
 
 
 def _plain(record: dict[str, Any]) -> dict[str, Any]:
-    """JSON has no NaN: what is not known is None."""
-    return {k: None if isinstance(v, float) and np.isnan(v) else v for k, v in record.items()}
+    """JSON has no NaN and no infinity: None."""
+    unknown = {k for k, v in record.items() if isinstance(v, float) and not np.isfinite(v)}
+    return {k: None if k in unknown else v for k, v in record.items()}
 
 
 def _where(report: StationReport) -> list[str]:
@@ -498,12 +500,10 @@ def compare_station(
     if not days.size:
         days = timing.days
     found = compare(sound, modelled, days if other is None else None)
-    warnings = [*station.notes, *_doubts(station, spot, timing, neighbour)]
-    if impossible := changed["global"]["impossible"]:
-        warnings.append(
-            f"{station.name}: {counted(impossible, 'value')} of global that cannot be true count"
-            " as missing"
-        )
+    compared = {"global": changed["global"]}
+    warnings = [*_place_doubts(station, spot), *series_doubts(station, compared, {}, timing)]
+    if neighbour is not None:
+        warnings += neighbour.warnings
     if found is None:
         warnings.append(_nothing(station, other))
     summary = quality.summary()
@@ -560,82 +560,44 @@ def _albedo(station: Station, asked: float | Sequence[float] | None) -> Values:
 
 
 def _modelled(station: Station, sky: Sky, spot: Spot, albedo: Values, diffuse: str) -> Modelled:
-    """Model the station; NaN where a second station's sky is not known throughout an interval.
+    """Model the station, with an albedo of each interval.
 
     The terrain's light is linear in its albedo, so that may change from interval to interval.
     """
-    whole: Sky = sky
-    missing = np.zeros(station.start.size, np.bool_)
-    if isinstance(sky, CloudedSky):
-        whole = _Gapless(sky)
-        gaps = interval_means(station, lambda sun: {"gap": _unknown(sky.over(sun, station.height))})
-        missing = gaps["gap"] > 0.0
-    bare = model_station(station, whole, spot.horizon, spot.sky_view, 0.0, diffuse)
+    bare = model_station(station, sky, spot.horizon, spot.sky_view, 0.0, diffuse)
     sent_back = albedo * (1.0 - spot.sky_view) * bare.open
-    shaded, level, dull = (
-        np.where(missing, np.nan, values)
-        for values in (bare.shaded + sent_back, bare.open, bare.dull + sent_back)
-    )
-    return Modelled(shaded, level, dull, bare.lit)
-
-
-def _unknown(light: Irradiance) -> Values:
-    return np.isnan(light.diffuse_horizontal).astype(np.float64)
-
-
-@dataclass(frozen=True)
-class _Gapless:
-    """A measured sky with clear air in its gaps, so that no mean over other intervals is lost."""
-
-    sky: CloudedSky
-
-    def over(self, sun: SunSeries, height: float) -> Irradiance:
-        light, clear = self.sky.over(sun, height), self.sky.air.over(sun, height)
-        gap = np.isnan(light.diffuse_horizontal)
-        return Irradiance(
-            np.where(gap, clear.beam_normal, light.beam_normal),
-            np.where(gap, clear.diffuse_horizontal, light.diffuse_horizontal),
-            light.extraterrestrial_normal,
-        )
+    return Modelled(bare.shaded + sent_back, bare.open, bare.dull + sent_back, bare.lit)
 
 
 def _other_sky(
     station: Station, other: Station, air: Air, decomposition: str, fill_hours: float
 ) -> tuple[OtherStation, CloudedSky]:
     """Read the sky of a second station over the time that both measured."""
-    ends = [s.start[-1] + np.timedelta64(s.seconds, "s") for s in (station, other)]
-    first, last = max(station.start[0], other.start[0]), min(ends)
+    first, last = max(station.start[0], other.start[0]), min(station.end, other.end)
     if first >= last:
         raise InputError(
-            f"{other.name}: measured from {other.start[0]} to {ends[1]} UTC, {station.name} from"
-            f" {station.start[0]} to {ends[0]}: give two series of the same time"
+            f"{other.name}: measured from {other.start[0]} to {other.end} UTC, {station.name} from"
+            f" {station.start[0]} to {station.end}: give two series of the same time"
         )
-    sound, _ = usable(other, check_quality(other))
+    sound, changed = usable(other, check_quality(other))
     filled = fill_gaps(sound, air, fill_hours)
-    shift = np.timedelta64(round(other.longitude * 240.0), "s")
-    days = [str((moment + shift).astype("M8[D]")) for moment in (first, last)]
+    days = [str((moment + other.solar_offset).astype("M8[D]")) for moment in (first, last)]
     sky = clouded_sky(filled.station, air, parse_period("/".join(days)), decomposition)
     away = _kilometres((station.latitude, station.longitude), (other.latitude, other.longitude))
     timing = check_times(other, air)
-    neighbour = OtherStation(filled.station, away, timing, filled.count)
+    doubts = series_doubts(other, changed, filled.count, timing)
+    neighbour = OtherStation(filled.station, away, timing, filled.count, doubts)
     return neighbour, replace(sky, strict=False)
 
 
-def _doubts(station: Station, spot: Spot, timing: Timing, other: OtherStation | None) -> list[str]:
-    """Warnings on height and clocks."""
-    doubts = []
-    if spot.height is not None and abs(spot.height - station.height) > HEIGHT_TOLERANCE:
-        doubts.append(
-            f"{station.name}: the stated height is {station.height:.0f} m, but the elevation"
-            f" model's cell lies at {spot.height:.0f} m: is its place right?"
-        )
-    for found in (timing, *([other.timing] if other else [])):
-        if found.verdict not in TRUSTED:
-            doubts.append(f"{found.words}; nothing was changed")
-    if other is not None and any(other.filled.values()):
-        told = ", ".join(f"{count} of {name}" for name, count in other.filled.items() if count)
-        doubts.append(f"{other.station.name}: filled by clear-sky index: {told}")
-    return doubts
+def _place_doubts(station: Station, spot: Spot) -> list[str]:
+    """Warnings on the height."""
+    if spot.height is None or abs(spot.height - station.height) <= HEIGHT_TOLERANCE:
+        return []
+    return [
+        f"{station.name}: the stated height is {station.height:.0f} m, but the elevation model's"
+        f" cell lies at {spot.height:.0f} m: is its place right?"
+    ]
 
 
 def _nothing(station: Station, other: Station | None) -> str:

@@ -19,7 +19,7 @@ from terrasol.ground.above import surface_heights
 from terrasol.ground.beyond import Scene, far_ground, make_scene
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import make_frame
-from terrasol.light.irradiation import LightSettings, twelve
+from terrasol.light.settings import LightSettings, twelve
 from terrasol.sky.clear import Air, linke_climatology
 from terrasol.sky.irradiance import Sky
 from terrasol.sky.period import Period, parse_period
@@ -107,10 +107,9 @@ def terrain(
     >>> round(float(result.slope[20, 20]), 1), round(float(result.aspect[20, 20]), 1)
     (45.0, 180.0)
     """
-    _check_ground(elevation)
-    scene = _scene(elevation, far, surface, horizon_gap, highest)
+    scene = scene_of(elevation, far, surface, horizon_gap, highest)
     plan = plan_terrain(elevation, azimuths, horizon=horizon, refraction=refraction, scene=scene)
-    return _dataset(plan, threads)
+    return run_in_memory(plan, threads)
 
 
 def irradiation(
@@ -193,7 +192,7 @@ def irradiation(
     Ineichen and Perez (2002), doi:10.1016/S0038-092X(02)00045-2. Perez et al. (1990),
     doi:10.1016/0038-092X(90)90055-H. docs/method.md has every formula.
     """
-    _check_ground(elevation)
+    scene = scene_of(elevation, far, surface, horizon_gap, highest)
     if not isinstance(period, Period):
         period = parse_period(period)
     if not isinstance(air, Air | None):
@@ -203,8 +202,7 @@ def irradiation(
     if not isinstance(step_seconds, Real):
         raise SettingError(f"the time step must be a number of seconds; got {step_seconds!r}")
     if air is None:
-        frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
-        air = Air.ineichen(linke_climatology(*frame.centre))
+        air = clear_air(elevation)
     settings = LightSettings(
         period,
         air,
@@ -218,21 +216,36 @@ def irradiation(
         refraction,
         sky,
     )
-    scene = _scene(elevation, far, surface, horizon_gap, highest)
-    return _dataset(plan_irradiation(elevation, settings, scene), threads)
+    return run_in_memory(plan_irradiation(elevation, settings, scene), threads)
 
 
-def _scene(
+def scene_of(
     elevation: Elevation,
-    far: Elevation | None,
-    surface: Elevation | None,
-    horizon_gap: bool,
-    highest: float | None,
+    far: Elevation | None = None,
+    surface: Elevation | None = None,
+    horizon_gap: bool = False,
+    highest: float | None = None,
 ) -> Scene:
-    """What stands beyond and above, put together."""
-    for model in (far, surface):
-        if model is not None:
-            _check_ground(model)
+    """Put together what stands beyond and above a ground.
+
+    Parameters
+    ----------
+    elevation, far, surface, horizon_gap, highest
+        See `irradiation`.
+
+    Raises
+    ------
+    InputError
+        What is no elevation model, or cannot be placed on the Earth.
+    SettingError
+        A height out of its range.
+    """
+    for model in (elevation, far, surface):
+        if not isinstance(model, Elevation | None):
+            raise InputError(
+                f"the ground must be an Elevation, not {type(model).__name__}: read a file with"
+                " read_elevation, or take an array with Elevation.from_array"
+            )
     frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
     return make_scene(
         elevation,
@@ -244,19 +257,26 @@ def _scene(
     )
 
 
-def _check_ground(elevation: Elevation) -> None:
-    """Raise InputError for what is no elevation model, such as a file's name."""
-    if not isinstance(elevation, Elevation):
-        raise InputError(
-            f"the ground must be an Elevation, not {type(elevation).__name__}: read a file with"
-            " read_elevation, or take an array with Elevation.from_array"
-        )
-
-
-def _dataset(
+def run_in_memory(
     plan: Plan, threads: int | None, label: Callable[..., xr.DataArray] | None = None
 ) -> xr.Dataset:
-    """Run a plan into memory and label what comes out."""
+    """Run a plan into memory and label what comes out.
+
+    Parameters
+    ----------
+    plan : Plan
+        The work.
+    threads : int or None
+        None for all cores that may be used.
+    label : callable, optional
+        Given plan, layer and values, makes the layer's DataArray; by default that of terrain
+        and irradiation.
+
+    Raises
+    ------
+    SettingError
+        A number of threads that is none, or under 1.
+    """
     if not isinstance(threads, Integral | None):
         raise SettingError(f"the number of threads must be a whole number; got {threads!r}")
     sink = ArraySink(plan.elevation.shape)
@@ -287,11 +307,21 @@ def _gap_variables(layer: Layer, values: NDArray[Any]) -> dict[str, xr.DataArray
     }
 
 
+def attributes(layer: Layer) -> dict[str, str]:
+    """Unit and names of a layer, as CF writes them."""
+    named = {"standard_name": layer.standard_name} if layer.standard_name else {}
+    return {"units": layer.unit, "long_name": layer.long_name} | named
+
+
+def clear_air(elevation: Elevation) -> Air:
+    """Make the clear air of Ineichen and Perez, with the turbidity climatology at the centre."""
+    frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
+    return Air.ineichen(linke_climatology(*frame.centre))
+
+
 def _labelled(plan: Plan, layer: Layer, values: NDArray[Any]) -> xr.DataArray:
     """One layer as a DataArray with names, unit and coordinates."""
-    attrs = {"units": layer.unit, "long_name": layer.long_name}
-    if layer.standard_name:
-        attrs["standard_name"] = layer.standard_name
+    attrs = attributes(layer)
     if layer.name == "horizon":
         azimuth = 360.0 * np.arange(len(layer.bands)) / len(layer.bands)
         return xr.DataArray(values, {"azimuth": azimuth}, ("azimuth", "y", "x"), attrs=attrs)

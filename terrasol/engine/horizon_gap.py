@@ -9,7 +9,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from terrasol.engine.ground_work import BlockGround
-from terrasol.light.irradiation import UNITS, SkyTables, Strip
+from terrasol.light.irradiation import Strip
+from terrasol.light.settings import UNITS
+from terrasol.light.tables import SkyTables
 
 MATTERS: Final = 0.01
 """Share of a cell's light from which what could be missing matters."""

@@ -15,7 +15,7 @@ from scipy.interpolate import RegularGridInterpolator
 from terrasol.constants import REFRACTION_COEFFICIENT
 from terrasol.engine import outputs
 from terrasol.engine.blocks import Arrays, status_of, with_block
-from terrasol.engine.datasets import _check_ground, _dataset, _scene
+from terrasol.engine.datasets import attributes, clear_air, run_in_memory, scene_of
 from terrasol.engine.ground_work import BlockGround, Ground
 from terrasol.engine.horizon_gap import GapTally, horizon_gap
 from terrasol.engine.job import (
@@ -39,8 +39,8 @@ from terrasol.light.hours import (
     TimeTables,
     strip_hours,
 )
-from terrasol.light.irradiation import MIXED_BYTES
-from terrasol.sky.clear import Air, linke_climatology
+from terrasol.light.latitudes import MIXED_BYTES
+from terrasol.sky.clear import Air
 from terrasol.sky.cloud import MonthlySky
 from terrasol.sky.irradiance import Sky
 from terrasol.sky.period import Period, parse_period
@@ -343,12 +343,11 @@ def sun_hours(
     >>> [round(float(day[name][0, 20, 20]), 1) for name in ("first_sun", "last_sun")]
     [4.1, 19.9]
     """
-    _check_ground(elevation)
+    scene = scene_of(elevation, far, surface)
     if not isinstance(period, Period):
         period = parse_period(period)
     if sky is None:
-        frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
-        sky = Air.ineichen(linke_climatology(*frame.centre))
+        sky = clear_air(elevation)
     settings = HoursSettings(
         period,
         sky,
@@ -358,15 +357,12 @@ def sun_hours(
         step_seconds,
         refraction,
     )
-    scene = _scene(elevation, far, surface, False, None)
-    return _dataset(plan_hours(elevation, settings, scene), threads, _labelled)
+    return run_in_memory(plan_hours(elevation, settings, scene), threads, _labelled)
 
 
 def _labelled(plan: Plan, layer: Layer, values: NDArray[Any]) -> xr.DataArray:
     """One layer as a DataArray with names, unit and coordinates."""
-    attrs = {"units": layer.unit, "long_name": layer.long_name}
-    if layer.standard_name:
-        attrs["standard_name"] = layer.standard_name
+    attrs = attributes(layer)
     if layer.name.endswith("_months"):
         return xr.DataArray(values, {"month": list(layer.bands)}, ("month", "y", "x"), attrs=attrs)
     if "clock" in layer.tags:

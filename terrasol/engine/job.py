@@ -37,15 +37,10 @@ from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame, make_frame
 from terrasol.ground.horizon import BLOCK, NODE_STEP
 from terrasol.light.indexed import MappedTables, even_indices
-from terrasol.light.irradiation import (
-    MIXED_BYTES,
-    LightSettings,
-    SkyTables,
-    Surroundings,
-    check_azimuths,
-    check_refraction,
-    table_bytes,
-)
+from terrasol.light.latitudes import MIXED_BYTES
+from terrasol.light.settings import LightSettings, check_azimuths, check_refraction
+from terrasol.light.surroundings import Surroundings
+from terrasol.light.tables import SkyTables, table_bytes
 from terrasol.sky.suntable import height_knots, latitude_knots
 
 SECONDS_A_CELL_AND_AZIMUTH = 40e-9

@@ -7,7 +7,7 @@ from typing import Protocol
 import numpy as np
 
 from terrasol.files.layers import Layer
-from terrasol.light.irradiation import UNITS, LightSettings
+from terrasol.light.settings import UNITS, LightSettings
 from terrasol.sky.cloud import MonthlySky
 from terrasol.sky.period import Period
 

@@ -44,7 +44,6 @@ from terrasol.ground.horizon import (
 )
 from terrasol.kernels.moment import encode_horizon
 from terrasol.kernels.rounding import tally
-from terrasol.light.irradiation import Surroundings
 from terrasol.light.series import (
     UNIT_OF_STEP,
     Around,
@@ -57,6 +56,7 @@ from terrasol.light.series import (
     step_months,
     suns_at_greenwich,
 )
+from terrasol.light.surroundings import Surroundings
 from terrasol.sky.clear import Air
 from terrasol.sky.sun import SunPath
 from terrasol.sky.suntable import height_knots

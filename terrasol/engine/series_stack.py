@@ -13,6 +13,7 @@ import xarray as xr
 
 import terrasol
 from terrasol.constants import REFRACTION_COEFFICIENT
+from terrasol.engine.datasets import clear_air, scene_of
 from terrasol.engine.job import Summary
 from terrasol.engine.plan import Progress
 from terrasol.engine.series import SeriesPlan, is_clear, plan_series
@@ -21,10 +22,9 @@ from terrasol.files.delivery import check_space
 from terrasol.files.horizons import default_folder
 from terrasol.files.stacks import StackWriter, check_stack_free, open_stack
 from terrasol.ground.elevation import Elevation
-from terrasol.ground.frame import make_frame
-from terrasol.light.irradiation import twelve
 from terrasol.light.series import SUBSTEP_SECONDS, SeriesSettings
-from terrasol.sky.clear import Air, linke_climatology
+from terrasol.light.settings import twelve
+from terrasol.sky.clear import Air
 from terrasol.sky.irradiance import Sky
 from terrasol.sky.period import Period, parse_period
 
@@ -51,7 +51,8 @@ def stack_attributes(plan: SeriesPlan, record: Mapping[str, Any]) -> dict[str, s
     now = datetime.now(UTC).strftime("%Y-%m-%dT%H:%M:%SZ")
     every = "Hourly" if settings.step == "1h" else "Daily"
     sky = "Clear-sky model, no clouds: potential values." if is_clear(settings) else "Measured sky."
-    comment = f"{sky} Nothing beyond the elevation model hides the sun."
+    reach = "Nothing beyond the elevation model" if plan.scene.far is None else "Far ground too"
+    comment = f"{sky} {reach} hides the sun."
     if settings.period.typical:
         comment += f" A typical year, with the sun of {settings.period.start.astype('M8[Y]')}."
     return {
@@ -140,6 +141,8 @@ def irradiation_series(
     basis: str = "slope",
     substep_seconds: float = SUBSTEP_SECONDS,
     refraction: float = REFRACTION_COEFFICIENT,
+    far: Elevation | None = None,
+    surface: Elevation | None = None,
     horizon_store: str | PathLike[str] | bool = True,
     compression: str = "zstd",
     overwrite: bool = False,
@@ -175,6 +178,10 @@ def irradiation_series(
         Spacing of the moments that make a step; divides an hour.
     refraction : float
         Coefficient k of terrestrial refraction.
+    far : Elevation, optional
+        A larger, coarser model in any CRS: its ridges beyond the edge and in voids count too.
+    surface : Elevation, optional
+        A surface model: trees and buildings hide the sun, slope stays that of the ground.
     horizon_store : path or bool
         Folder in which horizons are kept and found again by the ground they belong to; True
         for the user's cache folder, False to keep none.
@@ -204,11 +211,11 @@ def irradiation_series(
     ----------
     docs/method.md has every formula.
     """
+    scene = scene_of(elevation, far, surface)
     if not isinstance(period, Period):
         period = parse_period(period)
     if sky is None:
-        frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
-        sky = Air.ineichen(linke_climatology(*frame.centre))
+        sky = clear_air(elevation)
     settings = SeriesSettings(
         period,
         sky,
@@ -226,7 +233,7 @@ def irradiation_series(
     else:
         store = Path(horizon_store)
     write_series(
-        plan_series(elevation, settings),
+        plan_series(elevation, settings, scene),
         path,
         series_record(settings),
         store=store,
@@ -239,10 +246,10 @@ def irradiation_series(
 
 def series_record(settings: SeriesSettings) -> dict[str, Any]:
     """Settings as plain text and numbers."""
-    period = settings.period
+    sky = settings.sky
     return {
-        "period": {"label": period.label, "start": str(period.start), "end": str(period.end)},
-        "sky": _sky_record(settings.sky),
+        "period": settings.period.record(),
+        "sky": sky.record() if isinstance(sky, Air) else type(sky).__name__,
         "step": settings.step,
         "quantities": list(settings.quantities),
         "albedo": list(settings.albedo) if settings.albedo_station is None else "as measured",
@@ -252,11 +259,3 @@ def series_record(settings: SeriesSettings) -> dict[str, Any]:
         "substep_seconds": settings.substep_seconds,
         "refraction": settings.refraction,
     }
-
-
-def _sky_record(sky: Sky) -> Any:
-    if not isinstance(sky, Air):
-        return type(sky).__name__
-    if sky.model == "ineichen":
-        return {"model": sky.model, "solar_constant": sky.solar_constant, "linke": sky.linke}
-    return {key: value for key, value in vars(sky).items() if key != "linke"}

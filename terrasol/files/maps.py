@@ -10,7 +10,7 @@ import rasterio
 from numpy.typing import NDArray
 from rasterio.errors import NotGeoreferencedWarning, RasterioError
 from rasterio.transform import Affine
-from rasterio.warp import Resampling, reproject
+from rasterio.warp import Resampling, reproject, transform
 
 from terrasol.errors import InputError
 from terrasol.files.rasters import naming
@@ -90,8 +90,12 @@ def _warped(path: str | PathLike[str], elevation: Elevation) -> NDArray[np.float
 
 
 def _finer(source: rasterio.DatasetReader, elevation: Elevation) -> bool:
-    """Whether the map's cells are smaller than the model's, where both have one unit."""
-    if source.crs.is_geographic != elevation.crs.is_geographic:
-        return False
-    own = abs(np.linalg.det(np.reshape(elevation.transform, (2, 3))[:, :2]))
-    return abs(source.transform.determinant) < own
+    """Whether the map's cells cover less ground than the model's, at the model's middle."""
+    rows, columns = elevation.shape
+    target = Affine(*elevation.transform)
+    corners = [target @ (columns / 2 + i, rows / 2 + j) for i, j in ((0, 0), (1, 0), (0, 1))]
+    x, y = transform(elevation.crs.to_wkt(), source.crs, *zip(*corners, strict=True))
+    inverse = ~source.transform
+    (c0, r0), (c1, r1), (c2, r2) = (inverse @ place for place in zip(x, y, strict=True))
+    covered = abs((c1 - c0) * (r2 - r0) - (c2 - c0) * (r1 - r0))  # in the map's cells
+    return covered > 1.0

@@ -203,8 +203,11 @@ def even_grid(moments: Moments, label: str, interval: int | float | str | None, 
     if interval is None:
         lengths, counts = np.unique(steps, return_counts=True)
         seconds = int(lengths[np.argmax(counts)])
-        share = f"{counts.max()} of {steps.size}"
-        notes.append(f"interval {seconds} s, the most common step ({share})")
+        if 2 * counts.max() <= steps.size:
+            notes.append(
+                f"the interval is taken as {seconds} s, the most common step, but only"
+                f" {counts.max()} of {steps.size} are so long: state it"
+            )
     else:
         seconds = interval_seconds(interval)
     if seconds > 86400:

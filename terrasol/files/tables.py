@@ -48,7 +48,7 @@ def read_station(
         or NetCDF with a time coordinate.
     settings : path or mapping, optional
         What the columns are: a TOML file, or the same as a mapping. By default
-        ``<path>.toml``, if there is one. The keys are in docs/parts/station.md.
+        ``<path>.toml``, if there is one. The keys are in docs/station.md.
     **overrides
         Single keys that win over the TOML file: ``latitude=45.3``, ``zone="UTC"``,
         ``label="end"``, ``columns={"global": {"column": 5, "unit": "W/m2"}}``.
@@ -57,7 +57,7 @@ def read_station(
     -------
     Station
         In UTC, by the beginning of each interval, in terrasol's units; NaN where a value or
-        a row is missing. `Station.notes` say what was inferred.
+        a row is missing. `Station.notes` say what a careful reader should know.
 
     Raises
     ------
@@ -110,15 +110,16 @@ def _station(
         float(place[key] if key in place else said.needed("place", key, example))
         for key, example in (("latitude", "45.3"), ("longitude", "5.77"), ("height", "1325.0"))
     )
+    name = str(place.get("name", _stem(path)))
     station = Station(
-        name=str(place.get("name", _stem(path))),
+        name=name,
         latitude=latitude,
         longitude=longitude,
         height=height,
         start=grid.start,
         seconds=grid.seconds,
         values=values,
-        notes=grid.notes,
+        notes=tuple(f"{name}: {note}" for note in grid.notes),
     )
     if said.file.get("check_units", True):
         for quantity in values:

@@ -17,7 +17,8 @@ from terrasol.constants import SOLAR_RADIUS_DEG
 from terrasol.errors import SettingError
 from terrasol.ground.horizon import azimuth_directions
 from terrasol.kernels.sunshine import walk_days
-from terrasol.light.irradiation import LATITUDE_GRAIN, Strip
+from terrasol.light.irradiation import Strip
+from terrasol.light.latitudes import LATITUDE_GRAIN
 from terrasol.sky.period import Period, parse_period
 from terrasol.sky.sun import (
     HORIZON_REFRACTION,

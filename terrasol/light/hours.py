@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import threading
 from dataclasses import dataclass, field
 from datetime import date
 from typing import Final
@@ -14,22 +13,17 @@ from terrasol.constants import REFRACTION_COEFFICIENT, SOLAR_RADIUS_DEG
 from terrasol.ground.horizon import azimuth_directions
 from terrasol.kernels.sunshine import LANES, fill_time, sum_time
 from terrasol.light.days import UPPER_LIMB, Clock, tilt
-from terrasol.light.irradiation import (
-    LATITUDE_GRAIN,
-    MIXED_BYTES,
-    Strip,
-    check_azimuths,
-    check_refraction,
-)
+from terrasol.light.irradiation import Strip
+from terrasol.light.latitudes import LatitudeTables
+from terrasol.light.settings import check_azimuths, check_refraction
 from terrasol.sky.irradiance import Sky
 from terrasol.sky.period import Period
 from terrasol.sky.sun import (
     SunPath,
     steps_per_day,
-    sun_path,
     sun_series,
 )
-from terrasol.sky.suntable import HORIZON_KNOTS, height_knots, latitude_knots
+from terrasol.sky.suntable import HORIZON_KNOTS
 
 BRIGHT_BEAM: Final = 120.0
 """Beam facing the sun, W/m2, above which sunshine is counted: WMO-No. 8, Guide to Instruments
@@ -177,43 +171,10 @@ class Mixed:
     northward: NDArray[np.float32]
 
 
-@dataclass
-class TimeTables:
-    """Tables of hours at the latitude and height knots that a raster needs.
-
-    Parameters
-    ----------
-    settings : HoursSettings
-        Which hours.
-    path : SunPath
-        The period's sun.
-    latitudes : ndarray
-        Knots fixed to the globe [degrees].
-    heights : ndarray
-        Knots fixed above the sea [m].
-    tables : dict of Mixed
-        By index of the latitude; filled by `fill`.
-    """
+class TimeTables(LatitudeTables[Mixed, Mixed]):
+    """Tables of hours at the latitude and height knots that a raster needs."""
 
     settings: HoursSettings
-    path: SunPath
-    latitudes: NDArray[np.float64]
-    heights: NDArray[np.float64]
-    tables: dict[int, Mixed] = field(default_factory=dict)
-    _mixed: dict[int, Mixed] = field(default_factory=dict)
-    _lock: threading.Lock = field(default_factory=threading.Lock)
-
-    @classmethod
-    def over(
-        cls,
-        settings: HoursSettings,
-        longitude: float,
-        latitudes: tuple[float, float],
-        heights: tuple[float, float],
-    ) -> TimeTables:
-        """Choose the knots for a range of latitudes [degrees] and heights [m]."""
-        path = sun_path(settings.period, longitude, settings.step_seconds)
-        return cls(settings, path, latitude_knots(*latitudes), height_knots(*heights))
 
     def fill(self, index: int) -> None:
         """Compute the table of one latitude knot."""
@@ -223,29 +184,16 @@ class TimeTables:
         level = np.zeros(self.settings.lanes, np.float32)
         self.tables[index] = Mixed(table, np.minimum(lit, HORIZON_KNOTS - 1), latitude, level)
 
-    def at(self, latitude: float) -> Mixed:
-        """The table for a latitude rounded to LATITUDE_GRAIN."""
-        grain = round(latitude / LATITUDE_GRAIN)
-        with self._lock:
-            found = self._mixed.pop(grain, None)
-            if found is None:
-                found = self.exactly(grain * LATITUDE_GRAIN)
-                while len(self._mixed) > MIXED_BYTES / found.table.nbytes:
-                    self._mixed.pop(next(iter(self._mixed)))
-            self._mixed[grain] = found  # last, so that the one unused longest goes first
-            return found
-
-    def exactly(self, latitude: float) -> Mixed:
-        """The table for a latitude [degrees], linear between two knots."""
-        south = int(np.searchsorted(self.latitudes, latitude)) - 1
-        south = min(max(south, 0), self.latitudes.size - 2)
+    def between(self, south: int, latitude: float) -> tuple[Mixed, int]:
+        """Mix the tables of two knots."""
         below, above = self.tables[south], self.tables[south + 1]
         share = (latitude - below.latitude) / (above.latitude - below.latitude)
         table = above.table - below.table
         table *= np.float32(share)
         table += below.table
         northward = _northward(table, below, above)
-        return Mixed(table, np.maximum(below.dark, above.dark), latitude, northward)
+        dark = np.maximum(below.dark, above.dark)
+        return Mixed(table, dark, latitude, northward), table.nbytes
 
     def level(self, latitude: float, height: float) -> NDArray[np.float64]:
         """Hours on open level ground, shape (2, months): of sun, of bright sun."""

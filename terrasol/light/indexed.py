@@ -14,15 +14,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from terrasol.errors import InputError
-from terrasol.light.irradiation import (
-    Light,
-    LightSettings,
-    SkyTables,
-    Strip,
-    Surroundings,
-    sky_light,
-    strip_light,
-)
+from terrasol.light.irradiation import Light, Strip, sky_light, strip_light
+from terrasol.light.settings import LightSettings
+from terrasol.light.surroundings import Surroundings
+from terrasol.light.tables import SkyTables
 from terrasol.sky.cloud import LEAST_INDEX, MOST_INDEX, MonthlySky
 
 INDEX_STEP: Final = 0.1

@@ -11,13 +11,9 @@ from numpy.typing import NDArray
 from terrasol.constants import REFRACTION_COEFFICIENT, SOLAR_RADIUS_DEG
 from terrasol.errors import InputError, SettingError
 from terrasol.kernels.moment import FULL, decode_horizon, direct_light, parts_of_steps
-from terrasol.light.irradiation import (
-    BASES,
-    Strip,
-    Surroundings,
-    check_azimuths,
-    check_refraction,
-)
+from terrasol.light.irradiation import Strip
+from terrasol.light.settings import BASES, check_azimuths, check_refraction
+from terrasol.light.surroundings import Surroundings
 from terrasol.sky.cloud import CloudedSky, MonthlySky
 from terrasol.sky.diffuse import MODELS, DiffuseSplit, split_diffuse
 from terrasol.sky.irradiance import Sky

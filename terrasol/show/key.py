@@ -4,8 +4,9 @@ from __future__ import annotations
 
 import math
 import re
-from collections.abc import Collection, Mapping, Sequence
+from collections.abc import Callable, Collection, Mapping, Sequence
 from dataclasses import dataclass
+from functools import partial
 
 import matplotlib
 import numpy as np
@@ -286,7 +287,14 @@ def draw_north(page: Page, x: float, y: float, azimuth: float) -> float:
 
 
 def draw_legend(
-    page: Page, x: float, y: float, *, relief: bool, step: float | None, void: bool
+    page: Page,
+    x: float,
+    y: float,
+    *,
+    relief: bool,
+    step: float | None,
+    void: bool,
+    colour_map: str = COLOUR_MAP,
 ) -> None:
     """Name what the map shows beside colours, about the height y.
 
@@ -296,8 +304,12 @@ def draw_legend(
         Whether the map has any.
     step : float or None
         Distance between contour lines [m]; None without any.
+    colour_map : str
+        Of the map.
     """
-    entries = [(_relief_swatch, "relief lightly shaded")] if relief else []
+    entries: list[tuple[Callable[..., None], str]] = []
+    if relief:
+        entries.append((partial(_relief_swatch, colour_map), "relief lightly shaded"))
     if step is not None:
         entries.append((_contour_swatch, f"contours every {step:.6g} m"))
     if void:
@@ -310,9 +322,9 @@ def draw_legend(
         x += 44 + max(text_width(text, SMALL) for _, text in column) + 36
 
 
-def _relief_swatch(page, x, y) -> None:
+def _relief_swatch(colour_map, page, x, y) -> None:
     light = np.repeat(np.linspace(RELIEF, -RELIEF, 34)[None, :, None], 18, axis=0)
-    page.image(x, y - 9, Scale(0.0, 1.0).colours(np.array([0.5])) + light)
+    page.image(x, y - 9, Scale(0.0, 1.0, colour_map=colour_map).colours(np.array([0.5])) + light)
 
 
 def _contour_swatch(page, x, y) -> None:

@@ -190,4 +190,7 @@ def _draw_map(page, picture, elevation, values, scale) -> None:
     x = key.draw_scale_bar(page, left + 6, y, picture.metres_per_pixel)
     x = key.draw_north(page, x + 56, y - 2, -picture.up)
     relief = bool(np.any(np.abs(brightness[picture.ground] - 0.5) > 0.01))
-    key.draw_legend(page, x + 36, y, relief=relief, step=step, void=bool(void.any()))
+    key.draw_legend(
+        page, x + 36, y, relief=relief, step=step, void=bool(void.any()),
+        colour_map=scale.colour_map,
+    )  # fmt: skip

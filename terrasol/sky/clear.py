@@ -2,7 +2,7 @@
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Final, Literal
+from typing import Any, Final, Literal
 
 import numpy as np
 import pandas as pd
@@ -89,6 +89,13 @@ class Air:
         """Light of the cloudless sky at a height [m]; see `clear_sky`."""
         return clear_sky(sun, self, height)
 
+    def record(self) -> dict[str, Any]:
+        """The model and what it reads, as plain text and numbers, ready for JSON."""
+        told: dict[str, Any] = {"model": self.model, "solar_constant": self.solar_constant}
+        if self.linke is not None:
+            return told | {"linke": self.linke[0] if len(set(self.linke)) == 1 else self.linke}
+        return {name: value for name, value in vars(self).items() if name != "linke"} | told
+
     @classmethod
     def ineichen(
         cls, linke: float | Sequence[float], solar_constant: float = SOLAR_CONSTANT
@@ -157,6 +164,15 @@ def linke_climatology(latitude: float, longitude: float) -> tuple[float, ...]:
     The worldwide grid of 5 minutes of arc that pvlib carries: Remund, Wald, Lefevre,
     Ranchin and Page (2003), Worldwide Linke turbidity information, Proc. ISES Solar
     World Congress, Goteborg; made by Meteotest and Mines ParisTech for SoDa.
+
+    Parameters
+    ----------
+    latitude, longitude : float
+        Degrees north, degrees east.
+
+    Returns
+    -------
+    tuple of 12 floats
 
     Raises
     ------

@@ -13,10 +13,10 @@ from terrasol.sky.clear import Air
 from terrasol.sky.cloud import CloudedSky, clouded_sky
 from terrasol.sky.gaps import LONGEST_HOURS, Gap, fill_gaps
 from terrasol.sky.period import Period, parse_period
-from terrasol.sky.quality import check_quality, usable
+from terrasol.sky.quality import LIGHT, check_quality, usable
 from terrasol.sky.station import Station
 from terrasol.sky.sun import sun_path, sun_series
-from terrasol.sky.timing import check_times
+from terrasol.sky.timing import Timing, check_times
 
 TRUSTED: Final = ("consistent", "unknown")
 """Verdicts on the clock that call for no warning."""
@@ -96,29 +96,54 @@ def measured_sky(
     _refuse_gaps(filled.station, filled.gaps, period)
     sky = clouded_sky(filled.station, air, period, decomposition, step_seconds)
     timing = check_times(station, air, horizon)
-    warnings = list(station.notes)
-    impossible = sum(counts["impossible"] for counts in changed.values())
-    if impossible:
-        warnings.append(f"{station.name}: {impossible} values that cannot be true count as missing")
-    if any(filled.count.values()):
-        told = ", ".join(f"{count} of {name}" for name, count in filled.count.items() if count)
-        warnings.append(f"{station.name}: filled by clear-sky index: {told}")
-    if timing.verdict not in TRUSTED:
-        warnings.append(f"{station.name}: {timing.words}; nothing was changed")
     report = {
         "name": station.name,
         "latitude": station.latitude,
         "longitude": station.longitude,
         "height_m": station.height,
         "interval_seconds": station.seconds,
-        "decomposition": None if len(_light(station)) > 1 else decomposition,
+        "decomposition": decomposition if set(LIGHT) & set(station.values) == {"global"} else None,
         "quality": quality.summary(),
         "filled": filled.count,
         "gaps": [str(gap) for gap in filled.gaps],
         "clock": {"verdict": timing.verdict, "words": timing.words},
         "light_without_sun_mj_m2": round(sky.left_out, 3),
     }
-    return MeasuredSky(sky, filled.station, period, report, tuple(warnings))
+    doubts = series_doubts(station, changed, filled.count, timing)
+    return MeasuredSky(sky, filled.station, period, report, doubts)
+
+
+def series_doubts(
+    station: Station,
+    changed: dict[str, dict[str, int]],
+    filled: dict[str, int],
+    timing: Timing,
+) -> tuple[str, ...]:
+    """Warnings on a series, each with the station's name.
+
+    Parameters
+    ----------
+    station : Station
+        As read.
+    changed : dict of dict of int
+        What `usable` changed, by quantity; light alone is told of.
+    filled : dict of int
+        Intervals filled, by quantity.
+    timing : Timing
+        What its clear days say of its clock.
+    """
+    doubts = [*station.notes]
+    impossible = {name: changed[name]["impossible"] for name in LIGHT if name in changed}
+    for counts, words in (
+        (impossible, "cannot be true and count as missing"),
+        (filled, "filled by clear-sky index"),
+    ):
+        if any(counts.values()):
+            told = ", ".join(f"{count} of {name}" for name, count in counts.items() if count)
+            doubts.append(f"{station.name}: {words}: {told}")
+    if timing.verdict not in TRUSTED:
+        doubts.append(f"{timing.words}; nothing was changed")
+    return tuple(doubts)
 
 
 def monthly_albedo(station: Station, period: Period) -> tuple[float, ...]:
@@ -144,7 +169,7 @@ def monthly_albedo(station: Station, period: Period) -> tuple[float, ...]:
     for name in ("albedo", "global"):
         if name not in station.values:
             raise InputError(f"{station.name}: no {name} was measured, so it has no albedo to give")
-    local = station.start + np.timedelta64(round(station.longitude * 240.0), "s")
+    local = station.start + station.solar_offset
     inside = (local >= period.start) & (local < period.end)
     albedo, weight = station.values["albedo"], station.values["global"]
     inside &= np.isfinite(albedo) & (weight > 0.0)
@@ -162,10 +187,6 @@ def monthly_albedo(station: Station, period: Period) -> tuple[float, ...]:
     return tuple(float(min(max(value, 0.0), 1.0)) for value in found)
 
 
-def _light(station: Station) -> list[str]:
-    return [name for name in ("global", "beam", "diffuse") if name in station.values]
-
-
 def covered_days(station: Station, step_seconds: float = 60.0) -> Period:
     """All days of local mean solar time whose sun a series covers, first to last.
 
@@ -174,30 +195,28 @@ def covered_days(station: Station, step_seconds: float = 60.0) -> Period:
     InputError
         There is none.
     """
-    shift = np.timedelta64(round(station.longitude * 240.0), "s")
-    end = station.start[-1] + np.timedelta64(station.seconds, "s")
-    days = [(moment + shift).astype("M8[D]") for moment in (station.start[0], end)]
+    ends = station.start[0], station.end
+    days = [(moment + station.solar_offset).astype("M8[D]") for moment in ends]
     one = np.timedelta64(1, "D")
     for place, step in ((0, one), (1, -one)):
-        if days[0] <= days[1] and not _covered(station, days[place], end, step_seconds):
+        if days[0] <= days[1] and not _covered(station, days[place], step_seconds):
             days[place] = days[place] + step
     if days[0] > days[1]:
         raise InputError(f"{station.name}: the series covers no whole day")
     return parse_period(f"{days[0]}/{days[1]}")
 
 
-def _covered(station: Station, day: np.datetime64, end: np.datetime64, step_seconds: float) -> bool:
+def _covered(station: Station, day: np.datetime64, step_seconds: float) -> bool:
     """Whether all of a day's sun lies within the series."""
     path = sun_path(parse_period(str(day)), station.longitude, step_seconds)
     sun = sun_series(path, station.latitude, station.height)
     lit = sun.time[sun.elevation > 0.0]
-    return bool(((lit >= station.start[0]) & (lit < end)).all())
+    return bool(((lit >= station.start[0]) & (lit < station.end)).all())
 
 
 def _refuse_gaps(station: Station, gaps: tuple[Gap, ...], period: Period) -> None:
     """Raise InputError for gaps with sun within a period."""
-    shift = np.timedelta64(round(station.longitude * 240.0), "s")
-    first, last = period.start - shift, period.end - shift
+    first, last = (moment - station.solar_offset for moment in (period.start, period.end))
     missing = [g for g in gaps if g.sun_hours > 0.0 and g.end > first and g.start < last]
     if missing:
         named = "; ".join(str(gap) for gap in missing[:NAMED])

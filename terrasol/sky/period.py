@@ -68,6 +68,15 @@ class Period:
         days = np.arange(self.start, self.end, np.timedelta64(1, "D")).astype("M8[M]")
         return tuple(int(count) for count in np.unique(days, return_counts=True)[1])
 
+    def record(self) -> dict[str, str]:
+        """As plain text, ready for JSON."""
+        return {
+            "label": self.label,
+            "start": str(self.start),
+            "end": str(self.end),
+            "clock": "local mean solar time",
+        }
+
 
 def parse_period(text: str | int | None) -> Period:
     """Read a period as a person writes it.

@@ -118,10 +118,6 @@ class Quality:
     night_offset: dict[str, float]
     worst: dict[str, dict[str, list[tuple[str, float]]]]
 
-    def flagged(self, station: Station) -> Station:
-        """The station, with these flags on it."""
-        return replace(station, flags=self.flags)
-
     def summary(self) -> dict[str, Any]:
         """Counts and shares of each flag, offsets and worst moments, as plain numbers and text.
 

@@ -43,7 +43,7 @@ class Station:
     flags : dict of ndarray of uint16, shape (n,)
         Bits that the quality check set, by quantity (see `terrasol.sky.quality`).
     notes : tuple of str
-        What was taken for granted or found on reading, for people.
+        What a careful reader should know of how it was read, each with the station's name.
 
     Raises
     ------
@@ -73,6 +73,16 @@ class Station:
                 raise InputError(
                     f"{self.name}: {values.size} values of {name} for {self.start.size} times"
                 )
+
+    @property
+    def end(self) -> np.datetime64:
+        """End of the last interval, UTC."""
+        return np.datetime64(self.start[-1].astype("M8[s]") + np.timedelta64(self.seconds, "s"))
+
+    @property
+    def solar_offset(self) -> np.timedelta64:
+        """Local mean solar time less UTC, to the second."""
+        return np.timedelta64(round(self.longitude * 240.0), "s")
 
     @property
     def middle(self) -> NDArray[np.datetime64]:

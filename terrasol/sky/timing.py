@@ -60,7 +60,7 @@ LEAST_DAYS: Final = 5
 
 TOLERANCE: Final = 8.0
 """Minutes within which a shift agrees with an explanation: a clear day's haze or an unseen
-hill on one side shifts it by some minutes (judgement; `docs/parts/station.md` has measurements)."""
+hill on one side shifts it by some minutes (judgement; `docs/validation.md` has measurements)."""
 
 LEAST_TOLERANCE: Final = 3.0
 """The same where intervals are short, of which a quarter counts."""
@@ -224,8 +224,7 @@ class _Search:
     def __init__(self, station: Station, sky: Sky, horizon: ArrayLike | None) -> None:
         self.station = station
         margin = np.timedelta64(int((COARSE_REACH + FINE_REACH) * 60.0), "s")
-        last = station.start[-1] + np.timedelta64(station.seconds, "s")
-        self.minutes = SunMinutes.over(station, station.start[0] - margin, last + margin)
+        self.minutes = SunMinutes.over(station, station.start[0] - margin, station.end + margin)
         sun = self.minutes.sun
         light = sky.over(sun, station.height)
         mu = cosine(sun)

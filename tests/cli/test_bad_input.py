@@ -268,7 +268,7 @@ def test_disk_full_on_the_way(tmp_path, dem, refused, monkeypatch, place):
 
     with monkeypatch.context() as patch:
         patch.setattr(place, full)
-        patch.setattr("terrasol.cli.run._announce_compilation", lambda quiet: None)
+        patch.setattr("terrasol.cli.run.announce_compilation", lambda quiet: None)
         refused(OUTPUT, "No space left", "terrain", dem, tmp_path / "new" / "out", "--azimuths", 8)
 
 

@@ -14,7 +14,6 @@ from terrasol.cli.compare import COLUMNS
 from terrasol.cli.main import main
 from terrasol.engine.comparison import spot_at
 from terrasol.files.rasters import read_elevation
-from terrasol.ground.frame import make_frame
 
 CRS = "+proj=tmerc +lat_0=46 +lon_0=9 +k=1 +datum=WGS84 +units=m"
 QUICK = ["--azimuths", "64", "--linke", "3"]
@@ -57,8 +56,7 @@ def dem(tmp_path_factory):
 def measured(dem, tmp_path_factory):
     """A series that the model itself made, with its settings beside it."""
     elevation = read_elevation(dem)
-    frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
-    spot = spot_at(elevation, frame, *PLACE, azimuths=64)
+    spot = spot_at(elevation, *PLACE, azimuths=64)
     folder = tmp_path_factory.mktemp("measured")
     path = write_table(folder / "valley.csv", made_series(spot, cloudy=(3, 9)))
     state(folder / "valley.csv.toml")

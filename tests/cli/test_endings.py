@@ -15,7 +15,7 @@ from terrasol.errors import UnfinishedError
 def broken_engine(tmp_path, monkeypatch, capfd):
     """Run `terrain` with an engine that does as told; return exit code and stderr."""
     dem = write_raster(tmp_path / "dem.tif", unit="m")
-    monkeypatch.setattr("terrasol.cli.run._announce_compilation", lambda quiet: None)
+    monkeypatch.setattr("terrasol.cli.run.announce_compilation", lambda quiet: None)
 
     def run(sweep):
         monkeypatch.setattr("terrasol.engine.ground_work.sweep", sweep)

@@ -52,7 +52,7 @@ def test_a_run_and_its_second(dem, tmp_path, store, ending, capsys):
         assert list(data.data_vars) == ["global", "net"]
         record = json.loads(data.attrs["terrasol_record"])
         assert record["input"]["sha256"] == sha256(dem)
-        assert record["settings"]["sky"]["linke"] == [3.0] * 12
+        assert record["settings"]["sky"]["linke"] == 3.0
         found = data["global"].values
     again = ["series", str(dem), str(out), *more, "--overwrite", "--json"]
     assert main(again) == 0

@@ -14,7 +14,7 @@ from terrasol.engine.job import plan_irradiation, plan_terrain
 from terrasol.ground.beyond import far_ground, make_scene
 from terrasol.ground.frame import make_frame
 from terrasol.ground.places import Locator
-from terrasol.light.irradiation import LightSettings
+from terrasol.light.settings import LightSettings
 from terrasol.sky.clear import Air
 from terrasol.sky.period import parse_period
 

@@ -12,7 +12,7 @@ import terrasol
 from terrasol.engine import ground_work
 from terrasol.engine.datasets import ArraySink
 from terrasol.engine.hours import plan_hours
-from terrasol.light import days, hours
+from terrasol.light import days, latitudes
 from terrasol.light.days import parse_clock
 from terrasol.light.hours import HoursSettings
 
@@ -166,8 +166,8 @@ def test_strips_leave_no_steps(metric_ground, monkeypatch, latitude, day):
     asked = {"days": f"{day}-21", "azimuths": 16}
     found = terrasol.sun_hours(ground, day, AIR, **asked)
     monkeypatch.setattr(ground_work, "STRIP_ROWS", 1)
-    monkeypatch.setattr(hours, "MIXED_BYTES", 1e6)
-    for module in (hours, days):
+    monkeypatch.setattr(latitudes, "MIXED_BYTES", 1e6)
+    for module in (latitudes, days):
         monkeypatch.setattr(module, "LATITUDE_GRAIN", 1e-7)
     want = terrasol.sun_hours(ground, day, AIR, **asked)
     for name in ("sun_hours_period", "bright_hours_period"):

@@ -13,7 +13,8 @@ from terrasol.engine.job import Plan, plan_irradiation, plan_terrain
 from terrasol.engine.totals import Totals
 from terrasol.errors import InputError, SettingError
 from terrasol.files.layers import Layer
-from terrasol.light.irradiation import LightSettings, Surroundings
+from terrasol.light.settings import LightSettings
+from terrasol.light.surroundings import Surroundings
 from terrasol.sky.period import parse_period
 
 AIR = terrasol.Air.ineichen(3.0)

@@ -12,7 +12,8 @@ import terrasol
 from terrasol.engine import ground_work
 from terrasol.engine.datasets import ArraySink
 from terrasol.engine.job import plan_irradiation
-from terrasol.light import irradiation as light
+from terrasol.light import latitudes
+from terrasol.light.settings import LightSettings
 
 QUICK = {"azimuths": 16, "step_seconds": 600.0, "monthly_parts": True}
 
@@ -26,9 +27,7 @@ def rough_ground(metric_ground, cell, latitude):
 
 def months(elevation):
     """Global irradiation, shape (months, y, x)."""
-    settings = light.LightSettings(
-        terrasol.parse_period("2025"), terrasol.Air.ineichen(3.0), **QUICK
-    )
+    settings = LightSettings(terrasol.parse_period("2025"), terrasol.Air.ineichen(3.0), **QUICK)
     sink = ArraySink(elevation.shape)
     plan_irradiation(elevation, settings).run(sink, 2)
     return sink.arrays["irradiation_months"].astype(np.float64)
@@ -45,8 +44,8 @@ def test_months_as_with_a_table_for_each_row(
     elevation = rough_ground(metric_ground, cell, latitude)
     found = months(elevation)
     monkeypatch.setattr(ground_work, "STRIP_ROWS", 1)
-    monkeypatch.setattr(light, "LATITUDE_GRAIN", 1e-7)
-    monkeypatch.setattr(light, "MIXED_BYTES", 1e6)
+    monkeypatch.setattr(latitudes, "LATITUDE_GRAIN", 1e-7)
+    monkeypatch.setattr(latitudes, "MIXED_BYTES", 1e6)
     want = months(elevation)
     mean = want.mean(axis=(1, 2))
     error = np.abs(found - want)

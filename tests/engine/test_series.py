@@ -359,6 +359,30 @@ def test_kept_horizons_of_a_dataset(ground, tmp_path, sweeps):
     assert len(sweeps) == 8
 
 
+def test_surface_and_far_model_of_a_dataset(ground, tmp_path):
+    trees = ground.heights + np.where(np.indices(ground.shape)[1] % 7 == 3, 60.0, 0.0)
+    wooded = terrasol.Elevation.from_array(trees, ground.transform, ground.crs)
+    a, _, c, _, e, f = ground.transform
+    far = terrasol.Elevation.from_array(
+        np.pad(ground.heights, 40, "minimum"), (a, 0, c - 40 * a, 0, e, f - 40 * e), ground.crs
+    )
+    means, comments = [], []
+    for name, around in (("a.nc", {}), ("b.nc", {"surface": wooded}), ("c.nc", {"far": far})):
+        data = terrasol.irradiation_series(
+            ground, tmp_path / name, "2025-10-01", AIR, azimuths=8, step="1d", quantities=("beam",),
+            horizon_store=False, **around,
+        )  # fmt: skip
+        with data:
+            means.append(float(data["beam"].mean()))
+            comments.append(data.attrs["comment"])
+    assert means[1] < 0.98 * means[0]
+    assert means[2] == pytest.approx(means[0], rel=1e-3)
+    assert "Nothing beyond" in comments[0]
+    assert "Far ground too" in comments[2]
+    with pytest.raises(terrasol.InputError, match="read_elevation"):
+        terrasol.irradiation_series("dem.tif", tmp_path / "d.nc", "2025-10-01")
+
+
 def test_estimates_are_positive_and_grow(ground):
     small, large = (
         plan_series(ground, SeriesSettings(terrasol.parse_period(p), AIR))

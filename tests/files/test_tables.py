@@ -168,8 +168,21 @@ def test_missing_rows_and_values_are_nan_and_told(tmp_path, station):
     columns = {"global": {"column": "global", "unit": "W/m2", "missing": [-99]}}
     read = read_station(path, **SAID, columns=columns)
     assert set(np.flatnonzero(np.isnan(read.values["global"]))) == {5, 60, 100, 101}
-    assert any("2 of 720 intervals have no row" in note for note in read.notes)
-    assert any("interval 3600 s" in note for note in read.notes)
+    assert read.notes == ("a.csv: 2 of 720 intervals have no row: missing",)
+
+
+def test_a_doubtful_interval_is_told_and_a_clear_one_is_not(tmp_path, station):
+    columns = {"global": {"column": "global", "unit": "W/m2"}}
+    path = write_table(tmp_path / "a.csv", station)
+    assert read_station(path, **SAID, columns=columns).notes == ()
+    # of six rows three are there: steps of one hour, of two and of three by turns
+    gone = [row for row in range(720) if row % 6 in (2, 4, 5)]
+    path = write_table(tmp_path / "b.csv", station, skip_rows=gone)
+    notes = read_station(path, **SAID, columns=columns).notes
+    assert notes[0].startswith("b.csv: the interval is taken as 3600 s")
+    assert notes[0].endswith("but only 120 of 359 are so long: state it")
+    stated = read_station(path, **SAID, columns=columns, interval="1h")
+    assert stated.notes == ("b.csv: 358 of 718 intervals have no row: missing",)
 
 
 def test_zones_without_daylight_saving(tmp_path, station):

@@ -8,7 +8,7 @@ from pyproj import Geod, Transformer
 from reference import made_range
 
 import terrasol
-from terrasol.engine.datasets import _dataset
+from terrasol.engine.datasets import run_in_memory
 from terrasol.engine.job import plan_terrain
 from terrasol.ground.beyond import MARGIN_MOST, Scene, far_ground, joined, make_scene
 from terrasol.ground.frame import make_frame
@@ -36,7 +36,7 @@ def frame_of(elevation):
 
 def horizon_of(elevation, scene=None, azimuths=AZIMUTHS):
     plan = plan_terrain(elevation, azimuths, horizon=True, scene=scene or Scene())
-    return _dataset(plan, 2).horizon.values
+    return run_in_memory(plan, 2).horizon.values
 
 
 def surrounded(elevation, far):

@@ -35,6 +35,7 @@ def test_the_right_horizon_leaves_nothing():
     assert found.shade.without_horizon > 100.0
     assert found.shade.first_minutes == found.shade.last_minutes == 0.0
     assert "explains when the sun comes" in found.shade.words
+    assert f"the rms falls from {found.shade.without_horizon:.0f} to 0 W/m2" in found.shade.words
 
 
 def test_a_ridge_that_is_not_there_is_noticed():
@@ -43,6 +44,12 @@ def test_a_ridge_that_is_not_there_is_noticed():
     assert found.shade.explained < 0.0
     assert found.shade.first_minutes < -60.0  # the measured sun comes before the modelled one
     assert "misses" in found.shade.words
+    assert "the rms rises from 1 to " in found.shade.words
+    # nothing was to be explained, since the measured light is the open plain's but for the dome
+    flat = replace(here, values={"global": model_station(here, AIR, HORIZON, VIEW).open})
+    exact = compare(flat, model_station(flat, AIR, HORIZON, VIEW)).shade
+    assert exact.without_horizon == 0.0
+    assert exact.explained == -np.inf
 
 
 def test_an_open_place_gives_no_verdict():

@@ -7,14 +7,10 @@ import pytest
 
 from terrasol.errors import InputError
 from terrasol.light.indexed import MappedTables
-from terrasol.light.irradiation import (
-    LightSettings,
-    SkyTables,
-    Strip,
-    Surroundings,
-    sky_light,
-    strip_light,
-)
+from terrasol.light.irradiation import Strip, sky_light, strip_light
+from terrasol.light.settings import LightSettings
+from terrasol.light.surroundings import Surroundings
+from terrasol.light.tables import SkyTables
 from terrasol.sky.clear import Air
 from terrasol.sky.cloud import MonthlySky
 from terrasol.sky.period import parse_period

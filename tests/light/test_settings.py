@@ -5,16 +5,11 @@ import pytest
 
 from terrasol.constants import REFRACTION_COEFFICIENT
 from terrasol.errors import SettingError, TerrasolError
-from terrasol.light import irradiation as light
-from terrasol.light.irradiation import (
-    LATITUDE_GRAIN,
-    LightSettings,
-    SkyTables,
-    Surroundings,
-    check_azimuths,
-    check_refraction,
-    twelve,
-)
+from terrasol.light import latitudes
+from terrasol.light.latitudes import LATITUDE_GRAIN
+from terrasol.light.settings import LightSettings, check_azimuths, check_refraction, twelve
+from terrasol.light.surroundings import Surroundings
+from terrasol.light.tables import SkyTables
 from terrasol.sky.clear import Air
 from terrasol.sky.period import parse_period
 from terrasol.sky.suntable import LATITUDE_KNOTS
@@ -126,7 +121,7 @@ def test_tables_are_mixed_for_the_nearest_grain_of_latitude(monkeypatch):
     assert mixed.latitude == pytest.approx(46.0 + 4.0 * grain)
     low = int(np.searchsorted(tables.latitudes, mixed.latitude)) - 1
     share = mixed.latitude - tables.latitudes[low]  # knots are a degree apart here
-    south, north = tables.tables[low], tables.tables[low + 1]
+    south, north = tables.tables[low].table, tables.tables[low + 1].table
     want = (1.0 - share) * south.level + share * north.level
     np.testing.assert_allclose(mixed.table.level, want, rtol=1e-9)
     np.testing.assert_array_equal(mixed.dark, mixed.table.dark())
@@ -134,9 +129,9 @@ def test_tables_are_mixed_for_the_nearest_grain_of_latitude(monkeypatch):
     at_knot = tables.at(46.0 + 0.2 * grain)
     assert at_knot.latitude == pytest.approx(46.0)
     knot = int(np.flatnonzero(tables.latitudes == 46.0)[0])
-    np.testing.assert_allclose(at_knot.table.level, tables.tables[knot].level, rtol=1e-9)
+    np.testing.assert_allclose(at_knot.table.level, tables.tables[knot].table.level, rtol=1e-9)
     # many other latitudes push it out; asked again, the answer is the same
-    monkeypatch.setattr(light, "MIXED_BYTES", 3.0 * mixed.table.direct.nbytes)
+    monkeypatch.setattr(latitudes, "MIXED_BYTES", 3.0 * mixed.table.direct.nbytes)
     for latitude in np.arange(45.5, 45.9, grain):
         tables.at(latitude)
     assert len(tables._mixed) <= 4

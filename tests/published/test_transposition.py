@@ -4,7 +4,6 @@ import numpy as np
 import pytest
 from pvlib import irradiance
 
-from terrasol.sky.irradiance import Irradiance
 from terrasol.sky.diffuse import (
     PEREZ_CLEARNESS_EDGES,
     PEREZ_COEFFICIENTS,
@@ -13,6 +12,7 @@ from terrasol.sky.diffuse import (
     plane_ground,
     split_diffuse,
 )
+from terrasol.sky.irradiance import Irradiance
 from terrasol.sky.period import parse_period
 from terrasol.sky.sun import SunSeries, horizontal_position, incidence_cosine, sun_path
 

@@ -18,7 +18,7 @@ from terrasol.engine.job import Summary, plan_irradiation
 from terrasol.errors import SettingError
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import make_frame
-from terrasol.light.irradiation import LightSettings
+from terrasol.light.settings import LightSettings
 from terrasol.show import key, maps, page
 from terrasol.show.contours import contour_step, draw_contours, nice_step
 from terrasol.show.graticule import degrees_text

@@ -117,7 +117,7 @@ def test_under_clouds_better_than_a_straight_line(station):
 def test_other_quantities_and_old_flags_are_left(clear):
     gap = holed(clear, slice(34, 36))
     cold = replace(gap, values=gap.values | {"temperature": np.full(240, np.nan)})
-    flagged = check_quality(cold).flagged(cold)
+    flagged = replace(cold, flags=check_quality(cold).flags)
     filled = fill_gaps(flagged, AIR)
     assert np.isnan(filled.station.values["temperature"]).all()
     assert (filled.station.flags["global"][34:36] == Flag.FILLED).all()

@@ -187,6 +187,27 @@ def test_long_series_are_cut_without_a_seam():
     np.testing.assert_allclose(few, means[8000:9500], atol=1e-9)
 
 
+@pytest.mark.parametrize("seconds", [600, 3600])
+def test_an_unknown_minute_spoils_its_own_interval_only(seconds):
+    here = at(47.0, 15.0, {"global": np.zeros(3 * 86400 // seconds)}, seconds=seconds)
+    first, last = np.datetime64("2024-06-01T10:30"), np.datetime64("2024-06-02T07:00")
+
+    def holed(sun):
+        fluxes = sun_height(sun)
+        minute = sun.time.astype("M8[m]")
+        gone = (minute == first) | (minute == last - 1)
+        return {name: np.where(gone, np.nan, flux) for name, flux in fluxes.items()}
+
+    whole, found = interval_means(here, sun_height), interval_means(here, holed)
+    touched = [(moment - here.start[0]) // np.timedelta64(seconds, "s") for moment in (first, last)]
+    for name in ("cosine", "lit"):
+        unknown = np.flatnonzero(np.isnan(found[name]))
+        assert unknown.tolist() == [touched[0], touched[1] - 1]
+        known = np.isfinite(found[name])
+        np.testing.assert_allclose(found[name][known], whole[name][known], rtol=0.0, atol=1e-9)
+    assert (found["day"] == whole["day"]).all()
+
+
 def test_horizon_between_azimuths():
     _, sun, _ = spa_minutes("2024-03-20", "2024-03-21", 47.0, 11.0, 0.0)
     assert not behind_horizon(sun, [-90.0]).any()
