@@ -14,6 +14,7 @@ from terrasol.cli.sky_options import (
     AskedSky,
     Settled,
     file_record,
+    map_doubts,
     shortest,
     sky_options,
 )
@@ -117,6 +118,9 @@ def irradiation(common: Common, around: Around, asked: AskedSky, **given: Any) -
         record["albedo"] = file_record(given["albedo"])
         inputs = (*inputs, given["albedo"])
     notes = (*asked.doubts(frame), *settled.warnings)
+    if settings.albedo_map is not None:
+        effect = f"the plain {ALBEDO_FOR_NOW[0]:g} counts there"
+        notes = (*notes, *map_doubts(settings.albedo_map, elevation, "albedo", effect))
     run(Job("irradiation", common, ground, plan, record, _draw, inputs, notes))
 
 

@@ -394,7 +394,8 @@ def _summary_text(record: Record) -> str:
             )
     if "level_ground" in results:
         told.append(
-            f"open level ground at the centre: {results['level_ground']:g} {results['unit']}"
+            f"open level ground at the centre and mean height ({results['level_ground_height_m']:g}"
+            f" m): {results['level_ground']:g} {results['unit']}"
         )
         told.append(f"energy is {SKIES[results['sky']]}, {results['basis']}")
     if results.get("void_cells"):

@@ -27,6 +27,11 @@ if TYPE_CHECKING:
 PAPERS = {"ineichen": "Ineichen and Perez 2002", "bird": "Bird and Hulstrom 1981"}
 """Clear-sky models, by the name of the option's choice."""
 
+STATION_AWAY_KM = 50.0
+STATION_BESIDE_M = 500.0
+"""How far from the ground's middle, and how far beyond its heights, a station may lie without a
+warning (judgement, no source)."""
+
 CLIMATOLOGY = "climatology"
 TURBIDITY_FOR_NOW = 3.0
 """Stands for the climatology's turbidity while the other settings are checked, before the
@@ -158,10 +163,16 @@ class AskedSky:
             step_seconds=step_seconds,
         )
         told = file_record(self.station)
+        doubts = station_doubts(found.station, elevation)
         inputs = [self.station, *([self.station_settings] if self.station_settings else [])]
         record = {"station": told | found.report}
         return Settled(
-            found.sky, found.period, record, found.warnings, tuple(inputs), found.station
+            found.sky,
+            found.period,
+            record,
+            (*found.warnings, *doubts),
+            tuple(inputs),
+            found.station,
         )
 
     def _mapped(self, path: str, period: Period, elevation: Elevation) -> Settled:
@@ -171,7 +182,8 @@ class AskedSky:
 
         index = read_map(path, elevation, "clear-sky index", LEAST_INDEX, MOST_INDEX)
         record = {"clear_sky_index": file_record(path)}
-        return Settled(None, period, record, inputs=(path,), index_map=index)
+        doubts = map_doubts(index, elevation, "clear-sky index", "void in all light")
+        return Settled(None, period, record, doubts, inputs=(path,), index_map=index)
 
     def _check(self) -> None:
         """Refuse options that do not go together."""
@@ -195,6 +207,46 @@ class AskedSky:
                 if getattr(self, name) is not None:
                     option = name.replace("_", "-")
                     raise click.UsageError(f"--{option} belongs to --station, which is not given")
+
+
+def station_doubts(station: Station, elevation: Elevation) -> tuple[str, ...]:
+    """Warn of a station that lies far from the ground it speaks for, or far above or below."""
+    import numpy as np
+    from pyproj import Geod
+
+    from terrasol.ground.frame import make_frame
+
+    latitude, longitude = make_frame(elevation.shape, elevation.transform, elevation.crs).centre
+    place = station.longitude, station.latitude
+    away = Geod(ellps="WGS84").inv(*place, longitude, latitude)[2] / 1000.0
+    low, high = float(np.nanmin(elevation.heights)), float(np.nanmax(elevation.heights))
+    doubts = []
+    if away > STATION_AWAY_KM:
+        doubts.append(
+            f"{station.name} lies {away:.0f} km from the raster's middle: is its place right, and"
+            " its sky that of this ground?"
+        )
+    if not low - STATION_BESIDE_M <= station.height <= high + STATION_BESIDE_M:
+        doubts.append(
+            f"{station.name} is stated to lie at {station.height:.0f} m, the ground at {low:.0f} to"
+            f" {high:.0f} m: is its height right?"
+        )
+    return tuple(doubts)
+
+
+def map_doubts(
+    values: NDArray[np.float32], elevation: Elevation, quantity: str, effect: str
+) -> tuple[str, ...]:
+    """Warn of cells of known ground that a map leaves out."""
+    import numpy as np
+
+    from terrasol.errors import counted
+
+    lacking = np.isnan(values).any(axis=0) & np.isfinite(elevation.heights)
+    if not lacking.any():
+        return ()
+    cells = counted(int(lacking.sum()), "cell")
+    return (f"the map of the {quantity} has no value for {cells} of known ground: {effect}",)
 
 
 def file_record(path: str) -> dict[str, str]:

@@ -46,6 +46,9 @@ from terrasol.sky.timing import CLEAR_SCALE, TRIMMED, Timing, check_times
 AZIMUTHS: Final = 256
 """Number of horizon azimuths: for one cell's hours of sun, four times as many as for maps."""
 
+LEAST_CLEAR_DAYS: Final = 5
+"""Clear days below which a clear-sky comparison says little; as for the clock (judgement)."""
+
 HEIGHT_TOLERANCE: Final = 50.0
 """Metres between the stated height and that of the cell beyond which one of them is doubted."""
 
@@ -506,6 +509,11 @@ def compare_station(
         warnings += neighbour.warnings
     if found is None:
         warnings.append(_nothing(station, other))
+    elif other is None and days.size < LEAST_CLEAR_DAYS:
+        warnings.append(
+            f"{station.name}: {counted(days.size, 'day')} that may be clear can be chance: with fewer"
+            f" than {LEAST_CLEAR_DAYS}, take no bias from it"
+        )
     summary = quality.summary()
     return StationReport(
         sound, spot, modelled, found, timing, days, summary, neighbour, tuple(warnings)

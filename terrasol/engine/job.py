@@ -399,6 +399,7 @@ class Run:
         }
         if tables is not None:
             summary.numbers["level_ground"] = level_ground(ground, tables)
+            summary.numbers["level_ground_height_m"] = round(ground.far.datum)
             summary.numbers["unit"] = tables.settings.unit
             summary.numbers["basis"] = outputs.basis_words(tables.settings)
             summary.numbers["sky"] = outputs.sky_kind(tables.settings)

@@ -102,8 +102,7 @@ class Settings:
         value = getattr(self, section).get(key)
         if value is None:
             raise InputError(
-                f"{key} is not known: write {key} = {example} under [{section}] in"
-                f" {self.said_in}, or give it as an option"
+                f"{key} is not known: write {key} = {example} under [{section}] in {self.said_in}"
             )
         return value
 

@@ -149,7 +149,7 @@ def _units(said: Settings) -> dict[str, str]:
         if column.unit is None:
             raise InputError(
                 f'the unit of {quantity} is not known: write unit = "..." under'
-                f" [columns.{quantity}] in {said.said_in}, or give it as an option"
+                f" [columns.{quantity}] in {said.said_in}"
             )
         units[quantity] = unit_of(quantity, column.unit, said.said_in)
     return units

@@ -58,7 +58,7 @@ class Surroundings:
             Of the ground, where the samples are.
         """
         sigma = [SURROUNDINGS_SCALE / (stride * size) for size in cell_size[::-1]]
-        known = np.isfinite(samples[-1])
+        known = np.isfinite(samples).all(axis=0)
         weight = gaussian_filter(known.astype(np.float64), sigma, mode="constant")
         weight = np.where(weight > 1e-12, weight, np.inf)
 

@@ -118,7 +118,7 @@ class MonthlySky:
         """Refuse what is no index."""
         if len(self.index) != 12 or not all(LEAST_INDEX <= k <= MOST_INDEX for k in self.index):
             raise SettingError(
-                f"the clear-sky index must be twelve numbers from {LEAST_INDEX:g} to"
+                f"the clear-sky index must be one number or twelve from {LEAST_INDEX:g} to"
                 f" {MOST_INDEX:g}, January first"
             )
 

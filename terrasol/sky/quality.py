@@ -409,7 +409,8 @@ def refuse_wrong_unit(
     raise InputError(
         f"{station.name}: {quantity} cannot be in {unit}: its clearest hours bring {peak:.3g} times"
         f" the light above the air, and {_believable(quantity)} is believable{fits}. Mend the"
-        " unit; if the values are right, say check_units = false"
+        " unit, or zone and label if the times are wrong; if the values are right, say"
+        " check_units = false"
     )
 
 

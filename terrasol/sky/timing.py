@@ -253,6 +253,8 @@ class _Search:
         """Shift at which measured and clear light correlate best [minutes]."""
         known = np.isfinite(measured)
         shifts = np.arange(-COARSE_REACH, COARSE_REACH + 1.0, COARSE_STEP)
+        if not np.ptp(measured[known]) > 0.0:  # a logger that stood still fits no shift
+            return 0.0
         right = [
             np.corrcoef(measured[known], self.at(self.clear, shift)[known])[0, 1]
             for shift in shifts

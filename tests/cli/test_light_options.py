@@ -176,3 +176,34 @@ def test_maps_that_will_not_do(dem, clear, tmp_path, capsys):
         words = ["--albedo", str(path), *QUICK]
         assert main(["irradiation", str(dem), str(tmp_path / "out"), *words]) == 3
         assert said in capsys.readouterr().err
+
+
+def test_a_station_elsewhere_is_doubted(dem, tmp_path, capsys):
+    path = series(tmp_path / "made.csv")
+    toml = path.with_name(path.name + ".toml")
+    toml.write_text(toml.read_text().replace("height = 700.0", "height = 2900.0"))
+    words = [w for w in QUICK if w != "--quiet"]
+    out = tmp_path / "out"
+    assert main(["irradiation", str(dem), str(out), "--station", str(path), *words]) == 0
+    assert "is its height right?" in capsys.readouterr().err
+    moved = toml.read_text().replace(f"longitude = {LONGITUDE}", f"longitude = {LONGITUDE + 1.5}")
+    toml.write_text(moved)
+    again = ["irradiation", str(dem), str(out), "--station", str(path), "--overwrite", *words]
+    assert main(again) == 0
+    assert "km from the raster's middle" in capsys.readouterr().err
+
+
+def test_holes_of_maps_are_told(dem, clear, tmp_path, capsys):
+    values = np.full((1, *clear[1].shape[1:]), 0.6)
+    values[0, 10:14, 10:14] = np.nan
+    path = map_of(tmp_path / "holes.tif", values)
+    words = ["--period", "2025-05", *(w for w in QUICK if w != "--quiet")]
+    out = tmp_path / "index"
+    assert main(["irradiation", str(dem), str(out), "--clear-sky-index", str(path), *words]) == 0
+    assert "clear-sky index has no value for 16 cells" in capsys.readouterr().err
+    with rasterio.open(out / "irradiation_period.tif") as source:
+        void = np.ma.getmaskarray(source.read(masked=True))
+    assert (void.sum(axis=(1, 2)) == 16).all()
+    out = tmp_path / "albedo"
+    assert main(["irradiation", str(dem), str(out), "--albedo", str(path), *words]) == 0
+    assert "albedo has no value for 16 cells" in capsys.readouterr().err

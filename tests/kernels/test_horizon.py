@@ -49,8 +49,8 @@ def sweep_line(line, step, half_curve, skip=SKIP, datum=0.0):
     away = np.zeros_like(height)
     void = np.zeros(height.shape, np.uint8)
     far_field(
-        raster.reshape(-1), raster[:0].reshape(-1), 0, 1, line.size, line.size, 3, 0.0, step, half_curve,
-        skip, 1, 0, 0, 1, datum, height, away, void,
+        raster.reshape(-1), raster[:0].reshape(-1), 0, 1, line.size, line.size, 3, 0.0, step,
+        half_curve, skip, 1, 0, 0, 1, datum, height, away, void,
     )  # fmt: skip
     own = line.astype(np.float64) - datum
     tangent = (height[:, 1].astype(np.float64) - own) / away[:, 1] - away[:, 1] * half_curve
@@ -192,8 +192,8 @@ def test_slanting_sweep_sees_along_its_own_direction(gap):
     height = np.zeros((30, 23), np.float32)
     away, void = np.zeros_like(height), np.zeros(height.shape, np.uint8)
     far_field(
-        z.reshape(-1), z[:0].reshape(-1), 0, columns, 1, rows, columns, 0.6, step, 0.0, SKIP, gap, 0, 0, 4, 0.0,
-        height, away, void,
+        z.reshape(-1), z[:0].reshape(-1), 0, columns, 1, rows, columns, 0.6, step, 0.0, SKIP, gap,
+        0, 0, 4, 0.0, height, away, void,
     )  # fmt: skip
     query, node = np.mgrid[8:30, 0:22]
     height, away = height[8:, :22], away[8:, :22]
@@ -214,8 +214,8 @@ def test_diagonal_sweep_is_exact_on_the_cells_it_meets():
     height = np.zeros((70, 70), np.float32)
     away, void = np.zeros_like(height), np.zeros(height.shape, np.uint8)
     far_field(
-        z.reshape(-1), z[:0].reshape(-1), 0, 70, 1, 70, 70, 1.0, step, HALF_CURVE, SKIP, 1, 0, 0, 1, 0.0,
-        height, away, void,
+        z.reshape(-1), z[:0].reshape(-1), 0, 70, 1, 70, 70, 1.0, step, HALF_CURVE, SKIP, 1,
+        0, 0, 1, 0.0, height, away, void,
     )  # fmt: skip
     for row, column in [(69, 69), (60, 45), (50, 50), (69, 40), (45, 69)]:
         line = np.array([z[row - i, column - i] for i in range(min(row, column) + 1)][::-1])

@@ -114,3 +114,11 @@ def test_what_is_no_index_is_refused(wrong):
     index[0, 0, 0] = wrong
     with pytest.raises(InputError, match=r"index is 0\.05 to 1\.2"):
         MappedTables.over(SETTINGS, index.astype(np.float32), *PLACE)
+
+
+def test_a_hole_in_the_map_does_not_spread_through_the_surroundings():
+    samples = np.full((3, 6, 7), 100.0, np.float32)
+    samples[-1] = 0.2
+    samples[:2, 2, 3] = np.nan  # light unknown, ground known
+    around = Surroundings.of(samples, 4, (50.0, 50.0), np.array([0.3, 0.3]))
+    assert np.isfinite(around.received).all()

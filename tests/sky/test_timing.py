@@ -198,3 +198,9 @@ def test_col_de_porte(col_de_porte):
     analysed = whole.shifts[whole.days >= np.datetime64("2006-06-10")]
     assert analysed.size >= 5
     assert np.median(analysed) > 30.0
+
+
+def test_a_logger_that_stood_still_gives_no_verdict():
+    station = made_station(days=30)
+    stuck = replace(station, values={"global": np.full(station.start.size, 40.0)})
+    assert check_times(stuck, Air.ineichen(3.0)).verdict == "unknown"
