@@ -511,8 +511,8 @@ def compare_station(
         warnings.append(_nothing(station, other))
     elif other is None and days.size < LEAST_CLEAR_DAYS:
         warnings.append(
-            f"{station.name}: {counted(days.size, 'day')} that may be clear can be chance: with fewer"
-            f" than {LEAST_CLEAR_DAYS}, take no bias from it"
+            f"{station.name}: {counted(days.size, 'day')} that may be clear can be chance: with"
+            f" fewer than {LEAST_CLEAR_DAYS}, take no bias from it"
         )
     summary = quality.summary()
     return StationReport(
