@@ -126,6 +126,9 @@ def irradiation(
     monthly_parts: bool = False,
     refraction: float = REFRACTION_COEFFICIENT,
     sky: Sky | None = None,
+    albedo_map: NDArray[np.float32] | None = None,
+    index_map: NDArray[np.float32] | None = None,
+    photons_per_joule: float | None = None,
     far: Elevation | None = None,
     surface: Elevation | None = None,
     horizon_gap: bool = False,
@@ -167,6 +170,13 @@ def irradiation(
         Also bound what ground outside all data could hide.
     highest : float, optional
         How high such ground could be [m]; see `make_scene`.
+    albedo_map : ndarray, shape (1 or 12, y, x), optional
+        Albedo of each cell, for the year or January to December; `albedo` counts where NaN.
+    index_map : ndarray, shape (1 or 12, y, x), optional
+        Clear-sky index of each cell, in place of `sky`; NaN makes void light.
+    photons_per_joule : float, optional
+        Photosynthetic photons in a joule of global light [umol J-1], for
+        ``photosynthetic_months`` (month, y, x) [mol m-2 d-1].
     sky : Sky, optional
         A measured sky (`clouded_sky`) or one of monthly indices (`MonthlySky`), in place of
         the clear one.
@@ -215,6 +225,9 @@ def irradiation(
         monthly_parts,
         refraction,
         sky,
+        albedo_map,
+        index_map,
+        photons_per_joule,
     )
     return run_in_memory(plan_irradiation(elevation, settings, scene), threads)
 

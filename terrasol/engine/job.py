@@ -30,7 +30,7 @@ from terrasol.engine.plan import (
     default_threads,
 )
 from terrasol.engine.totals import Totals
-from terrasol.errors import InputError, counted
+from terrasol.errors import InputError, SettingError, counted
 from terrasol.files.layers import Layer, Sink
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
@@ -268,6 +268,12 @@ def plan_irradiation(
     InputError
         A raster that cannot be placed on the Earth, or with cells too coarse for its blocks.
     """
+    for name, values in (("albedo", settings.albedo_map), ("index", settings.index_map)):
+        if values is not None and values.shape not in ((n, *elevation.shape) for n in (1, 12)):
+            raise SettingError(
+                f"the {name} map must have the shape (1 or 12, {elevation.shape[0]},"
+                f" {elevation.shape[1]}); got {values.shape}"
+            )
     layers = [*_terrain_layers(elevation), *outputs.light_layers(settings)]
     if scene.highest is not None:
         layers.append(outputs.horizon_gap_layer(scene.highest, settings))

@@ -258,3 +258,25 @@ def test_wrong_settings_are_refused(ground, wrong, words):
 def test_wrong_terrain_settings_are_refused(ground, wrong):
     with pytest.raises(terrasol.SettingError, match=next(iter(wrong))):
         terrasol.terrain(ground, **wrong)
+
+
+def test_maps_of_albedo_and_index_and_photons(ground):
+    shape = ground.shape
+    even = terrasol.irradiation(ground, "2025-06", albedo=0.4, **QUICK)
+    mapped = terrasol.irradiation(
+        ground, "2025-06", albedo_map=np.full((1, *shape), 0.4, np.float32),
+        photons_per_joule=2.0, **QUICK,
+    )  # fmt: skip
+    got, want = (whole(light).values for light in (mapped, even))
+    np.testing.assert_allclose(got, want, rtol=1e-4, atol=1e-3)
+    months = mapped["irradiation_months"].values
+    np.testing.assert_allclose(mapped["photosynthetic_months"], months * 2.0 / 30.0, rtol=1e-5)
+    assert mapped["photosynthetic_months"].attrs["units"] == "mol m-2 d-1"
+    dull = terrasol.irradiation(
+        ground, "2025-06", index_map=np.full((12, *shape), 0.5, np.float32), **QUICK
+    )
+    assert whole(dull).values[0].mean() == pytest.approx(
+        0.5 * whole(terrasol.irradiation(ground, "2025-06", **QUICK)).values[0].mean(), rel=0.03
+    )
+    with pytest.raises(terrasol.SettingError, match="albedo map must have the shape"):
+        terrasol.irradiation(ground, "2025-06", albedo_map=np.zeros((3, 2, 2)), **QUICK)
