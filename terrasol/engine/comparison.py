@@ -37,7 +37,7 @@ from terrasol.sky.clear import Air
 from terrasol.sky.cloud import CloudedSky, clouded_sky
 from terrasol.sky.gaps import LONGEST_HOURS, fill_gaps
 from terrasol.sky.irradiance import Sky
-from terrasol.sky.measured import series_doubts
+from terrasol.sky.measured import TRUSTED, series_doubts
 from terrasol.sky.period import parse_period
 from terrasol.sky.quality import check_quality, usable
 from terrasol.sky.station import Station
@@ -410,7 +410,8 @@ def _how_well(report: StationReport) -> list[str]:
                 f"worst {words}: {label(key)}, bias {amount_words(worst, 'bias')},"
                 f" rms {amount_words(worst, 'rms')}"
             )
-    lines.append(shade.words)
+    doubted = report.timing.verdict not in TRUSTED
+    lines.append(shade.words + (", or its clock is wrong, see below" if doubted else ""))
     if np.isfinite(shade.first_minutes):
         lines.append(
             f"against the modelled sun the measured one comes {_late(shade.first_minutes)} and goes"
@@ -504,7 +505,10 @@ def compare_station(
         days = timing.days
     found = compare(sound, modelled, days if other is None else None)
     compared = {"global": changed["global"]}
-    warnings = [*_place_doubts(station, spot), *series_doubts(station, compared, {}, timing)]
+    warnings = [
+        *_place_doubts(station, spot),
+        *series_doubts(station, compared, {}, timing, quality.night_offset),
+    ]
     if neighbour is not None:
         warnings += neighbour.warnings
     if found is None:
@@ -587,13 +591,14 @@ def _other_sky(
             f"{other.name}: measured from {other.start[0]} to {other.end} UTC, {station.name} from"
             f" {station.start[0]} to {station.end}: give two series of the same time"
         )
-    sound, changed = usable(other, check_quality(other))
+    quality = check_quality(other)
+    sound, changed = usable(other, quality)
     filled = fill_gaps(sound, air, fill_hours)
     days = [str((moment + other.solar_offset).astype("M8[D]")) for moment in (first, last)]
     sky = clouded_sky(filled.station, air, parse_period("/".join(days)), decomposition)
     away = _kilometres((station.latitude, station.longitude), (other.latitude, other.longitude))
     timing = check_times(other, air)
-    doubts = series_doubts(other, changed, filled.count, timing)
+    doubts = series_doubts(other, changed, filled.count, timing, quality.night_offset)
     neighbour = OtherStation(filled.station, away, timing, filled.count, doubts)
     return neighbour, replace(sky, strict=False)
 

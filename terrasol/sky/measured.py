@@ -13,7 +13,7 @@ from terrasol.sky.clear import Air
 from terrasol.sky.cloud import CloudedSky, clouded_sky
 from terrasol.sky.gaps import LONGEST_HOURS, Gap, fill_gaps
 from terrasol.sky.period import Period, parse_period
-from terrasol.sky.quality import LIGHT, check_quality, usable
+from terrasol.sky.quality import LARGEST_OFFSET, LIGHT, check_quality, usable
 from terrasol.sky.station import Station
 from terrasol.sky.sun import sun_path, sun_series
 from terrasol.sky.timing import Timing, check_times
@@ -109,7 +109,7 @@ def measured_sky(
         "clock": {"verdict": timing.verdict, "words": timing.words},
         "light_without_sun_mj_m2": round(sky.left_out, 3),
     }
-    doubts = series_doubts(station, changed, filled.count, timing)
+    doubts = series_doubts(station, changed, filled.count, timing, quality.night_offset)
     return MeasuredSky(sky, filled.station, period, report, doubts)
 
 
@@ -118,6 +118,7 @@ def series_doubts(
     changed: dict[str, dict[str, int]],
     filled: dict[str, int],
     timing: Timing,
+    night_offset: dict[str, float],
 ) -> tuple[str, ...]:
     """Warnings on a series, each with the station's name.
 
@@ -131,8 +132,16 @@ def series_doubts(
         Intervals filled, by quantity.
     timing : Timing
         What its clear days say of its clock.
+    night_offset : dict of float
+        Mean at night, by quantity [W/m2]; see `Quality`.
     """
     doubts = [*station.notes]
+    doubts += [
+        f"{station.name}: {name} reads {offset:+.0f} W/m2 at night, on the mean; its days may be"
+        " out by as much, and are left as they are"
+        for name, offset in night_offset.items()
+        if abs(offset) > LARGEST_OFFSET
+    ]
     impossible = {name: changed[name]["impossible"] for name in LIGHT if name in changed}
     for counts, words in (
         (impossible, "cannot be true and count as missing"),

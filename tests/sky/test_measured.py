@@ -72,3 +72,13 @@ def test_a_wrong_zone_is_reported_and_not_applied():
     assert told[0].count("hill") == 1
     assert (found.station.start == late.start).all()
     assert measured_sky(right, AIR).report["clock"]["verdict"] == "consistent"
+
+
+def test_an_offset_at_night_is_named_and_not_taken_off():
+    here = station()
+    low = {name: values - 30.0 for name, values in here.values.items()}
+    off = Station("hill", 47.0, 15.4, 400.0, here.start, 3600, low)
+    found = measured_sky(off, AIR)
+    assert any("global reads -30 W/m2 at night" in text for text in found.warnings)
+    noon = int(np.argmax(here.values["global"]))
+    assert found.station.values["global"][noon] == pytest.approx(here.values["global"][noon] - 30.0)
