@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Iterable
 from typing import Any
 
 import numpy as np
@@ -16,6 +16,7 @@ from terrasol.ground.horizon import NODE_STEP
 from terrasol.ground.surface import slope_and_aspect
 from terrasol.light.indexed import MappedTables
 from terrasol.light.irradiation import Light, Strip, sky_light, strip_light
+from terrasol.light.latitudes import grain_of
 from terrasol.light.settings import UNITS
 from terrasol.light.surroundings import Surroundings
 from terrasol.light.tables import SkyTables
@@ -116,20 +117,29 @@ def sample_block(
         return
     strip = piece.strip(rows).thin(first_column, stride)
     received = np.empty((samples.shape[0], *strip.heights.shape), np.float32)
-    for served in piece.pieces():  # by the sun tables that the cells themselves get
-        inside = [i for i, row in enumerate(rows) if row in served]
-        if inside:
-            part = slice(inside[0], inside[-1] + 1)
-            alone = strip.part(part, piece.table_latitude(served))
-            if isinstance(tables, MappedTables):
-                columns = block.column + np.arange(first_column, block.columns, stride)
-                lines = block.row + np.array(inside) * stride + rows[0]
-                received[:, part] = tables.sky_light(alone, lines, columns)
-            else:
-                received[:, part] = sky_light(alone, tables)
+    for inside, latitude in _by_table(piece, rows):
+        part = slice(inside[0], inside[-1] + 1)
+        alone = strip.part(part, latitude)
+        if isinstance(tables, MappedTables):
+            columns = block.column + np.arange(first_column, block.columns, stride)
+            lines = block.row + np.array(inside) * stride + rows[0]
+            received[:, part] = tables.sky_light(alone, lines, columns)
+        else:
+            received[:, part] = sky_light(alone, tables)
     row, column = (block.row + rows[0]) // stride, (block.column + first_column) // stride
     height, width = received.shape[1:]
     samples[:, row : row + height, column : column + width] = received
+
+
+def _by_table(piece: BlockGround, rows: range) -> Iterable[tuple[list[int], float]]:
+    """Which of some rows share a sun table, the one that their own piece gets, and its latitude."""
+    found: dict[int, tuple[list[int], float]] = {}
+    for served in piece.pieces():
+        inside = [i for i, row in enumerate(rows) if row in served]
+        if inside:
+            latitude = piece.table_latitude(served)
+            found.setdefault(grain_of(latitude), ([], latitude))[0].extend(inside)
+    return found.values()
 
 
 def across_void(ground: Ground, known: NDArray[np.bool_]) -> int:

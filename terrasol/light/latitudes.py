@@ -21,6 +21,12 @@ LATITUDE_GRAIN: Final = 0.01
 MIXED_BYTES: Final = 256e6
 """Memory for mixed tables: those of the strips of one row of blocks are kept."""
 
+
+def grain_of(latitude: float) -> int:
+    """Number of the grain that a latitude [degrees] is rounded to."""
+    return round(latitude / LATITUDE_GRAIN)
+
+
 Table = TypeVar("Table")
 Mix = TypeVar("Mix")
 
@@ -78,7 +84,7 @@ class LatitudeTables(ABC, Generic[Table, Mix]):
 
     def at(self, latitude: float) -> Mix:
         """The table for a latitude rounded to LATITUDE_GRAIN."""
-        grain = round(latitude / LATITUDE_GRAIN)
+        grain = grain_of(latitude)
         with self._lock:
             found = self._mixed.pop(grain, None)
             if found is None:
