@@ -78,6 +78,7 @@ def rms(values):
     return float(np.sqrt(np.mean(np.square(values))))
 
 
+@pytest.mark.heavy
 @pytest.mark.parametrize("which", FARS)
 def test_a_cut_out_sees_the_range_it_was_cut_from(small, uncut, truth, which):
     rows, columns = some_cells(small.shape)
@@ -92,6 +93,7 @@ def test_a_cut_out_sees_the_range_it_was_cut_from(small, uncut, truth, which):
     assert np.abs(got - truth).max() < 1.1 * np.abs(whole - truth).max()
 
 
+@pytest.mark.heavy
 def test_a_raster_in_degrees_sees_a_range_in_utm():
     fine = made_range.on_grid("EPSG:4326", (1 / 1500, 0, 10.22, 0, -1 / 2000, 46.1), (200, 200))
     rows, columns = some_cells(fine.shape)
