@@ -1,0 +1,1 @@
+"""A decision made of the light: parcels, snow, plots."""
