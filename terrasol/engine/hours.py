@@ -25,7 +25,7 @@ from terrasol.engine.job import (
     Summary,
     check_blocks,
 )
-from terrasol.engine.plan import Block, Progress, blocks_of, check_threads, default_threads
+from terrasol.engine.plan import Block, Progress, check_threads, default_threads
 from terrasol.engine.totals import Totals
 from terrasol.files.layers import Layer, Sink
 from terrasol.ground.beyond import Scene
@@ -201,7 +201,7 @@ class _HoursRun(Run):
         days = self._days()
         work = partial(_block_hours, ground, [layer.name for layer in plan.layers], tables, days)
         totals, gaps = Totals(), GapTally()
-        blocks = [partial(with_block, work, block) for block in blocks_of(plan.elevation.shape)]
+        blocks = [partial(with_block, work, block) for block in plan.blocks]
         for block, arrays in self._stage("blocks", blocks, 1.0 - self.done):
             totals.add(arrays)
             if "horizon_gap" in arrays:

@@ -23,6 +23,7 @@ from terrasol.engine.blocks import (
 from terrasol.engine.ground_work import Ground, lay_out
 from terrasol.engine.horizon_gap import GapTally
 from terrasol.engine.plan import (
+    Block,
     Progress,
     blocks_of,
     carry_out,
@@ -102,6 +103,8 @@ class Plan:
         What is written.
     scene : Scene
         What stands beyond and above the raster's ground.
+    only : tuple of Block, optional
+        The blocks to do; by default all.
     """
 
     elevation: Elevation
@@ -111,6 +114,12 @@ class Plan:
     settings: LightSettings | None
     layers: tuple[Layer, ...]
     scene: Scene = NO_SCENE
+    only: tuple[Block, ...] | None = None
+
+    @property
+    def blocks(self) -> list[Block]:
+        """The blocks to do."""
+        return blocks_of(self.elevation.shape) if self.only is None else list(self.only)
 
     @property
     def cells(self) -> int:
@@ -320,8 +329,7 @@ class Run:
         names = [layer.name for layer in plan.layers]
         work = partial(block_arrays, ground, names, tables, surroundings)
         totals, gaps = Totals(), GapTally()
-        blocks = blocks_of(plan.elevation.shape)
-        tasks = [partial(with_block, work, block) for block in blocks]
+        tasks = [partial(with_block, work, block) for block in plan.blocks]
         for block, arrays in self._stage("blocks", tasks, 1.0 - self.done):
             totals.add(arrays)
             if "horizon_gap" in arrays:
