@@ -24,6 +24,8 @@ STANDARD_NAMES: Final = {
     "surface_diffuse_downwelling_shortwave_flux_in_air": "diffuse",
     "air_temperature": "temperature",
     "precipitation_amount": "precipitation",
+    "surface_snow_amount": "snow_water",
+    "lwe_thickness_of_surface_snow_amount": "snow_water",
     "precipitation_flux": "precipitation",
     "lwe_thickness_of_precipitation_amount": "precipitation",
     "surface_albedo": "albedo",

@@ -82,6 +82,8 @@ def converter(quantity: str, unit: str, seconds: int) -> Callable[[Values], Valu
         return lambda values: values * factor + offset
     if quantity == "precipitation":
         factor = DEPTH[unit] if unit in DEPTH else RATE[unit] * seconds
+    elif quantity == "snow_water":
+        factor = DEPTH[unit]
     elif quantity == "albedo":
         factor = SHARE[unit]
     else:
@@ -94,6 +96,8 @@ def _units(quantity: str) -> tuple[str, ...]:
         return tuple(TEMPERATURE)
     if quantity == "precipitation":
         return (*DEPTH, *RATE)
+    if quantity == "snow_water":
+        return tuple(DEPTH)
     if quantity == "albedo":
         return tuple(SHARE)
     return (*POWER, *ENERGY)

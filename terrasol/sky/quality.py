@@ -85,9 +85,10 @@ DIFFUSE_RATIO: Final = (1.05, 1.10)
 """Allowances with zenith angles under 75 degrees and from there to 93 (Long and Dutton 2002)."""
 
 OTHER_LIMITS: Final = {"temperature": (-90.0, 60.0), "precipitation": (0.0, np.inf),
-                       "albedo": (0.0, 1.0)}  # fmt: skip
+                       "albedo": (0.0, 1.0), "snow_water": (-20.0, 1e4)}  # fmt: skip
 """Temperatures of air: the extremes on record are -89.2 and 56.7 degC (World Meteorological
-Organization, archive of extremes; from memory)."""
+Organization, archive of extremes; from memory). A snow pillow may drift some way below 0, and no snow weighs
+more than ten metres of water (judgement)."""
 
 LARGEST_OFFSET: Final = 10.0
 """W/m2 at night beyond which a mean is no instrument's offset (judgement)."""

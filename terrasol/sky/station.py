@@ -17,9 +17,10 @@ QUANTITIES: Final = {
     "temperature": "degC",
     "precipitation": "mm",
     "albedo": "1",
+    "snow_water": "mm",
 }
 """What a station may measure, and its unit: global and diffuse on level ground, beam facing
-the sun, each the mean of an interval; precipitation the sum of one."""
+the sun, each the mean of an interval; precipitation the sum of one; snow water what lies on the ground, as on a pillow."""
 
 
 @dataclass(frozen=True, eq=False)

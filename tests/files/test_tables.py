@@ -151,6 +151,8 @@ def test_units_of_light(tmp_path, station, unit):
         ("precipitation", "inches", 0.5, 12.7),
         ("precipitation", "mm/h", 2.0, 2.0),
         ("albedo", "%", 55.0, 0.55),
+        ("snow_water", "inch", 10.0, 254.0),
+        ("snow_water", "kg m-2", 310.0, 310.0),
     ],
 )
 def test_other_units(tmp_path, quantity, unit, number, expected):
