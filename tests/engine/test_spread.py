@@ -1,0 +1,101 @@
+"""Running mean and spread against all values at once, and what intervals hold."""
+
+import numpy as np
+import pytest
+from scipy import stats
+
+from terrasol.engine.spread import UNKNOWN_DIRECTION, Running, RunningAngle, Spread, SpreadTally
+from terrasol.errors import SettingError
+
+
+def test_running_is_mean_and_deviation_of_all():
+    values = np.random.default_rng(1).normal(1000.0, 2.0, (24, 5, 7))
+    running = Running((5, 7), np.float32)
+    for each in values:
+        running.add(each)
+    assert running.mean() == pytest.approx(values.mean(axis=0), rel=1e-6)
+    assert running.deviation() == pytest.approx(values.std(axis=0, ddof=1), rel=1e-4)
+
+
+def test_running_leaves_out_what_is_not_known():
+    running = Running((3,))
+    for each in ([1.0, np.nan, np.nan], [3.0, 5.0, np.nan], [5.0, np.nan, np.nan]):
+        running.add(np.array(each))
+    assert running.mean() == pytest.approx([3.0, 5.0, np.nan], nan_ok=True)
+    assert running.deviation() == pytest.approx([2.0, np.nan, np.nan], nan_ok=True)
+    assert running.count.tolist() == [3, 1, 0]
+
+
+def test_running_takes_windows():
+    running = Running((4, 4))
+    for value in (1.0, 2.0):
+        running.add(np.full((2, 3), value), (slice(1, 3), slice(0, 3)))
+    assert running.count.sum() == 12
+    assert running.mean()[1, 0] == 1.5
+    assert np.isnan(running.mean()[0, 0])
+
+
+def test_deviation_of_a_direction_is_the_plain_one_while_small():
+    turned = np.random.default_rng(2).normal(359.0, 4.0, (2000, 3))
+    running = RunningAngle((3,))
+    for each in turned:
+        running.add(each % 360.0)
+    assert running.deviation() == pytest.approx(turned.std(axis=0, ddof=1), rel=0.01)
+    assert (running.mean() - 359.0 + 180.0) % 360.0 - 180.0 == pytest.approx(0.0, abs=0.4)
+
+
+def test_deviation_of_a_direction_does_not_depend_on_how_many_came():
+    """The square is freed of n: the mean over many small draws is that of a large one."""
+    turned = np.random.default_rng(3).normal(0.0, 10.0, (5, 20_000))
+    running = RunningAngle((20_000,))
+    for each in turned:
+        running.add(each)
+    assert np.mean(running.deviation() ** 2) == pytest.approx(100.0, rel=0.02)
+
+
+def test_no_direction_at_all():
+    running = RunningAngle((1,))
+    for each in np.arange(0.0, 360.0, 15.0):
+        running.add(np.array([each]))
+    assert running.deviation() == pytest.approx(UNKNOWN_DIRECTION)
+    single = RunningAngle((1,))
+    single.add(np.array([20.0]))
+    assert np.isnan(single.deviation()).all()
+
+
+@pytest.mark.parametrize("count", [4, 24])
+@pytest.mark.parametrize("level", [0.5, 0.9])
+def test_interval_of_a_linear_quantity_holds_the_truth_as_stated(count, level):
+    """Truth 0; the estimate has an error of its own, and the realisations one on top of it."""
+    rng = np.random.default_rng(4)
+    tally = SpreadTally(rng.normal(0.0, 1.0, 40_000))
+    for _ in range(count):
+        tally.add(tally.estimate + rng.normal(0.0, 1.0, 40_000))
+    low, high = tally.spread().interval(level)
+    held = np.mean((low <= 0.0) & (high >= 0.0))
+    assert held == pytest.approx(level, abs=4.0 * stats.binom.std(40_000, level) / 40_000)
+
+
+def test_interval_takes_off_what_error_adds():
+    """Each error adds 1: the estimate, with one, is 1 too high, the realisations 2."""
+    spread = Spread(np.array(11.0), np.array(12.0), np.array(0.5), np.array(24, np.uint16))
+    assert spread.shift == 1.0
+    assert spread.corrected == 10.0
+    low, high = spread.interval(0.9)
+    assert (low + high) / 2.0 == pytest.approx(10.0)
+    assert spread.interval(0.9, (9.9, 10.1)) == (9.9, 10.1)
+
+
+def test_direction_is_taken_the_shorter_way_round():
+    spread = Spread(np.array(1.0), np.array(358.0), np.array(5.0), np.array(24, np.uint16), True)
+    assert spread.shift == -3.0
+    assert spread.corrected == 4.0
+    low, high = spread.interval()
+    assert low < 0.0 < high
+
+
+@pytest.mark.parametrize("level", [0.0, 1.0, 90.0, np.nan])
+def test_refuses_a_level_that_is_none(level):
+    spread = Spread(np.array(1.0), np.array(1.0), np.array(1.0), np.array(24, np.uint16))
+    with pytest.raises(SettingError):
+        spread.interval(level)
