@@ -277,7 +277,8 @@ def _named(
         names = tuple(f"{place + 1}" for place in kept)
         fields = f"none of the fields {', '.join(NAME_FIELDS)}"
         return names, attributes, [f"the polygons have {fields}, so they are numbered in order"]
-    names, missing, again = [], 0, 0
+    told: list[str] = []
+    missing, again = 0, 0
     taken: set[str] = set()
     for place, value in zip(kept, attributes[column].tolist(), strict=True):
         name = _text(value)
@@ -287,13 +288,13 @@ def _named(
             again += 1
             name = next(n for k in range(2, len(kept) + 2) if (n := f"{name} ({k})") not in taken)
         taken.add(name)
-        names.append(name)
+        told.append(name)
     notes = []
     if missing:
         notes.append(f"{counted(missing, 'polygon')} without a {column} numbered by place in file")
     if again:
         notes.append(f"{counted(again, 'polygon')} with the {column} of another told apart by (2)")
-    return tuple(names), attributes, notes
+    return tuple(told), attributes, notes
 
 
 def _name_column(columns: list[str], wanted: str | None) -> str | None:
