@@ -6,8 +6,8 @@ import pytest
 from terrasol.practice.heat_load import potential_radiation, regression
 
 # Latitude, slope, aspect; equations 1 to 3 with the fold of radiation, then with that of heat.
-# Equations 1 and 2 are logarithms. Level ground has no aspect. The paper's own table prints
-# -0.984 for equation 1 at 40, 30, 0; the authors' erratum agrees with the file.
+# Equations 1 and 2 are logarithms. Level ground has no aspect. By the authors' erratum the paper
+# too has -0.984 for equation 1 at 40, 30, 0.
 TABLE = (
     ((40, 0, np.nan), (-0.255118, -0.201840, 0.957964), (-0.255118, -0.201840, 0.957964)),
     ((40, 30, 0), (-0.983775, -0.889010, 0.571045), (-0.627967, -0.626899, 0.641633)),
