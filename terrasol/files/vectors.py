@@ -133,9 +133,9 @@ def read_polygons(
     with naming(path):
         with warnings.catch_warnings(record=True) as heard:
             warnings.simplefilter("always")
-            frame = _read(path, layer)
+            frame = read_features(path, layer, "Polygon")
         told = dict.fromkeys(" ".join(str(w.message).split()) for w in heard)
-        source = _source_crs(frame.crs, path)
+        source = source_crs(frame.crs, path)
         shapes, kept, left_out = _areas(np.asarray(frame.geometry.array, dtype=object))
         names, attributes, notes = _named(frame.drop(columns=frame.geometry.name), kept, name_field)
         moved = _moved(shapes, source, crs)
@@ -143,8 +143,8 @@ def read_polygons(
         return Polygons(names, repaired, crs, attributes, (*told, *left_out, *notes, *said))
 
 
-def _read(path: str | PathLike[str], layer: str | None) -> Any:
-    """The file's layer as a geopandas frame."""
+def read_features(path: str | PathLike[str], layer: str | None, kind: str) -> Any:
+    """Read a layer of a vector file as a geopandas frame; `kind` is "Polygon" or "Point"."""
     import geopandas
 
     _check_file(path)
@@ -153,7 +153,7 @@ def _read(path: str | PathLike[str], layer: str | None) -> Any:
             if layer is not None:
                 raise SettingError(f"{path}: a Parquet file has no layers: leave the layer out")
             return geopandas.read_parquet(path)
-        chosen = _layer(path, layer)
+        chosen = _layer(path, layer, kind)
         return geopandas.read_file(path, layer=chosen, engine="pyogrio", on_invalid="ignore")
     except (SettingError, InputError):
         raise
@@ -187,7 +187,7 @@ def _is_parquet(path: str | PathLike[str]) -> bool:
         return file.read(4) == PARQUET_BEGINS
 
 
-def _layer(path: str | PathLike[str], wanted: str | None) -> str:
+def _layer(path: str | PathLike[str], wanted: str | None, geometry: str) -> str:
     """The one layer to read."""
     import pyogrio
 
@@ -195,26 +195,28 @@ def _layer(path: str | PathLike[str], wanted: str | None) -> str:
     every = [name for name, _ in layers]
     if wanted is not None:
         if wanted not in every:
-            raise SettingError(f"{path} has no layer '{wanted}': it has {_list(every)}")
+            raise SettingError(f"{path} has no layer '{wanted}': it has {word_list(every)}")
         return wanted
     spatial = [name for name, kind in layers if kind is not None]
-    with_area = [n for n, kind in layers if kind and ("Polygon" in kind or kind == "Unknown")]
-    choice = with_area or spatial
+    fitting = [n for n, kind in layers if kind and (geometry in kind or kind == "Unknown")]
+    choice = fitting or spatial
     if not choice:
-        raise InputError("the file has no layer with geometry: give one with polygons")
+        raise InputError(f"the file has no layer with geometry: give one with {geometry.lower()}s")
     if len(choice) > 1:
-        raise InputError(f"the file has several layers, {_list(choice)}: choose one with --layer")
+        raise InputError(
+            f"the file has several layers, {word_list(choice)}: choose one with --layer"
+        )
     return choice[0]
 
 
-def _list(names: Sequence[str], most: int = 12) -> str:
-    """Word some names."""
+def word_list(names: Sequence[str], most: int = 12) -> str:
+    """Word some names, the first few in full."""
     shown = ", ".join(f"'{name}'" for name in names[:most])
     return shown + (f" and {len(names) - most} more" if len(names) > most else "")
 
 
-def _source_crs(crs: Any, path: str | PathLike[str]) -> CRS:
-    """The horizontal CRS of the file's coordinates."""
+def source_crs(crs: Any, path: str | PathLike[str]) -> CRS:
+    """Find the horizontal CRS of the file's coordinates."""
     if crs is None:
         hint = ", or bring its .prj file" if str(path).lower().endswith(".shp") else ""
         raise InputError(f"the file has no CRS: assign the one its coordinates are in{hint}")
@@ -235,7 +237,8 @@ def _areas(geometries: NDArray[Any]) -> tuple[list[Any], list[int], list[str]]:
     good = {*POLYGONS, "GeometryCollection"}
     if not found & good:
         raise InputError(
-            f"the file holds {_list(sorted(found))}, not polygons: give the outlines as polygons"
+            f"the file holds {word_list(sorted(found))}, not polygons: give the outlines as"
+            " polygons"
         )
     shapes, kept, empty, other = [], [], 0, 0
     for place, (geometry, kind) in enumerate(zip(geometries, kinds, strict=True)):
@@ -281,7 +284,7 @@ def _named(
     missing, again = 0, 0
     taken: set[str] = set()
     for place, value in zip(kept, attributes[column].tolist(), strict=True):
-        name = _text(value)
+        name = text_of(value)
         missing += not name
         name = name or f"unnamed {place + 1}"
         if name in taken:
@@ -301,14 +304,14 @@ def _name_column(columns: list[str], wanted: str | None) -> str | None:
     """The field that names the polygons."""
     if wanted is not None:
         if wanted not in columns:
-            raise InputError(f"there is no field '{wanted}': the file has {_list(columns)}")
+            raise InputError(f"there is no field '{wanted}': the file has {word_list(columns)}")
         return wanted
     lower = {column.lower(): column for column in reversed(columns)}
     return next((lower[name] for name in NAME_FIELDS if name in lower), None)
 
 
-def _text(value: Any) -> str:
-    """A name as text, nothing for no value; whole numbers without a point."""
+def text_of(value: Any) -> str:
+    """Word a name as text, nothing for no value; whole numbers without a point."""
     if value is None or (not isinstance(value, str) and pd.isna(value)):
         return ""
     if isinstance(value, float) and value.is_integer():
