@@ -7,16 +7,15 @@ from typing import Any
 
 import numpy as np
 from matplotlib import style
-from matplotlib.axes import Axes
 from numpy.typing import NDArray
 
 from terrasol import __version__
 from terrasol.engine.comparison import StationReport, amount_words, place_words
 from terrasol.engine.outputs import MONTH_NAMES
 from terrasol.light.comparison import Agreement, local_time
-from terrasol.show.contours import nice_step
 from terrasol.show.key import BAR_COLOUR, NOTE_LEADING, SMALL, TEXT
 from terrasol.show.page import INK, PAPER, POINTS_PER_PIXEL, SOFT, Page, clip, text_width, wrap
+from terrasol.show.panel import TICK, Panel, steps
 from terrasol.sky.period import parse_period
 from terrasol.sky.sun import sun_path, sun_series
 
@@ -27,12 +26,12 @@ DAYS_HEIGHT, BARS_HEIGHT, HORIZON_HEIGHT = 270, 210, 270
 GAP, GUTTER = 28, 100
 """Measures of the sheet [pixels]: between days, and between months and hours."""
 
-TITLE, SUBTITLE, TICK = 38.0, 21.0, 15.0
+TITLE, SUBTITLE = 38.0, 21.0
 """Sizes of letters [pixels]."""
 
 MEASURED, MEASURED_EDGE, MODELLED = "#f0d9ac", "#b08a4a", "#7c2760"
-GROUND, SUN, GRID = "#d8d2c6", "#d98a1f", "#e4e1da"
-"""Measured light as an area, the model as a line, terrain, the sun's paths, and the grid."""
+GROUND, SUN = "#d8d2c6", "#d98a1f"
+"""Measured light as an area, the model as a line, terrain, and the sun's paths."""
 
 WIDEST_BAR = 56.0
 """Of a month or an hour [pixels]."""
@@ -100,58 +99,6 @@ def _foot(report: StationReport) -> str:
     return f"terrasol {__version__}  ·  {place}{cell}{height}"
 
 
-class _Panel:
-    """Axes at a place of the sheet, with a heading above and sparse ticks."""
-
-    def __init__(self, page: Page, x: float, y: float, width: float, height: float) -> None:
-        self.page, self.x, self.y, self.width, self.height = page, x, y, width, height
-        box = (x / page.width, 1 - (y + height) / page.height,
-               width / page.width, height / page.height)  # fmt: skip
-        self.axes: Axes = page.figure.add_axes(box, facecolor="none")
-        self.axes.set_autoscale_on(False)
-        self.axes.tick_params(length=0, labelbottom=False, labelleft=False)
-        for name, spine in self.axes.spines.items():
-            spine.set_visible(name == "bottom")
-            spine.set(color=INK, linewidth=1.2 * POINTS_PER_PIXEL)
-
-    def limits(self, low_x: float, high_x: float, low_y: float, high_y: float) -> None:
-        """Set both ranges."""
-        self.axes.set_xlim(low_x, high_x)
-        self.axes.set_ylim(low_y, high_y)
-
-    def heading(self, words: str, unit: str = "", size: float = TEXT, rise: float = 18.0) -> None:
-        """Write above the panel."""
-        self.page.text(self.x, self.y - rise, words, size, bold=True)
-        if unit:
-            x = self.x + text_width(words, size, bold=True) + 10
-            self.page.text(x, self.y - rise, unit, SMALL, colour=SOFT)
-
-    def x_ticks(self, at: Sequence[float], words: Sequence[str], down: float = 22.0) -> None:
-        """Write below the panel."""
-        low, high = self.axes.get_xlim()
-        for value, word in zip(at, words, strict=True):
-            x = self.x + (value - low) / (high - low) * self.width
-            self.page.text(x, self.y + self.height + down, word, TICK, colour=SOFT, across="center")
-
-    def y_ticks(self, at: Sequence[float], words: bool = True) -> None:
-        """Draw lines across, and write beside the panel if asked for."""
-        low, high = self.axes.get_ylim()
-        for value in at:
-            self.axes.axhline(value, color=GRID, linewidth=POINTS_PER_PIXEL, zorder=0)
-            if words:
-                y = self.y + (high - value) / (high - low) * self.height
-                word = f"{value:g}".replace("-", "\N{MINUS SIGN}")
-                self.page.text(
-                    self.x - 10, y, word, TICK, colour=SOFT, across="right", down="center"
-                )
-
-
-def _steps(low: float, high: float, count: int) -> list[float]:
-    """Round values within a range, about `count` of them."""
-    step = nice_step(high - low, count)
-    return [float(k * step) for k in range(int(np.ceil(low / step)), int(high // step) + 1)]
-
-
 # Days
 
 
@@ -194,9 +141,9 @@ def _draw_days(page: Page, report: StationReport, top: float) -> None:
     low, high = np.floor(since[lit].min() - half), np.ceil(since[lit].max() + half)
     width = (WIDTH - MARGIN - LEFT - (MOST_DAYS - 1) * GAP) / MOST_DAYS
     for k, one in enumerate(days):
-        panel = _Panel(page, LEFT + k * (width + GAP), top, width, DAYS_HEIGHT)
+        panel = Panel(page, LEFT + k * (width + GAP), top, width, DAYS_HEIGHT)
         panel.limits(low, high, 0.0, 1.05 * most)
-        panel.y_ticks(_steps(0.0, 1.05 * most, 5), words=k == 0)
+        panel.y_ticks(steps(0.0, 1.05 * most, 5), words=k == 0)
         hours = [hour for hour in range(0, 25, 3) if low <= hour <= high]
         panel.x_ticks(hours, [str(hour) for hour in hours])
         _draw_day(panel, report, day == one, since)
@@ -210,7 +157,7 @@ def _series(report: StationReport) -> tuple[NDArray[np.float64], ...]:
 
 
 def _draw_day(
-    panel: _Panel, report: StationReport, which: NDArray[np.bool_], since: NDArray[np.float64]
+    panel: Panel, report: StationReport, which: NDArray[np.bool_], since: NDArray[np.float64]
 ) -> None:
     """One day's intervals, each as wide as it is long."""
     hours = report.station.seconds / 3600.0
@@ -273,15 +220,15 @@ def _draw_errors(page: Page, report: StationReport, top: float) -> None:
         ("by month", shown, LEFT, 0.42 * room),
         ("by hour of local mean solar time", by_hour, LEFT + 0.42 * room + GUTTER, 0.58 * room),
     ):
-        panel = _Panel(page, x, top, width, BARS_HEIGHT)
+        panel = Panel(page, x, top, width, BARS_HEIGHT)
         panel.limits(-0.6, len(groups) - 0.4, low, high)
         panel.heading(words, size=SMALL, rise=14.0)
         _draw_bars(panel, groups)
 
 
-def _draw_bars(panel: _Panel, groups: Mapping[str, Agreement]) -> None:
+def _draw_bars(panel: Panel, groups: Mapping[str, Agreement]) -> None:
     """One bar and one mark a group; how many intervals, if there is room."""
-    panel.y_ticks(_steps(*panel.axes.get_ylim(), 5))
+    panel.y_ticks(steps(*panel.axes.get_ylim(), 5))
     panel.axes.spines["bottom"].set_visible(False)
     panel.axes.axhline(0.0, color=INK, linewidth=1.2 * POINTS_PER_PIXEL, zorder=3)
     places = np.arange(len(groups))
@@ -316,12 +263,12 @@ def _draw_horizon(page: Page, report: StationReport, top: float) -> None:
     """The skyline by azimuth, and the sun's paths behind it."""
     latitude = report.station.latitude
     middle = 180.0 if latitude >= 0.0 else 0.0
-    panel = _Panel(page, LEFT, top, WIDTH - MARGIN - LEFT, HORIZON_HEIGHT)
+    panel = Panel(page, LEFT, top, WIDTH - MARGIN - LEFT, HORIZON_HEIGHT)
     horizon = report.spot.horizon
     paths = [_sun_of(report, month, day) for month, day in PATHS]
     highest = max(float(path[1].max(initial=0.0)) for path in paths)
     panel.limits(middle - 180, middle + 180, 0.0, min(max(highest, horizon.max()) + 6.0, 92.0))
-    panel.y_ticks(_steps(*panel.axes.get_ylim(), 6))
+    panel.y_ticks(steps(*panel.axes.get_ylim(), 6))
     panel.heading("Horizon from the station, and the sun", "degrees above the level, by azimuth")
     around = np.arange(-horizon.size, 2 * horizon.size + 1) * (360.0 / horizon.size)
     skyline = np.maximum(np.append(np.tile(horizon, 3), horizon[0]), 0.0)
@@ -346,7 +293,7 @@ def _sun_of(report: StationReport, month: int, day: int) -> tuple[Any, ...]:
     return sun.azimuth[up], sun.elevation[up], hour[up]
 
 
-def _draw_path(panel: _Panel, path: tuple[Any, ...], middle: float, name: str) -> None:
+def _draw_path(panel: Panel, path: tuple[Any, ...], middle: float, name: str) -> None:
     """A day's path: full where it is free, faint behind the ground; dots at the hours."""
     azimuth, elevation, hour = path
     if azimuth.size < 2:

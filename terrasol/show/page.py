@@ -183,10 +183,21 @@ class Page:
             autolim=False,
         )
 
-    def png(self, **metadata: str) -> bytes:
-        """The sheet as a PNG file with these text entries."""
+    def png(self, scale: float = 1.0, **metadata: str) -> bytes:
+        """The sheet as a PNG file with these text entries, `scale` dots a pixel."""
         out = io.BytesIO()
+        self.figure.set_dpi(DPI * scale)
         self.canvas.print_png(out, metadata=metadata, pil_kwargs={"compress_level": 4})
+        self.figure.set_dpi(DPI)
+        return out.getvalue()
+
+    def pdf(self, **metadata: str) -> bytes:
+        """The sheet as a PDF file of one page, DPI pixels an inch, its letters embedded.
+
+        Without a date, so that the same content gives the same bytes.
+        """
+        out = io.BytesIO()
+        self.figure.savefig(out, format="pdf", metadata={**metadata, "CreationDate": None})
         return out.getvalue()
 
 
