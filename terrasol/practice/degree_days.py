@@ -125,7 +125,7 @@ def winkler(
     InputError
         A month of the season of which the station knows too little.
     SettingError
-        A lapse rate, latitude or season out of range.
+        A lapse rate or season out of range.
 
     Notes
     -----

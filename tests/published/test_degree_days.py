@@ -44,8 +44,7 @@ def test_regions_of_the_towns(town, fahrenheit_days, region):
 
 
 def test_monthly_means_serve_a_warm_town_and_fall_short_in_a_cool_one():
-    # Davis: 2141.7 from monthly means for 2145.6 degC day; Yakima: 1228.9 for 1315.6, 6.6 % low,
-    # which is a class of its own only by chance of the edges.
+    # Davis: 2141.7 from monthly means for 2145.6 degC day; Yakima: 1228.9 for 1315.6, 6.6 % low.
     for town, monthly, daily in (("Davis", 2141.7, 2145.6), ("Yakima", 1228.9, 1315.6)):
         means = station(np.divide(BASE_40[town], MONTH_DAYS) + 40.0)
         got = winkler(means, 0.0, latitude=40.0)
