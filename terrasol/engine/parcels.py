@@ -1,0 +1,318 @@
+"""Parcels surveyed: their ground, light and warmth, ranked, and told at coarser cell sizes."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+from functools import partial
+from typing import Any, Final
+
+import numpy as np
+from numpy.typing import NDArray
+
+from terrasol.engine.job import NO_SCENE, plan_terrain
+from terrasol.engine.parcel_cells import Piece, SceneOf, pieces_of
+from terrasol.engine.parcel_figures import (
+    QUANTITIES,
+    WARM_QUANTITIES,
+    Asked,
+    Figure,
+    Level,
+    figures_of,
+    patches_of,
+)
+from terrasol.engine.plan import Block, Progress, carry_out, default_threads
+from terrasol.engine.windows import collect
+from terrasol.errors import SettingError
+from terrasol.files.vectors import Polygons
+from terrasol.ground.elevation import Elevation
+from terrasol.ground.frame import make_frame
+from terrasol.ground.grain import coarsened
+from terrasol.light.hours import HoursSettings, TimeTables
+from terrasol.light.settings import LightSettings
+from terrasol.light.tables import SkyTables
+from terrasol.practice.ranking import Ranking, Score, parse_score, rank
+from terrasol.practice.rules import Patches
+
+COARSER: Final = (2, 4)
+"""Cells joined along a side for the two coarser looks at the same ground (judgement)."""
+
+HORIZON_AZIMUTHS: Final = 256
+"""Azimuths of the horizon that a sheet shows."""
+
+
+@dataclass(frozen=True)
+class ParcelSettings:
+    """What is to be found out of parcels.
+
+    Parameters
+    ----------
+    light : LightSettings
+        What light: per area of slope, in MJ m-2.
+    hours : HoursSettings
+        Which hours of sun.
+    asked : Asked
+        How to tell of it.
+    score : str, optional
+        A weighted sum of figures that ranks the parcels; see `parse_score`.
+    coarser : tuple of int
+        How many cells are joined along a side for each coarser look.
+
+    Raises
+    ------
+    SettingError
+        Another unit or basis, a clear-sky index or albedo by cell, a factor under 2.
+    """
+
+    light: LightSettings
+    hours: HoursSettings
+    asked: Asked
+    score: str | None = None
+    coarser: tuple[int, ...] = COARSER
+
+    def __post_init__(self) -> None:
+        """Refuse what makes no sense."""
+        if self.light.unit != "MJ m-2" or self.light.basis != "slope":
+            raise SettingError("parcels are told in MJ m-2 per area of slope")
+        if self.light.index_map is not None or self.light.albedo_map is not None:
+            raise SettingError("parcels take no map of albedo or of the clear-sky index")
+        for factor in self.coarser:
+            if factor < 2:
+                raise SettingError(f"cells are joined 2 by 2 at least; got {factor}")
+
+
+@dataclass(frozen=True, eq=False)
+class Parcel:
+    """All that is found out of one parcel.
+
+    Parameters
+    ----------
+    name : str
+        Unique.
+    outline : shapely geometry
+        In the ground's CRS.
+    piece : Piece
+        Its cells.
+    level : Level
+        Open level ground beside it.
+    figures : list of Figure
+        Its numbers.
+    coarser : list of (float, list of Figure)
+        Cell size [m] and numbers at each coarser look; no numbers where it has no cell.
+    horizon : ndarray, shape (azimuths,)
+        Of the cell nearest its middle [degrees], north first, clockwise.
+    patches : Patches, optional
+        Where it meets the rule.
+    """
+
+    name: str
+    outline: Any
+    piece: Piece
+    level: Level
+    figures: list[Figure]
+    coarser: list[tuple[float, list[Figure]]]
+    horizon: NDArray[np.float64]
+    patches: Patches | None = None
+
+    @property
+    def numbers(self) -> dict[str, float]:
+        """Its figures that are numbers, by name."""
+        return numbers_of(self.figures)
+
+
+@dataclass(frozen=True, eq=False)
+class Survey:
+    """All parcels.
+
+    Parameters
+    ----------
+    parcels : list of Parcel
+        In the order of the file, those outside the raster left out.
+    settings : ParcelSettings
+        What was asked.
+    cell_size : float
+        Of the raster [m].
+    ranking : Ranking, optional
+        By the score, of `parcels` in their order.
+    score : Score, optional
+        The score.
+    warnings : list of str
+        What a careful reader should know.
+    """
+
+    parcels: list[Parcel]
+    settings: ParcelSettings
+    cell_size: float
+    ranking: Ranking | None = None
+    score: Score | None = None
+    warnings: list[str] = field(default_factory=list)
+
+    @property
+    def order(self) -> list[Parcel]:
+        """From the best to the last, or as in the file."""
+        if self.ranking is None:
+            return self.parcels
+        return [self.parcels[k] for k in self.ranking.order]
+
+
+def numbers_of(figures: Sequence[Figure]) -> dict[str, float]:
+    """Figures that are numbers, by name."""
+    return {f.name: f.value for f in figures if not isinstance(f.value, str)}
+
+
+def rule_names(warm: bool) -> list[str]:
+    """Names that a rule may use."""
+    return [*QUANTITIES, *(WARM_QUANTITIES if warm else ())]
+
+
+def survey(
+    elevation: Elevation,
+    polygons: Polygons,
+    settings: ParcelSettings,
+    scene_of: SceneOf = lambda elevation, frame: NO_SCENE,
+    threads: int | None = None,
+    progress: Progress | None = None,
+) -> Survey:
+    """Find out all of some parcels.
+
+    Parameters
+    ----------
+    elevation : Elevation
+        The ground; all of it counts as horizon.
+    polygons : Polygons
+        The parcels, in its CRS.
+    settings : ParcelSettings
+    scene_of : callable
+        What stands beyond and above a ground, given it and its frame.
+    threads : int, optional
+        Default: as many as there are cores to use.
+    progress : callable, optional
+        Told the share done and the stage.
+
+    Returns
+    -------
+    Survey
+
+    Raises
+    ------
+    SettingError
+        A score that speaks of what no parcel has.
+    InputError
+        Parcels outside the raster or on void ground; a raster that cannot be placed.
+    """
+    told = progress or (lambda share, stage: None)
+    factors = (1, *settings.coarser)
+    work = np.cumsum([0.0, *(1.0 / factor**2 for factor in factors)])
+    work *= 0.85 / work[-1]
+    looks, warnings = [], list(polygons.warnings)
+    levels: list[Level | None] = []
+    for k, factor in enumerate(factors):
+        ground = coarsened(elevation, factor)
+        pieces, notes = pieces_of(
+            ground, polygons, settings.light, settings.hours, scene_of, threads,
+            partial(_told_part, told, work[k], work[k + 1]),
+        )  # fmt: skip
+        if factor == 1:
+            warnings += notes
+            levels = _levels(pieces, settings, threads)
+        frame = make_frame(ground.shape, ground.transform, ground.crs)
+        looks.append((float(np.sqrt(np.prod(frame.cell_size))), pieces))
+    fine = [(k, piece) for k, piece in enumerate(looks[0][1]) if piece is not None]
+    horizons = _horizons(elevation, [piece for _, piece in fine], settings, scene_of, threads)
+    told(0.95, "figures")
+    parcels = []
+    for (k, piece), horizon in zip(fine, horizons, strict=True):
+        level = levels[k]
+        assert level is not None
+        parcels.append(
+            Parcel(
+                piece.name, polygons.geometries[k], piece, level,
+                figures_of(piece, level, settings.asked),
+                [(size, _figures(each[k], level, settings.asked)) for size, each in looks[1:]],
+                horizon,
+                patches_of(piece, level, settings.asked)[0] if settings.asked.rule else None,
+            )
+        )  # fmt: skip
+    told(1.0, "figures")
+    return _ranked(parcels, settings, looks[0][0], warnings)
+
+
+def _told_part(told: Progress, first: float, last: float, share: float, stage: str) -> None:
+    """Tell the progress of a part of the whole."""
+    told(first + share * (last - first), stage)
+
+
+def _figures(piece: Piece | None, level: Level, asked: Asked) -> list[Figure]:
+    """Numbers of a coarser look."""
+    return [] if piece is None else figures_of(piece, level, asked)
+
+
+def _ranked(
+    parcels: list[Parcel], settings: ParcelSettings, cell_size: float, warnings: list[str]
+) -> Survey:
+    """Order the parcels, if there is a score."""
+    if settings.score is None:
+        return Survey(parcels, settings, cell_size, warnings=warnings)
+    columns = {name: np.array([p.numbers[name] for p in parcels]) for name in parcels[0].numbers}
+    score = parse_score(settings.score, columns)
+    return Survey(parcels, settings, cell_size, rank(score, columns), score, warnings)
+
+
+def _levels(
+    pieces: Sequence[Piece | None], settings: ParcelSettings, threads: int | None
+) -> list[Level | None]:
+    """Open level ground at the latitude and mean height of each parcel."""
+    there = [piece for piece in pieces if piece is not None and np.isfinite(piece.height)]
+    latitudes = [piece.latitude for piece in there]
+    heights = [piece.height for piece in there]
+    longitude = float(there[0].longitude)
+    ends = (min(latitudes), max(latitudes)), (min(heights), max(heights))
+    light = SkyTables.over(settings.light, longitude, *ends)
+    hours = TimeTables.over(settings.hours, longitude, *ends)
+    for _ in carry_out([*light.tasks, *hours.tasks], threads or default_threads()):
+        pass
+
+    def level(piece: Piece) -> Level:
+        by_height = light.exactly(piece.latitude).table.level
+        months = [np.interp(piece.height, light.heights, month) for month in by_height.T]
+        return Level(np.array(months), hours.level(piece.latitude, piece.height)[0])
+
+    unknown = np.full(len(settings.light.period.months), np.nan)
+    return [
+        None
+        if piece is None
+        else level(piece)
+        if np.isfinite(piece.height)
+        else Level(unknown, unknown)
+        for piece in pieces
+    ]
+
+
+def middle_cell(piece: Piece) -> tuple[int, int]:
+    """The cell of the window nearest the parcel's middle: whole, if it has a whole one."""
+    weights = piece.weights if piece.known.any() else piece.area
+    rows, columns = np.nonzero(weights >= 0.999 * weights.max())
+    every = np.indices(weights.shape)
+    middle = [float(np.average(axis, weights=weights)) for axis in every]
+    nearest = int(np.argmin((rows - middle[0]) ** 2 + (columns - middle[1]) ** 2))
+    return int(rows[nearest]), int(columns[nearest])
+
+
+def _horizons(
+    elevation: Elevation,
+    pieces: Sequence[Piece],
+    settings: ParcelSettings,
+    scene_of: SceneOf,
+    threads: int | None,
+) -> list[NDArray[np.float64]]:
+    """The horizon of the cell nearest the middle of each parcel."""
+    plan = plan_terrain(
+        elevation, HORIZON_AZIMUTHS, horizon=True, refraction=settings.light.refraction
+    )
+    plan.scene = scene_of(elevation, plan.frame)
+    windows = []
+    for piece in pieces:
+        row, column = middle_cell(piece)
+        windows.append(Block(piece.window.row + row, piece.window.column + column, 1, 1))
+    found, _ = collect(plan, windows, threads, None, ("horizon",))
+    return [each["horizon"][:, 0, 0].astype(np.float64) for each in found]

@@ -1,0 +1,253 @@
+"""Parcels on ground whose slope, light and areas are known."""
+
+from __future__ import annotations
+
+import numpy as np
+import pytest
+import shapely
+from pyproj import CRS, Transformer
+
+from terrasol.engine.parcel_cells import pieces_of
+from terrasol.engine.parcel_figures import Asked, season_places
+from terrasol.engine.parcels import ParcelSettings, rule_names, survey
+from terrasol.errors import InputError, SettingError
+from terrasol.files.vectors import Polygons
+from terrasol.ground.elevation import Elevation
+from terrasol.light.days import parse_days
+from terrasol.light.hours import HoursSettings
+from terrasol.light.settings import LightSettings
+from terrasol.practice.rules import parse_rule
+from terrasol.practice.season import NORTHERN_SEASON, SOUTHERN_SEASON
+from terrasol.sky.clear import Air
+from terrasol.sky.period import parse_period
+
+CELL, LEFT, TOP = 10.0, 500000.0, 5100400.0
+UTM = "EPSG:32632"  # its central meridian, 9 east, runs through the middle of these grounds
+AIR = Air.ineichen(3.0)
+
+
+def plane(percent: float, toward: float, size: int = 80) -> Elevation:
+    """Ground that falls evenly towards an azimuth, counted in the grid."""
+    row, column = np.indices((size, size))
+    east, north = CELL * (column - size / 2), -CELL * (row - size / 2)
+    down = np.sin(np.radians(toward)) * east + np.cos(np.radians(toward)) * north
+    heights = 500.0 - percent / 100.0 * down
+    return Elevation.from_array(heights, (CELL, 0, LEFT, 0, -CELL, TOP), UTM)
+
+
+def asked_for(period=None, season=NORTHERN_SEASON, **more) -> ParcelSettings:
+    whole = parse_period(period)
+    own = {k: more.pop(k) for k in ("score", "coarser") if k in more}
+    light = LightSettings(whole, AIR, azimuths=16, step_seconds=300.0)
+    hours = HoursSettings(whole, AIR, parse_days(None, whole), azimuths=32, step_seconds=300.0)
+    if "rule" in more:
+        more["rule"] = parse_rule(more["rule"], rule_names(warm=False))
+    return ParcelSettings(light, hours, Asked(whole, season, **more), **own)
+
+
+def parcels(*shapes, crs=UTM) -> Polygons:
+    return Polygons(tuple(f"P{k}" for k in range(len(shapes))), tuple(shapes), CRS(crs))
+
+
+def box(x0, y0, x1, y1):
+    """A rectangle counted from the middle of the ground, in metres."""
+    return shapely.box(LEFT + 400 + x0, TOP - 400 + y0, LEFT + 400 + x1, TOP - 400 + y1)
+
+
+SCALE = 0.9996**-2  # true area by map area on the central meridian of UTM
+
+
+def test_a_plane_of_twelve_percent_is_all_in_its_class():
+    found = survey(plane(12.0, 180.0), parcels(box(-100, -50, 105, 50)), asked_for(coarser=(2,)))
+    parcel = found.parcels[0]
+    numbers = parcel.numbers
+    area = 205 * 100 / 1e4 * SCALE
+    # The grid's metre is 0.04 % short there, so 12 % of the grid is 11.995 % of the ground.
+    steep = 12.0 * 0.9996
+    assert numbers["map_area_ha"] == pytest.approx(area, rel=1e-5)
+    assert numbers["slope_10_to_15_percent_ha_map"] == pytest.approx(area, rel=1e-5)
+    for name in ("under_5", "5_to_10", "15_to_20", "20_to_30", "from_30"):
+        assert numbers[f"slope_{name}_percent_ha_map"] == 0.0
+    for name in ("mean", "p10", "p50", "p90"):
+        assert numbers[f"slope_{name}_percent"] == pytest.approx(steep, abs=2e-3)
+    wider = np.hypot(1.0, steep / 100.0)
+    assert numbers["surface_area_ha"] == pytest.approx(area * wider, rel=1e-5)
+    assert numbers["aspect_mean_deg"] == pytest.approx(180.0, abs=0.1)
+    assert numbers["aspect_resultant"] == pytest.approx(1.0, abs=1e-6)
+    assert numbers["aspect_s_ha_map"] == pytest.approx(area, rel=1e-5)
+    # Rows 35 to 44; the plane has 500 m in row 40 and rises northwards by 1.2 m a row.
+    assert numbers["height_mean_m"] == pytest.approx(500.0 + 1.2 * 0.5, abs=1e-3)
+    size, coarse = parcel.coarser[0]
+    assert size == pytest.approx(20.0, rel=1e-3)
+    by_name = {f.name: f.value for f in coarse}
+    assert by_name["map_area_ha"] == pytest.approx(area, rel=1e-5)
+    assert by_name["slope_10_to_15_percent_ha_map"] == pytest.approx(area, rel=1e-5)
+
+
+def test_half_covered_cells_count_half():
+    """A strip half a cell wide on the border of two slopes has half of each cell's area."""
+    found = survey(plane(12.0, 90.0), parcels(box(0, 0, 5, 40)), asked_for(coarser=()))
+    numbers = found.parcels[0].numbers
+    assert numbers["map_area_ha"] == pytest.approx(0.02 * SCALE, rel=1e-5)
+    assert numbers["slope_10_to_15_percent_ha_map"] == pytest.approx(0.02 * SCALE, rel=1e-5)
+
+
+def test_level_ground_gets_what_level_ground_gets():
+    found = survey(plane(0.0, 0.0), parcels(box(-50, -50, 50, 50)), asked_for(coarser=()))
+    numbers = found.parcels[0].numbers
+    assert numbers["share_of_level_season"] == pytest.approx(1.0, abs=2e-3)
+    assert numbers["share_of_level_m12"] == pytest.approx(1.0, abs=2e-3)
+    season = sum(numbers[f"irradiation_m{m:02d}_mj_m2_slope"] for m in range(4, 11))
+    assert numbers["irradiation_season_mj_m2_slope"] == pytest.approx(season)
+    assert numbers["irradiation_season_mj_m2_d_slope"] == pytest.approx(season / 214)
+    assert numbers["sun_hours_season_h"] == pytest.approx(
+        numbers["sun_hours_season_level_h"], rel=1e-3
+    )
+    assert np.isnan(numbers["aspect_mean_deg"])
+    assert numbers["aspect_flat_ha_map"] == pytest.approx(numbers["map_area_ha"])
+    noon = (numbers["first_sun_m03_h"] + numbers["last_sun_m03_h"]) / 2.0
+    assert noon == pytest.approx(12.0, abs=0.02)
+    assert numbers["no_sun_share_m12"] == 0.0
+
+
+def test_south_beats_north_in_the_north_and_loses_in_the_south():
+    shape = box(-50, -50, 50, 50)
+    south = survey(plane(30.0, 180.0), parcels(shape), asked_for(coarser=())).parcels[0].numbers
+    north = survey(plane(30.0, 0.0), parcels(shape), asked_for(coarser=())).parcels[0].numbers
+    assert south["share_of_level_season"] > 1.0 > north["share_of_level_season"]
+    below = Elevation(
+        plane(30.0, 180.0).heights, (CELL, 0, LEFT, 0, -CELL, 4900400.0), CRS("EPSG:32732")
+    )
+    there = parcels(shapely.affinity.translate(shape, 0.0, 4900400.0 - TOP), crs="EPSG:32732")
+    other = survey(below, there, asked_for(season=SOUTHERN_SEASON, coarser=())).parcels[0].numbers
+    assert other["share_of_level_season"] < 1.0
+
+
+def test_the_rule_counts_what_meets_it_and_leaves_out_small_patches():
+    """Ground of 10 % with a step of 40 %: two parts of known size, the smaller ignored."""
+    base = plane(10.0, 180.0)
+    heights = base.heights.copy()
+    east = np.arange(80)
+    heights[:, east >= 42] += 4.0 * (np.minimum(east[east >= 42], 50) - 41)  # steep from 42 to 50
+    ground = Elevation(heights, base.transform, base.crs)
+    shape = box(-100, -100, 140, 100)
+    whole = asked_for(coarser=(), rule="slope_percent < 15")
+    least = asked_for(coarser=(), rule="slope_percent < 15", least_patch=8000.0)
+    both, one = (survey(ground, parcels(shape), s).parcels[0].numbers for s in (whole, least))
+    assert both["rule_patches"] == 2
+    west = 11 * 20 * 100 / 1e4 * SCALE  # columns 30 to 40
+    east_part = 3 * 20 * 100 / 1e4 * SCALE  # columns 51 to 53
+    assert both["rule_ha_map"] == pytest.approx(west + east_part, rel=1e-4)
+    assert one["rule_ha_map"] == pytest.approx(west, rel=1e-4)
+    assert one["rule_ignored_ha_map"] == pytest.approx(east_part, rel=1e-4)
+    assert one["rule_share"] == pytest.approx(west / (24 * 20 * 100 / 1e4 * SCALE), rel=1e-4)
+
+
+def hill(crs: str, cell: float, size: int, centre: tuple[float, float]) -> Elevation:
+    """One hill of the Earth, seen on the grid of any CRS."""
+    x0, y0 = Transformer.from_crs(4326, crs, always_xy=True).transform(*centre)
+    row, column = np.indices((size, size))
+    x, y = x0 + cell * (column - (size - 1) / 2), y0 - cell * (row - (size - 1) / 2)
+    here = f"+proj=aeqd +lon_0={centre[0]} +lat_0={centre[1]} +datum=WGS84"
+    east, north = Transformer.from_crs(crs, here, always_xy=True).transform(x, y)
+    heights = 400.0 + 150.0 * np.exp(-(east**2 + north**2) / 500.0**2)
+    corner = x0 - cell * size / 2, y0 + cell * size / 2
+    return Elevation.from_array(heights, (cell, 0, corner[0], 0, -cell, corner[1]), crs)
+
+
+@pytest.mark.parametrize(
+    ("crs", "cell"), [("EPSG:3857", 20.0), ("EPSG:4326", 0.0001), ("EPSG:32633", 10.0)]
+)
+def test_hectares_are_true_in_any_crs(crs, cell):
+    """A square of 200 m at 60 north has 4 ha, though the web map makes it 16."""
+    centre = (10.0, 60.0)
+    here = f"+proj=aeqd +lon_0={centre[0]} +lat_0={centre[1]} +datum=WGS84"
+    back = Transformer.from_crs(here, crs, always_xy=True)
+    square = shapely.segmentize(shapely.box(-100, -50, 100, 150), 20.0)
+    shape = shapely.transform(square, lambda p: np.column_stack(back.transform(p[:, 0], p[:, 1])))
+    ground = hill(crs, cell, 120, centre)
+    numbers = survey(ground, parcels(shape, crs=crs), asked_for(coarser=())).parcels[0].numbers
+    assert numbers["map_area_ha"] == pytest.approx(4.0, rel=2e-4)
+    # The hill's own slope and aspect over the square, by brute force.
+    east, north = np.meshgrid(np.arange(-99.5, 100), np.arange(-49.5, 150))
+    rise = 150.0 * np.exp(-(east**2 + north**2) / 500.0**2) * 2.0 / 500.0**2
+    steep = 100.0 * rise * np.hypot(east, north)
+    assert numbers["slope_mean_percent"] == pytest.approx(steep.mean(), rel=0.01)
+    within = (steep >= 5.0) & (steep < 10.0)
+    assert numbers["slope_5_to_10_percent_ha_map"] == pytest.approx(4.0 * within.mean(), abs=0.06)
+
+
+def test_outside_void_and_order():
+    ground = plane(12.0, 180.0)
+    ground.heights[:, :20] = np.nan
+    shapes = parcels(box(-50, -50, 50, 50), box(5000, 0, 5100, 50), box(-390, 0, -300, 50))
+    found = survey(ground, shapes, asked_for(coarser=(2,), score="-unknown_ha_map"))
+    assert [p.name for p in found.parcels] == ["P0", "P2"]
+    assert any("'P1' lies outside" in text for text in found.warnings)
+    void = found.parcels[1].numbers
+    assert void["unknown_ha_map"] == pytest.approx(void["map_area_ha"])
+    assert np.isnan(void["slope_mean_percent"])
+    assert np.isnan(void["slope_10_to_15_percent_ha_map"])
+    assert [p.name for p in found.order] == ["P0", "P2"]
+    with pytest.raises(InputError, match="void ground"):
+        survey(ground, parcels(box(-390, 0, -300, 50)), asked_for(coarser=()))
+
+
+def test_score_ranks_and_refuses_what_no_parcel_has():
+    ground = plane(12.0, 180.0)
+    shapes = parcels(box(-50, -50, 0, 50), box(0, -50, 200, 50))
+    found = survey(ground, shapes, asked_for(coarser=(), score="map_area_ha - 1"))
+    assert [p.name for p in found.order] == ["P1", "P0"]
+    assert found.ranking.rank.tolist() == [2, 1]
+    with pytest.raises(SettingError, match="slope_meen_percent"):
+        survey(ground, shapes, asked_for(coarser=(), score="-slope_meen_percent"))
+
+
+def test_results_do_not_depend_on_other_parcels_or_threads():
+    ground = plane(20.0, 140.0)
+    one = survey(ground, parcels(box(-50, -50, 20, 50)), asked_for(coarser=()), threads=1)
+    two = survey(
+        ground,
+        parcels(box(-50, -50, 20, 50), box(100, 100, 200, 200)),
+        asked_for(coarser=()),
+        threads=2,
+    )
+    alone, beside = one.parcels[0].numbers, two.parcels[0].numbers
+    assert alone.keys() == beside.keys()
+    for name, value in alone.items():
+        assert beside[name] == pytest.approx(value, rel=1e-5, nan_ok=True), name
+
+
+def test_season_of_a_period():
+    assert season_places(parse_period(None), SOUTHERN_SEASON) == (9, 10, 11, 0, 1, 2, 3)
+    two = parse_period("2023-10/2025-10")
+    assert season_places(two, NORTHERN_SEASON) == tuple(range(18, 25))  # the last whole one
+    assert season_places(two, SOUTHERN_SEASON) == tuple(range(12, 19))
+    with pytest.raises(SettingError, match="no whole growing season, April to October"):
+        season_places(parse_period("2025-04-02/2025-10-31"), NORTHERN_SEASON)
+
+
+def test_first_sun_behind_a_wall_comes_late():
+    """East of the parcel stands a wall of 45 degrees: the equinox sun passes it about 10:50."""
+    heights = np.zeros((80, 80))
+    heights[:, 60:] = 300.0
+    ground = Elevation.from_array(heights, (CELL, 0, LEFT, 0, -CELL, TOP), UTM)
+    shape = box(-105, -5, -95, 5)  # 300 m before the wall's foot
+    numbers = survey(ground, parcels(shape), asked_for(coarser=())).parcels[0].numbers
+    open_ground = survey(plane(0.0, 0.0), parcels(shape), asked_for(coarser=())).parcels[0].numbers
+    assert numbers["first_sun_m06_h"] > open_ground["first_sun_m06_h"] + 3.0
+    assert numbers["last_sun_m06_h"] == pytest.approx(open_ground["last_sun_m06_h"], abs=0.02)
+    assert numbers["sun_hours_m06_h"] < open_ground["sun_hours_m06_h"] - 30 * 3.0
+
+
+def test_pieces_hold_true_areas():
+    pieces, _ = pieces_of(
+        plane(5.0, 0.0), parcels(box(0, 0, 10, 10)), asked_for().light, None, lambda e, f: _none()
+    )
+    assert pieces[0].area.sum() == pytest.approx(100.0 * SCALE, rel=1e-5)
+
+
+def _none():
+    from terrasol.engine.job import NO_SCENE
+
+    return NO_SCENE
