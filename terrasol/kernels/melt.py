@@ -120,7 +120,7 @@ def _cell_day(
 ):
     """One day of cell `c`; see `melt_day`."""
     solid, wet = ice[c], liquid[c]
-    age, warmth, fresh, albedo = skin[0, c], skin[1, c], skin[2, c], float(skin[3, c])
+    age, warmth, fresh, albedo = skin[c, 0], skin[c, 1], skin[c, 2], float(skin[c, 3])
     if kind == MEASURED and solid > 0.0:
         albedo = _snow_albedo(kind, numbers, age, warmth, solid + wet, measured)
     more = max(1.0 + numbers[9] * 1e-4 * above, 0.0)
@@ -133,12 +133,12 @@ def _cell_day(
             solid += snow
             fresh += snow
             snowed = snowed or snow > 0.0
-            moved[0, c] += snow
+            moved[c, 0] += snow
             if solid > 0.0:
                 wet += rain
-                moved[1, c] += rain
+                moved[c, 1] += rain
             else:
-                moved[2, c] += rain
+                moved[c, 2] += rain
             if fresh >= numbers[13]:
                 fresh, renewed = 0.0, True
             if renewed:
@@ -150,9 +150,9 @@ def _cell_day(
             solid, wet, melt, refrozen, outflow = _pack_hour(
                 numbers, solid, wet, air, wanted, slope
             )
-            moved[3, c] += melt
-            moved[4, c] += refrozen
-            moved[5, c] += outflow
+            moved[c, 3] += melt
+            moved[c, 4] += refrozen
+            moved[c, 5] += outflow
             warmest = max(warmest, air)
             age += 1.0 / 24.0
     if solid > 0.0:
@@ -162,7 +162,7 @@ def _cell_day(
     else:
         age, warmth, fresh, albedo = 0.0, 0.0, 0.0, numbers[12]
     ice[c], liquid[c] = solid, wet
-    skin[0, c], skin[1, c], skin[2, c], skin[3, c] = age, warmth, fresh, albedo
+    skin[c, 0], skin[c, 1], skin[c, 2], skin[c, 3] = age, warmth, fresh, albedo
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
@@ -181,8 +181,8 @@ def melt_day(
     above : (cells,) float32, height above the station [m]
     steep : (cells,) float32, area of slope by area of map; NaN where void
     ice, liquid : (cells,) float64, in and out: water of the snow, frozen and liquid [mm]
-    skin : (4, cells) float32, in and out, see `SKIN`
-    moved : (6, cells) float64, out, see `FLOWS`; 0 where void
+    skin : (cells, 4) float32, in and out, see `SKIN`
+    moved : (cells, 6) float64, out, see `FLOWS`; 0 where void
     """
     moved[:] = 0.0
     for c in range(steep.size):
@@ -199,11 +199,11 @@ def zone_sums(zone, weight, values, out):
 
     zone : (cells,) int32, below 0 for none
     weight : (cells,) float64
-    values : (quantities, cells) float64
+    values : (cells, quantities) float64
     out : (zones, quantities) float64, added to
     """
     for c in range(zone.size):
         z = zone[c]
         if z >= 0:
-            for q in range(values.shape[0]):
-                out[z, q] += weight[c] * values[q, c]
+            for q in range(values.shape[1]):
+                out[z, q] += weight[c] * values[c, q]

@@ -188,8 +188,8 @@ class SnowModel:
                 f"the lapse rate must be one number or twelve from {low:g} to {high:g} K/km, more"
                 " than 0 where it is colder above"
             )
-        for name, value in self.changed.items():
-            check_number(name, value)
+        for key, number in self.changed.items():
+            check_number(key, number)
 
     @cached_property
     def numbers(self) -> dict[str, float]:
@@ -252,7 +252,7 @@ class Snow:
     ----------
     ice, liquid : ndarray of float64, shape (cells,)
         Water of the snow, frozen and liquid [mm on map area].
-    skin : ndarray of float32, shape (4, cells)
+    skin : ndarray of float32, shape (cells, 4)
         See `terrasol.kernels.melt.SKIN`.
     """
 
@@ -263,8 +263,8 @@ class Snow:
     @classmethod
     def none(cls, cells: int, model: SnowModel) -> Snow:
         """Bare ground."""
-        skin = np.zeros((len(kernel.SKIN), cells), np.float32)
-        skin[-1] = model.numbers["ground_albedo"]
+        skin = np.zeros((cells, len(kernel.SKIN)), np.float32)
+        skin[:, -1] = model.numbers["ground_albedo"]
         return cls(np.zeros(cells), np.zeros(cells), skin)
 
     @property
@@ -275,11 +275,11 @@ class Snow:
     @property
     def albedo(self) -> NDArray[np.float32]:
         """Of the snow, or of the ground where none lies."""
-        return self.skin[-1]
+        return self.skin[:, -1]
 
     def part(self, cells: slice) -> Snow:
         """Some of the cells; a view."""
-        return Snow(self.ice[cells], self.liquid[cells], self.skin[:, cells])
+        return Snow(self.ice[cells], self.liquid[cells], self.skin[cells])
 
 
 @dataclass(frozen=True, eq=False)
@@ -357,7 +357,7 @@ def snow_day(
 
     Returns
     -------
-    ndarray of float64, shape (6, cells)
+    ndarray of float64, shape (cells, 6)
         What moved [mm on map area], in the order of `terrasol.kernels.melt.FLOWS`.
 
     Notes
@@ -374,7 +374,7 @@ def snow_day(
     water closes as snowfall + refrozen = melt + what lies, all water as snowfall + rain on snow =
     outflow + what lies.
     """
-    moved = np.empty((len(kernel.FLOWS), steep.size))
+    moved = np.empty((steep.size, len(kernel.FLOWS)))
     measured = 0.0 if weather.albedo is None else float(weather.albedo[day])
     kernel.melt_day(
         MELT_MODELS[model.melt][0], ALBEDO_MODELS[model.albedo][0], model.vector,

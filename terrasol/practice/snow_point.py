@@ -72,7 +72,7 @@ def point_snow(
     water, albedo = np.empty((2, weather.days))
     moved = np.empty((weather.days, 6))
     for day in range(weather.days):
-        moved[day] = snow_day(model, weather, day, shine[day], height, one, snow)[:, 0]
+        moved[day] = snow_day(model, weather, day, shine[day], height, one, snow)[0]
         water[day], albedo[day] = snow.water[0], snow.albedo[0]
     return PointSnow(water, moved, albedo)
 

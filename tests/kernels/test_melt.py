@@ -41,12 +41,13 @@ def test_water_is_neither_lost_nor_made(melt, albedo):
     above = np.linspace(-900.0, 2500.0, cells, dtype=np.float32)
     steep = np.linspace(1.0, 2.0, cells, dtype=np.float32)
     snow = Snow.none(cells, model)
-    total = np.zeros((6, cells))
+    total = np.zeros((cells, 6))
     for day in range(days):
         total += snow_day(model, weather, day, light[day], above, steep, snow)
         assert (snow.ice >= 0.0).all()
         assert (snow.liquid >= 0.0).all()
         assert ((snow.albedo >= 0.2 - 1e-6) & (snow.albedo <= 0.85 + 1e-6)).all()
+    total = total.T
     scale = total[FALL] + total[ON_SNOW]
     assert scale.min() > 1.0
     frozen = total[FALL] + total[REFROZEN] - total[MELT] - snow.ice
@@ -132,7 +133,7 @@ def test_against_a_plain_second_way(melt, albedo):
     state, ours, theirs = (0.0, 0.0, 0.0, 0.0, 0.0, 0.2), 0.0, 0.0
     high, wide = np.full(3, above, np.float32), np.full(3, steep, np.float32)
     for day in range(days):
-        ours += snow_day(model, weather, day, light[day], high, wide, snow)[MELT, 2]
+        ours += snow_day(model, weather, day, light[day], high, wide, snow)[2, MELT]
         state, melted = plain_day(
             model, weather.temperature[day], weather.precipitation[day], light[day, :, 2], above,
             float(np.float32(steep)), state,
@@ -154,7 +155,7 @@ def test_voids_stay_untouched():
         weather.edges, weather.months, np.full((1, 24), -5.0), np.ones((1, 24)), weather.height
     )
     moved = snow_day(model, wet, 0, light, np.zeros(2, np.float32), steep, snow)
-    assert (moved[:, 0] == 0.0).all()
+    assert (moved[0] == 0.0).all()
     assert snow.water[0] == 0.0
     assert snow.water[1] == pytest.approx(24.0)
 
@@ -171,14 +172,14 @@ def test_measured_albedo_counts_for_snow_alone():
     light = np.full((24, 2), 500.0, np.float32)
     flat = np.zeros(2, np.float32)
     moved = snow_day(model, weather, 0, light, flat, np.ones(2, np.float32), snow)
-    assert moved[MELT, 0] == pytest.approx(24 * (0.05 * 4 + 0.0094 * 0.45 * 500.0), rel=1e-6)
+    assert moved[0, MELT] == pytest.approx(24 * (0.05 * 4 + 0.0094 * 0.45 * 500.0), rel=1e-6)
     np.testing.assert_allclose(snow.albedo, [0.55, 0.2], rtol=1e-6)
 
 
 def test_sums_by_zone():
     zone = np.array([1, 0, -1, 1], np.int32)
     out = np.zeros((2, 2))
-    values = np.arange(8.0).reshape(2, 4)
+    values = np.arange(8.0).reshape(2, 4).T.copy()
     kernel.zone_sums(zone, np.array([1.0, 2.0, 5.0, 0.5]), values, out)
     np.testing.assert_array_equal(out, [[2.0, 10.0], [1.5, 7.5]])
 

@@ -14,16 +14,16 @@ def day_of(model, air, light=0.0, *, warmth=None, age=0.0, water=FOREVER, albedo
     """One day of constant weather on level ground at the station: melt [mm], and the snow."""
     snow = Snow.none(1, model)
     snow.ice[:] = water
-    snow.skin[0], snow.skin[1] = age, warmth if warmth is not None else 0.0
+    snow.skin[:, 0], snow.skin[:, 1] = age, warmth if warmth is not None else 0.0
     if albedo is not None:
-        snow.skin[3] = albedo
+        snow.skin[:, 3] = albedo
     hours = np.full((1, 24), float(air))
     weather = Weather(DAY, np.array([4]), hours, np.zeros((1, 24)), 0.0)
     shine = np.full((24, 1), light, np.float32)
     moved = snow_day(
         model, weather, 0, shine, np.zeros(1, np.float32), np.ones(1, np.float32), snow
     )
-    return float(moved[kernel.FLOWS.index("melt"), 0]), snow
+    return float(moved[0, kernel.FLOWS.index("melt")]), snow
 
 
 def test_enhanced_index_melts_as_its_authors_say():
@@ -110,4 +110,4 @@ def test_half_of_the_water_is_snow_at_one_degree():
     one = np.ones(1, np.float32)
     moved = snow_day(model, weather, 0, np.zeros((24, 1), np.float32), 0 * one, one, snow)
     assert moved[0, 0] == pytest.approx(12.0)
-    assert moved[1, 0] + moved[2, 0] == pytest.approx(12.0)
+    assert moved[0, 1] + moved[0, 2] == pytest.approx(12.0)
