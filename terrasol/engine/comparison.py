@@ -15,14 +15,13 @@ from numpy.typing import NDArray
 from pyproj import Geod
 
 from terrasol.constants import REFRACTION_COEFFICIENT
-from terrasol.engine.ground_work import BlockGround, lay_out
+from terrasol.engine.ground_work import cell_strip, lay_out
 from terrasol.engine.outputs import MONTH_NAMES
-from terrasol.engine.plan import Progress, blocks_of, carry_out, check_threads, default_threads
+from terrasol.engine.plan import Progress, carry_out, check_threads, default_threads
 from terrasol.errors import InputError, SettingError, counted
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame, make_frame
-from terrasol.ground.horizon import BLOCK
 from terrasol.ground.places import WGS84, Locator
 from terrasol.light.comparison import (
     Agreement,
@@ -166,20 +165,24 @@ def spot_at(
     for count, _ in enumerate(carry_out(tasks, threads), 1):
         if progress is not None:
             progress(count / len(tasks), "horizon")
-    per_row = -(-elevation.shape[1] // BLOCK)
-    block = blocks_of(elevation.shape)[row // BLOCK * per_row + column // BLOCK]
-    inside = row - block.row
-    strip = BlockGround(ground, block).strip(range(inside, inside + 1))
-    tangent = strip.horizon[:, 0, column - block.column].astype(np.float64)
+    tangent = cell_strip(ground, row, column).horizon[:, 0, 0].astype(np.float64)
     height = float(elevation.heights[row, column])
     horizon = np.degrees(np.arctan(tangent))
     return Spot.under(horizon, height=height, row=row, column=column)
 
 
 def cell_of(
-    elevation: Elevation, frame: Frame, latitude: float, longitude: float
+    elevation: Elevation,
+    frame: Frame,
+    latitude: float,
+    longitude: float,
+    *,
+    what: str = "the station",
+    mend: str = "mend the place that its settings state",
 ) -> tuple[int, int]:
     """Row and column of the cell that holds a place.
+
+    `what` stands there, and how to `mend` a wrong place: for messages.
 
     Raises
     ------
@@ -191,19 +194,18 @@ def cell_of(
         np.isfinite(at[0]) and -0.5 <= at[0] < size - 0.5
         for at, size in zip(place, elevation.shape, strict=True)
     )
-    where = f"the station at {place_words(latitude, longitude)}"
+    where = f"{what} at {place_words(latitude, longitude)}"
     if not inside:
         away = _kilometres((latitude, longitude), frame.centre)
         raise InputError(
             f"{where} lies outside the elevation model, whose middle is {away:,.0f} km away at"
-            f" {place_words(*frame.centre)}: mend the place that its settings state, or take the"
-            " model that holds it"
+            f" {place_words(*frame.centre)}: {mend}, or take the model that holds it"
         )
     row, column = (int(np.floor(at[0] + 0.5)) for at in place)
     if np.isnan(elevation.heights[row, column]):
         raise InputError(
             f"{where} stands on a void of the elevation model, in row {row} and column {column}:"
-            " fill voids with --fill-voids, or mend the place"
+            f" fill voids with --fill-voids, or {mend}"
         )
     return row, column
 

@@ -9,11 +9,12 @@ from functools import partial
 import numpy as np
 from numpy.typing import NDArray
 
-from terrasol.engine.plan import Block
+from terrasol.engine.plan import Block, blocks_of
 from terrasol.ground.beyond import Beyond, DataEdge, Scene
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame
 from terrasol.ground.horizon import (
+    BLOCK,
     PAD,
     FarHorizon,
     Obstacles,
@@ -217,6 +218,28 @@ class BlockGround:
         lift = self.datum - ground.far.datum
         raise_horizon(self.padded, piece, (above, away), lift, ground.refraction, raised)
         return raised
+
+
+def cell_strip(ground: Ground, row: int, column: int) -> Strip:
+    """One cell with its horizon, as its block has it.
+
+    Parameters
+    ----------
+    ground : Ground
+        Swept.
+    row, column : int
+        The cell.
+
+    Returns
+    -------
+    Strip
+        Of one row and one column.
+    """
+    per_row = -(-ground.elevation.shape[1] // BLOCK)
+    block = blocks_of(ground.elevation.shape)[row // BLOCK * per_row + column // BLOCK]
+    inside = row - block.row
+    strip = BlockGround(ground, block).strip(range(inside, inside + 1))
+    return strip.thin(column - block.column, block.columns)
 
 
 def _continue_rim(padded: NDArray[np.float32], block: Block, shape: tuple[int, int]) -> None:
