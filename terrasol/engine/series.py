@@ -279,7 +279,7 @@ class SeriesPlan:
         """
         threads = default_threads() if threads is None else threads
         check_threads(threads)
-        return _Run(self, sink, threads, progress or (lambda share, stage: None)).do(store)
+        return SeriesRun(self, sink, threads, progress or (lambda share, stage: None)).do(store)
 
 
 def plan_series(
@@ -312,7 +312,7 @@ def plan_series(
 
 
 @dataclass
-class _Span:
+class Span:
     """Some steps, and what is known of them by now."""
 
     start: int
@@ -328,10 +328,12 @@ class _Span:
         return self.stop - self.start
 
 
-class _Run:
-    """One run of a plan: horizons, then span after span."""
+class SeriesRun:
+    """One run of a plan: horizons, then span after span; without a sink, the horizons alone."""
 
-    def __init__(self, plan: SeriesPlan, sink: StackSink, threads: int, progress: Progress) -> None:
+    def __init__(
+        self, plan: SeriesPlan, sink: StackSink | None, threads: int, progress: Progress
+    ) -> None:
         self.plan = plan
         self.sink = sink
         self.threads = threads
@@ -344,7 +346,7 @@ class _Run:
         """All stages."""
         plan = self.plan
         found = find_horizons(store, plan.key)
-        horizons = found or self._make_horizons(store)
+        horizons = found or self.make_horizons(store)
         begin = 0.0 if found else HORIZON_SHARE
         for start in range(0, plan.steps, plan.span):
             stop = min(start + plan.span, plan.steps)
@@ -358,7 +360,7 @@ class _Run:
         self._conclude(horizons, found is not None)
         return self.summary
 
-    def _each(
+    def each(
         self, name: str, tasks: Sequence[Callable[[], Any]], begin: float, share: float
     ) -> Iterator[Any]:
         """Carry out tasks, telling progress and adding up the time by stage."""
@@ -369,19 +371,19 @@ class _Run:
         seconds = self.summary.seconds
         seconds[name] = round(seconds.get(name, 0.0) + time.perf_counter() - start, 3)
 
-    def _make_horizons(self, store: Path) -> Horizons:
+    def make_horizons(self, store: Path) -> Horizons:
         """Sweep, and keep every block's horizons."""
         plan = self.plan
         settings, elevation = plan.settings, plan.elevation
         ground, tasks = lay_out(
             elevation, plan.frame, settings.azimuths, settings.refraction, plan.scene
         )
-        for _ in self._each("far horizon", tasks, 0.0, 0.6 * HORIZON_SHARE):
+        for _ in self.each("far horizon", tasks, 0.0, 0.6 * HORIZON_SHARE):
             pass
         across = across_void(ground, np.isfinite(elevation.heights))
         with HorizonDraft(store, plan.key) as draft:
             keep = [partial(_keep_horizons, ground, draft, block) for block in self.blocks]
-            for _ in self._each("horizons", keep, 0.6 * HORIZON_SHARE, 0.4 * HORIZON_SHARE):
+            for _ in self.each("horizons", keep, 0.6 * HORIZON_SHARE, 0.4 * HORIZON_SHARE):
                 pass
             return draft.finish({"cells_looking_across_void": across})
 
@@ -390,25 +392,13 @@ class _Run:
     ) -> None:
         """Suns and surroundings of some steps, then the steps themselves."""
         plan, settings = self.plan, self.plan.settings
-        edges = plan.edges[start : stop + 1]
-        months = step_months(settings, plan.edges)[start:stop]
-        shape = tuple(-(-size // plan.stride) for size in plan.elevation.shape)
-        samples = np.full((stop - start + 1, *shape), np.nan, np.float32)
-        if not plan.reflecting:
-            samples = np.zeros((stop - start + 1, 1, 1), np.float32)
-        span = _Span(
-            start,
-            stop,
-            suns_at_greenwich(edges, settings.substep_seconds),
-            step_albedo(settings, edges, months),
-            samples[:-1],
-        )
+        span, samples = span_of(plan, start, stop)
         work = BlockWork(plan.elevation, plan.frame, settings, plan.heights, horizons)
         tasks = [
-            partial(_look_up_sky, work, span, plan.stride if plan.reflecting else 0, samples, block)
+            partial(look_up_sky, work, span, plan.stride if plan.reflecting else 0, samples, block)
             for block in self.blocks
         ]
-        for _ in self._each("suns and light of the terrain around", tasks, begin, 0.2 * share):
+        for _ in self.each("suns and light of the terrain around", tasks, begin, 0.2 * share):
             pass
         if plan.reflecting:
             spread = [
@@ -416,13 +406,14 @@ class _Run:
                 for first in range(0, span.steps, SLICE_STEPS)
             ]
             name = "suns and light of the terrain around"
-            for _ in self._each(name, spread, begin + 0.2 * share, 0.1 * share):
+            for _ in self.each(name, spread, begin + 0.2 * share, 0.1 * share):
                 pass
+        assert self.sink is not None
         blocks = [
             partial(_do_block, work, span, self.sink, plan.stride, WORK_STEPS[settings.step], b)
             for b in self.blocks
         ]
-        for found in self._each("steps", blocks, begin + 0.3 * share, 0.7 * share):
+        for found in self.each("steps", blocks, begin + 0.3 * share, 0.7 * share):
             self._take(found)
 
     def _take(self, found: dict[str, list[NDArray[np.float64]]]) -> None:
@@ -461,6 +452,19 @@ class _Run:
             )
 
 
+def span_of(plan: SeriesPlan, start: int, stop: int) -> tuple[Span, NDArray[np.float32]]:
+    """Some steps of a plan, and room for the samples of what the ground receives in them."""
+    settings = plan.settings
+    edges = plan.edges[start : stop + 1]
+    months = step_months(settings, plan.edges)[start:stop]
+    shape = tuple(-(-size // plan.stride) for size in plan.elevation.shape)
+    samples = np.full((stop - start + 1, *shape), np.nan, np.float32)
+    if not plan.reflecting:
+        samples = np.zeros((stop - start + 1, 1, 1), np.float32)
+    path = suns_at_greenwich(edges, settings.substep_seconds)
+    return Span(start, stop, path, step_albedo(settings, edges, months), samples[:-1]), samples
+
+
 def _keep_horizons(ground: Ground, draft: HorizonDraft, block: Block) -> None:
     """Work out a block's horizons and keep them."""
     piece = BlockGround(ground, block)
@@ -470,8 +474,8 @@ def _keep_horizons(ground: Ground, draft: HorizonDraft, block: Block) -> None:
     draft.write(block.row, block.column, code)
 
 
-def _look_up_sky(
-    work: BlockWork, span: _Span, stride: int, samples: NDArray[np.float32], block: Block
+def look_up_sky(
+    work: BlockWork, span: Span, stride: int, samples: NDArray[np.float32], block: Block
 ) -> None:
     """A block's skies, and what its sampled cells receive from them."""
     ground = work.ground(block)
@@ -495,7 +499,7 @@ def _look_up_sky(
             samples[-1, *place] = 1.0 - view[0]
 
 
-def _spread(plan: SeriesPlan, span: _Span, samples: NDArray[np.float32], first: int) -> None:
+def _spread(plan: SeriesPlan, span: Span, samples: NDArray[np.float32], first: int) -> None:
     """Mean of what the terrain around receives, for a few steps; takes the samples' place."""
     steps = slice(first, min(first + SLICE_STEPS, span.steps))
     if not np.nanmax(samples[steps], initial=0.0) > 0.0:
@@ -511,7 +515,7 @@ def _spread(plan: SeriesPlan, span: _Span, samples: NDArray[np.float32], first: 
 
 
 def _do_block(
-    work: BlockWork, span: _Span, sink: StackSink, stride: int, count: int, block: Block
+    work: BlockWork, span: Span, sink: StackSink, stride: int, count: int, block: Block
 ) -> dict[str, list[NDArray[np.float64]]]:
     """All steps of a block to the sink; returns count, sum, least and greatest of each piece."""
     ground, settings = work.ground(block), work.settings

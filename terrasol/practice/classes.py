@@ -182,9 +182,30 @@ def area_by_sector(
     Sectors are centred on their directions: north is 337.5 to below 22.5 degrees.
     """
     facing, weight, flat, void = _parted(aspect, slope, area, flat_below_percent)
-    sector = np.floor(np.mod(facing + 22.5, 360.0) / 45.0).astype(np.int64) % len(SECTORS)
+    sector = _sector(facing)
     areas = np.bincount(sector, weights=weight, minlength=len(SECTORS))
     return SectorAreas(areas.astype(np.float64), flat, void)
+
+
+def sector_numbers(
+    aspect: ArrayLike, slope: ArrayLike, *, flat_below_percent: float = FLAT_BELOW_PERCENT
+) -> NDArray[np.int64]:
+    """Place in `SECTORS` of each cell's aspect; 8 where flat, -1 where void. See `area_by_sector`.
+
+    Examples
+    --------
+    >>> sector_numbers([350.0, 181.0, 90.0, 90.0], [20.0, 20.0, 0.5, np.nan]).tolist()
+    [0, 4, 8, -1]
+    """
+    facing, steep = np.asarray(aspect, np.float64), slope_percent(slope)
+    flat = np.isnan(facing) | (steep < flat_below_percent)
+    found = np.where(flat, len(SECTORS), _sector(np.nan_to_num(facing)))
+    return np.where(np.isnan(steep), -1, found)
+
+
+def _sector(facing: NDArray[np.float64]) -> NDArray[np.int64]:
+    """Place of directions in `SECTORS`."""
+    return np.floor(np.mod(facing + 22.5, 360.0) / 45.0).astype(np.int64) % len(SECTORS)
 
 
 def mean_direction(
