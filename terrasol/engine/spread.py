@@ -105,38 +105,38 @@ class RunningAngle:
 
 @dataclass(frozen=True)
 class Spread:
-    """What error does to a quantity.
+    """What the error of the heights leaves open about a quantity.
 
     Parameters
     ----------
     estimate : ndarray
         The quantity of the model as it is.
     mean : ndarray
-        Its mean over the realisations, each with error on top of the model's own.
-    standard_error : ndarray
+        Its mean over the grounds that may be: the better value, free of what error adds.
+    deviation : ndarray
         Its standard deviation over them.
     count : ndarray of int
-        Realisations in which it was finite.
+        Grounds of which it could be told.
     angle : bool
         It is a direction [degrees].
     """
 
     estimate: NDArray[np.float64]
     mean: NDArray[np.float64]
-    standard_error: NDArray[np.float64]
+    deviation: NDArray[np.float64]
     count: NDArray[np.uint16]
     angle: bool = False
 
     @property
     def shift(self) -> NDArray[np.float64]:
-        """What error adds to the quantity on average: mean less estimate."""
-        return self._turn(self.mean - self.estimate)
+        """What error has done to the estimate, as far as is known: estimate less mean."""
+        return _turn(self.estimate - self.mean, self.angle)
 
     @property
-    def corrected(self) -> NDArray[np.float64]:
-        """Estimate less the shift: what the model's own error added, taken off again."""
-        corrected = self.estimate - self.shift
-        return corrected % 360.0 if self.angle else corrected
+    def standard_error(self) -> NDArray[np.float64]:
+        """Root mean square of what the estimate may be off, its shift included."""
+        error = np.hypot(self.deviation, self.shift)
+        return np.minimum(error, UNKNOWN_DIRECTION) if self.angle else error
 
     def interval(
         self, level: float = 0.9, within: tuple[float, float] = (-np.inf, np.inf)
@@ -153,7 +153,7 @@ class Spread:
         Returns
         -------
         low, high : ndarray
-            About `corrected`; of a direction not brought back to 0 to 360, so that low < high.
+            About the mean; of a direction not brought back to 0 to 360, so that low < high.
 
         Raises
         ------
@@ -162,21 +162,20 @@ class Spread:
 
         Notes
         -----
-        corrected -+ t s sqrt(1 + 1/n), with s the standard error, n the realisations and t
-        Student's quantile for n - 1 degrees of freedom: exact where the quantity is linear in the
-        heights. docs/uncertainty.md says where it is not good.
+        mean -+ t s sqrt(1 + 1/n), with s the deviation, n the grounds and t Student's quantile
+        for n - 1 degrees of freedom. docs/uncertainty.md says how often they hold the truth.
         """
         if not 0.0 < level < 1.0:
             raise SettingError(f"the level of an interval must be over 0 and under 1; got {level}")
         count = np.maximum(self.count.astype(np.float64), 2.0)
         half = stdtrit(count - 1.0, 0.5 + level / 2.0) * np.sqrt(1.0 + 1.0 / count)
-        half = half * self.standard_error
-        middle = self.corrected
-        return np.clip(middle - half, *within), np.clip(middle + half, *within)
+        low, high = self.mean - half * self.deviation, self.mean + half * self.deviation
+        return np.clip(low, *within), np.clip(high, *within)
 
-    def _turn(self, difference: NDArray[np.float64]) -> NDArray[np.float64]:
-        """A difference, of directions the shorter way round."""
-        return (difference + 180.0) % 360.0 - 180.0 if self.angle else difference
+
+def _turn(difference: NDArray[np.float64], angle: bool) -> NDArray[np.float64]:
+    """A difference, of directions the shorter way round."""
+    return (difference + 180.0) % 360.0 - 180.0 if angle else difference
 
 
 class SpreadTally:

@@ -15,6 +15,7 @@ from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import make_frame
 from terrasol.ground.horizon import Obstacles
+from terrasol.ground.likely import likely_heights
 from terrasol.ground.uncertainty import DemError, error_fields
 
 Told = Callable[[int], None]
@@ -56,6 +57,36 @@ def realisations(elevation: Elevation, error: DemError) -> Iterator[Elevation]:
         yield replace(elevation, heights=elevation.heights + field, warnings=())
 
 
+def likely_grounds(elevation: Elevation, error: DemError) -> Iterator[Elevation]:
+    """Draw grounds that a model may be the erroneous picture of.
+
+    Where `realisations` put another error on top of the model's own, these take the likely error
+    off: see `terrasol.ground.likely.likely_heights`.
+
+    Parameters
+    ----------
+    elevation : Elevation
+        The ground as it is known.
+    error : DemError
+        Its error and the draw.
+
+    Yields
+    ------
+    Elevation
+        Voids stay void, without the warnings.
+
+    Raises
+    ------
+    InputError
+        A raster that cannot be placed on the Earth.
+    SettingError
+        A range too long for the raster.
+    """
+    frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
+    for heights in likely_heights(elevation.heights, error, frame.cell_size):
+        yield replace(elevation, heights=heights, warnings=())
+
+
 def propagate(
     elevation: Elevation,
     error: DemError,
@@ -64,7 +95,7 @@ def propagate(
     angle: bool = False,
     progress: Told | None = None,
 ) -> Spread:
-    """Find what the error of the heights does to a quantity.
+    """Find what the error of the heights leaves open about a quantity.
 
     Parameters
     ----------
@@ -94,7 +125,7 @@ def propagate(
     >>> import numpy as np
     >>> flat = Elevation.from_array(np.zeros((50, 50)), (10, 0, 5e5, 0, -10, 5.2e6), "EPSG:32632")
     >>> found = propagate(flat, DemError(0.5, 0.0), lambda ground: ground.heights.mean())
-    >>> bool(0.005 < found.standard_error < 0.015)  # 0.5 m / sqrt(2500)
+    >>> bool(0.005 < found.standard_error < 0.02)  # about 0.5 m / sqrt(2500)
     True
     """
     named, angles = (lambda ground: {"": quantity(ground)}), ([""] if angle else [])
@@ -109,7 +140,7 @@ def propagate_all(
     angles: Collection[str] = (),
     progress: Told | None = None,
 ) -> dict[str, Spread]:
-    """Find what the error of the heights does to several quantities at once.
+    """Find what the error of the heights leaves open about several quantities at once.
 
     Parameters
     ----------
@@ -133,7 +164,7 @@ def propagate_all(
     tallies = {
         name: SpreadTally(values, name in angles) for name, values in quantities(elevation).items()
     }
-    for done, ground in enumerate(realisations(elevation, error), 1):
+    for done, ground in enumerate(likely_grounds(elevation, error), 1):
         for name, values in quantities(ground).items():
             if np.shape(values) != tallies[name].estimate.shape:
                 raise SettingError(
@@ -153,7 +184,7 @@ def moved(plan: Plan, elevation: Elevation) -> Plan:
     plan : Plan
         Of the ground as it is known.
     elevation : Elevation
-        Another realisation of it, from `realisations`.
+        Another realisation of it, from `realisations` or `likely_grounds`.
 
     Returns
     -------

@@ -68,8 +68,8 @@ def test_no_direction_at_all():
 
 @pytest.mark.parametrize("count", [4, 24])
 @pytest.mark.parametrize("level", [0.5, 0.9])
-def test_interval_of_a_linear_quantity_holds_the_truth_as_stated(count, level):
-    """Truth 0; the estimate has an error of its own, and the realisations one on top of it."""
+def test_interval_about_draws_holds_the_truth_as_stated(count, level):
+    """Truth 0; the draws have a mean with an error of its own, as large as their spread."""
     rng = np.random.default_rng(4)
     tally = SpreadTally(rng.normal(0.0, 1.0, 40_000))
     for _ in range(count):
@@ -79,26 +79,32 @@ def test_interval_of_a_linear_quantity_holds_the_truth_as_stated(count, level):
     assert held == pytest.approx(level, abs=4.0 * stats.binom.std(40_000, level) / 40_000)
 
 
-def test_interval_takes_off_what_error_adds():
-    """Each error adds 1: the estimate, with one, is 1 too high, the realisations 2."""
-    spread = Spread(np.array(11.0), np.array(12.0), np.array(0.5), np.array(24, np.uint16))
-    assert spread.shift == 1.0
-    assert spread.corrected == 10.0
-    low, high = spread.interval(0.9)
-    assert (low + high) / 2.0 == pytest.approx(10.0)
-    assert spread.interval(0.9, (9.9, 10.1)) == (9.9, 10.1)
+def spread(estimate, mean, deviation=0.5, angle=False):
+    return Spread(
+        np.array(estimate), np.array(mean), np.array(deviation), np.array(24, np.uint16), angle
+    )
+
+
+def test_estimate_errs_by_spread_and_shift():
+    found = spread(12.0, 11.0, 0.75)
+    assert found.shift == 1.0
+    assert found.standard_error == 1.25
+    low, high = found.interval(0.9)
+    assert (low + high) / 2.0 == pytest.approx(11.0)
+    assert high - low == pytest.approx(2 * stats.t.ppf(0.95, 23) * np.sqrt(1 + 1 / 24) * 0.75)
+    assert found.interval(0.9, (10.9, 11.1)) == (10.9, 11.1)
 
 
 def test_direction_is_taken_the_shorter_way_round():
-    spread = Spread(np.array(1.0), np.array(358.0), np.array(5.0), np.array(24, np.uint16), True)
-    assert spread.shift == -3.0
-    assert spread.corrected == 4.0
-    low, high = spread.interval()
-    assert low < 0.0 < high
+    found = spread(1.0, 358.0, 4.0, angle=True)
+    assert found.shift == 3.0
+    assert found.standard_error == 5.0
+    low, high = found.interval()
+    assert low < 358.0 < 360.0 < high
+    assert spread(0.0, 170.0, 100.0, angle=True).standard_error == UNKNOWN_DIRECTION
 
 
 @pytest.mark.parametrize("level", [0.0, 1.0, 90.0, np.nan])
 def test_refuses_a_level_that_is_none(level):
-    spread = Spread(np.array(1.0), np.array(1.0), np.array(1.0), np.array(24, np.uint16))
     with pytest.raises(SettingError):
-        spread.interval(level)
+        spread(1.0, 1.0).interval(level)
