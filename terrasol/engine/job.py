@@ -323,9 +323,7 @@ class Run:
         plan = self.plan
         for layer in plan.layers:
             sink.open(layer)
-        tables = self._tables() if plan.settings else None
-        ground = self._ground()
-        surroundings = self._surroundings(ground, tables) if tables else None
+        ground, tables, surroundings = self.prepare()
         names = [layer.name for layer in plan.layers]
         work = partial(block_arrays, ground, names, tables, surroundings)
         totals, gaps = Totals(), GapTally()
@@ -339,6 +337,12 @@ class Run:
         self._conclude(ground, totals, tables)
         self._tell_of_scene(gaps)
         return self.summary
+
+    def prepare(self) -> tuple[Ground, Tables | None, Surroundings | None]:
+        """All that blocks need: the ground, and for light the sun tables and what is around."""
+        tables = self._tables() if self.plan.settings else None
+        ground = self._ground()
+        return ground, tables, self._surroundings(ground, tables) if tables else None
 
     def _stage(self, name: str, tasks: Sequence[Callable[[], Any]], share: float) -> Iterator[Any]:
         """Carry out tasks, telling progress and keeping the time."""
