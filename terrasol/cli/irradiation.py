@@ -111,7 +111,7 @@ def irradiation(common: Common, around: Around, asked: AskedSky, **given: Any) -
     with naming(common.dem):
         plan = plan_irradiation(elevation, settings, scene)
     latitude, longitude = frame.centre
-    record = _record(settings) | settled.record | around.record()
+    record = light_record(settings) | settled.record | around.record()
     record["centre"] = {"latitude": round(latitude, 5), "longitude": round(longitude, 5)}
     inputs = (*around.inputs, *settled.inputs)
     if settings.albedo_map is not None:
@@ -159,8 +159,8 @@ def _albedo(asked: Any, settled: Settled, elevation: Elevation) -> dict[str, Any
     return {}
 
 
-def _record(settings: LightSettings) -> dict[str, Any]:
-    """Settings as plain text and numbers."""
+def light_record(settings: LightSettings) -> dict[str, Any]:
+    """Settings of light as plain text and numbers."""
     record = asdict(replace(settings, sky=None, albedo_map=None, index_map=None))
     del record["sky"], record["albedo_map"], record["index_map"]
     record["albedo"] = shortest(settings.albedo)
