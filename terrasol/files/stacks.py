@@ -63,6 +63,8 @@ class StackVariable:
         How a value stands for its interval of time.
     resolution : float
         Values are rounded to multiples of this, a power of two.
+    standard_name : str, optional
+        The CF standard name, only where one truly fits.
     """
 
     name: str
@@ -70,6 +72,7 @@ class StackVariable:
     long_name: str
     cell_methods: str
     resolution: float
+    standard_name: str | None = None
 
 
 @dataclass(frozen=True)
@@ -385,6 +388,8 @@ def _variable_attributes(variable: StackVariable, stack: Stack) -> dict[str, Any
         "cell_methods": variable.cell_methods,
         "grid_mapping": GRID_MAPPING,
     }
+    if variable.standard_name:
+        attributes["standard_name"] = variable.standard_name
     if not _upright(stack.transform):
         attributes["coordinates"] = "latitude longitude"
     return attributes
