@@ -431,13 +431,18 @@ class _Job:
         """The predictors."""
         from terrasol.engine.plots import plot_table
         from terrasol.files.rasters import naming
+        from terrasol.ground.frame import make_frame
+        from terrasol.ground.grain import coarsened
 
+        grounds = [coarsened(self.ground.elevation, factor) for factor in settings.factors]
+        frames = [make_frame(each.shape, each.transform, each.crs) for each in grounds]
+        scenes = [self.around.scene(*pair) for pair in zip(grounds, frames, strict=True)]
         with naming(self.common.dem):
             return plot_table(
                 self.ground.elevation,
                 self.points,
                 settings,
-                self.around.scene,
+                scenes,
                 threads,
                 lambda share, stage: move(0.9 * share, stage),
             )
@@ -480,8 +485,7 @@ class _Job:
             delivery.write_bytes(LONG, csv_bytes(long_form(table)))
         delivery.write_bytes(CORRELATIONS, csv_bytes(pairs(table, response)))
         title = f"Predictors for {os.path.splitext(os.path.basename(self.given['plots_file']))[0]}"
-        picture = predictors_png(table, title=title, response=response)
-        delivery.write_bytes(PICTURE, picture)
+        delivery.write_bytes(PICTURE, predictors_png(table, title=title, response=response))
         text = methods_text(table, settings, self._account(table, settled))
         delivery.write_bytes(METHODS, text.encode())
 
@@ -502,7 +506,7 @@ class _Job:
 
 def _results(table: PlotTable, response: str | None, remarks: tuple[str, ...]) -> dict[str, Any]:
     """What came out, in numbers."""
-    from terrasol.engine.plot_correlations import strongest
+    from terrasol.engine.plot_correlations import best_by_chance, strongest
 
     flags = table.frame["flag"]
     found = {
@@ -516,6 +520,7 @@ def _results(table: PlotTable, response: str | None, remarks: tuple[str, ...]) -
     }
     if response is not None:
         found["strongest_with_response"] = strongest(table, response)
+        found["strongest_by_chance"] = best_by_chance(table, response)
     return found
 
 
@@ -558,6 +563,12 @@ def _summary_text(record: dict[str, Any]) -> str:
         told.append(
             f"{record['settings']['response']} goes with {each['column']}: Spearman"
             f" {each['spearman']:.2f}, Pearson {each['pearson']:.2f}, {each['plots']} plots"
+        )
+    chance = results.get("strongest_by_chance")
+    if chance is not None:
+        told.append(
+            f"these are the best of many columns: by chance alone the best would reach {chance:.2f}"
+            " in one case of twenty (measured values shuffled among the plots)"
         )
     told += results["remarks"]
     told += [f"warning: {text}" for text in record["warnings"]]

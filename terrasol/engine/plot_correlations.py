@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from terrasol.engine.plot_table import CELL, MEAN, Column, PlotTable
 from terrasol.errors import SettingError
 from terrasol.files.vectors import word_list
-from terrasol.practice.plots import correlation
+from terrasol.practice.plots import chance_of_best, correlation
 
 SHOWN: Final = (
     "height", "slope", "northness", "eastness", "slope_northness", "slope_eastness", "beers",
@@ -24,9 +24,8 @@ SHOWN: Final = (
 """Predictors that the picture has room for, where they are in the table: one of each kind, and the
 months of the solstices for what goes by month (judgement)."""
 
-LEAST_PLOTS: Final = 10
-"""Plots under which a correlation is mostly chance: with 10 plots one of 0.63 or more comes by
-chance once in twenty times (critical value of Pearson's r, 8 degrees of freedom)."""
+TURNING: Final = ("aspect_deg",)
+"""Predictors that go round, of which no correlation is a measure."""
 
 Array = NDArray[np.float64]
 
@@ -99,7 +98,7 @@ def pairs(table: PlotTable, response: str | None = None) -> pd.DataFrame:
     if response is not None:
         measured = response_values(table, response)
         for column in table.columns:
-            if column.statistic:
+            if column.statistic and column.predictor not in TURNING:
                 found = correlation(measured, table.frame[column.name].to_numpy(np.float64))
                 rows.append((response, column.name, *found))
     names = shown_predictors(table)
@@ -144,12 +143,36 @@ def by_scale(
     return scales, found
 
 
+def _candidates(table: PlotTable) -> dict[str, str]:
+    """Columns among which the strongest is sought, and their predictors."""
+    return {
+        c.name: c.predictor
+        for c in table.columns
+        if c.statistic in (CELL, MEAN) and c.predictor not in TURNING
+    }
+
+
+def best_by_chance(table: PlotTable, response: str) -> float | None:
+    """Size that the strongest of `strongest` passes once in twenty times by chance alone.
+
+    Over the columns known in all plots that were measured; None with fewer than four of these.
+    """
+    measured = response_values(table, response)
+    columns = table.frame[list(_candidates(table))].to_numpy(np.float64)
+    rows = np.isfinite(measured) & np.isfinite(columns).any(axis=1)
+    columns = columns[rows]
+    columns = columns[:, np.isfinite(columns).all(axis=0)]
+    if rows.sum() < 4 or not columns.size:
+        return None
+    return round(chance_of_best(columns, measured[rows]), 3)
+
+
 def strongest(table: PlotTable, response: str, count: int = 5) -> list[dict[str, float | str]]:
     """Cells' values and means of circles whose ranks go with the response most closely.
 
     One column a predictor, that of its best scale; a choice made after the fact, so not a test.
     """
-    kinds = {c.name: c.predictor for c in table.columns if c.statistic in (CELL, MEAN)}
+    kinds = _candidates(table)
     found = pairs(table, response)
     found = found[(found["one"] == response) & found["other"].isin(kinds)].dropna()
     order = found.iloc[np.argsort(-found["spearman"].abs().to_numpy(), kind="stable")]

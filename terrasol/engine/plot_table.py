@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Sequence
 from dataclasses import asdict, dataclass
 from typing import Any, Final
@@ -144,6 +145,9 @@ ASPECT: Final = Predictor(
 )
 """Made of northness and eastness, since directions cannot be added."""
 
+NUMBERS: Final = re.compile(r"[\d.,]+")
+"""What may differ between warnings that say the same at two cell sizes."""
+
 ORDER: Final = (CELL, POINT, ERROR, MEAN, LEAST, GREATEST)
 """Statistics of predictors in the order of the columns, circles from small to large."""
 
@@ -209,7 +213,9 @@ class Assembly:
                 name = f"known_r{length_tag(radius)}{tag}"
                 column = Column(name, "known", STATISTICS[KNOWN], "1", "", KNOWN, radius, size)
                 self._put(column, values[:, 0])
-        self.warnings += [text for text in told.warnings if text not in self.warnings]
+        for text in told.warnings:
+            if NUMBERS.sub("", text) not in {NUMBERS.sub("", heard) for heard in self.warnings}:
+                self.warnings.append(text)
         for stage, value in told.seconds.items():
             self.seconds[stage] = round(self.seconds.get(stage, 0.0) + value, 3)
         self.level = self.level or told.level

@@ -63,7 +63,6 @@ from terrasol.practice.plots import (
 from terrasol.practice.season import growing_season
 
 Array = NDArray[np.float64]
-SceneOf = Callable[[Elevation, Frame], Scene]
 
 RADII: Final = (50.0, 100.0)
 """Circles by default [m] (judgement, no source)."""
@@ -142,7 +141,7 @@ def plot_table(
     elevation: Elevation,
     points: Points,
     settings: PlotSettings,
-    scene_of: SceneOf = lambda elevation, frame: NO_SCENE,
+    scenes: Sequence[Scene] | None = None,
     threads: int | None = None,
     progress: Progress | None = None,
 ) -> PlotTable:
@@ -156,8 +155,8 @@ def plot_table(
         The plots, in any CRS.
     settings : PlotSettings
         What to tell.
-    scene_of : callable
-        Given ground and frame, what stands beyond and above it; called for each cell size.
+    scenes : sequence of Scene, optional
+        What stands beyond and above the ground, one for each cell size (see `coarsened`).
     threads : int, optional
         Default: as many as there are cores to use.
     progress : callable, optional
@@ -183,7 +182,8 @@ def plot_table(
     work = sum(factor**-2.0 for factor in settings.factors)
     tell, done = progress or (lambda share, stage: None), 0.0
     table = Assembly(points, located, settings.groups)
-    for factor, size, tag in zip(settings.factors, sizes, tags, strict=True):
+    scenes = scenes or [NO_SCENE] * len(sizes)
+    for factor, size, tag, scene in zip(settings.factors, sizes, tags, scenes, strict=True):
         part = factor**-2.0 / work
         ground = coarsened(elevation, factor)
         grain = _Grain(ground, located, points.error, settings, factor, size)
@@ -191,7 +191,7 @@ def plot_table(
         def move(share: float, stage: str, done: float = done, part: float = part) -> None:
             tell(done + part * share, stage)
 
-        table.add(grain.run(scene_of, threads, move), size, tag)
+        table.add(grain.run(scene, threads, move), size, tag)
         done += part
     return table.finished(sizes)
 
@@ -242,11 +242,10 @@ class _Grain:
     factor: int
     size: float
 
-    def run(self, scene_of: SceneOf, threads: int | None, progress: Progress) -> Told:
+    def run(self, scene: Scene, threads: int | None, progress: Progress) -> Told:
         """Gather what light and, if asked for, hours of sun say."""
         s, ground = self.settings, self.ground
         frame = make_frame(ground.shape, ground.transform, ground.crs)
-        scene = scene_of(ground, frame)
         shares = self._shares(frame)
         plan = plan_irradiation(ground, s.light, scene)
         predictors = [*ground_predictors(), *light_predictors(s.light, s.season)]
@@ -274,7 +273,7 @@ class _Grain:
             gathered.append(sink.gathered)
             predictors += more
             level["sun_hours"] = summary.numbers["level_ground_sun_hours"]
-            said += [text for text in summary.warnings if text not in said]
+            said += summary.warnings
             for stage, value in summary.seconds.items():
                 seconds[stage] = seconds.get(stage, 0.0) + value
         return Told(predictors, self._statistics(gathered), level, said, seconds)

@@ -15,6 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy import sparse
 from scipy.stats import rankdata
+from scipy.stats import t as student
 
 CUTS: Final = 16
 """Parts of a cell's side by which the share of it that lies in a circle is counted: 256 places,
@@ -270,3 +271,50 @@ def _pearson(a: Array, b: Array) -> float:
     if any(np.ptp(v) <= 1e-9 * scale for v, scale in zip((a, b), scales, strict=True)):
         return float("nan")
     return round(float(a @ b) / float(np.sqrt((a @ a) * (b @ b))), 12)
+
+
+def chance_level(plots: int, share: float = 0.05) -> float:
+    """Size of a correlation that chance alone passes in a share of cases, both signs together.
+
+    For one pair named beforehand, values normal and plots independent: Student's t with n - 2
+    degrees of freedom; close to true of ranks from ten plots on.
+
+    Examples
+    --------
+    >>> round(chance_level(10), 3)
+    0.632
+    """
+    if plots < 3:
+        return 1.0
+    quantile = float(student.ppf(1.0 - share / 2.0, plots - 2))
+    return quantile / float(np.sqrt(plots - 2 + quantile**2))
+
+
+def chance_of_best(
+    columns: Array, measured: Array, share: float = 0.05, shuffles: int = 999, seed: int = 1
+) -> float:
+    """Size of the best rank correlation among many that chance alone passes in a share of cases.
+
+    The measured values are dealt to the plots anew, many times, and the best of all columns is
+    kept each time; so columns that say the same do not count twice.
+
+    Parameters
+    ----------
+    columns : ndarray, shape (plots, columns)
+        Predictors, all known.
+    measured : ndarray, shape (plots,)
+        What they are to explain.
+    share : float
+        Of cases.
+    shuffles, seed : int
+        How often, and where the random numbers begin.
+    """
+    ranks = rankdata(columns, axis=0)
+    ranks = ranks - ranks.mean(axis=0)
+    size = np.sqrt((ranks**2).sum(axis=0))
+    ranks = ranks[:, size > 0.0] / size[size > 0.0]
+    own = rankdata(measured)
+    own = (own - own.mean()) / np.sqrt(((own - own.mean()) ** 2).sum())
+    dealt = np.random.default_rng(seed)
+    best = [np.abs(dealt.permutation(own) @ ranks).max() for _ in range(shuffles)]
+    return float(np.quantile(best, 1.0 - share))

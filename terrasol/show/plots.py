@@ -14,10 +14,12 @@ from terrasol.engine.plot_correlations import (
     Scale,
     by_scale,
     matrix,
+    response_values,
     short_name,
     shown_predictors,
 )
 from terrasol.engine.plot_table import PlotTable
+from terrasol.practice.plots import chance_level
 from terrasol.show.key import NOTE_LEADING, SMALL
 from terrasol.show.page import INK, PAPER, SOFT, Page, clip, text_width, wrap
 
@@ -39,9 +41,7 @@ DARK = 0.72
 """Size of a correlation from which its number is written in white."""
 
 
-def predictors_png(
-    table: PlotTable, *, title: str, response: str | None = None, notes: Sequence[str] = ()
-) -> bytes:
+def predictors_png(table: PlotTable, *, title: str, response: str | None = None) -> bytes:
     """Draw correlations of predictors: with each other, and across scales.
 
     Parameters
@@ -52,8 +52,6 @@ def predictors_png(
     response : str, optional
         A measured column: the right matrix is then of its rank correlation with each predictor
         at each scale, else of the predictors' with themselves at the raster's own cells.
-    notes : sequence of str
-        Sentences at the foot.
 
     Returns
     -------
@@ -73,7 +71,7 @@ def predictors_png(
     right = max(right, left + len(names) * SIDE + overhang - SIDE / 2 + 24)
     edge = right + len(scales) * SIDE
     width = max(edge + 110, 900) + MARGIN
-    lines = [line for note in notes for line in wrap(note, SMALL, width - 2 * MARGIN)]
+    lines = wrap(_note(table, response), SMALL, width - 2 * MARGIN)
     bottom = top + len(names) * SIDE
     page = Page(round(width), round(bottom + 44 + len(lines) * NOTE_LEADING + FOOT))
     with style.context("default"):
@@ -94,12 +92,35 @@ def predictors_png(
 
 def _subtitle(table: PlotTable, response: str | None) -> str:
     """What is drawn."""
-    plots = int((table.frame["flag"] == "ok").sum())
+    plots = int(_placed(table).sum())
     about = f"  ·  measured: {response}" if response else ""
     return (
         f"Correlation of predictors over {plots} plots, values of the cell,"
         f" {table.cells[0]:.3g} m{about}"
     )
+
+
+def _note(table: PlotTable, response: str | None) -> str:
+    """How large a correlation chance alone makes."""
+    plots = int(_placed(table).sum())
+    if response is not None:
+        plots = int((np.isfinite(response_values(table, response)) & _placed(table)).sum())
+    more = (
+        " The best of many predictors and scales must be judged more strictly: see"
+        " strongest_by_chance in run.json."
+        if response
+        else ""
+    )
+    return (
+        f"With {plots} independent plots, chance alone gives one predictor named beforehand a"
+        f" correlation over {chance_level(plots):.2f} or under \N{MINUS SIGN}"
+        f"{chance_level(plots):.2f} in one case of twenty; plots near each other are not"
+        f" independent.{more} Full table: correlations.csv."
+    )
+
+
+def _placed(table: PlotTable) -> NDArray[np.bool_]:
+    return (table.frame["flag"] == "ok").to_numpy()
 
 
 def _heading(page: Page, x: float, y: float, words: str, more: str) -> None:
