@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from terrasol.cli.error_options import AskedError, error_options
 from terrasol.cli.ground_options import Around, ground_options
 from terrasol.cli.options import Common, Numbers, common_options, diffuse_option, period_option
 from terrasol.cli.sky_options import (
@@ -81,20 +82,26 @@ ALBEDO_FOR_NOW = (0.2,)
     help=f"Photosynthetic photons in a joule of global light. [default: {PHOTONS_PER_JOULE:g}]",
 )
 @ground_options
+@error_options
 @common_options
-def irradiation(common: Common, around: Around, asked: AskedSky, **given: Any) -> None:
+def irradiation(
+    common: Common, around: Around, asked: AskedSky, asked_error: AskedError, **given: Any
+) -> None:
     """Irradiation of every cell of the elevation raster DEM, potential (clear-sky) or measured.
 
     Terrain shade and reflection count. Writes slope.tif, aspect.tif, sky_view.tif,
     irradiation_year.tif (irradiation_period.tif unless the period is one whole year),
     irradiation_months.tif, overview.png and run.json into OUT_DIR; if asked, also months by part,
-    photosynthetic_months.tif and horizon_gap.tif.
+    photosynthetic_months.tif, horizon_gap.tif, and slope_standard_error.tif,
+    aspect_standard_error.tif and irradiation_year_standard_error.tif.
     """
     from terrasol.cli.run import Job, read, run
+    from terrasol.engine.error_maps import plan_errors
     from terrasol.engine.job import plan_irradiation
     from terrasol.files.rasters import naming
 
     settings = _settings(common, asked, given)
+    error = asked_error.read()
     ground = read(common)
     elevation = ground.elevation
     frame = ground.frame
@@ -110,8 +117,11 @@ def irradiation(common: Common, around: Around, asked: AskedSky, **given: Any) -
     scene = around.scene(elevation, frame)
     with naming(common.dem):
         plan = plan_irradiation(elevation, settings, scene)
+        if error is not None:
+            plan = plan_errors(plan, error)
     latitude, longitude = frame.centre
     record = light_record(settings) | settled.record | around.record()
+    record |= asked_error.record(error, frame.cell_size)
     record["centre"] = {"latitude": round(latitude, 5), "longitude": round(longitude, 5)}
     inputs = (*around.inputs, *settled.inputs)
     if settings.albedo_map is not None:

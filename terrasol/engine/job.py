@@ -50,6 +50,9 @@ SECONDS_A_CELL_AND_AZIMUTH = 40e-9
 SECONDS_A_TABLE_AND_HEIGHT = 0.15
 """What a core needs for the sun table of a year in steps of a minute, for the estimate only."""
 
+STARTUP_SECONDS = 3.0
+"""To load and to begin, for the estimate only."""
+
 SAMPLE_STRIDE = 8
 """Most cells between samples of what the terrain around receives."""
 
@@ -105,6 +108,8 @@ class Plan:
         What stands beyond and above the raster's ground.
     only : tuple of Block, optional
         The blocks to do; by default all.
+    tables : SkyTables or MappedTables, optional
+        Filled, and for all the raster's latitudes and heights; by default they are made.
     """
 
     elevation: Elevation
@@ -115,6 +120,7 @@ class Plan:
     layers: tuple[Layer, ...]
     scene: Scene = NO_SCENE
     only: tuple[Block, ...] | None = None
+    tables: Tables | None = None
 
     @property
     def blocks(self) -> list[Block]:
@@ -177,7 +183,11 @@ class Plan:
             share = self.settings.period.days / 365.0 * 60.0 / self.settings.step_seconds
             work += SECONDS_A_TABLE_AND_HEIGHT * share * latitudes * heights
         work /= max(threads, 1)
-        return 3.0 + work + 15e-9 * self.cells * sum(len(layer.bands) for layer in self.layers)
+        return (
+            STARTUP_SECONDS
+            + work
+            + 15e-9 * self.cells * sum(len(layer.bands) for layer in self.layers)
+        )
 
     def run(
         self, sink: Sink, threads: int | None = None, progress: Progress | None = None
@@ -308,6 +318,20 @@ def _terrain_layers(elevation: Elevation) -> tuple[Layer, ...]:
     return (outputs.SLOPE, outputs.ASPECT, outputs.SKY_VIEW, *status)
 
 
+def empty_tables(plan: Plan, headroom: float = 0.0) -> Tables:
+    """Sun tables that a plan of irradiation needs, still to be filled.
+
+    `headroom` is what heights may lie beyond those of the plan's ground [m].
+    """
+    settings, middle = plan.settings, plan.frame.centre[1]
+    assert settings is not None
+    latitudes, (lowest, highest) = plan.ranges
+    heights = lowest - headroom, highest + headroom
+    if settings.index_map is None:
+        return SkyTables.over(settings, middle, latitudes, heights)
+    return MappedTables.over(settings, settings.index_map, middle, latitudes, heights)
+
+
 class Run:
     """One run of a plan: its stages in order."""
 
@@ -356,15 +380,9 @@ class Run:
 
     def _tables(self) -> Tables:
         """Sun tables at the knots that the raster needs."""
-        plan = self.plan
-        settings = plan.settings
-        assert settings is not None
-        middle = plan.frame.centre[1]
-        tables: Tables
-        if settings.index_map is None:
-            tables = SkyTables.over(settings, middle, *plan.ranges)
-        else:
-            tables = MappedTables.over(settings, settings.index_map, middle, *plan.ranges)
+        if self.plan.tables is not None:
+            return self.plan.tables
+        tables = empty_tables(self.plan)
         for _ in self._stage("sun tables", tables.tasks, 0.08):
             pass
         return tables

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import Protocol
 
 import numpy as np
@@ -17,6 +18,12 @@ MONTH_NAMES = (
 )  # fmt: skip
 
 PARTS = ("global", "beam", "diffuse", "reflected")
+
+WITH_ERROR_OF_GROUND = ("slope", "aspect")
+"""Layers of the ground alone that error of the heights is told for."""
+
+WHOLE_PERIOD = ("irradiation_year", "irradiation_period")
+"""Layers of irradiation that it is told for, of global light."""
 
 SUNNY_DAY = 20.0
 """Order of a clear day's energy, MJ m-2; only for the rounding of stored values."""
@@ -172,6 +179,32 @@ def light_layers(settings: LightSettings) -> tuple[Layer, ...]:
             )
         )
     return tuple(layers)
+
+
+def standard_error_layers(layers: Sequence[Layer], tags: dict[str, str]) -> tuple[Layer, ...]:
+    """Standard errors of slope, aspect and the whole period's irradiation, of a job's layers.
+
+    `tags` tell of the error of the heights.
+    """
+    from_heights = "from random error of the heights"
+    found = []
+    for layer in layers:
+        if layer.name not in (*WITH_ERROR_OF_GROUND, *WHOLE_PERIOD):
+            continue
+        words = layer.long_name.split(";")[0]
+        named = f"{layer.standard_name} standard_error" if layer.standard_name else None
+        found.append(
+            Layer(
+                f"{layer.name}_standard_error",
+                layer.bands[:1],
+                layer.unit,
+                f"standard error of the {words}, {from_heights}",
+                named,
+                resolution=layer.resolution,
+                tags={**layer.tags, **tags},
+            )
+        )
+    return tuple(found)
 
 
 def _photosynthetic_layer(settings: LightSettings, tags: dict[str, str]) -> Layer:

@@ -4,11 +4,13 @@ from __future__ import annotations
 
 from collections.abc import Callable, Collection, Iterator, Mapping
 from dataclasses import replace
+from typing import Final
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from terrasol.engine.job import Plan
+from terrasol.engine.job import Plan, empty_tables
+from terrasol.engine.plan import carry_out, default_threads
 from terrasol.engine.spread import Spread, SpreadTally
 from terrasol.errors import SettingError
 from terrasol.ground.beyond import Scene
@@ -17,6 +19,9 @@ from terrasol.ground.frame import make_frame
 from terrasol.ground.horizon import Obstacles
 from terrasol.ground.likely import likely_heights
 from terrasol.ground.uncertainty import DemError, error_fields
+
+HEADROOM: Final = 6.0
+"""RMSEs above and below the ground that sun tables are made for. Beyond, they go on straight."""
 
 Told = Callable[[int], None]
 """Told how many realisations are done."""
@@ -174,6 +179,32 @@ def propagate_all(
         if progress is not None:
             progress(done)
     return {name: tally.spread() for name, tally in tallies.items()}
+
+
+def with_tables(plan: Plan, error: DemError, threads: int | None = None) -> Plan:
+    """Make a plan's sun tables once, for all realisations of its ground.
+
+    Parameters
+    ----------
+    plan : Plan
+        Of the ground as it is known.
+    error : DemError
+        Its error.
+    threads : int, optional
+        Default: as many as there are cores to use.
+
+    Returns
+    -------
+    Plan
+        The same, with tables that reach HEADROOM above and below the ground; without light, the
+        plan itself.
+    """
+    if plan.settings is None or plan.tables is not None:
+        return plan
+    tables = empty_tables(plan, HEADROOM * error.rmse)
+    for _ in carry_out(tables.tasks, default_threads() if threads is None else threads):
+        pass
+    return replace(plan, tables=tables)
 
 
 def moved(plan: Plan, elevation: Elevation) -> Plan:
