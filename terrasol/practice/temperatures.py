@@ -80,7 +80,8 @@ def from_daily(
         Of the station [m].
     mean, least, highest : array_like, shape (n,)
         [degC], NaN where missing. With least and highest the day's mean is half their sum, which
-        is what Winkler's classes were made with, even if another mean is given.
+        is what Winkler's classes were made with, even if another mean is given: the mean of all
+        hours may lie most of a degree lower.
 
     Returns
     -------
@@ -131,7 +132,7 @@ def from_hourly(
     -------
     Temperatures
         The day's mean is half the sum of its least and highest value. Hourly means smooth both:
-        the highest, which Huglin's index takes, comes out some tenths of a degree low.
+        the highest, which Huglin's index takes, comes out a little low.
 
     Raises
     ------
