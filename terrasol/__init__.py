@@ -15,6 +15,7 @@ if TYPE_CHECKING:
     from terrasol.engine.datasets import irradiation, terrain
     from terrasol.engine.hours import sun_hours
     from terrasol.engine.series_stack import irradiation_series
+    from terrasol.engine.uncertainty import propagate
     from terrasol.errors import (
         InputError,
         OutputError,
@@ -25,6 +26,7 @@ if TYPE_CHECKING:
     from terrasol.files.rasters import read_elevation
     from terrasol.files.tables import read_station
     from terrasol.ground.elevation import Elevation
+    from terrasol.ground.uncertainty import DemError
     from terrasol.sky.clear import Air, clear_sky, linke_climatology
     from terrasol.sky.cloud import MonthlySky, clouded_sky
     from terrasol.sky.diffuse import split_diffuse
@@ -35,6 +37,7 @@ if TYPE_CHECKING:
 
 _HOMES = {
     "Air": "terrasol.sky.clear",
+    "DemError": "terrasol.ground.uncertainty",
     "Elevation": "terrasol.ground.elevation",
     "InputError": "terrasol.errors",
     "MonthlySky": "terrasol.sky.cloud",
@@ -53,6 +56,7 @@ _HOMES = {
     "linke_climatology": "terrasol.sky.clear",
     "measured_sky": "terrasol.sky.measured",
     "parse_period": "terrasol.sky.period",
+    "propagate": "terrasol.engine.uncertainty",
     "read_elevation": "terrasol.files.rasters",
     "read_station": "terrasol.files.tables",
     "split_diffuse": "terrasol.sky.diffuse",
@@ -65,6 +69,7 @@ _HOMES = {
 
 __all__ = [
     "Air",
+    "DemError",
     "Elevation",
     "InputError",
     "MonthlySky",
@@ -83,6 +88,7 @@ __all__ = [
     "linke_climatology",
     "measured_sky",
     "parse_period",
+    "propagate",
     "read_elevation",
     "read_station",
     "split_diffuse",

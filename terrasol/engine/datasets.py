@@ -11,6 +11,7 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from terrasol.constants import ENERGY_UNITS, REFRACTION_COEFFICIENT
+from terrasol.engine.error_maps import plan_errors
 from terrasol.engine.job import Plan, plan_irradiation, plan_terrain
 from terrasol.engine.outputs import month_labels
 from terrasol.errors import InputError, SettingError
@@ -19,6 +20,7 @@ from terrasol.ground.above import surface_heights
 from terrasol.ground.beyond import Scene, far_ground, make_scene
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import make_frame
+from terrasol.ground.uncertainty import DemError
 from terrasol.light.settings import LightSettings, twelve
 from terrasol.sky.clear import Air, linke_climatology
 from terrasol.sky.irradiance import Sky
@@ -133,6 +135,7 @@ def irradiation(
     surface: Elevation | None = None,
     horizon_gap: bool = False,
     highest: float | None = None,
+    dem_error: DemError | None = None,
     threads: int | None = None,
 ) -> xr.Dataset:
     """Irradiation of every cell, with terrain shade and reflection: potential (clear-sky) or not.
@@ -180,6 +183,9 @@ def irradiation(
     sky : Sky, optional
         A measured sky (`clouded_sky`) or one of monthly indices (`MonthlySky`), in place of
         the clear one.
+    dem_error : DemError, optional
+        Error of the heights, for the standard errors of slope, aspect and the whole period's
+        global irradiation.
     threads : int, optional
         Default: all cores that may be used.
 
@@ -188,7 +194,9 @@ def irradiation(
     xarray.Dataset
         What `terrain` gives, and ``irradiation_year`` (or ``irradiation_period``)
         (part, y, x), ``irradiation_months`` (month, y, x), with `monthly_parts` also
-        ``beam_months``, ``diffuse_months`` and ``reflected_months``.
+        ``beam_months``, ``diffuse_months`` and ``reflected_months``; with `dem_error`
+        ``slope_standard_error``, ``aspect_standard_error`` and
+        ``irradiation_year_standard_error`` (y, x).
 
     Raises
     ------
@@ -229,7 +237,8 @@ def irradiation(
         index_map,
         photons_per_joule,
     )
-    return run_in_memory(plan_irradiation(elevation, settings, scene), threads)
+    plan = plan_irradiation(elevation, settings, scene)
+    return run_in_memory(plan_errors(plan, dem_error) if dem_error else plan, threads)
 
 
 def scene_of(
@@ -323,7 +332,9 @@ def _gap_variables(layer: Layer, values: NDArray[Any]) -> dict[str, xr.DataArray
 def attributes(layer: Layer) -> dict[str, str]:
     """Unit and names of a layer, as CF writes them."""
     named = {"standard_name": layer.standard_name} if layer.standard_name else {}
-    return {"units": layer.unit, "long_name": layer.long_name} | named
+    beside = layer.tags.get("ancillary_variables")
+    found = {"units": layer.unit, "long_name": layer.long_name} | named
+    return found | {"ancillary_variables": beside} if beside else found
 
 
 def clear_air(elevation: Elevation) -> Air:
@@ -341,6 +352,6 @@ def _labelled(plan: Plan, layer: Layer, values: NDArray[Any]) -> xr.DataArray:
     if layer.name.endswith("_months") and plan.settings is not None:
         months = list(month_labels(plan.settings))
         return xr.DataArray(values, {"month": months}, ("month", "y", "x"), attrs=attrs)
-    if layer.name.startswith("irradiation"):
+    if layer.name.startswith("irradiation") and len(layer.bands) > 1:
         return xr.DataArray(values, {"part": list(layer.bands)}, ("part", "y", "x"), attrs=attrs)
     return xr.DataArray(values[0], dims=("y", "x"), attrs=attrs)

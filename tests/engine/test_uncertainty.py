@@ -176,6 +176,17 @@ def test_layers_say_what_they_are(rough):
     assert (energy.tags["realisations"], energy.tags["seed"]) == ("6", "3")
 
 
+def test_datasets_have_them(rough, with_errors):
+    quick = {"air": terrasol.Air.ineichen(3.0), "azimuths": 8, "step_seconds": 1800.0}
+    found = terrasol.irradiation(rough, "2025-04-10/2025-04-12", dem_error=ERROR, **quick)
+    for name in ("slope", "aspect", "irradiation_period"):
+        error = found[f"{name}_standard_error"]
+        assert error.dims == ("y", "x")
+        np.testing.assert_array_equal(error, with_errors[0][error.name][0])
+        assert found[name].attrs["ancillary_variables"] == error.name
+    assert found["irradiation_period"].dims == ("part", "y", "x")
+
+
 def test_a_realisation_moves_what_stands_on_the_ground_and_nothing_else(rough):
     """A wood 20 m high stays 20 m high."""
     frame = make_frame(rough.shape, rough.transform, rough.crs)
