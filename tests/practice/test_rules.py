@@ -2,6 +2,8 @@
 
 import numpy as np
 import pytest
+from hypothesis import given
+from hypothesis import strategies as st
 
 from terrasol.errors import SettingError
 from terrasol.practice.rules import keep_patches, meet, parse_rule
@@ -125,3 +127,22 @@ def test_no_cell_and_a_negative_area():
     assert (got.areas.size, got.ignored, got.kept.any()) == (0, 0, False)
     with pytest.raises(SettingError, match="least area"):
         keep_patches(picture("##"), 1.0, -1.0)
+
+
+@given(st.recursive(st.sampled_from(("aspect", "slope_percent", "2", "0.5", "7")),
+                    lambda part: st.builds("({} {} {})".format, part, st.sampled_from("+-*"), part),
+                    max_leaves=6).flatmap(lambda left: st.builds(
+                        f"{left} {{}} {{}}".format, st.sampled_from(("<", "<=", ">", ">=")),
+                        st.sampled_from(("aspect", "-slope_percent", "3")))),
+       st.sampled_from(("and", "or")), st.booleans())  # fmt: skip
+def test_known_quantities_are_judged_as_python_judges_them(part, joint, reverse):
+    text = f"{'not ' if reverse else ''}({part}) {joint} aspect > 5"
+    rng = np.random.default_rng(1)
+    cells = {name: rng.integers(0, 12, 30).astype(float) for name in ("aspect", "slope_percent")}
+    verdict = meet(parse_rule(text, KNOWN), cells)
+    plain = [
+        bool(eval(text, {"__builtins__": {}}, {name: values[k] for name, values in cells.items()}))
+        for k in range(30)
+    ]
+    assert verdict.met.tolist() == plain
+    assert not verdict.unknown.any()
