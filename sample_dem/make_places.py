@@ -379,6 +379,10 @@ unit = "degC"
 [columns.precipitation]
 column = "precipitation"
 unit = "mm"
+
+[columns.snow_water]
+column = "snow_water"
+unit = "mm"
 """
 
 

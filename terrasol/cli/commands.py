@@ -9,6 +9,7 @@ from terrasol.cli.compare import compare
 from terrasol.cli.endings import EXIT_CODES, USAGE
 from terrasol.cli.hours import hours
 from terrasol.cli.irradiation import irradiation
+from terrasol.cli.melt import melt
 from terrasol.cli.plots import plots
 from terrasol.cli.series import series
 from terrasol.cli.streams import say
@@ -36,6 +37,7 @@ def terrasol(context: click.Context) -> None:
 terrasol.add_command(compare)
 terrasol.add_command(hours)
 terrasol.add_command(irradiation)
+terrasol.add_command(melt)
 terrasol.add_command(plots)
 terrasol.add_command(series)
 terrasol.add_command(terrain)

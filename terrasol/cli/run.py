@@ -210,7 +210,7 @@ def _carry_out(job: Job, record: Record) -> Record:
     common, plan = job.common, job.plan
     delivery = Delivery(common.out_dir, job.names, overwrite=common.overwrite, need=plan.disk_bytes)
     with delivery, progress_bar(common.quiet) as move:
-        summary, picture, packing = _compute(job, delivery, _tags(record, plan.elevation), move)
+        summary, picture, packing = _compute(job, delivery, tags_of(record, plan.elevation), move)
         if picture:
             delivery.write_bytes(OVERVIEW, picture)
         seconds = {
@@ -298,7 +298,7 @@ def announce_compilation(quiet: bool) -> None:
         say("first run: compiling, once, for up to half a minute")
 
 
-def _tags(record: Record, elevation: Elevation) -> dict[str, str]:
+def tags_of(record: Record, elevation: Elevation) -> dict[str, str]:
     """What every file says of how it came about."""
     tags = {
         "TERRASOL_VERSION": __version__,

@@ -463,7 +463,7 @@ def zones_for(
         if not known.any():
             raise InputError("the area holds no known ground of the elevation model")
         relief = float(np.ptp(heights[known]))
-        step = next((s for s in (10.0, 20.0, 50.0, 100.0, 200.0) if relief / s <= 12.0), 500.0)
+        step = next((s for s in (10.0, 20.0, 50.0, 100.0, 200.0) if relief / s <= 15.0), 500.0)
     return Zones.of(heights, step, share, name)
 
 

@@ -39,7 +39,7 @@ def save_state(result: MeltResult, path: str | PathLike[str]) -> None:
     shape = plan.light.elevation.shape
     with StateWriter(path, head_of(plan, plan.dates[-1] + 1), shape) as target:
         for name, unit, dtype, part in _maps(len(plan.models)):
-            values = np.zeros(shape, dtype)
+            values: NDArray[Any] = np.zeros(shape, dtype)
             for cells in result.cells:
                 values[cells.place] = part(cells).reshape(len(cells.rows), len(cells.columns))
             target.write(name, values, unit)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Final
 
 import numpy as np
@@ -10,7 +10,10 @@ from numpy.typing import NDArray
 
 from terrasol.errors import InputError, SettingError
 from terrasol.practice.snow import Weather
+from terrasol.sky.interval import cosine, interval_means
+from terrasol.sky.irradiance import Sky
 from terrasol.sky.station import Station
+from terrasol.sky.sun import SunSeries
 
 FILL_HOURS: Final = 6.0
 """Longest gap of temperature or precipitation that is mended unless another length is asked for
@@ -105,6 +108,31 @@ def hourly_weather(
         edges, months, found["temperature"], found["precipitation"], station.height, albedo
     )
     return Mended(weather, count, doubts)
+
+
+def level_light(station: Station, sky: Sky, edges: NDArray[np.datetime64]) -> NDArray[np.float64]:
+    """Beam of a sky on level ground at the station, the mean of each hour, shape (days, 24)."""
+    hours = np.arange(edges[0], edges[-1], np.timedelta64(HOUR, "s"))
+    clock = replace(station, start=hours, seconds=HOUR, values={}, flags={})
+
+    def light(sun: SunSeries) -> dict[str, NDArray[np.float64]]:
+        return {"beam": sky.over(sun, station.height).beam_normal * cosine(sun)}
+
+    return interval_means(clock, light)["beam"].reshape(-1, 24)
+
+
+def measured_light(station: Station, edges: NDArray[np.datetime64]) -> NDArray[np.float64]:
+    """Global irradiance as measured, the mean of each hour, shape (days, 24) [W m-2].
+
+    Raises
+    ------
+    InputError
+        It was not measured, or has gaps in the days.
+    """
+    if "global" not in station.values:
+        raise InputError(f"{station.name}: no global irradiance was measured at the station")
+    values, _ = _without_gaps(station, "global", edges.astype("M8[s]"), 0.0)
+    return np.maximum(_by_hour(station, values, edges.astype("M8[s]"), mean=True), 0.0)
 
 
 def daily_snow_water(station: Station, edges: NDArray[np.datetime64]) -> NDArray[np.float64]:

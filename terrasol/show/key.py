@@ -67,6 +67,8 @@ class Scale:
         Whether ground lies outside them.
     colour_map : str
         Of matplotlib.
+    first_day : numpy.datetime64[D], optional
+        Where values are days since one: the bar then names dates.
     """
 
     low: float
@@ -74,6 +76,7 @@ class Scale:
     below: bool = False
     above: bool = False
     colour_map: str = COLOUR_MAP
+    first_day: np.datetime64 | None = None
 
     def colours(self, values: NDArray[np.floating]) -> NDArray[np.float32]:
         """Red, green and blue of values; NaN as `low`."""
@@ -120,6 +123,27 @@ def mean_text(mean: float, step: float) -> str:
     return "mean " + number(mean, min(step / 10, 10.0 ** (power - 3)))
 
 
+def date_text(day: np.datetime64) -> str:
+    """A date without its year: ``9 Apr``."""
+    date = day.astype("M8[D]").item()
+    return f"{date.day} {MONTH_NAMES[date.month - 1][:3]}"
+
+
+def _ticks(scale: Scale) -> tuple[list[tuple[float, str]], Callable[[float], str]]:
+    """Values to be named on the bar, with their names; and how to word the mean."""
+    first = scale.first_day
+    if first is None:
+        step = nice_step(scale.high - scale.low, 6)
+        at = np.arange(math.ceil(scale.low / step), math.floor(scale.high / step) + 1) * step
+        return [(tick, number(tick, step)) for tick in at], lambda mean: mean_text(mean, step)
+    days = np.arange(math.ceil(scale.low), math.floor(scale.high) + 1)
+    dates = first + days
+    of_month = (dates - dates.astype("M8[M]")).astype(int) + 1
+    wanted = (1,) if days.size > 200 else (1, 15) if days.size > 45 else (1, 8, 15, 22)
+    named = [(float(d), date_text(first + d)) for d in days[np.isin(of_month, wanted)]]
+    return named, lambda mean: f"mean {date_text(first + round(mean))}"
+
+
 def range_text(values: Collection[float]) -> str:
     """The least and the greatest of values: ``2.1 to 3.4``, or ``0.2`` if they are one."""
     ends = [f"{end:.3g}" for end in (min(values), max(values))]
@@ -162,10 +186,8 @@ def draw_colour_bar(
 ) -> None:
     """Draw the colour bar, with the share of ground at each colour beside it."""
     known = values[np.isfinite(values)]
-    step = nice_step(scale.high - scale.low, 6)
-    ticks = np.arange(math.ceil(scale.low / step), math.floor(scale.high / step) + 1) * step
-    labels = [number(tick, step) for tick in ticks]
-    left = x + max((text_width(label, TEXT) for label in labels), default=0.0) + 14
+    ticks, mean_words = _ticks(scale)
+    left = x + max((text_width(label, TEXT) for _, label in ticks), default=0.0) + 14
     right, bottom = left + BAR_WIDTH, y + BAR_HEIGHT
 
     def height_of(value):
@@ -180,7 +202,7 @@ def draw_colour_bar(
         if there:
             corners = [(left, edge), (right, edge), ((left + right) / 2, tip)]
             page.shape(corners, fill=scale.colours(np.array([value]))[0])
-    for tick, label in zip(ticks, labels, strict=True):
+    for tick, label in ticks:
         level = height_of(tick)
         page.lines([[(left - 7, level), (left, level)]], line=1.2)
         page.text(left - 12, level, label, TEXT, across="right", down="center_baseline")
@@ -199,7 +221,7 @@ def draw_colour_bar(
         mean = float(known.mean(dtype=np.float64))
     level = height_of(min(max(mean, scale.low), scale.high))
     page.lines([[(right + 6, level), (right + 6 + HISTOGRAM_WIDTH, level)]], line=1.0)
-    text = mean_text(mean, step)
+    text = mean_words(mean)
     page.text(right + 6 + HISTOGRAM_WIDTH + 6, level, text, SMALL, down="center_baseline")
 
 

@@ -51,6 +51,7 @@ def overview_png(
     monthly_means: Mapping[tuple[int, int], float] | None = None,
     frame: Frame | None = None,
     colour_map: str = key.COLOUR_MAP,
+    first_day: np.datetime64 | None = None,
 ) -> bytes:
     """Draw the overview map of a run.
 
@@ -77,6 +78,8 @@ def overview_png(
         That of `elevation`, if it is at hand.
     colour_map : str
         Of matplotlib; one whose lightness rises evenly.
+    first_day : numpy.datetime64[D], optional
+        Where the values are days since one: the key then names dates.
 
     Returns
     -------
@@ -92,7 +95,7 @@ def overview_png(
     frame = frame or make_frame(elevation.shape, elevation.transform, elevation.crs)
     picture = make_picture(elevation, frame, MAP_BOX)
     values = picture.cells(picture.average(energy))
-    scale = replace(key.make_scale(values), colour_map=colour_map)
+    scale = replace(key.make_scale(values), colour_map=colour_map, first_day=first_day)
     blocks = _blocks(values, scale, quantity, unit, mean, monthly_means, notes)
     page, places = _lay_out(picture, blocks)
     _write_head_and_foot(page, title, subtitle, elevation, frame)

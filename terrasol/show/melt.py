@@ -1,0 +1,265 @@
+"""Pictures of a snow season: the area's hydrograph, bands of height, melt-out."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import Final, Literal
+
+import matplotlib
+import numpy as np
+from numpy.typing import NDArray
+
+from terrasol import __version__
+from terrasol.engine.melt_tables import DEPTHS, SeasonTables
+from terrasol.engine.outputs import MONTH_NAMES
+from terrasol.ground.elevation import Elevation
+from terrasol.ground.frame import Frame
+from terrasol.show.key import SMALL, date_text, draw_notes, number
+from terrasol.show.maps import SUBTITLE, TITLE, overview_png
+from terrasol.show.page import POINTS_PER_PIXEL, SOFT, Page, clip, text_width, wrap
+from terrasol.show.panel import Panel, steps
+
+WIDTH, MARGIN, LEFT = 1360, 48, 116
+HEAD, GAP = 214, 118
+"""Measures of the sheets [pixels]."""
+
+SNOW, RAIN = "#8fb3d1", "#2d5f8b"
+MELT, RUNOFF, WATER = "#c4633f", "#24262b", "#41769f"
+COVER = "#9a9d93"
+"""Colours: cold for what falls and lies, warm for what melts."""
+
+LATE_IS_PALE: Final = "GnBu_r"
+"""Colours of melt-out: dark where the ground is bare early, pale where snow lies long."""
+
+
+def hydrograph_png(
+    tables: SeasonTables, *, title: str, subtitle: str, notes: Sequence[str], spread: str
+) -> bytes:
+    """Draw what falls, melts and lies on the area, day by day.
+
+    Parameters
+    ----------
+    tables : SeasonTables
+    title, subtitle : str
+    notes : sequence of str
+        What the sheet is and is not.
+    spread : str
+        What the pale bands are, in words; empty if there are none.
+    """
+    heights = (130, 320, 240)
+    lines = _broken(notes)
+    page = Page(WIDTH, HEAD + sum(heights) + 2 * GAP + 70 + 24 * len(lines) + 40)
+    _head(page, title, subtitle)
+    top = HEAD
+    _draw_fall(page, tables, top, heights[0])
+    top += heights[0] + GAP
+    _draw_flow(page, tables, top, heights[1], spread)
+    top += heights[1] + GAP
+    _draw_store(page, tables, top, heights[2])
+    _foot(page, lines, top + heights[2] + 62)
+    return page.png(Title=title, Software=f"terrasol {__version__}")
+
+
+def bands_png(tables: SeasonTables, *, title: str, subtitle: str, notes: Sequence[str]) -> bytes:
+    """Draw snow water, runoff input and covered share of each band of height, day by day."""
+    heights = (300, 300, 220)
+    lines = _broken(notes)
+    page = Page(WIDTH, HEAD + sum(heights) + 2 * GAP + 70 + 24 * len(lines) + 40)
+    _head(page, title, subtitle)
+    kept = [b for b in range(tables.edges.size - 1) if tables.area[b].sum() > 0.0]
+    colours = matplotlib.colormaps["viridis"](np.linspace(0.0, 0.88, max(len(kept), 2)))
+    top = HEAD
+    for name, words, unit, height, days in (
+        ("snow_water_mm", "Snow water", "mm, end of day", heights[0], 1),
+        ("runoff_input_mm", "Runoff input", "mm a day, mean of 7 days", heights[1], 7),
+        ("snow_covered_share", "Covered by snow", "share of the band", heights[2], 1),
+    ):
+        panel = Panel(page, LEFT, top, WIDTH - MARGIN - LEFT - 150, height)
+        values = [_running(tables.bands[:, b, DEPTHS.index(name)], days) for b in kept]
+        most = max(float(np.nanmax(v)) for v in values) if kept else 1.0
+        _axes(panel, tables, 1.08 * most if most > 0.0 else 1.0, words, unit)
+        for colour, curve in zip(colours, values, strict=False):
+            panel.axes.plot(_days(tables), curve, color=colour, linewidth=2.0 * POINTS_PER_PIXEL)
+        top += height + GAP
+    _draw_band_key(page, tables, kept, colours)
+    _foot(page, lines, top - GAP + 62)
+    return page.png(Title=title, Software=f"terrasol {__version__}")
+
+
+def melt_out_png(
+    elevation: Elevation,
+    frame: Frame,
+    days: NDArray[np.float32],
+    first_day: np.datetime64,
+    *,
+    title: str,
+    subtitle: str,
+    notes: Sequence[str],
+) -> bytes:
+    """Draw the first day that ended without snow after the greatest, as a map of dates."""
+    return overview_png(
+        elevation,
+        days,
+        title=title,
+        subtitle=subtitle,
+        quantity="First day that ended bare",
+        unit=f"after {first_day}",
+        notes=notes,
+        frame=frame,
+        colour_map=LATE_IS_PALE,
+        first_day=first_day,
+    )
+
+
+def _head(page: Page, title: str, subtitle: str) -> None:
+    room = page.width - MARGIN - LEFT
+    page.text(LEFT, 70, clip(title, TITLE, room, bold=True), TITLE, bold=True)
+    page.text(LEFT, 106, clip(subtitle, SUBTITLE, room), SUBTITLE, colour=SOFT)
+
+
+def _broken(notes: Sequence[str]) -> list[str]:
+    return [line for note in notes for line in wrap(note, SMALL, WIDTH - MARGIN - LEFT)]
+
+
+def _foot(page: Page, lines: Sequence[str], top: float) -> None:
+    draw_notes(page, LEFT, top, lines)
+    page.text(LEFT, page.height - 24, f"terrasol {__version__}", SMALL, colour=SOFT)
+
+
+def _days(tables: SeasonTables) -> NDArray[np.float64]:
+    """Middle of each day on the time axis."""
+    return np.arange(tables.dates.size) + 0.5
+
+
+def _running(values: NDArray[np.float64], days: int) -> NDArray[np.float64]:
+    """Mean of the days around, fewer at the ends."""
+    ones = np.ones(days)
+    whole = np.convolve(np.ones_like(values), ones, "same")
+    mean: NDArray[np.float64] = np.convolve(values, ones, "same") / whole
+    return mean
+
+
+def _axes(panel: Panel, tables: SeasonTables, high: float, words: str, unit: str) -> None:
+    """Range, heading, months below and lines across."""
+    panel.limits(0.0, float(tables.dates.size), 0.0, high)
+    panel.y_ticks([tick for tick in steps(0.0, high, 4) if tick >= 0.0])
+    panel.heading(words, unit)
+    dates, width = tables.dates, panel.width / tables.dates.size
+    if dates.size <= 62:
+        every = 7 if dates.size > 16 else 1
+        at = list(range(0, dates.size, every))
+        panel.x_ticks([k + 0.5 for k in at], [date_text(dates[k]) for k in at])
+        return
+    middles: list[float] = []
+    names: list[str] = []
+    for month in tables.months:
+        inside = np.flatnonzero(tables.of_month(month))
+        if inside.size * width > 34:
+            middles.append(float(inside.mean()) + 0.5)
+            year, number_of = month.split("-")
+            name = MONTH_NAMES[int(number_of) - 1][:3]
+            names.append(
+                f"{name} {year}" if number_of == "01" or month == tables.months[0] else name
+            )
+        if inside[0] > 0:
+            panel.axes.axvline(inside[0], color="#e4e1da", linewidth=POINTS_PER_PIXEL, zorder=0)
+    panel.x_ticks(middles, names)
+
+
+def _bars(panel: Panel, low: NDArray[np.float64], high: NDArray[np.float64], colour: str) -> None:
+    edges = np.arange(high.size + 1)
+    panel.axes.stairs(high, edges, baseline=low, fill=True, facecolor=colour, edgecolor="none")
+
+
+def _draw_fall(page: Page, tables: SeasonTables, top: float, height: float) -> None:
+    """Rain on top of snow."""
+    panel = Panel(page, LEFT, top, WIDTH - MARGIN - LEFT, height)
+    snow, rain = tables.column("snowfall_mm"), tables.column("rain_mm")
+    high = max(1.08 * float((snow + rain).max()), 1.0)
+    _axes(panel, tables, high, "Precipitation", "mm a day on map area")
+    _bars(panel, np.zeros_like(snow), snow, SNOW)
+    _bars(panel, snow, snow + rain, RAIN)
+    _key(page, top - 18, (("snow", SNOW, "box"), ("rain", RAIN, "box")))
+
+
+def _draw_flow(page: Page, tables: SeasonTables, top: float, height: float, spread: str) -> None:
+    """Melt with its spread, and runoff input."""
+    panel = Panel(page, LEFT, top, WIDTH - MARGIN - LEFT, height)
+    melt, runoff = tables.column("melt_mm"), tables.column("runoff_input_mm")
+    high = max(float(melt.max()), float(runoff.max()), 1.0)
+    entries = [
+        ("melt", MELT, "line"),
+        ("runoff input: outflow and rain on bare ground", RUNOFF, "thin"),
+    ]
+    if spread:
+        low, most = tables.range_of("melt_mm")
+        high = max(high, float(most.max()))
+        panel.axes.fill_between(_days(tables), low, most, color=MELT, alpha=0.26, linewidth=0.0)
+    _axes(panel, tables, 1.08 * high, "Melt and runoff input", "mm a day on map area")
+    thin = POINTS_PER_PIXEL
+    panel.axes.plot(_days(tables), runoff, color=RUNOFF, linewidth=1.1 * thin)
+    panel.axes.plot(_days(tables), melt, color=MELT, linewidth=2.4 * thin)
+    _key(page, top - 18, entries)
+    if spread:
+        for k, line in enumerate(wrap(f"Pale: {spread}", SMALL, 430)):
+            page.text(LEFT + 14, top + 22 + 22 * k, line, SMALL, colour=SOFT)
+
+
+def _draw_store(page: Page, tables: SeasonTables, top: float, height: float) -> None:
+    """Snow water with its spread; the covered share on a scale of its own."""
+    panel = Panel(page, LEFT, top, WIDTH - MARGIN - LEFT, height)
+    water, cover = tables.column("snow_water_mm"), tables.column("snow_covered_share")
+    high = max(float(water.max()), 1.0)
+    if tables.members.shape[1]:
+        low, most = tables.range_of("snow_water_mm")
+        high = max(high, float(most.max()))
+        panel.axes.fill_between(_days(tables), low, most, color=WATER, alpha=0.26, linewidth=0.0)
+    high *= 1.08
+    _axes(panel, tables, high, "Snow water", "mm on map area, end of day")
+    thin = POINTS_PER_PIXEL
+    panel.axes.plot(_days(tables), water, color=WATER, linewidth=2.4 * thin)
+    panel.axes.plot(_days(tables), cover * high / 1.08, color=COVER, linewidth=1.4 * thin,
+                    linestyle=(0, (4, 2.5)))  # fmt: skip
+    x = LEFT + panel.width
+    for share in (0.5, 1.0):
+        y = top + height * (1.0 - share / 1.08)
+        page.text(x - 4, y - 6, f"{share:.0%}", 15.0, colour=SOFT, across="right")
+    k = int(water.argmax())
+    words = f"{number(water[k], 1.0)} mm on {date_text(tables.dates[k])}"
+    side: Literal["left", "right"] = "right" if k > tables.dates.size / 2 else "left"
+    away = -12 if side == "right" else 12
+    at = LEFT + (k + 0.5) / tables.dates.size * panel.width + away
+    page.text(at, top + height * (1.0 - water[k] / high) - 8, words, SMALL, across=side)
+    _key(
+        page,
+        top - 18,
+        (("snow water", WATER, "line"), ("share covered, to 100 %", COVER, "dashed")),
+    )
+
+
+def _key(page: Page, y: float, entries: Sequence[tuple[str, str, str]]) -> None:
+    """What lines and areas are, at the right end."""
+    x = WIDTH - MARGIN - sum(text_width(words, SMALL) + 70 for words, _, _ in entries) + 26
+    for words, colour, kind in entries:
+        if kind == "box":
+            page.box(x, y - 13, 30, 14, fill=colour)
+        elif kind == "dashed":
+            dashes = [[(x + k, y - 6), (x + k + 7, y - 6)] for k in (0, 12, 24)]
+            page.lines(dashes, colour=colour, line=1.6)
+        else:
+            line = 2.4 if kind == "line" else 1.2
+            page.lines([[(x, y - 6), (x + 30, y - 6)]], colour=colour, line=line)
+        page.text(x + 38, y, words, SMALL)
+        x += text_width(words, SMALL) + 70
+
+
+def _draw_band_key(page, tables, kept, colours) -> None:
+    """Bands from the highest down, with their area."""
+    x, y = WIDTH - MARGIN - 128, float(HEAD)
+    page.text(x, y - 18, "Height, m", SMALL, bold=True)
+    for b, colour in reversed(list(zip(kept, colours, strict=False))):
+        page.lines([[(x, y + 8), (x + 24, y + 8)]], colour=colour, line=3.0)
+        low, high = tables.edges[b], tables.edges[b + 1]
+        page.text(x + 32, y + 14, f"{low:g}–{high:g}", SMALL)
+        page.text(x + 32, y + 34, f"{tables.area[b].sum() / 1e6:.2f} km²", 14.0, colour=SOFT)
+        y += 46
