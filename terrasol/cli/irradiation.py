@@ -26,6 +26,7 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from terrasol.engine.job import Plan, Summary
+    from terrasol.ground.beyond import Scene
     from terrasol.ground.elevation import Elevation
     from terrasol.light.settings import LightSettings
 
@@ -186,6 +187,25 @@ _SKY_NOTES = {
 }
 
 
+def light_notes(settings: LightSettings, scene: Scene) -> tuple[str, ...]:
+    """What energy was computed from, in sentences for a page's notes."""
+    from terrasol.engine.outputs import basis_words, sky_kind
+    from terrasol.show.key import range_text
+
+    assumed = f"albedo of the ground {range_text(settings.month_albedo)}."
+    if settings.air.linke is not None:
+        linke = [settings.air.linke[month - 1] for _, month in settings.period.months]
+        assumed = f"Linke turbidity by month {range_text(linke)}, {assumed}"
+    return (
+        _SKY_NOTES[sky_kind(settings)].format(PAPERS[settings.air.model]),
+        assumed[0].upper() + assumed[1:],
+        f"Energy {basis_words(settings)}, with light from the ground around.",
+        "Shade of all that stands in the raster, and of nothing beyond it."
+        if scene.far is None
+        else "Shade of all that stands in the raster and in the far model around it.",
+    )
+
+
 def _titled(words: str, part: str) -> str:
     """The sky's words as a title, for a part of the light or for irradiation as such."""
     text = " ".join(words.format(part).split())
@@ -194,8 +214,7 @@ def _titled(words: str, part: str) -> str:
 
 def _draw(plan: Plan, energy: NDArray[np.float32], summary: Summary, title: str) -> bytes:
     """The overview map of a finished run."""
-    from terrasol.engine.outputs import basis_words, month_labels, sky_kind, sky_words
-    from terrasol.show.key import range_text
+    from terrasol.engine.outputs import basis_words, month_labels, sky_words
     from terrasol.show.maps import overview_png
     from terrasol.show.page import printable
 
@@ -209,10 +228,6 @@ def _draw(plan: Plan, energy: NDArray[np.float32], summary: Summary, title: str)
     whole = next(layer for layer in plan.layers if layer.name.startswith("irradiation_"))
     means = summary.numbers.get("irradiation_months", {})
     months = zip(settings.period.months, month_labels(settings), strict=True)
-    assumed = f"albedo of the ground {range_text(settings.month_albedo)}."
-    if settings.air.linke is not None:
-        linke = [settings.air.linke[month - 1] for _, month in settings.period.months]
-        assumed = f"Linke turbidity by month {range_text(linke)}, {assumed}"
     return overview_png(
         plan.elevation,
         energy,
@@ -220,14 +235,7 @@ def _draw(plan: Plan, energy: NDArray[np.float32], summary: Summary, title: str)
         subtitle=f"{_titled(sky_words(settings), '')}, with terrain shade, {settings.period.label}",
         quantity=f"{_titled(sky_words(settings), 'global')}, {basis_words(settings)}",
         unit=settings.unit,
-        notes=(
-            _SKY_NOTES[sky_kind(settings)].format(PAPERS[settings.air.model]),
-            assumed[0].upper() + assumed[1:],
-            f"Energy {basis_words(settings)}, with light from the ground around.",
-            "Shade of all that stands in the raster, and of nothing beyond it."
-            if plan.scene.far is None
-            else "Shade of all that stands in the raster and in the far model around it.",
-        ),
+        notes=light_notes(settings, plan.scene),
         mean=summary.numbers.get(whole.name, {}).get("global", {}).get("mean"),
         monthly_means={month: means[label]["mean"] for month, label in months if label in means},
         frame=plan.frame,

@@ -210,7 +210,7 @@ def cell_of(
     return row, column
 
 
-def place_words(latitude: float, longitude: float) -> str:
+def place_words(latitude: float, longitude: float, digits: int = 4) -> str:
     """Latitude and longitude as people write them.
 
     Examples
@@ -220,8 +220,8 @@ def place_words(latitude: float, longitude: float) -> str:
     """
     longitude = (longitude + 180.0) % 360.0 - 180.0
     return (
-        f"{abs(latitude):.4f} {'N' if latitude >= 0 else 'S'}"
-        f" {abs(longitude):.4f} {'E' if longitude >= 0 else 'W'}"
+        f"{abs(latitude):.{digits}f} {'N' if latitude >= 0 else 'S'}"
+        f" {abs(longitude):.{digits}f} {'E' if longitude >= 0 else 'W'}"
     )
 
 

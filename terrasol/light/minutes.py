@@ -121,7 +121,7 @@ def track(day: date, latitude: float, longitude: float, height: float, clock: Cl
     --------
     >>> noon = track(date(2025, 3, 20), 46.5, 10.6, 600.0, Clock("solar"))
     >>> round(float(noon.elevation.max()), 1), round(float(noon.azimuth[noon.elevation.argmax()]))
-    (43.4, 180)
+    (43.6, 180)
     """
     sectors = 8
     days = Days.over([day], longitude, clock, sectors)

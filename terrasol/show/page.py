@@ -131,9 +131,9 @@ class Page:
             )
         )
 
-    def image(self, x: float, y: float, pixels: NDArray[Any]) -> None:
-        """Lay an array of shape (height, width, 3) down, pixel on pixel."""
-        height, width = pixels.shape[:2]
+    def image(self, x: float, y: float, pixels: NDArray[Any], dots: int = 1) -> None:
+        """Lay an array of shape (height, width, 3) down, `dots` of its pixels on one."""
+        height, width = (size / dots for size in pixels.shape[:2])
         self.axes.imshow(
             (np.asarray(pixels) * 255 + 0.5).astype(np.uint8),
             extent=(x, x + width, y + height, y),

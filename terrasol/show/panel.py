@@ -43,6 +43,15 @@ class Panel:
         self.axes.set_xlim(low_x, high_x)
         self.axes.set_ylim(low_y, high_y)
 
+    def place(self, x: float, y: float) -> tuple[float, float]:
+        """Where a value of both axes lies on the page [pixels]."""
+        left, right = self.axes.get_xlim()
+        low, high = self.axes.get_ylim()
+        return (
+            self.x + (x - left) / (right - left) * self.width,
+            self.y + (high - y) / (high - low) * self.height,
+        )
+
     def heading(self, words: str, unit: str = "", size: float = TEXT, rise: float = 18.0) -> None:
         """Write above the panel."""
         self.page.text(self.x, self.y - rise, words, size, bold=True)
