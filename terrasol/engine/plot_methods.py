@@ -249,8 +249,8 @@ def _sample_words(table: PlotTable, settings: PlotSettings) -> list[str]:
         radii = _joined([f"{radius:g}" for radius in settings.radii])
         said.append(
             f"Within {radii} m around it the mean weights each cell by the share of its area in the"
-            " circle; least and greatest are of all cells that the circle touches; aspect is"
-            " averaged as a vector."
+            " circle; least and greatest are of all cells of which it covers a part; aspect"
+            " is averaged as a vector."
         )
     if "gps_error_m" in table.frame:
         middle = float(table.frame["gps_error_m"].median())

@@ -28,8 +28,8 @@ STATISTICS: Final = {
     POINT: "bilinear between the centres of the four nearest cells",
     ERROR: "standard deviation of the cell's value over the places where the plot may lie",
     MEAN: "mean over the circle, cells weighted by the share that lies in it",
-    LEAST: "least of the cells that the circle touches",
-    GREATEST: "greatest of the cells that the circle touches",
+    LEAST: "least of the cells of which the circle covers a part (over 1/256)",
+    GREATEST: "greatest of the cells of which the circle covers a part (over 1/256)",
     KNOWN: "share of the circle's area that is known ground",
     RESULTANT: "length of the mean aspect vector: 1 if all cells face one way, 0 if all ways",
 }

@@ -253,7 +253,7 @@ def correlation(
     Examples
     --------
     >>> correlation([1.0, 2.0, 3.0, float("nan")], [1.0, 8.0, 27.0, 5.0])
-    (0.97..., 1.0, 3)
+    (0.966..., 1.0, 3)
     """
     a, b = np.asarray(one, np.float64), np.asarray(other, np.float64)
     known = np.isfinite(a) & np.isfinite(b)
