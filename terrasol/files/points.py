@@ -5,6 +5,7 @@ from __future__ import annotations
 import csv
 import os
 import re
+import warnings
 from collections.abc import Sequence
 from dataclasses import dataclass, field
 from os import PathLike
@@ -12,6 +13,7 @@ from typing import Any, Final
 
 import numpy as np
 import pandas as pd
+import shapely
 from numpy.typing import NDArray
 from pyproj import CRS
 from pyproj.exceptions import CRSError
@@ -245,22 +247,28 @@ def _from_text(
 
 def _from_vectors(path: str | PathLike[str], layer: str | None, crs: Any) -> _Found:
     """Places from a vector file."""
-    frame = read_features(path, layer, "Point")
+    with warnings.catch_warnings(record=True) as heard:
+        warnings.simplefilter("always")
+        frame = read_features(path, layer, "Point")
+    told = dict.fromkeys(" ".join(str(w.message).split()) for w in heard)
     if not len(frame):
         raise InputError("the file holds no feature: give one with points")
     if frame.crs is not None and crs is not None:
         raise SettingError("the vector file has its own CRS: leave the CRS of the plots out")
     source = _known_crs(crs) if crs is not None else source_crs(frame.crs, path)
-    shapes = frame.geometry.array
-    kinds = {g.geom_type for g in shapes if g is not None and not g.is_empty}
-    if kinds - {"Point"}:
-        raise InputError(
-            f"the file holds {word_list(sorted(kinds - {'Point'}))}: give one single point a plot"
-        )
-    places = [(np.nan, np.nan) if g is None or g.is_empty else (g.x, g.y) for g in shapes]
-    x, y = np.array(places, np.float64).T
+    shapes = [None if g is None or g.is_empty else _single(g) for g in frame.geometry.array]
+    kinds = sorted({g.geom_type for g in shapes if g is not None} - {"Point"})
+    if kinds:
+        raise InputError(f"the file holds {word_list(kinds)}: give one single point a plot")
+    x, y = np.array([(np.nan, np.nan) if g is None else (g.x, g.y) for g in shapes], float).T
     table = pd.DataFrame(frame.drop(columns=frame.geometry.name))
-    return _Found(table, x, y, source, (), ())
+    return _Found(table, x, y, source, (), tuple(told))
+
+
+def _single(geometry: Any) -> Any:
+    """The point of a multipoint that has one; all else as it is."""
+    parts = shapely.get_parts(geometry)
+    return parts[0] if len(parts) == 1 else geometry
 
 
 def _read_text(path: str | PathLike[str]) -> tuple[pd.DataFrame, list[str]]:
