@@ -6,7 +6,7 @@ from calendar import monthrange
 from collections.abc import Sequence
 from dataclasses import dataclass, field
 from itertools import pairwise
-from typing import Final
+from typing import Any, Final
 
 import numpy as np
 from numpy.typing import NDArray
@@ -26,7 +26,16 @@ from terrasol.practice.classes import (
     weighted_mean,
     weighted_percentiles,
 )
+from terrasol.practice.degree_days import (
+    HUGLIN,
+    LAPSE,
+    WINKLER,
+    huglin,
+    monthly_shortfall,
+    winkler,
+)
 from terrasol.practice.rules import Patches, Rule, keep_patches, meet
+from terrasol.practice.temperatures import Temperatures
 from terrasol.sky.period import Period
 
 HECTARE: Final = 10_000.0
@@ -96,6 +105,36 @@ class Level:
 
 
 @dataclass(frozen=True)
+class Warmth:
+    """Temperatures, and how they are carried to the cells.
+
+    Parameters
+    ----------
+    station : Temperatures
+        Of the station.
+    lapse : float or twelve floats
+        Fall with height [K km-1], for the year or by month.
+    beyond : str
+        Huglin's factor beyond 50 degrees; see `huglin_factor`.
+    """
+
+    station: Temperatures
+    lapse: float | tuple[float, ...] = LAPSE
+    beyond: str = "undefined"
+
+    def layers(self, heights: NDArray[np.float32], latitude: float) -> dict[str, NDArray[Any]]:
+        """Degree-days of cells of these heights [m], one band each; Huglin's if it can be told."""
+        place: dict[str, Any] = {"latitude": latitude, "lapse": self.lapse}
+        found = {"degree_days": winkler(self.station, heights, **place)[None]}
+        if self.station.basis.startswith("monthly"):
+            found["shortfall"] = monthly_shortfall(self.station, heights, **place)[None]
+        if not np.isnan(self.station.highest).all():
+            index = huglin(self.station, heights, beyond=self.beyond, **place)
+            found["huglin"] = np.asarray(index)[None]
+        return found
+
+
+@dataclass(frozen=True)
 class Asked:
     """How parcels are to be told of.
 
@@ -113,6 +152,8 @@ class Asked:
         That cells have to meet.
     least_patch : float
         Connected patches smaller than this do not count [m2].
+    warmth : Warmth, optional
+        Temperatures for degree-days.
     """
 
     period: Period
@@ -121,6 +162,7 @@ class Asked:
     flat_below: float = FLAT_BELOW_PERCENT
     rule: Rule | None = None
     least_patch: float = 0.0
+    warmth: Warmth | None = None
     season_places: tuple[int, ...] = field(init=False)
 
     def __post_init__(self) -> None:
@@ -231,6 +273,7 @@ def figures_of(piece: Piece, level: Level, asked: Asked) -> list[Figure]:
         *_light(piece, level, asked),
         *(_hours(piece, level, asked) if "sun_hours_months" in piece.layers else ()),
         *(_rule(piece, level, asked) if asked.rule is not None else ()),
+        *(_warmth(piece) if "degree_days" in piece.layers else ()),
     ]
 
 
@@ -402,3 +445,31 @@ def _rule(piece: Piece, level: Level, asked: Asked) -> list[Figure]:
         Figure("rule_unknown_ha_map", float(piece.weights[unknown].sum()) / HECTARE, "ha",
                "area where the rule cannot be told", "map"),
     ]  # fmt: skip
+
+
+def _warmth(piece: Piece) -> list[Figure]:
+    """Degree-days and their classes."""
+    figures = []
+    for layer, scale, words in (
+        ("degree_days", WINKLER, "degree-days after Winkler, base 10 degC, of its seven months"),
+        ("huglin", HUGLIN, "Huglin's heliothermal index, of its six months"),
+    ):
+        if layer not in piece.layers:
+            continue
+        name = "winkler" if layer == "degree_days" else layer
+        sums = np.where(piece.weights > 0.0, piece.layers[layer][0], np.nan)
+        mean = weighted_mean(sums, piece.weights)
+        low, high = weighted_percentiles(sums, piece.weights, (0, 100)).tolist()
+        place = int(scale.of(mean))
+        figures += [
+            Figure(f"{name}_mean_c_days", mean, "K day", f"{words}: mean", "map"),
+            Figure(f"{name}_least_c_days", low, "K day", "the same, least of its cells"),
+            Figure(f"{name}_greatest_c_days", high, "K day", "the same, greatest of its cells"),
+            Figure(f"{name}_class", scale.names[place] if place >= 0 else "", "",
+                   "class of the mean"),
+        ]  # fmt: skip
+    if "shortfall" in piece.layers:
+        short = weighted_mean(piece.layers["shortfall"][0], piece.weights)
+        words = "what sums of monthly means fall short of sums of days, estimated; not added"
+        figures.append(Figure("winkler_shortfall_c_days", short, "K day", words, "map"))
+    return figures

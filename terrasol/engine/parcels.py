@@ -18,9 +18,11 @@ from terrasol.engine.parcel_figures import (
     Asked,
     Figure,
     Level,
+    Warmth,
     figures_of,
     patches_of,
 )
+from terrasol.engine.parcel_rows import Rows, RowSettings, row_figures, rows_of
 from terrasol.engine.plan import Block, Progress, carry_out, default_threads
 from terrasol.engine.windows import collect
 from terrasol.errors import SettingError
@@ -57,6 +59,8 @@ class ParcelSettings:
         A weighted sum of figures that ranks the parcels; see `parse_score`.
     coarser : tuple of int
         How many cells are joined along a side for each coarser look.
+    rows : RowSettings, optional
+        Vine rows, for the direction in which to plant them.
 
     Raises
     ------
@@ -69,6 +73,7 @@ class ParcelSettings:
     asked: Asked
     score: str | None = None
     coarser: tuple[int, ...] = COARSER
+    rows: RowSettings | None = None
 
     def __post_init__(self) -> None:
         """Refuse what makes no sense."""
@@ -103,6 +108,8 @@ class Parcel:
         Of the cell nearest its middle [degrees], north first, clockwise.
     patches : Patches, optional
         Where it meets the rule.
+    rows : Rows, optional
+        What vine rows of every direction would get.
     """
 
     name: str
@@ -113,6 +120,7 @@ class Parcel:
     coarser: list[tuple[float, list[Figure]]]
     horizon: NDArray[np.float64]
     patches: Patches | None = None
+    rows: Rows | None = None
 
     @property
     def numbers(self) -> dict[str, float]:
@@ -212,6 +220,7 @@ def survey(
             ground, polygons, settings.light, settings.hours, scene_of, threads,
             partial(_told_part, told, work[k], work[k + 1]),
         )  # fmt: skip
+        _warm(pieces, settings.asked.warmth)
         if factor == 1:
             warnings += notes
             levels = _levels(pieces, settings, threads)
@@ -224,22 +233,41 @@ def survey(
     for (k, piece), horizon in zip(fine, horizons, strict=True):
         level = levels[k]
         assert level is not None
-        parcels.append(
-            Parcel(
-                piece.name, polygons.geometries[k], piece, level,
-                figures_of(piece, level, settings.asked),
-                [(size, _figures(each[k], level, settings.asked)) for size, each in looks[1:]],
-                horizon,
-                patches_of(piece, level, settings.asked)[0] if settings.asked.rule else None,
-            )
-        )  # fmt: skip
+        coarse = [(size, _figures(each[k], level, settings.asked)) for size, each in looks[1:]]
+        parcels.append(_parcel(piece, polygons.geometries[k], level, coarse, horizon, settings))
     told(1.0, "figures")
     return _ranked(parcels, settings, looks[0][0], warnings)
+
+
+def _warm(pieces: Sequence[Piece | None], warmth: Warmth | None) -> None:
+    """Add degree-days to the layers of pieces."""
+    for piece in pieces if warmth is not None else ():
+        if piece is not None:
+            assert warmth is not None
+            piece.layers.update(warmth.layers(piece.heights, piece.latitude))
 
 
 def _told_part(told: Progress, first: float, last: float, share: float, stage: str) -> None:
     """Tell the progress of a part of the whole."""
     told(first + share * (last - first), stage)
+
+
+def _parcel(
+    piece: Piece,
+    outline: Any,
+    level: Level,
+    coarser: list[tuple[float, list[Figure]]],
+    horizon: NDArray[np.float64],
+    settings: ParcelSettings,
+) -> Parcel:
+    """Put together what is known of a parcel."""
+    asked = settings.asked
+    figures, rows = figures_of(piece, level, asked), None
+    if settings.rows is not None:
+        rows = rows_of(piece, horizon, settings.rows, settings.light, asked)
+        figures += row_figures(rows, asked)
+    patches = patches_of(piece, level, asked)[0] if asked.rule else None
+    return Parcel(piece.name, outline, piece, level, figures, coarser, horizon, patches, rows)
 
 
 def _figures(piece: Piece | None, level: Level, asked: Asked) -> list[Figure]:

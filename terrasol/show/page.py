@@ -10,6 +10,7 @@ from __future__ import annotations
 import io
 import unicodedata
 from bisect import bisect_right
+from collections.abc import Sequence
 from contextlib import suppress
 from functools import cache, lru_cache
 from pathlib import Path
@@ -18,6 +19,7 @@ from typing import Any, Literal
 import matplotlib
 import numpy as np
 from matplotlib.backends.backend_agg import FigureCanvasAgg
+from matplotlib.backends.backend_pdf import PdfPages
 from matplotlib.collections import LineCollection
 from matplotlib.figure import Figure
 from matplotlib.font_manager import FontProperties, fontManager, get_font
@@ -199,6 +201,15 @@ class Page:
         out = io.BytesIO()
         self.figure.savefig(out, format="pdf", metadata={**metadata, "CreationDate": None})
         return out.getvalue()
+
+
+def book(pages: Sequence[Page], **metadata: str) -> bytes:
+    """Bind sheets to one PDF file, one page each; without a date, as `Page.pdf`."""
+    out = io.BytesIO()
+    with PdfPages(out, metadata={**metadata, "CreationDate": None}) as bound:
+        for page in pages:
+            bound.savefig(page.figure)
+    return out.getvalue()
 
 
 def _font(text: str, size: float, bold: bool) -> FontProperties:

@@ -1,0 +1,126 @@
+"""A survey of parcels as rows of tables."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+
+from terrasol.engine.parcel_figures import Figure
+from terrasol.engine.parcels import Parcel, Survey
+from terrasol.practice.rows import SURFACES
+
+Row = dict[str, Any]
+
+
+def table_rows(survey: Survey) -> list[Row]:
+    """One row a parcel, the best first: rank, score and its terms, then all figures."""
+    return [
+        {"parcel": parcel.name, **_ranks(survey, parcel)}
+        | {figure.name: figure.value for figure in parcel.figures}
+        for parcel in survey.order
+    ]
+
+
+def _ranks(survey: Survey, parcel: Parcel) -> Row:
+    """Rank and score of a parcel, and what each term of the score adds."""
+    ranking, score = survey.ranking, survey.score
+    if ranking is None or score is None:
+        return {}
+    place = next(k for k, each in enumerate(survey.parcels) if each is parcel)
+    rank = int(ranking.rank[place])
+    terms = {
+        f"score_term_{k}": float(part) for k, part in enumerate(ranking.contributions[place], 1)
+    }
+    return {"rank": rank or None, "score": float(ranking.total[place]), **terms}
+
+
+def size_rows(survey: Survey) -> list[Row]:
+    """One row a parcel and cell size, the raster's own first."""
+    rows = []
+    for parcel in survey.order:
+        for size, figures in [(survey.cell_size, parcel.figures), *parcel.coarser]:
+            if figures:
+                numbers = {f.name: f.value for f in figures if not f.name.startswith("rows_")}
+                rows.append({"parcel": parcel.name, "cell_m": round(size, 3), **numbers})
+    return rows
+
+
+def row_rows(survey: Survey) -> list[Row]:
+    """One row a parcel and direction of vine rows."""
+    rows = []
+    for parcel in survey.order:
+        if parcel.rows is None:
+            continue
+        light = parcel.rows.light
+        for k, azimuth in enumerate(light.azimuth.tolist()):
+            faces = light.faces[k].tolist()
+            energy = {
+                f"{name.replace(' ', '_')}_mj_m2": float(value)
+                for name, value in zip(SURFACES, light.total[k], strict=True)
+            }
+            rows.append(
+                {
+                    "parcel": parcel.name,
+                    "row_azimuth_deg": azimuth,
+                    "right_side_faces_deg": faces[0],
+                    "left_side_faces_deg": faces[1],
+                    **energy,
+                    "both_sides_mj_m_row": float(light.per_metre[k, :2].sum()),
+                    "row_slope_mean_plane_percent": float(light.along[k]),
+                    "cross_slope_mean_plane_percent": float(light.across[k]),
+                    "row_slope_p90_percent": float(parcel.rows.steep[k]),
+                    "row_slope_steepest_percent": float(parcel.rows.steepest[k]),
+                }
+            )
+    return rows
+
+
+_OWN = (
+    Figure("parcel", "", "", "name, made unique"),
+    Figure("rank", np.nan, "1", "1 for the highest score; equal scores share a rank"),
+    Figure("score", np.nan, "1", ""),
+)
+_SIZES = (Figure("cell_m", np.nan, "m", "cell size on the ground, in cell_sizes.csv"),)
+_ROWS = (
+    Figure("row_azimuth_deg", np.nan, "degree",
+           "direction of the rows, clockwise from true north, in row_directions.csv"),
+    Figure("right_side_faces_deg", np.nan, "degree", "azimuth that the right side faces"),
+    Figure("left_side_faces_deg", np.nan, "degree", "azimuth that the left side faces"),
+    Figure("right_side_mj_m2", np.nan, "MJ m-2",
+           "energy of the growing season on a square metre of the right side of a row"),
+    Figure("left_side_mj_m2", np.nan, "MJ m-2", "the same of the left side"),
+    Figure("top_mj_m2", np.nan, "MJ m-2", "the same of the top"),
+    Figure("ground_mj_m2", np.nan, "MJ m-2", "the same of the ground between the rows", "slope"),
+    Figure("both_sides_mj_m_row", np.nan, "MJ m-1",
+           "the same of both sides on a metre of row, laid on the ground"),
+    Figure("row_slope_mean_plane_percent", np.nan, "percent",
+           "slope of rows along the parcel's mean plane"),
+    Figure("cross_slope_mean_plane_percent", np.nan, "percent",
+           "slope of that plane square to the rows"),
+    Figure("row_slope_p90_percent", np.nan, "percent",
+           "climb of rows that 90 % of the area does not pass", "map"),
+    Figure("row_slope_steepest_percent", np.nan, "percent", "climb of rows in the steepest cell"),
+)  # fmt: skip
+
+
+def column_rows(survey: Survey) -> list[Row]:
+    """The data dictionary: one row a column of all tables."""
+    score, ranked = survey.score, []
+    if score is not None:
+        ranked = [_OWN[1], Figure("score", np.nan, "1", f"sum of {score.text}")]
+        ranked += [
+            Figure(f"score_term_{k}", np.nan, "1", f"its term {term}")
+            for k, term in enumerate(score.terms, 1)
+        ]
+    figures = [
+        _OWN[0],
+        *ranked,
+        *survey.parcels[0].figures,
+        *(_SIZES if survey.settings.coarser else ()),
+        *(_ROWS if survey.settings.rows else ()),
+    ]
+    return [
+        {"column": f.name, "unit": f.unit, "area_basis": f.basis, "meaning": f.meaning}
+        for f in figures
+    ]

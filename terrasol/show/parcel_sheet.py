@@ -1,0 +1,546 @@
+"""The sheet of one parcel: A4, for a grower, a banker and a planner."""
+
+from __future__ import annotations
+
+from datetime import date
+from itertools import pairwise
+from typing import Final
+
+import numpy as np
+from matplotlib import style
+from matplotlib.patches import Wedge
+
+from terrasol import __version__
+from terrasol.engine.outputs import MONTH_NAMES
+from terrasol.engine.parcel_figures import month_keys, slope_class_keys
+from terrasol.engine.parcels import Parcel, Survey, numbers_of
+from terrasol.ground.elevation import Elevation
+from terrasol.ground.frame import Frame
+from terrasol.light.minutes import track
+from terrasol.practice.classes import SECTORS, class_names
+from terrasol.practice.degree_days import HUGLIN, WINKLER, Scale
+from terrasol.practice.limits import VINEYARD
+from terrasol.show.page import INK, PAPER, POINTS_PER_PIXEL, SOFT, Page, clip, text_width, wrap
+from terrasol.show.panel import GRID, Panel, steps
+from terrasol.show.parcel_map import (
+    GroundMap,
+    draw_contours_around,
+    draw_parcel,
+    frame_around,
+    outline_path,
+    scale_length,
+    slope_colours,
+)
+from terrasol.show.skyline import HOUR_LINES, draw_skyline, tracks_of, view_limits
+
+WIDTH, HEIGHT, MARGIN = 827, 1169, 44
+"""A4 upright, a hundred pixels an inch."""
+
+TITLE, HEAD, TEXT, SMALL, TICK = 25.0, 12.5, 11.0, 9.5, 9.5
+"""Sizes of letters [pixels]."""
+
+INNER: Final = WIDTH - 2 * MARGIN
+SUNNY, LEVEL, SEASON_OFF = "#c4633f", "#24262b", "#dcb6a3"
+"""Colours of the parcel's light in and out of the season, and of level ground."""
+
+RIGHT_SIDE, LEFT_SIDE, BOTH = "#b2551f", "#2f6690", "#24262b"
+"""Colours of the two sides of a row and of their mean."""
+
+SUN_YEAR: Final = 2025
+"""Whose sun the paths show where the period is a typical year."""
+
+
+def parcel_page(
+    survey: Survey, parcel: Parcel, elevation: Elevation, frame: Frame, *, title: str
+) -> Page:
+    """Draw the sheet of one parcel.
+
+    Parameters
+    ----------
+    survey : Survey
+        That the parcel is of.
+    parcel : Parcel
+    elevation : Elevation
+        The ground.
+    frame : Frame
+        Its place on the Earth.
+    title : str
+        Of the whole survey.
+
+    Returns
+    -------
+    Page
+    """
+    page = Page(WIDTH, HEIGHT)
+    page.axes.set_zorder(10)  # what is written stands above what is drawn
+    right = WIDTH - MARGIN
+    with style.context("default"):
+        _head(page, survey, parcel, title)
+        _map(page, survey, parcel, elevation, frame, (MARGIN, 108, 378, 270))
+        _facts(page, survey, parcel, 452, 108)
+        _classes(page, survey, parcel, MARGIN, 430)
+        _rose(page, survey, parcel, (376, 430, 136, 136))
+        _sizes(page, survey, parcel, 552, 430)
+        _months(page, survey, parcel, (MARGIN + 22, 632, 326, 92))
+        _days(page, survey, parcel, (right - 336, 632, 336, 92))
+        _skyline(page, survey, parcel, (MARGIN + 22, 797, INNER - 22, 110))
+        _rows(page, survey, parcel, (MARGIN + 34, 967, 314, 72))
+        _warmth(page, survey, parcel, (right - 336, 967, 336))
+        _foot(page, survey)
+    return page
+
+
+def heading(page: Page, x: float, y: float, words: str, more: str = "") -> None:
+    """What a diagram shows, and its unit or basis after it."""
+    page.text(x, y, words, HEAD, bold=True)
+    if more:
+        page.text(x + text_width(words, HEAD, bold=True) + 8, y, more, SMALL, colour=SOFT)
+
+
+def _head(page: Page, survey: Survey, parcel: Parcel, title: str) -> None:
+    """Name, rank and place."""
+    page.text(MARGIN, 58, clip(parcel.name, TITLE, INNER - 150, bold=True), TITLE, bold=True)
+    piece = parcel.piece
+    north, east = ("N" if piece.latitude >= 0 else "S"), ("E" if piece.longitude >= 0 else "W")
+    words = (
+        f"{title}  ·  {abs(piece.latitude):.4f}° {north}, {abs(piece.longitude):.4f}° {east}  ·"
+        f"  {parcel.numbers['height_least_m']:.0f} to"
+        f" {parcel.numbers['height_greatest_m']:.0f} m"
+    )
+    page.text(MARGIN, 79, clip(words, TEXT, INNER - 150), TEXT, colour=SOFT)
+    if survey.ranking is not None:
+        place = next(k for k, each in enumerate(survey.parcels) if each is parcel)
+        rank = int(survey.ranking.rank[place])
+        x = WIDTH - MARGIN
+        text = f"{rank} of {len(survey.parcels)}" if rank else "no rank"
+        page.text(x, 58, text, TITLE, bold=True, across="right")
+        score = f"by score {survey.ranking.total[place]:.4g}"
+        page.text(x, 79, score, TEXT, colour=SOFT, across="right")
+    page.lines([[(MARGIN, 90), (WIDTH - MARGIN, 90)]], colour=SOFT, line=0.8)
+
+
+def _map(page, survey, parcel, elevation, frame, box) -> None:
+    """The slope map."""
+    x, y, width, height = box
+    heading(page, x, y, "Slope", "percent, by class; true north up")
+    panel = Panel(page, x, y + 10, width, height, tick=TICK)
+    for spine in panel.axes.spines.values():
+        spine.set_visible(True)
+        spine.set(color=SOFT, linewidth=0.8 * POINTS_PER_PIXEL)
+    window = parcel.piece.window
+    ground = GroundMap.at(
+        frame, window.row + (window.rows - 1) / 2, window.column + (window.columns - 1) / 2
+    )
+    path = outline_path(parcel.outline, elevation, ground)
+    limits = frame_around([path], width, height)
+    panel.limits(*limits)
+    step = draw_contours_around(panel.axes, elevation, ground, limits)
+    draw_parcel(panel.axes, parcel, path, ground, survey.settings.asked.slope_edges)
+    panel.limits(*limits)
+    scale_and_north(page, panel, limits)
+    notes = [] if step is None else [f"contours every {step:g} m"]
+    if parcel.patches is not None:
+        notes.append("hatched: ground that does not meet the rule")
+    page.text(x, y + height + 24, "  ·  ".join(notes), SMALL, colour=SOFT)
+
+
+def scale_and_north(page: Page, panel: Panel, limits) -> None:
+    """Scale bar and arrow in the corners of the map."""
+    metres = limits[1] - limits[0]
+    length = scale_length(metres)
+    pixels = length / metres * panel.width
+    left, base = panel.x + 10, panel.y + panel.height - 10
+    page.box(left - 4, base - 20, pixels + 8, 25, fill=PAPER)
+    page.lines([[(left, base), (left + pixels, base)]], colour=INK, line=2.4)
+    page.text(left, base - 6, f"{length:g} m", SMALL)
+    tip = panel.x + panel.width - 16, panel.y + 12
+    page.shape([(tip[0], tip[1]), (tip[0] - 6, tip[1] + 20), (tip[0], tip[1] + 15),
+                (tip[0] + 6, tip[1] + 20)], fill=INK)  # fmt: skip
+    page.text(tip[0], tip[1] + 32, "N", SMALL, bold=True, across="center", halo=PAPER)
+
+
+def _facts(page: Page, survey: Survey, parcel: Parcel, x: float, y: float) -> None:
+    """The key figures, in words and numbers."""
+    rows = facts(survey, parcel)
+    heading(page, x, y, "At a glance")
+    right = WIDTH - MARGIN
+    for k, (name, value) in enumerate(rows):
+        level = y + 20 + k * 18.5
+        page.text(x, level, name, TEXT, colour=SOFT)
+        page.text(right, level, value, TEXT, bold=True, across="right")
+        page.lines([[(x, level + 5), (right, level + 5)]], colour=GRID, line=0.8)
+
+
+def facts(survey: Survey, parcel: Parcel) -> list[tuple[str, str]]:
+    """Names and values of the key figures."""
+    n, asked = parcel.numbers, survey.settings.asked
+    rows = [
+        ("Area on the map", f"{n['map_area_ha']:.2f} ha"),
+        ("Area of the slope's surface", f"{n['surface_area_ha']:.2f} ha"),
+        ("Height, mean", f"{n['height_mean_m']:.0f} m"),
+        ("Slope, mean", f"{n['slope_mean_percent']:.1f} %"),
+        ("Slope of the middle 80 %",
+         f"{n['slope_p10_percent']:.0f} to {n['slope_p90_percent']:.0f} %"),
+        ("Faces, mean", _faces(n)),
+        ("Energy of the season", f"{n['irradiation_season_mj_m2_slope']:,.0f} MJ/m²"),
+        ("  as share of level ground", f"{100 * n['share_of_level_season']:.1f} %"),
+        ("Hours of sun, season",
+         f"{n['sun_hours_season_h']:,.0f} of {n['sun_hours_season_level_h']:,.0f} h"),
+    ]  # fmt: skip
+    if asked.rule is not None:
+        rows.append(("Meets the rule", f"{n['rule_ha_map']:.2f} ha, {100 * n['rule_share']:.0f} %"))
+    texts = {f.name: f.value for f in parcel.figures}
+    if "winkler_mean_c_days" in n:
+        rows.append(
+            ("Degree-days (Winkler)", f"{n['winkler_mean_c_days']:.0f}, {texts['winkler_class']}")
+        )
+    if "huglin_mean_c_days" in n:
+        value = n["huglin_mean_c_days"]
+        known = f"{value:.0f}, {texts['huglin_class']}" if np.isfinite(value) else "undefined"
+        rows.append(("Huglin's index", known))
+    if parcel.rows is not None:
+        rows.append(("Rows: fall line", _azimuth(n["rows_fall_line_deg"])))
+        rows.append(("Rows: sides most alike", _azimuth(n["rows_even_azimuth_deg"])))
+    if n["unknown_ha_map"] > 0.0:
+        rows.append(("Unknown ground", f"{n['unknown_ha_map']:.2f} ha"))
+    if n["outside_share"] > 5e-4:
+        rows.append(("Outside the raster", f"{100 * n['outside_share']:.1f} %"))
+    return [(name, "unknown" if "nan" in value else value) for name, value in rows]
+
+
+def _azimuth(value: float) -> str:
+    """A direction of rows, both ways."""
+    if not np.isfinite(value):
+        return "level"
+    return f"{value:.0f}° / {value + 180.0:.0f}°"
+
+
+def _faces(numbers: dict[str, float]) -> str:
+    """The mean aspect, and how much of one mind the ground is."""
+    if not np.isfinite(numbers["aspect_mean_deg"]):
+        return "nowhere (flat)"
+    degrees = numbers["aspect_mean_deg"]
+    name = SECTORS[int((degrees + 22.5) // 45) % 8]
+    return f"{name}, {degrees:.0f}° (R {numbers['aspect_resultant']:.2f})"
+
+
+def _classes(page: Page, survey: Survey, parcel: Parcel, x: float, y: float) -> None:
+    """Hectares per class of slope, as bars with numbers."""
+    edges = survey.settings.asked.slope_edges
+    heading(page, x, y, "Slope classes", "hectares of map")
+    names, keys = class_names(edges, "%"), slope_class_keys(edges)
+    values = [parcel.numbers[f"{key}_ha_map"] for key in keys]
+    total = max(np.nansum(values), 1e-9)
+    pitch = min(23.0, 136.0 / len(names))
+    longest = max(np.nanmax(np.nan_to_num(values)), 1e-9)
+    for k, (name, value, colour) in enumerate(
+        zip(names, values, slope_colours(len(names)), strict=True)
+    ):
+        level = y + 12 + k * pitch
+        page.text(
+            x + 88, level + 0.68 * pitch, name.replace(" and more", " up"), TEXT, across="right"
+        )
+        long = 130.0 * np.nan_to_num(value) / longest
+        page.box(x + 96, level + 3, max(long, 0.6), pitch - 5, fill=colour, edge=SOFT, line=0.5)
+        words = f"{value:.2f} ha  {100 * value / total:.0f} %" if np.isfinite(value) else "unknown"
+        page.text(x + 102 + long, level + 0.68 * pitch, words, TEXT)
+
+
+def _rose(page: Page, survey: Survey, parcel: Parcel, box) -> None:
+    """Hectares per sector of aspect: petals whose area is the ground's."""
+    x, y, width, height = box
+    heading(page, x - 4, y, "Aspect", "ha by sector")
+    panel = Panel(page, x, y + 8, width, height, tick=TICK)
+    panel.limits(-1.3, 1.3, -1.3, 1.3)
+    axes = panel.axes
+    axes.spines["bottom"].set_visible(False)
+    areas = np.nan_to_num([parcel.numbers[f"aspect_{s.lower()}_ha_map"] for s in SECTORS])
+    most = max(areas.max(), 1e-9)
+    for radius in (0.5, 1.0):
+        axes.add_patch(_ring(radius))
+    for k, (name, area) in enumerate(zip(SECTORS, areas, strict=True)):
+        middle = 90.0 - 45.0 * k
+        radius = np.sqrt(area / most)
+        axes.add_patch(Wedge((0, 0), radius, middle - 20.5, middle + 20.5, facecolor=SUNNY,
+                             edgecolor=PAPER, linewidth=0.6, alpha=0.9, zorder=3))  # fmt: skip
+        turn = np.radians(middle)
+        px, py = panel.place(1.16 * np.cos(turn), 1.16 * np.sin(turn))
+        page.text(px, py + 4, name, TICK, across="center", bold=name in ("N", "E", "S", "W"))
+        if area > 0.06 * most:
+            px, py = panel.place(
+                max(radius * 0.62, 0.3) * np.cos(turn), max(radius * 0.62, 0.3) * np.sin(turn)
+            )
+            page.text(px, py + 4, f"{area:.2g}" if area < 1 else f"{area:.1f}", TICK,
+                      across="center", halo=PAPER)  # fmt: skip
+    flat = parcel.numbers["aspect_flat_ha_map"]
+    words = f"flat (under {survey.settings.asked.flat_below:g} %): {np.nan_to_num(flat):.2f} ha"
+    page.text(x + width / 2, y + height + 20, words, SMALL, colour=SOFT, across="center")
+
+
+def _ring(radius: float) -> Wedge:
+    """A thin circle."""
+    return Wedge((0, 0), radius, 0, 360, width=0.006, facecolor=GRID, edgecolor="none", zorder=1)
+
+
+def _sizes(page: Page, survey: Survey, parcel: Parcel, x: float, y: float) -> None:
+    """The same at coarser cells: how much of it hangs on the cell size."""
+    heading(page, x, y, "At other cell sizes")
+    right = WIDTH - MARGIN
+    looks = [(survey.cell_size, parcel.numbers)]
+    looks += [(size, numbers_of(figures)) for size, figures in parcel.coarser]
+    columns = np.linspace(right - 58.0 * (len(looks) - 1), right, len(looks))
+    rows = [("cells of", None, ""), ("mean slope", "slope_mean_percent", "{:.1f} %")]
+    steep = slope_class_keys(survey.settings.asked.slope_edges)[-1]
+    edge = survey.settings.asked.slope_edges[-1]
+    rows.append((f"over {edge:g} %", f"{steep}_ha_map", "{:.2f} ha"))
+    rows.append(("by level", "share_of_level_season", "{:.3f}"))
+    rows.append(("sun hours", "sun_hours_season_h", "{:.0f} h"))
+    if survey.settings.asked.rule is not None:
+        rows.append(("rule", "rule_ha_map", "{:.2f} ha"))
+    if "winkler_mean_c_days" in parcel.numbers:
+        rows.append(("Winkler", "winkler_mean_c_days", "{:.0f}"))
+    for k, (name, key, form) in enumerate(rows):
+        level = y + 20 + k * 17.5
+        page.text(x, level, name, TEXT, colour=SOFT)
+        for at, (size, numbers) in zip(columns, looks, strict=True):
+            if key is None:
+                words = f"{size:.3g} m"
+            else:
+                value = numbers.get(key, np.nan)
+                words = form.format(value) if np.isfinite(value) else "–"
+            page.text(at, level, words, TEXT, across="right", bold=key is None)
+    page.lines([[(x, y + 25), (right, y + 25)]], colour=SOFT, line=0.6)
+
+
+def _months(page: Page, survey: Survey, parcel: Parcel, box) -> None:
+    """Energy of a mean day of each month, level ground beside it."""
+    x, y, width, height = box
+    asked = survey.settings.asked
+    heading(
+        page, x - 22, y - 14, "Energy by month", "MJ/m² of slope a day; line: level; dark: season"
+    )
+    days = np.array(asked.period.month_days, float)
+    means = _monthly(parcel, "irradiation_{}_mj_m2_slope", survey) / days
+    level = parcel.level.months / days
+    panel = Panel(page, x, y, width, height, tick=TICK)
+    top = np.nanmax([np.nanmax(np.nan_to_num(means)), np.nanmax(np.nan_to_num(level)), 1.0]) * 1.12
+    panel.limits(-0.6, len(days) - 0.4, 0.0, top)
+    panel.y_ticks(steps(0.0, top, 4))
+    at = np.arange(len(days))
+    colours = [SUNNY if k in asked.season_places else SEASON_OFF for k in at]
+    panel.axes.bar(at, np.nan_to_num(means), 0.68, color=colours, zorder=2)
+    panel.axes.hlines(level, at - 0.42, at + 0.42, color=LEVEL, linewidth=1.5 * POINTS_PER_PIXEL,
+                      zorder=3)  # fmt: skip
+    panel.x_ticks(list(at), _month_letters(survey), down=TICK + 5)
+
+
+def _monthly(parcel: Parcel, pattern: str, survey: Survey) -> np.ndarray:
+    """A figure of every month."""
+    keys = month_keys(survey.settings.asked.period)
+    return np.array([parcel.numbers.get(pattern.format(key), np.nan) for key in keys])
+
+
+def _month_letters(survey: Survey) -> list[str]:
+    """Short names of months: three letters for up to twelve, else one."""
+    months = survey.settings.asked.period.months
+    letters = 3 if len(months) <= 13 else 1
+    return [MONTH_NAMES[month - 1][:letters] for _, month in months]
+
+
+def _days(page: Page, survey: Survey, parcel: Parcel, box) -> None:
+    """First and last sun of a day of each month, with hours of sun a day."""
+    x, y, width, height = box
+    clock = survey.settings.hours.clock
+    first = _monthly(parcel, "first_sun_{}_h", survey)
+    last = _monthly(parcel, "last_sun_{}_h", survey)
+    heading(page, x, y - 14, "First and last sun", f"{_days_words(survey)}, {clock.words}")
+    if not np.isfinite(first).any():
+        page.text(x, y + height / 2, "no direct sun on these days", TEXT, colour=SOFT)
+        return
+    panel = Panel(page, x, y, width, height, tick=TICK)
+    low, high = np.floor(np.nanmin(first)) - 1.2, np.ceil(np.nanmax(last)) + 1.0
+    panel.limits(-0.6, len(first) - 0.4, high, low)
+    panel.axes.spines["bottom"].set_visible(False)
+    at = np.arange(len(first))
+    for k in at:
+        if np.isfinite(first[k]):
+            panel.axes.vlines(k, first[k], last[k], color="#f0d9ac", linewidth=9 * POINTS_PER_PIXEL,
+                              zorder=2)  # fmt: skip
+            for hour, down in ((first[k], -4.0), (last[k], 11.0)):
+                px, py = panel.place(float(k), hour)
+                page.text(px, py + down, _clock_text(hour), 8.2, across="center")
+    panel.x_ticks(list(at), _month_letters(survey), down=TICK + 5)
+    hours = _monthly(parcel, "sun_hours_{}_h", survey) / survey.settings.asked.period.month_days
+    panel.x_ticks(list(at), [f"{h:.1f}" for h in hours], down=TICK + 18)
+    page.text(x - 4, y + height + TICK + 18, "h a day", TICK, colour=SOFT, across="right")
+
+
+def _days_words(survey: Survey) -> str:
+    """Which days the first and last sun is told of."""
+    days = {day.day for day in survey.settings.hours.days}
+    return f"on the {days.pop()}st" if days == {21} else "on a day of each month"
+
+
+def _clock_text(hour: float) -> str:
+    """Hours as a clock shows them.
+
+    Examples
+    --------
+    >>> _clock_text(7.9999)
+    '8:00'
+    """
+    minutes = round(hour * 60.0)
+    return f"{minutes // 60}:{minutes % 60:02d}"
+
+
+def _skyline(page: Page, survey: Survey, parcel: Parcel, box) -> None:
+    """The horizon from the middle of the parcel, with the sun's paths."""
+    x, y, width, height = box
+    heading(page, x - 22, y - 14, "Horizon from its middle, and the sun",
+            "degrees above the level; hours in true solar time")  # fmt: skip
+    piece, clock = parcel.piece, survey.settings.hours.clock
+    period = survey.settings.asked.period
+    year = SUN_YEAR if period.typical else period.months[-1][0]
+    place = piece.latitude, (piece.longitude + 180.0) % 360.0 - 180.0, piece.height
+    paths = tracks_of(*place, clock, year)
+    panel = Panel(page, x, y, width, height, tick=TICK)
+    panel.limits(*view_limits(piece.latitude, [parcel.horizon], paths))
+    lines = [track(date(year, month, day), *place, clock) for month, day in HOUR_LINES]
+    draw_skyline(panel, parcel.horizon, paths, lines)
+
+
+def _rows(page: Page, survey: Survey, parcel: Parcel, box) -> None:
+    """Energy on both sides of rows by their direction, and what they climb."""
+    x, y, width, height = box
+    asked = survey.settings.rows
+    if asked is None or parcel.rows is None:
+        heading(page, x - 34, y - 14, "Direction of rows")
+        words = "no row spacing was given" if asked is None else "nothing of the ground is known"
+        page.text(x - 34, y + 8, words, TEXT, colour=SOFT)
+        return
+    rows = parcel.rows
+    heading(
+        page, x - 34, y - 14, "Direction of rows", "MJ/m² of side in the season, by row azimuth"
+    )
+    azimuth = np.append(rows.light.azimuth, 180.0)
+    right, left = (np.append(rows.sides[:, k], rows.sides[0, 1 - k]) for k in (0, 1))
+    panel = Panel(page, x, y, width, height, tick=TICK)
+    both = np.concatenate([right, left])
+    margin = 0.08 * np.ptp(both) + 1.0
+    panel.limits(0.0, 180.0, both.min() - margin, both.max() + margin)
+    panel.y_ticks(steps(both.min() - margin, both.max() + margin, 4))
+    for values, colour, line in ((right, RIGHT_SIDE, 1.8), (left, LEFT_SIDE, 1.8)):
+        panel.axes.plot(azimuth, values, color=colour, linewidth=line * POINTS_PER_PIXEL, zorder=3)
+    panel.axes.plot(azimuth, (right + left) / 2.0, color=BOTH, linewidth=1.2 * POINTS_PER_PIXEL,
+                    linestyle=(0, (4, 2)), zorder=3)  # fmt: skip
+    at = np.arange(0, 181, 30)
+    panel.x_ticks(list(at), [f"{a}°" for a in at], down=TICK + 5)
+    climbed = np.append(rows.steepest, rows.steepest[0])
+    panel.x_ticks(list(at), [f"{climbed[a // 5]:.0f} %" for a in at], down=TICK + 18)
+    page.text(x - 14, y + height + TICK + 18, "climb", TICK, colour=SOFT, across="right")
+    if np.isfinite(rows.fall_line):
+        panel.axes.axvline(rows.fall_line, color=SOFT, linewidth=1.0 * POINTS_PER_PIXEL, zorder=1)
+        px, _ = panel.place(rows.fall_line, both.max())
+        page.text(float(np.clip(px, x + 22, x + width - 22)), y + height - 3, "fall line", 8.5,
+                  colour=SOFT, across="center", halo=PAPER)  # fmt: skip
+    legend = (
+        ("right side", RIGHT_SIDE),
+        ("left side, looking along the row", LEFT_SIDE),
+        ("mean", BOTH),
+    )
+    px = x
+    for text, colour in legend:
+        page.text(px, y + height + TICK + 32, text, SMALL, colour=colour, bold=True)
+        px += text_width(text, SMALL, bold=True) + 14
+
+
+def _warmth(page: Page, survey: Survey, parcel: Parcel, box) -> None:
+    """Degree-days on the scales of their classes."""
+    x, y, width = box
+    if survey.settings.asked.warmth is None:
+        heading(page, x, y - 14, "Degree-days")
+        page.text(x, y + 8, "no temperatures were given", TEXT, colour=SOFT)
+        return
+    heading(page, x, y - 14, "Degree-days", "°C day over 10 °C; least, mean and greatest cell")
+    level = y + 8.0
+    for name, words, scale in (
+        ("winkler", "Winkler", WINKLER),
+        ("huglin", "Huglin", HUGLIN),
+    ):
+        if f"{name}_mean_c_days" in parcel.numbers:
+            _draw_scale(page, parcel, name, words, scale, (x, level, width))
+            level += 46
+
+
+def _draw_scale(page: Page, parcel: Parcel, name: str, words: str, scale: Scale, box) -> None:
+    """One sum on the scale of its classes: a bar from the least to the greatest cell."""
+    x, y, width = box
+    edges, n = np.array(scale.edges), parcel.numbers
+    ends = [n[f"{name}_{k}_c_days"] for k in ("least", "mean", "greatest")]
+    low = min(edges[0] - 250.0, np.nan_to_num(ends[0], nan=edges[0]) - 50.0)
+    high = max(edges[-1] + 250.0, np.nan_to_num(ends[2], nan=edges[-1]) + 50.0)
+    left, room = x + 50.0, width - 50.0
+
+    def at(value: float) -> float:
+        return left + (value - low) / (high - low) * room
+
+    page.text(x, y + 15, words, TEXT, bold=True)
+    bounds = [low, *edges, high]
+    for k, (a, b) in enumerate(pairwise(bounds)):
+        fill = "#efe6d4" if k % 2 else "#f6f1e6"
+        page.box(at(a), y + 4, at(b) - at(a), 14, fill=fill)
+        label = scale.names[k]
+        size = 8.2
+        if text_width(label, size) < at(b) - at(a) - 1:
+            page.text((at(a) + at(b)) / 2, y, label, size, colour=SOFT, across="center")
+    for edge in edges:
+        page.text(at(edge), y + 28, f"{edge:.0f}", 8.0, colour=SOFT, across="center")
+    if np.isfinite(ends[1]):
+        page.box(at(ends[0]), y + 6, max(at(ends[2]) - at(ends[0]), 3.0), 10, fill=SUNNY)
+        page.lines([[(at(ends[1]), y + 2), (at(ends[1]), y + 20)]], colour=INK, line=1.6)
+    else:
+        page.text(left, y + 15, "undefined beyond 50 degrees", SMALL, colour=SOFT)
+
+
+def notes_of(survey: Survey) -> list[str]:
+    """What every sheet says of its numbers."""
+    asked, light = survey.settings.asked, survey.settings.light
+    sky = "a sky without clouds (potential)" if light.sky is None else "the sky that was given"
+    notes = [
+        f"Season {asked.season_words}, {asked.period.label}. Energy under {sky}, per area of slope,"
+        f" terrain shade and reflection counted, from cells of {survey.cell_size:.3g} m. Hectares"
+        " are of level map area, true on the ellipsoid.",
+    ]
+    if survey.settings.rows is not None:
+        rows = survey.settings.rows
+        notes.append(
+            f"Rows {rows.spacing:g} m apart, leaf wall {rows.height:g} m high and {rows.width:g} m"
+            " wide, endless on the parcel's mean plane; climb: steepest cell along the rows."
+        )
+    if asked.warmth is not None:
+        station, lapse = asked.warmth.station, asked.warmth.lapse
+        told = f"{lapse:g}" if isinstance(lapse, float | int) else "monthly"
+        notes.append(
+            f"Degree-days from {station.basis} of a station at {station.height:.0f} m, lapse rate"
+            f" {told} K/km."
+        )
+    if asked.rule is not None:
+        least = f", in patches from {asked.least_patch:g} m²" if asked.least_patch else ""
+        notes.append(f"Rule: {asked.rule.text}{least}.")
+    if survey.score is not None:
+        notes.append(f"Score: {survey.score.text}.")
+    return notes
+
+
+def _foot(page: Page, survey: Survey) -> None:
+    """Basis, rule, and what is not in it."""
+    notes = wrap(" ".join(notes_of(survey)), 8.2, INNER)
+    last = wrap(VINEYARD, 8.6, INNER - 80, bold=True)
+    y = HEIGHT - 18 - 10.0 * (len(notes) + len(last) - 1)
+    for k, line in enumerate(notes):
+        page.text(MARGIN, y + k * 10.0, line, 8.2, colour=SOFT)
+    for k, line in enumerate(last, len(notes)):
+        page.text(MARGIN, y + k * 10.0 + 1, line, 8.6, bold=True)
+    page.text(
+        WIDTH - MARGIN, HEIGHT - 16, f"terrasol {__version__}", 8.2, colour=SOFT, across="right"
+    )

@@ -1,0 +1,264 @@
+"""The summary of a survey of parcels: one map, one table, the score in full."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from typing import Final
+
+import numpy as np
+from matplotlib import style
+
+from terrasol import __version__
+from terrasol.engine.parcel_figures import slope_class_keys
+from terrasol.engine.parcels import Parcel, Survey
+from terrasol.ground.elevation import Elevation
+from terrasol.ground.frame import Frame
+from terrasol.practice.classes import SECTORS, class_names
+from terrasol.practice.limits import VINEYARD
+from terrasol.show.page import INK, PAPER, POINTS_PER_PIXEL, SOFT, Page, clip, text_width, wrap
+from terrasol.show.panel import GRID, Panel
+from terrasol.show.parcel_map import (
+    GroundMap,
+    draw_contours_around,
+    draw_parcel,
+    frame_around,
+    outline_path,
+    slope_colours,
+)
+from terrasol.show.parcel_sheet import (
+    HEIGHT,
+    INNER,
+    MARGIN,
+    SMALL,
+    TEXT,
+    TITLE,
+    WIDTH,
+    heading,
+    notes_of,
+    scale_and_north,
+)
+
+MAP_HEIGHT: Final = 360
+PITCH: Final = 19.0
+"""Height of the map and of a row of the table [pixels]."""
+
+MOST_ROWS: Final = 24
+"""Parcels in the table; the rest are in parcels.csv."""
+
+TABLE_TOP: Final = 548
+
+Cell = Callable[[Parcel], str]
+
+
+def summary_page(survey: Survey, elevation: Elevation, frame: Frame, *, title: str) -> Page:
+    """Draw the summary.
+
+    Parameters
+    ----------
+    survey : Survey
+    elevation : Elevation
+        The ground.
+    frame : Frame
+        Its place on the Earth.
+    title : str
+        Head of the page.
+
+    Returns
+    -------
+    Page
+    """
+    page = Page(WIDTH, HEIGHT)
+    page.axes.set_zorder(10)
+    with style.context("default"):
+        _head(page, survey, title)
+        _map(page, survey, elevation, frame)
+        _legend(page, survey, 90 + MAP_HEIGHT + 28)
+        bottom = _table(page, survey)
+        _score(page, survey, bottom + 22)
+        _foot(page, survey)
+    return page
+
+
+def _head(page: Page, survey: Survey, title: str) -> None:
+    """What it is of."""
+    page.text(MARGIN, 58, clip(title, TITLE, INNER, bold=True), TITLE, bold=True)
+    count = len(survey.parcels)
+    order = "ranked by the score below" if survey.score else "in the order of their file; no score"
+    words = (
+        f"{count} parcel{'s' * (count != 1)}, {order}; season {survey.settings.asked.season_words}"
+    )
+    page.text(MARGIN, 79, clip(words, TEXT, INNER), TEXT, colour=SOFT)
+
+
+def _map(page: Page, survey: Survey, elevation: Elevation, frame: Frame) -> None:
+    """All parcels among the contours of their ground."""
+    panel = Panel(page, MARGIN, 94, INNER, MAP_HEIGHT)
+    for spine in panel.axes.spines.values():
+        spine.set_visible(True)
+        spine.set(color=SOFT, linewidth=0.8 * POINTS_PER_PIXEL)
+    windows = [parcel.piece.window for parcel in survey.parcels]
+    row = np.mean([[w.row, w.row + w.rows - 1] for w in windows])
+    column = np.mean([[w.column, w.column + w.columns - 1] for w in windows])
+    ground = GroundMap.at(frame, float(row), float(column))
+    paths = [outline_path(parcel.outline, elevation, ground) for parcel in survey.order]
+    limits = frame_around(paths, INNER, MAP_HEIGHT, 0.08)
+    panel.limits(*limits)
+    step = draw_contours_around(panel.axes, elevation, ground, limits)
+    for parcel, path in zip(survey.order, paths, strict=True):
+        draw_parcel(panel.axes, parcel, path, ground, survey.settings.asked.slope_edges)
+    panel.limits(*limits)
+    for number, path in enumerate(paths, 1):
+        box = path.get_extents()
+        x, y = panel.place(box.x1, (box.y0 + box.y1) / 2.0)
+        page.text(x + 4, y + 4, f"{number}", TEXT, bold=True, halo=PAPER)
+    scale_and_north(page, panel, limits)
+    if step is not None:
+        words = f"contours every {step:g} m"
+        page.text(WIDTH - MARGIN, 94 + MAP_HEIGHT + 14, words, SMALL, colour=SOFT, across="right")
+
+
+def _legend(page: Page, survey: Survey, y: float) -> None:
+    """Colours of the classes of slope."""
+    names = class_names(survey.settings.asked.slope_edges, "%")
+    page.text(MARGIN, y, "Slope", SMALL, bold=True)
+    x = MARGIN + 42.0
+    for name, colour in zip(names, slope_colours(len(names)), strict=True):
+        page.box(x, y - 9, 14, 11, fill=colour, edge=SOFT, line=0.5)
+        page.text(x + 19, y, name, SMALL)
+        x += 34 + text_width(name, SMALL)
+    if survey.settings.asked.rule is not None:
+        page.text(x + 4, y, "hatched: does not meet the rule", SMALL, colour=SOFT)
+
+
+def _columns(survey: Survey) -> list[tuple[str, float, Cell]]:
+    """Heads, right ends as shares of the width, and contents of the table's columns."""
+
+    def number(key: str, form: str, factor: float = 1.0) -> Cell:
+        def cell(parcel: Parcel) -> str:
+            value = parcel.numbers.get(key, np.nan) * factor
+            return form.format(value) if np.isfinite(value) else "–"
+
+        return cell
+
+    columns = [
+        ("ha", 46.0, number("map_area_ha", "{:.2f}")),
+        ("slope", 42.0, number("slope_mean_percent", "{:.0f} %")),
+        ("faces", 38.0, _faces),
+        ("MJ/m²", 48.0, number("irradiation_season_mj_m2_slope", "{:.0f}")),
+        ("of level", 54.0, number("share_of_level_season", "{:.1f} %", 100.0)),
+        ("sun h", 42.0, number("sun_hours_season_h", "{:.0f}")),
+    ]
+    if survey.settings.asked.rule is not None:
+        columns.append(("rule ha", 48.0, number("rule_ha_map", "{:.2f}")))
+    if survey.settings.asked.warmth is not None:
+        columns.append(("Winkler", 48.0, number("winkler_mean_c_days", "{:.0f}")))
+    if survey.settings.rows is not None:
+        columns.append(("rows", 40.0, number("rows_even_azimuth_deg", "{:.0f}°")))
+    if survey.ranking is not None:
+        columns.append(("score", 52.0, _score_cell(survey)))
+    return columns
+
+
+def _faces(parcel: Parcel) -> str:
+    """The sector of the mean aspect."""
+    degrees = parcel.numbers["aspect_mean_deg"]
+    return SECTORS[int((degrees + 22.5) // 45) % 8] if np.isfinite(degrees) else "flat"
+
+
+def _score_cell(survey: Survey) -> Cell:
+    """The total of a parcel."""
+    assert survey.ranking is not None
+    totals = {p.name: t for p, t in zip(survey.parcels, survey.ranking.total, strict=True)}
+
+    def cell(parcel: Parcel) -> str:
+        return f"{totals[parcel.name]:.4g}" if np.isfinite(totals[parcel.name]) else "–"
+
+    return cell
+
+
+def _table(page: Page, survey: Survey) -> float:
+    """One row a parcel; returns where it ends."""
+    columns = _columns(survey)
+    right = WIDTH - MARGIN
+    ends = right - np.cumsum([0.0, *(width for _, width, _ in reversed(columns))])[:-1][::-1]
+    bar = float(ends[0] - columns[0][1] - 118.0)
+    top = TABLE_TOP
+    heading(page, MARGIN, top - 26, "Parcels", _table_words(survey))
+    page.text(bar, top - 6, "slope classes", SMALL, colour=SOFT)
+    for (name, _, _), end in zip(columns, ends, strict=True):
+        page.text(float(end), top - 6, name, SMALL, colour=SOFT, across="right")
+    page.lines([[(MARGIN, top), (right, top)]], colour=SOFT, line=0.8)
+    for k, parcel in enumerate(survey.order[:MOST_ROWS]):
+        level = top + 14 + k * PITCH
+        page.text(MARGIN + 16, level, f"{k + 1}", TEXT, bold=True, across="right")
+        room = bar - MARGIN - 32
+        page.text(MARGIN + 24, level, clip(parcel.name, TEXT, room), TEXT)
+        _class_bar(page, survey, parcel, bar, level - 10)
+        for (_, _, cell), end in zip(columns, ends, strict=True):
+            page.text(float(end), level, cell(parcel), TEXT, across="right")
+        page.lines([[(MARGIN, level + 5), (right, level + 5)]], colour=GRID, line=0.8)
+    shown = min(len(survey.parcels), MOST_ROWS)
+    bottom = top + 14 + shown * PITCH
+    if len(survey.parcels) > MOST_ROWS:
+        words = f"and {len(survey.parcels) - MOST_ROWS} more, in parcels.csv"
+        page.text(MARGIN + 24, bottom, words, TEXT, colour=SOFT)
+        bottom += PITCH
+    return bottom
+
+
+def _table_words(survey: Survey) -> str:
+    """What the columns are of."""
+    words = "hectares of map; energy of the season per area of slope, and by open level ground"
+    if survey.settings.rows is not None:
+        words += "; rows: azimuth with sides most alike"
+    return words
+
+
+def _class_bar(page: Page, survey: Survey, parcel: Parcel, x: float, y: float) -> None:
+    """Shares of the classes of slope."""
+    keys = slope_class_keys(survey.settings.asked.slope_edges)
+    areas = np.nan_to_num([parcel.numbers[f"{key}_ha_map"] for key in keys])
+    if not areas.sum() > 0.0:
+        return
+    for share, colour in zip(areas / areas.sum(), slope_colours(len(keys)), strict=True):
+        page.box(x, y, 104.0 * share, 12, fill=colour)
+        x += 104.0 * share
+    page.box(x - 104.0, y, 104.0, 12, edge=SOFT, line=0.5)
+
+
+def _score(page: Page, survey: Survey, y: float) -> None:
+    """The score in full: its terms, and what each adds to each parcel."""
+    if survey.score is None or survey.ranking is None:
+        return
+    heading(page, MARGIN, y, "Score", clip(survey.score.text, SMALL, INNER - 60))
+    terms = survey.score.terms
+    shown = survey.ranking.order[:MOST_ROWS]
+    room = HEIGHT - 110 - (y + 16)
+    if len(terms) * 13.0 > room:
+        return
+    widths = (INNER - 250.0) / max(len(shown), 1)
+    for k, term in enumerate(terms):
+        level = y + 32 + k * 14.0
+        page.text(MARGIN, level, clip(term, SMALL, 240), SMALL)
+        for j, place in enumerate(shown):
+            value = survey.ranking.contributions[place, k]
+            text = f"{value:.3g}" if np.isfinite(value) else "–"
+            page.text(MARGIN + 250 + (j + 1) * widths, level, text, 8.5, across="right")
+    for j in range(len(shown)):
+        page.text(MARGIN + 250 + (j + 1) * widths, y + 18, f"{j + 1}", 8.5, bold=True,
+                  across="right", colour=INK)  # fmt: skip
+    page.text(MARGIN, y + 18, "what each term adds, by number", SMALL, colour=SOFT)
+
+
+def _foot(page: Page, survey: Survey) -> None:
+    """Basis, rule, and what is not in it, in larger letters than on the sheets."""
+    lines = [*wrap(" ".join(notes_of(survey)), 8.8, INNER)]
+    last = wrap(VINEYARD, TEXT, INNER, bold=True)
+    y = HEIGHT - 34 - 14.0 * len(last) - 11.0 * len(lines)
+    for k, line in enumerate(lines):
+        page.text(MARGIN, y + k * 11.0, line, 8.8, colour=SOFT)
+    for k, line in enumerate(last):
+        page.text(MARGIN, y + 11.0 * len(lines) + 6 + k * 14.0, line, TEXT, bold=True)
+    page.text(
+        WIDTH - MARGIN, HEIGHT - 16, f"terrasol {__version__}", 8.2, colour=SOFT, across="right"
+    )
