@@ -10,8 +10,10 @@ from terrasol.cli.endings import EXIT_CODES, USAGE
 from terrasol.cli.hours import hours
 from terrasol.cli.irradiation import irradiation
 from terrasol.cli.melt import melt
+from terrasol.cli.parcels import parcels
 from terrasol.cli.plots import plots
 from terrasol.cli.series import series
+from terrasol.cli.site import site
 from terrasol.cli.streams import say
 from terrasol.cli.terrain import terrain
 
@@ -38,6 +40,8 @@ terrasol.add_command(compare)
 terrasol.add_command(hours)
 terrasol.add_command(irradiation)
 terrasol.add_command(melt)
+terrasol.add_command(parcels)
 terrasol.add_command(plots)
 terrasol.add_command(series)
+terrasol.add_command(site)
 terrasol.add_command(terrain)

@@ -12,7 +12,14 @@ from numpy.typing import NDArray
 
 from terrasol.engine.comparison import AZIMUTHS, cell_of
 from terrasol.engine.ground_work import Ground, cell_strip, lay_out
-from terrasol.engine.job import NO_SCENE, Plan, Run, plan_irradiation
+from terrasol.engine.job import (
+    NO_SCENE,
+    SECONDS_A_CELL_AND_AZIMUTH,
+    SECONDS_A_TABLE_AND_HEIGHT,
+    Plan,
+    Run,
+    plan_irradiation,
+)
 from terrasol.engine.outputs import MONTH_NAMES, basis_words, month_labels, sky_kind
 from terrasol.engine.plan import Progress, carry_out, check_threads, default_threads
 from terrasol.engine.spread import Spread
@@ -30,6 +37,7 @@ from terrasol.light.settings import LightSettings, check_azimuths
 from terrasol.light.surroundings import Surroundings
 from terrasol.light.tables import SkyTables
 from terrasol.sky.period import parse_period
+from terrasol.sky.suntable import height_knots
 
 PARTS: Final = ("beam", "diffuse", "reflected")
 """Of the light, in the order of `Energy.place`."""
@@ -39,12 +47,6 @@ PREPARED: Final = 0.35
 
 INTERVAL: Final = 0.9
 """Probability with which the intervals hold the true value."""
-
-NO_ANSWER: Final = (
-    "Not in this sheet: frost and cold air, wind, soil, water, trees and buildings unless a surface"
-    " model gave them. No tool for avalanche, slope-stability, structural or legal decisions: there"
-    " local codes and licensed practice decide."
-)
 
 Values = NDArray[np.float64]
 Cell = tuple[int, int]
@@ -396,6 +398,22 @@ def survey(
             zip(spots, cells, strips, energies, strict=True)
         )
     ]
+
+
+def forecast_seconds(
+    elevation: Elevation,
+    settings: LightSettings,
+    azimuths: int,
+    error: DemError | None,
+    threads: int,
+) -> float:
+    """Time to expect of a survey."""
+    sweeps = azimuths + settings.azimuths * (2 + (0 if error is None else error.realisations))
+    work = elevation.heights.size * sweeps * SECONDS_A_CELL_AND_AZIMUTH
+    share = settings.period.days / 365.0 * 60.0 / settings.step_seconds
+    known = elevation.heights[np.isfinite(elevation.heights)]
+    heights = height_knots(float(known.min()), float(known.max())).size
+    return 4.0 + (work + 2.0 * SECONDS_A_TABLE_AND_HEIGHT * share * heights) / max(threads, 1)
 
 
 def find_cell(elevation: Elevation, frame: Frame, spot: Spot) -> tuple[int, int]:

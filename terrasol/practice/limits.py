@@ -8,3 +8,10 @@ VINEYARD: Final = (
     "licensed surveyors decide."
 )
 """Of everything said about parcels."""
+
+PLACE: Final = (
+    "Not in this: frost and cold air, wind, soil, water, and trees and buildings unless a surface"
+    " model gave them. No tool for avalanche, slope-stability, structural or legal decisions: there"
+    " local codes and licensed practice decide."
+)
+"""Of everything said about one place."""

@@ -15,11 +15,12 @@ from numpy.typing import NDArray
 from terrasol import __version__
 from terrasol.engine.comparison import place_words
 from terrasol.engine.outputs import MONTH_NAMES
-from terrasol.engine.site import NO_ANSWER, PARTS, Site
+from terrasol.engine.site import PARTS, Site
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame, make_frame
 from terrasol.light.days import MOMENTS
 from terrasol.light.minutes import State, Track, track
+from terrasol.practice.limits import PLACE
 from terrasol.show import key
 from terrasol.show.contours import contour_step, draw_contours
 from terrasol.show.page import (
@@ -290,7 +291,16 @@ class _Sheet:
         for colour, line in ((PAPER, 3.4), (INK, 1.4)):
             self.page.lines([[tail, tip], [barbs[0], tip, barbs[1]]], colour=colour, line=line)
         at = middle + 16 * ahead
-        self._text(*at, "N", SMALL, bold=True, across="center", down="center", halo=PAPER)
+        self._text(
+            float(at[0]),
+            float(at[1]),
+            "N",
+            SMALL,
+            bold=True,
+            across="center",
+            down="center",
+            halo=PAPER,
+        )
 
     def _map_key(self, x: float, y: float, metres: float, step: float | None) -> None:
         """Scale and contour lines below the map."""
@@ -441,10 +451,10 @@ class _Sheet:
             " an open sky.",
             *(f"{words}." for words in error_words(site)),
             *common.notes,
-            NO_ANSWER,
+            PLACE,
         ]
         lines = wrap(_printed(" ".join(said)), SMALL, self.right - self.left)
-        y = TOPS["notes"]
+        y = float(TOPS["notes"])
         for line in lines[:6]:
             self._text(self.left, y, line, SMALL, colour=SOFT)
             y += 13.0

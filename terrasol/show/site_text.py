@@ -9,7 +9,8 @@ import numpy as np
 
 from terrasol.engine.comparison import place_words
 from terrasol.engine.outputs import MONTH_NAMES, basis_words, month_labels
-from terrasol.engine.site import BOUNDS, CHOSEN_DAY, INTERVAL, NO_ANSWER, Site
+from terrasol.engine.site import BOUNDS, CHOSEN_DAY, INTERVAL, Site
+from terrasol.practice.limits import PLACE
 from terrasol.practice.season import growing_season
 
 DIRECTIONS: Final = (
@@ -235,7 +236,7 @@ def site_text(sites: Sequence[Site], notes: Sequence[str]) -> str:
             for words in error_words(site)
         ),
         *notes,
-        NO_ANSWER,
+        PLACE,
     ]
     return "\n".join(lines)
 
