@@ -64,9 +64,14 @@ def short_name(predictor: str) -> str:
 
 
 def shown_predictors(table: PlotTable) -> list[str]:
-    """Columns of the predictors to draw: the cell's values at the raster's own cells."""
-    by_name = {short_name(name): name for name in table.predictors()}
-    return [by_name[name] for name in SHOWN if name in by_name]
+    """Columns of the predictors to draw: the cell's values at the raster's own cells.
+
+    Those of `SHOWN`, or if the table has none of them, as many of its first.
+    """
+    found = [name for name in table.predictors() if name not in TURNING]
+    by_name = {short_name(name): name for name in found}
+    shown = [by_name[name] for name in SHOWN if name in by_name]
+    return shown or found[: len(SHOWN)]
 
 
 def response_values(table: PlotTable, name: str) -> Array:
