@@ -181,6 +181,9 @@ class SunYear:
         }
 
 
+MEND: Final = "mend the place (longitude, then latitude)"
+"""What to do about a place that does not lie on the ground."""
+
 CHOSEN_DAY: Final = 21
 """Day of the month whose first and last sun is told, as `parse_days` has it."""
 
@@ -426,7 +429,7 @@ def find_cell(elevation: Elevation, frame: Frame, spot: Spot) -> tuple[int, int]
     """
     what = f"the place {spot.name}".rstrip()
     return cell_of(
-        elevation, frame, spot.latitude, spot.longitude, what=what, mend="mend the place"
+        elevation, frame, spot.latitude, spot.longitude, what=what, mend=MEND
     )
 
 

@@ -49,7 +49,11 @@ def contour_step(heights: NDArray[np.floating]) -> float | None:
 
 
 def draw_contours(
-    page: Page, heights: NDArray[np.float32], step: float, corner: tuple[float, float]
+    page: Page,
+    heights: NDArray[np.float32],
+    step: float,
+    corner: tuple[float, float],
+    named: bool = True,
 ) -> None:
     """Draw contour lines over a map.
 
@@ -62,6 +66,8 @@ def draw_contours(
         Distance between lines [m].
     corner : tuple of float
         Upper left corner of the map on the page [pixels].
+    named : bool
+        Write the heights of the bolder lines.
     """
     grid = _smooth(heights)
     if min(grid.shape) < 2 or not np.isfinite(grid).any():
@@ -85,7 +91,7 @@ def draw_contours(
             linestyles="solid",
             alpha=0.55 if bold else 0.38,
         )
-        if not bold:
+        if not (bold and named):
             continue
         rim = (*corner, corner[0] + heights.shape[1], corner[1] + heights.shape[0])
         for level, path in zip(chosen * step, lines.get_paths(), strict=True):

@@ -92,12 +92,12 @@ STATE_WORDS: Final = {
     State.NIGHT: "sun below the level",
 }
 
-TOPS: Final = {"facts": 118, "horizon": 344, "months": 624, "year": 862, "notes": 1064}
+TOPS: Final = {"facts": 118, "horizon": 344, "months": 624, "year": 862, "notes": 1060}
 HEIGHTS: Final = {"horizon": 178, "months": 150, "year": 160}
 BARS: Final = 330
 """Measures of the sheet [pixels]."""
 
-COLUMN_ENDS: Final = np.array([0.29, 0.41, 0.54, 0.73, 0.865, 1.0])
+COLUMN_ENDS: Final = np.array([0.29, 0.40, 0.52, 0.70, 0.83, 1.0])
 """Right ends of the table's columns, as shares of its width."""
 
 YEAR: Final = 2025
@@ -178,6 +178,8 @@ def _common(
     first = min(_least(site.sun.level[0]) for site in sites)
     last = max(-_least(-site.sun.level[1]) for site in sites)
     hours = float(np.floor(first - 0.2)), float(np.ceil(last + 0.2))
+    if hours[1] - hours[0] > 24.0:  # midnight sun
+        hours = 0.0, 24.0
     return _Common(limits, 1.16 * tallest, hours, days, notes, source)
 
 
@@ -229,7 +231,11 @@ class _Sheet:
         title = site.name or where
         self._text(self.left, 66, clip(title, TITLE, room, bold=True), TITLE, bold=True)
         under = f"Sun and shade at {where}" if site.name else "Sun and shade"
+        cell = f"cell in row {site.row}, column {site.column}"
+        made = "  ·  ".join(p for p in (self.common.source, cell, f"terrasol {__version__}") if p)
+        made = clip(made, SMALL, room - text_width(under, SUBTITLE) - 20)
         self._text(self.left, 90, clip(under, SUBTITLE, room), SUBTITLE, colour=SOFT)
+        self._text(self.right, 90, made, SMALL, colour=SOFT, across="right")
 
     def _facts(self) -> None:
         """Names to the left, what they are beside."""
@@ -263,7 +269,7 @@ class _Sheet:
         heights = coarse.surface(coarse.average(around.heights))
         step = contour_step(heights)
         if step is not None:
-            draw_contours(self.page, heights, step, (x, y))
+            draw_contours(self.page, heights, step, (x, y), named=False)
         self.page.box(x, y, width, height, edge=INK, line=1.0)
         gap = (coarse.rows - row - 0.5) ** 2 + (coarse.columns - column - 0.5) ** 2
         at = np.unravel_index(np.nanargmin(gap), gap.shape)
@@ -454,19 +460,14 @@ class _Sheet:
             PLACE,
         ]
         lines = wrap(_printed(" ".join(said)), SMALL, self.right - self.left)
-        y = float(TOPS["notes"])
-        for line in lines[:6]:
-            self._text(self.left, y, line, SMALL, colour=SOFT)
-            y += 13.0
-        cell = f"cell in row {site.row}, column {site.column}"
-        foot = "  ·  ".join(p for p in (f"terrasol {__version__}", common.source, cell) if p)
-        room = self.right - self.left
-        self._text(self.left, A4[1] - 24, clip(foot, SMALL, room), SMALL, colour=SOFT)
+        step = min(13.0, (A4[1] - 20 - TOPS["notes"]) / len(lines))
+        for k, line in enumerate(lines):
+            self._text(self.left, TOPS["notes"] + k * step, line, SMALL, colour=SOFT)
 
 
 def _printed(words: str) -> str:
     """Text of the terminal as it is set in print."""
-    return words.replace(" x ", " × ").replace("m-2", "m⁻²").replace("kW h", "kWh")
+    return words.replace(" x ", " × ").replace("m-2", "m⁻²")
 
 
 def by_clock(site: Site, first: float, last: float) -> NDArray[np.uint8]:

@@ -27,6 +27,9 @@ SKIES: Final = {
 }
 """How energy under each kind of sky is called."""
 
+ALL_DAY: Final = 24.0 - 1.0 / 60.0
+"""Hours of sun above which it does not set."""
+
 Row = tuple[str, str]
 
 
@@ -186,7 +189,10 @@ def month_rows(site: Site) -> list[tuple[str, ...]]:
         zip(month_labels(energy.settings), energy.settings.period.months, strict=True)
     ):
         day = sun.on(month, CHOSEN_DAY)
-        share = f"{100.0 * here[k] / level[k]:.0f}" if level[k] > 0.0 else "-"
+        share = f"{100.0 * here[k] / level[k]:.0f}" if level[k] >= 0.5 else "-"
+        ends = clock_time(sun.first[day]), clock_time(sun.last[day])
+        if sun.hours[day] > ALL_DAY:
+            ends = "-", "all day"
         rows.append(
             (
                 label,
@@ -194,8 +200,7 @@ def month_rows(site: Site) -> list[tuple[str, ...]]:
                 f"{level[k]:.0f}",
                 share,
                 f"{sun.mean_hours(month)[0]:.1f}",
-                clock_time(sun.first[day]),
-                clock_time(sun.last[day]),
+                *ends,
             )
         )
     return rows
