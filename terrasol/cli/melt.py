@@ -33,7 +33,6 @@ if TYPE_CHECKING:
     from terrasol.files.stacks import StackWriter
     from terrasol.ground.elevation import Elevation
     from terrasol.practice.snow import SnowModel
-    from terrasol.sky.station import Station
 
 MELTS = ("enhanced", "hock", "degree-days")
 ALBEDOS = ("brock", "usace", "station")
@@ -240,14 +239,16 @@ class _Job:
         from terrasol.files.horizons import default_folder
         from terrasol.files.rasters import naming
         from terrasol.files.tables import read_station
+        from terrasol.practice.snow_weather import whole_days
 
         air = asked.air((0.2,))
         state = read_head(given["from_state"]) if given["from_state"] else None
         model = _model(given, state)
         assert asked.station is not None
         station = read_station(asked.station, asked.station_settings)
-        settings = _settings(common, asked, given, model, state, station)
         ground = read(common)
+        last = whole_days(station, ground.frame.centre[1]).end.astype("M8[D]") - 1
+        settings = _settings(common, asked, given, model, state, last)
         elevation = ground.elevation
         air = asked.placed(air, ground.frame)
         scene = around.scene(elevation, ground.frame)
@@ -522,7 +523,7 @@ def _settings(
     given: dict[str, Any],
     model: SnowModel,
     state: StateHead | None,
-    station: Station,
+    last: np.datetime64,
 ) -> MeltSettings:
     """Everything but the raster."""
     import numpy as np
@@ -530,16 +531,14 @@ def _settings(
     from terrasol.engine.melt_job import MeltSettings
     from terrasol.practice.snow_point import numbers_to_fit
     from terrasol.sky.gaps import LONGEST_HOURS
-    from terrasol.sky.measured import covered_days
     from terrasol.sky.period import parse_period
 
     period = given["period"]
     if period is None and state is not None:
-        last = covered_days(station).end.astype("M8[D]") - 1
         if np.datetime64(state.day) > last:
             raise InputError(
-                f"{station.name}: the series ends with {last}, but {given['from_state']} wants to"
-                f" go on from {state.day}: there is no new day yet"
+                f"{given['from_state']} goes on from {state.day}, and the last whole day that the"
+                f" station covers is {last}: there is no new day yet"
             )
         period = f"{state.day}/{last}"
     fit = None

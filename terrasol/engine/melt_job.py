@@ -20,6 +20,7 @@ from terrasol.files.layers import Layer
 from terrasol.files.snow_state import StateHead
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
+from terrasol.ground.frame import make_frame
 from terrasol.light.series import SUBSTEP_SECONDS, SeriesSettings
 from terrasol.practice.snow import (
     ALBEDO_MODELS,
@@ -38,11 +39,12 @@ from terrasol.practice.snow_weather import (
     hourly_weather,
     level_light,
     measured_light,
+    whole_days,
 )
 from terrasol.sky.clear import Air
 from terrasol.sky.gaps import LONGEST_HOURS
 from terrasol.sky.irradiance import Sky
-from terrasol.sky.measured import covered_days, measured_sky
+from terrasol.sky.measured import measured_sky
 from terrasol.sky.period import Period
 from terrasol.sky.potential import PotentialBeam
 from terrasol.sky.quality import check_quality, usable
@@ -148,7 +150,9 @@ def prepare(
         Settings out of range; a station that does not cover the period.
     """
     model = settings.model
-    sky, station, period, record, warnings = _sky(station, air, settings)
+    frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
+    period = settings.period or whole_days(station, frame.centre[1])
+    sky, station, record, warnings = _sky(station, air, settings, period)
     own = SeriesSettings(
         period, sky, "1h", ("global",),
         (TERRAIN_ALBEDO if model.melt == "enhanced" else 0.0,) * 12,
@@ -178,22 +182,21 @@ def prepare(
 
 
 def _sky(
-    station: Station, air: Air, settings: MeltSettings
-) -> tuple[Sky, Station, Period, dict[str, Any], tuple[str, ...]]:
-    """The sky that the melt model wants, the mended station, the period, and what was found."""
+    station: Station, air: Air, settings: MeltSettings, period: Period
+) -> tuple[Sky, Station, dict[str, Any], tuple[str, ...]]:
+    """The sky that the melt model wants, the mended station, and what was found."""
     if settings.model.melt == "enhanced":
         found = measured_sky(
-            station, air, settings.period,
+            station, air, period,
             decomposition=settings.decomposition,
             fill_hours=settings.fill_hours,
             step_seconds=STATION_SECONDS,
         )  # fmt: skip
-        return found.sky, found.station, found.period, found.report, found.warnings
+        return found.sky, found.station, found.report, found.warnings
     quality = check_quality(station)
     sound, _ = usable(station, quality)
     report = {"name": station.name, "height_m": station.height, "quality": quality.summary()}
-    period = settings.period or covered_days(station)
-    return PotentialBeam(), sound, period, report, station.notes
+    return PotentialBeam(), sound, report, station.notes
 
 
 def _check_or_fit(

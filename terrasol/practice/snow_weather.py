@@ -12,6 +12,7 @@ from terrasol.errors import InputError, SettingError
 from terrasol.practice.snow import Weather
 from terrasol.sky.interval import cosine, interval_means
 from terrasol.sky.irradiance import Sky
+from terrasol.sky.period import Period, parse_period
 from terrasol.sky.station import Station
 from terrasol.sky.sun import SunSeries
 
@@ -108,6 +109,27 @@ def hourly_weather(
         edges, months, found["temperature"], found["precipitation"], station.height, albedo
     )
     return Mended(weather, count, doubts)
+
+
+def whole_days(station: Station, longitude: float) -> Period:
+    """All days at a longitude [degrees east] whose 24 hours a series covers, first to last.
+
+    A day begins at the full hour of UTC nearest to midnight of local mean solar time.
+
+    Raises
+    ------
+    InputError
+        There is none.
+    """
+    late = np.timedelta64(round(-longitude / 15.0), "h")
+    day = np.timedelta64(1, "D")
+    first, last = (moment - late for moment in (station.start[0].astype("M8[s]"), station.end))
+    begin = first.astype("M8[D]")
+    begin = begin if begin == first else begin + day
+    end = last.astype("M8[D]") - day
+    if begin > end:
+        raise InputError(f"{station.name}: the series covers no whole day")
+    return parse_period(f"{begin}/{end}")
 
 
 def level_light(station: Station, sky: Sky, edges: NDArray[np.datetime64]) -> NDArray[np.float64]:

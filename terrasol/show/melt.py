@@ -47,7 +47,7 @@ def hydrograph_png(
         What the pale bands are, in words; empty if there are none.
     """
     heights = (130, 320, 240)
-    lines = _broken(notes)
+    lines = _broken([f"Pale bands: {spread}.", *notes] if spread else notes)
     page = Page(WIDTH, HEAD + sum(heights) + 2 * GAP + 70 + 24 * len(lines) + 40)
     _head(page, title, subtitle)
     top = HEAD
@@ -126,17 +126,16 @@ def _foot(page: Page, lines: Sequence[str], top: float) -> None:
     page.text(LEFT, page.height - 24, f"terrasol {__version__}", SMALL, colour=SOFT)
 
 
-def _days(tables: SeasonTables) -> NDArray[np.float64]:
+def _days(tables: SeasonTables) -> NDArray[np.floating]:
     """Middle of each day on the time axis."""
     return np.arange(tables.dates.size) + 0.5
 
 
-def _running(values: NDArray[np.float64], days: int) -> NDArray[np.float64]:
+def _running(values: NDArray[np.floating], days: int) -> NDArray[np.floating]:
     """Mean of the days around, fewer at the ends."""
     ones = np.ones(days)
     whole = np.convolve(np.ones_like(values), ones, "same")
-    mean: NDArray[np.float64] = np.convolve(values, ones, "same") / whole
-    return mean
+    return np.convolve(values, ones, "same") / whole
 
 
 def _axes(panel: Panel, tables: SeasonTables, high: float, words: str, unit: str) -> None:
@@ -200,9 +199,6 @@ def _draw_flow(page: Page, tables: SeasonTables, top: float, height: float, spre
     panel.axes.plot(_days(tables), runoff, color=RUNOFF, linewidth=1.1 * thin)
     panel.axes.plot(_days(tables), melt, color=MELT, linewidth=2.4 * thin)
     _key(page, top - 18, entries)
-    if spread:
-        for k, line in enumerate(wrap(f"Pale: {spread}", SMALL, 430)):
-            page.text(LEFT + 14, top + 22 + 22 * k, line, SMALL, colour=SOFT)
 
 
 def _draw_store(page: Page, tables: SeasonTables, top: float, height: float) -> None:
@@ -223,7 +219,7 @@ def _draw_store(page: Page, tables: SeasonTables, top: float, height: float) -> 
     x = LEFT + panel.width
     for share in (0.5, 1.0):
         y = top + height * (1.0 - share / 1.08)
-        page.text(x - 4, y - 6, f"{share:.0%}", 15.0, colour=SOFT, across="right")
+        page.text(x + 5, y, f"{share:.0%}", 14.0, colour=SOFT, down="center")
     k = int(water.argmax())
     words = f"{number(water[k], 1.0)} mm on {date_text(tables.dates[k])}"
     side: Literal["left", "right"] = "right" if k > tables.dates.size / 2 else "left"
