@@ -14,6 +14,8 @@ if TYPE_CHECKING:
     from terrasol.engine.comparison import Spot, compare_station, spot_at
     from terrasol.engine.datasets import irradiation, terrain
     from terrasol.engine.hours import sun_hours
+    from terrasol.engine.plot_table import PlotTable
+    from terrasol.engine.plots import plot_predictors
     from terrasol.engine.series_stack import irradiation_series
     from terrasol.engine.uncertainty import propagate
     from terrasol.errors import (
@@ -23,6 +25,7 @@ if TYPE_CHECKING:
         TerrasolError,
         UnfinishedError,
     )
+    from terrasol.files.points import Points, read_points
     from terrasol.files.rasters import read_elevation
     from terrasol.files.tables import read_station
     from terrasol.ground.elevation import Elevation
@@ -43,6 +46,8 @@ _HOMES = {
     "MonthlySky": "terrasol.sky.cloud",
     "OutputError": "terrasol.errors",
     "Period": "terrasol.sky.period",
+    "PlotTable": "terrasol.engine.plot_table",
+    "Points": "terrasol.files.points",
     "SettingError": "terrasol.errors",
     "Spot": "terrasol.engine.comparison",
     "Station": "terrasol.sky.station",
@@ -57,7 +62,9 @@ _HOMES = {
     "measured_sky": "terrasol.sky.measured",
     "parse_period": "terrasol.sky.period",
     "propagate": "terrasol.engine.uncertainty",
+    "plot_predictors": "terrasol.engine.plots",
     "read_elevation": "terrasol.files.rasters",
+    "read_points": "terrasol.files.points",
     "read_station": "terrasol.files.tables",
     "split_diffuse": "terrasol.sky.diffuse",
     "spot_at": "terrasol.engine.comparison",
@@ -75,6 +82,8 @@ __all__ = [
     "MonthlySky",
     "OutputError",
     "Period",
+    "PlotTable",
+    "Points",
     "SettingError",
     "Spot",
     "Station",
@@ -88,8 +97,10 @@ __all__ = [
     "linke_climatology",
     "measured_sky",
     "parse_period",
+    "plot_predictors",
     "propagate",
     "read_elevation",
+    "read_points",
     "read_station",
     "split_diffuse",
     "spot_at",

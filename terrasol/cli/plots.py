@@ -22,8 +22,8 @@ from terrasol.errors import SettingError, counted
 if TYPE_CHECKING:
     from terrasol.cli.run import Ground
     from terrasol.engine.plot_places import Located
+    from terrasol.engine.plot_settings import PlotSettings
     from terrasol.engine.plot_table import PlotTable
-    from terrasol.engine.plots import PlotSettings
     from terrasol.files.points import Points
 
 TABLE, PARQUET, DICTIONARY = "plots.csv", "plots.parquet", "columns.csv"
@@ -42,9 +42,6 @@ AS_IRRADIATION = ("albedo", "diffuse", "step_seconds", "unit", "basis", "photons
 
 NOT_HERE = ("compression", "horizon_gap", "highest")
 """Shared options that mean nothing for plots: kept out of the help, and refused."""
-
-FINER_HOURS, MOST_AZIMUTHS = 4, 720
-"""Hours of sun take four times as many azimuths as energy, as everywhere, and at most 720."""
 
 
 class Lengths(click.ParamType):
@@ -208,7 +205,7 @@ _rearrange(plots)
 
 def _settings(common: Common, asked: AskedSky, given: dict[str, Any]) -> PlotSettings:
     """Everything that can be settled before the raster is read."""
-    from terrasol.engine.plots import PlotSettings
+    from terrasol.engine.plot_settings import PlotSettings, hours_azimuths
     from terrasol.light.days import parse_clock, parse_days
     from terrasol.light.hours import HoursSettings
     from terrasol.light.settings import LightSettings, twelve
@@ -236,7 +233,7 @@ def _settings(common: Common, asked: AskedSky, given: dict[str, Any]) -> PlotSet
         sky=air,
         days=parse_days(None, period),
         clock=parse_clock(given["clock"]),
-        azimuths=min(FINER_HOURS * common.azimuths, MOST_AZIMUTHS),
+        azimuths=hours_azimuths(common.azimuths),
         step_seconds=given["step_seconds"],
         refraction=common.refraction,
     )
@@ -346,15 +343,14 @@ class _Job:
         from terrasol.engine.plots import column_count, forecast_seconds, grain_sizes
 
         common, elevation = self.common, self.ground.elevation
-        factors, said = self._factors()
-        settings = replace(self.settings, factors=factors)
+        settings, _, said = self._settled()
         removed, notes = superseded(common, self.names)
         threads = common.threads or default_threads()
         return ground_forecast(common, self.ground) | {
             "plots": len(self.points),
             "plots_crs": self.points.crs.name,
             "plots_on_ground": int((located.flag == "ok").sum()),
-            "cells_m": [round(size, 3) for size in grain_sizes(elevation, factors)],
+            "cells_m": [round(size, 3) for size in grain_sizes(elevation, settings.factors)],
             "radii_m": list(settings.radii),
             "columns_of_predictors": column_count(self.points, settings),
             "files": self.names,
@@ -473,14 +469,14 @@ class _Job:
         """Stage all files but the record."""
         from terrasol.engine.plot_correlations import pairs
         from terrasol.engine.plot_methods import methods_text
-        from terrasol.engine.plot_table import dictionary, long_form
+        from terrasol.engine.plot_table import long_form
         from terrasol.files.plot_tables import csv_bytes, geoparquet_bytes
         from terrasol.show.plots import predictors_png
 
         response = self.given["response"]
         delivery.write_bytes(TABLE, csv_bytes(table.frame))
         delivery.write_bytes(PARQUET, geoparquet_bytes(table.frame))
-        delivery.write_bytes(DICTIONARY, csv_bytes(dictionary(table)))
+        delivery.write_bytes(DICTIONARY, csv_bytes(table.dictionary()))
         if self.given["as_long"]:
             delivery.write_bytes(LONG, csv_bytes(long_form(table)))
         delivery.write_bytes(CORRELATIONS, csv_bytes(pairs(table, response)))
@@ -499,6 +495,7 @@ class _Job:
             plots=int((table.frame["flag"] == "ok").sum()),
             climatology=self.asked.model == "ineichen" and self.asked.linke == CLIMATOLOGY,
             station=station.name if station else "",
+            decomposition=(self.asked.decomposition or "dirint") if station else "",
             far=os.path.basename(around.far) if around.far else "",
             surface=os.path.basename(around.surface) if around.surface else "",
         )

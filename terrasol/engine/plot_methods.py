@@ -9,8 +9,8 @@ from typing import Final
 import terrasol
 from terrasol.constants import PHOTONS_PER_JOULE
 from terrasol.engine.outputs import sky_kind
+from terrasol.engine.plot_settings import PlotSettings
 from terrasol.engine.plot_table import PlotTable
-from terrasol.engine.plots import PlotSettings
 from terrasol.engine.predictors import season_words
 from terrasol.errors import counted
 from terrasol.sky.clear import Air
@@ -20,9 +20,16 @@ REFERENCES: Final = {
     " productivity research. Journal of Forestry 64, 691-692.",
     "bird": "Bird, R. E. and Hulstrom, R. L. (1981). A simplified clear sky model for direct and"
     " diffuse insolation on horizontal surfaces. SERI/TR-642-761.",
+    "dirint": "Perez, R., Ineichen, P., Maxwell, E., Seals, R. and Zelenka, A. (1992). Dynamic"
+    " global-to-direct irradiance conversion models. ASHRAE Transactions 98, 354-369.",
+    "disc": "Maxwell, E. L. (1987). A quasi-physical model for converting hourly global horizontal"
+    " to direct normal insolation. SERI/TR-215-3087.",
     "dozier": "Dozier, J. and Frew, J. (1990). Rapid calculation of terrain parameters for"
     " radiation modeling from digital elevation data. IEEE Transactions on Geoscience and Remote"
     " Sensing 28, 963-969. doi:10.1109/36.58986",
+    "erbs": "Erbs, D. G., Klein, S. A. and Duffie, J. A. (1982). Estimation of the diffuse"
+    " radiation fraction for hourly, daily and monthly-average global radiation. Solar Energy 28, 293-302."
+    " doi:10.1016/0038-092X(82)90302-4",
     "hay-davies": "Hay, J. E. and Davies, J. A. (1980). Calculation of the solar radiation incident"
     " on an inclined surface. Proceedings of the First Canadian Solar Radiation Data Workshop,"
     " 59-72.",
@@ -45,8 +52,16 @@ REFERENCES: Final = {
     "stage": "Stage, A. R. (1976). An expression for the effect of aspect, slope, and habitat type"
     " on tree growth. Forest Science 22, 457-460.",
 }
-"""Works that a paragraph may cite, in alphabetical order; titles, volumes and pages are from
+"""Works that a paragraph may cite; titles, volumes and pages are from
 memory and want a look before they are printed."""
+
+
+PARTING: Final = {
+    "dirint": "the DIRINT model (Perez et al. 1992)",
+    "disc": "the DISC model (Maxwell 1987)",
+    "erbs": "the model of Erbs et al. (1982)",
+}
+"""Models that part the beam off."""
 
 
 @dataclass(frozen=True)
@@ -63,6 +78,8 @@ class Account:
         Whether the turbidity is the climatology's.
     station : str
         Name of the station whose sky it is, if any.
+    decomposition : str
+        Name of the model that parts the beam off where the station measured global alone.
     far, surface : str
         Names of the larger model and of the surface model, if given.
     """
@@ -71,6 +88,7 @@ class Account:
     plots: int
     climatology: bool = False
     station: str = ""
+    decomposition: str = ""
     far: str = ""
     surface: str = ""
 
@@ -96,7 +114,7 @@ def methods_text(table: PlotTable, settings: PlotSettings, account: Account) -> 
         *_sample_words(table, settings),
         *_doubt_words(settings),
     ]
-    listed = "\n".join(f"- {text}" for key, text in REFERENCES.items() if key in cited)
+    listed = "\n".join(sorted(f"- {text}" for key, text in REFERENCES.items() if key in cited))
     return (
         "# Methods\n\nReady to paste; shorten what you do not use. Check titles and pages of the"
         " references against your library.\n\n"
@@ -139,7 +157,8 @@ def _light_words(settings: PlotSettings, account: Account, cited: set[str]) -> l
     sky = {
         "clear": f"Irradiation is potential, under a clear sky ({air})",
         "measured": "Irradiation is that under the sky measured at"
-        f" {account.station or 'a station'} (clear air: {air})",
+        f" {account.station or 'a station'}{_parted(account.decomposition, cited)} (clear air:"
+        f" {air})",
         "monthly index": f"Irradiation is that of a clear sky ({air}) times monthly clear-sky"
         f" indices of {_numbers(getattr(light.sky, 'index', ()))}",
     }[kind]
@@ -176,6 +195,14 @@ def _light_words(settings: PlotSettings, account: Account, cited: set[str]) -> l
             f" nm) in a joule of global light{usual}."
         )
     return said
+
+
+def _parted(model: str, cited: set[str]) -> str:
+    """How beam was parted off."""
+    if model not in REFERENCES:
+        return ""
+    cited.add(model)
+    return f", beam parted off by {PARTING[model]} where it was not measured itself"
 
 
 def _air_words(air: Air, climatology: bool, cited: set[str]) -> str:

@@ -100,6 +100,18 @@ class PlotTable:
     warnings: list[str]
     seconds: dict[str, float]
 
+    def dictionary(self) -> pd.DataFrame:
+        """What each column is: one row a column, in their order."""
+        rows = [asdict(column) for column in self.columns]
+        names = {"name": "column", "basis": "area_basis", "radius": "radius_m", "cell": "cell_m"}
+        found = pd.DataFrame(rows).rename(columns=names)
+        found["statistic_meaning"] = [STATISTICS.get(s, "") for s in found["statistic"]]
+        order = [
+            "column", "predictor", "meaning", "unit", "area_basis", "statistic",
+            "statistic_meaning", "radius_m", "cell_m", "source",
+        ]  # fmt: skip
+        return found[order].round({"cell_m": 3})
+
     def predictors(self) -> list[str]:
         """Names of the predictors whose cell value is in the table, at the raster's own cells."""
         return [c.name for c in self.columns if c.statistic == CELL and c.cell == self.cells[0]]
@@ -291,19 +303,6 @@ def _column(
         name, predictor.name, predictor.words, predictor.unit, predictor.basis, statistic, radius,
         size, predictor.source,
     )  # fmt: skip
-
-
-def dictionary(table: PlotTable) -> pd.DataFrame:
-    """The data dictionary of a table of plots: one row a column."""
-    rows = [asdict(column) for column in table.columns]
-    names = {"name": "column", "basis": "area_basis", "radius": "radius_m", "cell": "cell_m"}
-    found = pd.DataFrame(rows).rename(columns=names)
-    found["statistic_meaning"] = [STATISTICS.get(s, "") for s in found["statistic"]]
-    order = [
-        "column", "predictor", "meaning", "unit", "area_basis", "statistic", "statistic_meaning",
-        "radius_m", "cell_m", "source",
-    ]  # fmt: skip
-    return found[order].round({"cell_m": 3})
 
 
 def long_form(table: PlotTable) -> pd.DataFrame:

@@ -6,128 +6,39 @@ and of these only such cells are kept, so memory goes with the plots and not wit
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
-from dataclasses import dataclass, replace
-from typing import Any, Final
+from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
-from numpy.typing import NDArray
-from scipy.interpolate import RegularGridInterpolator
 
+from terrasol.constants import ENERGY_UNITS, PHOTONS_PER_JOULE, REFRACTION_COEFFICIENT
+from terrasol.engine.datasets import clear_air, scene_of
 from terrasol.engine.hours import plan_hours
-from terrasol.engine.job import NO_SCENE, Plan, plan_irradiation
-from terrasol.engine.plan import Block, Progress, blocks_of
+from terrasol.engine.job import NO_SCENE, plan_irradiation
+from terrasol.engine.plan import Progress
+from terrasol.engine.plot_grain import Grain
 from terrasol.engine.plot_places import PLACED, Located, locate
-from terrasol.engine.plot_table import (
-    CELL,
-    ERROR,
-    GREATEST,
-    KNOWN,
-    LEAST,
-    MEAN,
-    POINT,
-    Assembly,
-    PlotTable,
-    Told,
-    grain_tags,
-)
+from terrasol.engine.plot_settings import RADII, PlotSettings, hours_azimuths
+from terrasol.engine.plot_table import Assembly, PlotTable, grain_tags
 from terrasol.engine.predictors import (
     GROUPS,
-    OF_TIME,
-    Bands,
     ground_predictors,
-    ground_values,
     hours_predictors,
-    hours_values,
     light_predictors,
-    light_values,
 )
-from terrasol.errors import SettingError
-from terrasol.files.layers import Layer
 from terrasol.files.points import Points
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
-from terrasol.ground.frame import Frame, make_frame
+from terrasol.ground.frame import make_frame
 from terrasol.ground.grain import coarsened
 from terrasol.ground.horizon import BLOCK
+from terrasol.light.days import parse_clock, parse_days
 from terrasol.light.hours import HoursSettings
-from terrasol.light.settings import LightSettings
-from terrasol.practice.plots import (
-    Gathered,
-    Share,
-    around_point,
-    by_error,
-    in_circle,
-    own_cell,
-)
+from terrasol.light.settings import LightSettings, twelve
 from terrasol.practice.season import growing_season
-
-Array = NDArray[np.float64]
-
-RADII: Final = (50.0, 100.0)
-"""Circles by default [m] (judgement, no source)."""
-
-MOST_CELLS: Final = 4_000_000
-"""Most cells in a circle: what a plot may ask for before it is a map (judgement)."""
-
-
-@dataclass(frozen=True)
-class PlotSettings:
-    """What to tell of plots.
-
-    Parameters
-    ----------
-    light : LightSettings
-        Of twelve whole months, with monthly parts and photosynthetic light.
-    hours : HoursSettings
-        Of the same months, with one day of each.
-    season : tuple of int, optional
-        Months of the growing season; by default those of the raster's hemisphere.
-    radii : tuple of float
-        Of circles [m], rising.
-    factors : tuple of int
-        Cell sizes, in cells of the raster, rising; 1 comes first.
-    groups : tuple of str
-        Of `GROUPS`.
-
-    Raises
-    ------
-    SettingError
-        A value out of its range, or a period that is not twelve whole months.
-    """
-
-    light: LightSettings
-    hours: HoursSettings
-    season: tuple[int, ...] = ()
-    radii: tuple[float, ...] = RADII
-    factors: tuple[int, ...] = (1,)
-    groups: tuple[str, ...] = tuple(GROUPS)
-
-    def __post_init__(self) -> None:
-        """Refuse what makes no sense."""
-        period = self.light.period
-        first, last = period.start.astype("M8[D]"), period.end.astype("M8[D]")
-        whole = all(day == day.astype("M8[M]").astype("M8[D]") for day in (first, last))
-        if len(period.months) != 12 or not whole:
-            raise SettingError(
-                f"the period {period.label} is not twelve whole months, which year and season need:"
-                " write a year, or 2024-10/2025-09, say"
-            )
-        if any(not 0.0 < radius < np.inf for radius in self.radii):
-            raise SettingError("the radius of a circle must be more than 0 m")
-        for name, values in (("radii", self.radii), ("cell sizes", self.factors)):
-            if list(values) != sorted(set(values)):
-                raise SettingError(f"the {name} must rise, each given once; got {values}")
-        if self.factors[:1] != (1,):
-            raise SettingError(f"the cell sizes begin with the raster's own, 1; got {self.factors}")
-        unknown = set(self.groups) - set(GROUPS)
-        if unknown or not self.groups:
-            raise SettingError(f"predictors must be some of {', '.join(GROUPS)}")
-
-    @property
-    def timed(self) -> bool:
-        """Whether hours of sun are asked for."""
-        return any(group in OF_TIME for group in self.groups)
+from terrasol.sky.clear import Air
+from terrasol.sky.irradiance import Sky
+from terrasol.sky.period import Period, parse_period
 
 
 def grain_sizes(elevation: Elevation, factors: Sequence[int]) -> tuple[float, ...]:
@@ -186,7 +97,7 @@ def plot_table(
     for factor, size, tag, scene in zip(settings.factors, sizes, tags, scenes, strict=True):
         part = factor**-2.0 / work
         ground = coarsened(elevation, factor)
-        grain = _Grain(ground, located, points.error, settings, factor, size)
+        grain = Grain(ground, located, points.error, settings, factor, size)
 
         def move(share: float, stage: str, done: float = done, part: float = part) -> None:
             tell(done + part * share, stage)
@@ -231,195 +142,93 @@ def forecast_seconds(
     return found
 
 
-@dataclass(frozen=True)
-class _Grain:
-    """The plots on the ground in cells of one size."""
+def plot_predictors(
+    elevation: Elevation,
+    points: Points,
+    period: str | int | Period | None = None,
+    air: Air | None = None,
+    *,
+    season: Sequence[int] | None = None,
+    radii: Sequence[float] = RADII,
+    factors: Sequence[int] = (1,),
+    predictors: Sequence[str] = tuple(GROUPS),
+    albedo: float | Sequence[float] = 0.2,
+    diffuse: str = "perez",
+    azimuths: int = 64,
+    step_seconds: float = 60.0,
+    unit: str = "MJ m-2",
+    basis: str = "slope",
+    photons_per_joule: float = PHOTONS_PER_JOULE,
+    clock: str = "solar",
+    refraction: float = REFRACTION_COEFFICIENT,
+    sky: Sky | None = None,
+    far: Elevation | None = None,
+    surface: Elevation | None = None,
+    threads: int | None = None,
+) -> PlotTable:
+    """Predictors of light and heat for plots: at the point, within circles, at several cell sizes.
 
-    ground: Elevation
-    located: Located
-    error: Array
-    settings: PlotSettings
-    factor: int
-    size: float
+    Parameters
+    ----------
+    elevation : Elevation
+        The ground.
+    points : Points
+        The plots, from `read_points`, in any CRS.
+    period : str, int or Period, optional
+        Twelve whole months, see `parse_period`; a typical year by default.
+    air : Air, optional
+        See `irradiation`.
+    season : sequence of int, optional
+        Months of the growing season; by default April to October, south of the equator October
+        to April.
+    radii : sequence of float
+        Of circles around the plots [m].
+    factors : sequence of int
+        Cell sizes, in cells of the raster; 1 comes first.
+    predictors : sequence of str
+        Groups of predictors: height, slope, aspect, transforms, heat_load, sky_view, irradiation,
+        irradiation_months, photosynthetic, photosynthetic_months, sun_hours, sun_hours_months,
+        first_last_sun.
+    albedo, diffuse, azimuths, step_seconds, unit, basis, photons_per_joule, refraction, sky
+        See `irradiation`. Hours of sun take four times as many azimuths, at most 720.
+    clock : str
+        See `sun_hours`.
+    far, surface : Elevation, optional
+        See `irradiation`.
+    threads : int, optional
+        Default: all cores that may be used.
 
-    def run(self, scene: Scene, threads: int | None, progress: Progress) -> Told:
-        """Gather what light and, if asked for, hours of sun say."""
-        s, ground = self.settings, self.ground
-        frame = make_frame(ground.shape, ground.transform, ground.crs)
-        shares = self._shares(frame)
-        plan = plan_irradiation(ground, s.light, scene)
-        predictors = [*ground_predictors(), *light_predictors(s.light, s.season)]
+    Returns
+    -------
+    PlotTable
+        Its `frame` has a row a plot, its `dictionary()` says what each column is.
 
-        def light(bands: Bands, height: Array, latitude: Array) -> Array:
-            own = ground_values(bands, height, latitude)
-            return np.concatenate([own, light_values(bands, s.light, s.season)], axis=1)
+    Raises
+    ------
+    SettingError
+        A value out of its range.
+    InputError
+        No plot lies on known ground, or a raster that cannot be placed on the Earth.
 
-        half = 0.5 if s.timed else 1.0
-        sink = _CellSink(plan, shares, light, len(predictors))
-        summary = sink.carry_out(threads, lambda share, stage: progress(half * share, stage))
-        gathered, level = [sink.gathered], {"irradiation": summary.numbers["level_ground"]}
-        said, seconds = list(summary.warnings), dict(summary.seconds)
-        if s.timed:
-            timed = plan_hours(ground, s.hours, scene)
-            more = hours_predictors(s.hours, s.season)
-
-            def hours(bands: Bands, height: Array, latitude: Array) -> Array:
-                return hours_values(bands, s.hours, s.season)
-
-            sink = _CellSink(timed, shares, hours, len(more))
-            summary = sink.carry_out(
-                threads, lambda share, stage: progress(half + half * share, stage)
-            )
-            gathered.append(sink.gathered)
-            predictors += more
-            level["sun_hours"] = summary.numbers["level_ground_sun_hours"]
-            said += summary.warnings
-            for stage, value in summary.seconds.items():
-                seconds[stage] = seconds.get(stage, 0.0) + value
-        return Told(predictors, self._statistics(gathered), level, said, seconds)
-
-    @property
-    def _kinds(self) -> list[tuple[str, float | None]]:
-        """What is gathered of each plot."""
-        error = [(ERROR, None)] if np.isfinite(self.error).any() else []
-        return [(CELL, None), (POINT, None), *error, *((MEAN, r) for r in self.settings.radii)]
-
-    def _shares(self, frame: Frame) -> _Shares:
-        """The cells that every plot asks for, one share a kind."""
-        shape, found = self.ground.shape, []
-        size = frame.cell_size
-        if self.settings.radii and np.pi * max(self.settings.radii) ** 2 > MOST_CELLS * np.prod(
-            size
-        ):
-            raise SettingError(
-                f"a circle of {max(self.settings.radii):g} m has more than {MOST_CELLS:,} cells of"
-                f" {size[0]:.3g} m: give a coarser raster, or smaller circles"
-            )
-        rows = (self.located.row + 0.5) / self.factor - 0.5
-        columns = (self.located.column + 0.5) / self.factor - 0.5
-        for plot, (row, column, error, flag) in enumerate(
-            zip(rows, columns, self.error, self.located.flag, strict=True)
-        ):
-            if flag != PLACED:
-                continue
-            jacobian = frame.jacobian_at(row, column)
-            for kind, (statistic, radius) in enumerate(self._kinds):
-                place = plot * len(self._kinds) + kind
-                if statistic == CELL:
-                    share = own_cell(row, column, shape)
-                elif statistic == POINT:
-                    share = around_point(row, column, shape)
-                elif statistic == ERROR:
-                    if not np.isfinite(error):
-                        continue
-                    share = by_error(row, column, error, jacobian, shape)
-                else:
-                    assert radius is not None
-                    share = in_circle(row, column, radius, jacobian, shape)
-                found.append((place, share))
-        return _Shares.of(found, self.error.size * len(self._kinds), shape)
-
-    def _statistics(self, gathered: list[Gathered]) -> dict[tuple[str, float | None], Array]:
-        """Statistics by kind and radius, each of shape (plots, predictors)."""
-        kinds = self._kinds
-
-        def all_of(values: Callable[[Gathered], Array]) -> Array:
-            return np.concatenate([values(g) for g in gathered], axis=1)
-
-        mean, deviation = all_of(lambda g: g.mean), all_of(lambda g: g.deviation)
-        low, high = all_of(lambda g: g.least), all_of(lambda g: g.greatest)
-        known = gathered[0].weight[:, :1]
-        own = mean[:: len(kinds)]
-        told: dict[tuple[str, float | None], Array] = {}
-        for place, (statistic, radius) in enumerate(kinds):
-            rows = slice(place, None, len(kinds))
-            if statistic == POINT:
-                told[POINT, None] = np.where(np.isnan(own), np.nan, mean[rows])
-            elif statistic == ERROR:
-                told[ERROR, None] = deviation[rows]
-            else:
-                told[statistic, radius] = mean[rows]
-            if statistic == MEAN:
-                told[LEAST, radius], told[GREATEST, radius] = low[rows], high[rows]
-                told[KNOWN, radius] = known[rows]
-        return told
-
-
-@dataclass(frozen=True)
-class _Shares:
-    """Cells by block: which share counts which of them, and how much."""
-
-    count: int
-    blocks: dict[tuple[int, int], tuple[NDArray[Any], ...]]
-
-    @classmethod
-    def of(cls, found: list[tuple[int, Share]], count: int, shape: tuple[int, int]) -> _Shares:
-        """Sort the cells of some shares into blocks."""
-        which = np.concatenate([np.full(s.weight.size, place) for place, s in found])
-        rows = np.concatenate([s.rows for _, s in found])
-        columns = np.concatenate([s.columns for _, s in found])
-        weight = np.concatenate([s.weight for _, s in found])
-        across = -(-shape[1] // BLOCK)
-        block = rows // BLOCK * across + columns // BLOCK
-        order = np.argsort(block, kind="stable")
-        ends = np.flatnonzero(np.diff(block[order])) + 1
-        pieces = np.split(order, ends)
-        blocks: dict[tuple[int, int], tuple[NDArray[Any], ...]] = {}
-        for piece in pieces:
-            row, column = rows[piece], columns[piece]
-            corner = row[0] // BLOCK * BLOCK, column[0] // BLOCK * BLOCK
-            cells, cell = np.unique(row * shape[1] + column, return_inverse=True)
-            place = cells // shape[1], cells % shape[1]
-            blocks[int(corner[0]), int(corner[1])] = (*place, which[piece], cell, weight[piece])
-        return cls(count, blocks)
-
-
-class _CellSink:
-    """Takes the cells that plots ask for out of each block, and gathers what they say."""
-
-    def __init__(
-        self,
-        plan: Plan,
-        shares: _Shares,
-        values: Callable[[Bands, Array, Array], Array],
-        quantities: int,
-    ) -> None:
-        self.plan = plan
-        self.shares = shares
-        self.values = values
-        self.gathered = Gathered(shares.count, quantities)
-        self._block: tuple[int, int] | None = None
-        self._bands: Bands = {}
-        frame = plan.frame
-        self._latitude = RegularGridInterpolator((frame.rows, frame.columns), frame.latitude)
-
-    def carry_out(self, threads: int | None, progress: Progress) -> Any:
-        """Run the plan on the blocks that are asked for; its summary."""
-        only = [b for b in blocks_of(self.plan.elevation.shape) if self._asked(b)]
-        summary = replace(self.plan, only=tuple(only)).run(self, threads, progress)
-        self._flush()
-        return summary
-
-    def _asked(self, block: Block) -> bool:
-        return (block.row, block.column) in self.shares.blocks
-
-    def open(self, layer: Layer) -> None:
-        """Nothing needs room."""
-
-    def write(self, name: str, row: int, column: int, values: NDArray[Any]) -> None:
-        """Take one layer of a block."""
-        if (row, column) != self._block:
-            self._flush()
-            self._block = row, column
-        rows, columns = self.shares.blocks[row, column][:2]
-        self._bands[name] = values[:, rows - row, columns - column]
-
-    def _flush(self) -> None:
-        """Gather a block that is complete."""
-        if self._block is None:
-            return
-        rows, columns, which, cell, weight = self.shares.blocks[self._block]
-        height = self.plan.elevation.heights[rows, columns].astype(np.float64)
-        latitude = self._latitude(np.stack([rows, columns], axis=-1))
-        self.gathered.add(which, cell, weight, self.values(self._bands, height, latitude))
-        self._block, self._bands = None, {}
+    References
+    ----------
+    McCune and Keon (2002), doi:10.1111/j.1654-1103.2002.tb02087.x. docs/plots.md has the rest.
+    """
+    if not isinstance(period, Period):
+        period = parse_period(period)
+    air = clear_air(elevation) if air is None else air
+    light = LightSettings(
+        period, air, twelve(albedo, "albedo"), diffuse, azimuths, step_seconds,
+        ENERGY_UNITS.get(unit, unit), basis, True, refraction, sky,
+        photons_per_joule=photons_per_joule,
+    )  # fmt: skip
+    hours = HoursSettings(
+        period, sky or air, parse_days(None, period), parse_clock(clock), hours_azimuths(azimuths),
+        step_seconds, refraction,
+    )  # fmt: skip
+    settings = PlotSettings(
+        light, hours, tuple(season or ()), tuple(radii), tuple(factors), tuple(predictors)
+    )
+    grounds = [coarsened(elevation, factor) for factor in settings.factors]
+    scenes = [scene_of(ground, far, surface) for ground in grounds]
+    return plot_table(elevation, points, settings, scenes, threads)

@@ -10,8 +10,9 @@ from pyproj import CRS, Transformer
 import terrasol
 from terrasol import Air, Elevation, InputError, SettingError, parse_period
 from terrasol.engine.plot_places import locate
-from terrasol.engine.plot_table import dictionary, grain_tags, long_form
-from terrasol.engine.plots import PlotSettings, column_count, plot_table
+from terrasol.engine.plot_settings import PlotSettings
+from terrasol.engine.plot_table import grain_tags, long_form
+from terrasol.engine.plots import column_count, plot_table
 from terrasol.files.points import Points
 from terrasol.ground.grain import coarsened
 from terrasol.ground.places import coordinates
@@ -396,7 +397,7 @@ def test_circles_too_wide_are_refused(hills):
 
 
 def test_every_column_is_in_the_dictionary(table):
-    told = dictionary(table)
+    told = table.dictionary()
     assert told["column"].tolist() == list(table.frame)
     assert told["column"].is_unique
     assert told["meaning"].str.len().min() > 0
@@ -441,3 +442,28 @@ def test_results_do_not_depend_on_threads(table, hills):
     for name in again.frame:
         if again.frame[name].dtype == float:
             np.testing.assert_allclose(again.frame[name], table.frame[name], rtol=1e-9, atol=1e-6)
+
+
+def test_from_python(hills):
+    points = at_cells(hills, *PLACES)
+    table = terrasol.plot_predictors(
+        hills, points, None, Air.ineichen(3.0), radii=(90.0,), predictors=WHOLE, azimuths=16,
+        step_seconds=1800.0, threads=1,
+    )  # fmt: skip
+    same = plot_table(hills, points, settings(radii=(90.0,), groups=WHOLE)).frame
+    pd.testing.assert_frame_equal(table.frame, same)
+    with pytest.raises(SettingError, match="twelve whole months"):
+        terrasol.plot_predictors(hills, points, "2025-04")
+
+
+def test_far_ridges_and_trees_count(hills, metric_ground):
+    points = at_cells(hills, *PLACES)
+    asked = {"predictors": ("sky_view",), "radii": (), "azimuths": 16, "step_seconds": 3600.0}
+    plain = terrasol.plot_predictors(hills, points, air=Air.ineichen(3.0), **asked).frame
+    trees = hills.heights + np.where(np.arange(300) % 12 < 4, 15.0, 0.0).astype(np.float32)
+    surface = replace(hills, heights=trees.astype(np.float32))
+    under = terrasol.plot_predictors(
+        hills, points, air=Air.ineichen(3.0), surface=surface, factors=(1, 2), **asked
+    ).frame
+    assert (under["sky_view"] < plain["sky_view"] - 0.001).all()
+    assert under.filter(like="_g").shape[1] == 2

@@ -1,0 +1,233 @@
+"""Plots on the ground in cells of one size: which cells they ask for, and what these say."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass, replace
+from typing import Any, Final
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.interpolate import RegularGridInterpolator
+
+from terrasol.engine.hours import plan_hours
+from terrasol.engine.job import Plan, plan_irradiation
+from terrasol.engine.plan import Block, Progress, blocks_of
+from terrasol.engine.plot_places import PLACED, Located
+from terrasol.engine.plot_settings import PlotSettings
+from terrasol.engine.plot_table import CELL, ERROR, GREATEST, KNOWN, LEAST, MEAN, POINT, Told
+from terrasol.engine.predictors import (
+    Bands,
+    ground_predictors,
+    ground_values,
+    hours_predictors,
+    hours_values,
+    light_predictors,
+    light_values,
+)
+from terrasol.errors import SettingError
+from terrasol.files.layers import Layer
+from terrasol.ground.beyond import Scene
+from terrasol.ground.elevation import Elevation
+from terrasol.ground.frame import Frame, make_frame
+from terrasol.ground.horizon import BLOCK
+from terrasol.practice.plots import Gathered, Share, around_point, by_error, in_circle, own_cell
+
+Array = NDArray[np.float64]
+
+MOST_CELLS: Final = 4_000_000
+"""Most cells in a circle: what a plot may ask for before it is a map (judgement)."""
+
+
+@dataclass(frozen=True)
+class Grain:
+    """The plots on the ground in cells of one size."""
+
+    ground: Elevation
+    located: Located
+    error: Array
+    settings: PlotSettings
+    factor: int
+    size: float
+
+    def run(self, scene: Scene, threads: int | None, progress: Progress) -> Told:
+        """Gather what light and, if asked for, hours of sun say."""
+        s, ground = self.settings, self.ground
+        frame = make_frame(ground.shape, ground.transform, ground.crs)
+        shares = self._shares(frame)
+        plan = plan_irradiation(ground, s.light, scene)
+        predictors = [*ground_predictors(), *light_predictors(s.light, s.season)]
+
+        def light(bands: Bands, height: Array, latitude: Array) -> Array:
+            own = ground_values(bands, height, latitude)
+            return np.concatenate([own, light_values(bands, s.light, s.season)], axis=1)
+
+        half = 0.5 if s.timed else 1.0
+        sink = CellSink(plan, shares, light, len(predictors))
+        summary = sink.carry_out(threads, lambda share, stage: progress(half * share, stage))
+        gathered, level = [sink.gathered], {"irradiation": summary.numbers["level_ground"]}
+        said, seconds = list(summary.warnings), dict(summary.seconds)
+        if s.timed:
+            timed = plan_hours(ground, s.hours, scene)
+            more = hours_predictors(s.hours, s.season)
+
+            def hours(bands: Bands, height: Array, latitude: Array) -> Array:
+                return hours_values(bands, s.hours, s.season)
+
+            sink = CellSink(timed, shares, hours, len(more))
+            summary = sink.carry_out(
+                threads, lambda share, stage: progress(half + half * share, stage)
+            )
+            gathered.append(sink.gathered)
+            predictors += more
+            level["sun_hours"] = summary.numbers["level_ground_sun_hours"]
+            said += summary.warnings
+            for stage, value in summary.seconds.items():
+                seconds[stage] = seconds.get(stage, 0.0) + value
+        return Told(predictors, self._statistics(gathered), level, said, seconds)
+
+    @property
+    def _kinds(self) -> list[tuple[str, float | None]]:
+        """What is gathered of each plot."""
+        error = [(ERROR, None)] if np.isfinite(self.error).any() else []
+        return [(CELL, None), (POINT, None), *error, *((MEAN, r) for r in self.settings.radii)]
+
+    def _shares(self, frame: Frame) -> Shares:
+        """The cells that every plot asks for, one share a kind."""
+        shape, found = self.ground.shape, []
+        size = frame.cell_size
+        if self.settings.radii and np.pi * max(self.settings.radii) ** 2 > MOST_CELLS * np.prod(
+            size
+        ):
+            raise SettingError(
+                f"a circle of {max(self.settings.radii):g} m has more than {MOST_CELLS:,} cells of"
+                f" {size[0]:.3g} m: give a coarser raster, or smaller circles"
+            )
+        rows = (self.located.row + 0.5) / self.factor - 0.5
+        columns = (self.located.column + 0.5) / self.factor - 0.5
+        for plot, (row, column, error, flag) in enumerate(
+            zip(rows, columns, self.error, self.located.flag, strict=True)
+        ):
+            if flag != PLACED:
+                continue
+            jacobian = frame.jacobian_at(row, column)
+            for kind, (statistic, radius) in enumerate(self._kinds):
+                place = plot * len(self._kinds) + kind
+                if statistic == CELL:
+                    share = own_cell(row, column, shape)
+                elif statistic == POINT:
+                    share = around_point(row, column, shape)
+                elif statistic == ERROR:
+                    if not np.isfinite(error):
+                        continue
+                    share = by_error(row, column, error, jacobian, shape)
+                else:
+                    assert radius is not None
+                    share = in_circle(row, column, radius, jacobian, shape)
+                found.append((place, share))
+        return Shares.of(found, self.error.size * len(self._kinds), shape)
+
+    def _statistics(self, gathered: list[Gathered]) -> dict[tuple[str, float | None], Array]:
+        """Statistics by kind and radius, each of shape (plots, predictors)."""
+        kinds = self._kinds
+
+        def all_of(values: Callable[[Gathered], Array]) -> Array:
+            return np.concatenate([values(g) for g in gathered], axis=1)
+
+        mean, deviation = all_of(lambda g: g.mean), all_of(lambda g: g.deviation)
+        low, high = all_of(lambda g: g.least), all_of(lambda g: g.greatest)
+        known = gathered[0].weight[:, :1]
+        own = mean[:: len(kinds)]
+        told: dict[tuple[str, float | None], Array] = {}
+        for place, (statistic, radius) in enumerate(kinds):
+            rows = slice(place, None, len(kinds))
+            if statistic == POINT:
+                told[POINT, None] = np.where(np.isnan(own), np.nan, mean[rows])
+            elif statistic == ERROR:
+                told[ERROR, None] = deviation[rows]
+            else:
+                told[statistic, radius] = mean[rows]
+            if statistic == MEAN:
+                told[LEAST, radius], told[GREATEST, radius] = low[rows], high[rows]
+                told[KNOWN, radius] = known[rows]
+        return told
+
+
+@dataclass(frozen=True)
+class Shares:
+    """Cells by block: which share counts which of them, and how much."""
+
+    count: int
+    blocks: dict[tuple[int, int], tuple[NDArray[Any], ...]]
+
+    @classmethod
+    def of(cls, found: list[tuple[int, Share]], count: int, shape: tuple[int, int]) -> Shares:
+        """Sort the cells of some shares into blocks."""
+        which = np.concatenate([np.full(s.weight.size, place) for place, s in found])
+        rows = np.concatenate([s.rows for _, s in found])
+        columns = np.concatenate([s.columns for _, s in found])
+        weight = np.concatenate([s.weight for _, s in found])
+        across = -(-shape[1] // BLOCK)
+        block = rows // BLOCK * across + columns // BLOCK
+        order = np.argsort(block, kind="stable")
+        ends = np.flatnonzero(np.diff(block[order])) + 1
+        pieces = np.split(order, ends)
+        blocks: dict[tuple[int, int], tuple[NDArray[Any], ...]] = {}
+        for piece in pieces:
+            row, column = rows[piece], columns[piece]
+            corner = row[0] // BLOCK * BLOCK, column[0] // BLOCK * BLOCK
+            cells, cell = np.unique(row * shape[1] + column, return_inverse=True)
+            place = cells // shape[1], cells % shape[1]
+            blocks[int(corner[0]), int(corner[1])] = (*place, which[piece], cell, weight[piece])
+        return cls(count, blocks)
+
+
+class CellSink:
+    """Takes the cells that plots ask for out of each block, and gathers what they say."""
+
+    def __init__(
+        self,
+        plan: Plan,
+        shares: Shares,
+        values: Callable[[Bands, Array, Array], Array],
+        quantities: int,
+    ) -> None:
+        self.plan = plan
+        self.shares = shares
+        self.values = values
+        self.gathered = Gathered(shares.count, quantities)
+        self._block: tuple[int, int] | None = None
+        self._bands: Bands = {}
+        frame = plan.frame
+        self._latitude = RegularGridInterpolator((frame.rows, frame.columns), frame.latitude)
+
+    def carry_out(self, threads: int | None, progress: Progress) -> Any:
+        """Run the plan on the blocks that are asked for; its summary."""
+        only = [b for b in blocks_of(self.plan.elevation.shape) if self._asked(b)]
+        summary = replace(self.plan, only=tuple(only)).run(self, threads, progress)
+        self._flush()
+        return summary
+
+    def _asked(self, block: Block) -> bool:
+        return (block.row, block.column) in self.shares.blocks
+
+    def open(self, layer: Layer) -> None:
+        """Nothing needs room."""
+
+    def write(self, name: str, row: int, column: int, values: NDArray[Any]) -> None:
+        """Take one layer of a block."""
+        if (row, column) != self._block:
+            self._flush()
+            self._block = row, column
+        rows, columns = self.shares.blocks[row, column][:2]
+        self._bands[name] = values[:, rows - row, columns - column]
+
+    def _flush(self) -> None:
+        """Gather a block that is complete."""
+        if self._block is None:
+            return
+        rows, columns, which, cell, weight = self.shares.blocks[self._block]
+        height = self.plan.elevation.heights[rows, columns].astype(np.float64)
+        latitude = self._latitude(np.stack([rows, columns], axis=-1))
+        self.gathered.add(which, cell, weight, self.values(self._bands, height, latitude))
+        self._block, self._bands = None, {}
