@@ -28,8 +28,8 @@ REFERENCES: Final = {
     " radiation modeling from digital elevation data. IEEE Transactions on Geoscience and Remote"
     " Sensing 28, 963-969. doi:10.1109/36.58986",
     "erbs": "Erbs, D. G., Klein, S. A. and Duffie, J. A. (1982). Estimation of the diffuse"
-    " radiation fraction for hourly, daily and monthly-average global radiation. Solar Energy 28, 293-302."
-    " doi:10.1016/0038-092X(82)90302-4",
+    " radiation fraction for hourly, daily and monthly-average global radiation. Solar Energy 28,"
+    " 293-302. doi:10.1016/0038-092X(82)90302-4",
     "hay-davies": "Hay, J. E. and Davies, J. A. (1980). Calculation of the solar radiation incident"
     " on an inclined surface. Proceedings of the First Canadian Solar Radiation Data Workshop,"
     " 59-72.",
