@@ -434,6 +434,8 @@ class _Job:
 
     def _pictures(self, result: MeltResult, tables: SeasonTables) -> tuple[bytes, bytes, bytes]:
         """Hydrograph, bands and the map of melt-out."""
+        import numpy as np
+
         from terrasol.engine.melt_job import spread_words
         from terrasol.practice.snow import NO_AVALANCHE
         from terrasol.show.melt import bands_png, hydrograph_png, melt_out_png
@@ -444,6 +446,8 @@ class _Job:
         area = f"{tables.name}, {tables.area.sum() / 1e6:.2f} km²"
         how = f"Melt after {_melt_name(plan.model)}; weather of {self.prepared.station.name}."
         notes = (how, NO_AVALANCHE)
+        bare, known = result.map_of("bare_day"), np.isfinite(plan.light.elevation.heights)
+        never = ("Hatched: no snow came, or it still lies.",) if np.isnan(bare[known]).any() else ()
         spread = spread_words(plan.model) if plan.spread else ""
         return (
             hydrograph_png(
@@ -454,9 +458,9 @@ class _Job:
                 tables, title=f"{name}: snow by height", subtitle=f"{area}; {period}", notes=notes
             ),
             melt_out_png(
-                plan.light.elevation, plan.light.frame, result.map_of("bare_day"),
+                plan.light.elevation, plan.light.frame, bare,
                 plan.season_start, title=f"{name}: melt-out", subtitle=period,
-                notes=(*notes, "Hatched: no snow came, or it still lies."),
+                notes=(*notes, *never),
             ),
         )  # fmt: skip
 

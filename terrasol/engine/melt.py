@@ -36,9 +36,16 @@ HOURS: Final = 24
 SLICE_HOURS: Final = 6
 """Hours of a day whose light of the terrain around one task spreads."""
 
-SECONDS_A_CELL_AND_DAY: Final = 1.1e-6
+SECONDS_A_CELL_AND_DAY: Final = 0.7e-6
 """What a core needs a cell and day with light, and for each member of the spread a fifth of it
 (estimate; docs/melt.md)."""
+
+BYTES_A_VALUE: Final = 0.5
+"""Of the daily stack, for the estimate only."""
+
+BAND_STEPS: Final = (10.0, 20.0, 50.0, 100.0, 200.0, 250.0)
+MOST_BANDS: Final = 12.0
+"""Widths of bands of height [m] to choose from, 500 m at most, and how many there may be, about."""
 
 VARIABLES: Final = (
     StackVariable(
@@ -138,7 +145,7 @@ class MeltPlan:
 
     def stack_bytes(self) -> int:
         """Disk that the stack will take, about."""
-        return int(1.5 * len(VARIABLES) * self.light.cells * self.days)
+        return int(BYTES_A_VALUE * len(VARIABLES) * self.light.cells * self.days)
 
     def seconds(self, threads: int, stored: bool) -> float:
         """Time to expect."""
@@ -463,7 +470,7 @@ def zones_for(
         if not known.any():
             raise InputError("the area holds no known ground of the elevation model")
         relief = float(np.ptp(heights[known]))
-        step = next((s for s in (10.0, 20.0, 50.0, 100.0, 200.0) if relief / s <= 15.0), 500.0)
+        step = next((s for s in BAND_STEPS if relief / s <= MOST_BANDS), 500.0)
     return Zones.of(heights, step, share, name)
 
 

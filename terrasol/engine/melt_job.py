@@ -237,16 +237,16 @@ def station_light(
 
 def spread_words(model: SnowModel) -> str:
     """What the spread of the pictures and tables is, in words."""
-    told = " and ".join(
+    told = ", ".join(
         f"{name.replace('_', ' ')} {100.0 * NUMBERS[name].spread:g} %"
         for name in MELT_NUMBERS[model.melt]
     )
-    source = (
-        "Carenzo et al. 2009, between sites" if model.melt == "enhanced" else "judgement, no source"
-    )
+    enhanced = model.melt == "enhanced"
+    source = "between sites, Carenzo et al. 2009" if enhanced else "judgement, no source"
     return (
-        f"least to greatest of runs with {told} lower and higher, one at a time ({source}); not the"
-        " uncertainty of the weather"
+        f"least to greatest of runs with {told} ({source}) and the snow that falls"
+        f" {100.0 * NUMBERS['snow_factor'].spread:g} % (judgement, no source) lower and higher, one"
+        " at a time; not the uncertainty of temperature and light"
     )
 
 

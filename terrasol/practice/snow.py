@@ -65,7 +65,9 @@ class Number:
         Bounds of what is taken.
     meaning, source : str
     spread : float
-        Coefficient of variation between places, for the spread of the hydrograph; 0 where none.
+        Coefficient of variation, for the spread of the hydrograph; 0 where none. Of the enhanced
+        model's factors between sites (Carenzo et al. 2009, doi:10.3189/002214309788608804); of
+        the others, and of the snow that a gauge catches, judgement.
     """
 
     value: float
@@ -107,7 +109,7 @@ NUMBERS: Final[dict[str, Number]] = {
         2.0, "K", 0.0, 10.0, "from all snow to all rain, linear between", _PRACTICE
     ),
     "snow_factor": Number(
-        1.0, "1", 0.2, 5.0, "snow on the ground by snow in the gauge", "no correction", 0.0
+        1.0, "1", 0.2, 5.0, "snow on the ground by snow in the gauge", "no correction", 0.15
     ),
     "precipitation_gradient": Number(
         5.0, "% per 100 m", -20.0, 50.0,
@@ -209,12 +211,13 @@ class SnowModel:
         return SnowModel(self.melt, self.albedo, self.lapse, {**self.changed, **changed})
 
     def spread(self) -> list[SnowModel]:
-        """The model with each melt factor one standard deviation lower and higher, one at a time.
+        """The model with each melt factor and the snow factor lower and higher, one at a time.
 
-        Held within what is taken: the radiation factor, for one, cannot exceed the physical limit.
+        By one standard deviation, `Number.spread`, and held within what is taken: the radiation
+        factor, for one, cannot exceed the physical limit.
         """
         found = []
-        for name in MELT_NUMBERS[self.melt]:
+        for name in (*MELT_NUMBERS[self.melt], "snow_factor"):
             told = NUMBERS[name]
             for sign in (-1.0, 1.0):
                 value = self.numbers[name] * (1.0 + sign * told.spread)

@@ -19,7 +19,7 @@ from terrasol.show.maps import SUBTITLE, TITLE, overview_png
 from terrasol.show.page import POINTS_PER_PIXEL, SOFT, Page, clip, text_width, wrap
 from terrasol.show.panel import Panel, steps
 
-WIDTH, MARGIN, LEFT = 1360, 48, 116
+WIDTH, MARGIN, LEFT = 1360, 62, 116
 HEAD, GAP = 214, 118
 """Measures of the sheets [pixels]."""
 
@@ -72,7 +72,7 @@ def bands_png(tables: SeasonTables, *, title: str, subtitle: str, notes: Sequenc
     for name, words, unit, height, days in (
         ("snow_water_mm", "Snow water", "mm, end of day", heights[0], 1),
         ("runoff_input_mm", "Runoff input", "mm a day, mean of 7 days", heights[1], 7),
-        ("snow_covered_share", "Covered by snow", "share of the band", heights[2], 1),
+        ("snow_covered_share", "Covered by snow", "share, mean of 7 days", heights[2], 7),
     ):
         panel = Panel(page, LEFT, top, WIDTH - MARGIN - LEFT - 150, height)
         values = [_running(tables.bands[:, b, DEPTHS.index(name)], days) for b in kept]
@@ -103,7 +103,7 @@ def melt_out_png(
         title=title,
         subtitle=subtitle,
         quantity="First day that ended bare",
-        unit=f"after {first_day}",
+        unit=f"date; season from {first_day}",
         notes=notes,
         frame=frame,
         colour_map=LATE_IS_PALE,
