@@ -2,6 +2,7 @@
 
 import numpy as np
 import pytest
+from reference.made_relief import made_relief, with_foreign_error
 
 from terrasol.ground.likely import TILE, Sieve, likely_heights, too_smooth
 from terrasol.ground.uncertainty import DemError, error_fields
@@ -10,26 +11,12 @@ CELL = (10.0, 10.0)
 ERROR = DemError(0.5, 50.0, 12, 5)
 
 
-def made_ground(shape=(150, 190), power=4.0, steepness=0.15, seed=5):
-    """Random relief whose power falls with the wave number to that power, as of much real ground.
-
-    Steepness is the rms of its gradient over cells of 10 m.
-    """
-    size = 512
-    rng = np.random.default_rng(seed)
-    waves = np.hypot(np.fft.fftfreq(size)[:, None], np.fft.rfftfreq(size))
-    waves[0, 0] = 1.0
-    noise = np.fft.rfft2(rng.standard_normal((size, size)))
-    z = np.fft.irfft2(noise * waves ** (-power / 2), (size, size))[: shape[0], : shape[1]]
-    down, across = np.gradient(z, 10.0)
-    scaled = (z - z.mean()) * steepness / np.sqrt(np.mean(down**2 + across**2))
-    return (1000.0 + scaled).astype(np.float32)
+def made_ground(steepness=0.15):
+    return made_relief((150, 190), 5, steepness=steepness)
 
 
-def observed(truth, error=ERROR):
-    """The ground with an error that no draw of `error` knows of."""
-    foreign = DemError(error.rmse, error.range, 2, error.seed + 1000)
-    return truth + next(error_fields(foreign, truth.shape, CELL))
+def observed(truth):
+    return with_foreign_error(truth, ERROR)
 
 
 def gradient(z):
@@ -37,7 +24,7 @@ def gradient(z):
 
 
 def test_tiles_put_together_are_the_field_itself():
-    z = made_ground((75, 101))
+    z = made_relief((75, 101), 5)
     alone = Sieve(z.shape, np.ones_like(Sieve.of(z, ERROR, CELL).shares), 1.0)
     assert alone.ground(z) == pytest.approx(z, abs=1e-9)
     assert alone.doubt(z - 1000.0) == pytest.approx(z - 1000.0, abs=1e-9)
