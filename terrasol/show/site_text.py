@@ -174,7 +174,7 @@ def error_words(site: Site) -> list[str]:
         words = "energy" if name == "global" else name
         told.append(f"{words} {float(low):.{digits}f} to {float(high):.{digits}f} {unit}")
     count = int(site.errors["slope"].count)
-    return [f"{100 * INTERVAL:.0f} % intervals of {count} error fields: {', '.join(told)}"]
+    return [f"{100 * INTERVAL:.0f} % intervals from {count} likely grounds: {', '.join(told)}"]
 
 
 def month_rows(site: Site) -> list[tuple[str, ...]]:
