@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from terrasol.cli.error_options import AskedError, error_options
 from terrasol.cli.ground_options import Around, ground_options
 from terrasol.cli.options import (
     Common,
@@ -28,11 +29,14 @@ if TYPE_CHECKING:
     from terrasol.files.vectors import Polygons
     from terrasol.sky.clear import Air
 
-LAYER, TABLE, SIZES, ROWS, COLUMNS, BOOK, SUMMARY = (
-    "parcels.gpkg", "parcels.csv", "cell_sizes.csv", "row_directions.csv", "columns.csv",
-    "parcels.pdf", "summary.png",
+LAYER, TABLE, SIZES, ROWS, DOUBTS, COLUMNS, BOOK, SUMMARY = (
+    "parcels.gpkg", "parcels.csv", "cell_sizes.csv", "row_directions.csv", "standard_errors.csv",
+    "columns.csv", "parcels.pdf", "summary.png",
 )  # fmt: skip
 """Files: the GeoPackage, the tables, what their columns mean, the sheets."""
+
+SECONDS_A_SHEET = 0.7
+"""To draw one, for the estimate only."""
 
 NOT_HERE = ("compression", "horizon_gap", "highest")
 """Shared options that mean nothing for parcels."""
@@ -176,8 +180,11 @@ class _Sizes(click.ParamType):
 )
 @sky_options
 @ground_options
+@error_options
 @common_options
-def parcels(common: Common, around: Around, asked: AskedSky, **given: Any) -> None:
+def parcels(
+    common: Common, asked_error: AskedError, around: Around, asked: AskedSky, **given: Any
+) -> None:
     """Vineyard parcels of the vector file PARCELS on the elevation raster DEM.
 
     For each parcel: map and surface area, height, slope and aspect by class, irradiation by month
@@ -185,7 +192,8 @@ def parcels(common: Common, around: Around, asked: AskedSky, **given: Any) -> No
     that meets a rule, degree-days, the light on vine rows by direction, and a rank; all again at
     two coarser cell sizes. Writes parcels.gpkg, parcels.csv, cell_sizes.csv, columns.csv,
     parcels.pdf with a summary page and one sheet a parcel, and run.json into OUT_DIR; with --rows
-    also row_directions.csv. Frost pooling, soil and water are not in it.
+    also row_directions.csv, with --dem-error standard_errors.csv. Frost pooling, soil and water are
+    not in it.
     """
     from terrasol.cli.run import read
 
@@ -193,7 +201,8 @@ def parcels(common: Common, around: Around, asked: AskedSky, **given: Any) -> No
     plain = _plain(given)
     ground = read(common)
     air = asked.placed(asked.air(plain["albedo_for_now"]), ground.frame)
-    _Job(common, around, asked, given | plain, ground, air).run()
+    given |= plain | {"error": asked_error.read()}
+    _Job(common, around, asked, given, ground, air).run()
 
 
 def _rearrange(command: click.Command) -> None:
@@ -303,6 +312,7 @@ class _Job:
             TABLE,
             *([SIZES] if self.given["coarser"] else []),
             *([ROWS] if self.given["rows_read"] else []),
+            *([DOUBTS] if self.given["error"] else []),
             COLUMNS,
             *sheets[self.given["sheets"]],
             RECORD,
@@ -343,7 +353,13 @@ class _Job:
         )
         asked, notes = self._asked(settled)
         settings = ParcelSettings(
-            light, hours, asked, given["score"], given["coarser"], given["rows_read"]
+            light,
+            hours,
+            asked,
+            given["score"],
+            given["coarser"],
+            given["rows_read"],
+            given["error"],
         )
         return settings, (*self.asked.doubts(self.ground.frame), *settled.warnings, *notes)
 
@@ -411,7 +427,8 @@ class _Job:
                 "lapse_k_per_km": asked.warmth.lapse,
                 "huglin_beyond_50": asked.warmth.beyond,
             }
-        return record | settled.record | self.around.record()
+        told = AskedError.record(given["error"], self.ground.frame.cell_size)
+        return record | settled.record | self.around.record() | told
 
     def _forecast(
         self, polygons: Polygons, settings: ParcelSettings, files: list[str]
@@ -432,6 +449,11 @@ class _Job:
                 plan_hours(elevation, settings.hours),
             )
         shares = sum(1.0 / factor**2 for factor in (1, *settings.coarser))
+        seconds = shares * sum(plan.seconds(threads) for plan in plans)
+        if settings.error is not None:
+            seconds += settings.error.realisations * plans[0].seconds(threads)
+        if self.given["sheets"] != "none":
+            seconds += SECONDS_A_SHEET * len(polygons)
         removed, notes = superseded(common, files)
         return ground_forecast(common, self.ground) | {
             "parcels": list(polygons.names),
@@ -441,7 +463,7 @@ class _Job:
             "memory_mb": round(max(plan.memory_bytes for plan in plans) / 1e6),
             "disk_free_mb": free_disk_mb(common.out_dir),
             "threads": threads,
-            "seconds": round(shares * sum(plan.seconds(threads) for plan in plans)),
+            "seconds": round(seconds),
             "warnings": [*elevation.warnings, *polygons.warnings, *notes],
         }
 
@@ -496,7 +518,13 @@ class _Job:
 
     def _write(self, delivery: Any, found: Survey, files: list[str], move: Any) -> None:
         """Stage all files but the record."""
-        from terrasol.engine.parcel_tables import column_rows, row_rows, size_rows, table_rows
+        from terrasol.engine.parcel_tables import (
+            column_rows,
+            doubt_rows,
+            row_rows,
+            size_rows,
+            table_rows,
+        )
         from terrasol.files.parcel_tables import table_csv, write_layer
 
         rows = table_rows(found)
@@ -512,6 +540,8 @@ class _Job:
             tables[SIZES] = size_rows(found)
         if ROWS in files:
             tables[ROWS] = row_rows(found)
+        if DOUBTS in files:
+            tables[DOUBTS] = doubt_rows(found)
         for name, lines in tables.items():
             columns = list(dict.fromkeys(column for line in lines for column in line))
             delivery.write_bytes(name, table_csv(columns, lines))
@@ -606,6 +636,14 @@ def _in_lines(forecast: dict[str, Any]) -> str:
     return lines(rows)
 
 
+def _cell(row: dict[str, Any], name: str, form: str) -> str:
+    """A figure for the table, with its standard error where that is small enough to matter."""
+    if row.get(name) is None:
+        return "-"
+    error = row.get(f"{name}_se") if name == "rule_ha_map" else None
+    return form.format(row[name]) + ("" if error is None else f" +/- {form.format(error)}")
+
+
 def _summary_text(record: dict[str, Any]) -> str:
     """What came out, for people: a table, best first."""
     from terrasol.cli.forecast import duration
@@ -626,7 +664,7 @@ def _summary_text(record: dict[str, Any]) -> str:
         ("score", "score", "{:.4g}"),
     ]
     table = [
-        [head, *("-" if row.get(name) is None else form.format(row[name]) for row in rows)]
+        [head, *(_cell(row, name, form) for row in rows)]
         for head, name, form in wanted
         if any(name in row for row in rows)
     ]

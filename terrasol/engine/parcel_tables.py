@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from typing import Any
+from dataclasses import replace
+from typing import Any, Final
 
 import numpy as np
 
@@ -12,13 +13,51 @@ from terrasol.practice.rows import SURFACES
 
 Row = dict[str, Any]
 
+DOUBTED: Final = (
+    "score", "rank", "slope_mean_percent", "aspect_mean_deg", "irradiation_season_mj_m2_slope",
+    "share_of_level_season", "rule_ha_map", "rule_share", "winkler_mean_c_days",
+)  # fmt: skip
+"""Figures whose standard error stands beside them; classes of slope besides."""
+
 
 def table_rows(survey: Survey) -> list[Row]:
     """One row a parcel, the best first: rank, score and its terms, then all figures."""
+    return [{"parcel": parcel.name} | _told(survey, parcel) for parcel in survey.order]
+
+
+def _told(survey: Survey, parcel: Parcel) -> Row:
+    """Columns of a parcel: standard errors follow the figures that a reader looks at first."""
+    row = {}
+    for name, value in (
+        *_ranks(survey, parcel).items(),
+        *((figure.name, figure.value) for figure in parcel.figures),
+    ):
+        row[name] = value
+        if has_error(name) and name in parcel.doubts:
+            row[f"{name}_se"] = parcel.doubts[name].standard_error
+    return row
+
+
+def has_error(name: str) -> bool:
+    """Whether a figure's standard error stands beside it in parcels.csv."""
+    return name in DOUBTED or (name.startswith("slope_") and name.endswith("_ha_map"))
+
+
+def doubt_rows(survey: Survey) -> list[Row]:
+    """One row a parcel and figure that the error of the heights leaves open."""
     return [
-        {"parcel": parcel.name, **_ranks(survey, parcel)}
-        | {figure.name: figure.value for figure in parcel.figures}
+        {
+            "parcel": parcel.name,
+            "figure": name,
+            "value": doubt.value,
+            "standard_error": doubt.standard_error,
+            "shift": doubt.shift,
+            "low_90": doubt.low,
+            "high_90": doubt.high,
+            "grounds": doubt.count,
+        }
         for parcel in survey.order
+        for name, doubt in parcel.doubts.items()
     ]
 
 
@@ -103,6 +142,17 @@ _ROWS = (
     Figure("row_slope_steepest_percent", np.nan, "percent", "climb of rows in the steepest cell"),
 )  # fmt: skip
 
+_DOUBTS = (
+    Figure("figure", np.nan, "", "column of parcels.csv, in standard_errors.csv"),
+    Figure("value", np.nan, "", "of the elevation model as it is, in the unit of the figure"),
+    Figure("standard_error", np.nan, "", "root mean square of what it may be off, same unit"),
+    Figure("shift", np.nan, "",
+           "what error has done to the value: it less the mean over the grounds that may be"),
+    Figure("low_90", np.nan, "", "lower bound of the true value, 90 % between both"),
+    Figure("high_90", np.nan, "", "upper bound"),
+    Figure("grounds", np.nan, "1", "grounds drawn of which it could be told"),
+)  # fmt: skip
+
 
 def column_rows(survey: Survey) -> list[Row]:
     """The data dictionary: one row a column of all tables."""
@@ -113,12 +163,16 @@ def column_rows(survey: Survey) -> list[Row]:
             Figure(f"score_term_{k}", np.nan, "1", f"its term {term}")
             for k, term in enumerate(score.terms, 1)
         ]
-    figures = [
-        _OWN[0],
-        *ranked,
-        *survey.parcels[0].figures,
+    figures = []
+    for figure in (_OWN[0], *ranked, *survey.parcels[0].figures):
+        figures.append(figure)
+        if has_error(figure.name) and figure.name in survey.parcels[0].doubts:
+            words = "its standard error, from the stated error of the heights"
+            figures.append(replace(figure, name=f"{figure.name}_se", meaning=words))
+    figures += [
         *(_SIZES if survey.settings.coarser else ()),
         *(_ROWS if survey.settings.rows else ()),
+        *(_DOUBTS if survey.settings.error else ()),
     ]
     return [
         {"column": f.name, "unit": f.unit, "area_basis": f.basis, "meaning": f.meaning}

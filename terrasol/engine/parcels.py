@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
-from dataclasses import dataclass, field
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, field, replace
 from functools import partial
 from typing import Any, Final
 
@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 
 from terrasol.engine.job import NO_SCENE, plan_terrain
 from terrasol.engine.parcel_cells import Piece, SceneOf, pieces_of
+from terrasol.engine.parcel_errors import Doubt, doubts_of
 from terrasol.engine.parcel_figures import (
     QUANTITIES,
     WARM_QUANTITIES,
@@ -30,6 +31,7 @@ from terrasol.files.vectors import Polygons
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import make_frame
 from terrasol.ground.grain import coarsened
+from terrasol.ground.uncertainty import DemError
 from terrasol.light.hours import HoursSettings, TimeTables
 from terrasol.light.settings import LightSettings
 from terrasol.light.tables import SkyTables
@@ -61,6 +63,8 @@ class ParcelSettings:
         How many cells are joined along a side for each coarser look.
     rows : RowSettings, optional
         Vine rows, for the direction in which to plant them.
+    error : DemError, optional
+        Of the heights, for standard errors.
 
     Raises
     ------
@@ -74,6 +78,7 @@ class ParcelSettings:
     score: str | None = None
     coarser: tuple[int, ...] = COARSER
     rows: RowSettings | None = None
+    error: DemError | None = None
 
     def __post_init__(self) -> None:
         """Refuse what makes no sense."""
@@ -110,6 +115,8 @@ class Parcel:
         Where it meets the rule.
     rows : Rows, optional
         What vine rows of every direction would get.
+    doubts : dict of Doubt
+        What the error of the heights leaves open, by figure; empty if none was stated.
     """
 
     name: str
@@ -121,6 +128,7 @@ class Parcel:
     horizon: NDArray[np.float64]
     patches: Patches | None = None
     rows: Rows | None = None
+    doubts: dict[str, Doubt] = field(default_factory=dict)
 
     @property
     def numbers(self) -> dict[str, float]:
@@ -209,10 +217,43 @@ def survey(
         Parcels outside the raster or on void ground; a raster that cannot be placed.
     """
     told = progress or (lambda share, stage: None)
+    part = 1.0 if settings.error is None else 0.3
+    looks, levels, warnings = _looks(
+        elevation, polygons, settings, scene_of, threads, partial(_told_part, told, 0.0, 0.9 * part)
+    )
+    fine = [(k, piece) for k, piece in enumerate(looks[0][1]) if piece is not None]
+    horizons = _horizons(elevation, [piece for _, piece in fine], settings, scene_of, threads)
+    told(part, "figures")
+    parcels = []
+    for (k, piece), horizon in zip(fine, horizons, strict=True):
+        level = levels[k]
+        assert level is not None
+        coarse = [(size, _figures(each[k], level, settings.asked)) for size, each in looks[1:]]
+        parcels.append(_parcel(piece, polygons.geometries[k], level, coarse, horizon, settings))
+    found = _ranked(parcels, settings, looks[0][0], [*polygons.warnings, *warnings])
+    if settings.error is not None:
+        found = _doubted(
+            found, elevation, settings.error, scene_of, threads,
+            lambda share: told(part + share * (1.0 - part), "error of the heights"),
+        )  # fmt: skip
+    told(1.0, "figures")
+    return found
+
+
+def _looks(
+    elevation: Elevation,
+    polygons: Polygons,
+    settings: ParcelSettings,
+    scene_of: SceneOf,
+    threads: int | None,
+    told: Progress,
+) -> tuple[list[tuple[float, list[Piece | None]]], list[Level | None], tuple[str, ...]]:
+    """The cells of the parcels at each cell size, level ground beside them, and warnings."""
     factors = (1, *settings.coarser)
     work = np.cumsum([0.0, *(1.0 / factor**2 for factor in factors)])
-    work *= 0.85 / work[-1]
-    looks, warnings = [], list(polygons.warnings)
+    work /= work[-1]
+    looks: list[tuple[float, list[Piece | None]]] = []
+    warnings: tuple[str, ...] = ()
     levels: list[Level | None] = []
     for k, factor in enumerate(factors):
         ground = coarsened(elevation, factor)
@@ -222,21 +263,11 @@ def survey(
         )  # fmt: skip
         _warm(pieces, settings.asked.warmth)
         if factor == 1:
-            warnings += notes
+            warnings = notes
             levels = _levels(pieces, settings, threads)
         frame = make_frame(ground.shape, ground.transform, ground.crs)
         looks.append((float(np.sqrt(np.prod(frame.cell_size))), pieces))
-    fine = [(k, piece) for k, piece in enumerate(looks[0][1]) if piece is not None]
-    horizons = _horizons(elevation, [piece for _, piece in fine], settings, scene_of, threads)
-    told(0.95, "figures")
-    parcels = []
-    for (k, piece), horizon in zip(fine, horizons, strict=True):
-        level = levels[k]
-        assert level is not None
-        coarse = [(size, _figures(each[k], level, settings.asked)) for size, each in looks[1:]]
-        parcels.append(_parcel(piece, polygons.geometries[k], level, coarse, horizon, settings))
-    told(1.0, "figures")
-    return _ranked(parcels, settings, looks[0][0], warnings)
+    return looks, levels, warnings
 
 
 def _warm(pieces: Sequence[Piece | None], warmth: Warmth | None) -> None:
@@ -250,6 +281,34 @@ def _warm(pieces: Sequence[Piece | None], warmth: Warmth | None) -> None:
 def _told_part(told: Progress, first: float, last: float, share: float, stage: str) -> None:
     """Tell the progress of a part of the whole."""
     told(first + share * (last - first), stage)
+
+
+def _doubted(
+    found: Survey,
+    elevation: Elevation,
+    error: DemError,
+    scene_of: SceneOf,
+    threads: int | None,
+    told: Callable[[float], None],
+) -> Survey:
+    """Add standard errors to the parcels of a survey."""
+    settings, parcels = found.settings, found.parcels
+    doubts = doubts_of(
+        elevation,
+        [parcel.piece for parcel in parcels],
+        [parcel.level for parcel in parcels],
+        [parcel.numbers for parcel in parcels],
+        settings.light,
+        settings.hours,
+        settings.asked,
+        error,
+        score=found.score,
+        scene_of=scene_of,
+        threads=threads,
+        told=told,
+    )
+    parcels = [replace(p, doubts=own) for p, own in zip(parcels, doubts, strict=True)]
+    return replace(found, parcels=parcels)
 
 
 def _parcel(

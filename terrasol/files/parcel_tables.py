@@ -94,6 +94,8 @@ def write_layer(
         for name in names
     }
     frame = geopandas.GeoDataFrame(table, geometry=_multi(geometries), crs=crs.to_wkt())
+    if "rank" in frame:
+        frame["rank"] = frame["rank"].astype("Int64")
     with warnings.catch_warnings():
         warnings.simplefilter("ignore")
         frame.to_file(

@@ -37,6 +37,9 @@ PARQUET_BEGINS: Final = b"PAR1"
 POLYGONS: Final = ("Polygon", "MultiPolygon")
 """Kinds of geometry that have an area."""
 
+ROUNDING: Final = 1e-6
+"""Share of a polygon that may lie outside by rounding: shares of cells are single precision."""
+
 SLIVER: Final = 1e-9
 """Share of a cell below which it does not count as covered: rounding of the overlay."""
 
@@ -421,7 +424,7 @@ def coverage(
     for name, cells in zip(polygons.names, found, strict=True):
         if not cells.rows.size:
             said.append(f"'{name}' lies outside the raster and is left out")
-        elif cells.inside < 1.0 - 1e-6:
+        elif cells.inside < 1.0:
             share = max(100.0 * (1.0 - cells.inside), 0.1)
             said.append(
                 f"'{name}' lies outside the raster by {share:.1f} % of its area, of which nothing"
@@ -477,7 +480,8 @@ def _cells(geometry: Any, shape: tuple[int, int]) -> Cells:
     if not on_it.any():
         return _nothing()
     fraction = np.minimum(fraction[on_it], 1.0)
-    inside = min(float(fraction.sum() / geometry.area), 1.0)
+    inside = float(fraction.sum() / geometry.area)
+    inside = 1.0 if inside > 1.0 - ROUNDING else inside
     return Cells(row[on_it], column[on_it], fraction, inside)
 
 

@@ -174,30 +174,27 @@ def _facts(page: Page, survey: Survey, parcel: Parcel, x: float, y: float) -> No
 def facts(survey: Survey, parcel: Parcel) -> list[tuple[str, str]]:
     """Names and values of the key figures."""
     n, asked = parcel.numbers, survey.settings.asked
+
+    def told(name: str, form: str, factor: float = 1.0) -> str:
+        return with_error(parcel, name, form, factor)
+
     rows = [
         ("Area on the map", f"{n['map_area_ha']:.2f} ha"),
         ("Area of the slope's surface", f"{n['surface_area_ha']:.2f} ha"),
         ("Height, mean", f"{n['height_mean_m']:.0f} m"),
-        ("Slope, mean", f"{n['slope_mean_percent']:.1f} %"),
+        ("Slope, mean", f"{told('slope_mean_percent', '.1f')} %"),
         ("Slope of the middle 80 %",
          f"{n['slope_p10_percent']:.0f} to {n['slope_p90_percent']:.0f} %"),
         ("Faces, mean", _faces(n)),
-        ("Energy of the season", f"{n['irradiation_season_mj_m2_slope']:,.0f} MJ/m²"),
-        ("  as share of level ground", f"{100 * n['share_of_level_season']:.1f} %"),
+        ("Energy of the season", f"{told('irradiation_season_mj_m2_slope', ',.0f')} MJ/m²"),
+        ("  as share of level ground", f"{told('share_of_level_season', '.1f', 100.0)} %"),
         ("Hours of sun, season",
          f"{n['sun_hours_season_h']:,.0f} of {n['sun_hours_season_level_h']:,.0f} h"),
     ]  # fmt: skip
     if asked.rule is not None:
-        rows.append(("Meets the rule", f"{n['rule_ha_map']:.2f} ha, {100 * n['rule_share']:.0f} %"))
-    texts = {f.name: f.value for f in parcel.figures}
-    if "winkler_mean_c_days" in n:
-        rows.append(
-            ("Degree-days (Winkler)", f"{n['winkler_mean_c_days']:.0f}, {texts['winkler_class']}")
-        )
-    if "huglin_mean_c_days" in n:
-        value = n["huglin_mean_c_days"]
-        known = f"{value:.0f}, {texts['huglin_class']}" if np.isfinite(value) else "undefined"
-        rows.append(("Huglin's index", known))
+        share = f"{100 * n['rule_share']:.0f} %"
+        rows.append(("Meets the rule", f"{told('rule_ha_map', '.2f')} ha, {share}"))
+    rows += _warm_facts(parcel)
     if parcel.rows is not None:
         rows.append(("Rows: fall line", _azimuth(n["rows_fall_line_deg"])))
         rows.append(("Rows: sides most alike", _azimuth(n["rows_even_azimuth_deg"])))
@@ -206,6 +203,27 @@ def facts(survey: Survey, parcel: Parcel) -> list[tuple[str, str]]:
     if n["outside_share"] > 5e-4:
         rows.append(("Outside the raster", f"{100 * n['outside_share']:.1f} %"))
     return [(name, "unknown" if "nan" in value else value) for name, value in rows]
+
+
+def with_error(parcel: Parcel, name: str, form: str, factor: float = 1.0) -> str:
+    """A figure with its standard error behind it, if there is one."""
+    text = format(parcel.numbers[name] * factor, form)
+    doubt = parcel.doubts.get(name)
+    if doubt is None or not np.isfinite(doubt.standard_error):
+        return text
+    return f"{text} ± {format(doubt.standard_error * factor, form)}"
+
+
+def _warm_facts(parcel: Parcel) -> list[tuple[str, str]]:
+    """Degree-days with their classes."""
+    n, texts = parcel.numbers, {f.name: f.value for f in parcel.figures}
+    rows = []
+    for name, words in (("winkler", "Degree-days (Winkler)"), ("huglin", "Huglin's index")):
+        if f"{name}_mean_c_days" in n:
+            value = n[f"{name}_mean_c_days"]
+            known = f"{value:.0f}, {texts[f'{name}_class']}" if np.isfinite(value) else "undefined"
+            rows.append((words, known))
+    return rows
 
 
 def _azimuth(value: float) -> str:
@@ -240,9 +258,10 @@ def _classes(page: Page, survey: Survey, parcel: Parcel, x: float, y: float) -> 
         page.text(
             x + 88, level + 0.68 * pitch, name.replace(" and more", " up"), TEXT, across="right"
         )
-        long = 130.0 * np.nan_to_num(value) / longest
+        long = (130.0 - 46.0 * bool(parcel.doubts)) * np.nan_to_num(value) / longest
         page.box(x + 96, level + 3, max(long, 0.6), pitch - 5, fill=colour, edge=SOFT, line=0.5)
-        words = f"{value:.2f} ha  {100 * value / total:.0f} %" if np.isfinite(value) else "unknown"
+        told = with_error(parcel, f"{keys[k]}_ha_map", ".2f")
+        words = f"{told} ha  {100 * value / total:.0f} %" if np.isfinite(value) else "unknown"
         page.text(x + 102 + long, level + 0.68 * pitch, words, TEXT)
 
 
@@ -284,7 +303,7 @@ def _ring(radius: float) -> Wedge:
 
 def _sizes(page: Page, survey: Survey, parcel: Parcel, x: float, y: float) -> None:
     """The same at coarser cells: how much of it hangs on the cell size."""
-    heading(page, x, y, "At other cell sizes")
+    heading(page, x, y, "At other cell sizes" if parcel.coarser else "At its cell size")
     right = WIDTH - MARGIN
     looks = [(survey.cell_size, parcel.numbers)]
     looks += [(size, numbers_of(figures)) for size, figures in parcel.coarser]
@@ -523,6 +542,12 @@ def notes_of(survey: Survey) -> list[str]:
         notes.append(
             f"Degree-days from {station.basis} of a station at {station.height:.0f} m, lapse rate"
             f" {told} K/km."
+        )
+    error = survey.settings.error
+    if error is not None:
+        notes.append(
+            f"± one standard error from an error of heights of {error.rmse:g} m"
+            f" ({error.realisations} grounds)."
         )
     if asked.rule is not None:
         least = f", in patches from {asked.least_patch:g} m²" if asked.least_patch else ""

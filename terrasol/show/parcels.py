@@ -36,6 +36,7 @@ from terrasol.show.parcel_sheet import (
     heading,
     notes_of,
     scale_and_north,
+    with_error,
 )
 
 MAP_HEIGHT: Final = 360
@@ -46,6 +47,9 @@ MOST_ROWS: Final = 24
 """Parcels in the table; the rest are in parcels.csv."""
 
 TABLE_TOP: Final = 548
+
+CLASS_BAR: Final = 84.0
+"""Length of the bar of slope classes in the table [pixels]."""
 
 Cell = Callable[[Parcel], str]
 
@@ -149,7 +153,8 @@ def _columns(survey: Survey) -> list[tuple[str, float, Cell]]:
         ("sun h", 42.0, number("sun_hours_season_h", "{:.0f}")),
     ]
     if survey.settings.asked.rule is not None:
-        columns.append(("rule ha", 48.0, number("rule_ha_map", "{:.2f}")))
+        width = 82.0 if survey.settings.error else 48.0
+        columns.append(("rule ha", width, lambda p: with_error(p, "rule_ha_map", ".2f")))
     if survey.settings.asked.warmth is not None:
         columns.append(("Winkler", 48.0, number("winkler_mean_c_days", "{:.0f}")))
     if survey.settings.rows is not None:
@@ -181,7 +186,7 @@ def _table(page: Page, survey: Survey) -> float:
     columns = _columns(survey)
     right = WIDTH - MARGIN
     ends = right - np.cumsum([0.0, *(width for _, width, _ in reversed(columns))])[:-1][::-1]
-    bar = float(ends[0] - columns[0][1] - 118.0)
+    bar = float(ends[0] - columns[0][1] - CLASS_BAR - 14.0)
     top = TABLE_TOP
     heading(page, MARGIN, top - 26, "Parcels", _table_words(survey))
     page.text(bar, top - 6, "slope classes", SMALL, colour=SOFT)
@@ -221,9 +226,9 @@ def _class_bar(page: Page, survey: Survey, parcel: Parcel, x: float, y: float) -
     if not areas.sum() > 0.0:
         return
     for share, colour in zip(areas / areas.sum(), slope_colours(len(keys)), strict=True):
-        page.box(x, y, 104.0 * share, 12, fill=colour)
-        x += 104.0 * share
-    page.box(x - 104.0, y, 104.0, 12, edge=SOFT, line=0.5)
+        page.box(x, y, CLASS_BAR * share, 12, fill=colour)
+        x += CLASS_BAR * share
+    page.box(x - CLASS_BAR, y, CLASS_BAR, 12, edge=SOFT, line=0.5)
 
 
 def _score(page: Page, survey: Survey, y: float) -> None:

@@ -8,53 +8,15 @@ import shapely
 from pyproj import CRS, Transformer
 
 from terrasol.engine.parcel_cells import pieces_of
-from terrasol.engine.parcel_figures import Asked, season_places
-from terrasol.engine.parcels import ParcelSettings, rule_names, survey
+from terrasol.engine.parcel_figures import Warmth, season_places
+from terrasol.engine.parcel_rows import RowSettings
+from terrasol.engine.parcels import survey
 from terrasol.errors import InputError, SettingError
-from terrasol.files.vectors import Polygons
 from terrasol.ground.elevation import Elevation
-from terrasol.light.days import parse_days
-from terrasol.light.hours import HoursSettings
-from terrasol.light.settings import LightSettings
-from terrasol.practice.rules import parse_rule
 from terrasol.practice.season import NORTHERN_SEASON, SOUTHERN_SEASON
-from terrasol.sky.clear import Air
+from terrasol.practice.temperatures import from_monthly
 from terrasol.sky.period import parse_period
-
-CELL, LEFT, TOP = 10.0, 500000.0, 5100400.0
-UTM = "EPSG:32632"  # its central meridian, 9 east, runs through the middle of these grounds
-AIR = Air.ineichen(3.0)
-
-
-def plane(percent: float, toward: float, size: int = 80) -> Elevation:
-    """Ground that falls evenly towards an azimuth, counted in the grid."""
-    row, column = np.indices((size, size))
-    east, north = CELL * (column - size / 2), -CELL * (row - size / 2)
-    down = np.sin(np.radians(toward)) * east + np.cos(np.radians(toward)) * north
-    heights = 500.0 - percent / 100.0 * down
-    return Elevation.from_array(heights, (CELL, 0, LEFT, 0, -CELL, TOP), UTM)
-
-
-def asked_for(period=None, season=NORTHERN_SEASON, **more) -> ParcelSettings:
-    whole = parse_period(period)
-    own = {k: more.pop(k) for k in ("score", "coarser") if k in more}
-    light = LightSettings(whole, AIR, azimuths=16, step_seconds=300.0)
-    hours = HoursSettings(whole, AIR, parse_days(None, whole), azimuths=32, step_seconds=300.0)
-    if "rule" in more:
-        more["rule"] = parse_rule(more["rule"], rule_names(warm=False))
-    return ParcelSettings(light, hours, Asked(whole, season, **more), **own)
-
-
-def parcels(*shapes, crs=UTM) -> Polygons:
-    return Polygons(tuple(f"P{k}" for k in range(len(shapes))), tuple(shapes), CRS(crs))
-
-
-def box(x0, y0, x1, y1):
-    """A rectangle counted from the middle of the ground, in metres."""
-    return shapely.box(LEFT + 400 + x0, TOP - 400 + y0, LEFT + 400 + x1, TOP - 400 + y1)
-
-
-SCALE = 0.9996**-2  # true area by map area on the central meridian of UTM
+from tests.engine.made_parcels import CELL, LEFT, SCALE, TOP, UTM, asked_for, box, parcels, plane
 
 
 def test_a_plane_of_twelve_percent_is_all_in_its_class():
@@ -251,3 +213,52 @@ def _none():
     from terrasol.engine.job import NO_SCENE
 
     return NO_SCENE
+
+
+def test_rows_on_a_plane():
+    """Down a south slope both sides are alike by symmetry; across it the right one faces south."""
+    settings = asked_for(coarser=(), rows=RowSettings(2.0, 1.3, 0.4))
+    parcel = survey(plane(20.0, 180.0), parcels(box(-50, -50, 50, 50)), settings).parcels[0]
+    assert parcel.rows.fall_line == pytest.approx(0.0, abs=0.05) or parcel.rows.fall_line > 179.9
+    sides = dict(zip(parcel.rows.light.azimuth, parcel.rows.sides, strict=True))
+    assert sides[0.0][0] == pytest.approx(sides[0.0][1], rel=0.01)
+    assert sides[90.0][0] > 2.0 * sides[90.0][1]
+    numbers = parcel.numbers
+    assert numbers["rows_even_azimuth_deg"] in (0.0, 175.0, 5.0)
+    assert numbers["rows_down_steepest_percent"] == pytest.approx(20.0 * 0.9996, abs=0.01)
+    climbed = dict(zip(parcel.rows.light.azimuth, parcel.rows.steepest, strict=True))
+    assert climbed[90.0] == pytest.approx(0.0, abs=0.05)
+    assert climbed[60.0] == pytest.approx(20.0 * 0.9996 * 0.5, abs=0.05)
+
+
+def test_half_the_step_moves_no_side_of_a_row():
+    from terrasol.engine import parcel_rows
+
+    settings = asked_for(coarser=(), rows=RowSettings(2.0, 1.3, 0.4))
+    parcel = survey(plane(20.0, 140.0), parcels(box(-50, -50, 50, 50)), settings).parcels[0]
+    with pytest.MonkeyPatch.context() as patch:
+        patch.setattr(parcel_rows, "STEP_SECONDS", 300.0)
+        finer = parcel_rows.rows_of(
+            parcel.piece, parcel.horizon, settings.rows, settings.light, settings.asked
+        )
+    assert np.allclose(finer.sides, parcel.rows.sides, rtol=1e-3)
+
+
+def test_degree_days_fall_with_height():
+    """Twelve means of 15 degrees at 500 m: 214 days of 5 K, less 0.65 K a hundred metres."""
+    warmth = Warmth(from_monthly(np.full(12, 15.0), height=500.0, highest=np.full(12, 20.0)))
+    settings = asked_for(coarser=(), warmth=warmth, rule="degree_days >= 1070")
+    parcel = survey(plane(12.0, 180.0), parcels(box(-100, -100, 100, 100)), settings).parcels[0]
+    numbers, height = parcel.numbers, parcel.numbers["height_mean_m"]
+    expected = 214 * (5.0 - 6.5e-3 * (height - 500.0))
+    assert numbers["winkler_mean_c_days"] == pytest.approx(expected, rel=1e-4)
+    low = 214 * (5.0 - 6.5e-3 * (numbers["height_greatest_m"] - 500.0))
+    assert numbers["winkler_least_c_days"] == pytest.approx(low, rel=1e-4)
+    classes = {f.name: f.value for f in parcel.figures}
+    assert classes["winkler_class"] == "Ia"
+    assert numbers["winkler_shortfall_c_days"] > 0.0
+    # Half of the plane lies below 500 m, where it is warm enough: rows 41 to 49 of 30 to 49.
+    assert numbers["rule_share"] == pytest.approx(10 / 20, abs=0.051)
+    # Huglin at 46.05 north: 1.05 (183 days) ((15 - 10) + (20 - 10)) / 2 at the station's height.
+    factor = numbers["huglin_mean_c_days"] / (183 * (7.5 - 6.5e-3 * (height - 500.0)))
+    assert factor == pytest.approx(1.05, abs=1e-3)
