@@ -25,10 +25,12 @@ if TYPE_CHECKING:
     from terrasol.engine.plot_settings import PlotSettings
     from terrasol.engine.plot_table import PlotTable
     from terrasol.files.points import Points
+    from terrasol.ground.beyond import Scene
 
 TABLE, PARQUET, DICTIONARY = "plots.csv", "plots.parquet", "columns.csv"
 LONG, CORRELATIONS = "plots_long.csv", "correlations.csv"
 PICTURE, METHODS = "predictors.png", "methods.md"
+HORIZONS, SKYLINES = "horizons.csv", "horizons.png"
 
 GROUPS = (
     "height", "slope", "aspect", "transforms", "heat_load", "sky_view", "irradiation",
@@ -127,6 +129,11 @@ class Lengths(click.ParamType):
     help="Measured column of PLOTS with which the predictors are correlated, scale by scale.",
 )
 @click.option("--long", "as_long", is_flag=True, help=f"Write also {LONG}, one value a row.")
+@click.option(
+    "--horizons",
+    is_flag=True,
+    help=f"Write also {HORIZONS} and {SKYLINES}, the horizon of each plot's cell.",
+)
 @period_option
 @click.option(
     "--clock",
@@ -280,7 +287,8 @@ class _Job:
         from terrasol.files.delivery import RECORD
 
         long = [LONG] if self.given["as_long"] else []
-        return [TABLE, PARQUET, DICTIONARY, *long, CORRELATIONS, PICTURE, METHODS, RECORD]
+        seen = [HORIZONS, SKYLINES] if self.given["horizons"] else []
+        return [TABLE, PARQUET, DICTIONARY, *long, CORRELATIONS, PICTURE, *seen, METHODS, RECORD]
 
     @property
     def inputs(self) -> list[str]:
@@ -378,9 +386,12 @@ class _Job:
         delivery = Delivery(common.out_dir, self.names, overwrite=common.overwrite)
         with delivery, progress_bar(common.quiet) as move:
             announce_compilation(common.quiet)
-            table = self._table(settings, threads, move)
-            move(0.92, "writing")
+            scenes = self._scenes(settings)
+            table = self._table(settings, scenes, threads, move)
+            move(0.88, "horizons and files")
             self._write(delivery, table, settings, settled)
+            if self.given["horizons"]:
+                self._write_horizons(delivery, table, settings, scenes[0], threads)
             removed, more = superseded(common, self.names)
             record |= {
                 "threads": threads,
@@ -423,25 +434,27 @@ class _Job:
         settings = replace(self.settings, light=light, hours=hours, season=season, factors=factors)
         return settings, settled, [*asked.doubts(frame), *settled.warnings, *said]
 
-    def _table(self, settings: PlotSettings, threads: int, move: Any) -> PlotTable:
-        """The predictors."""
-        from terrasol.engine.plots import plot_table
-        from terrasol.files.rasters import naming
+    def _scenes(self, settings: PlotSettings) -> list[Scene]:
+        """What stands beyond and above the ground, for each cell size."""
         from terrasol.ground.frame import make_frame
         from terrasol.ground.grain import coarsened
 
         grounds = [coarsened(self.ground.elevation, factor) for factor in settings.factors]
         frames = [make_frame(each.shape, each.transform, each.crs) for each in grounds]
-        scenes = [self.around.scene(*pair) for pair in zip(grounds, frames, strict=True)]
+        return [self.around.scene(*pair) for pair in zip(grounds, frames, strict=True)]
+
+    def _table(
+        self, settings: PlotSettings, scenes: list[Scene], threads: int, move: Any
+    ) -> PlotTable:
+        """The predictors."""
+        from terrasol.engine.plots import plot_table
+        from terrasol.files.rasters import naming
+
         with naming(self.common.dem):
             return plot_table(
-                self.ground.elevation,
-                self.points,
-                settings,
-                scenes,
-                threads,
-                lambda share, stage: move(0.9 * share, stage),
-            )
+                self.ground.elevation, self.points, settings, scenes, threads,
+                lambda share, stage: move(0.88 * share, stage),
+            )  # fmt: skip
 
     def _record(self, settings: PlotSettings) -> dict[str, Any]:
         """Settings as plain text and numbers."""
@@ -480,10 +493,26 @@ class _Job:
         if self.given["as_long"]:
             delivery.write_bytes(LONG, csv_bytes(long_form(table)))
         delivery.write_bytes(CORRELATIONS, csv_bytes(pairs(table, response)))
-        title = f"Predictors for {os.path.splitext(os.path.basename(self.given['plots_file']))[0]}"
+        title = f"Predictors for {_stem(self.given['plots_file'])}"
         delivery.write_bytes(PICTURE, predictors_png(table, title=title, response=response))
         text = methods_text(table, settings, self._account(table, settled))
         delivery.write_bytes(METHODS, text.encode())
+
+    def _write_horizons(
+        self, delivery: Any, table: PlotTable, settings: PlotSettings, scene: Scene, threads: int
+    ) -> None:
+        """Stage the horizons, as a table and as a picture."""
+        from terrasol.engine.plot_horizons import horizon_table, plot_horizons
+        from terrasol.engine.plot_places import locate
+        from terrasol.files.plot_tables import csv_bytes
+        from terrasol.show.plot_horizons import horizons_png
+
+        elevation, azimuths = self.ground.elevation, settings.hours.azimuths
+        located = locate(self.points, elevation)
+        found = plot_horizons(elevation, located, azimuths, self.common.refraction, scene, threads)
+        delivery.write_bytes(HORIZONS, csv_bytes(horizon_table(self.points.names, found)))
+        title = f"Horizons of {_stem(self.given['plots_file'])}"
+        delivery.write_bytes(SKYLINES, horizons_png(table, found, title=title))
 
     def _account(self, table: PlotTable, settled: Any) -> Any:
         """What the paragraph on methods tells besides the settings."""
@@ -499,6 +528,11 @@ class _Job:
             far=os.path.basename(around.far) if around.far else "",
             surface=os.path.basename(around.surface) if around.surface else "",
         )
+
+
+def _stem(path: str) -> str:
+    """A file's name without folder and ending."""
+    return os.path.splitext(os.path.basename(path))[0]
 
 
 def _results(table: PlotTable, response: str | None, remarks: tuple[str, ...]) -> dict[str, Any]:

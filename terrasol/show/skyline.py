@@ -64,6 +64,7 @@ def draw_skyline(
     *,
     plane: Values | None = None,
     clock: bool = False,
+    named: bool = True,
 ) -> None:
     """Draw the horizon and the sun's paths into a panel whose limits are set.
 
@@ -81,6 +82,8 @@ def draw_skyline(
         Height at which the own slope hides the sun [degrees].
     clock : bool
         Mark the hours of the clock on the paths too.
+    named : bool
+        Name the paths, and write degrees beside the directions; without, for small panels.
     """
     axes, thin = panel.axes, POINTS_PER_PIXEL
     middle = sum(axes.get_xlim()) / 2.0
@@ -98,10 +101,10 @@ def draw_skyline(
         _draw_path(panel, path, middle)
     _draw_hours(panel, hour_paths, middle)
     for path in paths:
-        named = _name(panel, path, middle)
+        name = _name(panel, path, middle) if named else None
         if clock:
-            _mark_clock(panel, path, middle, named)
-    _compass(panel)
+            _mark_clock(panel, path, middle, name)
+    _compass(panel, degrees=named)
 
 
 def _around(horizon: Values) -> tuple[Values, Values]:
@@ -199,11 +202,11 @@ def _name(panel: Panel, path: Track, middle: float) -> tuple[float, float] | Non
     return x, half + panel.tick
 
 
-def _compass(panel: Panel) -> None:
-    """Names and degrees of eight directions below."""
+def _compass(panel: Panel, degrees: bool) -> None:
+    """Names of eight directions below, and their degrees if asked for."""
     low, high = panel.axes.get_xlim()
     azimuths = np.arange(low, high + 1.0, 45.0)
-    names = [f"{COMPASS[int(a // 45) % 8]} {a % 360:.0f}°" for a in azimuths]
+    names = [COMPASS[int(a // 45) % 8] + (f" {a % 360:.0f}°" if degrees else "") for a in azimuths]
     panel.x_ticks(list(azimuths), names, down=panel.tick + 6)
     panel.axes.vlines(azimuths[1:-1], 0.0, panel.axes.get_ylim()[1], color=SOFT, alpha=0.25,
                       linewidth=0.6 * POINTS_PER_PIXEL, zorder=0)  # fmt: skip

@@ -158,6 +158,17 @@ def test_json_and_words(dem, plots, tmp_path, capfd):
     assert "taken as degrees of WGS 84" in told.err
 
 
+def test_horizons(dem, plots, tmp_path):
+    out = tmp_path / "out"
+    asked = ["--horizons", "--predictors", "height", "--radii", "none", "--quiet", *QUICK]
+    assert main(["plots", str(dem), str(plots), str(out), *asked]) == 0
+    table = pd.read_csv(out / "horizons.csv")
+    assert list(table.columns) == ["id", "azimuth_deg", "horizon_deg"]
+    assert len(table) == 12 * 32
+    assert table["horizon_deg"].between(0.0, 40.0).all()
+    assert (out / "horizons.png").read_bytes().startswith(b"\x89PNG")
+
+
 def test_dry_run(dem, plots, tmp_path, capfd):
     out = tmp_path / "out"
     assert (

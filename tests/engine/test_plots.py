@@ -9,6 +9,7 @@ from pyproj import CRS, Transformer
 
 import terrasol
 from terrasol import Air, Elevation, InputError, SettingError, parse_period
+from terrasol.engine.plot_horizons import horizon_table, plot_horizons
 from terrasol.engine.plot_places import locate
 from terrasol.engine.plot_settings import PlotSettings
 from terrasol.engine.plot_table import grain_tags, long_form
@@ -467,3 +468,14 @@ def test_far_ridges_and_trees_count(hills, metric_ground):
     ).frame
     assert (under["sky_view"] < plain["sky_view"] - 0.001).all()
     assert under.filter(like="_g").shape[1] == 2
+
+
+def test_horizons_are_those_of_the_cells(hills):
+    located = locate(at_cells(hills, [20.3, 33.0, -50.0], [254.7, 256.2, 10.0]), hills)
+    found = plot_horizons(hills, located, 32, threads=1)
+    whole = terrasol.terrain(hills, 32, horizon=True, threads=1).horizon.values
+    np.testing.assert_array_equal(found[0].astype(np.float32), whole[:, 20, 255])
+    np.testing.assert_array_equal(found[1].astype(np.float32), whole[:, 33, 256])
+    assert np.isnan(found[2]).all()
+    table = horizon_table(("a", "b", "c"), found)
+    assert table["azimuth_deg"][table["id"] == "b"].tolist() == [11.25 * k for k in range(32)]
