@@ -72,7 +72,8 @@ def horizons_png(table: PlotTable, horizons: NDArray[np.float64], *, title: str)
         page.text(
             MARGIN, page.height - 26,
             "Sun's paths of 21 June, 20 March and 21 December, faint behind the ground; dashed:"
-            f" below this the plot's own slope hides the sun. To: aspect; sky: sky-view factor.  terrasol {__version__}", SMALL,
+            " below this the plot's own slope hides the sun. To: aspect; sky: sky-view factor. "
+            f" terrasol {__version__}", SMALL,
             colour=SOFT,
         )  # fmt: skip
         return page.png(Title=title, Software=f"terrasol {__version__}")
