@@ -25,7 +25,8 @@ def coarsened(elevation: Elevation, factor: int) -> Elevation:
     -------
     Elevation
         The mean height of each square of cells of which at least half are known, else void.
-        Counted from the raster's first cell; at the far rims a square may lie half outside.
+        Counted from the raster's first cell. At the far rims squares stay of which at least half
+        of the side lies on the raster; what is left beyond them is cut off.
 
     Raises
     ------
@@ -45,7 +46,7 @@ def coarsened(elevation: Elevation, factor: int) -> Elevation:
         raise SettingError(f"cells are joined by a whole number from 1 on; got {factor!r}")
     if factor == 1:
         return elevation
-    if min(elevation.shape) <= factor:
+    if min(_squares(size, factor) for size in elevation.shape) < 2:
         raise SettingError(
             f"{factor} x {factor} cells joined leave fewer than two rows or columns of the"
             f" raster's {elevation.shape[0]} x {elevation.shape[1]} cells: choose smaller cells"
@@ -56,18 +57,23 @@ def coarsened(elevation: Elevation, factor: int) -> Elevation:
     return Elevation(heights, transform, elevation.crs, None, elevation.warnings)
 
 
+def _squares(size: int, factor: int) -> int:
+    """Squares along a side, with one at the rim of which half lies on the raster."""
+    return (size + factor // 2) // factor
+
+
 def _square_means(heights: NDArray[np.float32], factor: int) -> NDArray[np.float32]:
-    """Means of squares of cells, NaN where fewer than half of one are known."""
-    rows, columns = (-(-size // factor) for size in heights.shape)
+    """Means of squares of cells, NaN where fewer than half of one's cells are known."""
+    rows, columns = (_squares(size, factor) for size in heights.shape)
     out = np.empty((rows, columns), np.float32)
-    padded = np.full((factor, columns * factor), np.nan)
+    width = min(columns * factor, heights.shape[1])
     for row in range(rows):
-        strip = heights[row * factor : (row + 1) * factor]
-        padded[:] = np.nan
-        padded[: strip.shape[0], : strip.shape[1]] = strip
-        squares = padded.reshape(factor, columns, factor)
+        strip = heights[row * factor : (row + 1) * factor, :width]
+        padded = np.full((strip.shape[0], columns * factor), np.nan)
+        padded[:, :width] = strip
+        squares = padded.reshape(strip.shape[0], columns, factor)
         known = np.isfinite(squares).sum(axis=(0, 2))
+        there = strip.shape[0] * np.minimum(factor, width - factor * np.arange(columns))
         total = np.nansum(squares, axis=(0, 2))
-        enough = 2 * known >= factor * factor
-        out[row] = np.where(enough, total / np.maximum(known, 1), np.nan)
+        out[row] = np.where(2 * known >= there, total / np.maximum(known, 1), np.nan)
     return out

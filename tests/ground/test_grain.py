@@ -36,11 +36,15 @@ def test_half_of_a_cell_must_be_known():
     assert np.isnan(coarse[1, 1])
 
 
-def test_rims_that_do_not_fill_a_cell():
-    coarse = coarsened(model(np.ones((5, 7))), 3)
-    assert coarse.shape == (2, 3)
-    assert np.isfinite(coarse.heights[:, :2]).all()
-    assert np.isnan(coarse.heights[:, 2]).all()  # one column of three
+@pytest.mark.parametrize(
+    ("shape", "factor", "expected"),
+    [((6, 6), 3, (2, 2)), ((7, 8), 3, (2, 3)), ((5, 7), 2, (3, 4)), ((9, 10), 4, (2, 3))],
+)
+def test_rims_that_do_not_fill_a_cell(shape, factor, expected):
+    """Squares with half their side on the raster stay, the rest is cut off; none becomes void."""
+    coarse = coarsened(model(np.ones(shape)), factor)
+    assert coarse.shape == expected
+    assert (coarse.heights == 1.0).all()
 
 
 def test_one_is_the_model_itself():
