@@ -154,6 +154,11 @@ class Asked:
         Connected patches smaller than this do not count [m2].
     warmth : Warmth, optional
         Temperatures for degree-days.
+
+    Raises
+    ------
+    SettingError
+        A season that the period does not hold, classes that do not ascend, a negative area.
     """
 
     period: Period
@@ -166,7 +171,12 @@ class Asked:
     season_places: tuple[int, ...] = field(init=False)
 
     def __post_init__(self) -> None:
-        """Find the season in the period."""
+        """Find the season in the period, and refuse classes that are none."""
+        area_by_class([], self.slope_edges, [])
+        if not 0.0 <= self.flat_below < 100.0:
+            raise SettingError(f"flat below {self.flat_below:g} % is not 0 to under 100 %")
+        if not self.least_patch >= 0.0:
+            raise SettingError(f"the least patch must be 0 m2 or more; got {self.least_patch:g}")
         object.__setattr__(self, "season_places", season_places(self.period, self.season))
 
     @property

@@ -69,7 +69,8 @@ class ParcelSettings:
     Raises
     ------
     SettingError
-        Another unit or basis, a clear-sky index or albedo by cell, a factor under 2.
+        Another unit or basis, a clear-sky index or albedo by cell, a factor under 2, a score that
+        speaks of what no parcel has.
     """
 
     light: LightSettings
@@ -89,6 +90,8 @@ class ParcelSettings:
         for factor in self.coarser:
             if factor < 2:
                 raise SettingError(f"cells are joined 2 by 2 at least; got {factor}")
+        if self.score is not None:
+            parse_score(self.score, figure_names(self))
 
 
 @dataclass(frozen=True, eq=False)
@@ -181,6 +184,30 @@ def rule_names(warm: bool) -> list[str]:
     return [*QUANTITIES, *(WARM_QUANTITIES if warm else ())]
 
 
+def figure_names(settings: ParcelSettings) -> list[str]:
+    """Names of the figures that are numbers, as a score may use them: those of one level cell."""
+    asked, months = settings.asked, len(settings.light.period.months)
+    layers = {
+        "slope": 1,
+        "aspect": 1,
+        "sky_view": 1,
+        "irradiation_months": months,
+        "sun_hours_months": months,
+        "first_sun": len(settings.hours.days),
+        "last_sun": len(settings.hours.days),
+    }
+    cell = Piece(
+        "", Block(0, 0, 1, 1), np.ones((1, 1)), np.zeros((1, 1), np.float32),
+        {name: np.ones((bands, 1, 1), np.float32) for name, bands in layers.items()},
+        45.0, 0.0, 1.0,
+    )  # fmt: skip
+    _warm([cell], asked.warmth)
+    figures = figures_of(cell, Level(np.ones(months), np.ones(months)), asked)
+    if settings.rows is not None:
+        figures += row_figures(None, asked)
+    return list(numbers_of(figures))
+
+
 def survey(
     elevation: Elevation,
     polygons: Polygons,
@@ -212,7 +239,7 @@ def survey(
     Raises
     ------
     SettingError
-        A score that speaks of what no parcel has.
+        Cells that cannot be joined, or a DEM error that the raster is too small for.
     InputError
         Parcels outside the raster or on void ground; a raster that cannot be placed.
     """

@@ -5,18 +5,18 @@ from __future__ import annotations
 import numpy as np
 import pytest
 import shapely
+from engine.made_parcels import CELL, LEFT, SCALE, TOP, UTM, asked_for, box, parcels, plane
 from pyproj import CRS, Transformer
 
 from terrasol.engine.parcel_cells import pieces_of
 from terrasol.engine.parcel_figures import Warmth, season_places
 from terrasol.engine.parcel_rows import RowSettings
-from terrasol.engine.parcels import survey
+from terrasol.engine.parcels import figure_names, survey
 from terrasol.errors import InputError, SettingError
 from terrasol.ground.elevation import Elevation
 from terrasol.practice.season import NORTHERN_SEASON, SOUTHERN_SEASON
 from terrasol.practice.temperatures import from_monthly
 from terrasol.sky.period import parse_period
-from tests.engine.made_parcels import CELL, LEFT, SCALE, TOP, UTM, asked_for, box, parcels, plane
 
 
 def test_a_plane_of_twelve_percent_is_all_in_its_class():
@@ -162,7 +162,16 @@ def test_score_ranks_and_refuses_what_no_parcel_has():
     assert [p.name for p in found.order] == ["P1", "P0"]
     assert found.ranking.rank.tolist() == [2, 1]
     with pytest.raises(SettingError, match="slope_meen_percent"):
-        survey(ground, shapes, asked_for(coarser=(), score="-slope_meen_percent"))
+        asked_for(score="-slope_meen_percent")
+
+
+def test_names_for_a_score_are_those_of_the_figures():
+    warmth = Warmth(from_monthly(np.full(12, 15.0), height=500.0, highest=np.full(12, 20.0)))
+    settings = asked_for(
+        coarser=(), warmth=warmth, rule="slope_deg < 9", rows=RowSettings(2.0, 1.3, 0.4)
+    )
+    found = survey(plane(12.0, 180.0), parcels(box(0, 0, 50, 50)), settings).parcels[0]
+    assert figure_names(settings) == list(found.numbers)
 
 
 def test_results_do_not_depend_on_other_parcels_or_threads():
