@@ -14,9 +14,9 @@ from scipy.ndimage import distance_transform_edt
 from terrasol.ground.uncertainty import DemError, error_fields
 
 TILE: Final = 32
-"""Cells along a tile, over which ground and error are told apart. Tiles overlap by half. Of 64
-cells, they tell better on even ground and worse where a plain meets a slope (measured,
-docs/uncertainty.md)."""
+"""Cells along a tile, over which ground and error are told apart. Tiles overlap by half. With 64,
+parcels where a plain meets slopes came out worse and others alike; with 16, cells came out worse
+(measured on made relief and the sample valley when it was chosen)."""
 
 LEAST_SHARE: Final = 0.1
 """Least share of ground in the roughness of any wavelength. Where a model is smoother than its

@@ -15,16 +15,17 @@ from terrasol.errors import SettingError
 
 REALISATIONS: Final = 24
 """Error fields drawn unless told otherwise. A standard error from n fields is itself known to
-1 / sqrt(2 (n - 1)), here 15 %, and a 90 % interval is 4 % wider than with endless fields; 96 fields
-would halve the first at four times the cost (judgement; docs/uncertainty.md has the figures)."""
+1 / sqrt(2 (n - 1)), here 15 %, and a 90 % interval is 6 % wider than from endless fields; 96 fields
+would halve the first at four times the cost (judgement; measured in docs/uncertainty.md)."""
 
 MOST_REALISATIONS: Final = 10_000
 """More would know a standard error to better than 1 %, which no stated RMSE deserves (judgement,
 no source)."""
 
 RANGE_CELLS: Final = 5.0
-"""Range of the error in cells where none is given (judgement, no source). The shorter the range,
-the more of the error is in the slope, so a short one does not flatter the model."""
+"""Range of the error in cells where none is given (judgement, no source). Ranges of 2 to 5 cells
+tilt cells the most: shorter ones are averaged away by Horn's window, longer ones move neighbours
+together. So this one does not flatter the model."""
 
 DECAY: Final = 3.0
 """Range over the length in the exponent: at the range, exp(-3), 5 % of the correlation is left,

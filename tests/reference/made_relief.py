@@ -8,7 +8,8 @@ from pyproj import CRS
 from terrasol.engine.datasets import ArraySink
 from terrasol.engine.error_maps import plan_errors
 from terrasol.engine.job import plan_irradiation, plan_terrain
-from terrasol.engine.uncertainty import moved, propagate_all, with_tables
+from terrasol.engine.spread import SpreadTally
+from terrasol.engine.uncertainty import moved, propagate_all, realisations, with_tables
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.uncertainty import error_fields
 
@@ -81,6 +82,19 @@ class Survey:
         """By terrasol's own propagation."""
         return propagate_all(self.elevation, self.error, self.of, angles=["aspect"])
 
+    def spreads_of_added_error(self):
+        """As one might do it in place of that: error on top of the model, and its shift taken off.
+
+        The estimate less the mean is then the shift to be added to the estimate.
+        """
+        seen = self.of(self.elevation)
+        tallies = {name: SpreadTally(values, name == "aspect") for name, values in seen.items()}
+        for ground in realisations(self.elevation, self.error):
+            for name, values in self.of(ground).items():
+                tallies[name].add(values)
+        plain = {name: tally.spread() for name, tally in tallies.items()}
+        return {name: replace(s, mean=s.estimate + s.shift) for name, s in plain.items()}
+
     def maps(self):
         """Half widths of 90 % intervals about the maps' own values, by their standard errors."""
         sink = ArraySink(self.elevation.shape)
@@ -136,16 +150,16 @@ KINDS = {
 }
 
 
-def count(held, truth, error, number, settings=None, maps=True):
+def count(held, truth, error, number, settings=None, *, maps=True, added=False):
     """One trial: put an error on the truth, propagate, and count what holds the truth.
 
     Names are `quantity, kind of slope`; of parcels those with both shallow and steep ground, and
-    all; of maps `map of quantity`.
+    all; of maps `map of quantity`. With `added` by error on top of the model.
     """
     observed = ground_of(with_foreign_error(truth, error, number))
     survey = Survey(observed, replace(error, seed=number), settings)
     real, seen = survey.of(ground_of(truth)), survey.of(observed)
-    for name, spread in survey.spreads().items():
+    for name, spread in (survey.spreads_of_added_error() if added else survey.spreads()).items():
         low, high = spread.interval(0.9)
         ok = within((low + high) / 2.0, (high - low) / 2.0, real[name], spread.angle)
         known = np.isfinite(real[name]) & np.isfinite(spread.deviation)
