@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from typing import Any
+from datetime import date
 
 import numpy as np
 from matplotlib import style
@@ -13,11 +13,13 @@ from terrasol import __version__
 from terrasol.engine.comparison import StationReport, amount_words, place_words
 from terrasol.engine.outputs import MONTH_NAMES
 from terrasol.light.comparison import Agreement, local_time
+from terrasol.light.days import Clock
+from terrasol.light.minutes import track
 from terrasol.show.key import BAR_COLOUR, NOTE_LEADING, SMALL, TEXT
-from terrasol.show.page import INK, PAPER, POINTS_PER_PIXEL, SOFT, Page, clip, text_width, wrap
-from terrasol.show.panel import TICK, Panel, steps
-from terrasol.sky.period import parse_period
-from terrasol.sky.sun import sun_path, sun_series
+from terrasol.show.page import INK, POINTS_PER_PIXEL, SOFT, Page, clip, text_width, wrap
+from terrasol.show.panel import Panel, steps
+from terrasol.show.skyline import HOUR_LINES, draw_skyline, tracks_of, view_limits
+from terrasol.sky.period import TYPICAL_SUN_YEAR
 
 WIDTH, MARGIN = 1480, 72
 LEFT = MARGIN + 40
@@ -30,17 +32,12 @@ TITLE, SUBTITLE = 38.0, 21.0
 """Sizes of letters [pixels]."""
 
 MEASURED, MEASURED_EDGE, MODELLED = "#f0d9ac", "#b08a4a", "#7c2760"
-GROUND, SUN = "#d8d2c6", "#d98a1f"
-"""Measured light as an area, the model as a line, terrain, and the sun's paths."""
+"""Measured light as an area, its edge, and the model as a line."""
 
 WIDEST_BAR = 56.0
 """Of a month or an hour [pixels]."""
 
 MOST_DAYS = 4
-PATHS = ((6, 21), (3, 20), (12, 21))
-"""Month and day of the sun's paths: solstices and an equinox."""
-
-PATH_YEAR = 2025
 
 
 def comparison_png(report: StationReport, *, title: str, notes: Sequence[str] = ()) -> bytes:
@@ -261,56 +258,14 @@ def _draw_error_legend(page: Page, y: float) -> None:
 
 def _draw_horizon(page: Page, report: StationReport, top: float) -> None:
     """The skyline by azimuth, and the sun's paths behind it."""
-    latitude = report.station.latitude
-    middle = 180.0 if latitude >= 0.0 else 0.0
+    station, horizon, solar = report.station, report.spot.horizon, Clock("solar")
+    where = station.latitude, station.longitude, station.height, solar
+    paths = tracks_of(*where, TYPICAL_SUN_YEAR)
+    lines = [track(date(TYPICAL_SUN_YEAR, *day), *where) for day in HOUR_LINES]
     panel = Panel(page, LEFT, top, WIDTH - MARGIN - LEFT, HORIZON_HEIGHT)
-    horizon = report.spot.horizon
-    paths = [_sun_of(report, month, day) for month, day in PATHS]
-    highest = max(float(path[1].max(initial=0.0)) for path in paths)
-    panel.limits(middle - 180, middle + 180, 0.0, min(max(highest, horizon.max()) + 6.0, 92.0))
-    panel.y_ticks(steps(*panel.axes.get_ylim(), 6))
-    panel.heading("Horizon from the station, and the sun", "degrees above the level, by azimuth")
-    around = np.arange(-horizon.size, 2 * horizon.size + 1) * (360.0 / horizon.size)
-    skyline = np.maximum(np.append(np.tile(horizon, 3), horizon[0]), 0.0)
-    thin = POINTS_PER_PIXEL
-    panel.axes.fill_between(around, skyline, color=GROUND, zorder=3, linewidth=0.0)
-    panel.axes.plot(around, skyline, color=INK, linewidth=1.4 * thin, zorder=5)
-    for (month, day), path in zip(PATHS, paths, strict=True):
-        _draw_path(panel, path, middle, f"{day} {MONTH_NAMES[month - 1]}")
-    azimuths = np.arange(middle - 180.0, middle + 181.0, 45.0)
-    names = ("N", "NE", "E", "SE", "S", "SW", "W", "NW")
-    panel.x_ticks(list(azimuths), [f"{names[int(a // 45) % 8]} {a % 360:.0f}°" for a in azimuths])
-
-
-def _sun_of(report: StationReport, month: int, day: int) -> tuple[Any, ...]:
-    """Azimuth, elevation and hour of local mean solar time of the sun on a day [degrees]."""
-    station = report.station
-    period = parse_period(f"{PATH_YEAR}-{month:02d}-{day:02d}")
-    sun = sun_series(sun_path(period, station.longitude, 300.0), station.latitude, station.height)
-    up = sun.elevation > 0.0
-    local = sun.time + np.timedelta64(round(station.longitude * 240.0), "s")
-    hour = (local - local.astype("M8[D]")).astype("m8[s]").astype(float) / 3600.0
-    return sun.azimuth[up], sun.elevation[up], hour[up]
-
-
-def _draw_path(panel: Panel, path: tuple[Any, ...], middle: float, name: str) -> None:
-    """A day's path: full where it is free, faint behind the ground; dots at the hours."""
-    azimuth, elevation, hour = path
-    if azimuth.size < 2:
-        return
-    azimuth = (azimuth - middle + 180.0) % 360.0 + middle - 180.0
-    thin, axes = POINTS_PER_PIXEL, panel.axes
-    cuts = np.flatnonzero((np.abs(np.diff(azimuth)) > 180.0) | (np.diff(hour) > 0.2)) + 1
-    for a, e in zip(np.split(azimuth, cuts), np.split(elevation, cuts), strict=True):
-        axes.plot(a, e, color=SUN, linewidth=2.2 * thin, zorder=2)
-        axes.plot(a, e, color=SUN, linewidth=1.0 * thin, alpha=0.55, zorder=4)
-    whole = np.round(hour)
-    each = [np.argmin(np.abs(hour - h)) for h in np.unique(whole) if np.abs(hour - h).min() < 0.05]
-    axes.plot(azimuth[each], elevation[each], "o", color=SUN, markersize=5.0 * thin, zorder=4)
-    top = int(np.argmax(elevation))
-    low, high = axes.get_ylim()
-    left, right = axes.get_xlim()
-    x = panel.x + (azimuth[top] - left) / (right - left) * panel.width
-    y = panel.y + (high - elevation[top]) / (high - low) * panel.height
-    x = float(np.clip(x, panel.x + 60, panel.x + panel.width - 60))
-    panel.page.text(x, y - 10, name, TICK, across="center", halo=PAPER)
+    panel.limits(*view_limits(station.latitude, [horizon], paths))
+    panel.heading(
+        "Horizon from the station, and the sun",
+        "degrees above the level, by azimuth; hours of true solar time",
+    )
+    draw_skyline(panel, horizon, paths, lines)

@@ -51,6 +51,7 @@ from terrasol.show.skyline import (
     tracks_of,
     view_limits,
 )
+from terrasol.sky.period import TYPICAL_SUN_YEAR
 
 A4: Final = (827, 1169)
 """Width and height of the sheet of one place [pixels of 1/100 inch]; two make an A3."""
@@ -100,9 +101,6 @@ BARS: Final = 330
 COLUMN_ENDS: Final = np.array([0.29, 0.40, 0.52, 0.70, 0.83, 1.0])
 """Right ends of the table's columns, as shares of its width."""
 
-YEAR: Final = 2025
-"""Whose sun the paths of solstices and equinox have: that of the typical year."""
-
 Values = NDArray[np.float64]
 
 
@@ -147,7 +145,6 @@ def site_page(
         For `page_png` and `Page.pdf`.
     """
     page = Page(A4[0] * len(sites), A4[1])
-    page.axes.set_zorder(5)  # words lie over the diagrams
     frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
     common = _common(sites, tuple(days), tuple(notes), source)
     with style.context("default"):
@@ -191,7 +188,7 @@ def _least(values: Values) -> float:
 
 def _paths(site: Site, days: tuple[date, ...]) -> list[Track]:
     where = site.latitude, site.longitude, site.height, site.sun.clock
-    return tracks_of(*where, YEAR, days)
+    return tracks_of(*where, TYPICAL_SUN_YEAR, days)
 
 
 class _Sheet:
@@ -331,7 +328,7 @@ class _Sheet:
             panel,
             site.horizon,
             _paths(site, common.days),
-            [track(date(YEAR, *day), *where) for day in HOUR_LINES],
+            [track(date(TYPICAL_SUN_YEAR, *day), *where) for day in HOUR_LINES],
             plane=plane,
             clock=not solar,
         )

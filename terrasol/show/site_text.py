@@ -184,7 +184,7 @@ def month_rows(site: Site) -> list[tuple[str, ...]]:
     """
     energy, sun = site.energy, site.sun
     here, level = energy.place.sum(axis=0), energy.level.sum(axis=0)
-    rows = []
+    rows: list[tuple[str, ...]] = []
     for k, (label, (_, month)) in enumerate(
         zip(month_labels(energy.settings), energy.settings.period.months, strict=True)
     ):
@@ -210,7 +210,7 @@ def month_head(site: Site) -> tuple[str, ...]:
     """Heads of `month_rows`."""
     return (
         "", site.energy.settings.unit, "level", "% of it", "sun h/day",
-        f"first {CHOSEN_DAY}th".replace("1th", "1st"), "last",
+        f"first {CHOSEN_DAY}st", "last",
     )  # fmt: skip
 
 

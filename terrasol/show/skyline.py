@@ -86,6 +86,7 @@ def draw_skyline(
         Name the paths, and write degrees beside the directions; without, for small panels.
     """
     axes, thin = panel.axes, POINTS_PER_PIXEL
+    panel.page.axes.set_zorder(5)  # words lie over the diagram
     middle = sum(axes.get_xlim()) / 2.0
     panel.y_ticks(steps(*axes.get_ylim(), 5))
     around, skyline = _around(horizon)
@@ -109,7 +110,8 @@ def draw_skyline(
 
 def _around(horizon: Values) -> tuple[Values, Values]:
     """Azimuths from -360 to 720 and a ring of values along them."""
-    azimuth = np.arange(-horizon.size, 2 * horizon.size + 1) * (360.0 / horizon.size)
+    count = horizon.size
+    azimuth = np.arange(-count, 2 * count + 1, dtype=np.float64) * (360.0 / count)
     return azimuth, np.append(np.tile(horizon, 3), horizon[0])
 
 
