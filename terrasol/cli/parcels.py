@@ -521,6 +521,7 @@ class _Job:
         from terrasol.engine.parcel_tables import (
             column_rows,
             doubt_rows,
+            patch_rows,
             row_rows,
             size_rows,
             table_rows,
@@ -528,11 +529,13 @@ class _Job:
         from terrasol.files.parcel_tables import table_csv, write_layer
 
         rows = table_rows(found)
+        elevation, place = self.ground.elevation, delivery.staged(LAYER)
         try:
-            write_layer(
-                delivery.staged(LAYER), "parcels", self.ground.elevation.crs,
-                [parcel.outline for parcel in found.order], rows,
-            )  # fmt: skip
+            outlines = [parcel.outline for parcel in found.order]
+            write_layer(place, "parcels", elevation.crs, outlines, rows)
+            if found.settings.asked.rule is not None:
+                patches = patch_rows(found, elevation.transform)
+                write_layer(place, "rule", elevation.crs, *patches, append=True)
         except Exception as error:  # of GDAL, pyogrio and the disk
             raise delivery.refusal(LAYER, error) from error
         tables = {TABLE: rows, COLUMNS: column_rows(found)}

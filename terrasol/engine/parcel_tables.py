@@ -6,9 +6,12 @@ from dataclasses import replace
 from typing import Any, Final
 
 import numpy as np
+import shapely
 
-from terrasol.engine.parcel_figures import Figure
+from terrasol.engine.parcel_figures import HECTARE, Figure
 from terrasol.engine.parcels import Parcel, Survey
+from terrasol.files.vectors import patch_outlines
+from terrasol.ground.elevation import Affine6
 from terrasol.practice.rows import SURFACES
 
 Row = dict[str, Any]
@@ -74,6 +77,23 @@ def _ranks(survey: Survey, parcel: Parcel) -> Row:
     return {"rank": rank or None, "score": float(ranking.total[place]), **terms}
 
 
+def patch_rows(survey: Survey, transform: Affine6) -> tuple[list[Any], list[Row]]:
+    """Outlines of the patches that meet the rule, clipped to their parcel, and a row for each."""
+    outlines, rows = [], []
+    for parcel in survey.order:
+        if parcel.patches is None:
+            continue
+        window = parcel.piece.window
+        traced = patch_outlines(parcel.patches.label, transform, (window.row, window.column))
+        for label, outline in sorted(traced.items()):
+            clipped = shapely.intersection(outline, parcel.outline)
+            parts = [p for p in shapely.get_parts(clipped) if p.geom_type == "Polygon"]
+            area = float(parcel.patches.areas[label - 1]) / HECTARE
+            outlines.append(shapely.MultiPolygon(parts))
+            rows.append({"parcel": parcel.name, "patch": label, "area_ha_map": area})
+    return outlines, rows
+
+
 def size_rows(survey: Survey) -> list[Row]:
     """One row a parcel and cell size, the raster's own first."""
     rows = []
@@ -119,6 +139,10 @@ _OWN = (
     Figure("parcel", "", "", "name, made unique"),
     Figure("rank", np.nan, "1", "1 for the highest score; equal scores share a rank"),
     Figure("score", np.nan, "1", ""),
+)
+_PATCHES = (
+    Figure("patch", np.nan, "1", "1 for the largest, in the layer rule of parcels.gpkg"),
+    Figure("area_ha_map", np.nan, "ha", "area of a patch that meets the rule", "map"),
 )
 _SIZES = (Figure("cell_m", np.nan, "m", "cell size on the ground, in cell_sizes.csv"),)
 _ROWS = (
@@ -170,6 +194,7 @@ def column_rows(survey: Survey) -> list[Row]:
             words = "its standard error, from the stated error of the heights"
             figures.append(replace(figure, name=f"{figure.name}_se", meaning=words))
     figures += [
+        *(_PATCHES if survey.settings.asked.rule else ()),
         *(_SIZES if survey.settings.coarser else ()),
         *(_ROWS if survey.settings.rows else ()),
         *(_DOUBTS if survey.settings.error else ()),

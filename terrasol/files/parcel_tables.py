@@ -77,7 +77,8 @@ def write_layer(
     geometries : sequence of shapely geometries
         Polygons and multipolygons.
     rows : sequence of mapping
-        One a geometry, all with the same names; unknown numbers become null.
+        One a geometry, all with the same names; unknown numbers become null. Without any, no
+        layer is written.
     append : bool
         Add the layer to a file.
 
@@ -88,6 +89,8 @@ def write_layer(
     """
     import geopandas
 
+    if not rows:
+        return
     names = list(dict.fromkeys(name for row in rows for name in row))
     table = {
         (f"{name}_" if name.lower() in GEOMETRY else name): [rounded(row.get(name)) for row in rows]

@@ -15,6 +15,8 @@ import shapely
 from numpy.typing import NDArray
 from pyproj import CRS, Transformer
 from pyproj.exceptions import CRSError, ProjError
+from rasterio import Affine
+from rasterio.features import shapes as traced
 
 from terrasol.errors import InputError, SettingError, counted
 from terrasol.files.rasters import naming
@@ -489,3 +491,32 @@ def _nothing() -> Cells:
     """No cell at all."""
     none = np.empty(0, np.intp)
     return Cells(none, none, np.empty(0), 0.0)
+
+
+def patch_outlines(
+    labels: NDArray[np.integer], transform: Affine6, corner: tuple[int, int]
+) -> dict[int, Any]:
+    """Trace the outlines of cells with the same label.
+
+    Parameters
+    ----------
+    labels : ndarray of int, shape (rows, columns)
+        A window of a raster; 0 is no patch.
+    transform : tuple of six floats
+        Of the whole raster.
+    corner : tuple of int
+        Row and column of the window's first cell in it.
+
+    Returns
+    -------
+    dict of shapely geometries
+        By label, in the raster's CRS; cells that touch at a corner alone make two parts.
+    """
+    a, b, c, d, e, f = transform
+    row, column = corner
+    grid = Affine(a, b, c + a * column + b * row, d, e, f + d * column + e * row)
+    values = np.ascontiguousarray(labels, np.int32)
+    parts: dict[int, list[Any]] = {}
+    for shape, label in traced(values, mask=values > 0, connectivity=4, transform=grid):
+        parts.setdefault(int(label), []).append(shapely.geometry.shape(shape))
+    return {label: shapely.union_all(found) for label, found in parts.items()}

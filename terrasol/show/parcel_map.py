@@ -141,19 +141,34 @@ def _hatch(axes: Axes, parcel: Parcel, ground: GroundMap, patch: PathPatch) -> N
     """Hatch the cells that do not meet the rule."""
     assert parcel.patches is not None
     window = parcel.piece.window
-    rows, columns = np.nonzero(parcel.piece.known & ~parcel.patches.kept)
-    if not rows.size:
+    first, last = _runs(parcel.piece.known & ~parcel.patches.kept)
+    if not len(first):
         return
-    corners = np.array([(0, 0), (0, 1), (1, 1), (1, 0), (0, 0)], float) - 0.5
-    at = np.column_stack([rows + window.row, columns + window.column])[:, None] + corners
-    places = np.stack(ground.metres(at[..., 0], at[..., 1]), axis=-1).reshape(-1, 2)
-    codes = [Path.MOVETO, Path.LINETO, Path.LINETO, Path.LINETO, Path.CLOSEPOLY] * rows.size
+    top, left = first.T + np.array([[window.row - 0.5], [window.column - 0.5]])
+    right = last + window.column - 0.5
+    rows = np.column_stack([top, top, top + 1.0, top + 1.0, top])
+    columns = np.column_stack([left, right, right, left, left])
+    places = np.stack(ground.metres(rows, columns), axis=-1).reshape(-1, 2)
+    codes = [Path.MOVETO, Path.LINETO, Path.LINETO, Path.LINETO, Path.CLOSEPOLY] * len(first)
     hatched = PathPatch(
         Path(places, codes), facecolor="none", edgecolor=HATCH, linewidth=0.0, hatch="/////",
         zorder=4,
     )  # fmt: skip
     axes.add_patch(hatched)
     hatched.set_clip_path(patch)
+
+
+def _runs(mask: NDArray[np.bool_]) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+    """Runs of true cells along the rows: (row, first column), and the column after the last.
+
+    Examples
+    --------
+    >>> first, last = _runs(np.array([[True, True, False, True]]))
+    >>> first.tolist(), last.tolist()
+    ([[0, 0], [0, 3]], [2, 4])
+    """
+    edges = np.diff(np.pad(mask.astype(np.int8), ((0, 0), (1, 1))), axis=1)
+    return np.argwhere(edges == 1), np.argwhere(edges == -1)[:, 1]
 
 
 def draw_contours_around(

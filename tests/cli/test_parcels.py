@@ -91,9 +91,15 @@ def test_tables_agree_with_each_other(whole):
     for row in table:
         terms = float(row["score_term_1"]) + float(row["score_term_2"])
         assert terms == pytest.approx(float(row["score"]), rel=1e-5)
-    layer = geopandas.read_file(whole / "parcels.gpkg")
+    layer = geopandas.read_file(whole / "parcels.gpkg", layer="parcels")
     assert layer["parcel"].tolist() == [row["parcel"] for row in table]
     assert layer.crs == UTM
+    patches = geopandas.read_file(whole / "parcels.gpkg", layer="rule")
+    for row in table:
+        mine = patches[patches["parcel"] == row["parcel"]]
+        assert mine["area_ha_map"].sum() == pytest.approx(float(row["rule_ha_map"]), rel=1e-5)
+        drawn = mine.geometry.area.sum() * 0.9996**-2 / 1e4
+        assert drawn == pytest.approx(float(row["rule_ha_map"]), rel=1e-4)
     for column in ("map_area_ha", "rule_ha_map", "winkler_mean_c_days", "rule_ha_map_se"):
         found = [float(row[column]) for row in table]
         assert layer[column].tolist() == pytest.approx(found, rel=1e-6)
@@ -104,7 +110,7 @@ def test_tables_agree_with_each_other(whole):
 
 
 def test_area_in_the_layer_is_that_of_the_outline(whole):
-    layer = geopandas.read_file(whole / "parcels.gpkg")
+    layer = geopandas.read_file(whole / "parcels.gpkg", layer="parcels")
     scale = 0.9996**-2
     expected = (layer.geometry.area * scale / 1e4).tolist()
     assert layer["map_area_ha"].tolist() == pytest.approx(expected, rel=1e-4)
@@ -253,7 +259,16 @@ def test_nothing_is_overwritten_unasked_and_no_input_ever(places, tmp_path, caps
     assert main(["parcels", str(dem), str(shapes), str(out), *plain, "--overwrite"]) == 0
     assert (out / "parcels.csv").read_text().startswith("parcel,")
     capsys.readouterr()
-    again = ["parcels", str(dem), str(out / "parcels.gpkg"), str(out), *plain, "--overwrite"]
+    again = [
+        "parcels",
+        str(dem),
+        str(out / "parcels.gpkg"),
+        str(out),
+        "--layer",
+        "parcels",
+        *plain,
+        "--overwrite",
+    ]
     assert main(again) == 4
     assert "is the input itself" in capsys.readouterr().err
 

@@ -11,7 +11,7 @@ import shapely
 from pyproj import CRS, Transformer
 
 from terrasol.errors import InputError, SettingError
-from terrasol.files.vectors import Polygons, coverage, read_polygons
+from terrasol.files.vectors import Polygons, coverage, patch_outlines, read_polygons
 
 UTM = CRS("EPSG:32632")
 SQUARE = shapely.box(620000.0, 5150000.0, 620100.0, 5150200.0)
@@ -222,3 +222,22 @@ def test_holes_are_not_covered():
     )
     whole, _ = covered(ring)
     assert whole.sum() == pytest.approx(36.0 - 4.0)
+
+
+@pytest.mark.parametrize("turn", [0.0, 30.0])
+def test_outlines_of_patches_are_those_of_their_cells(turn):
+    labels = np.array([[1, 1, 0, 2], [0, 1, 0, 2], [2, 0, 0, 0]])
+    angle = np.radians(turn)
+    a, d = 10 * np.cos(angle), 10 * np.sin(angle)
+    grid = (a, d, 620000.0, d, -a, 5150100.0)
+    found = patch_outlines(labels, grid, (3, 5))
+    assert sorted(found) == [1, 2]
+    assert found[1].area == pytest.approx(300.0)
+    assert len(shapely.get_parts(found[2])) == 2
+    for label, outline in found.items():
+        moved = Polygons(("it",), (outline,), UTM)
+        cells, _ = coverage(moved, grid, (20, 20))
+        whole = np.zeros((20, 20))
+        whole[cells[0].rows, cells[0].columns] = cells[0].fraction
+        assert np.allclose(whole[3:6, 5:9], labels == label, atol=1e-5)
+        assert whole.sum() == pytest.approx((labels == label).sum(), abs=1e-4)
