@@ -126,7 +126,7 @@ class Setting(click.ParamType):
     is_flag=False,
     flag_value=USUAL,
     help="Fit two or three numbers, joined by commas, to the snow water that STATION observed, and"
-    " use them; without names the melt factors and the snow factor.",
+    " use them; without names the melt by light (degree-days: by warmth) and the snow factor.",
 )
 @click.option(
     "--from-state",
@@ -628,7 +628,8 @@ def _agreement_rows(station: dict[str, Any]) -> list[tuple[str, str]]:
             for part in fit["split_sample"]
         ]
         if fit["at_bound"]:
-            rows.append(("fitted", f"on its bound, so not told by the data: {fit['at_bound']}"))
+            names = " and ".join(fit["at_bound"])
+            rows.append(("doubt", f"{names} came to lie on a bound: the data do not tell it"))
     if "at_station" in station:
         rows.append(("at station", _words(station["at_station"])))
     return rows

@@ -26,6 +26,15 @@ FIT_RANGES: Final = {
 """Bounds of a fit, narrower than what is taken (judgement, no source; Jennings et al. 2018 find
 -0.4 to 2.4 degC where rain and snow are even)."""
 
+USUAL: Final = {
+    "enhanced": ("radiation_factor", "snow_factor"),
+    "hock": ("hock_radiation_factor", "snow_factor"),
+    "degree-days": ("degree_day_factor", "snow_factor"),
+}
+"""What a fit changes unless told. The snow water of one level station cannot tell melt by warmth
+from melt by light: with both factors free the one of light goes to 0 (docs/validation.md),
+and slopes would then all melt alike. So the light's is fitted and the other kept (judgement)."""
+
 FEWEST_DAYS: Final = 20
 """Observed days under which nothing is fitted (judgement)."""
 
@@ -213,14 +222,14 @@ class Fit:
 
 
 def numbers_to_fit(model: SnowModel, asked: Sequence[str] = ()) -> tuple[str, ...]:
-    """Names of two or three numbers: those asked for, or the melt factors and the snow factor.
+    """Names of two or three numbers: those asked for, or `USUAL`.
 
     Raises
     ------
     SettingError
         Unknown names, one alone, more than three, or factors of another melt model.
     """
-    names = tuple(asked) or (*MELT_NUMBERS[model.melt], "snow_factor")
+    names = tuple(asked) or USUAL[model.melt]
     mine = (*MELT_NUMBERS[model.melt], "snow_factor", "rain_snow_middle")
     if len(set(names)) < len(names) or not 2 <= len(names) <= 3 or not set(names) <= set(mine):
         raise SettingError(
