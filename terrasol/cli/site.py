@@ -348,7 +348,7 @@ class _Job:
                 "results": {"places": [each.record() for each in sites]},
                 "warnings": [
                     *self.ground.elevation.warnings, *scene.warnings, *settled.warnings,
-                    *self.asked.doubts(self.ground.frame),
+                    *self.asked.doubts(self.ground.frame), *self._error_doubts(),
                 ],
                 "seconds": {
                     "reading": round(self.ground.seconds, 2), "whole run": round(seconds, 2),
@@ -359,6 +359,15 @@ class _Job:
                 record = self._deliver(delivery, record, sites, notes)
             move(1.0, "done")
         return record, sites
+
+    def _error_doubts(self) -> list[str]:
+        """A warning where the stated error of the heights cannot be right."""
+        from terrasol.ground.likely import too_smooth
+
+        if self.error is None:
+            return []
+        doubt = too_smooth(self.ground.elevation.heights, self.error, self.ground.frame.cell_size)
+        return [doubt] if doubt else []
 
     def _delivery(self) -> AbstractContextManager[Delivery | None]:
         """Where files go; nothing without a folder."""
