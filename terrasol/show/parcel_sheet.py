@@ -9,6 +9,7 @@ from typing import Final
 import numpy as np
 from matplotlib import style
 from matplotlib.patches import Wedge
+from numpy.typing import NDArray
 
 from terrasol import __version__
 from terrasol.engine.outputs import MONTH_NAMES
@@ -45,6 +46,9 @@ SUNNY, LEVEL, SEASON_OFF = "#c4633f", "#24262b", "#dcb6a3"
 
 RIGHT_SIDE, LEFT_SIDE, BOTH = "#b2551f", "#2f6690", "#24262b"
 """Colours of the two sides of a row and of their mean."""
+
+UNKNOWN: Final = "nothing of the ground is known"
+"""What stands in place of a diagram of void ground."""
 
 SUN_YEAR: Final = 2025
 """Whose sun the paths show where the period is a typical year."""
@@ -102,11 +106,10 @@ def _head(page: Page, survey: Survey, parcel: Parcel, title: str) -> None:
     page.text(MARGIN, 58, clip(parcel.name, TITLE, INNER - 150, bold=True), TITLE, bold=True)
     piece = parcel.piece
     north, east = ("N" if piece.latitude >= 0 else "S"), ("E" if piece.longitude >= 0 else "W")
-    words = (
-        f"{title}  ·  {abs(piece.latitude):.4f}° {north}, {abs(piece.longitude):.4f}° {east}  ·"
-        f"  {parcel.numbers['height_least_m']:.0f} to"
-        f" {parcel.numbers['height_greatest_m']:.0f} m"
-    )
+    n = parcel.numbers
+    words = f"{title}  ·  {abs(piece.latitude):.4f}° {north}, {abs(piece.longitude):.4f}° {east}"
+    if np.isfinite(n["height_least_m"]):
+        words += f"  ·  {n['height_least_m']:.0f} to {n['height_greatest_m']:.0f} m"
     page.text(MARGIN, 79, clip(words, TEXT, INNER - 150), TEXT, colour=SOFT)
     if survey.ranking is not None:
         place = next(k for k, each in enumerate(survey.parcels) if each is parcel)
@@ -114,7 +117,7 @@ def _head(page: Page, survey: Survey, parcel: Parcel, title: str) -> None:
         x = WIDTH - MARGIN
         text = f"{rank} of {len(survey.parcels)}" if rank else "no rank"
         page.text(x, 58, text, TITLE, bold=True, across="right")
-        score = f"by score {survey.ranking.total[place]:.4g}"
+        score = f"by score {survey.ranking.total[place]:.4g}" if rank else "its score is unknown"
         page.text(x, 79, score, TEXT, colour=SOFT, across="right")
     page.lines([[(MARGIN, 90), (WIDTH - MARGIN, 90)]], colour=SOFT, line=0.8)
 
@@ -137,26 +140,26 @@ def _map(page, survey, parcel, elevation, frame, box) -> None:
     step = draw_contours_around(panel.axes, elevation, ground, limits)
     draw_parcel(panel.axes, parcel, path, ground, survey.settings.asked.slope_edges)
     panel.limits(*limits)
-    scale_and_north(page, panel, limits)
+    scale_and_north(page, panel, limits, y + height + 24)
     notes = [] if step is None else [f"contours every {step:g} m"]
     if parcel.patches is not None:
-        notes.append("hatched: ground that does not meet the rule")
+        notes.append("hatched: does not meet the rule")
+    if parcel.numbers["unknown_ha_map"] > 0.0:
+        notes.append("blank: unknown")
     page.text(x, y + height + 24, "  ·  ".join(notes), SMALL, colour=SOFT)
 
 
-def scale_and_north(page: Page, panel: Panel, limits) -> None:
-    """Scale bar and arrow in the corners of the map."""
+def scale_and_north(page: Page, panel: Panel, limits: NDArray[np.float64], y: float) -> None:
+    """Scale bar below the map at a height, right-aligned, and an arrow in the map's corner."""
     metres = limits[1] - limits[0]
     length = scale_length(metres)
     pixels = length / metres * panel.width
-    left, base = panel.x + 10, panel.y + panel.height - 10
-    page.box(left - 4, base - 20, pixels + 8, 25, fill=PAPER)
-    page.lines([[(left, base), (left + pixels, base)]], colour=INK, line=2.4)
-    page.text(left, base - 6, f"{length:g} m", SMALL)
-    tip = panel.x + panel.width - 16, panel.y + 12
-    page.shape([(tip[0], tip[1]), (tip[0] - 6, tip[1] + 20), (tip[0], tip[1] + 15),
-                (tip[0] + 6, tip[1] + 20)], fill=INK)  # fmt: skip
-    page.text(tip[0], tip[1] + 32, "N", SMALL, bold=True, across="center", halo=PAPER)
+    right = panel.x + panel.width
+    page.lines([[(right - pixels, y - 3), (right, y - 3)]], colour=INK, line=2.4)
+    page.text(right - pixels - 6, y, f"{length:g} m", SMALL, across="right")
+    x, top = right - 16, panel.y + 12
+    page.shape([(x, top), (x - 6, top + 20), (x, top + 15), (x + 6, top + 20)], fill=INK)
+    page.text(x, top + 32, "N", SMALL, bold=True, across="center", halo=PAPER)
 
 
 def _facts(page: Page, survey: Survey, parcel: Parcel, x: float, y: float) -> None:
@@ -235,6 +238,8 @@ def _azimuth(value: float) -> str:
 
 def _faces(numbers: dict[str, float]) -> str:
     """The mean aspect, and how much of one mind the ground is."""
+    if not np.isfinite(numbers["slope_mean_percent"]):
+        return "unknown"
     if not np.isfinite(numbers["aspect_mean_deg"]):
         return "nowhere (flat)"
     degrees = numbers["aspect_mean_deg"]
@@ -374,7 +379,8 @@ def _days(page: Page, survey: Survey, parcel: Parcel, box) -> None:
     last = _monthly(parcel, "last_sun_{}_h", survey)
     heading(page, x, y - 14, "First and last sun", f"{_days_words(survey)}, {clock.words}")
     if not np.isfinite(first).any():
-        page.text(x, y + height / 2, "no direct sun on these days", TEXT, colour=SOFT)
+        words = "no direct sun on these days" if parcel.piece.known.any() else UNKNOWN
+        page.text(x, y + 20, words, TEXT, colour=SOFT)
         return
     panel = Panel(page, x, y, width, height, tick=TICK)
     low, high = np.floor(np.nanmin(first)) - 1.2, np.ceil(np.nanmax(last)) + 1.0
@@ -418,6 +424,9 @@ def _skyline(page: Page, survey: Survey, parcel: Parcel, box) -> None:
     heading(page, x - 22, y - 14, "Horizon from its middle, and the sun",
             "degrees above the level; hours in true solar time")  # fmt: skip
     piece, clock = parcel.piece, survey.settings.hours.clock
+    if not np.isfinite(parcel.horizon).all():
+        page.text(x - 22, y + 20, UNKNOWN, TEXT, colour=SOFT)
+        return
     period = survey.settings.asked.period
     year = SUN_YEAR if period.typical else period.months[-1][0]
     place = piece.latitude, (piece.longitude + 180.0) % 360.0 - 180.0, piece.height
@@ -434,7 +443,7 @@ def _rows(page: Page, survey: Survey, parcel: Parcel, box) -> None:
     asked = survey.settings.rows
     if asked is None or parcel.rows is None:
         heading(page, x - 34, y - 14, "Direction of rows")
-        words = "no row spacing was given" if asked is None else "nothing of the ground is known"
+        words = "no row spacing was given" if asked is None else UNKNOWN
         page.text(x - 34, y + 8, words, TEXT, colour=SOFT)
         return
     rows = parcel.rows

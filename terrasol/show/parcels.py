@@ -76,7 +76,7 @@ def summary_page(survey: Survey, elevation: Elevation, frame: Frame, *, title: s
     with style.context("default"):
         _head(page, survey, title)
         _map(page, survey, elevation, frame)
-        _legend(page, survey, 90 + MAP_HEIGHT + 28)
+        _legend(page, survey, 90 + MAP_HEIGHT + 38)
         bottom = _table(page, survey)
         _score(page, survey, bottom + 22)
         _foot(page, survey)
@@ -115,10 +115,10 @@ def _map(page: Page, survey: Survey, elevation: Elevation, frame: Frame) -> None
         box = path.get_extents()
         x, y = panel.place(box.x1, (box.y0 + box.y1) / 2.0)
         page.text(x + 4, y + 4, f"{number}", TEXT, bold=True, halo=PAPER)
-    scale_and_north(page, panel, limits)
+    scale_and_north(page, panel, limits, 94 + MAP_HEIGHT + 14)
     if step is not None:
-        words = f"contours every {step:g} m"
-        page.text(WIDTH - MARGIN, 94 + MAP_HEIGHT + 14, words, SMALL, colour=SOFT, across="right")
+        words = f"contours every {step:g} m; numbers as in the table"
+        page.text(MARGIN, 94 + MAP_HEIGHT + 14, words, SMALL, colour=SOFT)
 
 
 def _legend(page: Page, survey: Survey, y: float) -> None:

@@ -1,0 +1,154 @@
+"""Sheets and summary of parcels: drawn for every kind of parcel, true to the ground."""
+
+from __future__ import annotations
+
+import numpy as np
+import pytest
+import shapely
+from engine.made_parcels import UTM, asked_for, box, parcels, plane
+
+from terrasol.engine.parcel_figures import Warmth
+from terrasol.engine.parcel_rows import RowSettings
+from terrasol.engine.parcels import survey
+from terrasol.ground.elevation import Elevation
+from terrasol.ground.frame import make_frame
+from terrasol.practice.limits import VINEYARD
+from terrasol.practice.season import SOUTHERN_SEASON
+from terrasol.practice.temperatures import from_monthly
+from terrasol.show.page import book
+from terrasol.show.parcel_map import (
+    GroundMap,
+    frame_around,
+    outline_path,
+    scale_length,
+    slope_colours,
+)
+from terrasol.show.parcel_sheet import facts, parcel_page
+from terrasol.show.parcels import MOST_ROWS, summary_page
+
+WARMTH = Warmth(from_monthly(np.full(12, 15.0), height=500.0, highest=np.full(12, 20.0)))
+
+
+def frame_of(ground):
+    return make_frame(ground.shape, ground.transform, ground.crs)
+
+
+def all_words(page):
+    """All text of a page, lines joined."""
+    found = [a.get_text() for a in page.axes.get_children() if hasattr(a, "get_text")]
+    return " ".join(" ".join(found).split())
+
+
+def test_a_sheet_says_what_was_found_and_what_is_not_in_it():
+    ground = plane(12.0, 180.0)
+    settings = asked_for(
+        coarser=(2,), warmth=WARMTH, rule="slope_percent < 15", rows=RowSettings(2.0, 1.3, 0.4),
+        score="rule_ha_map",
+    )  # fmt: skip
+    found = survey(ground, parcels(box(-100, -50, 105, 50)), settings)
+    page = parcel_page(found, found.parcels[0], ground, frame_of(ground), title="Test")
+    words = all_words(page)
+    for part in ("P0", "2.05 ha", "12.0 %", "1 of 1", "Rule: slope_percent < 15", "Ia", "20 m"):
+        assert part in words, part
+    assert VINEYARD in words
+    assert "potential" in words
+    assert page.png().startswith(b"\x89PNG")
+
+
+def test_every_kind_of_parcel_is_drawn():
+    """Flat, void, half outside, in two parts, with a hole; and none of the options."""
+    ground = plane(12.0, 180.0)
+    ground.heights[:20] = 520.0
+    ground.heights[60:, :20] = np.nan
+    ring = box(100, 0, 200, 100).difference(box(130, 30, 170, 70))
+    two = shapely.union_all([box(-100, -50, -50, 0), box(0, -50, 50, 0)])
+    shapes = parcels(
+        box(-100, 250, 100, 350), box(-390, -390, -250, -300), box(350, 0, 500, 50), two, ring
+    )
+    found = survey(ground, shapes, asked_for(coarser=(4,)))
+    frame = frame_of(ground)
+    pages = [parcel_page(found, each, ground, frame, title="Test") for each in found.parcels]
+    assert "nowhere (flat)" in all_words(pages[0])
+    assert "unknown" in all_words(pages[1])
+    assert "Unknown ground" in all_words(pages[1])
+    assert "Outside the raster" in all_words(pages[2])
+    assert "no row spacing was given" in all_words(pages[3])
+    assert "no temperatures were given" in all_words(pages[4])
+    for page in pages:
+        assert "nan" not in all_words(page).lower().replace("nanometre", "")
+    pages.insert(0, summary_page(found, ground, frame, title="Test"))
+    assert "no score" in all_words(pages[0])
+    assert VINEYARD in all_words(pages[0])
+    bound = book(pages, Title="Test")
+    assert bound.startswith(b"%PDF")
+    assert bound.count(b"/Type /Page ") == 6
+
+
+def test_a_page_is_the_same_again():
+    ground = plane(12.0, 180.0)
+    found = survey(ground, parcels(box(0, 0, 60, 60)), asked_for(coarser=()))
+    frame = frame_of(ground)
+    one, two = (book([summary_page(found, ground, frame, title="T")]) for _ in range(2))
+    assert one == two
+
+
+def test_south_of_the_equator_with_a_period_and_a_measured_month():
+    north = plane(12.0, 0.0)
+    ground = Elevation(north.heights, (*north.transform[:5], 6200400.0), north.crs)
+    ground = Elevation.from_array(ground.heights, ground.transform, "EPSG:32732")
+    there = parcels(shapely.affinity.translate(box(0, 0, 60, 60), 0, 6200400.0 - 5100400.0),
+                    crs="EPSG:32732")  # fmt: skip
+    settings = asked_for("2023-07/2024-06", season=SOUTHERN_SEASON, coarser=())
+    found = survey(ground, there, settings)
+    words = all_words(parcel_page(found, found.parcels[0], ground, frame_of(ground), title="T"))
+    assert "October 2023 to April 2024" in words
+    assert "° S" in words
+
+
+def test_long_lists_are_cut_and_said_so():
+    ground = plane(12.0, 180.0)
+    shapes = [box(-390 + 30 * k, 0, -370 + 30 * k, 20) for k in range(MOST_ROWS + 2)]
+    found = survey(ground, parcels(*shapes), asked_for(coarser=(), score="map_area_ha"))
+    page = summary_page(found, ground, frame_of(ground), title="Test")
+    assert "and 2 more, in parcels.csv" in all_words(page)
+
+
+def test_standard_errors_stand_behind_their_figures():
+    from terrasol.ground.uncertainty import DemError
+
+    ground = plane(14.5, 180.0)
+    settings = asked_for(coarser=(), rule="slope_percent < 15", error=DemError(0.3, 0.0, 2))
+    found = survey(ground, parcels(box(0, 0, 60, 60)), settings)
+    told = dict(facts(found, found.parcels[0]))
+    assert " ± " in told["Meets the rule"]
+    assert " ± " in told["Slope, mean"]
+    words = all_words(parcel_page(found, found.parcels[0], ground, frame_of(ground), title="T"))
+    assert "± one standard error" in words
+
+
+@pytest.mark.parametrize("turn", [0.0, 40.0])
+def test_the_map_is_true_and_north_up(turn):
+    """The outline of a square on a turned grid is a square of its size, corners to true north."""
+    angle = np.radians(turn)
+    a, d = 10.0 * np.cos(angle), 10.0 * np.sin(angle)
+    grid = (a, d, 500000.0, d, -a, 5100000.0)
+    ground = Elevation.from_array(np.zeros((40, 40)), grid, UTM)
+    frame = frame_of(ground)
+    x = grid[0] * 20 + grid[1] * 20 + grid[2]
+    y = grid[3] * 20 + grid[4] * 20 + grid[5]
+    path = outline_path(
+        shapely.box(x - 50, y - 50, x + 50, y + 50), ground, GroundMap.at(frame, 19.5, 19.5)
+    )
+    box_ = path.get_extents()
+    # UTM's metre is 0.04 % short there, and its grid points north.
+    assert box_.width == pytest.approx(100.0 / 0.9996, rel=1e-4)
+    assert box_.height == pytest.approx(100.0 / 0.9996, rel=1e-4)
+    limits = frame_around([path], 300.0, 200.0)
+    assert (limits[1] - limits[0]) / (limits[3] - limits[2]) == pytest.approx(1.5)
+
+
+def test_scale_bar_and_colours():
+    assert scale_length(1000.0) == 200.0
+    assert scale_length(160.0) == 50.0
+    assert len(set(slope_colours(6))) == 6
+    assert len(slope_colours(1)) == 1
