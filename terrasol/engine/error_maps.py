@@ -14,10 +14,9 @@ from terrasol.engine.job import STARTUP_SECONDS, Plan, Summary
 from terrasol.engine.plan import Progress
 from terrasol.engine.spread import Running, RunningAngle
 from terrasol.engine.totals import Totals
-from terrasol.engine.uncertainty import moved, realisations, with_tables
+from terrasol.engine.uncertainty import doubts_of_error, moved, realisations, with_tables
 from terrasol.errors import counted
 from terrasol.files.layers import Layer, Sink
-from terrasol.ground.likely import too_smooth
 from terrasol.ground.uncertainty import DemError, field_bytes
 
 SUFFIX: Final = "_standard_error"
@@ -198,9 +197,7 @@ class _ErrorRun:
             f" {plan.error.words(cell_size)}; on average it adds {' and '.join(said)}, and about as"
             " much may be in the maps from the error that the heights have already"
         )
-        doubt = too_smooth(plan.elevation.heights, plan.error, cell_size)
-        if doubt:
-            summary.warnings.append(doubt)
+        summary.warnings += doubts_of_error(plan.elevation, plan.error)
 
 
 class _FlatKeeper:

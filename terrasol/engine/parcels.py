@@ -14,6 +14,7 @@ from terrasol.engine.job import NO_SCENE, plan_terrain
 from terrasol.engine.parcel_cells import Piece, SceneOf, pieces_of
 from terrasol.engine.parcel_errors import Doubt, doubts_of
 from terrasol.engine.parcel_figures import (
+    LAPSE_EFFECT,
     QUANTITIES,
     WARM_QUANTITIES,
     Asked,
@@ -25,6 +26,7 @@ from terrasol.engine.parcel_figures import (
 )
 from terrasol.engine.parcel_rows import Rows, RowSettings, row_figures, rows_of
 from terrasol.engine.plan import Block, Progress, carry_out, default_threads
+from terrasol.engine.uncertainty import doubts_of_error
 from terrasol.engine.windows import collect
 from terrasol.errors import SettingError
 from terrasol.files.vectors import Polygons
@@ -40,6 +42,10 @@ from terrasol.practice.rules import Patches
 
 COARSER: Final = (2, 4)
 """Cells joined along a side for the two coarser looks at the same ground (judgement)."""
+
+LARGE_EFFECT: Final = 100.0
+"""Degree-days that 1 K km-1 of lapse rate may move without a warning: a third of a class of
+Winkler's (judgement, no source)."""
 
 HORIZON_AZIMUTHS: Final = 256
 """Azimuths of the horizon that a sheet shows."""
@@ -257,7 +263,8 @@ def survey(
         assert level is not None
         coarse = [(size, _figures(each[k], level, settings.asked)) for size, each in looks[1:]]
         parcels.append(_parcel(piece, polygons.geometries[k], level, coarse, horizon, settings))
-    found = _ranked(parcels, settings, looks[0][0], [*polygons.warnings, *warnings])
+    warnings = (*polygons.warnings, *warnings, *doubts_of_error(elevation, settings.error))
+    found = _ranked(parcels, settings, looks[0][0], [*warnings, *_doubts_of_lapse(parcels)])
     if settings.error is not None:
         found = _doubted(
             found, elevation, settings.error, scene_of, threads,
@@ -295,6 +302,18 @@ def _looks(
         frame = make_frame(ground.shape, ground.transform, ground.crs)
         looks.append((float(np.sqrt(np.prod(frame.cell_size))), pieces))
     return looks, levels, warnings
+
+
+def _doubts_of_lapse(parcels: Sequence[Parcel]) -> list[str]:
+    """Warn of degree-days that hang on the lapse rate more than on the station."""
+    effects = [abs(parcel.numbers.get(LAPSE_EFFECT, 0.0)) for parcel in parcels]
+    most = float(np.nanmax(effects)) if np.isfinite(effects).any() else 0.0
+    if most <= LARGE_EFFECT:
+        return []
+    return [
+        f"the station stands so far above or below the parcels that 1 K/km of lapse rate moves"
+        f" their degree-days by up to {most:.0f}: take a nearer station, or a measured lapse rate"
+    ]
 
 
 def _warm(pieces: Sequence[Piece | None], warmth: Warmth | None) -> None:

@@ -17,7 +17,7 @@ from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import make_frame
 from terrasol.ground.horizon import Obstacles
-from terrasol.ground.likely import likely_heights
+from terrasol.ground.likely import likely_heights, too_smooth
 from terrasol.ground.uncertainty import DemError, error_fields
 
 HEADROOM: Final = 6.0
@@ -179,6 +179,28 @@ def propagate_all(
         if progress is not None:
             progress(done)
     return {name: tally.spread() for name, tally in tallies.items()}
+
+
+def doubts_of_error(elevation: Elevation, error: DemError | None) -> tuple[str, ...]:
+    """Say where a stated error contradicts the ground; nothing if no error is stated.
+
+    Parameters
+    ----------
+    elevation : Elevation
+        The ground as it is known.
+    error : DemError or None
+        Its error.
+
+    Returns
+    -------
+    tuple of str
+        What a careful reader should know.
+    """
+    if error is None:
+        return ()
+    frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
+    said = too_smooth(elevation.heights, error, frame.cell_size)
+    return () if said is None else (said,)
 
 
 def with_tables(plan: Plan, error: DemError, threads: int | None = None) -> Plan:

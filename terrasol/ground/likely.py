@@ -171,8 +171,8 @@ def too_smooth(
         return None
     return (
         f"over a few cells the elevation model is smoother ({np.sqrt(roughness):.2g} times as"
-        f" rough) than a {error.words(cell_size)} alone would make it, so that errors of slope come"
-        " out too large: state a smaller RMSE or a longer range"
+        f" rough) than a {error.words(cell_size)} alone would make it, so that what is told of"
+        " errors is not to be trusted: state a smaller RMSE or a longer range"
     )
 
 
