@@ -237,7 +237,6 @@ class _Job:
         from terrasol.engine.melt_job import prepare
         from terrasol.engine.melt_state import read_head
         from terrasol.files.horizons import default_folder
-        from terrasol.files.rasters import naming
         from terrasol.files.tables import read_station
         from terrasol.practice.snow_weather import whole_days
 
@@ -253,10 +252,7 @@ class _Job:
         air = asked.placed(air, ground.frame)
         scene = around.scene(elevation, ground.frame)
         area, said = _area(given["basin"], elevation)
-        with naming(common.dem):
-            prepared = prepare(
-                elevation, station, air, settings, scene=scene, area=area, state=state
-            )
+        prepared = prepare(elevation, station, air, settings, scene=scene, area=area, state=state)
         store = None
         if not given["no_horizon_store"]:
             store = Path(given["horizon_store"]) if given["horizon_store"] else default_folder()
@@ -288,6 +284,11 @@ class _Job:
 
         maps = [f"{layer.name}.tif" for layer in season_layers(self.prepared.plan).values()]
         return [*maps, *TABLES, *PICTURES, STATE, RECORD]
+
+    @property
+    def all_names(self) -> list[str]:
+        """What is written, the stack first."""
+        return [*([self.stack] if self.stack else []), *self.names]
 
     def settings(self) -> dict[str, Any]:
         """Settings as plain text and numbers."""
@@ -332,8 +333,7 @@ class _Job:
             tables = SeasonTables.of(result)
             move(0.92, "writing")
             numbers = self._write(delivery, result, tables, record)
-            removed, more = superseded(common, self.names)
-            files = [*([self.stack] if self.stack else []), *self.names]
+            removed, more = superseded(common, self.all_names)
             whole = self.ground.seconds + time.perf_counter() - start
             seconds = {"reading": self.ground.seconds, **result.summary.seconds, "whole run": whole}
             record |= {
@@ -341,7 +341,7 @@ class _Job:
                 "results": numbers,
                 "warnings": [*result.summary.warnings, *self._doubts(), *more],
                 "seconds": {name: round(value, 2) for name, value in seconds.items()},
-                "files": [os.path.abspath(delivery.folder / name) for name in files],
+                "files": [os.path.abspath(delivery.folder / name) for name in self.all_names],
                 "removed": removed,
             }
             delivery.write_json(RECORD, record)
@@ -474,7 +474,7 @@ class _Job:
         common, plan = self.common, self.prepared.plan
         threads = common.threads or default_threads()
         stored = self.store is not None and find_horizons(self.store, plan.light.key) is not None
-        removed, more = superseded(common, self.names)
+        removed, more = superseded(common, self.all_names)
         return ground_forecast(common, self.ground) | {
             "station": self.record["station"],
             "model": plan.model.record(),
@@ -483,7 +483,7 @@ class _Job:
             "last_day": str(plan.dates[-1]),
             "area": plan.zones.name,
             "bands_m": [float(edge) for edge in plan.zones.edges],
-            "files": [*([self.stack] if self.stack else []), *self.names],
+            "files": self.all_names,
             "removed": removed,
             "horizon_store": None if self.store is None else str(self.store),
             "horizons_found": stored,

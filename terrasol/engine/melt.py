@@ -474,11 +474,20 @@ def zones_for(
     return Zones.of(heights, step, share, name)
 
 
+def spread_record(plan: MeltPlan) -> list[dict[str, float]]:
+    """What is different in each member of the spread."""
+    own = plan.model.numbers
+    return [
+        {name: value for name, value in one.numbers.items() if value != own[name]}
+        for one in plan.spread
+    ]
+
+
 def record_of(plan: MeltPlan) -> dict[str, Any]:
     """Settings of the plan as plain text and numbers."""
     return {
         "model": plan.model.record(),
-        "spread": [dict(one.changed) for one in plan.spread],
+        "spread": spread_record(plan),
         "period": plan.light.settings.period.record(),
         "season_start": str(plan.season_start),
         "area": plan.zones.name,

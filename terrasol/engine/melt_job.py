@@ -16,6 +16,7 @@ from terrasol.constants import REFRACTION_COEFFICIENT
 from terrasol.engine.melt import MeltPlan, MeltResult, zones_for
 from terrasol.engine.melt_tables import SeasonTables
 from terrasol.engine.series import plan_series
+from terrasol.errors import InputError
 from terrasol.files.layers import Layer
 from terrasol.files.snow_state import StateHead
 from terrasol.ground.beyond import Scene
@@ -216,7 +217,10 @@ def _check_or_fit(
     observed = daily_snow_water(station, edges)
     light = station_light(station, model, edges)
     if fit is not None:
-        fitted = fit_snow(model, mended.weather, light, observed, fit)
+        try:
+            fitted = fit_snow(model, mended.weather, light, observed, fit)
+        except InputError as error:
+            raise InputError(f"{station.name}: {error}") from error
         return fitted.model, {"fit": fitted.record(), "at_station": fitted.after.record()}
     if not np.isfinite(observed).any():
         return model, {}

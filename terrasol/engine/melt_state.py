@@ -9,7 +9,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from terrasol.engine.melt import MELT_METHOD, MeltPlan, MeltResult
+from terrasol.engine.melt import MELT_METHOD, MeltPlan, MeltResult, spread_record
 from terrasol.engine.melt_cells import Cells
 from terrasol.errors import InputError
 from terrasol.files.snow_state import StateHead, StateReader, StateWriter
@@ -25,7 +25,7 @@ def head_of(plan: MeltPlan, day: np.datetime64) -> StateHead:
     record = {
         "method": MELT_METHOD,
         "model": plan.model.record(),
-        "spread": [dict(sorted(one.changed.items())) for one in plan.spread],
+        "spread": spread_record(plan),
         "station_height_m": plan.weather.height,
         "diffuse": settings.diffuse,
         "substep_seconds": settings.substep_seconds,

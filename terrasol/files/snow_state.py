@@ -52,12 +52,11 @@ class StateHead:
         """In words, where another plan's ground and numbers are not these; empty if nowhere."""
         if self.ground != other.ground:
             return "another elevation model, other azimuths, or another version of terrasol"
-        told = []
         mine, theirs = _flat(self.record), _flat(other.record)
-        for name in sorted(mine.keys() | theirs.keys()):
-            if mine.get(name) != theirs.get(name):
-                told.append(f"{name} {mine.get(name)}, now {theirs.get(name)}")
-        return "; ".join(told)
+        changed = [n for n in sorted(mine.keys() | theirs.keys()) if mine.get(n) != theirs.get(n)]
+        if len(changed) > 1:  # the spread only follows the numbers
+            changed = [name for name in changed if name != "spread"]
+        return "; ".join(f"{name} {mine.get(name)}, now {theirs.get(name)}" for name in changed)
 
 
 def _flat(record: Mapping[str, Any], before: str = "") -> dict[str, Any]:

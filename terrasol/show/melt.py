@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from typing import Final, Literal
+from typing import Final
 
 import matplotlib
 import numpy as np
@@ -16,7 +16,7 @@ from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame
 from terrasol.show.key import SMALL, date_text, draw_notes, number
 from terrasol.show.maps import SUBTITLE, TITLE, overview_png
-from terrasol.show.page import POINTS_PER_PIXEL, SOFT, Page, clip, text_width, wrap
+from terrasol.show.page import PAPER, POINTS_PER_PIXEL, SOFT, Page, clip, text_width, wrap
 from terrasol.show.panel import Panel, steps
 
 WIDTH, MARGIN, LEFT = 1360, 62, 116
@@ -133,7 +133,7 @@ def _days(tables: SeasonTables) -> NDArray[np.floating]:
 
 def _running(values: NDArray[np.floating], days: int) -> NDArray[np.floating]:
     """Mean of the days around, fewer at the ends."""
-    ones = np.ones(days)
+    ones = np.ones(min(days, values.size))
     whole = np.convolve(np.ones_like(values), ones, "same")
     return np.convolve(values, ones, "same") / whole
 
@@ -205,27 +205,27 @@ def _draw_store(page: Page, tables: SeasonTables, top: float, height: float) -> 
     """Snow water with its spread; the covered share on a scale of its own."""
     panel = Panel(page, LEFT, top, WIDTH - MARGIN - LEFT, height)
     water, cover = tables.column("snow_water_mm"), tables.column("snow_covered_share")
-    high = max(float(water.max()), 1.0)
+    low = most = water
     if tables.members.shape[1]:
         low, most = tables.range_of("snow_water_mm")
-        high = max(high, float(most.max()))
         panel.axes.fill_between(_days(tables), low, most, color=WATER, alpha=0.26, linewidth=0.0)
-    high *= 1.08
+    full = max(float(most.max()), 1.0)
+    high = 1.16 * full
     _axes(panel, tables, high, "Snow water", "mm on map area, end of day")
     thin = POINTS_PER_PIXEL
     panel.axes.plot(_days(tables), water, color=WATER, linewidth=2.4 * thin)
-    panel.axes.plot(_days(tables), cover * high / 1.08, color=COVER, linewidth=1.4 * thin,
+    panel.axes.plot(_days(tables), cover * full, color=COVER, linewidth=1.4 * thin,
                     linestyle=(0, (4, 2.5)))  # fmt: skip
     x = LEFT + panel.width
     for share in (0.5, 1.0):
-        y = top + height * (1.0 - share / 1.08)
+        y = top + height * (1.0 - share * full / high)
         page.text(x + 5, y, f"{share:.0%}", 14.0, colour=SOFT, down="center")
     k = int(water.argmax())
     words = f"{number(water[k], 1.0)} mm on {date_text(tables.dates[k])}"
-    side: Literal["left", "right"] = "right" if k > tables.dates.size / 2 else "left"
-    away = -12 if side == "right" else 12
-    at = LEFT + (k + 0.5) / tables.dates.size * panel.width + away
-    page.text(at, top + height * (1.0 - water[k] / high) - 8, words, SMALL, across=side)
+    at = LEFT + (k + 0.5) / tables.dates.size * panel.width
+    at = min(max(at, LEFT + 80.0), LEFT + panel.width - 80.0)
+    level = top + height * (1.0 - most[k] / high) - 9
+    page.text(at, level, words, SMALL, across="center", halo=PAPER)
     _key(
         page,
         top - 18,
