@@ -29,6 +29,7 @@ from terrasol.practice.classes import (
 from terrasol.practice.degree_days import (
     HUGLIN,
     LAPSE,
+    MOST_LAPSE,
     WINKLER,
     huglin,
     monthly_shortfall,
@@ -61,6 +62,9 @@ WARM_QUANTITIES: Final = {
     "huglin": "Huglin index, degC day",
 }
 """What it can speak of besides, if temperatures are given."""
+
+LAPSE_EFFECT: Final = "winkler_lapse_effect_c_days"
+"""The figure that says what the lapse rate does to the degree-days."""
 
 
 @dataclass(frozen=True)
@@ -126,6 +130,9 @@ class Warmth:
         """Degree-days of cells of these heights [m], one band each; Huglin's if it can be told."""
         place: dict[str, Any] = {"latitude": latitude, "lapse": self.lapse}
         found = {"degree_days": winkler(self.station, heights, **place)[None]}
+        steeper = np.minimum(np.asarray(self.lapse) + 1.0, MOST_LAPSE).tolist()
+        more = winkler(self.station, heights, latitude=latitude, lapse=steeper)
+        found["lapse_effect"] = more[None] - found["degree_days"]
         if self.station.basis.startswith("monthly"):
             found["shortfall"] = monthly_shortfall(self.station, heights, **place)[None]
         if not np.isnan(self.station.highest).all():
@@ -478,6 +485,9 @@ def _warmth(piece: Piece) -> list[Figure]:
             Figure(f"{name}_class", scale.names[place] if place >= 0 else "", "",
                    "class of the mean"),
         ]  # fmt: skip
+    effect = weighted_mean(piece.layers["lapse_effect"][0], piece.weights)
+    words = "what a lapse rate of 1 K km-1 more would add to the degree-days after Winkler"
+    figures.append(Figure(LAPSE_EFFECT, effect, "K day", words, "map"))
     if "shortfall" in piece.layers:
         short = weighted_mean(piece.layers["shortfall"][0], piece.weights)
         words = "what sums of monthly means fall short of sums of days, estimated; not added"

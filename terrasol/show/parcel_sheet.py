@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from terrasol import __version__
 from terrasol.engine.outputs import MONTH_NAMES
-from terrasol.engine.parcel_figures import month_keys, slope_class_keys
+from terrasol.engine.parcel_figures import LAPSE_EFFECT, month_keys, slope_class_keys
 from terrasol.engine.parcels import Parcel, Survey, numbers_of
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame
@@ -498,6 +498,10 @@ def _warmth(page: Page, survey: Survey, parcel: Parcel, box) -> None:
         if f"{name}_mean_c_days" in parcel.numbers:
             _draw_scale(page, parcel, name, words, scale, (x, level, width))
             level += 46
+    effect = parcel.numbers[LAPSE_EFFECT]
+    if np.isfinite(effect):
+        words = f"a lapse rate of 1 K/km more would move Winkler's sum by {effect:+.0f}"
+        page.text(x, level + 8, words.replace("-", "−"), SMALL, colour=SOFT)
 
 
 def _draw_scale(page: Page, parcel: Parcel, name: str, words: str, scale: Scale, box) -> None:

@@ -263,6 +263,8 @@ def test_degree_days_fall_with_height():
     assert numbers["winkler_mean_c_days"] == pytest.approx(expected, rel=1e-4)
     low = 214 * (5.0 - 6.5e-3 * (numbers["height_greatest_m"] - 500.0))
     assert numbers["winkler_least_c_days"] == pytest.approx(low, rel=1e-4)
+    effect = 214 * -1e-3 * (height - 500.0)
+    assert numbers["winkler_lapse_effect_c_days"] == pytest.approx(effect, rel=1e-3, abs=0.1)
     classes = {f.name: f.value for f in parcel.figures}
     assert classes["winkler_class"] == "Ia"
     assert numbers["winkler_shortfall_c_days"] > 0.0
@@ -271,3 +273,11 @@ def test_degree_days_fall_with_height():
     # Huglin at 46.05 north: 1.05 (183 days) ((15 - 10) + (20 - 10)) / 2 at the station's height.
     factor = numbers["huglin_mean_c_days"] / (183 * (7.5 - 6.5e-3 * (height - 500.0)))
     assert factor == pytest.approx(1.05, abs=1e-3)
+
+
+def test_a_station_far_above_is_doubted():
+    """900 m above: 1 K/km is 0.9 K, over 214 days 193 degree-days."""
+    far = Warmth(from_monthly(np.full(12, 12.0), height=1400.0))
+    found = survey(plane(1.0, 180.0), parcels(box(0, 0, 50, 50)), asked_for(coarser=(), warmth=far))
+    assert any("degree-days by up to 19" in text for text in found.warnings)
+    assert "huglin_mean_c_days" not in found.parcels[0].numbers  # no daily highest was given
