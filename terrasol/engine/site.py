@@ -24,7 +24,7 @@ from terrasol.engine.outputs import MONTH_NAMES, basis_words, month_labels, sky_
 from terrasol.engine.plan import Progress, carry_out, check_threads, default_threads
 from terrasol.engine.spread import Spread
 from terrasol.engine.uncertainty import moved, propagate_all
-from terrasol.errors import InputError
+from terrasol.errors import InputError, SettingError
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame, make_frame
@@ -44,6 +44,9 @@ PARTS: Final = ("beam", "diffuse", "reflected")
 
 PREPARED: Final = 0.35
 """Share of a run that its preparations take, as `Run` counts it."""
+
+MOST_MONTHS: Final = 18
+"""Longest period; a sheet has no room for more rows."""
 
 INTERVAL: Final = 0.9
 """Probability with which the intervals hold the true value."""
@@ -373,6 +376,7 @@ def survey(
     check_azimuths(azimuths)
     threads = default_threads() if threads is None else threads
     check_threads(threads)
+    _demand_short(settings)
     settings = replace(settings, monthly_parts=True)
     frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
     cells = [find_cell(elevation, frame, spot) for spot in spots]
@@ -428,9 +432,7 @@ def find_cell(elevation: Elevation, frame: Frame, spot: Spot) -> tuple[int, int]
         It lies outside the elevation model, or on a void.
     """
     what = f"the place {spot.name}".rstrip()
-    return cell_of(
-        elevation, frame, spot.latitude, spot.longitude, what=what, mend=MEND
-    )
+    return cell_of(elevation, frame, spot.latitude, spot.longitude, what=what, mend=MEND)
 
 
 class _Shares:
@@ -447,6 +449,16 @@ class _Shares:
     def next(self) -> None:
         """Go on to the next stage."""
         self.stage += 1
+
+
+def _demand_short(settings: LightSettings) -> None:
+    """Raise SettingError for a period with more months than a table of them can have."""
+    months = len(settings.period.months)
+    if months > MOST_MONTHS:
+        raise SettingError(
+            f"the period {settings.period.label} has {months} months, more than {MOST_MONTHS}: name"
+            " a shorter --period"
+        )
 
 
 def _demand_slopes(strips: Sequence[Strip], cells: Sequence[tuple[int, int]]) -> None:

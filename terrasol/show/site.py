@@ -41,6 +41,7 @@ from terrasol.show.site_text import (
     energy_words,
     error_words,
     facts,
+    lost_words,
     month_rows,
 )
 from terrasol.show.skyline import (
@@ -404,12 +405,13 @@ class _Sheet:
             self._text(end, y, word, SMALL, colour=SOFT, across="right")
         rows = month_rows(site)
         step = min(14.4, 176.0 / max(len(rows), 1))
+        size = min(SMALL, step)
         for row in rows:
             y += step
-            self._text(x, y, row[0], SMALL)
+            self._text(x, y, row[0], size)
             cells = (row[1], row[2], f"{row[3]} %" if row[3] != "-" else "-", *row[4:])
             for cell, end in zip(cells, ends, strict=True):
-                self._text(end, y, cell, SMALL, across="right")
+                self._text(end, y, cell, size, across="right")
         self.page.lines([[(x, TOPS["months"] - 4), (self.right, TOPS["months"] - 4)]], colour=GRID)
 
     def _year(self) -> None:
@@ -452,7 +454,7 @@ class _Sheet:
         said = [
             f"Energy is {energy_words(site)}; level ground lies at the same place and height under"
             " an open sky.",
-            *(f"{words}." for words in error_words(site)),
+            *(f"{words}." for words in (*lost_words([site]), *error_words(site))),
             *common.notes,
             PLACE,
         ]

@@ -30,6 +30,9 @@ SKIES: Final = {
 ALL_DAY: Final = 24.0 - 1.0 / 60.0
 """Hours of sun above which it does not set."""
 
+LOST: Final = "*"
+"""Mark of a last sun before which the sun is lost and comes again."""
+
 Row = tuple[str, str]
 
 
@@ -193,6 +196,8 @@ def month_rows(site: Site) -> list[tuple[str, ...]]:
         ends = clock_time(sun.first[day]), clock_time(sun.last[day])
         if sun.hours[day] > ALL_DAY:
             ends = "-", "all day"
+        elif sun.interruptions[day] > 0:
+            ends = ends[0], ends[1] + LOST
         rows.append(
             (
                 label,
@@ -204,6 +209,12 @@ def month_rows(site: Site) -> list[tuple[str, ...]]:
             )
         )
     return rows
+
+
+def lost_words(sites: Sequence[Site]) -> list[str]:
+    """What the mark of a lost sun means, where there is one."""
+    marked = any(LOST in row[-1] for site in sites for row in month_rows(site))
+    return [f"{LOST} lost in between for a minute or longer"] if marked else []
 
 
 def month_head(site: Site) -> tuple[str, ...]:
@@ -235,6 +246,7 @@ def site_text(sites: Sequence[Site], notes: Sequence[str]) -> str:
         " an open sky",
         f"first and last sun on the {CHOSEN_DAY}st by {clock.words}; sun h/day is the mean of the"
         " month, clouds or not",
+        *lost_words(sites),
         *(
             f"{site.name + ': ' if site.name else ''}{words}"
             for site in sites

@@ -185,6 +185,8 @@ def test_places_off_the_ground(hills, metric_ground):
     holed = metric_ground(heights, 25.0)
     with pytest.raises(InputError, match="void"):
         middle(holed)
+    with pytest.raises(SettingError, match="20 months"):
+        middle(hills, settings=light(period=parse_period("2024-01/2025-08")))
     with pytest.raises(SettingError, match="azimuths"):
         middle(hills, azimuths=7)
 

@@ -174,6 +174,18 @@ def test_errors_stand_behind_the_figures(ground, site):
     site_page(ground, [doubted])
 
 
+def test_a_sun_lost_in_between_is_marked(site):
+    day = site.sun.on(6, 21)
+    interruptions = np.zeros(365)
+    clear = replace(site, sun=replace(site.sun, interruptions=interruptions))
+    assert "*" not in site_text([clear], [])
+    interruptions = interruptions.copy()
+    interruptions[day] = 1.0
+    lost = replace(site, sun=replace(site.sun, interruptions=interruptions))
+    assert month_rows(lost)[5][-1].endswith("*")
+    assert "* lost in between for a minute or longer" in site_text([lost], [])
+
+
 def test_period_without_a_whole_year_has_no_season(ground):
     site = surveyed(ground, period="2025-05/2025-06")[0]
     rows = month_rows(site)
