@@ -32,6 +32,9 @@ LONG, CORRELATIONS = "plots_long.csv", "correlations.csv"
 PICTURE, METHODS = "predictors.png", "methods.md"
 HORIZONS, SKYLINES = "horizons.csv", "horizons.png"
 
+LONG_PARTS = 200
+"""Columns of the table that are turned into rows at a time."""
+
 GROUPS = (
     "height", "slope", "aspect", "transforms", "heat_load", "sky_view", "irradiation",
     "irradiation_months", "photosynthetic", "photosynthetic_months", "sun_hours",
@@ -482,7 +485,6 @@ class _Job:
         """Stage all files but the record."""
         from terrasol.engine.plot_correlations import pairs
         from terrasol.engine.plot_methods import methods_text
-        from terrasol.engine.plot_table import long_form
         from terrasol.files.plot_tables import csv_bytes, geoparquet_bytes
         from terrasol.show.plots import predictors_png
 
@@ -491,7 +493,7 @@ class _Job:
         delivery.write_bytes(PARQUET, geoparquet_bytes(table.frame))
         delivery.write_bytes(DICTIONARY, csv_bytes(table.dictionary()))
         if self.given["as_long"]:
-            delivery.write_bytes(LONG, csv_bytes(long_form(table)))
+            _write_long(delivery, table)
         delivery.write_bytes(CORRELATIONS, csv_bytes(pairs(table, response)))
         title = f"Predictors for {_stem(self.given['plots_file'])}"
         delivery.write_bytes(PICTURE, predictors_png(table, title=title, response=response))
@@ -528,6 +530,22 @@ class _Job:
             far=os.path.basename(around.far) if around.far else "",
             surface=os.path.basename(around.surface) if around.surface else "",
         )
+
+
+def _write_long(delivery: Any, table: PlotTable) -> None:
+    """Stage the table with one value a row, some columns at a time."""
+    from terrasol.engine.plot_table import long_form, predictor_columns
+    from terrasol.files.plot_tables import write_parts
+
+    columns = predictor_columns(table)
+    parts = (
+        long_form(table, columns[first : first + LONG_PARTS])
+        for first in range(0, len(columns), LONG_PARTS)
+    )
+    try:
+        write_parts(delivery.staged(LONG), parts)
+    except OSError as error:
+        raise delivery.refusal(LONG, error) from error
 
 
 def _stem(path: str) -> str:

@@ -9,7 +9,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from terrasol.engine.plot_table import CELL, MEAN, Column, PlotTable
+from terrasol.engine.plot_table import CELL, GIVEN, MEAN, Column, PlotTable
 from terrasol.errors import SettingError
 from terrasol.files.vectors import word_list
 from terrasol.practice.plots import chance_of_best, correlation
@@ -82,7 +82,8 @@ def response_values(table: PlotTable, name: str) -> Array:
     SettingError
         There is no such column, or no number in it.
     """
-    given = [c.name for c in table.columns if c.statistic == "" and c.name in table.frame]
+    given = [c.name for c in table.columns if not c.statistic]
+    name = f"{name}{GIVEN}" if f"{name}{GIVEN}" in given else name
     if name not in given:
         raise SettingError(f"the plots have no column '{name}' of their own: {word_list(given)}")
     values = np.asarray(pd.to_numeric(table.frame[name], errors="coerce"), np.float64)

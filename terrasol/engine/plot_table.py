@@ -157,6 +157,12 @@ ASPECT: Final = Predictor(
 )
 """Made of northness and eastness, since directions cannot be added."""
 
+GEOMETRY: Final = "geometry"
+"""Column of the places in GeoParquet."""
+
+GIVEN: Final = "_given"
+"""Ending of a column of the plots' file whose name is one of ours."""
+
 NUMBERS: Final = re.compile(r"[\d.,]+")
 """What may differ between warnings that say the same at two cell sizes."""
 
@@ -185,7 +191,7 @@ class Assembly:
         self._begin()
 
     def _begin(self) -> None:
-        """Name, place and flag, and what the plots' file says beside."""
+        """Name, place and flag."""
         points, located = self.points, self.located
         self._put(Column("id", "id", "name of the plot"), list(points.names))
         for name, values in (("longitude", located.longitude), ("latitude", located.latitude)):
@@ -196,12 +202,7 @@ class Assembly:
             self._put(Column("gps_error_m", "gps_error_m", meaning, "m"), points.error)
         meaning = "ok, outside (the raster), void (of the raster) or no place (in the plots' file)"
         self._put(Column("flag", "flag", meaning), located.flag)
-        for name in points.attributes.columns:
-            shown = str(name) if str(name) not in self.data else f"{name}_given"
-            self._put(
-                Column(shown, shown, f"'{name}' of the plots' file, as given"),
-                points.attributes[name].to_numpy(),
-            )
+        self._first = len(self.columns)
 
     def add(self, told: Told, size: float, tag: str) -> None:
         """Take in one cell size.
@@ -281,11 +282,25 @@ class Assembly:
         self.columns.append(column)
         self.data[column.name] = values
 
+    def _given(self) -> tuple[list[Column], dict[str, Any]]:
+        """What the plots' file says beside, under names that are not ours."""
+        columns, data = [], {}
+        for name in self.points.attributes.columns:
+            shown = str(name)
+            while shown in self.data or shown in data or shown == GEOMETRY:
+                shown += GIVEN
+            columns.append(Column(shown, shown, f"'{name}' of the plots' file, as given"))
+            data[shown] = self.points.attributes[name].to_numpy()
+        return columns, data
+
     def finished(self, cells: tuple[float, ...]) -> PlotTable:
-        """The table."""
+        """The table, with what the plots' file says between places and predictors."""
+        given, beside = self._given()
+        columns = [*self.columns[: self._first], *given, *self.columns[self._first :]]
+        data = self.data | beside
         return PlotTable(
-            pd.DataFrame(self.data),
-            self.columns,
+            pd.DataFrame({column.name: data[column.name] for column in columns}),
+            columns,
             self.located.longitude,
             self.located.latitude,
             cells,
@@ -305,13 +320,17 @@ def _column(
     )  # fmt: skip
 
 
-def long_form(table: PlotTable) -> pd.DataFrame:
-    """The same table with one value a row: plot, predictor, statistic, circle, cell size."""
-    columns = [column for column in table.columns if column.statistic]
+def long_form(table: PlotTable, columns: Sequence[Column] | None = None) -> pd.DataFrame:
+    """The same table with one value a row: plot, predictor, statistic, circle, cell size.
+
+    Of some columns, or of all that are predictors.
+    """
+    if columns is None:
+        columns = predictor_columns(table)
     count = len(table.frame)
 
-    def each(values: Sequence[Any]) -> NDArray[Any]:
-        return np.repeat(np.asarray(values, dtype=object), count)
+    def each(values: Sequence[Any]) -> Any:
+        return pd.Categorical(np.repeat(np.asarray(values, dtype=object), count))
 
     return pd.DataFrame(
         {
@@ -319,8 +338,15 @@ def long_form(table: PlotTable) -> pd.DataFrame:
             "predictor": each([c.predictor for c in columns]),
             "unit": each([c.unit for c in columns]),
             "statistic": each([c.statistic for c in columns]),
-            "radius_m": each([c.radius for c in columns]).astype(float),
-            "cell_m": np.round(each([c.cell for c in columns]).astype(float), 3),
+            "radius_m": np.repeat(
+                [np.nan if c.radius is None else c.radius for c in columns], count
+            ),
+            "cell_m": np.repeat([round(c.cell or np.nan, 3) for c in columns], count),
             "value": np.concatenate([table.frame[c.name].to_numpy(float) for c in columns]),
         }
     )
+
+
+def predictor_columns(table: PlotTable) -> list[Column]:
+    """Columns of a table that are predictors."""
+    return [column for column in table.columns if column.statistic]

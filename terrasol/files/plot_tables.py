@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import io
+from collections.abc import Iterable
+from os import PathLike
 from typing import Final
 
 import numpy as np
@@ -20,6 +22,14 @@ def csv_bytes(frame: pd.DataFrame) -> bytes:
         plain[name] = ["" if np.isnan(v) else f"{v:.8f}" for v in plain[name]]
     text = plain.to_csv(index=False, float_format="%.7g", lineterminator="\n")
     return text.encode("utf-8")
+
+
+def write_parts(path: str | PathLike[str], parts: Iterable[pd.DataFrame]) -> None:
+    """Write tables one below the other, as `csv_bytes` does, without having all in memory."""
+    with open(path, "wb") as file:
+        for number, part in enumerate(parts):
+            text = csv_bytes(part)
+            file.write(text if number == 0 else text.split(b"\n", 1)[1])
 
 
 def geoparquet_bytes(frame: pd.DataFrame) -> bytes:

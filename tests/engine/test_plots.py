@@ -9,6 +9,7 @@ from pyproj import CRS, Transformer
 
 import terrasol
 from terrasol import Air, Elevation, InputError, SettingError, parse_period
+from terrasol.engine.plot_correlations import response_values
 from terrasol.engine.plot_horizons import horizon_table, plot_horizons
 from terrasol.engine.plot_places import locate
 from terrasol.engine.plot_settings import PlotSettings
@@ -430,11 +431,17 @@ def test_long_form_holds_the_same(table):
 
 def test_attributes_are_kept_and_do_not_replace_ours(hills):
     points = at_cells(hills, *PLACES)
-    given = pd.DataFrame({"species": list("abcd"), "flag": [1, 2, 3, 4]})
+    given = pd.DataFrame(
+        {"species": list("abcd"), "flag": [1, 2, 3, 4], "height_m": [9.0, 8.0, 7.0, 6.0]}
+    )
     table = plot_table(hills, replace(points, attributes=given), settings(groups=("height",)))
     assert table.frame["species"].tolist() == list("abcd")
     assert table.frame["flag"].tolist() == ["ok"] * 4
     assert table.frame["flag_given"].tolist() == [1, 2, 3, 4]
+    assert table.frame["height_m"].min() > 800.0
+    assert response_values(table, "height_m").tolist() == [9.0, 8.0, 7.0, 6.0]
+    assert [c.name for c in table.columns] == list(table.frame)
+    assert list(table.frame)[4:7] == ["species", "flag_given", "height_m_given"]
 
 
 def test_results_do_not_depend_on_threads(table, hills):
