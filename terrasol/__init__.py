@@ -15,6 +15,7 @@ if TYPE_CHECKING:
     from terrasol.engine.datasets import irradiation, terrain
     from terrasol.engine.hours import sun_hours
     from terrasol.engine.plot_table import PlotTable
+    from terrasol.engine.melt_stack import snow_melt
     from terrasol.engine.plots import plot_predictors
     from terrasol.engine.series_stack import irradiation_series
     from terrasol.engine.uncertainty import propagate
@@ -30,6 +31,7 @@ if TYPE_CHECKING:
     from terrasol.files.tables import read_station
     from terrasol.ground.elevation import Elevation
     from terrasol.ground.uncertainty import DemError
+    from terrasol.practice.snow import SnowModel
     from terrasol.sky.clear import Air, clear_sky, linke_climatology
     from terrasol.sky.cloud import MonthlySky, clouded_sky
     from terrasol.sky.diffuse import split_diffuse
@@ -49,6 +51,7 @@ _HOMES = {
     "PlotTable": "terrasol.engine.plot_table",
     "Points": "terrasol.files.points",
     "SettingError": "terrasol.errors",
+    "SnowModel": "terrasol.practice.snow",
     "Spot": "terrasol.engine.comparison",
     "Station": "terrasol.sky.station",
     "TerrasolError": "terrasol.errors",
@@ -67,6 +70,7 @@ _HOMES = {
     "read_points": "terrasol.files.points",
     "read_station": "terrasol.files.tables",
     "split_diffuse": "terrasol.sky.diffuse",
+    "snow_melt": "terrasol.engine.melt_stack",
     "spot_at": "terrasol.engine.comparison",
     "sun_hours": "terrasol.engine.hours",
     "sun_path": "terrasol.sky.sun",
@@ -85,6 +89,7 @@ __all__ = [
     "PlotTable",
     "Points",
     "SettingError",
+    "SnowModel",
     "Spot",
     "Station",
     "TerrasolError",
@@ -103,6 +108,7 @@ __all__ = [
     "read_points",
     "read_station",
     "split_diffuse",
+    "snow_melt",
     "spot_at",
     "sun_hours",
     "sun_path",

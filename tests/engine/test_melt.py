@@ -9,6 +9,7 @@ from reference.kept import series_of
 
 from terrasol.engine.melt_cells import FACINGS, Zones, map_area
 from terrasol.engine.melt_job import MeltSettings, prepare, season_numbers
+from terrasol.engine.melt_stack import snow_melt
 from terrasol.engine.melt_state import head_of, save_state, take_up
 from terrasol.engine.melt_tables import DEPTHS, TABLES, SeasonTables, tables_csv
 from terrasol.errors import InputError
@@ -348,3 +349,24 @@ def test_memory_does_not_grow_with_the_days(ground, store):
         tracemalloc.stop()
     tables = 24 * 8 * 8 * plan.zones.count
     assert peaks[1] < 1.1 * peaks[0] + tables
+
+
+def test_the_same_from_python(ground, store, tmp_path):
+    """Two stacks, the second from the first's state, are the one of both."""
+    made = {"model": SnowModel("hock"), "horizon_store": store, "azimuths": 16, "air": AIR}
+    station = weather_station()
+    whole = snow_melt(ground, station, tmp_path / "a.nc", "2025-03-20/2025-03-29", **made)
+    state = tmp_path / "state.nc"
+    first = snow_melt(
+        ground, station, tmp_path / "b.zarr", "2025-03-20/2025-03-25", to_state=state, **made
+    )
+    rest = snow_melt(
+        ground, station, tmp_path / "c.zarr", "2025-03-26/2025-03-29", from_state=state, **made
+    )
+    joined = np.concatenate([first["snow_water"].values, rest["snow_water"].values])
+    np.testing.assert_array_equal(joined, whole["snow_water"].values)
+    np.testing.assert_array_equal(rest["melt_out"].values, whole["melt_out"].values)
+    assert whole["melt_out"].attrs["units"] == "days since 2025-03-20 00:00:00"
+    assert float(whole["peak_snow_water"].max()) > 20.0
+    for data in (first, rest, whole):
+        data.close()
