@@ -14,8 +14,8 @@ if TYPE_CHECKING:
     from terrasol.engine.comparison import Spot, compare_station, spot_at
     from terrasol.engine.datasets import irradiation, terrain
     from terrasol.engine.hours import sun_hours
-    from terrasol.engine.plot_table import PlotTable
     from terrasol.engine.melt_stack import snow_melt
+    from terrasol.engine.plot_table import PlotTable
     from terrasol.engine.plots import plot_predictors
     from terrasol.engine.series_stack import irradiation_series
     from terrasol.engine.uncertainty import propagate
@@ -107,8 +107,8 @@ __all__ = [
     "read_elevation",
     "read_points",
     "read_station",
-    "split_diffuse",
     "snow_melt",
+    "split_diffuse",
     "spot_at",
     "sun_hours",
     "sun_path",
