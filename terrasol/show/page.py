@@ -34,6 +34,9 @@ SOFT = "#6c7077"
 """Colours of the sheet, of what is read first, and of what is read after."""
 
 DPI = 100
+PRINT_DPI = 3 * DPI
+"""Dots of maps and other pictures within a PDF."""
+
 POINTS_PER_PIXEL = 72 / DPI
 
 LAST_RESORT = "Last Resort"
@@ -199,7 +202,8 @@ class Page:
         Without a date, so that the same content gives the same bytes.
         """
         out = io.BytesIO()
-        self.figure.savefig(out, format="pdf", metadata={**metadata, "CreationDate": None})
+        metadata = {**metadata, "CreationDate": None}  # type: ignore[dict-item]
+        self.figure.savefig(out, format="pdf", dpi=PRINT_DPI, metadata=metadata)
         return out.getvalue()
 
 
@@ -208,7 +212,7 @@ def book(pages: Sequence[Page], **metadata: str) -> bytes:
     out = io.BytesIO()
     with PdfPages(out, metadata={**metadata, "CreationDate": None}) as bound:
         for page in pages:
-            bound.savefig(page.figure)
+            bound.savefig(page.figure, dpi=PRINT_DPI)
     return out.getvalue()
 
 

@@ -72,7 +72,7 @@ AROUND: Final = 1500.0
 
 MAP_CELLS: Final = 24
 
-SCALE: Final = 90.0
+SCALE: Final = 76.0
 """Longest scale of the small map [pixels]."""
 
 PART_COLOURS: Final = {"beam": "#d98a1f", "diffuse": "#6f9bc4", "reflected": "#7d8a4c"}
@@ -427,7 +427,7 @@ class _Sheet:
         colours = np.array([to_rgb(STATE_COLOURS[state]) for state in State])
         panel.axes.imshow(
             colours[states], extent=(0.0, count, first, last), origin="lower", aspect="auto",
-            interpolation="nearest",
+            interpolation="none",
         )  # fmt: skip
         for value in np.arange(3.0 * np.ceil(first / 3.0), last + 0.1, 3.0):
             panel.axes.axhline(value, color=PAPER, linewidth=0.5 * POINTS_PER_PIXEL, alpha=0.5)
