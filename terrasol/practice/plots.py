@@ -97,10 +97,12 @@ def in_circle(
     covered = (away <= radius - half).astype(np.float64)
     cut = np.flatnonzero(np.abs(away - radius) < half)
     parts = (np.arange(CUTS) + 0.5) / CUTS - 0.5
-    for down_part in parts:
-        for right_part in parts:
-            d = _distance(rows[cut] + down_part - row, columns[cut] + right_part - column, jacobian)
-            covered[cut] += (d <= radius) / CUTS**2
+    down_part, right_part = (v.ravel() for v in np.meshgrid(parts, parts, indexing="ij"))
+    places = (
+        np.add.outer(rows[cut] - row, down_part),
+        np.add.outer(columns[cut] - column, right_part),
+    )
+    covered[cut] = (_distance(*places, jacobian) <= radius).mean(axis=1)
     if not covered.any():  # a circle that slips between the places counted
         return own_cell(row, column, shape)
     used = covered > 0.0
@@ -202,15 +204,13 @@ class Gathered:
         self.weight[which] += matrix @ known.astype(np.float64)
         self.total[which] += matrix @ plain
         self.square[which] += matrix @ plain**2
-        lows, highs = np.where(known, values, np.inf), np.where(known, values, -np.inf)
-        matrix.sort_indices()
-        starts = matrix.indptr[:-1]
-        self.low[which] = np.minimum(
-            self.low[which], np.minimum.reduceat(lows[matrix.indices], starts, axis=0)
-        )
-        self.high[which] = np.maximum(
-            self.high[which], np.maximum.reduceat(highs[matrix.indices], starts, axis=0)
-        )
+        starts, cells = matrix.indptr[:-1], matrix.indices
+        for quantity, (own, there) in enumerate(zip(values.T, known.T, strict=True)):
+            low, high = np.where(there, own, np.inf), np.where(there, own, -np.inf)
+            found = np.minimum.reduceat(low[cells], starts)
+            self.low[which, quantity] = np.minimum(self.low[which, quantity], found)
+            found = np.maximum.reduceat(high[cells], starts)
+            self.high[which, quantity] = np.maximum(self.high[which, quantity], found)
 
     @property
     def mean(self) -> Array:
