@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable
-from typing import Any
+from typing import Any, Final
 
 import numpy as np
 from numpy.typing import NDArray
@@ -16,13 +16,17 @@ from terrasol.ground.horizon import NODE_STEP
 from terrasol.ground.surface import slope_and_aspect
 from terrasol.light.indexed import MappedTables
 from terrasol.light.irradiation import Light, Strip, sky_light, strip_light
-from terrasol.light.latitudes import grain_of
 from terrasol.light.settings import UNITS
 from terrasol.light.surroundings import Surroundings
 from terrasol.light.tables import SkyTables
 
 Arrays = dict[str, NDArray[Any]]
 Tables = SkyTables | MappedTables
+
+SAMPLE_LATITUDES: Final = 0.05
+"""Samples of the terrain around share a sun table over this [degrees], five times as far as the
+cells themselves: what they receive is smoothed and dimmed by the albedo before it counts. That
+moves what surrounds a place by 0.01 % at worst at 46 degrees north, by 0.1 % in December at 62."""
 
 
 def with_block(work: Callable[[Block], Arrays], block: Block) -> tuple[Block, Arrays]:
@@ -132,14 +136,13 @@ def sample_block(
 
 
 def _by_table(piece: BlockGround, rows: range) -> Iterable[tuple[list[int], float]]:
-    """Which of some rows share a sun table, the one that their own piece gets, and its latitude."""
-    found: dict[int, tuple[list[int], float]] = {}
-    for served in piece.pieces():
-        inside = [i for i, row in enumerate(rows) if row in served]
-        if inside:
-            latitude = piece.table_latitude(served)
-            found.setdefault(grain_of(latitude), ([], latitude))[0].extend(inside)
-    return found.values()
+    """Which of some rows share a sun table, and its latitude."""
+    found: dict[float, list[int]] = {}
+    for i, row in enumerate(rows):
+        latitude = piece.table_latitude(range(row, row + 1))
+        shared = round(latitude / SAMPLE_LATITUDES) * SAMPLE_LATITUDES
+        found.setdefault(shared, []).append(i)
+    return ((inside, latitude) for latitude, inside in found.items())
 
 
 def across_void(ground: Ground, known: NDArray[np.bool_]) -> int:

@@ -291,7 +291,9 @@ def test_level_open_ground_is_what_the_summary_says(metric_ground):
 
 
 def test_surroundings_are_sampled_from_what_cells_get(wide, monkeypatch):
-    # each sample is what that very cell gets over black ground, and the rest of its sky view
+    # Each sample is what that very cell gets over black ground, and the rest of its sky view. The
+    # light of samples is allowed the 0.01 % that docs/method.md states for sharing a sun table
+    # over 0.05 degrees; a neighbour's light would be off by 0.1 % and more.
     kept = {}
     spread = Surroundings.of.__func__
 
@@ -307,7 +309,10 @@ def test_surroundings_are_sampled_from_what_cells_get(wide, monkeypatch):
     every = slice(stride // 2, None, stride)
     want = np.concatenate([black["irradiation_months"], 1.0 - black["sky_view"]])[:, every, every]
     got = samples[:, : want.shape[1], : want.shape[2]]
-    np.testing.assert_allclose(got, want, rtol=2e-6, atol=1e-7)
+    np.testing.assert_allclose(got[-1], want[-1], rtol=2e-6, atol=1e-7)
+    np.testing.assert_allclose(got[:-1], want[:-1], rtol=1e-4)
+    beside = np.abs(got[:-1, :, 1:] / want[:-1, :, :-1] - 1.0)
+    assert np.nanmedian(beside) > 1e-3
     assert np.isnan(samples[:, want.shape[1] :]).all()
     assert np.isnan(samples[:, :, want.shape[2] :]).all()
 
