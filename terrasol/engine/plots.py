@@ -40,6 +40,9 @@ from terrasol.sky.clear import Air
 from terrasol.sky.irradiance import Sky
 from terrasol.sky.period import Period, parse_period
 
+GATHERED_BYTES = 40.0
+"""A plot and column of one cell size: five numbers are kept of what its cells say."""
+
 
 def grain_sizes(elevation: Elevation, factors: Sequence[int]) -> tuple[float, ...]:
     """Mean true side of the cells [m], whole cells joined by each factor."""
@@ -119,6 +122,16 @@ def column_count(points: Points, settings: PlotSettings) -> int:
     aspect = (2 + 2 * len(settings.radii)) * ("aspect" in settings.groups)
     one = blocks * (len(wanted) - plain) + plain + aspect + len(settings.radii)
     return one * len(settings.factors)
+
+
+def forecast_bytes(elevation: Elevation, points: Points, settings: PlotSettings) -> int:
+    """Peak memory to expect: of the maps' blocks, of what is gathered, and of the table."""
+    plans = [plan_irradiation(elevation, settings.light)]
+    if settings.timed:
+        plans.append(plan_hours(elevation, settings.hours))
+    columns = column_count(points, settings)
+    gathered = GATHERED_BYTES * len(points) * columns / len(settings.factors)
+    return int(max(plan.memory_bytes for plan in plans) + gathered + 24.0 * len(points) * columns)
 
 
 def forecast_seconds(

@@ -41,7 +41,13 @@ def plots(places, tmp_path_factory):
     path = tmp_path_factory.mktemp("plots") / "relevés.csv"
     cover = np.random.default_rng(3).uniform(0, 1, 12).round(2)
     pd.DataFrame(
-        {"id": [f"P{k}" for k in range(12)], "lon": longitude, "lat": latitude, "cover": cover}
+        {
+            "id": [f"P{k}" for k in range(12)],
+            "lon": longitude,
+            "lat": latitude,
+            "cover": cover,
+            "note": "wet",
+        }
     ).to_csv(path, index=False)
     return path
 
@@ -208,7 +214,8 @@ def test_an_input_is_never_replaced(dem, plots, tmp_path, capfd):
         (["--predictors", "colour"], 2, "colour"),
         (["--period", "2025-04"], 2, "twelve whole months"),
         (["--gps-error", "-3"], 2, "--gps-error"),
-        (["--response", "species"], 2, "no such column; it has 'cover'"),
+        (["--response", "species"], 2, "no such column; it has 'cover', 'note'"),
+        (["--response", "note"], 2, "has no number"),
         (["--x", "lon"], 2, "go together"),
         (["--plots-crs", "EPSG:32632"], 3, "degrees by name"),
         (["--plots-crs", "nowhere"], 2, "cannot be understood"),
