@@ -1,0 +1,92 @@
+"""Pictures of a snow season: they render, and say what they must."""
+
+import io
+
+import numpy as np
+import pytest
+from matplotlib.image import imread
+
+from terrasol.engine.melt_tables import DEPTHS, SeasonTables
+from terrasol.ground.frame import make_frame
+from terrasol.show import melt as show
+from terrasol.show.page import Page
+
+
+def season(days=120, bands=4, members=2):
+    """Tables of an invented season."""
+    rng = np.random.default_rng(4)
+    shape = days, bands, 9
+    course = np.sin(np.linspace(0.0, np.pi, days))[:, None, None]
+    sums = np.empty((*shape, len(DEPTHS)))
+    area = np.full((bands, 9), 1e5)
+    area[-1] = 0.0
+    for k in range(len(DEPTHS)):
+        sums[..., k] = rng.uniform(0.0, 8.0, shape) * course * area
+    sums[..., DEPTHS.index("snow_covered_share")] = course * area
+    dates = np.datetime64("2024-11-01") + np.arange(days)
+    spread = rng.uniform(0.0, 8.0, (days, members, 3))
+    return SeasonTables(dates, area, sums, spread, np.arange(bands + 1) * 500.0, "made")
+
+
+@pytest.fixture
+def said(monkeypatch):
+    """All words written on a sheet."""
+    words = []
+    write = Page.text
+
+    def keep(self, x, y, text, *more, **given):
+        words.append(text)
+        assert 0 <= y <= self.height
+        assert 0 <= x <= self.width
+        return write(self, x, y, text, *more, **given)
+
+    monkeypatch.setattr(Page, "text", keep)
+    return words
+
+
+NOTES = ("Melt after a paper.", "No avalanche tool.")
+
+
+@pytest.mark.parametrize(("days", "members"), [(1, 0), (3, 2), (20, 0), (120, 2), (400, 2)])
+def test_hydrograph(said, days, members):
+    tables = season(days, members=members)
+    words = "least to greatest of runs" if members else ""
+    png = show.hydrograph_png(tables, title="t", subtitle="s", notes=NOTES, spread=words)
+    assert imread(io.BytesIO(png)).shape[1] == show.WIDTH
+    text = " ".join(said)
+    assert "mm a day on map area" in text
+    assert "No avalanche tool." in text
+    assert ("Pale bands: least to greatest of runs." in text) == bool(members)
+    peak = tables.column("snow_water_mm").max()
+    assert any(word.startswith(f"{peak:.0f} mm on ") for word in said)
+
+
+@pytest.mark.parametrize("days", [1, 5, 120])
+def test_bands_without_ground_are_not_drawn(said, days):
+    png = show.bands_png(season(days), title="t", subtitle="s", notes=NOTES)
+    assert png.startswith(b"\x89PNG")
+    assert "1000–1500" in said
+    assert "1500–2000" not in said
+    assert said.count("0.90 km²") == 3
+
+
+def test_map_of_melt_out_names_dates(said, metric_ground):
+    y, x = np.mgrid[0:40, 0:50].astype(float)
+    ground = metric_ground(1000.0 + 5.0 * x, 50.0)
+    days = (100.0 + 2.0 * x).astype(np.float32)
+    days[y > 35] = np.nan
+    frame = make_frame(ground.shape, ground.transform, ground.crs)
+    first = np.datetime64("2024-10-01")
+    png = show.melt_out_png(ground, frame, days, first, title="t", subtitle="s", notes=NOTES)
+    assert png.startswith(b"\x89PNG")
+    assert "1 Feb" in said
+    assert "15 Mar" in said
+    assert any(word.startswith("mean ") for word in said)
+
+
+def test_running_mean_keeps_length_and_level():
+    values = np.array([1.0, 2.0, 3.0, 4.0])
+    np.testing.assert_allclose(show._running(np.full(10, 3.0), 7), 3.0)
+    np.testing.assert_allclose(show._running(values, 1), values)
+    assert show._running(values, 7).size == 4
+    assert show._running(values[:1], 7).tolist() == [1.0]
