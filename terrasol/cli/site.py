@@ -433,6 +433,7 @@ class _Job:
         if self.error is not None:
             words = self.error.words(self.ground.frame.cell_size)
             said.append(f"± is the standard error from a {words}.")
+        said += [f"Warning: {text}." for text in record["warnings"]]
         source = os.path.basename(self.common.dem)
         page = site_page(elevation, sites, days=self.days, notes=said, source=source)
         title = " and ".join(spot.name or "a place" for spot in self.spots)

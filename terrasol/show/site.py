@@ -460,8 +460,9 @@ class _Sheet:
         ]
         lines = wrap(_printed(" ".join(said)), SMALL, self.right - self.left)
         step = min(13.0, (A4[1] - 20 - TOPS["notes"]) / len(lines))
+        size = min(SMALL, 0.9 * step)
         for k, line in enumerate(lines):
-            self._text(self.left, TOPS["notes"] + k * step, line, SMALL, colour=SOFT)
+            self._text(self.left, TOPS["notes"] + k * step, line, size, colour=SOFT)
 
 
 def _printed(words: str) -> str:

@@ -119,6 +119,24 @@ def test_error_of_the_heights(dem, capsys):
     assert record["settings"]["dem_error"]["seed"] == 7
 
 
+def test_an_error_that_cannot_be_is_doubted(dem, tmp_path, capsys):
+    """Errors of 30 m would have left these gentle hills far rougher."""
+    asked = [
+        "--at",
+        AT,
+        "--dem-error",
+        "30,50",
+        "--realisations",
+        "2",
+        "--out",
+        str(tmp_path / "o"),
+    ]
+    assert main(["site", dem, *asked, *QUICK]) == 0
+    assert "smoother" in capsys.readouterr().out
+    record = json.loads((tmp_path / "o" / "run.json").read_text("utf-8"))
+    assert any("smoother" in text for text in record["warnings"])
+
+
 def test_clouds_by_indices(dem, capsys):
     found = []
     for more in ([], ["--clear-sky-index", "0.5"]):
