@@ -143,7 +143,7 @@ def _map(page, survey, parcel, elevation, frame, box) -> None:
     scale_and_north(page, panel, limits, y + height + 24)
     notes = [] if step is None else [f"contours every {step:g} m"]
     if parcel.patches is not None:
-        notes.append("hatched: does not meet the rule")
+        notes.append("hatched: fails the rule")
     if parcel.numbers["unknown_ha_map"] > 0.0:
         notes.append("blank: unknown")
     page.text(x, y + height + 24, "  ·  ".join(notes), SMALL, colour=SOFT)
@@ -565,8 +565,6 @@ def notes_of(survey: Survey) -> list[str]:
     if asked.rule is not None:
         least = f", in patches from {asked.least_patch:g} m²" if asked.least_patch else ""
         notes.append(f"Rule: {asked.rule.text}{least}.")
-    if survey.score is not None:
-        notes.append(f"Score: {survey.score.text}.")
     return notes
 
 

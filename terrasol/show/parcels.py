@@ -39,14 +39,15 @@ from terrasol.show.parcel_sheet import (
     with_error,
 )
 
-MAP_HEIGHT: Final = 360
+MAP_HEIGHTS: Final = 360.0, 560.0
 PITCH: Final = 19.0
-"""Height of the map and of a row of the table [pixels]."""
+"""Least and greatest height of the map, and height of a row of the table [pixels]."""
 
 MOST_ROWS: Final = 24
 """Parcels in the table; the rest are in parcels.csv."""
 
-TABLE_TOP: Final = 548
+BELOW_MAP: Final = 188.0
+"""From the height of the map to the top of the table [pixels]."""
 
 CLASS_BAR: Final = 84.0
 """Length of the bar of slope classes in the table [pixels]."""
@@ -75,9 +76,10 @@ def summary_page(survey: Survey, elevation: Elevation, frame: Frame, *, title: s
     page.axes.set_zorder(10)
     with style.context("default"):
         _head(page, survey, title)
-        _map(page, survey, elevation, frame)
-        _legend(page, survey, 90 + MAP_HEIGHT + 38)
-        bottom = _table(page, survey)
+        height = _map_height(survey)
+        _map(page, survey, elevation, frame, height)
+        _legend(page, survey, height + 128)
+        bottom = _table(page, survey, height + BELOW_MAP)
         _score(page, survey, bottom + 22)
         _foot(page, survey)
     return page
@@ -94,9 +96,17 @@ def _head(page: Page, survey: Survey, title: str) -> None:
     page.text(MARGIN, 79, clip(words, TEXT, INNER), TEXT, colour=SOFT)
 
 
-def _map(page: Page, survey: Survey, elevation: Elevation, frame: Frame) -> None:
+def _map_height(survey: Survey) -> float:
+    """Height of the map: all that table and score leave."""
+    left = PITCH * (MOST_ROWS - len(survey.parcels))
+    if survey.score is not None:
+        left -= 50.0 + 14.0 * len(survey.score.terms)
+    return float(np.clip(MAP_HEIGHTS[0] + left, *MAP_HEIGHTS))
+
+
+def _map(page: Page, survey: Survey, elevation: Elevation, frame: Frame, height: float) -> None:
     """All parcels among the contours of their ground."""
-    panel = Panel(page, MARGIN, 94, INNER, MAP_HEIGHT)
+    panel = Panel(page, MARGIN, 94, INNER, height)
     for spine in panel.axes.spines.values():
         spine.set_visible(True)
         spine.set(color=SOFT, linewidth=0.8 * POINTS_PER_PIXEL)
@@ -105,7 +115,7 @@ def _map(page: Page, survey: Survey, elevation: Elevation, frame: Frame) -> None
     column = np.mean([[w.column, w.column + w.columns - 1] for w in windows])
     ground = GroundMap.at(frame, float(row), float(column))
     paths = [outline_path(parcel.outline, elevation, ground) for parcel in survey.order]
-    limits = frame_around(paths, INNER, MAP_HEIGHT, 0.08)
+    limits = frame_around(paths, INNER, height, 0.08)
     panel.limits(*limits)
     step = draw_contours_around(panel.axes, elevation, ground, limits)
     for parcel, path in zip(survey.order, paths, strict=True):
@@ -115,10 +125,10 @@ def _map(page: Page, survey: Survey, elevation: Elevation, frame: Frame) -> None
         box = path.get_extents()
         x, y = panel.place(box.x1, (box.y0 + box.y1) / 2.0)
         page.text(x + 4, y + 4, f"{number}", TEXT, bold=True, halo=PAPER)
-    scale_and_north(page, panel, limits, 94 + MAP_HEIGHT + 14)
+    scale_and_north(page, panel, limits, height + 108)
     if step is not None:
         words = f"contours every {step:g} m; numbers as in the table"
-        page.text(MARGIN, 94 + MAP_HEIGHT + 14, words, SMALL, colour=SOFT)
+        page.text(MARGIN, height + 108, words, SMALL, colour=SOFT)
 
 
 def _legend(page: Page, survey: Survey, y: float) -> None:
@@ -131,7 +141,7 @@ def _legend(page: Page, survey: Survey, y: float) -> None:
         page.text(x + 19, y, name, SMALL)
         x += 34 + text_width(name, SMALL)
     if survey.settings.asked.rule is not None:
-        page.text(x + 4, y, "hatched: does not meet the rule", SMALL, colour=SOFT)
+        page.text(x + 4, y, "hatched: fails the rule", SMALL, colour=SOFT)
 
 
 def _columns(survey: Survey) -> list[tuple[str, float, Cell]]:
@@ -181,13 +191,12 @@ def _score_cell(survey: Survey) -> Cell:
     return cell
 
 
-def _table(page: Page, survey: Survey) -> float:
+def _table(page: Page, survey: Survey, top: float) -> float:
     """One row a parcel; returns where it ends."""
     columns = _columns(survey)
     right = WIDTH - MARGIN
     ends = right - np.cumsum([0.0, *(width for _, width, _ in reversed(columns))])[:-1][::-1]
     bar = float(ends[0] - columns[0][1] - CLASS_BAR - 14.0)
-    top = TABLE_TOP
     heading(page, MARGIN, top - 26, "Parcels", _table_words(survey))
     page.text(bar, top - 6, "slope classes", SMALL, colour=SOFT)
     for (name, _, _), end in zip(columns, ends, strict=True):
