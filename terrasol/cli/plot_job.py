@@ -351,6 +351,12 @@ def _summary_text(record: dict[str, Any]) -> str:
         f"{counted(results['plots'], 'plot')} ({flags}): {results['predictors']} predictors in"
         f" {results['columns']} columns, at cells of {cells} m",
     ]
+    level = results["level_ground"]
+    lights = [f"{level['irradiation']:g} {level['unit']}"] if "irradiation" in level else []
+    times = [f"{level['sun_hours']:g} h of sun"] if "sun_hours" in level else []
+    if level:
+        what = " and ".join([*lights, *times])
+        told.append(f"open level ground at the centre and mean height gets {what} in the year")
     for each in results.get("strongest_with_response", []):
         told.append(
             f"{record['settings']['response']} goes with {each['column']}: Spearman"

@@ -11,13 +11,14 @@ from numpy.typing import NDArray
 from scipy.interpolate import RegularGridInterpolator
 
 from terrasol.engine.hours import plan_hours
-from terrasol.engine.job import Plan, plan_irradiation
+from terrasol.engine.job import Plan, plan_irradiation, plan_terrain
 from terrasol.engine.plan import Block, Progress, blocks_of
 from terrasol.engine.plot_places import PLACED, Located
 from terrasol.engine.plot_settings import PlotSettings
 from terrasol.engine.plot_table import CELL, ERROR, GREATEST, KNOWN, LEAST, MEAN, POINT, Told
 from terrasol.engine.predictors import (
     Bands,
+    Predictor,
     ground_predictors,
     ground_values,
     hours_predictors,
@@ -39,6 +40,12 @@ MOST_CELLS: Final = 4_000_000
 """Most cells in a circle: what a plot may ask for before it is a map (judgement)."""
 
 
+Values = Callable[[Bands, Array, Array], Array]
+"""Given layers, height and latitude of some cells: values of predictors, (cells, predictors)."""
+
+Work = tuple[Plan, list[Predictor], Values]
+
+
 @dataclass(frozen=True)
 class Grain:
     """The plots on the ground in cells of one size."""
@@ -55,36 +62,52 @@ class Grain:
         s, ground = self.settings, self.ground
         frame = make_frame(ground.shape, ground.transform, ground.crs)
         shares = self._shares(frame)
-        plan = plan_irradiation(ground, s.light, scene)
+        told = Told([], {}, {}, [], {})
+        gathered = []
+        jobs = [self._light(scene), *([self._time(scene)] if s.timed else [])]
+        for number, (plan, predictors, values) in enumerate(jobs):
+            sink = CellSink(plan, shares, values, len(predictors))
+            begin, part = number / len(jobs), 1.0 / len(jobs)
+
+            def move(share: float, stage: str, begin: float = begin, part: float = part) -> None:
+                progress(begin + part * share, stage)
+
+            summary = sink.carry_out(threads, move)
+            gathered.append(sink.gathered)
+            told.predictors.extend(predictors)
+            told.level.update(_level(summary.numbers))
+            told.warnings.extend(summary.warnings)
+            for stage, value in summary.seconds.items():
+                told.seconds[stage] = told.seconds.get(stage, 0.0) + value
+        told.values.update(self._statistics(gathered))
+        return told
+
+    def _light(self, scene: Scene) -> Work:
+        """The plan of ground and, if asked for, light; its predictors, and their values."""
+        s = self.settings
+        if not s.lit:
+            light = s.light
+            plan = plan_terrain(
+                self.ground, light.azimuths, refraction=light.refraction, scene=scene
+            )
+            return plan, ground_predictors(), ground_values
         predictors = [*ground_predictors(), *light_predictors(s.light, s.season)]
 
-        def light(bands: Bands, height: Array, latitude: Array) -> Array:
+        def values(bands: Bands, height: Array, latitude: Array) -> Array:
             own = ground_values(bands, height, latitude)
             return np.concatenate([own, light_values(bands, s.light, s.season)], axis=1)
 
-        half = 0.5 if s.timed else 1.0
-        sink = CellSink(plan, shares, light, len(predictors))
-        summary = sink.carry_out(threads, lambda share, stage: progress(half * share, stage))
-        gathered, level = [sink.gathered], {"irradiation": summary.numbers["level_ground"]}
-        said, seconds = list(summary.warnings), dict(summary.seconds)
-        if s.timed:
-            timed = plan_hours(ground, s.hours, scene)
-            more = hours_predictors(s.hours, s.season)
+        return plan_irradiation(self.ground, s.light, scene), predictors, values
 
-            def hours(bands: Bands, height: Array, latitude: Array) -> Array:
-                return hours_values(bands, s.hours, s.season)
+    def _time(self, scene: Scene) -> Work:
+        """The plan of hours of sun, its predictors, and their values."""
+        s = self.settings
 
-            sink = CellSink(timed, shares, hours, len(more))
-            summary = sink.carry_out(
-                threads, lambda share, stage: progress(half + half * share, stage)
-            )
-            gathered.append(sink.gathered)
-            predictors += more
-            level["sun_hours"] = summary.numbers["level_ground_sun_hours"]
-            said += summary.warnings
-            for stage, value in summary.seconds.items():
-                seconds[stage] = seconds.get(stage, 0.0) + value
-        return Told(predictors, self._statistics(gathered), level, said, seconds)
+        def values(bands: Bands, height: Array, latitude: Array) -> Array:
+            return hours_values(bands, s.hours, s.season)
+
+        plan = plan_hours(self.ground, s.hours, scene)
+        return plan, hours_predictors(s.hours, s.season), values
 
     @property
     def _kinds(self) -> list[tuple[str, float | None]]:
@@ -96,11 +119,10 @@ class Grain:
         """The cells that every plot asks for, one share a kind."""
         shape, found = self.ground.shape, []
         size = frame.cell_size
-        if self.settings.radii and np.pi * max(self.settings.radii) ** 2 > MOST_CELLS * np.prod(
-            size
-        ):
+        widest = max(self.settings.radii, default=0.0)
+        if np.pi * widest**2 > MOST_CELLS * size[0] * size[1]:
             raise SettingError(
-                f"a circle of {max(self.settings.radii):g} m has more than {MOST_CELLS:,} cells of"
+                f"a circle of {widest:g} m has more than {MOST_CELLS:,} cells of"
                 f" {size[0]:.3g} m: give a coarser raster, or smaller circles"
             )
         rows = (self.located.row + 0.5) / self.factor - 0.5
@@ -136,7 +158,7 @@ class Grain:
 
         mean, deviation = all_of(lambda g: g.mean), all_of(lambda g: g.deviation)
         low, high = all_of(lambda g: g.least), all_of(lambda g: g.greatest)
-        known = gathered[0].weight[:, :1]
+        known = np.where(self.located.flag == PLACED, 1.0, np.nan)[:, None]
         own = mean[:: len(kinds)]
         told: dict[tuple[str, float | None], Array] = {}
         for place, (statistic, radius) in enumerate(kinds):
@@ -149,8 +171,18 @@ class Grain:
                 told[statistic, radius] = mean[rows]
             if statistic == MEAN:
                 told[LEAST, radius], told[GREATEST, radius] = low[rows], high[rows]
-                told[KNOWN, radius] = known[rows]
+                told[KNOWN, radius] = known * gathered[0].weight[rows, :1]
         return told
+
+
+def _level(numbers: dict[str, Any]) -> dict[str, Any]:
+    """What open level ground gets, out of a summary."""
+    names = {
+        "level_ground": "irradiation",
+        "unit": "unit",
+        "level_ground_sun_hours": "sun_hours",
+    }
+    return {told: numbers[name] for name, told in names.items() if name in numbers}
 
 
 @dataclass(frozen=True)
@@ -189,7 +221,7 @@ class CellSink:
         self,
         plan: Plan,
         shares: Shares,
-        values: Callable[[Bands, Array, Array], Array],
+        values: Values,
         quantities: int,
     ) -> None:
         self.plan = plan

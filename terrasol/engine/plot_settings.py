@@ -7,7 +7,7 @@ from typing import Final
 
 import numpy as np
 
-from terrasol.engine.predictors import GROUPS, OF_TIME
+from terrasol.engine.predictors import GROUPS, OF_LIGHT, OF_TIME
 from terrasol.errors import SettingError
 from terrasol.light.hours import HoursSettings
 from terrasol.light.settings import LightSettings
@@ -72,6 +72,11 @@ class PlotSettings:
         unknown = set(self.groups) - set(GROUPS)
         if unknown or not self.groups:
             raise SettingError(f"predictors must be some of {', '.join(GROUPS)}")
+
+    @property
+    def lit(self) -> bool:
+        """Whether energy is asked for."""
+        return any(group in OF_LIGHT for group in self.groups)
 
     @property
     def timed(self) -> bool:

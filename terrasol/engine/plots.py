@@ -14,8 +14,9 @@ import numpy as np
 from terrasol.constants import ENERGY_UNITS, PHOTONS_PER_JOULE, REFRACTION_COEFFICIENT
 from terrasol.engine.datasets import clear_air, scene_of
 from terrasol.engine.hours import plan_hours
-from terrasol.engine.job import NO_SCENE, plan_irradiation
+from terrasol.engine.job import NO_SCENE, Plan, plan_irradiation, plan_terrain
 from terrasol.engine.plan import Progress
+from terrasol.engine.plot_doubts import plot_doubts
 from terrasol.engine.plot_grain import Grain
 from terrasol.engine.plot_places import PLACED, Located, locate
 from terrasol.engine.plot_settings import RADII, PlotSettings, hours_azimuths
@@ -107,7 +108,9 @@ def plot_table(
 
         table.add(grain.run(scene, threads, move), size, tag)
         done += part
-    return table.finished(sizes)
+    finished = table.finished(sizes)
+    finished.warnings.extend(plot_doubts(finished, settings.radii))
+    return finished
 
 
 def column_count(points: Points, settings: PlotSettings) -> int:
@@ -124,11 +127,16 @@ def column_count(points: Points, settings: PlotSettings) -> int:
     return one * len(settings.factors)
 
 
+def _plans(ground: Elevation, settings: PlotSettings) -> list[Plan]:
+    """The work on a ground, for what it costs."""
+    light = settings.light
+    lit = plan_irradiation(ground, light) if settings.lit else plan_terrain(ground, light.azimuths)
+    return [lit, *([plan_hours(ground, settings.hours)] if settings.timed else [])]
+
+
 def forecast_bytes(elevation: Elevation, points: Points, settings: PlotSettings) -> int:
     """Peak memory to expect: of the maps' blocks, of what is gathered, and of the table."""
-    plans = [plan_irradiation(elevation, settings.light)]
-    if settings.timed:
-        plans.append(plan_hours(elevation, settings.hours))
+    plans = _plans(elevation, settings)
     columns = column_count(points, settings)
     gathered = GATHERED_BYTES * len(points) * columns / len(settings.factors)
     return int(max(plan.memory_bytes for plan in plans) + gathered + 24.0 * len(points) * columns)
@@ -147,9 +155,7 @@ def forecast_seconds(
             for r, c in zip(located.row[placed], located.column[placed], strict=True)
         }
         share = min(len(corners) * BLOCK**2 / ground.heights.size, 1.0)
-        plans = [plan_irradiation(ground, settings.light)]
-        if settings.timed:
-            plans.append(plan_hours(ground, settings.hours))
+        plans = _plans(ground, settings)
         sweep = 0.3 * (1.0 - share)  # far horizons are swept over all of the raster
         found += sum(plan.seconds(threads) * (share + sweep) for plan in plans)
     return found

@@ -35,6 +35,11 @@ GROUPS: Final = {
 }
 """Groups of predictors, as `--predictors` takes them."""
 
+OF_LIGHT: Final = (
+    "irradiation", "irradiation_months", "photosynthetic", "photosynthetic_months",
+)  # fmt: skip
+"""Groups that need energy to be summed."""
+
 OF_TIME: Final = ("sun_hours", "sun_hours_months", "first_last_sun")
 """Groups that need hours of sun to be counted."""
 

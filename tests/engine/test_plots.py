@@ -340,6 +340,7 @@ def test_plots_without_ground_stay_as_rows(hills):
     assert frame["flag"].tolist() == ["void", "ok", "outside", "no place"]
     predictors = [c.name for c in table.columns if c.statistic and c.statistic != "known"]
     assert frame.loc[[0, 2, 3], predictors].isna().all(axis=None)
+    assert frame.loc[[0, 2, 3], "known_r50"].isna().all()
     assert frame.loc[1, predictors].notna().all()
     assert np.isfinite(frame["longitude"][:3]).all()
     words = " ".join(table.warnings)
@@ -486,3 +487,18 @@ def test_horizons_are_those_of_the_cells(hills):
     assert np.isnan(found[2]).all()
     table = horizon_table(("a", "b", "c"), found)
     assert table["azimuth_deg"][table["id"] == "b"].tolist() == [11.25 * k for k in range(32)]
+
+
+def test_doubts_are_told(hills, metric_ground):
+    points = at_cells(hills, [1.0, 35.0, 35.0], [40.0, 60.0, 80.0], error=[3.0, 90.0, np.nan])
+    table = plot_table(hills, points, settings(radii=(8.0, 90.0), groups=("height",)))
+    words = "\n".join(table.warnings)
+    assert "the circle of 90 m reaches beyond the raster or over voids around plot 'P0':" in words
+    assert "a circle of 8 m is smaller than a cell of 22.36 m" in words
+    assert "the error of position of plot 'P1' is larger than 2 cells" in words
+    assert "McCune" not in words
+    steep = plane(metric_ground, 70.0, 200.0, 62.0)
+    far_north = plot_table(steep, at_cells(steep, [20.0], [20.0]), settings(groups=("heat_load",)))
+    for number in (1, 2, 3):
+        assert any(f"equation {number} of McCune" in text for text in far_north.warnings)
+        assert far_north.frame[f"mccune_valid_{number}"].tolist() == [0.0]
