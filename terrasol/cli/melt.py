@@ -658,12 +658,7 @@ def _summary_text(record: dict[str, Any]) -> str:
         f"mm on map area: {totals}",
         f"peak snow water {r['peak_snow_water']:.0f} mm on {r['peak_day']};"
         f" {r['snow_water_at_end']:.0f} mm at the end",
-        *(
-            f"{m['month']}: melt {m['melt_m3'] / 1e6:.3f} million m3, runoff input"
-            f" {m['runoff_input_m3'] / 1e6:.3f} million m3"
-            + (f"; melt from {', '.join(m['from'])}" if m["from"] else "")
-            for m in r["months"]
-        ),
+        *(_month_words(month) for month in r["months"]),
         *(f"{name}: {words}" for name, words in _agreement_rows(record["settings"]["station"])),
         f"water balance closes to {max(r['water_balance_error'].values()):.1g} of what came",
     ]
@@ -675,3 +670,15 @@ def _summary_text(record: dict[str, Any]) -> str:
     took = duration(record["seconds"]["whole run"])
     told.append(f"{counted(len(files), 'file')} in {os.path.dirname(files[0])} after {took}")
     return "\n".join(told)
+
+
+def _month_words(month: dict[str, Any]) -> str:
+    """Water of a month, with the range of the spread, and where the melt comes from."""
+    told = []
+    for name in ("melt", "runoff input"):
+        key = f"{name.replace(' ', '_')}_m3"
+        low, high = (f"{value / 1e6:.3f}" for value in month[f"{key}_range"])
+        spread = f" ({low} to {high})" if low != high else ""
+        told.append(f"{name} {month[key] / 1e6:.3f}{spread}")
+    places = f"; melt from {', '.join(month['from'])}" if month["from"] else ""
+    return f"{month['month']}, million m3: {', '.join(told)}{places}"

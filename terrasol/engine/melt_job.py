@@ -304,6 +304,8 @@ def season_numbers(result: MeltResult, tables: SeasonTables) -> dict[str, Any]:
                 "month": month,
                 "melt_m3": round(float(melt.sum()), 1),
                 "runoff_input_m3": round(float(runoff.sum()), 1),
+                "melt_m3_range": tables.range_of_volume("melt_mm", days),
+                "runoff_input_m3_range": tables.range_of_volume("runoff_input_mm", days),
                 "from": top_zones(tables, month),
             }
         )

@@ -115,6 +115,12 @@ class SeasonTables:
         all_of = np.column_stack([self.column(name), self.members[..., RANGES.index(name)]])
         return all_of.min(1), all_of.max(1)
 
+    def range_of_volume(self, name: str, days: NDArray[np.bool_]) -> list[float]:
+        """Least and greatest water of some days, over the model and its spread's members [m3]."""
+        member = self.members[days][..., RANGES.index(name)].sum(0)
+        all_of = np.append(member, self.column(name)[days].sum()) * self.area.sum() / 1000.0
+        return [round(float(all_of.min()), 1), round(float(all_of.max()), 1)]
+
     @cached_property
     def months(self) -> list[str]:
         """Calendar months of the days, as text."""

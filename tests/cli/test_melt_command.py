@@ -99,7 +99,7 @@ def test_a_run_and_all_of_its_files(dem, station, tmp_path, capsys):
     said = capsys.readouterr()
     assert said.out == ""
     assert "no avalanche tool" in said.err
-    assert "2025-03: melt" in said.err
+    assert "2025-03, million m3: melt" in said.err
     assert "water balance closes" in said.err
     record = json.loads((out / "run.json").read_text())
     names = {path.rsplit("/", 1)[-1] for path in record["files"]}

@@ -114,6 +114,9 @@ def test_tables_hold_the_water_of_the_cells(season, ground):
     )
     months = season_numbers(season, tables)["months"]
     assert [m["month"] for m in months] == ["2025-03", "2025-04"]
+    for m in months:
+        low, high = m["melt_m3_range"]
+        assert low < m["melt_m3"] < high
     assert sum(m["melt_m3"] for m in months) == pytest.approx(melt * weight.sum() / 1e3, abs=0.2)
 
 
