@@ -41,6 +41,11 @@ TITLE, HEAD, TEXT, SMALL, TICK = 25.0, 12.5, 11.0, 9.5, 9.5
 """Sizes of letters [pixels]."""
 
 INNER: Final = WIDTH - 2 * MARGIN
+
+SLACK: Final = 0.94
+"""Share of a width that lines of small letters may fill: printed, they run up to 5 % longer than
+measured on the screen's pixels."""
+
 SUNNY, LEVEL, SEASON_OFF = "#c4633f", "#24262b", "#dcb6a3"
 """Colours of the parcel's light in and out of the season, and of level ground."""
 
@@ -570,8 +575,8 @@ def notes_of(survey: Survey) -> list[str]:
 
 def _foot(page: Page, survey: Survey) -> None:
     """Basis, rule, and what is not in it."""
-    notes = wrap(" ".join(notes_of(survey)), 8.2, INNER)
-    last = wrap(VINEYARD, 8.6, INNER - 80, bold=True)
+    notes = wrap(" ".join(notes_of(survey)), 8.2, SLACK * INNER)
+    last = wrap(VINEYARD, 8.6, SLACK * INNER - 80, bold=True)
     y = HEIGHT - 18 - 10.0 * (len(notes) + len(last) - 1)
     for k, line in enumerate(notes):
         page.text(MARGIN, y + k * 10.0, line, 8.2, colour=SOFT)

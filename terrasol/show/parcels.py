@@ -29,6 +29,7 @@ from terrasol.show.parcel_sheet import (
     HEIGHT,
     INNER,
     MARGIN,
+    SLACK,
     SMALL,
     TEXT,
     TITLE,
@@ -266,8 +267,8 @@ def _score(page: Page, survey: Survey, y: float) -> None:
 
 def _foot(page: Page, survey: Survey) -> None:
     """Basis, rule, and what is not in it, in larger letters than on the sheets."""
-    lines = [*wrap(" ".join(notes_of(survey)), 8.8, INNER)]
-    last = wrap(VINEYARD, TEXT, INNER, bold=True)
+    lines = [*wrap(" ".join(notes_of(survey)), 8.8, SLACK * INNER)]
+    last = wrap(VINEYARD, TEXT, SLACK * INNER, bold=True)
     y = HEIGHT - 34 - 14.0 * len(last) - 11.0 * len(lines)
     for k, line in enumerate(lines):
         page.text(MARGIN, y + k * 11.0, line, 8.8, colour=SOFT)
