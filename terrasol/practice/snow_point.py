@@ -213,7 +213,7 @@ class Fit:
     def record(self) -> dict[str, Any]:
         """Ready for JSON."""
         return {
-            "fitted": {name: round(value, 6) for name, value in self.fitted.items()},
+            "fitted": {name: float(f"{value:.6g}") for name, value in self.fitted.items()},
             "before": self.before.record(),
             "after": self.after.record(),
             "split_sample": list(self.split),
@@ -289,7 +289,7 @@ def fit_snow(
     split = []
     for told, use, other in split_days(weather.edges, observed):
         part = _search(model, names, lambda one, use=use: run(one, use).rmse)  # type: ignore[misc]
-        fitted = {name: round(part.numbers[name], 6) for name in names}
+        fitted = {name: float(f"{part.numbers[name]:.6g}") for name in names}
         split.append(
             {
                 "fitted_on": told[0], "judged_on": told[1], "fitted": fitted,
