@@ -273,7 +273,7 @@ def _single(geometry: Any) -> Any:
 
 def _read_text(path: str | PathLike[str]) -> tuple[pd.DataFrame, list[str]]:
     """A table of text as it stands, and what was taken for granted."""
-    lines = _lines(path)
+    lines, notes = _lines(path)
     separator = max(",;\t|", key=lambda sign: len(next(csv.reader(lines[:1], delimiter=sign))))
     rows = list(csv.reader(lines, delimiter=separator))
     header = [name.strip() for name in rows[0]]
@@ -288,7 +288,6 @@ def _read_text(path: str | PathLike[str]) -> tuple[pd.DataFrame, list[str]]:
                 " or put text with it into quotes"
             )
     body = [[cell.strip() for cell in row[:width]] + [""] * (width - len(row)) for row in rows[1:]]
-    notes = []
     if separator != "," and any(DECIMAL_COMMA.fullmatch(c) for row in body for c in row):
         body = [[c.replace(",", ".") if DECIMAL_COMMA.fullmatch(c) else c for c in r] for r in body]
         notes.append("numbers with a comma are read as decimal numbers")
@@ -296,21 +295,27 @@ def _read_text(path: str | PathLike[str]) -> tuple[pd.DataFrame, list[str]]:
     return pd.DataFrame(body, columns=names, dtype=object), notes
 
 
-def _lines(path: str | PathLike[str]) -> list[str]:
-    """The lines of a text file that are not empty: a header, and at least one more."""
+def _lines(path: str | PathLike[str]) -> tuple[list[str], list[str]]:
+    """The lines of a text file that are not empty, a header and more, and what was assumed."""
     if os.path.isdir(path):
         raise InputError("this is a folder, not a table: name the file in it")
     try:
-        with open(path, encoding="utf-8-sig", errors="replace", newline=None) as file:
-            text = file.read()
+        with open(path, "rb") as file:
+            data = file.read()
     except OSError as error:
         raise InputError(f"the file cannot be read ({error.strerror}): check its name") from error
-    if "\0" in text:
-        raise InputError("the file is not text: save the table as CSV")
-    lines = [line for line in text.split("\n") if line.strip()]
+    if b"\0" in data:
+        raise InputError("the file is not text in UTF-8: save the table as CSV in UTF-8")
+    notes = []
+    try:
+        text = data.decode("utf-8-sig")
+    except UnicodeDecodeError:
+        text = data.decode("cp1252", "replace")
+        notes.append("the table is not in UTF-8 and is read as Windows-1252: check the names")
+    lines = [line for line in re.split(r"\r\n|\r|\n", text) if line.strip()]
     if len(lines) < 2:
         raise InputError("the table has no row below its header: give one row a plot")
-    return lines
+    return lines, notes
 
 
 def _coordinates(

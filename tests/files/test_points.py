@@ -92,6 +92,15 @@ def test_how_tables_are_written(tmp_path, text, x):
     assert (points.x.tolist(), points.y.tolist()) == ([x], [46.25])
 
 
+def test_letters_of_old_tables_are_kept_and_said(tmp_path):
+    path = table(tmp_path, "id,lon,lat\nGrünsee,10,46\n", encoding="cp1252")
+    points = read_points(path)
+    assert points.names == ("Grünsee",)
+    assert "Windows-1252" in points.remarks[0]
+    with pytest.raises(InputError, match="UTF-8"):
+        read_points(table(tmp_path, "id,lon,lat\nA,10,46\n", encoding="utf-16"))
+
+
 def test_a_decimal_comma_is_said(tmp_path):
     points = read_points(table(tmp_path, "id;lon;lat\nA;10,5;46,2\n"))
     assert any("with a comma" in text for text in points.remarks)
