@@ -13,7 +13,14 @@ from numpy.typing import NDArray
 
 from terrasol.engine.ground_work import Ground
 from terrasol.engine.job import Summary
-from terrasol.engine.melt_cells import QUANTITIES, Cells, Found, Zones, cells_of
+from terrasol.engine.melt_cells import (
+    QUANTITIES,
+    Cells,
+    Found,
+    Zones,
+    cells_of,
+    known_ground,
+)
 from terrasol.engine.plan import Block, Progress, check_threads, default_threads
 from terrasol.engine.series import HORIZON_SHARE, SeriesPlan, SeriesRun, Span, look_up_sky, span_of
 from terrasol.engine.series_work import BlockWork
@@ -466,10 +473,7 @@ def zones_for(
 ) -> Zones:
     """Zones of a raster; without a width, bands of about a tenth of the area's relief."""
     if step is None:
-        known = np.isfinite(heights) if share is None else np.isfinite(heights) & (share > 0.0)
-        if not known.any():
-            raise InputError("the area holds no known ground of the elevation model")
-        relief = float(np.ptp(heights[known]))
+        relief = float(np.ptp(heights[known_ground(heights, share)]))
         step = next((s for s in BAND_STEPS if relief / s <= MOST_BANDS), 500.0)
     return Zones.of(heights, step, share, name)
 

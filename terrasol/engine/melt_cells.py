@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 from terrasol.engine.ground_work import BlockGround, Ground
 from terrasol.engine.plan import Block
 from terrasol.engine.series_work import BlockWork, Part, SeriesBlock
+from terrasol.errors import InputError
 from terrasol.ground.frame import Frame
 from terrasol.ground.surface import slope_and_aspect
 from terrasol.kernels.melt import FLOWS, zone_sums
@@ -66,8 +67,14 @@ class Zones:
         share: NDArray[np.float32] | None,
         name: str,
     ) -> Zones:
-        """Bands of a width [m] that hold all the area's known ground."""
-        known = np.isfinite(heights) if share is None else np.isfinite(heights) & (share > 0.0)
+        """Bands of a width [m] that hold all the area's known ground.
+
+        Raises
+        ------
+        InputError
+            There is none.
+        """
+        known = known_ground(heights, share)
         low, high = float(heights[known].min()), float(heights[known].max())
         first, last = np.floor(low / step), np.floor(high / step) + 1.0
         return cls(step * np.arange(first, last + 1.0), share, name)
@@ -81,6 +88,22 @@ class Zones:
         sector = sector_numbers(aspect, slope)
         inside = np.isfinite(heights) & (band >= 0) & (band < self.bands) & (sector >= 0)
         return np.where(inside, band * len(FACINGS) + sector, -1).astype(np.int32)
+
+
+def known_ground(
+    heights: NDArray[np.float32], share: NDArray[np.float32] | None
+) -> NDArray[np.bool_]:
+    """Cells of an area with a height.
+
+    Raises
+    ------
+    InputError
+        There are none.
+    """
+    known = np.isfinite(heights) if share is None else np.isfinite(heights) & (share > 0.0)
+    if not known.any():
+        raise InputError("the area holds no known ground of the elevation model")
+    return known
 
 
 def map_area(frame: Frame, rows: range, columns: range) -> NDArray[np.float64]:
