@@ -54,6 +54,9 @@ BAND_STEPS: Final = (10.0, 20.0, 50.0, 100.0, 200.0, 250.0)
 MOST_BANDS: Final = 12.0
 """Widths of bands of height [m] to choose from, 500 m at most, and how many there may be, about."""
 
+AT_END: Final = "time: point (comment: at the end of the interval)"
+"""Of what lies, as CF puts it."""
+
 VARIABLES: Final = (
     StackVariable(
         "melt", "kg m-2", "melt of snow in the day, per area of map", "time: sum", 2.0**-6,
@@ -61,17 +64,17 @@ VARIABLES: Final = (
     ),
     StackVariable(
         "snow_water", "kg m-2",
-        "snow water, frozen and liquid, at the end of the day, per area of map", "time: point",
+        "snow water, frozen and liquid, at the end of the day, per area of map", AT_END,
         2.0**-6, "surface_snow_amount",
     ),
     StackVariable(
         "albedo", "1", "albedo of the snow, or of the ground without snow, at the end of the day",
-        "time: point", 2.0**-10, "surface_albedo",
+        AT_END, 2.0**-10, "surface_albedo",
     ),
     StackVariable(
         "snow_covered", "1",
         f"1 where {COVERED_FROM:g} mm of snow water or more lie at the end of the day, 0 elsewhere",
-        "time: point", 1.0,
+        AT_END, 1.0,
     ),
 )  # fmt: skip
 """Of the daily stack. 1 kg m-2 of water is 1 mm."""
