@@ -1,6 +1,7 @@
 """The command `terrasol plots`: files, record, words, refusals."""
 
 import json
+from pathlib import Path
 
 import geopandas
 import numpy as np
@@ -244,3 +245,58 @@ def test_plots_elsewhere(dem, tmp_path, capfd):
 
 def test_groups_are_those_of_the_library():
     assert tuple(KNOWN_GROUPS) == GROUPS
+
+
+def test_the_southern_season(tmp_path):
+    path = write_raster(tmp_path / "south.tif", crs="EPSG:32732", unit="m")
+    x, y = GRID @ (20.5, 20.5)
+    table = tmp_path / "p.csv"
+    table.write_text(f"id,x,y\nA,{x},{y}\n")
+    asked = ["--plots-crs", "EPSG:32732", "--predictors", "irradiation,aspect", "--quiet"]
+    out = tmp_path / "out"
+    assert main(["plots", str(path), str(table), str(out), *asked, *QUICK]) == 0
+    record = json.loads((out / "run.json").read_text("utf-8"))
+    assert record["settings"]["season_months"] == [10, 11, 12, 1, 2, 3, 4]
+    assert "October to April" in (out / "methods.md").read_text("utf-8")
+    frame = pd.read_csv(out / "plots.csv")
+    assert frame["latitude"][0] < 0.0
+
+
+def test_plots_of_a_vector_file(dem, plots, done, tmp_path):
+    frame = pd.read_csv(plots)
+    places = geopandas.points_from_xy(frame["lon"], frame["lat"], crs=4326).to_crs(32632)
+    path = tmp_path / "p.gpkg"
+    geopandas.GeoDataFrame(frame.drop(columns=["lon", "lat"]), geometry=places).to_file(path)
+    asked = ["--radii", "60", "--gps-error", "10", "--predictors", "height,slope", "--quiet"]
+    out = tmp_path / "out"
+    assert main(["plots", str(dem), str(path), str(out), *asked, *QUICK]) == 0
+    found, same = pd.read_csv(out / "plots.csv"), pd.read_csv(done / "plots.csv")
+    for name in ("height_m", "slope_deg_r60_mean", "height_m_gps_sd"):
+        np.testing.assert_allclose(found[name], same[name], rtol=1e-5)
+    assert found["cover"].tolist() == same["cover"].tolist()
+
+
+def test_under_a_measured_sky(dem, plots, done, tmp_path, capfd):
+    station = str(Path(__file__).parents[2] / "sample_dem" / "station.csv")
+    asked = ["--station", station, "--predictors", "irradiation,sun_hours", "--radii", "none"]
+    command = ["plots", str(dem), str(plots), str(tmp_path / "out"), *asked, *QUICK]
+    assert main(command) == 2
+    assert "not twelve whole months" in capfd.readouterr().err
+    assert main([*command, "--period", "2024-10/2025-09", "--albedo", "0.25", "--quiet"]) == 0
+    text = (tmp_path / "out" / "methods.md").read_text("utf-8")
+    for words in ("under the sky measured at", "DIRINT", "2024-10-01/2025-09-30", "is 0.25"):
+        assert words in text, words
+    told = pd.read_csv(tmp_path / "out" / "columns.csv")
+    energy = told[told["column"].str.startswith("irradiation")]
+    assert energy["meaning"].str.contains("under the measured sky").all()
+    clouded = pd.read_csv(tmp_path / "out" / "plots.csv")["irradiation_year_beam_mj_m2_slope"]
+    clear = pd.read_csv(done / "plots.csv")["irradiation_year_beam_mj_m2_slope"]
+    assert (clouded < 0.9 * clear).all()
+
+
+def test_cell_sizes_in_metres_and_multiples(dem, plots, tmp_path):
+    asked = ["--grains", "100,2x,200", "--predictors", "height", "--radii", "none", "--quiet"]
+    out = tmp_path / "out"
+    assert main(["plots", str(dem), str(plots), str(out), *asked, *QUICK]) == 0
+    record = json.loads((out / "run.json").read_text("utf-8"))
+    assert record["settings"]["cells_joined"] == [1, 2, 4]
