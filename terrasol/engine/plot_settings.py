@@ -7,6 +7,7 @@ from typing import Final
 
 import numpy as np
 
+from terrasol.engine.plot_table import length_tag
 from terrasol.engine.predictors import GROUPS, OF_LIGHT, OF_TIME
 from terrasol.errors import SettingError
 from terrasol.light.hours import HoursSettings
@@ -67,6 +68,12 @@ class PlotSettings:
         for name, values in (("radii", self.radii), ("cell sizes", self.factors)):
             if list(values) != sorted(set(values)):
                 raise SettingError(f"the {name} must rise, each given once; got {values}")
+        tags = [length_tag(radius) for radius in self.radii]
+        if len(set(tags)) < len(tags):
+            raise SettingError(
+                "two radii are the same in the names of columns, where they are rounded: choose"
+                " radii further apart"
+            )
         if self.factors[:1] != (1,):
             raise SettingError(f"the cell sizes begin with the raster's own, 1; got {self.factors}")
         unknown = set(self.groups) - set(GROUPS)

@@ -383,6 +383,7 @@ def test_plots_that_are_all_elsewhere_are_refused(hills):
         ({"period": "2024/2025"}, "twelve whole months"),
         ({"radii": (0.0,)}, "radius"),
         ({"radii": (50.0, 20.0)}, "rise"),
+        ({"radii": (50.1, 50.4)}, "further apart"),
         ({"factors": (2, 4)}, "begin"),
         ({"factors": (1, 1)}, "rise"),
         ({"groups": ("colour",)}, "predictors must be"),
