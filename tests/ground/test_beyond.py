@@ -127,7 +127,6 @@ def test_an_outlook_on_oneself_changes_no_bit(small):
     for name in ("height", "away", "across_void"):
         np.testing.assert_array_equal(getattr(runs[0], name), getattr(runs[1], name))
     assert make_scene(small, frame) == Scene()
-    assert Scene().fingerprint() is None
 
 
 def lone_peak(latitude, longitude, distance, azimuth, crs, cell, half=9e3):
@@ -275,15 +274,6 @@ def test_models_that_cannot_serve_are_refused(small):
     ):
         with pytest.raises(terrasol.InputError, match=words):
             far_ground(small, far)
-
-
-def test_a_fingerprint_names_all_that_shades(small):
-    far = FARS["UTM, twice as coarse"]()
-    scene = surrounded(small, far)
-    other = dataclasses.replace(far, heights=far.heights + np.float32(1.0))
-    prints = {scene.fingerprint(), surrounded(small, other).fingerprint(), None}
-    assert len(prints) == 3
-    assert surrounded(small, far).fingerprint() == scene.fingerprint()
 
 
 def test_a_lattice_has_no_place_beside_a_seam():
