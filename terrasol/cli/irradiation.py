@@ -112,6 +112,8 @@ def irradiation(common: Common, around: Around, asked: AskedSky, **given: Any) -
         plan = plan_irradiation(elevation, settings, scene)
     latitude, longitude = frame.centre
     record = _record(settings) | settled.record | around.record()
+    if given["albedo"] == "station":
+        record["albedo"] = _known_months(settings)
     record["centre"] = {"latitude": round(latitude, 5), "longitude": round(longitude, 5)}
     inputs = (*around.inputs, *settled.inputs)
     if settings.albedo_map is not None:
@@ -157,6 +159,12 @@ def _albedo(asked: Any, settled: Settled, elevation: Elevation) -> dict[str, Any
     if isinstance(asked, str):
         return {"albedo_map": read_map(asked, elevation, "albedo", 0.0, 1.0)}
     return {}
+
+
+def _known_months(settings: LightSettings) -> list[float | None]:
+    """Measured albedo of the twelve months, None for those outside the period: not measured."""
+    wanted = {month for _, month in settings.period.months}
+    return [value if m in wanted else None for m, value in enumerate(settings.albedo, 1)]
 
 
 def _record(settings: LightSettings) -> dict[str, Any]:

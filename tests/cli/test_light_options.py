@@ -130,7 +130,11 @@ def test_albedo_as_measured(dem, clear, tmp_path):
     path = series(tmp_path / "made.csv", factor=1.0, albedo=0.4)
     words = ("--station", str(path), "--albedo", "station")
     record, values = run(dem, tmp_path / "out", *words)
-    assert record["settings"]["albedo"][4] == pytest.approx(0.4, abs=1e-6)
+    told = record["settings"]["albedo"]
+    assert told[4] == pytest.approx(0.4, abs=1e-6)
+    assert [m for m, value in enumerate(told, 1) if value is None] == [1, 2, 3, 4, *range(6, 13)]
+    with rasterio.open(tmp_path / "out" / "irradiation_period.tif") as source:
+        assert json.loads(source.tags()["TERRASOL_SETTINGS"])["albedo"] == told
     assert values[3].mean() == pytest.approx(2.0 * clear[1][3].mean(), rel=0.1)
 
 
