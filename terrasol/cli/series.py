@@ -53,7 +53,10 @@ class Words(click.ParamType):
         if not isinstance(value, str):
             return value
         words = tuple(word.strip() for word in value.split(","))
-        if len(set(words)) < len(words) or not set(words) <= set(self.known):
+        twice = [word for word in self.known if words.count(word) > 1]
+        if twice:
+            self.fail(f"'{value}' names {twice[0]} more than once: name it once", param, ctx)
+        if not set(words) <= set(self.known):
             known = ", ".join(self.known)
             self.fail(f"'{value}' is not some of these, joined by commas: {known}", param, ctx)
         return words

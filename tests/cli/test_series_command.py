@@ -102,7 +102,7 @@ def test_dry_run_writes_nothing(dem, tmp_path, store, capsys):
         (["out.nc"], 2, "name a --period"),
         (["out.nc", *QUICK, "--step", "3h"], 2, "'3h' is not one of"),
         (["out.nc", *QUICK, "--quantities", "global,heat"], 2, "joined by commas"),
-        (["out.nc", *QUICK, "--quantities", "net,net"], 2, "joined by commas"),
+        (["out.nc", *QUICK, "--quantities", "net,net"], 2, "names net more than once"),
         (["out.nc", *QUICK, "--compression", "zstd"], 2, "deflate only"),
         (["out.nc", *QUICK, "--substep-seconds", "7"], 2, "do not divide an hour"),
         (["out.nc", *QUICK, "--horizon-store", "x", "--no-horizon-store"], 2, "exclude"),
