@@ -389,8 +389,11 @@ def _ratio(part: NDArray[np.float64], whole: NDArray[np.float64]) -> NDArray[np.
     return np.where(some, part / np.where(some, whole, 1.0), 0.0)
 
 
-def _bends(values: NDArray[np.float64], knots: NDArray[np.float64]) -> NDArray[np.float32]:
-    """Values at knots (last axis) as first value, first slope and changes of slope."""
+def bends(values: NDArray[np.float64], knots: NDArray[np.float64]) -> NDArray[np.float32]:
+    """Values at knots (last axis) as `terrasol.kernels.moment` takes them.
+
+    First value, first slope and changes of slope.
+    """
     slope = np.diff(values, axis=-1) / np.diff(knots)
     bent = np.concatenate([values[..., :1], slope[..., :1], np.diff(slope, axis=-1)], axis=-1)
     return np.ascontiguousarray(bent, np.float32)
@@ -534,11 +537,11 @@ def patch_light(
     normal = np.ascontiguousarray(patch.turned().reshape(3, cells))
     direct_light(
         patch.code.reshape(-1, cells), normal, offset, z, knot, sky.first, sky.left, sky.sun,
-        _bends(sky.strength[..., knots], heights), direct,
+        bends(sky.strength[..., knots], heights), direct,
     )  # fmt: skip
     out = np.empty((4, steps, cells), np.float32)
     parts_of_steps(
-        direct, _bends(sky.even[..., knots], heights), sky.change, offset,
+        direct, bends(sky.even[..., knots], heights), sky.change, offset,
         view.reshape(2, cells), z, knot, around.received, around.rows, around.columns,
         around.albedo, patch.factor(basis).reshape(cells), out,
     )  # fmt: skip
