@@ -6,7 +6,7 @@ from. Inside the raster its own heights rule; the larger model counts beyond it 
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from itertools import pairwise
 from typing import Final
 
@@ -247,6 +247,28 @@ def joined(elevation: Elevation, far: FarGround, cell: float) -> tuple[NDArray[n
     return out, margin
 
 
+def _obstacles_of(elevation: Elevation, far: FarGround, cell: float) -> Obstacles:
+    """The raster and what a larger model adds in and around it.
+
+    Where the larger model ends within the margin, lowest ground stands in for what hides: it
+    rises above nobody's level, as nothing would, and is no void that ground lies behind.
+    """
+    heights, margin = joined(elevation, far, cell)
+    unknown = np.isnan(heights)
+    unknown[margin:-margin, margin:-margin] = False
+    row, column = np.nonzero(unknown)
+    enclosed = np.isnan(far.elevation.heights) & ~_outer_void(far.elevation.heights)
+    whole = replace(far.elevation, heights=np.where(enclosed, np.float32(0), far.elevation.heights))
+    locate = Locator(elevation.crs, far.elevation)
+    seen = heights_at(whole, *locate(*coordinates(elevation, row - margin, column - margin)))
+    ended = np.isnan(seen)
+    if not ended.any():
+        return Obstacles(heights, heights, margin)
+    hiding = heights.copy()
+    hiding[row[ended], column[ended]] = np.nanmin(heights)
+    return Obstacles(hiding, heights, margin)
+
+
 def _nearest_known(heights: NDArray[np.float32], margin: int):
     """A function from cells of a padded raster to the nearest known ones."""
     inner = [(margin, size - 1 - margin) for size in heights.shape]
@@ -336,8 +358,7 @@ def make_scene(
     remarks: list[str] = []
     obstacles: Obstacles | None = None
     if far is not None:
-        heights, margin = joined(elevation, far, min(frame.cell_size))
-        obstacles = Obstacles(heights, heights, margin)
+        obstacles = _obstacles_of(elevation, far, min(frame.cell_size))
         warnings += far.warnings
         least, greatest = (distance / 1000.0 for distance in far.reach)
         remarks.append(
@@ -362,7 +383,7 @@ def _under(ground: Obstacles, surface: NDArray[np.float32]) -> Obstacles:
     margin = ground.margin
     inner = hiding[margin : margin + rows, margin : margin + columns]
     np.fmax(inner, surface, out=inner)
-    return Obstacles(hiding, ground.heights, margin)
+    return Obstacles(hiding, ground.eyes, margin)
 
 
 def _highest(elevation, far, horizon_gap, highest) -> float | None:

@@ -8,7 +8,7 @@ from pyproj import Geod, Transformer
 from reference import made_range
 
 import terrasol
-from terrasol.engine.datasets import run_in_memory
+from terrasol.engine.datasets import ArraySink, run_in_memory
 from terrasol.engine.job import plan_terrain
 from terrasol.ground.beyond import MARGIN_MOST, Scene, far_ground, joined, make_scene
 from terrasol.ground.frame import make_frame
@@ -213,6 +213,31 @@ def test_voids_are_seen_through_the_larger_model(small):
     assert rms(difference) < 0.01
     alone = horizon_of(basin)
     assert rms((alone - want)[:, ~outside]) > 1.0
+
+
+def run_of(elevation, far):
+    sink = ArraySink(elevation.shape)
+    plan = plan_terrain(elevation, 8, horizon=True, scene=surrounded(elevation, far))
+    return plan.run(sink, 2).numbers["cells_looking_across_void"], sink.arrays["horizon"]
+
+
+@pytest.mark.parametrize("cells", [2, PAD - 3, PAD + 20])
+def test_where_a_larger_model_ends_is_no_void(small, cells):
+    """It ends within the margin, or a little beyond; all the ground there is, is known."""
+    far = made_range.square(6e3 + cells * 60.0, 60.0)
+    count, got = run_of(small, far)
+    assert count == 0
+    want = horizon_of(far, azimuths=8)[:, cells:-cells, cells:-cells]
+    # 0.013 degrees is what two lattices of nodes, set off by those cells, differ by
+    assert rms((got - want)[:, 4:-4, 4:-4]) < 0.02
+
+
+def test_a_void_of_the_larger_model_is_one(small):
+    far = FARS["UTM, twice as coarse"]()
+    z = far.heights.copy()
+    z[298:302, 352:356] = np.nan  # two to six cells beyond the raster's eastern edge
+    assert np.isfinite(z[300, 349])
+    assert run_of(small, dataclasses.replace(far, heights=z))[0] > 0
 
 
 def level(height, half, cell, crs=made_range.UTM):
