@@ -261,7 +261,7 @@ def _run(
         "warnings": [*summary.warnings, *notes],
         "seconds": {name: round(value, 2) for name, value in seconds.items()},
         "files": [str(common.out_dir)],
-        "horizon_store": None if store is None else str(store),
+        "horizon_store": str(store) if store and (store / plan.key).is_dir() else None,
     }
     tell(common, record, _summary_text)
 
@@ -272,9 +272,10 @@ def _forecast(
     """What a run would work on, write and cost."""
     from terrasol.cli.forecast import free_disk_mb, ground_forecast
     from terrasol.engine.series import stack_variables
-    from terrasol.files.horizons import find_horizons
+    from terrasol.files.horizons import damage_of, find_horizons
 
     stored = store is not None and find_horizons(store, plan.key) is not None
+    damage = None if store is None or stored else damage_of(store, plan.key)
     return ground_forecast(common, ground) | {
         "stack": str(common.out_dir),
         "quantities": {v.name: v.unit for v in stack_variables(plan.settings)},
@@ -290,7 +291,11 @@ def _forecast(
         "disk_free_mb": free_disk_mb(common.out_dir),
         "threads": threads,
         "seconds": round(plan.seconds(threads, stored)),
-        "warnings": [*plan.elevation.warnings, *plan.scene.warnings],
+        "warnings": [
+            *plan.elevation.warnings,
+            *plan.scene.warnings,
+            *([damage] if damage else []),
+        ],
     }
 
 

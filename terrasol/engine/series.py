@@ -31,7 +31,15 @@ from terrasol.engine.plan import (
     default_threads,
 )
 from terrasol.engine.series_work import BlockWork
-from terrasol.files.horizons import HorizonDraft, Horizons, find_horizons, horizon_key
+from terrasol.errors import OutputError
+from terrasol.files.delivery import check_space
+from terrasol.files.horizons import (
+    HorizonDraft,
+    Horizons,
+    damage_of,
+    find_horizons,
+    horizon_key,
+)
 from terrasol.files.stacks import Stack, StackSink, StackVariable
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
@@ -94,6 +102,9 @@ RESOLUTION: Final = {"1h": 2.0**-3, "1d": 2.0**-10}
 
 HORIZON_SHARE: Final = 0.2
 """Part of the progress that the horizons take, where they must be worked out."""
+
+HELD: Final = "this run holds them beside the stack, and the next will work them out anew"
+"""Of horizons that the store could not take."""
 
 WORDS: Final = {
     "global": "global {kind} from sky and terrain around",
@@ -252,6 +263,7 @@ class SeriesPlan:
         store: Path,
         threads: int | None = None,
         progress: Progress | None = None,
+        spare: Path | None = None,
     ) -> Summary:
         """Do the work.
 
@@ -265,6 +277,8 @@ class SeriesPlan:
             Default: as many as there are cores to use.
         progress : callable, optional
             Told the share done and the stage.
+        spare : Path, optional
+            Folder that holds horizons for this run alone where the store cannot take them.
 
         Returns
         -------
@@ -275,11 +289,11 @@ class SeriesPlan:
         SettingError
             Fewer than one thread.
         OutputError
-            From the sink or the store.
+            From the sink, or from the store where there is no spare folder.
         """
         threads = default_threads() if threads is None else threads
         check_threads(threads)
-        return _Run(self, sink, threads, progress or (lambda share, stage: None)).do(store)
+        return _Run(self, sink, threads, progress or (lambda share, stage: None)).do(store, spare)
 
 
 def plan_series(
@@ -340,11 +354,13 @@ class _Run:
         self.blocks = blocks_of(plan.elevation.shape)
         self.totals = {name: [0.0, 0.0, np.inf, -np.inf] for name in plan.settings.quantities}
 
-    def do(self, store: Path) -> Summary:
+    def do(self, store: Path, spare: Path | None) -> Summary:
         """All stages."""
         plan = self.plan
         found = find_horizons(store, plan.key)
-        horizons = found or self._make_horizons(store)
+        damage = None if found else damage_of(store, plan.key)
+        self.summary.warnings += [damage] if damage else []
+        horizons = found or self._make_horizons(store, spare)
         begin = 0.0 if found else HORIZON_SHARE
         for start in range(0, plan.steps, plan.span):
             stop = min(start + plan.span, plan.steps)
@@ -369,8 +385,8 @@ class _Run:
         seconds = self.summary.seconds
         seconds[name] = round(seconds.get(name, 0.0) + time.perf_counter() - start, 3)
 
-    def _make_horizons(self, store: Path) -> Horizons:
-        """Sweep, and keep every block's horizons."""
+    def _make_horizons(self, store: Path, spare: Path | None) -> Horizons:
+        """Sweep, and keep every block's horizons, if need be in a spare folder."""
         plan = self.plan
         settings, elevation = plan.settings, plan.elevation
         ground, tasks = lay_out(
@@ -378,8 +394,19 @@ class _Run:
         )
         for _ in self._each("far horizon", tasks, 0.0, 0.6 * HORIZON_SHARE):
             pass
-        across = across_void(ground, np.isfinite(elevation.heights))
-        with HorizonDraft(store, plan.key) as draft:
+        try:
+            return self._keep(ground, store)
+        except OutputError as error:
+            if spare is None or spare == store:
+                raise
+            self.summary.warnings.append(f"{error}; {HELD}")
+        check_space(spare.parent, plan.horizon_bytes)
+        return self._keep(ground, spare)
+
+    def _keep(self, ground: Ground, store: Path) -> Horizons:
+        """Work out every block's horizons into a store."""
+        across = across_void(ground, np.isfinite(self.plan.elevation.heights))
+        with HorizonDraft(store, self.plan.key) as draft:
             keep = [partial(_keep_horizons, ground, draft, block) for block in self.blocks]
             for _ in self._each("horizons", keep, 0.6 * HORIZON_SHARE, 0.4 * HORIZON_SHARE):
                 pass

@@ -16,7 +16,7 @@ from terrasol.constants import REFRACTION_COEFFICIENT
 from terrasol.engine.datasets import clear_air, scene_of
 from terrasol.engine.job import Summary
 from terrasol.engine.plan import Progress
-from terrasol.engine.series import SeriesPlan, is_clear, plan_series
+from terrasol.engine.series import HELD, SeriesPlan, is_clear, plan_series
 from terrasol.errors import OutputError
 from terrasol.files.delivery import check_space
 from terrasol.files.horizons import default_folder
@@ -87,7 +87,8 @@ def write_series(
     record : mapping
         What was asked, ready for JSON.
     store : Path or None
-        Folder where horizons are kept and found; None keeps none.
+        Folder where horizons are kept and found; None keeps none. Where it cannot take them
+        they are held beside the stack, and the summary says so.
     compression : {'zstd', 'deflate'}
         For Zarr.
     overwrite : bool
@@ -101,9 +102,11 @@ def write_series(
         The name is taken, or the disk is too small or refuses.
     """
     check_stack_free(path, overwrite)
+    crowded = None
     if store is not None and not (store / plan.key).exists():
-        _check_store(store, plan.horizon_bytes)
-    need = plan.stack_bytes + (plan.horizon_bytes if store is None else 0)
+        crowded = _crowded(store, plan.horizon_bytes)
+    keep = None if crowded else store
+    need = plan.stack_bytes + (plan.horizon_bytes if keep is None else 0)
     writer = StackWriter(
         path,
         plan.stack(stack_attributes(plan, record)),
@@ -112,19 +115,25 @@ def write_series(
         need=need,
     )
     with writer:
-        summary = plan.run(writer, store or writer.scratch, threads, progress)
+        summary = plan.run(writer, keep or writer.scratch, threads, progress, writer.scratch)
         writer.commit()
+    if crowded:
+        summary.warnings.append(f"{crowded}; {HELD}")
     return summary
 
 
-def _check_store(store: Path, need: int) -> None:
-    """Raise OutputError where horizons will not fit, before any work."""
+def _crowded(store: Path, need: int) -> OutputError | None:
+    """What says that horizons will not fit, before any work; raises where no folder can be."""
     folder = store.absolute()
     while not folder.exists():
         folder = folder.parent
     if not folder.is_dir():
         raise OutputError(f"{folder} is not a folder: name another one for the horizons")
-    check_space(folder, need)
+    try:
+        check_space(folder, need, "folder for the horizons")
+    except OutputError as error:
+        return error
+    return None
 
 
 def irradiation_series(
@@ -196,7 +205,8 @@ def irradiation_series(
     -------
     xarray.Dataset
         The stack, opened; each quantity (time, y, x), read from disk when it is looked at. The
-        time is the middle of the interval in UTC, ``time_bounds`` its edges.
+        time is the middle of the interval in UTC, ``time_bounds`` its edges. The attribute
+        ``warnings`` holds what a careful reader should know.
 
     Raises
     ------
@@ -205,7 +215,7 @@ def irradiation_series(
     InputError
         A raster that cannot be placed on the Earth.
     OutputError
-        The stack or the horizons cannot be written.
+        The stack cannot be written, or the horizons nowhere.
 
     References
     ----------
@@ -232,7 +242,7 @@ def irradiation_series(
         store = default_folder() if horizon_store else None
     else:
         store = Path(horizon_store)
-    write_series(
+    summary = write_series(
         plan_series(elevation, settings, scene),
         path,
         series_record(settings),
@@ -241,7 +251,9 @@ def irradiation_series(
         overwrite=overwrite,
         threads=threads,
     )
-    return open_stack(path)
+    data = open_stack(path)
+    data.attrs["warnings"] = summary.warnings
+    return data
 
 
 def series_record(settings: SeriesSettings) -> dict[str, Any]:

@@ -1,6 +1,7 @@
 """`terrasol series` from the command line."""
 
 import json
+from pathlib import Path
 
 import numpy as np
 import pytest
@@ -9,6 +10,7 @@ from files.made import hills, write_raster
 import terrasol
 from terrasol.cli import series as command
 from terrasol.cli.main import main
+from terrasol.files import delivery, horizons
 from terrasol.files.horizons import VARIABLE
 from terrasol.files.provenance import sha256
 from terrasol.files.stacks import open_stack
@@ -77,6 +79,66 @@ def test_command_and_python_agree(dem, tmp_path):
         np.testing.assert_array_equal(data["global"].values, own["global"].values)
         assert own["global"].attrs["units"] == "MJ m-2"
     assert sorted(path.name for path in tmp_path.iterdir()) == ["out.nc", "same.nc"]
+
+
+def without_store(dem, out, *words):
+    """What a run that keeps nothing writes."""
+    assert main(["series", str(dem), str(out), "--no-horizon-store", *words]) == 0
+    with open_stack(out) as data:
+        return data["global"].values
+
+
+def test_a_store_that_takes_nothing_does_not_end_the_run(dem, tmp_path, store, monkeypatch, capsys):
+    want = without_store(dem, tmp_path / "want.nc", "--quiet", *QUICK)
+    making = horizons.HiddenFolder
+
+    def refuse(parent):
+        if parent == store:
+            raise PermissionError(13, "Permission denied")
+        return making(parent)
+
+    monkeypatch.setattr(horizons, "HiddenFolder", refuse)
+    assert main(["series", str(dem), str(tmp_path / "out.nc"), "--json", *QUICK]) == 0
+    record = json.loads(capsys.readouterr().out)
+    (told,) = (words for words in record["warnings"] if "horizons" in words)
+    assert told.startswith(f"{store}: horizons could not be kept there (Permission denied)")
+    assert "beside the stack" in told
+    assert record["horizon_store"] is None
+    with open_stack(tmp_path / "out.nc") as data:
+        np.testing.assert_array_equal(data["global"].values, want)
+    assert sorted(p.name for p in tmp_path.iterdir()) == ["out.nc", "store", "want.nc"]
+    assert list(store.iterdir()) == []
+
+
+def test_a_store_without_room_does_not_end_the_run(dem, tmp_path, store, monkeypatch, capsys):
+    store.mkdir()
+    free = delivery.shutil.disk_usage
+
+    def full(folder):
+        return free(folder)._replace(free=0) if Path(folder) == store else free(folder)
+
+    monkeypatch.setattr(delivery.shutil, "disk_usage", full)
+    assert main(["series", str(dem), str(tmp_path / "out.nc"), *QUICK]) == 0
+    told = capsys.readouterr().err
+    assert f"warning: {store}: the work may need" in told
+    assert "another folder for the horizons" in told
+    assert list(store.iterdir()) == []
+
+
+def test_a_damaged_store_is_told_of_and_mended(dem, tmp_path, store, capsys):
+    words = [str(dem), str(tmp_path / "out.nc"), "--overwrite", *QUICK]
+    assert main(["series", *words]) == 0
+    assert "warning: " + str(store) not in capsys.readouterr().err
+    (kept,) = store.iterdir()
+    (kept / "0-0.npy").write_bytes(b"")
+    assert main(["series", *words, "--dry-run"]) == 0
+    assert f"{kept}: the horizons kept there are damaged" in capsys.readouterr().out
+    assert main(["series", *words]) == 0
+    told = capsys.readouterr().err
+    assert f"warning: {kept}: the horizons kept there are damaged" in told
+    assert "horizons computed" in told
+    assert main(["series", *words]) == 0
+    assert "found in the store" in capsys.readouterr().err
 
 
 def test_dry_run_writes_nothing(dem, tmp_path, store, capsys):
