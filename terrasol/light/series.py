@@ -101,7 +101,7 @@ class SeriesSettings:
         """Refuse what makes no sense."""
         if self.albedo_station is not None and "albedo" not in self.albedo_station.values:
             raise InputError(
-                f"{self.albedo_station.name}: no albedo was measured, so it has none to give"
+                "no albedo was measured, so it has none to give", self.albedo_station.name
             )
         if len(self.albedo) != 12 or not all(0.0 <= value <= 1.0 for value in self.albedo):
             raise SettingError(f"albedo must be twelve numbers from 0 to 1; got {self.albedo}")
@@ -188,7 +188,7 @@ def step_albedo(
         return np.array(settings.albedo, np.float32)[months]
     known = np.isfinite(station.values["albedo"])
     if not known.any():
-        raise InputError(f"{station.name}: all values of the albedo are missing")
+        raise InputError("all values of the albedo are missing", station.name)
     seconds = edges.astype("M8[s]").astype(np.float64)
     at = (seconds[:-1] + seconds[1:]) / 2.0
     measured = station.middle[known].astype("M8[s]").astype(np.float64)

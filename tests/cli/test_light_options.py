@@ -211,3 +211,32 @@ def test_holes_of_maps_are_told(dem, clear, tmp_path, capsys):
     out = tmp_path / "albedo"
     assert main(["irradiation", str(dem), str(out), "--albedo", str(path), *words]) == 0
     assert "albedo has no value for 16 cells" in capsys.readouterr().err
+
+
+def cut_series(path, keep):
+    """The same series without some of its rows."""
+    header, *rows = path.read_text().splitlines()
+    kept = [row for number, row in enumerate(rows) if keep(number)]
+    path.write_text("\n".join([header, *kept]) + "\n")
+
+
+@pytest.mark.parametrize("command", ["irradiation", "hours", "series"])
+@pytest.mark.parametrize(
+    ("keep", "gap"),
+    [
+        (lambda row: not 240 <= row < 300, "missing from 2025-05-11T00:00 to 2025-05-13T12:00 UTC"),
+        (lambda row: row < 600, "missing from 2025-05-26T00:00 to 2025-05-31T23:29 UTC"),
+        (lambda row: row >= 48, "missing from 2025-04-30T23:29 to 2025-05-03T00:00 UTC"),
+    ],
+)
+def test_a_gap_is_the_series_own(dem, tmp_path, capsys, command, keep, gap):
+    path = series(tmp_path / "made.csv")
+    cut_series(path, keep)
+    out = tmp_path / ("out.nc" if command == "series" else "out")
+    words = ["--azimuths", "8", "--quiet", "--period", "2025-05", "--station", str(path)]
+    assert main([command, str(dem), str(out), *words]) == 3
+    said = capsys.readouterr().err
+    assert said.startswith("terrasol: made.csv: the series has gaps in the period 2025-05: ")
+    assert gap in said
+    assert "Choose a period without them" in said
+    assert str(dem) not in said
