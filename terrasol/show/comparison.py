@@ -87,8 +87,14 @@ def comparison_png(report: StationReport, *, title: str, notes: Sequence[str] = 
 
 
 def subtitle(report: StationReport) -> str:
-    """What is compared, of which days of local mean solar time, under which sky."""
-    start, end = local_time(report.station)[[0, -1]].astype("M8[D]")
+    """What is compared, of which days, under which sky.
+
+    Days are those of local mean solar time, from the first interval with sun to the last: an
+    hour of night more is no day more.
+    """
+    lit = report.modelled.lit > 0.0
+    times = local_time(report.station)
+    start, end = (times[lit] if lit.any() else times)[[0, -1]].astype("M8[D]")
     sky = "clear sky" if report.other is None else f"sky of {report.other.station.name}"
     return f"Global irradiance, measured against modelled, {start} to {end}; {sky}"
 
