@@ -10,7 +10,7 @@ from files.made import hills, write_raster
 import terrasol
 from terrasol.cli import series as command
 from terrasol.cli.main import main
-from terrasol.files import delivery, horizons
+from terrasol.files import delivery, horizons, stacks
 from terrasol.files.horizons import VARIABLE
 from terrasol.files.provenance import sha256
 from terrasol.files.stacks import open_stack
@@ -79,6 +79,21 @@ def test_command_and_python_agree(dem, tmp_path):
         np.testing.assert_array_equal(data["global"].values, own["global"].values)
         assert own["global"].attrs["units"] == "MJ m-2"
     assert sorted(path.name for path in tmp_path.iterdir()) == ["out.nc", "same.nc"]
+
+
+def test_folders_on_the_way_are_made_and_go_with_a_failed_run(dem, tmp_path, monkeypatch, capsys):
+    words = ["--no-horizon-store", "--quiet", *QUICK]
+    for name in ("a/b/out.nc", "c/d/out.zarr"):
+        assert main(["series", str(dem), str(tmp_path / name), *words]) == 0
+        assert (tmp_path / name).exists()
+
+    def fail(*_):
+        raise OSError(28, "No space left on device")
+
+    monkeypatch.setattr(stacks.os, "replace", fail)
+    assert main(["series", str(dem), str(tmp_path / "e/f/out.nc"), *words]) == 4
+    assert "out.nc could not be written" in capsys.readouterr().err
+    assert not (tmp_path / "e").exists()
 
 
 def without_store(dem, out, *words):
