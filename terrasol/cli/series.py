@@ -12,14 +12,15 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from terrasol.cli.ground_options import Around, ground_options
-from terrasol.cli.irradiation import ALBEDO_FOR_NOW, irradiation
-from terrasol.cli.options import Common, Name, Numbers, common_options
-from terrasol.cli.sky_options import AskedSky, sky_options
+from terrasol.cli.irradiation import ALBEDO_FOR_NOW, albedo_doubts, irradiation
+from terrasol.cli.options import Common, Name, common_options
+from terrasol.cli.sky_options import AskedSky, Settled, file_record, sky_options
 from terrasol.errors import counted
 
 if TYPE_CHECKING:
     from terrasol.cli.run import Ground
     from terrasol.engine.series import SeriesPlan
+    from terrasol.ground.elevation import Elevation
     from terrasol.light.series import SeriesSettings
 
 STEPS = ("1h", "1d")
@@ -119,15 +120,17 @@ def series(common: Common, around: Around, asked: AskedSky, **given: Any) -> Non
     elevation = ground.elevation
     air = asked.placed(asked.air(_plain(given["albedo"])), ground.frame)
     settled = asked.settle(air, given["period"], STATION_SECONDS, elevation)
-    station = settled.station if given["albedo"] == "station" else None
-    settings = replace(
-        settings, sky=settled.sky or air, period=settled.period, albedo_station=station
-    )
+    albedo = _albedo(given["albedo"], settled, elevation)
+    settings = replace(settings, sky=settled.sky or air, period=settled.period, **albedo)
     scene = around.scene(elevation, ground.frame)
     with naming(common.dem):
         plan = plan_series(elevation, settings, scene)
     record = series_record(settings) | settled.record | around.record()
-    _run(common, ground, plan, _store(given), record, settled.warnings)
+    notes = settled.warnings
+    if settings.albedo_map is not None:
+        record["albedo"] = file_record(given["albedo"])
+        notes = (*notes, *albedo_doubts(settings.albedo_map, elevation))
+    _run(common, ground, plan, _store(given), record, notes)
 
 
 def _check(common: Common, around: Around, asked: AskedSky, given: dict[str, Any]) -> None:
@@ -148,7 +151,8 @@ def _check(common: Common, around: Around, asked: AskedSky, given: dict[str, Any
     named = compression is click.core.ParameterSource.COMMANDLINE
     if kind_of(common.out_dir) == "NetCDF" and named and common.compression != "deflate":
         raise click.UsageError("a NetCDF stack is packed with deflate only")
-    for name in (common.dem, *around.inputs, asked.station):
+    mapped = given["albedo"] if isinstance(given["albedo"], str) else None
+    for name in (common.dem, *around.inputs, asked.station, mapped):
         both = name and os.path.exists(name) and os.path.exists(common.out_dir)
         if both and os.path.samefile(common.out_dir, str(name)):
             raise click.UsageError(f"{name} is an input itself: take another name for OUT")
@@ -168,9 +172,6 @@ def _rearrange(command: click.Command) -> None:
             option.help = "How a Zarr stack is packed; NetCDF takes deflate."
         elif isinstance(option, click.Option) and option.name == "overwrite":
             option.help = "Replace a stack that is there."
-        elif isinstance(option, click.Option) and option.name == "albedo":
-            option.type = Numbers("station")
-            option.help = "Albedo of the ground: numbers, or 'station' for what SERIES measured."
         elif isinstance(option, click.Option) and option.name in NOT_HERE:
             option.hidden = True
 
@@ -196,6 +197,17 @@ def _settings(common: Common, asked: AskedSky, given: dict[str, Any]) -> SeriesS
         substep_seconds=given["substep_seconds"],
         refraction=common.refraction,
     )
+
+
+def _albedo(asked: Any, settled: Settled, elevation: Elevation) -> dict[str, Any]:
+    """The settings of an albedo that is not in numbers."""
+    from terrasol.files.maps import read_map
+
+    if asked == "station":
+        return {"albedo_station": settled.station}
+    if isinstance(asked, str):
+        return {"albedo_map": read_map(asked, elevation, "albedo", 0.0, 1.0)}
+    return {}
 
 
 def _plain(albedo: Any) -> tuple[float, ...]:

@@ -30,7 +30,7 @@ from terrasol.engine.plan import (
     default_threads,
 )
 from terrasol.engine.totals import Totals
-from terrasol.errors import InputError, SettingError, counted
+from terrasol.errors import InputError, counted
 from terrasol.files.layers import Layer, Sink
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
@@ -38,7 +38,12 @@ from terrasol.ground.frame import Frame, make_frame
 from terrasol.ground.horizon import BLOCK, NODE_STEP
 from terrasol.light.indexed import MappedTables, even_indices
 from terrasol.light.latitudes import MIXED_BYTES
-from terrasol.light.settings import LightSettings, check_azimuths, check_refraction
+from terrasol.light.settings import (
+    LightSettings,
+    check_azimuths,
+    check_map,
+    check_refraction,
+)
 from terrasol.light.surroundings import Surroundings
 from terrasol.light.tables import SkyTables, table_bytes
 from terrasol.sky.suntable import height_knots, latitude_knots
@@ -268,12 +273,8 @@ def plan_irradiation(
     InputError
         A raster that cannot be placed on the Earth, or with cells too coarse for its blocks.
     """
-    for name, values in (("albedo", settings.albedo_map), ("index", settings.index_map)):
-        if values is not None and values.shape not in ((n, *elevation.shape) for n in (1, 12)):
-            raise SettingError(
-                f"the {name} map must have the shape (1 or 12, {elevation.shape[0]},"
-                f" {elevation.shape[1]}); got {values.shape}"
-            )
+    check_map("albedo", settings.albedo_map, elevation.shape)
+    check_map("index", settings.index_map, elevation.shape)
     layers = [*_terrain_layers(elevation), *outputs.light_layers(settings)]
     if scene.highest is not None:
         layers.append(outputs.horizon_gap_layer(scene.highest, settings))

@@ -9,7 +9,9 @@ from os import PathLike
 from pathlib import Path
 from typing import Any
 
+import numpy as np
 import xarray as xr
+from numpy.typing import NDArray
 
 import terrasol
 from terrasol.constants import REFRACTION_COEFFICIENT
@@ -150,6 +152,7 @@ def irradiation_series(
     basis: str = "slope",
     substep_seconds: float = SUBSTEP_SECONDS,
     refraction: float = REFRACTION_COEFFICIENT,
+    albedo_map: NDArray[np.float32] | None = None,
     far: Elevation | None = None,
     surface: Elevation | None = None,
     horizon_store: str | PathLike[str] | bool = True,
@@ -187,6 +190,8 @@ def irradiation_series(
         Spacing of the moments that make a step; divides an hour.
     refraction : float
         Coefficient k of terrestrial refraction.
+    albedo_map : ndarray, shape (1 or 12, y, x), optional
+        Albedo of each cell, for the year or January to December; NaN where `albedo` counts.
     far : Elevation, optional
         A larger, coarser model in any CRS: its ridges beyond the edge and in voids count too.
     surface : Elevation, optional
@@ -237,6 +242,7 @@ def irradiation_series(
         basis,
         substep_seconds,
         refraction,
+        albedo_map=albedo_map,
     )
     if isinstance(horizon_store, bool):
         store = default_folder() if horizon_store else None
@@ -259,12 +265,17 @@ def irradiation_series(
 def series_record(settings: SeriesSettings) -> dict[str, Any]:
     """Settings as plain text and numbers."""
     sky = settings.sky
+    albedo: Any = list(settings.albedo)
+    if settings.albedo_station is not None:
+        albedo = "as measured"
+    if settings.albedo_map is not None:
+        albedo = "as mapped"
     return {
         "period": settings.period.record(),
         "sky": sky.record() if isinstance(sky, Air) else type(sky).__name__,
         "step": settings.step,
         "quantities": list(settings.quantities),
-        "albedo": list(settings.albedo) if settings.albedo_station is None else "as measured",
+        "albedo": albedo,
         "diffuse": settings.diffuse,
         "azimuths": settings.azimuths,
         "basis": settings.basis,

@@ -77,7 +77,9 @@ class SeriesSettings:
         Terrestrial refraction coefficient k of lines of sight.
     albedo_station : Station, optional
         Whose measured albedo counts, step by step, in place of `albedo`.
-
+    albedo_map : ndarray of float32, shape (1 or 12, rows, columns), optional
+        Albedo of each cell, for the year or January to December; where it is NaN, `albedo`
+        counts.
 
     Raises
     ------
@@ -96,6 +98,7 @@ class SeriesSettings:
     substep_seconds: float = SUBSTEP_SECONDS
     refraction: float = REFRACTION_COEFFICIENT
     albedo_station: Station | None = None
+    albedo_map: NDArray[np.float32] | None = None
 
     def __post_init__(self) -> None:
         """Refuse what makes no sense."""
@@ -103,6 +106,8 @@ class SeriesSettings:
             raise InputError(
                 "no albedo was measured, so it has none to give", self.albedo_station.name
             )
+        if self.albedo_station is not None and self.albedo_map is not None:
+            raise SettingError("albedo comes from a map or from a station, not from both")
         if len(self.albedo) != 12 or not all(0.0 <= value <= 1.0 for value in self.albedo):
             raise SettingError(f"albedo must be twelve numbers from 0 to 1; got {self.albedo}")
         if not self.quantities or len(set(self.quantities)) < len(self.quantities):
@@ -474,7 +479,7 @@ class Around:
     rows, columns : ndarray of float32
         Place of the patch's rows and columns among the nodes.
     albedo : ndarray of float32, shape (steps,)
-        Of the ground.
+        Share of `received` that is sent back: the albedo, or 1 where that is mapped.
     """
 
     received: NDArray[np.float32]
@@ -561,8 +566,8 @@ def _knots_of(patch: Patch, heights: NDArray[np.float64]) -> slice:
 def quantity(
     name: str, light: NDArray[np.float32], albedo: NDArray[np.float32]
 ) -> NDArray[np.float32]:
-    """One of `QUANTITIES` out of the parts (4, steps, ...); albedo by step."""
+    """One of `QUANTITIES` out of the parts (4, steps, ...); albedo by step, or by step and cell."""
     if name != "net":
         return light[PARTS.index(name)]
-    absorbed = 1.0 - albedo.reshape(-1, *(1,) * (light.ndim - 2))
+    absorbed = 1.0 - albedo.reshape(*albedo.shape, *(1,) * (light.ndim - 1 - albedo.ndim))
     return light[0] * absorbed.astype(np.float32)

@@ -96,6 +96,28 @@ def test_folders_on_the_way_are_made_and_go_with_a_failed_run(dem, tmp_path, mon
     assert not (tmp_path / "e").exists()
 
 
+def test_albedo_as_a_raster(dem, tmp_path, capsys):
+    layer = np.full(hills().shape, 0.5, np.float32)
+    layer[:, :5] = 0.1
+    layer[3, 7] = np.nan
+    path = write_raster(tmp_path / "albedo.tif", layer, nodata=np.nan)
+    out = tmp_path / "out.nc"
+    words = ["--albedo", str(path), "--quantities", "global,net", "--no-horizon-store", *QUICK]
+    assert main(["series", str(dem), str(out), "--json", *words]) == 0
+    record = json.loads(capsys.readouterr().out)
+    assert record["settings"]["albedo"] == {"file": str(path), "sha256": sha256(path)}
+    assert any("albedo has no value for 1 cell of known" in told for told in record["warnings"])
+    layer[3, 7] = 0.2
+    with open_stack(out) as data:
+        off = data["net"].values - (1.0 - layer) * data["global"].values
+    assert np.nanmax(np.abs(off)) < 0.126  # rounded to 1/8 before and after
+    assert np.isfinite(off).any()
+    taken = path.rename(tmp_path / "albedo.nc")
+    words[1] = str(taken)
+    assert main(["series", str(dem), str(taken), "--overwrite", *words]) == 2
+    assert "is an input itself" in capsys.readouterr().err
+
+
 def without_store(dem, out, *words):
     """What a run that keeps nothing writes."""
     assert main(["series", str(dem), str(out), "--no-horizon-store", *words]) == 0
