@@ -13,6 +13,7 @@ import numpy as np
 from terrasol.constants import REFRACTION_COEFFICIENT, SURROUNDINGS_SCALE
 from terrasol.engine import outputs
 from terrasol.engine.blocks import (
+    Arrays,
     Tables,
     across_void,
     block_arrays,
@@ -23,6 +24,7 @@ from terrasol.engine.blocks import (
 from terrasol.engine.ground_work import Ground, lay_out
 from terrasol.engine.horizon_gap import GapTally
 from terrasol.engine.plan import (
+    Block,
     Progress,
     blocks_of,
     carry_out,
@@ -320,8 +322,15 @@ class Run:
         surroundings = self._surroundings(ground, tables) if tables else None
         names = [layer.name for layer in plan.layers]
         work = partial(block_arrays, ground, names, tables, surroundings)
+        totals, gaps = self._write_blocks(sink, work)
+        self._conclude(ground, totals, tables)
+        self._tell_of_scene(gaps)
+        return self.summary
+
+    def _write_blocks(self, sink: Sink, work: Callable[[Block], Arrays]) -> tuple[Totals, GapTally]:
+        """Carry out every block's work into the sink; what all of them come to."""
         totals, gaps = Totals(), GapTally()
-        blocks = blocks_of(plan.elevation.shape)
+        blocks = blocks_of(self.plan.elevation.shape)
         tasks = [partial(with_block, work, block) for block in blocks]
         for block, arrays in self._stage("blocks", tasks, 1.0 - self.done):
             totals.add(arrays)
@@ -329,9 +338,7 @@ class Run:
                 gaps.add(arrays)
             for name, values in arrays.items():
                 sink.write(name, block.row, block.column, values)
-        self._conclude(ground, totals, tables)
-        self._tell_of_scene(gaps)
-        return self.summary
+        return totals, gaps
 
     def _stage(self, name: str, tasks: Sequence[Callable[[], Any]], share: float) -> Iterator[Any]:
         """Carry out tasks, telling progress and keeping the time."""
