@@ -273,7 +273,7 @@ def _run(
         "warnings": [*summary.warnings, *notes],
         "seconds": {name: round(value, 2) for name, value in seconds.items()},
         "files": [str(common.out_dir)],
-        "horizon_store": str(store) if store and (store / plan.key).is_dir() else None,
+        "horizon_store": str(store) if store and os.path.isdir(store / plan.key) else None,
     }
     tell(common, record, _summary_text)
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import os
 from collections.abc import Mapping, Sequence
 from datetime import UTC, datetime
 from os import PathLike
@@ -105,7 +106,7 @@ def write_series(
     """
     check_stack_free(path, overwrite)
     crowded = None
-    if store is not None and not (store / plan.key).exists():
+    if store is not None and not os.path.lexists(store / plan.key):
         crowded = _crowded(store, plan.horizon_bytes)
     keep = None if crowded else store
     need = plan.stack_bytes + (plan.horizon_bytes if keep is None else 0)
@@ -127,9 +128,9 @@ def write_series(
 def _crowded(store: Path, need: int) -> OutputError | None:
     """What says that horizons will not fit, before any work; raises where no folder can be."""
     folder = store.absolute()
-    while not folder.exists():
+    while not os.path.exists(folder):  # or not to be looked at
         folder = folder.parent
-    if not folder.is_dir():
+    if not os.path.isdir(folder):
         raise OutputError(f"{folder} is not a folder: name another one for the horizons")
     try:
         check_space(folder, need, "folder for the horizons")
