@@ -407,10 +407,11 @@ def refuse_wrong_unit(
             fitting.append(other)
     fits = f"; {' or '.join(fitting)} would fit" if fitting else ""
     raise InputError(
-        f"{station.name}: {quantity} cannot be in {unit}: its clearest hours bring {peak:.3g} times"
+        f"{quantity} cannot be in {unit}: its clearest hours bring {peak:.3g} times"
         f" the light above the air, and {_believable(quantity)} is believable{fits}. Mend the"
         " unit, or zone and label if the times are wrong; if the values are right, say"
-        " check_units = false"
+        " check_units = false",
+        station.name,
     )
 
 
