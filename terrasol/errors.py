@@ -14,7 +14,21 @@ class SettingError(TerrasolError, ValueError):
 
 
 class InputError(TerrasolError):
-    """An input, a raster or a series, cannot be used for what it was given for."""
+    """An input, a raster or a series, cannot be used for what it was given for.
+
+    Parameters
+    ----------
+    words : str
+        What is wrong with it, and what to do.
+    file : path, optional
+        Which one it is, put before the words, where that is known. Who catches the error
+        then names no other.
+    """
+
+    def __init__(self, words: str, file: object = None) -> None:
+        super().__init__(words if file is None else f"{file}: {words}")
+        self.words = words
+        self.file = file
 
 
 class OutputError(TerrasolError):

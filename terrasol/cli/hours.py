@@ -28,8 +28,8 @@ COLOURS = "cividis"
 @click.option(
     "--days",
     metavar="DATES|none",
-    help="Days whose first and last sun is written, joined by commas; a month or a range stands"
-    " for its days. [default: the 21st of each month]",
+    help="Days whose first and last sun is written, joined by commas, in the period or not; a month"
+    " or a range stands for its days. [default: the 21st of each month]",
 )
 @click.option(
     "--clock",
@@ -76,7 +76,8 @@ def hours(common: Common, around: Around, asked: AskedSky, **given: Any) -> None
         plan = plan_hours(elevation, settings, scene)
     record = _record(settings, air) | settled.record | around.record()
     inputs = (*around.inputs, *settled.inputs)
-    run(Job("hours", common, ground, plan, record, _draw, inputs, settled.warnings))
+    notes = (*settled.warnings, *_strays(settings))
+    run(Job("hours", common, ground, plan, record, _draw, inputs, notes))
 
 
 for _option in hours.params:
@@ -102,6 +103,21 @@ def _settings(common: Common, asked: AskedSky, given: dict[str, Any]) -> HoursSe
         azimuths=common.azimuths,
         step_seconds=given["step_seconds"],
         refraction=common.refraction,
+    )
+
+
+def _strays(settings: HoursSettings) -> tuple[str, ...]:
+    """Warn of days outside the period, which may be meant or a slip; a typical year has all."""
+    first, end = (
+        edge.astype("M8[D]").item() for edge in (settings.period.start, settings.period.end)
+    )
+    outside = [str(day) for day in settings.days if not first <= day < end]
+    if settings.period.typical or not outside:
+        return ()
+    more = f" and {len(outside) - 3} more" if len(outside) > 3 else ""
+    return (
+        f"--days {','.join(outside[:3])}{more} is outside the period {settings.period.label}: its"
+        " first and last sun is written, and its hours are in no sum of the period",
     )
 
 

@@ -123,6 +123,8 @@ def irradiation(
     latitude, longitude = frame.centre
     record = light_record(settings) | settled.record | around.record()
     record |= asked_error.record(error, frame.cell_size)
+    if given["albedo"] == "station":
+        record["albedo"] = _known_months(settings)
     record["centre"] = {"latitude": round(latitude, 5), "longitude": round(longitude, 5)}
     inputs = (*around.inputs, *settled.inputs)
     if settings.albedo_map is not None:
@@ -130,8 +132,7 @@ def irradiation(
         inputs = (*inputs, given["albedo"])
     notes = (*asked.doubts(frame), *settled.warnings)
     if settings.albedo_map is not None:
-        effect = f"the plain {ALBEDO_FOR_NOW[0]:g} counts there"
-        notes = (*notes, *map_doubts(settings.albedo_map, elevation, "albedo", effect))
+        notes = (*notes, *albedo_doubts(settings.albedo_map, elevation))
     run(Job("irradiation", common, ground, plan, record, _draw, inputs, notes))
 
 
@@ -168,6 +169,18 @@ def _albedo(asked: Any, settled: Settled, elevation: Elevation) -> dict[str, Any
     if isinstance(asked, str):
         return {"albedo_map": read_map(asked, elevation, "albedo", 0.0, 1.0)}
     return {}
+
+
+def albedo_doubts(values: NDArray[np.float32], elevation: Elevation) -> tuple[str, ...]:
+    """Warn of cells that a map of the albedo leaves out."""
+    effect = f"the plain {ALBEDO_FOR_NOW[0]:g} counts there"
+    return map_doubts(values, elevation, "albedo", effect)
+
+
+def _known_months(settings: LightSettings) -> list[float | None]:
+    """Measured albedo of the twelve months, None for those outside the period: not measured."""
+    wanted = {month for _, month in settings.period.months}
+    return [value if m in wanted else None for m, value in enumerate(settings.albedo, 1)]
 
 
 def light_record(settings: LightSettings) -> dict[str, Any]:

@@ -398,6 +398,12 @@ def _summary_text(record: Record) -> str:
             f" m): {results['level_ground']:g} {results['unit']}"
         )
         told.append(f"energy is {SKIES[results['sky']]}, {results['basis']}")
+    if "level_ground_sun_hours" in results:
+        told.append(
+            "open level ground at the centre and mean height:"
+            f" {results['level_ground_sun_hours']:g} h of direct sun,"
+            f" {results['level_ground_bright_hours']:g} h of bright sunshine"
+        )
     if results.get("void_cells"):
         told.append(f"void: {results['void_cells']} of {results['cells']} cells")
     told += results.get("remarks", [])

@@ -12,14 +12,15 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from terrasol.cli.ground_options import Around, ground_options
-from terrasol.cli.irradiation import ALBEDO_FOR_NOW, irradiation
-from terrasol.cli.options import Common, Name, Numbers, common_options
-from terrasol.cli.sky_options import AskedSky, sky_options
+from terrasol.cli.irradiation import ALBEDO_FOR_NOW, albedo_doubts, irradiation
+from terrasol.cli.options import Common, Name, common_options
+from terrasol.cli.sky_options import AskedSky, Settled, file_record, sky_options
 from terrasol.errors import counted
 
 if TYPE_CHECKING:
     from terrasol.cli.run import Ground
     from terrasol.engine.series import SeriesPlan
+    from terrasol.ground.elevation import Elevation
     from terrasol.light.series import SeriesSettings
 
 STEPS = ("1h", "1d")
@@ -53,7 +54,10 @@ class Words(click.ParamType):
         if not isinstance(value, str):
             return value
         words = tuple(word.strip() for word in value.split(","))
-        if len(set(words)) < len(words) or not set(words) <= set(self.known):
+        twice = [word for word in self.known if words.count(word) > 1]
+        if twice:
+            self.fail(f"'{value}' names {twice[0]} more than once: name it once", param, ctx)
+        if not set(words) <= set(self.known):
             known = ", ".join(self.known)
             self.fail(f"'{value}' is not some of these, joined by commas: {known}", param, ctx)
         return words
@@ -116,15 +120,17 @@ def series(common: Common, around: Around, asked: AskedSky, **given: Any) -> Non
     elevation = ground.elevation
     air = asked.placed(asked.air(_plain(given["albedo"])), ground.frame)
     settled = asked.settle(air, given["period"], STATION_SECONDS, elevation)
-    station = settled.station if given["albedo"] == "station" else None
-    settings = replace(
-        settings, sky=settled.sky or air, period=settled.period, albedo_station=station
-    )
+    albedo = _albedo(given["albedo"], settled, elevation)
+    settings = replace(settings, sky=settled.sky or air, period=settled.period, **albedo)
     scene = around.scene(elevation, ground.frame)
     with naming(common.dem):
         plan = plan_series(elevation, settings, scene)
     record = series_record(settings) | settled.record | around.record()
-    _run(common, ground, plan, _store(given), record, settled.warnings)
+    notes = settled.warnings
+    if settings.albedo_map is not None:
+        record["albedo"] = file_record(given["albedo"])
+        notes = (*notes, *albedo_doubts(settings.albedo_map, elevation))
+    _run(common, ground, plan, _store(given), record, notes)
 
 
 def _check(common: Common, around: Around, asked: AskedSky, given: dict[str, Any]) -> None:
@@ -145,7 +151,8 @@ def _check(common: Common, around: Around, asked: AskedSky, given: dict[str, Any
     named = compression is click.core.ParameterSource.COMMANDLINE
     if kind_of(common.out_dir) == "NetCDF" and named and common.compression != "deflate":
         raise click.UsageError("a NetCDF stack is packed with deflate only")
-    for name in (common.dem, *around.inputs, asked.station):
+    mapped = given["albedo"] if isinstance(given["albedo"], str) else None
+    for name in (common.dem, *around.inputs, asked.station, mapped):
         both = name and os.path.exists(name) and os.path.exists(common.out_dir)
         if both and os.path.samefile(common.out_dir, str(name)):
             raise click.UsageError(f"{name} is an input itself: take another name for OUT")
@@ -165,9 +172,6 @@ def _rearrange(command: click.Command) -> None:
             option.help = "How a Zarr stack is packed; NetCDF takes deflate."
         elif isinstance(option, click.Option) and option.name == "overwrite":
             option.help = "Replace a stack that is there."
-        elif isinstance(option, click.Option) and option.name == "albedo":
-            option.type = Numbers("station")
-            option.help = "Albedo of the ground: numbers, or 'station' for what SERIES measured."
         elif isinstance(option, click.Option) and option.name in NOT_HERE:
             option.hidden = True
 
@@ -193,6 +197,17 @@ def _settings(common: Common, asked: AskedSky, given: dict[str, Any]) -> SeriesS
         substep_seconds=given["substep_seconds"],
         refraction=common.refraction,
     )
+
+
+def _albedo(asked: Any, settled: Settled, elevation: Elevation) -> dict[str, Any]:
+    """The settings of an albedo that is not in numbers."""
+    from terrasol.files.maps import read_map
+
+    if asked == "station":
+        return {"albedo_station": settled.station}
+    if isinstance(asked, str):
+        return {"albedo_map": read_map(asked, elevation, "albedo", 0.0, 1.0)}
+    return {}
 
 
 def _plain(albedo: Any) -> tuple[float, ...]:
@@ -258,7 +273,7 @@ def _run(
         "warnings": [*summary.warnings, *notes],
         "seconds": {name: round(value, 2) for name, value in seconds.items()},
         "files": [str(common.out_dir)],
-        "horizon_store": None if store is None else str(store),
+        "horizon_store": str(store) if store and os.path.isdir(store / plan.key) else None,
     }
     tell(common, record, _summary_text)
 
@@ -269,9 +284,10 @@ def _forecast(
     """What a run would work on, write and cost."""
     from terrasol.cli.forecast import free_disk_mb, ground_forecast
     from terrasol.engine.series import stack_variables
-    from terrasol.files.horizons import find_horizons
+    from terrasol.files.horizons import damage_of, find_horizons
 
     stored = store is not None and find_horizons(store, plan.key) is not None
+    damage = None if store is None or stored else damage_of(store, plan.key)
     return ground_forecast(common, ground) | {
         "stack": str(common.out_dir),
         "quantities": {v.name: v.unit for v in stack_variables(plan.settings)},
@@ -287,7 +303,11 @@ def _forecast(
         "disk_free_mb": free_disk_mb(common.out_dir),
         "threads": threads,
         "seconds": round(plan.seconds(threads, stored)),
-        "warnings": [*plan.elevation.warnings, *plan.scene.warnings],
+        "warnings": [
+            *plan.elevation.warnings,
+            *plan.scene.warnings,
+            *([damage] if damage else []),
+        ],
     }
 
 

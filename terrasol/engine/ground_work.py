@@ -205,6 +205,16 @@ class BlockGround:
             self.table_latitude(rows),
         )
 
+    def beyond(self, piece: range) -> NDArray[np.float32] | None:
+        """Horizon of a larger model alone over a whole piece; None without one."""
+        if self._beyond is None:
+            return None
+        ground = self.ground
+        alone = np.zeros((ground.azimuths, len(piece), self.block.columns), np.float32)
+        lift = self.datum - ground.far.datum
+        raise_horizon(self.padded, piece, self._beyond, lift, ground.refraction, alone)
+        return alone
+
     def possible(self, strip: Strip, piece: range) -> NDArray[np.float32]:
         """Horizon of a strip if the highest plausible ground stood where knowledge ends.
 

@@ -31,6 +31,7 @@ from terrasol.files.layers import Layer, Sink
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame, make_frame
+from terrasol.ground.sightline import Outlooks, Sightlines
 from terrasol.light.days import Days, parse_clock, parse_days, strip_days
 from terrasol.light.hours import (
     AZIMUTHS,
@@ -199,7 +200,11 @@ class _HoursRun(Run):
             pass
         ground = self._ground()
         days = self._days()
-        work = partial(_block_hours, ground, [layer.name for layer in plan.layers], tables, days)
+        sights = None
+        if days is not None:
+            sights = Sightlines.over(plan.elevation, plan.frame, plan.refraction, ground.obstacles)
+        names = [layer.name for layer in plan.layers]
+        work = partial(_block_hours, ground, names, tables, days, sights)
         totals, gaps = Totals(), GapTally()
         blocks = [partial(with_block, work, block) for block in plan.blocks]
         for block, arrays in self._stage("blocks", blocks, 1.0 - self.done):
@@ -224,7 +229,12 @@ class _HoursRun(Run):
 
 
 def _block_hours(
-    ground: Ground, names: list[str], tables: TimeTables, days: Days | None, block: Block
+    ground: Ground,
+    names: list[str],
+    tables: TimeTables,
+    days: Days | None,
+    sights: Sightlines | None,
+    block: Block,
 ) -> Arrays:
     """Everything that is written of one block, by layer name."""
     piece = BlockGround(ground, block)
@@ -234,8 +244,8 @@ def _block_hours(
         hours.append(strip_hours(strip, tables))
         if "horizon_gap" in names:
             gap.append(horizon_gap(piece, strip, rows, None))
-        if days is not None:
-            walked.append(strip_days(strip, days))
+        if days is not None and sights is not None:
+            walked.append(strip_days(strip, days, _outlooks(piece, rows, sights)))
     sun, bright = np.concatenate(hours, axis=2)
     arrays: Arrays = {"sun_hours_months": sun, "bright_hours_months": bright}
     for name, months in (("sun_hours", sun), ("bright_hours", bright)):
@@ -253,6 +263,16 @@ def _block_hours(
     if "status" in names:
         arrays["status"] = status_of(ground.elevation, block)[None]
     return arrays
+
+
+def _outlooks(piece: BlockGround, rows: range, sights: Sightlines) -> Outlooks:
+    """Some rows' cells on the ground around them."""
+    b = piece.block
+    window = (
+        slice(b.row + rows.start, b.row + rows.stop),
+        slice(b.column, b.column + b.columns),
+    )
+    return sights.outlooks(window, piece.middle, piece.beyond(rows))
 
 
 def _longitude_from_centre(frame: Frame, block: Block) -> NDArray[np.float64]:

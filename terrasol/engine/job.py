@@ -13,6 +13,7 @@ import numpy as np
 from terrasol.constants import REFRACTION_COEFFICIENT, SURROUNDINGS_SCALE
 from terrasol.engine import outputs
 from terrasol.engine.blocks import (
+    Arrays,
     Tables,
     across_void,
     block_arrays,
@@ -31,7 +32,7 @@ from terrasol.engine.plan import (
     default_threads,
 )
 from terrasol.engine.totals import Totals
-from terrasol.errors import InputError, SettingError, counted
+from terrasol.errors import InputError, counted
 from terrasol.files.layers import Layer, Sink
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
@@ -39,7 +40,12 @@ from terrasol.ground.frame import Frame, make_frame
 from terrasol.ground.horizon import BLOCK, NODE_STEP
 from terrasol.light.indexed import MappedTables, even_indices
 from terrasol.light.latitudes import MIXED_BYTES
-from terrasol.light.settings import LightSettings, check_azimuths, check_refraction
+from terrasol.light.settings import (
+    LightSettings,
+    check_azimuths,
+    check_map,
+    check_refraction,
+)
 from terrasol.light.surroundings import Surroundings
 from terrasol.light.tables import SkyTables, table_bytes
 from terrasol.sky.suntable import height_knots, latitude_knots
@@ -287,12 +293,8 @@ def plan_irradiation(
     InputError
         A raster that cannot be placed on the Earth, or with cells too coarse for its blocks.
     """
-    for name, values in (("albedo", settings.albedo_map), ("index", settings.index_map)):
-        if values is not None and values.shape not in ((n, *elevation.shape) for n in (1, 12)):
-            raise SettingError(
-                f"the {name} map must have the shape (1 or 12, {elevation.shape[0]},"
-                f" {elevation.shape[1]}); got {values.shape}"
-            )
+    check_map("albedo", settings.albedo_map, elevation.shape)
+    check_map("index", settings.index_map, elevation.shape)
     layers = [*_terrain_layers(elevation), *outputs.light_layers(settings)]
     if scene.highest is not None:
         layers.append(outputs.horizon_gap_layer(scene.highest, settings))
@@ -350,17 +352,22 @@ class Run:
         ground, tables, surroundings = self.prepare()
         names = [layer.name for layer in plan.layers]
         work = partial(block_arrays, ground, names, tables, surroundings)
+        totals, gaps = self._write_blocks(sink, work)
+        self._conclude(ground, totals, tables)
+        self._tell_of_scene(gaps)
+        return self.summary
+
+    def _write_blocks(self, sink: Sink, work: Callable[[Block], Arrays]) -> tuple[Totals, GapTally]:
+        """Carry out every block's work into the sink; what all of them come to."""
         totals, gaps = Totals(), GapTally()
-        tasks = [partial(with_block, work, block) for block in plan.blocks]
+        tasks = [partial(with_block, work, block) for block in self.plan.blocks]
         for block, arrays in self._stage("blocks", tasks, 1.0 - self.done):
             totals.add(arrays)
             if "horizon_gap" in arrays:
                 gaps.add(arrays)
             for name, values in arrays.items():
                 sink.write(name, block.row, block.column, values)
-        self._conclude(ground, totals, tables)
-        self._tell_of_scene(gaps)
-        return self.summary
+        return totals, gaps
 
     def prepare(self) -> tuple[Ground, Tables | None, Surroundings | None]:
         """All that blocks need: the ground, and for light the sun tables and what is around."""

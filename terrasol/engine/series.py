@@ -31,7 +31,15 @@ from terrasol.engine.plan import (
     default_threads,
 )
 from terrasol.engine.series_work import BlockWork
-from terrasol.files.horizons import HorizonDraft, Horizons, find_horizons, horizon_key
+from terrasol.errors import OutputError
+from terrasol.files.delivery import check_space
+from terrasol.files.horizons import (
+    HorizonDraft,
+    Horizons,
+    damage_of,
+    find_horizons,
+    horizon_key,
+)
 from terrasol.files.stacks import Stack, StackSink, StackVariable
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
@@ -56,6 +64,7 @@ from terrasol.light.series import (
     step_months,
     suns_at_greenwich,
 )
+from terrasol.light.settings import check_map, filled_up, mapped_albedo
 from terrasol.light.surroundings import Surroundings
 from terrasol.sky.clear import Air
 from terrasol.sky.sun import SunPath
@@ -94,6 +103,9 @@ RESOLUTION: Final = {"1h": 2.0**-3, "1d": 2.0**-10}
 
 HORIZON_SHARE: Final = 0.2
 """Part of the progress that the horizons take, where they must be worked out."""
+
+HELD: Final = "this run holds them beside the stack, and the next will work them out anew"
+"""Of horizons that the store could not take."""
 
 WORDS: Final = {
     "global": "global {kind} from sky and terrain around",
@@ -187,7 +199,10 @@ class SeriesPlan:
     @property
     def reflecting(self) -> bool:
         """Whether the terrain sends light back."""
-        return self.settings.albedo_station is not None or any(self.settings.albedo)
+        settings = self.settings
+        measured = settings.albedo_station is not None
+        mapped = settings.albedo_map is not None
+        return measured or mapped or any(settings.albedo)
 
     @cached_property
     def stride(self) -> int:
@@ -223,7 +238,9 @@ class SeriesPlan:
         skies = moments * (48.0 + 16.0 * self.heights.size) * len(blocks_of(self.elevation.shape))
         values = WORK_STEPS[self.settings.step] * 65536 * 4.0
         block = (len(self.settings.quantities) + 2) * values + 4.0 * 65536 * self.settings.azimuths
-        return int(450e6 + 5.0 * self.cells + max(far, around + skies) + threads * block)
+        mapped = 0 if self.settings.albedo_map is None else self.settings.albedo_map.nbytes
+        ground = 5.0 * self.cells + mapped
+        return int(450e6 + ground + max(far, around + skies) + threads * block)
 
     def seconds(self, threads: int, stored: bool) -> float:
         """Time to expect."""
@@ -252,6 +269,7 @@ class SeriesPlan:
         store: Path,
         threads: int | None = None,
         progress: Progress | None = None,
+        spare: Path | None = None,
     ) -> Summary:
         """Do the work.
 
@@ -265,6 +283,8 @@ class SeriesPlan:
             Default: as many as there are cores to use.
         progress : callable, optional
             Told the share done and the stage.
+        spare : Path, optional
+            Folder that holds horizons for this run alone where the store cannot take them.
 
         Returns
         -------
@@ -275,11 +295,13 @@ class SeriesPlan:
         SettingError
             Fewer than one thread.
         OutputError
-            From the sink or the store.
+            From the sink, or from the store where there is no spare folder.
         """
         threads = default_threads() if threads is None else threads
         check_threads(threads)
-        return SeriesRun(self, sink, threads, progress or (lambda share, stage: None)).do(store)
+        return SeriesRun(self, sink, threads, progress or (lambda share, stage: None)).do(
+            store, spare
+        )
 
 
 def plan_series(
@@ -302,9 +324,12 @@ def plan_series(
 
     Raises
     ------
+    SettingError
+        A map of the albedo that does not fit the raster.
     InputError
         A raster that cannot be placed on the Earth, or with cells too coarse for its blocks.
     """
+    check_map("albedo", settings.albedo_map, elevation.shape)
     frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
     check_blocks(frame)
     edges = step_edges(settings, frame.centre[1])
@@ -318,6 +343,7 @@ class Span:
     start: int
     stop: int
     path: SunPath
+    months: NDArray[np.int64]
     albedo: NDArray[np.float32]
     received: NDArray[np.float32]
     skies: dict[tuple[int, int], list[StepSky]] = field(default_factory=dict)
@@ -326,6 +352,15 @@ class Span:
     def steps(self) -> int:
         """How many."""
         return self.stop - self.start
+
+    def albedo_at(
+        self, layers: NDArray[np.float32] | None, steps: slice, rows: slice, columns: slice
+    ) -> NDArray[Any]:
+        """Albedo of the ground in some steps; where it is mapped, of some cells."""
+        plain = self.albedo[steps]
+        if layers is None:
+            return plain
+        return mapped_albedo(layers, self.months[steps], plain, rows, columns)
 
 
 class SeriesRun:
@@ -342,11 +377,13 @@ class SeriesRun:
         self.blocks = blocks_of(plan.elevation.shape)
         self.totals = {name: [0.0, 0.0, np.inf, -np.inf] for name in plan.settings.quantities}
 
-    def do(self, store: Path) -> Summary:
+    def do(self, store: Path, spare: Path | None) -> Summary:
         """All stages."""
         plan = self.plan
         found = find_horizons(store, plan.key)
-        horizons = found or self.make_horizons(store)
+        damage = None if found else damage_of(store, plan.key)
+        self.summary.warnings += [damage] if damage else []
+        horizons = found or self.make_horizons(store, spare)
         begin = 0.0 if found else HORIZON_SHARE
         for start in range(0, plan.steps, plan.span):
             stop = min(start + plan.span, plan.steps)
@@ -371,8 +408,8 @@ class SeriesRun:
         seconds = self.summary.seconds
         seconds[name] = round(seconds.get(name, 0.0) + time.perf_counter() - start, 3)
 
-    def make_horizons(self, store: Path) -> Horizons:
-        """Sweep, and keep every block's horizons."""
+    def make_horizons(self, store: Path, spare: Path | None = None) -> Horizons:
+        """Sweep, and keep every block's horizons, if need be in a spare folder."""
         plan = self.plan
         settings, elevation = plan.settings, plan.elevation
         ground, tasks = lay_out(
@@ -380,8 +417,19 @@ class SeriesRun:
         )
         for _ in self.each("far horizon", tasks, 0.0, 0.6 * HORIZON_SHARE):
             pass
-        across = across_void(ground, np.isfinite(elevation.heights))
-        with HorizonDraft(store, plan.key) as draft:
+        try:
+            return self._keep(ground, store)
+        except OutputError as error:
+            if spare is None or spare == store:
+                raise
+            self.summary.warnings.append(f"{error}; {HELD}")
+        check_space(spare.parent, plan.horizon_bytes)
+        return self._keep(ground, spare)
+
+    def _keep(self, ground: Ground, store: Path) -> Horizons:
+        """Work out every block's horizons into a store."""
+        across = across_void(ground, np.isfinite(self.plan.elevation.heights))
+        with HorizonDraft(store, self.plan.key) as draft:
             keep = [partial(_keep_horizons, ground, draft, block) for block in self.blocks]
             for _ in self.each("horizons", keep, 0.6 * HORIZON_SHARE, 0.4 * HORIZON_SHARE):
                 pass
@@ -462,7 +510,8 @@ def span_of(plan: SeriesPlan, start: int, stop: int) -> tuple[Span, NDArray[np.f
     if not plan.reflecting:
         samples = np.zeros((stop - start + 1, 1, 1), np.float32)
     path = suns_at_greenwich(edges, settings.substep_seconds)
-    return Span(start, stop, path, step_albedo(settings, edges, months), samples[:-1]), samples
+    albedo = step_albedo(settings, edges, months)
+    return Span(start, stop, path, months, albedo, samples[:-1]), samples
 
 
 def _keep_horizons(ground: Ground, draft: HorizonDraft, block: Block) -> None:
@@ -505,11 +554,12 @@ def _spread(plan: SeriesPlan, span: Span, samples: NDArray[np.float32], first: i
     if not np.nanmax(samples[steps], initial=0.0) > 0.0:
         span.received[steps] = 0.0
         return
+    every = slice(plan.stride // 2, None, plan.stride)
+    albedo = span.albedo_at(plan.settings.albedo_map, steps, every, every).astype(np.float64)
+    if albedo.ndim > 1:
+        albedo = filled_up(albedo, samples.shape[1:])
     found = Surroundings.of(
-        np.concatenate([samples[steps], samples[-1:]]),
-        plan.stride,
-        plan.frame.cell_size,
-        span.albedo[steps].astype(np.float64),
+        np.concatenate([samples[steps], samples[-1:]]), plan.stride, plan.frame.cell_size, albedo
     )
     span.received[steps] = found.received
 
@@ -522,6 +572,7 @@ def _do_block(
     found: dict[str, list[NDArray[np.float64]]] = {name: [] for name in settings.quantities}
     if ground.empty:
         return found
+    layers = settings.albedo_map if "net" in found else None
     strips = [
         (sky, patch, patch.sky(), rows, columns)
         for part, sky in zip(ground.parts(), span.skies[block.row, block.column], strict=True)
@@ -529,18 +580,21 @@ def _do_block(
     ]
     for first in range(0, span.steps, count):
         steps = slice(first, min(first + count, span.steps))
-        albedo = span.albedo[steps]
+        sent = span.albedo[steps]
+        if settings.albedo_map is not None:
+            sent = np.ones_like(sent)
         shape = steps.stop - steps.start, block.rows, block.columns
         values = {name: np.empty(shape, np.float32) for name in settings.quantities}
-        surroundings = Surroundings(span.received[steps], stride, span.albedo[steps])
+        surroundings = Surroundings(span.received[steps], stride, sent)
         for sky, patch, view, rows, columns in strips:
-            around = Around.of(
-                surroundings, _moved(rows, block.row), _moved(columns, block.column), albedo
-            )
+            down, across = _moved(rows, block.row), _moved(columns, block.column)
+            around = Around.of(surroundings, down, across, sent)
             light = patch_light(
                 patch, view, sky.part(steps.start, steps.stop), around, settings.basis
             )
             place = np.s_[:, rows.start : rows.stop, columns.start : columns.stop]
+            cells = slice(down.start, down.stop), slice(across.start, across.stop)
+            albedo = span.albedo_at(layers, steps, *cells)
             for name, target in values.items():
                 target[place] = quantity(name, light, albedo)
         for name, target in values.items():

@@ -3,20 +3,23 @@
 from __future__ import annotations
 
 import json
+import os
 from collections.abc import Mapping, Sequence
 from datetime import UTC, datetime
 from os import PathLike
 from pathlib import Path
 from typing import Any
 
+import numpy as np
 import xarray as xr
+from numpy.typing import NDArray
 
 import terrasol
 from terrasol.constants import REFRACTION_COEFFICIENT
 from terrasol.engine.datasets import clear_air, scene_of
 from terrasol.engine.job import Summary
 from terrasol.engine.plan import Progress
-from terrasol.engine.series import SeriesPlan, is_clear, plan_series
+from terrasol.engine.series import HELD, SeriesPlan, is_clear, plan_series
 from terrasol.errors import OutputError
 from terrasol.files.delivery import check_space
 from terrasol.files.horizons import default_folder
@@ -87,7 +90,8 @@ def write_series(
     record : mapping
         What was asked, ready for JSON.
     store : Path or None
-        Folder where horizons are kept and found; None keeps none.
+        Folder where horizons are kept and found; None keeps none. Where it cannot take them
+        they are held beside the stack, and the summary says so.
     compression : {'zstd', 'deflate'}
         For Zarr.
     overwrite : bool
@@ -101,9 +105,11 @@ def write_series(
         The name is taken, or the disk is too small or refuses.
     """
     check_stack_free(path, overwrite)
-    if store is not None and not (store / plan.key).exists():
-        _check_store(store, plan.horizon_bytes)
-    need = plan.stack_bytes + (plan.horizon_bytes if store is None else 0)
+    crowded = None
+    if store is not None and not os.path.lexists(store / plan.key):
+        crowded = _crowded(store, plan.horizon_bytes)
+    keep = None if crowded else store
+    need = plan.stack_bytes + (plan.horizon_bytes if keep is None else 0)
     writer = StackWriter(
         path,
         plan.stack(stack_attributes(plan, record)),
@@ -112,19 +118,25 @@ def write_series(
         need=need,
     )
     with writer:
-        summary = plan.run(writer, store or writer.scratch, threads, progress)
+        summary = plan.run(writer, keep or writer.scratch, threads, progress, writer.scratch)
         writer.commit()
+    if crowded:
+        summary.warnings.append(f"{crowded}; {HELD}")
     return summary
 
 
-def _check_store(store: Path, need: int) -> None:
-    """Raise OutputError where horizons will not fit, before any work."""
+def _crowded(store: Path, need: int) -> OutputError | None:
+    """What says that horizons will not fit, before any work; raises where no folder can be."""
     folder = store.absolute()
-    while not folder.exists():
+    while not os.path.exists(folder):  # or not to be looked at
         folder = folder.parent
-    if not folder.is_dir():
+    if not os.path.isdir(folder):
         raise OutputError(f"{folder} is not a folder: name another one for the horizons")
-    check_space(folder, need)
+    try:
+        check_space(folder, need, "folder for the horizons")
+    except OutputError as error:
+        return error
+    return None
 
 
 def irradiation_series(
@@ -141,6 +153,7 @@ def irradiation_series(
     basis: str = "slope",
     substep_seconds: float = SUBSTEP_SECONDS,
     refraction: float = REFRACTION_COEFFICIENT,
+    albedo_map: NDArray[np.float32] | None = None,
     far: Elevation | None = None,
     surface: Elevation | None = None,
     horizon_store: str | PathLike[str] | bool = True,
@@ -178,6 +191,8 @@ def irradiation_series(
         Spacing of the moments that make a step; divides an hour.
     refraction : float
         Coefficient k of terrestrial refraction.
+    albedo_map : ndarray, shape (1 or 12, y, x), optional
+        Albedo of each cell, for the year or January to December; NaN where `albedo` counts.
     far : Elevation, optional
         A larger, coarser model in any CRS: its ridges beyond the edge and in voids count too.
     surface : Elevation, optional
@@ -196,7 +211,8 @@ def irradiation_series(
     -------
     xarray.Dataset
         The stack, opened; each quantity (time, y, x), read from disk when it is looked at. The
-        time is the middle of the interval in UTC, ``time_bounds`` its edges.
+        time is the middle of the interval in UTC, ``time_bounds`` its edges. The attribute
+        ``warnings`` holds what a careful reader should know.
 
     Raises
     ------
@@ -205,7 +221,7 @@ def irradiation_series(
     InputError
         A raster that cannot be placed on the Earth.
     OutputError
-        The stack or the horizons cannot be written.
+        The stack cannot be written, or the horizons nowhere.
 
     References
     ----------
@@ -227,12 +243,13 @@ def irradiation_series(
         basis,
         substep_seconds,
         refraction,
+        albedo_map=albedo_map,
     )
     if isinstance(horizon_store, bool):
         store = default_folder() if horizon_store else None
     else:
         store = Path(horizon_store)
-    write_series(
+    summary = write_series(
         plan_series(elevation, settings, scene),
         path,
         series_record(settings),
@@ -241,18 +258,25 @@ def irradiation_series(
         overwrite=overwrite,
         threads=threads,
     )
-    return open_stack(path)
+    data = open_stack(path)
+    data.attrs["warnings"] = summary.warnings
+    return data
 
 
 def series_record(settings: SeriesSettings) -> dict[str, Any]:
     """Settings as plain text and numbers."""
     sky = settings.sky
+    albedo: Any = list(settings.albedo)
+    if settings.albedo_station is not None:
+        albedo = "as measured"
+    if settings.albedo_map is not None:
+        albedo = "as mapped"
     return {
         "period": settings.period.record(),
         "sky": sky.record() if isinstance(sky, Air) else type(sky).__name__,
         "step": settings.step,
         "quantities": list(settings.quantities),
-        "albedo": list(settings.albedo) if settings.albedo_station is None else "as measured",
+        "albedo": albedo,
         "diffuse": settings.diffuse,
         "azimuths": settings.azimuths,
         "basis": settings.basis,

@@ -234,8 +234,8 @@ def check_free(folder: str | PathLike[str], names: Iterable[str], overwrite: boo
             raise OutputError(f"{folder / name} is a folder and in the way: remove it")
 
 
-def check_space(folder: Path, need: int) -> None:
-    """Refuse work that will not fit on the folder's disk.
+def check_space(folder: Path, need: int, kind: str = "output folder") -> None:
+    """Refuse work that will not fit on the folder's disk; `kind` says what the folder is.
 
     Raises
     ------
@@ -246,7 +246,7 @@ def check_space(folder: Path, need: int) -> None:
     if need > free:
         raise OutputError(
             f"{folder}: the work may need {need / 1e6:,.0f} MB of disk and {free / 1e6:,.0f} MB are"
-            " free: make room or name another output folder"
+            f" free: make room or name another {kind}"
         )
 
 

@@ -236,3 +236,14 @@ def find_horizons(store: str | PathLike[str], key: str) -> Horizons | None:
         if folder.is_dir():
             return Horizons.open(folder)
     return None
+
+
+def damage_of(store: str | PathLike[str], key: str) -> str | None:
+    """What to warn of where `find_horizons` finds none: a store that is there, but not whole."""
+    folder = Path(store) / key
+    if not os.path.lexists(folder):
+        return None
+    return (
+        f"{folder}: the horizons kept there are damaged or of another format, and are worked out"
+        " anew"
+    )

@@ -103,11 +103,13 @@ def read_with_unit(
 
 @contextmanager
 def naming(path: str | PathLike[str]) -> Iterator[None]:
-    """Put the file's name before what is wrong with it."""
+    """Put the file's name before what is wrong with it, unless another one is named."""
     try:
         yield
     except InputError as error:
-        raise InputError(f"{path}: {error}") from error
+        if error.file is not None:
+            raise
+        raise InputError(error.words, path) from error
 
 
 @contextmanager

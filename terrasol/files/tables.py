@@ -157,11 +157,11 @@ def _units(said: Settings) -> dict[str, str]:
 
 @contextmanager
 def _naming(path: str | PathLike[str]) -> Iterator[None]:
-    """Put the file's name before what is wrong with it."""
+    """Put the file's whole name before what is wrong with it."""
     try:
         yield
     except InputError as error:
-        raise InputError(f"{path}: {error}") from error
+        raise InputError(error.words, path) from error
 
 
 def _stem(path: str | PathLike[str]) -> str:

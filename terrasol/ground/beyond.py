@@ -6,8 +6,7 @@ from. Inside the raster its own heights rule; the larger model counts beyond it 
 
 from __future__ import annotations
 
-import hashlib
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from itertools import pairwise
 from typing import Final
 
@@ -56,6 +55,9 @@ half the distance of geoid and ellipsoid in the Alps (judgement, no source)."""
 HEADROOM: Final = (100.0, 0.25)
 """What the highest plausible ground outside the data stands above the highest inside: metres,
 and a share of the relief (judgement, no source)."""
+
+HIGHEST_ON_EARTH: Final = 9000.0
+"""No ground stands higher [m]: the highest is 8849 m (survey of 2020, from memory)."""
 
 SAMPLE: Final = 0.5
 """Steps along a line in the larger model, in its cells: a crest lies a quarter of a cell from
@@ -245,6 +247,28 @@ def joined(elevation: Elevation, far: FarGround, cell: float) -> tuple[NDArray[n
     return out, margin
 
 
+def _obstacles_of(elevation: Elevation, far: FarGround, cell: float) -> Obstacles:
+    """The raster and what a larger model adds in and around it.
+
+    Where the larger model ends within the margin, lowest ground stands in for what hides: it
+    rises above nobody's level, as nothing would, and is no void that ground lies behind.
+    """
+    heights, margin = joined(elevation, far, cell)
+    unknown = np.isnan(heights)
+    unknown[margin:-margin, margin:-margin] = False
+    row, column = np.nonzero(unknown)
+    enclosed = np.isnan(far.elevation.heights) & ~_outer_void(far.elevation.heights)
+    whole = replace(far.elevation, heights=np.where(enclosed, np.float32(0), far.elevation.heights))
+    locate = Locator(elevation.crs, far.elevation)
+    seen = heights_at(whole, *locate(*coordinates(elevation, row - margin, column - margin)))
+    ended = np.isnan(seen)
+    if not ended.any():
+        return Obstacles(heights, heights, margin)
+    hiding = heights.copy()
+    hiding[row[ended], column[ended]] = np.nanmin(heights)
+    return Obstacles(hiding, heights, margin)
+
+
 def _nearest_known(heights: NDArray[np.float32], margin: int):
     """A function from cells of a padded raster to the nearest known ones."""
     inner = [(margin, size - 1 - margin) for size in heights.shape]
@@ -295,19 +319,6 @@ class Scene:
     warnings: tuple[str, ...] = field(default=())
     remarks: tuple[str, ...] = field(default=())
 
-    def fingerprint(self) -> str | None:
-        """Name all that changes a horizon here by a hash; None where nothing does."""
-        if self.obstacles is None:
-            return None
-        digest = hashlib.sha256()
-        for heights in (self.obstacles.heights, self.obstacles.eyes):
-            digest.update(np.ascontiguousarray(heights, "<f4").data)
-        if self.far is not None:
-            model = self.far.elevation
-            digest.update(np.ascontiguousarray(model.heights, "<f4").data)
-            digest.update(repr((model.shape, model.transform, model.crs.to_wkt())).encode())
-        return digest.hexdigest()
-
 
 def make_scene(
     elevation: Elevation,
@@ -331,8 +342,8 @@ def make_scene(
     horizon_gap : bool
         Find out what unknown ground could hide.
     highest : float, optional
-        How high that could be [m]; by default the highest ground of all given data and
-        HEADROOM above it.
+        How high that could be [m]: at least what the known ground reaches where it ends. By
+        default the highest ground of all given data and HEADROOM above it.
 
     Returns
     -------
@@ -341,14 +352,13 @@ def make_scene(
     Raises
     ------
     SettingError
-        A height that is no number, or one that nobody asked for.
+        A height that is no number, that nobody asked for, or that no ground outside could have.
     """
     warnings: list[str] = []
     remarks: list[str] = []
     obstacles: Obstacles | None = None
     if far is not None:
-        heights, margin = joined(elevation, far, min(frame.cell_size))
-        obstacles = Obstacles(heights, heights, margin)
+        obstacles = _obstacles_of(elevation, far, min(frame.cell_size))
         warnings += far.warnings
         least, greatest = (distance / 1000.0 for distance in far.reach)
         remarks.append(
@@ -373,7 +383,7 @@ def _under(ground: Obstacles, surface: NDArray[np.float32]) -> Obstacles:
     margin = ground.margin
     inner = hiding[margin : margin + rows, margin : margin + columns]
     np.fmax(inner, surface, out=inner)
-    return Obstacles(hiding, ground.heights, margin)
+    return Obstacles(hiding, ground.eyes, margin)
 
 
 def _highest(elevation, far, horizon_gap, highest) -> float | None:
@@ -385,11 +395,41 @@ def _highest(elevation, far, horizon_gap, highest) -> float | None:
     if highest is not None:
         if not np.isfinite(highest):
             raise SettingError(f"the highest ground must be a number of metres; got {highest!r}")
+        _check_highest(elevation, far, highest)
         return float(highest)
     models = [elevation, *([far.elevation] if far else [])]
     lowest = min(float(np.nanmin(model.heights)) for model in models)
     top = max(float(np.nanmax(model.heights)) for model in models)
     return top + HEADROOM[0] + HEADROOM[1] * (top - lowest)
+
+
+def _check_highest(elevation: Elevation, far: FarGround | None, highest: float) -> None:
+    """Refuse a height that ground outside the data cannot have.
+
+    Ground does not end where the data do: just outside it is about as high as just inside. A
+    summit further in may well stand above all that is outside.
+    """
+    if highest > HIGHEST_ON_EARTH:
+        raise SettingError(
+            f"the highest ground outside the data cannot stand at {highest:g} m, above all ground"
+            " on Earth: give it in metres"
+        )
+    ends = _rim_height(elevation.heights)
+    if far is not None:
+        outer = _rim_height(far.elevation.heights)
+        ends = min(ends, outer) if far.reach[0] == 0.0 else outer
+    if highest < ends:
+        raise SettingError(
+            f"the highest ground outside the data cannot stand as low as {highest:g} m, for the"
+            f" known ground reaches {ends:.1f} m where it ends: give {np.ceil(ends):.0f} m or more"
+        )
+
+
+def _rim_height(heights: NDArray[np.float32]) -> float:
+    """Greatest height of the outermost known cells [m]."""
+    outside = np.pad(_outer_void(heights), 1, constant_values=True)
+    beside = binary_dilation(outside, np.ones((3, 3)))[1:-1, 1:-1]
+    return float(np.nanmax(heights[beside]))
 
 
 class Outlook:
@@ -605,16 +645,22 @@ def _eyes(elevation: Elevation, scene: Scene, shape: tuple[int, ...]) -> NDArray
     return eyes
 
 
+def _outer_void(heights: NDArray[np.float32]) -> NDArray[np.bool_]:
+    """Void cells that known ground does not enclose: those of voids that reach the rim."""
+    void = np.isnan(heights)
+    if not void.any():
+        return void
+    labels, _ = label(void, structure=np.ones((3, 3)))
+    rim = np.concatenate([labels[0], labels[-1], labels[:, 0], labels[:, -1]])
+    return np.asarray(np.isin(labels, np.setdiff1d(rim, 0)))
+
+
 def _known(heights: NDArray[np.float32], pooled: int) -> NDArray[np.uint8]:
     """Squares of `pooled` cells whose ground is known, and that of the squares around.
 
     Voids that known ground encloses are not counted as unknown; those that reach the rim are.
     """
-    void = np.isnan(heights)
-    if void.any():
-        labels, _ = label(void, structure=np.ones((3, 3)))
-        rim = np.concatenate([labels[0], labels[-1], labels[:, 0], labels[:, -1]])
-        void = np.isin(labels, np.setdiff1d(rim, 0))
+    void = _outer_void(heights)
     extra = [(0, -size % pooled) for size in void.shape]
     padded = np.pad(void, extra)
     rows, columns = (size // pooled for size in padded.shape)

@@ -16,7 +16,8 @@ from numpy.typing import NDArray
 from terrasol.constants import SOLAR_RADIUS_DEG
 from terrasol.errors import SettingError
 from terrasol.ground.horizon import azimuth_directions
-from terrasol.kernels.sunshine import walk_days
+from terrasol.ground.sightline import Outlooks
+from terrasol.kernels.daywalk import walk_days
 from terrasol.light.irradiation import Strip
 from terrasol.light.latitudes import LATITUDE_GRAIN
 from terrasol.sky.period import Period, parse_period
@@ -238,7 +239,8 @@ class Days:
         sectors = np.floor(turn).astype(np.int64)
         angle = np.radians(azimuth)
         tangent = np.tan(np.radians(limb))
-        suns = np.stack([tangent, turn - sectors, np.sin(angle), np.cos(angle)], axis=-1)
+        squeeze = 1.0 + (lift(geometric + 0.01, height) - lift(geometric - 0.01, height)) / 0.02
+        suns = np.stack([tangent, turn - sectors, np.sin(angle), np.cos(angle), squeeze], axis=-1)
         sectors %= self.azimuths
         found = [_runs(*day) for day in zip(limb > LOWEST_LIMB, sectors, suns, strict=True)]
         longest = 1 + max(len(runs) for runs, _ in found)
@@ -331,7 +333,7 @@ def _runs(
     return runs, ranges
 
 
-def strip_days(strip: Strip, days: Days) -> NDArray[np.float32]:
+def strip_days(strip: Strip, days: Days, outlooks: Outlooks | None = None) -> NDArray[np.float32]:
     """First and last sun, time in the sun and interruptions of each day.
 
     Parameters
@@ -340,6 +342,9 @@ def strip_days(strip: Strip, days: Days) -> NDArray[np.float32]:
         The ground.
     days : Days
         Which days.
+    outlooks : Outlooks, optional
+        The strip's cells on the ground around them, over which crossings are settled; without,
+        the strip's horizon is taken at its word.
 
     Returns
     -------
@@ -351,6 +356,7 @@ def strip_days(strip: Strip, days: Days) -> NDArray[np.float32]:
     height = strip.datum + (float(known.mean()) if known.size else 0.0)
     path = days.at(strip.middle, height)
     rows, columns = strip.heights.shape
+    views = outlooks or Outlooks.none((rows, columns))
     out = np.empty((rows, path.suns.shape[0], columns, 4), np.float32)
     walk_days(
         strip.horizon,
@@ -362,6 +368,13 @@ def strip_days(strip: Strip, days: Days) -> NDArray[np.float32]:
         path.runs,
         path.ranges,
         LEAST_GAP,
+        views.ground,
+        views.origin,
+        views.eyes,
+        views.grid,
+        views.bow,
+        views.bend,
+        views.beyond,
         out,
     )
     return np.ascontiguousarray(out.transpose(3, 1, 0, 2))

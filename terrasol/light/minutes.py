@@ -63,7 +63,7 @@ def minute_states(strip: Strip, days: Days) -> NDArray[np.uint8]:
         `State` of each minute from one true solar midnight to the next, both included.
     """
     path = days.exactly(strip.latitude[0], strip.datum + float(strip.heights[0, 0]))
-    limb, share, east, north = np.moveaxis(path.suns.astype(np.float64), -1, 0)
+    limb, share, east, north, _ = np.moveaxis(path.suns.astype(np.float64), -1, 0)
     horizon = strip.horizon[:, 0, 0].astype(np.float64)
     following = np.roll(horizon, -1)
     terrain = horizon[path.sectors] * (1.0 - share) + following[path.sectors] * share

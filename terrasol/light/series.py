@@ -77,7 +77,9 @@ class SeriesSettings:
         Terrestrial refraction coefficient k of lines of sight.
     albedo_station : Station, optional
         Whose measured albedo counts, step by step, in place of `albedo`.
-
+    albedo_map : ndarray of float32, shape (1 or 12, rows, columns), optional
+        Albedo of each cell, for the year or January to December; where it is NaN, `albedo`
+        counts.
 
     Raises
     ------
@@ -96,13 +98,16 @@ class SeriesSettings:
     substep_seconds: float = SUBSTEP_SECONDS
     refraction: float = REFRACTION_COEFFICIENT
     albedo_station: Station | None = None
+    albedo_map: NDArray[np.float32] | None = None
 
     def __post_init__(self) -> None:
         """Refuse what makes no sense."""
         if self.albedo_station is not None and "albedo" not in self.albedo_station.values:
             raise InputError(
-                f"{self.albedo_station.name}: no albedo was measured, so it has none to give"
+                "no albedo was measured, so it has none to give", self.albedo_station.name
             )
+        if self.albedo_station is not None and self.albedo_map is not None:
+            raise SettingError("albedo comes from a map or from a station, not from both")
         if len(self.albedo) != 12 or not all(0.0 <= value <= 1.0 for value in self.albedo):
             raise SettingError(f"albedo must be twelve numbers from 0 to 1; got {self.albedo}")
         if not self.quantities or len(set(self.quantities)) < len(self.quantities):
@@ -188,7 +193,7 @@ def step_albedo(
         return np.array(settings.albedo, np.float32)[months]
     known = np.isfinite(station.values["albedo"])
     if not known.any():
-        raise InputError(f"{station.name}: all values of the albedo are missing")
+        raise InputError("all values of the albedo are missing", station.name)
     seconds = edges.astype("M8[s]").astype(np.float64)
     at = (seconds[:-1] + seconds[1:]) / 2.0
     measured = station.middle[known].astype("M8[s]").astype(np.float64)
@@ -389,8 +394,11 @@ def _ratio(part: NDArray[np.float64], whole: NDArray[np.float64]) -> NDArray[np.
     return np.where(some, part / np.where(some, whole, 1.0), 0.0)
 
 
-def _bends(values: NDArray[np.float64], knots: NDArray[np.float64]) -> NDArray[np.float32]:
-    """Values at knots (last axis) as first value, first slope and changes of slope."""
+def bends(values: NDArray[np.float64], knots: NDArray[np.float64]) -> NDArray[np.float32]:
+    """Values at knots (last axis) as `terrasol.kernels.moment` takes them.
+
+    First value, first slope and changes of slope.
+    """
     slope = np.diff(values, axis=-1) / np.diff(knots)
     bent = np.concatenate([values[..., :1], slope[..., :1], np.diff(slope, axis=-1)], axis=-1)
     return np.ascontiguousarray(bent, np.float32)
@@ -471,7 +479,7 @@ class Around:
     rows, columns : ndarray of float32
         Place of the patch's rows and columns among the nodes.
     albedo : ndarray of float32, shape (steps,)
-        Of the ground.
+        Share of `received` that is sent back: the albedo, or 1 where that is mapped.
     """
 
     received: NDArray[np.float32]
@@ -534,11 +542,11 @@ def patch_light(
     normal = np.ascontiguousarray(patch.turned().reshape(3, cells))
     direct_light(
         patch.code.reshape(-1, cells), normal, offset, z, knot, sky.first, sky.left, sky.sun,
-        _bends(sky.strength[..., knots], heights), direct,
+        bends(sky.strength[..., knots], heights), direct,
     )  # fmt: skip
     out = np.empty((4, steps, cells), np.float32)
     parts_of_steps(
-        direct, _bends(sky.even[..., knots], heights), sky.change, offset,
+        direct, bends(sky.even[..., knots], heights), sky.change, offset,
         view.reshape(2, cells), z, knot, around.received, around.rows, around.columns,
         around.albedo, patch.factor(basis).reshape(cells), out,
     )  # fmt: skip
@@ -558,8 +566,8 @@ def _knots_of(patch: Patch, heights: NDArray[np.float64]) -> slice:
 def quantity(
     name: str, light: NDArray[np.float32], albedo: NDArray[np.float32]
 ) -> NDArray[np.float32]:
-    """One of `QUANTITIES` out of the parts (4, steps, ...); albedo by step."""
+    """One of `QUANTITIES` out of the parts (4, steps, ...); albedo by step, or by step and cell."""
     if name != "net":
         return light[PARTS.index(name)]
-    absorbed = 1.0 - albedo.reshape(-1, *(1,) * (light.ndim - 2))
+    absorbed = 1.0 - albedo.reshape(*albedo.shape, *(1,) * (light.ndim - 1 - albedo.ndim))
     return light[0] * absorbed.astype(np.float32)

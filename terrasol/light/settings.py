@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass
 from numbers import Integral, Real
-from typing import Final
+from typing import Any, Final
 
 import numpy as np
 from numpy.typing import NDArray
@@ -114,21 +114,17 @@ class LightSettings:
 
         Shape (months,), or (months, rows, columns).
         """
-        plain = self.month_albedo
         if self.albedo_map is None:
-            return plain
-        layers = self.albedo_map[:, rows, columns].astype(np.float64)
-        which = [(month - 1) % layers.shape[0] for _, month in self.period.months]
-        return np.where(np.isnan(layers[which]), plain[:, None, None], layers[which])
+            return self.month_albedo
+        months = np.array([month - 1 for _, month in self.period.months])
+        return mapped_albedo(self.albedo_map, months, self.month_albedo, rows, columns)
 
     def sampled_albedo(self, stride: int, shape: tuple[int, int]) -> NDArray[np.float64]:
         """The same at every `stride`-th cell, for a lattice of samples of that shape."""
         if self.albedo_map is None:
             return self.month_albedo
         every = slice(stride // 2, None, stride)
-        found = self.ground_albedo(every, every)
-        short = [(0, 0)] + [(0, n - m) for n, m in zip(shape, found.shape[1:], strict=True)]
-        return np.pad(found, short, constant_values=np.nan)
+        return filled_up(self.ground_albedo(every, every), shape)
 
     @property
     def photons(self) -> NDArray[np.float64] | None:
@@ -136,6 +132,45 @@ class LightSettings:
         if self.photons_per_joule is None:
             return None
         return self.photons_per_joule / UNITS[self.unit] / np.array(self.period.month_days)
+
+
+def mapped_albedo(
+    layers: NDArray[np.float32],
+    months: NDArray[np.int64],
+    plain: NDArray[Any],
+    rows: slice,
+    columns: slice,
+) -> NDArray[np.float64]:
+    """Albedo of some cells at some times, shape (times, rows, columns).
+
+    Parameters
+    ----------
+    layers : ndarray of float32, shape (1 or 12, rows, columns)
+        The map, for the year or January to December.
+    months : ndarray of int64, shape (times,)
+        Calendar month of each time, 0 to 11.
+    plain : ndarray, shape (times,)
+        What counts where the map is NaN.
+    rows, columns : slice
+        Which cells.
+    """
+    cut = layers[:, rows, columns].astype(np.float64)[months % layers.shape[0]]
+    return np.where(np.isnan(cut), plain[:, None, None], cut)
+
+
+def filled_up(values: NDArray[np.float64], shape: tuple[int, ...]) -> NDArray[np.float64]:
+    """Values (times, rows, columns) with NaN up to a lattice's rows and columns."""
+    short = [(0, 0)] + [(0, n - m) for n, m in zip(shape, values.shape[1:], strict=True)]
+    return np.pad(values, short, constant_values=np.nan)
+
+
+def check_map(name: str, values: NDArray[Any] | None, shape: tuple[int, int]) -> None:
+    """Raise SettingError unless a map, if there is one, has one or twelve layers of that shape."""
+    if values is not None and values.shape not in ((n, *shape) for n in (1, 12)):
+        raise SettingError(
+            f"the {name} map must have the shape (1 or 12, {shape[0]}, {shape[1]}); got"
+            f" {values.shape}"
+        )
 
 
 def check_azimuths(azimuths: int) -> None:

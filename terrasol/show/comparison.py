@@ -17,7 +17,7 @@ from terrasol.light.days import Clock
 from terrasol.light.minutes import track
 from terrasol.show.key import BAR_COLOUR, NOTE_LEADING, SMALL, TEXT
 from terrasol.show.page import INK, POINTS_PER_PIXEL, SOFT, Page, clip, text_width, wrap
-from terrasol.show.panel import Panel, steps
+from terrasol.show.panel import TICK, Panel, steps
 from terrasol.show.skyline import HOUR_LINES, draw_skyline, tracks_of, view_limits
 from terrasol.sky.period import TYPICAL_SUN_YEAR
 
@@ -70,7 +70,7 @@ def comparison_png(report: StationReport, *, title: str, notes: Sequence[str] = 
     page = Page(WIDTH, round(bottom + FOOT))
     with style.context("default"):
         page.text(LEFT, 72, clip(title, TITLE, right - LEFT, bold=True), TITLE, bold=True)
-        under = clip(_subtitle(report), SUBTITLE, right - LEFT)
+        under = clip(subtitle(report), SUBTITLE, right - LEFT)
         page.text(LEFT, 108, under, SUBTITLE, colour=SOFT)
         _draw_days(page, report, float(tops[0]))
         _draw_errors(page, report, float(tops[1]))
@@ -82,8 +82,15 @@ def comparison_png(report: StationReport, *, title: str, notes: Sequence[str] = 
         return page.png(Title=title, Software=f"terrasol {__version__}")
 
 
-def _subtitle(report: StationReport) -> str:
-    start, end = (report.station.start[k].astype("M8[D]").item() for k in (0, -1))
+def subtitle(report: StationReport) -> str:
+    """What is compared, of which days, under which sky.
+
+    Days are those of local mean solar time, from the first interval with sun to the last: an
+    hour of night more is no day more.
+    """
+    lit = report.modelled.lit > 0.0
+    times = local_time(report.station)
+    start, end = (times[lit] if lit.any() else times)[[0, -1]].astype("M8[D]")
     sky = "clear sky" if report.other is None else f"sky of {report.other.station.name}"
     return f"Global irradiance, measured against modelled, {start} to {end}; {sky}"
 
@@ -203,7 +210,6 @@ def _draw_errors(page: Page, report: StationReport, top: float) -> None:
     ).replace(" W/m2", "")
     x = LEFT + text_width("Modelled less measured", TEXT, bold=True) + 10
     page.text(x, top - 56, words, SMALL, colour=SOFT)
-    _draw_error_legend(page, top - 56)
     room = WIDTH - MARGIN - LEFT - GUTTER
     first = int(report.station.start[0].astype("M8[M]").astype(int)) % 12
     months = [(first + k) % 12 + 1 for k in range(12)] if len(found.months) < 12 else range(1, 13)
@@ -213,6 +219,7 @@ def _draw_errors(page: Page, report: StationReport, top: float) -> None:
     both = [*shown.values(), *by_hour.values()]
     high = max(1.0, *(max(a.rms, a.bias) for a in both)) * 1.06
     low = min(-0.2 * high, 1.1 * min(a.bias for a in both))
+    counted = False
     for words, groups, x, width in (
         ("by month", shown, LEFT, 0.42 * room),
         ("by hour of local mean solar time", by_hour, LEFT + 0.42 * room + GUTTER, 0.58 * room),
@@ -220,11 +227,12 @@ def _draw_errors(page: Page, report: StationReport, top: float) -> None:
         panel = Panel(page, x, top, width, BARS_HEIGHT)
         panel.limits(-0.6, len(groups) - 0.4, low, high)
         panel.heading(words, size=SMALL, rise=14.0)
-        _draw_bars(panel, groups)
+        counted |= _draw_bars(panel, groups)
+    _draw_error_legend(page, top - 56, counted)
 
 
-def _draw_bars(panel: Panel, groups: Mapping[str, Agreement]) -> None:
-    """One bar and one mark a group; how many intervals, if there is room."""
+def _draw_bars(panel: Panel, groups: Mapping[str, Agreement]) -> bool:
+    """One bar and one mark a group; how many intervals, if there is room: whether there was."""
     panel.y_ticks(steps(*panel.axes.get_ylim(), 5))
     panel.axes.spines["bottom"].set_visible(False)
     panel.axes.axhline(0.0, color=INK, linewidth=1.2 * POINTS_PER_PIXEL, zorder=3)
@@ -236,12 +244,14 @@ def _draw_bars(panel: Panel, groups: Mapping[str, Agreement]) -> None:
     panel.axes.hlines(rms, places - half, places + half, color=INK, lw=2.0 * POINTS_PER_PIXEL)
     panel.x_ticks(list(places), list(groups))
     counts = [f"{found.count}" for found in groups.values()]
-    if max(text_width(count, 13.0) for count in counts) < 0.9 * panel.width / len(groups):
+    fits = max(text_width(count, TICK) for count in counts) < 0.9 * panel.width / len(groups)
+    if fits:
         panel.x_ticks(list(places), counts, down=42.0)
+    return fits
 
 
-def _draw_error_legend(page: Page, y: float) -> None:
-    entries = ("bias", "rms", "below: intervals")
+def _draw_error_legend(page: Page, y: float, counted: bool) -> None:
+    entries = ("bias", "rms", "below: intervals" if counted else "")
     x = WIDTH - MARGIN - sum(text_width(words, SMALL) + 52 for words in entries[:2]) + 24
     x -= text_width(entries[2], SMALL) + 24
     page.box(x, y - 14, 16, 15, fill=BAR_COLOUR)

@@ -57,6 +57,8 @@ class CloudedSky:
         Energy measured in intervals without sun, in no table [MJ m-2].
     strict : bool
         Refuse moments that the series does not cover; else their light is NaN.
+    name : str, optional
+        Of the series, for messages.
     """
 
     air: Air
@@ -67,6 +69,7 @@ class CloudedSky:
     rest: NDArray[np.float64]
     left_out: float
     strict: bool = True
+    name: str | None = None
 
     def over(self, sun: SunSeries, height: float) -> Irradiance:
         """Light at a height [m]: both indices times the clear sky's light there.
@@ -83,7 +86,7 @@ class CloudedSky:
         index = np.where(outside, np.nan, self.global_index[place])
         unknown = (sun.elevation > 0.0) & np.isnan(index)
         if self.strict and unknown.any():
-            raise InputError(_no_light(sun.time[unknown], sun.step_seconds))
+            raise InputError(_no_light(sun.time[unknown], sun.step_seconds), self.name)
         return _thinned(sun, clear, index, self.beam_index[place], self.rest[place])
 
 
@@ -237,7 +240,16 @@ def clouded_sky(
     known = np.isfinite(whole) & np.isfinite(direct)
     index[~known & ~dark] = np.nan
     start = station.start[clear.window]
-    return CloudedSky(air, start, station.seconds, index, beam_index, np.nan_to_num(rest), left_out)
+    return CloudedSky(
+        air,
+        start,
+        station.seconds,
+        index,
+        beam_index,
+        np.nan_to_num(rest),
+        left_out,
+        name=station.name,
+    )
 
 
 @dataclass(frozen=True, eq=False)

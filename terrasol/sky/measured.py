@@ -93,7 +93,8 @@ def measured_sky(
     sound, changed = usable(station, quality)
     filled = fill_gaps(sound, air, fill_hours)
     period = period or covered_days(filled.station, step_seconds)
-    _refuse_gaps(filled.station, filled.gaps, period)
+    ends = _beyond_ends(filled.station, period, step_seconds)
+    _refuse_gaps(filled.station, (*filled.gaps, *ends), period)
     sky = clouded_sky(filled.station, air, period, decomposition, step_seconds)
     timing = check_times(station, air, horizon)
     report = {
@@ -231,6 +232,31 @@ def _refuse_gaps(station: Station, gaps: tuple[Gap, ...], period: Period) -> Non
         named = "; ".join(str(gap) for gap in missing[:NAMED])
         more = f"; and {len(missing) - NAMED} more" if len(missing) > NAMED else ""
         raise InputError(
-            f"{station.name}: the series has gaps in the period {period.label}: {named}{more}."
-            " Choose a period without them, or fill longer ones"
+            f"the series has gaps in the period {period.label}: {named}{more}."
+            " Choose a period without them, or fill longer ones within the series (--fill-hours)",
+            station.name,
         )
+
+
+def _beyond_ends(station: Station, period: Period, step_seconds: float) -> list[Gap]:
+    """Parts of a period before a series begins and after it ends, if it has any part of it."""
+    first, last = (
+        (moment - station.solar_offset).astype("M8[s]") for moment in (period.start, period.end)
+    )
+    begin, end = station.start[0].astype("M8[s]"), station.end
+    if end <= first or begin >= last or (begin <= first and end >= last):
+        return []
+    path = sun_path(period, station.longitude, step_seconds)
+    sun = sun_series(path, station.latitude, station.height)
+    lit = sun.time[sun.elevation > 0.0]
+    return [
+        Gap(
+            "everything",
+            start,
+            stop,
+            float((stop - start) / np.timedelta64(1, "h")),
+            float(((lit >= start) & (lit < stop)).sum() * step_seconds / 3600.0),
+        )
+        for start, stop in ((first, begin), (end, last))
+        if start < stop
+    ]

@@ -87,8 +87,8 @@ DIFFUSE_RATIO: Final = (1.05, 1.10)
 OTHER_LIMITS: Final = {"temperature": (-90.0, 60.0), "precipitation": (0.0, np.inf),
                        "albedo": (0.0, 1.0), "snow_water": (-20.0, 1e4)}  # fmt: skip
 """Temperatures of air: the extremes on record are -89.2 and 56.7 degC (World Meteorological
-Organization, archive of extremes; from memory). A snow pillow may drift some way below 0, and no snow weighs
-more than ten metres of water (judgement)."""
+Organization, archive of extremes; from memory). A snow pillow may drift some way below 0, and no
+snow weighs more than ten metres of water (judgement)."""
 
 LARGEST_OFFSET: Final = 10.0
 """W/m2 at night beyond which a mean is no instrument's offset (judgement)."""
@@ -408,10 +408,11 @@ def refuse_wrong_unit(
             fitting.append(other)
     fits = f"; {' or '.join(fitting)} would fit" if fitting else ""
     raise InputError(
-        f"{station.name}: {quantity} cannot be in {unit}: its clearest hours bring {peak:.3g} times"
+        f"{quantity} cannot be in {unit}: its clearest hours bring {peak:.3g} times"
         f" the light above the air, and {_believable(quantity)} is believable{fits}. Mend the"
         " unit, or zone and label if the times are wrong; if the values are right, say"
-        " check_units = false"
+        " check_units = false",
+        station.name,
     )
 
 

@@ -20,7 +20,8 @@ QUANTITIES: Final = {
     "snow_water": "mm",
 }
 """What a station may measure, and its unit: global and diffuse on level ground, beam facing
-the sun, each the mean of an interval; precipitation the sum of one; snow water what lies on the ground, as on a pillow."""
+the sun, each the mean of an interval; precipitation the sum of one; snow water what lies on the
+ground, as on a pillow."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -66,13 +67,13 @@ class Station:
         """Refuse series that are no even grid."""
         steps = np.diff(self.start.astype("M8[s]").astype(np.int64))
         if self.start.size == 0 or (steps != self.seconds).any():
-            raise InputError(f"{self.name}: the times are not one interval apart throughout")
+            raise InputError("the times are not one interval apart throughout", self.name)
         for name, values in self.values.items():
             if name not in QUANTITIES:
-                raise InputError(f"{self.name}: '{name}' is not one of: {', '.join(QUANTITIES)}")
+                raise InputError(f"'{name}' is not one of: {', '.join(QUANTITIES)}", self.name)
             if values.shape != self.start.shape:
                 raise InputError(
-                    f"{self.name}: {values.size} values of {name} for {self.start.size} times"
+                    f"{values.size} values of {name} for {self.start.size} times", self.name
                 )
 
     @property

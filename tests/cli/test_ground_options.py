@@ -102,6 +102,7 @@ BAD = {
     "surface in no unit": (("--surface", "{}/high.tif"), INPUT, "--surface-unit"),
     "highest alone": (("--highest", "900"), USAGE, "--horizon-gap"),
     "unit of nothing": (("--far-unit", "foot"), USAGE, "--far-unit belongs to --far"),
+    "highest too low": (("--horizon-gap", "--highest", "3"), USAGE, "as low as 3 m"),
     "highest in words": (("--horizon-gap", "--highest", "nan"), USAGE, "number of metres"),
 }
 

@@ -92,8 +92,27 @@ def test_part_of_a_year_and_chosen_days(dem, tmp_path, capfd):
     with rasterio.open(tmp_path / "out" / "last_sun.tif") as source:
         assert source.descriptions == ("2025-06-21", "2025-12-21")
         june, december = source.read(masked=True)
+    (stray,) = (words for words in told["warnings"] if "--days" in words)
+    assert stray.startswith("--days 2025-12-21 is outside the period 2025-06: ")
     assert june.mean() > december.mean() + 2.0
     assert "sun_hours_period.tif" in names(tmp_path / "out")
+
+
+def test_level_ground_is_told_and_days_in_the_period_are_not(dem, tmp_path, capfd):
+    asked = ["--period", "2025-06", "--days", "2025-06-01,2025-06-30"]
+    assert main(["hours", str(dem), str(tmp_path / "out"), *asked, *QUICK]) == 0
+    told = capfd.readouterr().err
+    results = json.loads((tmp_path / "out/run.json").read_text("utf-8"))["results"]
+    sun, bright = (results[f"level_ground_{kind}_hours"] for kind in ("sun", "bright"))
+    words = f"mean height: {sun:g} h of direct sun, {bright:g} h of bright sunshine\n"
+    assert f"open level ground at the centre and {words}" in told
+    assert "--days" not in told
+
+
+def test_a_typical_year_has_every_day(dem, tmp_path, capfd):
+    asked = ["--days", "2024-06-21", "--dry-run"]
+    assert main(["hours", str(dem), str(tmp_path / "out"), *asked, *QUICK]) == 0
+    assert "--days" not in capfd.readouterr().out
 
 
 def test_no_days(dem, tmp_path):

@@ -130,7 +130,11 @@ def test_albedo_as_measured(dem, clear, tmp_path):
     path = series(tmp_path / "made.csv", factor=1.0, albedo=0.4)
     words = ("--station", str(path), "--albedo", "station")
     record, values = run(dem, tmp_path / "out", *words)
-    assert record["settings"]["albedo"][4] == pytest.approx(0.4, abs=1e-6)
+    told = record["settings"]["albedo"]
+    assert told[4] == pytest.approx(0.4, abs=1e-6)
+    assert [m for m, value in enumerate(told, 1) if value is None] == [1, 2, 3, 4, *range(6, 13)]
+    with rasterio.open(tmp_path / "out" / "irradiation_period.tif") as source:
+        assert json.loads(source.tags()["TERRASOL_SETTINGS"])["albedo"] == told
     assert values[3].mean() == pytest.approx(2.0 * clear[1][3].mean(), rel=0.1)
 
 
@@ -207,3 +211,32 @@ def test_holes_of_maps_are_told(dem, clear, tmp_path, capsys):
     out = tmp_path / "albedo"
     assert main(["irradiation", str(dem), str(out), "--albedo", str(path), *words]) == 0
     assert "albedo has no value for 16 cells" in capsys.readouterr().err
+
+
+def cut_series(path, keep):
+    """The same series without some of its rows."""
+    header, *rows = path.read_text().splitlines()
+    kept = [row for number, row in enumerate(rows) if keep(number)]
+    path.write_text("\n".join([header, *kept]) + "\n")
+
+
+@pytest.mark.parametrize("command", ["irradiation", "hours", "series"])
+@pytest.mark.parametrize(
+    ("keep", "gap"),
+    [
+        (lambda row: not 240 <= row < 300, "missing from 2025-05-11T00:00 to 2025-05-13T12:00 UTC"),
+        (lambda row: row < 600, "missing from 2025-05-26T00:00 to 2025-05-31T23:29 UTC"),
+        (lambda row: row >= 48, "missing from 2025-04-30T23:29 to 2025-05-03T00:00 UTC"),
+    ],
+)
+def test_a_gap_is_the_series_own(dem, tmp_path, capsys, command, keep, gap):
+    path = series(tmp_path / "made.csv")
+    cut_series(path, keep)
+    out = tmp_path / ("out.nc" if command == "series" else "out")
+    words = ["--azimuths", "8", "--quiet", "--period", "2025-05", "--station", str(path)]
+    assert main([command, str(dem), str(out), *words]) == 3
+    said = capsys.readouterr().err
+    assert said.startswith("terrasol: made.csv: the series has gaps in the period 2025-05: ")
+    assert gap in said
+    assert "Choose a period without them" in said
+    assert str(dem) not in said

@@ -1,6 +1,7 @@
 """`terrasol series` from the command line."""
 
 import json
+from pathlib import Path
 
 import numpy as np
 import pytest
@@ -9,6 +10,7 @@ from files.made import hills, write_raster
 import terrasol
 from terrasol.cli import series as command
 from terrasol.cli.main import main
+from terrasol.files import delivery, horizons, stacks
 from terrasol.files.horizons import VARIABLE
 from terrasol.files.provenance import sha256
 from terrasol.files.stacks import open_stack
@@ -79,6 +81,103 @@ def test_command_and_python_agree(dem, tmp_path):
     assert sorted(path.name for path in tmp_path.iterdir()) == ["out.nc", "same.nc"]
 
 
+def test_folders_on_the_way_are_made_and_go_with_a_failed_run(dem, tmp_path, monkeypatch, capsys):
+    words = ["--no-horizon-store", "--quiet", *QUICK]
+    for name in ("a/b/out.nc", "c/d/out.zarr"):
+        assert main(["series", str(dem), str(tmp_path / name), *words]) == 0
+        assert (tmp_path / name).exists()
+
+    def fail(*_):
+        raise OSError(28, "No space left on device")
+
+    monkeypatch.setattr(stacks.os, "replace", fail)
+    assert main(["series", str(dem), str(tmp_path / "e/f/out.nc"), *words]) == 4
+    assert "out.nc could not be written" in capsys.readouterr().err
+    assert not (tmp_path / "e").exists()
+
+
+def test_albedo_as_a_raster(dem, tmp_path, capsys):
+    layer = np.full(hills().shape, 0.5, np.float32)
+    layer[:, :5] = 0.1
+    layer[3, 7] = np.nan
+    path = write_raster(tmp_path / "albedo.tif", layer, nodata=np.nan)
+    out = tmp_path / "out.nc"
+    words = ["--albedo", str(path), "--quantities", "global,net", "--no-horizon-store", *QUICK]
+    assert main(["series", str(dem), str(out), "--json", *words]) == 0
+    record = json.loads(capsys.readouterr().out)
+    assert record["settings"]["albedo"] == {"file": str(path), "sha256": sha256(path)}
+    assert any("albedo has no value for 1 cell of known" in told for told in record["warnings"])
+    layer[3, 7] = 0.2
+    with open_stack(out) as data:
+        off = data["net"].values - (1.0 - layer) * data["global"].values
+    assert np.nanmax(np.abs(off)) < 0.126  # rounded to 1/8 before and after
+    assert np.isfinite(off).any()
+    taken = path.rename(tmp_path / "albedo.nc")
+    words[1] = str(taken)
+    assert main(["series", str(dem), str(taken), "--overwrite", *words]) == 2
+    assert "is an input itself" in capsys.readouterr().err
+
+
+def without_store(dem, out, *words):
+    """What a run that keeps nothing writes."""
+    assert main(["series", str(dem), str(out), "--no-horizon-store", *words]) == 0
+    with open_stack(out) as data:
+        return data["global"].values
+
+
+def test_a_store_that_takes_nothing_does_not_end_the_run(dem, tmp_path, store, monkeypatch, capsys):
+    want = without_store(dem, tmp_path / "want.nc", "--quiet", *QUICK)
+    making = horizons.HiddenFolder
+
+    def refuse(parent):
+        if parent == store:
+            raise PermissionError(13, "Permission denied")
+        return making(parent)
+
+    monkeypatch.setattr(horizons, "HiddenFolder", refuse)
+    assert main(["series", str(dem), str(tmp_path / "out.nc"), "--json", *QUICK]) == 0
+    record = json.loads(capsys.readouterr().out)
+    (told,) = (words for words in record["warnings"] if "horizons" in words)
+    assert told.startswith(f"{store}: horizons could not be kept there (Permission denied)")
+    assert "beside the stack" in told
+    assert record["horizon_store"] is None
+    with open_stack(tmp_path / "out.nc") as data:
+        np.testing.assert_array_equal(data["global"].values, want)
+    assert sorted(p.name for p in tmp_path.iterdir()) == ["out.nc", "store", "want.nc"]
+    assert list(store.iterdir()) == []
+
+
+def test_a_store_without_room_does_not_end_the_run(dem, tmp_path, store, monkeypatch, capsys):
+    store.mkdir()
+    free = delivery.shutil.disk_usage
+
+    def full(folder):
+        return free(folder)._replace(free=0) if Path(folder) == store else free(folder)
+
+    monkeypatch.setattr(delivery.shutil, "disk_usage", full)
+    assert main(["series", str(dem), str(tmp_path / "out.nc"), *QUICK]) == 0
+    told = capsys.readouterr().err
+    assert f"warning: {store}: the work may need" in told
+    assert "another folder for the horizons" in told
+    assert list(store.iterdir()) == []
+
+
+def test_a_damaged_store_is_told_of_and_mended(dem, tmp_path, store, capsys):
+    words = [str(dem), str(tmp_path / "out.nc"), "--overwrite", *QUICK]
+    assert main(["series", *words]) == 0
+    assert "warning: " + str(store) not in capsys.readouterr().err
+    (kept,) = store.iterdir()
+    (kept / "0-0.npy").write_bytes(b"")
+    assert main(["series", *words, "--dry-run"]) == 0
+    assert f"{kept}: the horizons kept there are damaged" in capsys.readouterr().out
+    assert main(["series", *words]) == 0
+    told = capsys.readouterr().err
+    assert f"warning: {kept}: the horizons kept there are damaged" in told
+    assert "horizons computed" in told
+    assert main(["series", *words]) == 0
+    assert "found in the store" in capsys.readouterr().err
+
+
 def test_dry_run_writes_nothing(dem, tmp_path, store, capsys):
     words = ["series", str(dem), str(tmp_path / "out.zarr"), "--dry-run", *QUICK]
     assert main(words) == 0
@@ -102,7 +201,7 @@ def test_dry_run_writes_nothing(dem, tmp_path, store, capsys):
         (["out.nc"], 2, "name a --period"),
         (["out.nc", *QUICK, "--step", "3h"], 2, "'3h' is not one of"),
         (["out.nc", *QUICK, "--quantities", "global,heat"], 2, "joined by commas"),
-        (["out.nc", *QUICK, "--quantities", "net,net"], 2, "joined by commas"),
+        (["out.nc", *QUICK, "--quantities", "net,net"], 2, "names net more than once"),
         (["out.nc", *QUICK, "--compression", "zstd"], 2, "deflate only"),
         (["out.nc", *QUICK, "--substep-seconds", "7"], 2, "do not divide an hour"),
         (["out.nc", *QUICK, "--horizon-store", "x", "--no-horizon-store"], 2, "exclude"),

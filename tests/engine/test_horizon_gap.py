@@ -176,7 +176,7 @@ def test_the_summary_says_whether_it_matters(metric_ground):
     level = metric_ground(np.full((90, 90), 500.0), 200.0)
     frame = frame_of(level)
     settings = LightSettings(parse_period("2025-06"), Air.ineichen(3.0), azimuths=8)
-    low = make_scene(level, frame, horizon_gap=True, highest=499.0)
+    low = make_scene(level, frame, horizon_gap=True, highest=500.0)
     summary, sink = told(plan_irradiation(level, settings, low))
     assert sink.arrays["horizon_gap"].max() == 0.0
     assert summary.numbers["horizon_gap_share_of_cells_where_it_matters"] == 0.0
@@ -217,8 +217,39 @@ def test_the_highest_ground_is_that_of_all_data_and_some_headroom(small, far):
     z = np.concatenate([small.heights.ravel(), far.heights.ravel()])
     both = make_scene(small, frame, far=far_ground(small, far), horizon_gap=True)
     assert both.highest == pytest.approx(z.max() + 100.0 + 0.25 * np.ptp(z), abs=0.1)
-    assert make_scene(small, frame, horizon_gap=True, highest=900.0).highest == 900.0
+    assert make_scene(small, frame, horizon_gap=True, highest=1500.0).highest == 1500.0
     with pytest.raises(terrasol.SettingError, match="not asked for"):
         make_scene(small, frame, highest=900.0)
     with pytest.raises(terrasol.SettingError, match="number of metres"):
         make_scene(small, frame, horizon_gap=True, highest=float("nan"))
+
+
+def test_ground_outside_is_no_lower_than_where_the_data_end(metric_ground):
+    z = np.full((60, 60), 300.0)
+    z[0, 30] = 420.0  # a crest that leaves the data
+    z[30, 30] = 900.0  # a summit within them says nothing of what is outside
+    ground = metric_ground(z, 100.0)
+    frame = frame_of(ground)
+    assert make_scene(ground, frame, horizon_gap=True, highest=420.0).highest == 420.0
+    with pytest.raises(terrasol.SettingError, match=r"as low as 419 m.* reaches 420.0 m.*420 m or"):
+        make_scene(ground, frame, horizon_gap=True, highest=419.0)
+    with pytest.raises(terrasol.SettingError, match="9900 m, above all ground on Earth"):
+        make_scene(ground, frame, horizon_gap=True, highest=9900.0)
+    z[:20] = np.nan  # the crest is gone, and the data end further in
+    z[20, 5] = 350.0
+    z[40, 40] = np.nan  # enclosed: no end of the data
+    z[40, 41] = 800.0
+    ragged = metric_ground(z, 100.0)
+    assert make_scene(ragged, frame_of(ragged), horizon_gap=True, highest=350.0).highest == 350.0
+    with pytest.raises(terrasol.SettingError, match="349 m"):
+        make_scene(ragged, frame_of(ragged), horizon_gap=True, highest=349.0)
+
+
+def test_with_a_larger_model_its_own_end_counts(small, far):
+    known = far_ground(small, far)
+    z = far.heights
+    ends = max(float(side.max()) for side in (z[0], z[-1], z[:, 0], z[:, -1]))
+    given = {"far": known, "horizon_gap": True}
+    assert make_scene(small, frame_of(small), highest=ends, **given).highest == ends
+    with pytest.raises(terrasol.SettingError, match="where it ends"):
+        make_scene(small, frame_of(small), highest=ends - 1.0, **given)

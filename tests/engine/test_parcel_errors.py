@@ -4,12 +4,12 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
+from engine.made_parcels import asked_for, box, parcels, plane
 
 from terrasol.engine.parcel_tables import column_rows, doubt_rows, table_rows
 from terrasol.engine.parcels import survey
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.uncertainty import DemError
-from engine.made_parcels import asked_for, box, parcels, plane
 
 
 def doubted(ground, shape, error, **more):

@@ -49,6 +49,45 @@ def test_year_of_moments_is_the_year_of_tables(ground):
         assert np.sqrt(np.mean((got - want) ** 2)) < 1.5e-3 * want.mean(), part
 
 
+def test_mapped_albedo_is_that_of_the_tables_by_cell_and_month(ground):
+    rng = np.random.default_rng(3)
+    coarse = rng.uniform(0.1, 0.9, (12, 6, 7))
+    mapped = np.repeat(np.repeat(coarse, 10, axis=1), 10, axis=2).astype(np.float32)
+    mapped[2, 20:30, 30:40] = np.nan  # there the plain one counts
+    given = {"albedo": 0.2, "albedo_map": mapped}
+    months = terrasol.irradiation(ground, "2025-03/2025-04", AIR, monthly_parts=True, **given)
+    named = ("reflected", "net", "global")
+    given["albedo"] = (0.2,) * 12
+    found, plan = series_of(ground, "2025-03/2025-04", step="1d", quantities=named, **given)
+    march = np.arange(plan.steps) < 31
+    for month, mine in ((2, march), (3, ~march)):
+        got = found["reflected"][mine].sum(axis=0)
+        want = months["reflected_months"].values[month - 2]
+        assert abs(got.mean() / want.mean() - 1.0) < 2e-3
+        np.testing.assert_allclose(got, want, atol=0.01 * want.max())
+        share = np.where(np.isnan(mapped[month]), 0.2, mapped[month])
+        net = (1.0 - share) * found["global"][mine]
+        np.testing.assert_allclose(found["net"][mine], net, rtol=1e-5)
+
+
+def test_an_even_map_of_albedo_is_the_number(ground):
+    named = ("reflected", "net")
+    period = "2025-03-20"
+    want, _ = series_of(ground, period, quantities=named, albedo=(0.6,) * 12)
+    layer = np.full((1, *ground.shape), 0.6, np.float32)
+    got, _ = series_of(ground, period, quantities=named, albedo_map=layer)
+    for name in named:
+        assert want[name].max() > 20.0
+        np.testing.assert_allclose(got[name], want[name], rtol=1e-5, atol=1e-3)
+
+
+def test_a_map_of_albedo_that_does_not_fit_is_refused(ground, tmp_path):
+    given = {"albedo_map": np.zeros((3, 2, 2), np.float32), "horizon_store": False}
+    with pytest.raises(terrasol.SettingError, match="albedo map must have the shape"):
+        terrasol.irradiation_series(ground, tmp_path / "a.nc", "2025-06-01", AIR, **given)
+    assert list(tmp_path.iterdir()) == []
+
+
 def test_months_of_moments_are_those_of_tables_with_albedo_by_month(ground):
     albedo = tuple(np.linspace(0.1, 0.8, 12))
     months = terrasol.irradiation(ground, "2025-03/2025-04", AIR, albedo=albedo, monthly_parts=True)

@@ -8,7 +8,7 @@ from pyproj import Geod, Transformer
 from reference import made_range
 
 import terrasol
-from terrasol.engine.datasets import run_in_memory
+from terrasol.engine.datasets import ArraySink, run_in_memory
 from terrasol.engine.job import plan_terrain
 from terrasol.ground.beyond import MARGIN_MOST, Scene, far_ground, joined, make_scene
 from terrasol.ground.frame import make_frame
@@ -127,7 +127,6 @@ def test_an_outlook_on_oneself_changes_no_bit(small):
     for name in ("height", "away", "across_void"):
         np.testing.assert_array_equal(getattr(runs[0], name), getattr(runs[1], name))
     assert make_scene(small, frame) == Scene()
-    assert Scene().fingerprint() is None
 
 
 def lone_peak(latitude, longitude, distance, azimuth, crs, cell, half=9e3):
@@ -216,6 +215,31 @@ def test_voids_are_seen_through_the_larger_model(small):
     assert rms((alone - want)[:, ~outside]) > 1.0
 
 
+def run_of(elevation, far):
+    sink = ArraySink(elevation.shape)
+    plan = plan_terrain(elevation, 8, horizon=True, scene=surrounded(elevation, far))
+    return plan.run(sink, 2).numbers["cells_looking_across_void"], sink.arrays["horizon"]
+
+
+@pytest.mark.parametrize("cells", [2, PAD - 3, PAD + 20])
+def test_where_a_larger_model_ends_is_no_void(small, cells):
+    """It ends within the margin, or a little beyond; all the ground there is, is known."""
+    far = made_range.square(6e3 + cells * 60.0, 60.0)
+    count, got = run_of(small, far)
+    assert count == 0
+    want = horizon_of(far, azimuths=8)[:, cells:-cells, cells:-cells]
+    # 0.013 degrees is what two lattices of nodes, set off by those cells, differ by
+    assert rms((got - want)[:, 4:-4, 4:-4]) < 0.02
+
+
+def test_a_void_of_the_larger_model_is_one(small):
+    far = FARS["UTM, twice as coarse"]()
+    z = far.heights.copy()
+    z[298:302, 352:356] = np.nan  # two to six cells beyond the raster's eastern edge
+    assert np.isfinite(z[300, 349])
+    assert run_of(small, dataclasses.replace(far, heights=z))[0] > 0
+
+
 def level(height, half, cell, crs=made_range.UTM):
     count = round(2 * half / cell)
     x, y = made_range.MIDDLE
@@ -275,15 +299,6 @@ def test_models_that_cannot_serve_are_refused(small):
     ):
         with pytest.raises(terrasol.InputError, match=words):
             far_ground(small, far)
-
-
-def test_a_fingerprint_names_all_that_shades(small):
-    far = FARS["UTM, twice as coarse"]()
-    scene = surrounded(small, far)
-    other = dataclasses.replace(far, heights=far.heights + np.float32(1.0))
-    prints = {scene.fingerprint(), surrounded(small, other).fingerprint(), None}
-    assert len(prints) == 3
-    assert surrounded(small, far).fingerprint() == scene.fingerprint()
 
 
 def test_a_lattice_has_no_place_beside_a_seam():

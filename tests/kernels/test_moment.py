@@ -11,7 +11,7 @@ from terrasol.kernels.moment import (
     encode_horizon,
     parts_of_steps,
 )
-from terrasol.light.series import _bends
+from terrasol.light.series import bends
 
 CELLS = RUN + 77  # a whole run and a broken one
 AZIMUTHS = 16
@@ -96,7 +96,7 @@ def test_direct_light_is_the_plain_sum(random, knots):
     out = np.empty((2, 3, CELLS), np.float32)
     direct_light(
         a["code"], a["normal"], a["offset"], a["z"], a["heights"].astype(np.float32), a["first"],
-        a["left"], a["sun"], _bends(a["strength"], a["heights"]), out,
+        a["left"], a["sun"], bends(a["strength"], a["heights"]), out,
     )  # fmt: skip
     want = plain_direct(a)
     assert want.max() > 500.0
@@ -124,7 +124,7 @@ def test_parts_are_the_plain_sum(random, nodes):
     factor[3] = np.nan
     out = np.empty((4, steps, cells), np.float32)
     parts_of_steps(
-        direct, _bends(even, heights), change, offset, sky, z, heights.astype(np.float32), around,
+        direct, bends(even, heights), change, offset, sky, z, heights.astype(np.float32), around,
         down, across, albedo, factor, out,
     )  # fmt: skip
     for t in range(steps):

@@ -1,11 +1,9 @@
-"""Time in the sun: the look-up against plain sums, the walk against looking at every minute."""
-
-from itertools import pairwise
+"""Time in the sun: the look-up against plain sums."""
 
 import numpy as np
 import pytest
 
-from terrasol.kernels.sunshine import LANES, fill_time, sum_time, walk_days
+from terrasol.kernels.sunshine import LANES, fill_time, sum_time
 
 AZIMUTHS, KNOTS = 16, 33
 
@@ -81,101 +79,3 @@ def test_sums_are_those_of_plain_interpolation():
             at = np.sin(np.arctan(max(horizon[a, r, c], plane)))
             want += [np.interp(at, np.linspace(0.0, 1.0, KNOTS), lane) for lane in mixed[a].T]
         np.testing.assert_allclose(out[r, c], want, rtol=2e-4, atol=2e-3)
-
-
-# The walk
-
-
-def a_day(seed, azimuths=AZIMUTHS, moments=721):
-    """A made-up sun that rises, swings about and sets, moment by moment."""
-    dice = np.random.default_rng(seed)
-    x = np.linspace(0.0, 1.0, moments)
-    low = dice.uniform(-0.6, 0.3)
-    tangent = (
-        low + dice.uniform(0.5, 1.5) * np.sin(np.pi * x) + 0.1 * np.sin(dice.uniform(9, 20) * x)
-    )
-    turn = dice.uniform(0.0, azimuths) + azimuths * dice.uniform(0.3, 1.0) * x
-    turn += 0.3 * np.sin(17.0 * x)  # runs to and fro
-    sector = np.floor(turn).astype(np.int64)
-    angle = 2.0 * np.pi * turn / azimuths
-    suns = np.stack([tangent, turn - sector, np.sin(angle), np.cos(angle)], axis=-1)
-    return suns.astype(np.float32), sector % azimuths
-
-
-def runs_of(suns, sectors):
-    """All moments, in runs of one sector."""
-    edges = np.r_[0, np.flatnonzero(np.diff(sectors)) + 1, sectors.size]
-    runs = [(a, b, sectors[a]) for a, b in pairwise(edges)]
-    ranges = [
-        (suns[a:b, 0].min(), suns[a:b, 0].max(),
-         *(1.0001 * np.abs(np.diff(suns[a:b, i])).max(initial=1e-6) for i in (0, 1)))
-        for a, b, _ in runs
-    ]  # fmt: skip
-    return np.array([*runs, (0, 0, 0)]), np.array([*ranges, (0, 0, 0, 0)], np.float32)
-
-
-def plainly(suns, sectors, rim, normal, least_gap):
-    """Clearance at every moment; crossings straight between."""
-    left, right = rim[sectors], rim[(sectors + 1) % rim.size]
-    terrain = left + suns[:, 1] * (right - left)
-    plane = -(normal[0] * suns[:, 2] + normal[1] * suns[:, 3]) / normal[2]
-    clearance = suns[:, 0] - np.maximum(terrain, plane)
-    up = clearance > 0.0
-    if not up.any():
-        return np.nan, np.nan, 0.0, np.nan
-    change = np.flatnonzero(np.diff(up.astype(int)))
-    when = change + clearance[change] / (clearance[change] - clearance[change + 1])
-    starts = np.r_[[0.0] if up[0] else [], when[~up[change]]]
-    ends = np.r_[when[up[change]], [suns.shape[0] - 1.0] if up[-1] else []]
-    gaps = starts[1:] - ends[:-1]
-    return starts[0], ends[-1], (ends - starts).sum(), (gaps >= least_gap).sum()
-
-
-def test_nothing_is_missed_by_what_is_passed_over():
-    rows, columns, count = 4, 33, 12
-    horizon, normal = ground(rows, columns)
-    days = [a_day(seed) for seed in range(count)]
-    lists = [runs_of(*day) for day in days]
-    longest = max(len(runs) for runs, _ in lists)
-    runs = np.zeros((count, longest, 3), np.int64)
-    ranges = np.zeros((count, longest, 4), np.float32)
-    for i, (own, own_ranges) in enumerate(lists):
-        runs[i, : len(own)], ranges[i, : len(own)] = own, own_ranges
-    suns, sectors = (np.stack(parts) for parts in zip(*days, strict=True))
-    out = np.empty((rows, count, columns, 4), np.float32)
-    walk_days(horizon, normal, directions(), np.zeros(3), suns, sectors, runs, ranges, 5.0, out)
-    assert np.isnan(out[0, :, 1]).all()
-    seen = set()
-    for r, d, c in np.ndindex(rows, count, columns):
-        if (r, c) != (0, 1):
-            want = plainly(suns[d], sectors[d], horizon[:, r, c], normal[:, r, c], 5.0)
-            np.testing.assert_allclose(out[r, d, c], want, atol=2e-2)
-            seen.add(want[3])
-    assert {0, 1, 2} <= {n for n in seen if n == n}
-    assert any(n != n for n in seen)
-
-
-def test_latitude_tilts_the_horizon():
-    """A cell to the north sees the south lower by the angle: the same as a higher horizon."""
-    azimuths = 64
-    flat = np.array([0.0, 0.0, 1.0], np.float32).reshape(3, 1, 1)
-    x = np.linspace(-0.4, 0.4, 201)
-    turn = azimuths * (0.5 + x / (2.0 * np.pi))
-    sector = np.floor(turn).astype(np.int64)
-    angle = np.pi + x
-    suns = np.stack(
-        [0.5 - x**2, turn - sector, np.sin(angle), np.cos(angle)], axis=-1
-    ).astype(np.float32)  # fmt: skip
-    runs, ranges = runs_of(suns, sector)
-
-    def walked(rim, tilt):
-        horizon = np.asarray(rim, np.float32).reshape(azimuths, 1, 1)
-        out = np.empty((1, 1, 1, 4), np.float32)
-        walk_days(horizon, flat, directions(azimuths), np.array([tilt, 0.0, 0.0]), suns[None],
-                  sector[None], runs[None], ranges[None], 1.0, out)  # fmt: skip
-        return out[0, 0, 0]
-
-    rim = np.full(azimuths, 0.45)
-    raised = rim + 0.01 * -directions(azimuths)[:, 1] * (1.0 + rim**2)
-    np.testing.assert_allclose(walked(rim, 0.01), walked(raised, 0.0), atol=0.01)
-    assert walked(rim, 0.01)[2] < walked(rim, 0.0)[2] - 5.0

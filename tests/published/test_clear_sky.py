@@ -3,10 +3,11 @@
 import numpy as np
 import pytest
 from pvlib import atmosphere, clearsky, spectrum
+from reference.plain_plane import plane_diffuse, plane_ground
 
 from terrasol.sky import clear
 from terrasol.sky.clear import Air, clear_sky, relative_airmass
-from terrasol.sky.diffuse import plane_diffuse, plane_ground, split_diffuse
+from terrasol.sky.diffuse import split_diffuse
 from terrasol.sky.sun import SunSeries, incidence_cosine
 
 SHEET_PRESSURE = 840.0 / 1013.0 * 101325.0  # the Bird sheet divides 840 mb by 1013, not 1013.25

@@ -3,13 +3,12 @@
 import numpy as np
 import pytest
 from pvlib import irradiance
+from reference.plain_plane import plane_diffuse, plane_ground
 
 from terrasol.sky.diffuse import (
     PEREZ_CLEARNESS_EDGES,
     PEREZ_COEFFICIENTS,
     DiffuseSplit,
-    plane_diffuse,
-    plane_ground,
     split_diffuse,
 )
 from terrasol.sky.irradiance import Irradiance

@@ -1,5 +1,6 @@
 """The sheet of a comparison: whole, always the same, for any place and any outcome."""
 
+import dataclasses
 import io
 
 import matplotlib
@@ -9,7 +10,8 @@ from matplotlib.image import imread
 from reference.made_valley import AIR, made_series, wall_spot
 
 from terrasol.engine.comparison import Spot, compare_station
-from terrasol.show.comparison import MODELLED, WIDTH, chosen_days, comparison_png
+from terrasol.show.comparison import MODELLED, WIDTH, chosen_days, comparison_png, subtitle
+from terrasol.show.page import Page
 
 
 @pytest.fixture(scope="module")
@@ -82,3 +84,59 @@ def test_polar_night():
     assert report.comparison is None
     assert chosen_days(report) == []
     assert comparison_png(report, title="Night")[:4] == b"\x89PNG"
+
+
+@pytest.fixture
+def written(monkeypatch):
+    """Every text of the sheets that are drawn, and its box [pixels]."""
+    found = {}
+    png = Page.png
+
+    def measured(page, **metadata):
+        out = png(page, **metadata)
+        renderer = page.canvas.get_renderer()
+        for text in page.axes.texts:
+            found[text] = text.get_window_extent(renderer)
+        return out
+
+    monkeypatch.setattr(Page, "png", measured)
+    return found
+
+
+@pytest.mark.parametrize("seconds", [3600, 60])
+def test_words_are_whole_and_beside_each_other(written, seconds):
+    spot = wall_spot()
+    station = made_series(spot, days=12, seconds=seconds, start="2025-06-24")
+    report = compare_station(station, AIR, spot)
+    comparison_png(report, title="Valley", notes=report.lines()[1:])
+    boxes = list(written.values())
+    assert len(boxes) > 60
+    assert all(box.x0 > 20 and box.x1 < WIDTH - 20 and box.y0 > 10 for box in boxes)
+    assert not any(a.overlaps(b) for k, a in enumerate(boxes) for b in boxes[k + 1 :])
+
+
+@pytest.mark.parametrize(("times", "shown"), [(1, True), (10**30, False)])
+def test_counts_have_a_legend_only_where_they_stand(report, written, times, shown):
+    found = report.comparison
+    months, hours = (
+        {key: dataclasses.replace(one, count=times * one.count) for key, one in groups.items()}
+        for groups in (found.months, found.hours)
+    )
+    many = dataclasses.replace(found, months=months, hours=hours)
+    comparison_png(dataclasses.replace(report, comparison=many), title="Valley")
+    texts = [text.get_text() for text in written]
+    assert (str(months[3].count) in texts) == shown
+    assert ("below: intervals" in texts) == shown
+
+
+@pytest.mark.parametrize(
+    ("longitude", "days"),
+    [
+        (-120.0, "2025-03-19 to 2025-03-22"),  # from 16 h of the 19th on, local mean solar time
+        (-15.0, "2025-03-20 to 2025-03-22"),  # from 23 h of the 19th on
+    ],
+)
+def test_the_days_are_those_of_the_place_with_sun(longitude, days):
+    spot = Spot.under([5.0] * 16)
+    station = made_series(spot, days=3, start="2025-03-20", place=(40.0, longitude))
+    assert days in subtitle(compare_station(station, AIR, spot))

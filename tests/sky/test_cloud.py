@@ -4,6 +4,7 @@ import numpy as np
 import pytest
 
 from terrasol.errors import InputError, SettingError
+from terrasol.files.rasters import naming
 from terrasol.sky.clear import Air
 from terrasol.sky.cloud import MonthlySky, clouded_sky, monthly_diffuse_fraction
 from terrasol.sky.period import parse_period
@@ -100,8 +101,10 @@ def test_a_gap_under_the_sun_is_refused_with_its_hours_and_first_moment():
     station.values["beam"][noon : noon + 2] = np.nan
     sky = clouded_sky(station, AIR, period)
     first = str(station.start[noon].astype("M8[m]"))
-    with pytest.raises(InputError, match=f"2.0 hours of sun.*{first}"):
+    words = f"^{station.name}: .*2.0 hours of sun.*{first}"
+    with pytest.raises(InputError, match=words) as told, naming("dem.tif"):
         sky.over(sun, PLACE[2])
+    assert told.value.file == station.name  # and the ground is not to blame
     _, later = days("2025-04-12/2025-04-14")
     with pytest.raises(InputError, match="hours of sun"):
         clouded_sky(measured()[0], AIR, period).over(later, PLACE[2])

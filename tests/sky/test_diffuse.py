@@ -1,14 +1,13 @@
 import numpy as np
 import pvlib
 import pytest
+from reference.plain_plane import plane_diffuse, plane_ground
 
 from terrasol.errors import SettingError
 from terrasol.sky.clear import Air, clear_sky, relative_airmass
 from terrasol.sky.diffuse import (
     MODELS,
     perez_brightening,
-    plane_diffuse,
-    plane_ground,
     split_diffuse,
 )
 from terrasol.sky.irradiance import Irradiance
