@@ -259,7 +259,7 @@ def test_a_plane_in_closed_form(metric_ground, latitude, slope, aspect):
 def test_the_authors_table_through_a_raster(metric_ground):
     """McCune and Keon 2002, testrad.xls: latitude 40, 30 degrees facing south and north.
 
-    Values of check-values, 1e-6 on the formula; a raster's slope adds 1e-5.
+    To 1e-6 on the formula itself (tests/published); a raster's slope adds 1e-5.
     """
     for aspect, radiation, heat in (
         (0.0, (-0.983775, -0.889010, 0.571045), (-0.627967, -0.626899, 0.641633)),
