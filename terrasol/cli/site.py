@@ -296,12 +296,15 @@ class _Job:
         """What would be told, and where."""
         from terrasol.cli.forecast import ground_forecast
         from terrasol.engine.plan import default_threads
-        from terrasol.engine.site import forecast_seconds
+        from terrasol.engine.site import forecast
 
         common, elevation = self.common, self.ground.elevation
         removed, notes = self._superseded()
         threads = common.threads or default_threads()
-        seconds = forecast_seconds(elevation, self.settings, common.azimuths, self.error, threads)
+        scene = self.around.scene(elevation, self.ground.frame)
+        seconds, memory = forecast(
+            elevation, self.settings, common.azimuths, scene, self.error, threads
+        )
         return ground_forecast(common, self.ground) | {
             "places": [
                 {
@@ -316,9 +319,10 @@ class _Job:
             ],
             "files": self.names,
             "removed": removed,
+            "memory_mb": round(memory / 1e6),
             "threads": threads,
             "seconds": round(seconds),
-            "warnings": [*elevation.warnings, *notes],
+            "warnings": [*elevation.warnings, *scene.warnings, *notes],
         }
 
     def _superseded(self) -> tuple[list[str], list[str]]:
@@ -505,6 +509,7 @@ def _in_lines(forecast: dict[str, Any]) -> str:
         ),
         ("files", ", ".join(f["files"]) or "none: name a folder with --out"),
         *([("removed", ", ".join(f["removed"]))] if f["removed"] else []),
+        ("memory", f"{f['memory_mb']:,} MB"),
         ("time", f"about {duration(f['seconds'])} on {counted(f['threads'], 'thread')}"),
         *(("warning", text) for text in f["warnings"]),
     ]

@@ -11,15 +11,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from terrasol.engine.comparison import AZIMUTHS, cell_of
-from terrasol.engine.ground_work import Ground, cell_strip, lay_out
-from terrasol.engine.job import (
-    NO_SCENE,
-    SECONDS_A_CELL_AND_AZIMUTH,
-    SECONDS_A_TABLE_AND_HEIGHT,
-    Plan,
-    Run,
-    plan_irradiation,
-)
+from terrasol.engine.ground_work import cell_strip, lay_out
+from terrasol.engine.job import NO_SCENE, Plan, Run, plan_irradiation, plan_terrain
 from terrasol.engine.outputs import MONTH_NAMES, basis_words, month_labels, sky_kind
 from terrasol.engine.plan import Progress, carry_out, check_threads, default_threads
 from terrasol.engine.spread import Spread
@@ -28,8 +21,9 @@ from terrasol.errors import InputError, SettingError
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame, make_frame
+from terrasol.ground.horizon import NODE_STEP
 from terrasol.ground.surface import slope_and_aspect
-from terrasol.ground.uncertainty import DemError
+from terrasol.ground.uncertainty import DemError, field_bytes
 from terrasol.light.days import Clock, Days, parse_days, strip_days
 from terrasol.light.irradiation import Light, Strip, strip_light
 from terrasol.light.minutes import minute_states, plane_tangent
@@ -37,13 +31,17 @@ from terrasol.light.settings import LightSettings, check_azimuths
 from terrasol.light.surroundings import Surroundings
 from terrasol.light.tables import SkyTables
 from terrasol.sky.period import parse_period
-from terrasol.sky.suntable import height_knots
 
 PARTS: Final = ("beam", "diffuse", "reflected")
 """Of the light, in the order of `Energy.place`."""
 
 PREPARED: Final = 0.35
 """Share of a run that its preparations take, as `Run` counts it."""
+
+SECONDS_AT_LEAST: Final = 4.0
+SECONDS_A_CELL_AND_SWEEP: Final = 9e-9
+"""What a core needs, for the estimate only: 15 s for 4.8 million cells and 320 azimuths, 9 s for
+300,000 cells and 1856."""
 
 MOST_MONTHS: Final = 18
 """Longest period; a sheet has no room for more rows."""
@@ -385,6 +383,7 @@ def survey(
     for count, _ in enumerate(carry_out(tasks, threads), 1):
         told(count / len(tasks), "horizon")
     strips = [cell_strip(ground, *cell) for cell in cells]
+    del ground, tasks  # the largest thing there is
     _demand_slopes(strips, cells)
     told.next()
     light = _Light(plan_irradiation(elevation, settings, scene), cells, threads, told)
@@ -400,27 +399,35 @@ def survey(
             progress=lambda done: told(done / error.realisations, "error of the heights"),
         )
     return [
-        _site(spot, cell, ground, strip, energy, clock, errors, number)
+        _site(spot, cell, frame, strip, energy, clock, errors, number)
         for number, (spot, cell, strip, energy) in enumerate(
             zip(spots, cells, strips, energies, strict=True)
         )
     ]
 
 
-def forecast_seconds(
+def forecast(
     elevation: Elevation,
     settings: LightSettings,
     azimuths: int,
+    scene: Scene,
     error: DemError | None,
     threads: int,
-) -> float:
-    """Time to expect of a survey."""
-    sweeps = azimuths + settings.azimuths * (2 + (0 if error is None else error.realisations))
-    work = elevation.heights.size * sweeps * SECONDS_A_CELL_AND_AZIMUTH
-    share = settings.period.days / 365.0 * 60.0 / settings.step_seconds
-    known = elevation.heights[np.isfinite(elevation.heights)]
-    heights = height_knots(float(known.min()), float(known.max())).size
-    return 4.0 + (work + 2.0 * SECONDS_A_TABLE_AND_HEIGHT * share * heights) / max(threads, 1)
+) -> tuple[float, int]:
+    """Time [s] and peak memory [bytes] to expect of a survey."""
+    light = plan_irradiation(elevation, settings, scene)
+    draws = 0 if error is None else error.realisations
+    sweeps = azimuths + settings.azimuths * (1 + draws)
+    tables = light.seconds(1) - replace(light, settings=None).seconds(1)
+    work = elevation.heights.size * sweeps * SECONDS_A_CELL_AND_SWEEP + tables
+    memory = max(
+        plan_terrain(elevation, azimuths, refraction=settings.refraction, scene=scene).memory_bytes,
+        light.memory_bytes,
+    )
+    if error is not None:  # a second far horizon, and a field
+        memory += int(9.0 * elevation.heights.size / NODE_STEP**2 * settings.azimuths)
+        memory += int(field_bytes(error, elevation.shape, light.frame.cell_size))
+    return SECONDS_AT_LEAST + work / max(threads, 1), memory
 
 
 def find_cell(elevation: Elevation, frame: Frame, spot: Spot) -> tuple[int, int]:
@@ -516,7 +523,7 @@ class _Light:
 def _site(
     spot: Spot,
     cell: tuple[int, int],
-    ground: Ground,
+    frame: Frame,
     strip: Strip,
     energy: Energy,
     clock: Clock,
@@ -535,8 +542,8 @@ def _site(
         longitude=(longitude + 180.0) % 360.0 - 180.0,
         row=cell[0],
         column=cell[1],
-        cell_size=ground.frame.cell_size,
-        height=float(ground.elevation.heights[cell]),
+        cell_size=frame.cell_size,
+        height=strip.datum + float(strip.heights[0, 0]),
         slope=slope,
         aspect=aspect,
         normal=strip.normal[:, 0, 0].astype(np.float64),

@@ -156,6 +156,8 @@ def test_dry_run(dem, tmp_path, capsys):
     assert main(["site", dem, "--at", AT, "--dry-run", "--json"]) == 0
     told = json.loads(capsys.readouterr().out)
     assert told["files"] == []
+    assert 100 < told["memory_mb"] < 2000
+    assert 1 <= told["seconds"] < 60
     assert told["places"][0]["row"] == 19
 
 
