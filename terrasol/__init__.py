@@ -15,6 +15,7 @@ if TYPE_CHECKING:
     from terrasol.engine.datasets import irradiation, terrain
     from terrasol.engine.hours import sun_hours
     from terrasol.engine.melt_stack import snow_melt
+    from terrasol.engine.parcel_frame import survey_parcels
     from terrasol.engine.plot_table import PlotTable
     from terrasol.engine.plots import plot_predictors
     from terrasol.engine.series_stack import irradiation_series
@@ -75,6 +76,7 @@ _HOMES = {
     "sun_hours": "terrasol.engine.hours",
     "sun_path": "terrasol.sky.sun",
     "sun_series": "terrasol.sky.sun",
+    "survey_parcels": "terrasol.engine.parcel_frame",
     "terrain": "terrasol.engine.datasets",
 }
 
@@ -113,6 +115,7 @@ __all__ = [
     "sun_hours",
     "sun_path",
     "sun_series",
+    "survey_parcels",
     "terrain",
 ]
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 import os
 import warnings
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from os import PathLike
 from typing import Any, Final
 
@@ -140,12 +140,20 @@ def read_polygons(
             warnings.simplefilter("always")
             frame = read_features(path, layer, "Polygon")
         told = dict.fromkeys(" ".join(str(w.message).split()) for w in heard)
-        source = source_crs(frame.crs, path)
-        shapes, kept, left_out = _areas(np.asarray(frame.geometry.array, dtype=object))
-        names, attributes, notes = _named(frame.drop(columns=frame.geometry.name), kept, name_field)
-        moved = _moved(shapes, source, crs)
-        repaired, said = _repaired(moved, names)
-        return Polygons(names, repaired, crs, attributes, (*told, *left_out, *notes, *said))
+        found = as_polygons(frame, crs, name_field=name_field, path=path)
+        return replace(found, warnings=(*told, *found.warnings))
+
+
+def as_polygons(
+    frame: Any, crs: CRS, *, name_field: str | None = None, path: str | PathLike[str] = ""
+) -> Polygons:
+    """Take polygons from a geopandas frame; as `read_polygons`, `path` serves a hint alone."""
+    source = source_crs(frame.crs, path)
+    shapes, kept, left_out = _areas(np.asarray(frame.geometry.array, dtype=object))
+    names, attributes, notes = _named(frame.drop(columns=frame.geometry.name), kept, name_field)
+    moved = _moved(shapes, source, crs)
+    repaired, said = _repaired(moved, names)
+    return Polygons(names, repaired, crs, attributes, (*left_out, *notes, *said))
 
 
 def read_features(path: str | PathLike[str], layer: str | None, kind: str) -> Any:

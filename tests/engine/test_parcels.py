@@ -2,14 +2,16 @@
 
 from __future__ import annotations
 
+import geopandas
 import numpy as np
 import pytest
 import shapely
-from engine.made_parcels import CELL, LEFT, SCALE, TOP, UTM, asked_for, box, parcels, plane
+from engine.made_parcels import AIR, CELL, LEFT, SCALE, TOP, UTM, asked_for, box, parcels, plane
 from pyproj import CRS, Transformer
 
 from terrasol.engine.parcel_cells import pieces_of
 from terrasol.engine.parcel_figures import Warmth, season_places
+from terrasol.engine.parcel_frame import survey_parcels
 from terrasol.engine.parcel_rows import RowSettings
 from terrasol.engine.parcels import figure_names, survey
 from terrasol.errors import InputError, SettingError
@@ -281,3 +283,26 @@ def test_a_station_far_above_is_doubted():
     found = survey(plane(1.0, 180.0), parcels(box(0, 0, 50, 50)), asked_for(coarser=(), warmth=far))
     assert any("degree-days by up to 19" in text for text in found.warnings)
     assert "huglin_mean_c_days" not in found.parcels[0].numbers  # no daily highest was given
+
+
+def test_python_gives_a_table_with_outlines():
+    ground, shape = plane(12.0, 180.0), box(-50, -50, 50, 50)
+    given = geopandas.GeoDataFrame({"block": ["x"]}, geometry=[shape], crs=UTM)
+    found = survey_parcels(
+        ground, given.to_crs(4326), "2025", AIR,
+        rule="slope_percent < 15", score="rule_ha_map", rows=(2.0, 1.3, 0.4),
+        temperatures=from_monthly(np.full(12, 15.0), height=500.0), season="05-06",
+        azimuths=16, step_seconds=300.0, threads=1,
+    )  # fmt: skip
+    row = found.iloc[0]
+    assert row["parcel"] == "x"
+    assert row["rank"] == 1
+    assert row["rule_ha_map"] == pytest.approx(1.0 * SCALE, rel=1e-4)
+    assert row["irradiation_season_mj_m2_slope"] == pytest.approx(
+        row["irradiation_2025_05_mj_m2_slope"] + row["irradiation_2025_06_mj_m2_slope"]
+    )
+    assert found.crs == UTM
+    assert set(found.columns) - {"geometry"} <= set(found.attrs["columns"])
+    assert found.geometry.iloc[0].area == pytest.approx(1e4, rel=1e-4)
+    with pytest.raises(InputError, match="GeoDataFrame, not list"):
+        survey_parcels(ground, [shape])
