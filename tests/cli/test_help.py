@@ -24,7 +24,7 @@ print(json.dumps([code, [name for name in {HEAVY!r} if name in sys.modules]]))
 """
 
 
-COMMANDS = ("compare", "hours", "irradiation", "plots", "series", "site", "terrain")
+COMMANDS = ("compare", "hours", "irradiation", "parcels", "plots", "series", "site", "terrain")
 
 
 @pytest.mark.parametrize(
