@@ -39,6 +39,7 @@ ALBEDOS = ("brock", "usace", "station")
 STACKS = {"netcdf": "days.nc", "zarr": "days.zarr", "none": ""}
 STATE = "state.nc"
 PICTURES = ("hydrograph.png", "bands.png", "melt_out.png")
+CHECK = ("at_station.csv", "at_station.png")
 
 USUAL = "usual"
 """Value of --fit that asks for the usual numbers."""
@@ -283,7 +284,8 @@ class _Job:
         from terrasol.files.delivery import RECORD
 
         maps = [f"{layer.name}.tif" for layer in season_layers(self.prepared.plan).values()]
-        return [*maps, *TABLES, *PICTURES, STATE, RECORD]
+        check = CHECK if self.prepared.check is not None else ()
+        return [*maps, *TABLES, *PICTURES, *check, STATE, RECORD]
 
     @property
     def all_names(self) -> list[str]:
@@ -403,6 +405,8 @@ class _Job:
             delivery.write_bytes(name, content)
         for name, picture in zip(PICTURES, self._pictures(result, tables), strict=True):
             delivery.write_bytes(name, picture)
+        for name, content in zip(CHECK, self._check_files(), strict=False):
+            delivery.write_bytes(name, content)
         try:
             save_state(result, delivery.staged(STATE))
         except (OSError, RuntimeError) as error:
@@ -463,6 +467,21 @@ class _Job:
                 notes=(*notes, *never),
             ),
         )  # fmt: skip
+
+    def _check_files(self) -> tuple[bytes, ...]:
+        """Table and picture of the station's own snow, where it was observed."""
+        from terrasol.engine.melt_tables import check_csv
+        from terrasol.practice.snow import NO_AVALANCHE
+        from terrasol.show.melt import station_png
+
+        prepared = self.prepared
+        if prepared.check is None:
+            return ()
+        told = [f"{name}: {words}." for name, words in _agreement_rows(prepared.record)]
+        how = f"Melt after {_melt_name(prepared.plan.model)}, on level ground."
+        notes = (how, *told, NO_AVALANCHE)
+        picture = station_png(prepared.check, title=prepared.station.name, notes=notes)
+        return check_csv(prepared.check), picture
 
     def _forecast(self) -> dict[str, Any]:
         """What a run would work on, write and cost."""

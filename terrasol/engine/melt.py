@@ -47,6 +47,9 @@ SECONDS_A_CELL_AND_DAY: Final = 0.7e-6
 """What a core needs a cell and day with light, and for each member of the spread a fifth of it
 (estimate; docs/melt.md)."""
 
+BASE_BYTES: Final = 650e6
+"""Memory of the interpreter, the libraries and the pictures (docs/melt.md)."""
+
 BYTES_A_VALUE: Final = 0.5
 """Of the daily stack, for the estimate only."""
 
@@ -151,7 +154,7 @@ class MeltPlan:
         nodes = cells / self.light.stride**2
         around = 4.0 * nodes * HOURS * SPAN_DAYS
         far = self.light.memory_bytes(threads)
-        return int(max(far, 450e6 + kept * cells + around + tables + threads * 30e6))
+        return int(max(far, BASE_BYTES + kept * cells + around + tables + threads * 30e6))
 
     def stack_bytes(self) -> int:
         """Disk that the stack will take, about."""

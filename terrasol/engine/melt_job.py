@@ -32,7 +32,7 @@ from terrasol.practice.snow import (
     NUMBERS,
     SnowModel,
 )
-from terrasol.practice.snow_point import agreement, fit_snow, point_snow
+from terrasol.practice.snow_point import StationCheck, agreement, fit_snow, point_snow
 from terrasol.practice.snow_weather import (
     FILL_HOURS,
     Mended,
@@ -110,12 +110,15 @@ class Prepared:
     record : dict
         Findings on the station, its check and the fit, ready for JSON.
     warnings : tuple of str
+    check : StationCheck, optional
+        Where the station observed its snow and the season begins on bare ground.
     """
 
     plan: MeltPlan
     station: Station
     record: dict[str, Any]
     warnings: tuple[str, ...]
+    check: StationCheck | None = None
 
 
 def prepare(
@@ -168,7 +171,7 @@ def prepare(
     mended = hourly_weather(
         station, edges, months, settings.fill_weather, model.albedo == "station"
     )
-    model, found = _check_or_fit(station, mended, edges, model, settings, state)
+    model, found, check = _check_or_fit(station, mended, edges, model, settings, state)
     record |= {"weather_mended": mended.count} | found
     share, name = area if area is not None else (None, "the raster")
     plan = MeltPlan(
@@ -179,7 +182,7 @@ def prepare(
         tuple(model.spread()) if settings.spread else (),
         np.datetime64(state.season_start) if state is not None else dates[0],
     )
-    return Prepared(plan, station, record, (*warnings, *mended.doubts))
+    return Prepared(plan, station, record, (*warnings, *mended.doubts), check)
 
 
 def _sky(
@@ -207,25 +210,27 @@ def _check_or_fit(
     model: SnowModel,
     settings: MeltSettings,
     state: StateHead | None,
-) -> tuple[SnowModel, dict[str, Any]]:
+) -> tuple[SnowModel, dict[str, Any], StationCheck | None]:
     """Hold the model against the station's own snow water, after fitting it if asked for."""
-    fit = settings.fit
-    if "snow_water" not in station.values and fit is None:
-        return model, {}
-    if state is not None:  # the station's snow is not in it, so there is nothing to begin from
-        return model, {}
+    fit, weather = settings.fit, mended.weather
+    dates = (edges[:-1] + np.timedelta64(12, "h")).astype("M8[D]")
+    if ("snow_water" not in station.values and fit is None) or state is not None:
+        return model, {}, None  # from a state on nothing is known of the snow at the station
     observed = daily_snow_water(station, edges)
     light = station_light(station, model, edges)
+    water = point_snow(model, weather, light).water
     if fit is not None:
         try:
-            fitted = fit_snow(model, mended.weather, light, observed, fit)
+            fitted = fit_snow(model, weather, light, observed, fit)
         except InputError as error:
             raise InputError(f"{station.name}: {error}") from error
-        return fitted.model, {"fit": fitted.record(), "at_station": fitted.after.record()}
+        after = point_snow(fitted.model, weather, light).water
+        told = {"fit": fitted.record(), "at_station": fitted.after.record()}
+        return fitted.model, told, StationCheck(dates, observed, after, water)
     if not np.isfinite(observed).any():
-        return model, {}
-    water = point_snow(model, mended.weather, light).water
-    return model, {"at_station": agreement(water, observed, edges).record()}
+        return model, {}, None
+    told = {"at_station": agreement(water, observed, edges).record()}
+    return model, told, StationCheck(dates, observed, water)
 
 
 def station_light(

@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 
 from terrasol.engine.melt import MeltResult
 from terrasol.engine.melt_cells import FACINGS, QUANTITIES
+from terrasol.practice.snow_point import StationCheck
 
 DEPTHS: Final = (
     "snowfall_mm",
@@ -153,6 +154,21 @@ def tables_csv(tables: SeasonTables) -> dict[str, bytes]:
         ),
         "by_month.csv": _by_month(tables),
     }  # fmt: skip
+
+
+def check_csv(check: StationCheck) -> bytes:
+    """Snow water at the station, observed and modelled, day by day; empty where unknown."""
+    columns = {"observed_mm": check.observed, "modelled_mm": check.modelled}
+    if check.unfitted is not None:
+        columns["modelled_before_fit_mm"] = check.unfitted
+    rows = (
+        [
+            str(day),
+            *("" if np.isnan(values[k]) else f"{values[k]:.2f}" for values in columns.values()),
+        ]
+        for k, day in enumerate(check.dates)
+    )
+    return _lines(["date", *columns], rows)
 
 
 TABLES: Final = (

@@ -38,6 +38,9 @@ and slopes would then all melt alike. So the light's is fitted and the other kep
 FEWEST_DAYS: Final = 20
 """Observed days under which nothing is fitted (judgement)."""
 
+SUMMER_DAYS: Final = 60
+"""Days in a row without observed snow that part one winter from the next (judgement)."""
+
 DIRECT_CALLS: Final = 300
 """Calls for the search over the whole of the bounds, before the simplex refines it."""
 
@@ -187,6 +190,27 @@ def _melt_out(water: NDArray[np.float64], days: NDArray[np.datetime64], top: int
 
 
 @dataclass(frozen=True, eq=False)
+class StationCheck:
+    """Snow water at the station, modelled beside observed, at the end of each day [mm].
+
+    Parameters
+    ----------
+    dates : ndarray of datetime64[D], shape (days,)
+    observed : ndarray
+        NaN where nothing was.
+    modelled : ndarray
+        By the model that is used.
+    unfitted : ndarray, optional
+        By the model before it was fitted.
+    """
+
+    dates: NDArray[np.datetime64]
+    observed: NDArray[np.float64]
+    modelled: NDArray[np.float64]
+    unfitted: NDArray[np.float64] | None = None
+
+
+@dataclass(frozen=True, eq=False)
 class Fit:
     """A fitted model, how well it agrees, and a split-sample test.
 
@@ -314,17 +338,15 @@ def split_days(
     """Two parts of the observed days, each fitted and judged in turn: words, fitted, judged."""
     known = np.isfinite(observed)
     day = (edges[:-1] + np.timedelta64(12, "h")).astype("M8[D]")
-    winter = (day + np.timedelta64(92, "D")).astype("M8[Y]").astype(int)
-    with_snow = np.unique(winter[known & (np.nan_to_num(observed) > 0.0)])
-    if with_snow.size > 1:
-        border = with_snow[with_snow.size // 2]
-        first = known & (winter < border)
+    snowy = np.flatnonzero(known & (np.nan_to_num(observed) > 0.0))
+    begins = snowy[1:][np.diff(snowy) > SUMMER_DAYS]
+    if begins.size:
+        border = begins[(begins.size - 1) // 2]
         words = ("the first winters", "the last winters")
     else:
-        snowy = np.flatnonzero(known & (np.nan_to_num(observed) > 0.0))
-        border_day = snowy[snowy.size // 2]
-        first = known & (np.arange(known.size) < border_day)
-        words = (f"days before {day[border_day]}", f"days from {day[border_day]} on")
+        border = snowy[snowy.size // 2]
+        words = (f"days before {day[border]}", f"days from {day[border]} on")
+    first = known & (np.arange(known.size) < border)
     last = known & ~first
     return [(words, first, last), (words[::-1], last, first)]
 

@@ -14,6 +14,7 @@ from terrasol.engine.melt_tables import DEPTHS, SeasonTables
 from terrasol.engine.outputs import MONTH_NAMES
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame
+from terrasol.practice.snow_point import StationCheck
 from terrasol.show.key import SMALL, date_text, draw_notes, number
 from terrasol.show.maps import SUBTITLE, TITLE, overview_png
 from terrasol.show.page import PAPER, POINTS_PER_PIXEL, SOFT, Page, clip, text_width, wrap
@@ -60,6 +61,39 @@ def hydrograph_png(
     return page.png(Title=title, Software=f"terrasol {__version__}")
 
 
+def station_png(check: StationCheck, *, title: str, notes: Sequence[str]) -> bytes:
+    """Draw the snow water at the station, modelled beside observed, day by day.
+
+    Parameters
+    ----------
+    check : StationCheck
+    title : str
+    notes : sequence of str
+        How well they agree, and what the sheet is not.
+    """
+    lines = _broken(notes)
+    height = 420
+    page = Page(WIDTH, HEAD + height + 70 + 24 * len(lines) + 40)
+    _head(page, title, f"Snow water at the station, {check.dates[0]} to {check.dates[-1]}")
+    panel = Panel(page, LEFT, HEAD, WIDTH - MARGIN - LEFT, height)
+    curves = [check.observed, check.modelled]
+    curves += [check.unfitted] if check.unfitted is not None else []
+    high = 1.08 * max(float(np.nanmax(np.stack(curves))), 1.0)
+    _axes(panel, check.dates, high, "Snow water", "mm, end of day")
+    thin, day = POINTS_PER_PIXEL, np.arange(check.dates.size) + 0.5
+    entries = [("observed", RUNOFF, "dots"), ("modelled", WATER, "line")]
+    if check.unfitted is not None:
+        panel.axes.plot(day, check.unfitted, color=MELT, linewidth=1.6 * thin,
+                        linestyle=(0, (4, 2.5)))  # fmt: skip
+        entries.append(("modelled before the fit", MELT, "dashed"))
+    panel.axes.plot(day, check.modelled, color=WATER, linewidth=2.6 * thin)
+    panel.axes.plot(day, check.observed, linestyle="none", marker="o", color=RUNOFF,
+                    markersize=3.4 * thin, markeredgewidth=0.0)  # fmt: skip
+    _key(page, HEAD - 18, entries)
+    _foot(page, lines, HEAD + height + 62)
+    return page.png(Title=title, Software=f"terrasol {__version__}")
+
+
 def bands_png(tables: SeasonTables, *, title: str, subtitle: str, notes: Sequence[str]) -> bytes:
     """Draw snow water, runoff input and covered share of each band of height, day by day."""
     heights = (300, 300, 220)
@@ -77,7 +111,7 @@ def bands_png(tables: SeasonTables, *, title: str, subtitle: str, notes: Sequenc
         panel = Panel(page, LEFT, top, WIDTH - MARGIN - LEFT - 150, height)
         values = [_running(tables.bands[:, b, DEPTHS.index(name)], days) for b in kept]
         most = max(float(np.nanmax(v)) for v in values) if kept else 1.0
-        _axes(panel, tables, 1.08 * most if most > 0.0 else 1.0, words, unit)
+        _axes(panel, tables.dates, 1.08 * most if most > 0.0 else 1.0, words, unit)
         for colour, curve in zip(colours, values, strict=False):
             panel.axes.plot(_days(tables), curve, color=colour, linewidth=2.0 * POINTS_PER_PIXEL)
         top += height + GAP
@@ -138,12 +172,12 @@ def _running(values: NDArray[np.floating], days: int) -> NDArray[np.floating]:
     return np.convolve(values, ones, "same") / whole
 
 
-def _axes(panel: Panel, tables: SeasonTables, high: float, words: str, unit: str) -> None:
+def _axes(panel: Panel, dates: NDArray[np.datetime64], high: float, words: str, unit: str) -> None:
     """Range, heading, months below and lines across."""
-    panel.limits(0.0, float(tables.dates.size), 0.0, high)
+    panel.limits(0.0, float(dates.size), 0.0, high)
     panel.y_ticks([tick for tick in steps(0.0, high, 4) if tick >= 0.0])
     panel.heading(words, unit)
-    dates, width = tables.dates, panel.width / tables.dates.size
+    width = panel.width / dates.size
     if dates.size <= 62:
         every = 7 if dates.size > 16 else 1
         at = list(range(0, dates.size, every))
@@ -151,15 +185,15 @@ def _axes(panel: Panel, tables: SeasonTables, high: float, words: str, unit: str
         return
     middles: list[float] = []
     names: list[str] = []
-    for month in tables.months:
-        inside = np.flatnonzero(tables.of_month(month))
+    of = dates.astype("M8[M]")
+    months = list(dict.fromkeys(str(month) for month in of))
+    for month in months:
+        inside = np.flatnonzero(of == np.datetime64(month))
         if inside.size * width > 34:
             middles.append(float(inside.mean()) + 0.5)
             year, number_of = month.split("-")
             name = MONTH_NAMES[int(number_of) - 1][:3]
-            names.append(
-                f"{name} {year}" if number_of == "01" or month == tables.months[0] else name
-            )
+            names.append(f"{name} {year}" if number_of == "01" or month == months[0] else name)
         if inside[0] > 0:
             panel.axes.axvline(inside[0], color="#e4e1da", linewidth=POINTS_PER_PIXEL, zorder=0)
     panel.x_ticks(middles, names)
@@ -175,7 +209,7 @@ def _draw_fall(page: Page, tables: SeasonTables, top: float, height: float) -> N
     panel = Panel(page, LEFT, top, WIDTH - MARGIN - LEFT, height)
     snow, rain = tables.column("snowfall_mm"), tables.column("rain_mm")
     high = max(1.08 * float((snow + rain).max()), 1.0)
-    _axes(panel, tables, high, "Precipitation", "mm a day on map area")
+    _axes(panel, tables.dates, high, "Precipitation", "mm a day on map area")
     _bars(panel, np.zeros_like(snow), snow, SNOW)
     _bars(panel, snow, snow + rain, RAIN)
     _key(page, top - 18, (("snow", SNOW, "box"), ("rain", RAIN, "box")))
@@ -194,7 +228,7 @@ def _draw_flow(page: Page, tables: SeasonTables, top: float, height: float, spre
         low, most = tables.range_of("melt_mm")
         high = max(high, float(most.max()))
         panel.axes.fill_between(_days(tables), low, most, color=MELT, alpha=0.26, linewidth=0.0)
-    _axes(panel, tables, 1.08 * high, "Melt and runoff input", "mm a day on map area")
+    _axes(panel, tables.dates, 1.08 * high, "Melt and runoff input", "mm a day on map area")
     thin = POINTS_PER_PIXEL
     panel.axes.plot(_days(tables), runoff, color=RUNOFF, linewidth=1.1 * thin)
     panel.axes.plot(_days(tables), melt, color=MELT, linewidth=2.4 * thin)
@@ -211,7 +245,7 @@ def _draw_store(page: Page, tables: SeasonTables, top: float, height: float) -> 
         panel.axes.fill_between(_days(tables), low, most, color=WATER, alpha=0.26, linewidth=0.0)
     full = max(float(most.max()), 1.0)
     high = 1.16 * full
-    _axes(panel, tables, high, "Snow water", "mm on map area, end of day")
+    _axes(panel, tables.dates, high, "Snow water", "mm on map area, end of day")
     thin = POINTS_PER_PIXEL
     panel.axes.plot(_days(tables), water, color=WATER, linewidth=2.4 * thin)
     panel.axes.plot(_days(tables), cover * full, color=COVER, linewidth=1.4 * thin,
@@ -239,6 +273,9 @@ def _key(page: Page, y: float, entries: Sequence[tuple[str, str, str]]) -> None:
     for words, colour, kind in entries:
         if kind == "box":
             page.box(x, y - 13, 30, 14, fill=colour)
+        elif kind == "dots":
+            for k in (4, 15, 26):
+                page.box(x + k - 2, y - 8, 4, 4, fill=colour)
         elif kind == "dashed":
             dashes = [[(x + k, y - 6), (x + k + 7, y - 6)] for k in (0, 12, 24)]
             page.lines(dashes, colour=colour, line=1.6)

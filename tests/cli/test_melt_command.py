@@ -104,6 +104,7 @@ def test_a_run_and_all_of_its_files(dem, station, tmp_path, capsys):
     record = json.loads((out / "run.json").read_text())
     names = {path.rsplit("/", 1)[-1] for path in record["files"]}
     assert names == {path.name for path in out.iterdir()}
+    assert {"at_station.csv", "at_station.png"} <= names
     assert {"days.nc", "state.nc", "melt_out.tif", "hydrograph.png", "basin.csv"} <= names
     assert max(record["results"]["water_balance_error"].values()) < 1e-6
     assert record["settings"]["model"]["numbers"]["melt_above"] == 0.0

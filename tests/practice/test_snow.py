@@ -344,12 +344,14 @@ def test_a_bound_is_told():
 
 
 def test_winters_are_parted_where_there_are_several():
+    """By the summers between them, in either hemisphere."""
     edges = edges_of(800, "2022-11-01T00:00:00")
     seen = np.full(800, np.nan)
-    seen[[30, 60, 400, 430, 780]] = 50.0
+    seen[[30, 60, 90, 380, 400, 430, 780]] = 50.0
+    seen[200:220] = 0.0
     (_, first, last), (_, other, _) = split_days(edges, seen)
-    assert np.flatnonzero(first).tolist() == [30, 60]
-    assert np.flatnonzero(last).tolist() == [400, 430, 780]
+    assert np.flatnonzero(first).tolist() == [30, 60, 90, *range(200, 220)]
+    assert np.flatnonzero(last).tolist() == [380, 400, 430, 780]
     np.testing.assert_array_equal(other, last)
 
 

@@ -6,8 +6,9 @@ import numpy as np
 import pytest
 from matplotlib.image import imread
 
-from terrasol.engine.melt_tables import DEPTHS, SeasonTables
+from terrasol.engine.melt_tables import DEPTHS, SeasonTables, check_csv
 from terrasol.ground.frame import make_frame
+from terrasol.practice.snow_point import StationCheck
 from terrasol.show import melt as show
 from terrasol.show.page import Page
 
@@ -82,6 +83,20 @@ def test_map_of_melt_out_names_dates(said, metric_ground):
     assert "1 Feb" in said
     assert "15 Mar" in said
     assert any(word.startswith("mean ") for word in said)
+
+
+@pytest.mark.parametrize("fitted", [True, False])
+def test_station(said, fitted):
+    dates = np.datetime64("2024-11-01") + np.arange(90)
+    water = 100.0 * np.sin(np.linspace(0.0, np.pi, 90))
+    seen = np.where(np.arange(90) % 3 == 0, water + 5.0, np.nan)
+    check = StationCheck(dates, seen, water, 0.8 * water if fitted else None)
+    assert show.station_png(check, title="a station", notes=NOTES).startswith(b"\x89PNG")
+    assert {"a station", "observed", "modelled", "No avalanche tool."} <= set(said)
+    assert ("modelled before the fit" in said) == fitted
+    rows = check_csv(check).decode().splitlines()
+    assert rows[2].startswith(f"2024-11-02,,{water[1]:.2f}")
+    assert ("before_fit" in rows[0]) == fitted
 
 
 def test_running_mean_keeps_length_and_level():
