@@ -23,6 +23,7 @@ from terrasol.ground.horizon import (
     raise_horizon,
     sweep,
 )
+from terrasol.ground.sightline import Outlooks, Sightlines
 from terrasol.ground.surface import block_normals
 from terrasol.light.irradiation import Strip
 
@@ -245,11 +246,42 @@ def cell_strip(ground: Ground, row: int, column: int) -> Strip:
     Strip
         Of one row and one column.
     """
-    per_row = -(-ground.elevation.shape[1] // BLOCK)
-    block = blocks_of(ground.elevation.shape)[row // BLOCK * per_row + column // BLOCK]
+    block = _block_around(ground, row, column)
     inside = row - block.row
     strip = BlockGround(ground, block).strip(range(inside, inside + 1))
     return strip.thin(column - block.column, block.columns)
+
+
+def cell_outlooks(ground: Ground, sights: Sightlines, row: int, column: int) -> Outlooks:
+    """One cell on the ground around it, as its block has it.
+
+    Parameters
+    ----------
+    ground : Ground
+        Swept.
+    sights : Sightlines
+        Over the same ground.
+    row, column : int
+        The cell.
+
+    Returns
+    -------
+    Outlooks
+        Of one row and one column.
+    """
+    block = _block_around(ground, row, column)
+    piece = BlockGround(ground, block)
+    beyond = piece.beyond(range(row - block.row, row - block.row + 1))
+    if beyond is not None:
+        own = column - block.column
+        beyond = np.ascontiguousarray(beyond[:, :, own : own + 1])
+    return sights.outlooks((slice(row, row + 1), slice(column, column + 1)), piece.middle, beyond)
+
+
+def _block_around(ground: Ground, row: int, column: int) -> Block:
+    """The block that holds a cell."""
+    per_row = -(-ground.elevation.shape[1] // BLOCK)
+    return blocks_of(ground.elevation.shape)[row // BLOCK * per_row + column // BLOCK]
 
 
 def _continue_rim(padded: NDArray[np.float32], block: Block, shape: tuple[int, int]) -> None:

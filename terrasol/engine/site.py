@@ -11,7 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from terrasol.engine.comparison import AZIMUTHS, cell_of
-from terrasol.engine.ground_work import cell_strip, lay_out
+from terrasol.engine.ground_work import cell_outlooks, cell_strip, lay_out
 from terrasol.engine.job import NO_SCENE, Plan, Run, plan_irradiation, plan_terrain
 from terrasol.engine.outputs import MONTH_NAMES, basis_words, month_labels, sky_kind
 from terrasol.engine.plan import Progress, carry_out, check_threads, default_threads
@@ -22,6 +22,7 @@ from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame, make_frame
 from terrasol.ground.horizon import NODE_STEP
+from terrasol.ground.sightline import Outlooks, Sightlines
 from terrasol.ground.surface import slope_and_aspect
 from terrasol.ground.uncertainty import DemError, field_bytes
 from terrasol.light.days import Clock, Days, parse_days, strip_days
@@ -383,6 +384,8 @@ def survey(
     for count, _ in enumerate(carry_out(tasks, threads), 1):
         told(count / len(tasks), "horizon")
     strips = [cell_strip(ground, *cell) for cell in cells]
+    sights = Sightlines.over(elevation, frame, settings.refraction, ground.obstacles)
+    views = [cell_outlooks(ground, sights, *cell) for cell in cells]
     del ground, tasks  # the largest thing there is
     _demand_slopes(strips, cells)
     told.next()
@@ -399,9 +402,9 @@ def survey(
             progress=lambda done: told(done / error.realisations, "error of the heights"),
         )
     return [
-        _site(spot, cell, frame, strip, energy, clock, errors, number)
-        for number, (spot, cell, strip, energy) in enumerate(
-            zip(spots, cells, strips, energies, strict=True)
+        _site(spot, cell, frame, strip, view, energy, clock, errors, number)
+        for number, (spot, cell, strip, view, energy) in enumerate(
+            zip(spots, cells, strips, views, energies, strict=True)
         )
     ]
 
@@ -525,6 +528,7 @@ def _site(
     cell: tuple[int, int],
     frame: Frame,
     strip: Strip,
+    view: Outlooks,
     energy: Energy,
     clock: Clock,
     errors: dict[str, Spread] | None,
@@ -550,7 +554,7 @@ def _site(
         sky_view=float(strip.sky()[0][0, 0]),
         horizon=np.degrees(np.arctan(strip.horizon[:, 0, 0].astype(np.float64))),
         energy=energy,
-        sun=sun_year(strip, longitude, clock),
+        sun=sun_year(strip, view, longitude, clock),
         errors=own,
     )
 
@@ -561,13 +565,15 @@ def _one(spread: Spread, number: int) -> Spread:
     return replace(spread, **{k: v[number] for k, v in arrays.items() if isinstance(v, np.ndarray)})
 
 
-def sun_year(strip: Strip, longitude: float, clock: Clock) -> SunYear:
+def sun_year(strip: Strip, view: Outlooks, longitude: float, clock: Clock) -> SunYear:
     """Follow the sun of every day of a typical year over one cell.
 
     Parameters
     ----------
     strip : Strip
         The cell.
+    view : Outlooks
+        The cell on the ground around it.
     longitude : float
         Degrees east.
     clock : Clock
@@ -580,7 +586,7 @@ def sun_year(strip: Strip, longitude: float, clock: Clock) -> SunYear:
     year = parse_period(None)
     dates = parse_days([str(year.start.astype("M8[Y]"))], year)
     days = Days.over(dates, longitude, clock, strip.horizon.shape[0])
-    here, level = _walk(strip, days), _walk(levelled(strip), days)
+    here, level = _walk(strip, days, view), _walk(levelled(strip), days)
     return SunYear(
         days=dates,
         clock=clock,
@@ -601,8 +607,8 @@ def levelled(strip: Strip) -> Strip:
     return replace(strip, horizon=np.zeros_like(strip.horizon), normal=upright)
 
 
-def _walk(strip: Strip, days: Days) -> Values:
+def _walk(strip: Strip, days: Days, view: Outlooks | None = None) -> Values:
     """First and last sun on the clock [h], hours of sun, interruptions; shape (4, days)."""
-    first, last, shone, gaps = strip_days(strip, days)
+    first, last, shone, gaps = strip_days(strip, days, view)
     on_clock = [days.on_clock(each)[:, 0, 0] for each in (first, last)]
     return np.array([*on_clock, shone[:, 0, 0] / 60.0, gaps[:, 0, 0]], np.float64)
