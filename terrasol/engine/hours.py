@@ -47,7 +47,7 @@ from terrasol.sky.irradiance import Sky
 from terrasol.sky.period import Period, parse_period
 from terrasol.sky.suntable import height_knots, latitude_knots
 
-SECONDS_A_CELL_AND_DAY = 0.4e-6
+SECONDS_A_CELL_AND_DAY = 12e-6
 """What a core needs to walk along one day's sun, for the estimate only."""
 
 SECONDS_A_TABLE_AND_HEIGHT = 0.15
