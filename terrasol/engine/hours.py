@@ -14,10 +14,10 @@ from scipy.interpolate import RegularGridInterpolator
 
 from terrasol.constants import REFRACTION_COEFFICIENT
 from terrasol.engine import outputs
-from terrasol.engine.blocks import Arrays, status_of, with_block
+from terrasol.engine.blocks import Arrays, status_of
 from terrasol.engine.datasets import attributes, clear_air, run_in_memory, scene_of
 from terrasol.engine.ground_work import BlockGround, Ground
-from terrasol.engine.horizon_gap import GapTally, horizon_gap
+from terrasol.engine.horizon_gap import horizon_gap
 from terrasol.engine.job import (
     NO_SCENE,
     Plan,
@@ -26,7 +26,6 @@ from terrasol.engine.job import (
     check_blocks,
 )
 from terrasol.engine.plan import Block, Progress, check_threads, default_threads
-from terrasol.engine.totals import Totals
 from terrasol.files.layers import Layer, Sink
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
@@ -47,7 +46,7 @@ from terrasol.sky.irradiance import Sky
 from terrasol.sky.period import Period, parse_period
 from terrasol.sky.suntable import height_knots, latitude_knots
 
-SECONDS_A_CELL_AND_DAY = 0.4e-6
+SECONDS_A_CELL_AND_DAY = 12e-6
 """What a core needs to walk along one day's sun, for the estimate only."""
 
 SECONDS_A_TABLE_AND_HEIGHT = 0.15
@@ -205,14 +204,7 @@ class _HoursRun(Run):
             sights = Sightlines.over(plan.elevation, plan.frame, plan.refraction, ground.obstacles)
         names = [layer.name for layer in plan.layers]
         work = partial(_block_hours, ground, names, tables, days, sights)
-        totals, gaps = Totals(), GapTally()
-        blocks = [partial(with_block, work, block) for block in plan.blocks]
-        for block, arrays in self._stage("blocks", blocks, 1.0 - self.done):
-            totals.add(arrays)
-            if "horizon_gap" in arrays:
-                gaps.add(arrays)
-            for name, values in arrays.items():
-                sink.write(name, block.row, block.column, values)
+        totals, gaps = self._write_blocks(sink, work)
         self._conclude(ground, totals, None)
         self._tell_of_scene(gaps)
         level = tables.level(plan.frame.centre[0], ground.far.datum).sum(axis=1)
