@@ -657,7 +657,7 @@ def _agreement_rows(station: dict[str, Any]) -> list[tuple[str, str]]:
 def _words(found: dict[str, Any]) -> str:
     """An agreement in words."""
     efficiency = found["efficiency"]
-    told = "" if efficiency is None else f", efficiency {efficiency:.2f}"
+    told = "" if efficiency is None else f", efficiency {efficiency:.3f}"
     return (
         f"peak {found['peak_mm']:.0f} mm (observed {found['observed_peak_mm']:.0f}), melt-out"
         f" {found['melt_out'] or 'none'} (observed {found['observed_melt_out'] or 'none'}),"

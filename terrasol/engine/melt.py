@@ -43,9 +43,11 @@ HOURS: Final = 24
 SLICE_HOURS: Final = 6
 """Hours of a day whose light of the terrain around one task spreads."""
 
-SECONDS_A_CELL_AND_DAY: Final = 0.7e-6
-"""What a core needs a cell and day with light, and for each member of the spread a fifth of it
-(estimate; docs/melt.md)."""
+SECONDS_A_CELL_AND_DAY: Final = 0.45e-6
+"""What a core needs a cell and day with light, for the estimate only (docs/melt.md)."""
+
+MEMBER_SHARE: Final = 0.3
+"""Part of it without light, and for each member of the spread."""
 
 BASE_BYTES: Final = 650e6
 """Memory of the interpreter, the libraries and the pictures (docs/melt.md)."""
@@ -162,7 +164,9 @@ class MeltPlan:
 
     def seconds(self, threads: int, stored: bool) -> float:
         """Time to expect."""
-        a_day = SECONDS_A_CELL_AND_DAY * ((1.0 if self.lit else 0.2) + 0.2 * len(self.spread))
+        a_day = SECONDS_A_CELL_AND_DAY * (
+            (1.0 if self.lit else MEMBER_SHARE) + MEMBER_SHARE * len(self.spread)
+        )
         work = self.light.cells * self.days * a_day
         if self.lit and not stored:
             work += self.light.seconds(1, False) - self.light.seconds(1, True)
