@@ -244,15 +244,16 @@ def _by_hour(
 
 
 def _daily_albedo(station: Station, edges: NDArray[np.datetime64]) -> NDArray[np.float64]:
-    """Mean measured albedo of each day, linear between days, held at the ends."""
+    """Mean measured albedo of each day, linear between days, held at the ends of the series.
+
+    Days of the whole series count, so that a period in parts has the values of the whole.
+    """
     values = station.values.get("albedo")
     if values is None or not np.isfinite(values).any():
         raise InputError(f"{station.name}: no albedo was measured, so it has none to give")
-    day = np.searchsorted(edges, station.start.astype("M8[s]"), "right") - 1
-    known = np.isfinite(values) & (day >= 0) & (day < edges.size - 1)
-    count = np.bincount(day[known], minlength=edges.size - 1)
-    total = np.bincount(day[known], weights=values[known], minlength=edges.size - 1)
-    have = np.flatnonzero(count)
-    if have.size == 0:
-        raise InputError(f"{station.name}: no albedo was measured in the period")
-    return np.interp(np.arange(count.size), have, total[have] / count[have])
+    since = station.start.astype("M8[s]").astype(np.int64) - edges[0].astype(np.int64)
+    known = np.isfinite(values)
+    day = since[known] // 86400
+    have, place = np.unique(day, return_inverse=True)
+    means = np.bincount(place, weights=values[known]) / np.bincount(place)
+    return np.interp(np.arange(edges.size - 1), have, means)

@@ -249,6 +249,11 @@ def test_measured_albedo_is_a_mean_of_the_day():
     ).weather
     assert found.albedo is not None
     np.testing.assert_allclose(found.albedo, [0.7, 0.6, 0.5, 0.4])
+    part = hourly_weather(
+        station_of(plain), edges_of(1, "2025-01-02T00:00:00"), np.zeros(1, int),
+        measured_albedo=True,
+    ).weather  # fmt: skip
+    np.testing.assert_allclose(part.albedo, [0.6])
     del plain["albedo"]
     with pytest.raises(InputError, match="no albedo was measured"):
         hourly_weather(station_of(plain), edges_of(4), np.zeros(4, int), measured_albedo=True)
