@@ -41,9 +41,6 @@ STATE = "state.nc"
 PICTURES = ("hydrograph.png", "bands.png", "melt_out.png")
 CHECK = ("at_station.csv", "at_station.png")
 
-USUAL = "usual"
-"""Value of --fit that asks for the usual numbers."""
-
 NOT_HERE = ("clear_sky_index", "horizon_gap", "highest")
 """Shared options that make no sense here: kept out of the help, and refused."""
 
@@ -73,7 +70,7 @@ class Setting(click.ParamType):
 @click.option(
     "--period",
     metavar="TEXT",
-    help="A season (2024-10-01/2025-06-30), year, month or day, from bare ground on.  [default:"
+    help="A season (2024-10-01/2025-06-30), year, month or day, from bare ground on. [default:"
     " all days of STATION, or from --from-state on]",
 )
 @click.option(
@@ -81,13 +78,13 @@ class Setting(click.ParamType):
     metavar="POLYGONS",
     type=Name(),
     help="The area that tables and curves are of: GeoPackage, GeoJSON, shapefile or GeoParquet."
-    "  [default: all of DEM]",
+    " [default: all of DEM]",
 )
 @click.option(
     "--bands",
     metavar="M",
     type=click.FloatRange(min=0.0, min_open=True),
-    help="Width of the bands of height.  [default: some ten bands]",
+    help="Width of the bands of height. [default: some ten bands]",
 )
 @click.option(
     "--melt",
@@ -123,11 +120,14 @@ class Setting(click.ParamType):
 )
 @click.option(
     "--fit",
+    is_flag=True,
+    help="Fit the melt by light (for degree-days by warmth) and the snow factor to the snow water"
+    " that STATION observed, and use them.",
+)
+@click.option(
+    "--fit-numbers",
     metavar="NAMES",
-    is_flag=False,
-    flag_value=USUAL,
-    help="Fit two or three numbers, joined by commas, to the snow water that STATION observed, and"
-    " use them; without names the melt by light (degree-days: by warmth) and the snow factor.",
+    help="Fit these two or three in their place, joined by commas.",
 )
 @click.option(
     "--from-state",
@@ -175,7 +175,7 @@ def _check(around: Around, asked: AskedSky, given: dict[str, Any]) -> None:
         raise click.UsageError("--clear-sky-index has no hours: melt takes the light of STATION")
     if given["horizon_store"] and given["no_horizon_store"]:
         raise click.UsageError("--horizon-store and --no-horizon-store exclude each other")
-    if given["fit"] is not None and given["from_state"]:
+    if (given["fit"] or given["fit_numbers"]) and given["from_state"]:
         raise click.UsageError(
             "--fit wants a season from bare ground on; a state goes on with the numbers it has"
         )
@@ -565,9 +565,9 @@ def _settings(
             )
         period = f"{state.day}/{last}"
     fit = None
-    if given["fit"] is not None:
-        words = () if given["fit"] == USUAL else tuple(given["fit"].split(","))
-        fit = numbers_to_fit(model, tuple(word.strip().replace("-", "_") for word in words))
+    if given["fit"] or given["fit_numbers"]:
+        words = (given["fit_numbers"] or "").replace("-", "_").split(",")
+        fit = numbers_to_fit(model, tuple(word.strip() for word in words if word.strip()))
     return MeltSettings(
         model=model,
         period=None if period is None else parse_period(period),

@@ -182,7 +182,17 @@ def test_basin_fit_and_words(dem, station, tmp_path, capsys):
     }  # fmt: skip
     basin.write_text(json.dumps({"type": "FeatureCollection", "features": [feature]}))
     out = tmp_path / "out"
-    more = ["--basin", str(basin), "--melt", "degree-days", "--fit", "--bands", "50", "--json"]
+    more = [
+        "--basin",
+        str(basin),
+        "--melt",
+        "degree-days",
+        "--fit-numbers",
+        "degree-day-factor, snow-factor",
+        "--bands",
+        "50",
+        "--json",
+    ]
     assert main(["melt", str(dem), str(station), str(out), *more, "--stack", "none"]) == 0
     record = json.loads(capsys.readouterr().out)
     assert record["results"]["area"] == "half"
@@ -217,7 +227,7 @@ def test_dry_run_writes_nothing(dem, station, tmp_path, capsys):
         (["--number", "melt_factor=3"], 2, "'melt_factor' is no number of the snow model"),
         (["--number", "melt_factor"], 2, "is not a name, '=' and a number"),
         (["--number", "snow_factor=9"], 2, "snow_factor must lie from 0.2 to 5"),
-        (["--fit", "degree_day_factor,snow_factor"], 2, "changes two or three of"),
+        (["--fit-numbers", "degree_day_factor,snow_factor"], 2, "changes two or three of"),
         (["--fit", "--from-state", "x.nc"], 2, "--fit wants a season from bare ground on"),
         (["--from-state", "x.nc"], 3, "x.nc is no snow state"),
         (["--snow-albedo", "station"], 3, "no albedo was measured"),
