@@ -38,7 +38,7 @@ def _told(survey: Survey, parcel: Parcel) -> Row:
         row[name] = value
         if has_error(name) and name in parcel.doubts:
             row[f"{name}_se"] = parcel.doubts[name].standard_error
-    return row
+    return row | {f"{GIVEN}{name}": value for name, value in parcel.given.items()}
 
 
 def has_error(name: str) -> bool:
@@ -135,6 +135,9 @@ def row_rows(survey: Survey) -> list[Row]:
     return rows
 
 
+GIVEN: Final = "given_"
+"""Before the names of fields of the parcels' file."""
+
 _OWN = (
     Figure("parcel", "", "", "name, made unique"),
     Figure("rank", np.nan, "1", "1 for the highest score; equal scores share a rank"),
@@ -194,6 +197,10 @@ def column_rows(survey: Survey) -> list[Row]:
             words = "its standard error, from the stated error of the heights"
             figures.append(replace(figure, name=f"{figure.name}_se", meaning=words))
     figures += [
+        *(
+            Figure(f"{GIVEN}{name}", "", "", f"field {name} of the parcels' file")
+            for name in survey.parcels[0].given
+        ),
         *(_PATCHES if survey.settings.asked.rule else ()),
         *(_SIZES if survey.settings.coarser else ()),
         *(_ROWS if survey.settings.rows else ()),

@@ -43,6 +43,13 @@ from terrasol.practice.rules import Patches
 COARSER: Final = (2, 4)
 """Cells joined along a side for the two coarser looks at the same ground (judgement)."""
 
+FEW_CELLS: Final = 10.0
+"""Cells below which a parcel's figures are doubted: a slope takes in the eight cells around, so
+that most of what it says is of the ground outside (judgement, no source)."""
+
+MOST_NAMED: Final = 8
+"""Parcels that a warning names."""
+
 LARGE_EFFECT: Final = 100.0
 """Degree-days that 1 K km-1 of lapse rate may move without a warning: a third of a class of
 Winkler's (judgement, no source)."""
@@ -126,6 +133,8 @@ class Parcel:
         What vine rows of every direction would get.
     doubts : dict of Doubt
         What the error of the heights leaves open, by figure; empty if none was stated.
+    given : dict
+        What the parcels' file says of it, by field.
     """
 
     name: str
@@ -138,6 +147,7 @@ class Parcel:
     patches: Patches | None = None
     rows: Rows | None = None
     doubts: dict[str, Doubt] = field(default_factory=dict)
+    given: dict[str, Any] = field(default_factory=dict)
 
     @property
     def numbers(self) -> dict[str, float]:
@@ -262,9 +272,11 @@ def survey(
         level = levels[k]
         assert level is not None
         coarse = [(size, _figures(each[k], level, settings.asked)) for size, each in looks[1:]]
-        parcels.append(_parcel(piece, polygons.geometries[k], level, coarse, horizon, settings))
+        parcel = _parcel(piece, polygons.geometries[k], level, coarse, horizon, settings)
+        parcels.append(replace(parcel, given=polygons.given(k)))
     warnings = (*polygons.warnings, *warnings, *doubts_of_error(elevation, settings.error))
-    found = _ranked(parcels, settings, looks[0][0], [*warnings, *_doubts_of_lapse(parcels)])
+    warnings = (*warnings, *_doubts_of_size(parcels), *_doubts_of_lapse(parcels))
+    found = _ranked(parcels, settings, looks[0][0], [*warnings])
     if settings.error is not None:
         found = _doubted(
             found, elevation, settings.error, scene_of, threads,
@@ -302,6 +314,24 @@ def _looks(
         frame = make_frame(ground.shape, ground.transform, ground.crs)
         looks.append((float(np.sqrt(np.prod(frame.cell_size))), pieces))
     return looks, levels, warnings
+
+
+def _doubts_of_size(parcels: Sequence[Parcel]) -> list[str]:
+    """Warn of parcels that hold few cells."""
+    few = []
+    for parcel in parcels:
+        area, whole = parcel.piece.area, parcel.piece.area.max()
+        if 0.0 < area.sum() < FEW_CELLS * whole:
+            few.append(f"'{parcel.name}' ({area.sum() / whole:.1f})")
+    if not few:
+        return []
+    shown = ", ".join(few[:MOST_NAMED]) + (f" and {len(few) - MOST_NAMED} more") * (
+        len(few) > MOST_NAMED
+    )
+    return [
+        f"few cells lie in {shown}: their slopes and classes are those of the ground around as"
+        " much as their own; take a finer model"
+    ]
 
 
 def _doubts_of_lapse(parcels: Sequence[Parcel]) -> list[str]:

@@ -74,6 +74,13 @@ class Polygons:
         """How many there are."""
         return len(self.names)
 
+    def given(self, place: int) -> dict[str, Any]:
+        """What the file says of one of them, by field: numbers, text, None where nothing."""
+        if self.attributes.empty:
+            return {}
+        row = self.attributes.iloc[place]
+        return {str(name): _plain(value) for name, value in row.items()}
+
 
 @dataclass(frozen=True)
 class Cells:
@@ -330,6 +337,15 @@ def text_of(value: Any) -> str:
     if isinstance(value, float) and value.is_integer():
         value = int(value)
     return " ".join(str(value).split())
+
+
+def _plain(value: Any) -> Any:
+    """A value of a table as a number or text."""
+    if value is None or (np.ndim(value) == 0 and pd.isna(value)):
+        return None
+    if isinstance(value, bool | np.bool_) or not isinstance(value, int | float | np.number):
+        return str(value)
+    return float(value)
 
 
 def _moved(shapes: list[Any], source: CRS, target: CRS) -> list[Any]:

@@ -94,6 +94,9 @@ def test_tables_agree_with_each_other(whole):
     layer = geopandas.read_file(whole / "parcels.gpkg", layer="parcels")
     assert layer["parcel"].tolist() == [row["parcel"] for row in table]
     assert layer.crs == UTM
+    assert dict(zip(layer["parcel"], layer["given_rows"], strict=True)) == {
+        "Lower": 1.0, "Upper": 2.0, "Côte/3": 3.0,
+    }  # fmt: skip
     patches = geopandas.read_file(whole / "parcels.gpkg", layer="rule")
     for row in table:
         mine = patches[patches["parcel"] == row["parcel"]]

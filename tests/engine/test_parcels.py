@@ -306,3 +306,12 @@ def test_python_gives_a_table_with_outlines():
     assert found.geometry.iloc[0].area == pytest.approx(1e4, rel=1e-4)
     with pytest.raises(InputError, match="GeoDataFrame, not list"):
         survey_parcels(ground, [shape])
+
+
+def test_parcels_of_few_cells_are_doubted():
+    shapes = parcels(box(0, 0, 25, 25), box(50, 0, 90, 40))  # 6 and 16 cells
+    found = survey(plane(12.0, 180.0), shapes, asked_for(coarser=()))
+    doubts = [text for text in found.warnings if "few cells" in text]
+    assert len(doubts) == 1
+    assert "'P0' (6.2)" in doubts[0]
+    assert "P1" not in doubts[0]
