@@ -138,10 +138,7 @@ def survey_parcels(
     """
     frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
     whole = period if isinstance(period, Period) else parse_period(period)
-    warmth = None
-    if temperatures is not None:
-        lapse = lapse_rate if np.ndim(lapse_rate) == 0 else tuple(np.asarray(lapse_rate).tolist())
-        warmth = Warmth(temperatures, lapse)  # type: ignore[arg-type]
+    warmth = None if temperatures is None else Warmth(temperatures, _lapse(lapse_rate))
     asked = Asked(
         whole,
         growing_season(frame.centre[0]) if season is None else parse_season(season),
@@ -172,6 +169,12 @@ def survey_parcels(
         threads,
     )
     return as_frame(found, elevation)
+
+
+def _lapse(rate: float | Sequence[float]) -> float | tuple[float, ...]:
+    """One lapse rate, or twelve."""
+    rates = tuple(float(each) for each in np.ravel(rate))
+    return rates[0] if len(rates) == 1 else rates
 
 
 def _polygons(

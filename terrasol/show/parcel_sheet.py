@@ -55,6 +55,9 @@ RIGHT_SIDE, LEFT_SIDE, BOTH = "#b2551f", "#2f6690", "#24262b"
 UNKNOWN: Final = "nothing of the ground is known"
 """What stands in place of a diagram of void ground."""
 
+MOST_TIMED, MOST_LETTERED = 13, 36
+"""Months whose first and last sun are written out, and months that are named."""
+
 SUN_YEAR: Final = 2025
 """Whose sun the paths show where the period is a typical year."""
 
@@ -370,9 +373,11 @@ def _monthly(parcel: Parcel, pattern: str, survey: Survey) -> np.ndarray:
 
 
 def _month_letters(survey: Survey) -> list[str]:
-    """Short names of months: three letters for up to twelve, else one."""
+    """Short names of months: three letters, one, or the years alone, as there is room."""
     months = survey.settings.asked.period.months
-    letters = 3 if len(months) <= 13 else 1
+    if len(months) > MOST_LETTERED:
+        return [f"{year}" if month == 1 else "" for year, month in months]
+    letters = 3 if len(months) <= MOST_TIMED else 1
     return [MONTH_NAMES[month - 1][:letters] for _, month in months]
 
 
@@ -391,15 +396,20 @@ def _days(page: Page, survey: Survey, parcel: Parcel, box) -> None:
     low, high = np.floor(np.nanmin(first)) - 1.2, np.ceil(np.nanmax(last)) + 1.0
     panel.limits(-0.6, len(first) - 0.4, high, low)
     panel.axes.spines["bottom"].set_visible(False)
-    at = np.arange(len(first))
+    at, few = np.arange(len(first)), len(first) <= MOST_TIMED
+    wide = min(9.0, 0.5 * width / len(first)) * POINTS_PER_PIXEL
+    if not few:
+        panel.y_ticks(steps(low, high, 5))
     for k in at:
         if np.isfinite(first[k]):
-            panel.axes.vlines(k, first[k], last[k], color="#f0d9ac", linewidth=9 * POINTS_PER_PIXEL,
+            panel.axes.vlines(k, first[k], last[k], color="#f0d9ac", linewidth=wide,
                               zorder=2)  # fmt: skip
-            for hour, down in ((first[k], -4.0), (last[k], 11.0)):
+            for hour, down in ((first[k], -4.0), (last[k], 11.0)) if few else ():
                 px, py = panel.place(float(k), hour)
                 page.text(px, py + down, _clock_text(hour), 8.2, across="center")
     panel.x_ticks(list(at), _month_letters(survey), down=TICK + 5)
+    if not few:
+        return
     hours = _monthly(parcel, "sun_hours_{}_h", survey) / survey.settings.asked.period.month_days
     panel.x_ticks(list(at), [f"{h:.1f}" for h in hours], down=TICK + 18)
     page.text(x - 4, y + height + TICK + 18, "h a day", TICK, colour=SOFT, across="right")

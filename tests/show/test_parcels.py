@@ -152,3 +152,14 @@ def test_scale_bar_and_colours():
     assert scale_length(160.0) == 50.0
     assert len(set(slope_colours(6))) == 6
     assert len(slope_colours(1)) == 1
+
+
+def test_many_months_are_not_written_over_each_other():
+    ground = plane(12.0, 180.0)
+    found = survey(ground, parcels(box(0, 0, 60, 60)), asked_for("2020/2024", coarser=()))
+    page = parcel_page(found, found.parcels[0], ground, frame_of(ground), title="T")
+    assert len(found.parcels[0].level.months) == 60
+    words = all_words(page)
+    assert "h a day" not in words
+    assert words.count("2022") == 2  # an axis of energy and one of first and last sun
+    assert "April 2024 to October 2024" in words
