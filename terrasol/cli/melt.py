@@ -382,11 +382,13 @@ class _Job:
 
         plan, state = self.prepared.plan, self.given["from_state"]
         begin = take_up(plan, state) if state else None
-        store = delivery.staged("horizons") if self.store is None else self.store
+        spare = delivery.staged("horizons")
+
+        def progress(share: float, stage: str) -> None:
+            move(0.9 * share, stage)
+
         with naming(self.common.dem):
-            return plan.run(
-                store, writer, begin, threads, lambda share, stage: move(0.9 * share, stage)
-            )
+            return plan.run(self.store or spare, writer, begin, threads, progress, spare)
 
     def _write(
         self,

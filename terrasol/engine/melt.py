@@ -25,7 +25,6 @@ from terrasol.engine.plan import Block, Progress, check_threads, default_threads
 from terrasol.engine.series import HORIZON_SHARE, SeriesPlan, SeriesRun, Span, look_up_sky, span_of
 from terrasol.engine.series_work import BlockWork
 from terrasol.errors import InputError
-from terrasol.files.horizons import find_horizons
 from terrasol.files.stacks import Stack, StackSink, StackVariable
 from terrasol.ground.horizon import FarHorizon
 from terrasol.kernels.melt import FLOWS
@@ -187,13 +186,14 @@ class MeltPlan:
         begin: Callable[[Sequence[Cells]], None] | None = None,
         threads: int | None = None,
         progress: Progress | None = None,
+        spare: Path | None = None,
     ) -> MeltResult:
         """Do the work.
 
         Parameters
         ----------
-        store : Path
-            Folder where horizons are kept, or found.
+        store, spare : Path
+            Folders where horizons are kept, or found; see `SeriesPlan.run`.
         sink : StackSink, optional
             Takes the days' maps.
         begin : callable, optional
@@ -208,7 +208,7 @@ class MeltPlan:
         threads = default_threads() if threads is None else threads
         check_threads(threads)
         run = _MeltRun(self, sink, threads, progress or (lambda share, stage: None))
-        return run.go(store, begin)
+        return run.go(store, spare, begin)
 
 
 @dataclass(eq=False)
@@ -300,10 +300,15 @@ class _MeltRun:
         self.zones = np.zeros((plan.days, plan.zones.count, len(QUANTITIES)))
         self.members = np.zeros((plan.days, len(plan.spread), 3))
 
-    def go(self, store: Path, begin: Callable[[Sequence[Cells]], None] | None) -> MeltResult:
+    def go(
+        self,
+        store: Path,
+        spare: Path | None,
+        begin: Callable[[Sequence[Cells]], None] | None,
+    ) -> MeltResult:
         """All stages."""
         plan = self.plan
-        ready = self._prepare(store)
+        ready = self._prepare(store, spare)
         flat = [cells for some in self.cells for cells in some]
         if not flat:
             raise InputError("the elevation model holds no known ground")
@@ -320,13 +325,12 @@ class _MeltRun:
         summary = self.stages.summary
         return MeltResult(plan, flat, self.zones, self.members, area, summary)
 
-    def _prepare(self, store: Path) -> float:
+    def _prepare(self, store: Path, spare: Path | None) -> float:
         """Horizons and cells; returns the share of the progress that is done."""
         plan, light = self.plan, self.plan.light
         ready = 0.0
         if plan.lit:
-            found = find_horizons(store, light.key)
-            horizons = found or self.stages.make_horizons(store)
+            horizons, found = self.stages.find_or_make_horizons(store, spare)
             ready = 0.0 if found else HORIZON_SHARE
             self.work = BlockWork(
                 light.elevation, light.frame, light.settings, light.heights, horizons

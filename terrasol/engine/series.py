@@ -104,7 +104,7 @@ RESOLUTION: Final = {"1h": 2.0**-3, "1d": 2.0**-10}
 HORIZON_SHARE: Final = 0.2
 """Part of the progress that the horizons take, where they must be worked out."""
 
-HELD: Final = "this run holds them beside the stack, and the next will work them out anew"
+HELD: Final = "this run holds them beside its results, and the next will work them out anew"
 """Of horizons that the store could not take."""
 
 WORDS: Final = {
@@ -380,10 +380,7 @@ class SeriesRun:
     def do(self, store: Path, spare: Path | None) -> Summary:
         """All stages."""
         plan = self.plan
-        found = find_horizons(store, plan.key)
-        damage = None if found else damage_of(store, plan.key)
-        self.summary.warnings += [damage] if damage else []
-        horizons = found or self.make_horizons(store, spare)
+        horizons, found = self.find_or_make_horizons(store, spare)
         begin = 0.0 if found else HORIZON_SHARE
         for start in range(0, plan.steps, plan.span):
             stop = min(start + plan.span, plan.steps)
@@ -394,7 +391,7 @@ class SeriesRun:
                 begin + (1.0 - begin) * start / plan.steps,
                 (1.0 - begin) * (stop - start) / plan.steps,
             )
-        self._conclude(horizons, found is not None)
+        self._conclude(horizons, found)
         return self.summary
 
     def each(
@@ -408,7 +405,16 @@ class SeriesRun:
         seconds = self.summary.seconds
         seconds[name] = round(seconds.get(name, 0.0) + time.perf_counter() - start, 3)
 
-    def make_horizons(self, store: Path, spare: Path | None = None) -> Horizons:
+    def find_or_make_horizons(self, store: Path, spare: Path | None) -> tuple[Horizons, bool]:
+        """The horizons of this ground, and whether the store had them."""
+        found = find_horizons(store, self.plan.key)
+        if found is not None:
+            return found, True
+        damage = damage_of(store, self.plan.key)
+        self.summary.warnings += [damage] if damage else []
+        return self._make_horizons(store, spare), False
+
+    def _make_horizons(self, store: Path, spare: Path | None) -> Horizons:
         """Sweep, and keep every block's horizons, if need be in a spare folder."""
         plan = self.plan
         settings, elevation = plan.settings, plan.elevation

@@ -10,6 +10,7 @@ from files.made import hills, write_raster
 
 from terrasol.cli import melt as command
 from terrasol.cli.main import main
+from terrasol.files import horizons
 from terrasol.files.horizons import VARIABLE
 from terrasol.files.stacks import open_stack
 from terrasol.practice import snow
@@ -245,3 +246,22 @@ def test_what_is_refused(dem, station, tmp_path, capsys, more, code, words):
     assert words in said
     assert "Traceback" not in said
     assert not out.exists()
+
+
+def test_a_store_that_takes_nothing_does_not_end_the_run(
+    dem, station, tmp_path, monkeypatch, capsys
+):
+    store, making = tmp_path / "store", horizons.HiddenFolder
+
+    def refuse(parent):
+        if parent == store:
+            raise PermissionError(13, "Permission denied")
+        return making(parent)
+
+    monkeypatch.setattr(horizons, "HiddenFolder", refuse)
+    words = ["--period", "2025-02-21/2025-02-22", "--no-spread", "--stack", "none", "--json"]
+    assert main(["melt", str(dem), str(station), str(tmp_path / "out"), *words, *QUICK]) == 0
+    warnings = json.loads(capsys.readouterr().out)["warnings"]
+    assert any(w.startswith(f"{store}: horizons could not be kept there") for w in warnings)
+    assert not list(store.iterdir())
+    assert not [p for p in (tmp_path / "out").iterdir() if p.name.startswith("horizons")]

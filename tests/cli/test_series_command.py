@@ -139,7 +139,7 @@ def test_a_store_that_takes_nothing_does_not_end_the_run(dem, tmp_path, store, m
     record = json.loads(capsys.readouterr().out)
     (told,) = (words for words in record["warnings"] if "horizons" in words)
     assert told.startswith(f"{store}: horizons could not be kept there (Permission denied)")
-    assert "beside the stack" in told
+    assert "beside its results" in told
     assert record["horizon_store"] is None
     with open_stack(tmp_path / "out.nc") as data:
         np.testing.assert_array_equal(data["global"].values, want)
