@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 import time
+from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
@@ -27,6 +28,7 @@ if TYPE_CHECKING:
     from terrasol.engine.parcel_figures import Asked
     from terrasol.engine.parcels import ParcelSettings, Survey
     from terrasol.files.vectors import Polygons
+    from terrasol.show.page import Page
     from terrasol.sky.clear import Air
 
 LAYER, TABLE, SIZES, ROWS, DOUBTS, COLUMNS, BOOK, SUMMARY = (
@@ -562,16 +564,20 @@ class _Job:
 
         title = Path(self.given["parcels_file"]).stem
         elevation, frame = self.ground.elevation, self.ground.frame
-        pages = [summary_page(found, elevation, frame, title=title)]
-        for k, parcel in enumerate(found.order):
-            pages.append(parcel_page(found, parcel, elevation, frame, title=title))
-            move((k + 1) / len(found.parcels))
+
+        def pages() -> Iterator[Page]:
+            """One after the other, so that no more than one is in memory."""
+            yield summary_page(found, elevation, frame, title=title)
+            for k, parcel in enumerate(found.order):
+                yield parcel_page(found, parcel, elevation, frame, title=title)
+                move((k + 1) / len(found.parcels))
+
         if BOOK in files:
-            delivery.write_bytes(BOOK, book(pages, Title=title))
+            delivery.write_bytes(BOOK, book(pages(), Title=title))
             return
         names = dict(zip((p.name for p in found.parcels), _sheets(files), strict=True))
         drawn = [SUMMARY, *(names[parcel.name] for parcel in found.order)]
-        for name, page in zip(drawn, pages, strict=True):
+        for name, page in zip(drawn, pages(), strict=True):
             delivery.write_bytes(name, page.png(2.0, Title=title))
 
 

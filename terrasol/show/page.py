@@ -10,7 +10,7 @@ from __future__ import annotations
 import io
 import unicodedata
 from bisect import bisect_right
-from collections.abc import Sequence
+from collections.abc import Iterable
 from contextlib import suppress
 from functools import cache, lru_cache
 from pathlib import Path
@@ -207,7 +207,7 @@ class Page:
         return out.getvalue()
 
 
-def book(pages: Sequence[Page], **metadata: str) -> bytes:
+def book(pages: Iterable[Page], **metadata: str) -> bytes:
     """Bind sheets to one PDF file, one page each; without a date, as `Page.pdf`."""
     out = io.BytesIO()
     with PdfPages(out, metadata={**metadata, "CreationDate": None}) as bound:
