@@ -30,8 +30,9 @@ from terrasol.engine.uncertainty import doubts_of_error
 from terrasol.engine.windows import collect
 from terrasol.errors import SettingError
 from terrasol.files.vectors import Polygons
+from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
-from terrasol.ground.frame import make_frame
+from terrasol.ground.frame import Frame, make_frame
 from terrasol.ground.grain import coarsened
 from terrasol.ground.uncertainty import DemError
 from terrasol.light.hours import HoursSettings, TimeTables
@@ -260,6 +261,7 @@ def survey(
         Parcels outside the raster or on void ground; a raster that cannot be placed.
     """
     told = progress or (lambda share, stage: None)
+    scene_of = _once(scene_of)
     part = 1.0 if settings.error is None else 0.3
     looks, levels, warnings = _looks(
         elevation, polygons, settings, scene_of, threads, partial(_told_part, told, 0.0, 0.9 * part)
@@ -314,6 +316,19 @@ def _looks(
         frame = make_frame(ground.shape, ground.transform, ground.crs)
         looks.append((float(np.sqrt(np.prod(frame.cell_size))), pieces))
     return looks, levels, warnings
+
+
+def _once(scene_of: SceneOf) -> SceneOf:
+    """Make the scene of a grid once: its rasters may be large."""
+    made: dict[Any, Scene] = {}
+
+    def scene(elevation: Elevation, frame: Frame) -> Scene:
+        grid = elevation.shape, elevation.transform
+        if grid not in made:
+            made[grid] = scene_of(elevation, frame)
+        return made[grid]
+
+    return scene
 
 
 def _doubts_of_size(parcels: Sequence[Parcel]) -> list[str]:

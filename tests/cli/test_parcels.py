@@ -8,9 +8,11 @@ import json
 import geopandas
 import numpy as np
 import pytest
+import rasterio
 import shapely
 from engine.made_parcels import LEFT, TOP, UTM, plane
 from files.made import write_raster
+from rasterio import Affine
 
 from terrasol.cli.main import main
 from terrasol.cli.parcels import parcels, sheet_names
@@ -203,6 +205,33 @@ def test_a_measured_sky_and_a_season_of_its_own(places, tmp_path):
     assert float(row["irradiation_2024_05_mj_m2_slope"]) < 0.75 * float(
         bright["irradiation_2024_05_mj_m2_slope"]
     )
+
+
+def test_ground_beyond_and_trees_above_take_sun(places, tmp_path):
+    """A ridge of 400 m south of the raster, and trees of 30 m south of the first parcel."""
+    dem, shapes, _ = places
+    heights = np.full((60, 60), 480.0)
+    heights[44:] = 900.0  # 400 m and more south of the raster's middle
+    wide = Affine(40, 0, LEFT - 800, 0, -40, TOP + 800)
+    far = write_raster(tmp_path / "far.tif", heights, transform=wide, crs=UTM, unit="metre")
+    with rasterio.open(dem) as source:
+        trees, grid = source.read(1), source.transform
+    trees[47:52, 20:40] += 30.0
+    dsm = write_raster(tmp_path / "dsm.tif", trees, transform=grid, crs=UTM, unit="metre")
+    seasons = []
+    for name, asked in (
+        ("open", []),
+        ("far", ["--far", str(far)]),
+        ("trees", ["--surface", str(dsm)]),
+    ):
+        plain = [*QUICK, "--sheets", "none", "--coarser", "2", *asked]
+        assert main(["parcels", str(dem), str(shapes), str(tmp_path / name), *plain]) == 0
+        sizes = rows_of(tmp_path / name / "cell_sizes.csv")
+        mine = [row for row in sizes if row["parcel"] == "Lower"]
+        seasons.append([float(row["sun_hours_m12_h"]) for row in mine])
+    for shaded in seasons[1:]:
+        assert shaded[0] < 0.9 * seasons[0][0]
+        assert shaded[1] < 0.9 * seasons[0][1]
 
 
 @pytest.mark.parametrize(
