@@ -72,9 +72,14 @@ class DemError:
     def __post_init__(self) -> None:
         """Refuse what makes no sense."""
         if not 0.0 < self.rmse <= LONGEST:
-            raise SettingError(f"the RMSE of heights must be over 0 m; got {self.rmse:g}")
+            raise SettingError(
+                f"the RMSE of heights must be over 0 and at most {LONGEST:,.0f} m;"
+                f" got {self.rmse:g}"
+            )
         if self.range is not None and not 0.0 <= self.range <= LONGEST:
-            raise SettingError(f"the range of the error must be 0 m or more; got {self.range:g}")
+            raise SettingError(
+                f"the range of the error must be 0 to {LONGEST:,.0f} m; got {self.range:g}"
+            )
         if not 2 <= self.realisations <= MOST_REALISATIONS:
             raise SettingError(
                 f"the realisations must be 2 to {MOST_REALISATIONS}; got {self.realisations}"

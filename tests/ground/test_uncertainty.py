@@ -113,3 +113,9 @@ def test_refuses_a_draw_that_is_none(more):
 def test_refuses_a_range_that_would_not_fit():
     with pytest.raises(SettingError, match="range"):
         next(error_fields(DemError(1.0, 1e6), SHAPE, (1.0, 1.0)))
+
+
+@pytest.mark.parametrize("text", ["1e9", "0.5,1e7"])
+def test_too_much_is_told_what_is_most(text):
+    with pytest.raises(SettingError, match="1,000,000 m; got 1e"):
+        parse_dem_error(text)
