@@ -101,8 +101,9 @@ def draw_skyline(
     for path in paths:
         _draw_path(panel, path, middle)
     _draw_hours(panel, hour_paths, middle)
+    before = None
     for path in paths:
-        name = _name(panel, path, middle) if named else None
+        name = before = _name(panel, path, middle, before) if named else None
         if clock:
             _mark_clock(panel, path, middle, name)
     _compass(panel, degrees=named)
@@ -163,11 +164,11 @@ def _at(hours: Values, hour: float) -> list[int]:
 
 
 def _mark_clock(
-    panel: Panel, path: Track, middle: float, named: tuple[float, float] | None
+    panel: Panel, path: Track, middle: float, named: tuple[float, float, float] | None
 ) -> None:
     """Open dots at the full hours of the clock, named where there is room.
 
-    `named` is the middle and half the width of the path's own name [pixels].
+    `named` is what `_name` gave of the path's own name: its middle and half its width [pixels].
     """
     last, tick = -np.inf, panel.tick * 0.9
     for hour in range(-24, 49):
@@ -189,19 +190,26 @@ def _mark_clock(
                 last = x
 
 
-def _name(panel: Panel, path: Track, middle: float) -> tuple[float, float] | None:
-    """Write the day below its path's highest point; return the middle and half the width."""
+def _name(
+    panel: Panel, path: Track, middle: float, before: tuple[float, float, float] | None
+) -> tuple[float, float, float] | None:
+    """Write the day below its path's highest point; return its middle, half its width and its y.
+
+    It goes to the right of the name before, if that would lie under it.
+    """
     if not path.elevation.size:
         return None
     top = int(np.argmax(path.elevation))
     x, y = panel.place(float(_turned(path.azimuth[top], middle)), float(path.elevation[top]))
     name = f"{path.day.day} {MONTH_NAMES[path.day.month - 1]}"
     half = text_width(name, panel.tick, bold=True) / 2.0
+    if before is not None and abs(y - before[2]) < 1.2 * panel.tick:
+        x, y = before[0] + before[1] + half, before[2]
     x = float(np.clip(x, panel.x + half, panel.x + panel.width - half))
     panel.page.text(
         x, y + 1.4 * panel.tick, name, panel.tick, bold=True, across="center", halo=PAPER
     )
-    return x, half + panel.tick
+    return x, half + panel.tick, y
 
 
 def _compass(panel: Panel, degrees: bool) -> None:
