@@ -175,6 +175,8 @@ def _check(around: Around, asked: AskedSky, given: dict[str, Any]) -> None:
         raise click.UsageError("--clear-sky-index has no hours: melt takes the light of STATION")
     if given["horizon_store"] and given["no_horizon_store"]:
         raise click.UsageError("--horizon-store and --no-horizon-store exclude each other")
+    if given["fit_numbers"] is not None and not given["fit_numbers"].strip(" ,"):
+        raise click.UsageError("--fit-numbers names no number: name two or three, joined by commas")
     if (given["fit"] or given["fit_numbers"]) and given["from_state"]:
         raise click.UsageError(
             "--fit wants a season from bare ground on; a state goes on with the numbers it has"

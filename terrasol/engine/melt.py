@@ -101,6 +101,8 @@ class MeltPlan:
         Members beside the model, for the spread of the basin's melt.
     season_start : datetime64[D]
         First day of the season, from which the day numbers of peak and melt-out count.
+    sky : mapping
+        What else made the light of the hours, for the saved state to hold to.
     """
 
     light: SeriesPlan
@@ -109,6 +111,7 @@ class MeltPlan:
     zones: Zones
     spread: tuple[SnowModel, ...] = ()
     season_start: np.datetime64 = field(default_factory=lambda: np.datetime64("NaT"))
+    sky: Mapping[str, Any] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
         """Begin the season with the plan, unless told."""

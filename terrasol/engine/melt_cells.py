@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from terrasol.engine.ground_work import BlockGround, Ground
 from terrasol.engine.plan import Block
 from terrasol.engine.series_work import BlockWork, Part, SeriesBlock
-from terrasol.errors import InputError
+from terrasol.errors import InputError, SettingError
 from terrasol.ground.frame import Frame
 from terrasol.ground.surface import slope_and_aspect
 from terrasol.kernels.melt import FLOWS, zone_sums
@@ -26,6 +26,9 @@ QUANTITIES: Final = (*FLOWS, "snow_water", "snow_covered")
 
 LIGHT_OF: Final = {"enhanced": "global", "hock": "beam"}
 """The light that each melt model wants; degree-days want none."""
+
+MOST_BANDS: Final = 100
+"""Bands of height that tables and pictures hold (judgement)."""
 
 FACINGS: Final = (*SECTORS, "flat")
 """Sectors of aspect of the zones, level ground last."""
@@ -73,10 +76,17 @@ class Zones:
         ------
         InputError
             There is none.
+        SettingError
+            More than 100 bands.
         """
         known = known_ground(heights, share)
         low, high = float(heights[known].min()), float(heights[known].max())
         first, last = np.floor(low / step), np.floor(high / step) + 1.0
+        if not last - first <= MOST_BANDS:
+            raise SettingError(
+                f"bands of {step:g} m from {low:.0f} to {high:.0f} m are {last - first:.0f}, and"
+                f" {MOST_BANDS} are the most: make them wider"
+            )
         return cls(step * np.arange(first, last + 1.0), share, name)
 
     def place(

@@ -54,6 +54,9 @@ from terrasol.sky.station import Station
 STATION_SECONDS = 60.0
 """Time step of the sun by which a station's sky is told from its series."""
 
+LYING_MM = 10.0
+"""Snow water observed [mm] from which the ground is not bare (judgement: a pillow drifts)."""
+
 TERRAIN_ALBEDO = 0.2
 """Stands in the settings of the light; what the terrain sends back is worked out day by day from
 its own snow."""
@@ -181,8 +184,22 @@ def prepare(
         zones_for(elevation.heights, settings.bands, share, name),
         tuple(model.spread()) if settings.spread else (),
         np.datetime64(state.season_start) if state is not None else dates[0],
+        {"air": air.record(), "decomposition": settings.decomposition}
+        if model.melt == "enhanced" else {},
+    )  # fmt: skip
+    doubts = (*mended.doubts, *start_doubts(station.name, check))
+    return Prepared(plan, station, record, (*warnings, *doubts), check)
+
+
+def start_doubts(name: str, check: StationCheck | None) -> tuple[str, ...]:
+    """Says so if a season that begins on bare ground begins where snow was observed."""
+    if check is None or not check.observed[0] >= LYING_MM:
+        return ()
+    return (
+        f"{name}: {check.observed[0]:.0f} mm of snow water were observed on the first day,"
+        f" {check.dates[0]}, and the run begins on bare ground: begin before the first snow, or go"
+        " on from a state (--from-state)",
     )
-    return Prepared(plan, station, record, (*warnings, *mended.doubts), check)
 
 
 def _sky(
@@ -317,7 +334,7 @@ def season_numbers(result: MeltResult, tables: SeasonTables) -> dict[str, Any]:
     balance = result.balance()
     return {
         "area": tables.name,
-        "area_km2": round(area / 1e6, 4),
+        "area_km2": float(f"{area / 1e6:.6g}"),
         "days": int(tables.dates.size),
         "first_day": str(tables.dates[0]),
         "last_day": str(tables.dates[-1]),

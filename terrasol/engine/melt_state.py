@@ -29,6 +29,7 @@ def head_of(plan: MeltPlan, day: np.datetime64) -> StateHead:
         "station_height_m": plan.weather.height,
         "diffuse": settings.diffuse,
         "substep_seconds": settings.substep_seconds,
+        **plan.sky,
     }
     return StateHead(str(day), str(plan.season_start), plan.light.key, record, len(plan.models))
 

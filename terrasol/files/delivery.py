@@ -127,7 +127,8 @@ class Delivery:
             for name in (*superseded, *self.names):
                 place = self.folder / name
                 for ending in ("", *LEFTOVERS):
-                    if _is_file(old := Path(f"{place}{ending}")):
+                    old = Path(f"{place}{ending}")
+                    if _is_file(old) or (name not in self.names and _is_stack(old)):
                         move(old, self.staged(f"old-{old.name}"))
                 if name in self.names:
                     move(self.staged(name), place)
@@ -175,7 +176,7 @@ def superseded_files(
     Returns
     -------
     names : list of str
-        Of files that the folder's own record lists, and that are there.
+        Of files and Zarr stacks that the folder's own record lists, and that are there.
     warnings : list of str
         Says so if there is a record that cannot be understood; then nothing is listed.
     """
@@ -193,7 +194,18 @@ def superseded_files(
             " left in the folder are still there"
         ]
     gone = sorted(listed.difference(names))
-    return [name for name in gone if _is_file(Path(folder, name))], []
+    places = [(name, Path(folder, name)) for name in gone]
+    return [name for name, place in places if _is_file(place) or _is_stack(place)], []
+
+
+def _is_stack(path: Path) -> bool:
+    """Whether there is a Zarr stack: a folder that says so, by name and by what it holds."""
+    return (
+        path.suffix == ".zarr"
+        and path.is_dir()
+        and not path.is_symlink()
+        and any((path / name).is_file() for name in (".zgroup", "zarr.json"))
+    )
 
 
 def _is_file(path: Path) -> bool:

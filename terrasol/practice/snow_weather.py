@@ -23,6 +23,10 @@ FILL_HOURS: Final = 6.0
 NAMED: Final = 3
 """Gaps named in a message."""
 
+WARM_SNOW: Final = (10.0, 12.0)
+"""Observed snow water [mm] of days whose air cannot have this mean temperature [degC]: at it
+3 to 6 cm of snow water would melt in a day (judgement, no source)."""
+
 HOUR: Final = 3600
 
 WORDS: Final = {"temperature": "interpolated", "precipitation": "taken for dry"}
@@ -104,11 +108,28 @@ def hourly_weather(
         for name in found
         if count[name]
     )
+    doubts += _too_warm(station, edges, found["temperature"])
     albedo = _daily_albedo(station, edges) if measured_albedo else None
     weather = Weather(
         edges, months, found["temperature"], found["precipitation"], station.height, albedo
     )
     return Mended(weather, count, doubts)
+
+
+def _too_warm(
+    station: Station, edges: NDArray[np.datetime64], air: NDArray[np.float64]
+) -> tuple[str, ...]:
+    """Says so if the air is far too warm for the snow that was observed: another unit, likely."""
+    if "snow_water" not in station.values:
+        return ()
+    lies = daily_snow_water(station, edges) >= WARM_SNOW[0]
+    mean = float(air[lies].mean()) if lies.any() else -np.inf
+    if mean < WARM_SNOW[1]:
+        return ()
+    return (
+        f"{station.name}: while snow was observed the air had {mean:.0f} degC in the mean: are its"
+        " temperature and snow water in the units that are stated (degF, inch)?",
+    )
 
 
 def whole_days(station: Station, longitude: float) -> Period:

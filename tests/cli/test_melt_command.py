@@ -167,6 +167,67 @@ def test_an_overwritten_run_keeps_its_stack(dem, station, tmp_path, capsys):
     assert "melt_mm_low" not in (out / "basin.csv").read_text()
     assert main([*run, "--overwrite", "--stack", "zarr"]) == 0
     assert (out / "days.zarr").is_dir()
+    (out / "days.zarr" / "mine.txt").write_text("kept with the stack, goes with it")
+    assert main([*run, "--overwrite", "--stack", "none"]) == 0
+    assert not (out / "days.zarr").exists()
+    assert json.loads((out / "run.json").read_text())["removed"] == ["days.zarr"]
+
+
+def test_a_folder_of_that_name_that_is_no_stack_stays(dem, station, tmp_path):
+    out = tmp_path / "out"
+    run = ["melt", str(dem), str(station), str(out), "--melt", "degree-days", "--no-spread"]
+    run += ["--period", "2025-03-01/2025-03-02", "--quiet", "--stack"]
+    assert main([*run, "zarr"]) == 0
+    (out / "days.zarr").rename(out / "other")
+    (out / "days.zarr").mkdir()
+    (out / "days.zarr" / "mine.txt").write_text("mine")
+    assert main([*run, "none", "--overwrite"]) == 0
+    assert (out / "days.zarr" / "mine.txt").read_text() == "mine"
+
+
+def test_what_is_asked_for_and_cannot_be(dem, station, tmp_path, capsys):
+    out = tmp_path / "out"
+    run = ["melt", str(dem), str(station), str(out), "--melt", "degree-days", "--dry-run"]
+    assert main([*run, "--fit-numbers", ""]) == 2
+    assert "names no number" in capsys.readouterr().err
+    assert main([*run, "--bands", "0.001"]) == 2
+    assert "make them wider" in capsys.readouterr().err
+
+
+def test_a_run_that_begins_amid_observed_snow_says_so(dem, station, tmp_path, capsys):
+    out = tmp_path / "out"
+    run = ["melt", str(dem), str(station), str(out), "--melt", "degree-days", "--dry-run"]
+    assert main([*run, "--period", "2025-03-01/2025-03-10"]) == 0
+    assert "the run begins on bare ground" in capsys.readouterr().out
+    assert main(run) == 0
+    assert "bare ground" not in capsys.readouterr().out
+
+
+def test_fahrenheit_taken_for_celsius_is_doubted(dem, station, tmp_path, capsys):
+    rows = [line.split(",") for line in station.read_text().splitlines()]
+    for row in rows[1:]:
+        row[2] = f"{float(row[2]) * 1.8 + 32.0:.2f}"
+    path = tmp_path / "american.csv"
+    path.write_text("\n".join(",".join(row) for row in rows) + "\n")
+    run = ["melt", str(dem), str(path), str(tmp_path / "out"), "--melt", "degree-days", "--dry-run"]
+    toml = path.with_name("american.csv.toml")
+    toml.write_text(TOML)
+    assert main(run) == 0
+    assert "degF" in capsys.readouterr().out
+    toml.write_text(TOML.replace("degC", "degF"))
+    assert main(run) == 0
+    assert "degF" not in capsys.readouterr().out
+
+
+def test_a_state_of_another_clear_air_is_refused(dem, station, tmp_path, capsys):
+    first = tmp_path / "first"
+    run = ["melt", str(dem), str(station)]
+    more = [*QUICK, "--stack", "none", "--no-spread", "--quiet"]
+    assert main([*run, str(first), "--period", "2025-02-21/2025-02-22", *more]) == 0
+    going_on = ["--from-state", str(first / "state.nc"), "--period", "2025-02-23", *more]
+    assert main([*run, str(tmp_path / "no"), *going_on, "--linke", "6"]) == 3
+    assert "linke" in capsys.readouterr().err
+    assert main([*run, str(tmp_path / "yes"), *going_on]) == 0
 
 
 def test_basin_fit_and_words(dem, station, tmp_path, capsys):
