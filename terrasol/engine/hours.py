@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from functools import partial
 from typing import Any
@@ -30,7 +30,7 @@ from terrasol.files.layers import Layer, Sink
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame, make_frame
-from terrasol.ground.sightline import Outlooks, Sightlines
+from terrasol.ground.sightline import Sightlines
 from terrasol.light.days import Days, parse_clock, parse_days, strip_days
 from terrasol.light.hours import (
     AZIMUTHS,
@@ -39,6 +39,7 @@ from terrasol.light.hours import (
     TimeTables,
     strip_hours,
 )
+from terrasol.light.irradiation import Strip
 from terrasol.light.latitudes import MIXED_BYTES
 from terrasol.sky.clear import Air
 from terrasol.sky.cloud import MonthlySky
@@ -203,7 +204,7 @@ class _HoursRun(Run):
         if days is not None:
             sights = Sightlines.over(plan.elevation, plan.frame, plan.refraction, ground.obstacles)
         names = [layer.name for layer in plan.layers]
-        work = partial(_block_hours, ground, names, tables, days, sights)
+        work = partial(_block_hours, ground, names, tables, days, sights, plan.blocks)
         totals, gaps = self._write_blocks(sink, work)
         self._conclude(ground, totals, None)
         self._tell_of_scene(gaps)
@@ -226,6 +227,7 @@ def _block_hours(
     tables: TimeTables,
     days: Days | None,
     sights: Sightlines | None,
+    windows: Mapping[Block, Sequence[Block]],
     block: Block,
 ) -> Arrays:
     """Everything that is written of one block, by layer name."""
@@ -237,7 +239,7 @@ def _block_hours(
         if "horizon_gap" in names:
             gap.append(horizon_gap(piece, strip, rows, None))
         if days is not None and sights is not None:
-            walked.append(strip_days(strip, days, _outlooks(piece, rows, sights)))
+            walked.append(_walk(piece, strip, rows, days, sights, windows[block]))
     sun, bright = np.concatenate(hours, axis=2)
     arrays: Arrays = {"sun_hours_months": sun, "bright_hours_months": bright}
     for name, months in (("sun_hours", sun), ("bright_hours", bright)):
@@ -257,14 +259,49 @@ def _block_hours(
     return arrays
 
 
-def _outlooks(piece: BlockGround, rows: range, sights: Sightlines) -> Outlooks:
-    """Some rows' cells on the ground around them."""
-    b = piece.block
-    window = (
-        slice(b.row + rows.start, b.row + rows.stop),
-        slice(b.column, b.column + b.columns),
-    )
-    return sights.outlooks(window, piece.middle, piece.beyond(rows))
+def _walk(
+    piece: BlockGround,
+    strip: Strip,
+    rows: range,
+    days: Days,
+    sights: Sightlines,
+    windows: Sequence[Block],
+) -> NDArray[np.float32]:
+    """First and last sun and what is between, see `strip_days`; NaN where it is not wanted."""
+    block = piece.block
+    here = Block(block.row + rows.start, block.column, len(rows), block.columns)
+    spans = _spans(here, windows)
+    out = np.full((4, days.declination.shape[0], *strip.heights.shape), np.nan, np.float32)
+    beyond = piece.beyond(rows) if spans else None
+    for span in spans:
+        window = (
+            slice(here.row, here.row + here.rows),
+            slice(here.column + span.start, here.column + span.stop),
+        )
+        part = None if beyond is None else np.ascontiguousarray(beyond[:, :, span])
+        views = sights.outlooks(window, piece.middle, part)
+        out[..., span] = strip_days(strip, days, views, span)
+    return out
+
+
+def _spans(here: Block, windows: Sequence[Block]) -> list[slice]:
+    """Columns, counted from the first, of some rows that meet windows, without overlaps.
+
+    Examples
+    --------
+    >>> some = [Block(0, 8, 9, 4), Block(2, 3, 2, 2), Block(4, 4, 2, 4), Block(5, 14, 1, 1)]
+    >>> _spans(Block(2, 2, 3, 16), some)
+    [slice(1, 10, None)]
+    """
+    shared = (here.shared(window) for window in windows)
+    edges = sorted((s[1].start - here.column, s[1].stop - here.column) for s in shared if s)
+    joined: list[slice] = []
+    for start, stop in edges:
+        if joined and start <= joined[-1].stop:
+            joined[-1] = slice(joined[-1].start, max(joined[-1].stop, stop))
+        else:
+            joined.append(slice(start, stop))
+    return joined
 
 
 def _longitude_from_centre(frame: Frame, block: Block) -> NDArray[np.float64]:

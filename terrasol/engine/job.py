@@ -112,8 +112,8 @@ class Plan:
         What is written.
     scene : Scene
         What stands beyond and above the raster's ground.
-    only : tuple of Block, optional
-        The blocks to do; by default all.
+    windows : tuple of Block, optional
+        The parts of the raster that are wanted; by default all of it.
     tables : SkyTables or MappedTables, optional
         Filled, and for all the raster's latitudes and heights; by default they are made.
     """
@@ -125,13 +125,22 @@ class Plan:
     settings: LightSettings | None
     layers: tuple[Layer, ...]
     scene: Scene = NO_SCENE
-    only: tuple[Block, ...] | None = None
+    windows: tuple[Block, ...] | None = None
     tables: Tables | None = None
 
-    @property
-    def blocks(self) -> list[Block]:
-        """The blocks to do."""
-        return blocks_of(self.elevation.shape) if self.only is None else list(self.only)
+    @cached_property
+    def blocks(self) -> dict[Block, list[Block]]:
+        """The blocks to do, each with the windows that meet it: itself, if all is wanted."""
+        blocks, windows = blocks_of(self.elevation.shape), self.windows
+        if windows is None:
+            return {block: [block] for block in blocks}
+        met: dict[tuple[int, int], list[Block]] = {}
+        for window in windows:
+            for row in range(window.row // BLOCK, (window.row + window.rows - 1) // BLOCK + 1):
+                last = (window.column + window.columns - 1) // BLOCK
+                for column in range(window.column // BLOCK, last + 1):
+                    met.setdefault((row * BLOCK, column * BLOCK), []).append(window)
+        return {b: met[b.row, b.column] for b in blocks if (b.row, b.column) in met}
 
     @property
     def cells(self) -> int:

@@ -29,6 +29,15 @@ class Block:
     rows: int
     columns: int
 
+    def shared(self, other: Block) -> tuple[slice, slice] | None:
+        """Rows and columns of the raster that both hold, or None."""
+        top, left = max(self.row, other.row), max(self.column, other.column)
+        bottom = min(self.row + self.rows, other.row + other.rows)
+        right = min(self.column + self.columns, other.column + other.columns)
+        if top >= bottom or left >= right:
+            return None
+        return slice(top, bottom), slice(left, right)
+
 
 def blocks_of(shape: tuple[int, int]) -> list[Block]:
     """All blocks of a raster, row by row."""

@@ -12,7 +12,7 @@ from scipy.interpolate import RegularGridInterpolator
 
 from terrasol.engine.hours import plan_hours
 from terrasol.engine.job import Plan, plan_irradiation, plan_terrain
-from terrasol.engine.plan import Block, Progress, blocks_of
+from terrasol.engine.plan import Block, Progress
 from terrasol.engine.plot_places import PLACED, Located
 from terrasol.engine.plot_settings import PlotSettings
 from terrasol.engine.plot_table import CELL, ERROR, GREATEST, KNOWN, LEAST, MEAN, POINT, Told
@@ -234,14 +234,15 @@ class CellSink:
         self._latitude = RegularGridInterpolator((frame.rows, frame.columns), frame.latitude)
 
     def carry_out(self, threads: int | None, progress: Progress) -> Any:
-        """Run the plan on the blocks that are asked for; its summary."""
-        only = [b for b in blocks_of(self.plan.elevation.shape) if self._asked(b)]
-        summary = replace(self.plan, only=tuple(only)).run(self, threads, progress)
+        """Run the plan where it is asked for; its summary."""
+        windows = [
+            window
+            for rows, columns, *_ in self.shares.blocks.values()
+            for window in _runs(rows, columns)
+        ]
+        summary = replace(self.plan, windows=tuple(windows)).run(self, threads, progress)
         self._flush()
         return summary
-
-    def _asked(self, block: Block) -> bool:
-        return (block.row, block.column) in self.shares.blocks
 
     def open(self, layer: Layer) -> None:
         """Nothing needs room."""
@@ -263,3 +264,18 @@ class CellSink:
         latitude = self._latitude(np.stack([rows, columns], axis=-1))
         self.gathered.add(which, cell, weight, self.values(self._bands, height, latitude))
         self._block, self._bands = None, {}
+
+
+def _runs(rows: NDArray[np.int64], columns: NDArray[np.int64]) -> list[Block]:
+    """Cells in reading order, as windows of one row.
+
+    Examples
+    --------
+    >>> _runs(np.array([4, 4, 4, 5]), np.array([2, 3, 7, 8]))[:2]
+    [Block(row=4, column=2, rows=1, columns=2), Block(row=4, column=7, rows=1, columns=1)]
+    """
+    ends = np.flatnonzero((np.diff(rows) != 0) | (np.diff(columns) != 1)) + 1
+    return [
+        Block(int(row[0]), int(column[0]), 1, row.size)
+        for row, column in zip(np.split(rows, ends), np.split(columns, ends), strict=True)
+    ]

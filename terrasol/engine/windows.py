@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from terrasol.engine.job import Plan, Summary
-from terrasol.engine.plan import Block, Progress, blocks_of
+from terrasol.engine.plan import Block, Progress
 from terrasol.errors import SettingError
 from terrasol.files.layers import Layer
 
@@ -57,9 +57,8 @@ def collect(
         than one thread.
     """
     _check(plan, windows, layers)
-    only = tuple(b for b in blocks_of(plan.elevation.shape) if any(_common(b, w) for w in windows))
     sink = _WindowSink(windows, layers)
-    summary = replace(plan, only=only).run(sink, threads, progress)
+    summary = replace(plan, windows=tuple(windows)).run(sink, threads, progress)
     return sink.arrays, summary
 
 
@@ -78,16 +77,6 @@ def _check(plan: Plan, windows: Sequence[Window], layers: Sequence[str] | None) 
     unknown = set(layers or ()) - {layer.name for layer in plan.layers}
     if unknown:
         raise SettingError(f"the plan has no layer {sorted(unknown)[0]}")
-
-
-def _common(one: Block, other: Block) -> tuple[slice, slice] | None:
-    """Rows and columns of the raster that two rectangles share, or None."""
-    top, left = max(one.row, other.row), max(one.column, other.column)
-    bottom = min(one.row + one.rows, other.row + other.rows)
-    right = min(one.column + one.columns, other.column + other.columns)
-    if top >= bottom or left >= right:
-        return None
-    return slice(top, bottom), slice(left, right)
 
 
 def _inside(block: Block, shared: tuple[slice, slice]) -> tuple[slice, slice]:
@@ -120,7 +109,7 @@ class _WindowSink:
         """Take one block."""
         block = Block(row, column, values.shape[1], values.shape[2])
         for window, arrays in zip(self.windows, self.arrays, strict=True):
-            shared = _common(block, window)
+            shared = block.shared(window)
             if name in arrays and shared is not None:
                 target, source = _inside(window, shared), _inside(block, shared)
                 arrays[name][:, *target] = values[:, *source]

@@ -333,7 +333,9 @@ def _runs(
     return runs, ranges
 
 
-def strip_days(strip: Strip, days: Days, outlooks: Outlooks | None = None) -> NDArray[np.float32]:
+def strip_days(
+    strip: Strip, days: Days, outlooks: Outlooks | None = None, columns: slice | None = None
+) -> NDArray[np.float32]:
     """First and last sun, time in the sun and interruptions of each day.
 
     Parameters
@@ -345,6 +347,9 @@ def strip_days(strip: Strip, days: Days, outlooks: Outlooks | None = None) -> ND
     outlooks : Outlooks, optional
         The strip's cells on the ground around them, over which crossings are settled; without,
         the strip's horizon is taken at its word.
+    columns : slice, optional
+        Of the strip, all that is wanted; those of `outlooks`. What comes out of a cell does not
+        depend on it.
 
     Returns
     -------
@@ -355,9 +360,11 @@ def strip_days(strip: Strip, days: Days, outlooks: Outlooks | None = None) -> ND
     known = strip.heights[np.isfinite(strip.heights)]
     height = strip.datum + (float(known.mean()) if known.size else 0.0)
     path = days.at(strip.middle, height)
-    rows, columns = strip.heights.shape
-    views = outlooks or Outlooks.none((rows, columns))
-    out = np.empty((rows, path.suns.shape[0], columns, 4), np.float32)
+    if columns is not None:
+        strip = strip.thin(columns.start, 1, columns.stop)
+    shape = strip.heights.shape
+    views = outlooks or Outlooks.none(shape)
+    out = np.empty((shape[0], path.suns.shape[0], shape[1], 4), np.float32)
     walk_days(
         strip.horizon,
         strip.normal,

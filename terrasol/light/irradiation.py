@@ -52,9 +52,9 @@ class Strip:
         """Latitude less that of a table, at the first cell and a row and a column [radians]."""
         return np.radians(np.array(self.latitude) - (mixed.latitude, 0.0, 0.0))
 
-    def thin(self, first: int, stride: int) -> Strip:
+    def thin(self, first: int, stride: int, stop: int | None = None) -> Strip:
         """Every `stride`-th column, from the first wanted on."""
-        columns = np.s_[..., first::stride]
+        columns = np.s_[..., first:stop:stride]
         latitude, by_row, by_column = self.latitude
         return Strip(
             np.ascontiguousarray(self.horizon[columns]),
