@@ -317,6 +317,7 @@ def draw_legend(
     step: float | None,
     void: bool,
     colour_map: str = COLOUR_MAP,
+    void_words: str = "no data",
 ) -> None:
     """Name what the map shows beside colours, about the height y.
 
@@ -328,6 +329,8 @@ def draw_legend(
         Distance between contour lines [m]; None without any.
     colour_map : str
         Of the map.
+    void_words : str
+        What ground without a value is.
     """
     entries: list[tuple[Callable[..., None], str]] = []
     if relief:
@@ -335,7 +338,7 @@ def draw_legend(
     if step is not None:
         entries.append((_contour_swatch, f"contours every {step:.6g} m"))
     if void:
-        entries.append((_void_swatch, "no data"))
+        entries.append((_void_swatch, void_words))
     for k in range(0, len(entries), 2):
         column = entries[k : k + 2]
         for (draw, text), level in zip(column, (y - 13, y + 13), strict=False):

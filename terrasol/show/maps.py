@@ -52,6 +52,7 @@ def overview_png(
     frame: Frame | None = None,
     colour_map: str = key.COLOUR_MAP,
     first_day: np.datetime64 | None = None,
+    void_words: str = "no data",
 ) -> bytes:
     """Draw the overview map of a run.
 
@@ -80,6 +81,8 @@ def overview_png(
         Of matplotlib; one whose lightness rises evenly.
     first_day : numpy.datetime64[D], optional
         Where the values are days since one: the key then names dates.
+    void_words : str
+        What ground without a value is, in the legend.
 
     Returns
     -------
@@ -99,7 +102,7 @@ def overview_png(
     blocks = _blocks(values, scale, quantity, unit, mean, monthly_means, notes)
     page, places = _lay_out(picture, blocks)
     _write_head_and_foot(page, title, subtitle, elevation, frame)
-    _draw_map(page, picture, elevation, values, scale)
+    _draw_map(page, picture, elevation, values, scale, void_words)
     for (draw, _), (x, y) in zip(blocks, places, strict=True):
         draw(page, x, y)
     return page.png(Title=title, Software=f"terrasol {__version__}")
@@ -175,7 +178,7 @@ def _write_head_and_foot(page, title, subtitle, elevation, frame) -> None:
     page.text(left, page.height - 26, clip(foot, key.SMALL, room), key.SMALL, colour=SOFT)
 
 
-def _draw_map(page, picture, elevation, values, scale) -> None:
+def _draw_map(page, picture, elevation, values, scale, void_words) -> None:
     """The map, its rim, and the strip below it."""
     left, top = corner = (MARGIN + LATITUDES, HEADER)
     height, width = picture.shape
@@ -195,5 +198,5 @@ def _draw_map(page, picture, elevation, values, scale) -> None:
     relief = bool(np.any(np.abs(brightness[picture.ground] - 0.5) > 0.01))
     key.draw_legend(
         page, x + 36, y, relief=relief, step=step, void=bool(void.any()),
-        colour_map=scale.colour_map,
+        colour_map=scale.colour_map, void_words=void_words,
     )  # fmt: skip

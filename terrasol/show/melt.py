@@ -29,6 +29,9 @@ MELT, RUNOFF, WATER = "#c4633f", "#24262b", "#41769f"
 COVER = "#9a9d93"
 """Colours: cold for what falls and lies, warm for what melts."""
 
+MOST_NAMED: Final = 22
+"""Bands that the key has room for."""
+
 LATE_IS_PALE: Final = "GnBu_r"
 """Colours of melt-out: dark where the ground is bare early, pale where snow lies long."""
 
@@ -131,6 +134,7 @@ def melt_out_png(
     notes: Sequence[str],
 ) -> bytes:
     """Draw the first day that ended without snow after the greatest, as a map of dates."""
+    unknown = bool(np.isnan(elevation.heights).any())
     return overview_png(
         elevation,
         days,
@@ -142,6 +146,7 @@ def melt_out_png(
         frame=frame,
         colour_map=LATE_IS_PALE,
         first_day=first_day,
+        void_words="no snow came, or it still lies" + (", or no data" if unknown else ""),
     )
 
 
@@ -287,10 +292,11 @@ def _key(page: Page, y: float, entries: Sequence[tuple[str, str, str]]) -> None:
 
 
 def _draw_band_key(page, tables, kept, colours) -> None:
-    """Bands from the highest down, with their area."""
+    """Bands from the highest down, with their area; every so many of them where they are many."""
     x, y = WIDTH - MARGIN - 128, float(HEAD)
     page.text(x, y - 18, "Height, m", SMALL, bold=True)
-    for b, colour in reversed(list(zip(kept, colours, strict=False))):
+    step = -(-len(kept) // MOST_NAMED)
+    for b, colour in list(zip(kept, colours, strict=False))[::-step]:
         page.lines([[(x, y + 8), (x + 24, y + 8)]], colour=colour, line=3.0)
         low, high = tables.edges[b], tables.edges[b + 1]
         page.text(x + 32, y + 14, f"{low:g}–{high:g}", SMALL)

@@ -71,6 +71,14 @@ def test_bands_without_ground_are_not_drawn(said, days):
     assert said.count("0.90 km²") == 3
 
 
+def test_many_bands_are_named_here_and_there_within_the_page(said):
+    png = show.bands_png(season(20, bands=91), title="t", subtitle="s", notes=NOTES)
+    assert png.startswith(b"\x89PNG")
+    named = [word for word in said if "–" in word]
+    assert 11 <= len(named) <= show.MOST_NAMED
+    assert "44500–45000" in named
+
+
 def test_map_of_melt_out_names_dates(said, metric_ground):
     y, x = np.mgrid[0:40, 0:50].astype(float)
     ground = metric_ground(1000.0 + 5.0 * x, 50.0)
@@ -82,6 +90,8 @@ def test_map_of_melt_out_names_dates(said, metric_ground):
     assert png.startswith(b"\x89PNG")
     assert "1 Feb" in said
     assert "15 Mar" in said
+    assert "no snow came, or it still lies" in said
+    assert "no data" not in said
     assert any(word.startswith("mean ") for word in said)
 
 
