@@ -130,6 +130,8 @@ class StateReader:
 
     def __enter__(self) -> Self:
         """Open the file and read its head."""
+        if not Path(self.path).exists():
+            raise InputError(f"{self.path}: there is no such file: check its name")
         with _refusing(self.path):
             self._file = h5netcdf.File(self.path, "r")
         with _refusing(self.path):

@@ -192,6 +192,8 @@ def test_what_is_asked_for_and_cannot_be(dem, station, tmp_path, capsys):
     assert "names no number" in capsys.readouterr().err
     assert main([*run, "--bands", "0.001"]) == 2
     assert "make them wider" in capsys.readouterr().err
+    assert main([*run, "--from-state", str(tmp_path / "gone.nc")]) == 3
+    assert "gone.nc: there is no such file" in capsys.readouterr().err
 
 
 def test_a_run_that_begins_amid_observed_snow_says_so(dem, station, tmp_path, capsys):
