@@ -26,6 +26,16 @@ and 2, nearly half more time would mend one first sun in 40,000 (docs/validation
 DOUBT_BY_CURVE = 1.0
 """What is added to that, in second differences of the stored horizon between azimuths."""
 
+STEEP = 1.5
+"""Tangent a radian of azimuth at which the stored horizon counts as an edge: what makes it is a
+wall or a cliff that rises by more than this over the cells between two nodes, which the far field
+smears over the sectors around. With 0.7 the sample valley takes twice as long
+(docs/performance.md)."""
+
+SMEAR = 0.2
+"""Radians to either side over which the far field may smear an edge: as far apart as it is asked,
+NODE_STEP, by the nearest that is in it, FAR_FROM (ground/horizon.py)."""
+
 DEPTH = 0.006
 """Tangent up to which the clearance around a crossing is asked for."""
 
@@ -339,6 +349,27 @@ def _doubts(rim, doubt):
             other = abs(here[c] - there[c] - there[c] + behind[c])
             most = one if one > other else other
             doubt[a, c] = np.float32(DOUBT) + np.float32(DOUBT_BY_CURVE) * most
+    _doubt_edges(rim, doubt)
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _doubt_edges(rim, doubt):
+    """Doubt all that the stored horizon rises around an edge, which may stand elsewhere."""
+    azimuths = doubt.shape[0]
+    sector = 2.0 * np.pi / azimuths
+    reach = int(np.ceil(SMEAR / sector))
+    steep = np.float32(STEEP * sector)
+    for a in range(azimuths):
+        for c in range(doubt.shape[1]):
+            if abs(rim[a + 1, c] - rim[a, c]) <= steep:
+                continue
+            least, most = rim[a, c], rim[a, c]
+            for k in range(a - reach, a + reach + 2):
+                here = rim[k % azimuths, c]
+                least, most = min(least, here), max(most, here)
+            rise = most - least
+            for k in range(a - reach, a + reach + 1):
+                doubt[k % azimuths, c] = max(doubt[k % azimuths, c], rise)
 
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=FAST, inline="always")

@@ -126,6 +126,7 @@ def test_a_run_and_all_of_its_files(dem, station, tmp_path, capsys):
         assert source.units[0] == "days since 2025-03-01 00:00:00"
 
 
+@pytest.mark.heavy
 def test_the_whole_is_its_parts_and_overwrites_them(dem, station, tmp_path, capsys):
     """A daily update: the state goes on with its own numbers, fitted or given."""
     common = [*QUICK, "--stack", "none", "--quiet"]
@@ -153,6 +154,7 @@ def test_the_whole_is_its_parts_and_overwrites_them(dem, station, tmp_path, caps
     assert not (tmp_path / "no").exists()
 
 
+@pytest.mark.heavy
 def test_an_overwritten_run_keeps_its_stack(dem, station, tmp_path, capsys):
     out = tmp_path / "out"
     run = ["melt", str(dem), str(station), str(out), "--melt", "degree-days", "--no-spread"]

@@ -150,6 +150,7 @@ def test_summary_is_for_people(places, tmp_path, capsys):
     ]  # fmt: skip
 
 
+@pytest.mark.heavy
 def test_pictures_one_a_parcel(places, tmp_path):
     dem, shapes, _ = places
     out = tmp_path / "o"
@@ -179,6 +180,7 @@ def test_json_on_stdout_and_dry_run(places, tmp_path, capsys):
     assert found["slope_10_to_15_percent_ha_map"] == pytest.approx(1.1 * 1.2 * 0.9996**-2, rel=1e-4)
 
 
+@pytest.mark.heavy
 def test_a_measured_sky_and_a_season_of_its_own(places, tmp_path):
     dem, shapes, _ = places
     out = tmp_path / "o"
@@ -207,6 +209,7 @@ def test_a_measured_sky_and_a_season_of_its_own(places, tmp_path):
     )
 
 
+@pytest.mark.heavy
 def test_ground_beyond_and_trees_above_take_sun(places, tmp_path):
     """A ridge of 400 m south of the raster, and trees of 30 m south of the first parcel."""
     dem, shapes, _ = places

@@ -276,6 +276,7 @@ def test_plots_of_a_vector_file(dem, plots, done, tmp_path):
     assert found["cover"].tolist() == same["cover"].tolist()
 
 
+@pytest.mark.heavy
 def test_under_a_measured_sky(dem, plots, done, tmp_path, capfd):
     station = str(Path(__file__).parents[2] / "sample_dem" / "station.csv")
     asked = ["--station", station, "--predictors", "irradiation,sun_hours", "--radii", "none"]

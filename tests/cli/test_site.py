@@ -82,6 +82,7 @@ def test_text_without_a_folder(dem, capsys):
     assert "file" not in caught.err
 
 
+@pytest.mark.heavy
 def test_place_in_the_raster_s_crs_is_the_same_place(dem, capsys):
     told = []
     for asked in (["--at", AT], ["--at", f"{X},{Y}", "--at-crs", "dem"],
@@ -95,6 +96,7 @@ def test_place_in_the_raster_s_crs_is_the_same_place(dem, capsys):
         assert told[0][name] == told[1][name]
 
 
+@pytest.mark.heavy
 def test_two_places(dem, tmp_path, capsys):
     asked = ["--at", f"{X},{Y}", "--compare", f"{X + 300},{Y + 300}", "--at-crs", "dem"]
     asked += ["--name", "One", "--name", "Other", "--out", str(tmp_path / "both")]
@@ -137,6 +139,7 @@ def test_an_error_that_cannot_be_is_doubted(dem, tmp_path, capsys):
     assert any("smoother" in text for text in record["warnings"])
 
 
+@pytest.mark.heavy
 def test_clouds_by_indices(dem, capsys):
     found = []
     for more in ([], ["--clear-sky-index", "0.5"]):

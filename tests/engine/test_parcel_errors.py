@@ -21,6 +21,7 @@ def noisy(ground, rmse):
     return Elevation((ground.heights + noise).astype(np.float32), ground.transform, ground.crs)
 
 
+@pytest.mark.heavy
 def test_more_error_leaves_more_open():
     """Of two models that look as rough as their error, the rougher one leaves more open."""
     ground, shape = plane(14.0, 180.0), box(-100, -100, 100, 100)
@@ -58,6 +59,7 @@ def test_hours_are_found_anew_where_the_rule_speaks_of_them():
     assert parcel.doubts["sun_hours_season_h"].standard_error > 0.0
 
 
+@pytest.mark.heavy
 def test_slope_of_a_plane_seen_with_error_is_held():
     """The bounds from an erroneous model hold the true mean slope in most parcels."""
     truth = plane(20.0, 180.0, size=120)

@@ -74,6 +74,7 @@ def test_level_ground_gets_what_level_ground_gets():
     assert numbers["no_sun_share_m12"] == 0.0
 
 
+@pytest.mark.heavy
 def test_south_beats_north_in_the_north_and_loses_in_the_south():
     shape = box(-50, -50, 50, 50)
     south = survey(plane(30.0, 180.0), parcels(shape), asked_for(coarser=())).parcels[0].numbers

@@ -446,6 +446,7 @@ def test_attributes_are_kept_and_do_not_replace_ours(hills):
     assert list(table.frame)[4:7] == ["species", "flag_given", "height_m_given"]
 
 
+@pytest.mark.heavy
 def test_results_do_not_depend_on_threads(table, hills):
     points = at_cells(hills, *PLACES, error=[0.0, 12.0, 30.0, np.nan])
     again = plot_table(hills, points, settings(radii=(30.0, 90.0), factors=(1, 3)), threads=1)

@@ -38,6 +38,7 @@ def ground(metric_ground):
     return metric_ground(ridges(), 60.0)
 
 
+@pytest.mark.heavy
 def test_year_of_moments_is_the_year_of_tables(ground):
     # issue: "Tables and moments agree to 0.1 % over a year"; two ways that share no kernel
     year = terrasol.irradiation(ground, "2025", AIR)["irradiation_year"]

@@ -127,6 +127,7 @@ def test_every_day_of_the_year_is_there(place):
     np.testing.assert_allclose(minutes / 60.0, place.sun.hours, atol=0.1)
 
 
+@pytest.mark.heavy
 def test_two_places_are_as_alone(hills):
     places = [Spot(LATITUDE, LONGITUDE, "one"), Spot(LATITUDE + 0.001, LONGITUDE, "other")]
     both = survey(hills, places, light(), parse_clock("solar"), azimuths=64)

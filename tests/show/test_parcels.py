@@ -55,6 +55,7 @@ def test_a_sheet_says_what_was_found_and_what_is_not_in_it():
     assert page.png().startswith(b"\x89PNG")
 
 
+@pytest.mark.heavy
 def test_every_kind_of_parcel_is_drawn():
     """Flat, void, half outside, in two parts, with a hole; and none of the options."""
     ground = plane(12.0, 180.0)
@@ -84,6 +85,7 @@ def test_every_kind_of_parcel_is_drawn():
     assert bound.count(b"/Type /Page ") == 6
 
 
+@pytest.mark.heavy
 def test_a_page_is_the_same_again():
     ground = plane(12.0, 180.0)
     found = survey(ground, parcels(box(0, 0, 60, 60)), asked_for(coarser=()))
@@ -154,6 +156,7 @@ def test_scale_bar_and_colours():
     assert len(slope_colours(1)) == 1
 
 
+@pytest.mark.heavy
 def test_many_months_are_not_written_over_each_other():
     ground = plane(12.0, 180.0)
     found = survey(ground, parcels(box(0, 0, 60, 60)), asked_for("2020/2024", coarser=()))

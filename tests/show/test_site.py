@@ -68,6 +68,7 @@ def test_one_place_fills_an_a4_sheet(ground, site):
     assert picture.shape == (1169 * DOTS, 827 * DOTS, 3)
 
 
+@pytest.mark.heavy
 def test_two_places_fill_an_a3_sheet(ground, sites):
     page = site_page(ground, sites)
     assert (page.width, page.height) == (2 * 827, 1169)
@@ -186,6 +187,7 @@ def test_a_sun_lost_in_between_is_marked(site):
     assert "* lost in between for a minute or longer" in site_text([lost], [])
 
 
+@pytest.mark.heavy
 def test_period_without_a_whole_year_has_no_season(ground):
     site = surveyed(ground, period="2025-05/2025-06")[0]
     rows = month_rows(site)
