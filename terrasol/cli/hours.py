@@ -8,7 +8,14 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from terrasol.cli.ground_options import Around, ground_options
-from terrasol.cli.options import Common, Numbers, common_options, period_option
+from terrasol.cli.options import (
+    Common,
+    Numbers,
+    clock_option,
+    common_options,
+    period_option,
+    step_option,
+)
 from terrasol.cli.sky_options import AskedSky, sky_options
 
 if TYPE_CHECKING:
@@ -31,22 +38,8 @@ COLOURS = "cividis"
     help="Days whose first and last sun is written, joined by commas, in the period or not; a month"
     " or a range stands for its days. [default: the 21st of each month]",
 )
-@click.option(
-    "--clock",
-    metavar="solar|+HH:MM|ZONE",
-    default="solar",
-    show_default=True,
-    help="Time of day of first and last sun: true solar time, an offset from UTC, or a time zone"
-    " such as Europe/Zurich.",
-)
-@click.option(
-    "--step-seconds",
-    metavar="S",
-    type=float,
-    default=60.0,
-    show_default=True,
-    help="Time step of the sun for the sums; divides a day.",
-)
+@clock_option
+@step_option
 @sky_options
 @ground_options
 @common_options

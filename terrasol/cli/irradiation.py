@@ -9,7 +9,14 @@ import click
 
 from terrasol.cli.error_options import AskedError, error_options
 from terrasol.cli.ground_options import Around, ground_options
-from terrasol.cli.options import Common, Numbers, common_options, diffuse_option, period_option
+from terrasol.cli.options import (
+    Common,
+    Numbers,
+    common_options,
+    diffuse_option,
+    period_option,
+    step_option,
+)
 from terrasol.cli.sky_options import (
     PAPERS,
     AskedSky,
@@ -46,14 +53,7 @@ ALBEDO_FOR_NOW = (0.2,)
     " SERIES measured.",
 )
 @diffuse_option
-@click.option(
-    "--step-seconds",
-    metavar="S",
-    type=float,
-    default=60.0,
-    show_default=True,
-    help="Time step of the sun; divides a day.",
-)
+@step_option
 @click.option(
     "--unit",
     metavar=f"[{'|'.join(ENERGY_UNITS)}]",

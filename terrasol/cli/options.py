@@ -109,6 +109,50 @@ diffuse_option = click.option(
 )
 """How the sky's diffuse light is spread over its dome."""
 
+clock_option = click.option(
+    "--clock",
+    metavar="solar|+HH:MM|ZONE",
+    default="solar",
+    show_default=True,
+    help="Time of day of first and last sun: true solar time, an offset from UTC, or a time zone"
+    " such as Europe/Zurich.",
+)
+"""What the time of day is told in."""
+
+step_option = click.option(
+    "--step-seconds",
+    metavar="S",
+    type=float,
+    default=60.0,
+    show_default=True,
+    help="Time step of the sun; divides a day.",
+)
+"""How finely a period is summed."""
+
+substep_option = click.option(
+    "--substep-seconds",
+    metavar="S",
+    type=float,
+    default=300.0,
+    show_default=True,
+    help="Spacing of the moments that make a step; divides an hour.",
+)
+"""How finely a step of a series is summed."""
+
+horizon_store_option = click.option(
+    "--horizon-store",
+    metavar="DIR",
+    type=Name(),
+    help="Folder in which horizons are kept, and found again for the same ground."
+    " [default: TERRASOL_HORIZON_STORE, else the user's cache folder]",
+)
+"""Where horizons are kept from run to run."""
+
+no_store_option = click.option(
+    "--no-horizon-store", is_flag=True, help="Keep no horizons after the run."
+)
+"""Or not."""
+
 _ARGUMENTS = (
     click.argument("dem", type=Name()),
     click.argument("out_dir", type=Name()),

@@ -16,9 +16,11 @@ from terrasol.cli.options import (
     Common,
     Name,
     Numbers,
+    clock_option,
     common_options,
     diffuse_option,
     period_option,
+    step_option,
 )
 from terrasol.cli.sky_options import AskedSky, Settled, file_record, shortest, sky_options
 from terrasol.errors import counted
@@ -155,14 +157,7 @@ class _Sizes(click.ParamType):
     show_default=True,
     help="Sheets of the parcels: parcels.pdf, or summary.png and one picture a parcel.",
 )
-@click.option(
-    "--clock",
-    metavar="solar|+HH:MM|ZONE",
-    default="solar",
-    show_default=True,
-    help="Time of day of first and last sun: true solar time, an offset from UTC, or a time zone"
-    " such as Europe/Zurich.",
-)
+@clock_option
 @period_option
 @click.option(
     "--albedo",
@@ -172,14 +167,7 @@ class _Sizes(click.ParamType):
     help="Albedo of the ground, or 'station' for what SERIES measured.",
 )
 @diffuse_option
-@click.option(
-    "--step-seconds",
-    metavar="S",
-    type=float,
-    default=60.0,
-    show_default=True,
-    help="Time step of the sun; divides a day.",
-)
+@step_option
 @sky_options
 @ground_options
 @error_options

@@ -11,7 +11,7 @@ import click
 
 from terrasol.cli.ground_options import Around, ground_options
 from terrasol.cli.irradiation import ALBEDO_FOR_NOW, irradiation
-from terrasol.cli.options import Common, Name, Numbers, common_options, period_option
+from terrasol.cli.options import Common, Name, Numbers, clock_option, common_options, period_option
 from terrasol.cli.series import Words
 from terrasol.cli.sky_options import AskedSky, sky_options
 from terrasol.constants import ENERGY_UNITS, PHOTONS_PER_JOULE
@@ -124,14 +124,7 @@ class Lengths(click.ParamType):
     help="Write also horizons.csv and horizons.png, the horizon of each plot's cell.",
 )
 @period_option
-@click.option(
-    "--clock",
-    metavar="solar|+HH:MM|ZONE",
-    default="solar",
-    show_default=True,
-    help="Time of day of first and last sun: true solar time, an offset from UTC, or a time zone"
-    " such as Europe/Zurich.",
-)
+@clock_option
 @sky_options
 @ground_options
 @common_options

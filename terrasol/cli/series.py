@@ -13,7 +13,13 @@ import click
 
 from terrasol.cli.ground_options import Around, ground_options
 from terrasol.cli.irradiation import ALBEDO_FOR_NOW, albedo_doubts, irradiation
-from terrasol.cli.options import Common, Name, common_options
+from terrasol.cli.options import (
+    Common,
+    common_options,
+    horizon_store_option,
+    no_store_option,
+    substep_option,
+)
 from terrasol.cli.sky_options import AskedSky, Settled, file_record, sky_options
 from terrasol.errors import counted
 
@@ -84,22 +90,9 @@ class Words(click.ParamType):
     show_default=True,
     help=f"Some of {', '.join(QUANTITIES)}, joined by commas; net is what the ground absorbs.",
 )
-@click.option(
-    "--substep-seconds",
-    metavar="S",
-    type=float,
-    default=300.0,
-    show_default=True,
-    help="Spacing of the moments that make a step; divides an hour.",
-)
-@click.option(
-    "--horizon-store",
-    metavar="DIR",
-    type=Name(),
-    help="Folder in which horizons are kept, and found again for the same ground."
-    " [default: TERRASOL_HORIZON_STORE, else the user's cache folder]",
-)
-@click.option("--no-horizon-store", is_flag=True, help="Keep no horizons after the run.")
+@substep_option
+@horizon_store_option
+@no_store_option
 @sky_options
 @ground_options
 @common_options
