@@ -117,9 +117,29 @@ def test_spread_of_a_ramp_by_error_is_that_of_a_rounded_gaussian(error, offset):
     mean = (share.weight * share.columns).sum() - 35.0
     spread = math.sqrt((share.weight * (share.columns - 35.0 - mean) ** 2).sum())
     expected_mean, expected_spread = stepped_moments(offset, error / math.sqrt(2.0) / 10.0)
-    # 1024 even places stand for all: the chance of one side of an edge is off by under 0.5 %.
+    # Even places stand for all: the chance of one side of an edge is off by under 0.2 %.
     assert mean == pytest.approx(expected_mean, abs=0.01 + 0.005 * expected_spread)
     assert spread == pytest.approx(expected_spread, rel=0.01, abs=0.02)
+
+
+def test_chance_of_a_cell_is_that_of_the_gaussian():
+    """Along the axes of a square grid the chance is a product of two normal shares."""
+    rng = np.random.default_rng(5)
+    edges = np.arange(61) - 0.5
+    ramp = np.add.outer(3.0 * np.arange(60), 7.0 * np.arange(60))
+    for _ in range(40):
+        row, column = 30.0 + rng.uniform(-0.5, 0.5, 2)
+        error = rng.uniform(2.0, 6.0)
+        sides = [
+            np.diff([0.5 * math.erf((e - at) * 10.0 / error) for e in edges])
+            for at in (row, column)
+        ]
+        chance = np.outer(*sides)
+        share = by_error(row, column, error, SQUARE, (60, 60))
+        values = ramp[share.rows, share.columns]
+        expected = math.sqrt(np.cov(ramp.ravel(), aweights=chance.ravel(), ddof=0))
+        found = math.sqrt(np.cov(values, aweights=share.weight, ddof=0))
+        assert found == pytest.approx(expected, rel=0.02, abs=0.02)
 
 
 def test_wide_errors_spread_as_the_gaussian_and_the_cells_side_do():
