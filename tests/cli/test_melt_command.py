@@ -295,7 +295,7 @@ def test_dry_run_writes_nothing(dem, station, tmp_path, capsys):
         (["--number", "snow_factor=9"], 2, "snow_factor must lie from 0.2 to 5"),
         (["--fit-numbers", "degree_day_factor,snow_factor"], 2, "changes two or three of"),
         (["--fit", "--from-state", "x.nc"], 2, "--fit wants a season from bare ground on"),
-        (["--from-state", "x.nc"], 3, "x.nc is no snow state"),
+        (["--from-state", "x.nc"], 3, "x.nc: there is no such file"),
         (["--snow-albedo", "station"], 3, "no albedo was measured"),
         (["--period", "2025-01-01/2025-03-01"], 3, "made"),
         (["--clear-sky-index", "0.7"], 2, "--clear-sky-index has no hours"),
