@@ -109,7 +109,8 @@ def from_daily(
     if np.any(low > high):
         raise InputError(f"on {dates[low > high][0]} the least temperature is above the highest")
     middle = 0.5 * (low + high) if extremes else given
-    return _by_month(dates, middle, high, height, "half of daily extremes" if extremes else "mean")
+    basis = "the middle of daily extremes" if extremes else "daily means"
+    return _by_month(dates, middle, high, height, basis)
 
 
 def from_hourly(
@@ -195,7 +196,7 @@ def _by_month(
     mean: NDArray[np.float64],
     highest: NDArray[np.float64],
     height: float,
-    method: str,
+    basis: str,
 ) -> Temperatures:
     """Keep the known days of the months that are known well enough."""
     months = dates.astype("M8[M]")
@@ -212,6 +213,4 @@ def _by_month(
         [np.mean(days) if days else MEAN_MONTH[k] for k, days in enumerate(lengths)]
     )
     number = months.astype(np.int64) % 12 + 1
-    return Temperatures(
-        float(height), number[kept], mean[kept], highest[kept], month_days, f"daily {method}"
-    )
+    return Temperatures(float(height), number[kept], mean[kept], highest[kept], month_days, basis)

@@ -16,7 +16,7 @@ def test_mean_is_half_of_the_extremes_where_both_are_given():
                      least=np.full(30, 2.0), highest=np.full(30, 20.0))  # fmt: skip
     assert set(got.mean) == {11.0}
     assert set(got.highest) == {20.0}
-    assert got.basis == "daily half of daily extremes"
+    assert got.basis == "the middle of daily extremes"
     assert (
         from_daily(days("2021-04-01", "2021-04-30"), height=10, mean=np.full(30, 9.0)).mean[0] == 9
     )
