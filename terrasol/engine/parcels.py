@@ -14,6 +14,7 @@ from terrasol.engine.job import NO_SCENE, plan_terrain
 from terrasol.engine.parcel_cells import Piece, SceneOf, pieces_of
 from terrasol.engine.parcel_errors import Doubt, doubts_of
 from terrasol.engine.parcel_figures import (
+    HECTARE,
     LAPSE_EFFECT,
     QUANTITIES,
     WARM_QUANTITIES,
@@ -50,6 +51,10 @@ that most of what it says is of the ground outside (judgement, no source)."""
 
 MOST_NAMED: Final = 8
 """Parcels that a warning names."""
+
+LEAST_UNKNOWN: Final = 0.01
+"""Share of a parcel's area on which a rule may be unknown without a warning (judgement, no
+source)."""
 
 LARGE_EFFECT: Final = 100.0
 """Degree-days that 1 K km-1 of lapse rate may move without a warning: a third of a class of
@@ -278,6 +283,7 @@ def survey(
         parcels.append(replace(parcel, given=polygons.given(k)))
     warnings = (*polygons.warnings, *warnings, *doubts_of_error(elevation, settings.error))
     warnings = (*warnings, *_doubts_of_size(parcels), *_doubts_of_lapse(parcels))
+    warnings = (*warnings, *_doubts_of_rule(parcels))
     found = _ranked(parcels, settings, looks[0][0], [*warnings])
     if settings.error is not None:
         found = _doubted(
@@ -340,13 +346,33 @@ def _doubts_of_size(parcels: Sequence[Parcel]) -> list[str]:
             few.append(f"'{parcel.name}' ({area.sum() / whole:.1f})")
     if not few:
         return []
-    shown = ", ".join(few[:MOST_NAMED]) + (f" and {len(few) - MOST_NAMED} more") * (
-        len(few) > MOST_NAMED
-    )
     return [
-        f"few cells lie in {shown}: their slopes and classes are those of the ground around as"
-        " much as their own; take a finer model"
+        f"few cells lie in {_listed(few)}: their slopes and classes are those of the ground around"
+        " as much as their own; take a finer model"
     ]
+
+
+def _doubts_of_rule(parcels: Sequence[Parcel]) -> list[str]:
+    """Warn of ground on which nobody knows whether it meets the rule."""
+    unknown = [
+        f"'{p.name}' ({area:.2f} ha)"
+        for p in parcels
+        if (area := p.numbers.get("rule_unknown_ha_map", 0.0))
+        >= LEAST_UNKNOWN * p.piece.area.sum() / HECTARE
+        and area > 0.0
+    ]
+    if not unknown:
+        return []
+    return [
+        f"the rule is unknown on ground of {_listed(unknown)}, which is not counted:"
+        " a word of the rule is unknown there, or it divides by zero"
+    ]
+
+
+def _listed(words: Sequence[str]) -> str:
+    """The first of many, and how many more."""
+    more = len(words) - MOST_NAMED
+    return ", ".join(words[:MOST_NAMED]) + (f" and {more} more" if more > 0 else "")
 
 
 def _doubts_of_lapse(parcels: Sequence[Parcel]) -> list[str]:
@@ -433,7 +459,14 @@ def _ranked(
         return Survey(parcels, settings, cell_size, warnings=warnings)
     columns = {name: np.array([p.numbers[name] for p in parcels]) for name in parcels[0].numbers}
     score = parse_score(settings.score, columns)
-    return Survey(parcels, settings, cell_size, rank(score, columns), score, warnings)
+    ranking = rank(score, columns)
+    unknown = [f"'{p.name}'" for p, s in zip(parcels, ranking.total, strict=True) if np.isnan(s)]
+    if unknown:
+        warnings.append(
+            f"the score of {_listed(unknown)} is unknown, so it has no rank: a column of it is"
+            " unknown there, or it divides by zero"
+        )
+    return Survey(parcels, settings, cell_size, ranking, score, warnings)
 
 
 def _levels(

@@ -168,6 +168,21 @@ def test_score_ranks_and_refuses_what_no_parcel_has():
         asked_for(score="-slope_meen_percent")
 
 
+def test_a_rule_or_score_that_cannot_be_told_is_told():
+    shapes = parcels(box(-50, -50, 0, 50), box(0, -50, 200, 50))
+    asked = asked_for(
+        coarser=(), rule="slope_percent / (height_m - height_m) < 3", score="map_area_ha / 0"
+    )
+    warnings = survey(plane(12.0, 180.0), shapes, asked).warnings
+    assert any("the score of 'P0', 'P1' is unknown" in text for text in warnings)
+    assert any(
+        "the rule is unknown on ground of 'P0' (0.50 ha), 'P1' (2.00 ha)" in text
+        for text in warnings
+    )
+    asked = asked_for(coarser=(), rule="slope_percent < 13", score="map_area_ha")
+    assert not any("unknown" in text for text in survey(plane(12.0, 180.0), shapes, asked).warnings)
+
+
 def test_names_for_a_score_are_those_of_the_figures():
     warmth = Warmth(from_monthly(np.full(12, 15.0), height=500.0, highest=np.full(12, 20.0)))
     settings = asked_for(
