@@ -6,7 +6,7 @@ import os
 import time
 from collections.abc import Iterator
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, Final
 
 import click
 
@@ -633,12 +633,19 @@ def _in_lines(forecast: dict[str, Any]) -> str:
     return lines(rows)
 
 
+LONGEST_CELL: Final = 40
+"""Characters of a name in the printed table (judgement, no source)."""
+
+
 def _cell(row: dict[str, Any], name: str, form: str) -> str:
     """A figure for the table, with its standard error where that is small enough to matter."""
     if row.get(name) is None:
         return "-"
     error = row.get(f"{name}_se") if name == "rule_ha_map" else None
-    return form.format(row[name]) + ("" if error is None else f" +/- {form.format(error)}")
+    told = form.format(row[name])
+    if len(told) > LONGEST_CELL:
+        told = f"{told[: LONGEST_CELL - 3]}..."
+    return told + ("" if error is None else f" +/- {form.format(error)}")
 
 
 def _summary_text(record: dict[str, Any]) -> str:

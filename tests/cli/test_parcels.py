@@ -15,7 +15,7 @@ from files.made import write_raster
 from rasterio import Affine
 
 from terrasol.cli.main import main
-from terrasol.cli.parcels import parcels, sheet_names
+from terrasol.cli.parcels import _cell, parcels, sheet_names
 from terrasol.practice.limits import VINEYARD
 
 QUICK = ["--azimuths", "8", "--step-seconds", "3600", "--quiet"]
@@ -319,6 +319,12 @@ def test_a_bow_tie_is_mended_and_said_so(places, tmp_path, capsys):
     assert "warning: the outline of 'tie' was not valid" in capsys.readouterr().err
     area = float(rows_of(out / "parcels.csv")[0]["map_area_ha"])
     assert area == pytest.approx(0.5 * 0.9996**-2, rel=1e-4)
+
+
+def test_long_names_do_not_widen_the_table():
+    row = {"parcel": "x" * 300, "map_area_ha": 1.0}
+    assert _cell(row, "parcel", "{}") == "x" * 37 + "..."
+    assert _cell(row, "map_area_ha", "{:.2f}") == "1.00"
 
 
 def test_names_of_sheets_are_plain_and_differ():
