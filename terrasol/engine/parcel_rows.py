@@ -21,6 +21,7 @@ from terrasol.practice.rows import (
     row_light,
     row_slopes,
 )
+from terrasol.sky.diffuse import split_diffuse
 from terrasol.sky.sun import sun_path, sun_series
 
 STEP_SECONDS: Final = 600.0
@@ -107,7 +108,7 @@ def rows_of(
         Degrees, north first.
     rows : RowSettings
     light : LightSettings
-        Its sky and albedo count.
+        Its sky, model of diffuse light and albedo count.
     asked : Asked
         Its growing season counts.
 
@@ -123,13 +124,14 @@ def rows_of(
     longitude = (piece.longitude + 180.0) % 360.0 - 180.0
     sun = sun_series(sun_path(light.period, longitude, step), piece.latitude, piece.height)
     sky = (light.sky or light.air).over(sun, piece.height)
+    split = split_diffuse(light.diffuse, sun, sky)
     wanted = np.isin(sun.month, asked.season_places)
     albedo = float(np.mean(light.month_albedo[list(asked.season_places)]))
     found = row_light(
         sun.elevation[wanted],
         sun.azimuth[wanted],
-        sky.beam_normal[wanted],
-        sky.diffuse_horizontal[wanted],
+        (sky.beam_normal + split.circumsolar_normal)[wanted],
+        split.isotropic[wanted],
         step,
         slope=slope,
         aspect=aspect,

@@ -94,6 +94,7 @@ def test_without_a_period_the_series_days_count(dem, tmp_path):
     assert record["settings"]["period"]["label"] == "2025-05-01/2025-05-05"
 
 
+@pytest.mark.heavy
 def test_an_index_as_number_and_as_map(dem, clear, tmp_path):
     plain = run(dem, tmp_path / "plain", "--clear-sky-index", "0.6")
     np.testing.assert_allclose(plain[1][0].mean(), 0.6 * clear[1][0].mean(), rtol=0.02)
@@ -182,6 +183,7 @@ def test_maps_that_will_not_do(dem, clear, tmp_path, capsys):
         assert said in capsys.readouterr().err
 
 
+@pytest.mark.heavy
 def test_a_station_elsewhere_is_doubted(dem, tmp_path, capsys):
     path = series(tmp_path / "made.csv")
     toml = path.with_name(path.name + ".toml")
@@ -197,6 +199,7 @@ def test_a_station_elsewhere_is_doubted(dem, tmp_path, capsys):
     assert "km from the raster's middle" in capsys.readouterr().err
 
 
+@pytest.mark.heavy
 def test_holes_of_maps_are_told(dem, clear, tmp_path, capsys):
     values = np.full((1, *clear[1].shape[1:]), 0.6)
     values[0, 10:14, 10:14] = np.nan

@@ -66,6 +66,7 @@ def test_no_days_no_layers_of_days(ridge):
     }  # fmt: skip
 
 
+@pytest.mark.heavy
 def test_blocks_and_threads_change_nothing(metric_ground):
     row, column = np.mgrid[:270, :300]
     heights = 500.0 + 60.0 * np.sin(row / 9.0) * np.cos(column / 7.0)

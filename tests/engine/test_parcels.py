@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import geopandas
 import numpy as np
 import pytest
@@ -256,6 +258,18 @@ def test_rows_on_a_plane():
     climbed = dict(zip(parcel.rows.light.azimuth, parcel.rows.steepest, strict=True))
     assert climbed[90.0] == pytest.approx(0.0, abs=0.05)
     assert climbed[60.0] == pytest.approx(20.0 * 0.9996 * 0.5, abs=0.05)
+
+
+@pytest.mark.parametrize("model", ["perez", "hay-davies", "isotropic"])
+def test_the_top_of_rows_gets_what_the_slope_gets(model):
+    """By another way: cells by tables of the sun, rows by its path, without horizon bands."""
+    settings = asked_for(coarser=(), rows=RowSettings(2.0, 1.3, 0.4))
+    light = replace(settings.light, diffuse=model, albedo=(0.0,) * 12)
+    parcel = survey(
+        plane(30.0, 180.0), parcels(box(-50, -50, 50, 50)), replace(settings, light=light)
+    ).parcels[0]
+    top = parcel.rows.light.total[:, 2]
+    assert top == pytest.approx(parcel.numbers["irradiation_season_mj_m2_slope"], rel=5e-3)
 
 
 def test_half_the_step_moves_no_side_of_a_row():

@@ -104,6 +104,7 @@ def test_a_raster_in_degrees_sees_a_range_in_utm():
     assert np.abs(got - want).max() < 0.35
 
 
+@pytest.mark.heavy
 def test_irradiation_of_a_cut_out_is_that_of_the_whole(small, large):
     settings = {"azimuths": AZIMUTHS, "step_seconds": 600.0, "threads": 2}
     whole = terrasol.irradiation(large, "2025", **settings).irradiation_year.values

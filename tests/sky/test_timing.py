@@ -90,6 +90,7 @@ def test_daylight_saving_left_in_is_a_jump():
     assert "2024-02" in timing.words or "2024-03" in timing.words
 
 
+@pytest.mark.heavy
 def test_drift():
     station = made_station(
         "2023-03-01", 200, clear_share=0.4,
@@ -106,6 +107,7 @@ def hill_in_the_east(height=30.0):
     return np.where((azimuth > 40) & (azimuth < 155), height, 8.0)
 
 
+@pytest.mark.heavy
 def test_a_hill_on_one_side_is_no_shift():
     """Half of each morning is behind a mountain; with its skyline the clock is right, and half an
     hour is still found."""
