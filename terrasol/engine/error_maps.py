@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import time
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, replace
 from typing import Any, Final
 
@@ -21,8 +22,8 @@ from terrasol.ground.uncertainty import DemError, field_bytes
 
 SUFFIX: Final = "_standard_error"
 
-TALLY_BYTES: Final = 35.0
-"""Bytes a cell of the running means and deviations, the mask of flat ground and a field."""
+TALLY_BYTES: Final = 43.0
+"""Bytes a cell of the running means and deviations, the maps they belong to and a field."""
 
 SECONDS_A_NODE: Final = 0.1e-6
 """What a core needs to draw and filter a node of an error field, for the estimate only."""
@@ -131,11 +132,11 @@ class _ErrorRun:
     def do(self, sink: Sink) -> Summary:
         """All stages."""
         plan = self.plan
-        keeper = _FlatKeeper(sink, plan.elevation.shape)
+        keeper = _MapKeeper(sink, plan.elevation.shape, self.tallies)
         summary = plan.plain.run(keeper, self.threads, self._part(0))
         start = time.perf_counter()
         self._realise()
-        summary.numbers |= self._write(sink, keeper.flat).means(plan)
+        summary.numbers |= self._write(sink, keeper.maps).means(plan)
         summary.seconds["realisations"] = round(time.perf_counter() - start, 3)
         self._tell(summary)
         return summary
@@ -163,8 +164,8 @@ class _ErrorRun:
         for number, ground in enumerate(realisations(plain.elevation, error), 1):
             moved(ready, ground).run(sink, self.threads, self._part(number))
 
-    def _write(self, sink: Sink, flat: NDArray[np.bool_]) -> Totals:
-        """Write the standard errors block by block, and count them."""
+    def _write(self, sink: Sink, maps: Mapping[str, NDArray[np.float32]]) -> Totals:
+        """Write the standard errors of the maps block by block, and count them."""
         totals = Totals()
         for layer in self.beside:
             sink.open(layer)
@@ -173,9 +174,7 @@ class _ErrorRun:
             window = rows, slice(block.column, block.column + block.columns)
             for layer in self.beside:
                 name = layer.name.removesuffix(SUFFIX)
-                values = self.tallies[name].deviation(window).astype(np.float32)
-                if name == "aspect":
-                    values[flat[window]] = np.nan
+                values = _standard_error(self.tallies[name], maps[name][window], window)
                 totals.add({layer.name: values[None]})
                 sink.write(layer.name, block.row, block.column, values[None])
         return totals
@@ -200,12 +199,24 @@ class _ErrorRun:
         summary.warnings += doubts_of_error(plan.elevation, plan.error)
 
 
-class _FlatKeeper:
-    """A sink that passes everything on, and keeps where aspect is void."""
+def _standard_error(
+    tally: Running | RunningAngle, value: NDArray[np.float32], window: tuple[slice, ...]
+) -> NDArray[np.float32]:
+    """Root mean square of what the realisations are off the map; of a direction, their scatter.
 
-    def __init__(self, sink: Sink, shape: tuple[int, int]) -> None:
+    What error does to a slope one way, near the level, is in it. It bends a direction no one way.
+    """
+    if isinstance(tally, Running):
+        return tally.error_of(value, window).astype(np.float32)
+    return np.where(np.isnan(value), np.nan, tally.deviation(window)).astype(np.float32)
+
+
+class _MapKeeper:
+    """A sink that passes everything on, and keeps the first band of some maps."""
+
+    def __init__(self, sink: Sink, shape: tuple[int, int], names: Iterable[str]) -> None:
         self.sink = sink
-        self.flat = np.ones(shape, np.bool_)
+        self.maps = {name: np.full(shape, np.nan, np.float32) for name in names}
 
     def open(self, layer: Layer) -> None:
         """Make room for a layer."""
@@ -213,9 +224,9 @@ class _FlatKeeper:
 
     def write(self, name: str, row: int, column: int, values: NDArray[Any]) -> None:
         """Take a block."""
-        if name == "aspect":
+        if name in self.maps:
             rows, columns = values.shape[1:]
-            self.flat[row : row + rows, column : column + columns] = np.isnan(values[0])
+            self.maps[name][row : row + rows, column : column + columns] = values[0]
         self.sink.write(name, row, column, values)
 
 

@@ -72,7 +72,9 @@ class Sieve:
         Notes
         -----
         By Wiener (1949): of what a model shows at a wavelength, power P with the error's power E
-        in it, the share 1 - E / P is ground. P is the mean over all directions.
+        in it, the share 1 - E / P is ground. P is the mean over all directions. Tiles that reach
+        beyond the raster take the shares of the nearest one that does not: what is mirrored at
+        the rim is rougher than the ground.
         """
         expected = _error_power(error, cell_size)
         members = np.bincount(_RINGS.ravel())
@@ -83,10 +85,11 @@ class Sieve:
             by_ring = np.stack([np.bincount(_RINGS.ravel(), p.ravel()) for p in power]) / members
             shares.append(np.maximum(1.0 - 1.0 / np.maximum(by_ring, 1e-9), LEAST_SHARE))
             fine.append(power[:, _RINGS >= FINE].mean(axis=1))
-        found = np.array(shares, np.float32)
-        found[..., 0] = 1.0
         rows, columns = heights.shape
-        return cls((rows, columns), found, float(np.median(fine)))
+        whole = np.ix_(_whole_tiles(rows, len(fine)), _whole_tiles(columns, len(fine[0])))
+        found = np.array(shares, np.float32)[whole]
+        found[..., 0] = 1.0
+        return cls((rows, columns), found, float(np.median(np.array(fine)[whole])))
 
     def ground(self, heights: NDArray[np.float32]) -> NDArray[np.float64]:
         """The most likely ground: each tile's waves by their share [m]; voids filled."""
@@ -222,6 +225,15 @@ def _padded(field: NDArray[np.float32], *, odd: bool) -> NDArray[np.float64]:
     if odd:
         return np.pad(plain, sides, mode="reflect", reflect_type="odd")
     return np.pad(plain, sides, mode="reflect")
+
+
+def _whole_tiles(size: int, count: int) -> NDArray[np.int64]:
+    """For each of the tiles along a side of so many cells, the nearest that lies on the raster.
+
+    Tiles start half a tile before the first cell. On a side shorter than a tile none does; the one
+    that starts with it comes closest.
+    """
+    return np.clip(np.arange(count), 1, max(2 * size // TILE - 1, 1))
 
 
 def _rows_of_tiles(padded: NDArray[np.float64]) -> Iterator[NDArray[np.float64]]:

@@ -5,7 +5,9 @@ not know of; the intervals are terrasol's, from what is observed alone. docs/val
 kinds of ground, and where the intervals fail.
 """
 
+import numpy as np
 import pytest
+from matplotlib import cbook
 from reference.made_relief import Held, count, made_relief
 
 import terrasol
@@ -36,36 +38,82 @@ def test_intervals_hold_the_truth_quickly():
         assert held.share(name) == pytest.approx(0.9, abs=0.02 + 3.0 * held.scatter(name, 20.0))
 
 
+def outside(held, names):
+    """Of those known to 1 %, taking 20 cells as one, the shares outside 88 to 92 %."""
+    told = {
+        name: held.share(name)
+        for name in names
+        if held.counts[name][1] and held.scatter(name, 1.0 if "parcel" in name else 20.0) < 0.01
+    }
+    assert {"slope, all", "aspect, all", "parcel slope, all"} & set(names) <= set(told)
+    return {name: share for name, share in told.items() if not 0.88 <= share <= 0.92}
+
+
+KINDS_ENOUGH = ("2-5 %", "5-10 %", "over 10 %", "all")
+"""Kinds of which each made relief has thousands of cells."""
+
+
 @pytest.mark.heavy
 @pytest.mark.parametrize(
-    ("power", "error", "settings", "trials"),
+    ("power", "steepness", "error", "settings", "trials"),
     [
-        (4.0, DemError(0.5, 50.0), LIGHT, 12),
-        (3.4, DemError(0.5, 50.0), None, 20),
-        (4.0, DemError(0.2, 30.0), None, 20),
+        (4.0, 0.15, DemError(0.5, 50.0), LIGHT, 12),
+        (3.4, 0.15, DemError(0.5, 50.0), None, 12),
+        (4.0, 0.15, DemError(0.2, 30.0), None, 12),
+        (4.0, 0.15, DemError(0.5, 300.0), None, 12),
+        (4.0, 0.15, DemError(0.5, 0.0), None, 12),
+        (4.0, 0.30, DemError(1.5, 100.0), None, 12),
+        (4.0, 0.05, DemError(0.5, 50.0), None, 12),
     ],
-    ids=["with light", "rough", "small error"],
+    ids=["with light", "rough", "small error", "long range", "no range", "steep", "gentle"],
 )
-def test_intervals_hold_the_truth(power, error, settings, trials):
-    """88 to 92 %, all kinds of ground over 5 % steep; parcels of 1 ha known to 0.5 %."""
-    held = held_in(trials, (200, 200), error, power, settings)
-    kinds = ("5-10 %", "over 10 %", "all")
-    names = [f"{name}, {kind}" for name in ("slope", "aspect") for kind in kinds]
-    names += [f"map of {name}, {kind}" for name in ("slope", "aspect") for kind in kinds[:2]]
-    names += [f"{name}, {kind}" for name in ("parcel area", "parcel slope") for kind in ("all",)]
-    names += ["parcel area, mixed"]
+def test_intervals_hold_the_truth(power, steepness, error, settings, trials):
+    """88 to 92 % of each kind, as told; parcels of 1 ha known to 0.6 %, cells to 0.7 %.
+
+    Kinds with so few cells that chance alone passes that are left out: level ground of most
+    reliefs, and 2 to 5 % of the steep one.
+    """
+    held = Held()
+    for number in range(trials):
+        truth = made_relief((200, 200), number, power, steepness)
+        count(held, truth, error, number, settings, maps=settings is not None)
+    names = [f"{name}, {kind}" for name in ("slope", "aspect") for kind in ("0-2 %", *KINDS_ENOUGH)]
+    names += ["parcel slope, all", "parcel area, mixed", "parcel slope, mixed"]
     if settings is not None:
-        names += ["energy, 0-2 %", *(f"energy, {kind}" for kind in kinds)]
-        names += ["map of energy, all", "parcel energy, all", "parcel energy, mixed"]
-    for name in names:
-        assert held.scatter(name, 20.0 if "parcel" not in name else 1.0) < 0.016, name
-        assert 0.88 <= held.share(name) <= 0.92, (name, held.share(name))
+        names += [f"energy, {kind}" for kind in KINDS_ENOUGH]
+        names += ["parcel energy, all", "parcel energy, mixed"]
+        names += [
+            f"map of {name}, {kind}"
+            for name in ("slope", "aspect", "energy")
+            for kind in KINDS_ENOUGH
+        ]
+    assert outside(held, names) == {}
 
 
 @pytest.mark.heavy
-def test_where_intervals_fail():
-    """What docs/uncertainty.md warns of is so: level ground, and slopes that are all error."""
-    held = held_in(8, (200, 200), DemError(0.5, 50.0), maps=False)
+def test_on_real_ground_mean_slopes_of_parcels_are_told_too_surely():
+    """Jacksboro (matplotlib's sample), its heights taken as true; 80 m cells as 10 m ones.
+
+    Cells and areas keep to 88 to 92 %. Real ground is rough in spots, not alike within a tile, and
+    mean slopes of parcels are held less often: docs/uncertainty.md warns of it.
+    """
+    model = cbook.get_sample_data("jacksboro_fault_dem.npz")["elevation"]
+    truth = (model[::-1] / 8.0).astype(np.float32)
+    held = Held()
+    for number in range(3):
+        count(held, truth, DemError(4.0 / 8.0, 300.0 / 8.0), number)
+    cells = [f"{name}, {kind}" for name in ("slope", "aspect") for kind in KINDS_ENOUGH]
+    assert outside(held, [*cells, "parcel area, all", "parcel area, mixed"]) == {}
+    assert 0.84 <= held.share("parcel slope, all") < 0.88
+
+
+@pytest.mark.heavy
+def test_counted_by_the_true_slope_level_ground_is_missed():
+    """What docs/uncertainty.md says: truly level cells are mostly told as steeper."""
+    held = Held()
+    for number in range(8):
+        truth = made_relief((200, 200), number)
+        count(held, truth, DemError(0.5, 50.0), number, maps=False, by_truth=True)
     assert held.share("slope, 0-2 %") < 0.85
     assert held.share("aspect, 0-2 %") < 0.85
 

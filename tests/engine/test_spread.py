@@ -4,7 +4,14 @@ import numpy as np
 import pytest
 from scipy import stats
 
-from terrasol.engine.spread import UNKNOWN_DIRECTION, Running, RunningAngle, Spread, SpreadTally
+from terrasol.engine.spread import (
+    SHIFT_DOUBT,
+    UNKNOWN_DIRECTION,
+    Running,
+    RunningAngle,
+    Spread,
+    SpreadTally,
+)
 from terrasol.errors import SettingError
 
 
@@ -66,6 +73,16 @@ def test_no_direction_at_all():
     assert np.isnan(single.deviation()).all()
 
 
+def test_error_of_a_value_holds_scatter_and_what_is_one_way():
+    values = np.random.default_rng(6).normal([1000.0, 3.0], [2.0, 0.1], (24, 2))
+    running = Running((2,))
+    for each in values:
+        running.add(each)
+    expected = np.sqrt(np.mean((values - [1001.0, 3.0]) ** 2, axis=0))
+    assert running.error_of(np.array([1001.0, 3.0])) == pytest.approx(expected, rel=1e-9)
+    assert np.isnan(Running((1,)).error_of(np.zeros(1))).all()
+
+
 @pytest.mark.parametrize("count", [4, 24])
 @pytest.mark.parametrize("level", [0.5, 0.9])
 def test_interval_about_draws_holds_the_truth_as_stated(count, level):
@@ -91,7 +108,8 @@ def test_estimate_errs_by_spread_and_shift():
     assert found.standard_error == 1.25
     low, high = found.interval(0.9)
     assert (low + high) / 2.0 == pytest.approx(11.0)
-    assert high - low == pytest.approx(2 * stats.t.ppf(0.95, 23) * np.sqrt(1 + 1 / 24) * 0.75)
+    half = stats.t.ppf(0.95, 23) * np.sqrt(1 + 1 / 24) * np.hypot(0.75, SHIFT_DOUBT * 1.0)
+    assert high - low == pytest.approx(2 * half)
     assert found.interval(0.9, (10.9, 11.1)) == (10.9, 11.1)
 
 

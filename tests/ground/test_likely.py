@@ -72,8 +72,22 @@ def test_great_relief_is_left_alone():
     z = made_ground(steepness=30.0)
     sieve = Sieve.of(z, ERROR, CELL)
     field = next(error_fields(ERROR, z.shape, CELL))
-    assert np.abs(sieve.ground(z) - z).max() < 0.1
+    moved = np.abs(sieve.ground(z) - z)
+    half = TILE // 2
+    assert moved[half:-half, half:-half].max() < 0.1
+    assert moved.max() < 0.5 * ERROR.rmse  # the mirrored rim is rougher than the tiles within
     assert np.std(sieve.doubt(field) - field) < 0.05 * ERROR.rmse
+
+
+def test_rims_are_sieved_as_the_ground_within():
+    """What is mirrored beyond a rim is rougher than the ground; nothing of it is believed."""
+    error = DemError(0.5, 50.0, 40, 5)
+    alone = np.array(list(error_fields(error, (160, 160), CELL)))
+    left = np.array([Sieve.of(field, error, CELL).ground(field) for field in alone])
+    power = np.array([np.mean(gradient(field) ** 2, axis=0) for field in left]).mean(axis=0)
+    within = power[TILE:-TILE, TILE:-TILE].mean()
+    assert power[2:6].mean() == pytest.approx(within, rel=0.25)
+    assert power[:, -6:-2].mean() == pytest.approx(within, rel=0.25)
 
 
 def test_voids_stay_and_trouble_nobody_far_off():

@@ -128,9 +128,8 @@ class Held:
         return float(self.counts[name][0] / self.counts[name][1])
 
     def scatter(self, name, each=1.0):
-        """Standard error of that share if `each` intervals count as one."""
-        share = self.share(name)
-        return float(np.sqrt(share * (1.0 - share) * each / self.counts[name][1]))
+        """Standard error of that share, were it 90 %, if `each` intervals count as one."""
+        return float(np.sqrt(0.9 * 0.1 * each / self.counts[name][1]))
 
 
 def within(middle, half, truth, angle):
@@ -150,32 +149,35 @@ KINDS = {
 }
 
 
-def count(held, truth, error, number, settings=None, *, maps=True, added=False):
+def count(held, truth, error, number, settings=None, *, maps=True, added=False, by_truth=False):
     """One trial: put an error on the truth, propagate, and count what holds the truth.
 
     Names are `quantity, kind of slope`; of parcels those with both shallow and steep ground, and
-    all; of maps `map of quantity`. With `added` by error on top of the model.
+    all; of maps `map of quantity`. The kind is that which is told, the only one that a reader of
+    the interval knows; with `by_truth` the true one. With `added` by error on top of the model.
     """
     observed = ground_of(with_foreign_error(truth, error, number))
     survey = Survey(observed, replace(error, seed=number), settings)
     real, seen = survey.of(ground_of(truth)), survey.of(observed)
-    for name, spread in (survey.spreads_of_added_error() if added else survey.spreads()).items():
+    spreads = survey.spreads_of_added_error() if added else survey.spreads()
+    told = real if by_truth else {name: spread.mean for name, spread in spreads.items()}
+    for name, spread in spreads.items():
         low, high = spread.interval(0.9)
         ok = within((low + high) / 2.0, (high - low) / 2.0, real[name], spread.angle)
         known = np.isfinite(real[name]) & np.isfinite(spread.deviation)
-        _add(held, name, ok, real, known)
+        _add(held, name, ok, told, known)
     for name, half in survey.maps().items() if maps else ():
         ok = within(seen[name], half, real[name], name == "aspect")
         known = np.isfinite(real[name]) & np.isfinite(half) & np.isfinite(seen[name])
-        _add(held, f"map of {name}", ok, real, known)
+        _add(held, f"map of {name}", ok, real if by_truth else seen, known)
 
 
-def _add(held, name, ok, real, known):
+def _add(held, name, ok, told, known):
     """Count by kind."""
     if name.startswith("parcel"):
-        mixed = (real["parcel area"] > 0.1) & (real["parcel area"] < 0.9)
+        mixed = (told["parcel area"] > 0.1) & (told["parcel area"] < 0.9)
         held.add(f"{name}, all", ok, known)
         held.add(f"{name}, mixed", ok, known & mixed)
         return
     for kind, (least, most) in KINDS.items():
-        held.add(f"{name}, {kind}", ok, known & (real["slope"] >= least) & (real["slope"] < most))
+        held.add(f"{name}, {kind}", ok, known & (told["slope"] >= least) & (told["slope"] < most))
