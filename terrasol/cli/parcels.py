@@ -228,9 +228,8 @@ def _check(around: Around, asked: AskedSky, given: dict[str, Any]) -> None:
 def _plain(given: dict[str, Any]) -> dict[str, Any]:
     """Settle all that needs no file, so that mistakes are told at once."""
     from terrasol.engine.parcel_rows import RowSettings
-    from terrasol.engine.parcels import rule_names
+    from terrasol.engine.parcel_words import read_rule
     from terrasol.light.days import parse_clock
-    from terrasol.practice.rules import parse_rule
     from terrasol.practice.season import parse_season
     from terrasol.sky.period import parse_period
 
@@ -244,7 +243,7 @@ def _plain(given: dict[str, Any]) -> dict[str, Any]:
     return {
         "clock": parse_clock(given["clock"]),
         "season": None if given["season"] is None else parse_season(given["season"]),
-        "rule_read": None if given["rule"] is None else parse_rule(given["rule"], rule_names(warm)),
+        "rule_read": None if given["rule"] is None else read_rule(given["rule"], warm=warm),
         "rows_read": RowSettings(*given["vine_rows"]) if given["vine_rows"] else None,
         "coarser": coarser,
         "albedo_for_now": (0.2,) if given["albedo"] == "station" else given["albedo"],

@@ -63,6 +63,9 @@ WARM_QUANTITIES: Final = {
 }
 """What it can speak of besides, if temperatures are given."""
 
+WITH_HIGHEST: Final = "--temperatures with the highest of every day or month"
+"""What Huglin's index needs, in words."""
+
 LAPSE_EFFECT: Final = "winkler_lapse_effect_c_days"
 """The figure that says what the lapse rate does to the degree-days."""
 
@@ -126,6 +129,11 @@ class Warmth:
     lapse: float | tuple[float, ...] = LAPSE
     beyond: str = "undefined"
 
+    @property
+    def has_highest(self) -> bool:
+        """Whether the highest of any day or month is known, for Huglin's index."""
+        return not bool(np.isnan(self.station.highest).all())
+
     def layers(self, heights: NDArray[np.float32], latitude: float) -> dict[str, NDArray[Any]]:
         """Degree-days of cells of these heights [m], one band each; Huglin's if it can be told."""
         place: dict[str, Any] = {"latitude": latitude, "lapse": self.lapse}
@@ -135,7 +143,7 @@ class Warmth:
         found["lapse_effect"] = more[None] - found["degree_days"]
         if self.station.basis.startswith("monthly"):
             found["shortfall"] = monthly_shortfall(self.station, heights, **place)[None]
-        if not np.isnan(self.station.highest).all():
+        if self.has_highest:
             index = huglin(self.station, heights, beyond=self.beyond, **place)
             found["huglin"] = np.asarray(index)[None]
         return found
@@ -184,7 +192,15 @@ class Asked:
             raise SettingError(f"flat below {self.flat_below:g} % is not 0 to under 100 %")
         if not self.least_patch >= 0.0:
             raise SettingError(f"the least patch must be 0 m2 or more; got {self.least_patch:g}")
+        if self.rule is not None and self.warmth is not None:
+            self._check_words(self.rule, self.warmth)
         object.__setattr__(self, "season_places", season_places(self.period, self.season))
+
+    @staticmethod
+    def _check_words(rule: Rule, warmth: Warmth) -> None:
+        """Refuse a rule that asks the temperatures for what they cannot tell."""
+        if "huglin" in rule.names and not warmth.has_highest:
+            raise SettingError(f"the rule {rule.text!r} names huglin, which needs {WITH_HIGHEST}")
 
     @property
     def season_words(self) -> str:

@@ -13,7 +13,8 @@ from terrasol.engine.datasets import clear_air, scene_of
 from terrasol.engine.parcel_figures import Asked, Warmth
 from terrasol.engine.parcel_rows import RowSettings
 from terrasol.engine.parcel_tables import column_rows, table_rows
-from terrasol.engine.parcels import ParcelSettings, Survey, rule_names, survey
+from terrasol.engine.parcel_words import read_rule
+from terrasol.engine.parcels import ParcelSettings, Survey, survey
 from terrasol.errors import InputError
 from terrasol.files.vectors import Polygons, as_polygons, read_polygons
 from terrasol.ground.elevation import Elevation
@@ -24,7 +25,6 @@ from terrasol.light.hours import HoursSettings
 from terrasol.light.settings import LightSettings, twelve
 from terrasol.practice.classes import FLAT_BELOW_PERCENT, SLOPE_EDGES_PERCENT
 from terrasol.practice.degree_days import LAPSE
-from terrasol.practice.rules import parse_rule
 from terrasol.practice.season import growing_season, parse_season
 from terrasol.practice.temperatures import Temperatures
 from terrasol.sky.clear import Air
@@ -144,7 +144,7 @@ def survey_parcels(
         growing_season(frame.centre[0]) if season is None else parse_season(season),
         tuple(float(edge) for edge in slope_classes),
         flat_below,
-        None if rule is None else parse_rule(rule, rule_names(warmth is not None)),
+        None if rule is None else read_rule(rule, warm=warmth is not None),
         least_patch,
         warmth,
     )

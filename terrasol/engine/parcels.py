@@ -16,8 +16,6 @@ from terrasol.engine.parcel_errors import Doubt, doubts_of
 from terrasol.engine.parcel_figures import (
     HECTARE,
     LAPSE_EFFECT,
-    QUANTITIES,
-    WARM_QUANTITIES,
     Asked,
     Figure,
     Level,
@@ -26,6 +24,7 @@ from terrasol.engine.parcel_figures import (
     patches_of,
 )
 from terrasol.engine.parcel_rows import Rows, RowSettings, row_figures, rows_of
+from terrasol.engine.parcel_words import read_score
 from terrasol.engine.plan import Block, Progress, carry_out, default_threads
 from terrasol.engine.uncertainty import doubts_of_error
 from terrasol.engine.windows import collect
@@ -110,7 +109,8 @@ class ParcelSettings:
             if factor < 2:
                 raise SettingError(f"cells are joined 2 by 2 at least; got {factor}")
         if self.score is not None:
-            parse_score(self.score, figure_names(self))
+            days, rows = len(self.hours.days), self.rows is not None
+            read_score(self.score, self.asked, days=days, rows=rows)
 
 
 @dataclass(frozen=True, eq=False)
@@ -199,35 +199,6 @@ class Survey:
 def numbers_of(figures: Sequence[Figure]) -> dict[str, float]:
     """Figures that are numbers, by name."""
     return {f.name: f.value for f in figures if not isinstance(f.value, str)}
-
-
-def rule_names(warm: bool) -> list[str]:
-    """Names that a rule may use."""
-    return [*QUANTITIES, *(WARM_QUANTITIES if warm else ())]
-
-
-def figure_names(settings: ParcelSettings) -> list[str]:
-    """Names of the figures that are numbers, as a score may use them: those of one level cell."""
-    asked, months = settings.asked, len(settings.light.period.months)
-    layers = {
-        "slope": 1,
-        "aspect": 1,
-        "sky_view": 1,
-        "irradiation_months": months,
-        "sun_hours_months": months,
-        "first_sun": len(settings.hours.days),
-        "last_sun": len(settings.hours.days),
-    }
-    cell = Piece(
-        "", Block(0, 0, 1, 1), np.ones((1, 1)), np.zeros((1, 1), np.float32),
-        {name: np.ones((bands, 1, 1), np.float32) for name, bands in layers.items()},
-        45.0, 0.0, 1.0,
-    )  # fmt: skip
-    _warm([cell], asked.warmth)
-    figures = figures_of(cell, Level(np.ones(months), np.ones(months)), asked)
-    if settings.rows is not None:
-        figures += row_figures(None, asked)
-    return list(numbers_of(figures))
 
 
 def survey(

@@ -15,11 +15,12 @@ from terrasol.engine.parcel_cells import pieces_of
 from terrasol.engine.parcel_figures import Warmth, season_places
 from terrasol.engine.parcel_frame import survey_parcels
 from terrasol.engine.parcel_rows import RowSettings
-from terrasol.engine.parcels import figure_names, survey
+from terrasol.engine.parcel_words import figure_names
+from terrasol.engine.parcels import survey
 from terrasol.errors import InputError, SettingError
 from terrasol.ground.elevation import Elevation
 from terrasol.practice.season import NORTHERN_SEASON, SOUTHERN_SEASON
-from terrasol.practice.temperatures import from_monthly
+from terrasol.practice.temperatures import from_daily, from_monthly
 from terrasol.sky.period import parse_period
 
 
@@ -191,7 +192,40 @@ def test_names_for_a_score_are_those_of_the_figures():
         coarser=(), warmth=warmth, rule="slope_deg < 9", rows=RowSettings(2.0, 1.3, 0.4)
     )
     found = survey(plane(12.0, 180.0), parcels(box(0, 0, 50, 50)), settings).parcels[0]
-    assert figure_names(settings) == list(found.numbers)
+    assert figure_names(settings.asked, days=12, rows=True) == list(found.numbers)
+
+
+WARM = Warmth(from_monthly(np.full(12, 15.0), height=500.0))
+DAYS = np.arange("2023-01-01", "2024-01-01", dtype="M8[D]")
+
+
+@pytest.mark.parametrize(
+    ("asked", "words"),
+    [
+        ({"score": "rule_share"}, "names rule_share, which needs --rule$"),
+        ({"score": "-rows_most_mj_m2_side"}, "which needs --rows$"),
+        ({"score": "winkler_mean_c_days"}, "which needs --temperatures$"),
+        ({"score": "huglin_mean_c_days"}, "which needs --temperatures$"),
+        ({"score": "rule_share * huglin_mean_c_days"}, "names huglin_.* needs --temperatures$"),
+        ({"score": "huglin_mean_c_days", "warmth": WARM}, "--temperatures with the highest of"),
+        ({"score": "slope_under_15_percent_ha_map"}, "needs other edges of --slope-classes$"),
+        ({"score": "rule_sharp"}, "names rule_sharp, which is unknown"),
+        ({"rule": "degree_days > 9"}, "names degree_days, which needs --temperatures$"),
+        ({"rule": "huglin > 9"}, "names huglin, which needs --temperatures$"),
+        ({"rule": "huglin > 9", "warmth": WARM}, "names huglin, which needs .* the highest of"),
+        ({"rule": "hugling > 9"}, "names hugling, which is unknown"),
+    ],
+)
+def test_a_word_that_another_option_brings_is_told_apart_from_an_unknown_one(asked, words):
+    with pytest.raises(SettingError, match=words):
+        asked_for(coarser=(), **asked)
+
+
+def test_what_only_months_tell_is_not_asked_of_days():
+    daily = Warmth(from_daily(DAYS, height=500.0, mean=np.full(DAYS.size, 15.0)))
+    with pytest.raises(SettingError, match=r"needs --temperatures by month$"):
+        asked_for(warmth=daily, score="winkler_shortfall_c_days")
+    asked_for(warmth=WARM, score="winkler_shortfall_c_days")  # and is known with months
 
 
 def test_results_do_not_depend_on_other_parcels_or_threads():
