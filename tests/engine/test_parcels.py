@@ -294,9 +294,9 @@ def test_rows_on_a_plane():
     assert climbed[60.0] == pytest.approx(20.0 * 0.9996 * 0.5, abs=0.05)
 
 
-@pytest.mark.parametrize("model", ["hay-davies", "isotropic"])
+@pytest.mark.parametrize("model", ["perez", "hay-davies", "isotropic"])
 def test_the_top_of_rows_gets_what_the_slope_gets(model):
-    """By another way: cells by tables of the sun, rows by its path, Perez' horizon band aside."""
+    """By another way: cells by tables of the sun, rows by its path."""
     settings = asked_for(coarser=(), rows=RowSettings(2.0, 1.3, 0.4))
     light = replace(settings.light, diffuse=model, albedo=(0.0,) * 12)
     parcel = survey(
