@@ -4,6 +4,8 @@ Each message names the thing that is wrong and says what to do. The command
 line turns each class into its own exit code; nothing here knows how.
 """
 
+from collections.abc import Sequence
+
 
 class TerrasolError(Exception):
     """Base of every error that terrasol raises on purpose."""
@@ -48,3 +50,15 @@ def counted(number: int, noun: str) -> str:
     ('1 row', '2 rows')
     """
     return f"{number} {noun}" if number == 1 else f"{number} {noun}s"
+
+
+def listed(words: Sequence[str], most: int) -> str:
+    """Word the first of many things, and how many more there are.
+
+    Examples
+    --------
+    >>> listed(["a", "b", "c"], 3), listed(["a", "b", "c"], 2)
+    ('a, b, c', 'a, b and 1 more')
+    """
+    more = f" and {len(words) - most} more" if len(words) > most else ""
+    return ", ".join(words[:most]) + more

@@ -144,6 +144,11 @@ class _Sizes(click.ParamType):
     " on both sides for each direction of the rows.",
 )
 @click.option(
+    "--canopy-albedo",
+    type=float,
+    help="Share of light that the sides of the rows send back. [default: 0.2]",
+)
+@click.option(
     "--coarser",
     metavar="FACTORS",
     default="2,4",
@@ -223,6 +228,8 @@ def _check(around: Around, asked: AskedSky, given: dict[str, Any]) -> None:
                 raise click.UsageError(f"--{option} belongs to --temperatures, which is not given")
     if given["least_patch"] and given["rule"] is None:
         raise click.UsageError("--least-patch belongs to --rule, which is not given")
+    if given["canopy_albedo"] is not None and given["vine_rows"] is None:
+        raise click.UsageError("--canopy-albedo belongs to --rows, which is not given")
 
 
 def _plain(given: dict[str, Any]) -> dict[str, Any]:
@@ -235,6 +242,7 @@ def _plain(given: dict[str, Any]) -> dict[str, Any]:
 
     parse_period(given["period"])
     warm = given["temperatures"] is not None
+    canopy = () if given["canopy_albedo"] is None else (given["canopy_albedo"],)
     factors = given["coarser"]
     try:
         coarser = () if factors == "none" else tuple(int(part) for part in factors.split(","))
@@ -244,7 +252,7 @@ def _plain(given: dict[str, Any]) -> dict[str, Any]:
         "clock": parse_clock(given["clock"]),
         "season": None if given["season"] is None else parse_season(given["season"]),
         "rule_read": None if given["rule"] is None else read_rule(given["rule"], warm=warm),
-        "rows_read": RowSettings(*given["vine_rows"]) if given["vine_rows"] else None,
+        "rows_read": RowSettings(*given["vine_rows"], *canopy) if given["vine_rows"] else None,
         "coarser": coarser,
         "albedo_for_now": (0.2,) if given["albedo"] == "station" else given["albedo"],
     }
@@ -396,6 +404,7 @@ class _Job:
             "score": settings.score,
             "coarser": list(settings.coarser),
             "rows_m": None if settings.rows is None else given["vine_rows"],
+            "canopy_albedo": None if settings.rows is None else settings.rows.canopy_albedo,
             "clock": settings.hours.clock.name,
             "days": [str(day) for day in settings.hours.days],
             "air": light.air.record(),
@@ -428,6 +437,7 @@ class _Job:
         from terrasol.engine.hours import plan_hours
         from terrasol.engine.job import plan_irradiation
         from terrasol.engine.plan import default_threads
+        from terrasol.files.overlaps import overlap_doubts
         from terrasol.files.rasters import naming
 
         common, elevation = self.common, self.ground.elevation
@@ -453,8 +463,10 @@ class _Job:
             "disk_free_mb": free_disk_mb(common.out_dir),
             "threads": threads,
             "seconds": round(seconds),
-            "warnings": [*elevation.warnings, *polygons.warnings, *notes],
-        }
+            "warnings": [
+                *elevation.warnings, *polygons.warnings, *overlap_doubts(polygons), *notes,
+            ],
+        }  # fmt: skip
 
     def _carry_out(
         self,

@@ -11,6 +11,7 @@ from typing import Any, Final
 import numpy as np
 from numpy.typing import NDArray
 
+from terrasol.constants import HECTARE
 from terrasol.engine.outputs import MONTH_NAMES
 from terrasol.engine.parcel_cells import Piece
 from terrasol.errors import SettingError
@@ -38,9 +39,6 @@ from terrasol.practice.degree_days import (
 from terrasol.practice.rules import Patches, Rule, keep_patches, meet
 from terrasol.practice.temperatures import Temperatures
 from terrasol.sky.period import Period
-
-HECTARE: Final = 10_000.0
-"""Square metres."""
 
 PERCENTS: Final = (10, 50, 90)
 """Percentiles of slope."""

@@ -10,11 +10,11 @@ from typing import Any, Final
 import numpy as np
 from numpy.typing import NDArray
 
+from terrasol.constants import HECTARE
 from terrasol.engine.job import NO_SCENE, plan_terrain
 from terrasol.engine.parcel_cells import Piece, SceneOf, pieces_of
 from terrasol.engine.parcel_errors import Doubt, doubts_of
 from terrasol.engine.parcel_figures import (
-    HECTARE,
     LAPSE_EFFECT,
     Asked,
     Figure,
@@ -28,7 +28,8 @@ from terrasol.engine.parcel_words import read_score
 from terrasol.engine.plan import Block, Progress, carry_out, default_threads
 from terrasol.engine.uncertainty import doubts_of_error
 from terrasol.engine.windows import collect
-from terrasol.errors import SettingError
+from terrasol.errors import SettingError, listed
+from terrasol.files.overlaps import overlap_doubts
 from terrasol.files.vectors import Polygons
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
@@ -58,6 +59,9 @@ source)."""
 LARGE_EFFECT: Final = 100.0
 """Degree-days that 1 K km-1 of lapse rate may move without a warning: a third of a class of
 Winkler's (judgement, no source)."""
+
+Look = tuple[float, list[Piece | None]]
+"""A cell size [m], and the parcels' cells of that size."""
 
 HORIZON_AZIMUTHS: Final = 256
 """Azimuths of the horizon that a sheet shows."""
@@ -239,23 +243,17 @@ def survey(
     told = progress or (lambda share, stage: None)
     scene_of = _once(scene_of)
     part = 1.0 if settings.error is None else 0.3
-    looks, levels, warnings = _looks(
+    looks, levels, notes = _looks(
         elevation, polygons, settings, scene_of, threads, partial(_told_part, told, 0.0, 0.9 * part)
     )
-    fine = [(k, piece) for k, piece in enumerate(looks[0][1]) if piece is not None]
-    horizons = _horizons(elevation, [piece for _, piece in fine], settings, scene_of, threads)
+    parcels = _parcels(elevation, polygons, settings, looks, levels, scene_of, threads)
     told(part, "figures")
-    parcels = []
-    for (k, piece), horizon in zip(fine, horizons, strict=True):
-        level = levels[k]
-        assert level is not None
-        coarse = [(size, _figures(each[k], level, settings.asked)) for size, each in looks[1:]]
-        parcel = _parcel(piece, polygons.geometries[k], level, coarse, horizon, settings)
-        parcels.append(replace(parcel, given=polygons.given(k)))
-    warnings = (*polygons.warnings, *warnings, *doubts_of_error(elevation, settings.error))
-    warnings = (*warnings, *_doubts_of_size(parcels), *_doubts_of_lapse(parcels))
-    warnings = (*warnings, *_doubts_of_rule(parcels))
-    found = _ranked(parcels, settings, looks[0][0], [*warnings])
+    warnings = [
+        *polygons.warnings, *overlap_doubts(polygons), *notes,
+        *doubts_of_error(elevation, settings.error), *_doubts_of_size(parcels),
+        *_doubts_of_lapse(parcels), *_doubts_of_rule(parcels),
+    ]  # fmt: skip
+    found = _ranked(parcels, settings, looks[0][0], warnings)
     if settings.error is not None:
         found = _doubted(
             found, elevation, settings.error, scene_of, threads,
@@ -272,12 +270,12 @@ def _looks(
     scene_of: SceneOf,
     threads: int | None,
     told: Progress,
-) -> tuple[list[tuple[float, list[Piece | None]]], list[Level | None], tuple[str, ...]]:
+) -> tuple[list[Look], list[Level | None], tuple[str, ...]]:
     """The cells of the parcels at each cell size, level ground beside them, and warnings."""
     factors = (1, *settings.coarser)
     work = np.cumsum([0.0, *(1.0 / factor**2 for factor in factors)])
     work /= work[-1]
-    looks: list[tuple[float, list[Piece | None]]] = []
+    looks: list[Look] = []
     warnings: tuple[str, ...] = ()
     levels: list[Level | None] = []
     for k, factor in enumerate(factors):
@@ -318,8 +316,8 @@ def _doubts_of_size(parcels: Sequence[Parcel]) -> list[str]:
     if not few:
         return []
     return [
-        f"few cells lie in {_listed(few)}: their slopes and classes are those of the ground around"
-        " as much as their own; take a finer model"
+        f"few cells lie in {listed(few, MOST_NAMED)}: their slopes and classes are those of the"
+        " ground around as much as their own; take a finer model"
     ]
 
 
@@ -335,15 +333,9 @@ def _doubts_of_rule(parcels: Sequence[Parcel]) -> list[str]:
     if not unknown:
         return []
     return [
-        f"the rule is unknown on ground of {_listed(unknown)}, which is not counted:"
+        f"the rule is unknown on ground of {listed(unknown, MOST_NAMED)}, which is not counted:"
         " a word of the rule is unknown there, or it divides by zero"
     ]
-
-
-def _listed(words: Sequence[str]) -> str:
-    """The first of many, and how many more."""
-    more = len(words) - MOST_NAMED
-    return ", ".join(words[:MOST_NAMED]) + (f" and {more} more" if more > 0 else "")
 
 
 def _doubts_of_lapse(parcels: Sequence[Parcel]) -> list[str]:
@@ -399,6 +391,28 @@ def _doubted(
     return replace(found, parcels=parcels)
 
 
+def _parcels(
+    elevation: Elevation,
+    polygons: Polygons,
+    settings: ParcelSettings,
+    looks: list[Look],
+    levels: list[Level | None],
+    scene_of: SceneOf,
+    threads: int | None,
+) -> list[Parcel]:
+    """The parcels on the raster, with their horizons."""
+    fine = [(k, piece) for k, piece in enumerate(looks[0][1]) if piece is not None]
+    horizons = _horizons(elevation, [piece for _, piece in fine], settings, scene_of, threads)
+    parcels = []
+    for (k, piece), horizon in zip(fine, horizons, strict=True):
+        level = levels[k]
+        assert level is not None
+        coarse = [(size, _figures(each[k], level, settings.asked)) for size, each in looks[1:]]
+        parcel = _parcel(piece, polygons.geometries[k], level, coarse, horizon, settings)
+        parcels.append(replace(parcel, given=polygons.given(k)))
+    return parcels
+
+
 def _parcel(
     piece: Piece,
     outline: Any,
@@ -434,8 +448,8 @@ def _ranked(
     unknown = [f"'{p.name}'" for p, s in zip(parcels, ranking.total, strict=True) if np.isnan(s)]
     if unknown:
         warnings.append(
-            f"the score of {_listed(unknown)} is unknown, so it has no rank: a column of it is"
-            " unknown there, or it divides by zero"
+            f"the score of {listed(unknown, MOST_NAMED)} is unknown, so it has no rank: a column"
+            " of it is unknown there, or it divides by zero"
         )
     return Survey(parcels, settings, cell_size, ranking, score, warnings)
 

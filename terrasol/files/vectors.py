@@ -18,7 +18,7 @@ from pyproj.exceptions import CRSError, ProjError
 from rasterio import Affine
 from rasterio.features import shapes as traced
 
-from terrasol.errors import InputError, SettingError, counted
+from terrasol.errors import InputError, SettingError, counted, listed
 from terrasol.files.rasters import naming
 from terrasol.ground.elevation import Affine6
 
@@ -231,8 +231,7 @@ def _layer(path: str | PathLike[str], wanted: str | None, geometry: str) -> str:
 
 def word_list(names: Sequence[str], most: int = 12) -> str:
     """Word some names, the first few in full."""
-    shown = ", ".join(f"'{name}'" for name in names[:most])
-    return shown + (f" and {len(names) - most} more" if len(names) > most else "")
+    return listed([f"'{name}'" for name in names], most)
 
 
 def source_crs(crs: Any, path: str | PathLike[str]) -> CRS:

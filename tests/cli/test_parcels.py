@@ -53,7 +53,7 @@ def whole(places, tmp_path_factory):
     out = tmp_path_factory.mktemp("out") / "out"
     asked = [
         *RULE, "--score", "rule_ha_map - slope_mean_percent / 10", "--rows", "2,1.3,0.4",
-        "--temperatures", str(days), "--temperatures-height", "500", "--dem-error", "0.2,30",
+        "--canopy-albedo", "0.15", "--temperatures", str(days), "--temperatures-height", "500", "--dem-error", "0.2,30",
         "--realisations", "2", "--coarser", "2",
     ]  # fmt: skip
     assert main(["parcels", str(dem), str(shapes), str(out), *QUICK, *asked]) == 0
@@ -125,6 +125,7 @@ def test_record_says_how_and_what_not(whole):
     record = json.loads((whole / "run.json").read_text("utf-8"))
     assert record["command"] == "parcels"
     settings = record["settings"]
+    assert settings["canopy_albedo"] == 0.15
     assert settings["rule"] == RULE[1]
     assert settings["season"] == "April to October"
     assert settings["dem_error"]["rmse_m"] == 0.2
@@ -248,6 +249,8 @@ def test_ground_beyond_and_trees_above_take_sun(places, tmp_path):
         (["--least-patch", "500"], 2, "--least-patch belongs to --rule"),
         (["--rows", "2,1.3"], 2, "3 numbers"),
         (["--rows", "1,1.3,1.2"], 2, "no gap"),
+        (["--rows", "2,1.3,0.4", "--canopy-albedo", "1"], 2, "canopy albedo 1 is outside 0 to"),
+        (["--canopy-albedo", "0.2"], 2, "--canopy-albedo belongs to --rows"),
         (["--slope-classes", "10,5"], 2, "ascend"),
         (["--season", "13-14"], 2, "season"),
         (["--period", "2025-05/2025-06"], 2, "no whole growing season"),
@@ -321,6 +324,17 @@ def test_a_bow_tie_is_mended_and_said_so(places, tmp_path, capsys):
     assert "warning: the outline of 'tie' was not valid" in capsys.readouterr().err
     area = float(rows_of(out / "parcels.csv")[0]["map_area_ha"])
     assert area == pytest.approx(0.5 * 0.9996**-2, rel=1e-4)
+
+
+def test_overlaps_are_told_before_the_work_too(places, tmp_path, capsys):
+    shapes = [outline(0, 0, 100, 100), outline(50, 0, 150, 100)]
+    table = geopandas.GeoDataFrame({"name": ["a", "b"]}, geometry=shapes, crs=UTM)
+    table.to_file(tmp_path / "two.gpkg")
+    asked = ["parcels", str(places[0]), str(tmp_path / "two.gpkg"), str(tmp_path / "o")]
+    assert main([*asked, "--dry-run", "--json"]) == 0
+    (said,) = json.loads(capsys.readouterr().out)["warnings"]
+    assert said.startswith("outlines overlap")
+    assert said.endswith("'a' with 'b' (0.5 ha)")
 
 
 def test_long_names_do_not_widen_the_table():

@@ -14,7 +14,7 @@ from pyproj import CRS, Transformer
 from terrasol.engine.parcel_cells import pieces_of
 from terrasol.engine.parcel_figures import Warmth, season_places
 from terrasol.engine.parcel_frame import survey_parcels
-from terrasol.engine.parcel_rows import RowSettings
+from terrasol.engine.parcel_rows import RowSettings, rows_of
 from terrasol.engine.parcel_words import figure_names
 from terrasol.engine.parcels import survey
 from terrasol.errors import InputError, SettingError
@@ -319,6 +319,19 @@ def test_half_the_step_moves_no_side_of_a_row():
     assert np.allclose(finer.sides, parcel.rows.sides, rtol=1e-3)
 
 
+def test_a_dark_canopy_sends_no_light_to_the_other_side():
+    settings = asked_for(coarser=(), rows=RowSettings(2.0, 1.3, 0.4))
+    parcel = survey(plane(20.0, 140.0), parcels(box(-50, -50, 50, 50)), settings).parcels[0]
+    dark = rows_of(
+        parcel.piece, parcel.horizon, RowSettings(2.0, 1.3, 0.4, 0.0), settings.light,
+        settings.asked,
+    )  # fmt: skip
+    assert (dark.sides < parcel.rows.sides).all()
+    assert np.array_equal(dark.light.diffuse, parcel.rows.light.diffuse)
+    with pytest.raises(SettingError, match="canopy albedo 1 is outside"):
+        RowSettings(2.0, 1.3, 0.4, 1.0)
+
+
 def test_degree_days_fall_with_height():
     """Twelve means of 15 degrees at 500 m: 214 days of 5 K, less 0.65 K a hundred metres."""
     warmth = Warmth(from_monthly(np.full(12, 15.0), height=500.0, highest=np.full(12, 20.0)))
@@ -379,3 +392,11 @@ def test_parcels_of_few_cells_are_doubted():
     assert len(doubts) == 1
     assert "'P0' (6.2)" in doubts[0]
     assert "P1" not in doubts[0]
+
+
+def test_parcels_that_overlap_are_told_with_the_ground_they_share():
+    shapes = parcels(box(-100, -50, 0, 50), box(-40, -50, 100, 50))
+    found = survey(plane(12.0, 180.0), shapes, asked_for(coarser=()))
+    assert any("'P0' with 'P1' (0.4 ha)" in text for text in found.warnings)
+    areas = [parcel.numbers["map_area_ha"] for parcel in found.parcels]
+    assert sum(areas) == pytest.approx(2.4 * SCALE, rel=1e-4)  # of 2 ha of ground
