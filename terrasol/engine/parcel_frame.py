@@ -25,6 +25,7 @@ from terrasol.light.hours import HoursSettings
 from terrasol.light.settings import LightSettings, twelve
 from terrasol.practice.classes import FLAT_BELOW_PERCENT, SLOPE_EDGES_PERCENT
 from terrasol.practice.degree_days import LAPSE
+from terrasol.practice.rows import CANOPY_ALBEDO
 from terrasol.practice.season import growing_season, parse_season
 from terrasol.practice.temperatures import Temperatures
 from terrasol.sky.clear import Air
@@ -52,6 +53,7 @@ def survey_parcels(
     temperatures: Temperatures | None = None,
     lapse_rate: float | Sequence[float] = LAPSE,
     rows: tuple[float, float, float] | None = None,
+    canopy_albedo: float = CANOPY_ALBEDO,
     clock: str = "solar",
     sky: Sky | None = None,
     albedo: float | Sequence[float] = 0.2,
@@ -99,6 +101,8 @@ def survey_parcels(
         Fall of temperature with height [K km-1].
     rows : tuple of three floats, optional
         Spacing, height and width of vine rows [m].
+    canopy_albedo : float
+        Share of light that the sides of the rows send back, evenly.
     clock : str
         Time of day of first and last sun; see `sun_hours`.
     sky : Sky, optional
@@ -158,7 +162,7 @@ def survey_parcels(
         step_seconds=step_seconds, refraction=refraction,
     )  # fmt: skip
     settings = ParcelSettings(
-        light, hours, asked, score, (), None if rows is None else RowSettings(*rows),
+        light, hours, asked, score, (), None if rows is None else RowSettings(*rows, canopy_albedo),
         dem_error,
     )  # fmt: skip
     found = survey(
