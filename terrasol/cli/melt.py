@@ -343,7 +343,7 @@ class _Job:
             record |= {
                 "threads": threads,
                 "results": numbers,
-                "warnings": [*result.summary.warnings, *self._doubts(), *more],
+                "warnings": [*result.summary.warnings, *self.notes, *more],
                 "seconds": {name: round(value, 2) for name, value in seconds.items()},
                 "files": [os.path.abspath(delivery.folder / name) for name in self.all_names],
                 "removed": removed,
@@ -356,7 +356,7 @@ class _Job:
         return record
 
     def _doubts(self) -> list[str]:
-        """Warnings from before the run."""
+        """Warnings from before a run; its summary holds those of ground and scene too."""
         plan = self.prepared.plan
         return [*self.ground.elevation.warnings, *plan.light.scene.warnings, *self.notes]
 

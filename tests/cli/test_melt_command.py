@@ -330,3 +330,12 @@ def test_a_store_that_takes_nothing_does_not_end_the_run(
     assert any(w.startswith(f"{store}: horizons could not be kept there") for w in warnings)
     assert not list(store.iterdir())
     assert not [p for p in (tmp_path / "out").iterdir() if p.name.startswith("horizons")]
+
+
+def test_a_doubt_of_the_ground_is_told_once(station, tmp_path, capsys):
+    raster = write_raster(tmp_path / "unnamed.tif", hills())
+    words = ["--melt", "degree-days", "--period", "2025-02-21", "--stack", "none", "--json"]
+    for more in (["--dry-run"], []):
+        assert main(["melt", str(raster), str(station), str(tmp_path / "out"), *words, *more]) == 0
+        warnings = json.loads(capsys.readouterr().out)["warnings"]
+        assert sum("metres are assumed" in warning for warning in warnings) == 1
