@@ -53,8 +53,8 @@ def whole(places, tmp_path_factory):
     out = tmp_path_factory.mktemp("out") / "out"
     asked = [
         *RULE, "--score", "rule_ha_map - slope_mean_percent / 10", "--rows", "2,1.3,0.4",
-        "--canopy-albedo", "0.15", "--temperatures", str(days), "--temperatures-height", "500", "--dem-error", "0.2,30",
-        "--realisations", "2", "--coarser", "2",
+        "--canopy-albedo", "0.15", "--temperatures", str(days), "--temperatures-height", "500",
+        "--dem-error", "0.2,30", "--realisations", "2", "--coarser", "2",
     ]  # fmt: skip
     assert main(["parcels", str(dem), str(shapes), str(out), *QUICK, *asked]) == 0
     return out
