@@ -650,13 +650,16 @@ LONGEST_CELL: Final = 40
 
 def _cell(row: dict[str, Any], name: str, form: str) -> str:
     """A figure for the table, with its standard error where that is small enough to matter."""
+    from terrasol.engine.parcel_figures import known_area
+    from terrasol.show.plus_minus import plus_minus
+
     if row.get(name) is None:
         return "-"
-    error = row.get(f"{name}_se") if name == "rule_ha_map" else None
+    if name == "rule_ha_map":
+        error, whole = row.get(f"{name}_se"), known_area(row)
+        return plus_minus(row[name], error, ".2f", sign="+/-", whole=whole)
     told = form.format(row[name])
-    if len(told) > LONGEST_CELL:
-        told = f"{told[: LONGEST_CELL - 3]}..."
-    return told + ("" if error is None else f" +/- {form.format(error)}")
+    return told if len(told) <= LONGEST_CELL else f"{told[: LONGEST_CELL - 3]}..."
 
 
 def _summary_text(record: dict[str, Any]) -> str:
@@ -697,6 +700,11 @@ def _summary_text(record: dict[str, Any]) -> str:
             settings["least_patch_m2"]
         )
         told.append(f"rule: {settings['rule']}{least}")
+        if any(row.get("rule_ha_map_se") is not None for row in rows):
+            told.append(
+                "rule ha: +/- one standard error from the error of the heights; a range where none"
+                " or all of a parcel meets the rule"
+            )
     if settings["score"]:
         told.append(f"score: {settings['score']}")
     told.append(results["not_in_it"])

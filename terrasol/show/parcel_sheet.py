@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from terrasol import __version__
 from terrasol.engine.outputs import MONTH_NAMES
-from terrasol.engine.parcel_figures import LAPSE_EFFECT, month_keys, slope_class_keys
+from terrasol.engine.parcel_figures import LAPSE_EFFECT, known_area, month_keys, slope_class_keys
 from terrasol.engine.parcels import Parcel, Survey, numbers_of
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame
@@ -32,6 +32,7 @@ from terrasol.show.parcel_map import (
     scale_length,
     slope_colours,
 )
+from terrasol.show.plus_minus import plus_minus
 from terrasol.show.skyline import HOUR_LINES, draw_skyline, tracks_of, view_limits
 
 WIDTH, HEIGHT, MARGIN = 827, 1169, 44
@@ -218,11 +219,14 @@ def facts(survey: Survey, parcel: Parcel) -> list[tuple[str, str]]:
 
 def with_error(parcel: Parcel, name: str, form: str, factor: float = 1.0) -> str:
     """A figure with its standard error behind it, if there is one."""
-    text = format(parcel.numbers[name] * factor, form)
-    doubt = parcel.doubts.get(name)
-    if doubt is None or not np.isfinite(doubt.standard_error):
-        return text
-    return f"{text} ± {format(doubt.standard_error * factor, form)}"
+    numbers, doubt = parcel.numbers, parcel.doubts.get(name)
+    whole = known_area(numbers) if name.endswith("_ha_map") else np.nan
+    return plus_minus(
+        numbers[name] * factor,
+        None if doubt is None else doubt.standard_error * factor,
+        form,
+        whole=whole * factor,
+    )
 
 
 def _warm_facts(parcel: Parcel) -> list[tuple[str, str]]:
@@ -575,7 +579,8 @@ def notes_of(survey: Survey) -> list[str]:
     if error is not None:
         notes.append(
             f"± one standard error from an error of heights of {error.rmse:g} m"
-            f" ({error.realisations} grounds)."
+            f" ({error.realisations} grounds); a range where an area is none or all"
+            " of the parcel."
         )
     if asked.rule is not None:
         least = f", in patches from {asked.least_patch:g} m²" if asked.least_patch else ""

@@ -343,6 +343,14 @@ def test_long_names_do_not_widen_the_table():
     assert _cell(row, "map_area_ha", "{:.2f}") == "1.00"
 
 
+def test_an_area_of_none_or_all_has_a_range_in_place_of_a_standard_error_both_ways():
+    row = {"map_area_ha": 3.0, "unknown_ha_map": 0.5, "rule_ha_map_se": 0.32}
+    for area, told in ((0.0, "0.00 to 0.32"), (1.0, "1.00 +/- 0.32"), (2.5, "2.18 to 2.50")):
+        assert _cell(row | {"rule_ha_map": area}, "rule_ha_map", "{:.2f}") == told
+    row |= {"rule_ha_map": 0.0, "rule_ha_map_se": None}
+    assert _cell(row, "rule_ha_map", "{:.2f}") == "0.00"
+
+
 def test_names_of_sheets_are_plain_and_differ():
     names = sheet_names(["Ä b", "../x", "", "日本"])
     assert names == ["sheet_1_a-b.png", "sheet_2_x.png", "sheet_3.png", "sheet_4.png"]

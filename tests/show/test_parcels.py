@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import re
+
 import numpy as np
 import pytest
 import shapely
@@ -122,10 +124,20 @@ def test_standard_errors_stand_behind_their_figures():
     settings = asked_for(coarser=(), rule="slope_percent < 15", error=DemError(0.3, 0.0, 2))
     found = survey(ground, parcels(box(0, 0, 60, 60)), settings)
     told = dict(facts(found, found.parcels[0]))
-    assert " ± " in told["Meets the rule"]
     assert " ± " in told["Slope, mean"]
     words = all_words(parcel_page(found, found.parcels[0], ground, frame_of(ground), title="T"))
     assert "± one standard error" in words
+
+
+def test_an_area_of_none_or_all_is_off_to_one_side():
+    from terrasol.ground.uncertainty import DemError
+
+    ground = plane(14.5, 180.0)
+    for limit, pattern in ((14, r"0\.00 to 0\.\d\d ha, 0 %"), (15, r"0\.\d\d to 0\.36 ha, 100 %")):
+        error, rule = DemError(0.3, 0.0, 2), f"slope_percent < {limit}"
+        settings = asked_for(coarser=(), rule=rule, error=error)
+        found = survey(ground, parcels(box(0, 0, 60, 60)), settings)
+        assert re.fullmatch(pattern, dict(facts(found, found.parcels[0]))["Meets the rule"])
 
 
 @pytest.mark.parametrize("turn", [0.0, 40.0])
