@@ -154,6 +154,8 @@ def _rearrange(command: click.Command) -> None:
             option.help = "Monthly mean of global light by that of a clear sky, for clouds."
         elif option.name == "as_json":
             option.help = "Print one JSON object on stdout in place of the text."
+        elif option.name == "quiet":
+            option.help = "Print the result alone: no progress, no word of files; errors stay."
         elif option.name == "overwrite":
             option.help = (
                 "Replace files that are there, and remove those of an earlier run in FOLDER that"
@@ -177,13 +179,19 @@ def _check(around: Around, given: dict[str, Any]) -> None:
 
 def _days(texts: tuple[str, ...]) -> tuple[date, ...]:
     """The days whose sun's path is wanted."""
-    from terrasol.sky.period import parse_period
+    from terrasol.sky.period import FIRST_YEAR, LAST_YEAR, parse_period
 
     found = []
     for text in texts:
-        period = parse_period(text)
-        if period.days != 1:
-            raise SettingError(f"--day {text} is not one day: write it as 2025-08-15")
+        try:
+            period = parse_period(text)
+        except SettingError:
+            period = None
+        if period is None or period.days != 1:
+            raise SettingError(
+                f"--day {text!r} is not one day of the years {FIRST_YEAR} to {LAST_YEAR}: write it"
+                " as 2025-08-15"
+            )
         found.append(period.start.astype("M8[D]").item())
     return tuple(found)
 
@@ -242,7 +250,7 @@ def _geodetic(place: tuple[float, float], crs: str | None, ground: Ground) -> tu
             own = ground.elevation.crs if crs == OF_THE_RASTER else CRS.from_user_input(crs)
         except CRSError as error:
             raise SettingError(
-                f"--at-crs {crs} is not a CRS that is known: write EPSG:32632, say"
+                f"--at-crs {crs!r} is not a CRS that is known: write EPSG:32632, say, or dem"
             ) from error
         longitude, latitude = Transformer.from_crs(own, WGS84, always_xy=True).transform(*place)
     if not (abs(latitude) <= 90.0 and math.isfinite(longitude) and abs(longitude) <= 540.0):
@@ -465,7 +473,7 @@ class _Job:
         common = self.common
         if common.as_json:
             give(json.dumps(record, indent=2))
-        elif not common.quiet:
+        else:
             give(site_text(sites, [f"warning: {text}" for text in record["warnings"]]))
         if self.names and not common.quiet and not common.as_json:
             took = duration(record["seconds"]["whole run"])

@@ -42,6 +42,7 @@ from terrasol.show.site_text import (
     error_words,
     facts,
     lost_words,
+    month_head,
     month_rows,
 )
 from terrasol.show.skyline import (
@@ -99,7 +100,7 @@ HEIGHTS: Final = {"horizon": 178, "months": 150, "year": 160}
 BARS: Final = 330
 """Measures of the sheet [pixels]."""
 
-COLUMN_ENDS: Final = np.array([0.29, 0.40, 0.52, 0.70, 0.83, 1.0])
+COLUMN_ENDS: Final = np.array([0.27, 0.38, 0.56, 0.74, 0.86, 1.0])
 """Right ends of the table's columns, as shares of its width."""
 
 Values = NDArray[np.float64]
@@ -398,8 +399,8 @@ class _Sheet:
         x, y = self.left + BARS + 22, float(TOPS["months"] - 26)
         ends = x + (self.right - x) * COLUMN_ENDS
         self._title(x, y, "By month", f"first and last sun on the 21st, {site.sun.clock.words}")
-        unit = key.printed_unit(site.energy.settings.unit)
-        head = (unit, "level", "share", "sun h/day", "first", "last")
+        unit, *words = month_head(site)[1:]
+        head = (key.printed_unit(unit), *words)
         y += 18.0
         for word, end in zip(head, ends, strict=True):
             self._text(end, y, word, SMALL, colour=SOFT, across="right")
@@ -409,8 +410,7 @@ class _Sheet:
         for row in rows:
             y += step
             self._text(x, y, row[0], size)
-            cells = (row[1], row[2], f"{row[3]} %" if row[3] != "-" else "-", *row[4:])
-            for cell, end in zip(cells, ends, strict=True):
+            for cell, end in zip(row[1:], ends, strict=True):
                 self._text(end, y, cell, size, across="right")
         self.page.lines([[(x, TOPS["months"] - 4), (self.right, TOPS["months"] - 4)]], colour=GRID)
 
