@@ -32,8 +32,9 @@ COVER = "#9a9d93"
 MOST_NAMED: Final = 22
 """Bands that the key has room for."""
 
-LATE_IS_PALE: Final = "GnBu_r"
-"""Colours of melt-out: dark where the ground is bare early, pale where snow lies long."""
+LATE_IS_BRIGHT: Final = "viridis"
+"""Colours of melt-out, dark where the ground is bare early: perceptually even, read by colour-blind
+eyes and in grey, and full at both ends, so that late dates stand out from the paper."""
 
 
 def hydrograph_png(
@@ -144,7 +145,7 @@ def melt_out_png(
         unit=f"date; season from {first_day}",
         notes=notes,
         frame=frame,
-        colour_map=LATE_IS_PALE,
+        colour_map=LATE_IS_BRIGHT,
         first_day=first_day,
         void_words="no snow came, or it still lies" + (", or no data" if unknown else ""),
     )

@@ -10,6 +10,7 @@ from terrasol.engine.melt_tables import DEPTHS, SeasonTables, check_csv
 from terrasol.ground.frame import make_frame
 from terrasol.practice.snow_point import StationCheck
 from terrasol.show import melt as show
+from terrasol.show.key import Scale
 from terrasol.show.page import Page
 
 
@@ -90,9 +91,18 @@ def test_map_of_melt_out_names_dates(said, metric_ground):
     assert png.startswith(b"\x89PNG")
     assert "1 Feb" in said
     assert "15 Mar" in said
+    assert {"9 Jan", "17 Apr"} <= set(said)  # the ends: days 100 and 198 of the season
+    assert "15 Apr" not in said  # too near to the last one
     assert "no snow came, or it still lies" in said
     assert "no data" not in said
     assert any(word.startswith("mean ") for word in said)
+
+
+def test_early_and_late_stand_out_from_the_paper_and_in_grey():
+    ramp = Scale(0.0, 1.0, colour_map=show.LATE_IS_BRIGHT).colours(np.linspace(0.0, 1.0, 33))
+    lightness = ramp @ np.array([0.2126, 0.7152, 0.0722])  # of linear light, near enough to order
+    assert (np.diff(lightness) > 0.0).all()
+    assert (np.ptp(ramp[[0, -1]], axis=1) > 0.2).all()  # neither end is grey or white
 
 
 @pytest.mark.parametrize("fitted", [True, False])
