@@ -63,6 +63,46 @@ def lines(rows: Iterable[tuple[str, str]]) -> str:
     return "\n".join(f"{name:<11} {text}" for name, text in rows)
 
 
+def forecast_text(
+    forecast: Record,
+    own: Iterable[tuple[str, str]],
+    *,
+    about: str = "about",
+    no_files: str = "none",
+) -> str:
+    """A forecast for people: the raster, the command's own lines, files, cost and warnings.
+
+    Parameters
+    ----------
+    forecast : dict
+        With what `ground_forecast` gives, ``files``, ``removed`` and ``warnings``; also
+        ``memory_mb``, ``seconds`` and ``threads`` together, and ``remarks``, where they are known.
+    own : iterable of (str, str)
+        Names and what they stand for.
+    about : str
+        What stands before the time.
+    no_files : str
+        What stands for no file.
+    """
+    f = forecast
+    rows = [
+        ("input", f["input"]),
+        ("CRS", f["crs"]),
+        grid_line(f),
+        heights_line(f),
+        *own,
+        ("files", ", ".join(f["files"]) or no_files),
+    ]
+    if f["removed"]:
+        rows.append(("removed", ", ".join(f["removed"])))
+    if "seconds" in f:
+        time = f"{about} {duration(f['seconds'])} on {counted(f['threads'], 'thread')}"
+        rows += [("memory", f"{f['memory_mb']:,} MB"), ("time", time)]
+    rows += [("note", text) for text in f.get("remarks", ())]
+    rows += [("warning", text) for text in f["warnings"]]
+    return lines(rows)
+
+
 def duration(seconds: float) -> str:
     """A time that a person reads at a glance.
 

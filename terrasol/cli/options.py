@@ -223,6 +223,13 @@ _OPTIONS = (
 )
 
 
+def arguments_in_order(command: click.Command, *names: str) -> None:
+    """Put a command's arguments first, in the order of these names; options stay in theirs."""
+    command.params.sort(
+        key=lambda each: names.index(each.name) if each.name in names else len(names)
+    )
+
+
 def common_options(command: Callable[..., None]) -> Callable[..., None]:
     """Give a command the shared arguments and options, as one `Common` before its own."""
 

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import os
 import time
 from collections.abc import Iterator
 from dataclasses import dataclass
@@ -16,6 +15,7 @@ from terrasol.cli.options import (
     Common,
     Name,
     Numbers,
+    arguments_in_order,
     clock_option,
     common_options,
     diffuse_option,
@@ -23,7 +23,6 @@ from terrasol.cli.options import (
     step_option,
 )
 from terrasol.cli.sky_options import AskedSky, Settled, file_record, shortest, sky_options
-from terrasol.errors import counted
 
 if TYPE_CHECKING:
     from terrasol.cli.run import Ground
@@ -202,10 +201,7 @@ def parcels(
 
 def _rearrange(command: click.Command) -> None:
     """Put the arguments in order, and hide what means nothing here."""
-    order = ("dem", "parcels_file", "out_dir")
-    command.params.sort(
-        key=lambda each: order.index(each.name) if each.name in order else len(order)
-    )
+    arguments_in_order(command, "dem", "parcels_file", "out_dir")
     for option in command.params:
         if isinstance(option, click.Option):
             option.hidden = option.hidden or option.name in NOT_HERE
@@ -219,8 +215,7 @@ _rearrange(parcels)
 
 def _check(around: Around, asked: AskedSky, given: dict[str, Any]) -> None:
     """Refuse options that mean nothing here, or nothing without another."""
-    if around.horizon_gap or around.highest is not None:
-        raise click.UsageError("--horizon-gap belongs to terrasol irradiation: it is a map")
+    around.refuse_map()
     if given["temperatures"] is None:
         for name in ("temperatures_height", "lapse_rate"):
             if given[name] is not None:
@@ -478,10 +473,10 @@ class _Job:
     ) -> dict[str, Any]:
         """Compute and write everything, or leave nothing behind; return the record."""
         from terrasol.cli.progress import progress_bar
-        from terrasol.cli.run import announce_compilation, superseded
+        from terrasol.cli.run import announce_compilation, deliver, seconds_of
         from terrasol.engine.parcels import survey
         from terrasol.engine.plan import default_threads
-        from terrasol.files.delivery import RECORD, Delivery
+        from terrasol.files.delivery import Delivery
         from terrasol.files.provenance import run_record
         from terrasol.files.rasters import naming
 
@@ -498,24 +493,15 @@ class _Job:
                 )  # fmt: skip
             computed = time.perf_counter()
             self._write(delivery, found, files, lambda share: move(0.9 + 0.1 * share, "drawing"))
-            removed, more = superseded(common, files)
-            seconds = {
-                "reading": self.ground.seconds,
-                "survey": computed - start,
-                "writing and drawing": time.perf_counter() - computed,
-                "whole run": self.ground.seconds + time.perf_counter() - start,
-            }
+            drawing = time.perf_counter() - computed
+            parts = {"survey": computed - start, "writing and drawing": drawing}
             record |= {
                 "threads": threads,
                 "results": _results(found),
-                "warnings": list(dict.fromkeys([*found.warnings, *notes, *more])),
-                "seconds": {name: round(value, 2) for name, value in seconds.items()},
-                "files": [os.path.abspath(delivery.folder / name) for name in files],
-                "removed": removed,
+                "warnings": [*found.warnings, *notes],
+                "seconds": seconds_of(self.ground, start, parts),
             }
-            delivery.write_json(RECORD, record)
-            delivery.commit(removed)
-        return record
+            return deliver(delivery, common, files, record)
 
     def _write(self, delivery: Any, found: Survey, files: list[str], move: Any) -> None:
         """Stage all files but the record."""
@@ -620,28 +606,13 @@ def _results(found: Survey) -> dict[str, Any]:
     }
 
 
-def _in_lines(forecast: dict[str, Any]) -> str:
+def _in_lines(f: dict[str, Any]) -> str:
     """The forecast for people."""
-    from terrasol.cli.forecast import duration, grid_line, heights_line, lines
+    from terrasol.cli.forecast import forecast_text
 
-    f = forecast
-    rows = [
-        ("input", f["input"]),
-        ("CRS", f["crs"]),
-        grid_line(f),
-        heights_line(f),
-        ("parcels", f"{len(f['parcels'])}: {', '.join(f['parcels'])}"),
-        ("season", f["season"]),
-        ("files", ", ".join(f["files"])),
-        *([("removed", ", ".join(f["removed"]))] if f["removed"] else []),
-        ("memory", f"{f['memory_mb']:,} MB"),
-        (
-            "time",
-            f"at most about {duration(f['seconds'])} on {counted(f['threads'], 'thread')}",
-        ),
-        *(("warning", text) for text in f["warnings"]),
-    ]
-    return lines(rows)
+    parcels = f"{len(f['parcels'])}: {', '.join(f['parcels'])}"
+    own = [("parcels", parcels), ("season", f["season"])]
+    return forecast_text(f, own, about="at most about")
 
 
 LONGEST_CELL: Final = 40
@@ -664,7 +635,7 @@ def _cell(row: dict[str, Any], name: str, form: str) -> str:
 
 def _summary_text(record: dict[str, Any]) -> str:
     """What came out, for people: a table, best first."""
-    from terrasol.cli.forecast import duration
+    from terrasol.cli.run import closing_lines
 
     results, settings = record["results"], record["settings"]
     rows = results["parcels"]
@@ -708,9 +679,4 @@ def _summary_text(record: dict[str, Any]) -> str:
     if settings["score"]:
         told.append(f"score: {settings['score']}")
     told.append(results["not_in_it"])
-    told += [f"warning: {text}" for text in record["warnings"]]
-    if record["removed"]:
-        told.append(f"removed, of an earlier run: {', '.join(record['removed'])}")
-    files, took = record["files"], duration(record["seconds"]["whole run"])
-    told.append(f"{counted(len(files), 'file')} in {os.path.dirname(files[0])} after {took}")
-    return "\n".join(told)
+    return "\n".join([*told, *closing_lines(record)])

@@ -170,8 +170,7 @@ _rearrange(site)
 
 def _check(around: Around, given: dict[str, Any]) -> None:
     """Refuse options that do not go together, or mean nothing here."""
-    if around.horizon_gap or around.highest is not None:
-        raise click.UsageError("--horizon-gap belongs to terrasol irradiation: it is a map")
+    around.refuse_map()
     places = 1 if given["compare"] is None else 2
     if len(given["labels"]) > places:
         raise click.UsageError(f"--name is given {len(given['labels'])} times, for {places} place")
@@ -342,7 +341,7 @@ class _Job:
     def _carry_out(self) -> tuple[dict[str, Any], list[Site]]:
         """Compute everything, and write it if a folder is named: the record, and the places."""
         from terrasol.cli.progress import progress_bar
-        from terrasol.cli.run import announce_compilation
+        from terrasol.cli.run import announce_compilation, deliver, seconds_of
         from terrasol.engine.plan import default_threads
         from terrasol.files.provenance import run_record
 
@@ -354,7 +353,6 @@ class _Job:
         with self._delivery() as delivery, progress_bar(common.quiet) as move:
             announce_compilation(common.quiet)
             sites = self._survey(settings, scene, threads, move)
-            seconds = self.ground.seconds + time.perf_counter() - start
             record |= {
                 "threads": threads,
                 "results": {"places": [each.record() for each in sites]},
@@ -362,13 +360,12 @@ class _Job:
                     *self.ground.elevation.warnings, *scene.warnings, *settled.warnings,
                     *self.asked.doubts(self.ground.frame), *self._error_doubts(),
                 ],
-                "seconds": {
-                    "reading": round(self.ground.seconds, 2), "whole run": round(seconds, 2),
-                },
             }  # fmt: skip
             if delivery is not None:
-                notes = light_notes(settings, scene)
-                record = self._deliver(delivery, record, sites, notes)
+                self._draw(delivery, record, sites, light_notes(settings, scene))
+            record["seconds"] = seconds_of(self.ground, start, {})
+            if delivery is not None:
+                record = deliver(delivery, common, self.names, record)
             move(1.0, "done")
         return record, sites
 
@@ -429,15 +426,14 @@ class _Job:
                 progress=lambda share, stage: move(0.9 * share, stage),
             )  # fmt: skip
 
-    def _deliver(
+    def _draw(
         self,
         delivery: Delivery,
         record: dict[str, Any],
         sites: list[Site],
         notes: tuple[str, ...],
-    ) -> dict[str, Any]:
-        """Draw and write everything; the finished record."""
-        from terrasol.files.delivery import RECORD
+    ) -> None:
+        """Stage the sheet and the table."""
         from terrasol.show.site import page_pdf, page_png, site_page
 
         elevation = self.ground.elevation
@@ -452,15 +448,6 @@ class _Job:
         delivery.write_bytes(SHEET_PDF, page_pdf(page, title))
         delivery.write_bytes(SHEET_PNG, page_png(page, title))
         delivery.write_bytes(TABLE, _table(sites))
-        removed, more = self._superseded()
-        record = record | {
-            "warnings": [*record["warnings"], *more],
-            "files": [os.path.abspath(delivery.folder / name) for name in self.names],
-            "removed": removed,
-        }
-        delivery.write_json(RECORD, record)
-        delivery.commit(removed)
-        return record
 
     def _tell(self, record: dict[str, Any], sites: list[Site]) -> None:
         """The result on stdout, and of the files on stderr."""
@@ -495,30 +482,18 @@ def _table(sites: list[Site]) -> bytes:
     return ("\n".join(lines) + "\n").encode()
 
 
-def _in_lines(forecast: dict[str, Any]) -> str:
+def _in_lines(f: dict[str, Any]) -> str:
     """The forecast for people."""
-    from terrasol.cli.forecast import duration, grid_line, heights_line, lines
+    from terrasol.cli.forecast import forecast_text
     from terrasol.engine.comparison import place_words
 
-    f = forecast
-    rows = [
-        ("input", f["input"]),
-        ("CRS", f["crs"]),
-        grid_line(f),
-        heights_line(f),
-        *(
-            (
-                "place",
-                f"{p['name'] + ', ' if p['name'] else ''}"
-                f"{place_words(p['latitude'], p['longitude'], 5)}: row {p['row']}, column"
-                f" {p['column']}, at {p['height_m']:.0f} m",
-            )
-            for p in f["places"]
-        ),
-        ("files", ", ".join(f["files"]) or "none: name a folder with --out"),
-        *([("removed", ", ".join(f["removed"]))] if f["removed"] else []),
-        ("memory", f"{f['memory_mb']:,} MB"),
-        ("time", f"about {duration(f['seconds'])} on {counted(f['threads'], 'thread')}"),
-        *(("warning", text) for text in f["warnings"]),
+    own = [
+        (
+            "place",
+            f"{p['name'] + ', ' if p['name'] else ''}"
+            f"{place_words(p['latitude'], p['longitude'], 5)}: row {p['row']}, column"
+            f" {p['column']}, at {p['height_m']:.0f} m",
+        )
+        for p in f["places"]
     ]
-    return lines(rows)
+    return forecast_text(f, own, no_files="none: name a folder with --out")
