@@ -17,6 +17,7 @@ from terrasol.practice.snow import SnowModel
 from terrasol.practice.snow_point import agreement, fit_snow, point_snow
 from terrasol.practice.snow_weather import hourly_weather, level_light, measured_light
 from terrasol.sky.potential import PotentialBeam
+from terrasol.sky.warmth import too_warm
 
 SHARED = Path(terrasol.__file__).resolve().parents[2] / "shared"
 FOLDER = SHARED / "data/coldeporte"
@@ -101,6 +102,13 @@ def test_before_and_after_fitting(winter):
         assert fit.after.rmse <= before.rmse
     assert after["enhanced", "brock"] > 0.95
     assert after["degree-days", "brock"] > 0.95
+
+
+def test_its_air_is_believed_and_not_in_fahrenheit():
+    station = station_of(7)
+    assert too_warm(station) is None
+    warm = {"temperature": station.values["temperature"] * 1.8 + 32.0}
+    assert too_warm(replace(station, values=warm)).in_fahrenheit
 
 
 def test_two_numbers_at_a_time(winter):
