@@ -38,8 +38,8 @@ def asked_for(period=None, season=NORTHERN_SEASON, **more) -> ParcelSettings:
     """Settings whose light is coarse but quick."""
     whole = parse_period(period)
     own = {k: more.pop(k) for k in ("score", "coarser", "rows", "error") if k in more}
-    light = LightSettings(whole, AIR, azimuths=16, step_seconds=300.0)
-    hours = HoursSettings(whole, AIR, parse_days(None, whole), azimuths=32, step_seconds=300.0)
+    light = LightSettings(whole, AIR, azimuths=16, step_seconds=900.0)
+    hours = HoursSettings(whole, AIR, parse_days(None, whole), azimuths=32, step_seconds=900.0)
     if "rule" in more:
         more["rule"] = read_rule(more["rule"], warm="warmth" in more)
     return ParcelSettings(light, hours, Asked(whole, season, **more), **own)

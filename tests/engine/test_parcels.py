@@ -298,7 +298,7 @@ def test_rows_on_a_plane():
 def test_the_top_of_rows_gets_what_the_slope_gets(model):
     """By another way: cells by tables of the sun, rows by its path."""
     settings = asked_for(coarser=(), rows=RowSettings(2.0, 1.3, 0.4))
-    light = replace(settings.light, diffuse=model, albedo=(0.0,) * 12)
+    light = replace(settings.light, diffuse=model, albedo=(0.0,) * 12, step_seconds=300.0)
     parcel = survey(
         plane(30.0, 180.0), parcels(box(-50, -50, 50, 50)), replace(settings, light=light)
     ).parcels[0]
@@ -310,6 +310,7 @@ def test_half_the_step_moves_no_side_of_a_row():
     from terrasol.engine import parcel_rows
 
     settings = asked_for(coarser=(), rows=RowSettings(2.0, 1.3, 0.4))
+    settings = replace(settings, light=replace(settings.light, step_seconds=300.0))
     parcel = survey(plane(20.0, 140.0), parcels(box(-50, -50, 50, 50)), settings).parcels[0]
     with pytest.MonkeyPatch.context() as patch:
         patch.setattr(parcel_rows, "STEP_SECONDS", 300.0)
@@ -317,6 +318,7 @@ def test_half_the_step_moves_no_side_of_a_row():
             parcel.piece, parcel.horizon, settings.rows, settings.light, settings.asked
         )
     assert np.allclose(finer.sides, parcel.rows.sides, rtol=1e-3)
+    assert not np.array_equal(finer.sides, parcel.rows.sides)  # another step it was
 
 
 def test_a_dark_canopy_sends_no_light_to_the_other_side():
