@@ -22,7 +22,17 @@ from terrasol.cli.options import (
     period_option,
     step_option,
 )
-from terrasol.cli.sky_options import AskedSky, Settled, file_record, shortest, sky_options
+from terrasol.cli.sky_options import (
+    ALBEDO_FOR_NOW,
+    AskedSky,
+    Settled,
+    albedo_record,
+    file_record,
+    raster_named,
+    settle_albedo,
+    shortest,
+    sky_options,
+)
 
 if TYPE_CHECKING:
     from terrasol.cli.run import Ground
@@ -165,10 +175,11 @@ class _Sizes(click.ParamType):
 @period_option
 @click.option(
     "--albedo",
-    type=Numbers("station"),
+    type=Numbers("station", raster=True),
     default="0.2",
     show_default=True,
-    help="Albedo of the ground, or 'station' for what SERIES measured.",
+    help="Albedo of the ground: numbers, a RASTER of one band or of twelve, or 'station' for what"
+    " SERIES measured.",
 )
 @diffuse_option
 @step_option
@@ -205,9 +216,6 @@ def _rearrange(command: click.Command) -> None:
     for option in command.params:
         if isinstance(option, click.Option):
             option.hidden = option.hidden or option.name in NOT_HERE
-        if option.name == "clear_sky_index":
-            option.type = Numbers()
-            option.help = "Monthly mean of global light by that of a clear sky: clouds by number."
 
 
 _rearrange(parcels)
@@ -249,7 +257,7 @@ def _plain(given: dict[str, Any]) -> dict[str, Any]:
         "rule_read": None if given["rule"] is None else read_rule(given["rule"], warm=warm),
         "rows_read": RowSettings(*given["vine_rows"], *canopy) if given["vine_rows"] else None,
         "coarser": coarser,
-        "albedo_for_now": (0.2,) if given["albedo"] == "station" else given["albedo"],
+        "albedo_for_now": ALBEDO_FOR_NOW if isinstance(given["albedo"], str) else given["albedo"],
     }
 
 
@@ -313,7 +321,10 @@ class _Job:
     def _inputs(self, settled: Settled) -> list[str]:
         """All files that are read."""
         given = self.given
-        files = (self.common.dem, given["parcels_file"], given["temperatures"])
+        files = (
+            self.common.dem, given["parcels_file"], given["temperatures"],
+            *raster_named(given["albedo"]),
+        )  # fmt: skip
         return [name for name in (*files, *self.around.inputs, *settled.inputs) if name]
 
     def _settings(self, settled: Settled) -> tuple[ParcelSettings, tuple[str, ...]]:
@@ -321,19 +332,20 @@ class _Job:
         from terrasol.engine.parcels import ParcelSettings
         from terrasol.light.days import parse_days
         from terrasol.light.hours import HoursSettings
-        from terrasol.light.settings import LightSettings, twelve
+        from terrasol.light.settings import LightSettings
 
         given, common = self.given, self.common
-        albedo = settled.albedo() if given["albedo"] == "station" else given["albedo"]
+        albedo, doubts = settle_albedo(given["albedo"], settled, self.ground.elevation)
         light = LightSettings(
             period=settled.period,
             air=self.air,
-            albedo=twelve(albedo, "albedo"),
             diffuse=given["diffuse"],
             azimuths=common.azimuths,
             step_seconds=given["step_seconds"],
             refraction=common.refraction,
             sky=settled.sky,
+            index_map=settled.index_map,
+            **albedo,
         )
         hours = HoursSettings(
             period=settled.period,
@@ -353,7 +365,8 @@ class _Job:
             given["rows_read"],
             given["error"],
         )
-        return settings, (*self.asked.doubts(self.ground.frame), *settled.warnings, *notes)
+        notes = (*settled.warnings, *doubts, *notes)
+        return settings, (*self.asked.doubts(self.ground.frame), *notes)
 
     def _asked(self, settled: Settled) -> tuple[Asked, tuple[str, ...]]:
         """How parcels are told of, and warnings on the temperatures."""
@@ -403,7 +416,7 @@ class _Job:
             "clock": settings.hours.clock.name,
             "days": [str(day) for day in settings.hours.days],
             "air": light.air.record(),
-            "albedo": shortest(light.albedo),
+            "albedo": albedo_record(given["albedo"], light),
             "diffuse": light.diffuse,
             "basis": "per area of slope",
             "azimuths": light.azimuths,

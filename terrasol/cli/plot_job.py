@@ -24,7 +24,14 @@ from terrasol.cli.run import (
     superseded,
     tell,
 )
-from terrasol.cli.sky_options import CLIMATOLOGY, AskedSky, file_record
+from terrasol.cli.sky_options import (
+    CLIMATOLOGY,
+    AskedSky,
+    albedo_record,
+    file_record,
+    raster_named,
+    settle_albedo,
+)
 from terrasol.engine.plan import default_threads
 from terrasol.engine.plot_correlations import best_by_chance, pairs, strongest
 from terrasol.engine.plot_horizons import horizon_table, plot_horizons
@@ -88,7 +95,7 @@ class PlotJob:
         asked = self.asked
         files = (
             self.common.dem, self.given["plots_file"], *self.around.inputs, asked.station,
-            asked.station_settings,
+            asked.station_settings, *raster_named(asked.clear_sky_index, self.given["albedo"]),
         )  # fmt: skip
         return [name for name in files if name]
 
@@ -185,10 +192,15 @@ class PlotJob:
         frame, light = self.ground.frame, self.settings.light
         air = asked.placed(light.air, frame)
         settled = asked.settle(air, given["period"], light.step_seconds, elevation)
-        light = replace(light, air=air, period=settled.period, sky=settled.sky)
-        if given["albedo"] == "station":
-            light = replace(light, albedo=settled.albedo())
-
+        albedo, doubts = settle_albedo(given["albedo"], settled, elevation)
+        light = replace(
+            light,
+            air=air,
+            period=settled.period,
+            sky=settled.sky,
+            index_map=settled.index_map,
+            **albedo,
+        )
         hours = replace(
             self.settings.hours,
             period=settled.period,
@@ -198,7 +210,8 @@ class PlotJob:
         factors, said = self._factors()
         season = self.settings.season or growing_season(frame.centre[0])
         settings = replace(self.settings, light=light, hours=hours, season=season, factors=factors)
-        return settings, settled, [*asked.doubts(frame), *settled.warnings, *said]
+        notes = [*asked.doubts(frame), *settled.warnings, *doubts, *said]
+        return settings, settled, notes
 
     def _scenes(self, settings: PlotSettings) -> list[Scene]:
         """What stands beyond and above the ground, for each cell size."""
@@ -228,7 +241,8 @@ class PlotJob:
             "predictors": list(settings.groups),
             "response": given["response"],
             "gps_error_m": given["gps_error"],
-            "light": light_record(settings.light),
+            "light": light_record(settings.light)
+            | {"albedo": albedo_record(given["albedo"], settings.light)},
             "hours": {
                 "azimuths": settings.hours.azimuths,
                 "clock": settings.hours.clock.name,

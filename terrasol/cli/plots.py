@@ -10,18 +10,17 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from terrasol.cli.ground_options import Around, ground_options
-from terrasol.cli.irradiation import ALBEDO_FOR_NOW, irradiation
+from terrasol.cli.irradiation import irradiation
 from terrasol.cli.options import (
     Common,
     Name,
-    Numbers,
     arguments_in_order,
     clock_option,
     common_options,
     period_option,
 )
 from terrasol.cli.series import Words
-from terrasol.cli.sky_options import AskedSky, sky_options
+from terrasol.cli.sky_options import ALBEDO_FOR_NOW, AskedSky, sky_options
 from terrasol.constants import ENERGY_UNITS, PHOTONS_PER_JOULE
 
 if TYPE_CHECKING:
@@ -174,13 +173,7 @@ def _rearrange(command: click.Command) -> None:
     for option in command.params:
         if not isinstance(option, click.Option):
             continue
-        if option.name == "albedo":
-            option.type = Numbers("station")
-            option.help = "Albedo of the ground: numbers, or 'station' for what SERIES measured."
-        elif option.name == "clear_sky_index":
-            option.type = Numbers()
-            option.help = "Monthly mean of global light by that of a clear sky, for clouds."
-        elif option.name == "period":
+        if option.name == "period":
             option.help = (
                 "A year (2025), or twelve months in a row (2024-10/2025-09). [default: a typical"
                 " year]"

@@ -13,9 +13,9 @@ import click
 
 from terrasol.cli.error_options import AskedError, error_options
 from terrasol.cli.ground_options import Around, ground_options
-from terrasol.cli.irradiation import ALBEDO_FOR_NOW, irradiation, light_notes, light_record
+from terrasol.cli.irradiation import irradiation, light_notes, light_record
 from terrasol.cli.options import Common, Name, Numbers, common_options, period_option
-from terrasol.cli.sky_options import AskedSky, sky_options
+from terrasol.cli.sky_options import ALBEDO_FOR_NOW, AskedSky, sky_options
 from terrasol.constants import ENERGY_UNITS
 from terrasol.errors import SettingError, counted
 

@@ -23,9 +23,10 @@ from terrasol.engine.parcel_figures import (
     figures_of,
     patches_of,
 )
+from terrasol.engine.parcel_light import levels_of, own_light
 from terrasol.engine.parcel_rows import Rows, RowSettings, row_figures, rows_of
 from terrasol.engine.parcel_words import read_score
-from terrasol.engine.plan import Block, Progress, carry_out, default_threads
+from terrasol.engine.plan import Block, Progress
 from terrasol.engine.uncertainty import doubts_of_error
 from terrasol.engine.windows import collect
 from terrasol.errors import SettingError, listed
@@ -36,9 +37,8 @@ from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame, make_frame
 from terrasol.ground.grain import coarsened
 from terrasol.ground.uncertainty import DemError
-from terrasol.light.hours import HoursSettings, TimeTables
+from terrasol.light.hours import HoursSettings
 from terrasol.light.settings import LightSettings
-from terrasol.light.tables import SkyTables
 from terrasol.practice.ranking import Ranking, Score, parse_score, rank
 from terrasol.practice.rules import Patches
 
@@ -91,8 +91,7 @@ class ParcelSettings:
     Raises
     ------
     SettingError
-        Another unit or basis, a clear-sky index or albedo by cell, a factor under 2, a score that
-        speaks of what no parcel has.
+        Another unit or basis, a factor under 2, a score that speaks of what no parcel has.
     """
 
     light: LightSettings
@@ -107,8 +106,6 @@ class ParcelSettings:
         """Refuse what makes no sense."""
         if self.light.unit != "MJ m-2" or self.light.basis != "slope":
             raise SettingError("parcels are told in MJ m-2 per area of slope")
-        if self.light.index_map is not None or self.light.albedo_map is not None:
-            raise SettingError("parcels take no map of albedo or of the clear-sky index")
         for factor in self.coarser:
             if factor < 2:
                 raise SettingError(f"cells are joined 2 by 2 at least; got {factor}")
@@ -281,13 +278,13 @@ def _looks(
     for k, factor in enumerate(factors):
         ground = coarsened(elevation, factor)
         pieces, notes = pieces_of(
-            ground, polygons, settings.light, settings.hours, scene_of, threads,
+            ground, polygons, settings.light.coarsened(factor), settings.hours, scene_of, threads,
             partial(_told_part, told, work[k], work[k + 1]),
         )  # fmt: skip
         _warm(pieces, settings.asked.warmth)
         if factor == 1:
             warnings = notes
-            levels = _levels(pieces, settings, threads)
+            levels = levels_of(pieces, settings.light, settings.hours, threads)
         frame = make_frame(ground.shape, ground.transform, ground.crs)
         looks.append((float(np.sqrt(np.prod(frame.cell_size))), pieces))
     return looks, levels, warnings
@@ -425,7 +422,9 @@ def _parcel(
     asked = settings.asked
     figures, rows = figures_of(piece, level, asked), None
     if settings.rows is not None:
-        rows = rows_of(piece, horizon, settings.rows, settings.light, asked)
+        light = own_light(piece, settings.light)
+        if light is not None:
+            rows = rows_of(piece, horizon, settings.rows, light, asked)
         figures += row_figures(rows, asked)
     patches = patches_of(piece, level, asked)[0] if asked.rule else None
     return Parcel(piece.name, outline, piece, level, figures, coarser, horizon, patches, rows)
@@ -452,36 +451,6 @@ def _ranked(
             " of it is unknown there, or it divides by zero"
         )
     return Survey(parcels, settings, cell_size, ranking, score, warnings)
-
-
-def _levels(
-    pieces: Sequence[Piece | None], settings: ParcelSettings, threads: int | None
-) -> list[Level | None]:
-    """Open level ground at the latitude and mean height of each parcel."""
-    there = [piece for piece in pieces if piece is not None and np.isfinite(piece.height)]
-    latitudes = [piece.latitude for piece in there]
-    heights = [piece.height for piece in there]
-    longitude = float(there[0].longitude)
-    ends = (min(latitudes), max(latitudes)), (min(heights), max(heights))
-    light = SkyTables.over(settings.light, longitude, *ends)
-    hours = TimeTables.over(settings.hours, longitude, *ends)
-    for _ in carry_out([*light.tasks, *hours.tasks], threads or default_threads()):
-        pass
-
-    def level(piece: Piece) -> Level:
-        by_height = light.exactly(piece.latitude).table.level
-        months = [np.interp(piece.height, light.heights, month) for month in by_height.T]
-        return Level(np.array(months), hours.level(piece.latitude, piece.height)[0])
-
-    unknown = np.full(len(settings.light.period.months), np.nan)
-    return [
-        None
-        if piece is None
-        else level(piece)
-        if np.isfinite(piece.height)
-        else Level(unknown, unknown)
-        for piece in pieces
-    ]
 
 
 def middle_cell(piece: Piece) -> tuple[int, int]:

@@ -101,7 +101,8 @@ def plot_table(
     for factor, size, tag, scene in zip(settings.factors, sizes, tags, scenes, strict=True):
         part = factor**-2.0 / work
         ground = coarsened(elevation, factor)
-        grain = Grain(ground, located, points.error, settings, factor, size)
+        own = replace(settings, light=settings.light.coarsened(factor))
+        grain = Grain(ground, located, points.error, own, factor, size)
 
         def move(share: float, stage: str, done: float = done, part: float = part) -> None:
             tell(done + part * share, stage)

@@ -12,7 +12,7 @@ from matplotlib.patches import Wedge
 from numpy.typing import NDArray
 
 from terrasol import __version__
-from terrasol.engine.outputs import MONTH_NAMES
+from terrasol.engine.outputs import MONTH_NAMES, sky_kind
 from terrasol.engine.parcel_figures import LAPSE_EFFECT, known_area, month_keys, slope_class_keys
 from terrasol.engine.parcels import Parcel, Survey, numbers_of
 from terrasol.ground.elevation import Elevation
@@ -556,7 +556,11 @@ def _draw_scale(page: Page, parcel: Parcel, name: str, words: str, scale: Scale,
 def notes_of(survey: Survey) -> list[str]:
     """What every sheet says of its numbers."""
     asked, light = survey.settings.asked, survey.settings.light
-    sky = "a sky without clouds (potential)" if light.sky is None else "the sky that was given"
+    sky = (
+        "a sky without clouds (potential)"
+        if sky_kind(light) == "clear"
+        else "the sky that was given"
+    )
     notes = [
         f"Season {asked.season_words}, {asked.period.label}. Energy under {sky}, per area of slope,"
         f" terrain shade and reflection counted, from cells of {survey.cell_size:.3g} m. Hectares"

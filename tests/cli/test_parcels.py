@@ -326,6 +326,28 @@ def test_a_bow_tie_is_mended_and_said_so(places, tmp_path, capsys):
     assert area == pytest.approx(0.5 * 0.9996**-2, rel=1e-4)
 
 
+def test_albedo_and_clear_sky_index_come_as_rasters(places, tmp_path, capsys):
+    dem, shapes, _ = places
+    ground = plane(0.0, 0.0)
+    index, albedo = np.full((80, 80), 0.6), np.full((80, 80), 0.4)
+    index[:, 50:], albedo[0, 0] = 0.9, np.nan
+    for name, values in (("index", index), ("albedo", albedo)):
+        write_raster(tmp_path / f"{name}.tif", values, transform=ground.transform, crs=UTM)
+    maps = ["--albedo", tmp_path / "albedo.tif", "--clear-sky-index", tmp_path / "index.tif"]
+    out = tmp_path / "o"
+    command = ["parcels", dem, shapes, out, *QUICK[:-1], "--coarser", "2", *maps]
+    assert main([str(word) for word in command]) == 0
+    assert "the map of the albedo has no value for 1 cell of known" in capsys.readouterr().err
+    settings = json.loads((out / "run.json").read_text("utf-8"))["settings"]
+    assert settings["albedo"]["file"] == str(tmp_path / "albedo.tif")
+    assert settings["clear_sky_index"]["file"] == str(tmp_path / "index.tif")
+    level = {
+        row["parcel"]: float(row["irradiation_season_level_mj_m2"])
+        for row in rows_of(out / "parcels.csv")
+    }
+    assert level["Lower"] / level["Upper"] == pytest.approx(0.6 / 0.9, rel=0.01)
+
+
 def test_overlaps_are_told_before_the_work_too(places, tmp_path, capsys):
     shapes = [outline(0, 0, 100, 100), outline(50, 0, 150, 100)]
     table = geopandas.GeoDataFrame({"name": ["a", "b"]}, geometry=shapes, crs=UTM)
