@@ -133,7 +133,7 @@ def test_hectares_are_true_in_any_crs(crs, cell):
     back = Transformer.from_crs(here, crs, always_xy=True)
     square = shapely.segmentize(shapely.box(-100, -50, 100, 150), 20.0)
     shape = shapely.transform(square, lambda p: np.column_stack(back.transform(p[:, 0], p[:, 1])))
-    ground = hill(crs, cell, 120, centre)
+    ground = hill(crs, cell, 60, centre)
     numbers = survey(ground, parcels(shape, crs=crs), asked_for(coarser=())).parcels[0].numbers
     assert numbers["map_area_ha"] == pytest.approx(4.0, rel=2e-4)
     # The hill's own slope and aspect over the square, by brute force.
