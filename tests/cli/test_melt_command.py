@@ -207,7 +207,7 @@ def test_a_run_that_begins_amid_observed_snow_says_so(dem, station, tmp_path, ca
     assert "bare ground" not in capsys.readouterr().out
 
 
-def test_fahrenheit_taken_for_celsius_is_doubted(dem, station, tmp_path, capsys):
+def test_fahrenheit_taken_for_celsius_is_refused_or_doubted(dem, station, tmp_path, capsys):
     rows = [line.split(",") for line in station.read_text().splitlines()]
     for row in rows[1:]:
         row[2] = f"{float(row[2]) * 1.8 + 32.0:.2f}"
@@ -216,8 +216,13 @@ def test_fahrenheit_taken_for_celsius_is_doubted(dem, station, tmp_path, capsys)
     run = ["melt", str(dem), str(path), str(tmp_path / "out"), "--melt", "degree-days", "--dry-run"]
     toml = path.with_name("american.csv.toml")
     toml.write_text(TOML)
+    assert main(run) == 3
+    said = capsys.readouterr().err
+    assert "american.csv: temperature cannot be in degC" in said
+    assert "degF would fit" in said
+    toml.write_text("[file]\ncheck_units = false\n" + TOML)
     assert main(run) == 0
-    assert "degF" in capsys.readouterr().out
+    assert "while snow was observed" in capsys.readouterr().out
     toml.write_text(TOML.replace("degC", "degF"))
     assert main(run) == 0
     assert "degF" not in capsys.readouterr().out
