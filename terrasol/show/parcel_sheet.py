@@ -582,9 +582,8 @@ def notes_of(survey: Survey) -> list[str]:
     error = survey.settings.error
     if error is not None:
         notes.append(
-            f"± one standard error from an error of heights of {error.rmse:g} m"
-            f" ({error.realisations} grounds); a range where an area is none or all"
-            " of the parcel."
+            f"± or a range: one standard error from an error of heights of {error.rmse:g} m"
+            f" ({error.realisations} grounds)."
         )
     if asked.rule is not None:
         least = f", in patches from {asked.least_patch:g} m²" if asked.least_patch else ""

@@ -126,7 +126,7 @@ def test_standard_errors_stand_behind_their_figures():
     told = dict(facts(found, found.parcels[0]))
     assert " ± " in told["Slope, mean"]
     words = all_words(parcel_page(found, found.parcels[0], ground, frame_of(ground), title="T"))
-    assert "± one standard error" in words
+    assert "± or a range: one standard error" in words
 
 
 def test_an_area_of_none_or_all_is_off_to_one_side():
