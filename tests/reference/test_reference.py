@@ -94,6 +94,7 @@ def test_wall_takes_the_sun_until_it_rises_above_it():
     assert got == pytest.approx(want, rel=3e-4)  # one minute is 3e-4 of that day's beam
 
 
+@pytest.mark.heavy
 def test_naive_way_and_minute_way_agree_on_a_hill():
     # hourly sampling of a month of days is good to a percent where shade matters little
     north, east = np.mgrid[300:-301:-20, -300:301:20].astype(float)

@@ -79,6 +79,7 @@ def test_two_places_fill_an_a3_sheet(ground, sites):
         assert half.std() > 0.1
 
 
+@pytest.mark.heavy
 def test_same_content_same_bytes(ground, site):
     first, second = (
         (page_png(page, "t"), page_pdf(page, "t"))
