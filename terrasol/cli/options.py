@@ -161,7 +161,8 @@ _OPTIONS = (
     click.option(
         "--vertical-unit",
         type=click.Choice(["metre", "foot", "us-foot"]),
-        help="Unit of the heights. [default: as the file says, else metre]",
+        help="Unit of the heights. [default: as the file says, else metre; needed where the file"
+        " says none and x and y are in feet]",
     ),
     click.option(
         "--fill-voids",
