@@ -415,7 +415,7 @@ def _repaired(shapes: list[Any], names: Sequence[str]) -> tuple[list[Any | None]
                 told = f"was not valid ({reason}) and is repaired to {parts}: check it on a map"
             said.append(f"the outline of '{name}' {told}")
         mended.append(shape)
-    return tuple(mended), said
+    return mended, said
 
 
 def coverage(
