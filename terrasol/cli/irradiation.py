@@ -170,7 +170,7 @@ _SKY_NOTES = {
 
 def light_notes(settings: LightSettings, scene: Scene) -> tuple[str, ...]:
     """What energy was computed from, in sentences for a page's notes."""
-    from terrasol.engine.outputs import basis_words, sky_kind
+    from terrasol.engine.outputs import basis_words, shade_words, sky_kind
     from terrasol.show.key import range_text
 
     assumed = f"albedo of the ground {range_text(settings.month_albedo)}."
@@ -181,9 +181,7 @@ def light_notes(settings: LightSettings, scene: Scene) -> tuple[str, ...]:
         _SKY_NOTES[sky_kind(settings)].format(PAPERS[settings.air.model]),
         assumed[0].upper() + assumed[1:],
         f"Energy {basis_words(settings)}, with light from the ground around.",
-        "Shade of all that stands in the raster, and of nothing beyond it."
-        if scene.far is None
-        else "Shade of all that stands in the raster and in the far model around it.",
+        shade_words(scene),
     )
 
 

@@ -615,6 +615,7 @@ def _results(found: Survey) -> dict[str, Any]:
         "parcels": rows,
         "cell_m": round(found.cell_size, 3),
         "score_terms": list(found.score.terms) if found.score else None,
+        "shade": found.shade,
         "not_in_it": VINEYARD,
     }
 
@@ -634,14 +635,13 @@ LONGEST_CELL: Final = 40
 
 def _cell(row: dict[str, Any], name: str, form: str) -> str:
     """A figure for the table, with its standard error where that is small enough to matter."""
-    from terrasol.engine.parcel_figures import known_area
-    from terrasol.show.plus_minus import plus_minus
+    from terrasol.show.plus_minus import area_plus_minus
 
     if row.get(name) is None:
         return "-"
-    if name == "rule_ha_map":
-        error, whole = row.get(f"{name}_se"), known_area(row)
-        return plus_minus(row[name], error, ".2f", sign="+/-", whole=whole)
+    if name.endswith("_ha_map"):
+        error, whole = row.get(f"{name}_se"), row["known_ha_map"]
+        return area_plus_minus(row[name], error, whole, sign="+/-").removesuffix(" ha")
     told = form.format(row[name])
     return told if len(told) <= LONGEST_CELL else f"{told[: LONGEST_CELL - 3]}..."
 
@@ -652,16 +652,18 @@ def _summary_text(record: dict[str, Any]) -> str:
 
     results, settings = record["results"], record["settings"]
     rows = results["parcels"]
+    whole = all(row["known_ha_map"] == row["drawn_ha_map"] for row in rows)
     wanted = [
         ("rank", "rank", "{:.0f}"),
         ("parcel", "parcel", "{}"),
-        ("ha (map)", "map_area_ha", "{:.2f}"),
+        ("ha drawn", "drawn_ha_map", ""),
+        *([] if whole else [("ha known", "known_ha_map", "")]),
         ("slope %", "slope_mean_percent", "{:.1f}"),
         ("faces", "aspect_mean_deg", "{:.0f}°"),
         ("MJ/m2 season", "irradiation_season_mj_m2_slope", "{:.0f}"),
         ("of level", "share_of_level_season", "{:.3f}"),
         ("sun h", "sun_hours_season_h", "{:.0f}"),
-        ("rule ha", "rule_ha_map", "{:.2f}"),
+        ("rule ha", "rule_ha_map", ""),
         ("degree-days", "winkler_mean_c_days", "{:.0f}"),
         ("score", "score", "{:.4g}"),
     ]
@@ -691,5 +693,7 @@ def _summary_text(record: dict[str, Any]) -> str:
             )
     if settings["score"]:
         told.append(f"score: {settings['score']}")
+    if "far" in settings:
+        told.append(results["shade"])  # else a warning says it
     told.append(results["not_in_it"])
     return "\n".join([*told, *closing_lines(record)])

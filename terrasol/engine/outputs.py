@@ -8,6 +8,7 @@ from typing import Protocol
 import numpy as np
 
 from terrasol.files.layers import Layer
+from terrasol.ground.beyond import Scene
 from terrasol.light.settings import UNITS, LightSettings
 from terrasol.sky.cloud import MonthlySky
 from terrasol.sky.period import Period
@@ -126,6 +127,21 @@ def sky_words(settings: LightSettings) -> str:
         "measured": "{} irradiation under the measured sky",
         "monthly index": "{} irradiation under a sky of monthly clear-sky indices",
     }[sky_kind(settings)]
+
+
+def shade_words(scene: Scene) -> str:
+    """Say what the horizon is made of, in a sentence."""
+    if scene.far is None:
+        return "Shade of all that stands in the raster, and of nothing beyond it."
+    return "Shade of all that stands in the raster and in the far model around it."
+
+
+def shade_doubts(scene: Scene) -> list[str]:
+    """Warn of a horizon that ends with the raster."""
+    if scene.far is not None:
+        return []
+    words = shade_words(scene).replace("Shade", "shade").rstrip(".")
+    return [f"{words}: where higher ground stands around, give a larger model with --far"]
 
 
 def _fineness(days: float, unit: str) -> float:

@@ -310,7 +310,7 @@ def figures_of(piece: Piece, level: Level, asked: Asked) -> list[Figure]:
 
 def known_area(numbers: Mapping[str, Any]) -> float:
     """Area of a parcel on which areas of some kind are told, by its figures [ha of map]."""
-    return float(numbers["map_area_ha"] - numbers["unknown_ha_map"])
+    return float(numbers["known_ha_map"])
 
 
 def _extent(piece: Piece) -> list[Figure]:
@@ -320,8 +320,13 @@ def _extent(piece: Piece) -> list[Figure]:
     inside = piece.area > 0.0
     heights = piece.heights[inside & np.isfinite(piece.heights)]
     low, high = (heights.min(), heights.max()) if heights.size else (np.nan, np.nan)
+    drawn = area / piece.inside if piece.inside > 0.0 else np.nan
     return [
-        Figure("map_area_ha", area / HECTARE, "ha", "true level area on the raster", "map"),
+        Figure("drawn_ha_map", drawn / HECTARE, "ha",
+               "true level area of the whole outline, on the raster or not", "map"),
+        Figure("map_area_ha", area / HECTARE, "ha", "of it on the raster, voids counted", "map"),
+        Figure("known_ha_map", known / HECTARE, "ha",
+               "of it with a known slope: what all other figures tell of", "map"),
         Figure("surface_area_ha", surface / HECTARE, "ha",
                "area of the slope's own surface, where the slope is known", "slope"),
         Figure("unknown_ha_map", (area - known) / HECTARE, "ha",

@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 
 from terrasol.constants import HECTARE
 from terrasol.engine.job import NO_SCENE, plan_terrain
+from terrasol.engine.outputs import shade_doubts, shade_words
 from terrasol.engine.parcel_cells import Piece, SceneOf, pieces_of
 from terrasol.engine.parcel_errors import Doubt, doubts_of
 from terrasol.engine.parcel_figures import (
@@ -29,7 +30,7 @@ from terrasol.engine.parcel_words import read_score
 from terrasol.engine.plan import Block, Progress
 from terrasol.engine.uncertainty import doubts_of_error
 from terrasol.engine.windows import collect
-from terrasol.errors import SettingError, listed
+from terrasol.errors import SettingError, area_words, listed
 from terrasol.files.overlaps import overlap_doubts
 from terrasol.files.vectors import Polygons
 from terrasol.ground.beyond import Scene
@@ -53,7 +54,7 @@ MOST_NAMED: Final = 8
 """Parcels that a warning names."""
 
 LEAST_UNKNOWN: Final = 0.01
-"""Share of a parcel's area on which a rule may be unknown without a warning (judgement, no
+"""Share of a parcel's area on which slope or rule may be unknown without a warning (judgement, no
 source)."""
 
 LARGE_EFFECT: Final = 100.0
@@ -180,6 +181,8 @@ class Survey:
         The score.
     warnings : list of str
         What a careful reader should know.
+    shade : str
+        What the horizon is made of, in a sentence.
     """
 
     parcels: list[Parcel]
@@ -188,6 +191,7 @@ class Survey:
     ranking: Ranking | None = None
     score: Score | None = None
     warnings: list[str] = field(default_factory=list)
+    shade: str = ""
 
     @property
     def order(self) -> list[Parcel]:
@@ -245,12 +249,13 @@ def survey(
     )
     parcels = _parcels(elevation, polygons, settings, looks, levels, scene_of, threads)
     told(part, "figures")
+    scene = scene_of(elevation, make_frame(elevation.shape, elevation.transform, elevation.crs))
     warnings = [
-        *polygons.warnings, *overlap_doubts(polygons), *notes,
-        *doubts_of_error(elevation, settings.error), *_doubts_of_size(parcels),
-        *_doubts_of_lapse(parcels), *_doubts_of_rule(parcels),
+        *polygons.warnings, *overlap_doubts(polygons), *notes, *shade_doubts(scene),
+        *doubts_of_error(elevation, settings.error), *_doubts_of_voids(parcels),
+        *_doubts_of_size(parcels), *_doubts_of_lapse(parcels), *_doubts_of_rule(parcels),
     ]  # fmt: skip
-    found = _ranked(parcels, settings, looks[0][0], warnings)
+    found = replace(_ranked(parcels, settings, looks[0][0], warnings), shade=shade_words(scene))
     if settings.error is not None:
         found = _doubted(
             found, elevation, settings.error, scene_of, threads,
@@ -318,10 +323,26 @@ def _doubts_of_size(parcels: Sequence[Parcel]) -> list[str]:
     ]
 
 
+def _doubts_of_voids(parcels: Sequence[Parcel]) -> list[str]:
+    """Warn of parcels with ground whose slope is unknown."""
+    void = []
+    for parcel in parcels:
+        area = float(parcel.piece.area.sum())
+        share = 1.0 - float(parcel.piece.weights.sum()) / area if area else 0.0
+        if share >= LEAST_UNKNOWN:
+            void.append(f"{100.0 * share:.0f} % of '{parcel.name}'")
+    if not void:
+        return []
+    return [
+        f"{listed(void, MOST_NAMED)} is unknown (void ground), and in no figure: fill voids with"
+        " --fill-voids, or give a complete model"
+    ]
+
+
 def _doubts_of_rule(parcels: Sequence[Parcel]) -> list[str]:
     """Warn of ground on which nobody knows whether it meets the rule."""
     unknown = [
-        f"'{p.name}' ({area:.2f} ha)"
+        f"'{p.name}' ({area_words(area)})"
         for p in parcels
         if (area := p.numbers.get("rule_unknown_ha_map", 0.0))
         >= LEAST_UNKNOWN * p.piece.area.sum() / HECTARE

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from pyproj import CRS, Transformer
 
 from terrasol.constants import HECTARE
-from terrasol.errors import listed
+from terrasol.errors import area_words, listed
 from terrasol.files.vectors import Polygons
 
 SLIVER_SHARE: Final = 0.01
@@ -42,7 +42,7 @@ def overlap_doubts(polygons: Polygons) -> list[str]:
     pairs = sorted(_shared(polygons), key=lambda pair: -pair[2])
     if not pairs:
         return []
-    named = [f"'{one}' with '{other}' ({area / HECTARE:.2g} ha)" for one, other, area in pairs]
+    named = [f"'{one}' with '{other}' ({area_words(area / HECTARE)})" for one, other, area in pairs]
     return [
         "outlines overlap, and ground that they share counts in each, areas of map:"
         f" {listed(named, MOST_NAMED)}"

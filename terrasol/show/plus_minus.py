@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import math
 
+from terrasol.errors import area_unit
+
 
 def plus_minus(
     value: float,
@@ -44,3 +46,24 @@ def plus_minus(
         if told == every:
             return f"{format(max(whole - error, 0.0), form)} to {every}"
     return f"{told} {sign} {off}"
+
+
+def area_plus_minus(
+    hectares: float, error: float | None, whole: float = math.nan, *, sign: str = "±"
+) -> str:
+    """Word an area with its standard error and unit, small ones in square metres.
+
+    Parameters
+    ----------
+    hectares, error, whole, sign
+        As for `plus_minus`.
+
+    Examples
+    --------
+    >>> area_plus_minus(3.1, 0.4), area_plus_minus(0.004, None), area_plus_minus(0.004, 0.2)
+    ('3.10 ± 0.40 ha', '40 m²', '0.00 ± 0.20 ha')
+    """
+    unit, factor, form = area_unit(max(hectares, error or 0.0))
+    off = None if error is None else error * factor
+    told = plus_minus(hectares * factor, off, form, sign=sign, whole=whole * factor)
+    return f"{told} {unit.replace('2', '²') if sign == '±' else unit}"

@@ -145,6 +145,9 @@ def test_summary_is_for_people(places, tmp_path, capsys):
     said = capsys.readouterr().err
     assert "Côte/3" in said
     assert "rule: slope_percent < 15" in said
+    assert "ha drawn" in said
+    assert "ha known" not in said  # all of what is drawn
+    assert "warning: shade of all that stands in the raster, and of nothing beyond it" in said
     assert VINEYARD in said
     assert sorted(p.name for p in (tmp_path / "o").iterdir()) == [
         "columns.csv", "parcels.csv", "parcels.gpkg", "run.json",
@@ -356,21 +359,28 @@ def test_overlaps_are_told_before_the_work_too(places, tmp_path, capsys):
     assert main([*asked, "--dry-run", "--json"]) == 0
     (said,) = json.loads(capsys.readouterr().out)["warnings"]
     assert said.startswith("outlines overlap")
-    assert said.endswith("'a' with 'b' (0.5 ha)")
+    assert said.endswith("'a' with 'b' (0.50 ha)")
 
 
 def test_long_names_do_not_widen_the_table():
-    row = {"parcel": "x" * 300, "map_area_ha": 1.0}
-    assert _cell(row, "parcel", "{}") == "x" * 37 + "..."
-    assert _cell(row, "map_area_ha", "{:.2f}") == "1.00"
+    assert _cell({"parcel": "x" * 300}, "parcel", "{}") == "x" * 37 + "..."
+
+
+def test_small_areas_are_told_in_square_metres():
+    row = {"known_ha_map": 1.0}
+    for area, told in ((1.0, "1.00"), (0.01, "0.01"), (0.0009, "9.0 m2"), (0.0, "0.00")):
+        assert _cell(row | {"drawn_ha_map": area}, "drawn_ha_map", "") == told
+    assert _cell(row | {"rule_ha_map": 0.003, "rule_ha_map_se": 0.001}, "rule_ha_map", "") == (
+        "30 +/- 10 m2"
+    )
 
 
 def test_an_area_of_none_or_all_has_a_range_in_place_of_a_standard_error_both_ways():
-    row = {"map_area_ha": 3.0, "unknown_ha_map": 0.5, "rule_ha_map_se": 0.32}
+    row = {"known_ha_map": 2.5, "rule_ha_map_se": 0.32}
     for area, told in ((0.0, "0.00 to 0.32"), (1.0, "1.00 +/- 0.32"), (2.5, "2.18 to 2.50")):
-        assert _cell(row | {"rule_ha_map": area}, "rule_ha_map", "{:.2f}") == told
+        assert _cell(row | {"rule_ha_map": area}, "rule_ha_map", "") == told
     row |= {"rule_ha_map": 0.0, "rule_ha_map_se": None}
-    assert _cell(row, "rule_ha_map", "{:.2f}") == "0.00"
+    assert _cell(row, "rule_ha_map", "") == "0.00"
 
 
 def test_names_of_sheets_are_plain_and_differ():

@@ -11,6 +11,7 @@ import shapely
 from engine.made_parcels import AIR, CELL, LEFT, SCALE, TOP, UTM, asked_for, box, parcels, plane
 from pyproj import CRS, Transformer
 
+from terrasol.engine.datasets import scene_of
 from terrasol.engine.parcel_cells import pieces_of
 from terrasol.engine.parcel_figures import Warmth, season_places
 from terrasol.engine.parcel_frame import survey_parcels
@@ -154,11 +155,47 @@ def test_outside_void_and_order():
     assert any("'P1' lies outside" in text for text in found.warnings)
     void = found.parcels[1].numbers
     assert void["unknown_ha_map"] == pytest.approx(void["map_area_ha"])
+    assert void["known_ha_map"] == 0.0
     assert np.isnan(void["slope_mean_percent"])
     assert np.isnan(void["slope_10_to_15_percent_ha_map"])
     assert [p.name for p in found.order] == ["P0", "P2"]
     with pytest.raises(InputError, match="void ground"):
         survey(ground, parcels(box(-390, 0, -300, 50)), asked_for(coarser=()))
+
+
+def test_area_is_told_as_drawn_on_the_raster_and_known():
+    """6 ha, of which 4 lie on the raster, of which 1 is void: two columns of cells."""
+    ground = plane(12.0, 180.0)
+    ground.heights[:, 78:] = np.nan
+    shapes = parcels(box(320, -250, 440, 250), box(-100, -50, -90, -41))
+    found = survey(ground, shapes, asked_for(coarser=()))
+    edge, small = (parcel.numbers for parcel in found.parcels)
+    told = {"drawn_ha_map": 6.0, "map_area_ha": 4.0, "known_ha_map": 3.0, "unknown_ha_map": 1.0}
+    assert {name: edge[name] for name in told} == pytest.approx(
+        {name: area * SCALE for name, area in told.items()}, rel=1e-4
+    )
+    assert small["drawn_ha_map"] == small["map_area_ha"] == small["known_ha_map"]
+    (void,) = (text for text in found.warnings if "void ground" in text)
+    assert void.startswith("25 % of 'P0' is unknown (void ground)")
+    assert "P1" not in void
+
+
+def test_a_horizon_that_ends_with_the_raster_is_told():
+    shapes = parcels(box(-50, -50, 50, 50))
+    alone = survey(plane(12.0, 180.0), shapes, asked_for(coarser=()))
+    (said,) = alone.warnings
+    assert said.startswith("shade of all that stands in the raster, and of nothing beyond it:")
+    assert "--far" in said
+    assert alone.shade == "Shade of all that stands in the raster, and of nothing beyond it."
+    wide = Elevation.from_array(
+        np.full((60, 60), 480.0), (40, 0, LEFT - 800, 0, -40, TOP + 800), UTM
+    )
+    found = survey(
+        plane(12.0, 180.0), shapes, asked_for(coarser=()),
+        lambda ground, _: scene_of(ground, wide),
+    )  # fmt: skip
+    assert found.warnings == []
+    assert found.shade.endswith("in the raster and in the far model around it.")
 
 
 def test_score_ranks_and_refuses_what_no_parcel_has():
@@ -399,6 +436,6 @@ def test_parcels_of_few_cells_are_doubted():
 def test_parcels_that_overlap_are_told_with_the_ground_they_share():
     shapes = parcels(box(-100, -50, 0, 50), box(-40, -50, 100, 50))
     found = survey(plane(12.0, 180.0), shapes, asked_for(coarser=()))
-    assert any("'P0' with 'P1' (0.4 ha)" in text for text in found.warnings)
+    assert any("'P0' with 'P1' (0.40 ha)" in text for text in found.warnings)
     areas = [parcel.numbers["map_area_ha"] for parcel in found.parcels]
     assert sum(areas) == pytest.approx(2.4 * SCALE, rel=1e-4)  # of 2 ha of ground

@@ -26,7 +26,7 @@ def box(x0, y0, x1, y1):
 def test_pairs_that_overlap_are_named_with_what_they_share():
     one, other, away = box(0, 0, 100, 100), box(60, 0, 200, 100), box(300, 0, 400, 100)
     (said,) = overlap_doubts(polygons(one, other, away))
-    assert "counts in each, areas of map: 'A' with 'B' (0.4 ha)" in said
+    assert "counts in each, areas of map: 'A' with 'B' (0.40 ha)" in said
     assert "'C'" not in said
 
 
@@ -35,7 +35,12 @@ def test_a_border_drawn_twice_is_not_warned_of_and_a_common_one_neither():
     square = box(0, 0, 100, 100)
     assert overlap_doubts(polygons(square, box(100, 0, 200, 100))) == []
     assert overlap_doubts(polygons(square, box(99.1, 0, 300, 100))) == []
-    assert "(0.011 ha)" in overlap_doubts(polygons(square, box(98.9, 0, 300, 100)))[0]
+    assert "(0.01 ha)" in overlap_doubts(polygons(square, box(98.9, 0, 300, 100)))[0]
+
+
+def test_a_small_overlap_is_told_in_square_metres():
+    small = box(0, 0, 10, 10)
+    assert overlap_doubts(polygons(small, box(5, 0, 20, 10)))[0].endswith("'A' with 'B' (50 m2)")
 
 
 def test_of_large_polygons_a_tenth_of_a_hectare_counts():
@@ -48,8 +53,8 @@ def test_of_large_polygons_a_tenth_of_a_hectare_counts():
 def test_the_first_few_pairs_are_named_largest_first():
     nested = [box(0, 0, 100, 10 * k) for k in range(1, 5)]
     (said,) = overlap_doubts(polygons(*nested))
-    assert "map: 'C' with 'D' (0.3 ha), 'B' with " in said
-    assert said.endswith(" (0.1 ha) and 1 more")
+    assert "map: 'C' with 'D' (0.30 ha), 'B' with " in said
+    assert said.endswith(" (0.10 ha) and 1 more")
     assert said.count(" ha)") == 5
 
 
