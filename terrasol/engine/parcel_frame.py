@@ -7,6 +7,7 @@ from os import PathLike
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from terrasol.constants import REFRACTION_COEFFICIENT
 from terrasol.engine.datasets import clear_air, scene_of
@@ -56,6 +57,8 @@ def survey_parcels(
     canopy_albedo: float = CANOPY_ALBEDO,
     clock: str = "solar",
     sky: Sky | None = None,
+    albedo_map: NDArray[np.float32] | None = None,
+    index_map: NDArray[np.float32] | None = None,
     albedo: float | Sequence[float] = 0.2,
     diffuse: str = "perez",
     azimuths: int = 64,
@@ -109,7 +112,7 @@ def survey_parcels(
         A measured sky or one of monthly indices, in place of the clear one.
     albedo : float or 12 floats
         Of the ground.
-    diffuse, azimuths, step_seconds, refraction, far, surface, threads
+    albedo_map, index_map, diffuse, azimuths, step_seconds, refraction, far, surface, threads
         See `irradiation`.
     dem_error : DemError, optional
         Error of the heights, for standard errors.
@@ -155,7 +158,7 @@ def survey_parcels(
     air = air or clear_air(elevation)
     light = LightSettings(
         whole, air, twelve(albedo, "albedo"), diffuse, azimuths, step_seconds,
-        refraction=refraction, sky=sky,
+        refraction=refraction, sky=sky, albedo_map=albedo_map, index_map=index_map,
     )  # fmt: skip
     hours = HoursSettings(
         whole, sky or air, parse_days(None, whole), parse_clock(clock),

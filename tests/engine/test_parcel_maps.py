@@ -4,12 +4,15 @@ from __future__ import annotations
 
 from dataclasses import replace
 
+import geopandas
 import numpy as np
 import pytest
-from engine.made_parcels import AIR, asked_for, box, parcels, plane
+from engine.made_parcels import AIR, UTM, asked_for, box, parcels, plane
 
+from terrasol.engine.parcel_frame import survey_parcels
 from terrasol.engine.parcel_rows import RowSettings
 from terrasol.engine.parcels import survey
+from terrasol.errors import SettingError
 from terrasol.ground.uncertainty import DemError
 from terrasol.sky.cloud import MonthlySky
 
@@ -79,6 +82,23 @@ def test_the_rows_ground_is_as_bright_as_the_parcel_s():
     ]
     assert told[0] == pytest.approx(told[1], rel=1e-4)
     assert told[2] < 0.99 * told[0]
+
+
+def test_maps_are_taken_from_python_too():
+    """As the command has them: the same figures as with the settings themselves."""
+    table = geopandas.GeoDataFrame({"name": ["P0"]}, geometry=[RIGHT], crs=UTM)
+    maps = {"albedo_map": even(0.4), "index_map": even(0.6)}
+    quick = {"azimuths": 16, "step_seconds": 900.0}
+    mapped = survey_parcels(GROUND, table, air=AIR, **maps, **quick)
+    plain = survey_parcels(
+        GROUND, table, air=AIR, albedo=0.4, sky=MonthlySky(AIR, (0.6,) * 12), **quick
+    )
+    bare = survey_parcels(GROUND, table, air=AIR, **quick)
+    name = "irradiation_season_mj_m2_slope"
+    assert mapped[name][0] == pytest.approx(plain[name][0], rel=2e-4)
+    assert mapped[name][0] < 0.75 * bare[name][0]
+    with pytest.raises(SettingError, match="the albedo map must have the shape"):
+        survey_parcels(GROUND, table, air=AIR, albedo_map=np.full((1, 3, 3), 0.4), **quick)
 
 
 def test_standard_errors_come_under_maps_too():

@@ -468,6 +468,34 @@ def test_from_python(hills):
         terrasol.plot_predictors(hills, points, "2025-04")
 
 
+def test_maps_of_albedo_and_index_are_taken_from_python(hills):
+    """A plot in a cell has the light of that cell on the map, which has half the clear light."""
+    maps = {
+        "albedo_map": np.where(np.arange(300) < 220, 0.2, 0.6) * np.ones((12, 70, 1)),
+        "index_map": np.where(np.arange(300) < 220, 1.0, 0.5) * np.ones((1, 70, 1)),
+    }
+    quick = {"air": Air.ineichen(3.0), "azimuths": 16, "step_seconds": 3600.0}
+    points = at_cells(hills, *PLACES)
+    told = [
+        terrasol.plot_predictors(
+            hills, points, predictors=("irradiation",), radii=(), **quick, **more
+        ).frame["irradiation_year_global_mj_m2_slope"]
+        for more in (maps, {})
+    ]
+    whole = terrasol.irradiation(hills, **quick, **maps).irradiation_year.sel(part="global").values
+    at = [(20, 255), (33, 256), (45, 120), (29, 198)]
+    assert told[0].tolist() == pytest.approx([whole[cell] for cell in at], rel=1e-3)
+    assert (told[0] < 0.8 * told[1]).tolist() == [True, True, False, False]
+
+
+def test_a_horizon_that_ends_with_the_raster_is_told_where_shade_matters(hills, table):
+    said = "shade of all that stands in the raster, and of nothing beyond it"
+    assert any(text.startswith(said) for text in table.warnings)
+    points = at_cells(hills, *PLACES)
+    bare = plot_table(hills, points, settings(radii=(), groups=("height", "slope")))
+    assert not any(text.startswith(said) for text in bare.warnings)
+
+
 def test_far_ridges_and_trees_count(hills, metric_ground):
     points = at_cells(hills, *PLACES)
     asked = {"predictors": ("sky_view",), "radii": (), "azimuths": 16, "step_seconds": 3600.0}
