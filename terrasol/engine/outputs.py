@@ -141,7 +141,10 @@ def shade_doubts(scene: Scene) -> list[str]:
     if scene.far is not None:
         return []
     words = shade_words(scene).replace("Shade", "shade").rstrip(".")
-    return [f"{words}: where higher ground stands around, give a larger model with --far"]
+    return [
+        f"{words}: where higher ground stands around, give a larger model with --far, or ask"
+        " terrasol irradiation --horizon-gap how much could be missing"
+    ]
 
 
 def _fineness(days: float, unit: str) -> float:
