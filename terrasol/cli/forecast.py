@@ -7,18 +7,21 @@ import os
 import shutil
 from collections.abc import Callable, Iterable
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, Final
 
 import numpy as np
 
 from terrasol.cli.options import Common
 from terrasol.cli.streams import give
-from terrasol.errors import counted
+from terrasol.errors import counted, listed
 
 if TYPE_CHECKING:
     from terrasol.cli.run import Ground
 
 Record = dict[str, Any]
+
+MOST_FILES: Final = 16
+"""Files that a forecast for people lists; --json has all."""
 
 
 def ground_forecast(common: Common, ground: Ground) -> Record:
@@ -91,7 +94,7 @@ def forecast_text(
         grid_line(f),
         heights_line(f),
         *own,
-        ("files", ", ".join(f["files"]) or no_files),
+        ("files", listed(f["files"], MOST_FILES) or no_files),
     ]
     if f["removed"]:
         rows.append(("removed", ", ".join(f["removed"])))

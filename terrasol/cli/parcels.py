@@ -51,6 +51,15 @@ LAYER, TABLE, SIZES, ROWS, DOUBTS, COLUMNS, BOOK, SUMMARY = (
 SECONDS_A_SHEET = 0.7
 """To draw one, for the estimate only."""
 
+SHEETS_KEPT: Final = 4
+"""Sheets after which their memory is given back (judgement, no source)."""
+
+SHEET_BYTES: Final = 0.3e6
+"""Memory that a sheet of the book holds until all are drawn, for the estimate only (measured)."""
+
+MOST_LISTED: Final = 8
+"""Names that the forecast lists for people; --json has all."""
+
 NOT_HERE = ("compression", "horizon_gap", "highest")
 """Shared options that mean nothing for parcels."""
 
@@ -459,15 +468,17 @@ class _Job:
         seconds = shares * sum(plan.seconds(threads) for plan in plans)
         if settings.error is not None:
             seconds += settings.error.realisations * plans[0].seconds(threads)
+        drawing = 0.0
         if self.given["sheets"] != "none":
             seconds += SECONDS_A_SHEET * len(polygons)
+            drawing = SHEET_BYTES * len(polygons)
         removed, notes = superseded(common, files)
         return ground_forecast(common, self.ground) | {
             "parcels": list(polygons.names),
             "season": settings.asked.season_words,
             "files": files,
             "removed": removed,
-            "memory_mb": round(max(plan.memory_bytes for plan in plans) / 1e6),
+            "memory_mb": round((max(plan.memory_bytes for plan in plans) + drawing) / 1e6),
             "disk_free_mb": free_disk_mb(common.out_dir),
             "threads": threads,
             "seconds": round(seconds),
@@ -554,6 +565,7 @@ class _Job:
         """Stage the sheets."""
         if self.given["sheets"] == "none":
             return
+        import gc
         from pathlib import Path
 
         from terrasol.show.page import book
@@ -564,14 +576,19 @@ class _Job:
         elevation, frame = self.ground.elevation, self.ground.frame
 
         def pages() -> Iterator[Page]:
-            """One after the other, so that no more than one is in memory."""
+            """One after the other, so that no more than a few are in memory."""
             yield summary_page(found, elevation, frame, title=title)
             for k, parcel in enumerate(found.order):
                 yield parcel_page(found, parcel, elevation, frame, title=title)
                 move((k + 1) / len(found.parcels))
+                if k % SHEETS_KEPT == 0:
+                    gc.collect()  # what a sheet is made of holds itself in rings
 
         if BOOK in files:
-            delivery.write_bytes(BOOK, book(pages(), Title=title))
+            try:
+                book(delivery.staged(BOOK), pages(), Title=title)
+            except OSError as error:
+                raise delivery.refusal(BOOK, error) from error
             return
         names = dict(zip((p.name for p in found.parcels), _sheets(files), strict=True))
         drawn = [SUMMARY, *(names[parcel.name] for parcel in found.order)]
@@ -623,8 +640,9 @@ def _results(found: Survey) -> dict[str, Any]:
 def _in_lines(f: dict[str, Any]) -> str:
     """The forecast for people."""
     from terrasol.cli.forecast import forecast_text
+    from terrasol.errors import listed
 
-    parcels = f"{len(f['parcels'])}: {', '.join(f['parcels'])}"
+    parcels = f"{len(f['parcels'])}: {listed(f['parcels'], MOST_LISTED)}"
     own = [("parcels", parcels), ("season", f["season"])]
     return forecast_text(f, own, about="at most about")
 

@@ -391,3 +391,21 @@ def test_names_of_sheets_are_plain_and_differ():
 def test_hidden_options_are_those_that_mean_nothing():
     hidden = {p.name for p in parcels.params if getattr(p, "hidden", False)}
     assert hidden == {"compression", "horizon_gap", "highest"}
+
+
+def test_the_forecast_names_a_few_of_many_parcels():
+    from terrasol.cli.parcels import _in_lines
+
+    names = [f"p{k}" for k in range(300)]
+    forecast = {
+        "parcels": names, "season": "April to October", "input": "dem.tif", "crs": "UTM", "rows": 1,
+        "columns": 1, "void_cells": 0, "filled_cells": 0, "heights_m": [0, 1],
+        "heights_read_as": "metre", "files": [f"sheet_{k}.png" for k in range(300)], "removed": [],
+        "warnings": [],
+    }  # fmt: skip
+    told = _in_lines(forecast)
+    assert "300: p0, p1" in told
+    assert "and 292 more" in told
+    assert "sheet_0.png" in told
+    assert "and 284 more" in told
+    assert max(map(len, told.splitlines())) < 300
