@@ -550,7 +550,7 @@ def _rows(page: Page, survey: Survey, parcel: Parcel, box) -> None:
     panel.x_ticks(list(at), [f"{a}°" for a in at], down=TICK + 5)
     climbed = np.append(rows.steepest, rows.steepest[0])
     panel.x_ticks(list(at), [f"{climbed[a // 5]:.0f} %" for a in at], down=TICK + 18)
-    page.text(x - 14, y + height + TICK + 18, "climb", TICK, colour=SOFT, across="right")
+    page.text(x - 18, y + height + TICK + 18, "climb", TICK, colour=SOFT, across="right")
     if np.isfinite(rows.fall_line):
         panel.axes.axvline(rows.fall_line, color=SOFT, linewidth=1.0 * POINTS_PER_PIXEL, zorder=1)
         px, _ = panel.place(rows.fall_line, high)

@@ -218,6 +218,8 @@ def _area(key: str) -> Cell:
 
 def _faces(parcel: Parcel) -> str:
     """The sector of the mean aspect."""
+    if not parcel.piece.known.any():
+        return "–"
     degrees = parcel.numbers["aspect_mean_deg"]
     return SECTORS[int((degrees + 22.5) // 45) % 8] if np.isfinite(degrees) else "flat"
 

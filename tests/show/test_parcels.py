@@ -341,6 +341,7 @@ def test_each_part_of_a_parcel_has_its_number(odd):
         if hasattr(a, "get_text") and a.get_position()[1] < 600 and a.get_text() in "1234"
     ]
     assert sorted(filter(None, map_)) == ["1", "2", "3", "4", "4"]
-    heads = all_words(page)
-    assert "ha drawn" in heads
-    assert "known" in heads
+    words = all_words(page)
+    assert "ha drawn" in words
+    assert "known" in words
+    assert words.count("flat") == 0  # what is void faces nowhere that is known
