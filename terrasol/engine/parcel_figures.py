@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from calendar import monthrange
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 from itertools import pairwise
 from typing import Any, Final
@@ -306,11 +306,6 @@ def figures_of(piece: Piece, level: Level, asked: Asked) -> list[Figure]:
         *(_rule(piece, level, asked) if asked.rule is not None else ()),
         *(_warmth(piece) if "degree_days" in piece.layers else ()),
     ]
-
-
-def known_area(numbers: Mapping[str, Any]) -> float:
-    """Area of a parcel on which areas of some kind are told, by its figures [ha of map]."""
-    return float(numbers["known_ha_map"])
 
 
 def _extent(piece: Piece) -> list[Figure]:
