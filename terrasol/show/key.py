@@ -331,6 +331,7 @@ def draw_legend(
     void: bool,
     colour_map: str = COLOUR_MAP,
     void_words: str = "no data",
+    marked_words: str = "",
 ) -> None:
     """Name what the map shows beside colours, about the height y.
 
@@ -344,6 +345,8 @@ def draw_legend(
         Of the map.
     void_words : str
         What ground without a value is.
+    marked_words : str
+        What the ground without a value is that is hatched the other way; empty if none is.
     """
     entries: list[tuple[Callable[..., None], str]] = []
     if relief:
@@ -351,7 +354,9 @@ def draw_legend(
     if step is not None:
         entries.append((_contour_swatch, f"contours every {step:.6g} m"))
     if void:
-        entries.append((_void_swatch, void_words))
+        entries.append((partial(_void_swatch, False), void_words))
+    if marked_words:
+        entries.append((partial(_void_swatch, True), marked_words))
     for k in range(0, len(entries), 2):
         column = entries[k : k + 2]
         for (draw, text), level in zip(column, (y - 13, y + 13), strict=False):
@@ -369,6 +374,6 @@ def _contour_swatch(page, x, y) -> None:
     page.lines([[(x, y), (x + 34, y)]], colour=LINE, line=1.4, strength=0.7)
 
 
-def _void_swatch(page, x, y) -> None:
-    page.image(x, y - 9, hatch((18, 34)))
+def _void_swatch(other, page, x, y) -> None:
+    page.image(x, y - 9, hatch((18, 34), other=other))
     page.box(x, y - 9, 34, 18, edge=SOFT, line=0.8)
