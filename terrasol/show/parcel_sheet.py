@@ -622,27 +622,23 @@ def _draw_scale(page: Page, parcel: Parcel, name: str, words: str, scale: Scale,
 def notes_of(survey: Survey) -> list[str]:
     """What every sheet says of its numbers."""
     asked, light = survey.settings.asked, survey.settings.light
-    sky = (
-        "a sky without clouds (potential)"
-        if sky_kind(light) == "clear"
-        else "the sky that was given"
-    )
+    sky = "a clear sky (potential)" if sky_kind(light) == "clear" else "the sky that was given"
     notes = [
         f"Season {asked.season_words}, {asked.period.label}. Energy under {sky}, per area of slope,"
-        f" terrain shade and reflection counted, from cells of {survey.cell_size:.3g} m. Hectares"
-        f" are of level map area, true on the ellipsoid. {survey.shade}",
+        f" reflection counted, from cells of {survey.cell_size:.3g} m. {survey.shade} Hectares of"
+        " level map area, true on the ellipsoid.",
     ]
     if survey.settings.rows is not None:
         rows = survey.settings.rows
         notes.append(
-            f"Rows {rows.spacing:g} m apart, leaf wall {rows.height:g} m high and {rows.width:g} m"
+            f"Rows {rows.spacing:g} m apart, leaf wall {rows.height:g} m high, {rows.width:g} m"
             " wide, endless on the parcel's mean plane; climb: steepest cell along the rows."
         )
     if asked.warmth is not None:
         station, lapse = asked.warmth.station, asked.warmth.lapse
         told = f"{lapse:g}" if isinstance(lapse, float | int) else "monthly"
         notes.append(
-            f"Degree-days from {station.basis} of a station at {station.height:.0f} m, lapse rate"
+            f"Degree-days from {station.basis}, station at {station.height:.0f} m, lapse rate"
             f" {told} K/km."
         )
     error = survey.settings.error
