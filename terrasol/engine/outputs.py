@@ -170,7 +170,7 @@ def light_layers(settings: LightSettings) -> tuple[Layer, ...]:
             f"irradiation_{whole}",
             PARTS,
             settings.unit,
-            words.format("global"),
+            " ".join(words.format("").split()),  # of all parts
             band_names=tuple(words.format(part) for part in PARTS),
             resolution=fine,
             tags=tags,
@@ -210,7 +210,7 @@ def standard_error_layers(layers: Sequence[Layer], tags: dict[str, str]) -> tupl
     for layer in layers:
         if layer.name not in (*WITH_ERROR_OF_GROUND, *WHOLE_PERIOD):
             continue
-        words = layer.long_name.split(";")[0]
+        words = (layer.band_names or (layer.long_name,))[0].split(";")[0]
         named = f"{layer.standard_name} standard_error" if layer.standard_name else None
         found.append(
             Layer(
