@@ -319,7 +319,8 @@ def _extent(piece: Piece) -> list[Figure]:
     return [
         Figure("drawn_ha_map", drawn / HECTARE, "ha",
                "true level area of the whole outline, on the raster or not", "map"),
-        Figure("map_area_ha", area / HECTARE, "ha", "what of the outline lies on the raster, voids counted", "map"),
+        Figure("map_area_ha", area / HECTARE, "ha",
+               "what of the outline lies on the raster, voids counted", "map"),
         Figure("known_ha_map", known / HECTARE, "ha",
                "what of that has a known slope: all other figures are of it", "map"),
         Figure("surface_area_ha", surface / HECTARE, "ha",
