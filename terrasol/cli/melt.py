@@ -458,7 +458,7 @@ class _Job:
         lies = np.isnan(bare) & (result.map_of("peak") >= COVERED_FROM)
         none = known & np.isnan(bare) & ~lies
         never = ("Hatched grey: no snow came.",) * bool(none.any())
-        never += ("Hatched blue: it still lies.",) * bool(lies.any())
+        never += ("Hatched blue: snow still lies.",) * bool(lies.any())
         spread = spread_words(plan.model) if plan.spread else ""
         return (
             hydrograph_png(
@@ -484,7 +484,10 @@ class _Job:
         prepared = self.prepared
         if prepared.check is None:
             return ()
-        told = [f"{name}: {words}." for name, words in _agreement_rows(prepared.record)]
+        told = [
+            f"{name[0].upper()}{name[1:]}: {words}."
+            for name, words in _agreement_rows(prepared.record)
+        ]
         how = f"Melt after {_melt_name(prepared.plan.model)}, on level ground."
         notes = (how, *told, NO_AVALANCHE)
         picture = station_png(prepared.check, title=prepared.station.name, notes=notes)

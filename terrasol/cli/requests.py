@@ -5,9 +5,10 @@ from __future__ import annotations
 import signal
 import sys
 import threading
+import time
 from collections.abc import Iterator
 from contextlib import contextmanager
-from queue import Empty, SimpleQueue
+from queue import SimpleQueue
 from typing import Any, Final
 
 REQUESTS_TO_END = tuple(
@@ -46,11 +47,14 @@ class Requests:
 
     def repeat(self) -> None:
         """Make each request again and again, until `no_more`; for a thread of its own."""
-        request = self._made.get()
-        while request is not None:
-            try:
-                request = self._made.get(timeout=PATIENCE)
-            except Empty:
+        while (request := self._made.get()) is not None:
+            self._repeat(request)
+
+    def _repeat(self, request: int) -> None:
+        """Make one request again until another, or the end, takes its place."""
+        while self._made.empty():
+            time.sleep(PATIENCE)
+            if self._made.empty():
                 _send(request)
 
     def no_more(self) -> None:

@@ -198,7 +198,8 @@ def _straight_place(
     """Middle and direction of the straightest run of a line that has room."""
     best, where = 0.0, None
     run, margin = lettering.run, lettering.margin
-    for line in path.to_polygons(closed_only=False):
+    for each in path.to_polygons(closed_only=False):
+        line = np.asarray(each, np.float64)
         reach = np.concatenate([[0.0], np.cumsum(np.hypot(*np.diff(line, axis=0).T))])
         if reach[-1] < 8 * run:
             continue

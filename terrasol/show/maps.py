@@ -108,7 +108,7 @@ def overview_png(
     blocks = _blocks(values, scale, quantity, unit, mean, monthly_means, notes)
     page, places = _lay_out(picture, blocks)
     _write_head_and_foot(page, title, subtitle, elevation, frame)
-    other = _other_void(picture, values, marked)
+    other = _other_void(picture, energy, values, marked)
     _draw_map(page, picture, elevation, values, scale, void_words, other, marked_words)
     for (draw, _), (x, y) in zip(blocks, places, strict=True):
         draw(page, x, y)
@@ -185,12 +185,16 @@ def _write_head_and_foot(page, title, subtitle, elevation, frame) -> None:
     page.text(left, page.height - 26, clip(foot, key.SMALL, room), key.SMALL, colour=SOFT)
 
 
-def _other_void(picture, values, marked) -> NDArray[np.bool_]:
-    """Pixels without a value of which most is marked."""
+def _other_void(picture, energy, values, marked) -> NDArray[np.bool_]:
+    """Pixels without a value of which the marked part is the larger."""
     if marked is None:
         return np.zeros(picture.shape, bool)
-    share = picture.cells(picture.average(np.where(marked, np.float32(1.0), np.float32(0.0))))
-    return picture.ground & ~np.isfinite(values) & (np.nan_to_num(share) > 0.5)
+    void = np.isnan(energy)
+    other, plain = (
+        np.nan_to_num(picture.smooth(picture.average(mask.astype(np.float32))))
+        for mask in (void & marked, void & ~marked)
+    )
+    return picture.ground & ~np.isfinite(values) & (other > plain)
 
 
 def _draw_map(page, picture, elevation, values, scale, void_words, marked, marked_words) -> None:

@@ -122,7 +122,8 @@ def bands_png(tables: SeasonTables, *, title: str, subtitle: str, notes: Sequenc
         for b, colour, curve in zip(kept, colours, values, strict=False):
             panel.axes.plot(_days(tables), curve, color=colour, linestyle=_stroke(b)[1],
                             linewidth=2.0 * POINTS_PER_PIXEL)  # fmt: skip
-        _name_curves(panel, tables, kept, values)
+        if name != "runoff_input_mm":  # there the curves cross too often
+            _name_curves(panel, tables, kept, values, at_peak=name == "snow_water_mm")
         top += height + GAP
     _draw_band_key(page, tables, kept, colours)
     _foot(page, lines, top - GAP + 62)
@@ -158,7 +159,7 @@ def melt_out_png(
         first_day=first_day,
         void_words="no snow came" + (", or no data" if unknown else ""),
         marked=lies,
-        marked_words="it still lies",
+        marked_words="snow still lies",
     )
 
 
@@ -324,25 +325,28 @@ def _name_curves(
     tables: SeasonTables,
     kept: Sequence[int],
     values: Sequence[NDArray[np.floating]],
+    at_peak: bool,
 ) -> None:
-    """Name each band at its curve, where that falls to half of its greatest for the last time.
+    """Name each band above the peak of its curve, or where that last falls to half of it.
 
-    A name that would cover another is left out.
+    A name that would cover another, or pass the diagram's end, is left out.
     """
     taken: list[tuple[float, float]] = []
     for b, curve in list(zip(kept, values, strict=True))[:: -_every(kept)]:
         most = float(np.nanmax(curve))
         if not most > 0.0:
             continue
-        k = int(np.flatnonzero(curve >= 0.5 * most)[-1])
-        x, y = panel.place(k + 0.5, float(curve[k]))
+        k = int(np.nanargmax(curve)) if at_peak else int(np.flatnonzero(curve >= 0.5 * most)[-1])
         words = _band_name(tables, b)
         wide = text_width(words, NAME)
-        x = min(x + 4.0, panel.x + panel.width - wide)
-        if any(abs(x - left) < wide and abs(y - level) < NAME + 1.0 for left, level in taken):
-            continue
-        taken.append((x, y))
-        panel.page.text(x, y, words, NAME, halo=PAPER, down="center")
+        x, y = panel.place(k + 0.5, float(curve[k]))
+        x, y = (x - wide / 2.0, y - 0.8 * NAME) if at_peak else (x + 5.0, y)
+        if at_peak:
+            x = min(max(x, panel.x), panel.x + panel.width - wide)
+        clear = all(abs(x - left) > wide or abs(y - level) > NAME for left, level in taken)
+        if clear and x + wide <= panel.x + panel.width:
+            taken.append((x, y))
+            panel.page.text(x, y, words, NAME, halo=PAPER, down="center")
 
 
 def _draw_band_key(page, tables, kept, colours) -> None:

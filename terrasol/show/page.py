@@ -214,9 +214,11 @@ def book(place: str | PathLike[str], pages: Iterable[Page], **metadata: str) -> 
     Each sheet is written as it comes, so that pages may be drawn one at a time and forgotten;
     only their images are kept until the last one.
     """
-    with PdfPages(place, metadata={**metadata, "CreationDate": None}) as bound:
+    with open(place, "wb") as out:
+        bound = PdfPages(out, metadata={**metadata, "CreationDate": None})
         for page in pages:
             bound.savefig(page.figure, dpi=PRINT_DPI)
+        bound.close()  # not after a failure: fonts take seconds
 
 
 def _font(text: str, size: float, bold: bool) -> FontProperties:

@@ -481,8 +481,8 @@ def _days(page: Page, survey: Survey, parcel: Parcel, box) -> None:
     panel.x_ticks(list(at), _month_letters(survey), down=TICK + 5)
     if not few:
         return
-    hours = _monthly(parcel, "sun_hours_{}_h", survey) / survey.settings.asked.period.month_days
-    panel.x_ticks(list(at), [f"{h:.1f}" for h in hours], down=TICK + 18)
+    sunny = _monthly(parcel, "sun_hours_{}_h", survey) / survey.settings.asked.period.month_days
+    panel.x_ticks(list(at), [f"{h:.1f}" for h in sunny], down=TICK + 18)
     page.text(x - 4, y + height + TICK + 18, "h a day", TICK, colour=SOFT, across="right")
 
 

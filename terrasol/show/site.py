@@ -327,14 +327,18 @@ class _Sheet:
         )
 
     def _map_key(self, x: float, y: float, metres: float, step: float | None) -> None:
-        """Scale and contour lines below the map, no farther than its right edge."""
+        """Scale and contour lines below the map, in two lines if it is narrow."""
         length, _ = key.scale_bar(metres * SCALE / key.SCALE_LONGEST)
         pixels = length / metres
         unit = f"{length / 1000:g} km" if length >= 1000 else f"{length:g} m"
-        words = unit if step is None else f"{unit}, contours every {step:g} m"
-        x, y = min(x, self.right - pixels - 7 - text_width(words, SMALL) / SLACK), y + 16.0
+        lines = [unit] if step is None else [f"{unit}, contours every {step:g} m"]
+        if text_width(lines[0], SMALL) > SLACK * (self.right - x - pixels - 7):
+            lines = [unit, f"contours every {step:g} m"]
+        y += 16.0
         self.page.lines([[(x, y - 4), (x + pixels, y - 4)]], colour=INK, line=2.0)
-        self._text(x + pixels + 7, y, words, SMALL, colour=SOFT)
+        self._text(x + pixels + 7, y, lines[0], SMALL, colour=SOFT)
+        for line in lines[1:]:
+            self._text(x, y + 13.0, line, SMALL, colour=SOFT)
 
     def _horizon(self) -> None:
         site, common = self.site, self.common
