@@ -34,3 +34,6 @@ ENERGY_UNITS: Final = {"MJ": "MJ m-2", "kWh": "kW h m-2"}
 PHOTONS_PER_JOULE: Final = 2.3
 """Photons of 400 to 700 nm in a joule of global light [umol J-1]: half of its energy, at 4.6 umol
 a joule (common practice, no source; McCree 1972 has 4.57 for daylight, from memory)."""
+
+HECTARE: Final = 10_000.0
+"""Square metres."""

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import os
 import time
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
@@ -10,9 +9,15 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from terrasol.cli.ground_options import Around, ground_options
-from terrasol.cli.options import Common, Name, Numbers, common_options, diffuse_option
+from terrasol.cli.options import (
+    Common,
+    Name,
+    Numbers,
+    arguments_in_order,
+    common_options,
+    diffuse_option,
+)
 from terrasol.cli.sky_options import AskedSky, file_record, sky_options
-from terrasol.errors import counted
 
 if TYPE_CHECKING:
     from terrasol.cli.run import Ground
@@ -81,18 +86,14 @@ def compare(common: Common, around: Around, asked: AskedSky, **given: Any) -> No
 
 def _check(around: Around, asked: AskedSky) -> None:
     """Refuse options that mean nothing here."""
-    if around.horizon_gap or around.highest is not None:
-        raise click.UsageError("--horizon-gap belongs to terrasol irradiation: it is a map")
+    around.refuse_map()
     if asked.clear_sky_index is not None:
         raise click.UsageError("--clear-sky-index has no hours and no days: give a --station")
 
 
 def _rearrange(command: click.Command) -> None:
     """Put the arguments in order, and say of shared options what is different here."""
-    order = ("dem", "measured", "out_dir")
-    command.params.sort(
-        key=lambda each: order.index(each.name) if each.name in order else len(order)
-    )
+    arguments_in_order(command, "dem", "measured", "out_dir")
     for option in command.params:
         if option.name == "azimuths":
             option.default = 256  # as in the library, four times as many as for energy
@@ -205,9 +206,9 @@ class _Job:
     def _carry_out(self) -> tuple[dict[str, Any], list[str]]:
         """Compute and write everything, or leave nothing behind: the record, and the summary."""
         from terrasol.cli.progress import progress_bar
-        from terrasol.cli.run import announce_compilation, superseded
+        from terrasol.cli.run import announce_compilation, deliver, seconds_of
         from terrasol.engine.plan import default_threads
-        from terrasol.files.delivery import RECORD, Delivery
+        from terrasol.files.delivery import Delivery
         from terrasol.files.provenance import run_record
         from terrasol.show.comparison import comparison_png
 
@@ -223,20 +224,13 @@ class _Job:
             move(0.9, "drawing")
             picture = comparison_png(report, title=report.station.name, notes=lines[1:])
             delivery.write_bytes(PICTURE, picture)
-            removed, more = superseded(common, self.names)
             record |= {
                 "threads": threads,
                 "results": report.record(),
-                "warnings": [*notes, *report.warnings, *more],
-                "seconds": {
-                    "reading": round(self.ground.seconds, 2),
-                    "whole run": round(self.ground.seconds + time.perf_counter() - start, 2),
-                },
-                "files": [os.path.abspath(delivery.folder / name) for name in self.names],
-                "removed": removed,
+                "warnings": [*notes, *report.warnings],
+                "seconds": seconds_of(self.ground, start, {}),
             }
-            delivery.write_json(RECORD, record)
-            delivery.commit(removed)
+            record = deliver(delivery, common, self.names, record)
             move(1.0, "done")
         return record, lines
 
@@ -278,39 +272,24 @@ def _table(report: StationReport) -> bytes:
     return ("\n".join([",".join(COLUMNS), *rows]) + "\n").encode()
 
 
-def _in_lines(forecast: dict[str, Any]) -> str:
+def _in_lines(f: dict[str, Any]) -> str:
     """The forecast for people."""
-    from terrasol.cli.forecast import grid_line, heights_line, lines
+    from terrasol.cli.forecast import forecast_text
 
-    f, station, cell, other = (
-        forecast, forecast["station"], forecast["cell"], forecast["second_station"],
-    )  # fmt: skip
-    rows = [
-        ("input", f["input"]),
-        grid_line(f),
-        heights_line(f),
-        ("measured", _span(station)),
-        (
-            "cell",
-            f"row {cell['row']}, column {cell['column']}, at {cell['height_m']:.0f} m"
-            f" (stated: {station['height_m']:.0f} m)",
-        ),
-        ("sky", "clear; clear days count" if other is None else f"that of {_span(other)}"),
-        ("files", ", ".join(f["files"])),
-        *([("removed", ", ".join(f["removed"]))] if f["removed"] else []),
-        *(("warning", text) for text in f["warnings"]),
-    ]
-    return lines(rows)
+    station, cell, other = f["station"], f["cell"], f["second_station"]
+    place = (
+        f"row {cell['row']}, column {cell['column']}, at {cell['height_m']:.0f} m"
+        f" (stated: {station['height_m']:.0f} m)"
+    )
+    sky = "clear; clear days count" if other is None else f"that of {_span(other)}"
+    return forecast_text(f, [("measured", _span(station)), ("cell", place), ("sky", sky)])
 
 
 def _summary_text(record: dict[str, Any], found: list[str]) -> str:
     """What came out, for people."""
-    from terrasol.cli.forecast import duration
+    from terrasol.cli.run import closing_lines
 
-    files = record["files"]
-    took = duration(record["seconds"]["whole run"])
-    end = f"{counted(len(files), 'file')} in {os.path.dirname(files[0])} after {took}"
-    return "\n".join([*found, *(f"warning: {text}" for text in record["warnings"]), end])
+    return "\n".join([*found, *closing_lines(record)])
 
 
 def _span(station: dict[str, Any]) -> str:

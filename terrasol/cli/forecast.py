@@ -7,18 +7,21 @@ import os
 import shutil
 from collections.abc import Callable, Iterable
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, Final
 
 import numpy as np
 
 from terrasol.cli.options import Common
 from terrasol.cli.streams import give
-from terrasol.errors import counted
+from terrasol.errors import counted, listed
 
 if TYPE_CHECKING:
     from terrasol.cli.run import Ground
 
 Record = dict[str, Any]
+
+MOST_FILES: Final = 16
+"""Files that a forecast for people lists; --json has all."""
 
 
 def ground_forecast(common: Common, ground: Ground) -> Record:
@@ -61,6 +64,46 @@ def free_disk_mb(out: str) -> int:
 def lines(rows: Iterable[tuple[str, str]]) -> str:
     """Names and what they stand for, one a line."""
     return "\n".join(f"{name:<11} {text}" for name, text in rows)
+
+
+def forecast_text(
+    forecast: Record,
+    own: Iterable[tuple[str, str]],
+    *,
+    about: str = "about",
+    no_files: str = "none",
+) -> str:
+    """A forecast for people: the raster, the command's own lines, files, cost and warnings.
+
+    Parameters
+    ----------
+    forecast : dict
+        With what `ground_forecast` gives, ``files``, ``removed`` and ``warnings``; also
+        ``memory_mb``, ``seconds`` and ``threads`` together, and ``remarks``, where they are known.
+    own : iterable of (str, str)
+        Names and what they stand for.
+    about : str
+        What stands before the time.
+    no_files : str
+        What stands for no file.
+    """
+    f = forecast
+    rows = [
+        ("input", f["input"]),
+        ("CRS", f["crs"]),
+        grid_line(f),
+        heights_line(f),
+        *own,
+        ("files", listed(f["files"], MOST_FILES) or no_files),
+    ]
+    if f["removed"]:
+        rows.append(("removed", ", ".join(f["removed"])))
+    if "seconds" in f:
+        time = f"{about} {duration(f['seconds'])} on {counted(f['threads'], 'thread')}"
+        rows += [("memory", f"{f['memory_mb']:,} MB"), ("time", time)]
+    rows += [("note", text) for text in f.get("remarks", ())]
+    rows += [("warning", text) for text in f["warnings"]]
+    return lines(rows)
 
 
 def duration(seconds: float) -> str:

@@ -45,6 +45,17 @@ class Around:
         """Rasters that are read."""
         return tuple(name for name in (self.far, self.surface) if name)
 
+    def refuse_map(self) -> None:
+        """Refuse the map of the horizon's gap, for a command that draws none.
+
+        Raises
+        ------
+        click.UsageError
+            It is asked for.
+        """
+        if self.horizon_gap or self.highest is not None:
+            raise click.UsageError("--horizon-gap belongs to terrasol irradiation: it is a map")
+
     def record(self) -> dict[str, Any]:
         """What was given, ready for JSON: files with their hashes; nothing if nothing was."""
         from terrasol.files.provenance import sha256

@@ -135,7 +135,7 @@ def _record(settings: HoursSettings, air: Air) -> dict[str, Any]:
 def _draw(plan: Plan, hours: NDArray[np.float32], summary: Summary, title: str) -> bytes:
     """The overview map of a finished run."""
     from terrasol.engine.hours import HoursPlan
-    from terrasol.engine.outputs import month_labels
+    from terrasol.engine.outputs import month_labels, shade_words
     from terrasol.show.key import number
     from terrasol.show.maps import overview_png
 
@@ -155,9 +155,7 @@ def _draw(plan: Plan, hours: NDArray[np.float32], summary: Summary, title: str) 
         notes=(
             "The sun counts while its upper limb is in view, clouds or not.",
             f"Open level ground here: {number(level, 1.0)} h.",
-            "Shade of all that stands in the raster, and of nothing beyond it."
-            if plan.scene.far is None
-            else "Shade of all that stands in the raster and in the far model around it.",
+            shade_words(plan.scene),
         ),
         mean=summary.numbers.get(whole.name, {}).get(whole.bands[0], {}).get("mean"),
         monthly_means={month: means[label]["mean"] for month, label in months if label in means},

@@ -18,11 +18,12 @@ from terrasol.cli.options import (
     step_option,
 )
 from terrasol.cli.sky_options import (
+    ALBEDO_FOR_NOW,
     PAPERS,
     AskedSky,
-    Settled,
-    file_record,
-    map_doubts,
+    albedo_record,
+    raster_named,
+    settle_albedo,
     shortest,
     sky_options,
 )
@@ -34,12 +35,7 @@ if TYPE_CHECKING:
 
     from terrasol.engine.job import Plan, Summary
     from terrasol.ground.beyond import Scene
-    from terrasol.ground.elevation import Elevation
     from terrasol.light.settings import LightSettings
-
-
-ALBEDO_FOR_NOW = (0.2,)
-"""Stands for an albedo that is read later; where a map of it is void, it is what counts."""
 
 
 @click.command(short_help="The sun's energy for a year or any period, and its months.")
@@ -108,12 +104,13 @@ def irradiation(
     frame = ground.frame
     settings = replace(settings, air=asked.placed(settings.air, frame))
     settled = asked.settle(settings.air, given["period"], settings.step_seconds, elevation)
+    albedo, doubts = settle_albedo(given["albedo"], settled, elevation)
     settings = replace(
         settings,
         period=settled.period,
         sky=settled.sky,
         index_map=settled.index_map,
-        **_albedo(given["albedo"], settled, elevation),
+        **albedo,
     )
     scene = around.scene(elevation, frame)
     with naming(common.dem):
@@ -123,16 +120,10 @@ def irradiation(
     latitude, longitude = frame.centre
     record = light_record(settings) | settled.record | around.record()
     record |= asked_error.record(error, frame.cell_size)
-    if given["albedo"] == "station":
-        record["albedo"] = _known_months(settings)
+    record["albedo"] = albedo_record(given["albedo"], settings)
     record["centre"] = {"latitude": round(latitude, 5), "longitude": round(longitude, 5)}
-    inputs = (*around.inputs, *settled.inputs)
-    if settings.albedo_map is not None:
-        record["albedo"] = file_record(given["albedo"])
-        inputs = (*inputs, given["albedo"])
-    notes = (*asked.doubts(frame), *settled.warnings)
-    if settings.albedo_map is not None:
-        notes = (*notes, *albedo_doubts(settings.albedo_map, elevation))
+    inputs = (*around.inputs, *settled.inputs, *raster_named(given["albedo"]))
+    notes = (*asked.doubts(frame), *settled.warnings, *doubts)
     run(Job("irradiation", common, ground, plan, record, _draw, inputs, notes))
 
 
@@ -160,29 +151,6 @@ def _settings(common: Common, asked: AskedSky, given: dict[str, Any]) -> LightSe
     )
 
 
-def _albedo(asked: Any, settled: Settled, elevation: Elevation) -> dict[str, Any]:
-    """The settings of an albedo that is not in numbers."""
-    from terrasol.files.maps import read_map
-
-    if asked == "station":
-        return {"albedo": settled.albedo()}
-    if isinstance(asked, str):
-        return {"albedo_map": read_map(asked, elevation, "albedo", 0.0, 1.0)}
-    return {}
-
-
-def albedo_doubts(values: NDArray[np.float32], elevation: Elevation) -> tuple[str, ...]:
-    """Warn of cells that a map of the albedo leaves out."""
-    effect = f"the plain {ALBEDO_FOR_NOW[0]:g} counts there"
-    return map_doubts(values, elevation, "albedo", effect)
-
-
-def _known_months(settings: LightSettings) -> list[float | None]:
-    """Measured albedo of the twelve months, None for those outside the period: not measured."""
-    wanted = {month for _, month in settings.period.months}
-    return [value if m in wanted else None for m, value in enumerate(settings.albedo, 1)]
-
-
 def light_record(settings: LightSettings) -> dict[str, Any]:
     """Settings of light as plain text and numbers."""
     record = asdict(replace(settings, sky=None, albedo_map=None, index_map=None))
@@ -202,7 +170,7 @@ _SKY_NOTES = {
 
 def light_notes(settings: LightSettings, scene: Scene) -> tuple[str, ...]:
     """What energy was computed from, in sentences for a page's notes."""
-    from terrasol.engine.outputs import basis_words, sky_kind
+    from terrasol.engine.outputs import basis_words, shade_words, sky_kind
     from terrasol.show.key import range_text
 
     assumed = f"albedo of the ground {range_text(settings.month_albedo)}."
@@ -213,9 +181,7 @@ def light_notes(settings: LightSettings, scene: Scene) -> tuple[str, ...]:
         _SKY_NOTES[sky_kind(settings)].format(PAPERS[settings.air.model]),
         assumed[0].upper() + assumed[1:],
         f"Energy {basis_words(settings)}, with light from the ground around.",
-        "Shade of all that stands in the raster, and of nothing beyond it."
-        if scene.far is None
-        else "Shade of all that stands in the raster and in the far model around it.",
+        shade_words(scene),
     )
 
 

@@ -343,7 +343,7 @@ class _Job:
             record |= {
                 "threads": threads,
                 "results": numbers,
-                "warnings": [*result.summary.warnings, *self._doubts(), *more],
+                "warnings": [*result.summary.warnings, *self.notes, *more],
                 "seconds": {name: round(value, 2) for name, value in seconds.items()},
                 "files": [os.path.abspath(delivery.folder / name) for name in self.all_names],
                 "removed": removed,
@@ -356,7 +356,7 @@ class _Job:
         return record
 
     def _doubts(self) -> list[str]:
-        """Warnings from before the run."""
+        """Warnings from before a run; its summary holds those of ground and scene too."""
         plan = self.prepared.plan
         return [*self.ground.elevation.warnings, *plan.light.scene.warnings, *self.notes]
 
@@ -445,7 +445,7 @@ class _Job:
         import numpy as np
 
         from terrasol.engine.melt_job import spread_words
-        from terrasol.practice.snow import NO_AVALANCHE
+        from terrasol.practice.snow import COVERED_FROM, NO_AVALANCHE
         from terrasol.show.melt import bands_png, hydrograph_png, melt_out_png
 
         plan = result.plan
@@ -455,7 +455,10 @@ class _Job:
         how = f"Melt after {_melt_name(plan.model)}; weather of {self.prepared.station.name}."
         notes = (how, NO_AVALANCHE)
         bare, known = result.map_of("bare_day"), np.isfinite(plan.light.elevation.heights)
-        never = ("Hatched: no snow came, or it still lies.",) if np.isnan(bare[known]).any() else ()
+        lies = np.isnan(bare) & (result.map_of("peak") >= COVERED_FROM)
+        none = known & np.isnan(bare) & ~lies
+        never = ("Hatched grey: no snow came.",) * bool(none.any())
+        never += ("Hatched blue: snow still lies.",) * bool(lies.any())
         spread = spread_words(plan.model) if plan.spread else ""
         return (
             hydrograph_png(
@@ -467,7 +470,7 @@ class _Job:
             ),
             melt_out_png(
                 plan.light.elevation, plan.light.frame, bare,
-                plan.season_start, title=f"{name}: melt-out", subtitle=period,
+                plan.season_start, lies=lies, title=f"{name}: melt-out", subtitle=period,
                 notes=(*notes, *never),
             ),
         )  # fmt: skip
@@ -481,7 +484,10 @@ class _Job:
         prepared = self.prepared
         if prepared.check is None:
             return ()
-        told = [f"{name}: {words}." for name, words in _agreement_rows(prepared.record)]
+        told = [
+            f"{name[0].upper()}{name[1:]}: {words}."
+            for name, words in _agreement_rows(prepared.record)
+        ]
         how = f"Melt after {_melt_name(prepared.plan.model)}, on level ground."
         notes = (how, *told, NO_AVALANCHE)
         picture = station_png(prepared.check, title=prepared.station.name, notes=notes)
@@ -641,7 +647,7 @@ def _agreement_rows(station: dict[str, Any]) -> list[tuple[str, str]]:
     rows = []
     if "fit" in station:
         fit = station["fit"]
-        fitted = ", ".join(f"{name} {value:g}" for name, value in fit["fitted"].items())
+        fitted = ", ".join(_number_words(*each) for each in fit["fitted"].items())
         rows.append(("fitted", f"{fitted}; before: {_words(fit['before'])}"))
         rows += [
             (
@@ -651,11 +657,19 @@ def _agreement_rows(station: dict[str, Any]) -> list[tuple[str, str]]:
             for part in fit["split_sample"]
         ]
         if fit["at_bound"]:
-            names = " and ".join(fit["at_bound"])
+            names = " and ".join(name.replace("_", " ") for name in fit["at_bound"])
             rows.append(("doubt", f"{names} came to lie on a bound: the data do not tell it"))
     if "at_station" in station:
         rows.append(("at station", _words(station["at_station"])))
     return rows
+
+
+def _number_words(name: str, value: float) -> str:
+    """A number of the model in words, three digits and its unit."""
+    from terrasol.practice.snow import NUMBERS
+
+    unit = NUMBERS[name].unit
+    return f"{name.replace('_', ' ')} {value:#.3g}" + (f" {unit}" if unit != "1" else "")
 
 
 def _words(found: dict[str, Any]) -> str:

@@ -161,7 +161,8 @@ _OPTIONS = (
     click.option(
         "--vertical-unit",
         type=click.Choice(["metre", "foot", "us-foot"]),
-        help="Unit of the heights. [default: as the file says, else metre]",
+        help="Unit of the heights. [default: as the file says, else metre; needed where the file"
+        " says none and x and y are in feet]",
     ),
     click.option(
         "--fill-voids",
@@ -221,6 +222,13 @@ _OPTIONS = (
         help="Print one JSON object on stdout in place of the summary on stderr.",
     ),
 )
+
+
+def arguments_in_order(command: click.Command, *names: str) -> None:
+    """Put a command's arguments first, in the order of these names; options stay in theirs."""
+    command.params.sort(
+        key=lambda each: names.index(each.name) if each.name in names else len(names)
+    )
 
 
 def common_options(command: Callable[..., None]) -> Callable[..., None]:

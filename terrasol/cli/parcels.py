@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import os
 import time
 from collections.abc import Iterator
 from dataclasses import dataclass
@@ -16,14 +15,24 @@ from terrasol.cli.options import (
     Common,
     Name,
     Numbers,
+    arguments_in_order,
     clock_option,
     common_options,
     diffuse_option,
     period_option,
     step_option,
 )
-from terrasol.cli.sky_options import AskedSky, Settled, file_record, shortest, sky_options
-from terrasol.errors import counted
+from terrasol.cli.sky_options import (
+    ALBEDO_FOR_NOW,
+    AskedSky,
+    Settled,
+    albedo_record,
+    file_record,
+    raster_named,
+    settle_albedo,
+    shortest,
+    sky_options,
+)
 
 if TYPE_CHECKING:
     from terrasol.cli.run import Ground
@@ -41,6 +50,15 @@ LAYER, TABLE, SIZES, ROWS, DOUBTS, COLUMNS, BOOK, SUMMARY = (
 
 SECONDS_A_SHEET = 0.7
 """To draw one, for the estimate only."""
+
+SHEETS_KEPT: Final = 4
+"""Sheets after which their memory is given back (judgement, no source)."""
+
+SHEET_BYTES: Final = 0.3e6
+"""Memory that a sheet of the book holds until all are drawn, for the estimate only (measured)."""
+
+MOST_LISTED: Final = 8
+"""Names that the forecast lists for people; --json has all."""
 
 NOT_HERE = ("compression", "horizon_gap", "highest")
 """Shared options that mean nothing for parcels."""
@@ -144,6 +162,11 @@ class _Sizes(click.ParamType):
     " on both sides for each direction of the rows.",
 )
 @click.option(
+    "--canopy-albedo",
+    type=float,
+    help="Share of light that the sides of the rows send back. [default: 0.2]",
+)
+@click.option(
     "--coarser",
     metavar="FACTORS",
     default="2,4",
@@ -161,10 +184,11 @@ class _Sizes(click.ParamType):
 @period_option
 @click.option(
     "--albedo",
-    type=Numbers("station"),
+    type=Numbers("station", raster=True),
     default="0.2",
     show_default=True,
-    help="Albedo of the ground, or 'station' for what SERIES measured.",
+    help="Albedo of the ground: numbers, a RASTER of one band or of twelve, or 'station' for what"
+    " SERIES measured.",
 )
 @diffuse_option
 @step_option
@@ -197,16 +221,10 @@ def parcels(
 
 def _rearrange(command: click.Command) -> None:
     """Put the arguments in order, and hide what means nothing here."""
-    order = ("dem", "parcels_file", "out_dir")
-    command.params.sort(
-        key=lambda each: order.index(each.name) if each.name in order else len(order)
-    )
+    arguments_in_order(command, "dem", "parcels_file", "out_dir")
     for option in command.params:
         if isinstance(option, click.Option):
             option.hidden = option.hidden or option.name in NOT_HERE
-        if option.name == "clear_sky_index":
-            option.type = Numbers()
-            option.help = "Monthly mean of global light by that of a clear sky: clouds by number."
 
 
 _rearrange(parcels)
@@ -214,8 +232,7 @@ _rearrange(parcels)
 
 def _check(around: Around, asked: AskedSky, given: dict[str, Any]) -> None:
     """Refuse options that mean nothing here, or nothing without another."""
-    if around.horizon_gap or around.highest is not None:
-        raise click.UsageError("--horizon-gap belongs to terrasol irradiation: it is a map")
+    around.refuse_map()
     if given["temperatures"] is None:
         for name in ("temperatures_height", "lapse_rate"):
             if given[name] is not None:
@@ -223,19 +240,21 @@ def _check(around: Around, asked: AskedSky, given: dict[str, Any]) -> None:
                 raise click.UsageError(f"--{option} belongs to --temperatures, which is not given")
     if given["least_patch"] and given["rule"] is None:
         raise click.UsageError("--least-patch belongs to --rule, which is not given")
+    if given["canopy_albedo"] is not None and given["vine_rows"] is None:
+        raise click.UsageError("--canopy-albedo belongs to --rows, which is not given")
 
 
 def _plain(given: dict[str, Any]) -> dict[str, Any]:
     """Settle all that needs no file, so that mistakes are told at once."""
     from terrasol.engine.parcel_rows import RowSettings
-    from terrasol.engine.parcels import rule_names
+    from terrasol.engine.parcel_words import read_rule
     from terrasol.light.days import parse_clock
-    from terrasol.practice.rules import parse_rule
     from terrasol.practice.season import parse_season
     from terrasol.sky.period import parse_period
 
     parse_period(given["period"])
     warm = given["temperatures"] is not None
+    canopy = () if given["canopy_albedo"] is None else (given["canopy_albedo"],)
     factors = given["coarser"]
     try:
         coarser = () if factors == "none" else tuple(int(part) for part in factors.split(","))
@@ -244,10 +263,10 @@ def _plain(given: dict[str, Any]) -> dict[str, Any]:
     return {
         "clock": parse_clock(given["clock"]),
         "season": None if given["season"] is None else parse_season(given["season"]),
-        "rule_read": None if given["rule"] is None else parse_rule(given["rule"], rule_names(warm)),
-        "rows_read": RowSettings(*given["vine_rows"]) if given["vine_rows"] else None,
+        "rule_read": None if given["rule"] is None else read_rule(given["rule"], warm=warm),
+        "rows_read": RowSettings(*given["vine_rows"], *canopy) if given["vine_rows"] else None,
         "coarser": coarser,
-        "albedo_for_now": (0.2,) if given["albedo"] == "station" else given["albedo"],
+        "albedo_for_now": ALBEDO_FOR_NOW if isinstance(given["albedo"], str) else given["albedo"],
     }
 
 
@@ -311,7 +330,10 @@ class _Job:
     def _inputs(self, settled: Settled) -> list[str]:
         """All files that are read."""
         given = self.given
-        files = (self.common.dem, given["parcels_file"], given["temperatures"])
+        files = (
+            self.common.dem, given["parcels_file"], given["temperatures"],
+            *raster_named(given["albedo"]),
+        )  # fmt: skip
         return [name for name in (*files, *self.around.inputs, *settled.inputs) if name]
 
     def _settings(self, settled: Settled) -> tuple[ParcelSettings, tuple[str, ...]]:
@@ -319,19 +341,20 @@ class _Job:
         from terrasol.engine.parcels import ParcelSettings
         from terrasol.light.days import parse_days
         from terrasol.light.hours import HoursSettings
-        from terrasol.light.settings import LightSettings, twelve
+        from terrasol.light.settings import LightSettings
 
         given, common = self.given, self.common
-        albedo = settled.albedo() if given["albedo"] == "station" else given["albedo"]
+        albedo, doubts = settle_albedo(given["albedo"], settled, self.ground.elevation)
         light = LightSettings(
             period=settled.period,
             air=self.air,
-            albedo=twelve(albedo, "albedo"),
             diffuse=given["diffuse"],
             azimuths=common.azimuths,
             step_seconds=given["step_seconds"],
             refraction=common.refraction,
             sky=settled.sky,
+            index_map=settled.index_map,
+            **albedo,
         )
         hours = HoursSettings(
             period=settled.period,
@@ -351,7 +374,8 @@ class _Job:
             given["rows_read"],
             given["error"],
         )
-        return settings, (*self.asked.doubts(self.ground.frame), *settled.warnings, *notes)
+        notes = (*settled.warnings, *doubts, *notes)
+        return settings, (*self.asked.doubts(self.ground.frame), *notes)
 
     def _asked(self, settled: Settled) -> tuple[Asked, tuple[str, ...]]:
         """How parcels are told of, and warnings on the temperatures."""
@@ -397,10 +421,11 @@ class _Job:
             "score": settings.score,
             "coarser": list(settings.coarser),
             "rows_m": None if settings.rows is None else given["vine_rows"],
+            "canopy_albedo": None if settings.rows is None else settings.rows.canopy_albedo,
             "clock": settings.hours.clock.name,
             "days": [str(day) for day in settings.hours.days],
             "air": light.air.record(),
-            "albedo": shortest(light.albedo),
+            "albedo": albedo_record(given["albedo"], light),
             "diffuse": light.diffuse,
             "basis": "per area of slope",
             "azimuths": light.azimuths,
@@ -429,6 +454,7 @@ class _Job:
         from terrasol.engine.hours import plan_hours
         from terrasol.engine.job import plan_irradiation
         from terrasol.engine.plan import default_threads
+        from terrasol.files.overlaps import overlap_doubts
         from terrasol.files.rasters import naming
 
         common, elevation = self.common, self.ground.elevation
@@ -442,20 +468,24 @@ class _Job:
         seconds = shares * sum(plan.seconds(threads) for plan in plans)
         if settings.error is not None:
             seconds += settings.error.realisations * plans[0].seconds(threads)
+        drawing = 0.0
         if self.given["sheets"] != "none":
             seconds += SECONDS_A_SHEET * len(polygons)
+            drawing = SHEET_BYTES * len(polygons)
         removed, notes = superseded(common, files)
         return ground_forecast(common, self.ground) | {
             "parcels": list(polygons.names),
             "season": settings.asked.season_words,
             "files": files,
             "removed": removed,
-            "memory_mb": round(max(plan.memory_bytes for plan in plans) / 1e6),
+            "memory_mb": round((max(plan.memory_bytes for plan in plans) + drawing) / 1e6),
             "disk_free_mb": free_disk_mb(common.out_dir),
             "threads": threads,
             "seconds": round(seconds),
-            "warnings": [*elevation.warnings, *polygons.warnings, *notes],
-        }
+            "warnings": [
+                *elevation.warnings, *polygons.warnings, *overlap_doubts(polygons), *notes,
+            ],
+        }  # fmt: skip
 
     def _carry_out(
         self,
@@ -467,10 +497,10 @@ class _Job:
     ) -> dict[str, Any]:
         """Compute and write everything, or leave nothing behind; return the record."""
         from terrasol.cli.progress import progress_bar
-        from terrasol.cli.run import announce_compilation, superseded
+        from terrasol.cli.run import announce_compilation, deliver, seconds_of
         from terrasol.engine.parcels import survey
         from terrasol.engine.plan import default_threads
-        from terrasol.files.delivery import RECORD, Delivery
+        from terrasol.files.delivery import Delivery
         from terrasol.files.provenance import run_record
         from terrasol.files.rasters import naming
 
@@ -487,24 +517,15 @@ class _Job:
                 )  # fmt: skip
             computed = time.perf_counter()
             self._write(delivery, found, files, lambda share: move(0.9 + 0.1 * share, "drawing"))
-            removed, more = superseded(common, files)
-            seconds = {
-                "reading": self.ground.seconds,
-                "survey": computed - start,
-                "writing and drawing": time.perf_counter() - computed,
-                "whole run": self.ground.seconds + time.perf_counter() - start,
-            }
+            drawing = time.perf_counter() - computed
+            parts = {"survey": computed - start, "writing and drawing": drawing}
             record |= {
                 "threads": threads,
                 "results": _results(found),
-                "warnings": list(dict.fromkeys([*found.warnings, *notes, *more])),
-                "seconds": {name: round(value, 2) for name, value in seconds.items()},
-                "files": [os.path.abspath(delivery.folder / name) for name in files],
-                "removed": removed,
+                "warnings": [*found.warnings, *notes],
+                "seconds": seconds_of(self.ground, start, parts),
             }
-            delivery.write_json(RECORD, record)
-            delivery.commit(removed)
-        return record
+            return deliver(delivery, common, files, record)
 
     def _write(self, delivery: Any, found: Survey, files: list[str], move: Any) -> None:
         """Stage all files but the record."""
@@ -544,6 +565,7 @@ class _Job:
         """Stage the sheets."""
         if self.given["sheets"] == "none":
             return
+        import gc
         from pathlib import Path
 
         from terrasol.show.page import book
@@ -554,14 +576,19 @@ class _Job:
         elevation, frame = self.ground.elevation, self.ground.frame
 
         def pages() -> Iterator[Page]:
-            """One after the other, so that no more than one is in memory."""
+            """One after the other, so that no more than a few are in memory."""
             yield summary_page(found, elevation, frame, title=title)
             for k, parcel in enumerate(found.order):
                 yield parcel_page(found, parcel, elevation, frame, title=title)
                 move((k + 1) / len(found.parcels))
+                if k % SHEETS_KEPT == 0:
+                    gc.collect()  # what a sheet is made of holds itself in rings
 
         if BOOK in files:
-            delivery.write_bytes(BOOK, book(pages(), Title=title))
+            try:
+                book(delivery.staged(BOOK), pages(), Title=title)
+            except OSError as error:
+                raise delivery.refusal(BOOK, error) from error
             return
         names = dict(zip((p.name for p in found.parcels), _sheets(files), strict=True))
         drawn = [SUMMARY, *(names[parcel.name] for parcel in found.order)]
@@ -605,32 +632,19 @@ def _results(found: Survey) -> dict[str, Any]:
         "parcels": rows,
         "cell_m": round(found.cell_size, 3),
         "score_terms": list(found.score.terms) if found.score else None,
+        "shade": found.shade,
         "not_in_it": VINEYARD,
     }
 
 
-def _in_lines(forecast: dict[str, Any]) -> str:
+def _in_lines(f: dict[str, Any]) -> str:
     """The forecast for people."""
-    from terrasol.cli.forecast import duration, grid_line, heights_line, lines
+    from terrasol.cli.forecast import forecast_text
+    from terrasol.errors import listed
 
-    f = forecast
-    rows = [
-        ("input", f["input"]),
-        ("CRS", f["crs"]),
-        grid_line(f),
-        heights_line(f),
-        ("parcels", f"{len(f['parcels'])}: {', '.join(f['parcels'])}"),
-        ("season", f["season"]),
-        ("files", ", ".join(f["files"])),
-        *([("removed", ", ".join(f["removed"]))] if f["removed"] else []),
-        ("memory", f"{f['memory_mb']:,} MB"),
-        (
-            "time",
-            f"at most about {duration(f['seconds'])} on {counted(f['threads'], 'thread')}",
-        ),
-        *(("warning", text) for text in f["warnings"]),
-    ]
-    return lines(rows)
+    parcels = f"{len(f['parcels'])}: {listed(f['parcels'], MOST_LISTED)}"
+    own = [("parcels", parcels), ("season", f["season"])]
+    return forecast_text(f, own, about="at most about")
 
 
 LONGEST_CELL: Final = 40
@@ -639,31 +653,35 @@ LONGEST_CELL: Final = 40
 
 def _cell(row: dict[str, Any], name: str, form: str) -> str:
     """A figure for the table, with its standard error where that is small enough to matter."""
+    from terrasol.show.plus_minus import area_plus_minus
+
     if row.get(name) is None:
         return "-"
-    error = row.get(f"{name}_se") if name == "rule_ha_map" else None
+    if name.endswith("_ha_map"):
+        error, whole = row.get(f"{name}_se"), row["known_ha_map"]
+        return area_plus_minus(row[name], error, whole, sign="+/-").removesuffix(" ha")
     told = form.format(row[name])
-    if len(told) > LONGEST_CELL:
-        told = f"{told[: LONGEST_CELL - 3]}..."
-    return told + ("" if error is None else f" +/- {form.format(error)}")
+    return told if len(told) <= LONGEST_CELL else f"{told[: LONGEST_CELL - 3]}..."
 
 
 def _summary_text(record: dict[str, Any]) -> str:
     """What came out, for people: a table, best first."""
-    from terrasol.cli.forecast import duration
+    from terrasol.cli.run import closing_lines
 
     results, settings = record["results"], record["settings"]
     rows = results["parcels"]
+    whole = all(row["known_ha_map"] == row["drawn_ha_map"] for row in rows)
     wanted = [
         ("rank", "rank", "{:.0f}"),
         ("parcel", "parcel", "{}"),
-        ("ha (map)", "map_area_ha", "{:.2f}"),
+        ("ha drawn", "drawn_ha_map", ""),
+        *([] if whole else [("ha known", "known_ha_map", "")]),
         ("slope %", "slope_mean_percent", "{:.1f}"),
         ("faces", "aspect_mean_deg", "{:.0f}°"),
         ("MJ/m2 season", "irradiation_season_mj_m2_slope", "{:.0f}"),
         ("of level", "share_of_level_season", "{:.3f}"),
         ("sun h", "sun_hours_season_h", "{:.0f}"),
-        ("rule ha", "rule_ha_map", "{:.2f}"),
+        ("rule ha", "rule_ha_map", ""),
         ("degree-days", "winkler_mean_c_days", "{:.0f}"),
         ("score", "score", "{:.4g}"),
     ]
@@ -686,12 +704,14 @@ def _summary_text(record: dict[str, Any]) -> str:
             settings["least_patch_m2"]
         )
         told.append(f"rule: {settings['rule']}{least}")
+        if any(row.get("rule_ha_map_se") is not None for row in rows):
+            told.append(
+                "rule ha: +/- one standard error from the error of the heights; a range where none"
+                " or all of a parcel meets the rule"
+            )
     if settings["score"]:
         told.append(f"score: {settings['score']}")
+    if "far" in settings:
+        told.append(results["shade"])  # else a warning says it
     told.append(results["not_in_it"])
-    told += [f"warning: {text}" for text in record["warnings"]]
-    if record["removed"]:
-        told.append(f"removed, of an earlier run: {', '.join(record['removed'])}")
-    files, took = record["files"], duration(record["seconds"]["whole run"])
-    told.append(f"{counted(len(files), 'file')} in {os.path.dirname(files[0])} after {took}")
-    return "\n".join(told)
+    return "\n".join([*told, *closing_lines(record)])

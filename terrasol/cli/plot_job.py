@@ -9,20 +9,29 @@ from typing import Any
 
 import pandas as pd
 
-from terrasol.cli.forecast import (
-    duration,
-    give_forecast,
-    grid_line,
-    ground_forecast,
-    heights_line,
-    lines,
-)
+from terrasol.cli.forecast import forecast_text, give_forecast, ground_forecast
 from terrasol.cli.ground_options import Around
 from terrasol.cli.irradiation import light_record
 from terrasol.cli.options import Common
 from terrasol.cli.progress import progress_bar
-from terrasol.cli.run import Ground, announce_compilation, check_places, superseded, tell
-from terrasol.cli.sky_options import CLIMATOLOGY, AskedSky, file_record
+from terrasol.cli.run import (
+    Ground,
+    announce_compilation,
+    check_places,
+    closing_lines,
+    deliver,
+    seconds_of,
+    superseded,
+    tell,
+)
+from terrasol.cli.sky_options import (
+    CLIMATOLOGY,
+    AskedSky,
+    albedo_record,
+    file_record,
+    raster_named,
+    settle_albedo,
+)
 from terrasol.engine.plan import default_threads
 from terrasol.engine.plot_correlations import best_by_chance, pairs, strongest
 from terrasol.engine.plot_horizons import horizon_table, plot_horizons
@@ -86,7 +95,7 @@ class PlotJob:
         asked = self.asked
         files = (
             self.common.dem, self.given["plots_file"], *self.around.inputs, asked.station,
-            asked.station_settings,
+            asked.station_settings, *raster_named(asked.clear_sky_index, self.given["albedo"]),
         )  # fmt: skip
         return [name for name in files if name]
 
@@ -167,21 +176,13 @@ class PlotJob:
             self._write(delivery, table, settings, settled)
             if self.given["horizons"]:
                 self._write_horizons(delivery, table, settings, scenes[0], threads)
-            removed, more = superseded(common, self.names)
             record |= {
                 "threads": threads,
                 "results": _results(table, self.given["response"], self.points.remarks),
-                "warnings": [*table.warnings, *notes, *more],
-                "seconds": {
-                    "reading": round(self.ground.seconds, 2),
-                    **table.seconds,
-                    "whole run": round(self.ground.seconds + time.perf_counter() - start, 2),
-                },
-                "files": [os.path.abspath(delivery.folder / name) for name in self.names],
-                "removed": removed,
+                "warnings": [*table.warnings, *notes],
+                "seconds": seconds_of(self.ground, start, table.seconds),
             }
-            delivery.write_json(RECORD, record)
-            delivery.commit(removed)
+            record = deliver(delivery, common, self.names, record)
             move(1.0, "done")
         return record
 
@@ -191,10 +192,15 @@ class PlotJob:
         frame, light = self.ground.frame, self.settings.light
         air = asked.placed(light.air, frame)
         settled = asked.settle(air, given["period"], light.step_seconds, elevation)
-        light = replace(light, air=air, period=settled.period, sky=settled.sky)
-        if given["albedo"] == "station":
-            light = replace(light, albedo=settled.albedo())
-
+        albedo, doubts = settle_albedo(given["albedo"], settled, elevation)
+        light = replace(
+            light,
+            air=air,
+            period=settled.period,
+            sky=settled.sky,
+            index_map=settled.index_map,
+            **albedo,
+        )
         hours = replace(
             self.settings.hours,
             period=settled.period,
@@ -204,7 +210,8 @@ class PlotJob:
         factors, said = self._factors()
         season = self.settings.season or growing_season(frame.centre[0])
         settings = replace(self.settings, light=light, hours=hours, season=season, factors=factors)
-        return settings, settled, [*asked.doubts(frame), *settled.warnings, *said]
+        notes = [*asked.doubts(frame), *settled.warnings, *doubts, *said]
+        return settings, settled, notes
 
     def _scenes(self, settings: PlotSettings) -> list[Scene]:
         """What stands beyond and above the ground, for each cell size."""
@@ -234,7 +241,8 @@ class PlotJob:
             "predictors": list(settings.groups),
             "response": given["response"],
             "gps_error_m": given["gps_error"],
-            "light": light_record(settings.light),
+            "light": light_record(settings.light)
+            | {"albedo": albedo_record(given["albedo"], settings.light)},
             "hours": {
                 "azimuths": settings.hours.azimuths,
                 "clock": settings.hours.clock.name,
@@ -323,23 +331,13 @@ def _in_lines(f: dict[str, Any]) -> str:
     """The forecast for people."""
     cells = ", ".join(f"{size:.4g} m" for size in f["cells_m"])
     radii = ", ".join(f"{radius:g} m" for radius in f["radii_m"]) or "none"
-    rows = [
-        ("input", f["input"]),
-        ("CRS", f["crs"]),
-        grid_line(f),
-        heights_line(f),
+    own = [
         ("plots", f"{f['plots']} in {f['plots_crs']}, {f['plots_on_ground']} on known ground"),
         ("cells", cells),
         ("circles", radii),
         ("columns", f"{f['columns_of_predictors']} of predictors"),
-        ("files", ", ".join(f["files"])),
-        *([("removed", ", ".join(f["removed"]))] if f["removed"] else []),
-        ("memory", f"{f['memory_mb']:,} MB"),
-        ("time", f"about {duration(f['seconds'])} on {counted(f['threads'], 'thread')}"),
-        *(("note", text) for text in f["remarks"]),
-        *(("warning", text) for text in f["warnings"]),
     ]
-    return lines(rows)
+    return forecast_text(f, own)
 
 
 def _summary_text(record: dict[str, Any]) -> str:
@@ -368,11 +366,4 @@ def _summary_text(record: dict[str, Any]) -> str:
             f"these are the best of many columns: by chance alone the best would reach {chance:.2f}"
             " in one case of twenty (measured values shuffled among the plots)"
         )
-    told += results["remarks"]
-    told += [f"warning: {text}" for text in record["warnings"]]
-    if record["removed"]:
-        told.append(f"removed, of an earlier run: {', '.join(record['removed'])}")
-    files = record["files"]
-    took = duration(record["seconds"]["whole run"])
-    told.append(f"{counted(len(files), 'file')} in {os.path.dirname(files[0])} after {took}")
-    return "\n".join(told)
+    return "\n".join([*told, *results["remarks"], *closing_lines(record)])

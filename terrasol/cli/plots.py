@@ -10,10 +10,17 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from terrasol.cli.ground_options import Around, ground_options
-from terrasol.cli.irradiation import ALBEDO_FOR_NOW, irradiation
-from terrasol.cli.options import Common, Name, Numbers, clock_option, common_options, period_option
+from terrasol.cli.irradiation import irradiation
+from terrasol.cli.options import (
+    Common,
+    Name,
+    arguments_in_order,
+    clock_option,
+    common_options,
+    period_option,
+)
 from terrasol.cli.series import Words
-from terrasol.cli.sky_options import AskedSky, sky_options
+from terrasol.cli.sky_options import ALBEDO_FOR_NOW, AskedSky, sky_options
 from terrasol.constants import ENERGY_UNITS, PHOTONS_PER_JOULE
 
 if TYPE_CHECKING:
@@ -149,8 +156,7 @@ def plots(common: Common, around: Around, asked: AskedSky, **given: Any) -> None
 
 def _check(around: Around, given: dict[str, Any]) -> None:
     """Refuse options that do not go together, or mean nothing here."""
-    if around.horizon_gap or around.highest is not None:
-        raise click.UsageError("--horizon-gap belongs to terrasol irradiation: it is a map")
+    around.refuse_map()
     error = given["gps_error"]
     if error is not None and not 0.0 <= error < 1e6:
         raise click.UsageError(f"--gps-error must be 0 m or more; got {error:g}")
@@ -163,20 +169,11 @@ def _rearrange(command: click.Command) -> None:
     shared = [copy(option) for option in irradiation.params if option.name in AS_IRRADIATION]
     after = [option.name for option in command.params].index("clock")
     command.params[after:after] = shared
-    order = ("dem", "plots_file", "out_dir")
-    command.params.sort(
-        key=lambda each: order.index(each.name) if each.name in order else len(order)
-    )
+    arguments_in_order(command, "dem", "plots_file", "out_dir")
     for option in command.params:
         if not isinstance(option, click.Option):
             continue
-        if option.name == "albedo":
-            option.type = Numbers("station")
-            option.help = "Albedo of the ground: numbers, or 'station' for what SERIES measured."
-        elif option.name == "clear_sky_index":
-            option.type = Numbers()
-            option.help = "Monthly mean of global light by that of a clear sky, for clouds."
-        elif option.name == "period":
+        if option.name == "period":
             option.help = (
                 "A year (2025), or twelve months in a row (2024-10/2025-09). [default: a typical"
                 " year]"

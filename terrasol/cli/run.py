@@ -213,24 +213,34 @@ def _carry_out(job: Job, record: Record) -> Record:
         summary, picture, packing = _compute(job, delivery, tags_of(record, plan.elevation), move)
         if picture:
             delivery.write_bytes(OVERVIEW, picture)
-        seconds = {
-            "reading": job.ground.seconds,
-            **summary.seconds,
-            "packing and drawing": packing,
-            "whole run": job.ground.seconds + time.perf_counter() - start,
-        }
-        removed, notes = job.superseded()
-        record = {
-            **record,
+        record = record | {
             "threads": job.threads,
             "results": summary.numbers,
-            "warnings": [*summary.warnings, *job.notes, *notes],
-            "seconds": {name: round(value, 2) for name, value in seconds.items()},
-            "files": [os.path.abspath(delivery.folder / name) for name in job.names],
-            "removed": removed,
+            "warnings": [*summary.warnings, *job.notes],
+            "seconds": seconds_of(
+                job.ground, start, summary.seconds | {"packing and drawing": packing}
+            ),
         }
-        delivery.write_json(RECORD, record)
-        delivery.commit(removed)
+        return deliver(delivery, common, job.names, record)
+
+
+def seconds_of(ground: Ground, start: float, parts: dict[str, float]) -> dict[str, float]:
+    """How long a run that began at `start` took so far, and its parts, rounded."""
+    whole = ground.seconds + time.perf_counter() - start
+    seconds = {"reading": ground.seconds, **parts, "whole run": whole}
+    return {name: round(value, 2) for name, value in seconds.items()}
+
+
+def deliver(delivery: Delivery, common: Common, names: list[str], record: Record) -> Record:
+    """Stage the record of a run with what its files are, and move all into place; return it."""
+    removed, notes = superseded(common, names)
+    record = record | {
+        "warnings": list(dict.fromkeys([*record["warnings"], *notes])),
+        "files": [os.path.abspath(delivery.folder / name) for name in names],
+        "removed": removed,
+    }
+    delivery.write_json(RECORD, record)
+    delivery.commit(removed)
     return record
 
 
@@ -406,11 +416,13 @@ def _summary_text(record: Record) -> str:
         )
     if results.get("void_cells"):
         told.append(f"void: {results['void_cells']} of {results['cells']} cells")
-    told += results.get("remarks", [])
-    told += [f"warning: {text}" for text in record["warnings"]]
+    return "\n".join([*told, *results.get("remarks", []), *closing_lines(record)])
+
+
+def closing_lines(record: Record) -> list[str]:
+    """How every summary ends: warnings, what was removed, where the files are."""
+    told = [f"warning: {text}" for text in record["warnings"]]
     if record["removed"]:
         told.append(f"removed, of an earlier run: {', '.join(record['removed'])}")
-    files = record["files"]
-    took = duration(record["seconds"]["whole run"])
-    told.append(f"{counted(len(files), 'file')} in {Path(files[0]).parent} after {took}")
-    return "\n".join(told)
+    files, took = record["files"], duration(record["seconds"]["whole run"])
+    return [*told, f"{counted(len(files), 'file')} in {Path(files[0]).parent} after {took}"]

@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from terrasol.cli.ground_options import Around, ground_options
-from terrasol.cli.irradiation import ALBEDO_FOR_NOW, albedo_doubts, irradiation
+from terrasol.cli.irradiation import irradiation
 from terrasol.cli.options import (
     Common,
     common_options,
@@ -20,7 +20,14 @@ from terrasol.cli.options import (
     no_store_option,
     substep_option,
 )
-from terrasol.cli.sky_options import AskedSky, Settled, file_record, sky_options
+from terrasol.cli.sky_options import (
+    ALBEDO_FOR_NOW,
+    AskedSky,
+    Settled,
+    albedo_doubts,
+    file_record,
+    sky_options,
+)
 from terrasol.errors import counted
 
 if TYPE_CHECKING:

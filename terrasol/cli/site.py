@@ -13,9 +13,9 @@ import click
 
 from terrasol.cli.error_options import AskedError, error_options
 from terrasol.cli.ground_options import Around, ground_options
-from terrasol.cli.irradiation import ALBEDO_FOR_NOW, irradiation, light_notes, light_record
+from terrasol.cli.irradiation import irradiation, light_notes, light_record
 from terrasol.cli.options import Common, Name, Numbers, common_options, period_option
-from terrasol.cli.sky_options import AskedSky, sky_options
+from terrasol.cli.sky_options import ALBEDO_FOR_NOW, AskedSky, sky_options
 from terrasol.constants import ENERGY_UNITS
 from terrasol.errors import SettingError, counted
 
@@ -154,6 +154,8 @@ def _rearrange(command: click.Command) -> None:
             option.help = "Monthly mean of global light by that of a clear sky, for clouds."
         elif option.name == "as_json":
             option.help = "Print one JSON object on stdout in place of the text."
+        elif option.name == "quiet":
+            option.help = "Print the result alone: no progress, no word of files; errors stay."
         elif option.name == "overwrite":
             option.help = (
                 "Replace files that are there, and remove those of an earlier run in FOLDER that"
@@ -168,8 +170,7 @@ _rearrange(site)
 
 def _check(around: Around, given: dict[str, Any]) -> None:
     """Refuse options that do not go together, or mean nothing here."""
-    if around.horizon_gap or around.highest is not None:
-        raise click.UsageError("--horizon-gap belongs to terrasol irradiation: it is a map")
+    around.refuse_map()
     places = 1 if given["compare"] is None else 2
     if len(given["labels"]) > places:
         raise click.UsageError(f"--name is given {len(given['labels'])} times, for {places} place")
@@ -177,13 +178,19 @@ def _check(around: Around, given: dict[str, Any]) -> None:
 
 def _days(texts: tuple[str, ...]) -> tuple[date, ...]:
     """The days whose sun's path is wanted."""
-    from terrasol.sky.period import parse_period
+    from terrasol.sky.period import FIRST_YEAR, LAST_YEAR, parse_period
 
     found = []
     for text in texts:
-        period = parse_period(text)
-        if period.days != 1:
-            raise SettingError(f"--day {text} is not one day: write it as 2025-08-15")
+        try:
+            period = parse_period(text)
+        except SettingError:
+            period = None
+        if period is None or period.days != 1:
+            raise SettingError(
+                f"--day {text!r} is not one day of the years {FIRST_YEAR} to {LAST_YEAR}: write it"
+                " as 2025-08-15"
+            )
         found.append(period.start.astype("M8[D]").item())
     return tuple(found)
 
@@ -242,7 +249,7 @@ def _geodetic(place: tuple[float, float], crs: str | None, ground: Ground) -> tu
             own = ground.elevation.crs if crs == OF_THE_RASTER else CRS.from_user_input(crs)
         except CRSError as error:
             raise SettingError(
-                f"--at-crs {crs} is not a CRS that is known: write EPSG:32632, say"
+                f"--at-crs {crs!r} is not a CRS that is known: write EPSG:32632, say, or dem"
             ) from error
         longitude, latitude = Transformer.from_crs(own, WGS84, always_xy=True).transform(*place)
     if not (abs(latitude) <= 90.0 and math.isfinite(longitude) and abs(longitude) <= 540.0):
@@ -334,7 +341,7 @@ class _Job:
     def _carry_out(self) -> tuple[dict[str, Any], list[Site]]:
         """Compute everything, and write it if a folder is named: the record, and the places."""
         from terrasol.cli.progress import progress_bar
-        from terrasol.cli.run import announce_compilation
+        from terrasol.cli.run import announce_compilation, deliver, seconds_of
         from terrasol.engine.plan import default_threads
         from terrasol.files.provenance import run_record
 
@@ -346,7 +353,6 @@ class _Job:
         with self._delivery() as delivery, progress_bar(common.quiet) as move:
             announce_compilation(common.quiet)
             sites = self._survey(settings, scene, threads, move)
-            seconds = self.ground.seconds + time.perf_counter() - start
             record |= {
                 "threads": threads,
                 "results": {"places": [each.record() for each in sites]},
@@ -354,13 +360,12 @@ class _Job:
                     *self.ground.elevation.warnings, *scene.warnings, *settled.warnings,
                     *self.asked.doubts(self.ground.frame), *self._error_doubts(),
                 ],
-                "seconds": {
-                    "reading": round(self.ground.seconds, 2), "whole run": round(seconds, 2),
-                },
             }  # fmt: skip
             if delivery is not None:
-                notes = light_notes(settings, scene)
-                record = self._deliver(delivery, record, sites, notes)
+                self._draw(delivery, record, sites, light_notes(settings, scene))
+            record["seconds"] = seconds_of(self.ground, start, {})
+            if delivery is not None:
+                record = deliver(delivery, common, self.names, record)
             move(1.0, "done")
         return record, sites
 
@@ -421,15 +426,14 @@ class _Job:
                 progress=lambda share, stage: move(0.9 * share, stage),
             )  # fmt: skip
 
-    def _deliver(
+    def _draw(
         self,
         delivery: Delivery,
         record: dict[str, Any],
         sites: list[Site],
         notes: tuple[str, ...],
-    ) -> dict[str, Any]:
-        """Draw and write everything; the finished record."""
-        from terrasol.files.delivery import RECORD
+    ) -> None:
+        """Stage the sheet and the table."""
         from terrasol.show.site import page_pdf, page_png, site_page
 
         elevation = self.ground.elevation
@@ -444,15 +448,6 @@ class _Job:
         delivery.write_bytes(SHEET_PDF, page_pdf(page, title))
         delivery.write_bytes(SHEET_PNG, page_png(page, title))
         delivery.write_bytes(TABLE, _table(sites))
-        removed, more = self._superseded()
-        record = record | {
-            "warnings": [*record["warnings"], *more],
-            "files": [os.path.abspath(delivery.folder / name) for name in self.names],
-            "removed": removed,
-        }
-        delivery.write_json(RECORD, record)
-        delivery.commit(removed)
-        return record
 
     def _tell(self, record: dict[str, Any], sites: list[Site]) -> None:
         """The result on stdout, and of the files on stderr."""
@@ -465,7 +460,7 @@ class _Job:
         common = self.common
         if common.as_json:
             give(json.dumps(record, indent=2))
-        elif not common.quiet:
+        else:
             give(site_text(sites, [f"warning: {text}" for text in record["warnings"]]))
         if self.names and not common.quiet and not common.as_json:
             took = duration(record["seconds"]["whole run"])
@@ -487,30 +482,18 @@ def _table(sites: list[Site]) -> bytes:
     return ("\n".join(lines) + "\n").encode()
 
 
-def _in_lines(forecast: dict[str, Any]) -> str:
+def _in_lines(f: dict[str, Any]) -> str:
     """The forecast for people."""
-    from terrasol.cli.forecast import duration, grid_line, heights_line, lines
+    from terrasol.cli.forecast import forecast_text
     from terrasol.engine.comparison import place_words
 
-    f = forecast
-    rows = [
-        ("input", f["input"]),
-        ("CRS", f["crs"]),
-        grid_line(f),
-        heights_line(f),
-        *(
-            (
-                "place",
-                f"{p['name'] + ', ' if p['name'] else ''}"
-                f"{place_words(p['latitude'], p['longitude'], 5)}: row {p['row']}, column"
-                f" {p['column']}, at {p['height_m']:.0f} m",
-            )
-            for p in f["places"]
-        ),
-        ("files", ", ".join(f["files"]) or "none: name a folder with --out"),
-        *([("removed", ", ".join(f["removed"]))] if f["removed"] else []),
-        ("memory", f"{f['memory_mb']:,} MB"),
-        ("time", f"about {duration(f['seconds'])} on {counted(f['threads'], 'thread')}"),
-        *(("warning", text) for text in f["warnings"]),
+    own = [
+        (
+            "place",
+            f"{p['name'] + ', ' if p['name'] else ''}"
+            f"{place_words(p['latitude'], p['longitude'], 5)}: row {p['row']}, column"
+            f" {p['column']}, at {p['height_m']:.0f} m",
+        )
+        for p in f["places"]
     ]
-    return lines(rows)
+    return forecast_text(f, own, no_files="none: name a folder with --out")

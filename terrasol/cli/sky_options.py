@@ -19,6 +19,7 @@ if TYPE_CHECKING:
 
     from terrasol.ground.elevation import Elevation
     from terrasol.ground.frame import Frame
+    from terrasol.light.settings import LightSettings
     from terrasol.sky.clear import Air
     from terrasol.sky.irradiance import Sky
     from terrasol.sky.period import Period
@@ -31,6 +32,9 @@ STATION_AWAY_KM = 50.0
 STATION_BESIDE_M = 500.0
 """How far from the ground's middle, and how far beyond its heights, a station may lie without a
 warning (judgement, no source)."""
+
+ALBEDO_FOR_NOW = (0.2,)
+"""Stands for an albedo that is read later; where a map of it is void, it is what counts."""
 
 CLIMATOLOGY = "climatology"
 TURBIDITY_FOR_NOW = 3.0
@@ -75,6 +79,40 @@ class Settled:
         if self.station is None:
             raise click.UsageError("--albedo station needs --station, which is not given")
         return monthly_albedo(self.station, self.period)
+
+
+def settle_albedo(
+    asked: Any, settled: Settled, elevation: Elevation
+) -> tuple[dict[str, Any], tuple[str, ...]]:
+    """Settings of the ground's albedo: numbers, those of the station, or a raster; and warnings."""
+    from terrasol.files.maps import read_map
+    from terrasol.light.settings import twelve
+
+    if asked == "station":
+        return {"albedo": settled.albedo()}, ()
+    if not isinstance(asked, str):
+        return {"albedo": twelve(asked, "albedo")}, ()
+    layers = read_map(asked, elevation, "albedo", 0.0, 1.0)
+    return {"albedo_map": layers}, albedo_doubts(layers, elevation)
+
+
+def albedo_record(asked: Any, light: LightSettings) -> Any:
+    """The albedo as asked for, ready for JSON: null for months that the station did not measure."""
+    if asked == "station":
+        wanted = {month for _, month in light.period.months}
+        return [value if m in wanted else None for m, value in enumerate(light.albedo, 1)]
+    return file_record(asked) if isinstance(asked, str) else shortest(light.albedo)
+
+
+def raster_named(*asked: Any) -> tuple[str, ...]:
+    """Those of some options' values that name a raster, in place of numbers or the station."""
+    return tuple(each for each in asked if isinstance(each, str) and each != "station")
+
+
+def albedo_doubts(values: NDArray[np.float32], elevation: Elevation) -> tuple[str, ...]:
+    """Warn of cells that a map of the albedo leaves out."""
+    effect = f"the plain {ALBEDO_FOR_NOW[0]:g} counts there"
+    return map_doubts(values, elevation, "albedo", effect)
 
 
 @dataclass(frozen=True)

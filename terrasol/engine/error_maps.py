@@ -188,7 +188,8 @@ class _ErrorRun:
                 continue
             layer = next(layer for layer in plan.layers if layer.name == name)
             before = summary.numbers[name][layer.bands[0]]["mean"]
-            shift = round(float(np.nanmean(tally.mean(), dtype=np.float64)) - before, 4)
+            shift = float(np.nanmean(tally.mean(), dtype=np.float64)) - before
+            shift = round(shift, 4) + 0.0  # no minus before a zero
             summary.numbers[f"mean_shift_of_{name}"] = shift
             said.append(f"{shift:+.3g} {layer.unit} to the mean of {name}")
         summary.numbers.setdefault("remarks", []).append(

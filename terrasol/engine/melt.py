@@ -31,7 +31,7 @@ from terrasol.kernels.melt import FLOWS
 from terrasol.light.surroundings import Surroundings
 from terrasol.practice.snow import COVERED_FROM, SnowModel, Weather
 
-MELT_METHOD: Final = 1
+MELT_METHOD: Final = 2
 """Raise it whenever the same weather would leave other snow: saved states are then refused."""
 
 SPAN_DAYS: Final = 8
@@ -153,7 +153,7 @@ class MeltPlan:
     def memory_bytes(self, threads: int) -> int:
         """Peak memory to expect; the same for any number of days but for the tables."""
         cells = float(self.light.cells)
-        kept = 100.0 + 32.0 * len(self.spread) + 40.0 + 4.0 * len(VARIABLES) * SPAN_DAYS
+        kept = 108.0 + 40.0 * len(self.spread) + 40.0 + 4.0 * len(VARIABLES) * SPAN_DAYS
         tables = 8.0 * self.days * self.zones.count * len(QUANTITIES)
         nodes = cells / self.light.stride**2
         around = 4.0 * nodes * HOURS * SPAN_DAYS

@@ -15,7 +15,7 @@ from terrasol.errors import InputError
 from terrasol.files.snow_state import StateHead, StateReader, StateWriter
 from terrasol.kernels.melt import FLOWS, SKIN
 
-SKIN_UNITS = ("day", "K day", "mm", "1")
+SKIN_UNITS = ("day", "K day", "mm", "mm", "degC", "1")
 """Of `terrasol.kernels.melt.SKIN`."""
 
 

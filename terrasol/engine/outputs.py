@@ -8,6 +8,7 @@ from typing import Protocol
 import numpy as np
 
 from terrasol.files.layers import Layer
+from terrasol.ground.beyond import Scene
 from terrasol.light.settings import UNITS, LightSettings
 from terrasol.sky.cloud import MonthlySky
 from terrasol.sky.period import Period
@@ -128,6 +129,24 @@ def sky_words(settings: LightSettings) -> str:
     }[sky_kind(settings)]
 
 
+def shade_words(scene: Scene) -> str:
+    """Say what the horizon is made of, in a sentence."""
+    if scene.far is None:
+        return "Shade of all that stands in the raster, and of nothing beyond it."
+    return "Shade of all that stands in the raster and in the far model around it."
+
+
+def shade_doubts(scene: Scene) -> list[str]:
+    """Warn of a horizon that ends with the raster."""
+    if scene.far is not None:
+        return []
+    words = shade_words(scene).replace("Shade", "shade").rstrip(".")
+    return [
+        f"{words}: where higher ground stands around, give a larger model with --far, or ask"
+        " terrasol irradiation --horizon-gap how much could be missing"
+    ]
+
+
 def _fineness(days: float, unit: str) -> float:
     """A power of two near 1 / 65,000 of what so many sunny days bring."""
     return float(2.0 ** np.floor(np.log2(days * SUNNY_DAY * UNITS[unit] / 2.0**16)))
@@ -151,7 +170,7 @@ def light_layers(settings: LightSettings) -> tuple[Layer, ...]:
             f"irradiation_{whole}",
             PARTS,
             settings.unit,
-            words.format("global"),
+            " ".join(words.format("").split()),  # of all parts
             band_names=tuple(words.format(part) for part in PARTS),
             resolution=fine,
             tags=tags,
@@ -191,7 +210,7 @@ def standard_error_layers(layers: Sequence[Layer], tags: dict[str, str]) -> tupl
     for layer in layers:
         if layer.name not in (*WITH_ERROR_OF_GROUND, *WHOLE_PERIOD):
             continue
-        words = layer.long_name.split(";")[0]
+        words = (layer.band_names or (layer.long_name,))[0].split(";")[0]
         named = f"{layer.standard_name} standard_error" if layer.standard_name else None
         found.append(
             Layer(

@@ -28,7 +28,9 @@ LEVEL: Final = 0.9
 ANGLES: Final = ("aspect_mean_deg",)
 """Figures that are directions."""
 
-SETTLED: Final = ("map_area_ha", "unknown_ha_map", "outside_share")
+SETTLED: Final = (
+    "drawn_ha_map", "map_area_ha", "known_ha_map", "unknown_ha_map", "outside_share",
+)  # fmt: skip
 """Figures that hang on no height."""
 
 Column = NDArray[np.float64]
@@ -192,7 +194,7 @@ def _doubt(spread: Spread, place: int, name: str, numbers: Mapping[str, float]) 
 def _bounds(name: str, numbers: Mapping[str, float]) -> tuple[float, float]:
     """Least and greatest value that a figure can have."""
     if name.endswith("_ha_map"):
-        return 0.0, numbers["map_area_ha"]
+        return 0.0, numbers["known_ha_map"]
     if name in ("rule_share", "sky_view_mean", "aspect_resultant") or name.startswith("no_sun"):
         return 0.0, 1.0
     anything = name in ("score", *ANGLES) or name.startswith("height")

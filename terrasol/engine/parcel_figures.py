@@ -11,6 +11,7 @@ from typing import Any, Final
 import numpy as np
 from numpy.typing import NDArray
 
+from terrasol.constants import HECTARE
 from terrasol.engine.outputs import MONTH_NAMES
 from terrasol.engine.parcel_cells import Piece
 from terrasol.errors import SettingError
@@ -39,9 +40,6 @@ from terrasol.practice.rules import Patches, Rule, keep_patches, meet
 from terrasol.practice.temperatures import Temperatures
 from terrasol.sky.period import Period
 
-HECTARE: Final = 10_000.0
-"""Square metres."""
-
 PERCENTS: Final = (10, 50, 90)
 """Percentiles of slope."""
 
@@ -62,6 +60,9 @@ WARM_QUANTITIES: Final = {
     "huglin": "Huglin index, degC day",
 }
 """What it can speak of besides, if temperatures are given."""
+
+WITH_HIGHEST: Final = "--temperatures with the highest of every day or month"
+"""What Huglin's index needs, in words."""
 
 LAPSE_EFFECT: Final = "winkler_lapse_effect_c_days"
 """The figure that says what the lapse rate does to the degree-days."""
@@ -126,6 +127,11 @@ class Warmth:
     lapse: float | tuple[float, ...] = LAPSE
     beyond: str = "undefined"
 
+    @property
+    def has_highest(self) -> bool:
+        """Whether the highest of any day or month is known, for Huglin's index."""
+        return not bool(np.isnan(self.station.highest).all())
+
     def layers(self, heights: NDArray[np.float32], latitude: float) -> dict[str, NDArray[Any]]:
         """Degree-days of cells of these heights [m], one band each; Huglin's if it can be told."""
         place: dict[str, Any] = {"latitude": latitude, "lapse": self.lapse}
@@ -135,7 +141,7 @@ class Warmth:
         found["lapse_effect"] = more[None] - found["degree_days"]
         if self.station.basis.startswith("monthly"):
             found["shortfall"] = monthly_shortfall(self.station, heights, **place)[None]
-        if not np.isnan(self.station.highest).all():
+        if self.has_highest:
             index = huglin(self.station, heights, beyond=self.beyond, **place)
             found["huglin"] = np.asarray(index)[None]
         return found
@@ -184,7 +190,15 @@ class Asked:
             raise SettingError(f"flat below {self.flat_below:g} % is not 0 to under 100 %")
         if not self.least_patch >= 0.0:
             raise SettingError(f"the least patch must be 0 m2 or more; got {self.least_patch:g}")
+        if self.rule is not None and self.warmth is not None:
+            self._check_words(self.rule, self.warmth)
         object.__setattr__(self, "season_places", season_places(self.period, self.season))
+
+    @staticmethod
+    def _check_words(rule: Rule, warmth: Warmth) -> None:
+        """Refuse a rule that asks the temperatures for what they cannot tell."""
+        if "huglin" in rule.names and not warmth.has_highest:
+            raise SettingError(f"the rule {rule.text!r} names huglin, which needs {WITH_HIGHEST}")
 
     @property
     def season_words(self) -> str:
@@ -301,8 +315,14 @@ def _extent(piece: Piece) -> list[Figure]:
     inside = piece.area > 0.0
     heights = piece.heights[inside & np.isfinite(piece.heights)]
     low, high = (heights.min(), heights.max()) if heights.size else (np.nan, np.nan)
+    drawn = area / piece.inside if piece.inside > 0.0 else np.nan
     return [
-        Figure("map_area_ha", area / HECTARE, "ha", "true level area on the raster", "map"),
+        Figure("drawn_ha_map", drawn / HECTARE, "ha",
+               "true level area of the whole outline, on the raster or not", "map"),
+        Figure("map_area_ha", area / HECTARE, "ha",
+               "what of the outline lies on the raster, voids counted", "map"),
+        Figure("known_ha_map", known / HECTARE, "ha",
+               "what of that has a known slope: all other figures are of it", "map"),
         Figure("surface_area_ha", surface / HECTARE, "ha",
                "area of the slope's own surface, where the slope is known", "slope"),
         Figure("unknown_ha_map", (area - known) / HECTARE, "ha",

@@ -7,13 +7,15 @@ from os import PathLike
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from terrasol.constants import REFRACTION_COEFFICIENT
 from terrasol.engine.datasets import clear_air, scene_of
 from terrasol.engine.parcel_figures import Asked, Warmth
 from terrasol.engine.parcel_rows import RowSettings
 from terrasol.engine.parcel_tables import column_rows, table_rows
-from terrasol.engine.parcels import ParcelSettings, Survey, rule_names, survey
+from terrasol.engine.parcel_words import read_rule
+from terrasol.engine.parcels import ParcelSettings, Survey, survey
 from terrasol.errors import InputError
 from terrasol.files.vectors import Polygons, as_polygons, read_polygons
 from terrasol.ground.elevation import Elevation
@@ -24,7 +26,7 @@ from terrasol.light.hours import HoursSettings
 from terrasol.light.settings import LightSettings, twelve
 from terrasol.practice.classes import FLAT_BELOW_PERCENT, SLOPE_EDGES_PERCENT
 from terrasol.practice.degree_days import LAPSE
-from terrasol.practice.rules import parse_rule
+from terrasol.practice.rows import CANOPY_ALBEDO
 from terrasol.practice.season import growing_season, parse_season
 from terrasol.practice.temperatures import Temperatures
 from terrasol.sky.clear import Air
@@ -52,8 +54,11 @@ def survey_parcels(
     temperatures: Temperatures | None = None,
     lapse_rate: float | Sequence[float] = LAPSE,
     rows: tuple[float, float, float] | None = None,
+    canopy_albedo: float = CANOPY_ALBEDO,
     clock: str = "solar",
     sky: Sky | None = None,
+    albedo_map: NDArray[np.float32] | None = None,
+    index_map: NDArray[np.float32] | None = None,
     albedo: float | Sequence[float] = 0.2,
     diffuse: str = "perez",
     azimuths: int = 64,
@@ -99,13 +104,15 @@ def survey_parcels(
         Fall of temperature with height [K km-1].
     rows : tuple of three floats, optional
         Spacing, height and width of vine rows [m].
+    canopy_albedo : float
+        Share of light that the sides of the rows send back, evenly.
     clock : str
         Time of day of first and last sun; see `sun_hours`.
     sky : Sky, optional
         A measured sky or one of monthly indices, in place of the clear one.
     albedo : float or 12 floats
         Of the ground.
-    diffuse, azimuths, step_seconds, refraction, far, surface, threads
+    albedo_map, index_map, diffuse, azimuths, step_seconds, refraction, far, surface, threads
         See `irradiation`.
     dem_error : DemError, optional
         Error of the heights, for standard errors.
@@ -144,21 +151,21 @@ def survey_parcels(
         growing_season(frame.centre[0]) if season is None else parse_season(season),
         tuple(float(edge) for edge in slope_classes),
         flat_below,
-        None if rule is None else parse_rule(rule, rule_names(warmth is not None)),
+        None if rule is None else read_rule(rule, warm=warmth is not None),
         least_patch,
         warmth,
     )
     air = air or clear_air(elevation)
     light = LightSettings(
         whole, air, twelve(albedo, "albedo"), diffuse, azimuths, step_seconds,
-        refraction=refraction, sky=sky,
+        refraction=refraction, sky=sky, albedo_map=albedo_map, index_map=index_map,
     )  # fmt: skip
     hours = HoursSettings(
         whole, sky or air, parse_days(None, whole), parse_clock(clock),
         step_seconds=step_seconds, refraction=refraction,
     )  # fmt: skip
     settings = ParcelSettings(
-        light, hours, asked, score, (), None if rows is None else RowSettings(*rows),
+        light, hours, asked, score, (), None if rows is None else RowSettings(*rows, canopy_albedo),
         dem_error,
     )  # fmt: skip
     found = survey(

@@ -14,6 +14,7 @@ from terrasol.errors import SettingError
 from terrasol.light.settings import LightSettings
 from terrasol.practice.rows import (
     AZIMUTHS,
+    CANOPY_ALBEDO,
     RowLight,
     Vineyard,
     fall_line,
@@ -39,21 +40,26 @@ class RowSettings:
         From row to row, on the ground [m].
     height, width : float
         Of the leaf wall [m].
+    canopy_albedo : float
+        Share of light that the sides send back, evenly.
 
     Raises
     ------
     SettingError
-        Sizes that leave no gap between rows on level ground.
+        Sizes that leave no gap between rows on level ground; an albedo outside 0 to below 1.
     """
 
     spacing: float
     height: float
     width: float
+    canopy_albedo: float = CANOPY_ALBEDO
 
     def __post_init__(self) -> None:
         """Refuse what makes no rows."""
         if max(self.spacing, self.height, self.width) > 100.0:
             raise SettingError("rows are stated in metres; none is 100 m wide or high")
+        if not 0.0 <= self.canopy_albedo < 1.0:
+            raise SettingError(f"canopy albedo {self.canopy_albedo:g} is outside 0 to below 1")
         Vineyard(0.0, np.nan, self.spacing, self.height, self.width)
 
 
@@ -138,8 +144,10 @@ def rows_of(
         spacing=rows.spacing,
         height=rows.height,
         width=rows.width,
+        horizon_band=split.horizon_band[wanted],
         horizon=np.tan(np.radians(horizon)),
         ground_albedo=min(albedo, 0.99),
+        canopy_albedo=rows.canopy_albedo,
     )
     climbed = [
         row_slopes(piece.slope, piece.aspect, piece.weights, row_azimuths=AZIMUTHS, percent=p)

@@ -8,7 +8,8 @@ from typing import Any, Final
 import numpy as np
 import shapely
 
-from terrasol.engine.parcel_figures import HECTARE, Figure
+from terrasol.constants import HECTARE
+from terrasol.engine.parcel_figures import Figure
 from terrasol.engine.parcels import Parcel, Survey
 from terrasol.files.vectors import patch_outlines
 from terrasol.ground.elevation import Affine6

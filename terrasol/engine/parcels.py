@@ -10,14 +10,13 @@ from typing import Any, Final
 import numpy as np
 from numpy.typing import NDArray
 
+from terrasol.constants import HECTARE
 from terrasol.engine.job import NO_SCENE, plan_terrain
+from terrasol.engine.outputs import shade_doubts, shade_words
 from terrasol.engine.parcel_cells import Piece, SceneOf, pieces_of
 from terrasol.engine.parcel_errors import Doubt, doubts_of
 from terrasol.engine.parcel_figures import (
-    HECTARE,
     LAPSE_EFFECT,
-    QUANTITIES,
-    WARM_QUANTITIES,
     Asked,
     Figure,
     Level,
@@ -25,20 +24,22 @@ from terrasol.engine.parcel_figures import (
     figures_of,
     patches_of,
 )
+from terrasol.engine.parcel_light import levels_of, own_light
 from terrasol.engine.parcel_rows import Rows, RowSettings, row_figures, rows_of
-from terrasol.engine.plan import Block, Progress, carry_out, default_threads
+from terrasol.engine.parcel_words import read_score
+from terrasol.engine.plan import Block, Progress
 from terrasol.engine.uncertainty import doubts_of_error
 from terrasol.engine.windows import collect
-from terrasol.errors import SettingError
+from terrasol.errors import SettingError, area_words, listed
+from terrasol.files.overlaps import overlap_doubts
 from terrasol.files.vectors import Polygons
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame, make_frame
 from terrasol.ground.grain import coarsened
 from terrasol.ground.uncertainty import DemError
-from terrasol.light.hours import HoursSettings, TimeTables
+from terrasol.light.hours import HoursSettings
 from terrasol.light.settings import LightSettings
-from terrasol.light.tables import SkyTables
 from terrasol.practice.ranking import Ranking, Score, parse_score, rank
 from terrasol.practice.rules import Patches
 
@@ -53,12 +54,15 @@ MOST_NAMED: Final = 8
 """Parcels that a warning names."""
 
 LEAST_UNKNOWN: Final = 0.01
-"""Share of a parcel's area on which a rule may be unknown without a warning (judgement, no
+"""Share of a parcel's area on which slope or rule may be unknown without a warning (judgement, no
 source)."""
 
 LARGE_EFFECT: Final = 100.0
 """Degree-days that 1 K km-1 of lapse rate may move without a warning: a third of a class of
 Winkler's (judgement, no source)."""
+
+Look = tuple[float, list[Piece | None]]
+"""A cell size [m], and the parcels' cells of that size."""
 
 HORIZON_AZIMUTHS: Final = 256
 """Azimuths of the horizon that a sheet shows."""
@@ -88,8 +92,7 @@ class ParcelSettings:
     Raises
     ------
     SettingError
-        Another unit or basis, a clear-sky index or albedo by cell, a factor under 2, a score that
-        speaks of what no parcel has.
+        Another unit or basis, a factor under 2, a score that speaks of what no parcel has.
     """
 
     light: LightSettings
@@ -104,13 +107,12 @@ class ParcelSettings:
         """Refuse what makes no sense."""
         if self.light.unit != "MJ m-2" or self.light.basis != "slope":
             raise SettingError("parcels are told in MJ m-2 per area of slope")
-        if self.light.index_map is not None or self.light.albedo_map is not None:
-            raise SettingError("parcels take no map of albedo or of the clear-sky index")
         for factor in self.coarser:
             if factor < 2:
                 raise SettingError(f"cells are joined 2 by 2 at least; got {factor}")
         if self.score is not None:
-            parse_score(self.score, figure_names(self))
+            days, rows = len(self.hours.days), self.rows is not None
+            read_score(self.score, self.asked, days=days, rows=rows)
 
 
 @dataclass(frozen=True, eq=False)
@@ -179,6 +181,8 @@ class Survey:
         The score.
     warnings : list of str
         What a careful reader should know.
+    shade : str
+        What the horizon is made of, in a sentence.
     """
 
     parcels: list[Parcel]
@@ -187,6 +191,7 @@ class Survey:
     ranking: Ranking | None = None
     score: Score | None = None
     warnings: list[str] = field(default_factory=list)
+    shade: str = ""
 
     @property
     def order(self) -> list[Parcel]:
@@ -199,35 +204,6 @@ class Survey:
 def numbers_of(figures: Sequence[Figure]) -> dict[str, float]:
     """Figures that are numbers, by name."""
     return {f.name: f.value for f in figures if not isinstance(f.value, str)}
-
-
-def rule_names(warm: bool) -> list[str]:
-    """Names that a rule may use."""
-    return [*QUANTITIES, *(WARM_QUANTITIES if warm else ())]
-
-
-def figure_names(settings: ParcelSettings) -> list[str]:
-    """Names of the figures that are numbers, as a score may use them: those of one level cell."""
-    asked, months = settings.asked, len(settings.light.period.months)
-    layers = {
-        "slope": 1,
-        "aspect": 1,
-        "sky_view": 1,
-        "irradiation_months": months,
-        "sun_hours_months": months,
-        "first_sun": len(settings.hours.days),
-        "last_sun": len(settings.hours.days),
-    }
-    cell = Piece(
-        "", Block(0, 0, 1, 1), np.ones((1, 1)), np.zeros((1, 1), np.float32),
-        {name: np.ones((bands, 1, 1), np.float32) for name, bands in layers.items()},
-        45.0, 0.0, 1.0,
-    )  # fmt: skip
-    _warm([cell], asked.warmth)
-    figures = figures_of(cell, Level(np.ones(months), np.ones(months)), asked)
-    if settings.rows is not None:
-        figures += row_figures(None, asked)
-    return list(numbers_of(figures))
 
 
 def survey(
@@ -268,23 +244,18 @@ def survey(
     told = progress or (lambda share, stage: None)
     scene_of = _once(scene_of)
     part = 1.0 if settings.error is None else 0.3
-    looks, levels, warnings = _looks(
+    looks, levels, notes = _looks(
         elevation, polygons, settings, scene_of, threads, partial(_told_part, told, 0.0, 0.9 * part)
     )
-    fine = [(k, piece) for k, piece in enumerate(looks[0][1]) if piece is not None]
-    horizons = _horizons(elevation, [piece for _, piece in fine], settings, scene_of, threads)
+    parcels = _parcels(elevation, polygons, settings, looks, levels, scene_of, threads)
     told(part, "figures")
-    parcels = []
-    for (k, piece), horizon in zip(fine, horizons, strict=True):
-        level = levels[k]
-        assert level is not None
-        coarse = [(size, _figures(each[k], level, settings.asked)) for size, each in looks[1:]]
-        parcel = _parcel(piece, polygons.geometries[k], level, coarse, horizon, settings)
-        parcels.append(replace(parcel, given=polygons.given(k)))
-    warnings = (*polygons.warnings, *warnings, *doubts_of_error(elevation, settings.error))
-    warnings = (*warnings, *_doubts_of_size(parcels), *_doubts_of_lapse(parcels))
-    warnings = (*warnings, *_doubts_of_rule(parcels))
-    found = _ranked(parcels, settings, looks[0][0], [*warnings])
+    scene = scene_of(elevation, make_frame(elevation.shape, elevation.transform, elevation.crs))
+    warnings = [
+        *polygons.warnings, *overlap_doubts(polygons), *notes, *shade_doubts(scene),
+        *doubts_of_error(elevation, settings.error), *_doubts_of_voids(parcels),
+        *_doubts_of_size(parcels), *_doubts_of_lapse(parcels), *_doubts_of_rule(parcels),
+    ]  # fmt: skip
+    found = replace(_ranked(parcels, settings, looks[0][0], warnings), shade=shade_words(scene))
     if settings.error is not None:
         found = _doubted(
             found, elevation, settings.error, scene_of, threads,
@@ -301,24 +272,24 @@ def _looks(
     scene_of: SceneOf,
     threads: int | None,
     told: Progress,
-) -> tuple[list[tuple[float, list[Piece | None]]], list[Level | None], tuple[str, ...]]:
+) -> tuple[list[Look], list[Level | None], tuple[str, ...]]:
     """The cells of the parcels at each cell size, level ground beside them, and warnings."""
     factors = (1, *settings.coarser)
     work = np.cumsum([0.0, *(1.0 / factor**2 for factor in factors)])
     work /= work[-1]
-    looks: list[tuple[float, list[Piece | None]]] = []
+    looks: list[Look] = []
     warnings: tuple[str, ...] = ()
     levels: list[Level | None] = []
     for k, factor in enumerate(factors):
         ground = coarsened(elevation, factor)
         pieces, notes = pieces_of(
-            ground, polygons, settings.light, settings.hours, scene_of, threads,
+            ground, polygons, settings.light.coarsened(factor), settings.hours, scene_of, threads,
             partial(_told_part, told, work[k], work[k + 1]),
         )  # fmt: skip
         _warm(pieces, settings.asked.warmth)
         if factor == 1:
             warnings = notes
-            levels = _levels(pieces, settings, threads)
+            levels = levels_of(pieces, settings.light, settings.hours, threads)
         frame = make_frame(ground.shape, ground.transform, ground.crs)
         looks.append((float(np.sqrt(np.prod(frame.cell_size))), pieces))
     return looks, levels, warnings
@@ -347,15 +318,31 @@ def _doubts_of_size(parcels: Sequence[Parcel]) -> list[str]:
     if not few:
         return []
     return [
-        f"few cells lie in {_listed(few)}: their slopes and classes are those of the ground around"
-        " as much as their own; take a finer model"
+        f"few cells lie in {listed(few, MOST_NAMED)}: their slopes and classes are those of the"
+        " ground around as much as their own; take a finer model"
+    ]
+
+
+def _doubts_of_voids(parcels: Sequence[Parcel]) -> list[str]:
+    """Warn of parcels with ground whose slope is unknown."""
+    void = []
+    for parcel in parcels:
+        area = float(parcel.piece.area.sum())
+        share = 1.0 - float(parcel.piece.weights.sum()) / area if area else 0.0
+        if share >= LEAST_UNKNOWN:
+            void.append(f"{100.0 * share:.0f} % of '{parcel.name}'")
+    if not void:
+        return []
+    return [
+        f"{listed(void, MOST_NAMED)} is unknown (void ground), and in no figure: fill voids with"
+        " --fill-voids, or give a complete model"
     ]
 
 
 def _doubts_of_rule(parcels: Sequence[Parcel]) -> list[str]:
     """Warn of ground on which nobody knows whether it meets the rule."""
     unknown = [
-        f"'{p.name}' ({area:.2f} ha)"
+        f"'{p.name}' ({area_words(area)})"
         for p in parcels
         if (area := p.numbers.get("rule_unknown_ha_map", 0.0))
         >= LEAST_UNKNOWN * p.piece.area.sum() / HECTARE
@@ -364,15 +351,9 @@ def _doubts_of_rule(parcels: Sequence[Parcel]) -> list[str]:
     if not unknown:
         return []
     return [
-        f"the rule is unknown on ground of {_listed(unknown)}, which is not counted:"
+        f"the rule is unknown on ground of {listed(unknown, MOST_NAMED)}, which is not counted:"
         " a word of the rule is unknown there, or it divides by zero"
     ]
-
-
-def _listed(words: Sequence[str]) -> str:
-    """The first of many, and how many more."""
-    more = len(words) - MOST_NAMED
-    return ", ".join(words[:MOST_NAMED]) + (f" and {more} more" if more > 0 else "")
 
 
 def _doubts_of_lapse(parcels: Sequence[Parcel]) -> list[str]:
@@ -428,6 +409,28 @@ def _doubted(
     return replace(found, parcels=parcels)
 
 
+def _parcels(
+    elevation: Elevation,
+    polygons: Polygons,
+    settings: ParcelSettings,
+    looks: list[Look],
+    levels: list[Level | None],
+    scene_of: SceneOf,
+    threads: int | None,
+) -> list[Parcel]:
+    """The parcels on the raster, with their horizons."""
+    fine = [(k, piece) for k, piece in enumerate(looks[0][1]) if piece is not None]
+    horizons = _horizons(elevation, [piece for _, piece in fine], settings, scene_of, threads)
+    parcels = []
+    for (k, piece), horizon in zip(fine, horizons, strict=True):
+        level = levels[k]
+        assert level is not None
+        coarse = [(size, _figures(each[k], level, settings.asked)) for size, each in looks[1:]]
+        parcel = _parcel(piece, polygons.geometries[k], level, coarse, horizon, settings)
+        parcels.append(replace(parcel, given=polygons.given(k)))
+    return parcels
+
+
 def _parcel(
     piece: Piece,
     outline: Any,
@@ -440,7 +443,9 @@ def _parcel(
     asked = settings.asked
     figures, rows = figures_of(piece, level, asked), None
     if settings.rows is not None:
-        rows = rows_of(piece, horizon, settings.rows, settings.light, asked)
+        light = own_light(piece, settings.light)
+        if light is not None:
+            rows = rows_of(piece, horizon, settings.rows, light, asked)
         figures += row_figures(rows, asked)
     patches = patches_of(piece, level, asked)[0] if asked.rule else None
     return Parcel(piece.name, outline, piece, level, figures, coarser, horizon, patches, rows)
@@ -463,40 +468,10 @@ def _ranked(
     unknown = [f"'{p.name}'" for p, s in zip(parcels, ranking.total, strict=True) if np.isnan(s)]
     if unknown:
         warnings.append(
-            f"the score of {_listed(unknown)} is unknown, so it has no rank: a column of it is"
-            " unknown there, or it divides by zero"
+            f"the score of {listed(unknown, MOST_NAMED)} is unknown, so it has no rank: a column"
+            " of it is unknown there, or it divides by zero"
         )
     return Survey(parcels, settings, cell_size, ranking, score, warnings)
-
-
-def _levels(
-    pieces: Sequence[Piece | None], settings: ParcelSettings, threads: int | None
-) -> list[Level | None]:
-    """Open level ground at the latitude and mean height of each parcel."""
-    there = [piece for piece in pieces if piece is not None and np.isfinite(piece.height)]
-    latitudes = [piece.latitude for piece in there]
-    heights = [piece.height for piece in there]
-    longitude = float(there[0].longitude)
-    ends = (min(latitudes), max(latitudes)), (min(heights), max(heights))
-    light = SkyTables.over(settings.light, longitude, *ends)
-    hours = TimeTables.over(settings.hours, longitude, *ends)
-    for _ in carry_out([*light.tasks, *hours.tasks], threads or default_threads()):
-        pass
-
-    def level(piece: Piece) -> Level:
-        by_height = light.exactly(piece.latitude).table.level
-        months = [np.interp(piece.height, light.heights, month) for month in by_height.T]
-        return Level(np.array(months), hours.level(piece.latitude, piece.height)[0])
-
-    unknown = np.full(len(settings.light.period.months), np.nan)
-    return [
-        None
-        if piece is None
-        else level(piece)
-        if np.isfinite(piece.height)
-        else Level(unknown, unknown)
-        for piece in pieces
-    ]
 
 
 def middle_cell(piece: Piece) -> tuple[int, int]:

@@ -13,6 +13,7 @@ from terrasol.engine.plot_settings import PlotSettings
 from terrasol.engine.plot_table import PlotTable
 from terrasol.engine.predictors import season_words
 from terrasol.errors import counted
+from terrasol.light.settings import LightSettings
 from terrasol.sky.clear import Air
 
 REFERENCES: Final = {
@@ -160,7 +161,7 @@ def _light_words(settings: PlotSettings, account: Account, cited: set[str]) -> l
         f" {account.station or 'a station'}{_parted(account.decomposition, cited)} (clear air:"
         f" {air})",
         "monthly index": f"Irradiation is that of a clear sky ({air}) times monthly clear-sky"
-        f" indices of {_numbers(getattr(light.sky, 'index', ()))}",
+        f" indices {_indices(light)}",
     }[kind]
     basis = "per square metre of slope" if light.basis == "slope" else "per square metre of map"
     said.append(
@@ -179,8 +180,7 @@ def _light_words(settings: PlotSettings, account: Account, cited: set[str]) -> l
         model = "as even over the sky"
     said.append(
         f"Diffuse light is spread over the sky {model}; the horizon is known in {light.azimuths}"
-        f" azimuths; the ground's albedo is {_numbers(light.albedo)}"
-        f"{' (void cells of the map)' if light.albedo_map is not None else ''}."
+        f" azimuths; the ground's albedo is {_albedo(light)}."
     )
     if "photosynthetic" in groups:
         usual = ""
@@ -219,6 +219,20 @@ def _air_words(air: Air, climatology: bool, cited: set[str]) -> str:
         cited.add("remund")
         source = ", climatology of Remund et al. 2003"
     return f"Ineichen and Perez 2002; Linke turbidity {_numbers(air.linke)}{source}"
+
+
+def _indices(light: LightSettings) -> str:
+    """Clear-sky indices of the months, or whose they are."""
+    if light.index_map is not None:
+        return "that a map gives each cell"
+    return f"of {_numbers(getattr(light.sky, 'index', ()))}"
+
+
+def _albedo(light: LightSettings) -> str:
+    """Albedo of the ground, in numbers or as mapped."""
+    if light.albedo_map is None:
+        return _numbers(light.albedo)
+    return f"that of a map, and {_numbers(light.albedo)} where the map is void"
 
 
 def _numbers(months: Sequence[float]) -> str:

@@ -90,6 +90,11 @@ class PlotSettings:
         """Whether hours of sun are asked for."""
         return any(group in OF_TIME for group in self.groups)
 
+    @property
+    def shaded(self) -> bool:
+        """Whether anything is asked for that the horizon bounds."""
+        return self.lit or self.timed or "sky_view" in self.groups
+
 
 def hours_azimuths(azimuths: int) -> int:
     """Horizon azimuths for hours of sun beside so many for energy.

@@ -10,11 +10,13 @@ from collections.abc import Sequence
 from dataclasses import replace
 
 import numpy as np
+from numpy.typing import NDArray
 
 from terrasol.constants import ENERGY_UNITS, PHOTONS_PER_JOULE, REFRACTION_COEFFICIENT
 from terrasol.engine.datasets import clear_air, scene_of
 from terrasol.engine.hours import plan_hours
 from terrasol.engine.job import NO_SCENE, Plan, plan_irradiation, plan_terrain
+from terrasol.engine.outputs import shade_doubts
 from terrasol.engine.plan import Progress
 from terrasol.engine.plot_doubts import plot_doubts
 from terrasol.engine.plot_grain import Grain
@@ -101,7 +103,8 @@ def plot_table(
     for factor, size, tag, scene in zip(settings.factors, sizes, tags, scenes, strict=True):
         part = factor**-2.0 / work
         ground = coarsened(elevation, factor)
-        grain = Grain(ground, located, points.error, settings, factor, size)
+        own = replace(settings, light=settings.light.coarsened(factor))
+        grain = Grain(ground, located, points.error, own, factor, size)
 
         def move(share: float, stage: str, done: float = done, part: float = part) -> None:
             tell(done + part * share, stage)
@@ -109,6 +112,8 @@ def plot_table(
         table.add(grain.run(scene, threads, move), size, tag)
         done += part
     finished = table.finished(sizes)
+    if settings.shaded:
+        finished.warnings.extend(shade_doubts(scenes[0]))
     finished.warnings.extend(plot_doubts(finished, settings.radii))
     return finished
 
@@ -181,6 +186,8 @@ def plot_predictors(
     clock: str = "solar",
     refraction: float = REFRACTION_COEFFICIENT,
     sky: Sky | None = None,
+    albedo_map: NDArray[np.float32] | None = None,
+    index_map: NDArray[np.float32] | None = None,
     far: Elevation | None = None,
     surface: Elevation | None = None,
     threads: int | None = None,
@@ -210,6 +217,8 @@ def plot_predictors(
         first_last_sun.
     albedo, diffuse, azimuths, step_seconds, unit, basis, photons_per_joule, refraction, sky
         See `irradiation`. Hours of sun take four times as many azimuths, at most 720.
+    albedo_map, index_map : ndarray, optional
+        See `irradiation`; of the cells as they are, joined as the ground is.
     clock : str
         See `sun_hours`.
     far, surface : Elevation, optional
@@ -238,8 +247,8 @@ def plot_predictors(
     air = clear_air(elevation) if air is None else air
     light = LightSettings(
         period, air, twelve(albedo, "albedo"), diffuse, azimuths, step_seconds,
-        ENERGY_UNITS.get(unit, unit), basis, True, refraction, sky,
-        photons_per_joule=photons_per_joule,
+        ENERGY_UNITS.get(unit, unit), basis, True, refraction, sky, albedo_map, index_map,
+        photons_per_joule,
     )  # fmt: skip
     hours = HoursSettings(
         period, sky or air, parse_days(None, period), parse_clock(clock), hours_azimuths(azimuths),

@@ -47,9 +47,9 @@ class Totals:
         for layer in plan.layers:
             rows = {
                 label: {
-                    "mean": round(total / count, 4),
-                    "least": round(low, 4),
-                    "greatest": round(high, 4),
+                    "mean": _rounded(total / count),
+                    "least": _rounded(low),
+                    "greatest": _rounded(high),
                 }
                 for band, label in enumerate(layer.bands)
                 if (layer.name, band) in self.bands
@@ -60,6 +60,11 @@ class Totals:
             if rows and layer.band_units:
                 found |= _one_unit_each(layer, rows)
         return found
+
+
+def _rounded(value: float) -> float:
+    """A number as told, without a minus before a zero."""
+    return round(value, 4) + 0.0
 
 
 def _one_unit_each(layer: Layer, rows: dict[str, Any]) -> dict[str, Any]:

@@ -61,7 +61,7 @@ def read_elevation(
         A raster with one band.
     vertical_unit : {'metre', 'foot', 'us-foot'}, optional
         Unit of the heights. By default the band's unit, else the unit of the CRS's vertical
-        axis, else metres with a warning.
+        axis, else metres with a warning, but refused where x and y are in feet.
     fill_voids : int
         Interpolate voids of up to this many connected cells; 0 fills none.
 

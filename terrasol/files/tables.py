@@ -26,6 +26,7 @@ from terrasol.files.station_times import Grid, Rows, even_grid, join_parts, pars
 from terrasol.files.station_units import converter, radiation_factors, unit_of
 from terrasol.sky.quality import LIGHT, OTHER_LIMITS, refuse_wrong_unit
 from terrasol.sky.station import Station
+from terrasol.sky.warmth import too_warm
 
 NO_VALUE: Final = ("", "nan", "na", "n/a", "null")
 """Texts, in any case, that stand for a missing number in every file."""
@@ -140,6 +141,23 @@ def _refuse_wrong(station: Station, quantity: str, unit: str) -> None:
             f" {high:g} is believable. Mend the unit; if the values are right, say check_units ="
             " false"
         )
+    if quantity == "temperature":
+        _refuse_too_warm(station, unit)
+
+
+def _refuse_too_warm(station: Station, unit: str) -> None:
+    """Refuse air that is warmer than any can be where it was measured: degF, as a rule."""
+    found = too_warm(station)
+    if found is None:
+        return
+    fits = "; degF would fit" if found.in_fahrenheit and unit == "degC" else ""
+    raise InputError(
+        f"temperature cannot be in {unit}: from {found.first} to {found.last} its mean is"
+        f" {found.mean:.0f} degC, and with the sun of that season at {abs(station.latitude):.0f}"
+        f" degrees {'north' if station.latitude >= 0.0 else 'south'} and {station.height:.0f} m no"
+        f" more than {found.most:.0f} is believable{fits}. Mend the unit, or latitude or height if"
+        " they are wrong; if the values are right, say check_units = false"
+    )
 
 
 def _units(said: Settings) -> dict[str, str]:

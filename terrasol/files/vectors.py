@@ -18,7 +18,7 @@ from pyproj.exceptions import CRSError, ProjError
 from rasterio import Affine
 from rasterio.features import shapes as traced
 
-from terrasol.errors import InputError, SettingError, counted
+from terrasol.errors import InputError, SettingError, counted, listed
 from terrasol.files.rasters import naming
 from terrasol.ground.elevation import Affine6
 
@@ -38,6 +38,9 @@ PARQUET_BEGINS: Final = b"PAR1"
 
 POLYGONS: Final = ("Polygon", "MultiPolygon")
 """Kinds of geometry that have an area."""
+
+NO_AREA: Final = "no feature of the file has an area: give one with polygons"
+"""What is said where nothing is left."""
 
 ROUNDING: Final = 1e-6
 """Share of a polygon that may lie outside by rounding: shares of cells are single precision."""
@@ -160,7 +163,16 @@ def as_polygons(
     names, attributes, notes = _named(frame.drop(columns=frame.geometry.name), kept, name_field)
     moved = _moved(shapes, source, crs)
     repaired, said = _repaired(moved, names)
-    return Polygons(names, repaired, crs, attributes, (*left_out, *notes, *said))
+    there = [place for place, shape in enumerate(repaired) if shape is not None]
+    if not there:
+        raise InputError(NO_AREA)
+    return Polygons(
+        tuple(names[place] for place in there),
+        tuple(repaired[place] for place in there),
+        crs,
+        attributes.iloc[there].reset_index(drop=True),
+        (*left_out, *notes, *said),
+    )
 
 
 def read_features(path: str | PathLike[str], layer: str | None, kind: str) -> Any:
@@ -231,8 +243,7 @@ def _layer(path: str | PathLike[str], wanted: str | None, geometry: str) -> str:
 
 def word_list(names: Sequence[str], most: int = 12) -> str:
     """Word some names, the first few in full."""
-    shown = ", ".join(f"'{name}'" for name in names[:most])
-    return shown + (f" and {len(names) - most} more" if len(names) > most else "")
+    return listed([f"'{name}'" for name in names], most)
 
 
 def source_crs(crs: Any, path: str | PathLike[str]) -> CRS:
@@ -276,7 +287,7 @@ def _areas(geometries: NDArray[Any]) -> tuple[list[Any], list[int], list[str]]:
     if other:
         left_out.append(f"{counted(other, 'feature')} of points or lines left out")
     if not shapes:
-        raise InputError("no feature of the file has an area: give one with polygons")
+        raise InputError(NO_AREA)
     return shapes, kept, left_out
 
 
@@ -389,22 +400,22 @@ def _check_degrees(shapes: Iterable[Any], source: CRS) -> None:
             )
 
 
-def _repaired(shapes: list[Any], names: Sequence[str]) -> tuple[tuple[Any, ...], list[str]]:
-    """Mend rings that cross themselves or each other."""
-    mended, said = [], []
+def _repaired(shapes: list[Any], names: Sequence[str]) -> tuple[list[Any | None], list[str]]:
+    """Mend rings that cross themselves or each other; None for those around no area."""
+    mended: list[Any | None] = []
+    said = []
     for shape, name in zip(shapes, names, strict=True):
         if not shapely.is_valid(shape):
             reason = shapely.is_valid_reason(shape).split("[")[0].strip().lower()
             shape = _only_area(shapely.make_valid(shape, method="structure", keep_collapsed=False))
             if shape is None:
-                raise InputError(f"the outline of '{name}' has no area: draw it anew")
-            parts = counted(len(shapely.get_parts(shape)), "part")
-            said.append(
-                f"the outline of '{name}' was not valid ({reason}) and is repaired to {parts}:"
-                " check it on a map"
-            )
+                told = "has no area and is left out: draw it anew"
+            else:
+                parts = counted(len(shapely.get_parts(shape)), "part")
+                told = f"was not valid ({reason}) and is repaired to {parts}: check it on a map"
+            said.append(f"the outline of '{name}' {told}")
         mended.append(shape)
-    return tuple(mended), said
+    return mended, said
 
 
 def coverage(

@@ -118,7 +118,8 @@ def resolve_vertical_unit(
     SettingError
         The option is no unit known here.
     InputError
-        The file names a unit that is not known here, and no option settles it.
+        The file names a unit that is not known here, or none though x and y are in feet, and no
+        option settles it.
     """
     asked = unit_named(option) if option else None
     if option and asked is None:
@@ -139,7 +140,7 @@ def resolve_vertical_unit(
                 f" are with --vertical-unit ({', '.join(OPTION_NAMES)})"
             )
     if not stated:
-        return "metre", (_assumed(reference.horizontal),)
+        return "metre", (_metres_assumed(reference.horizontal),)
     source, text, unit = stated[0]
     assert unit is not None
     if len({other for *_, other in stated}) > 1:
@@ -149,14 +150,13 @@ def resolve_vertical_unit(
     return unit, ()
 
 
-def _assumed(horizontal: CRS) -> str:
-    """Word the assumption of metres, aloud where the plan is in feet."""
+def _metres_assumed(horizontal: CRS) -> str:
+    """Word the assumption of metres; where x and y are in feet, refuse to make it."""
     unit = horizontal.axis_info[0].unit_name
-    if horizontal.is_projected and unit_named(unit) in (None, "foot", "US survey foot"):
-        return (
-            f"THE HEIGHTS MAY NOT BE METRES: neither the band nor the CRS names their unit, and x"
-            f" and y are in {unit}; metres are assumed, which makes every slope wrong if the"
-            " heights are in feet: pass --vertical-unit"
+    if horizontal.is_projected and unit_named(unit) != "metre":
+        raise InputError(
+            f"neither the band nor the CRS names the unit of the heights, and x and y are in"
+            f" {unit}: say what the heights are with --vertical-unit ({', '.join(OPTION_NAMES)})"
         )
     return (
         "neither the band nor the CRS names the unit of the heights: metres are assumed"

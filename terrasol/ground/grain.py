@@ -57,6 +57,11 @@ def coarsened(elevation: Elevation, factor: int) -> Elevation:
     return Elevation(heights, transform, elevation.crs, None, elevation.warnings)
 
 
+def coarsened_map(layers: NDArray[np.float32], factor: int) -> NDArray[np.float32]:
+    """Join the cells of a map, shape (layers, rows, columns), as `coarsened` does the ground's."""
+    return layers if factor == 1 else np.stack([_square_means(each, factor) for each in layers])
+
+
 def _squares(size: int, factor: int) -> int:
     """Squares along a side, with one at the rim of which half lies on the raster."""
     return (size + factor // 2) // factor

@@ -40,16 +40,30 @@ NUMBERS = (
     "cold_power",
     "thaw_base",
     "thaw_power",
+    "deficit_factor",
+    "deficit_memory",
 )
 """Order of the parameters in `numbers`; `terrasol.practice.snow` says what they are."""
 
 FLOWS = ("snowfall", "rain_on_snow", "rain_on_ground", "melt", "refrozen", "outflow")
 """What a day moves, in the order of `moved` [mm]."""
 
-SKIN = ("age", "warmth", "fresh", "albedo")
-"""What is carried of the snow's surface, in the order of `skin`: days since the last snowfall,
-sum of daily greatest temperatures above 0 degC since then, snow of the spell at hand [mm], and the
-albedo of snow, or of the ground where none lies."""
+SKIN = ("age", "warmth", "fresh", "deficit", "felt", "albedo")
+"""What is carried of the snow beside its water, in the order of `skin`: days since the last
+snowfall, sum of daily greatest temperatures above 0 degC since then, snow of the spell at hand
+[mm], heat deficit [mm of water whose freezing would warm the snow to 0 degC], the temperature that
+the snow has felt [degC], and the albedo of snow, or of the ground where none lies."""
+
+WATER_FOR_COLD = 160.0
+"""Kelvin by which 1 mm of frozen water is warmed by 1 mm that freezes: latent heat by heat of ice
+(Anderson 2006, from memory; 334 / 2.09 kJ)."""
+
+DEEPEST_DEFICIT = 0.33
+"""Greatest heat deficit by the frozen water of the snow (Anderson 2006, from memory)."""
+
+HEAVY_SNOW = 1.5
+"""Snowfall of an hour [mm] above which the snow feels the new snow's temperature alone (Anderson
+2006, from memory)."""
 
 
 @njit(cache=True, nogil=True, error_model="numpy", inline="always")
@@ -97,21 +111,46 @@ def _fallen(numbers, water, air, more):
 
 
 @njit(cache=True, nogil=True, error_model="numpy", inline="always")
-def _pack_hour(numbers, solid, wet, air, wanted, slope):
+def _chilled(numbers, snow, air, deficit, felt):
+    """Heat deficit and felt temperature after an hour's snowfall [mm]."""
+    if numbers[24] > 0.0 and snow > 0.0:
+        deficit += max(-air, 0.0) * snow / WATER_FOR_COLD
+        if snow > HEAVY_SNOW:
+            felt = min(air, 0.0)
+    return deficit, felt
+
+
+@njit(cache=True, nogil=True, error_model="numpy", inline="always")
+def _deficit_of_hour(numbers, solid, air, melt, slope, deficit, felt):
+    """Heat deficit and felt temperature after an hour's air; see `_pack_hour`."""
+    if melt == 0.0:
+        deficit += numbers[24] / 24.0 * (felt - min(air, 0.0)) * slope
+    felt = min(felt + (1.0 - (1.0 - numbers[25]) ** (1.0 / 6.0)) * (air - felt), 0.0)
+    return min(max(deficit, 0.0), DEEPEST_DEFICIT * solid), felt
+
+
+@njit(cache=True, nogil=True, error_model="numpy", inline="always")
+def _pack_hour(numbers, solid, wet, air, wanted, slope, deficit, felt):
     """Melt, refreezing and outflow of an hour [mm].
 
-    Returns solid, wet, melt, refrozen, outflow.
+    Returns solid, wet, melt, refrozen, outflow, deficit, felt.
     """
     melt = min(wanted, solid)
     solid -= melt
     wet += melt
     refrozen = 0.0
-    if air < 0.0 and solid > 0.0:
+    if numbers[24] > 0.0:
+        deficit, felt = _deficit_of_hour(numbers, solid, air, melt, slope, deficit, felt)
+        refrozen = min(wet, deficit)
+        deficit -= refrozen
+        if refrozen > 0.0 and deficit == 0.0:
+            felt = 0.0
+    elif air < 0.0 and solid > 0.0:
         refrozen = min(-air * numbers[11] / 24.0 * slope, wet)
-        solid += refrozen
-        wet -= refrozen
+    solid += refrozen
+    wet -= refrozen
     outflow = max(wet - numbers[10] * solid, 0.0)
-    return solid, wet - outflow, melt, refrozen, outflow
+    return solid, wet - outflow, melt, refrozen, outflow, deficit, felt
 
 
 @njit(cache=True, nogil=True, error_model="numpy", inline="always")
@@ -120,7 +159,8 @@ def _cell_day(
 ):
     """One day of cell `c`; see `melt_day`."""
     solid, wet = ice[c], liquid[c]
-    age, warmth, fresh, albedo = skin[c, 0], skin[c, 1], skin[c, 2], float(skin[c, 3])
+    age, warmth, fresh = skin[c, 0], skin[c, 1], skin[c, 2]
+    deficit, felt, albedo = float(skin[c, 3]), float(skin[c, 4]), float(skin[c, 5])
     if kind == MEASURED and solid > 0.0:
         albedo = _snow_albedo(kind, numbers, age, warmth, solid + wet, measured)
     more = max(1.0 + numbers[9] * 1e-4 * above, 0.0)
@@ -132,6 +172,7 @@ def _cell_day(
             renewed = snow > 0.0 and solid == 0.0
             solid += snow
             fresh += snow
+            deficit, felt = _chilled(numbers, snow, air, deficit, felt)
             snowed = snowed or snow > 0.0
             moved[c, 0] += snow
             if solid > 0.0:
@@ -147,8 +188,8 @@ def _cell_day(
         if solid > 0.0:
             shine = float(light[h, c]) if model != DEGREE_DAYS else 0.0
             wanted = slope * _melt_of_hour(model, numbers, air, shine, albedo)
-            solid, wet, melt, refrozen, outflow = _pack_hour(
-                numbers, solid, wet, air, wanted, slope
+            solid, wet, melt, refrozen, outflow, deficit, felt = _pack_hour(
+                numbers, solid, wet, air, wanted, slope, deficit, felt
             )
             moved[c, 3] += melt
             moved[c, 4] += refrozen
@@ -161,8 +202,10 @@ def _cell_day(
         albedo = _snow_albedo(kind, numbers, age, warmth, solid + wet, measured)
     else:
         age, warmth, fresh, albedo = 0.0, 0.0, 0.0, numbers[12]
+        deficit, felt = 0.0, 0.0
     ice[c], liquid[c] = solid, wet
-    skin[c, 0], skin[c, 1], skin[c, 2], skin[c, 3] = age, warmth, fresh, albedo
+    skin[c, 0], skin[c, 1], skin[c, 2] = age, warmth, fresh
+    skin[c, 3], skin[c, 4], skin[c, 5] = deficit, felt, albedo
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
@@ -172,7 +215,7 @@ def melt_day(
     """One day of some cells.
 
     model, kind : int, see the top of the file
-    numbers : (24,) float64, parameters in the order of `NUMBERS`
+    numbers : (26,) float64, parameters in the order of `NUMBERS`
     weather : (hours, 3) float64, at the station: air temperature [degC], precipitation [mm], and
         fall of temperature with height [K/m]
     measured : float, the day's measured albedo, for `MEASURED` alone; else 0
@@ -181,7 +224,7 @@ def melt_day(
     above : (cells,) float32, height above the station [m]
     steep : (cells,) float32, area of slope by area of map; NaN where void
     ice, liquid : (cells,) float64, in and out: water of the snow, frozen and liquid [mm]
-    skin : (cells, 4) float32, in and out, see `SKIN`
+    skin : (cells, 6) float32, in and out, see `SKIN`
     moved : (cells, 6) float64, out, see `FLOWS`; 0 where void
     """
     moved[:] = 0.0

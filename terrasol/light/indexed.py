@@ -152,12 +152,16 @@ class MappedTables:
     def level(self, latitude: float, height: float) -> float:
         """Global irradiation of open level ground under the map's mean index [MJ m-2]."""
         means = np.asarray(np.nanmean(self.index, axis=(1, 2), dtype=np.float64))
-        mean = self._months(means[:, None, None])
-        total = 0.0
-        for share, tables in self._shares(mean.astype(np.float32)):
-            level = tables.exactly(latitude).table.level
-            by_month = [np.interp(height, tables.heights, column) for column in level.T]
-            total += float(np.sum(share[:, 0, 0] * by_month))
+        return float(self.level_months(latitude, height, means).sum())
+
+    def level_months(
+        self, latitude: float, height: float, index: NDArray[np.float64]
+    ) -> NDArray[np.float64]:
+        """The same by month of the period, under one index or twelve; NaN where that is."""
+        months = self._months(index[:, None, None]).astype(np.float32)
+        total = np.zeros(len(months))
+        for share, tables in self._shares(months):
+            total += share[:, 0, 0] * tables.level_months(latitude, height)
         return total
 
     def _months(self, index: NDArray) -> NDArray:

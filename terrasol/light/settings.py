@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from numbers import Integral, Real
 from typing import Any, Final
 
@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 
 from terrasol.constants import REFRACTION_COEFFICIENT
 from terrasol.errors import SettingError
+from terrasol.ground.grain import coarsened_map
 from terrasol.sky.clear import Air
 from terrasol.sky.diffuse import MODELS
 from terrasol.sky.irradiance import Sky
@@ -125,6 +126,15 @@ class LightSettings:
             return self.month_albedo
         every = slice(stride // 2, None, stride)
         return filled_up(self.ground_albedo(every, every), shape)
+
+    def coarsened(self, factor: int) -> LightSettings:
+        """The same for cells joined as `terrasol.ground.grain.coarsened` joins them."""
+        maps: dict[str, Any] = {
+            name: coarsened_map(layers, factor)
+            for name in ("albedo_map", "index_map")
+            if (layers := getattr(self, name)) is not None
+        }
+        return replace(self, **maps)
 
     @property
     def photons(self) -> NDArray[np.float64] | None:

@@ -89,5 +89,9 @@ class SkyTables(LatitudeTables[Knot, Mixed]):
 
     def level(self, latitude: float, height: float) -> float:
         """Global irradiation of open level ground [MJ m-2]."""
-        level = self.exactly(latitude).table.level
-        return float(np.interp(height, self.heights, level.sum(axis=1)))
+        return float(self.level_months(latitude, height).sum())
+
+    def level_months(self, latitude: float, height: float) -> NDArray[np.float64]:
+        """The same by month of the period."""
+        by_month = self.exactly(latitude).table.level.T
+        return np.array([np.interp(height, self.heights, month) for month in by_month])

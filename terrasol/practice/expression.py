@@ -25,6 +25,9 @@ DEEPEST: Final = 40
 
 Values = NDArray[np.float64]
 
+Needs = Callable[[str], str]
+"""Says of an unknown name what would make it known; nothing if nothing would."""
+
 _ARITHMETIC: Final[dict[type[ast.operator], Callable[[Values, Values], Values]]] = {
     ast.Add: np.add,
     ast.Sub: np.subtract,
@@ -42,7 +45,19 @@ _COMPARISONS: Final[dict[type[ast.cmpop], Callable[[Values, Values], NDArray[np.
 _FORMS: Final = "numbers, names, + - * /, < <= > >= == !=, and, or, not, and brackets"
 
 
-def parse(text: str, known: Collection[str], *, what: str, logical: bool) -> ast.expr:
+def nothing_needed(name: str) -> str:
+    """Of names that nothing would make known."""
+    return ""
+
+
+def parse(
+    text: str,
+    known: Collection[str],
+    *,
+    what: str,
+    logical: bool,
+    needs: Needs = nothing_needed,
+) -> ast.expr:
     """Read an expression and refuse all that is not in the language.
 
     Parameters
@@ -55,6 +70,8 @@ def parse(text: str, known: Collection[str], *, what: str, logical: bool) -> ast
         What the text is, for messages: 'rule', 'score'.
     logical : bool
         Whether it must be true or false, or else a number.
+    needs : callable
+        Says of a name that is not known what would make it known, or nothing.
 
     Returns
     -------
@@ -65,7 +82,7 @@ def parse(text: str, known: Collection[str], *, what: str, logical: bool) -> ast
     ------
     SettingError
         Another form, an unknown name, a truth in place of a number or the reverse, or a text too
-        long. The message quotes the text and lists the known names.
+        long. The message quotes the text and lists the known names, or says what a name needs.
     """
     if len(text) > LONGEST:
         raise SettingError(f"the {what} has {len(text)} characters; {LONGEST} are allowed")
@@ -76,6 +93,9 @@ def parse(text: str, known: Collection[str], *, what: str, logical: bool) -> ast
             f"the {what} {text!r} cannot be read; it may hold {_FORMS} (== for equal)"
         ) from None
     try:
+        for name in names_in(tree):
+            if name not in known and (lacking := needs(name)):
+                raise SettingError(f"names {name}, which needs {lacking}")
         _check(tree, known, logical, DEEPEST)
     except SettingError as problem:
         raise SettingError(f"the {what} {text!r} {problem}") from None

@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 from scipy.stats import rankdata
 
-from terrasol.practice.expression import evaluate, names_in, parse
+from terrasol.practice.expression import Needs, evaluate, names_in, nothing_needed, parse
 
 
 @dataclass(frozen=True)
@@ -56,7 +56,7 @@ class Ranking:
     order: NDArray[np.int64]
 
 
-def parse_score(text: str, known: Collection[str]) -> Score:
+def parse_score(text: str, known: Collection[str], needs: Needs = nothing_needed) -> Score:
     """Read a score such as ``2 * share_of_level - 0.02 * slope_percent_mean``.
 
     Parameters
@@ -66,6 +66,8 @@ def parse_score(text: str, known: Collection[str]) -> Score:
         brackets is a term.
     known : collection of str
         Names of the figures that every parcel has.
+    needs : callable
+        Says of another name what would make it known, or nothing.
 
     Raises
     ------
@@ -77,7 +79,7 @@ def parse_score(text: str, known: Collection[str]) -> Score:
     >>> parse_score("2 * a - (b - 1) / 3", ["a", "b"]).terms
     ('2 * a', '-(b - 1) / 3')
     """
-    tree = parse(text, known, what="score", logical=False)
+    tree = parse(text, known, what="score", logical=False, needs=needs)
     trees = tuple(_terms(tree, positive=True))
     return Score(text.strip(), names_in(tree), tuple(ast.unparse(t) for t in trees), trees)
 

@@ -2,7 +2,8 @@
 
 Rows are endless, straight, plumb hedges of one rectangular section, side by side on a plane slope.
 Seen along the rows everything is a drawing in two dimensions, so the beam is shared out exactly;
-the even sky is that same sharing, summed over the directions from which the sky is seen.
+the even sky and the band along the horizon are that same sharing, summed over the directions from
+which they are seen.
 """
 
 from __future__ import annotations
@@ -14,6 +15,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from terrasol.errors import SettingError
+from terrasol.light.irradiation import BAND_TOP
 from terrasol.practice.classes import slope_percent, weighted_mean, weighted_percentiles
 from terrasol.sky.sun import unit_vector
 
@@ -27,7 +29,8 @@ GROUND_ALBEDO: Final = 0.2
 """Of the ground between the rows, grass or soil (common practice, no source)."""
 
 CANOPY_ALBEDO: Final = 0.2
-"""Of the leaves (judgement: no handbook value for vine rows was found)."""
+"""Of the sides of the rows (judgement, no source: no handbook value for vine rows was found; those
+of crops in general are 0.15 to 0.25)."""
 
 SKY_AZIMUTHS: Final = 360
 """Directions round the even sky. Between level rows the sums then agree with crossed strings to
@@ -35,6 +38,10 @@ SKY_AZIMUTHS: Final = 360
 
 SKY_RINGS: Final = 90
 """Directions between horizon and zenith, equal steps of the angle."""
+
+BAND_RINGS: Final = 16
+"""Directions between the bottom and the top of the horizon band, equal steps of the tangent. Twice
+as many, and as many azimuths, move no surface by 1e-3 of the band (tests/practice/test_rows.py)."""
 
 Floats = NDArray[np.float64]
 
@@ -98,9 +105,10 @@ class RowLight:
     azimuth
         Of the rows [degree]; (azimuths,).
     beam, diffuse, reflected
-        On a square metre of each of `SURFACES` [MJ m-2]; (azimuths, 4). Reflected light is that
-        from the ground and rows in view, all bounces. None reaches the top, which gets what the
-        slope would get without any rows.
+        On a square metre of each of `SURFACES` [MJ m-2]; (azimuths, 4). Diffuse light is that of
+        the even sky and of the horizon band. Reflected light is that from the ground and rows in
+        view, all bounces. None reaches the top, which gets what the slope would get without any
+        rows.
     area
         Of each surface on one metre of row, laid on the ground [m2]; (azimuths, 4).
     along, across
@@ -143,6 +151,7 @@ def row_light(
     spacing: float,
     height: float,
     width: float,
+    horizon_band: ArrayLike = 0.0,
     horizon: ArrayLike | None = None,
     row_azimuths: ArrayLike = AZIMUTHS,
     ground_albedo: float = GROUND_ALBEDO,
@@ -161,6 +170,9 @@ def row_light(
         How long each entry stands for.
     slope, aspect, spacing, height, width : float
         See `Vineyard`.
+    horizon_band : array_like, shape (n,), optional
+        Light of the band along the horizon on an open plumb wall [W m-2], as
+        `terrasol.sky.diffuse.split_diffuse` gives it; may be negative.
     horizon : array_like, shape (azimuths,), optional
         Tangents of the skyline at equally spaced azimuths, the first due north; else open.
     row_azimuths : array_like
@@ -186,6 +198,10 @@ def row_light(
 
     times a factor common to all (cos of the row's own slope). They add up to spacing v: nothing is
     lost or counted twice. Leaves let no light through; the ends of rows are not in it.
+
+    The horizon band is level light, so top and ground take it by the slope alone, as open ground
+    does, and level ground takes none; what of it comes over the neighbouring row is asked of its
+    height above the horizon, 0 to `BAND_TOP`.
     """
     place = Vineyard(slope, aspect, spacing, height, width)
     for albedo in (ground_albedo, canopy_albedo):
@@ -197,6 +213,8 @@ def row_light(
     beam_energy = np.asarray(beam_normal, np.float64) * seen * step_seconds * 1e-6
     sky, share = _even_sky(place, skyline)
     sky_energy = share * float(np.sum(diffuse_horizontal)) * step_seconds * 1e-6
+    low, portion = _horizon_band(skyline)
+    low_energy = portion * float(np.sum(horizon_band)) * step_seconds * 1e-6
 
     rows = np.asarray(row_azimuths, np.float64).ravel()
     beam, diffuse, reflected, area = (np.empty((rows.size, len(SURFACES))) for _ in range(4))
@@ -204,6 +222,7 @@ def row_light(
     for k, row in enumerate(rows):
         beam[k] = _shared(place, row, sun, beam_energy)
         diffuse[k] = _shared(place, row, sky, sky_energy)
+        diffuse[k] += _shared(place, row, low, low_energy, level=True)
         area[k] = _areas(place, row)
         first = beam[k] + diffuse[k]
         reflected[k] = _exchanged(place, row, first, ground_albedo, canopy_albedo)
@@ -333,20 +352,29 @@ def _areas(place: Vineyard, row_azimuth: float) -> Floats:
     return np.array([place.height * lean] * 2 + [place.width * flat, _gap(place, along) * flat])
 
 
-def _shared(place: Vineyard, row_azimuth: float, light: Floats, energy: Floats) -> Floats:
-    """Energy on a square metre of each surface, from directions (3, n) with energies (n,)."""
+def _shared(
+    place: Vineyard, row_azimuth: float, light: Floats, energy: Floats, *, level: bool = False
+) -> Floats:
+    """Energy on a square metre of each surface, from directions (3, n) with energies (n,).
+
+    Light that is `level` has only its level part of energy; its rise counts in what hides it.
+    """
     along, across = place.rises(row_azimuth)
     turn = np.radians(row_azimuth)
     forward = light[0] * np.sin(turn) + light[1] * np.cos(turn)
     right = light[0] * np.cos(turn) - light[1] * np.sin(turn)
-    above = np.maximum(light[2] - along * forward - across * right, 0.0)
+    rise = light[2] - along * forward - across * right
+    above = np.maximum(rise, 0.0)
     gap, flat = _gap(place, along), np.cos(np.radians(place.slope))
     reach = above * gap / place.height
     right_side = np.minimum(np.maximum(right, 0.0), reach)
     left_side = np.minimum(np.maximum(-right, 0.0), reach)
-    ground = flat * np.maximum(above - np.abs(right) * place.height / gap, 0.0)
+    top, ground = above, np.maximum(above - np.abs(right) * place.height / gap, 0.0)
+    if level:
+        top = np.maximum(rise - light[2], 0.0)
+        ground = ground * np.divide(top, above, out=np.zeros_like(top), where=above > 0.0)
     return np.array(
-        [(part * energy).sum() for part in (right_side, left_side, flat * above, ground)]
+        [(part * energy).sum() for part in (right_side, left_side, flat * top, flat * ground)]
     )
 
 
@@ -395,3 +423,20 @@ def _even_sky(place: Vineyard, skyline: Floats) -> tuple[Floats, Floats]:
     level, up = np.cos(elevation), np.sin(elevation)
     weight = 2.0 / SKY_AZIMUTHS * (2.0 * np.sin(0.5 * step)) * level
     return np.stack([level * east, level * north, up]).reshape(3, -1), weight.ravel()
+
+
+def _horizon_band(skyline: Floats) -> tuple[Floats, Floats]:
+    """Directions (3, n) of the horizon band above the skyline, and what each sends.
+
+    The level part of each direction is 1 and the weight is energy facing it, of a band that sends
+    1 to an open plumb wall. Equal parts of the tangent send alike, as open ground has it
+    (`terrasol.light.irradiation`).
+    """
+    bearing = (np.arange(SKY_AZIMUTHS) + 0.5) * 360.0 / SKY_AZIMUTHS
+    east, north = np.sin(np.radians(bearing)), np.cos(np.radians(bearing))
+    hidden = np.minimum(_tangent(skyline, bearing), BAND_TOP)
+    part = (np.arange(BAND_RINGS)[:, np.newaxis] + 0.5) / BAND_RINGS
+    rise = hidden + (BAND_TOP - hidden) * part
+    weight = np.pi / SKY_AZIMUTHS * (1.0 - hidden / BAND_TOP) / BAND_RINGS
+    directions = np.stack(np.broadcast_arrays(east, north, rise))
+    return directions.reshape(3, -1), np.broadcast_to(weight, rise.shape).ravel()

@@ -11,7 +11,7 @@ from numpy.typing import ArrayLike, NDArray
 from scipy import ndimage
 
 from terrasol.errors import SettingError
-from terrasol.practice.expression import evaluate, names_in, parse
+from terrasol.practice.expression import Needs, evaluate, names_in, nothing_needed, parse
 
 
 @dataclass(frozen=True)
@@ -70,7 +70,7 @@ class Patches:
     ignored: int
 
 
-def parse_rule(text: str, known: Collection[str]) -> Rule:
+def parse_rule(text: str, known: Collection[str], needs: Needs = nothing_needed) -> Rule:
     """Read a rule such as ``slope_percent < 15 and share_of_level >= 0.95``.
 
     Parameters
@@ -79,6 +79,8 @@ def parse_rule(text: str, known: Collection[str]) -> Rule:
         Comparisons of numbers, names and + - * /, joined by and, or, not and brackets.
     known : collection of str
         Names of the quantities that every cell has.
+    needs : callable
+        Says of another name what would make it known, or nothing.
 
     Raises
     ------
@@ -91,7 +93,7 @@ def parse_rule(text: str, known: Collection[str]) -> Rule:
     >>> meet(rule, {"slope_percent": [3.0, 5.0, 20.0]}).met.tolist()
     [False, True, False]
     """
-    tree = parse(text, known, what="rule", logical=True)
+    tree = parse(text, known, what="rule", logical=True, needs=needs)
     return Rule(text.strip(), names_in(tree), tree)
 
 

@@ -49,6 +49,7 @@ _P05 = "Pellicciotti et al. 2005, doi:10.3189/172756505781829124"
 _H99 = "Hock 1999, doi:10.3189/S0022143000003087, from memory"
 _B00 = "Brock et al. 2000, doi:10.3189/172756500781832675"
 _USACE = "US Army Corps of Engineers 1956, Snow Hydrology, as handed down"
+_A06 = "Anderson 2006, Snow Accumulation and Ablation Model, NWS, from memory"
 _PRACTICE = "common practice, no source"
 
 
@@ -138,6 +139,13 @@ NUMBERS: Final[dict[str, Number]] = {
     "cold_power": Number(0.58, "1", 0.1, 2.0, "of cold snow (usace)", _USACE),
     "thaw_base": Number(0.82, "1", 0.5, 1.0, "snow that thawed since it fell (usace)", _USACE),
     "thaw_power": Number(0.46, "1", 0.1, 2.0, "of thawed snow (usace)", _USACE),
+    "deficit_factor": Number(
+        0.0, "mm d-1 K-1", 0.0, 2.0,
+        "heat deficit of snow by air colder than it; 0 leaves it out, 0.6 is Anderson's", _A06,
+    ),
+    "deficit_memory": Number(
+        0.1, "1", 0.01, 1.0, "weight of the air of 6 hours in the temperature that snow felt", _A06
+    ),
 }  # fmt: skip
 """Every number that can be changed, by name."""
 
@@ -255,7 +263,7 @@ class Snow:
     ----------
     ice, liquid : ndarray of float64, shape (cells,)
         Water of the snow, frozen and liquid [mm on map area].
-    skin : ndarray of float32, shape (cells, 4)
+    skin : ndarray of float32, shape (cells, 6)
         See `terrasol.kernels.melt.SKIN`.
     """
 
@@ -373,7 +381,12 @@ def snow_day(
 
     times `steep` on map area, since slopes have more surface than map. Precipitation falls on map
     area. Melt and rain stay in the snow up to `holding_share` of its frozen water; below 0 degC
-    refreeze_factor / 24 (-T) of it freezes again an hour; the rest flows out at once. Frozen
+    refreeze_factor / 24 (-T) of it freezes again an hour; the rest flows out at once.
+
+    With a `deficit_factor` the snow keeps a heat deficit in place of that (Anderson 2006, from
+    memory): it grows by deficit_factor / 24 (felt - min(T, 0)) in an hour without melt, `felt` a
+    mean of past air by `deficit_memory`, 0 degC at the most, and by the cold of new snow; it is 0
+    to 0.33 of the frozen water. Melt and rain freeze until it is used up. Frozen
     water closes as snowfall + refrozen = melt + what lies, all water as snowfall + rain on snow =
     outflow + what lies.
     """

@@ -3,8 +3,11 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
+from dataclasses import dataclass
 
 import numpy as np
+from matplotlib.path import Path
 from numpy.typing import NDArray
 
 from terrasol.show.page import POINTS_PER_PIXEL, Page
@@ -23,9 +26,32 @@ SMOOTHING = 3
 
 LINE, LABEL_HALO = "#20242c", "#ffffff"
 
-LABEL_SIZE = 15.0
-LABEL_RUN, LABEL_MARGIN, LABEL_APART = 34.0, 50.0, 150.0
-"""Half the length of line under a label, its distance to the rim and to the next [pixels]."""
+
+@dataclass(frozen=True)
+class Lettering:
+    """How lines are named, all in pixels.
+
+    Parameters
+    ----------
+    size : float
+        Of the letters.
+    run : float
+        Half the length of line under a name.
+    margin, apart : float
+        Distance of a name's middle to the map's rim and to the next name.
+    """
+
+    size: float = 15.0
+    run: float = 34.0
+    margin: float = 50.0
+    apart: float = 150.0
+
+
+MAP_LETTERS = Lettering()
+"""Names of lines on a map that fills a page."""
+
+Box = tuple[float, float, float, float]
+"""Left, top, right and bottom on a page [pixels]."""
 
 
 def nice_step(span: float, count: float) -> float:
@@ -95,7 +121,7 @@ def draw_contours(
             continue
         rim = (*corner, corner[0] + heights.shape[1], corner[1] + heights.shape[0])
         for level, path in zip(chosen * step, lines.get_paths(), strict=True):
-            _label(page, f"{level:.10g}", path, rim, centres)
+            name_line(page, f"{level:.10g}", path, rim, centres)
 
 
 def _smooth(heights: NDArray[np.float32]) -> NDArray[np.float32]:
@@ -112,43 +138,87 @@ def _smooth(heights: NDArray[np.float32]) -> NDArray[np.float32]:
     return np.ascontiguousarray(grid)
 
 
-def _label(page, text, path, rim, centres) -> None:
-    """Name a level once, where one of its lines is straight and has room."""
-    best, where = 0.0, None
-    for line in path.to_polygons(closed_only=False):
-        reach = np.concatenate([[0.0], np.cumsum(np.hypot(*np.diff(line, axis=0).T))])
-        if reach[-1] < 8 * LABEL_RUN:
-            continue
-        middle = np.arange(LABEL_RUN, reach[-1] - LABEL_RUN, LABEL_RUN)
-        ends = [
-            np.stack([np.interp(middle + run, reach, line[:, k]) for k in (0, 1)], axis=-1)
-            for run in (-LABEL_RUN, 0.0, LABEL_RUN)
-        ]
-        straight = np.hypot(*(ends[2] - ends[0]).T) / (2 * LABEL_RUN)
-        x, y = ends[1].T
-        room = (x > rim[0] + LABEL_MARGIN) & (x < rim[2] - LABEL_MARGIN)
-        room &= (y > rim[1] + LABEL_MARGIN) & (y < rim[3] - LABEL_MARGIN)
-        for other in centres:
-            room &= np.hypot(*(ends[1] - other).T) > LABEL_APART
-        level = 1 - 0.2 * np.abs(ends[2] - ends[0])[:, 1] / (2 * LABEL_RUN)
-        score = np.where(room & (straight > 0.9), straight * level, 0.0)
-        k = int(np.argmax(score))
-        if score[k] > best:
-            best, where = float(score[k]), (ends[1][k], ends[2][k] - ends[0][k])
+def name_line(
+    page: Page,
+    text: str,
+    path: Path,
+    rim: Box,
+    centres: list[NDArray[np.float64]],
+    lettering: Lettering = MAP_LETTERS,
+    *,
+    taken: Sequence[Box] = (),
+    colour: str = LINE,
+    halo: str = LABEL_HALO,
+) -> bool:
+    """Name a level once, where one of its lines is straight and has room.
+
+    Parameters
+    ----------
+    page : Page
+    text : str
+        The name.
+    path : Path
+        Its lines on the page [pixels].
+    rim : tuple of float
+        Of the map.
+    centres : list of ndarray
+        Middles of the names so far; the new one is added.
+    lettering : Lettering
+    taken : sequence of tuple of float
+        Boxes in which no name may stand.
+    colour, halo : str
+        Of the letters, and around them.
+
+    Returns
+    -------
+    bool
+        Whether there was room.
+    """
+    where = _straight_place(path, rim, centres, lettering, taken)
     if where is None:
-        return
+        return False
     (x, y), (run, fall) = where
     turn = math.degrees(math.atan2(-fall, run))
     turn = (turn + 90.0) % 180.0 - 90.0
     centres.append(where[0])
     page.text(
-        x,
-        y,
-        text,
-        LABEL_SIZE,
-        turn=turn,
-        colour=LINE,
-        across="center",
-        down="center",
-        halo=LABEL_HALO,
-    )
+        x, y, text, lettering.size,
+        turn=turn, colour=colour, across="center", down="center", halo=halo,
+    )  # fmt: skip
+    return True
+
+
+def _straight_place(
+    path: Path,
+    rim: Box,
+    centres: Sequence[NDArray[np.float64]],
+    lettering: Lettering,
+    taken: Sequence[Box],
+) -> tuple[NDArray[np.float64], NDArray[np.float64]] | None:
+    """Middle and direction of the straightest run of a line that has room."""
+    best, where = 0.0, None
+    run, margin = lettering.run, lettering.margin
+    for each in path.to_polygons(closed_only=False):
+        line = np.asarray(each, np.float64)
+        reach = np.concatenate([[0.0], np.cumsum(np.hypot(*np.diff(line, axis=0).T))])
+        if reach[-1] < 8 * run:
+            continue
+        middle = np.arange(run, reach[-1] - run, run)
+        ends = [
+            np.stack([np.interp(middle + step, reach, line[:, k]) for k in (0, 1)], axis=-1)
+            for step in (-run, 0.0, run)
+        ]
+        straight = np.hypot(*(ends[2] - ends[0]).T) / (2 * run)
+        x, y = ends[1].T
+        room = (x > rim[0] + margin) & (x < rim[2] - margin)
+        room &= (y > rim[1] + margin) & (y < rim[3] - margin)
+        for left, top, right, bottom in taken:
+            room &= (x < left - run) | (x > right + run) | (y < top - run) | (y > bottom + run)
+        for other in centres:
+            room &= np.hypot(*(ends[1] - other).T) > lettering.apart
+        level = 1 - 0.2 * np.abs(ends[2] - ends[0])[:, 1] / (2 * run)
+        score = np.where(room & (straight > 0.9), straight * level, 0.0)
+        k = int(np.argmax(score))
+        if score[k] > best:
+            best, where = float(score[k]), (ends[1][k], ends[2][k] - ends[0][k])
+    return where

@@ -39,6 +39,10 @@ SCALE_LONGEST = 240
 ARROW = 27
 """Sizes of the parts [pixels]; ARROW is half the arrow's length."""
 
+TICK_ROOM = 24.0
+"""What a date on the colour bar keeps free above and below [pixels]: the first and the last are
+named, and others nearer to them are left out."""
+
 FEW_MONTHS = 8
 """So many bars, or fewer, are named by three letters; more by one."""
 
@@ -136,12 +140,21 @@ def _ticks(scale: Scale) -> tuple[list[tuple[float, str]], Callable[[float], str
         step = nice_step(scale.high - scale.low, 6)
         at = np.arange(math.ceil(scale.low / step), math.floor(scale.high / step) + 1) * step
         return [(tick, number(tick, step)) for tick in at], lambda mean: mean_text(mean, step)
+    return _date_ticks(scale, first), lambda mean: f"mean {date_text(first + round(mean))}"
+
+
+def _date_ticks(scale: Scale, first: np.datetime64) -> list[tuple[float, str]]:
+    """First and last day of the colours, and between them months or parts of months."""
     days = np.arange(math.ceil(scale.low), math.floor(scale.high) + 1)
     dates = first + days
     of_month = (dates - dates.astype("M8[M]")).astype(int) + 1
     wanted = (1,) if days.size > 200 else (1, 15) if days.size > 45 else (1, 8, 15, 22)
-    named = [(float(d), date_text(first + d)) for d in days[np.isin(of_month, wanted)]]
-    return named, lambda mean: f"mean {date_text(first + round(mean))}"
+    near = TICK_ROOM / BAR_HEIGHT * (scale.high - scale.low)
+    named = [int(day) for day in days[-1:]]
+    for day in [*days[:1].tolist(), *days[np.isin(of_month, wanted)].tolist()]:
+        if all(abs(day - other) >= near for other in named[:2]):
+            named.append(day)
+    return [(float(day), date_text(first + day)) for day in sorted(named)]
 
 
 def range_text(values: Collection[float]) -> str:
@@ -318,6 +331,7 @@ def draw_legend(
     void: bool,
     colour_map: str = COLOUR_MAP,
     void_words: str = "no data",
+    marked_words: str = "",
 ) -> None:
     """Name what the map shows beside colours, about the height y.
 
@@ -331,6 +345,8 @@ def draw_legend(
         Of the map.
     void_words : str
         What ground without a value is.
+    marked_words : str
+        What the ground without a value is that is hatched the other way; empty if none is.
     """
     entries: list[tuple[Callable[..., None], str]] = []
     if relief:
@@ -338,7 +354,9 @@ def draw_legend(
     if step is not None:
         entries.append((_contour_swatch, f"contours every {step:.6g} m"))
     if void:
-        entries.append((_void_swatch, void_words))
+        entries.append((partial(_void_swatch, False), void_words))
+    if marked_words:
+        entries.append((partial(_void_swatch, True), marked_words))
     for k in range(0, len(entries), 2):
         column = entries[k : k + 2]
         for (draw, text), level in zip(column, (y - 13, y + 13), strict=False):
@@ -356,6 +374,6 @@ def _contour_swatch(page, x, y) -> None:
     page.lines([[(x, y), (x + 34, y)]], colour=LINE, line=1.4, strength=0.7)
 
 
-def _void_swatch(page, x, y) -> None:
-    page.image(x, y - 9, hatch((18, 34)))
+def _void_swatch(other, page, x, y) -> None:
+    page.image(x, y - 9, hatch((18, 34), other=other))
     page.box(x, y - 9, 34, 18, edge=SOFT, line=0.8)

@@ -18,7 +18,7 @@ from terrasol.show.contours import contour_step, draw_contours
 from terrasol.show.graticule import draw_graticule
 from terrasol.show.page import INK, PAPER, SOFT, Page, clip, wrap
 from terrasol.show.picture import Picture, make_picture
-from terrasol.show.relief import paint, shade
+from terrasol.show.relief import hatch, paint, shade
 
 MAP_BOX = (1120, 980)
 """Largest width and height of the map [pixels]."""
@@ -53,6 +53,8 @@ def overview_png(
     colour_map: str = key.COLOUR_MAP,
     first_day: np.datetime64 | None = None,
     void_words: str = "no data",
+    marked: NDArray[np.bool_] | None = None,
+    marked_words: str = "",
 ) -> bytes:
     """Draw the overview map of a run.
 
@@ -83,6 +85,10 @@ def overview_png(
         Where the values are days since one: the key then names dates.
     void_words : str
         What ground without a value is, in the legend.
+    marked : ndarray of bool, optional
+        Ground without a value of another kind, hatched the other way.
+    marked_words : str
+        What that is.
 
     Returns
     -------
@@ -102,7 +108,8 @@ def overview_png(
     blocks = _blocks(values, scale, quantity, unit, mean, monthly_means, notes)
     page, places = _lay_out(picture, blocks)
     _write_head_and_foot(page, title, subtitle, elevation, frame)
-    _draw_map(page, picture, elevation, values, scale, void_words)
+    other = _other_void(picture, energy, values, marked)
+    _draw_map(page, picture, elevation, values, scale, void_words, other, marked_words)
     for (draw, _), (x, y) in zip(blocks, places, strict=True):
         draw(page, x, y)
     return page.png(Title=title, Software=f"terrasol {__version__}")
@@ -178,7 +185,19 @@ def _write_head_and_foot(page, title, subtitle, elevation, frame) -> None:
     page.text(left, page.height - 26, clip(foot, key.SMALL, room), key.SMALL, colour=SOFT)
 
 
-def _draw_map(page, picture, elevation, values, scale, void_words) -> None:
+def _other_void(picture, energy, values, marked) -> NDArray[np.bool_]:
+    """Pixels without a value of which the marked part is the larger."""
+    if marked is None:
+        return np.zeros(picture.shape, bool)
+    void = np.isnan(energy)
+    other, plain = (
+        np.nan_to_num(picture.smooth(picture.average(mask.astype(np.float32))))
+        for mask in (void & marked, void & ~marked)
+    )
+    return picture.ground & ~np.isfinite(values) & (other > plain)
+
+
+def _draw_map(page, picture, elevation, values, scale, void_words, marked, marked_words) -> None:
     """The map, its rim, and the strip below it."""
     left, top = corner = (MARGIN + LATITUDES, HEADER)
     height, width = picture.shape
@@ -186,7 +205,9 @@ def _draw_map(page, picture, elevation, values, scale, void_words) -> None:
     heights = picture.surface(averaged)
     void = picture.ground & ~np.isfinite(values)
     brightness = picture.smooth(shade(averaged, picture.jacobian))
-    page.image(left, top, paint(picture, scale.colours(values), brightness, void, to_rgb(PAPER)))
+    pixels = paint(picture, scale.colours(values), brightness, void, to_rgb(PAPER))
+    pixels[marked] = hatch(picture.shape, other=True)[marked]
+    page.image(left, top, pixels)
     step = contour_step(heights)
     if step is not None:
         draw_contours(page, heights, step, corner)
@@ -197,6 +218,7 @@ def _draw_map(page, picture, elevation, values, scale, void_words) -> None:
     x = key.draw_north(page, x + 56, y - 2, -picture.up)
     relief = bool(np.any(np.abs(brightness[picture.ground] - 0.5) > 0.01))
     key.draw_legend(
-        page, x + 36, y, relief=relief, step=step, void=bool(void.any()),
+        page, x + 36, y, relief=relief, step=step, void=bool((void & ~marked).any()),
         colour_map=scale.colour_map, void_words=void_words,
+        marked_words=marked_words if marked.any() else "",
     )  # fmt: skip

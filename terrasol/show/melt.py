@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from typing import Final
+from typing import Any, Final
 
 import matplotlib
 import numpy as np
@@ -32,8 +32,12 @@ COVER = "#9a9d93"
 MOST_NAMED: Final = 22
 """Bands that the key has room for."""
 
-LATE_IS_PALE: Final = "GnBu_r"
-"""Colours of melt-out: dark where the ground is bare early, pale where snow lies long."""
+NAME: Final = 13.0
+"""Letters of names at curves [pixels]."""
+
+LATE_IS_BRIGHT: Final = "viridis"
+"""Colours of melt-out, dark where the ground is bare early: perceptually even, read by colour-blind
+eyes and in grey, and full at both ends, so that late dates stand out from the paper."""
 
 
 def hydrograph_png(
@@ -115,8 +119,11 @@ def bands_png(tables: SeasonTables, *, title: str, subtitle: str, notes: Sequenc
         values = [_running(tables.bands[:, b, DEPTHS.index(name)], days) for b in kept]
         most = max(float(np.nanmax(v)) for v in values) if kept else 1.0
         _axes(panel, tables.dates, 1.08 * most if most > 0.0 else 1.0, words, unit)
-        for colour, curve in zip(colours, values, strict=False):
-            panel.axes.plot(_days(tables), curve, color=colour, linewidth=2.0 * POINTS_PER_PIXEL)
+        for b, colour, curve in zip(kept, colours, values, strict=False):
+            panel.axes.plot(_days(tables), curve, color=colour, linestyle=_stroke(b)[1],
+                            linewidth=2.0 * POINTS_PER_PIXEL)  # fmt: skip
+        if name != "runoff_input_mm":  # there the curves cross too often
+            _name_curves(panel, tables, kept, values, at_peak=name == "snow_water_mm")
         top += height + GAP
     _draw_band_key(page, tables, kept, colours)
     _foot(page, lines, top - GAP + 62)
@@ -129,11 +136,15 @@ def melt_out_png(
     days: NDArray[np.float32],
     first_day: np.datetime64,
     *,
+    lies: NDArray[np.bool_] | None = None,
     title: str,
     subtitle: str,
     notes: Sequence[str],
 ) -> bytes:
-    """Draw the first day that ended without snow after the greatest, as a map of dates."""
+    """Draw the first day that ended without snow after the greatest, as a map of dates.
+
+    `lies` tells where snow still lies, of the ground without a day.
+    """
     unknown = bool(np.isnan(elevation.heights).any())
     return overview_png(
         elevation,
@@ -144,9 +155,11 @@ def melt_out_png(
         unit=f"date; season from {first_day}",
         notes=notes,
         frame=frame,
-        colour_map=LATE_IS_PALE,
+        colour_map=LATE_IS_BRIGHT,
         first_day=first_day,
-        void_words="no snow came, or it still lies" + (", or no data" if unknown else ""),
+        void_words="no snow came" + (", or no data" if unknown else ""),
+        marked=lies,
+        marked_words="snow still lies",
     )
 
 
@@ -291,14 +304,59 @@ def _key(page: Page, y: float, entries: Sequence[tuple[str, str, str]]) -> None:
         x += text_width(words, SMALL) + 70
 
 
+def _stroke(band: int) -> tuple[list[tuple[int, int]], Any]:
+    """Strokes of a band's line in the key, and its style: neighbours are told apart."""
+    if band % 2:
+        return [(0, 10), (14, 24)], (0, (6, 2))
+    return [(0, 24)], "solid"
+
+
+def _band_name(tables: SeasonTables, band: int) -> str:
+    return f"{tables.edges[band]:g}–{tables.edges[band + 1]:g}"
+
+
+def _every(kept: Sequence[int]) -> int:
+    """How many bands share one name, where they are many."""
+    return max(-(-len(kept) // MOST_NAMED), 1)
+
+
+def _name_curves(
+    panel: Panel,
+    tables: SeasonTables,
+    kept: Sequence[int],
+    values: Sequence[NDArray[np.floating]],
+    at_peak: bool,
+) -> None:
+    """Name each band above the peak of its curve, or where that last falls to half of it.
+
+    A name that would cover another, or pass the diagram's end, is left out.
+    """
+    taken: list[tuple[float, float]] = []
+    for b, curve in list(zip(kept, values, strict=True))[:: -_every(kept)]:
+        most = float(np.nanmax(curve))
+        if not most > 0.0:
+            continue
+        k = int(np.nanargmax(curve)) if at_peak else int(np.flatnonzero(curve >= 0.5 * most)[-1])
+        words = _band_name(tables, b)
+        wide = text_width(words, NAME)
+        x, y = panel.place(k + 0.5, float(curve[k]))
+        x, y = (x - wide / 2.0, y - 0.8 * NAME) if at_peak else (x + 5.0, y)
+        if at_peak:
+            x = min(max(x, panel.x), panel.x + panel.width - wide)
+        clear = all(abs(x - left) > wide or abs(y - level) > NAME for left, level in taken)
+        if clear and x + wide <= panel.x + panel.width:
+            taken.append((x, y))
+            panel.page.text(x, y, words, NAME, halo=PAPER, down="center")
+
+
 def _draw_band_key(page, tables, kept, colours) -> None:
     """Bands from the highest down, with their area; every so many of them where they are many."""
     x, y = WIDTH - MARGIN - 128, float(HEAD)
     page.text(x, y - 18, "Height, m", SMALL, bold=True)
-    step = -(-len(kept) // MOST_NAMED)
+    step = _every(kept)
     for b, colour in list(zip(kept, colours, strict=False))[::-step]:
-        page.lines([[(x, y + 8), (x + 24, y + 8)]], colour=colour, line=3.0)
-        low, high = tables.edges[b], tables.edges[b + 1]
-        page.text(x + 32, y + 14, f"{low:g}–{high:g}", SMALL)
+        strokes = [[(x + k, y + 8), (x + end, y + 8)] for k, end in _stroke(b)[0]]
+        page.lines(strokes, colour=colour, line=3.0)
+        page.text(x + 32, y + 14, _band_name(tables, b), SMALL)
         page.text(x + 32, y + 34, f"{tables.area[b].sum() / 1e6:.2f} km²", 14.0, colour=SOFT)
         y += 46

@@ -13,6 +13,7 @@ from bisect import bisect_right
 from collections.abc import Iterable
 from contextlib import suppress
 from functools import cache, lru_cache
+from os import PathLike
 from pathlib import Path
 from typing import Any, Literal
 
@@ -207,13 +208,17 @@ class Page:
         return out.getvalue()
 
 
-def book(pages: Iterable[Page], **metadata: str) -> bytes:
-    """Bind sheets to one PDF file, one page each; without a date, as `Page.pdf`."""
-    out = io.BytesIO()
-    with PdfPages(out, metadata={**metadata, "CreationDate": None}) as bound:
+def book(place: str | PathLike[str], pages: Iterable[Page], **metadata: str) -> None:
+    """Bind sheets to one PDF file, one page each; without a date, as `Page.pdf`.
+
+    Each sheet is written as it comes, so that pages may be drawn one at a time and forgotten;
+    only their images are kept until the last one.
+    """
+    with open(place, "wb") as out:
+        bound = PdfPages(out, metadata={**metadata, "CreationDate": None})
         for page in pages:
             bound.savefig(page.figure, dpi=PRINT_DPI)
-    return out.getvalue()
+        bound.close()  # not after a failure: fonts take seconds
 
 
 def _font(text: str, size: float, bold: bool) -> FontProperties:

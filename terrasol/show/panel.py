@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 
 import numpy as np
 from matplotlib.axes import Axes
@@ -68,14 +68,16 @@ class Panel:
                 x, self.y + self.height + down, word, self.tick, colour=SOFT, across="center"
             )
 
-    def y_ticks(self, at: Sequence[float], words: bool = True) -> None:
+    def y_ticks(
+        self, at: Sequence[float], words: bool = True, form: Callable[[float], str] = "{:g}".format
+    ) -> None:
         """Draw lines across, and write beside the panel if asked for."""
         low, high = self.axes.get_ylim()
         for value in at:
             self.axes.axhline(value, color=GRID, linewidth=POINTS_PER_PIXEL, zorder=0)
             if words:
                 y = self.y + (high - value) / (high - low) * self.height
-                word = f"{value:g}".replace("-", "\N{MINUS SIGN}")
+                word = form(value).replace("-", "\N{MINUS SIGN}")
                 self.page.text(
                     self.x - 10, y, word, self.tick, colour=SOFT, across="right", down="center"
                 )

@@ -19,8 +19,9 @@ from terrasol.engine.parcels import Parcel
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame
 from terrasol.practice.classes import slope_percent
-from terrasol.show.contours import nice_step
-from terrasol.show.page import INK, POINTS_PER_PIXEL, SOFT
+from terrasol.show.contours import Box, Lettering, name_line, nice_step
+from terrasol.show.page import INK, PAPER, POINTS_PER_PIXEL, SOFT
+from terrasol.show.panel import Panel
 
 RAMP: Final = LinearSegmentedColormap.from_list(
     "slope", ["#e8efd9", "#eed98f", "#e0a052", "#bb5a33", "#832f2a", "#4a1a26"]
@@ -33,7 +34,18 @@ HATCH: Final = "#5b8fd0"
 
 MOST_CONTOURS: Final = 14
 MOST_CELLS: Final = 400
-"""Contours on a map, and cells along its side beyond which contours are traced on fewer."""
+"""Contours on a map, and cells along its side beyond which contours are traced on fewer, and the
+colours of cells go into PDF files as dots."""
+
+FINEST_CONTOURS: Final = 1.0
+"""Least height between contours [m] where no error of the heights is stated (judgement, no source);
+else it is twice their standard error, so that what a line bends around is there."""
+
+FEW_CONTOURS: Final = 8
+"""Contours up to which each is named, not every second."""
+
+LETTERS: Final = Lettering(size=9.0, run=14.0, margin=22.0, apart=46.0)
+"""Names of contours."""
 
 Points = NDArray[np.float64]
 
@@ -123,7 +135,8 @@ def draw_parcel(
         pixels,
         extent=(0.0, columns, rows, 0.0),
         transform=ground.image_transform(piece.window.row, piece.window.column) + axes.transData,
-        interpolation="nearest",
+        # A PDF file then holds the cells themselves, no larger than what is seen of them.
+        interpolation="none" if max(rows, columns) <= MOST_CELLS else "nearest",
         origin="upper",
         aspect="auto",
         clip_path=patch,
@@ -172,34 +185,72 @@ def _runs(mask: NDArray[np.bool_]) -> tuple[NDArray[np.int64], NDArray[np.int64]
 
 
 def draw_contours_around(
-    axes: Axes, elevation: Elevation, ground: GroundMap, limits: Points
+    panel: Panel,
+    elevation: Elevation,
+    ground: GroundMap,
+    error: float | None = None,
+    taken: Sequence[Box] = (),
 ) -> float | None:
-    """Contours of the ground in view; returns their step [m], None on flat ground."""
-    corners = np.array([(x, y) for x in limits[:2] for y in limits[2:]])
+    """Draw contours of the ground in view.
+
+    Parameters
+    ----------
+    panel : Panel
+        The map, its limits set.
+    elevation : Elevation
+    ground : GroundMap
+        From its grid to the map.
+    error : float, optional
+        Standard error of the heights [m].
+    taken : sequence of tuple of float
+        Boxes of the page in which no line may be named.
+
+    Returns
+    -------
+    float or None
+        Height between contours [m]; None where the ground is too flat for any.
+    """
+    place, heights = _heights_in_view(panel.axes, elevation, ground)
+    if min(heights.shape) < 2 or not np.isfinite(heights).any():
+        return None
+    low, high = float(np.nanmin(heights)), float(np.nanmax(heights))
+    finest = FINEST_CONTOURS if error is None else 2.0 * error
+    step = nice_step(max((high - low) / MOST_CONTOURS, finest), 1.0)
+    levels = np.arange(np.floor(low / step) + 1.0, np.ceil(high / step)) * step
+    if not levels.size:
+        return None
+    east, north = ground.metres(*place)
+    found = panel.axes.contour(
+        east, north, heights, levels=levels, colors=CONTOUR,
+        linewidths=0.7 * POINTS_PER_PIXEL, zorder=3,
+    )  # fmt: skip
+    rim = (panel.x, panel.y, panel.x + panel.width, panel.y + panel.height)
+    to_page = found.get_transform() - panel.page.axes.transData
+    centres: list[Points] = []
+    for level, path in zip(levels, found.get_paths(), strict=True):
+        if levels.size < FEW_CONTOURS or round(level / step) % 2 == 0:
+            name_line(
+                panel.page, f"{level:.10g}", path.transformed(to_page), rim, centres, LETTERS,
+                taken=taken, colour=SOFT, halo=PAPER,
+            )  # fmt: skip
+    return step
+
+
+def _heights_in_view(
+    axes: Axes, elevation: Elevation, ground: GroundMap
+) -> tuple[list[NDArray[np.intp]], NDArray[np.float32]]:
+    """Rows and columns, and heights, of the cells in view and two around; of many every so many."""
+    corners = np.array([(x, y) for x in axes.get_xlim() for y in axes.get_ylim()])
     back = np.linalg.solve(ground.jacobian, corners.T)
     columns, rows = back[0] + ground.column, back[1] + ground.row
     shape = elevation.shape
     top, bottom = (int(np.clip(v, 0, shape[0])) for v in (rows.min() - 2, rows.max() + 3))
     left, right = (int(np.clip(v, 0, shape[1])) for v in (columns.min() - 2, columns.max() + 3))
     stride = max(1, max(bottom - top, right - left) // MOST_CELLS)
-    heights = elevation.heights[top:bottom:stride, left:right:stride]
-    if min(heights.shape) < 2 or not np.isfinite(heights).any():
-        return None
-    span = float(np.nanmax(heights) - np.nanmin(heights))
-    if span < 0.5:
-        return None
-    step = nice_step(span, MOST_CONTOURS)
-    levels = np.arange(np.ceil(np.nanmin(heights) / step), np.nanmax(heights) / step + 1) * step
     place = np.meshgrid(
         np.arange(top, bottom, stride), np.arange(left, right, stride), indexing="ij"
     )
-    east, north = ground.metres(*place)
-    found = axes.contour(
-        east, north, heights, levels=levels, colors=CONTOUR,
-        linewidths=0.7 * POINTS_PER_PIXEL, zorder=3,
-    )  # fmt: skip
-    axes.clabel(found, levels[::2], fontsize=6.5, fmt="%g", inline_spacing=2, colors=SOFT)
-    return step
+    return list(place), elevation.heights[top:bottom:stride, left:right:stride]
 
 
 def scale_length(metres: float) -> float:

@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable, Sequence
 from datetime import date
+from functools import partial
 from itertools import pairwise
-from typing import Final
+from typing import Final, Literal
 
 import numpy as np
 from matplotlib import style
@@ -12,15 +14,17 @@ from matplotlib.patches import Wedge
 from numpy.typing import NDArray
 
 from terrasol import __version__
-from terrasol.engine.outputs import MONTH_NAMES
+from terrasol.engine.outputs import MONTH_NAMES, sky_kind
 from terrasol.engine.parcel_figures import LAPSE_EFFECT, month_keys, slope_class_keys
 from terrasol.engine.parcels import Parcel, Survey, numbers_of
+from terrasol.errors import area_unit
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame
 from terrasol.light.minutes import track
 from terrasol.practice.classes import SECTORS, class_names
 from terrasol.practice.degree_days import HUGLIN, WINKLER, Scale
 from terrasol.practice.limits import VINEYARD
+from terrasol.show.contours import Box
 from terrasol.show.page import INK, PAPER, POINTS_PER_PIXEL, SOFT, Page, clip, text_width, wrap
 from terrasol.show.panel import GRID, Panel, steps
 from terrasol.show.parcel_map import (
@@ -32,6 +36,7 @@ from terrasol.show.parcel_map import (
     scale_length,
     slope_colours,
 )
+from terrasol.show.plus_minus import area_plus_minus, plus_minus
 from terrasol.show.skyline import HOUR_LINES, draw_skyline, tracks_of, view_limits
 
 WIDTH, HEIGHT, MARGIN = 827, 1169, 44
@@ -57,6 +62,9 @@ UNKNOWN: Final = "nothing of the ground is known"
 
 MOST_TIMED, MOST_LETTERED = 13, 36
 """Months whose first and last sun are written out, and months that are named."""
+
+TIMES: Final = 13.0
+"""Height that a written time takes above or below a bar [pixels]."""
 
 SUN_YEAR: Final = 2025
 """Whose sun the paths show where the period is a typical year."""
@@ -85,7 +93,6 @@ def parcel_page(
     """
     page = Page(WIDTH, HEIGHT)
     page.axes.set_zorder(10)  # what is written stands above what is drawn
-    right = WIDTH - MARGIN
     with style.context("default"):
         _head(page, survey, parcel, title)
         _map(page, survey, parcel, elevation, frame, (MARGIN, 108, 378, 270))
@@ -93,13 +100,24 @@ def parcel_page(
         _classes(page, survey, parcel, MARGIN, 430)
         _rose(page, survey, parcel, (376, 430, 136, 136))
         _sizes(page, survey, parcel, 552, 430)
-        _months(page, survey, parcel, (MARGIN + 22, 632, 326, 92))
-        _days(page, survey, parcel, (right - 336, 632, 336, 92))
-        _skyline(page, survey, parcel, (MARGIN + 22, 797, INNER - 22, 110))
-        _rows(page, survey, parcel, (MARGIN + 34, 967, 314, 72))
-        _warmth(page, survey, parcel, (right - 336, 967, 336))
+        _light(page, survey, parcel)
         _foot(page, survey)
     return page
+
+
+def _light(page: Page, survey: Survey, parcel: Parcel) -> None:
+    """Diagrams of light and warmth; what was not asked for leaves its room to the others."""
+    rows, warm = survey.settings.rows is not None, survey.settings.asked.warmth is not None
+    tall, sky = (92.0, 110.0) if rows or warm else (150.0, 210.0)
+    half, right = 336.0, WIDTH - MARGIN
+    _months(page, survey, parcel, (MARGIN + 22, 632, half - 10, tall))
+    _days(page, survey, parcel, (right - half, 632, half, tall))
+    _skyline(page, survey, parcel, (MARGIN + 22, 705 + tall, INNER - 22, sky))
+    if rows:
+        _rows(page, survey, parcel, (MARGIN + 34, 967, (half - 22 if warm else INNER - 34), 72))
+    if warm:
+        left = right - half if rows else MARGIN
+        _warmth(page, survey, parcel, (left, 967, right - left))
 
 
 def heading(page: Page, x: float, y: float, words: str, more: str = "") -> None:
@@ -145,16 +163,27 @@ def _map(page, survey, parcel, elevation, frame, box) -> None:
     path = outline_path(parcel.outline, elevation, ground)
     limits = frame_around([path], width, height)
     panel.limits(*limits)
-    step = draw_contours_around(panel.axes, elevation, ground, limits)
+    step = draw_contours_around(panel, elevation, ground, rmse_of(survey), [north_box(panel)])
     draw_parcel(panel.axes, parcel, path, ground, survey.settings.asked.slope_edges)
     panel.limits(*limits)
     scale_and_north(page, panel, limits, y + height + 24)
     notes = [] if step is None else [f"contours every {step:g} m"]
     if parcel.patches is not None:
         notes.append("hatched: fails the rule")
-    if parcel.numbers["unknown_ha_map"] > 0.0:
-        notes.append("blank: unknown")
     page.text(x, y + height + 24, "  ·  ".join(notes), SMALL, colour=SOFT)
+    blank_note(page, panel, [parcel])
+
+
+def blank_note(page: Page, panel: Panel, parcels: Sequence[Parcel]) -> None:
+    """Say in the map's lower corner why parts of parcels have no colour, if any has none."""
+    reasons = (
+        ("unknown", any(not p.piece.known[p.piece.area > 0.0].all() for p in parcels)),
+        ("outside the raster", any(p.piece.inside < 1.0 for p in parcels)),
+    )
+    words = " or ".join(reason for reason, holds in reasons if holds)
+    if words:
+        y = panel.y + panel.height - 8
+        page.text(panel.x + 8, y, f"blank in an outline: {words}", SMALL, halo=PAPER)
 
 
 def scale_and_north(page: Page, panel: Panel, limits: NDArray[np.float64], y: float) -> None:
@@ -165,9 +194,21 @@ def scale_and_north(page: Page, panel: Panel, limits: NDArray[np.float64], y: fl
     right = panel.x + panel.width
     page.lines([[(right - pixels, y - 3), (right, y - 3)]], colour=INK, line=2.4)
     page.text(right - pixels - 6, y, f"{length:g} m", SMALL, across="right")
-    x, top = right - 16, panel.y + 12
+    left, top, right, _ = north_box(panel)
+    x = (left + right) / 2.0
     page.shape([(x, top), (x - 6, top + 20), (x, top + 15), (x + 6, top + 20)], fill=INK)
     page.text(x, top + 32, "N", SMALL, bold=True, across="center", halo=PAPER)
+
+
+def north_box(panel: Panel) -> Box:
+    """Where the arrow to the north stands on a map."""
+    right = panel.x + panel.width
+    return right - 22.0, panel.y + 12.0, right - 10.0, panel.y + 44.0
+
+
+def rmse_of(survey: Survey) -> float | None:
+    """Standard error of the heights [m], if one was stated."""
+    return None if survey.settings.error is None else survey.settings.error.rmse
 
 
 def _facts(page: Page, survey: Survey, parcel: Parcel, x: float, y: float) -> None:
@@ -190,8 +231,8 @@ def facts(survey: Survey, parcel: Parcel) -> list[tuple[str, str]]:
         return with_error(parcel, name, form, factor)
 
     rows = [
-        ("Area on the map", f"{n['map_area_ha']:.2f} ha"),
-        ("Area of the slope's surface", f"{n['surface_area_ha']:.2f} ha"),
+        *_areas(n),
+        ("Area of the slope's surface", area_plus_minus(n["surface_area_ha"], None)),
         ("Height, mean", f"{n['height_mean_m']:.0f} m"),
         ("Slope, mean", f"{told('slope_mean_percent', '.1f')} %"),
         ("Slope of the middle 80 %",
@@ -204,25 +245,36 @@ def facts(survey: Survey, parcel: Parcel) -> list[tuple[str, str]]:
     ]  # fmt: skip
     if asked.rule is not None:
         share = f"{100 * n['rule_share']:.0f} %"
-        rows.append(("Meets the rule", f"{told('rule_ha_map', '.2f')} ha, {share}"))
+        rows.append(("Meets the rule", f"{area_with_error(parcel, 'rule_ha_map')}, {share}"))
     rows += _warm_facts(parcel)
     if parcel.rows is not None:
         rows.append(("Rows: fall line", _azimuth(n["rows_fall_line_deg"])))
         rows.append(("Rows: sides most alike", _azimuth(n["rows_even_azimuth_deg"])))
-    if n["unknown_ha_map"] > 0.0:
-        rows.append(("Unknown ground", f"{n['unknown_ha_map']:.2f} ha"))
-    if n["outside_share"] > 5e-4:
-        rows.append(("Outside the raster", f"{100 * n['outside_share']:.1f} %"))
     return [(name, "unknown" if "nan" in value else value) for name, value in rows]
+
+
+def _areas(numbers: dict[str, float]) -> list[tuple[str, str]]:
+    """Area as drawn, and what of it is on the raster and known, where that is less."""
+    rows = [("Area drawn, on the map", area_plus_minus(numbers["drawn_ha_map"], None))]
+    if numbers["outside_share"] > 0.0:
+        rows.append(("  of it on the raster", area_plus_minus(numbers["map_area_ha"], None)))
+    if numbers["unknown_ha_map"] > 0.0:
+        rows.append(("  of it known", area_plus_minus(numbers["known_ha_map"], None)))
+    return rows
+
+
+def area_with_error(parcel: Parcel, name: str) -> str:
+    """An area of some kind with its standard error behind it, if there is one, and its unit."""
+    doubt = parcel.doubts.get(name)
+    error = None if doubt is None else doubt.standard_error
+    return area_plus_minus(parcel.numbers[name], error, parcel.numbers["known_ha_map"])
 
 
 def with_error(parcel: Parcel, name: str, form: str, factor: float = 1.0) -> str:
     """A figure with its standard error behind it, if there is one."""
-    text = format(parcel.numbers[name] * factor, form)
     doubt = parcel.doubts.get(name)
-    if doubt is None or not np.isfinite(doubt.standard_error):
-        return text
-    return f"{text} ± {format(doubt.standard_error * factor, form)}"
+    error = None if doubt is None else doubt.standard_error * factor
+    return plus_minus(parcel.numbers[name] * factor, error, form)
 
 
 def _warm_facts(parcel: Parcel) -> list[tuple[str, str]]:
@@ -258,12 +310,15 @@ def _faces(numbers: dict[str, float]) -> str:
 def _classes(page: Page, survey: Survey, parcel: Parcel, x: float, y: float) -> None:
     """Hectares per class of slope, as bars with numbers."""
     edges = survey.settings.asked.slope_edges
-    heading(page, x, y, "Slope classes", "hectares of map")
+    heading(page, x, y, "Slope classes", "areas of map")
+    if not parcel.piece.known.any():
+        page.text(x, y + 22, UNKNOWN, TEXT, colour=SOFT)
+        return
     names, keys = class_names(edges, "%"), slope_class_keys(edges)
     values = [parcel.numbers[f"{key}_ha_map"] for key in keys]
-    total = max(np.nansum(values), 1e-9)
+    total = max(sum(values), 1e-9)
     pitch = min(23.0, 136.0 / len(names))
-    longest = max(np.nanmax(np.nan_to_num(values)), 1e-9)
+    longest = max(*values, 1e-9)
     for k, (name, value, colour) in enumerate(
         zip(names, values, slope_colours(len(names)), strict=True)
     ):
@@ -271,23 +326,27 @@ def _classes(page: Page, survey: Survey, parcel: Parcel, x: float, y: float) -> 
         page.text(
             x + 88, level + 0.68 * pitch, name.replace(" and more", " up"), TEXT, across="right"
         )
-        long = (130.0 - 46.0 * bool(parcel.doubts)) * np.nan_to_num(value) / longest
+        long = (130.0 - 46.0 * bool(parcel.doubts)) * value / longest
         page.box(x + 96, level + 3, max(long, 0.6), pitch - 5, fill=colour, edge=SOFT, line=0.5)
-        told = with_error(parcel, f"{keys[k]}_ha_map", ".2f")
-        words = f"{told} ha  {100 * value / total:.0f} %" if np.isfinite(value) else "unknown"
+        told = area_with_error(parcel, f"{keys[k]}_ha_map")
+        words = f"{told}  {100 * value / total:.0f} %"
         page.text(x + 102 + long, level + 0.68 * pitch, words, TEXT)
 
 
 def _rose(page: Page, survey: Survey, parcel: Parcel, box) -> None:
     """Hectares per sector of aspect: petals whose area is the ground's."""
     x, y, width, height = box
-    heading(page, x - 4, y, "Aspect", "ha by sector")
+    areas = np.nan_to_num([parcel.numbers[f"aspect_{s.lower()}_ha_map"] for s in SECTORS])
+    most = max(areas.max(), 1e-9)
+    unit, factor, _ = area_unit(areas.max())
+    heading(page, x - 4, y, "Aspect", f"{unit.replace('2', '²')} by sector")
+    if not parcel.piece.known.any():
+        page.text(x - 4, y + 22, UNKNOWN, TEXT, colour=SOFT)
+        return
     panel = Panel(page, x, y + 8, width, height, tick=TICK)
     panel.limits(-1.3, 1.3, -1.3, 1.3)
     axes = panel.axes
     axes.spines["bottom"].set_visible(False)
-    areas = np.nan_to_num([parcel.numbers[f"aspect_{s.lower()}_ha_map"] for s in SECTORS])
-    most = max(areas.max(), 1e-9)
     for radius in (0.5, 1.0):
         axes.add_patch(_ring(radius))
     for k, (name, area) in enumerate(zip(SECTORS, areas, strict=True)):
@@ -302,10 +361,11 @@ def _rose(page: Page, survey: Survey, parcel: Parcel, box) -> None:
             px, py = panel.place(
                 max(radius * 0.62, 0.3) * np.cos(turn), max(radius * 0.62, 0.3) * np.sin(turn)
             )
-            page.text(px, py + 4, f"{area:.2g}" if area < 1 else f"{area:.1f}", TICK,
+            told = area * factor
+            page.text(px, py + 4, f"{told:.2g}" if told < 1 else f"{told:.1f}", TICK,
                       across="center", halo=PAPER)  # fmt: skip
-    flat = parcel.numbers["aspect_flat_ha_map"]
-    words = f"flat (under {survey.settings.asked.flat_below:g} %): {np.nan_to_num(flat):.2f} ha"
+    flat = area_plus_minus(parcel.numbers["aspect_flat_ha_map"], None)
+    words = f"flat (under {survey.settings.asked.flat_below:g} %): {flat}"
     page.text(x + width / 2, y + height + 20, words, SMALL, colour=SOFT, across="center")
 
 
@@ -321,26 +381,29 @@ def _sizes(page: Page, survey: Survey, parcel: Parcel, x: float, y: float) -> No
     looks = [(survey.cell_size, parcel.numbers)]
     looks += [(size, numbers_of(figures)) for size, figures in parcel.coarser]
     columns = np.linspace(right - 58.0 * (len(looks) - 1), right, len(looks))
-    rows = [("cells of", None, ""), ("mean slope", "slope_mean_percent", "{:.1f} %")]
+    area = partial(area_plus_minus, error=None)
+    rows: list[tuple[str, str, Callable[[float], str]]] = [
+        ("mean slope", "slope_mean_percent", "{:.1f} %".format)
+    ]
     steep = slope_class_keys(survey.settings.asked.slope_edges)[-1]
     edge = survey.settings.asked.slope_edges[-1]
-    rows.append((f"over {edge:g} %", f"{steep}_ha_map", "{:.2f} ha"))
-    rows.append(("by level", "share_of_level_season", "{:.3f}"))
-    rows.append(("sun hours", "sun_hours_season_h", "{:.0f} h"))
+    rows.append((f"over {edge:g} %", f"{steep}_ha_map", area))
+    rows.append(("by level", "share_of_level_season", "{:.3f}".format))
+    rows.append(("sun hours", "sun_hours_season_h", "{:.0f} h".format))
     if survey.settings.asked.rule is not None:
-        rows.append(("rule", "rule_ha_map", "{:.2f} ha"))
+        rows.append(("rule", "rule_ha_map", area))
     if "winkler_mean_c_days" in parcel.numbers:
-        rows.append(("Winkler", "winkler_mean_c_days", "{:.0f}"))
-    for k, (name, key, form) in enumerate(rows):
+        rows.append(("Winkler", "winkler_mean_c_days", "{:.0f}".format))
+    page.text(x, y + 20, "cells of", TEXT, colour=SOFT)
+    for at, (size, _) in zip(columns, looks, strict=True):
+        page.text(at, y + 20, f"{size:.3g} m", TEXT, across="right", bold=True)
+    for k, (name, key, told) in enumerate(rows, 1):
         level = y + 20 + k * 17.5
         page.text(x, level, name, TEXT, colour=SOFT)
-        for at, (size, numbers) in zip(columns, looks, strict=True):
-            if key is None:
-                words = f"{size:.3g} m"
-            else:
-                value = numbers.get(key, np.nan)
-                words = form.format(value) if np.isfinite(value) else "–"
-            page.text(at, level, words, TEXT, across="right", bold=key is None)
+        for at, (_, numbers) in zip(columns, looks, strict=True):
+            value = numbers.get(key, np.nan)
+            words = told(value) if np.isfinite(value) else "–"
+            page.text(at, level, words, TEXT, across="right")
     page.lines([[(x, y + 25), (right, y + 25)]], colour=SOFT, line=0.6)
 
 
@@ -354,6 +417,10 @@ def _months(page: Page, survey: Survey, parcel: Parcel, box) -> None:
     days = np.array(asked.period.month_days, float)
     means = _monthly(parcel, "irradiation_{}_mj_m2_slope", survey) / days
     level = parcel.level.months / days
+    if not np.isfinite(means).any():
+        words = "the light is unknown" if parcel.piece.known.any() else UNKNOWN
+        page.text(x - 22, y + 20, words, TEXT, colour=SOFT)
+        return
     panel = Panel(page, x, y, width, height, tick=TICK)
     top = np.nanmax([np.nanmax(np.nan_to_num(means)), np.nanmax(np.nan_to_num(level)), 1.0]) * 1.12
     panel.limits(-0.6, len(days) - 0.4, 0.0, top)
@@ -393,25 +460,29 @@ def _days(page: Page, survey: Survey, parcel: Parcel, box) -> None:
         page.text(x, y + 20, words, TEXT, colour=SOFT)
         return
     panel = Panel(page, x, y, width, height, tick=TICK)
-    low, high = np.floor(np.nanmin(first)) - 1.2, np.ceil(np.nanmax(last)) + 1.0
-    panel.limits(-0.6, len(first) - 0.4, high, low)
-    panel.axes.spines["bottom"].set_visible(False)
+    start, end = float(np.nanmin(first)), float(np.nanmax(last))
+    margin = TIMES * max(end - start, 1.0) / (height - 2.0 * TIMES)
+    panel.limits(-0.6, len(first) - 0.4, start - margin, end + margin)
+    hours = (
+        steps(start - margin, end + margin, 4)
+        if end - start < 6.0
+        else ([float(h) for h in range(-24, 49, 3) if start - margin < h < end + margin])
+    )
+    panel.y_ticks(hours, form=_clock_text)
     at, few = np.arange(len(first)), len(first) <= MOST_TIMED
     wide = min(9.0, 0.5 * width / len(first)) * POINTS_PER_PIXEL
-    if not few:
-        panel.y_ticks(steps(low, high, 5))
     for k in at:
         if np.isfinite(first[k]):
             panel.axes.vlines(k, first[k], last[k], color="#f0d9ac", linewidth=wide,
                               zorder=2)  # fmt: skip
-            for hour, down in ((first[k], -4.0), (last[k], 11.0)) if few else ():
+            for hour, down in ((first[k], 10.0), (last[k], -4.0)) if few else ():
                 px, py = panel.place(float(k), hour)
-                page.text(px, py + down, _clock_text(hour), 8.2, across="center")
+                page.text(px, py + down, _clock_text(hour), 8.2, across="center", halo=PAPER)
     panel.x_ticks(list(at), _month_letters(survey), down=TICK + 5)
     if not few:
         return
-    hours = _monthly(parcel, "sun_hours_{}_h", survey) / survey.settings.asked.period.month_days
-    panel.x_ticks(list(at), [f"{h:.1f}" for h in hours], down=TICK + 18)
+    sunny = _monthly(parcel, "sun_hours_{}_h", survey) / survey.settings.asked.period.month_days
+    panel.x_ticks(list(at), [f"{h:.1f}" for h in sunny], down=TICK + 18)
     page.text(x - 4, y + height + TICK + 18, "h a day", TICK, colour=SOFT, across="right")
 
 
@@ -455,11 +526,9 @@ def _skyline(page: Page, survey: Survey, parcel: Parcel, box) -> None:
 def _rows(page: Page, survey: Survey, parcel: Parcel, box) -> None:
     """Energy on both sides of rows by their direction, and what they climb."""
     x, y, width, height = box
-    asked = survey.settings.rows
-    if asked is None or parcel.rows is None:
+    if parcel.rows is None:
         heading(page, x - 34, y - 14, "Direction of rows")
-        words = "no row spacing was given" if asked is None else UNKNOWN
-        page.text(x - 34, y + 8, words, TEXT, colour=SOFT)
+        page.text(x - 34, y + 8, UNKNOWN, TEXT, colour=SOFT)
         return
     rows = parcel.rows
     heading(
@@ -470,8 +539,9 @@ def _rows(page: Page, survey: Survey, parcel: Parcel, box) -> None:
     panel = Panel(page, x, y, width, height, tick=TICK)
     both = np.concatenate([right, left])
     margin = 0.08 * np.ptp(both) + 1.0
-    panel.limits(0.0, 180.0, both.min() - margin, both.max() + margin)
-    panel.y_ticks(steps(both.min() - margin, both.max() + margin, 4))
+    low, high = both.min() - margin, both.max() + 3.0 * margin  # room above for words
+    panel.limits(0.0, 180.0, low, high)
+    panel.y_ticks(steps(low, high, 4))
     for values, colour, line in ((right, RIGHT_SIDE, 1.8), (left, LEFT_SIDE, 1.8)):
         panel.axes.plot(azimuth, values, color=colour, linewidth=line * POINTS_PER_PIXEL, zorder=3)
     panel.axes.plot(azimuth, (right + left) / 2.0, color=BOTH, linewidth=1.2 * POINTS_PER_PIXEL,
@@ -480,12 +550,13 @@ def _rows(page: Page, survey: Survey, parcel: Parcel, box) -> None:
     panel.x_ticks(list(at), [f"{a}°" for a in at], down=TICK + 5)
     climbed = np.append(rows.steepest, rows.steepest[0])
     panel.x_ticks(list(at), [f"{climbed[a // 5]:.0f} %" for a in at], down=TICK + 18)
-    page.text(x - 14, y + height + TICK + 18, "climb", TICK, colour=SOFT, across="right")
+    page.text(x - 18, y + height + TICK + 18, "climb", TICK, colour=SOFT, across="right")
     if np.isfinite(rows.fall_line):
         panel.axes.axvline(rows.fall_line, color=SOFT, linewidth=1.0 * POINTS_PER_PIXEL, zorder=1)
-        px, _ = panel.place(rows.fall_line, both.max())
-        page.text(float(np.clip(px, x + 22, x + width - 22)), y + height - 3, "fall line", 8.5,
-                  colour=SOFT, across="center", halo=PAPER)  # fmt: skip
+        px, _ = panel.place(rows.fall_line, high)
+        across: Literal["left", "right"] = "left" if rows.fall_line < 140.0 else "right"
+        px += 5.0 if across == "left" else -5.0
+        page.text(px, y + 7, "fall line", 8.5, colour=SOFT, across=across, halo=PAPER)
     legend = (
         ("right side", RIGHT_SIDE),
         ("left side, looking along the row", LEFT_SIDE),
@@ -500,11 +571,10 @@ def _rows(page: Page, survey: Survey, parcel: Parcel, box) -> None:
 def _warmth(page: Page, survey: Survey, parcel: Parcel, box) -> None:
     """Degree-days on the scales of their classes."""
     x, y, width = box
-    if survey.settings.asked.warmth is None:
-        heading(page, x, y - 14, "Degree-days")
-        page.text(x, y + 8, "no temperatures were given", TEXT, colour=SOFT)
-        return
     heading(page, x, y - 14, "Degree-days", "°C day over 10 °C; least, mean and greatest cell")
+    if not parcel.piece.known.any():
+        page.text(x, y + 8, UNKNOWN, TEXT, colour=SOFT)
+        return
     level = y + 8.0
     for name, words, scale in (
         ("winkler", "Winkler", WINKLER),
@@ -541,7 +611,7 @@ def _draw_scale(page: Page, parcel: Parcel, name: str, words: str, scale: Scale,
         if text_width(label, size) < at(b) - at(a) - 1:
             page.text((at(a) + at(b)) / 2, y, label, size, colour=SOFT, across="center")
     for edge in edges:
-        page.text(at(edge), y + 28, f"{edge:.0f}", 8.0, colour=SOFT, across="center")
+        page.text(at(edge), y + 31, f"{edge:.0f}", 8.0, colour=SOFT, across="center")
     if np.isfinite(ends[1]):
         page.box(at(ends[0]), y + 6, max(at(ends[2]) - at(ends[0]), 3.0), 10, fill=SUNNY)
         page.lines([[(at(ends[1]), y + 2), (at(ends[1]), y + 20)]], colour=INK, line=1.6)
@@ -552,29 +622,29 @@ def _draw_scale(page: Page, parcel: Parcel, name: str, words: str, scale: Scale,
 def notes_of(survey: Survey) -> list[str]:
     """What every sheet says of its numbers."""
     asked, light = survey.settings.asked, survey.settings.light
-    sky = "a sky without clouds (potential)" if light.sky is None else "the sky that was given"
+    sky = "a clear sky (potential)" if sky_kind(light) == "clear" else "the sky that was given"
     notes = [
         f"Season {asked.season_words}, {asked.period.label}. Energy under {sky}, per area of slope,"
-        f" terrain shade and reflection counted, from cells of {survey.cell_size:.3g} m. Hectares"
-        " are of level map area, true on the ellipsoid.",
+        f" reflection counted, from cells of {survey.cell_size:.3g} m. {survey.shade} Hectares of"
+        " level map area, true on the ellipsoid.",
     ]
     if survey.settings.rows is not None:
         rows = survey.settings.rows
         notes.append(
-            f"Rows {rows.spacing:g} m apart, leaf wall {rows.height:g} m high and {rows.width:g} m"
+            f"Rows {rows.spacing:g} m apart, leaf wall {rows.height:g} m high, {rows.width:g} m"
             " wide, endless on the parcel's mean plane; climb: steepest cell along the rows."
         )
     if asked.warmth is not None:
         station, lapse = asked.warmth.station, asked.warmth.lapse
         told = f"{lapse:g}" if isinstance(lapse, float | int) else "monthly"
         notes.append(
-            f"Degree-days from {station.basis} of a station at {station.height:.0f} m, lapse rate"
+            f"Degree-days from {station.basis}, station at {station.height:.0f} m, lapse rate"
             f" {told} K/km."
         )
     error = survey.settings.error
     if error is not None:
         notes.append(
-            f"± one standard error from an error of heights of {error.rmse:g} m"
+            f"± or a range: one standard error from an error of heights of {error.rmse:g} m"
             f" ({error.realisations} grounds)."
         )
     if asked.rule is not None:

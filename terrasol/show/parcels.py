@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from typing import Final
 
 import numpy as np
+import shapely
 from matplotlib import style
+from matplotlib.path import Path
 
 from terrasol import __version__
 from terrasol.engine.parcel_figures import slope_class_keys
@@ -15,6 +17,7 @@ from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame
 from terrasol.practice.classes import SECTORS, class_names
 from terrasol.practice.limits import VINEYARD
+from terrasol.show.contours import Box
 from terrasol.show.page import INK, PAPER, POINTS_PER_PIXEL, SOFT, Page, clip, text_width, wrap
 from terrasol.show.panel import GRID, Panel
 from terrasol.show.parcel_map import (
@@ -34,10 +37,13 @@ from terrasol.show.parcel_sheet import (
     TEXT,
     TITLE,
     WIDTH,
+    area_with_error,
+    blank_note,
     heading,
+    north_box,
     notes_of,
+    rmse_of,
     scale_and_north,
-    with_error,
 )
 
 MAP_HEIGHTS: Final = 360.0, 560.0
@@ -118,18 +124,41 @@ def _map(page: Page, survey: Survey, elevation: Elevation, frame: Frame, height:
     paths = [outline_path(parcel.outline, elevation, ground) for parcel in survey.order]
     limits = frame_around(paths, INNER, height, 0.08)
     panel.limits(*limits)
-    step = draw_contours_around(panel.axes, elevation, ground, limits)
     for parcel, path in zip(survey.order, paths, strict=True):
         draw_parcel(panel.axes, parcel, path, ground, survey.settings.asked.slope_edges)
     panel.limits(*limits)
-    for number, path in enumerate(paths, 1):
-        box = path.get_extents()
-        x, y = panel.place(box.x1, (box.y0 + box.y1) / 2.0)
-        page.text(x + 4, y + 4, f"{number}", TEXT, bold=True, halo=PAPER)
+    parts = [
+        [outline_path(part, elevation, ground) for part in shapely.get_parts(parcel.outline)]
+        for parcel in survey.order
+    ]
+    taken = [north_box(panel), *_number_parcels(panel, parts)]
+    step = draw_contours_around(panel, elevation, ground, rmse_of(survey), taken)
+    panel.limits(*limits)
     scale_and_north(page, panel, limits, height + 108)
+    blank_note(page, panel, survey.parcels)
     if step is not None:
         words = f"contours every {step:g} m; numbers as in the table"
         page.text(MARGIN, height + 108, words, SMALL, colour=SOFT)
+
+
+def _number_parcels(panel: Panel, parts: Sequence[Sequence[Path]]) -> list[Box]:
+    """Number each part of each parcel beside it; returns the boxes of parts and numbers."""
+    boxes: list[Box] = []
+    numbers: list[Box] = []
+    for number, of_one in enumerate(parts, 1):
+        words = f"{number}"
+        wide = text_width(words, TEXT, bold=True)
+        for part in of_one:
+            box = part.get_extents()
+            x, y = panel.place(box.x1, (box.y0 + box.y1) / 2.0)
+            while any(
+                abs(x - left) < wide and abs(y + 4 - low) < TEXT for left, _, _, low in numbers
+            ):
+                y += TEXT  # below the number of a parcel that ends at the same place
+            panel.page.text(x + 4, y + 4, words, TEXT, bold=True, halo=PAPER)
+            numbers.append((x, y - TEXT / 2.0, x + 4 + wide, y + 4))
+            boxes.append((*panel.place(box.x0, box.y1), *panel.place(box.x1, box.y0)))
+    return boxes + numbers
 
 
 def _legend(page: Page, survey: Survey, y: float) -> None:
@@ -155,8 +184,10 @@ def _columns(survey: Survey) -> list[tuple[str, float, Cell]]:
 
         return cell
 
+    whole = all(p.numbers["known_ha_map"] == p.numbers["drawn_ha_map"] for p in survey.parcels)
     columns = [
-        ("ha", 46.0, number("map_area_ha", "{:.2f}")),
+        ("ha drawn", 58.0, _area("drawn_ha_map")),
+        *([] if whole else [("known", 48.0, _area("known_ha_map"))]),
         ("slope", 42.0, number("slope_mean_percent", "{:.0f} %")),
         ("faces", 38.0, _faces),
         ("MJ/m²", 48.0, number("irradiation_season_mj_m2_slope", "{:.0f}")),
@@ -165,7 +196,7 @@ def _columns(survey: Survey) -> list[tuple[str, float, Cell]]:
     ]
     if survey.settings.asked.rule is not None:
         width = 82.0 if survey.settings.error else 48.0
-        columns.append(("rule ha", width, lambda p: with_error(p, "rule_ha_map", ".2f")))
+        columns.append(("rule ha", width, _area("rule_ha_map")))
     if survey.settings.asked.warmth is not None:
         columns.append(("Winkler", 48.0, number("winkler_mean_c_days", "{:.0f}")))
     if survey.settings.rows is not None:
@@ -175,8 +206,20 @@ def _columns(survey: Survey) -> list[tuple[str, float, Cell]]:
     return columns
 
 
+def _area(key: str) -> Cell:
+    """An area with its standard error, in hectares as the head says unless it is small."""
+
+    def cell(parcel: Parcel) -> str:
+        known = np.isfinite(parcel.numbers[key])
+        return area_with_error(parcel, key).removesuffix(" ha") if known else "–"
+
+    return cell
+
+
 def _faces(parcel: Parcel) -> str:
     """The sector of the mean aspect."""
+    if not parcel.piece.known.any():
+        return "–"
     degrees = parcel.numbers["aspect_mean_deg"]
     return SECTORS[int((degrees + 22.5) // 45) % 8] if np.isfinite(degrees) else "flat"
 

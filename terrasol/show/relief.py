@@ -33,6 +33,8 @@ tenth of the bar's lightness."""
 
 VOID_GREY = (0.82, 0.82, 0.80)
 VOID_LINE = (0.64, 0.64, 0.62)
+OTHER_GREY = (0.90, 0.93, 0.96)
+OTHER_LINE = (0.42, 0.58, 0.74)
 VOID_SPACING = 9
 """Void ground: grey with diagonal lines this many pixels apart."""
 
@@ -113,8 +115,9 @@ def paint(
     return np.clip(image, 0, 1)
 
 
-def hatch(shape: tuple[int, int]) -> NDArray[np.float32]:
-    """The void pattern, shape (height, width, 3)."""
+def hatch(shape: tuple[int, int], other: bool = False) -> NDArray[np.float32]:
+    """The void pattern, shape (height, width, 3), or the other: blue lines that fall."""
     y, x = np.ogrid[0 : shape[0], 0 : shape[1]]
-    line = ((x + y) % VOID_SPACING < 2)[..., None]
-    return np.where(line, VOID_LINE, VOID_GREY).astype(np.float32)
+    line = (((x - y if other else x + y) % VOID_SPACING) < 2)[..., None]
+    pair = (OTHER_LINE, OTHER_GREY) if other else (VOID_LINE, VOID_GREY)
+    return np.where(line, *pair).astype(np.float32)

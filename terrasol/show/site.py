@@ -34,7 +34,7 @@ from terrasol.show.page import (
     wrap,
 )
 from terrasol.show.panel import GRID, Panel, steps
-from terrasol.show.picture import make_picture
+from terrasol.show.picture import Picture, make_picture
 from terrasol.show.relief import paint, shade
 from terrasol.show.site_text import (
     clock_time,
@@ -42,6 +42,7 @@ from terrasol.show.site_text import (
     error_words,
     facts,
     lost_words,
+    month_head,
     month_rows,
 )
 from terrasol.show.skyline import (
@@ -53,6 +54,9 @@ from terrasol.show.skyline import (
     view_limits,
 )
 from terrasol.sky.period import TYPICAL_SUN_YEAR
+
+SLACK: Final = 0.94
+"""Share of a width that small letters may fill: printed, they run a little longer than measured."""
 
 A4: Final = (827, 1169)
 """Width and height of the sheet of one place [pixels of 1/100 inch]; two make an A3."""
@@ -99,7 +103,7 @@ HEIGHTS: Final = {"horizon": 178, "months": 150, "year": 160}
 BARS: Final = 330
 """Measures of the sheet [pixels]."""
 
-COLUMN_ENDS: Final = np.array([0.29, 0.40, 0.52, 0.70, 0.83, 1.0])
+COLUMN_ENDS: Final = np.array([0.27, 0.38, 0.56, 0.74, 0.86, 1.0])
 """Right ends of the table's columns, as shares of its width."""
 
 Values = NDArray[np.float64]
@@ -115,6 +119,20 @@ class _Common:
     days: tuple[date, ...]
     notes: tuple[str, ...]
     source: str
+    contours: float | None
+    """Height between contour lines of the small maps [m]."""
+
+
+@dataclass(frozen=True, eq=False)
+class _Around:
+    """The ground around a place, and how its small map lies."""
+
+    ground: Elevation
+    frame: Frame
+    row: int
+    column: int
+    picture: Picture
+    heights: NDArray[np.float32]
 
 
 def site_page(
@@ -147,10 +165,11 @@ def site_page(
     """
     page = Page(A4[0] * len(sites), A4[1])
     frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
-    common = _common(sites, tuple(days), tuple(notes), source)
+    maps = [_around(elevation, frame, site) for site in sites]
+    common = _common(sites, tuple(days), tuple(notes), source, maps)
     with style.context("default"):
-        for number, site in enumerate(sites):
-            _Sheet(page, A4[0] * number, site, common).draw(elevation, frame)
+        for number, (site, ground) in enumerate(zip(sites, maps, strict=True)):
+            _Sheet(page, A4[0] * number, site, common).draw(ground)
     return page
 
 
@@ -165,7 +184,11 @@ def page_pdf(page: Page, title: str) -> bytes:
 
 
 def _common(
-    sites: Sequence[Site], days: tuple[date, ...], notes: tuple[str, ...], source: str
+    sites: Sequence[Site],
+    days: tuple[date, ...],
+    notes: tuple[str, ...],
+    source: str,
+    maps: Sequence[_Around],
 ) -> _Common:
     """Scales that hold for all places of the sheet."""
     paths = [path for site in sites for path in _paths(site, days)]
@@ -178,7 +201,8 @@ def _common(
     hours = float(np.floor(first - 0.2)), float(np.ceil(last + 0.2))
     if hours[1] - hours[0] > 24.0:  # midnight sun
         hours = 0.0, 24.0
-    return _Common(limits, 1.16 * tallest, hours, days, notes, source)
+    steps = [step for each in maps if (step := contour_step(each.heights)) is not None]
+    return _Common(limits, 1.16 * tallest, hours, days, notes, source, max(steps, default=None))
 
 
 def _least(values: Values) -> float:
@@ -199,11 +223,11 @@ class _Sheet:
         self.page, self.site, self.common = page, site, common
         self.left, self.right = x + LEFT, x + RIGHT
 
-    def draw(self, elevation: Elevation, frame: Frame) -> None:
+    def draw(self, ground: _Around) -> None:
         """All parts, from the top."""
         self._head()
         self._facts()
-        self._map(elevation, frame)
+        self._map(ground)
         self._horizon()
         self._months()
         self._table()
@@ -247,13 +271,10 @@ class _Sheet:
                 y += 16.0
             y += 3.0
 
-    def _map(self, elevation: Elevation, frame: Frame) -> None:
+    def _map(self, ground: _Around) -> None:
         """The ground around, shaded, with contour lines; a ring marks the place."""
-        site = self.site
-        around, row, column = _crop(elevation, frame, site)
-        own = make_frame(around.shape, around.transform, around.crs)
-        coarse = make_picture(around, own, MAP)
-        fine = make_picture(around, own, (MAP[0] * DOTS, MAP[1] * DOTS))
+        around, coarse = ground.ground, ground.picture
+        fine = make_picture(around, ground.frame, (MAP[0] * DOTS, MAP[1] * DOTS))
         height, width = coarse.shape
         x, y = self.right - width, float(TOPS["facts"])
         averaged = fine.average(around.heights)
@@ -264,12 +285,11 @@ class _Sheet:
         grey *= np.array([1.0, 0.985, 0.95], np.float32)
         pixels = paint(fine, grey, np.full(fine.shape, 0.5, np.float32), void, to_rgb(PAPER))
         self.page.image(x, y, pixels, dots=DOTS)
-        heights = coarse.surface(coarse.average(around.heights))
-        step = contour_step(heights)
+        step = self.common.contours
         if step is not None:
-            draw_contours(self.page, heights, step, (x, y), named=False)
+            draw_contours(self.page, ground.heights, step, (x, y), named=False)
         self.page.box(x, y, width, height, edge=INK, line=1.0)
-        gap = (coarse.rows - row - 0.5) ** 2 + (coarse.columns - column - 0.5) ** 2
+        gap = (coarse.rows - ground.row - 0.5) ** 2 + (coarse.columns - ground.column - 0.5) ** 2
         at = np.unravel_index(np.nanargmin(gap), gap.shape)
         self._ring(x + float(at[1]) + 0.5, y + float(at[0]) + 0.5)
         self._map_key(x, y + height, coarse.metres_per_pixel, step)
@@ -307,14 +327,18 @@ class _Sheet:
         )
 
     def _map_key(self, x: float, y: float, metres: float, step: float | None) -> None:
-        """Scale and contour lines below the map."""
+        """Scale and contour lines below the map, in two lines if it is narrow."""
         length, _ = key.scale_bar(metres * SCALE / key.SCALE_LONGEST)
         pixels = length / metres
+        unit = f"{length / 1000:g} km" if length >= 1000 else f"{length:g} m"
+        lines = [unit] if step is None else [f"{unit}, contours every {step:g} m"]
+        if text_width(lines[0], SMALL) > SLACK * (self.right - x - pixels - 7):
+            lines = [unit, f"contours every {step:g} m"]
         y += 16.0
         self.page.lines([[(x, y - 4), (x + pixels, y - 4)]], colour=INK, line=2.0)
-        unit = f"{length / 1000:g} km" if length >= 1000 else f"{length:g} m"
-        words = unit if step is None else f"{unit}, contours every {step:g} m"
-        self._text(x + pixels + 7, y, words, SMALL, colour=SOFT)
+        self._text(x + pixels + 7, y, lines[0], SMALL, colour=SOFT)
+        for line in lines[1:]:
+            self._text(x, y + 13.0, line, SMALL, colour=SOFT)
 
     def _horizon(self) -> None:
         site, common = self.site, self.common
@@ -398,8 +422,8 @@ class _Sheet:
         x, y = self.left + BARS + 22, float(TOPS["months"] - 26)
         ends = x + (self.right - x) * COLUMN_ENDS
         self._title(x, y, "By month", f"first and last sun on the 21st, {site.sun.clock.words}")
-        unit = key.printed_unit(site.energy.settings.unit)
-        head = (unit, "level", "share", "sun h/day", "first", "last")
+        unit, *words = month_head(site)[1:]
+        head = (key.printed_unit(unit), *words)
         y += 18.0
         for word, end in zip(head, ends, strict=True):
             self._text(end, y, word, SMALL, colour=SOFT, across="right")
@@ -409,8 +433,7 @@ class _Sheet:
         for row in rows:
             y += step
             self._text(x, y, row[0], size)
-            cells = (row[1], row[2], f"{row[3]} %" if row[3] != "-" else "-", *row[4:])
-            for cell, end in zip(cells, ends, strict=True):
+            for cell, end in zip(row[1:], ends, strict=True):
                 self._text(end, y, cell, size, across="right")
         self.page.lines([[(x, TOPS["months"] - 4), (self.right, TOPS["months"] - 4)]], colour=GRID)
 
@@ -493,6 +516,15 @@ def by_clock(site: Site, first: float, last: float) -> NDArray[np.uint8]:
     shift, within = np.divmod(solar, 1440.0)
     day = (np.arange(len(sun.days))[None, :] + shift.astype(np.int64)) % len(sun.days)
     return sun.states[day, np.minimum(np.round(within).astype(np.int64), MOMENTS - 1)]
+
+
+def _around(elevation: Elevation, frame: Frame, site: Site) -> _Around:
+    """The ground around a place as its small map shows it."""
+    ground, row, column = _crop(elevation, frame, site)
+    own = make_frame(ground.shape, ground.transform, ground.crs)
+    picture = make_picture(ground, own, MAP)
+    heights = picture.surface(picture.average(ground.heights))
+    return _Around(ground, own, row, column, picture, heights)
 
 
 def _crop(elevation: Elevation, frame: Frame, site: Site) -> tuple[Elevation, int, int]:

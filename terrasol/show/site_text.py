@@ -181,7 +181,7 @@ def error_words(site: Site) -> list[str]:
 
 
 def month_rows(site: Site) -> list[tuple[str, ...]]:
-    """One row a month: name, energy, level ground, share, sun a day, first sun, last sun.
+    """One row a month: name, energy, level ground, percent of it, sun a day, first sun, last sun.
 
     Sun is that of the calendar month in a typical year.
     """
@@ -220,8 +220,7 @@ def lost_words(sites: Sequence[Site]) -> list[str]:
 def month_head(site: Site) -> tuple[str, ...]:
     """Heads of `month_rows`."""
     return (
-        "", site.energy.settings.unit, "level", "% of it", "sun h/day",
-        f"first {CHOSEN_DAY}st", "last",
+        "", site.energy.settings.unit, "level", "% of level", "sun h/day", "first", "last",
     )  # fmt: skip
 
 

@@ -137,6 +137,8 @@ def series_doubts(
         Mean at night, by quantity [W/m2]; see `Quality`.
     """
     doubts = [*station.notes]
+    if timing.verdict not in TRUSTED:  # first, since night and gaps follow from the clock
+        doubts.append(f"{timing.words}; nothing was changed")
     doubts += [
         f"{station.name}: {name} reads {offset:+.0f} W/m2 at night, on the mean; its days may be"
         " out by as much, and are left as they are"
@@ -151,8 +153,6 @@ def series_doubts(
         if any(counts.values()):
             told = ", ".join(f"{count} of {name}" for name, count in counts.items() if count)
             doubts.append(f"{station.name}: {words}: {told}")
-    if timing.verdict not in TRUSTED:
-        doubts.append(f"{timing.words}; nothing was changed")
     return tuple(doubts)
 
 

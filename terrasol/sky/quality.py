@@ -342,6 +342,18 @@ NEEDED_DAYS: Final = 20.0
 """Days, of 12 hours of sun, under which a dull spell may look like a wrong unit: there only a
 peak of less than a tenth of the clear one counts (judgement)."""
 
+CLOCK_HOURS: Final = (0.6, 2.0)
+"""How far from noon the middle of the light may lie before the clock is doubted ahead of the
+unit: the first where the unit would do with a mended clock, the second in any case. Under it lie
+the equation of time, 0.27 h, and clouds or hills on one side (judgement, no source)."""
+
+FLAT_DAY: Final = 0.2
+"""Length of the light's mean on the circle of the day under which it has no middle; a day of 18
+hours of sun has over 0.5, the polar day at 80 degrees 0.2 (judgement)."""
+
+LONGEST_INTERVAL: Final = 7200
+"""Seconds; longer intervals say too little of morning and afternoon (judgement)."""
+
 
 def unit_peak(station: Station, quantity: str) -> tuple[float, bool] | None:
     """Find the clear peak of a light as a share of the extraterrestrial, and if it can be so.
@@ -392,13 +404,15 @@ def refuse_wrong_unit(
     Raises
     ------
     InputError
-        Saying how far off the values are, and which unit would fit.
+        Saying how far off the values are, and which unit would fit; or, where the light's
+        course through the day says so, that its clock is wrong, since no unit can be told then.
     """
     if quantity not in station.values:
         return
     found = unit_peak(station, quantity)
     if found is None or found[1]:
         return
+    _refuse_wrong_clock(station, quantity)
     peak = found[0]
     clear = CLEAR_PEAK.get(quantity)
     fitting = []
@@ -412,6 +426,56 @@ def refuse_wrong_unit(
         f" the light above the air, and {_believable(quantity)} is believable{fits}. Mend the"
         " unit, or zone and label if the times are wrong; if the values are right, say"
         " check_units = false",
+        station.name,
+    )
+
+
+def hours_off_noon(station: Station, quantity: str) -> float | None:
+    """Find how much later than noon the middle of a light's day lies, by the stated times.
+
+    Parameters
+    ----------
+    station : Station
+    quantity : {'global', 'beam', 'diffuse'}
+
+    Returns
+    -------
+    float or None
+        Hours of local mean solar time, -12 to 12: the angle of the light's mean over the circle
+        of the day. The equation of time is a quarter of an hour of it, clouds and hills on one
+        side some more. None for intervals over two hours, less than a day of values, or light
+        that knows no time of day.
+    """
+    values = station.values[quantity]
+    known = np.isfinite(values)
+    if station.seconds > LONGEST_INTERVAL or np.count_nonzero(known) * station.seconds < 86400:
+        return None
+    local = (station.middle[known] + station.solar_offset).astype("M8[s]")
+    second, place = np.unique((local - local.astype("M8[D]")).astype(np.int64), return_inverse=True)
+    light = np.clip(values[known], 0.0, np.percentile(values[known], 99.9))
+    light = np.bincount(place, light) / np.bincount(place)  # days in part weigh no more
+    mean = np.sum(light * np.exp(2j * np.pi * (second / 86400.0 - 0.5)))
+    if not abs(mean) > FLAT_DAY * light.sum():
+        return None
+    return float(np.angle(mean) * 12.0 / np.pi)
+
+
+def _refuse_wrong_clock(station: Station, quantity: str) -> None:
+    """Refuse a light whose middle lies so far from noon that its clock, not its unit, is wrong."""
+    off = hours_off_noon(station, "global" if "global" in station.values else quantity)
+    if off is None or abs(off) < CLOCK_HOURS[0]:
+        return
+    mended = replace(station, start=station.start - np.timedelta64(round(off * 3600.0), "s"))
+    found = unit_peak(mended, quantity)
+    alone = found is not None and found[1]
+    if not alone and abs(off) < CLOCK_HOURS[1]:
+        return
+    side = "later" if off > 0.0 else "earlier"
+    unit = "the unit would do" if alone else "the unit can only be judged then"
+    raise InputError(
+        f"the times of {quantity} disagree with the sun: the middle of its days lies"
+        f" {abs(off):.1f} h {side} than noon at the stated longitude. Mend the zone, the label or"
+        f" the longitude ({unit}); if all are right, say check_units = false",
         station.name,
     )
 

@@ -12,7 +12,7 @@ from scipy.stats import theilslopes
 
 from terrasol.sky.interval import SunMinutes, behind_horizon, cosine
 from terrasol.sky.irradiance import Sky
-from terrasol.sky.quality import LOWEST
+from terrasol.sky.quality import LONGEST_INTERVAL, LOWEST
 from terrasol.sky.station import Station
 
 Verdict = Literal[
@@ -21,9 +21,6 @@ Verdict = Literal[
 
 GREATEST: Final = 2200.0
 """W/m2 that no global light exceeds: 1.5 E0 + 100 at the zenith (Long and Dutton 2002)."""
-
-LONGEST_INTERVAL: Final = 7200
-"""Seconds; longer intervals say too little of morning and afternoon (judgement)."""
 
 COARSE_STEP: Final = 15.0
 COARSE_REACH: Final = 12.0 * 60.0

@@ -182,13 +182,30 @@ def test_twelve_numbers(dem, tmp_path):
 
 
 def test_warnings_are_in_every_place(tmp_path, capfd):
-    dem = write_raster(tmp_path / "feet.tif", crs="EPSG:2226")
+    dem = write_raster(tmp_path / "unit.tif", unit=None)
     assert main(["terrain", str(dem), str(tmp_path / "out"), "--azimuths", "8"]) == 0
-    assert "warning: THE HEIGHTS MAY NOT BE METRES" in capfd.readouterr().err
+    said = "neither the band nor the CRS names the unit of the heights: metres are assumed"
+    assert f"warning: {said}" in " ".join(capfd.readouterr().err.split())
     record = json.loads((tmp_path / "out" / "run.json").read_text("utf-8"))
-    assert "MAY NOT BE METRES" in record["warnings"][0]
+    assert said in record["warnings"][0]
     with rasterio.open(tmp_path / "out" / "slope.tif") as source:
-        assert "MAY NOT BE METRES" in source.tags()["TERRASOL_WARNINGS"]
+        assert said in source.tags()["TERRASOL_WARNINGS"]
+
+
+@pytest.mark.parametrize("command", ["terrain", "irradiation", "hours", "site", "--far"])
+def test_heights_without_a_unit_on_a_plan_in_feet_are_refused(dem, tmp_path, capfd, command):
+    feet, out = write_raster(tmp_path / "feet.tif", crs="EPSG:2226", unit=None), tmp_path / "out"
+    asked = [command, str(feet), str(out)]
+    if command == "site":
+        asked = ["site", str(feet), "--at", "0,0"]
+    elif command == "--far":
+        asked = ["terrain", str(dem), str(out), "--far", str(feet)]
+    assert main(asked) == 3
+    option = "--far-unit" if command == "--far" else "--vertical-unit"
+    assert f"x and y are in US survey foot: say what the heights are with {option}" in " ".join(
+        capfd.readouterr().err.split()
+    )
+    assert not out.exists()
 
 
 def test_raster_in_an_archive(dem, tmp_path):

@@ -2,12 +2,15 @@
 
 import os
 import signal
+import sys
 import time
+from contextlib import suppress
 
 import pytest
 from files.made import write_raster
 
 from terrasol.cli.main import main
+from terrasol.cli.requests import PATIENCE, endable
 from terrasol.errors import UnfinishedError
 
 
@@ -67,6 +70,79 @@ def test_request_to_end(broken_engine, name):
     assert code == 130
     assert err.strip() == "terrasol: interrupted, nothing was written"
     assert signal.getsignal(request) is before
+
+
+class Forgetful:
+    """Asks to end while Python disposes of it, and so drops what is raised."""
+
+    def __init__(self, request):
+        self.request = request
+
+    def __del__(self):
+        os.kill(os.getpid(), self.request)
+        time.sleep(0.01)
+
+
+@pytest.mark.parametrize("name", ["SIGINT", "SIGTERM", "SIGHUP"])
+def test_request_that_python_drops(broken_engine, name):
+    """It is made up for within seconds, and Python prints nothing of what it dropped."""
+    came_back = []
+
+    def sweep(*_):
+        one = Forgetful(getattr(signal, name))
+        del one
+        came_back.append(True)
+        end = time.monotonic() + 10.0
+        while time.monotonic() < end:
+            time.sleep(0.01)
+
+    code, err = broken_engine(sweep)
+    assert came_back == [True]
+    assert code == 130
+    assert err.strip() == "terrasol: interrupted, nothing was written"
+
+
+def test_request_that_a_library_drops(broken_engine):
+    def sweep(*_):
+        with suppress(KeyboardInterrupt):
+            os.kill(os.getpid(), signal.SIGTERM)
+            time.sleep(1.0)
+        time.sleep(10.0)
+
+    began = time.monotonic()
+    assert broken_engine(sweep)[0] == 130
+    assert time.monotonic() - began < 9.0
+
+
+def test_requests_leave_cleaning_in_peace():
+    """Long cleaning, during which requests come again and again, is not cut short."""
+    cleaned = []
+
+    def work():
+        try:
+            os.kill(os.getpid(), signal.SIGTERM)
+            time.sleep(5.0)
+        finally:
+            for _ in range(10):
+                os.kill(os.getpid(), signal.SIGINT)
+                time.sleep(PATIENCE / 4.0)
+            cleaned.append(True)
+
+    with pytest.raises(KeyboardInterrupt), endable():
+        work()
+    assert cleaned == [True]
+
+
+def test_other_errors_that_python_drops_are_told(monkeypatch):
+    class Broken:
+        def __del__(self):
+            raise ZeroDivisionError
+
+    told = []
+    monkeypatch.setattr(sys, "unraisablehook", lambda what: told.append(what.exc_type))
+    with endable():
+        Broken()
+    assert told == [ZeroDivisionError]
 
 
 def test_traceback_on_demand(broken_engine, monkeypatch):

@@ -6,8 +6,6 @@ import subprocess
 import sys
 from pathlib import Path
 
-import pytest
-
 import terrasol
 from terrasol.cli.endings import EXIT_CODES
 from terrasol.cli.irradiation import irradiation
@@ -19,26 +17,28 @@ HEAVY = ("numba", "numpy", "scipy", "pandas", "rasterio", "pyproj", "pvlib", "ma
 PROBE = f"""
 import json, sys
 from terrasol.cli.main import main
-code = main(sys.argv[1:])
-print(json.dumps([code, [name for name in {HEAVY!r} if name in sys.modules]]))
+found = []
+for arguments in json.loads(sys.argv[1]):
+    code = main(arguments)
+    found.append([code, [name for name in {HEAVY!r} if name in sys.modules]])
+print(json.dumps(found))
 """
 
 
 COMMANDS = ("compare", "hours", "irradiation", "parcels", "plots", "series", "site", "terrain")
 
 
-@pytest.mark.parametrize(
-    "arguments",
-    [[], ["--help"], ["--version"], ["terrain"], *([name, "--help"] for name in COMMANDS)],
-)
-def test_nothing_heavy_is_loaded(arguments):
+def test_nothing_heavy_is_loaded():
+    """All calls in one process: what none of them loads, each of them does not."""
+    asked = [[], ["--help"], ["--version"], ["terrain"], *([name, "--help"] for name in COMMANDS)]
     run = subprocess.run(
-        [sys.executable, "-c", PROBE, *arguments],
+        [sys.executable, "-c", PROBE, json.dumps(asked)],
         env=ENVIRONMENT, capture_output=True, text=True, check=True,
     )  # fmt: skip
-    code, loaded = json.loads(run.stdout.splitlines()[-1])
-    assert loaded == []
-    assert code == (0 if arguments and arguments[-1].startswith("--") else 2)
+    found = json.loads(run.stdout.splitlines()[-1])
+    for arguments, (code, loaded) in zip(asked, found, strict=True):
+        assert loaded == [], arguments
+        assert code == (0 if arguments and arguments[-1].startswith("--") else 2), arguments
 
 
 def test_help_documents_exit_codes(capsys):

@@ -207,7 +207,7 @@ def test_a_run_that_begins_amid_observed_snow_says_so(dem, station, tmp_path, ca
     assert "bare ground" not in capsys.readouterr().out
 
 
-def test_fahrenheit_taken_for_celsius_is_doubted(dem, station, tmp_path, capsys):
+def test_fahrenheit_taken_for_celsius_is_refused_or_doubted(dem, station, tmp_path, capsys):
     rows = [line.split(",") for line in station.read_text().splitlines()]
     for row in rows[1:]:
         row[2] = f"{float(row[2]) * 1.8 + 32.0:.2f}"
@@ -216,8 +216,13 @@ def test_fahrenheit_taken_for_celsius_is_doubted(dem, station, tmp_path, capsys)
     run = ["melt", str(dem), str(path), str(tmp_path / "out"), "--melt", "degree-days", "--dry-run"]
     toml = path.with_name("american.csv.toml")
     toml.write_text(TOML)
+    assert main(run) == 3
+    said = capsys.readouterr().err
+    assert "american.csv: temperature cannot be in degC" in said
+    assert "degF would fit" in said
+    toml.write_text("[file]\ncheck_units = false\n" + TOML)
     assert main(run) == 0
-    assert "degF" in capsys.readouterr().out
+    assert "while snow was observed" in capsys.readouterr().out
     toml.write_text(TOML.replace("degC", "degF"))
     assert main(run) == 0
     assert "degF" not in capsys.readouterr().out
@@ -330,3 +335,12 @@ def test_a_store_that_takes_nothing_does_not_end_the_run(
     assert any(w.startswith(f"{store}: horizons could not be kept there") for w in warnings)
     assert not list(store.iterdir())
     assert not [p for p in (tmp_path / "out").iterdir() if p.name.startswith("horizons")]
+
+
+def test_a_doubt_of_the_ground_is_told_once(station, tmp_path, capsys):
+    raster = write_raster(tmp_path / "unnamed.tif", hills())
+    words = ["--melt", "degree-days", "--period", "2025-02-21", "--stack", "none", "--json"]
+    for more in (["--dry-run"], []):
+        assert main(["melt", str(raster), str(station), str(tmp_path / "out"), *words, *more]) == 0
+        warnings = json.loads(capsys.readouterr().out)["warnings"]
+        assert sum("metres are assumed" in warning for warning in warnings) == 1

@@ -53,8 +53,8 @@ def whole(places, tmp_path_factory):
     out = tmp_path_factory.mktemp("out") / "out"
     asked = [
         *RULE, "--score", "rule_ha_map - slope_mean_percent / 10", "--rows", "2,1.3,0.4",
-        "--temperatures", str(days), "--temperatures-height", "500", "--dem-error", "0.2,30",
-        "--realisations", "2", "--coarser", "2",
+        "--canopy-albedo", "0.15", "--temperatures", str(days), "--temperatures-height", "500",
+        "--dem-error", "0.2,30", "--realisations", "2", "--coarser", "2",
     ]  # fmt: skip
     assert main(["parcels", str(dem), str(shapes), str(out), *QUICK, *asked]) == 0
     return out
@@ -125,6 +125,7 @@ def test_record_says_how_and_what_not(whole):
     record = json.loads((whole / "run.json").read_text("utf-8"))
     assert record["command"] == "parcels"
     settings = record["settings"]
+    assert settings["canopy_albedo"] == 0.15
     assert settings["rule"] == RULE[1]
     assert settings["season"] == "April to October"
     assert settings["dem_error"]["rmse_m"] == 0.2
@@ -144,6 +145,9 @@ def test_summary_is_for_people(places, tmp_path, capsys):
     said = capsys.readouterr().err
     assert "Côte/3" in said
     assert "rule: slope_percent < 15" in said
+    assert "ha drawn" in said
+    assert "ha known" not in said  # all of what is drawn
+    assert "warning: shade of all that stands in the raster, and of nothing beyond it" in said
     assert VINEYARD in said
     assert sorted(p.name for p in (tmp_path / "o").iterdir()) == [
         "columns.csv", "parcels.csv", "parcels.gpkg", "run.json",
@@ -243,9 +247,13 @@ def test_ground_beyond_and_trees_above_take_sun(places, tmp_path):
         (["--rule", "slop < 15"], 2, "slop"),
         (["--rule", "__import__('os')"], 2, "rule"),
         (["--score", "no_such_figure"], 2, "no_such_figure"),
+        (["--score", "rule_share"], 2, "names rule_share, which needs --rule"),
+        (["--rule", "degree_days > 9"], 2, "names degree_days, which needs --temperatures"),
         (["--least-patch", "500"], 2, "--least-patch belongs to --rule"),
         (["--rows", "2,1.3"], 2, "3 numbers"),
         (["--rows", "1,1.3,1.2"], 2, "no gap"),
+        (["--rows", "2,1.3,0.4", "--canopy-albedo", "1"], 2, "canopy albedo 1 is outside 0 to"),
+        (["--canopy-albedo", "0.2"], 2, "--canopy-albedo belongs to --rows"),
         (["--slope-classes", "10,5"], 2, "ascend"),
         (["--season", "13-14"], 2, "season"),
         (["--period", "2025-05/2025-06"], 2, "no whole growing season"),
@@ -321,10 +329,58 @@ def test_a_bow_tie_is_mended_and_said_so(places, tmp_path, capsys):
     assert area == pytest.approx(0.5 * 0.9996**-2, rel=1e-4)
 
 
+def test_albedo_and_clear_sky_index_come_as_rasters(places, tmp_path, capsys):
+    dem, shapes, _ = places
+    ground = plane(0.0, 0.0)
+    index, albedo = np.full((80, 80), 0.6), np.full((80, 80), 0.4)
+    index[:, 50:], albedo[0, 0] = 0.9, np.nan
+    for name, values in (("index", index), ("albedo", albedo)):
+        write_raster(tmp_path / f"{name}.tif", values, transform=ground.transform, crs=UTM)
+    maps = ["--albedo", tmp_path / "albedo.tif", "--clear-sky-index", tmp_path / "index.tif"]
+    out = tmp_path / "o"
+    command = ["parcels", dem, shapes, out, *QUICK[:-1], "--coarser", "2", *maps]
+    assert main([str(word) for word in command]) == 0
+    assert "the map of the albedo has no value for 1 cell of known" in capsys.readouterr().err
+    settings = json.loads((out / "run.json").read_text("utf-8"))["settings"]
+    assert settings["albedo"]["file"] == str(tmp_path / "albedo.tif")
+    assert settings["clear_sky_index"]["file"] == str(tmp_path / "index.tif")
+    level = {
+        row["parcel"]: float(row["irradiation_season_level_mj_m2"])
+        for row in rows_of(out / "parcels.csv")
+    }
+    assert level["Lower"] / level["Upper"] == pytest.approx(0.6 / 0.9, rel=0.01)
+
+
+def test_overlaps_are_told_before_the_work_too(places, tmp_path, capsys):
+    shapes = [outline(0, 0, 100, 100), outline(50, 0, 150, 100)]
+    table = geopandas.GeoDataFrame({"name": ["a", "b"]}, geometry=shapes, crs=UTM)
+    table.to_file(tmp_path / "two.gpkg")
+    asked = ["parcels", str(places[0]), str(tmp_path / "two.gpkg"), str(tmp_path / "o")]
+    assert main([*asked, "--dry-run", "--json"]) == 0
+    (said,) = json.loads(capsys.readouterr().out)["warnings"]
+    assert said.startswith("outlines overlap")
+    assert said.endswith("'a' with 'b' (0.50 ha)")
+
+
 def test_long_names_do_not_widen_the_table():
-    row = {"parcel": "x" * 300, "map_area_ha": 1.0}
-    assert _cell(row, "parcel", "{}") == "x" * 37 + "..."
-    assert _cell(row, "map_area_ha", "{:.2f}") == "1.00"
+    assert _cell({"parcel": "x" * 300}, "parcel", "{}") == "x" * 37 + "..."
+
+
+def test_small_areas_are_told_in_square_metres():
+    row = {"known_ha_map": 1.0}
+    for area, told in ((1.0, "1.00"), (0.01, "0.01"), (0.0009, "9.0 m2"), (0.0, "0.00")):
+        assert _cell(row | {"drawn_ha_map": area}, "drawn_ha_map", "") == told
+    assert _cell(row | {"rule_ha_map": 0.003, "rule_ha_map_se": 0.001}, "rule_ha_map", "") == (
+        "30 +/- 10 m2"
+    )
+
+
+def test_an_area_of_none_or_all_has_a_range_in_place_of_a_standard_error_both_ways():
+    row = {"known_ha_map": 2.5, "rule_ha_map_se": 0.32}
+    for area, told in ((0.0, "0.00 to 0.32"), (1.0, "1.00 +/- 0.32"), (2.5, "2.18 to 2.50")):
+        assert _cell(row | {"rule_ha_map": area}, "rule_ha_map", "") == told
+    row |= {"rule_ha_map": 0.0, "rule_ha_map_se": None}
+    assert _cell(row, "rule_ha_map", "") == "0.00"
 
 
 def test_names_of_sheets_are_plain_and_differ():
@@ -335,3 +391,21 @@ def test_names_of_sheets_are_plain_and_differ():
 def test_hidden_options_are_those_that_mean_nothing():
     hidden = {p.name for p in parcels.params if getattr(p, "hidden", False)}
     assert hidden == {"compression", "horizon_gap", "highest"}
+
+
+def test_the_forecast_names_a_few_of_many_parcels():
+    from terrasol.cli.parcels import _in_lines
+
+    names = [f"p{k}" for k in range(300)]
+    forecast = {
+        "parcels": names, "season": "April to October", "input": "dem.tif", "crs": "UTM", "rows": 1,
+        "columns": 1, "void_cells": 0, "filled_cells": 0, "heights_m": [0, 1],
+        "heights_read_as": "metre", "files": [f"sheet_{k}.png" for k in range(300)], "removed": [],
+        "warnings": [],
+    }  # fmt: skip
+    told = _in_lines(forecast)
+    assert "300: p0, p1" in told
+    assert "and 292 more" in told
+    assert "sheet_0.png" in told
+    assert "and 284 more" in told
+    assert max(map(len, told.splitlines())) < 300

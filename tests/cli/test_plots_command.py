@@ -301,3 +301,27 @@ def test_cell_sizes_in_metres_and_multiples(dem, plots, tmp_path):
     assert main(["plots", str(dem), str(plots), str(out), *asked, *QUICK]) == 0
     record = json.loads((out / "run.json").read_text("utf-8"))
     assert record["settings"]["cells_joined"] == [1, 2, 4]
+
+
+def test_albedo_and_clear_sky_index_come_as_rasters(dem, plots, tmp_path, capsys):
+    """An index that rises eastward, in two cell sizes; the record names both files."""
+    shape = hills().shape
+    index = np.broadcast_to(np.linspace(0.5, 0.9, shape[1]), shape)
+    albedo = np.full(shape, 0.4)
+    albedo[:3, :3] = np.nan
+    for name, values in (("index", index), ("albedo", albedo)):
+        write_raster(tmp_path / f"{name}.tif", values.astype(float))
+    maps = [str(tmp_path / "albedo.tif"), str(tmp_path / "index.tif")]
+    out = tmp_path / "o"
+    command = ["plots", str(dem), str(plots), str(out), *QUICK, "--grains", "2x", "--radii", "60"]
+    assert main([*command, "--albedo", maps[0], "--clear-sky-index", maps[1]]) == 0
+    assert "the map of the albedo has no value for 9 cells" in capsys.readouterr().err
+    record = json.loads((out / "run.json").read_text("utf-8"))["settings"]
+    assert record["light"]["albedo"]["file"] == maps[0]
+    assert record["clear_sky_index"]["file"] == maps[1]
+    words = (out / "methods.md").read_text("utf-8")
+    assert "indices that a map gives each cell" in words
+    assert "albedo is that of a map, and 0.2 where the map is void" in words
+    table = pd.read_csv(out / "plots.csv")
+    for column in [c for c in table if c.startswith("irradiation_year")][:2]:
+        assert np.corrcoef(table["longitude"], table[column])[0, 1] > 0.8

@@ -82,6 +82,16 @@ def test_text_without_a_folder(dem, capsys):
     assert "file" not in caught.err
 
 
+def test_quiet_silences_what_is_said_and_keeps_the_result(dem, tmp_path, capsys):
+    told = []
+    for more in ([], ["--quiet"], ["--quiet", "--out", str(tmp_path / "o")]):
+        assert main(["site", dem, "--at", AT, *more, *QUICK]) == 0
+        told.append(capsys.readouterr())
+    assert told[0].out == told[1].out == told[2].out
+    assert "% of level" in told[0].out
+    assert told[1].err == told[2].err == ""
+
+
 @pytest.mark.heavy
 def test_place_in_the_raster_s_crs_is_the_same_place(dem, capsys):
     told = []
@@ -186,7 +196,10 @@ VOID = "{:.7f},{:.7f}".format(*geodetic(401_525.0, 5_149_725.0))
         (["--at", VOID], 3, "void"),
         (["--at", AT, "--at-crs", "no such"], 2, "--at-crs"),
         (["--at", AT, "--clock", "Mars"], 2, "clock"),
-        (["--at", AT, "--day", "2025-08"], 2, "one day"),
+        (["--at", AT, "--at-crs", ""], 2, "--at-crs '' is not a CRS"),
+        (["--at", AT, "--day", "2025-08"], 2, "--day '2025-08' is not one day"),
+        (["--at", AT, "--day", "2025-02-30"], 2, "--day '2025-02-30' is not one day"),
+        (["--at", AT, "--day", "tomorrow"], 2, "--day 'tomorrow' is not one day"),
         (["--at", AT, "--name", "a", "--name", "b"], 2, "--name"),
         (["--at", AT, "--azimuths", "7"], 2, "azimuths"),
         (["--at", AT, "--horizon-gap"], 2, "--horizon-gap"),

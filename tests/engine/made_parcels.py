@@ -7,13 +7,13 @@ import shapely
 from pyproj import CRS
 
 from terrasol.engine.parcel_figures import Asked
-from terrasol.engine.parcels import ParcelSettings, rule_names
+from terrasol.engine.parcel_words import read_rule
+from terrasol.engine.parcels import ParcelSettings
 from terrasol.files.vectors import Polygons
 from terrasol.ground.elevation import Elevation
 from terrasol.light.days import parse_days
 from terrasol.light.hours import HoursSettings
 from terrasol.light.settings import LightSettings
-from terrasol.practice.rules import parse_rule
 from terrasol.practice.season import NORTHERN_SEASON
 from terrasol.sky.clear import Air
 from terrasol.sky.period import parse_period
@@ -38,10 +38,10 @@ def asked_for(period=None, season=NORTHERN_SEASON, **more) -> ParcelSettings:
     """Settings whose light is coarse but quick."""
     whole = parse_period(period)
     own = {k: more.pop(k) for k in ("score", "coarser", "rows", "error") if k in more}
-    light = LightSettings(whole, AIR, azimuths=16, step_seconds=300.0)
-    hours = HoursSettings(whole, AIR, parse_days(None, whole), azimuths=32, step_seconds=300.0)
+    light = LightSettings(whole, AIR, azimuths=16, step_seconds=900.0)
+    hours = HoursSettings(whole, AIR, parse_days(None, whole), azimuths=32, step_seconds=900.0)
     if "rule" in more:
-        more["rule"] = parse_rule(more["rule"], rule_names(warm="warmth" in more))
+        more["rule"] = read_rule(more["rule"], warm="warmth" in more)
     return ParcelSettings(light, hours, Asked(whole, season, **more), **own)
 
 

@@ -80,6 +80,8 @@ def test_irradiation_names_units_and_coordinates(april, ground):
     assert list(april["month"].values) == ["2025-04"]
     assert april["irradiation_period"].attrs["units"] == "MJ m-2"
     words = april["irradiation_period"].attrs["long_name"]
+    assert "global" not in words  # it holds the parts too
+    assert "global" in april["irradiation_months"].attrs["long_name"]
     assert "potential (clear-sky)" in words
     assert "per area of slope" in words
     assert "standard_name" not in april["irradiation_period"].attrs

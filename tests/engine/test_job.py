@@ -165,6 +165,16 @@ def test_summary_holds_means_and_ranges(wide_run):
     assert all(seconds >= 0.0 for seconds in summary.seconds.values())
 
 
+def test_no_minus_stands_before_a_zero_of_the_totals():
+    """A direction that is the same in every realisation has a deviation of -0.0."""
+    totals = Totals()
+    totals.add({"slope": np.array([[[-0.0, -1e-6]]], np.float32)})
+    layers = (Layer("slope", ("slope",), "degree", ""),)
+    the_plan = dataclasses.replace(plan_terrain(utm(waves((4, 4))), 8), layers=layers)
+    found = totals.means(the_plan)["slope"]["slope"]
+    assert [f"{value:g}" for value in found.values()] == ["0", "0", "0"]
+
+
 def test_totals_run_over_blocks_and_skip_voids():
     totals = Totals()
     one = np.array([[[1.0, np.nan], [3.0, 8.0]]], np.float32)

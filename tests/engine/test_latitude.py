@@ -37,7 +37,7 @@ def months(elevation):
     ("latitude", "cell", "worst", "rms"),
     [
         (62.0, 30.0, 6e-3, 4e-4),
-        (62.0, 250.0, 0.02, 1.5e-3),
+        pytest.param(62.0, 250.0, 0.02, 1.5e-3, marks=pytest.mark.heavy),
         pytest.param(62.0, 1000.0, 0.06, 4e-3, marks=pytest.mark.heavy),
         (46.0, 30.0, 3e-4, 3e-5),
         pytest.param(-46.0, 1000.0, 3e-3, 4e-4, marks=pytest.mark.heavy),

@@ -13,6 +13,7 @@ from terrasol.engine.melt_stack import snow_melt
 from terrasol.engine.melt_state import head_of, save_state, take_up
 from terrasol.engine.melt_tables import DEPTHS, TABLES, SeasonTables, tables_csv
 from terrasol.errors import InputError
+from terrasol.kernels.melt import SKIN
 from terrasol.practice.snow import COVERED_FROM, Snow, SnowModel, snow_day
 from terrasol.practice.snow_point import point_snow
 from terrasol.practice.snow_weather import measured_light
@@ -227,15 +228,21 @@ def test_sunny_slopes_lose_their_snow_first(season):
     assert melt[FACINGS.index("S")] > 1.1 * melt[FACINGS.index("N")]
 
 
-@pytest.mark.parametrize("melt", ["enhanced", "hock", "degree-days"])
-def test_going_on_from_a_state_is_one_run(ground, store, tmp_path, melt):
+@pytest.mark.parametrize(
+    ("melt", "cold"),
+    [("enhanced", 0.0), ("enhanced", 0.6), ("hock", 0.0), ("degree-days", 0.0)],
+)
+def test_going_on_from_a_state_is_one_run(ground, store, tmp_path, melt, cold):
     """Bit for bit, spread and season maps included, whatever day it was saved on."""
-    whole = plan_of(ground, melt=melt, spread=True).run(store)
-    first = plan_of(ground, "2025-03-20/2025-03-31", melt=melt, spread=True).run(store)
+    same = {"melt": melt, "spread": True, "changed": {"deficit_factor": cold}}
+    whole = plan_of(ground, **same).run(store)
+    first = plan_of(ground, "2025-03-20/2025-03-31", **same).run(store)
+    deficit = SKIN.index("deficit")
+    assert any((c.season.snows[0].skin[:, deficit] > 0.0).any() for c in first.cells) == (cold > 0)
     path = tmp_path / "state.nc"
     save_state(first, path)
     head = head_of(first.plan, np.datetime64("2025-04-01"))
-    later = plan_of(ground, "2025-04-01/2025-04-10", melt=melt, spread=True, state=head)
+    later = plan_of(ground, "2025-04-01/2025-04-10", state=head, **same)
     rest = later.run(store, begin=take_up(later, path))
     np.testing.assert_array_equal(totals(rest), totals(whole))
     for member in range(len(whole.plan.models)):

@@ -11,15 +11,17 @@ import shapely
 from engine.made_parcels import AIR, CELL, LEFT, SCALE, TOP, UTM, asked_for, box, parcels, plane
 from pyproj import CRS, Transformer
 
+from terrasol.engine.datasets import scene_of
 from terrasol.engine.parcel_cells import pieces_of
 from terrasol.engine.parcel_figures import Warmth, season_places
 from terrasol.engine.parcel_frame import survey_parcels
-from terrasol.engine.parcel_rows import RowSettings
-from terrasol.engine.parcels import figure_names, survey
+from terrasol.engine.parcel_rows import RowSettings, rows_of
+from terrasol.engine.parcel_words import figure_names
+from terrasol.engine.parcels import survey
 from terrasol.errors import InputError, SettingError
 from terrasol.ground.elevation import Elevation
 from terrasol.practice.season import NORTHERN_SEASON, SOUTHERN_SEASON
-from terrasol.practice.temperatures import from_monthly
+from terrasol.practice.temperatures import from_daily, from_monthly
 from terrasol.sky.period import parse_period
 
 
@@ -132,7 +134,7 @@ def test_hectares_are_true_in_any_crs(crs, cell):
     back = Transformer.from_crs(here, crs, always_xy=True)
     square = shapely.segmentize(shapely.box(-100, -50, 100, 150), 20.0)
     shape = shapely.transform(square, lambda p: np.column_stack(back.transform(p[:, 0], p[:, 1])))
-    ground = hill(crs, cell, 120, centre)
+    ground = hill(crs, cell, 60, centre)
     numbers = survey(ground, parcels(shape, crs=crs), asked_for(coarser=())).parcels[0].numbers
     assert numbers["map_area_ha"] == pytest.approx(4.0, rel=2e-4)
     # The hill's own slope and aspect over the square, by brute force.
@@ -153,11 +155,47 @@ def test_outside_void_and_order():
     assert any("'P1' lies outside" in text for text in found.warnings)
     void = found.parcels[1].numbers
     assert void["unknown_ha_map"] == pytest.approx(void["map_area_ha"])
+    assert void["known_ha_map"] == 0.0
     assert np.isnan(void["slope_mean_percent"])
     assert np.isnan(void["slope_10_to_15_percent_ha_map"])
     assert [p.name for p in found.order] == ["P0", "P2"]
     with pytest.raises(InputError, match="void ground"):
         survey(ground, parcels(box(-390, 0, -300, 50)), asked_for(coarser=()))
+
+
+def test_area_is_told_as_drawn_on_the_raster_and_known():
+    """6 ha, of which 4 lie on the raster, of which 1 is void: two columns of cells."""
+    ground = plane(12.0, 180.0)
+    ground.heights[:, 78:] = np.nan
+    shapes = parcels(box(320, -250, 440, 250), box(-100, -50, -90, -41))
+    found = survey(ground, shapes, asked_for(coarser=()))
+    edge, small = (parcel.numbers for parcel in found.parcels)
+    told = {"drawn_ha_map": 6.0, "map_area_ha": 4.0, "known_ha_map": 3.0, "unknown_ha_map": 1.0}
+    assert {name: edge[name] for name in told} == pytest.approx(
+        {name: area * SCALE for name, area in told.items()}, rel=1e-4
+    )
+    assert small["drawn_ha_map"] == small["map_area_ha"] == small["known_ha_map"]
+    (void,) = (text for text in found.warnings if "void ground" in text)
+    assert void.startswith("25 % of 'P0' is unknown (void ground)")
+    assert "P1" not in void
+
+
+def test_a_horizon_that_ends_with_the_raster_is_told():
+    shapes = parcels(box(-50, -50, 50, 50))
+    alone = survey(plane(12.0, 180.0), shapes, asked_for(coarser=()))
+    (said,) = alone.warnings
+    assert said.startswith("shade of all that stands in the raster, and of nothing beyond it:")
+    assert "--far" in said
+    assert alone.shade == "Shade of all that stands in the raster, and of nothing beyond it."
+    wide = Elevation.from_array(
+        np.full((60, 60), 480.0), (40, 0, LEFT - 800, 0, -40, TOP + 800), UTM
+    )
+    found = survey(
+        plane(12.0, 180.0), shapes, asked_for(coarser=()),
+        lambda ground, _: scene_of(ground, wide),
+    )  # fmt: skip
+    assert found.warnings == []
+    assert found.shade.endswith("in the raster and in the far model around it.")
 
 
 def test_score_ranks_and_refuses_what_no_parcel_has():
@@ -191,7 +229,40 @@ def test_names_for_a_score_are_those_of_the_figures():
         coarser=(), warmth=warmth, rule="slope_deg < 9", rows=RowSettings(2.0, 1.3, 0.4)
     )
     found = survey(plane(12.0, 180.0), parcels(box(0, 0, 50, 50)), settings).parcels[0]
-    assert figure_names(settings) == list(found.numbers)
+    assert figure_names(settings.asked, days=12, rows=True) == list(found.numbers)
+
+
+WARM = Warmth(from_monthly(np.full(12, 15.0), height=500.0))
+DAYS = np.arange("2023-01-01", "2024-01-01", dtype="M8[D]")
+
+
+@pytest.mark.parametrize(
+    ("asked", "words"),
+    [
+        ({"score": "rule_share"}, "names rule_share, which needs --rule$"),
+        ({"score": "-rows_most_mj_m2_side"}, "which needs --rows$"),
+        ({"score": "winkler_mean_c_days"}, "which needs --temperatures$"),
+        ({"score": "huglin_mean_c_days"}, "which needs --temperatures$"),
+        ({"score": "rule_share * huglin_mean_c_days"}, "names huglin_.* needs --temperatures$"),
+        ({"score": "huglin_mean_c_days", "warmth": WARM}, "--temperatures with the highest of"),
+        ({"score": "slope_under_15_percent_ha_map"}, "needs other edges of --slope-classes$"),
+        ({"score": "rule_sharp"}, "names rule_sharp, which is unknown"),
+        ({"rule": "degree_days > 9"}, "names degree_days, which needs --temperatures$"),
+        ({"rule": "huglin > 9"}, "names huglin, which needs --temperatures$"),
+        ({"rule": "huglin > 9", "warmth": WARM}, "names huglin, which needs .* the highest of"),
+        ({"rule": "hugling > 9"}, "names hugling, which is unknown"),
+    ],
+)
+def test_a_word_that_another_option_brings_is_told_apart_from_an_unknown_one(asked, words):
+    with pytest.raises(SettingError, match=words):
+        asked_for(coarser=(), **asked)
+
+
+def test_what_only_months_tell_is_not_asked_of_days():
+    daily = Warmth(from_daily(DAYS, height=500.0, mean=np.full(DAYS.size, 15.0)))
+    with pytest.raises(SettingError, match=r"needs --temperatures by month$"):
+        asked_for(warmth=daily, score="winkler_shortfall_c_days")
+    asked_for(warmth=WARM, score="winkler_shortfall_c_days")  # and is known with months
 
 
 def test_results_do_not_depend_on_other_parcels_or_threads():
@@ -260,11 +331,11 @@ def test_rows_on_a_plane():
     assert climbed[60.0] == pytest.approx(20.0 * 0.9996 * 0.5, abs=0.05)
 
 
-@pytest.mark.parametrize("model", ["hay-davies", "isotropic"])
+@pytest.mark.parametrize("model", ["perez", "hay-davies", "isotropic"])
 def test_the_top_of_rows_gets_what_the_slope_gets(model):
-    """By another way: cells by tables of the sun, rows by its path, Perez' horizon band aside."""
+    """By another way: cells by tables of the sun, rows by its path."""
     settings = asked_for(coarser=(), rows=RowSettings(2.0, 1.3, 0.4))
-    light = replace(settings.light, diffuse=model, albedo=(0.0,) * 12)
+    light = replace(settings.light, diffuse=model, albedo=(0.0,) * 12, step_seconds=300.0)
     parcel = survey(
         plane(30.0, 180.0), parcels(box(-50, -50, 50, 50)), replace(settings, light=light)
     ).parcels[0]
@@ -276,6 +347,7 @@ def test_half_the_step_moves_no_side_of_a_row():
     from terrasol.engine import parcel_rows
 
     settings = asked_for(coarser=(), rows=RowSettings(2.0, 1.3, 0.4))
+    settings = replace(settings, light=replace(settings.light, step_seconds=300.0))
     parcel = survey(plane(20.0, 140.0), parcels(box(-50, -50, 50, 50)), settings).parcels[0]
     with pytest.MonkeyPatch.context() as patch:
         patch.setattr(parcel_rows, "STEP_SECONDS", 300.0)
@@ -283,6 +355,20 @@ def test_half_the_step_moves_no_side_of_a_row():
             parcel.piece, parcel.horizon, settings.rows, settings.light, settings.asked
         )
     assert np.allclose(finer.sides, parcel.rows.sides, rtol=1e-3)
+    assert not np.array_equal(finer.sides, parcel.rows.sides)  # another step it was
+
+
+def test_a_dark_canopy_sends_no_light_to_the_other_side():
+    settings = asked_for(coarser=(), rows=RowSettings(2.0, 1.3, 0.4))
+    parcel = survey(plane(20.0, 140.0), parcels(box(-50, -50, 50, 50)), settings).parcels[0]
+    dark = rows_of(
+        parcel.piece, parcel.horizon, RowSettings(2.0, 1.3, 0.4, 0.0), settings.light,
+        settings.asked,
+    )  # fmt: skip
+    assert (dark.sides < parcel.rows.sides).all()
+    assert np.array_equal(dark.light.diffuse, parcel.rows.light.diffuse)
+    with pytest.raises(SettingError, match="canopy albedo 1 is outside"):
+        RowSettings(2.0, 1.3, 0.4, 1.0)
 
 
 def test_degree_days_fall_with_height():
@@ -345,3 +431,11 @@ def test_parcels_of_few_cells_are_doubted():
     assert len(doubts) == 1
     assert "'P0' (6.2)" in doubts[0]
     assert "P1" not in doubts[0]
+
+
+def test_parcels_that_overlap_are_told_with_the_ground_they_share():
+    shapes = parcels(box(-100, -50, 0, 50), box(-40, -50, 100, 50))
+    found = survey(plane(12.0, 180.0), shapes, asked_for(coarser=()))
+    assert any("'P0' with 'P1' (0.40 ha)" in text for text in found.warnings)
+    areas = [parcel.numbers["map_area_ha"] for parcel in found.parcels]
+    assert sum(areas) == pytest.approx(2.4 * SCALE, rel=1e-4)  # of 2 ha of ground

@@ -49,8 +49,12 @@ def test_figures_are_those_of_the_maps(ground, shape):
     )
     light, hours = settings.light, settings.hours
     numbers = survey(ground, parcels(shape, crs=ground.crs), settings).parcels[0].numbers
-    maps = terrasol.irradiation(ground, None, AIR, azimuths=light.azimuths, step_seconds=300.0)
-    sun = terrasol.sun_hours(ground, None, AIR, azimuths=hours.azimuths, step_seconds=300.0)
+    maps = terrasol.irradiation(
+        ground, None, AIR, azimuths=light.azimuths, step_seconds=light.step_seconds
+    )
+    sun = terrasol.sun_hours(
+        ground, None, AIR, azimuths=hours.azimuths, step_seconds=hours.step_seconds
+    )
     area = covered(ground, shape) * 140.0
     slope = np.radians(maps.slope.values.astype(float))
     percent, surface = 100.0 * np.tan(slope), area / np.cos(slope)
@@ -81,7 +85,11 @@ def test_median_of_first_sun_is_that_of_the_area(ground, shape):
     settings = asked_for(coarser=())
     numbers = survey(ground, parcels(shape, crs=ground.crs), settings).parcels[0].numbers
     sun = terrasol.sun_hours(
-        ground, None, AIR, azimuths=settings.hours.azimuths, step_seconds=300.0
+        ground,
+        None,
+        AIR,
+        azimuths=settings.hours.azimuths,
+        step_seconds=settings.hours.step_seconds,
     )
     area = covered(ground, shape)
     for month in (1, 6, 12):

@@ -83,7 +83,8 @@ def maps(hills):
     light = terrasol.irradiation(
         hills, None, Air.ineichen(3.0), monthly_parts=True, photons_per_joule=2.3, **kept
     )
-    hours = terrasol.sun_hours(hills, None, Air.ineichen(3.0), **kept)
+    days = "2025-03-21,2025-10-21"  # walking all twelve would take most of this file's time
+    hours = terrasol.sun_hours(hills, None, Air.ineichen(3.0), days=days, **kept)
     aspect = np.radians(light.aspect.values)
     return {
         "height_m": hills.heights,
@@ -97,8 +98,8 @@ def maps(hills):
         "photosynthetic_jun_mol_m2_d_slope": light.photosynthetic_months.values[5],
         "sun_season_h": hours.sun_hours_months.values[3:10].sum(axis=0),
         "sun_feb_h": hours.sun_hours_months.values[1],
-        "first_sun_mar_h": hours.first_sun.values[2],
-        "last_sun_oct_h": hours.last_sun.values[9],
+        "first_sun_mar_h": hours.first_sun.values[0],
+        "last_sun_oct_h": hours.last_sun.values[1],
     }
 
 
@@ -465,6 +466,34 @@ def test_from_python(hills):
     pd.testing.assert_frame_equal(table.frame, same)
     with pytest.raises(SettingError, match="twelve whole months"):
         terrasol.plot_predictors(hills, points, "2025-04")
+
+
+def test_maps_of_albedo_and_index_are_taken_from_python(hills):
+    """A plot in a cell has the light of that cell on the map, which has half the clear light."""
+    maps = {
+        "albedo_map": np.where(np.arange(300) < 220, 0.2, 0.6) * np.ones((12, 70, 1)),
+        "index_map": np.where(np.arange(300) < 220, 1.0, 0.5) * np.ones((1, 70, 1)),
+    }
+    quick = {"air": Air.ineichen(3.0), "azimuths": 16, "step_seconds": 3600.0}
+    points = at_cells(hills, *PLACES)
+    told = [
+        terrasol.plot_predictors(
+            hills, points, predictors=("irradiation",), radii=(), **quick, **more
+        ).frame["irradiation_year_global_mj_m2_slope"]
+        for more in (maps, {})
+    ]
+    whole = terrasol.irradiation(hills, **quick, **maps).irradiation_year.sel(part="global").values
+    at = [(20, 255), (33, 256), (45, 120), (29, 198)]
+    assert told[0].tolist() == pytest.approx([whole[cell] for cell in at], rel=1e-3)
+    assert (told[0] < 0.8 * told[1]).tolist() == [True, True, False, False]
+
+
+def test_a_horizon_that_ends_with_the_raster_is_told_where_shade_matters(hills, table):
+    said = "shade of all that stands in the raster, and of nothing beyond it"
+    assert any(text.startswith(said) for text in table.warnings)
+    points = at_cells(hills, *PLACES)
+    bare = plot_table(hills, points, settings(radii=(), groups=("height", "slope")))
+    assert not any(text.startswith(said) for text in bare.warnings)
 
 
 def test_far_ridges_and_trees_count(hills, metric_ground):

@@ -58,6 +58,7 @@ def test_plain_is_level_ground(metric_ground):
     assert site.record()["aspect_deg"] is None
 
 
+@pytest.mark.heavy
 def test_wall_to_the_south(metric_ground):
     """A long ridge 300 m away and 100 m high: 18.4 degrees to the south, less aside."""
     heights = np.full((81, 81), 500.0)
@@ -137,6 +138,7 @@ def test_two_places_are_as_alone(hills):
     assert both[0].record() != both[1].record()
 
 
+@pytest.mark.heavy
 def test_map_basis_and_unit(hills, place):
     site = middle(hills, settings=light(unit="kW h m-2", basis="map"))
     steeper = np.cos(np.radians(site.slope)) * 3.6
@@ -192,6 +194,7 @@ def test_places_off_the_ground(hills, metric_ground):
         middle(hills, azimuths=7)
 
 
+@pytest.mark.heavy
 def test_threads_change_nothing(hills, place):
     assert middle(hills, clock="+01:00", threads=3).record() == place.record()
 

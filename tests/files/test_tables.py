@@ -469,3 +469,28 @@ def test_col_de_porte():
     np.testing.assert_array_equal(read.values["global"], plain[:, 4])
     np.testing.assert_allclose(read.values["temperature"], plain[:, 8] - 273.15)
     np.testing.assert_allclose(read.values["precipitation"], plain[:, 7] * 3600.0)
+
+
+def air_of_winter(path, fahrenheit):
+    """Forty invented winter days at the place of `SAID`, 0 degC in the mean."""
+    rows = ["time,A"]
+    for hour in range(40 * 24):
+        air = 5.0 * np.sin((hour - 9) * np.pi / 12.0)
+        moment = np.datetime64("2024-01-10T00:00") + np.timedelta64(hour, "h")
+        rows.append(f"{moment},{1.8 * air + 32.0 if fahrenheit else air:.2f}")
+    path.write_text("\n".join(rows) + "\n")
+    return path
+
+
+def test_air_in_degrees_fahrenheit_that_are_not_stated_is_refused(tmp_path):
+    said = SAID | {"columns": {"temperature": {"column": "A", "unit": "degC"}}}
+    path = air_of_winter(tmp_path / "air.csv", fahrenheit=True)
+    with pytest.raises(
+        InputError, match=r"air\.csv: temperature cannot be in degC.*degF would fit"
+    ):
+        read_station(path, **said)
+    mended = said | {"columns": {"temperature": {"column": "A", "unit": "degF"}}}
+    assert read_station(path, **mended).values["temperature"].mean() == pytest.approx(0.0, abs=0.01)
+    assert read_station(path, **said, check_units=False).values["temperature"].mean() > 30.0
+    real = air_of_winter(tmp_path / "real.csv", fahrenheit=False)
+    assert read_station(real, **said).values["temperature"].mean() == pytest.approx(0.0, abs=0.01)

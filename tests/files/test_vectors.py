@@ -48,6 +48,24 @@ def test_bow_tie_is_repaired_and_said_so(tmp_path):
     assert any("'tie'" in text and "repaired" in text for text in found.warnings)
 
 
+def test_an_outline_without_area_is_left_out_beside_one_that_is_repaired(tmp_path):
+    """A line there and back is a valid feature of a file, and no parcel."""
+    spike = shapely.Polygon([(620000, 5150000), (620050, 5150000), (620000, 5150000)])
+    frame(BOW_TIE, spike, SQUARE, name=["tie", "spike", "in"], row=[1, 2, 3]).to_file(
+        tmp_path / "three.gpkg"
+    )
+    found = read_polygons(tmp_path / "three.gpkg", UTM)
+    assert found.names == ("tie", "in")
+    assert [shape.area for shape in found.geometries] == pytest.approx([5000.0, SQUARE.area])
+    assert [found.given(k)["row"] for k in (0, 1)] == [1, 3]
+    tie, left_out = found.warnings
+    assert "'tie' was not valid" in tie
+    assert left_out == "the outline of 'spike' has no area and is left out: draw it anew"
+    frame(spike, name=["spike"]).to_file(tmp_path / "none.gpkg")
+    with pytest.raises(InputError, match=r"none\.gpkg: no feature of the file has an area"):
+        read_polygons(tmp_path / "none.gpkg", UTM)
+
+
 def test_overlapping_parts_count_once(tmp_path):
     both = shapely.MultiPolygon([shapely.box(0, 0, 20, 20), shapely.box(10, 10, 30, 30)])
     frame(both, name=["both"]).to_file(tmp_path / "both.gpkg")

@@ -42,8 +42,6 @@ def test_spellings(text, unit):
         ("metre", "fathoms", "EPSG:32632", "metre", "fathoms"),
         (None, None, "EPSG:32632", "metre", "metres are assumed"),
         (None, None, "EPSG:4326", "metre", "metres are assumed"),
-        # A plan in feet does not make the heights feet, but they may well be.
-        (None, None, "EPSG:2226", "metre", "THE HEIGHTS MAY NOT BE METRES"),
         ("foot", None, "EPSG:2226", "foot", None),
     ],
 )
@@ -60,6 +58,16 @@ def test_who_is_believed(option, band, crs, unit, words):
 def test_unknown_text_asks_for_the_option():
     with pytest.raises(InputError, match=r"'fathoms'.*--vertical-unit"):
         resolve_vertical_unit(None, "fathoms", reference("EPSG:32632"))
+
+
+@pytest.mark.parametrize("crs", ["EPSG:2226", "EPSG:2222", "EPSG:2314"])
+def test_a_plan_in_feet_does_not_make_the_heights_feet_but_they_may_be(crs):
+    """US survey feet, international feet, Clarke's feet: refused, whatever the band leaves out."""
+    for band in (None, " "):
+        with pytest.raises(InputError, match=r"x and y are in .*foot.*--vertical-unit"):
+            resolve_vertical_unit(None, band, reference(crs))
+    assert resolve_vertical_unit(None, "m", reference(crs)) == ("metre", ())
+    assert resolve_vertical_unit("metre", None, reference(crs)) == ("metre", ())
 
 
 def test_unknown_option():

@@ -31,12 +31,17 @@ def sunshine(days, cells):
     ) * np.linspace(0.3, 1.3, cells, dtype=np.float32)
 
 
+COLD = [{}, {"deficit_factor": 0.6}]
+"""Without and with a heat deficit."""
+
+
 @pytest.mark.parametrize("melt", list(MELT_MODELS))
 @pytest.mark.parametrize("albedo", ["brock", "usace"])
-def test_water_is_neither_lost_nor_made(melt, albedo):
+@pytest.mark.parametrize("changed", COLD)
+def test_water_is_neither_lost_nor_made(melt, albedo, changed):
     """Snowfall + refrozen = melt + frozen; snowfall + rain on snow = outflow + what lies."""
     days, cells = 240, 40
-    model = SnowModel(melt, albedo)
+    model = SnowModel(melt, albedo, changed=changed)
     weather, light = winter(days), sunshine(days, cells)
     above = np.linspace(-900.0, 2500.0, cells, dtype=np.float32)
     steep = np.linspace(1.0, 2.0, cells, dtype=np.float32)
@@ -64,7 +69,8 @@ def test_water_is_neither_lost_nor_made(melt, albedo):
 def plain_day(model, air, water, light, above, steep, state):
     """The same day of one cell, written out as the docs tell it; shares no code."""
     n = model.numbers
-    solid, wet, age, warmth, fresh, albedo = state
+    solid, wet, age, warmth, fresh, deficit, felt, albedo = state
+    cold = n["deficit_factor"]
     warmest, snowed = 0.0, False
 
     def snow_albedo():
@@ -85,6 +91,9 @@ def plain_day(model, air, water, light, above, steep, state):
         p = water[hour] * max(0.0, 1.0 + n["precipitation_gradient"] / 100.0 * above / 100.0)
         share = min(1.0, max(0.0, 0.5 + (n["rain_snow_middle"] - t) / n["rain_snow_width"]))
         bare = solid == 0.0
+        if cold and p * share > 0.0:
+            deficit += max(0.0, -t) * p * share / 160.0
+            felt = min(t, 0.0) if p * share > 1.5 else felt
         if p * share > 0.0:
             solid, fresh, snowed = solid + p * share, fresh + p * share, True
             if bare or fresh >= n["fresh_snow"]:
@@ -109,28 +118,36 @@ def plain_day(model, air, water, light, above, steep, state):
                 m = n["degree_day_factor"] / 24 * t
         m = min(max(m, 0.0) * steep, solid)
         solid, wet, melt_sum = solid - m, wet + m, melt_sum + m
-        if t < 0 and solid > 0:
+        if cold:
+            deficit += 0.0 if m else cold / 24 * (felt - min(t, 0.0)) * steep
+            deficit = min(max(deficit, 0.0), 0.33 * solid)
+            felt = min(0.0, t + (felt - t) * (1.0 - n["deficit_memory"]) ** (1 / 6))
+            r = min(wet, deficit)
+            solid, wet, deficit = solid + r, wet - r, deficit - r
+            felt = 0.0 if r and not deficit else felt
+        elif t < 0 and solid > 0:
             r = min(wet, n["refreeze_factor"] / 24 * -t * steep)
             solid, wet = solid + r, wet - r
         wet -= max(wet - n["holding_share"] * solid, 0.0)
         warmest = max(warmest, t)
         age += 1 / 24
     if solid == 0.0:
-        return (0.0, wet, 0.0, 0.0, 0.0, n["ground_albedo"]), melt_sum
+        return (0.0, wet, 0.0, 0.0, 0.0, 0.0, 0.0, n["ground_albedo"]), melt_sum
     warmth += warmest
     fresh = fresh if snowed else 0.0
-    return (solid, wet, age, warmth, fresh, snow_albedo()), melt_sum
+    return (solid, wet, age, warmth, fresh, deficit, felt, snow_albedo()), melt_sum
 
 
 @pytest.mark.parametrize("melt", list(MELT_MODELS))
 @pytest.mark.parametrize("albedo", ["brock", "usace"])
-def test_against_a_plain_second_way(melt, albedo):
+@pytest.mark.parametrize("changed", COLD)
+def test_against_a_plain_second_way(melt, albedo, changed):
     """Day by day; the surface is carried in single precision, hence 1e-4 mm a season."""
     days, above, steep = 200, 350.0, 1.3
-    model = SnowModel(melt, albedo)
+    model = SnowModel(melt, albedo, changed=changed)
     weather, light = winter(days, 5), sunshine(days, 3)
     snow = Snow.none(3, model)
-    state, ours, theirs = (0.0, 0.0, 0.0, 0.0, 0.0, 0.2), 0.0, 0.0
+    state, ours, theirs = (0.0,) * 7 + (0.2,), 0.0, 0.0
     high, wide = np.full(3, above, np.float32), np.full(3, steep, np.float32)
     for day in range(days):
         ours += snow_day(model, weather, day, light[day], high, wide, snow)[2, MELT]
@@ -140,9 +157,52 @@ def test_against_a_plain_second_way(melt, albedo):
         )  # fmt: skip
         theirs += melted
         assert snow.ice[2] == pytest.approx(state[0], abs=1e-3)
-        assert snow.albedo[2] == pytest.approx(state[5], abs=1e-4)
+        assert snow.albedo[2] == pytest.approx(state[7], abs=1e-4)
     assert ours == pytest.approx(theirs, abs=1e-3)
     assert theirs > 100.0
+
+
+def after_cold(air, model):
+    """200 mm of dry snow after a day of the same air; what moved, and the snow."""
+    snow = Snow.none(1, model)
+    snow.ice[:] = 200.0
+    weather = Weather(
+        winter(1).edges, winter(1).months, np.full((1, 24), air), np.zeros((1, 24)), 0.0
+    )
+    one = np.ones(1, np.float32)
+    moved = snow_day(model, weather, 0, np.zeros((24, 1), np.float32), 0.0 * one, one, snow)
+    return moved[0], snow
+
+
+def test_cold_snow_freezes_its_first_melt():
+    """A day of steady frost makes the deficit of the formula; as much melt is then kept back."""
+    model = SnowModel("degree-days", changed={"deficit_factor": 0.6})
+    keep = 0.9 ** (1.0 / 6.0)
+    felt = -10.0 * (1.0 - keep ** np.arange(24))
+    deficit = float((0.6 / 24.0 * (felt + 10.0)).sum())
+    _, snow = after_cold(-10.0, model)
+    assert snow.skin[0, kernel.SKIN.index("deficit")] == pytest.approx(deficit, rel=1e-5)
+    assert snow.skin[0, kernel.SKIN.index("felt")] == pytest.approx(
+        -10.0 * (1.0 - keep**24), rel=1e-5
+    )
+    for steep in (1.0, 2.0):
+        thaw = Snow(snow.ice.copy(), snow.liquid.copy(), snow.skin.copy())
+        weather = Weather(
+            winter(1).edges, winter(1).months, np.full((1, 24), 4.0), np.zeros((1, 24)), 0.0
+        )
+        area = np.full(1, steep, np.float32)
+        moved = snow_day(model, weather, 0, np.zeros((24, 1), np.float32), 0.0 * area, area, thaw)
+        assert moved[0, MELT] == pytest.approx(4.4 * 4.0 * steep)
+        assert moved[0, REFROZEN] == pytest.approx(deficit, rel=1e-5)
+        assert thaw.skin[0, kernel.SKIN.index("deficit")] == 0.0
+
+
+def test_the_deficit_stays_a_share_of_the_snow_and_away_unless_asked_for():
+    moved, snow = after_cold(-300.0, SnowModel(changed={"deficit_factor": 2.0}))
+    assert snow.skin[0, kernel.SKIN.index("deficit")] == pytest.approx(66.0)
+    assert moved.sum() == 0.0
+    _, snow = after_cold(-30.0, SnowModel())
+    assert (snow.skin[0, 3:5] == 0.0).all()
 
 
 def test_voids_stay_untouched():

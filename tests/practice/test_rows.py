@@ -2,8 +2,10 @@
 
 import numpy as np
 import pytest
+from reference.plain_rows import plain_rows
 
 from terrasol.errors import SettingError
+from terrasol.light.irradiation import BAND_TOP
 from terrasol.practice import rows
 from terrasol.practice.rows import Vineyard, mean_plane, row_light, row_slopes, strip_views
 from terrasol.sky.sun import incidence_cosine, unit_vector
@@ -21,12 +23,21 @@ def lit(elevation, azimuth, **options):
     """Row light of suns of 1 W/m2 a million seconds each, without diffuse light: energy is 1."""
     elevation, azimuth = np.atleast_1d(elevation), np.atleast_1d(azimuth)
     light = np.ones(elevation.size), np.zeros(elevation.size)
-    return row_light(elevation, azimuth, *light, 1e6, **{**SIZES, **BLACK, **options})
+    with pytest.MonkeyPatch.context() as patch:  # few directions will do for a sky that is dark
+        patch.setattr(rows, "SKY_AZIMUTHS", 4)
+        patch.setattr(rows, "SKY_RINGS", 2)
+        return row_light(elevation, azimuth, *light, 1e6, **{**SIZES, **BLACK, **options})
 
 
 def under_even_sky(**options):
     """Row light of an even sky alone, 1 MJ/m2 on open level ground."""
     return row_light([10.0], [0.0], [0.0], [1.0], 1e6, **{**SIZES, **BLACK, **options})
+
+
+def under_a_band(**options):
+    """Row light of a horizon band alone, 1 MJ/m2 on an open plumb wall."""
+    dark = [10.0], [0.0], [0.0], [0.0]
+    return row_light(*dark, 1e6, horizon_band=[1.0], **{**SIZES, **BLACK, **options})
 
 
 @pytest.mark.parametrize(("slope", "aspect"), PLACES)
@@ -87,6 +98,80 @@ def test_even_sky_between_level_rows_follows_crossed_strings(spacing, height, wi
     q = height / (spacing - width)
     assert opening[2] == pytest.approx(np.hypot(1.0, q) - q, abs=1e-12)
     assert views[0, 1] == pytest.approx(np.hypot(1.0, 1 / q) - 1 / q, abs=1e-12)
+
+
+SKY_OVER_ROWS = [
+    (0.0, 0.0, 2.0, 1.3, 0.4, 20.0),
+    (12.0, 180.0, 2.1, 1.3, 0.45, 35.0),
+    (25.0, 75.0, 2.0, 1.5, 0.3, 165.0),
+    (20.0, 200.0, 9.0, 1.0, 0.0, 120.0),
+]
+"""Slope, aspect, spacing, height, width, row azimuth."""
+
+
+@pytest.mark.parametrize("place", SKY_OVER_ROWS)
+def test_horizon_band_agrees_with_an_integral_over_the_sky(place):
+    # The reference has a band of even radiance, the rows one that is even in the tangent: over 6.5
+    # degrees that moves light within the band by 1.3 %, and a surface by less than half of it.
+    e = np.radians(6.5)
+    want = plain_rows(6.5, True, *place) / (e + np.sin(e) * np.cos(e))
+    names = ("slope", "aspect", "spacing", "height", "width", "row_azimuths")
+    got = under_a_band(**dict(zip(names, place, strict=True))).diffuse[0]
+    np.testing.assert_allclose(got, want, atol=1e-3, rtol=6e-3)
+    assert want[:2].max() > 0.1
+
+
+def test_even_sky_on_a_slope_agrees_with_an_integral_over_the_sky():
+    place = SKY_OVER_ROWS[2]
+    want = plain_rows(90.0, False, *place) / np.pi
+    got = under_even_sky(
+        slope=25.0, aspect=75.0, spacing=2.0, height=1.5, width=0.3, row_azimuths=[165.0]
+    ).diffuse[0]
+    np.testing.assert_allclose(got, want, atol=1e-3)
+
+
+@pytest.mark.parametrize("gap", [0.8, 1.6, 8.0])
+def test_horizon_band_between_level_rows_has_a_closed_form(gap):
+    # The neighbour hides the horizon; what comes over its top lights min(cos t, k w) of a side, for
+    # a direction t from square at tangent w, with k gap over height. Mean over w, sum over t. Steps
+    # of w err where the min has its corner: by k / (8 BAND_RINGS^2) at most, 3.4e-4 for k of 0.7.
+    k = gap / 1.3 * BAND_TOP
+    assert k < 1.0
+    edge = np.arccos(k)
+    squares = 0.5 * (0.5 * np.pi - edge) - 0.25 * np.sin(2.0 * edge)
+    want = 0.5 * edge * k + 1.0 - np.sin(edge) - squares / (2.0 * k)
+    got = under_a_band(slope=0.0, aspect=np.nan, spacing=gap + 0.4, width=0.4).diffuse
+    np.testing.assert_allclose(got[:, :2], want, atol=3.5e-4)
+    np.testing.assert_array_equal(got[:, 2:], 0.0)
+
+
+@pytest.mark.parametrize(("slope", "aspect"), PLACES)
+def test_top_and_ground_take_the_horizon_band_as_the_slope_does(slope, aspect):
+    got = under_a_band(slope=slope, aspect=aspect).diffuse
+    np.testing.assert_allclose(got[:, TOP], np.sin(np.radians(slope)), atol=1e-4)
+    assert (got[:, GROUND] <= got[:, TOP]).all()
+    # Rows so far apart that they hide nothing: ground as the slope.
+    far = under_a_band(slope=slope, aspect=aspect, spacing=1e5).diffuse
+    np.testing.assert_allclose(far[:, GROUND], far[:, TOP], atol=1e-3)
+
+
+def test_far_apart_a_side_has_the_whole_band_and_a_low_horizon_hides_a_part():
+    far = {"slope": 0.0, "aspect": np.nan, "spacing": 1e6}
+    np.testing.assert_allclose(under_a_band(**far).diffuse[:, :2], 1.0, atol=1e-4)
+    half = under_a_band(**far, horizon=np.full(64, 0.25 * BAND_TOP))
+    np.testing.assert_allclose(half.diffuse[:, :2], 0.75, atol=1e-4)
+    none = under_a_band(slope=20.0, aspect=180.0, horizon=np.full(64, 1.01 * BAND_TOP))
+    assert (none.diffuse == 0.0).all()
+
+
+def test_what_the_band_adds_to_a_strip_of_slope_is_bounded():
+    # Level light falls on sides at the height w of its place in the band without falling on the
+    # slope: at most gap times pi times the mean of w, shared by both sides.
+    for slope, aspect in PLACES:
+        got = under_a_band(slope=slope, aspect=aspect)
+        more = got.per_metre.sum(axis=1) - 2.1 * got.total[:, TOP]
+        assert (more > 0.0).all()
+        assert (more <= 2.1 * 0.5 * np.pi * BAND_TOP).all()
 
 
 @pytest.mark.parametrize("row", [0.0, 35.0, 90.0, 160.0])
@@ -240,6 +325,14 @@ def test_sky_directions_are_enough(monkeypatch):
     monkeypatch.setattr(rows, "SKY_AZIMUTHS", 2 * rows.SKY_AZIMUTHS)
     monkeypatch.setattr(rows, "SKY_RINGS", 2 * rows.SKY_RINGS)
     np.testing.assert_allclose(under_even_sky(**options).total, few, atol=1e-4)
+
+
+def test_directions_of_the_horizon_band_are_enough(monkeypatch):
+    options = {"slope": 15.0, "aspect": 200.0, "spacing": 1.4}
+    few = under_a_band(**options).total
+    monkeypatch.setattr(rows, "SKY_AZIMUTHS", 2 * rows.SKY_AZIMUTHS)
+    monkeypatch.setattr(rows, "BAND_RINGS", 2 * rows.BAND_RINGS)
+    np.testing.assert_allclose(under_a_band(**options).total, few, atol=1e-3)
 
 
 def test_rows_turned_half_round_change_sides():

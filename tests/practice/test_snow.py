@@ -318,7 +318,9 @@ def winter_of(days=150, seed=2):
     ("melt", "true"),
     [
         ("enhanced", {"radiation_factor": 0.006, "snow_factor": 1.15}),
-        ("degree-days", {"degree_day_factor": 3.1, "snow_factor": 0.9}),
+        pytest.param(
+            "degree-days", {"degree_day_factor": 3.1, "snow_factor": 0.9}, marks=pytest.mark.heavy
+        ),
     ],
 )
 def test_a_fit_finds_the_numbers_that_made_the_snow(melt, true):

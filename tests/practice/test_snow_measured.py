@@ -17,6 +17,7 @@ from terrasol.practice.snow import SnowModel
 from terrasol.practice.snow_point import agreement, fit_snow, point_snow
 from terrasol.practice.snow_weather import hourly_weather, level_light, measured_light
 from terrasol.sky.potential import PotentialBeam
+from terrasol.sky.warmth import too_warm
 
 SHARED = Path(terrasol.__file__).resolve().parents[2] / "shared"
 FOLDER = SHARED / "data/coldeporte"
@@ -101,6 +102,31 @@ def test_before_and_after_fitting(winter):
         assert fit.after.rmse <= before.rmse
     assert after["enhanced", "brock"] > 0.95
     assert after["degree-days", "brock"] > 0.95
+
+
+@pytest.mark.parametrize("melt", ["enhanced", "hock", "degree-days"])
+def test_with_and_without_a_heat_deficit(winter, melt):
+    weather, measured, potential, observed, _ = winter
+    light = potential if melt == "hock" else measured
+    found = {}
+    for cold in (0.0, 0.6):
+        model = SnowModel(melt, changed={"deficit_factor": cold})
+        point = point_snow(model, weather, light)
+        found[cold] = agreement(point.water, observed, weather.edges)
+        told(f"{melt}, deficit_factor {cold}, refrozen {point.moved[:, 4].sum():.0f}", found[cold])
+        if cold:
+            fit = fit_snow(model, weather, light, observed)
+            told(f"fitted {fit.record()['fitted']} {fit.at_bound}", fit.after)
+            assert fit.after.efficiency > 0.95
+    assert found[0.6].efficiency > found[0.0].efficiency + 0.1
+    assert found[0.0].melt_out < found[0.6].melt_out < "2006-04-28"  # later, and still early
+
+
+def test_its_air_is_believed_and_not_in_fahrenheit():
+    station = station_of(7)
+    assert too_warm(station) is None
+    warm = {"temperature": station.values["temperature"] * 1.8 + 32.0}
+    assert too_warm(replace(station, values=warm)).in_fahrenheit
 
 
 def test_two_numbers_at_a_time(winter):

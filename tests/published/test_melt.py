@@ -16,7 +16,7 @@ def day_of(model, air, light=0.0, *, warmth=None, age=0.0, water=FOREVER, albedo
     snow.ice[:] = water
     snow.skin[:, 0], snow.skin[:, 1] = age, warmth if warmth is not None else 0.0
     if albedo is not None:
-        snow.skin[:, 3] = albedo
+        snow.skin[:, -1] = albedo
     hours = np.full((1, 24), float(air))
     weather = Weather(DAY, np.array([4]), hours, np.zeros((1, 24)), 0.0)
     shine = np.full((24, 1), light, np.float32)

@@ -5,6 +5,8 @@ asked at the sun's own azimuth. Nothing is interpolated, tabulated or skipped. T
 while its upper limb stands above the horizon, above the slope's plane and above the level.
 """
 
+from functools import cache
+
 import numpy as np
 import pandas as pd
 import pvlib
@@ -12,6 +14,7 @@ import pvlib
 SUN_RADIUS = 0.26667  # degrees, Reda and Andreas (2008)
 
 
+@cache
 def sun_of_day(date, latitude, longitude, *, height=0.0, seconds=5):
     """True solar time [h], height of the upper limb and azimuth [degrees] from midnight on.
 
@@ -27,7 +30,10 @@ def sun_of_day(date, latitude, longitude, *, height=0.0, seconds=5):
     solar = mean_time + sun["equation_of_time"].to_numpy() / 60.0
     day = (solar >= 0.0) & (solar <= 24.0)
     limb = sun["apparent_elevation"].to_numpy() + SUN_RADIUS
-    return solar[day], limb[day], sun["azimuth"].to_numpy()[day]
+    kept = solar[day], limb[day], sun["azimuth"].to_numpy()[day]
+    for values in kept:
+        values.flags.writeable = False  # the same arrays serve every test of that day
+    return kept
 
 
 def own_plane(azimuth, slope, aspect):
@@ -69,4 +75,6 @@ def plain_day(date, latitude, longitude, horizon, slope=0.0, aspect=0.0, *, heig
     """
     solar, limb, azimuth = sun_of_day(date, latitude, longitude, height=height, seconds=seconds)
     plane = own_plane(azimuth, slope, aspect)
-    return sunshine(solar, limb > np.maximum(np.maximum(horizon(azimuth), plane), 0.0))
+    up = limb > np.maximum(plane, 0.0)
+    up[up] = limb[up] > horizon(azimuth[up])
+    return sunshine(solar, up)

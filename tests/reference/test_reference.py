@@ -4,6 +4,7 @@ import numpy as np
 import pandas as pd
 import pytest
 
+from reference.plain_rows import plain_rows
 from reference.plain_speed import hourly_suns, plain_beam
 from reference.plain_sun import (
     SOLAR_CONSTANT,
@@ -93,6 +94,7 @@ def test_wall_takes_the_sun_until_it_rises_above_it():
     assert got == pytest.approx(want, rel=3e-4)  # one minute is 3e-4 of that day's beam
 
 
+@pytest.mark.heavy
 def test_naive_way_and_minute_way_agree_on_a_hill():
     # hourly sampling of a month of days is good to a percent where shade matters little
     north, east = np.mgrid[300:-301:-20, -300:301:20].astype(float)
@@ -109,3 +111,23 @@ def test_normals_of_a_plane_reach_to_the_rim():
     normal = upward_normals(0.3 * east - 0.2 * north, 10.0, 10.0)
     want = np.array([-0.3, 0.2, 1.0]) / np.sqrt(0.3**2 + 0.2**2 + 1.0)
     np.testing.assert_allclose(normal, np.broadcast_to(want, normal.shape), atol=1e-14)
+
+
+def test_sky_between_plain_rows_follows_closed_forms():
+    # An even sky of radiance 1 sends pi to open level ground. Of the floor of a lane with q height
+    # over gap it reaches sqrt(1 + q^2) - q, of a side half of 1 + 1 / q - sqrt(1 + 1 / q^2).
+    q = 1.5 / 1.6
+    right, left, top, ground = plain_rows(90.0, False, 0.0, 0.0, 2.0, 1.5, 0.4, 20.0) / np.pi
+    assert top == pytest.approx(1.0, abs=1e-3)
+    assert ground == pytest.approx(np.hypot(1.0, q) - q, abs=1e-3)
+    side = 0.5 * (1.0 + 1.0 / q - np.hypot(1.0, 1.0 / q))
+    assert right == pytest.approx(side, abs=1e-3)
+    assert left == pytest.approx(side, abs=1e-3)
+    # A band of radiance 1 up to e sends e + sin e cos e to an open wall: 2 times the integral of
+    # cos^2. Its level part sends nothing to level ground, and sin S of that to a slope S.
+    e = np.radians(6.5)
+    wall = e + np.sin(e) * np.cos(e)
+    far = plain_rows(6.5, True, 0.0, 0.0, 1e4, 1.5, 0.4, 20.0) / wall
+    np.testing.assert_allclose(far, [1.0, 1.0, 0.0, 0.0], atol=1e-3)
+    sloping = plain_rows(6.5, True, 25.0, 75.0, 2.0, 1.5, 0.4, 20.0) / wall
+    assert sloping[2] == pytest.approx(np.sin(np.radians(25.0)), abs=1e-3)

@@ -69,7 +69,10 @@ def test_without_a_clear_day_the_brightest_are_shown():
     assert comparison_png(report, title="Dull")[:4] == b"\x89PNG"
 
 
-@pytest.mark.parametrize("latitude", [-33.0, 0.0, 78.0, -89.0])
+@pytest.mark.parametrize(
+    "latitude",
+    [*(pytest.param(each, marks=pytest.mark.heavy) for each in (-33.0, 0.0, 78.0)), -89.0],
+)
 def test_any_latitude(latitude):
     spot = Spot.under([5.0] * 16)
     station = made_series(spot, days=10, start="2025-03-20", place=(latitude, -179.9))

@@ -10,7 +10,9 @@ from terrasol.engine.melt_tables import DEPTHS, SeasonTables, check_csv
 from terrasol.ground.frame import make_frame
 from terrasol.practice.snow_point import StationCheck
 from terrasol.show import melt as show
+from terrasol.show.key import Scale
 from terrasol.show.page import Page
+from terrasol.show.relief import OTHER_LINE, VOID_LINE
 
 
 def season(days=120, bands=4, members=2):
@@ -75,7 +77,7 @@ def test_many_bands_are_named_here_and_there_within_the_page(said):
     png = show.bands_png(season(20, bands=91), title="t", subtitle="s", notes=NOTES)
     assert png.startswith(b"\x89PNG")
     named = [word for word in said if "–" in word]
-    assert 11 <= len(named) <= show.MOST_NAMED
+    assert 11 <= len(set(named)) <= show.MOST_NAMED
     assert "44500–45000" in named
 
 
@@ -86,13 +88,72 @@ def test_map_of_melt_out_names_dates(said, metric_ground):
     days[y > 35] = np.nan
     frame = make_frame(ground.shape, ground.transform, ground.crs)
     first = np.datetime64("2024-10-01")
-    png = show.melt_out_png(ground, frame, days, first, title="t", subtitle="s", notes=NOTES)
+    lies = np.isnan(days) & (x > 25)
+    png = show.melt_out_png(
+        ground, frame, days, first, lies=lies, title="t", subtitle="s", notes=NOTES
+    )
     assert png.startswith(b"\x89PNG")
     assert "1 Feb" in said
     assert "15 Mar" in said
-    assert "no snow came, or it still lies" in said
+    assert {"9 Jan", "17 Apr"} <= set(said)  # the ends: days 100 and 198 of the season
+    assert "15 Apr" not in said  # too near to the last one
+    assert "no snow came" in said
+    assert "snow still lies" in said
     assert "no data" not in said
     assert any(word.startswith("mean ") for word in said)
+
+
+def test_ground_without_snow_and_ground_still_covered_are_hatched_apart(metric_ground):
+    y, x = np.mgrid[0:40, 0:50].astype(float)
+    ground = metric_ground(1000.0 + 5.0 * x, 50.0)
+    frame = make_frame(ground.shape, ground.transform, ground.crs)
+    days = np.where(y > 20, np.nan, 100.0 + x).astype(np.float32)
+
+    def drawn(lies):
+        png = show.melt_out_png(
+            ground, frame, days, np.datetime64("2024-10-01"),
+            lies=lies, title="t", subtitle="s", notes=NOTES,
+        )  # fmt: skip
+        return imread(io.BytesIO(png))[..., :3]
+
+    def share_of(picture, colour):
+        return np.all(np.abs(picture - np.array(colour)) < 0.01, axis=-1).mean()
+
+    none, half, every = (drawn(np.isnan(days) & (x > least)) for least in (99, 25, -1))
+    assert share_of(none, OTHER_LINE) == 0.0
+    assert share_of(none, VOID_LINE) > 0.02
+    assert share_of(half, OTHER_LINE) > 0.01
+    assert share_of(half, VOID_LINE) > 0.01
+    assert share_of(every, OTHER_LINE) > 0.02
+    assert share_of(every, VOID_LINE) < 0.001
+
+
+def test_bands_are_named_at_their_curves_and_neighbours_are_stroked_apart(monkeypatch):
+    places = []
+    write = Page.text
+
+    def keep(self, x, y, text, *more, **given):
+        places.append((x, y, text))
+        return write(self, x, y, text, *more, **given)
+
+    monkeypatch.setattr(Page, "text", keep)
+    show.bands_png(season(120, bands=8), title="t", subtitle="s", notes=NOTES)
+    key = show.WIDTH - show.MARGIN - 128
+    at_curves = [(x, y, text) for x, y, text in places if "–" in text and x < key]
+    assert {text for *_, text in at_curves} <= {f"{500 * k}–{500 * k + 500}" for k in range(7)}
+    assert len(at_curves) >= 3
+    for k, (x, y, text) in enumerate(at_curves):
+        for left, level, other in at_curves[:k]:
+            apart = abs(x - left) >= 13.0 * len(other) * 0.5 or abs(y - level) >= 13.0
+            assert apart, (text, other)
+    assert show._stroke(3) != show._stroke(4)
+
+
+def test_early_and_late_stand_out_from_the_paper_and_in_grey():
+    ramp = Scale(0.0, 1.0, colour_map=show.LATE_IS_BRIGHT).colours(np.linspace(0.0, 1.0, 33))
+    lightness = ramp @ np.array([0.2126, 0.7152, 0.0722])  # of linear light, near enough to order
+    assert (np.diff(lightness) > 0.0).all()
+    assert (np.ptp(ramp[[0, -1]], axis=1) > 0.2).all()  # neither end is grey or white
 
 
 @pytest.mark.parametrize("fitted", [True, False])

@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
+import re
+
 import numpy as np
 import pytest
 import shapely
 from engine.made_parcels import UTM, asked_for, box, parcels, plane
+from matplotlib.backends.backend_pdf import RendererPdf
 
 from terrasol.engine.parcel_figures import Warmth
 from terrasol.engine.parcel_rows import RowSettings
@@ -15,15 +18,17 @@ from terrasol.ground.frame import make_frame
 from terrasol.practice.limits import VINEYARD
 from terrasol.practice.season import SOUTHERN_SEASON
 from terrasol.practice.temperatures import from_monthly
-from terrasol.show.page import book
+from terrasol.show.page import Page, book
+from terrasol.show.panel import Panel
 from terrasol.show.parcel_map import (
     GroundMap,
+    draw_contours_around,
     frame_around,
     outline_path,
     scale_length,
     slope_colours,
 )
-from terrasol.show.parcel_sheet import facts, parcel_page
+from terrasol.show.parcel_sheet import UNKNOWN, facts, parcel_page
 from terrasol.show.parcels import MOST_ROWS, summary_page
 
 WARMTH = Warmth(from_monthly(np.full(12, 15.0), height=500.0, highest=np.full(12, 20.0)))
@@ -56,7 +61,7 @@ def test_a_sheet_says_what_was_found_and_what_is_not_in_it():
 
 
 @pytest.mark.heavy
-def test_every_kind_of_parcel_is_drawn():
+def test_every_kind_of_parcel_is_drawn(tmp_path):
     """Flat, void, half outside, in two parts, with a hole; and none of the options."""
     ground = plane(12.0, 180.0)
     ground.heights[:20] = 520.0
@@ -71,27 +76,30 @@ def test_every_kind_of_parcel_is_drawn():
     pages = [parcel_page(found, each, ground, frame, title="Test") for each in found.parcels]
     assert "nowhere (flat)" in all_words(pages[0])
     assert "unknown" in all_words(pages[1])
-    assert "Unknown ground" in all_words(pages[1])
-    assert "Outside the raster" in all_words(pages[2])
-    assert "no row spacing was given" in all_words(pages[3])
-    assert "no temperatures were given" in all_words(pages[4])
+    assert "of it known" in all_words(pages[1])
+    assert "of it on the raster" in all_words(pages[2])
+    assert "Direction of rows" not in all_words(pages[3])
+    assert "Degree-days" not in all_words(pages[4])
     for page in pages:
         assert "nan" not in all_words(page).lower().replace("nanometre", "")
     pages.insert(0, summary_page(found, ground, frame, title="Test"))
     assert "no score" in all_words(pages[0])
     assert VINEYARD in all_words(pages[0])
-    bound = book(pages, Title="Test")
+    book(tmp_path / "book.pdf", pages, Title="Test")
+    bound = (tmp_path / "book.pdf").read_bytes()
     assert bound.startswith(b"%PDF")
     assert bound.count(b"/Type /Page ") == 6
 
 
 @pytest.mark.heavy
-def test_a_page_is_the_same_again():
+def test_a_page_is_the_same_again(tmp_path):
     ground = plane(12.0, 180.0)
     found = survey(ground, parcels(box(0, 0, 60, 60)), asked_for(coarser=()))
     frame = frame_of(ground)
-    one, two = (book([summary_page(found, ground, frame, title="T")]) for _ in range(2))
-    assert one == two
+    places = tmp_path / "one.pdf", tmp_path / "two.pdf"
+    for place in places:
+        book(place, [summary_page(found, ground, frame, title="T")])
+    assert places[0].read_bytes() == places[1].read_bytes()
 
 
 def test_south_of_the_equator_with_a_period_and_a_measured_month():
@@ -122,10 +130,20 @@ def test_standard_errors_stand_behind_their_figures():
     settings = asked_for(coarser=(), rule="slope_percent < 15", error=DemError(0.3, 0.0, 2))
     found = survey(ground, parcels(box(0, 0, 60, 60)), settings)
     told = dict(facts(found, found.parcels[0]))
-    assert " ± " in told["Meets the rule"]
     assert " ± " in told["Slope, mean"]
     words = all_words(parcel_page(found, found.parcels[0], ground, frame_of(ground), title="T"))
-    assert "± one standard error" in words
+    assert "± or a range: one standard error" in words
+
+
+def test_an_area_of_none_or_all_is_off_to_one_side():
+    from terrasol.ground.uncertainty import DemError
+
+    ground = plane(14.5, 180.0)
+    for limit, pattern in ((14, r"0\.00 to 0\.\d\d ha, 0 %"), (15, r"0\.\d\d to 0\.36 ha, 100 %")):
+        error, rule = DemError(0.3, 0.0, 2), f"slope_percent < {limit}"
+        settings = asked_for(coarser=(), rule=rule, error=error)
+        found = survey(ground, parcels(box(0, 0, 60, 60)), settings)
+        assert re.fullmatch(pattern, dict(facts(found, found.parcels[0]))["Meets the rule"])
 
 
 @pytest.mark.parametrize("turn", [0.0, 40.0])
@@ -166,3 +184,164 @@ def test_many_months_are_not_written_over_each_other():
     assert "h a day" not in words
     assert words.count("2022") == 2  # an axis of energy and one of first and last sun
     assert "April 2024 to October 2024" in words
+
+
+def test_a_book_holds_no_more_of_a_map_than_its_cells(tmp_path, monkeypatch):
+    """Else each sheet of a long book takes two megabytes until the last is drawn."""
+    kept = []
+    draw = RendererPdf.draw_image
+    monkeypatch.setattr(
+        RendererPdf, "draw_image", lambda self, gc, x, y, im, transform=None: (
+            kept.append(im.nbytes), draw(self, gc, x, y, im, transform)
+        ),
+    )  # fmt: skip
+    ground = plane(12.0, 180.0)
+    found = survey(ground, parcels(box(-100, -50, 105, 50)), asked_for(coarser=()))
+    page = parcel_page(found, found.parcels[0], ground, frame_of(ground), title="T")
+    book(tmp_path / "book.pdf", [page])
+    assert kept == [4 * found.parcels[0].piece.slope.size]
+
+
+@pytest.mark.parametrize(("error", "step"), [(None, 1.0), (0.2, 0.5), (2.0, 5.0)])
+def test_contours_are_no_finer_than_the_heights_are_known(error, step):
+    ground = plane(1.0, 180.0)
+    panel, place = _map_panel(ground)
+    assert draw_contours_around(panel, ground, place, error) == step
+
+
+def test_level_ground_has_no_contours():
+    ground = plane(0.0, 180.0)
+    panel, place = _map_panel(ground)
+    assert draw_contours_around(panel, ground, place) is None
+
+
+def _map_panel(ground):
+    """A map of the middle of some ground, 200 m across."""
+    panel = Panel(Page(400, 400), 50.0, 50.0, 300.0, 300.0)
+    panel.limits(-100.0, 100.0, -100.0, 100.0)
+    rows, columns = ground.heights.shape
+    return panel, GroundMap.at(frame_of(ground), rows / 2, columns / 2)
+
+
+def test_names_of_contours_keep_from_the_frame_and_from_what_is_there():
+    ground = plane(25.0, 180.0)
+    panel, place = _map_panel(ground)
+    draw_contours_around(panel, ground, place)
+    named = _places(panel.page)
+    assert named
+    for x, y in named:
+        assert 70.0 < x < 330.0
+        assert 70.0 < y < 330.0
+    panel, place = _map_panel(ground)
+    left_half = (50.0, 50.0, 200.0, 350.0)
+    draw_contours_around(panel, ground, place, taken=[left_half])
+    right = _places(panel.page)
+    assert right
+    assert all(x > 210.0 for x, _ in right)
+
+
+def _places(page):
+    """Where the texts of a page stand."""
+    return [text.get_position() for text in page.axes.texts]
+
+
+def test_hours_run_up_and_no_time_touches_a_month():
+    ground = plane(12.0, 180.0)
+    found = survey(ground, parcels(box(-100, -50, 105, 50)), asked_for(coarser=()))
+    page = parcel_page(found, found.parcels[0], ground, frame_of(ground), title="T")
+    texts = {}
+    for text in page.axes.texts:
+        texts.setdefault(text.get_text(), []).append(text.get_position())
+    assert {"6:00", "9:00", "12:00", "15:00", "18:00"} <= set(texts)
+    assert texts["18:00"][0][1] < texts["6:00"][0][1]
+    lowest = max(
+        y for words, places in texts.items() if re.fullmatch(r"\d+:\d\d", words) for _, y in places
+    )
+    months = min(y for _, y in texts["Jun"] if y > 632)
+    assert lowest < months - 9.5
+
+
+def test_what_was_not_asked_for_leaves_no_empty_heading():
+    ground = plane(12.0, 180.0)
+    shapes = parcels(box(-100, -50, 105, 50))
+    frame = frame_of(ground)
+    for settings, there, missing in (
+        (asked_for(coarser=()), (), ("Direction of rows", "Degree-days")),
+        (asked_for(coarser=(), warmth=WARMTH), ("Degree-days",), ("Direction of rows",)),
+        (asked_for(coarser=(), rows=RowSettings(2.0, 1.3, 0.4)), ("Direction of rows",),
+         ("Degree-days",)),
+    ):  # fmt: skip
+        found = survey(ground, shapes, settings)
+        words = all_words(parcel_page(found, found.parcels[0], ground, frame, title="T"))
+        assert all(part in words for part in there)
+        assert not any(part in words for part in missing)
+
+
+@pytest.fixture(scope="module")
+def odd():
+    """Half outside, all void, of 9 m2, and in two parts; the ground, too."""
+    ground = plane(12.0, 180.0)
+    ground.heights[60:, :20] = np.nan
+    two = shapely.union_all([box(-100, -50, -50, 0), box(0, -50, 50, 0)])
+    shapes = parcels(box(350, 0, 450, 50), box(-390, -390, -250, -300), box(1, 1, 4, 4), two)
+    return survey(ground, shapes, asked_for(coarser=())), ground
+
+
+def page_of(odd, place):
+    found, ground = odd
+    return parcel_page(found, found.parcels[place], ground, frame_of(ground), title="Test")
+
+
+def test_area_is_told_as_drawn_and_what_of_it_is_on_the_raster_and_known(odd):
+    half, void, small, two = (dict(facts(odd[0], parcel)) for parcel in odd[0].parcels)
+    assert half["Area drawn, on the map"] == "0.50 ha"
+    assert half["  of it on the raster"] == "0.25 ha"
+    assert "  of it known" not in half
+    assert void["  of it known"] == "0.00 ha"
+    assert small["Area drawn, on the map"] == "9.0 m²"
+    assert set(two) & {"  of it on the raster", "  of it known"} == set()
+
+
+def test_blank_parts_of_an_outline_are_explained(odd):
+    assert "blank in an outline: outside the raster" in all_words(page_of(odd, 0))
+    assert "blank in an outline: unknown" in all_words(page_of(odd, 1))
+    assert "blank" not in all_words(page_of(odd, 2))
+    found, ground = odd
+    summary = all_words(summary_page(found, ground, frame_of(ground), title="Test"))
+    assert "blank in an outline: unknown or outside the raster" in summary
+
+
+def test_of_void_ground_no_empty_diagram_is_drawn(odd):
+    page = page_of(odd, 1)
+    assert len(page.figure.axes) == 2  # the page and the map
+    assert all_words(page).count(UNKNOWN) == 5
+    assert len(page_of(odd, 0).figure.axes) > 4
+
+
+def test_small_areas_have_square_metres(odd):
+    words = all_words(page_of(odd, 2))
+    assert "m² by sector" in words
+    assert "9.0 m² 100 %" in words
+    assert "ha by sector" in all_words(page_of(odd, 3))
+
+
+def test_sheets_say_what_the_horizon_is_made_of(odd):
+    said = "Shade of all that stands in the raster, and of nothing beyond it."
+    assert said in all_words(page_of(odd, 3))
+    found, ground = odd
+    assert said in all_words(summary_page(found, ground, frame_of(ground), title="Test"))
+
+
+def test_each_part_of_a_parcel_has_its_number(odd):
+    found, ground = odd
+    page = summary_page(found, ground, frame_of(ground), title="Test")
+    map_ = [
+        a.get_text()
+        for a in page.axes.get_children()
+        if hasattr(a, "get_text") and a.get_position()[1] < 600 and a.get_text() in "1234"
+    ]
+    assert sorted(filter(None, map_)) == ["1", "2", "3", "4", "4"]
+    words = all_words(page)
+    assert "ha drawn" in words
+    assert "known" in words
+    assert words.count("flat") == 0  # what is void faces nowhere that is known

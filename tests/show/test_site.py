@@ -16,7 +16,17 @@ from terrasol.light.days import parse_clock
 from terrasol.light.minutes import State
 from terrasol.light.settings import LightSettings
 from terrasol.practice.limits import PLACE
-from terrasol.show.site import DOTS, STATE_COLOURS, by_clock, page_pdf, page_png, site_page
+from terrasol.show.page import text_width
+from terrasol.show.site import (
+    DOTS,
+    RIGHT,
+    SMALL,
+    STATE_COLOURS,
+    by_clock,
+    page_pdf,
+    page_png,
+    site_page,
+)  # fmt: skip
 from terrasol.show.site_text import (
     clock_time,
     dark_text,
@@ -79,6 +89,7 @@ def test_two_places_fill_an_a3_sheet(ground, sites):
         assert half.std() > 0.1
 
 
+@pytest.mark.heavy
 def test_same_content_same_bytes(ground, site):
     first, second = (
         (page_png(page, "t"), page_pdf(page, "t"))
@@ -222,3 +233,31 @@ def test_clock_times(hours, words):
 )  # fmt: skip
 def test_directions(azimuth, words):
     assert direction(azimuth) == words
+
+
+def test_two_places_have_one_height_between_contours_and_captions_end_with_their_maps(
+    metric_ground,
+):
+    """Steep in the south, gentle in the north, and a narrow raster."""
+    y, _ = np.mgrid[0:161, 0:23].astype(float)
+    ground = metric_ground(1500.0 - 5.0 * np.minimum(y, 60) - 40.0 * np.maximum(y - 60, 0), 30.0)
+    settings = LightSettings(parse_period(None), Air.ineichen(3.0), step_seconds=3600.0)
+    spots = [Spot(LATITUDE + way * 0.014, LONGITUDE, "Place") for way in (1, -1)]
+    sites = survey(ground, spots, settings, parse_clock("solar"), azimuths=32)
+    own = [captions(site_page(ground, [site]))[0] for site in sites]
+    both = captions(site_page(ground, sites))
+    assert len(both) == 2
+    steps = [float(words.split()[-2]) for _, words in (*own, *both)]
+    assert steps[2:] == [max(steps[:2])] * 2
+    assert steps[0] != steps[1]
+    for k, (x0, words) in enumerate(both):
+        assert x0 + text_width(words, SMALL) <= 827 * k + RIGHT
+
+
+def captions(page):
+    """Where the words below the small maps start, and what they are."""
+    return sorted(
+        (text.get_position()[0], text.get_text())
+        for text in page.axes.texts
+        if "contours every" in text.get_text()
+    )

@@ -74,6 +74,16 @@ def test_a_wrong_zone_is_reported_and_not_applied():
     assert measured_sky(right, AIR).report["clock"]["verdict"] == "consistent"
 
 
+def test_the_clock_is_told_before_what_follows_from_it():
+    right = station(days=40)
+    late = Station(
+        "hill", 47.0, 15.4, 400.0, right.start + np.timedelta64(3 * 3600, "s"), 3600, right.values
+    )
+    told = measured_sky(late, AIR).warnings
+    assert len(told) > 1  # light without sun counts as missing, too
+    assert "the stated zone is 3 h too far west" in told[0]
+
+
 def test_an_offset_at_night_is_named_and_not_taken_off():
     here = station()
     low = {name: values - 30.0 for name, values in here.values.items()}

@@ -9,7 +9,14 @@ from reference.made_station import AIR, made_station, spa_minutes
 from terrasol.constants import SOLAR_CONSTANT
 from terrasol.errors import InputError
 from terrasol.sky.interval import behind_horizon, interval_means, on_level, sun_height
-from terrasol.sky.quality import IMPOSSIBLE, Flag, check_quality, refuse_wrong_unit, usable
+from terrasol.sky.quality import (
+    IMPOSSIBLE,
+    Flag,
+    check_quality,
+    hours_off_noon,
+    refuse_wrong_unit,
+    usable,
+)
 from terrasol.sky.station import Station
 from terrasol.sky.sun import incidence_cosine
 
@@ -225,6 +232,48 @@ def test_refused_units_name_the_fitting_one(factor, unit):
     with pytest.raises(InputError, match=f"made: global cannot be in W/m2.*{unit} would fit"):
         refuse_wrong_unit(wrong, "global", "W/m2", {"W/m2": 1.0, "kJ/m2": 1 / 3.6, "kW/m2": 1e3})
     assert refuse_wrong_unit(station, "global", "W/m2", {"W/m2": 1.0}) is None
+
+
+UNITS = {"W/m2": 1.0, "kJ/m2": 1 / 3.6, "kW/m2": 1e3}
+
+
+def late(station, hours, factor=1.0):
+    """A station whose clock is late by some hours, in a unit that is a factor too small."""
+    start = station.start + np.timedelta64(round(hours * 3600.0), "s")
+    return replace(station, start=start, values={"global": station.values["global"] * factor})
+
+
+@pytest.mark.parametrize("hours", [3.5, -3.5, -6.0, 6.0])
+def test_a_clock_hours_off_is_named_before_any_unit(hours):
+    station = made_station("2024-03-01", 40)
+    assert hours_off_noon(station, "global") == pytest.approx(0.0, abs=0.27)  # equation of time
+    side = "later" if hours > 0.0 else "earlier"
+    wrong = late(station, hours)
+    with pytest.raises(InputError, match=rf"middle of its days lies .* h {side}") as told:
+        refuse_wrong_unit(wrong, "global", "W/m2", UNITS)
+    assert "the unit would do" in str(told.value)
+    assert "would fit" not in str(told.value)
+    assert hours_off_noon(wrong, "global") == pytest.approx(hours, abs=0.4)
+
+
+def test_a_wrong_unit_under_a_wrong_clock_is_left_for_later():
+    station = made_station("2024-03-01", 40)
+    with pytest.raises(InputError, match="the unit can only be judged then"):
+        refuse_wrong_unit(late(station, 5.0, 1000.0), "global", "W/m2", UNITS)
+    # an hour, which hills may make, does not hide a unit that no clock mends
+    with pytest.raises(InputError, match="global cannot be in W/m2"):
+        refuse_wrong_unit(late(station, 1.0, 1000.0), "global", "W/m2", UNITS)
+
+
+def test_half_days_and_lights_without_noon_do_not_move_it():
+    station = made_station("2024-03-01", 40)
+    some = slice(12, 12 + 36)  # noon to midnight of the next day: two afternoons, one morning
+    part = replace(
+        station, start=station.start[some], values={"global": station.values["global"][some]}
+    )
+    assert hours_off_noon(part, "global") == pytest.approx(0.0, abs=0.7)
+    lamp = replace(station, values={"global": np.full(station.start.size, 5.0)})
+    assert hours_off_noon(lamp, "global") is None
 
 
 def april(aspect, shift_minutes):

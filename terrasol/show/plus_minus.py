@@ -1,0 +1,69 @@
+"""A number with its standard error, as people read it."""
+
+from __future__ import annotations
+
+import math
+
+from terrasol.errors import area_unit
+
+
+def plus_minus(
+    value: float,
+    error: float | None,
+    form: str,
+    *,
+    sign: str = "±",
+    whole: float = math.nan,
+) -> str:
+    """Word a number with its standard error behind it.
+
+    Parameters
+    ----------
+    value, error : float
+        In one unit; an error of None or NaN is not known, and not told.
+    form : str
+        How to format both, such as ``".2f"``.
+    sign : str
+        What stands between them.
+    whole : float
+        For a part of something: all of it. A part that is told as none or as all of it can be off
+        to one side only, and has the range of one standard error in place of the sign.
+
+    Examples
+    --------
+    >>> plus_minus(3.1, 0.4, ".1f"), plus_minus(3.1, 0.4, ".1f", whole=5.0)
+    ('3.1 ± 0.4', '3.1 ± 0.4')
+    >>> plus_minus(0.0, 0.32, ".2f", whole=5.0), plus_minus(5.0, 0.32, ".2f", whole=5.0)
+    ('0.00 to 0.32', '4.68 to 5.00')
+    """
+    told = format(value + 0.0, form)
+    if error is None or not math.isfinite(error):
+        return told
+    none, every, off = (format(each, form) for each in (0.0, whole, error))
+    if math.isfinite(whole) and off != none:
+        if told == none:
+            return f"{none} to {format(min(error, whole), form)}"
+        if told == every:
+            return f"{format(max(whole - error, 0.0), form)} to {every}"
+    return f"{told} {sign} {off}"
+
+
+def area_plus_minus(
+    hectares: float, error: float | None, whole: float = math.nan, *, sign: str = "±"
+) -> str:
+    """Word an area with its standard error and unit, small ones in square metres.
+
+    Parameters
+    ----------
+    hectares, error, whole, sign
+        As for `plus_minus`.
+
+    Examples
+    --------
+    >>> area_plus_minus(3.1, 0.4), area_plus_minus(0.004, None), area_plus_minus(0.004, 0.2)
+    ('3.10 ± 0.40 ha', '40 m²', '0.00 ± 0.20 ha')
+    """
+    unit, factor, form = area_unit(max(hectares, error or 0.0))
+    off = None if error is None else error * factor
+    told = plus_minus(hectares * factor, off, form, sign=sign, whole=whole * factor)
+    return f"{told} {unit.replace('2', '²') if sign == '±' else unit}"
