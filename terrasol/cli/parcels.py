@@ -55,7 +55,8 @@ SHEETS_KEPT: Final = 4
 """Sheets after which their memory is given back (judgement, no source)."""
 
 SHEET_BYTES: Final = 0.3e6
-"""Memory that a sheet of the book holds until all are drawn, for the estimate only (measured)."""
+"""Memory that a sheet of the book holds until all are drawn, for the estimate only: between 0.02 MB
+of small parcels, as measured, and 0.6 MB of 400 by 400 cells."""
 
 MOST_LISTED: Final = 8
 """Names that the forecast lists for people; --json has all."""

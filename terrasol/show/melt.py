@@ -35,6 +35,9 @@ MOST_NAMED: Final = 22
 NAME: Final = 13.0
 """Letters of names at curves [pixels]."""
 
+CROWD: Final = 0.08
+"""Share of a diagram's height under which curves are too close for names (judgement)."""
+
 LATE_IS_BRIGHT: Final = "viridis"
 """Colours of melt-out, dark where the ground is bare early: perceptually even, read by colour-blind
 eyes and in grey, and full at both ends, so that late dates stand out from the paper."""
@@ -329,12 +332,14 @@ def _name_curves(
 ) -> None:
     """Name each band above the peak of its curve, or where that last falls to half of it.
 
-    A name that would cover another, or pass the diagram's end, is left out.
+    A name that would cover another, pass the diagram's end or stand in the crowd of curves at its
+    foot is left out.
     """
+    crowd = CROWD * panel.axes.get_ylim()[1]
     taken: list[tuple[float, float]] = []
     for b, curve in list(zip(kept, values, strict=True))[:: -_every(kept)]:
         most = float(np.nanmax(curve))
-        if not most > 0.0:
+        if not most > crowd:
             continue
         k = int(np.nanargmax(curve)) if at_peak else int(np.flatnonzero(curve >= 0.5 * most)[-1])
         words = _band_name(tables, b)

@@ -41,8 +41,8 @@ FINEST_CONTOURS: Final = 1.0
 """Least height between contours [m] where no error of the heights is stated (judgement, no source);
 else it is twice their standard error, so that what a line bends around is there."""
 
-FEW_CONTOURS: Final = 8
-"""Contours up to which each is named, not every second."""
+FEW_NAMES: Final = 3
+"""Names of contours below which more than every second is named."""
 
 LETTERS: Final = Lettering(size=9.0, run=14.0, margin=22.0, apart=46.0)
 """Names of contours."""
@@ -227,8 +227,10 @@ def draw_contours_around(
     rim = (panel.x, panel.y, panel.x + panel.width, panel.y + panel.height)
     to_page = found.get_transform() - panel.page.axes.transData
     centres: list[Points] = []
-    for level, path in zip(levels, found.get_paths(), strict=True):
-        if levels.size < FEW_CONTOURS or round(level / step) % 2 == 0:
+    lines = list(zip(levels, found.get_paths(), strict=True))
+    lines.sort(key=lambda each: round(each[0] / step) % 2)  # every second, then the others
+    for level, path in lines:
+        if round(level / step) % 2 == 0 or len(centres) < FEW_NAMES:
             name_line(
                 panel.page, f"{level:.10g}", path.transformed(to_page), rim, centres, LETTERS,
                 taken=taken, colour=SOFT, halo=PAPER,
