@@ -4,7 +4,6 @@ import os
 import signal
 import sys
 import time
-from contextlib import suppress
 
 import pytest
 from files.made import write_raster
@@ -16,11 +15,14 @@ from terrasol.errors import UnfinishedError
 
 @pytest.fixture
 def broken_engine(tmp_path, monkeypatch, capfd):
-    """Run `terrain` with an engine that does as told; return exit code and stderr."""
-    dem = write_raster(tmp_path / "dem.tif", unit="m")
-    monkeypatch.setattr("terrasol.cli.run.announce_compilation", lambda quiet: None)
+    """Run `terrain` with an engine that does as told; return exit code and stderr.
 
-    def run(sweep):
+    What comes first is done on the main thread, which alone hears requests.
+    """
+    dem = write_raster(tmp_path / "dem.tif", unit="m")
+
+    def run(sweep, first=lambda: None):
+        monkeypatch.setattr("terrasol.cli.run.announce_compilation", lambda quiet: first())
         monkeypatch.setattr("terrasol.engine.ground_work.sweep", sweep)
         code = main(["terrain", str(dem), str(tmp_path / "a" / "out"), "--azimuths", "8"])
         assert [path.name for path in tmp_path.iterdir()] == ["dem.tif"]
@@ -87,7 +89,7 @@ def test_request_that_python_drops(broken_engine, name):
     """It is made up for within seconds, and Python prints nothing of what it dropped."""
     came_back = []
 
-    def sweep(*_):
+    def first():
         one = Forgetful(getattr(signal, name))
         del one
         came_back.append(True)
@@ -95,21 +97,25 @@ def test_request_that_python_drops(broken_engine, name):
         while time.monotonic() < end:
             time.sleep(0.01)
 
-    code, err = broken_engine(sweep)
+    code, err = broken_engine(raising(AssertionError("not reached")), first)
     assert came_back == [True]
     assert code == 130
     assert err.strip() == "terrasol: interrupted, nothing was written"
 
 
 def test_request_that_a_library_drops(broken_engine):
-    def sweep(*_):
-        with suppress(KeyboardInterrupt):
-            os.kill(os.getpid(), signal.SIGTERM)
-            time.sleep(1.0)
+    dropped = []
+
+    def first():
+        try:
+            signal.raise_signal(signal.SIGTERM)
+        except KeyboardInterrupt:
+            dropped.append(True)
         time.sleep(10.0)
 
     began = time.monotonic()
-    assert broken_engine(sweep)[0] == 130
+    assert broken_engine(raising(AssertionError("not reached")), first)[0] == 130
+    assert dropped == [True]
     assert time.monotonic() - began < 9.0
 
 
