@@ -452,7 +452,9 @@ class _Job:
         name = Path(self.common.dem).stem
         period = f"{tables.dates[0]} to {tables.dates[-1]}"
         area = f"{tables.name}, {tables.area.sum() / 1e6:.2f} km²"
-        how = f"Melt after {_melt_name(plan.model)}; weather of {self.prepared.station.name}."
+        station = self.prepared.station.name
+        fitted = ", fitted to the station's snow water" if "fit" in self.prepared.record else ""
+        how = f"Melt after {_melt_name(plan.model)}{fitted}; weather of {station}."
         notes = (how, NO_AVALANCHE)
         bare, known = result.map_of("bare_day"), np.isfinite(plan.light.elevation.heights)
         lies = np.isnan(bare) & (result.map_of("peak") >= COVERED_FROM)
@@ -696,6 +698,7 @@ def _summary_text(record: dict[str, Any]) -> str:
         f"peak snow water {r['peak_snow_water']:.0f} mm on {r['peak_day']};"
         f" {r['snow_water_at_end']:.0f} mm at the end",
         *(_month_words(month) for month in r["months"]),
+        *_bracket_words(r["months"]),
         *(f"{name}: {words}" for name, words in _agreement_rows(record["settings"]["station"])),
         f"water balance closes to {max(r['water_balance_error'].values()):.1g} of what came",
     ]
@@ -707,6 +710,16 @@ def _summary_text(record: dict[str, Any]) -> str:
     took = duration(record["seconds"]["whole run"])
     told.append(f"{counted(len(files), 'file')} in {os.path.dirname(files[0])} after {took}")
     return "\n".join(told)
+
+
+def _bracket_words(months: list[dict[str, Any]]) -> list[str]:
+    """What the brackets of the months are, where there are any."""
+    if all(len(set(month["melt_m3_range"])) == 1 for month in months):
+        return []
+    return [
+        "in brackets: least to greatest of runs with one number of the melt moved at a time; not"
+        " the uncertainty of temperature and light"
+    ]
 
 
 def _month_words(month: dict[str, Any]) -> str:

@@ -173,7 +173,9 @@ def _check(around: Around, given: dict[str, Any]) -> None:
     around.refuse_map()
     places = 1 if given["compare"] is None else 2
     if len(given["labels"]) > places:
-        raise click.UsageError(f"--name is given {len(given['labels'])} times, for {places} place")
+        raise click.UsageError(
+            f"--name is given {len(given['labels'])} times, for {counted(places, 'place')}"
+        )
 
 
 def _days(texts: tuple[str, ...]) -> tuple[date, ...]:
@@ -342,6 +344,7 @@ class _Job:
         """Compute everything, and write it if a folder is named: the record, and the places."""
         from terrasol.cli.progress import progress_bar
         from terrasol.cli.run import announce_compilation, deliver, seconds_of
+        from terrasol.engine.outputs import shade_words
         from terrasol.engine.plan import default_threads
         from terrasol.files.provenance import run_record
 
@@ -355,7 +358,10 @@ class _Job:
             sites = self._survey(settings, scene, threads, move)
             record |= {
                 "threads": threads,
-                "results": {"places": [each.record() for each in sites]},
+                "results": {
+                    "places": [each.record() for each in sites],
+                    "shade": shade_words(scene),
+                },
                 "warnings": [
                     *self.ground.elevation.warnings, *scene.warnings, *settled.warnings,
                     *self.asked.doubts(self.ground.frame), *self._error_doubts(),
@@ -461,7 +467,8 @@ class _Job:
         if common.as_json:
             give(json.dumps(record, indent=2))
         else:
-            give(site_text(sites, [f"warning: {text}" for text in record["warnings"]]))
+            warnings = [f"warning: {text}" for text in record["warnings"]]
+            give(site_text(sites, [record["results"]["shade"], *warnings]))
         if self.names and not common.quiet and not common.as_json:
             took = duration(record["seconds"]["whole run"])
             say(f"{counted(len(self.names), 'file')} in {common.out_dir} after {took}")

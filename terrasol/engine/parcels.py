@@ -183,6 +183,8 @@ class Survey:
         What a careful reader should know.
     shade : str
         What the horizon is made of, in a sentence.
+    error_doubts : tuple of str
+        Of the warnings those on the stated error of the heights.
     """
 
     parcels: list[Parcel]
@@ -192,6 +194,7 @@ class Survey:
     score: Score | None = None
     warnings: list[str] = field(default_factory=list)
     shade: str = ""
+    error_doubts: tuple[str, ...] = ()
 
     @property
     def order(self) -> list[Parcel]:
@@ -250,12 +253,14 @@ def survey(
     parcels = _parcels(elevation, polygons, settings, looks, levels, scene_of, threads)
     told(part, "figures")
     scene = scene_of(elevation, make_frame(elevation.shape, elevation.transform, elevation.crs))
+    doubts = doubts_of_error(elevation, settings.error)
     warnings = [
         *polygons.warnings, *overlap_doubts(polygons), *notes, *shade_doubts(scene),
-        *doubts_of_error(elevation, settings.error), *_doubts_of_voids(parcels),
+        *doubts, *_doubts_of_voids(parcels),
         *_doubts_of_size(parcels), *_doubts_of_lapse(parcels), *_doubts_of_rule(parcels),
     ]  # fmt: skip
-    found = replace(_ranked(parcels, settings, looks[0][0], warnings), shade=shade_words(scene))
+    found = _ranked(parcels, settings, looks[0][0], warnings)
+    found = replace(found, shade=shade_words(scene), error_doubts=doubts)
     if settings.error is not None:
         found = _doubted(
             found, elevation, settings.error, scene_of, threads,

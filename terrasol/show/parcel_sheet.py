@@ -647,6 +647,7 @@ def notes_of(survey: Survey) -> list[str]:
             f"± or a range: one standard error from an error of heights of {error.rmse:g} m"
             f" ({error.realisations} grounds)."
         )
+    notes += [f"{doubt[0].upper()}{doubt[1:]}." for doubt in survey.error_doubts]
     if asked.rule is not None:
         least = f", in patches from {asked.least_patch:g} m²" if asked.least_patch else ""
         notes.append(f"Rule: {asked.rule.text}{least}.")

@@ -116,7 +116,8 @@ def slope_text(site: Site) -> str:
     # d tan(s) = ds / cos(s)^2
     error = float(site.errors["slope"].standard_error)
     percent = 100.0 * np.radians(error) / np.cos(np.radians(site.slope)) ** 2
-    return f"{words} = {site.slope_percent:.0f} ± {percent:.0f} %"
+    digits = 0 if percent >= 1.0 else 1
+    return f"{words} = {site.slope_percent:.{digits}f} ± {percent:.{digits}f} %"
 
 
 def aspect_text(site: Site) -> str:

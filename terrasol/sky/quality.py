@@ -471,7 +471,7 @@ def _refuse_wrong_clock(station: Station, quantity: str) -> None:
     if not alone and abs(off) < CLOCK_HOURS[1]:
         return
     side = "later" if off > 0.0 else "earlier"
-    unit = "the unit would do" if alone else "the unit can only be judged then"
+    unit = "the unit seems right" if alone else "the unit can only be judged then"
     raise InputError(
         f"the times of {quantity} disagree with the sun: the middle of its days lies"
         f" {abs(off):.1f} h {side} than noon at the stated longitude. Mend the zone, the label or"

@@ -251,7 +251,7 @@ def test_a_clock_hours_off_is_named_before_any_unit(hours):
     wrong = late(station, hours)
     with pytest.raises(InputError, match=rf"middle of its days lies .* h {side}") as told:
         refuse_wrong_unit(wrong, "global", "W/m2", UNITS)
-    assert "the unit would do" in str(told.value)
+    assert "the unit seems right" in str(told.value)
     assert "would fit" not in str(told.value)
     assert hours_off_noon(wrong, "global") == pytest.approx(hours, abs=0.4)
 
