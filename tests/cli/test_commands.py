@@ -289,6 +289,7 @@ def test_paths_in_the_record_are_absolute(dem, tmp_path, monkeypatch):
     assert record["files"][0] == str(tmp_path / "out" / "slope.tif")
 
 
+@pytest.mark.heavy
 def test_both_spellings_of_a_unit(dem, tmp_path):
     for folder, unit in (("typed", "kWh"), ("written", "kW h m-2")):
         options = ["--unit", unit, "--period", "2025-06-21"]

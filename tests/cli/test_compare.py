@@ -198,6 +198,7 @@ def test_inputs_are_spared(dem, measured, tmp_path, capfd):
     assert own.read_bytes() == measured.read_bytes()
 
 
+@pytest.mark.heavy
 def test_overwrite_replaces(dem, measured, tmp_path):
     out = tmp_path / "out"
     asked = ["compare", str(dem), str(measured), str(out), "--quiet", *QUICK]

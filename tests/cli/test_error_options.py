@@ -103,6 +103,7 @@ def test_record_and_summary(out, dem, tmp_path, capfd):
     assert "2 realisations of a random height error of 1 m rms" in said
 
 
+@pytest.mark.heavy
 def test_same_seed_same_errors(dem, out, tmp_path):
     more = ("--dem-error", "1,100", "--realisations", "5", "--threads", "1")
     for folder, seed in (("same", "7"), ("other", "8")):

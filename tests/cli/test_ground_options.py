@@ -65,6 +65,7 @@ def test_far_and_surface_raise_the_horizon(rasters):
     assert "km beyond the raster's edge" in told["results"]["remarks"][0]
 
 
+@pytest.mark.heavy
 def test_the_gap_has_two_bands_with_units_of_their_own(rasters, capsys):
     words = ("irradiation", "--azimuths", "8", "--period", "2025-03", "--step-seconds", "600")
     assert run(rasters, *words, "--horizon-gap", "--highest", "3000", "--unit", "kWh") == 0

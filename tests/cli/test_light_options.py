@@ -74,6 +74,7 @@ def clear(dem, tmp_path_factory):
     return run(dem, tmp_path_factory.mktemp("clear") / "out")
 
 
+@pytest.mark.heavy
 def test_a_station_that_saw_nine_tenths_of_the_clear_light(dem, clear, tmp_path):
     path = series(tmp_path / "made.csv", factor=0.9)
     record, values = run(dem, tmp_path / "out", "--station", str(path))
@@ -114,6 +115,7 @@ def test_an_index_as_number_and_as_map(dem, clear, tmp_path):
     assert found[:, :3].mean() < 1.03
 
 
+@pytest.mark.heavy
 def test_albedo_as_map_changes_what_ground_sends_back(dem, clear, tmp_path):
     shape = clear[1].shape[1:]
     same = map_of(tmp_path / "same.tif", np.full((1, *shape), 0.2))

@@ -175,6 +175,7 @@ def test_an_overwritten_run_keeps_its_stack(dem, station, tmp_path, capsys):
     assert json.loads((out / "run.json").read_text())["removed"] == ["days.zarr"]
 
 
+@pytest.mark.heavy
 def test_a_folder_of_that_name_that_is_no_stack_stays(dem, station, tmp_path):
     out = tmp_path / "out"
     run = ["melt", str(dem), str(station), str(out), "--melt", "degree-days", "--no-spread"]
@@ -228,6 +229,7 @@ def test_fahrenheit_taken_for_celsius_is_refused_or_doubted(dem, station, tmp_pa
     assert "degF" not in capsys.readouterr().out
 
 
+@pytest.mark.heavy
 def test_a_state_of_another_clear_air_is_refused(dem, station, tmp_path, capsys):
     first = tmp_path / "first"
     run = ["melt", str(dem), str(station)]
@@ -318,6 +320,7 @@ def test_what_is_refused(dem, station, tmp_path, capsys, more, code, words):
     assert not out.exists()
 
 
+@pytest.mark.heavy
 def test_a_store_that_takes_nothing_does_not_end_the_run(
     dem, station, tmp_path, monkeypatch, capsys
 ):
@@ -337,6 +340,7 @@ def test_a_store_that_takes_nothing_does_not_end_the_run(
     assert not [p for p in (tmp_path / "out").iterdir() if p.name.startswith("horizons")]
 
 
+@pytest.mark.heavy
 def test_a_doubt_of_the_ground_is_told_once(station, tmp_path, capsys):
     raster = write_raster(tmp_path / "unnamed.tif", hills())
     words = ["--melt", "degree-days", "--period", "2025-02-21", "--stack", "none", "--json"]

@@ -329,6 +329,7 @@ def test_a_bow_tie_is_mended_and_said_so(places, tmp_path, capsys):
     assert area == pytest.approx(0.5 * 0.9996**-2, rel=1e-4)
 
 
+@pytest.mark.heavy
 def test_albedo_and_clear_sky_index_come_as_rasters(places, tmp_path, capsys):
     dem, shapes, _ = places
     ground = plane(0.0, 0.0)

@@ -303,6 +303,7 @@ def test_cell_sizes_in_metres_and_multiples(dem, plots, tmp_path):
     assert record["settings"]["cells_joined"] == [1, 2, 4]
 
 
+@pytest.mark.heavy
 def test_albedo_and_clear_sky_index_come_as_rasters(dem, plots, tmp_path, capsys):
     """An index that rises eastward, in two cell sizes; the record names both files."""
     shape = hills().shape

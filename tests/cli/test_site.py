@@ -82,6 +82,7 @@ def test_text_without_a_folder(dem, capsys):
     assert "file" not in caught.err
 
 
+@pytest.mark.heavy
 def test_quiet_silences_what_is_said_and_keeps_the_result(dem, tmp_path, capsys):
     told = []
     for more in ([], ["--quiet"], ["--quiet", "--out", str(tmp_path / "o")]):
@@ -131,6 +132,7 @@ def test_error_of_the_heights(dem, capsys):
     assert record["settings"]["dem_error"]["seed"] == 7
 
 
+@pytest.mark.heavy
 def test_an_error_that_cannot_be_is_doubted(dem, tmp_path, capsys):
     """Errors of 30 m would have left these gentle hills far rougher."""
     asked = [

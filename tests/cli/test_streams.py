@@ -44,6 +44,7 @@ def test_full_stdout(shell, words):
     assert shell(f"TERRASOL {words} > /dev/full") == (4, FULL)
 
 
+@pytest.mark.heavy
 @pytest.mark.skipif(not os.path.exists("/dev/full"), reason="needs /dev/full")
 def test_full_stdout_after_a_run(shell, tmp_path):
     assert shell("TERRASOL terrain dem.tif out --azimuths 8 --quiet --json > /dev/full") == (
@@ -53,6 +54,7 @@ def test_full_stdout_after_a_run(shell, tmp_path):
     assert (tmp_path / "out" / "run.json").exists()
 
 
+@pytest.mark.heavy
 def test_closed_streams(shell, tmp_path):
     assert shell("TERRASOL --version >&-") == (4, REFUSED.format("Bad file descriptor"))
     assert shell("TERRASOL terrain gone.tif out 2>&-") == (3, "")
@@ -65,6 +67,7 @@ def test_reader_that_has_gone(shell, words):
     assert shell(f"TERRASOL {words} | true; exit ${{PIPESTATUS[0]}}") == (0, "")
 
 
+@pytest.mark.heavy
 def test_listener_that_has_gone(shell):
     line = "TERRASOL terrain dem.tif out --azimuths 8 2>&1 >/dev/null | true; exit ${PIPESTATUS[0]}"
     assert shell(line) == (0, "")

@@ -144,6 +144,7 @@ def test_the_edge_is_never_taken_too_far_away(small, far, case):
             assert away[a, i, j] > true - (23.4 + 5.7 + 3.0) * CELL
 
 
+@pytest.mark.heavy
 def test_a_larger_model_shrinks_the_bound(small, large, far):
     highest = float(large.heights.max())
     alone = bound_of(small, highest=highest)

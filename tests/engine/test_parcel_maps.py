@@ -84,6 +84,7 @@ def test_the_rows_ground_is_as_bright_as_the_parcel_s():
     assert told[2] < 0.99 * told[0]
 
 
+@pytest.mark.heavy
 def test_maps_are_taken_from_python_too():
     """As the command has them: the same figures as with the settings themselves."""
     table = geopandas.GeoDataFrame({"name": ["P0"]}, geometry=[RIGHT], crs=UTM)

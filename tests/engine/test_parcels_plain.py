@@ -81,6 +81,7 @@ def test_figures_are_those_of_the_maps(ground, shape):
     assert told == pytest.approx(met, abs=0.01)
 
 
+@pytest.mark.heavy
 def test_median_of_first_sun_is_that_of_the_area(ground, shape):
     settings = asked_for(coarser=())
     numbers = survey(ground, parcels(shape, crs=ground.crs), settings).parcels[0].numbers

@@ -78,6 +78,7 @@ def test_wall_to_the_south(metric_ground):
     assert middle(low, azimuths=256).sun.states[december, noon] == State.TERRAIN
 
 
+@pytest.mark.heavy
 def test_days_without_sun_are_void(metric_ground):
     """A wall of 40 degrees hides every sun of December; the record says so."""
     heights = np.full((81, 81), 500.0)
@@ -155,6 +156,7 @@ def test_record_is_json(place):
     assert parts == pytest.approx(record["irradiation"]["global"], abs=0.01)
 
 
+@pytest.mark.heavy
 def test_errors_are_those_of_the_likely_grounds(hills):
     """Each ground computed in full by itself: slope, aspect and energy of the cell."""
     error = DemError(0.8, 75.0, 5, seed=4)

@@ -261,6 +261,7 @@ def test_hours_run_up_and_no_time_touches_a_month():
     assert lowest < months - 9.5
 
 
+@pytest.mark.heavy
 def test_what_was_not_asked_for_leaves_no_empty_heading():
     ground = plane(12.0, 180.0)
     shapes = parcels(box(-100, -50, 105, 50))

@@ -235,6 +235,7 @@ def test_directions(azimuth, words):
     assert direction(azimuth) == words
 
 
+@pytest.mark.heavy
 def test_two_places_have_one_height_between_contours_and_captions_end_with_their_maps(
     metric_ground,
 ):
