@@ -116,7 +116,7 @@ def slope_text(site: Site) -> str:
     # d tan(s) = ds / cos(s)^2
     error = float(site.errors["slope"].standard_error)
     percent = 100.0 * np.radians(error) / np.cos(np.radians(site.slope)) ** 2
-    digits = 0 if percent >= 1.0 else 1
+    digits = 0 if percent >= 0.5 else 1  # an error that rounds to none says too much
     return f"{words} = {site.slope_percent:.{digits}f} ± {percent:.{digits}f} %"
 
 

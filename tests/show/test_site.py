@@ -184,6 +184,8 @@ def test_errors_stand_behind_the_figures(ground, site):
     assert "± 95 MJ m-2" in said["energy"]
     assert "90 % intervals from 24 likely grounds" in site_text([doubted], [])
     site_page(ground, [doubted])
+    known = replace(site, slope=0.2, errors=errors | {"slope": spread(0.2, 0.2)})
+    assert dict(facts(known))["slope"] == "0.2 ± 0.2 degrees = 0.3 ± 0.3 %"
 
 
 def test_a_sun_lost_in_between_is_marked(site):
