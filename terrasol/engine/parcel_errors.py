@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
+from functools import partial
 from typing import Any, Final
 
 import numpy as np
@@ -14,7 +15,8 @@ from terrasol.engine.job import plan_irradiation
 from terrasol.engine.parcel_cells import LIGHT_LAYERS, Piece, SceneOf
 from terrasol.engine.parcel_figures import Asked, Figure, Level, figures_of
 from terrasol.engine.spread import Spread
-from terrasol.engine.uncertainty import moved, propagate_all, with_tables
+from terrasol.engine.trued import Ask, Slopes, propagate_trued
+from terrasol.engine.uncertainty import moved, with_tables
 from terrasol.engine.windows import collect
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.uncertainty import DemError
@@ -112,27 +114,19 @@ def doubts_of(
     if _needs_hours(asked, score):
         of_hours = plan_hours(elevation, replace(hours, days=()), plan.scene)
 
-    def quantities(ground: Elevation) -> dict[str, Column]:
+    def look(ground: Elevation) -> Ask:
         found, _ = collect(moved(plan, ground), windows, threads, None, LIGHT_LAYERS)
         if of_hours is not None:
             names = [n.name for n in of_hours.layers if n.name == "sun_hours_months"]
             more, _ = collect(moved(of_hours, ground), windows, threads, None, names)
             found = [one | other for one, other in zip(found, more, strict=True)]
-        rows = [
-            _numbers(_on(piece, ground, layers, asked), level, asked)
-            for piece, layers, level in zip(pieces, found, levels, strict=True)
-        ]
-        columns = {name: np.array([row[name] for row in rows]) for name in rows[0]}
-        if score is not None:
-            plain = {name: np.array([n[name] for n in numbers]) for name in numbers[0]}
-            ranking = rank(score, plain | columns)
-            columns |= {"score": ranking.total, "rank": ranking.rank.astype(np.float64)}
-        return columns
+        on = [_on(*each, ground, asked) for each in zip(pieces, found, strict=True)]
+        return partial(_columns, on, levels, numbers, asked, score)
 
-    spreads = propagate_all(
+    spreads = propagate_trued(
         elevation,
         error,
-        quantities,
+        look,
         angles=ANGLES,
         progress=lambda done: told(done / error.realisations),
     )
@@ -148,13 +142,44 @@ def _needs_hours(asked: Asked, score: Score | None) -> bool:
     return any(name.startswith("sun_hours") for name in names)
 
 
-def _on(piece: Piece, ground: Elevation, layers: dict[str, Any], asked: Asked) -> Piece:
+def _on(piece: Piece, layers: dict[str, Any], ground: Elevation, asked: Asked) -> Piece:
     """A piece on another ground."""
-    w = piece.window
-    heights = ground.heights[w.row : w.row + w.rows, w.column : w.column + w.columns]
+    heights = ground.heights[_inside(piece)]
     if asked.warmth is not None:
         layers = layers | asked.warmth.layers(heights, piece.latitude)
     return replace(piece, heights=heights, layers=layers)
+
+
+def _columns(
+    pieces: Sequence[Piece],
+    levels: Sequence[Level],
+    numbers: Sequence[Mapping[str, float]],
+    asked: Asked,
+    score: Score | None,
+    slopes: Slopes | None,
+) -> dict[str, Column]:
+    """Figures of all pieces by name, of their own slopes or of others."""
+    if slopes is not None:
+        pieces = [_with_slopes(piece, slopes) for piece in pieces]
+    rows = [_numbers(piece, level, asked) for piece, level in zip(pieces, levels, strict=True)]
+    columns = {name: np.array([row[name] for row in rows]) for name in rows[0]}
+    if score is not None:
+        plain = {name: np.array([n[name] for n in numbers]) for name in numbers[0]}
+        ranking = rank(score, plain | columns)
+        columns |= {"score": ranking.total, "rank": ranking.rank.astype(np.float64)}
+    return columns
+
+
+def _with_slopes(piece: Piece, slopes: Slopes) -> Piece:
+    """A piece with its part of other slopes [percent]."""
+    degrees = np.degrees(np.arctan(slopes[_inside(piece)] / np.float32(100.0)))
+    return replace(piece, layers=piece.layers | {"slope": degrees[None]})
+
+
+def _inside(piece: Piece) -> tuple[slice, slice]:
+    """Its window of the raster."""
+    w = piece.window
+    return slice(w.row, w.row + w.rows), slice(w.column, w.column + w.columns)
 
 
 def _numbers(piece: Piece, level: Level, asked: Asked) -> dict[str, float]:

@@ -9,7 +9,8 @@ from terrasol.engine.datasets import ArraySink
 from terrasol.engine.error_maps import plan_errors
 from terrasol.engine.job import plan_irradiation, plan_terrain
 from terrasol.engine.spread import SpreadTally
-from terrasol.engine.uncertainty import moved, propagate_all, realisations, with_tables
+from terrasol.engine.trued import propagate_trued
+from terrasol.engine.uncertainty import moved, realisations, with_tables
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.uncertainty import error_fields
 
@@ -56,31 +57,38 @@ def in_parcels(values, side=SIDE):
 class Survey:
     """What is asked of a ground: per cell, and per parcel."""
 
-    def __init__(self, elevation, error, settings=None):
-        self.elevation, self.error = elevation, error
+    def __init__(self, elevation, error, settings=None, side=SIDE):
+        self.elevation, self.error, self.side = elevation, error, side
         plain = plan_irradiation(elevation, settings) if settings else plan_terrain(elevation, 8)
         self.plan = with_tables(plain, error)
         self.energy = next((x.name for x in plain.layers if x.name.startswith("irr")), None)
 
     def of(self, ground):
         """Slope [%], aspect [degrees], energy; of parcels the means and the share below STEEP."""
+        return self.look(ground)(None)
+
+    def look(self, ground):
+        """The same to be asked for, of parcels with other slopes if need be."""
         sink = ArraySink(ground.shape)
         moved(self.plan, ground).run(sink)
         slope = 100.0 * np.tan(np.radians(sink.arrays["slope"][0].astype(float)))
-        found = {
-            "slope": slope,
-            "aspect": sink.arrays["aspect"][0],
-            "parcel slope": in_parcels(slope),
-            "parcel area": in_parcels(slope < STEEP),
-        }
+        found = {"slope": slope, "aspect": sink.arrays["aspect"][0]}
         if self.energy:
             found["energy"] = sink.arrays[self.energy][0]
-            found["parcel energy"] = in_parcels(sink.arrays[self.energy][0])
-        return found
+            found["parcel energy"] = in_parcels(sink.arrays[self.energy][0], self.side)
+
+        def ask(slopes):
+            own = slope if slopes is None else slopes
+            return found | {
+                "parcel slope": in_parcels(own, self.side),
+                "parcel area": in_parcels(own < STEEP, self.side),
+            }
+
+        return ask
 
     def spreads(self):
         """By terrasol's own propagation."""
-        return propagate_all(self.elevation, self.error, self.of, angles=["aspect"])
+        return propagate_trued(self.elevation, self.error, self.look, angles=["aspect"])
 
     def spreads_of_added_error(self):
         """As one might do it in place of that: error on top of the model, and its shift taken off.
