@@ -127,6 +127,7 @@ def doubts_of(
         elevation,
         error,
         look,
+        areas=[name for name in numbers[0] if _is_area(name)],
         angles=ANGLES,
         progress=lambda done: told(done / error.realisations),
     )
@@ -214,6 +215,11 @@ def _doubt(spread: Spread, place: int, name: str, numbers: Mapping[str, float]) 
         float(high),
         int(one.count),
     )
+
+
+def _is_area(name: str) -> bool:
+    """Whether a figure is an area past some bound, or the share that it is of the parcel."""
+    return name.endswith("_ha_map") or name == "rule_share"
 
 
 def _bounds(name: str, numbers: Mapping[str, float]) -> tuple[float, float]:

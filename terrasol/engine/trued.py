@@ -30,9 +30,12 @@ AROUND: Final = 8.0
 RATIOS: Final = (0.2, 2.0)
 """Least and most that the scatter of slopes about their local mean is multiplied by."""
 
-TRUING_DOUBT: Final = 0.65
-"""Share of what truing does to a quantity that counts as its standard error: the two ways of
-telling it differ by so much, and neither is known to be right (docs/validation.md, own)."""
+MEAN_DOUBT: Final = 0.65
+"""Share of what truing does to a quantity that counts as its standard error: two ways of telling
+it differ by so much, and neither is known to be right (docs/validation.md, own)."""
+
+AREA_DOUBT: Final = 1.0
+"""The same of an area past a bound, which hangs on more than mean and scatter of the slopes."""
 
 MORE: Final = (0.5, 1.0)
 """Error variances put on top of the model's own, as shares of it: Cook and Stefanski (1994)
@@ -51,6 +54,7 @@ def propagate_trued(
     error: DemError,
     look: Callable[[Elevation], Ask],
     *,
+    areas: Collection[str] = (),
     angles: Collection[str] = (),
     progress: Told | None = None,
 ) -> dict[str, Spread]:
@@ -66,6 +70,8 @@ def propagate_trued(
         Given a ground, returns what can be asked for numbers or arrays by name, always the same:
         with None of the ground as it is, else with other slopes of all its cells, shape of the
         raster, in percent.
+    areas : collection of str
+        Which of them are areas or shares of cells past a bound.
     angles : collection of str
         Which of them are directions in degrees.
     progress : callable, optional
@@ -75,7 +81,7 @@ def propagate_trued(
     -------
     dict of Spread
         By name. Mean and deviation are those with trued slopes; the deviation holds
-        TRUING_DOUBT of what truing does to the mean.
+        MEAN_DOUBT or AREA_DOUBT of what truing does to the mean.
 
     Raises
     ------
@@ -101,17 +107,19 @@ def propagate_trued(
     every = [*angles, *(_UNTRUED + name for name in angles)]
     spreads = propagate_all(elevation, error, both, angles=every, progress=progress)
     return {
-        name: _with_doubt(spread, spreads[_UNTRUED + name])
+        name: _with_doubt(
+            spread, spreads[_UNTRUED + name], AREA_DOUBT if name in areas else MEAN_DOUBT
+        )
         for name, spread in spreads.items()
         if not name.startswith(_UNTRUED)
     }
 
 
-def _with_doubt(trued: Spread, drawn: Spread) -> Spread:
+def _with_doubt(trued: Spread, drawn: Spread, share: float) -> Spread:
     """Count what truing does to the mean as doubt; to a direction it does next to nothing."""
     if trued.angle:
         return trued
-    doubt = TRUING_DOUBT * (trued.mean - drawn.mean)
+    doubt = share * (trued.mean - drawn.mean)
     return replace(trued, deviation=np.hypot(trued.deviation, doubt))
 
 

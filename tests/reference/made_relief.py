@@ -88,7 +88,9 @@ class Survey:
 
     def spreads(self):
         """By terrasol's own propagation."""
-        return propagate_trued(self.elevation, self.error, self.look, angles=["aspect"])
+        return propagate_trued(
+            self.elevation, self.error, self.look, areas=["parcel area"], angles=["aspect"]
+        )
 
     def spreads_of_added_error(self):
         """As one might do it in place of that: error on top of the model, and its shift taken off.
