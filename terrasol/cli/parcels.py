@@ -455,6 +455,7 @@ class _Job:
         from terrasol.engine.hours import plan_hours
         from terrasol.engine.job import plan_irradiation
         from terrasol.engine.plan import default_threads
+        from terrasol.engine.trued import BYTES_A_CELL, SECONDS_A_CELL
         from terrasol.files.overlaps import overlap_doubts
         from terrasol.files.rasters import naming
 
@@ -467,19 +468,23 @@ class _Job:
             )
         shares = sum(1.0 / factor**2 for factor in (1, *settings.coarser))
         seconds = shares * sum(plan.seconds(threads) for plan in plans)
+        drawing = truing = 0.0
         if settings.error is not None:
-            seconds += settings.error.realisations * plans[0].seconds(threads)
-        drawing = 0.0
+            cells = elevation.heights.size
+            once = plans[0].seconds(threads) + SECONDS_A_CELL * cells
+            seconds += settings.error.realisations * once
+            truing = BYTES_A_CELL * cells
         if self.given["sheets"] != "none":
             seconds += SECONDS_A_SHEET * len(polygons)
             drawing = SHEET_BYTES * len(polygons)
+        memory = max(plan.memory_bytes for plan in plans)
         removed, notes = superseded(common, files)
         return ground_forecast(common, self.ground) | {
             "parcels": list(polygons.names),
             "season": settings.asked.season_words,
             "files": files,
             "removed": removed,
-            "memory_mb": round((max(plan.memory_bytes for plan in plans) + drawing) / 1e6),
+            "memory_mb": round((memory + drawing + truing) / 1e6),
             "disk_free_mb": free_disk_mb(common.out_dir),
             "threads": threads,
             "seconds": round(seconds),

@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from terrasol.engine.hours import plan_hours
 from terrasol.engine.job import plan_irradiation
 from terrasol.engine.parcel_cells import LIGHT_LAYERS, Piece, SceneOf
-from terrasol.engine.parcel_figures import Asked, Figure, Level, figures_of
+from terrasol.engine.parcel_figures import Asked, Figure, Level, figures_of, slope_class_keys
 from terrasol.engine.spread import Spread
 from terrasol.engine.trued import Ask, Slopes, propagate_trued
 from terrasol.engine.uncertainty import moved, with_tables
@@ -127,7 +127,9 @@ def doubts_of(
         elevation,
         error,
         look,
-        areas=[name for name in numbers[0] if _is_area(name)],
+        windows=windows,
+        areas=[name for name in (*numbers[0], "score") if _is_area(name)],
+        classes=[f"{key}_ha_map" for key in slope_class_keys(asked.slope_edges)],
         angles=ANGLES,
         progress=lambda done: told(done / error.realisations),
     )
@@ -218,8 +220,8 @@ def _doubt(spread: Spread, place: int, name: str, numbers: Mapping[str, float]) 
 
 
 def _is_area(name: str) -> bool:
-    """Whether a figure is an area past some bound, or the share that it is of the parcel."""
-    return name.endswith("_ha_map") or name == "rule_share"
+    """Whether a figure is an area past some bound, its share of the parcel, or may hang on one."""
+    return name.endswith("_ha_map") or name in ("rule_share", "score")
 
 
 def _bounds(name: str, numbers: Mapping[str, float]) -> tuple[float, float]:

@@ -2,15 +2,15 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Collection, Iterator, Mapping
+from collections.abc import Callable, Collection, Mapping, Sequence
 from dataclasses import dataclass, replace
-from typing import Any, Final
+from typing import Final
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 from scipy.ndimage import gaussian_filter
 
-from terrasol.engine.plan import blocks_of
+from terrasol.engine.plan import Block, blocks_of
 from terrasol.engine.spread import Spread
 from terrasol.engine.uncertainty import Told, propagate_all
 from terrasol.ground.elevation import Elevation
@@ -30,7 +30,7 @@ AROUND: Final = 8.0
 RATIOS: Final = (0.2, 2.0)
 """Least and most that the scatter of slopes about their local mean is multiplied by."""
 
-MEAN_DOUBT: Final = 0.65
+MEAN_DOUBT: Final = 0.6
 """Share of what truing does to a quantity that counts as its standard error: two ways of telling
 it differ by so much, and neither is known to be right (docs/validation.md, own)."""
 
@@ -41,10 +41,16 @@ MORE: Final = (0.5, 1.0)
 """Error variances put on top of the model's own, as shares of it: Cook and Stefanski (1994)
 extrapolate from such to none at all, -1."""
 
+SECONDS_A_CELL: Final = 0.9e-6
+"""What one core takes to true a cell's slope on one ground, for the estimate only."""
+
+BYTES_A_CELL: Final = 70.0
+"""Bytes a cell of the raster while slopes are compared, for the estimate only."""
+
 Slopes = NDArray[np.float32]
 
 Ask = Callable[[Slopes | None], Mapping[str, ArrayLike]]
-"""Asked for quantities of a ground, given slopes of all its cells [percent] in place of its own."""
+"""Asked for quantities of a ground, given other slopes of the raster [percent] or its own, None."""
 
 _UNTRUED: Final = "as drawn: "
 
@@ -54,7 +60,9 @@ def propagate_trued(
     error: DemError,
     look: Callable[[Elevation], Ask],
     *,
+    windows: Sequence[Block] = (),
     areas: Collection[str] = (),
+    classes: Sequence[str] = (),
     angles: Collection[str] = (),
     progress: Told | None = None,
 ) -> dict[str, Spread]:
@@ -68,10 +76,13 @@ def propagate_trued(
         Its error and the draw.
     look : callable
         Given a ground, returns what can be asked for numbers or arrays by name, always the same:
-        with None of the ground as it is, else with other slopes of all its cells, shape of the
-        raster, in percent.
+        with None of the ground as it is, else with other slopes, shape of the raster, in percent.
+    windows : sequence of Block
+        Where slopes are asked for; elsewhere those given may be NaN. By default everywhere.
     areas : collection of str
         Which of them are areas or shares of cells past a bound.
+    classes : sequence of str
+        Which of them are areas of classes of slope, one after the other, the ground all told.
     angles : collection of str
         Which of them are directions in degrees.
     progress : callable, optional
@@ -81,7 +92,8 @@ def propagate_trued(
     -------
     dict of Spread
         By name. Mean and deviation are those with trued slopes; the deviation holds
-        MEAN_DOUBT or AREA_DOUBT of what truing does to the mean.
+        MEAN_DOUBT or AREA_DOUBT of what truing does to the mean, and of a class what it does to
+        the areas past both its bounds.
 
     Raises
     ------
@@ -95,7 +107,7 @@ def propagate_trued(
     ground, but finds means alone, not what a cell may be. So means and scatter over some cells
     come from it, and the rest from likely grounds.
     """
-    truing = Truing.of(elevation, error)
+    truing = Truing.of(elevation, error, windows)
 
     def both(ground: Elevation) -> dict[str, ArrayLike]:
         ask = look(ground)
@@ -106,20 +118,33 @@ def propagate_trued(
 
     every = [*angles, *(_UNTRUED + name for name in angles)]
     spreads = propagate_all(elevation, error, both, angles=every, progress=progress)
+    trued = {name: each for name, each in spreads.items() if not name.startswith(_UNTRUED)}
+    moved = {name: each.mean - spreads[_UNTRUED + name].mean for name, each in trued.items()}
     return {
-        name: _with_doubt(
-            spread, spreads[_UNTRUED + name], AREA_DOUBT if name in areas else MEAN_DOUBT
-        )
-        for name, spread in spreads.items()
-        if not name.startswith(_UNTRUED)
+        name: _with_doubt(each, _truing_doubt(name, moved, areas, classes))
+        for name, each in trued.items()
     }
 
 
-def _with_doubt(trued: Spread, drawn: Spread, share: float) -> Spread:
-    """Count what truing does to the mean as doubt; to a direction it does next to nothing."""
+def _truing_doubt(
+    name: str,
+    moved: Mapping[str, NDArray[np.float64]],
+    areas: Collection[str],
+    classes: Sequence[str],
+) -> NDArray[np.float64]:
+    """Standard error of a quantity from what truing has moved it, or a class's bounds, by."""
+    if name in classes:
+        place = classes.index(name)
+        below = np.sum([moved[each] for each in classes[:place]], axis=0)
+        above = np.sum([moved[each] for each in classes[place + 1 :]], axis=0)
+        return np.asarray(AREA_DOUBT * np.hypot(below, above))
+    return (AREA_DOUBT if name in areas else MEAN_DOUBT) * moved[name]
+
+
+def _with_doubt(trued: Spread, doubt: NDArray[np.float64]) -> Spread:
+    """Put truing's doubt into the deviation; of a direction there is next to none."""
     if trued.angle:
         return trued
-    doubt = share * (trued.mean - drawn.mean)
     return replace(trued, deviation=np.hypot(trued.deviation, doubt))
 
 
@@ -131,61 +156,108 @@ class Truing:
     ----------
     frame : Frame
         The raster's place on the Earth.
+    part : Block
+        The part of it where slopes are trued.
     near : _Bell
         Means over some cells.
-    shift : ndarray of float32, shape (rows, columns)
+    shift : ndarray of float32, shape of the part
         Added to the mean of the slopes nearby [percent].
-    ratio : ndarray of float32, shape (rows, columns)
+    ratio : ndarray of float32, shape of the part
         Multiplies what a slope is off that mean.
     """
 
     frame: Frame
+    part: Block
     near: _Bell
     shift: Slopes
     ratio: Slopes
 
     @classmethod
-    def of(cls, elevation: Elevation, error: DemError) -> Truing:
-        """Compare slopes extrapolated to no error with those of likely grounds."""
+    def of(cls, elevation: Elevation, error: DemError, windows: Sequence[Block] = ()) -> Truing:
+        """Compare slopes extrapolated to no error with those of likely grounds.
+
+        Parameters
+        ----------
+        elevation : Elevation
+            The ground as it is known.
+        error : DemError
+            Its error and the draw.
+        windows : sequence of Block
+            Where slopes are wanted; by default everywhere.
+
+        Returns
+        -------
+        Truing
+
+        Raises
+        ------
+        SettingError
+            A range too long for the raster.
+        """
         frame = make_frame(elevation.shape, elevation.transform, elevation.crs)
-        known = np.isfinite(slopes(elevation.heights, frame))
+        part = _around(windows, elevation.shape)
+        known = np.isfinite(slopes(elevation.heights, frame, part))
         near, around = _Bell.over(known, NEAR), _Bell.over(known, AROUND)
-        mean, square = _without_error(elevation.heights, error, frame)
+        mean, square = _without_error(elevation.heights, error, frame, part)
         wanted = around(square) - around(mean) ** 2
         drawn, spread = np.zeros_like(mean), np.zeros_like(mean)
         for heights in likely_heights(elevation.heights, error, frame.cell_size):
-            slope = slopes(heights, frame)
+            slope = slopes(heights, frame, part)
             drawn += slope / error.realisations
             spread += (around(slope * slope) - around(slope) ** 2) / error.realisations
         least, most = (ratio**2 for ratio in RATIOS)
         with np.errstate(divide="ignore", invalid="ignore"):
             ratio = np.sqrt(np.clip(wanted / spread, least, most))
-        return cls(frame, near, near(mean - drawn), np.nan_to_num(ratio, nan=1.0))
+        return cls(frame, part, near, near(mean - drawn), np.nan_to_num(ratio, nan=1.0))
 
     def __call__(self, ground: Elevation) -> Slopes:
-        """Slopes of a likely ground [percent], trued; NaN where it has none."""
-        slope = slopes(ground.heights, self.frame)
+        """Slopes of a likely ground [percent], trued; NaN where it has none and off the part."""
+        slope = slopes(ground.heights, self.frame, self.part)
         middle = self.near(slope)
-        return np.maximum(middle + self.shift + (slope - middle) * self.ratio, 0.0)
+        found = np.full(ground.shape, np.nan, np.float32)
+        trued = np.maximum(middle + self.shift + (slope - middle) * self.ratio, 0.0)
+        found[_inside(self.part)] = trued
+        return found
 
 
-def slopes(heights: NDArray[np.float32], frame: Frame) -> Slopes:
-    """Slopes of all cells of a raster [percent]; NaN where there is none."""
+def slopes(heights: NDArray[np.float32], frame: Frame, part: Block | None = None) -> Slopes:
+    """Slopes of the cells of a raster, or of a part of it [percent]; NaN where there is none."""
+    if part is None:
+        part = Block(0, 0, heights.shape[0], heights.shape[1])
     padded = np.pad(heights, 1, constant_values=np.nan)
-    found = np.empty(heights.shape, np.float32)
-    rows_and_columns = heights.shape[0], heights.shape[1]
-    for block in blocks_of(rows_and_columns):
-        rows = slice(block.row, block.row + block.rows + 2)
-        columns = slice(block.column, block.column + block.columns + 2)
-        piece = np.ascontiguousarray(padded[rows, columns])
-        east, north, up = block_normals(piece, 1, frame, block.row, block.column)
-        inside = found[block.row : rows.stop - 2, block.column : columns.stop - 2]
-        inside[:] = 100.0 * np.hypot(east, north) / up
+    found = np.empty((part.rows, part.columns), np.float32)
+    for block in blocks_of((part.rows, part.columns)):
+        place = replace(block, row=part.row + block.row, column=part.column + block.column)
+        rows, columns = _inside(place)
+        piece = padded[rows.start : rows.stop + 2, columns.start : columns.stop + 2]
+        normal = block_normals(np.ascontiguousarray(piece), 1, frame, place.row, place.column)
+        east, north, up = normal
+        found[_inside(block)] = 100.0 * np.hypot(east, north) / up
     return found
 
 
+def _inside(block: Block) -> tuple[slice, slice]:
+    """Its rows and columns."""
+    return (
+        slice(block.row, block.row + block.rows),
+        slice(block.column, block.column + block.columns),
+    )
+
+
+def _around(windows: Sequence[Block], shape: tuple[int, int]) -> Block:
+    """The rectangle that holds all windows, and as much around them as the wider bell reaches."""
+    if not windows:
+        return Block(0, 0, *shape)
+    margin = int(4.0 * AROUND)
+    row = max(min(w.row for w in windows) - margin, 0)
+    column = max(min(w.column for w in windows) - margin, 0)
+    last_row = min(max(w.row + w.rows for w in windows) + margin, shape[0])
+    last_column = min(max(w.column + w.columns for w in windows) + margin, shape[1])
+    return Block(row, column, last_row - row, last_column - column)
+
+
 def _without_error(
-    heights: NDArray[np.float32], error: DemError, frame: Frame
+    heights: NDArray[np.float32], error: DemError, frame: Frame, part: Block
 ) -> tuple[Slopes, Slopes]:
     """Slopes of cells and their squares, on average those of a model without its error.
 
@@ -193,24 +265,20 @@ def _without_error(
     variance of none (Cook and Stefanski 1994, doi:10.1080/01621459.1994.10476871): the slope along
     the parabola through the three, the square, which grows in a straight line, along a line.
     """
-    seen = slopes(heights, frame)
+    seen = slopes(heights, frame, part)
     means = [np.zeros_like(seen) for _ in MORE]
     squares = [np.zeros_like(seen) for _ in MORE]
     for field in error_fields(error, heights.shape, frame.cell_size):
         for more, mean, square in zip(MORE, means, squares, strict=True):
-            for steeper in _on_top(heights, np.sqrt(more) * field, frame):
+            for sign in (1.0, -1.0):
+                moved = heights + np.float32(sign * np.sqrt(more)) * field
+                steeper = slopes(moved, frame, part)
                 mean += steeper / (2 * error.realisations)
                 square += steeper * steeper / (2 * error.realisations)
     half, whole = means
     growth = squares[0] + squares[1] / np.float32(2.0) - np.float32(1.5) * seen * seen
     mean = np.float32(6.0) * seen - np.float32(8.0) * half + np.float32(3.0) * whole
     return mean, seen * seen - growth
-
-
-def _on_top(heights: NDArray[np.float32], field: Any, frame: Frame) -> Iterator[Slopes]:
-    """Slopes with an error on top, and with its opposite."""
-    for sign in (1.0, -1.0):
-        yield slopes((heights + sign * field).astype(np.float32), frame)
 
 
 @dataclass(frozen=True, eq=False)

@@ -9,6 +9,7 @@ from reference.made_relief import ground_of, made_relief, with_foreign_error
 
 from terrasol.engine.datasets import ArraySink
 from terrasol.engine.job import plan_terrain
+from terrasol.engine.plan import Block
 from terrasol.engine.trued import AREA_DOUBT, MEAN_DOUBT, RATIOS, Truing, propagate_trued, slopes
 from terrasol.engine.trued import _without_error as without_error
 from terrasol.engine.uncertainty import likely_grounds, propagate_all
@@ -53,7 +54,7 @@ def test_the_square_of_slopes_is_freed_of_what_error_adds():
     plane = np.broadcast_to(20.0 * np.arange(150.0)[:, None] / 10.0, (150, 150)).astype(np.float32)
     seen = with_foreign_error(plane, error)
     ground = ground_of(seen)
-    mean, square = without_error(ground.heights, error, frame_of(ground))
+    mean, square = without_error(ground.heights, error, frame_of(ground), Block(0, 0, 150, 150))
     inside = np.s_[5:-5, 5:-5]
     variance = 1e4 * 3 / 16 * 0.5**2 / 10.0**2
     found = slopes(ground.heights, frame_of(ground))[inside].astype(float)
@@ -129,22 +130,34 @@ def test_what_truing_does_counts_as_doubt(half_rough):
             return {
                 "mean": slope[floor].mean(),
                 "area": (slope[floor] < 2.0).mean(),
+                "flat": (slope[floor] < 1.0).mean(),
+                "gentle": ((slope[floor] >= 1.0) & (slope[floor] < 3.0)).mean(),
+                "steep": (slope[floor] >= 3.0).mean(),
                 "height": ground.heights[floor].mean(),
                 "turn": 350.0 + slope[floor].mean(),
             }
 
         return ask
 
-    found = propagate_trued(seen, error, look, areas=["area"], angles=["turn"])
+    classes = ["flat", "gentle", "steep"]
+    found = propagate_trued(seen, error, look, areas=["area"], classes=classes, angles=["turn"])
     plain = propagate_all(seen, error, lambda ground: look(ground)(None), angles=["turn"])
     grounds = list(likely_grounds(seen, error))
-    for name, doubt in (("mean", MEAN_DOUBT), ("area", AREA_DOUBT)):
-        trued = np.array([look(ground)(truing(ground))[name] for ground in grounds])
-        moved = trued.mean() - float(plain[name].mean)
-        assert abs(moved) > 0.05
-        assert float(found[name].mean) == pytest.approx(trued.mean(), rel=1e-5)
+    told = [look(ground)(truing(ground)) for ground in grounds]
+    trued = {name: np.array([each[name] for each in told]) for name in told[0]}
+    moved = {name: each.mean() - float(plain[name].mean) for name, each in trued.items()}
+    doubts = {
+        "mean": MEAN_DOUBT * moved["mean"],
+        "area": AREA_DOUBT * moved["area"],
+        "flat": AREA_DOUBT * moved["flat"],  # its one bound: all above it moves as much
+        "gentle": AREA_DOUBT * np.hypot(moved["flat"], moved["steep"]),
+        "steep": AREA_DOUBT * moved["steep"],
+    }
+    for name, doubt in doubts.items():
+        assert abs(doubt) > 0.01
+        assert float(found[name].mean) == pytest.approx(trued[name].mean(), rel=1e-5)
         assert float(found[name].deviation) == pytest.approx(
-            np.hypot(trued.std(ddof=1), doubt * moved), rel=1e-5
+            np.hypot(trued[name].std(ddof=1), doubt), rel=1e-5
         )
         assert float(found[name].estimate) == float(plain[name].estimate)
     assert found["height"].mean == plain["height"].mean
@@ -160,3 +173,19 @@ def test_the_same_seed_trues_alike_and_another_does_not():
     np.testing.assert_array_equal(first, again)
     assert np.abs(first - other).max() > 1e-3
     assert len(list(error_fields(error, ground.shape, (10.0, 10.0)))) == 4
+
+
+def test_in_windows_slopes_are_trued_as_they_are_with_all_the_raster():
+    """Bells reach four standard deviations; beyond the windows and what they need all is void."""
+    error = DemError(0.5, 50.0, 3)
+    heights = with_foreign_error(made_relief((260, 260), 2), error)
+    heights[118:120, 100:102] = np.nan
+    ground = ground_of(heights)
+    windows = [Block(110, 90, 20, 30), Block(140, 120, 5, 5)]
+    drawn = next(likely_grounds(ground, error))
+    part, whole = Truing.of(ground, error, windows)(drawn), Truing.of(ground, error)(drawn)
+    for w in windows:
+        inside = np.s_[w.row : w.row + w.rows, w.column : w.column + w.columns]
+        np.testing.assert_allclose(part[inside], whole[inside], rtol=1e-3, atol=1e-2)
+    assert np.isnan(part[:70]).all()
+    assert np.isfinite(whole[:70]).all()

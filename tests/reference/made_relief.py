@@ -10,7 +10,7 @@ from terrasol.engine.error_maps import plan_errors
 from terrasol.engine.job import plan_irradiation, plan_terrain
 from terrasol.engine.spread import SpreadTally
 from terrasol.engine.trued import propagate_trued
-from terrasol.engine.uncertainty import moved, realisations, with_tables
+from terrasol.engine.uncertainty import moved, propagate_all, realisations, with_tables
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.uncertainty import error_fields
 
@@ -81,16 +81,20 @@ class Survey:
             own = slope if slopes is None else slopes
             return found | {
                 "parcel slope": in_parcels(own, self.side),
-                "parcel area": in_parcels(own < STEEP, self.side),
+                "parcel area": in_parcels(np.where(np.isnan(own), np.nan, own < STEEP), self.side),
             }
 
         return ask
 
     def spreads(self):
-        """By terrasol's own propagation."""
+        """By terrasol's own propagation, as parcels have it."""
         return propagate_trued(
             self.elevation, self.error, self.look, areas=["parcel area"], angles=["aspect"]
         )
+
+    def spreads_as_drawn(self):
+        """By likely grounds as they are drawn, as any quantity has it."""
+        return propagate_all(self.elevation, self.error, self.of, angles=["aspect"])
 
     def spreads_of_added_error(self):
         """As one might do it in place of that: error on top of the model, and its shift taken off.
@@ -159,17 +163,19 @@ KINDS = {
 }
 
 
-def count(held, truth, error, number, settings=None, *, maps=True, added=False, by_truth=False):
+def count(
+    held, truth, error, number, settings=None, *, maps=True, by=Survey.spreads, by_truth=False
+):
     """One trial: put an error on the truth, propagate, and count what holds the truth.
 
     Names are `quantity, kind of slope`; of parcels those with both shallow and steep ground, and
     all; of maps `map of quantity`. The kind is that which is told, the only one that a reader of
-    the interval knows; with `by_truth` the true one. With `added` by error on top of the model.
+    the interval knows; with `by_truth` the true one. `by` says how spreads are found.
     """
     observed = ground_of(with_foreign_error(truth, error, number))
     survey = Survey(observed, replace(error, seed=number), settings)
     real, seen = survey.of(ground_of(truth)), survey.of(observed)
-    spreads = survey.spreads_of_added_error() if added else survey.spreads()
+    spreads = by(survey)
     told = real if by_truth else {name: spread.mean for name, spread in spreads.items()}
     for name, spread in spreads.items():
         low, high = spread.interval(0.9)
