@@ -224,16 +224,23 @@ def slopes(heights: NDArray[np.float32], frame: Frame, part: Block | None = None
     """Slopes of the cells of a raster, or of a part of it [percent]; NaN where there is none."""
     if part is None:
         part = Block(0, 0, heights.shape[0], heights.shape[1])
-    padded = np.pad(heights, 1, constant_values=np.nan)
     found = np.empty((part.rows, part.columns), np.float32)
     for block in blocks_of((part.rows, part.columns)):
         place = replace(block, row=part.row + block.row, column=part.column + block.column)
-        rows, columns = _inside(place)
-        piece = padded[rows.start : rows.stop + 2, columns.start : columns.stop + 2]
-        normal = block_normals(np.ascontiguousarray(piece), 1, frame, place.row, place.column)
+        normal = block_normals(_with_rim(heights, place), 1, frame, place.row, place.column)
         east, north, up = normal
         found[_inside(block)] = 100.0 * np.hypot(east, north) / up
     return found
+
+
+def _with_rim(heights: NDArray[np.float32], block: Block) -> NDArray[np.float32]:
+    """Heights of a block and one cell around it; NaN beyond the raster."""
+    padded = np.full((block.rows + 2, block.columns + 2), np.nan, np.float32)
+    top, left = max(block.row - 1, 0), max(block.column - 1, 0)
+    piece = heights[top : block.row + block.rows + 1, left : block.column + block.columns + 1]
+    row, column = top - block.row + 1, left - block.column + 1
+    padded[row : row + piece.shape[0], column : column + piece.shape[1]] = piece
+    return padded
 
 
 def _inside(block: Block) -> tuple[slice, slice]:
@@ -262,8 +269,9 @@ def _without_error(
     """Slopes of cells and their squares, on average those of a model without its error.
 
     More errors are put on the model, with both signs, and the means extrapolated to an error
-    variance of none (Cook and Stefanski 1994, doi:10.1080/01621459.1994.10476871): the slope along
-    the parabola through the three, the square, which grows in a straight line, along a line.
+    variance of none (Cook and Stefanski 1994, doi:10.1080/01621459.1994.10476871, from memory): the
+    slope along the parabola through the three, the square, which grows in a straight line, along a
+    line.
     """
     seen = slopes(heights, frame, part)
     means = [np.zeros_like(seen) for _ in MORE]
