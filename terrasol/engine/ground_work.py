@@ -9,7 +9,7 @@ from functools import partial
 import numpy as np
 from numpy.typing import NDArray
 
-from terrasol.engine.plan import Block, blocks_of
+from terrasol.engine.plan import Block, blocks_of, leave_if_unwanted
 from terrasol.ground.beyond import Beyond, DataEdge, Scene
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame
@@ -165,8 +165,9 @@ class BlockGround:
         return first + rows.start * by_row, rows.step * by_row, by_column
 
     def pieces(self) -> Iterator[range]:
-        """Rows of the block that are worked on together."""
+        """Rows of the block that are worked on together; none any more once the run has ended."""
         for first in range(0, self.block.rows, STRIP_ROWS):
+            leave_if_unwanted()
             yield range(first, min(first + STRIP_ROWS, self.block.rows))
 
     def table_latitude(self, rows: range) -> float:

@@ -8,6 +8,7 @@ same plan can be dealt to processes or machines.
 from __future__ import annotations
 
 import os
+import threading
 from collections.abc import Callable, Iterable, Iterator
 from concurrent.futures import FIRST_COMPLETED, Future, ThreadPoolExecutor, wait
 from dataclasses import dataclass
@@ -66,10 +67,11 @@ def carry_out(tasks: Iterable[Callable[[], Any]], threads: int, ahead: int = 2) 
 
     Never more than `ahead` tasks a thread are under way or waiting to be taken, so that
     results do not pile up. The first failure stops the rest and is raised here; want of
-    memory as UnfinishedError.
+    memory as UnfinishedError. Tasks under way end at their next `leave_if_unwanted`.
     """
     waiting: set[Future[Any]] = set()
-    pool = ThreadPoolExecutor(threads, thread_name_prefix="terrasol")
+    unwanted = threading.Event()
+    pool = ThreadPoolExecutor(threads, "terrasol", lambda: setattr(_worker, "unwanted", unwanted))
     try:
         for task in tasks:
             waiting.add(pool.submit(task))
@@ -86,4 +88,16 @@ def carry_out(tasks: Iterable[Callable[[], Any]], threads: int, ahead: int = 2) 
             "not enough memory to finish everything: use fewer --threads, or a smaller raster"
         ) from error
     finally:
+        unwanted.set()
         pool.shutdown(wait=True, cancel_futures=True)
+
+
+_worker = threading.local()
+"""What a thread of `carry_out` knows: whether anybody still waits for what it does."""
+
+
+def leave_if_unwanted() -> None:
+    """End a task whose results nobody takes any more; for long ones, every now and then."""
+    unwanted: threading.Event | None = getattr(_worker, "unwanted", None)
+    if unwanted is not None and unwanted.is_set():
+        raise UnfinishedError("the run ended before this block was done")

@@ -6,7 +6,14 @@ import time
 import numpy as np
 import pytest
 
-from terrasol.engine.plan import BLOCK, blocks_of, carry_out, check_threads, default_threads
+from terrasol.engine.plan import (
+    BLOCK,
+    blocks_of,
+    carry_out,
+    check_threads,
+    default_threads,
+    leave_if_unwanted,
+)
 from terrasol.errors import SettingError, UnfinishedError
 from terrasol.ground.horizon import NODE_STEP
 
@@ -96,6 +103,23 @@ def test_a_consumer_that_leaves_stops_the_rest():
     next(stream)
     stream.close()
     assert len(started) < 20
+
+
+def test_a_long_task_leaves_when_the_run_ends():
+    """As a block of `hours` does between its strips: a request to end is not kept waiting."""
+    steps = []
+
+    def long():
+        for step in range(500):
+            leave_if_unwanted()
+            steps.append(step)
+            time.sleep(0.01)
+
+    stream = carry_out([lambda: "short", long], 2)
+    assert next(stream) == "short"
+    stream.close()
+    assert len(steps) < 250
+    leave_if_unwanted()  # outside of such a thread it does nothing
 
 
 def test_threads_are_at_least_one():
