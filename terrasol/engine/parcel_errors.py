@@ -131,7 +131,7 @@ def doubts_of(
         areas=[name for name in (*numbers[0], "score") if _is_area(name)],
         classes=[f"{key}_ha_map" for key in slope_class_keys(asked.slope_edges)],
         angles=ANGLES,
-        progress=lambda done: told(done / error.realisations),
+        told=told,
     )
     return [
         {name: _doubt(spread, k, name, numbers[k]) for name, spread in spreads.items()}

@@ -12,7 +12,7 @@ from scipy.ndimage import gaussian_filter
 
 from terrasol.engine.plan import Block, blocks_of
 from terrasol.engine.spread import Spread
-from terrasol.engine.uncertainty import Told, propagate_all
+from terrasol.engine.uncertainty import propagate_all
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame, make_frame
 from terrasol.ground.likely import likely_heights
@@ -41,6 +41,9 @@ MORE: Final = (0.5, 1.0)
 """Error variances put on top of the model's own, as shares of it: Cook and Stefanski (1994)
 extrapolate from such to none at all, -1."""
 
+TRUING_PART: Final = 0.2
+"""Share of the time that goes by before the first likely ground is looked at, for progress only."""
+
 SECONDS_A_CELL: Final = 0.9e-6
 """What one core takes to true a cell's slope on one ground, for the estimate only."""
 
@@ -64,7 +67,7 @@ def propagate_trued(
     areas: Collection[str] = (),
     classes: Sequence[str] = (),
     angles: Collection[str] = (),
-    progress: Told | None = None,
+    told: Callable[[float], None] = lambda share: None,
 ) -> dict[str, Spread]:
     """Find what the error of the heights leaves open about quantities that hang on slopes.
 
@@ -85,8 +88,8 @@ def propagate_trued(
         Which of them are areas of classes of slope, one after the other, the ground all told.
     angles : collection of str
         Which of them are directions in degrees.
-    progress : callable, optional
-        Told how many realisations are done.
+    told : callable
+        Told the share done.
 
     Returns
     -------
@@ -107,7 +110,8 @@ def propagate_trued(
     ground, but finds means alone, not what a cell may be. So means and scatter over some cells
     come from it, and the rest from likely grounds.
     """
-    truing = Truing.of(elevation, error, windows)
+    truing = Truing.of(elevation, error, windows, lambda share: told(TRUING_PART * share))
+    draw = (1.0 - TRUING_PART) / error.realisations
 
     def both(ground: Elevation) -> dict[str, ArrayLike]:
         ask = look(ground)
@@ -117,7 +121,9 @@ def propagate_trued(
         return {**trued, **drawn}
 
     every = [*angles, *(_UNTRUED + name for name in angles)]
-    spreads = propagate_all(elevation, error, both, angles=every, progress=progress)
+    spreads = propagate_all(
+        elevation, error, both, angles=every, progress=lambda done: told(TRUING_PART + done * draw)
+    )
     trued = {name: each for name, each in spreads.items() if not name.startswith(_UNTRUED)}
     moved = {name: each.mean - spreads[_UNTRUED + name].mean for name, each in trued.items()}
     return {
@@ -173,7 +179,13 @@ class Truing:
     ratio: Slopes
 
     @classmethod
-    def of(cls, elevation: Elevation, error: DemError, windows: Sequence[Block] = ()) -> Truing:
+    def of(
+        cls,
+        elevation: Elevation,
+        error: DemError,
+        windows: Sequence[Block] = (),
+        told: Callable[[float], None] = lambda share: None,
+    ) -> Truing:
         """Compare slopes extrapolated to no error with those of likely grounds.
 
         Parameters
@@ -184,6 +196,8 @@ class Truing:
             Its error and the draw.
         windows : sequence of Block
             Where slopes are wanted; by default everywhere.
+        told : callable
+            Told the share done.
 
         Returns
         -------
@@ -198,13 +212,18 @@ class Truing:
         part = _around(windows, elevation.shape)
         known = np.isfinite(slopes(elevation.heights, frame, part))
         near, around = _Bell.over(known, NEAR), _Bell.over(known, AROUND)
-        mean, square = _without_error(elevation.heights, error, frame, part)
+        mean, square = _without_error(
+            elevation.heights, error, frame, part, lambda share: told(0.6 * share)
+        )
         wanted = around(square) - around(mean) ** 2
         drawn, spread = np.zeros_like(mean), np.zeros_like(mean)
-        for heights in likely_heights(elevation.heights, error, frame.cell_size):
+        for done, heights in enumerate(
+            likely_heights(elevation.heights, error, frame.cell_size), 1
+        ):
             slope = slopes(heights, frame, part)
             drawn += slope / error.realisations
             spread += (around(slope * slope) - around(slope) ** 2) / error.realisations
+            told(0.6 + 0.4 * done / error.realisations)
         least, most = (ratio**2 for ratio in RATIOS)
         with np.errstate(divide="ignore", invalid="ignore"):
             ratio = np.sqrt(np.clip(wanted / spread, least, most))
@@ -264,7 +283,11 @@ def _around(windows: Sequence[Block], shape: tuple[int, int]) -> Block:
 
 
 def _without_error(
-    heights: NDArray[np.float32], error: DemError, frame: Frame, part: Block
+    heights: NDArray[np.float32],
+    error: DemError,
+    frame: Frame,
+    part: Block,
+    told: Callable[[float], None] = lambda share: None,
 ) -> tuple[Slopes, Slopes]:
     """Slopes of cells and their squares, on average those of a model without its error.
 
@@ -276,7 +299,8 @@ def _without_error(
     seen = slopes(heights, frame, part)
     means = [np.zeros_like(seen) for _ in MORE]
     squares = [np.zeros_like(seen) for _ in MORE]
-    for field in error_fields(error, heights.shape, frame.cell_size):
+    for done, field in enumerate(error_fields(error, heights.shape, frame.cell_size)):
+        told(done / error.realisations)
         for more, mean, square in zip(MORE, means, squares, strict=True):
             for sign in (1.0, -1.0):
                 moved = heights + np.float32(sign * np.sqrt(more)) * field

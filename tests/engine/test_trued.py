@@ -189,3 +189,13 @@ def test_in_windows_slopes_are_trued_as_they_are_with_all_the_raster():
         np.testing.assert_allclose(part[inside], whole[inside], rtol=1e-3, atol=1e-2)
     assert np.isnan(part[:70]).all()
     assert np.isfinite(whole[:70]).all()
+
+
+def test_progress_goes_up_to_the_end():
+    error, shares = DemError(0.5, 50.0, 3), []
+    ground = ground_of(with_foreign_error(made_relief((60, 60), 2), error))
+    propagate_trued(ground, error, lambda _: lambda _: {"nothing": 1.0}, told=shares.append)
+    assert shares == sorted(shares)
+    assert len(set(shares)) > 8
+    assert shares[0] == 0.0
+    assert shares[-1] == pytest.approx(1.0)
