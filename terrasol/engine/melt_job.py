@@ -359,7 +359,7 @@ def top_zones(tables: SeasonTables, month: str, count: int = 3) -> list[str]:
         return []
     order: Sequence[int] = np.argsort(-from_band)[:count].tolist()
     return [
-        f"{tables.edges[b]:g} to {tables.edges[b + 1]:g} m {from_band[b] / whole:.0%}"
+        f"{tables.edges[b]:g} to {tables.edges[b + 1]:g} m {100.0 * from_band[b] / whole:.0f} %"
         for b in order
         if from_band[b] > 0.005 * whole
     ]
