@@ -4,7 +4,7 @@ Each message names the thing that is wrong and says what to do. The command
 line turns each class into its own exit code; nothing here knows how.
 """
 
-from collections.abc import Sequence
+from collections.abc import Collection, Sequence
 from typing import Final
 
 
@@ -63,6 +63,18 @@ def listed(words: Sequence[str], most: int) -> str:
     """
     more = f" and {len(words) - most} more" if len(words) > most else ""
     return ", ".join(words[:most]) + more
+
+
+def range_text(values: Collection[float]) -> str:
+    """Word the least and the greatest of values.
+
+    Examples
+    --------
+    >>> range_text([3.4, 2.1, 3.0]), range_text([0.2, 0.2])
+    ('2.1 to 3.4', '0.2')
+    """
+    ends = [f"{end:.3g}" for end in (min(values), max(values))]
+    return ends[0] if ends[0] == ends[1] else " to ".join(ends)
 
 
 SMALL_AREA: Final = 0.01

@@ -374,6 +374,7 @@ class _Job:
             given["coarser"],
             given["rows_read"],
             given["error"],
+            "" if settled.station is None else settled.station.name,
         )
         notes = (*settled.warnings, *doubts, *notes)
         return settings, (*self.asked.doubts(self.ground.frame), *notes)
@@ -533,6 +534,7 @@ class _Job:
         from terrasol.engine.parcel_tables import (
             column_rows,
             doubt_rows,
+            layer_words,
             patch_rows,
             row_rows,
             size_rows,
@@ -544,10 +546,11 @@ class _Job:
         elevation, place = self.ground.elevation, delivery.staged(LAYER)
         try:
             outlines = [parcel.outline for parcel in found.order]
-            write_layer(place, "parcels", elevation.crs, outlines, rows)
+            words = layer_words(found)
+            write_layer(place, "parcels", elevation.crs, outlines, rows, words["parcels"])
             if found.settings.asked.rule is not None:
                 patches = patch_rows(found, elevation.transform)
-                write_layer(place, "rule", elevation.crs, *patches, append=True)
+                write_layer(place, "rule", elevation.crs, *patches, words["rule"], append=True)
         except Exception as error:  # of GDAL, pyogrio and the disk
             raise delivery.refusal(LAYER, error) from error
         tables = {TABLE: rows, COLUMNS: column_rows(found)}
@@ -624,6 +627,7 @@ def sheet_names(names: list[str]) -> list[str]:
 
 def _results(found: Survey) -> dict[str, Any]:
     """What came out, ready for JSON."""
+    from terrasol.engine.outputs import sky_kind
     from terrasol.engine.parcel_tables import table_rows
     from terrasol.files.parcel_tables import rounded
     from terrasol.practice.limits import VINEYARD
@@ -633,6 +637,8 @@ def _results(found: Survey) -> dict[str, Any]:
         "parcels": rows,
         "cell_m": round(found.cell_size, 3),
         "score_terms": list(found.score.terms) if found.score else None,
+        "sky": sky_kind(found.settings.light),
+        "light": found.settings.sky_words,
         "shade": found.shade,
         "not_in_it": VINEYARD,
     }
@@ -668,6 +674,7 @@ def _cell(row: dict[str, Any], name: str, form: str) -> str:
 def _summary_text(record: dict[str, Any]) -> str:
     """What came out, for people: a table, best first."""
     from terrasol.cli.run import closing_lines
+    from terrasol.engine.outputs import SKIES
 
     results, settings = record["results"], record["settings"]
     rows = results["parcels"]
@@ -699,7 +706,11 @@ def _summary_text(record: dict[str, Any]) -> str:
             for text, column in zip(line, table, strict=True)
         ]  # fmt: skip
         told.append("  ".join(cells))
-    told.append(f"season: {settings['season']}; energy per area of slope; hectares of map")
+    told.append(
+        f"season: {settings['season']}; energy {SKIES[results['sky']]}, per area of slope; hectares"
+        " of map"
+    )
+    told.append(results["light"])
     if settings["rule"]:
         least = f", in patches from {settings['least_patch_m2']:g} m2" * bool(
             settings["least_patch_m2"]

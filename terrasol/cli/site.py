@@ -13,7 +13,7 @@ import click
 
 from terrasol.cli.error_options import AskedError, error_options
 from terrasol.cli.ground_options import Around, ground_options
-from terrasol.cli.irradiation import irradiation, light_notes, light_record
+from terrasol.cli.irradiation import irradiation, light_record
 from terrasol.cli.options import Common, Name, Numbers, common_options, period_option
 from terrasol.cli.sky_options import ALBEDO_FOR_NOW, AskedSky, sky_options
 from terrasol.constants import ENERGY_UNITS
@@ -344,6 +344,7 @@ class _Job:
         """Compute everything, and write it if a folder is named: the record, and the places."""
         from terrasol.cli.progress import progress_bar
         from terrasol.cli.run import announce_compilation, deliver, seconds_of
+        from terrasol.engine.light_words import light_notes
         from terrasol.engine.outputs import shade_words
         from terrasol.engine.plan import default_threads
         from terrasol.files.provenance import run_record

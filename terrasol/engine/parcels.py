@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 
 from terrasol.constants import HECTARE
 from terrasol.engine.job import NO_SCENE, plan_terrain
+from terrasol.engine.light_words import assumed_note, sky_note
 from terrasol.engine.outputs import shade_doubts, shade_words
 from terrasol.engine.parcel_cells import Piece, SceneOf, pieces_of
 from terrasol.engine.parcel_errors import Doubt, doubts_of
@@ -88,6 +89,8 @@ class ParcelSettings:
         Vine rows, for the direction in which to plant them.
     error : DemError, optional
         Of the heights, for standard errors.
+    station : str
+        Name of the station whose sky it is, if any.
 
     Raises
     ------
@@ -102,6 +105,12 @@ class ParcelSettings:
     coarser: tuple[int, ...] = COARSER
     rows: RowSettings | None = None
     error: DemError | None = None
+    station: str = ""
+
+    @property
+    def sky_words(self) -> str:
+        """Which sky the light is of, and what air and ground were taken for."""
+        return f"{sky_note(self.light, self.station)} {assumed_note(self.light)}"
 
     def __post_init__(self) -> None:
         """Refuse what makes no sense."""

@@ -14,7 +14,8 @@ from matplotlib.patches import Wedge
 from numpy.typing import NDArray
 
 from terrasol import __version__
-from terrasol.engine.outputs import MONTH_NAMES, sky_kind
+from terrasol.engine.light_words import sky_title
+from terrasol.engine.outputs import MONTH_NAMES
 from terrasol.engine.parcel_figures import LAPSE_EFFECT, month_keys, slope_class_keys
 from terrasol.engine.parcels import Parcel, Survey, numbers_of
 from terrasol.errors import area_unit
@@ -63,6 +64,9 @@ UNKNOWN: Final = "nothing of the ground is known"
 MOST_TIMED, MOST_LETTERED = 13, 36
 """Months whose first and last sun are written out, and months that are named."""
 
+BELOW_ROWS: Final = 132.0
+"""From the top of the diagram of rows to the notes below it [pixels]."""
+
 TIMES: Final = 13.0
 """Height that a written time takes above or below a bar [pixels]."""
 
@@ -108,16 +112,19 @@ def parcel_page(
 def _light(page: Page, survey: Survey, parcel: Parcel) -> None:
     """Diagrams of light and warmth; what was not asked for leaves its room to the others."""
     rows, warm = survey.settings.rows is not None, survey.settings.asked.warmth is not None
-    tall, sky = (92.0, 110.0) if rows or warm else (150.0, 210.0)
+    tall = 92.0 if rows or warm else 150.0
+    top = _foot_top(*_foot_lines(survey))
+    low = min(967.0, top - BELOW_ROWS)  # of rows and warmth; the horizon gives way
+    sky = low - 857.0 if rows or warm else min(210.0, top - 885.0)
     half, right = 336.0, WIDTH - MARGIN
     _months(page, survey, parcel, (MARGIN + 22, 632, half - 10, tall))
     _days(page, survey, parcel, (right - half, 632, half, tall))
     _skyline(page, survey, parcel, (MARGIN + 22, 705 + tall, INNER - 22, sky))
     if rows:
-        _rows(page, survey, parcel, (MARGIN + 34, 967, (half - 22 if warm else INNER - 34), 72))
+        _rows(page, survey, parcel, (MARGIN + 34, low, (half - 22 if warm else INNER - 34), 72))
     if warm:
         left = right - half if rows else MARGIN
-        _warmth(page, survey, parcel, (left, 967, right - left))
+        _warmth(page, survey, parcel, (left, low, right - left))
 
 
 def heading(page: Page, x: float, y: float, words: str, more: str = "") -> None:
@@ -621,18 +628,19 @@ def _draw_scale(page: Page, parcel: Parcel, name: str, words: str, scale: Scale,
 
 def notes_of(survey: Survey) -> list[str]:
     """What every sheet says of its numbers."""
-    asked, light = survey.settings.asked, survey.settings.light
-    sky = "a clear sky (potential)" if sky_kind(light) == "clear" else "the sky that was given"
+    asked = survey.settings.asked
     notes = [
-        f"Season {asked.season_words}, {asked.period.label}. Energy under {sky}, per area of slope,"
-        f" reflection counted, from cells of {survey.cell_size:.3g} m. {survey.shade} Hectares of"
-        " level map area, true on the ellipsoid.",
+        f"Season {asked.season_words}, {asked.period.label}. {sky_title(survey.settings.light)} per"
+        f" area of slope, reflection counted, from cells of {survey.cell_size:.3g} m."
+        f" {survey.settings.sky_words} {survey.shade} Hectares of level map area, true on the"
+        " ellipsoid.",
     ]
     if survey.settings.rows is not None:
         rows = survey.settings.rows
         notes.append(
             f"Rows {rows.spacing:g} m apart, leaf wall {rows.height:g} m high, {rows.width:g} m"
-            " wide, endless on the parcel's mean plane; climb: steepest cell along the rows."
+            f" wide, of albedo {rows.canopy_albedo:g}, endless on the parcel's mean plane; climb:"
+            " steepest cell along the rows."
         )
     if asked.warmth is not None:
         station, lapse = asked.warmth.station, asked.warmth.lapse
@@ -654,11 +662,21 @@ def notes_of(survey: Survey) -> list[str]:
     return notes
 
 
+def _foot_lines(survey: Survey) -> tuple[list[str], list[str]]:
+    """Lines of the notes, and of what is not in it."""
+    notes = wrap(" ".join(notes_of(survey)), 8.2, SLACK * INNER)
+    return notes, wrap(VINEYARD, 8.6, SLACK * INNER - 80, bold=True)
+
+
+def _foot_top(notes: list[str], last: list[str]) -> float:
+    """Where the first of those lines stands."""
+    return HEIGHT - 18 - 10.0 * (len(notes) + len(last) - 1)
+
+
 def _foot(page: Page, survey: Survey) -> None:
     """Basis, rule, and what is not in it."""
-    notes = wrap(" ".join(notes_of(survey)), 8.2, SLACK * INNER)
-    last = wrap(VINEYARD, 8.6, SLACK * INNER - 80, bold=True)
-    y = HEIGHT - 18 - 10.0 * (len(notes) + len(last) - 1)
+    notes, last = _foot_lines(survey)
+    y = _foot_top(notes, last)
     for k, line in enumerate(notes):
         page.text(MARGIN, y + k * 10.0, line, 8.2, colour=SOFT)
     for k, line in enumerate(last, len(notes)):

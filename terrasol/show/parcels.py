@@ -46,7 +46,7 @@ from terrasol.show.parcel_sheet import (
     scale_and_north,
 )
 
-MAP_HEIGHTS: Final = 360.0, 560.0
+MAP_HEIGHTS: Final = 300.0, 560.0
 PITCH: Final = 19.0
 """Least and greatest height of the map, and height of a row of the table [pixels]."""
 
@@ -105,10 +105,12 @@ def _head(page: Page, survey: Survey, title: str) -> None:
 
 def _map_height(survey: Survey) -> float:
     """Height of the map: all that table and score leave."""
-    left = PITCH * (MOST_ROWS - len(survey.parcels))
+    count = len(survey.parcels)
+    rows = min(count, MOST_ROWS) + (count > MOST_ROWS)
+    left = _foot_top(*_foot_lines(survey)) - BELOW_MAP - 30.0 - PITCH * rows
     if survey.score is not None:
-        left -= 50.0 + 14.0 * len(survey.score.terms)
-    return float(np.clip(MAP_HEIGHTS[0] + left, *MAP_HEIGHTS))
+        left -= 46.0 + 14.0 * len(survey.score.terms)
+    return float(np.clip(left, *MAP_HEIGHTS))
 
 
 def _map(page: Page, survey: Survey, elevation: Elevation, frame: Frame, height: float) -> None:
@@ -291,8 +293,7 @@ def _score(page: Page, survey: Survey, y: float) -> None:
     heading(page, MARGIN, y, "Score", clip(survey.score.text, SMALL, INNER - 60))
     terms = survey.score.terms
     shown = survey.ranking.order[:MOST_ROWS]
-    room = HEIGHT - 110 - (y + 16)
-    if len(terms) * 13.0 > room:
+    if y + 32.0 + 14.0 * len(terms) > _foot_top(*_foot_lines(survey)):
         return
     widths = (INNER - 250.0) / max(len(shown), 1)
     for k, term in enumerate(terms):
@@ -308,11 +309,21 @@ def _score(page: Page, survey: Survey, y: float) -> None:
     page.text(MARGIN, y + 18, "what each term adds, by number", SMALL, colour=SOFT)
 
 
+def _foot_lines(survey: Survey) -> tuple[list[str], list[str]]:
+    """Lines of the notes, and of what is not in it."""
+    notes = wrap(" ".join(notes_of(survey)), 8.8, SLACK * INNER)
+    return notes, wrap(VINEYARD, TEXT, SLACK * INNER, bold=True)
+
+
+def _foot_top(notes: list[str], last: list[str]) -> float:
+    """Where the first of those lines stands."""
+    return HEIGHT - 34 - 14.0 * len(last) - 11.0 * len(notes)
+
+
 def _foot(page: Page, survey: Survey) -> None:
     """Basis, rule, and what is not in it, in larger letters than on the sheets."""
-    lines = [*wrap(" ".join(notes_of(survey)), 8.8, SLACK * INNER)]
-    last = wrap(VINEYARD, TEXT, SLACK * INNER, bold=True)
-    y = HEIGHT - 34 - 14.0 * len(last) - 11.0 * len(lines)
+    lines, last = _foot_lines(survey)
+    y = _foot_top(lines, last)
     for k, line in enumerate(lines):
         page.text(MARGIN, y + k * 11.0, line, 8.8, colour=SOFT)
     for k, line in enumerate(last):

@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import csv
 import json
+import sqlite3
+from contextlib import closing
 
 import geopandas
 import numpy as np
@@ -85,6 +87,23 @@ def test_every_column_is_explained_and_names_its_unit(whole):
         assert row["meaning"], column
 
 
+def test_dictionary_layers_and_record_name_the_sky(whole):
+    explained = {row["column"]: row["meaning"] for row in rows_of(whole / "columns.csv")}
+    for name in ("irradiation_season_mj_m2_slope", "share_of_level_m04", "top_mj_m2"):
+        assert explained[name].endswith("; potential (clear-sky)"), name
+    for name in ("sun_hours_season_h", "share_of_level_season_se", "map_area_ha"):
+        assert "potential" not in explained[name], name
+    results = json.loads((whole / "run.json").read_text("utf-8"))["results"]
+    assert results["sky"] == "clear"
+    with closing(sqlite3.connect(whole / "parcels.gpkg")) as package:
+        told = dict(package.execute("SELECT table_name, description FROM gpkg_contents"))
+    assert set(told) == {"parcels", "rule"}
+    for words in told.values():
+        assert "growing season April to October, typical year" in words
+        assert words.endswith(results["light"])
+    assert RULE[1] in told["rule"]
+
+
 def test_tables_agree_with_each_other(whole):
     table = rows_of(whole / "parcels.csv")
     assert [row["rank"] for row in table] == ["1", "2", "3"]
@@ -146,6 +165,8 @@ def test_summary_is_for_people(places, tmp_path, capsys):
     assert "Côte/3" in said
     assert "rule: slope_percent < 15" in said
     assert "ha drawn" in said
+    assert "season: April to October; energy potential (clear-sky), per area of slope" in said
+    assert "Sky without clouds after Ineichen and Perez 2002; real skies give less. Linke" in said
     assert "ha known" not in said  # all of what is drawn
     assert "warning: shade of all that stands in the raster, and of nothing beyond it" in said
     assert VINEYARD in said

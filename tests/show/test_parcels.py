@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -56,7 +57,12 @@ def test_a_sheet_says_what_was_found_and_what_is_not_in_it():
     for part in ("P0", "2.05 ha", "12.0 %", "1 of 1", "Rule: slope_percent < 15", "Ia", "20 m"):
         assert part in words, part
     assert VINEYARD in words
-    assert "potential" in words
+    assert "Potential (clear-sky) irradiation per area of slope" in words
+    summary = all_words(summary_page(found, ground, frame_of(ground), title="Test"))
+    for told in (words, summary):
+        assert "Sky without clouds after Ineichen and Perez 2002" in told
+        assert "Linke turbidity by month 3, albedo of the ground 0.2." in told
+        assert "0.4 m wide, of albedo 0.2, endless" in told
     assert page.png().startswith(b"\x89PNG")
 
 
@@ -111,6 +117,7 @@ def test_south_of_the_equator_with_a_period_and_a_measured_month():
     settings = asked_for("2023-07/2024-06", season=SOUTHERN_SEASON, coarser=())
     found = survey(ground, there, settings)
     words = all_words(parcel_page(found, found.parcels[0], ground, frame_of(ground), title="T"))
+    assert "of albedo" not in words  # of the rows, that were not asked for
     assert "October 2023 to April 2024" in words
     assert "° S" in words
 
@@ -346,3 +353,32 @@ def test_each_part_of_a_parcel_has_its_number(odd):
     assert "ha drawn" in words
     assert "known" in words
     assert words.count("flat") == 0  # what is void faces nowhere that is known
+
+
+@pytest.mark.parametrize("count", [1, MOST_ROWS])
+def test_notes_of_any_length_stay_clear_of_what_stands_above_them(count):
+    ground = plane(12.0, 180.0)
+    shapes = [box(-390 + 30 * k, 0, -370 + 30 * k, 20) for k in range(count)]
+    settings = asked_for(
+        coarser=(), warmth=WARMTH, rows=RowSettings(2.0, 1.3, 0.4),
+        score="map_area_ha + slope_mean_percent", rule="slope_percent < 15",
+    )  # fmt: skip
+    found = survey(ground, parcels(*shapes), settings)
+    doubts = ("a doubt of a whole line, which is as long as a line of a hundred letters is" * 2,)
+    for more in ((), doubts, doubts * 3):
+        noted = replace(found, error_doubts=more)
+        frame = frame_of(ground)
+        sheet = parcel_page(noted, noted.parcels[0], ground, frame, title="T")
+        places = words_at(sheet)
+        top = min(y for words, y in places if words.startswith("Season April"))
+        assert top - max(y for words, y in places if words == "right side") >= 8.0
+        places = words_at(summary_page(noted, ground, frame, title="T"))
+        top = min(y for words, y in places if words.startswith("Season April"))
+        above = [y for words, y in places if words in ("Score", *found.score.terms)]
+        assert top - max(above) >= 8.0
+
+
+def words_at(page):
+    """Texts of a page, and how far down they stand."""
+    texts = [a for a in page.axes.get_children() if hasattr(a, "get_text")]
+    return [(text.get_text(), text.get_position()[1]) for text in texts]
