@@ -658,15 +658,15 @@ LONGEST_CELL: Final = 40
 """Characters of a name in the printed table (judgement, no source)."""
 
 
-def _cell(row: dict[str, Any], name: str, form: str) -> str:
-    """A figure for the table, with its standard error where that is small enough to matter."""
-    from terrasol.show.plus_minus import area_plus_minus
+def _cell(row: dict[str, Any], name: str, form: str, smallest: float = 1.0) -> str:
+    """A figure for the table; an area in the unit that suits the smallest parcel [ha]."""
+    from terrasol.show.plus_minus import area_figure
 
     if row.get(name) is None:
         return "-"
     if name.endswith("_ha_map"):
         error, whole = row.get(f"{name}_se"), row["known_ha_map"]
-        return area_plus_minus(row[name], error, whole, sign="+/-").removesuffix(" ha")
+        return area_figure(row[name], error, whole, sign="+/-", like=smallest)
     told = form.format(row[name])
     return told if len(told) <= LONGEST_CELL else f"{told[: LONGEST_CELL - 3]}..."
 
@@ -675,26 +675,29 @@ def _summary_text(record: dict[str, Any]) -> str:
     """What came out, for people: a table, best first."""
     from terrasol.cli.run import closing_lines
     from terrasol.engine.outputs import SKIES
+    from terrasol.errors import area_unit
 
     results, settings = record["results"], record["settings"]
     rows = results["parcels"]
     whole = all(row["known_ha_map"] == row["drawn_ha_map"] for row in rows)
+    smallest = min((row["drawn_ha_map"] for row in rows if row["drawn_ha_map"]), default=1.0)
+    unit = area_unit(smallest)[0]
     wanted = [
         ("rank", "rank", "{:.0f}"),
         ("parcel", "parcel", "{}"),
-        ("ha drawn", "drawn_ha_map", ""),
-        *([] if whole else [("ha known", "known_ha_map", "")]),
+        (f"{unit} drawn", "drawn_ha_map", ""),
+        *([] if whole else [(f"{unit} known", "known_ha_map", "")]),
         ("slope %", "slope_mean_percent", "{:.1f}"),
         ("faces", "aspect_mean_deg", "{:.0f}°"),
         ("MJ/m2 season", "irradiation_season_mj_m2_slope", "{:.0f}"),
         ("of level", "share_of_level_season", "{:.3f}"),
         ("sun h", "sun_hours_season_h", "{:.0f}"),
-        ("rule ha", "rule_ha_map", ""),
+        (f"rule {unit}", "rule_ha_map", ""),
         ("degree-days", "winkler_mean_c_days", "{:.0f}"),
         ("score", "score", "{:.4g}"),
     ]
     table = [
-        [head, *(_cell(row, name, form) for row in rows)]
+        [head, *(_cell(row, name, form, smallest) for row in rows)]
         for head, name, form in wanted
         if any(name in row for row in rows)
     ]
@@ -707,8 +710,8 @@ def _summary_text(record: dict[str, Any]) -> str:
         ]  # fmt: skip
         told.append("  ".join(cells))
     told.append(
-        f"season: {settings['season']}; energy {SKIES[results['sky']]}, per area of slope; hectares"
-        " of map"
+        f"season: {settings['season']}; energy {SKIES[results['sky']]}, per area of slope; areas of"
+        " map"
     )
     told.append(results["light"])
     if settings["rule"]:
@@ -718,8 +721,8 @@ def _summary_text(record: dict[str, Any]) -> str:
         told.append(f"rule: {settings['rule']}{least}")
         if any(row.get("rule_ha_map_se") is not None for row in rows):
             told.append(
-                "rule ha: +/- one standard error from the error of the heights; a range where none"
-                " or all of a parcel meets the rule"
+                f"rule {unit}: +/- one standard error from the error of the heights; a range where"
+                " none or all of a parcel meets the rule"
             )
     if settings["score"]:
         told.append(f"score: {settings['score']}")

@@ -238,8 +238,7 @@ def facts(survey: Survey, parcel: Parcel) -> list[tuple[str, str]]:
         return with_error(parcel, name, form, factor)
 
     rows = [
-        *_areas(n),
-        ("Area of the slope's surface", area_plus_minus(n["surface_area_ha"], None)),
+        *_areas(parcel),
         ("Height, mean", f"{n['height_mean_m']:.0f} m"),
         ("Slope, mean", f"{told('slope_mean_percent', '.1f')} %"),
         ("Slope of the middle 80 %",
@@ -260,21 +259,29 @@ def facts(survey: Survey, parcel: Parcel) -> list[tuple[str, str]]:
     return [(name, "unknown" if "nan" in value else value) for name, value in rows]
 
 
-def _areas(numbers: dict[str, float]) -> list[tuple[str, str]]:
-    """Area as drawn, and what of it is on the raster and known, where that is less."""
-    rows = [("Area drawn, on the map", area_plus_minus(numbers["drawn_ha_map"], None))]
+def _areas(parcel: Parcel) -> list[tuple[str, str]]:
+    """Area as drawn, what of it is on the raster and known where that is less, and its surface."""
+    numbers = parcel.numbers
+    told = [("Area drawn, on the map", "drawn_ha_map")]
     if numbers["outside_share"] > 0.0:
-        rows.append(("  of it on the raster", area_plus_minus(numbers["map_area_ha"], None)))
+        told.append(("  of it on the raster", "map_area_ha"))
     if numbers["unknown_ha_map"] > 0.0:
-        rows.append(("  of it known", area_plus_minus(numbers["known_ha_map"], None)))
-    return rows
+        told.append(("  of it known", "known_ha_map"))
+    told.append(("Area of the slope's surface", "surface_area_ha"))
+    return [(words, area_with_error(parcel, name)) for words, name in told]
 
 
 def area_with_error(parcel: Parcel, name: str) -> str:
-    """An area of some kind with its standard error behind it, if there is one, and its unit."""
+    """An area of a parcel, in the unit of all of it, its standard error behind it if it has one."""
+    n = parcel.numbers
+    error = area_error(parcel, name)
+    return area_plus_minus(n[name], error, n["known_ha_map"], like=n["drawn_ha_map"])
+
+
+def area_error(parcel: Parcel, name: str) -> float | None:
+    """Standard error of an area [ha], if there is one."""
     doubt = parcel.doubts.get(name)
-    error = None if doubt is None else doubt.standard_error
-    return area_plus_minus(parcel.numbers[name], error, parcel.numbers["known_ha_map"])
+    return None if doubt is None else doubt.standard_error
 
 
 def with_error(parcel: Parcel, name: str, form: str, factor: float = 1.0) -> str:
@@ -315,7 +322,7 @@ def _faces(numbers: dict[str, float]) -> str:
 
 
 def _classes(page: Page, survey: Survey, parcel: Parcel, x: float, y: float) -> None:
-    """Hectares per class of slope, as bars with numbers."""
+    """Area per class of slope, as bars with numbers."""
     edges = survey.settings.asked.slope_edges
     heading(page, x, y, "Slope classes", "areas of map")
     if not parcel.piece.known.any():
@@ -341,11 +348,11 @@ def _classes(page: Page, survey: Survey, parcel: Parcel, x: float, y: float) -> 
 
 
 def _rose(page: Page, survey: Survey, parcel: Parcel, box) -> None:
-    """Hectares per sector of aspect: petals whose area is the ground's."""
+    """Area per sector of aspect: petals whose area is the ground's."""
     x, y, width, height = box
     areas = np.nan_to_num([parcel.numbers[f"aspect_{s.lower()}_ha_map"] for s in SECTORS])
     most = max(areas.max(), 1e-9)
-    unit, factor, _ = area_unit(areas.max())
+    unit, factor, _ = area_unit(parcel.numbers["drawn_ha_map"])
     heading(page, x - 4, y, "Aspect", f"{unit.replace('2', '²')} by sector")
     if not parcel.piece.known.any():
         page.text(x - 4, y + 22, UNKNOWN, TEXT, colour=SOFT)
@@ -371,7 +378,7 @@ def _rose(page: Page, survey: Survey, parcel: Parcel, box) -> None:
             told = area * factor
             page.text(px, py + 4, f"{told:.2g}" if told < 1 else f"{told:.1f}", TICK,
                       across="center", halo=PAPER)  # fmt: skip
-    flat = area_plus_minus(parcel.numbers["aspect_flat_ha_map"], None)
+    flat = area_with_error(parcel, "aspect_flat_ha_map")
     words = f"flat (under {survey.settings.asked.flat_below:g} %): {flat}"
     page.text(x + width / 2, y + height + 20, words, SMALL, colour=SOFT, across="center")
 
@@ -388,7 +395,7 @@ def _sizes(page: Page, survey: Survey, parcel: Parcel, x: float, y: float) -> No
     looks = [(survey.cell_size, parcel.numbers)]
     looks += [(size, numbers_of(figures)) for size, figures in parcel.coarser]
     columns = np.linspace(right - 58.0 * (len(looks) - 1), right, len(looks))
-    area = partial(area_plus_minus, error=None)
+    area = partial(area_plus_minus, error=None, like=parcel.numbers["drawn_ha_map"])
     rows: list[tuple[str, str, Callable[[float], str]]] = [
         ("mean slope", "slope_mean_percent", "{:.1f} %".format)
     ]
@@ -632,7 +639,7 @@ def notes_of(survey: Survey) -> list[str]:
     notes = [
         f"Season {asked.season_words}, {asked.period.label}. {sky_title(survey.settings.light)} per"
         f" area of slope, reflection counted, from cells of {survey.cell_size:.3g} m."
-        f" {survey.settings.sky_words} {survey.shade} Hectares of level map area, true on the"
+        f" {survey.settings.sky_words} {survey.shade} Areas are of the level map, true on the"
         " ellipsoid.",
     ]
     if survey.settings.rows is not None:

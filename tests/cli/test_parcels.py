@@ -388,13 +388,27 @@ def test_long_names_do_not_widen_the_table():
     assert _cell({"parcel": "x" * 300}, "parcel", "{}") == "x" * 37 + "..."
 
 
-def test_small_areas_are_told_in_square_metres():
-    row = {"known_ha_map": 1.0}
-    for area, told in ((1.0, "1.00"), (0.01, "0.01"), (0.0009, "9.0 m2"), (0.0, "0.00")):
-        assert _cell(row | {"drawn_ha_map": area}, "drawn_ha_map", "") == told
-    assert _cell(row | {"rule_ha_map": 0.003, "rule_ha_map_se": 0.001}, "rule_ha_map", "") == (
-        "30 +/- 10 m2"
-    )
+def test_small_areas_are_told_in_square_metres(places, tmp_path, capsys):
+    """One unit a table, named in its head: that which suits the smallest parcel."""
+    shapes = [outline(-100, -50, 0, 50), outline(0, 0, 3, 3)]
+    table = geopandas.GeoDataFrame({"name": ["large", "tiny"]}, geometry=shapes, crs=UTM)
+    table.to_file(tmp_path / "two.gpkg")
+    plain = [*QUICK[:-1], "--coarser", "none", "--sheets", "none", "--rule", "slope_percent < 15"]
+    asked = ["parcels", str(places[0]), str(tmp_path / "two.gpkg"), str(tmp_path / "o")]
+    assert main([*asked, *plain]) == 0
+    head, large, tiny = capsys.readouterr().err.splitlines()[:3]
+    assert head.split()[1:3] == ["m2", "drawn"]
+    assert "rule m2" in head
+    assert (large.split()[1], large.split()[-1]) == ("10008.0", "10008.0")  # 100 m on UTM's grid
+    assert (tiny.split()[1], tiny.split()[-1]) == ("9.0", "9.0")
+    assert " m2" not in large + tiny
+    assert len(head) == len(large) == len(tiny)
+
+
+def test_areas_of_a_table_have_the_unit_of_its_smallest_parcel():
+    row = {"known_ha_map": 1.0, "rule_ha_map": 0.003, "rule_ha_map_se": 0.001}
+    for smallest, told in ((1.0, "0.00 +/- 0.00"), (0.003, "30 +/- 10"), (0.0009, "30.0 +/- 10.0")):
+        assert _cell(row, "rule_ha_map", "", smallest) == told
 
 
 def test_an_area_of_none_or_all_has_a_range_in_place_of_a_standard_error_both_ways():

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import re
 from dataclasses import replace
+from itertools import pairwise
 
 import numpy as np
 import pytest
@@ -16,10 +17,11 @@ from terrasol.engine.parcel_rows import RowSettings
 from terrasol.engine.parcels import survey
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import make_frame
+from terrasol.ground.uncertainty import DemError
 from terrasol.practice.limits import VINEYARD
 from terrasol.practice.season import SOUTHERN_SEASON
 from terrasol.practice.temperatures import from_monthly
-from terrasol.show.page import Page, book
+from terrasol.show.page import Page, book, text_width
 from terrasol.show.panel import Panel
 from terrasol.show.parcel_map import (
     GroundMap,
@@ -29,8 +31,8 @@ from terrasol.show.parcel_map import (
     scale_length,
     slope_colours,
 )
-from terrasol.show.parcel_sheet import UNKNOWN, facts, parcel_page
-from terrasol.show.parcels import MOST_ROWS, summary_page
+from terrasol.show.parcel_sheet import TEXT, UNKNOWN, facts, parcel_page
+from terrasol.show.parcels import MAP_HEIGHTS, MOST_ROWS, summary_page
 
 WARMTH = Warmth(from_monthly(np.full(12, 15.0), height=500.0, highest=np.full(12, 20.0)))
 
@@ -131,8 +133,6 @@ def test_long_lists_are_cut_and_said_so():
 
 
 def test_standard_errors_stand_behind_their_figures():
-    from terrasol.ground.uncertainty import DemError
-
     ground = plane(14.5, 180.0)
     settings = asked_for(coarser=(), rule="slope_percent < 15", error=DemError(0.3, 0.0, 2))
     found = survey(ground, parcels(box(0, 0, 60, 60)), settings)
@@ -143,8 +143,6 @@ def test_standard_errors_stand_behind_their_figures():
 
 
 def test_an_area_of_none_or_all_is_off_to_one_side():
-    from terrasol.ground.uncertainty import DemError
-
     ground = plane(14.5, 180.0)
     for limit, pattern in ((14, r"0\.00 to 0\.\d\d ha, 0 %"), (15, r"0\.\d\d to 0\.36 ha, 100 %")):
         error, rule = DemError(0.3, 0.0, 2), f"slope_percent < {limit}"
@@ -350,7 +348,7 @@ def test_each_part_of_a_parcel_has_its_number(odd):
     ]
     assert sorted(filter(None, map_)) == ["1", "2", "3", "4", "4"]
     words = all_words(page)
-    assert "ha drawn" in words
+    assert "m² drawn" in words  # one unit a table: that of the smallest parcel
     assert "known" in words
     assert words.count("flat") == 0  # what is void faces nowhere that is known
 
@@ -382,3 +380,28 @@ def words_at(page):
     """Texts of a page, and how far down they stand."""
     texts = [a for a in page.axes.get_children() if hasattr(a, "get_text")]
     return [(text.get_text(), text.get_position()[1]) for text in texts]
+
+
+def test_columns_of_tiny_and_large_parcels_stay_apart():
+    ground = plane(14.5, 180.0)
+    shapes = parcels(box(1, 1, 4, 4), box(-300, -300, 300, 300))
+    error = DemError(0.3, 0.0, 2)
+    settings = asked_for(coarser=(), rule="slope_percent < 15", error=error, warmth=WARMTH)
+    found = survey(ground, shapes, settings)
+    page = summary_page(found, ground, frame_of(ground), title="T")
+    texts = [a for a in page.axes.get_children() if hasattr(a, "get_text")]
+    texts = [t for t in texts if t.get_ha() == "right" and t.get_position()[1] > MAP_HEIGHTS[1]]
+    lines = {}
+    for text in texts:
+        lines.setdefault(text.get_position()[1], []).append(text)
+    rows = [line for line in lines.values() if len(line) > 6]
+    assert len(rows) == 3  # the head and both parcels
+    for line in rows:
+        line.sort(key=lambda text: text.get_position()[0])
+        for one, other in pairwise(line):
+            left = other.get_position()[0] - text_width(other.get_text(), TEXT)
+            assert left - one.get_position()[0] >= 4.0, (one.get_text(), other.get_text())
+    words = all_words(page)
+    assert "9.0 ± 0.0" in words or "to 9.0" in words
+    assert "9.0 m²" not in words
+    assert "ha drawn" not in words
