@@ -90,7 +90,11 @@ class Place(click.ParamType):
     "--name", "labels", metavar="TEXT", multiple=True, help="Name of the place; again: the second."
 )
 @click.option(
-    "--day", "days", metavar="DATE", multiple=True, help="Draw the sun's path of this day too."
+    "--day",
+    "days",
+    metavar="DATE",
+    multiple=True,
+    help="Tell first and last sun of this day, and draw the sun's path.",
 )
 @click.option(
     "--clock",
@@ -360,7 +364,7 @@ class _Job:
             record |= {
                 "threads": threads,
                 "results": {
-                    "places": [each.record() for each in sites],
+                    "places": [self._record_of(each) for each in sites],
                     "shade": shade_words(scene),
                 },
                 "warnings": [
@@ -375,6 +379,13 @@ class _Job:
                 record = deliver(delivery, common, self.names, record)
             move(1.0, "done")
         return record, sites
+
+    def _record_of(self, found: Site) -> dict[str, Any]:
+        """All of a place, with the days that were asked for."""
+        record = found.record()
+        if self.days:
+            record["sun"]["days"] = [found.sun.day_record(day) for day in self.days]
+        return record
 
     def _error_doubts(self) -> list[str]:
         """A warning where the stated error of the heights cannot be right."""
@@ -469,7 +480,7 @@ class _Job:
             give(json.dumps(record, indent=2))
         else:
             warnings = [f"warning: {text}" for text in record["warnings"]]
-            give(site_text(sites, [record["results"]["shade"], *warnings]))
+            give(site_text(sites, [record["results"]["shade"], *warnings], self.days))
         if self.names and not common.quiet and not common.as_json:
             took = duration(record["seconds"]["whole run"])
             say(f"{counted(len(self.names), 'file')} in {common.out_dir} after {took}")
