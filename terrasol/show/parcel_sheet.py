@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 from terrasol import __version__
 from terrasol.engine.light_words import sky_title
 from terrasol.engine.outputs import MONTH_NAMES
-from terrasol.engine.parcel_figures import LAPSE_EFFECT, month_keys, slope_class_keys
+from terrasol.engine.parcel_figures import LAPSE_EFFECT, month_keys, sector_keys, slope_class_keys
 from terrasol.engine.parcels import Parcel, Survey, numbers_of
 from terrasol.errors import area_unit
 from terrasol.ground.elevation import Elevation
@@ -350,7 +350,7 @@ def _classes(page: Page, survey: Survey, parcel: Parcel, x: float, y: float) -> 
 def _rose(page: Page, survey: Survey, parcel: Parcel, box) -> None:
     """Area per sector of aspect: petals whose area is the ground's."""
     x, y, width, height = box
-    areas = np.nan_to_num([parcel.numbers[f"aspect_{s.lower()}_ha_map"] for s in SECTORS])
+    areas = np.nan_to_num([parcel.numbers[f"{key}_ha_map"] for key in sector_keys()])
     most = max(areas.max(), 1e-9)
     unit, factor, _ = area_unit(parcel.numbers["drawn_ha_map"])
     heading(page, x - 4, y, "Aspect", f"{unit.replace('2', '²')} by sector")

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import csv
 import json
+import re
 import sqlite3
 from contextlib import closing
 
@@ -85,6 +86,23 @@ def test_every_column_is_explained_and_names_its_unit(whole):
             assert row["area_basis"] in ("map", "slope"), column
             assert "_ha" in column
         assert row["meaning"], column
+
+
+def test_no_sector_of_aspect_reads_as_a_standard_error(whole):
+    explained = {row["column"]: row["meaning"] for row in rows_of(whole / "columns.csv")}
+    sectors = [name for name in explained if re.fullmatch(r"aspect_[a-z_]+_ha_map", name)]
+    assert sectors == [
+        f"aspect_{name}_ha_map" for name in
+        ("flat", "north", "north_east", "east", "south_east", "south", "south_west", "west",
+         "north_west")
+    ]  # fmt: skip
+    assert explained["aspect_south_east_ha_map"].startswith("area that faces south-east, within")
+    layer = geopandas.read_file(whole / "parcels.gpkg", layer="parcels")
+    assert set(sectors) <= set(layer.columns)
+    for name in (*explained, *layer.columns):
+        if "se" in name.split("_"):
+            assert name.endswith("_se")
+            assert "standard error" in explained[name]
 
 
 def test_dictionary_layers_and_record_name_the_sky(whole):
