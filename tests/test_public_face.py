@@ -9,6 +9,7 @@ from pathlib import Path
 import pytest
 
 import terrasol
+from terrasol import errors
 
 HEAVY = ("numba", "rasterio", "matplotlib", "pvlib", "pandas", "xarray", "scipy", "pyproj", "numpy")
 
@@ -79,3 +80,13 @@ def test_a_percent_sign_stands_after_a_space():
     for path in files:
         found = re.search(r"\d%(?!\w)|\.\d%\}|\}%(?!\w)", path.read_text("utf-8"))
         assert found is None, f"{path}: {found.group() if found else ''}"
+
+
+def test_errors_are_errors_alone():
+    own = [
+        thing for thing in vars(errors).values()
+        if getattr(thing, "__module__", "") == errors.__name__
+    ]  # fmt: skip
+    assert len(own) == 5
+    assert all(issubclass(thing, errors.TerrasolError) for thing in own)
+    assert not {"numpy", "click"} & loaded_after("import terrasol.words")

@@ -17,7 +17,8 @@ from terrasol.cli.irradiation import irradiation
 from terrasol.cli.options import Common, Name, Numbers, common_options
 from terrasol.cli.series import series
 from terrasol.cli.sky_options import AskedSky, file_record, sky_options, station_doubts
-from terrasol.errors import InputError, counted
+from terrasol.errors import InputError
+from terrasol.words import counted
 
 if TYPE_CHECKING:
     import numpy as np

@@ -647,7 +647,7 @@ def _results(found: Survey) -> dict[str, Any]:
 def _in_lines(f: dict[str, Any]) -> str:
     """The forecast for people."""
     from terrasol.cli.forecast import forecast_text
-    from terrasol.errors import listed
+    from terrasol.words import listed
 
     parcels = f"{len(f['parcels'])}: {listed(f['parcels'], MOST_LISTED)}"
     own = [("parcels", parcels), ("season", f["season"])]
@@ -675,7 +675,7 @@ def _summary_text(record: dict[str, Any]) -> str:
     """What came out, for people: a table, best first."""
     from terrasol.cli.run import closing_lines
     from terrasol.engine.outputs import SKIES
-    from terrasol.errors import area_unit
+    from terrasol.words import area_unit
 
     results, settings = record["results"], record["settings"]
     rows = results["parcels"]

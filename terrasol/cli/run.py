@@ -33,7 +33,7 @@ from terrasol.cli.streams import give, say
 from terrasol.engine.job import Plan, Summary
 from terrasol.engine.outputs import SKIES
 from terrasol.engine.plan import default_threads
-from terrasol.errors import OutputError, counted
+from terrasol.errors import OutputError
 from terrasol.files.delivery import RECORD, Delivery, check_free, superseded_files
 from terrasol.files.layers import Layer
 from terrasol.files.provenance import run_record
@@ -42,6 +42,7 @@ from terrasol.files.sink import RasterSink
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame, make_frame
 from terrasol.kernels import horizon
+from terrasol.words import counted
 
 WORK = 0.85
 """Part of the progress bar that the computation fills; packing the files fills the rest."""

@@ -17,7 +17,8 @@ from terrasol.cli.irradiation import irradiation, light_record
 from terrasol.cli.options import Common, Name, Numbers, common_options, period_option
 from terrasol.cli.sky_options import ALBEDO_FOR_NOW, AskedSky, sky_options
 from terrasol.constants import ENERGY_UNITS
-from terrasol.errors import SettingError, counted
+from terrasol.errors import SettingError
+from terrasol.words import counted
 
 if TYPE_CHECKING:
     from datetime import date

@@ -275,7 +275,7 @@ def map_doubts(
     """Warn of cells of known ground that a map leaves out."""
     import numpy as np
 
-    from terrasol.errors import counted
+    from terrasol.words import counted
 
     lacking = np.isnan(values).any(axis=0) & np.isfinite(elevation.heights)
     if not lacking.any():

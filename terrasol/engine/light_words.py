@@ -9,10 +9,10 @@ from numpy.typing import NDArray
 
 from terrasol.constants import CLEAR_SKY_PAPERS
 from terrasol.engine.outputs import basis_words, shade_words, sky_kind, sky_words
-from terrasol.errors import range_text
 from terrasol.ground.beyond import Scene
 from terrasol.light.settings import LightSettings
 from terrasol.sky.cloud import MonthlySky
+from terrasol.words import range_text
 
 _SKY_NOTES: Final = {
     "clear": "Sky without clouds after {paper}; real skies give less.",

@@ -31,7 +31,7 @@ from terrasol.engine.parcel_words import read_score
 from terrasol.engine.plan import Block, Progress
 from terrasol.engine.uncertainty import doubts_of_error
 from terrasol.engine.windows import collect
-from terrasol.errors import SettingError, area_words, listed
+from terrasol.errors import SettingError
 from terrasol.files.overlaps import overlap_doubts
 from terrasol.files.vectors import Polygons
 from terrasol.ground.beyond import Scene
@@ -43,6 +43,7 @@ from terrasol.light.hours import HoursSettings
 from terrasol.light.settings import LightSettings
 from terrasol.practice.ranking import Ranking, Score, parse_score, rank
 from terrasol.practice.rules import Patches
+from terrasol.words import area_words, listed
 
 COARSER: Final = (2, 4)
 """Cells joined along a side for the two coarser looks at the same ground (judgement)."""

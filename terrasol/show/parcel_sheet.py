@@ -18,7 +18,6 @@ from terrasol.engine.light_words import sky_title
 from terrasol.engine.outputs import MONTH_NAMES
 from terrasol.engine.parcel_figures import LAPSE_EFFECT, month_keys, sector_keys, slope_class_keys
 from terrasol.engine.parcels import Parcel, Survey, numbers_of
-from terrasol.errors import area_unit
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame
 from terrasol.light.minutes import track
@@ -39,6 +38,7 @@ from terrasol.show.parcel_map import (
 )
 from terrasol.show.plus_minus import area_plus_minus, plus_minus
 from terrasol.show.skyline import HOUR_LINES, draw_skyline, tracks_of, view_limits
+from terrasol.words import area_unit
 
 WIDTH, HEIGHT, MARGIN = 827, 1169, 44
 """A4 upright, a hundred pixels an inch."""

@@ -13,7 +13,6 @@ from matplotlib.path import Path
 from terrasol import __version__
 from terrasol.engine.parcel_figures import slope_class_keys
 from terrasol.engine.parcels import Parcel, Survey
-from terrasol.errors import area_unit
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame
 from terrasol.practice.classes import SECTORS, class_names
@@ -47,6 +46,7 @@ from terrasol.show.parcel_sheet import (
     scale_and_north,
 )
 from terrasol.show.plus_minus import area_figure
+from terrasol.words import area_unit
 
 MAP_HEIGHTS: Final = 300.0, 560.0
 PITCH: Final = 19.0

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 
-from terrasol.errors import area_unit
+from terrasol.words import area_unit
 
 
 def plus_minus(
