@@ -268,7 +268,12 @@ def _areas(parcel: Parcel) -> list[tuple[str, str]]:
     if numbers["unknown_ha_map"] > 0.0:
         told.append(("  of it known", "known_ha_map"))
     told.append(("Area of the slope's surface", "surface_area_ha"))
-    return [(words, area_with_error(parcel, name)) for words, name in told]
+    return [(words, plain_area(parcel, name)) for words, name in told]
+
+
+def plain_area(parcel: Parcel, name: str) -> str:
+    """An area of a parcel, in the unit of all of it, without a standard error."""
+    return area_plus_minus(parcel.numbers[name], None, like=parcel.numbers["drawn_ha_map"])
 
 
 def area_with_error(parcel: Parcel, name: str) -> str:
@@ -378,7 +383,7 @@ def _rose(page: Page, survey: Survey, parcel: Parcel, box) -> None:
             told = area * factor
             page.text(px, py + 4, f"{told:.2g}" if told < 1 else f"{told:.1f}", TICK,
                       across="center", halo=PAPER)  # fmt: skip
-    flat = area_with_error(parcel, "aspect_flat_ha_map")
+    flat = plain_area(parcel, "aspect_flat_ha_map")
     words = f"flat (under {survey.settings.asked.flat_below:g} %): {flat}"
     page.text(x + width / 2, y + height + 20, words, SMALL, colour=SOFT, across="center")
 
@@ -599,7 +604,9 @@ def _warmth(page: Page, survey: Survey, parcel: Parcel, box) -> None:
             level += 46
     effect = parcel.numbers[LAPSE_EFFECT]
     if np.isfinite(effect):
-        words = f"a lapse rate of 1 K/km more would move Winkler's sum by {effect:+.0f}"
+        words = (
+            f"a lapse rate of 1 K/km more would move Winkler's sum by {round(effect) + 0.0:+.0f}"
+        )
         page.text(x, level + 8, words.replace("-", "−"), SMALL, colour=SOFT)
 
 

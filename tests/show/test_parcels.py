@@ -60,6 +60,7 @@ def test_a_sheet_says_what_was_found_and_what_is_not_in_it():
         assert part in words, part
     assert VINEYARD in words
     assert "Potential (clear-sky) irradiation per area of slope" in words
+    assert "would move Winkler's sum by +0" in words  # no minus before a zero
     summary = all_words(summary_page(found, ground, frame_of(ground), title="Test"))
     for told in (words, summary):
         assert "Sky without clouds after Ineichen and Perez 2002" in told
@@ -138,6 +139,7 @@ def test_standard_errors_stand_behind_their_figures():
     found = survey(ground, parcels(box(0, 0, 60, 60)), settings)
     told = dict(facts(found, found.parcels[0]))
     assert " ± " in told["Slope, mean"]
+    assert told["Area of the slope's surface"] == "0.36 ha"  # has no bound on the map
     words = all_words(parcel_page(found, found.parcels[0], ground, frame_of(ground), title="T"))
     assert "± or a range: one standard error" in words
 
