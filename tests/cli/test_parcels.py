@@ -286,6 +286,7 @@ def test_ground_beyond_and_trees_above_take_sun(places, tmp_path):
         (["--rule", "slop < 15"], 2, "slop"),
         (["--rule", "__import__('os')"], 2, "rule"),
         (["--score", "no_such_figure"], 2, "no_such_figure"),
+        (["--score", "aspect_se_ha_map"], 2, "needs its sector written out, aspect_south_east_ha"),
         (["--score", "rule_share"], 2, "names rule_share, which needs --rule"),
         (["--rule", "degree_days > 9"], 2, "names degree_days, which needs --temperatures"),
         (["--least-patch", "500"], 2, "--least-patch belongs to --rule"),
