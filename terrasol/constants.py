@@ -31,6 +31,12 @@ kilometres away (judgement, no source)."""
 ENERGY_UNITS: Final = {"MJ": "MJ m-2", "kWh": "kW h m-2"}
 """Units of irradiation as typed in a command, and as written in files (UDUNITS)."""
 
+CLEAR_SKY_PAPERS: Final = {
+    "ineichen": "Ineichen and Perez 2002",
+    "bird": "Bird and Hulstrom 1981",
+}
+"""Clear-sky models as typed in a command, and their papers."""
+
 PHOTONS_PER_JOULE: Final = 2.3
 """Photons of 400 to 700 nm in a joule of global light [umol J-1]: half of its energy, at 4.6 umol
 a joule (common practice, no source; McCree 1972 has 4.57 for daylight, from memory)."""

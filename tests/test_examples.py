@@ -44,6 +44,15 @@ def test_commands_read_files_of_the_sample():
             assert (ROOT / file).is_file(), words
 
 
+def test_remarks_of_a_list_of_commands_stand_in_one_column():
+    lists = [code for page, code in blocks("bash") if page == "README.md"]
+    places = [re.findall(r"^[^#\n]+(?=# )", code, re.MULTILINE) for code in lists]
+    assert max(map(len, places)) > 10
+    for before, code in zip(places, lists, strict=True):
+        assert len(set(map(len, before))) <= 1, code
+        assert max(map(len, code.splitlines())) <= 120
+
+
 @pytest.mark.parametrize(("page", "code"), blocks("python"))
 def test_python_reads_files_of_the_sample_and_imports_what_it_names(page, code):
     compile(code, page, "exec")

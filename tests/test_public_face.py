@@ -1,12 +1,15 @@
 """The names a Python user imports, and what importing them costs."""
 
 import inspect
+import re
 import subprocess
 import sys
+from pathlib import Path
 
 import pytest
 
 import terrasol
+from terrasol import errors
 
 HEAVY = ("numba", "rasterio", "matplotlib", "pvlib", "pandas", "xarray", "scipy", "pyproj", "numpy")
 
@@ -68,3 +71,22 @@ def test_setting_a_period_needs_no_kernel_no_raster_library_and_no_plot():
     loaded = loaded_after("from terrasol import parse_period, sun_path; parse_period('2025')")
     assert "terrasol.sky.sun" in loaded
     assert loaded.isdisjoint({"rasterio", "matplotlib", "terrasol.kernels.beam"})
+
+
+def test_a_percent_sign_stands_after_a_space():
+    root = Path(terrasol.__file__).parents[1]
+    files = [*root.glob("terrasol/**/*.py"), *root.glob("docs/*.md"), *root.glob("*.md")]
+    assert len(files) > 100
+    for path in files:
+        found = re.search(r"\d%(?!\w)|\.\d%\}|\}%(?!\w)", path.read_text("utf-8"))
+        assert found is None, f"{path}: {found.group() if found else ''}"
+
+
+def test_errors_are_errors_alone():
+    own = [
+        thing for thing in vars(errors).values()
+        if getattr(thing, "__module__", "") == errors.__name__
+    ]  # fmt: skip
+    assert len(own) == 5
+    assert all(issubclass(thing, errors.TerrasolError) for thing in own)
+    assert not {"numpy", "click"} & loaded_after("import terrasol.words")

@@ -13,7 +13,7 @@ import numpy as np
 
 from terrasol.cli.options import Common
 from terrasol.cli.streams import give
-from terrasol.errors import counted, listed
+from terrasol.words import counted, listed
 
 if TYPE_CHECKING:
     from terrasol.cli.run import Ground

@@ -19,7 +19,6 @@ from terrasol.cli.options import (
 )
 from terrasol.cli.sky_options import (
     ALBEDO_FOR_NOW,
-    PAPERS,
     AskedSky,
     albedo_record,
     raster_named,
@@ -34,7 +33,6 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from terrasol.engine.job import Plan, Summary
-    from terrasol.ground.beyond import Scene
     from terrasol.light.settings import LightSettings
 
 
@@ -161,39 +159,10 @@ def light_record(settings: LightSettings) -> dict[str, Any]:
     return record
 
 
-_SKY_NOTES = {
-    "clear": "Sky without clouds after {}; real skies give less.",
-    "measured": "Sky as a station measured it, interval by interval; clear air after {}.",
-    "monthly index": "Clouds by one index a month; clear air after {}.",
-}
-
-
-def light_notes(settings: LightSettings, scene: Scene) -> tuple[str, ...]:
-    """What energy was computed from, in sentences for a page's notes."""
-    from terrasol.engine.outputs import basis_words, shade_words, sky_kind
-    from terrasol.show.key import range_text
-
-    assumed = f"albedo of the ground {range_text(settings.month_albedo)}."
-    if settings.air.linke is not None:
-        linke = [settings.air.linke[month - 1] for _, month in settings.period.months]
-        assumed = f"Linke turbidity by month {range_text(linke)}, {assumed}"
-    return (
-        _SKY_NOTES[sky_kind(settings)].format(PAPERS[settings.air.model]),
-        assumed[0].upper() + assumed[1:],
-        f"Energy {basis_words(settings)}, with light from the ground around.",
-        shade_words(scene),
-    )
-
-
-def _titled(words: str, part: str) -> str:
-    """The sky's words as a title, for a part of the light or for irradiation as such."""
-    text = " ".join(words.format(part).split())
-    return text[0].upper() + text[1:]
-
-
 def _draw(plan: Plan, energy: NDArray[np.float32], summary: Summary, title: str) -> bytes:
     """The overview map of a finished run."""
-    from terrasol.engine.outputs import basis_words, month_labels, sky_words
+    from terrasol.engine.light_words import light_notes, sky_title
+    from terrasol.engine.outputs import basis_words, month_labels
     from terrasol.show.maps import overview_png
     from terrasol.show.page import printable
 
@@ -211,8 +180,8 @@ def _draw(plan: Plan, energy: NDArray[np.float32], summary: Summary, title: str)
         plan.elevation,
         energy,
         title=title,
-        subtitle=f"{_titled(sky_words(settings), '')}, with terrain shade, {settings.period.label}",
-        quantity=f"{_titled(sky_words(settings), 'global')}, {basis_words(settings)}",
+        subtitle=f"{sky_title(settings)}, with terrain shade, {settings.period.label}",
+        quantity=f"{sky_title(settings, 'global')}, {basis_words(settings)}",
         unit=settings.unit,
         notes=light_notes(settings, plan.scene),
         mean=summary.numbers.get(whole.name, {}).get("global", {}).get("mean"),

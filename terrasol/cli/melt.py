@@ -17,7 +17,8 @@ from terrasol.cli.irradiation import irradiation
 from terrasol.cli.options import Common, Name, Numbers, common_options
 from terrasol.cli.series import series
 from terrasol.cli.sky_options import AskedSky, file_record, sky_options, station_doubts
-from terrasol.errors import InputError, counted
+from terrasol.errors import InputError
+from terrasol.words import counted
 
 if TYPE_CHECKING:
     import numpy as np
@@ -692,10 +693,13 @@ def _summary_text(record: dict[str, Any]) -> str:
 
     r = record["results"]
     totals = ", ".join(f"{name.replace('_', ' ')} {v:.0f}" for name, v in r["totals"].items())
+    since, of_part = record["settings"]["season_start"], ""
+    if since != r["first_day"]:
+        of_part = f" of this part (the season began on {since})"
     told = [
         f"{r['area']}, {r['area_km2']:g} km2, {r['first_day']} to {r['last_day']}",
         f"mm on map area: {totals}",
-        f"peak snow water {r['peak_snow_water']:.0f} mm on {r['peak_day']};"
+        f"peak snow water{of_part} {r['peak_snow_water']:.0f} mm on {r['peak_day']};"
         f" {r['snow_water_at_end']:.0f} mm at the end",
         *(_month_words(month) for month in r["months"]),
         *_bracket_words(r["months"]),

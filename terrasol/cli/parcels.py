@@ -374,6 +374,7 @@ class _Job:
             given["coarser"],
             given["rows_read"],
             given["error"],
+            "" if settled.station is None else settled.station.name,
         )
         notes = (*settled.warnings, *doubts, *notes)
         return settings, (*self.asked.doubts(self.ground.frame), *notes)
@@ -538,6 +539,7 @@ class _Job:
         from terrasol.engine.parcel_tables import (
             column_rows,
             doubt_rows,
+            layer_words,
             patch_rows,
             row_rows,
             size_rows,
@@ -549,10 +551,11 @@ class _Job:
         elevation, place = self.ground.elevation, delivery.staged(LAYER)
         try:
             outlines = [parcel.outline for parcel in found.order]
-            write_layer(place, "parcels", elevation.crs, outlines, rows)
+            words = layer_words(found)
+            write_layer(place, "parcels", elevation.crs, outlines, rows, words["parcels"])
             if found.settings.asked.rule is not None:
                 patches = patch_rows(found, elevation.transform)
-                write_layer(place, "rule", elevation.crs, *patches, append=True)
+                write_layer(place, "rule", elevation.crs, *patches, words["rule"], append=True)
         except Exception as error:  # of GDAL, pyogrio and the disk
             raise delivery.refusal(LAYER, error) from error
         tables = {TABLE: rows, COLUMNS: column_rows(found)}
@@ -629,6 +632,7 @@ def sheet_names(names: list[str]) -> list[str]:
 
 def _results(found: Survey) -> dict[str, Any]:
     """What came out, ready for JSON."""
+    from terrasol.engine.outputs import sky_kind
     from terrasol.engine.parcel_tables import table_rows
     from terrasol.files.parcel_tables import rounded
     from terrasol.practice.limits import VINEYARD
@@ -638,6 +642,8 @@ def _results(found: Survey) -> dict[str, Any]:
         "parcels": rows,
         "cell_m": round(found.cell_size, 3),
         "score_terms": list(found.score.terms) if found.score else None,
+        "sky": sky_kind(found.settings.light),
+        "light": found.settings.sky_words,
         "shade": found.shade,
         "not_in_it": VINEYARD,
     }
@@ -646,7 +652,7 @@ def _results(found: Survey) -> dict[str, Any]:
 def _in_lines(f: dict[str, Any]) -> str:
     """The forecast for people."""
     from terrasol.cli.forecast import forecast_text
-    from terrasol.errors import listed
+    from terrasol.words import listed
 
     parcels = f"{len(f['parcels'])}: {listed(f['parcels'], MOST_LISTED)}"
     own = [("parcels", parcels), ("season", f["season"])]
@@ -657,15 +663,15 @@ LONGEST_CELL: Final = 40
 """Characters of a name in the printed table (judgement, no source)."""
 
 
-def _cell(row: dict[str, Any], name: str, form: str) -> str:
-    """A figure for the table, with its standard error where that is small enough to matter."""
-    from terrasol.show.plus_minus import area_plus_minus
+def _cell(row: dict[str, Any], name: str, form: str, smallest: float = 1.0) -> str:
+    """A figure for the table; an area in the unit that suits the smallest parcel [ha]."""
+    from terrasol.show.plus_minus import area_figure
 
     if row.get(name) is None:
         return "-"
     if name.endswith("_ha_map"):
         error, whole = row.get(f"{name}_se"), row["known_ha_map"]
-        return area_plus_minus(row[name], error, whole, sign="+/-").removesuffix(" ha")
+        return area_figure(row[name], error, whole, sign="+/-", like=smallest)
     told = form.format(row[name])
     return told if len(told) <= LONGEST_CELL else f"{told[: LONGEST_CELL - 3]}..."
 
@@ -673,26 +679,30 @@ def _cell(row: dict[str, Any], name: str, form: str) -> str:
 def _summary_text(record: dict[str, Any]) -> str:
     """What came out, for people: a table, best first."""
     from terrasol.cli.run import closing_lines
+    from terrasol.engine.outputs import SKIES
+    from terrasol.words import area_unit
 
     results, settings = record["results"], record["settings"]
     rows = results["parcels"]
     whole = all(row["known_ha_map"] == row["drawn_ha_map"] for row in rows)
+    smallest = min((row["drawn_ha_map"] for row in rows if row["drawn_ha_map"]), default=1.0)
+    unit = area_unit(smallest)[0]
     wanted = [
         ("rank", "rank", "{:.0f}"),
         ("parcel", "parcel", "{}"),
-        ("ha drawn", "drawn_ha_map", ""),
-        *([] if whole else [("ha known", "known_ha_map", "")]),
+        (f"{unit} drawn", "drawn_ha_map", ""),
+        *([] if whole else [(f"{unit} known", "known_ha_map", "")]),
         ("slope %", "slope_mean_percent", "{:.1f}"),
         ("faces", "aspect_mean_deg", "{:.0f}°"),
         ("MJ/m2 season", "irradiation_season_mj_m2_slope", "{:.0f}"),
         ("of level", "share_of_level_season", "{:.3f}"),
         ("sun h", "sun_hours_season_h", "{:.0f}"),
-        ("rule ha", "rule_ha_map", ""),
+        (f"rule {unit}", "rule_ha_map", ""),
         ("degree-days", "winkler_mean_c_days", "{:.0f}"),
         ("score", "score", "{:.4g}"),
     ]
     table = [
-        [head, *(_cell(row, name, form) for row in rows)]
+        [head, *(_cell(row, name, form, smallest) for row in rows)]
         for head, name, form in wanted
         if any(name in row for row in rows)
     ]
@@ -704,7 +714,11 @@ def _summary_text(record: dict[str, Any]) -> str:
             for text, column in zip(line, table, strict=True)
         ]  # fmt: skip
         told.append("  ".join(cells))
-    told.append(f"season: {settings['season']}; energy per area of slope; hectares of map")
+    told.append(
+        f"season: {settings['season']}; energy {SKIES[results['sky']]}, per area of slope; areas of"
+        " map"
+    )
+    told.append(results["light"])
     if settings["rule"]:
         least = f", in patches from {settings['least_patch_m2']:g} m2" * bool(
             settings["least_patch_m2"]
@@ -712,8 +726,8 @@ def _summary_text(record: dict[str, Any]) -> str:
         told.append(f"rule: {settings['rule']}{least}")
         if any(row.get("rule_ha_map_se") is not None for row in rows):
             told.append(
-                "rule ha: +/- one standard error from the error of the heights; a range where none"
-                " or all of a parcel meets the rule"
+                f"rule {unit}: +/- one standard error from the error of the heights; a range where"
+                " none or all of a parcel meets the rule"
             )
     if settings["score"]:
         told.append(f"score: {settings['score']}")

@@ -46,7 +46,7 @@ from terrasol.engine.plots import (
     grain_sizes,
     plot_table,
 )
-from terrasol.errors import SettingError, counted
+from terrasol.errors import SettingError
 from terrasol.files.delivery import RECORD, Delivery
 from terrasol.files.plot_tables import csv_bytes, geoparquet_bytes, write_parts
 from terrasol.files.points import Points
@@ -60,6 +60,7 @@ from terrasol.light.days import parse_days
 from terrasol.practice.season import growing_season
 from terrasol.show.plot_horizons import horizons_png
 from terrasol.show.plots import predictors_png
+from terrasol.words import counted
 
 TABLE, PARQUET, DICTIONARY = "plots.csv", "plots.parquet", "columns.csv"
 LONG, CORRELATIONS = "plots_long.csv", "correlations.csv"

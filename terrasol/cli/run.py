@@ -31,8 +31,9 @@ from terrasol.cli.options import Common
 from terrasol.cli.progress import progress_bar
 from terrasol.cli.streams import give, say
 from terrasol.engine.job import Plan, Summary
+from terrasol.engine.outputs import SKIES
 from terrasol.engine.plan import default_threads
-from terrasol.errors import OutputError, counted
+from terrasol.errors import OutputError
 from terrasol.files.delivery import RECORD, Delivery, check_free, superseded_files
 from terrasol.files.layers import Layer
 from terrasol.files.provenance import run_record
@@ -41,6 +42,7 @@ from terrasol.files.sink import RasterSink
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame, make_frame
 from terrasol.kernels import horizon
+from terrasol.words import counted
 
 WORK = 0.85
 """Part of the progress bar that the computation fills; packing the files fills the rest."""
@@ -49,13 +51,6 @@ MAPPED = ("irradiation_year", "irradiation_period", "sun_hours_year", "sun_hours
 """Layers whose first band the overview map shows."""
 
 OVERVIEW = "overview.png"
-
-SKIES = {
-    "clear": "potential (clear-sky)",
-    "measured": "under the measured sky",
-    "monthly index": "under a sky of monthly clear-sky indices",
-}
-"""How the summary calls energy under each kind of sky."""
 
 Draw = Callable[[Plan, NDArray[np.float32], Summary, str], bytes]
 

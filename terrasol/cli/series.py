@@ -28,7 +28,7 @@ from terrasol.cli.sky_options import (
     file_record,
     sky_options,
 )
-from terrasol.errors import counted
+from terrasol.words import counted
 
 if TYPE_CHECKING:
     from terrasol.cli.run import Ground

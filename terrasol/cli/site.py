@@ -13,11 +13,12 @@ import click
 
 from terrasol.cli.error_options import AskedError, error_options
 from terrasol.cli.ground_options import Around, ground_options
-from terrasol.cli.irradiation import irradiation, light_notes, light_record
+from terrasol.cli.irradiation import irradiation, light_record
 from terrasol.cli.options import Common, Name, Numbers, common_options, period_option
 from terrasol.cli.sky_options import ALBEDO_FOR_NOW, AskedSky, sky_options
 from terrasol.constants import ENERGY_UNITS
-from terrasol.errors import SettingError, counted
+from terrasol.errors import SettingError
+from terrasol.words import counted
 
 if TYPE_CHECKING:
     from datetime import date
@@ -90,7 +91,11 @@ class Place(click.ParamType):
     "--name", "labels", metavar="TEXT", multiple=True, help="Name of the place; again: the second."
 )
 @click.option(
-    "--day", "days", metavar="DATE", multiple=True, help="Draw the sun's path of this day too."
+    "--day",
+    "days",
+    metavar="DATE",
+    multiple=True,
+    help="Tell first and last sun of this day, and draw the sun's path.",
 )
 @click.option(
     "--clock",
@@ -344,6 +349,7 @@ class _Job:
         """Compute everything, and write it if a folder is named: the record, and the places."""
         from terrasol.cli.progress import progress_bar
         from terrasol.cli.run import announce_compilation, deliver, seconds_of
+        from terrasol.engine.light_words import light_notes
         from terrasol.engine.outputs import shade_words
         from terrasol.engine.plan import default_threads
         from terrasol.files.provenance import run_record
@@ -359,7 +365,7 @@ class _Job:
             record |= {
                 "threads": threads,
                 "results": {
-                    "places": [each.record() for each in sites],
+                    "places": [self._record_of(each) for each in sites],
                     "shade": shade_words(scene),
                 },
                 "warnings": [
@@ -374,6 +380,13 @@ class _Job:
                 record = deliver(delivery, common, self.names, record)
             move(1.0, "done")
         return record, sites
+
+    def _record_of(self, found: Site) -> dict[str, Any]:
+        """All of a place, with the days that were asked for."""
+        record = found.record()
+        if self.days:
+            record["sun"]["days"] = [found.sun.day_record(day) for day in self.days]
+        return record
 
     def _error_doubts(self) -> list[str]:
         """A warning where the stated error of the heights cannot be right."""
@@ -468,7 +481,7 @@ class _Job:
             give(json.dumps(record, indent=2))
         else:
             warnings = [f"warning: {text}" for text in record["warnings"]]
-            give(site_text(sites, [record["results"]["shade"], *warnings]))
+            give(site_text(sites, [record["results"]["shade"], *warnings], self.days))
         if self.names and not common.quiet and not common.as_json:
             took = duration(record["seconds"]["whole run"])
             say(f"{counted(len(self.names), 'file')} in {common.out_dir} after {took}")

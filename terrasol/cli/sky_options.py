@@ -11,7 +11,7 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from terrasol.cli.options import Numbers
-from terrasol.constants import SOLAR_CONSTANT
+from terrasol.constants import CLEAR_SKY_PAPERS, SOLAR_CONSTANT
 
 if TYPE_CHECKING:
     import numpy as np
@@ -24,9 +24,6 @@ if TYPE_CHECKING:
     from terrasol.sky.irradiance import Sky
     from terrasol.sky.period import Period
     from terrasol.sky.station import Station
-
-PAPERS = {"ineichen": "Ineichen and Perez 2002", "bird": "Bird and Hulstrom 1981"}
-"""Clear-sky models, by the name of the option's choice."""
 
 STATION_AWAY_KM = 50.0
 STATION_BESIDE_M = 500.0
@@ -278,7 +275,7 @@ def map_doubts(
     """Warn of cells of known ground that a map leaves out."""
     import numpy as np
 
-    from terrasol.errors import counted
+    from terrasol.words import counted
 
     lacking = np.isnan(values).any(axis=0) & np.isfinite(elevation.heights)
     if not lacking.any():
@@ -303,10 +300,10 @@ _AIR = (
     click.option(
         "--air",
         "model",
-        type=click.Choice(list(PAPERS)),
+        type=click.Choice(list(CLEAR_SKY_PAPERS)),
         default="ineichen",
         show_default=True,
-        help=f"Clear-sky model: {', or '.join(PAPERS.values())}.",
+        help=f"Clear-sky model: {', or '.join(CLEAR_SKY_PAPERS.values())}.",
     ),
     click.option(
         "--linke",

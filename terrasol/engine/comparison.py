@@ -18,7 +18,7 @@ from terrasol.constants import REFRACTION_COEFFICIENT
 from terrasol.engine.ground_work import cell_strip, lay_out
 from terrasol.engine.outputs import MONTH_NAMES
 from terrasol.engine.plan import Progress, carry_out, check_threads, default_threads
-from terrasol.errors import InputError, SettingError, counted
+from terrasol.errors import InputError, SettingError
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame, make_frame
@@ -41,6 +41,7 @@ from terrasol.sky.period import parse_period
 from terrasol.sky.quality import check_quality, usable
 from terrasol.sky.station import Station
 from terrasol.sky.timing import CLEAR_SCALE, TRIMMED, Timing, check_times
+from terrasol.words import counted
 
 AZIMUTHS: Final = 256
 """Number of horizon azimuths: for one cell's hours of sun, four times as many as for maps."""

@@ -16,9 +16,9 @@ from terrasol.engine.plan import Progress
 from terrasol.engine.spread import Running, RunningAngle
 from terrasol.engine.totals import Totals
 from terrasol.engine.uncertainty import doubts_of_error, moved, realisations, with_tables
-from terrasol.errors import counted
 from terrasol.files.layers import Layer, Sink
 from terrasol.ground.uncertainty import DemError, field_bytes
+from terrasol.words import counted
 
 SUFFIX: Final = "_standard_error"
 

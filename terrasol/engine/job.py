@@ -32,7 +32,7 @@ from terrasol.engine.plan import (
     default_threads,
 )
 from terrasol.engine.totals import Totals
-from terrasol.errors import InputError, counted
+from terrasol.errors import InputError
 from terrasol.files.layers import Layer, Sink
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
@@ -49,6 +49,7 @@ from terrasol.light.settings import (
 from terrasol.light.surroundings import Surroundings
 from terrasol.light.tables import SkyTables, table_bytes
 from terrasol.sky.suntable import height_knots, latitude_knots
+from terrasol.words import counted
 
 SECONDS_A_CELL_AND_AZIMUTH = 40e-9
 """What a core needs, for the estimate only; measured in docs/performance.md."""

@@ -22,6 +22,7 @@ from terrasol.files.snow_state import StateHead
 from terrasol.ground.beyond import Scene
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import make_frame
+from terrasol.ground.places import WGS84, Locator
 from terrasol.light.series import SUBSTEP_SECONDS, SeriesSettings
 from terrasol.practice.snow import (
     ALBEDO_MODELS,
@@ -187,7 +188,11 @@ def prepare(
         {"air": air.record(), "decomposition": settings.decomposition}
         if model.melt == "enhanced" else {},
     )  # fmt: skip
-    doubts = (*mended.doubts, *start_doubts(station.name, check))
+    doubts = (
+        *mended.doubts,
+        *start_doubts(station.name, check),
+        *place_doubts(station, elevation),
+    )
     return Prepared(plan, station, record, (*warnings, *doubts), check)
 
 
@@ -199,6 +204,20 @@ def start_doubts(name: str, check: StationCheck | None) -> tuple[str, ...]:
         f"{name}: {check.observed[0]:.0f} mm of snow water were observed on the first day,"
         f" {check.dates[0]}, and the run begins on bare ground: begin before the first snow, or go"
         " on from a state (--from-state)",
+    )
+
+
+def place_doubts(station: Station, elevation: Elevation) -> tuple[str, ...]:
+    """Says so if the station lies outside the raster."""
+    place = np.array([station.longitude]), np.array([station.latitude])
+    row, column = (float(v[0]) for v in Locator(WGS84, elevation)(*place))
+    rows, columns = elevation.shape
+    if -0.5 <= row < rows - 0.5 and -0.5 <= column < columns - 0.5:
+        return ()
+    return (
+        f"{station.name} lies outside the raster: its weather is carried to the cells by its height"
+        f" alone, {station.height:.0f} m, as that of one that lies inside; are place and height"
+        " right?",
     )
 
 
@@ -359,7 +378,7 @@ def top_zones(tables: SeasonTables, month: str, count: int = 3) -> list[str]:
         return []
     order: Sequence[int] = np.argsort(-from_band)[:count].tolist()
     return [
-        f"{tables.edges[b]:g} to {tables.edges[b + 1]:g} m {from_band[b] / whole:.0%}"
+        f"{tables.edges[b]:g} to {tables.edges[b + 1]:g} m {100.0 * from_band[b] / whole:.0f} %"
         for b in order
         if from_band[b] > 0.005 * whole
     ]

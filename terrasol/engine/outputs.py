@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from typing import Protocol
+from typing import Final, Protocol
 
 import numpy as np
 
@@ -118,6 +118,14 @@ def sky_kind(settings: LightSettings) -> str:
     if settings.sky is None:
         return "clear"
     return "monthly index" if isinstance(settings.sky, MonthlySky) else "measured"
+
+
+SKIES: Final = {
+    "clear": "potential (clear-sky)",
+    "measured": "under the measured sky",
+    "monthly index": "under a sky of monthly clear-sky indices",
+}
+"""How energy under each kind of sky is called."""
 
 
 def sky_words(settings: LightSettings) -> str:

@@ -17,7 +17,7 @@ from terrasol.engine.parcel_cells import Piece
 from terrasol.errors import SettingError
 from terrasol.practice.classes import (
     FLAT_BELOW_PERCENT,
-    SECTORS,
+    SECTOR_NAMES,
     SLOPE_EDGES_PERCENT,
     area_by_class,
     area_by_sector,
@@ -387,10 +387,18 @@ def _aspect(piece: Piece, asked: Asked) -> list[Figure]:
                " cancels", "map"),
     ]  # fmt: skip
     areas = np.append(sectors.flat, sectors.areas) / HECTARE
-    for name, value in zip(("flat", *SECTORS), _or_nan(areas, weights), strict=True):
-        words = f"area {below}" if name == "flat" else f"area that faces {name}, within 22.5 degree"
-        figures.append(Figure(f"aspect_{name.lower()}_ha_map", value, "ha", words, "map"))
+    flat_area, *facing = _or_nan(areas, weights)
+    figures.append(Figure("aspect_flat_ha_map", flat_area, "ha", f"area {below}", "map"))
+    for key, value in zip(sector_keys(), facing, strict=True):
+        direction = key.removeprefix("aspect_").replace("_", "-")
+        words = f"area that faces {direction}, within 22.5 degree"
+        figures.append(Figure(f"{key}_ha_map", value, "ha", words, "map"))
     return figures
+
+
+def sector_keys() -> list[str]:
+    """Beginnings of the columns of sectors of aspect: ``aspect_north`` first, then clockwise."""
+    return [f"aspect_{name}" for name in SECTOR_NAMES]
 
 
 def _light(piece: Piece, level: Level, asked: Asked) -> list[Figure]:

@@ -9,6 +9,7 @@ import numpy as np
 import shapely
 
 from terrasol.constants import HECTARE
+from terrasol.engine.outputs import SKIES, sky_kind
 from terrasol.engine.parcel_figures import Figure
 from terrasol.engine.parcels import Parcel, Survey
 from terrasol.files.vectors import patch_outlines
@@ -207,7 +208,29 @@ def column_rows(survey: Survey) -> list[Row]:
         *(_ROWS if survey.settings.rows else ()),
         *(_DOUBTS if survey.settings.error else ()),
     ]
+    kind = SKIES[sky_kind(survey.settings.light)]
     return [
-        {"column": f.name, "unit": f.unit, "area_basis": f.basis, "meaning": f.meaning}
+        {
+            "column": f.name,
+            "unit": f.unit,
+            "area_basis": f.basis,
+            "meaning": f"{f.meaning}; {kind}" if _is_light(f) else f.meaning,
+        }
         for f in figures
     ]
+
+
+def _is_light(figure: Figure) -> bool:
+    """Whether a figure is energy of the sun, or a share of it, so that it has a sky."""
+    name = figure.name
+    return not name.endswith("_se") and ("_mj_m" in name or name.startswith("share_of_level"))
+
+
+def layer_words(survey: Survey) -> dict[str, str]:
+    """What the layers of parcels.gpkg hold, with the sky that their energies are of."""
+    asked, sky = survey.settings.asked, survey.settings.sky_words
+    season = f"growing season {asked.season_words}, {asked.period.label}"
+    words = {"parcels": f"Parcels and their figures, {season}; energy per area of slope. {sky}"}
+    if asked.rule is not None:
+        words["rule"] = f"Ground that meets the rule {asked.rule.text}, {season}. {sky}"
+    return words

@@ -19,15 +19,23 @@ from terrasol.engine.parcel_figures import (
     Level,
     Warmth,
     figures_of,
+    sector_keys,
 )
 from terrasol.engine.parcel_rows import row_figures
 from terrasol.engine.plan import Block
+from terrasol.practice.classes import SECTORS
 from terrasol.practice.ranking import Score, parse_score
 from terrasol.practice.rules import Rule, parse_rule
 from terrasol.practice.temperatures import from_monthly
 
 SLOPE_CLASS: Final = re.compile(r"slope_(under|from|[\d.]+_to)_[\d.]+_percent_ha_map")
 """Columns of slope classes, whatever their edges."""
+
+IN_LETTERS: Final = {
+    f"aspect_{letters.lower()}_ha_map": f"{key}_ha_map"
+    for letters, key in zip(SECTORS, sector_keys(), strict=True)
+}
+"""Columns of sectors of aspect as they are not called, and as they are."""
 
 
 def read_rule(text: str, *, warm: bool = False) -> Rule:
@@ -70,7 +78,9 @@ def read_score(text: str, asked: Asked, *, days: int, rows: bool) -> Score:
     """
 
     def needs(name: str) -> str:
-        """The option that would bring a figure."""
+        """The option that would bring a figure, or how it is written."""
+        if name in IN_LETTERS:
+            return f"its sector written out, {IN_LETTERS[name]}"
         for option, other, with_rows in _with_more(asked):
             if name in figure_names(other, days=days, rows=with_rows):
                 return option

@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 
 from terrasol.constants import HECTARE
 from terrasol.engine.job import NO_SCENE, plan_terrain
+from terrasol.engine.light_words import assumed_note, sky_note
 from terrasol.engine.outputs import shade_doubts, shade_words
 from terrasol.engine.parcel_cells import Piece, SceneOf, pieces_of
 from terrasol.engine.parcel_errors import Doubt, doubts_of
@@ -30,7 +31,7 @@ from terrasol.engine.parcel_words import read_score
 from terrasol.engine.plan import Block, Progress
 from terrasol.engine.uncertainty import doubts_of_error
 from terrasol.engine.windows import collect
-from terrasol.errors import SettingError, area_words, listed
+from terrasol.errors import SettingError
 from terrasol.files.overlaps import overlap_doubts
 from terrasol.files.vectors import Polygons
 from terrasol.ground.beyond import Scene
@@ -42,6 +43,7 @@ from terrasol.light.hours import HoursSettings
 from terrasol.light.settings import LightSettings
 from terrasol.practice.ranking import Ranking, Score, parse_score, rank
 from terrasol.practice.rules import Patches
+from terrasol.words import area_words, listed
 
 COARSER: Final = (2, 4)
 """Cells joined along a side for the two coarser looks at the same ground (judgement)."""
@@ -88,6 +90,8 @@ class ParcelSettings:
         Vine rows, for the direction in which to plant them.
     error : DemError, optional
         Of the heights, for standard errors.
+    station : str
+        Name of the station whose sky it is, if any.
 
     Raises
     ------
@@ -102,6 +106,12 @@ class ParcelSettings:
     coarser: tuple[int, ...] = COARSER
     rows: RowSettings | None = None
     error: DemError | None = None
+    station: str = ""
+
+    @property
+    def sky_words(self) -> str:
+        """Which sky the light is of, and what air and ground were taken for."""
+        return f"{sky_note(self.light, self.station)} {assumed_note(self.light)}"
 
     def __post_init__(self) -> None:
         """Refuse what makes no sense."""

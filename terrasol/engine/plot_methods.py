@@ -12,9 +12,9 @@ from terrasol.engine.outputs import sky_kind
 from terrasol.engine.plot_settings import PlotSettings
 from terrasol.engine.plot_table import PlotTable
 from terrasol.engine.predictors import season_words
-from terrasol.errors import counted
 from terrasol.light.settings import LightSettings
 from terrasol.sky.clear import Air
+from terrasol.words import counted
 
 REFERENCES: Final = {
     "beers": "Beers, T. W., Dress, P. E. and Wensel, L. C. (1966). Aspect transformation in site"

@@ -151,6 +151,24 @@ class SunYear:
         """Number of a day of the year."""
         return next(k for k, d in enumerate(self.days) if (d.month, d.day) == (month, day))
 
+    def day_of(self, day: date) -> int:
+        """Number of the day of the year that stands for a date: 28 February for the 29th."""
+        leap = (day.month, day.day) == (2, 29)
+        return self.on(2, 28) if leap else self.on(day.month, day.day)
+
+    def day_record(self, day: date) -> dict[str, Any]:
+        """First and last sun and hours of sun of a date, ready for JSON."""
+        k = self.day_of(day)
+        names = ("first_sun", "last_sun", "sun_hours")
+        here = (self.first[k], self.last[k], self.hours[k])
+        told = dict(zip(names, map(_number, here), strict=True))
+        level = (f"level_{name}" for name in names)
+        return {
+            "day": str(day),
+            **told,
+            **dict(zip(level, map(_number, self.level[:, k]), strict=True)),
+        }
+
     def mean_hours(self, month: int) -> tuple[float, float]:
         """Hours of sun of a mean day of a month, here and on level ground."""
         these = self.month == month

@@ -11,8 +11,8 @@ from numpy.typing import NDArray
 from pyproj import CRS, Transformer
 
 from terrasol.constants import HECTARE
-from terrasol.errors import area_words, listed
 from terrasol.files.vectors import Polygons
+from terrasol.words import area_words, listed
 
 SLIVER_SHARE: Final = 0.01
 """Share of the smaller of two polygons up to which what they share may come from drawing their

@@ -61,6 +61,7 @@ def write_layer(
     crs: CRS,
     geometries: Sequence[Any],
     rows: Sequence[Mapping[str, Value]],
+    description: str = "",
     *,
     append: bool = False,
 ) -> None:
@@ -79,6 +80,8 @@ def write_layer(
     rows : sequence of mapping
         One a geometry, all with the same names; unknown numbers become null. Without any, no
         layer is written.
+    description : str
+        What it holds, in words: the layer's own description.
     append : bool
         Add the layer to a file.
 
@@ -108,6 +111,7 @@ def write_layer(
             engine="pyogrio",
             mode="a" if append else "w",
             geometry_type="MultiPolygon",
+            layer_options={"DESCRIPTION": description},
         )
 
 

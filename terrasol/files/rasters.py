@@ -19,9 +19,10 @@ from rasterio.windows import Window
 from scipy import ndimage, sparse
 from scipy.sparse.linalg import spsolve
 
-from terrasol.errors import InputError, SettingError, counted
+from terrasol.errors import InputError, SettingError
 from terrasol.files.vertical import Reference, resolve_vertical_unit
 from terrasol.ground.elevation import METRES_PER_UNIT, Affine6, Elevation
+from terrasol.words import counted
 
 LOWEST: Final = -500.0
 HIGHEST: Final = 9000.0

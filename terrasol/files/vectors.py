@@ -18,9 +18,10 @@ from pyproj.exceptions import CRSError, ProjError
 from rasterio import Affine
 from rasterio.features import shapes as traced
 
-from terrasol.errors import InputError, SettingError, counted, listed
+from terrasol.errors import InputError, SettingError
 from terrasol.files.rasters import naming
 from terrasol.ground.elevation import Affine6
+from terrasol.words import counted, listed
 
 LONGEST_EDGE: Final = 1000.0
 """Longest piece, m, of a straight edge that is carried into another CRS by its ends alone. The

@@ -30,6 +30,11 @@ ground by about 1 % (judgement, no source)."""
 SECTORS: Final = ("N", "NE", "E", "SE", "S", "SW", "W", "NW")
 """Sectors of aspect, 45 degrees each, the first centred on true north."""
 
+SECTOR_NAMES: Final = (
+    "north", "north_east", "east", "south_east", "south", "south_west", "west", "north_west",
+)  # fmt: skip
+"""The same as parts of names of columns: in letters, "se" would read as a standard error."""
+
 LEAST_RESULTANT: Final = 1e-9
 """Below this resultant length directions cancel but for rounding, and have no mean."""
 

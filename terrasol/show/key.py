@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 import re
-from collections.abc import Callable, Collection, Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from functools import partial
 
@@ -155,12 +155,6 @@ def _date_ticks(scale: Scale, first: np.datetime64) -> list[tuple[float, str]]:
         if all(abs(day - other) >= near for other in named[:2]):
             named.append(day)
     return [(float(day), date_text(first + day)) for day in sorted(named)]
-
-
-def range_text(values: Collection[float]) -> str:
-    """The least and the greatest of values: ``2.1 to 3.4``, or ``0.2`` if they are one."""
-    ends = [f"{end:.3g}" for end in (min(values), max(values))]
-    return ends[0] if ends[0] == ends[1] else " to ".join(ends)
 
 
 def points_text(scale: Scale) -> str:

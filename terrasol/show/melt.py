@@ -274,7 +274,7 @@ def _draw_store(page: Page, tables: SeasonTables, top: float, height: float) -> 
     x = LEFT + panel.width
     for share in (0.5, 1.0):
         y = top + height * (1.0 - share * full / high)
-        page.text(x + 5, y, f"{share:.0%}", 14.0, colour=SOFT, down="center")
+        page.text(x + 5, y, f"{100.0 * share:.0f} %", 14.0, colour=SOFT, down="center")
     k = int(water.argmax())
     words = f"{number(water[k], 1.0)} mm on {date_text(tables.dates[k])}"
     at = LEFT + (k + 0.5) / tables.dates.size * panel.width

@@ -14,10 +14,10 @@ from matplotlib.patches import Wedge
 from numpy.typing import NDArray
 
 from terrasol import __version__
-from terrasol.engine.outputs import MONTH_NAMES, sky_kind
-from terrasol.engine.parcel_figures import LAPSE_EFFECT, month_keys, slope_class_keys
+from terrasol.engine.light_words import sky_title
+from terrasol.engine.outputs import MONTH_NAMES
+from terrasol.engine.parcel_figures import LAPSE_EFFECT, month_keys, sector_keys, slope_class_keys
 from terrasol.engine.parcels import Parcel, Survey, numbers_of
-from terrasol.errors import area_unit
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import Frame
 from terrasol.light.minutes import track
@@ -38,6 +38,7 @@ from terrasol.show.parcel_map import (
 )
 from terrasol.show.plus_minus import area_plus_minus, plus_minus
 from terrasol.show.skyline import HOUR_LINES, draw_skyline, tracks_of, view_limits
+from terrasol.words import area_unit
 
 WIDTH, HEIGHT, MARGIN = 827, 1169, 44
 """A4 upright, a hundred pixels an inch."""
@@ -62,6 +63,9 @@ UNKNOWN: Final = "nothing of the ground is known"
 
 MOST_TIMED, MOST_LETTERED = 13, 36
 """Months whose first and last sun are written out, and months that are named."""
+
+BELOW_ROWS: Final = 132.0
+"""From the top of the diagram of rows to the notes below it [pixels]."""
 
 TIMES: Final = 13.0
 """Height that a written time takes above or below a bar [pixels]."""
@@ -108,16 +112,19 @@ def parcel_page(
 def _light(page: Page, survey: Survey, parcel: Parcel) -> None:
     """Diagrams of light and warmth; what was not asked for leaves its room to the others."""
     rows, warm = survey.settings.rows is not None, survey.settings.asked.warmth is not None
-    tall, sky = (92.0, 110.0) if rows or warm else (150.0, 210.0)
+    tall = 92.0 if rows or warm else 150.0
+    top = _foot_top(*_foot_lines(survey))
+    low = min(967.0, top - BELOW_ROWS)  # of rows and warmth; the horizon gives way
+    sky = low - 857.0 if rows or warm else min(210.0, top - 885.0)
     half, right = 336.0, WIDTH - MARGIN
     _months(page, survey, parcel, (MARGIN + 22, 632, half - 10, tall))
     _days(page, survey, parcel, (right - half, 632, half, tall))
     _skyline(page, survey, parcel, (MARGIN + 22, 705 + tall, INNER - 22, sky))
     if rows:
-        _rows(page, survey, parcel, (MARGIN + 34, 967, (half - 22 if warm else INNER - 34), 72))
+        _rows(page, survey, parcel, (MARGIN + 34, low, (half - 22 if warm else INNER - 34), 72))
     if warm:
         left = right - half if rows else MARGIN
-        _warmth(page, survey, parcel, (left, 967, right - left))
+        _warmth(page, survey, parcel, (left, low, right - left))
 
 
 def heading(page: Page, x: float, y: float, words: str, more: str = "") -> None:
@@ -231,8 +238,7 @@ def facts(survey: Survey, parcel: Parcel) -> list[tuple[str, str]]:
         return with_error(parcel, name, form, factor)
 
     rows = [
-        *_areas(n),
-        ("Area of the slope's surface", area_plus_minus(n["surface_area_ha"], None)),
+        *_areas(parcel),
         ("Height, mean", f"{n['height_mean_m']:.0f} m"),
         ("Slope, mean", f"{told('slope_mean_percent', '.1f')} %"),
         ("Slope of the middle 80 %",
@@ -253,21 +259,34 @@ def facts(survey: Survey, parcel: Parcel) -> list[tuple[str, str]]:
     return [(name, "unknown" if "nan" in value else value) for name, value in rows]
 
 
-def _areas(numbers: dict[str, float]) -> list[tuple[str, str]]:
-    """Area as drawn, and what of it is on the raster and known, where that is less."""
-    rows = [("Area drawn, on the map", area_plus_minus(numbers["drawn_ha_map"], None))]
+def _areas(parcel: Parcel) -> list[tuple[str, str]]:
+    """Area as drawn, what of it is on the raster and known where that is less, and its surface."""
+    numbers = parcel.numbers
+    told = [("Area drawn, on the map", "drawn_ha_map")]
     if numbers["outside_share"] > 0.0:
-        rows.append(("  of it on the raster", area_plus_minus(numbers["map_area_ha"], None)))
+        told.append(("  of it on the raster", "map_area_ha"))
     if numbers["unknown_ha_map"] > 0.0:
-        rows.append(("  of it known", area_plus_minus(numbers["known_ha_map"], None)))
-    return rows
+        told.append(("  of it known", "known_ha_map"))
+    told.append(("Area of the slope's surface", "surface_area_ha"))
+    return [(words, plain_area(parcel, name)) for words, name in told]
+
+
+def plain_area(parcel: Parcel, name: str) -> str:
+    """An area of a parcel, in the unit of all of it, without a standard error."""
+    return area_plus_minus(parcel.numbers[name], None, like=parcel.numbers["drawn_ha_map"])
 
 
 def area_with_error(parcel: Parcel, name: str) -> str:
-    """An area of some kind with its standard error behind it, if there is one, and its unit."""
+    """An area of a parcel, in the unit of all of it, its standard error behind it if it has one."""
+    n = parcel.numbers
+    error = area_error(parcel, name)
+    return area_plus_minus(n[name], error, n["known_ha_map"], like=n["drawn_ha_map"])
+
+
+def area_error(parcel: Parcel, name: str) -> float | None:
+    """Standard error of an area [ha], if there is one."""
     doubt = parcel.doubts.get(name)
-    error = None if doubt is None else doubt.standard_error
-    return area_plus_minus(parcel.numbers[name], error, parcel.numbers["known_ha_map"])
+    return None if doubt is None else doubt.standard_error
 
 
 def with_error(parcel: Parcel, name: str, form: str, factor: float = 1.0) -> str:
@@ -308,7 +327,7 @@ def _faces(numbers: dict[str, float]) -> str:
 
 
 def _classes(page: Page, survey: Survey, parcel: Parcel, x: float, y: float) -> None:
-    """Hectares per class of slope, as bars with numbers."""
+    """Area per class of slope, as bars with numbers."""
     edges = survey.settings.asked.slope_edges
     heading(page, x, y, "Slope classes", "areas of map")
     if not parcel.piece.known.any():
@@ -334,11 +353,11 @@ def _classes(page: Page, survey: Survey, parcel: Parcel, x: float, y: float) -> 
 
 
 def _rose(page: Page, survey: Survey, parcel: Parcel, box) -> None:
-    """Hectares per sector of aspect: petals whose area is the ground's."""
+    """Area per sector of aspect: petals whose area is the ground's."""
     x, y, width, height = box
-    areas = np.nan_to_num([parcel.numbers[f"aspect_{s.lower()}_ha_map"] for s in SECTORS])
+    areas = np.nan_to_num([parcel.numbers[f"{key}_ha_map"] for key in sector_keys()])
     most = max(areas.max(), 1e-9)
-    unit, factor, _ = area_unit(areas.max())
+    unit, factor, _ = area_unit(parcel.numbers["drawn_ha_map"])
     heading(page, x - 4, y, "Aspect", f"{unit.replace('2', '²')} by sector")
     if not parcel.piece.known.any():
         page.text(x - 4, y + 22, UNKNOWN, TEXT, colour=SOFT)
@@ -364,7 +383,7 @@ def _rose(page: Page, survey: Survey, parcel: Parcel, box) -> None:
             told = area * factor
             page.text(px, py + 4, f"{told:.2g}" if told < 1 else f"{told:.1f}", TICK,
                       across="center", halo=PAPER)  # fmt: skip
-    flat = area_plus_minus(parcel.numbers["aspect_flat_ha_map"], None)
+    flat = plain_area(parcel, "aspect_flat_ha_map")
     words = f"flat (under {survey.settings.asked.flat_below:g} %): {flat}"
     page.text(x + width / 2, y + height + 20, words, SMALL, colour=SOFT, across="center")
 
@@ -381,7 +400,7 @@ def _sizes(page: Page, survey: Survey, parcel: Parcel, x: float, y: float) -> No
     looks = [(survey.cell_size, parcel.numbers)]
     looks += [(size, numbers_of(figures)) for size, figures in parcel.coarser]
     columns = np.linspace(right - 58.0 * (len(looks) - 1), right, len(looks))
-    area = partial(area_plus_minus, error=None)
+    area = partial(area_plus_minus, error=None, like=parcel.numbers["drawn_ha_map"])
     rows: list[tuple[str, str, Callable[[float], str]]] = [
         ("mean slope", "slope_mean_percent", "{:.1f} %".format)
     ]
@@ -585,7 +604,9 @@ def _warmth(page: Page, survey: Survey, parcel: Parcel, box) -> None:
             level += 46
     effect = parcel.numbers[LAPSE_EFFECT]
     if np.isfinite(effect):
-        words = f"a lapse rate of 1 K/km more would move Winkler's sum by {effect:+.0f}"
+        words = (
+            f"a lapse rate of 1 K/km more would move Winkler's sum by {round(effect) + 0.0:+.0f}"
+        )
         page.text(x, level + 8, words.replace("-", "−"), SMALL, colour=SOFT)
 
 
@@ -621,18 +642,19 @@ def _draw_scale(page: Page, parcel: Parcel, name: str, words: str, scale: Scale,
 
 def notes_of(survey: Survey) -> list[str]:
     """What every sheet says of its numbers."""
-    asked, light = survey.settings.asked, survey.settings.light
-    sky = "a clear sky (potential)" if sky_kind(light) == "clear" else "the sky that was given"
+    asked = survey.settings.asked
     notes = [
-        f"Season {asked.season_words}, {asked.period.label}. Energy under {sky}, per area of slope,"
-        f" reflection counted, from cells of {survey.cell_size:.3g} m. {survey.shade} Hectares of"
-        " level map area, true on the ellipsoid.",
+        f"Season {asked.season_words}, {asked.period.label}. {sky_title(survey.settings.light)} per"
+        f" area of slope, reflection counted, from cells of {survey.cell_size:.3g} m."
+        f" {survey.settings.sky_words} {survey.shade} Areas are of the level map, true on the"
+        " ellipsoid.",
     ]
     if survey.settings.rows is not None:
         rows = survey.settings.rows
         notes.append(
             f"Rows {rows.spacing:g} m apart, leaf wall {rows.height:g} m high, {rows.width:g} m"
-            " wide, endless on the parcel's mean plane; climb: steepest cell along the rows."
+            f" wide, of albedo {rows.canopy_albedo:g}, endless on the parcel's mean plane; climb:"
+            " steepest cell along the rows."
         )
     if asked.warmth is not None:
         station, lapse = asked.warmth.station, asked.warmth.lapse
@@ -654,11 +676,21 @@ def notes_of(survey: Survey) -> list[str]:
     return notes
 
 
+def _foot_lines(survey: Survey) -> tuple[list[str], list[str]]:
+    """Lines of the notes, and of what is not in it."""
+    notes = wrap(" ".join(notes_of(survey)), 8.2, SLACK * INNER)
+    return notes, wrap(VINEYARD, 8.6, SLACK * INNER - 80, bold=True)
+
+
+def _foot_top(notes: list[str], last: list[str]) -> float:
+    """Where the first of those lines stands."""
+    return HEIGHT - 18 - 10.0 * (len(notes) + len(last) - 1)
+
+
 def _foot(page: Page, survey: Survey) -> None:
     """Basis, rule, and what is not in it."""
-    notes = wrap(" ".join(notes_of(survey)), 8.2, SLACK * INNER)
-    last = wrap(VINEYARD, 8.6, SLACK * INNER - 80, bold=True)
-    y = HEIGHT - 18 - 10.0 * (len(notes) + len(last) - 1)
+    notes, last = _foot_lines(survey)
+    y = _foot_top(notes, last)
     for k, line in enumerate(notes):
         page.text(MARGIN, y + k * 10.0, line, 8.2, colour=SOFT)
     for k, line in enumerate(last, len(notes)):

@@ -37,7 +37,7 @@ from terrasol.show.parcel_sheet import (
     TEXT,
     TITLE,
     WIDTH,
-    area_with_error,
+    area_error,
     blank_note,
     heading,
     north_box,
@@ -45,8 +45,10 @@ from terrasol.show.parcel_sheet import (
     rmse_of,
     scale_and_north,
 )
+from terrasol.show.plus_minus import area_figure
+from terrasol.words import area_unit
 
-MAP_HEIGHTS: Final = 360.0, 560.0
+MAP_HEIGHTS: Final = 300.0, 560.0
 PITCH: Final = 19.0
 """Least and greatest height of the map, and height of a row of the table [pixels]."""
 
@@ -55,6 +57,9 @@ MOST_ROWS: Final = 24
 
 BELOW_MAP: Final = 188.0
 """From the height of the map to the top of the table [pixels]."""
+
+BETWEEN: Final = 9.0
+"""Least room between the columns of the table [pixels]."""
 
 CLASS_BAR: Final = 84.0
 """Length of the bar of slope classes in the table [pixels]."""
@@ -105,10 +110,12 @@ def _head(page: Page, survey: Survey, title: str) -> None:
 
 def _map_height(survey: Survey) -> float:
     """Height of the map: all that table and score leave."""
-    left = PITCH * (MOST_ROWS - len(survey.parcels))
+    count = len(survey.parcels)
+    rows = min(count, MOST_ROWS) + (count > MOST_ROWS)
+    left = _foot_top(*_foot_lines(survey)) - BELOW_MAP - 30.0 - PITCH * rows
     if survey.score is not None:
-        left -= 50.0 + 14.0 * len(survey.score.terms)
-    return float(np.clip(MAP_HEIGHTS[0] + left, *MAP_HEIGHTS))
+        left -= 46.0 + 14.0 * len(survey.score.terms)
+    return float(np.clip(left, *MAP_HEIGHTS))
 
 
 def _map(page: Page, survey: Survey, elevation: Elevation, frame: Frame, height: float) -> None:
@@ -185,9 +192,11 @@ def _columns(survey: Survey) -> list[tuple[str, float, Cell]]:
         return cell
 
     whole = all(p.numbers["known_ha_map"] == p.numbers["drawn_ha_map"] for p in survey.parcels)
+    smallest = float(np.nanmin([p.numbers["drawn_ha_map"] for p in survey.parcels]))
+    unit = area_unit(smallest)[0].replace("2", "²")
     columns = [
-        ("ha drawn", 58.0, _area("drawn_ha_map")),
-        *([] if whole else [("known", 48.0, _area("known_ha_map"))]),
+        (f"{unit} drawn", 58.0, _area("drawn_ha_map", smallest)),
+        *([] if whole else [("known", 48.0, _area("known_ha_map", smallest))]),
         ("slope", 42.0, number("slope_mean_percent", "{:.0f} %")),
         ("faces", 38.0, _faces),
         ("MJ/m²", 48.0, number("irradiation_season_mj_m2_slope", "{:.0f}")),
@@ -196,22 +205,29 @@ def _columns(survey: Survey) -> list[tuple[str, float, Cell]]:
     ]
     if survey.settings.asked.rule is not None:
         width = 82.0 if survey.settings.error else 48.0
-        columns.append(("rule ha", width, _area("rule_ha_map")))
+        columns.append((f"rule {unit}", width, _area("rule_ha_map", smallest)))
     if survey.settings.asked.warmth is not None:
         columns.append(("Winkler", 48.0, number("winkler_mean_c_days", "{:.0f}")))
     if survey.settings.rows is not None:
         columns.append(("rows", 40.0, number("rows_even_azimuth_deg", "{:.0f}°")))
     if survey.ranking is not None:
         columns.append(("score", 52.0, _score_cell(survey)))
-    return columns
+    return [(head, max(width, _needed(survey, head, cell)), cell) for head, width, cell in columns]
 
 
-def _area(key: str) -> Cell:
-    """An area with its standard error, in hectares as the head says unless it is small."""
+def _needed(survey: Survey, head: str, cell: Cell) -> float:
+    """Width of a column [pixels] that keeps its longest text clear of the column before."""
+    texts = (text_width(cell(parcel), TEXT) for parcel in survey.order[:MOST_ROWS])
+    return max(text_width(head, SMALL), *texts) + BETWEEN
+
+
+def _area(key: str, smallest: float) -> Cell:
+    """An area with its standard error, in the unit that suits the smallest parcel."""
 
     def cell(parcel: Parcel) -> str:
-        known = np.isfinite(parcel.numbers[key])
-        return area_with_error(parcel, key).removesuffix(" ha") if known else "–"
+        n, error = parcel.numbers, area_error(parcel, key)
+        known = np.isfinite(n[key])
+        return area_figure(n[key], error, n["known_ha_map"], like=smallest) if known else "–"
 
     return cell
 
@@ -266,7 +282,7 @@ def _table(page: Page, survey: Survey, top: float) -> float:
 
 def _table_words(survey: Survey) -> str:
     """What the columns are of."""
-    words = "hectares of map; energy of the season per area of slope, and by open level ground"
+    words = "areas of map; energy of the season per area of slope, and by open level ground"
     if survey.settings.rows is not None:
         words += "; rows: azimuth with sides most alike"
     return words
@@ -291,8 +307,7 @@ def _score(page: Page, survey: Survey, y: float) -> None:
     heading(page, MARGIN, y, "Score", clip(survey.score.text, SMALL, INNER - 60))
     terms = survey.score.terms
     shown = survey.ranking.order[:MOST_ROWS]
-    room = HEIGHT - 110 - (y + 16)
-    if len(terms) * 13.0 > room:
+    if y + 32.0 + 14.0 * len(terms) > _foot_top(*_foot_lines(survey)):
         return
     widths = (INNER - 250.0) / max(len(shown), 1)
     for k, term in enumerate(terms):
@@ -308,11 +323,21 @@ def _score(page: Page, survey: Survey, y: float) -> None:
     page.text(MARGIN, y + 18, "what each term adds, by number", SMALL, colour=SOFT)
 
 
+def _foot_lines(survey: Survey) -> tuple[list[str], list[str]]:
+    """Lines of the notes, and of what is not in it."""
+    notes = wrap(" ".join(notes_of(survey)), 8.8, SLACK * INNER)
+    return notes, wrap(VINEYARD, TEXT, SLACK * INNER, bold=True)
+
+
+def _foot_top(notes: list[str], last: list[str]) -> float:
+    """Where the first of those lines stands."""
+    return HEIGHT - 34 - 14.0 * len(last) - 11.0 * len(notes)
+
+
 def _foot(page: Page, survey: Survey) -> None:
     """Basis, rule, and what is not in it, in larger letters than on the sheets."""
-    lines = [*wrap(" ".join(notes_of(survey)), 8.8, SLACK * INNER)]
-    last = wrap(VINEYARD, TEXT, SLACK * INNER, bold=True)
-    y = HEIGHT - 34 - 14.0 * len(last) - 11.0 * len(lines)
+    lines, last = _foot_lines(survey)
+    y = _foot_top(lines, last)
     for k, line in enumerate(lines):
         page.text(MARGIN, y + k * 11.0, line, 8.8, colour=SOFT)
     for k, line in enumerate(last):

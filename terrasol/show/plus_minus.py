@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 
-from terrasol.errors import area_unit
+from terrasol.words import area_unit
 
 
 def plus_minus(
@@ -49,7 +49,12 @@ def plus_minus(
 
 
 def area_plus_minus(
-    hectares: float, error: float | None, whole: float = math.nan, *, sign: str = "±"
+    hectares: float,
+    error: float | None,
+    whole: float = math.nan,
+    *,
+    sign: str = "±",
+    like: float | None = None,
 ) -> str:
     """Word an area with its standard error and unit, small ones in square metres.
 
@@ -57,13 +62,37 @@ def area_plus_minus(
     ----------
     hectares, error, whole, sign
         As for `plus_minus`.
+    like : float, optional
+        Area [ha] that the unit suits, so that those of one table have one; by default its own.
 
     Examples
     --------
     >>> area_plus_minus(3.1, 0.4), area_plus_minus(0.004, None), area_plus_minus(0.004, 0.2)
     ('3.10 ± 0.40 ha', '40 m²', '0.00 ± 0.20 ha')
+    >>> area_plus_minus(3.1, None, like=0.004), area_plus_minus(0.004, None, like=3.1)
+    ('31000 m²', '0.00 ha')
     """
-    unit, factor, form = area_unit(max(hectares, error or 0.0))
-    off = None if error is None else error * factor
-    told = plus_minus(hectares * factor, off, form, sign=sign, whole=whole * factor)
+    like = max(hectares, error or 0.0) if like is None else like
+    unit = area_unit(like)[0]
+    told = area_figure(hectares, error, whole, sign=sign, like=like)
     return f"{told} {unit.replace('2', '²') if sign == '±' else unit}"
+
+
+def area_figure(
+    hectares: float,
+    error: float | None,
+    whole: float = math.nan,
+    *,
+    like: float,
+    sign: str = "±",
+) -> str:
+    """Word an area as `area_plus_minus` does, for a table whose head has the unit.
+
+    Examples
+    --------
+    >>> area_figure(3.1, 0.4, like=0.004), area_figure(0.0009, 0.0, like=3.1)
+    ('31000 ± 4000', '0.00 ± 0.00')
+    """
+    _, factor, form = area_unit(like)
+    off = None if error is None else error * factor
+    return plus_minus(hectares * factor, off, form, sign=sign, whole=whole * factor)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from datetime import date
 from typing import Final
 
 import numpy as np
@@ -142,7 +143,7 @@ def dark_text(site: Site) -> str:
     return f"{count} days without direct sun" + (f": {spans[0]}" if len(spans) == 1 else "")
 
 
-def _day(day) -> str:
+def _day(day: date) -> str:
     return f"{day.day} {MONTH_NAMES[day.month - 1]}"
 
 
@@ -225,7 +226,27 @@ def month_head(site: Site) -> tuple[str, ...]:
     )  # fmt: skip
 
 
-def site_text(sites: Sequence[Site], notes: Sequence[str]) -> str:
+def day_rows(site: Site, days: Sequence[date]) -> list[Row]:
+    """First and last sun and hours of sun on each of some dates."""
+    sun = site.sun
+    rows = []
+    for day in days:
+        k = sun.day_of(day)
+        here = _sun_words(sun.first[k], sun.last[k], sun.hours[k])
+        rows.append((_day(day), f"sun {here}; level ground {_sun_words(*sun.level[:, k])}"))
+    return rows
+
+
+def _sun_words(first: float, last: float, hours: float) -> str:
+    """First and last sun of a day, and how long it shines in all."""
+    if not hours > 0.0:
+        return "at no time"
+    if hours > ALL_DAY:
+        return "all day"
+    return f"from {clock_time(first)} to {clock_time(last)}, {hours:.1f} h"
+
+
+def site_text(sites: Sequence[Site], notes: Sequence[str], days: Sequence[date] = ()) -> str:
     """One place as a block of text; two as one table with a column each.
 
     Parameters
@@ -234,13 +255,15 @@ def site_text(sites: Sequence[Site], notes: Sequence[str]) -> str:
         One or two.
     notes : sequence of str
         What a careful reader should know, at the end.
+    days : sequence of date
+        Dates whose sun is told too.
 
     Returns
     -------
     str
     """
     clock = sites[0].sun.clock
-    lines = [_one(sites[0])] if len(sites) == 1 else [_two(sites)]
+    lines = [_one(sites[0], days)] if len(sites) == 1 else [_two(sites, days)]
     lines += [
         f"energy is {energy_words(sites[0])}; level ground is at the same place and height, under"
         " an open sky",
@@ -258,8 +281,10 @@ def site_text(sites: Sequence[Site], notes: Sequence[str]) -> str:
     return "\n".join(lines)
 
 
-def _one(site: Site) -> str:
-    rows = [(f"{name:<11}", text) for name, text in facts(site)]
+def _one(site: Site, days: Sequence[date]) -> str:
+    rows = [*facts(site), *day_rows(site, days)]
+    width = max(11, *(len(name) for name, _ in rows))
+    rows = [(f"{name:<{width}}", text) for name, text in rows]
     lines = [place_text(site), *(f"{name} {text}" for name, text in rows), ""]
     return "\n".join([*lines, *_table([month_head(site), *month_rows(site)]), ""])
 
@@ -276,7 +301,7 @@ def _table(rows: Sequence[Sequence[str]]) -> list[str]:
     ]
 
 
-def _two(sites: Sequence[Site]) -> str:
+def _two(sites: Sequence[Site], days: Sequence[date]) -> str:
     """Two places beside each other, with the difference of their energy."""
     one, other = sites
     names = [place_text(site) for site in sites]
@@ -286,6 +311,8 @@ def _two(sites: Sequence[Site]) -> str:
     for k in range(count):
         pair = [each.get(k, ("", "-")) for each in both]
         rows.append((pair[0][0] or pair[1][0], pair[0][1], pair[1][1]))
+    of_days = zip(day_rows(one, days), day_rows(other, days), strict=True)
+    rows += [(name, here, there) for (name, here), (_, there) in of_days]
     head = [
         ("", "here", "there", "there", "sun", "sun", "first", "first", "last", "last"),
         ("", one.energy.settings.unit, "", "- here", "here", "there", *(("here", "there") * 2)),

@@ -151,7 +151,7 @@ class Quality:
             for words, found in told["flags"].items():
                 worst = found.get("worst")
                 most = f"; worst {worst[0][1]:.4g} at {worst[0][0]} UTC" if worst else ""
-                lines.append(f"  {words}: {found['count']} ({found['share']:.2%}){most}")
+                lines.append(f"  {words}: {found['count']} ({100.0 * found['share']:.2f} %){most}")
         return lines
 
 
@@ -195,9 +195,9 @@ def check_quality(station: Station) -> Quality:
     >>> print(*check_quality(station).lines(), sep="\n")
     equator, global: 24 intervals
       mean at night 0.0 W/m2
-      above the physically possible: 1 (4.17%); worst 1900 at 2025-06-21T12:00 UTC
-      extremely rarely so high: 1 (4.17%); worst 1900 at 2025-06-21T12:00 UTC
-      offset at night: 10 (41.67%)
+      above the physically possible: 1 (4.17 %); worst 1900 at 2025-06-21T12:00 UTC
+      extremely rarely so high: 1 (4.17 %); worst 1900 at 2025-06-21T12:00 UTC
+      offset at night: 10 (41.67 %)
     """
     means = _limits(station)
     night = means["day"] == 0.0

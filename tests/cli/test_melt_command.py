@@ -188,6 +188,20 @@ def test_a_folder_of_that_name_that_is_no_stack_stays(dem, station, tmp_path):
     assert (out / "days.zarr" / "mine.txt").read_text() == "mine"
 
 
+def test_the_peak_of_a_part_of_a_season_is_told_as_such(dem, station, tmp_path, capsys):
+    run = ["melt", str(dem), str(station)]
+    plain = [*QUICK, "--melt", "degree-days", "--no-spread", "--stack", "none"]
+    first = tmp_path / "first"
+    assert main([*run, str(first), "--period", "2025-02-21/2025-03-10", *plain]) == 0
+    assert "\npeak snow water " in (said := capsys.readouterr().err)
+    assert "of this part" not in said
+    assert "warning: made lies outside the raster" in said  # and the run went on
+    going_on = ["--from-state", str(first / "state.nc"), "--period", "2025-03-11/2025-03-12"]
+    assert main([*run, str(tmp_path / "rest"), *going_on, *plain]) == 0
+    said = capsys.readouterr().err
+    assert "\npeak snow water of this part (the season began on 2025-02-21) " in said
+
+
 def test_what_is_asked_for_and_cannot_be(dem, station, tmp_path, capsys):
     out = tmp_path / "out"
     run = ["melt", str(dem), str(station), str(out), "--melt", "degree-days", "--dry-run"]

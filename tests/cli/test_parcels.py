@@ -4,6 +4,9 @@ from __future__ import annotations
 
 import csv
 import json
+import re
+import sqlite3
+from contextlib import closing
 
 import geopandas
 import numpy as np
@@ -85,6 +88,40 @@ def test_every_column_is_explained_and_names_its_unit(whole):
         assert row["meaning"], column
 
 
+def test_no_sector_of_aspect_reads_as_a_standard_error(whole):
+    explained = {row["column"]: row["meaning"] for row in rows_of(whole / "columns.csv")}
+    sectors = [name for name in explained if re.fullmatch(r"aspect_[a-z_]+_ha_map", name)]
+    assert sectors == [
+        f"aspect_{name}_ha_map" for name in
+        ("flat", "north", "north_east", "east", "south_east", "south", "south_west", "west",
+         "north_west")
+    ]  # fmt: skip
+    assert explained["aspect_south_east_ha_map"].startswith("area that faces south-east, within")
+    layer = geopandas.read_file(whole / "parcels.gpkg", layer="parcels")
+    assert set(sectors) <= set(layer.columns)
+    for name in (*explained, *layer.columns):
+        if "se" in name.split("_"):
+            assert name.endswith("_se")
+            assert "standard error" in explained[name]
+
+
+def test_dictionary_layers_and_record_name_the_sky(whole):
+    explained = {row["column"]: row["meaning"] for row in rows_of(whole / "columns.csv")}
+    for name in ("irradiation_season_mj_m2_slope", "share_of_level_m04", "top_mj_m2"):
+        assert explained[name].endswith("; potential (clear-sky)"), name
+    for name in ("sun_hours_season_h", "share_of_level_season_se", "map_area_ha"):
+        assert "potential" not in explained[name], name
+    results = json.loads((whole / "run.json").read_text("utf-8"))["results"]
+    assert results["sky"] == "clear"
+    with closing(sqlite3.connect(whole / "parcels.gpkg")) as package:
+        told = dict(package.execute("SELECT table_name, description FROM gpkg_contents"))
+    assert set(told) == {"parcels", "rule"}
+    for words in told.values():
+        assert "growing season April to October, typical year" in words
+        assert words.endswith(results["light"])
+    assert RULE[1] in told["rule"]
+
+
 def test_tables_agree_with_each_other(whole):
     table = rows_of(whole / "parcels.csv")
     assert [row["rank"] for row in table] == ["1", "2", "3"]
@@ -146,6 +183,8 @@ def test_summary_is_for_people(places, tmp_path, capsys):
     assert "Côte/3" in said
     assert "rule: slope_percent < 15" in said
     assert "ha drawn" in said
+    assert "season: April to October; energy potential (clear-sky), per area of slope" in said
+    assert "Sky without clouds after Ineichen and Perez 2002; real skies give less. Linke" in said
     assert "ha known" not in said  # all of what is drawn
     assert "warning: shade of all that stands in the raster, and of nothing beyond it" in said
     assert VINEYARD in said
@@ -247,6 +286,7 @@ def test_ground_beyond_and_trees_above_take_sun(places, tmp_path):
         (["--rule", "slop < 15"], 2, "slop"),
         (["--rule", "__import__('os')"], 2, "rule"),
         (["--score", "no_such_figure"], 2, "no_such_figure"),
+        (["--score", "aspect_se_ha_map"], 2, "needs its sector written out, aspect_south_east_ha"),
         (["--score", "rule_share"], 2, "names rule_share, which needs --rule"),
         (["--rule", "degree_days > 9"], 2, "names degree_days, which needs --temperatures"),
         (["--least-patch", "500"], 2, "--least-patch belongs to --rule"),
@@ -367,13 +407,27 @@ def test_long_names_do_not_widen_the_table():
     assert _cell({"parcel": "x" * 300}, "parcel", "{}") == "x" * 37 + "..."
 
 
-def test_small_areas_are_told_in_square_metres():
-    row = {"known_ha_map": 1.0}
-    for area, told in ((1.0, "1.00"), (0.01, "0.01"), (0.0009, "9.0 m2"), (0.0, "0.00")):
-        assert _cell(row | {"drawn_ha_map": area}, "drawn_ha_map", "") == told
-    assert _cell(row | {"rule_ha_map": 0.003, "rule_ha_map_se": 0.001}, "rule_ha_map", "") == (
-        "30 +/- 10 m2"
-    )
+def test_small_areas_are_told_in_square_metres(places, tmp_path, capsys):
+    """One unit a table, named in its head: that which suits the smallest parcel."""
+    shapes = [outline(-100, -50, 0, 50), outline(0, 0, 3, 3)]
+    table = geopandas.GeoDataFrame({"name": ["large", "tiny"]}, geometry=shapes, crs=UTM)
+    table.to_file(tmp_path / "two.gpkg")
+    plain = [*QUICK[:-1], "--coarser", "none", "--sheets", "none", "--rule", "slope_percent < 15"]
+    asked = ["parcels", str(places[0]), str(tmp_path / "two.gpkg"), str(tmp_path / "o")]
+    assert main([*asked, *plain]) == 0
+    head, large, tiny = capsys.readouterr().err.splitlines()[:3]
+    assert head.split()[1:3] == ["m2", "drawn"]
+    assert "rule m2" in head
+    assert (large.split()[1], large.split()[-1]) == ("10008.0", "10008.0")  # 100 m on UTM's grid
+    assert (tiny.split()[1], tiny.split()[-1]) == ("9.0", "9.0")
+    assert " m2" not in large + tiny
+    assert len(head) == len(large) == len(tiny)
+
+
+def test_areas_of_a_table_have_the_unit_of_its_smallest_parcel():
+    row = {"known_ha_map": 1.0, "rule_ha_map": 0.003, "rule_ha_map_se": 0.001}
+    for smallest, told in ((1.0, "0.00 +/- 0.00"), (0.003, "30 +/- 10"), (0.0009, "30.0 +/- 10.0")):
+        assert _cell(row, "rule_ha_map", "", smallest) == told
 
 
 def test_an_area_of_none_or_all_has_a_range_in_place_of_a_standard_error_both_ways():

@@ -50,6 +50,12 @@ def test_record(out):
     settings = record["settings"]
     assert settings["clock"] == "+01:00"
     assert settings["days"] == ["2025-08-15"]
+    day = record["results"]["places"][0]["sun"]["days"][0]
+    assert day["day"] == "2025-08-15"
+    with open(out / "days.csv", newline="") as file:
+        row = next(row for row in csv.DictReader(file) if row["day"] == "08-15")
+    for name, column in (("first_sun", "first_sun_h"), ("level_sun_hours", "level_sun_hours")):
+        assert day[name] == pytest.approx(float(row[column]), abs=1e-3)
     assert settings["azimuths"] == 16
     assert settings["azimuths_of_energy"] == 64
     place = record["results"]["places"][0]
@@ -74,9 +80,10 @@ def test_table_has_every_day(out):
 
 
 def test_text_without_a_folder(dem, capsys):
-    assert main(["site", dem, "--at", AT, *QUICK]) == 0
+    assert main(["site", dem, "--at", AT, "--day", "2025-08-15", *QUICK]) == 0
     caught = capsys.readouterr()
     assert "MJ m-2" in caught.out
+    assert "15 August   sun from " in caught.out
     assert "January" in caught.out
     assert "licensed practice" in caught.out
     assert "file" not in caught.err

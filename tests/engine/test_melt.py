@@ -13,6 +13,7 @@ from terrasol.engine.melt_stack import snow_melt
 from terrasol.engine.melt_state import head_of, save_state, take_up
 from terrasol.engine.melt_tables import DEPTHS, TABLES, SeasonTables, tables_csv
 from terrasol.errors import InputError
+from terrasol.ground.frame import make_frame
 from terrasol.kernels.melt import SKIN
 from terrasol.practice.snow import COVERED_FROM, Snow, SnowModel, snow_day
 from terrasol.practice.snow_point import point_snow
@@ -347,8 +348,6 @@ def test_bands_take_the_height_on_their_lower_edge():
 
 def test_map_area_is_that_of_the_ground(metric_ground):
     """Cells of 60 x 40 m, near enough to the projection's middle."""
-    from terrasol.ground.frame import make_frame
-
     ground = metric_ground(np.zeros((20, 30)), (60.0, 40.0))
     frame = make_frame(ground.shape, ground.transform, ground.crs)
     area = map_area(frame, range(20), range(30))
@@ -414,3 +413,16 @@ def test_the_same_from_python(ground, store, tmp_path):
     assert float(whole["peak_snow_water"].max()) > 20.0
     for data in (first, rest, whole):
         data.close()
+
+
+def test_a_station_outside_the_raster_is_told(ground):
+    settings = MeltSettings(SnowModel("hock"), parse_period(PERIOD), azimuths=8)
+    inside = weather_station()
+    frame = make_frame(ground.shape, ground.transform, ground.crs)
+    at = {"latitude": float(frame.centre[0]), "longitude": float(frame.centre[1])}
+    for moved, told in ((0.0, 0), (0.5, 1), (170.0, 1)):
+        station = replace(inside, latitude=at["latitude"], longitude=at["longitude"] + moved)
+        warnings = prepare(ground, station, AIR, settings).warnings
+        found = [text for text in warnings if "invented lies outside the raster" in text]
+        assert len(found) == told
+        assert all("by its height alone, 1500 m" in text for text in found)

@@ -42,7 +42,7 @@ def test_a_plane_of_twelve_percent_is_all_in_its_class():
     assert numbers["surface_area_ha"] == pytest.approx(area * wider, rel=1e-5)
     assert numbers["aspect_mean_deg"] == pytest.approx(180.0, abs=0.1)
     assert numbers["aspect_resultant"] == pytest.approx(1.0, abs=1e-6)
-    assert numbers["aspect_s_ha_map"] == pytest.approx(area, rel=1e-5)
+    assert numbers["aspect_south_ha_map"] == pytest.approx(area, rel=1e-5)
     # Rows 35 to 44; the plane has 500 m in row 40 and rises northwards by 1.2 m a row.
     assert numbers["height_mean_m"] == pytest.approx(500.0 + 1.2 * 0.5, abs=1e-3)
     size, coarse = parcel.coarser[0]

@@ -72,7 +72,7 @@ def test_figures_are_those_of_the_maps(ground, shape):
         assert numbers[f"slope_{name}_percent_ha_map"] == pytest.approx(expected, abs=0.01)
     facing = maps.aspect.values
     south = area[(np.abs(facing - 180.0) < 22.5) & (percent >= 2.0)].sum() / 1e4
-    assert numbers["aspect_s_ha_map"] == pytest.approx(south, abs=0.01)
+    assert numbers["aspect_south_ha_map"] == pytest.approx(south, abs=0.01)
     shone = np.average(sun.sun_hours_months.values[3:10].sum(axis=0), weights=area)
     assert numbers["sun_hours_season_h"] == pytest.approx(shone, rel=1e-3)
     met = area[(percent < 15.0) & (season >= 5000.0)].sum() / 1e4

@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import re
+from dataclasses import replace
+from itertools import pairwise
 
 import numpy as np
 import pytest
@@ -15,10 +17,11 @@ from terrasol.engine.parcel_rows import RowSettings
 from terrasol.engine.parcels import survey
 from terrasol.ground.elevation import Elevation
 from terrasol.ground.frame import make_frame
+from terrasol.ground.uncertainty import DemError
 from terrasol.practice.limits import VINEYARD
 from terrasol.practice.season import SOUTHERN_SEASON
 from terrasol.practice.temperatures import from_monthly
-from terrasol.show.page import Page, book
+from terrasol.show.page import Page, book, text_width
 from terrasol.show.panel import Panel
 from terrasol.show.parcel_map import (
     GroundMap,
@@ -28,8 +31,8 @@ from terrasol.show.parcel_map import (
     scale_length,
     slope_colours,
 )
-from terrasol.show.parcel_sheet import UNKNOWN, facts, parcel_page
-from terrasol.show.parcels import MOST_ROWS, summary_page
+from terrasol.show.parcel_sheet import TEXT, UNKNOWN, facts, parcel_page
+from terrasol.show.parcels import MAP_HEIGHTS, MOST_ROWS, summary_page
 
 WARMTH = Warmth(from_monthly(np.full(12, 15.0), height=500.0, highest=np.full(12, 20.0)))
 
@@ -56,7 +59,13 @@ def test_a_sheet_says_what_was_found_and_what_is_not_in_it():
     for part in ("P0", "2.05 ha", "12.0 %", "1 of 1", "Rule: slope_percent < 15", "Ia", "20 m"):
         assert part in words, part
     assert VINEYARD in words
-    assert "potential" in words
+    assert "Potential (clear-sky) irradiation per area of slope" in words
+    assert "would move Winkler's sum by +0" in words  # no minus before a zero
+    summary = all_words(summary_page(found, ground, frame_of(ground), title="Test"))
+    for told in (words, summary):
+        assert "Sky without clouds after Ineichen and Perez 2002" in told
+        assert "Linke turbidity by month 3, albedo of the ground 0.2." in told
+        assert "0.4 m wide, of albedo 0.2, endless" in told
     assert page.png().startswith(b"\x89PNG")
 
 
@@ -111,6 +120,7 @@ def test_south_of_the_equator_with_a_period_and_a_measured_month():
     settings = asked_for("2023-07/2024-06", season=SOUTHERN_SEASON, coarser=())
     found = survey(ground, there, settings)
     words = all_words(parcel_page(found, found.parcels[0], ground, frame_of(ground), title="T"))
+    assert "of albedo" not in words  # of the rows, that were not asked for
     assert "October 2023 to April 2024" in words
     assert "° S" in words
 
@@ -124,20 +134,17 @@ def test_long_lists_are_cut_and_said_so():
 
 
 def test_standard_errors_stand_behind_their_figures():
-    from terrasol.ground.uncertainty import DemError
-
     ground = plane(14.5, 180.0)
     settings = asked_for(coarser=(), rule="slope_percent < 15", error=DemError(0.3, 0.0, 2))
     found = survey(ground, parcels(box(0, 0, 60, 60)), settings)
     told = dict(facts(found, found.parcels[0]))
     assert " ± " in told["Slope, mean"]
+    assert told["Area of the slope's surface"] == "0.36 ha"  # has no bound on the map
     words = all_words(parcel_page(found, found.parcels[0], ground, frame_of(ground), title="T"))
     assert "± or a range: one standard error" in words
 
 
 def test_an_area_of_none_or_all_is_off_to_one_side():
-    from terrasol.ground.uncertainty import DemError
-
     ground = plane(14.5, 180.0)
     for limit, pattern in ((14, r"0\.00 to 0\.\d\d ha, 0 %"), (15, r"0\.\d\d to 0\.36 ha, 100 %")):
         error, rule = DemError(0.3, 0.0, 2), f"slope_percent < {limit}"
@@ -343,6 +350,60 @@ def test_each_part_of_a_parcel_has_its_number(odd):
     ]
     assert sorted(filter(None, map_)) == ["1", "2", "3", "4", "4"]
     words = all_words(page)
-    assert "ha drawn" in words
+    assert "m² drawn" in words  # one unit a table: that of the smallest parcel
     assert "known" in words
     assert words.count("flat") == 0  # what is void faces nowhere that is known
+
+
+@pytest.mark.parametrize("count", [1, MOST_ROWS])
+def test_notes_of_any_length_stay_clear_of_what_stands_above_them(count):
+    ground = plane(12.0, 180.0)
+    shapes = [box(-390 + 30 * k, 0, -370 + 30 * k, 20) for k in range(count)]
+    settings = asked_for(
+        coarser=(), warmth=WARMTH, rows=RowSettings(2.0, 1.3, 0.4),
+        score="map_area_ha + slope_mean_percent", rule="slope_percent < 15",
+    )  # fmt: skip
+    found = survey(ground, parcels(*shapes), settings)
+    doubts = ("a doubt of a whole line, which is as long as a line of a hundred letters is" * 2,)
+    for more in ((), doubts, doubts * 3):
+        noted = replace(found, error_doubts=more)
+        frame = frame_of(ground)
+        sheet = parcel_page(noted, noted.parcels[0], ground, frame, title="T")
+        places = words_at(sheet)
+        top = min(y for words, y in places if words.startswith("Season April"))
+        assert top - max(y for words, y in places if words == "right side") >= 8.0
+        places = words_at(summary_page(noted, ground, frame, title="T"))
+        top = min(y for words, y in places if words.startswith("Season April"))
+        above = [y for words, y in places if words in ("Score", *found.score.terms)]
+        assert top - max(above) >= 8.0
+
+
+def words_at(page):
+    """Texts of a page, and how far down they stand."""
+    texts = [a for a in page.axes.get_children() if hasattr(a, "get_text")]
+    return [(text.get_text(), text.get_position()[1]) for text in texts]
+
+
+def test_columns_of_tiny_and_large_parcels_stay_apart():
+    ground = plane(14.5, 180.0)
+    shapes = parcels(box(1, 1, 4, 4), box(-300, -300, 300, 300))
+    error = DemError(0.3, 0.0, 2)
+    settings = asked_for(coarser=(), rule="slope_percent < 15", error=error, warmth=WARMTH)
+    found = survey(ground, shapes, settings)
+    page = summary_page(found, ground, frame_of(ground), title="T")
+    texts = [a for a in page.axes.get_children() if hasattr(a, "get_text")]
+    texts = [t for t in texts if t.get_ha() == "right" and t.get_position()[1] > MAP_HEIGHTS[1]]
+    lines = {}
+    for text in texts:
+        lines.setdefault(text.get_position()[1], []).append(text)
+    rows = [line for line in lines.values() if len(line) > 6]
+    assert len(rows) == 3  # the head and both parcels
+    for line in rows:
+        line.sort(key=lambda text: text.get_position()[0])
+        for one, other in pairwise(line):
+            left = other.get_position()[0] - text_width(other.get_text(), TEXT)
+            assert left - one.get_position()[0] >= 4.0, (one.get_text(), other.get_text())
+    words = all_words(page)
+    assert "9.0 ± 0.0" in words or "to 9.0" in words
+    assert "9.0 m²" not in words
+    assert "ha drawn" not in words

@@ -4,6 +4,7 @@ import io
 import re
 from dataclasses import replace
 from datetime import date
+from types import SimpleNamespace
 
 import matplotlib.image
 import numpy as np
@@ -30,6 +31,7 @@ from terrasol.show.site import (
 from terrasol.show.site_text import (
     clock_time,
     dark_text,
+    day_rows,
     direction,
     facts,
     month_rows,
@@ -154,6 +156,31 @@ def test_text_says_what_the_place_is(site):
     table = [line for line in text.splitlines() if line.startswith(("June", "July"))]
     assert len(table) == 2
     assert clock_time(site.sun.first[site.sun.on(6, 21)]) in table[0]
+
+
+def test_text_tells_the_sun_of_days_asked_for(site, sites):
+    days = date(2025, 8, 15), date(2024, 2, 29)
+    sun = site.sun
+    k = sun.on(8, 15)
+    text = site_text([site], [], days)
+    lines = {line[:11].strip(): line for line in text.splitlines()}
+    here = f"sun from {clock_time(sun.first[k])} to {clock_time(sun.last[k])}, {sun.hours[k]:.1f} h"
+    level = f"level ground from {clock_time(sun.level[0, k])} to {clock_time(sun.level[1, k])}, "
+    assert lines["15 August"].startswith(f"15 August   {here}; {level}")
+    february = sun.on(2, 28)  # a typical year has no 29th
+    assert f"sun from {clock_time(sun.first[february])} to " in lines["29 February"]
+    assert "15 August" not in site_text([site], [])
+    both = next(line for line in site_text(sites, [], days).splitlines() if "15 August" in line)
+    assert both.count("level ground") == 2
+
+
+def test_days_without_sun_and_without_night_are_told_in_words():
+    sun = SimpleNamespace(
+        day_of=lambda day: 0, first=np.array([np.nan]), last=np.array([np.nan]),
+        hours=np.array([0.0]), level=np.array([[0.0], [24.0], [24.0]]),
+    )  # fmt: skip
+    rows = day_rows(SimpleNamespace(sun=sun), [date(2025, 6, 21)])
+    assert rows == [("21 June", "sun at no time; level ground all day")]
 
 
 def test_text_of_two_places_tells_the_difference(sites):
