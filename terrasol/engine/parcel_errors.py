@@ -169,7 +169,8 @@ def _columns(
     if score is not None:
         plain = {name: np.array([n[name] for n in numbers]) for name in numbers[0]}
         ranking = rank(score, plain | columns)
-        columns |= {"score": ranking.total, "rank": ranking.rank.astype(np.float64)}
+        places = np.where(ranking.rank > 0, ranking.rank, np.nan)
+        columns |= {"score": ranking.total, "rank": places}
     return columns
 
 

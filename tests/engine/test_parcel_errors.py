@@ -59,6 +59,19 @@ def test_hours_are_found_anew_where_the_rule_speaks_of_them():
     assert parcel.doubts["sun_hours_season_h"].standard_error > 0.0
 
 
+def test_a_parcel_without_a_rank_has_none_among_its_errors():
+    """Its score is unknown, here 0 / 0: it must not come before the first."""
+    found = survey(
+        plane(15.0, 180.0),
+        parcels(box(-60, -60, 60, 60), box(-60, 80, 60, 140)),
+        asked_for(coarser=(), error=DemError(0.1, 20.0, 2), score="rule_ha_map / rule_ha_map",
+                  rule="slope_percent > 90"),
+    ).parcels  # fmt: skip
+    for parcel in found:
+        assert np.isnan(parcel.doubts["rank"].value)
+        assert parcel.doubts["rank"].count == 0
+
+
 @pytest.mark.heavy
 def test_slope_of_a_plane_seen_with_error_is_held():
     """The bounds from an erroneous model hold the true mean slope in most parcels."""
