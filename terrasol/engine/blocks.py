@@ -98,10 +98,9 @@ def _light_arrays(
 
 def status_of(elevation: Elevation, block: Block) -> NDArray[np.uint8]:
     """Status codes of a block whose voids may have been filled."""
-    window = np.s_[block.row : block.row + block.rows, block.column : block.column + block.columns]
     assert elevation.filled is not None
-    status = elevation.filled[window].astype(np.uint8)
-    status[np.isnan(elevation.heights[window])] = 2
+    status = elevation.filled[block.slices].astype(np.uint8)
+    status[np.isnan(elevation.heights[block.slices])] = 2
     return status
 
 

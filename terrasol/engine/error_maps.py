@@ -170,8 +170,7 @@ class _ErrorRun:
         for layer in self.beside:
             sink.open(layer)
         for block in self.plan.blocks:
-            rows = slice(block.row, block.row + block.rows)
-            window = rows, slice(block.column, block.column + block.columns)
+            window = block.slices
             for layer in self.beside:
                 name = layer.name.removesuffix(SUFFIX)
                 values = _standard_error(self.tallies[name], maps[name][window], window)

@@ -473,11 +473,7 @@ class _MeltRun:
         assert sink is not None
 
         def write(name: str, block: Block) -> None:
-            part = self.maps[name][
-                : stop - start,
-                block.row : block.row + block.rows,
-                block.column : block.column + block.columns,
-            ]
+            part = self.maps[name][: stop - start, *block.slices]
             sink.write(name, start, block.row, block.column, part)
 
         tasks = [partial(write, name, block) for name in self.maps for block in self.blocks]

@@ -329,9 +329,7 @@ def cells_of(
     ground = None if work is None else work.ground(block)
     whole: Part = slice(0, block.rows), slice(0, block.columns)
     parts = [whole] if ground is None else list(ground.parts())
-    heights = bare.elevation.heights[
-        block.row : block.row + block.rows, block.column : block.column + block.columns
-    ].astype(np.float64)
+    heights = bare.elevation.heights[block.slices].astype(np.float64)
     found = []
     for part in parts:
         rows = range(block.row + part[0].start, block.row + part[0].stop)

@@ -202,9 +202,7 @@ def _piece(
     fraction = np.zeros((window.rows, window.columns))
     fraction[cells.rows - window.row, cells.columns - window.column] = cells.fraction
     area = fraction * true_areas(frame, window)
-    heights = elevation.heights[
-        window.row : window.row + window.rows, window.column : window.column + window.columns
-    ]
+    heights = elevation.heights[window.slices]
     row = float(np.average(cells.rows, weights=cells.fraction))
     column = float(np.average(cells.columns, weights=cells.fraction))
     latitude = frame.latitude_at(row, column)

@@ -147,7 +147,7 @@ def _needs_hours(asked: Asked, score: Score | None) -> bool:
 
 def _on(piece: Piece, layers: dict[str, Any], ground: Elevation, asked: Asked) -> Piece:
     """A piece on another ground."""
-    heights = ground.heights[_inside(piece)]
+    heights = ground.heights[piece.window.slices]
     if asked.warmth is not None:
         layers = layers | asked.warmth.layers(heights, piece.latitude)
     return replace(piece, heights=heights, layers=layers)
@@ -176,14 +176,8 @@ def _columns(
 
 def _with_slopes(piece: Piece, slopes: Slopes) -> Piece:
     """A piece with its part of other slopes [percent]."""
-    degrees = np.degrees(np.arctan(slopes[_inside(piece)] / np.float32(100.0)))
+    degrees = np.degrees(np.arctan(slopes[piece.window.slices] / np.float32(100.0)))
     return replace(piece, layers=piece.layers | {"slope": degrees[None]})
-
-
-def _inside(piece: Piece) -> tuple[slice, slice]:
-    """Its window of the raster."""
-    w = piece.window
-    return slice(w.row, w.row + w.rows), slice(w.column, w.column + w.columns)
 
 
 def _numbers(piece: Piece, level: Level, asked: Asked) -> dict[str, float]:

@@ -30,7 +30,7 @@ def own_light(piece: Piece, light: LightSettings) -> LightSettings | None:
     """
     if light.albedo_map is not None:
         whole = mapped_albedo(
-            light.albedo_map, np.arange(12), np.array(light.albedo), *_slices(piece)
+            light.albedo_map, np.arange(12), np.array(light.albedo), *piece.window.slices
         )
         light = replace(light, albedo=tuple(_means(whole, piece).tolist()), albedo_map=None)
     if light.index_map is None:
@@ -85,15 +85,9 @@ def _tables(
     return MappedTables.over(light, light.index_map, longitude, latitudes, heights)
 
 
-def _slices(piece: Piece) -> tuple[slice, slice]:
-    """Rows and columns of a piece's window."""
-    w = piece.window
-    return slice(w.row, w.row + w.rows), slice(w.column, w.column + w.columns)
-
-
 def _index(piece: Piece, layers: NDArray[np.float32]) -> Months:
     """Mean clear-sky index of each calendar month over a parcel; NaN where none is known."""
-    cut = layers[:, *_slices(piece)].astype(np.float64)
+    cut = layers[:, *piece.window.slices].astype(np.float64)
     return np.resize(_means(cut, piece), 12)
 
 

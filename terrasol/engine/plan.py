@@ -30,6 +30,14 @@ class Block:
     rows: int
     columns: int
 
+    @property
+    def slices(self) -> tuple[slice, slice]:
+        """Its rows and columns, as an index of arrays of the raster."""
+        return (
+            slice(self.row, self.row + self.rows),
+            slice(self.column, self.column + self.columns),
+        )
+
     def shared(self, other: Block) -> tuple[slice, slice] | None:
         """Rows and columns of the raster that both hold, or None."""
         top, left = max(self.row, other.row), max(self.column, other.column)

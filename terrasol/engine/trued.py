@@ -235,7 +235,7 @@ class Truing:
         middle = self.near(slope)
         found = np.full(ground.shape, np.nan, np.float32)
         trued = np.maximum(middle + self.shift + (slope - middle) * self.ratio, 0.0)
-        found[_inside(self.part)] = trued
+        found[self.part.slices] = trued
         return found
 
 
@@ -246,9 +246,9 @@ def slopes(heights: NDArray[np.float32], frame: Frame, part: Block | None = None
     found = np.empty((part.rows, part.columns), np.float32)
     for block in blocks_of((part.rows, part.columns)):
         place = replace(block, row=part.row + block.row, column=part.column + block.column)
-        normal = block_normals(_with_rim(heights, place), 1, frame, place.row, place.column)
-        east, north, up = normal
-        found[_inside(block)] = 100.0 * np.hypot(east, north) / up
+        rim = _with_rim(heights, place)
+        east, north, up = block_normals(rim, 1, frame, place.row, place.column)
+        found[block.slices] = 100.0 * np.hypot(east, north) / up
     return found
 
 
@@ -260,14 +260,6 @@ def _with_rim(heights: NDArray[np.float32], block: Block) -> NDArray[np.float32]
     row, column = top - block.row + 1, left - block.column + 1
     padded[row : row + piece.shape[0], column : column + piece.shape[1]] = piece
     return padded
-
-
-def _inside(block: Block) -> tuple[slice, slice]:
-    """Its rows and columns."""
-    return (
-        slice(block.row, block.row + block.rows),
-        slice(block.column, block.column + block.columns),
-    )
 
 
 def _around(windows: Sequence[Block], shape: tuple[int, int]) -> Block:

@@ -86,6 +86,7 @@ def test_intervals_hold_the_truth(power, steepness, error, settings, trials):
         count(held, truth, error, number, settings, maps=settings is not None)
     names = [f"{name}, {kind}" for name in ("slope", "aspect") for kind in ("0-2 %", *KINDS_ENOUGH)]
     names += ["parcel slope, all", "parcel area, mixed", "parcel slope, mixed"]
+    names += ["parcel aspect, all"]
     if settings is not None:
         names += [f"energy, {kind}" for kind in KINDS_ENOUGH]
         names += ["parcel energy, all", "parcel energy, mixed"]
@@ -99,6 +100,7 @@ def test_intervals_hold_the_truth(power, steepness, error, settings, trials):
 
 CELLS = [f"{name}, {kind}" for name in ("slope", "aspect") for kind in KINDS_ENOUGH]
 PARCELS = [f"parcel {name}, {kind}" for name in ("slope", "area") for kind in ("all", "mixed")]
+PARCELS += ["parcel aspect, all"]
 
 
 def as_cells_of_10_m(heights, cell, error):
@@ -154,7 +156,10 @@ def test_intervals_hold_in_parcels_of_the_sample_valley():
     truth, error = as_cells_of_10_m(heights, 20.0, DemError(0.5, 60.0))
     held = Held()
     count(held, truth, error, 0, maps=False)
-    assert outside(held, ["slope, all", "aspect, all", "parcel slope, all"]) == {}
+    assert (
+        outside(held, ["slope, all", "aspect, all", "parcel slope, all", "parcel aspect, all"])
+        == {}
+    )
 
 
 @pytest.mark.heavy

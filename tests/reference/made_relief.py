@@ -17,6 +17,7 @@ from terrasol.ground.uncertainty import error_fields
 CELL = 10.0
 SIDE = 10  # cells along a parcel: 1 ha
 STEEP = 15.0  # percent; parcels are asked for the share below it
+ANGLES = ("aspect", "parcel aspect")
 STUDENT = 1.714  # 95 % quantile for 23 degrees of freedom, from print
 
 
@@ -54,6 +55,13 @@ def in_parcels(values, side=SIDE):
     return cut.reshape(rows, side, columns, side).mean(axis=(1, 3))
 
 
+def facing(aspect, side=SIDE):
+    """Mean directions of square parcels, flat cells apart [degrees]."""
+    turn = np.radians(aspect.astype(float))
+    north, east = (in_parcels(np.nan_to_num(part(turn)), side) for part in (np.cos, np.sin))
+    return np.degrees(np.arctan2(east, north)) % 360.0
+
+
 class Survey:
     """What is asked of a ground: per cell, and per parcel."""
 
@@ -72,7 +80,8 @@ class Survey:
         sink = ArraySink(ground.shape)
         moved(self.plan, ground).run(sink)
         slope = 100.0 * np.tan(np.radians(sink.arrays["slope"][0].astype(float)))
-        found = {"slope": slope, "aspect": sink.arrays["aspect"][0]}
+        aspect = sink.arrays["aspect"][0]
+        found = {"slope": slope, "aspect": aspect, "parcel aspect": facing(aspect, self.side)}
         if self.energy:
             found["energy"] = sink.arrays[self.energy][0]
             found["parcel energy"] = in_parcels(sink.arrays[self.energy][0], self.side)
@@ -89,12 +98,12 @@ class Survey:
     def spreads(self):
         """By terrasol's own propagation, as parcels have it."""
         return propagate_trued(
-            self.elevation, self.error, self.look, areas=["parcel area"], angles=["aspect"]
+            self.elevation, self.error, self.look, areas=["parcel area"], angles=ANGLES
         )
 
     def spreads_as_drawn(self):
         """By likely grounds as they are drawn, as any quantity has it."""
-        return propagate_all(self.elevation, self.error, self.of, angles=["aspect"])
+        return propagate_all(self.elevation, self.error, self.of, angles=ANGLES)
 
     def spreads_of_added_error(self):
         """As one might do it in place of that: error on top of the model, and its shift taken off.
@@ -102,7 +111,7 @@ class Survey:
         The estimate less the mean is then the shift to be added to the estimate.
         """
         seen = self.of(self.elevation)
-        tallies = {name: SpreadTally(values, name == "aspect") for name, values in seen.items()}
+        tallies = {name: SpreadTally(values, name in ANGLES) for name, values in seen.items()}
         for ground in realisations(self.elevation, self.error):
             for name, values in self.of(ground).items():
                 tallies[name].add(values)
